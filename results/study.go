@@ -1,0 +1,99 @@
+package results
+
+import "time"
+
+// VerdictKind is one of the four answers, and no other.
+type VerdictKind uint8
+
+// The verdicts.
+const (
+	Undecided VerdictKind = iota
+	Within
+	Worse
+	Diverged
+)
+
+// Verdict answers one comparison.
+type Verdict struct {
+	Kind     VerdictKind
+	Pairs    int // Undecided: about how many pairs would settle it; 0: cannot be said
+	Diverged int // Diverged: k of Of
+	Of       int
+}
+
+// Comparison is one arm against another over paired replicates; a difference is
+// arm - against, positive = better.
+type Comparison struct {
+	Arm, Against      string // slugs
+	Metric            string
+	Margin            float64
+	Confidence        float64
+	Replicates        []uint64
+	Differences       []float64 // one a replicate, same order
+	N                 int
+	Mean, SD          float64 // NaN when N is too small
+	Low, High         float64 // two-sided t interval of the mean at Confidence
+	BootLow, BootHigh float64 // percentile bootstrap beside it
+	Skewness          float64
+	P                 float64 // one-sided p-value of "not within the margin"
+	Holm              float64 // Holm-adjusted p, the one that decides
+	Verdict           Verdict
+	Diverged          int // replicates that diverged in the arm
+	Stalled           int
+	Headline          bool // a contrast the plan asks for, not arm against baseline
+	Warnings          []string
+}
+
+// Setting is one rounding point of one layer as resolved, for tables and strips.
+type Setting struct {
+	Layer    int    `json:"layer"` // -1: input or loss
+	Name     string `json:"name"`
+	Point    string `json:"point"` // "forward.weight"
+	Format   string `json:"format"`
+	Exponent int    `json:"exponent"` // bits, for the strip
+	Fraction int    `json:"fraction"`
+	Bits     int    `json:"bits"`
+	Rounding string `json:"rounding"` // "nearest-even", "stochastic r=16 truncated", "exact"
+	Order    string `json:"order"`    // sums: "sequential", "chunk(64)"
+	Overflow string `json:"overflow"`
+}
+
+// Arm describes one arm of a study.
+type Arm struct {
+	Name, Slug string
+	Baseline   bool
+	Settings   []Setting
+	Summary    string  // the arm's settings in one line, as the plan spells them
+	Bits       float64 // mean bits of a stored value, weighted by tensor sizes
+	LossScale  string
+}
+
+// Study is everything a report says: the plan, its arms, their runs, the
+// comparisons, and how to rerun them.
+type Study struct {
+	Title, Question string
+	PlanFile        string
+	PlanText        string // the plan as written
+	Resolved        string // the plan fully spelt out
+	Data            string // one line: what data, how many, invented or not
+	Network         string // one line
+	Training        string // one line
+	LongestSum      int
+	Metric          string
+	Margin          float64
+	Confidence      float64
+	MarginFixed     time.Time // when the margin was written to the store
+	MarginChanged   string    // not empty: the margin, metric or count was changed after the first run
+	Arms            []Arm     // the baseline first
+	Runs            []Run
+	Comparisons     []Comparison // arms against the baseline, plan order
+	Contrasts       []Comparison
+	Classes         []string
+	Warnings        []string
+	Cautions        []string
+	Answer          string // the sentence
+	StoreDigest     string
+	CodeVersion     string
+	Rerun           []string // commands
+	Written         time.Time
+}
