@@ -16,7 +16,7 @@ const (
 	Failed    State = "failed" // Run.Cause says why
 )
 
-// Hash is a SHA-256.
+// Hash is a SHA-256. It prints as 64 hexadecimal digits.
 type Hash [32]byte
 
 // Counts tallies the range events of one rounding point.

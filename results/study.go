@@ -33,12 +33,16 @@ type Comparison struct {
 	N                 int
 	Mean, SD          float64 // NaN when N is too small
 	Low, High         float64 // two-sided t interval of the mean at Confidence
-	BootLow, BootHigh float64 // percentile bootstrap beside it
+	BootLow, BootHigh float64 // bootstrap interval (BCa) beside it
 	Skewness          float64
-	P                 float64 // one-sided p-value of "not within the margin"
-	Holm              float64 // Holm-adjusted p, the one that decides
+	P                 float64 // one-sided p-value against "not within the margin"
+	Holm              float64 // Holm-adjusted P, the one that decides
+	PWorse            float64 // one-sided p-value against "not worse than the margin"
+	HolmWorse         float64 // Holm-adjusted PWorse
+	Planned           int     // pairs the plan asks for; 0: unknown
 	Verdict           Verdict
 	Diverged          int // replicates that diverged in the arm
+	AgainstDiverged   int // replicates that diverged in the arm it is compared with
 	Stalled           int
 	Headline          bool // a contrast the plan asks for, not arm against baseline
 	Warnings          []string
@@ -82,9 +86,13 @@ type Study struct {
 	Metric          string
 	Margin          float64
 	Confidence      float64
-	MarginFixed     time.Time // when the margin was written to the store
-	MarginChanged   string    // not empty: the margin, metric or count was changed after the first run
-	Arms            []Arm     // the baseline first
+	MarginFixed     time.Time  // when the margin was written to the store
+	MarginChanged   string     // not empty: the margin, metric or count was changed after the first run
+	Claim           Claim      // what the plan claims now
+	FixedClaim      FixedClaim // what was fixed before the first run
+	Planned         int        // pairs the plan asks for
+	BaselineProblem string     // not empty: the baseline diverged or failed, no verdict is to be had
+	Arms            []Arm      // the baseline first
 	Runs            []Run
 	Comparisons     []Comparison // arms against the baseline, plan order
 	Contrasts       []Comparison
