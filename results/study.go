@@ -70,6 +70,7 @@ type Arm struct {
 	Summary    string  // the arm's settings in one line, as the plan spells them
 	Bits       float64 // mean bits of a stored value, weighted by tensor sizes
 	LossScale  string
+	Guilty     []string // points ("update.master") found to cause the arm's loss; empty: not looked for
 }
 
 // Study is everything a report says: the plan, its arms, their runs, the

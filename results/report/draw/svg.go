@@ -1,0 +1,209 @@
+package draw
+
+import (
+	"bufio"
+	"encoding/xml"
+	"fmt"
+	"io"
+	"math"
+	"strconv"
+	"strings"
+)
+
+// Families are the type families of a figure: all of the same widths, one of
+// them on nearly every machine.
+const Families = `'Helvetica Neue', Helvetica, Arial, 'Liberation Sans', sans-serif`
+
+// WriteFile writes the figure as an SVG file of its own, in the light theme,
+// with a ground.
+func (f *Figure) WriteFile(w io.Writer) error {
+	e := &svgWriter{w: bufio.NewWriter(w), theme: &Light}
+	e.put(`<?xml version="1.0" encoding="UTF-8"?>` + "\n")
+	e.open(f, f.ID, fmt.Sprintf(` width="%s" height="%s" font-family="%s"`, num(f.W), num(f.H), Families))
+	e.put(`<rect width="100%" height="100%" fill="` + Light[Paper] + `"/>`)
+	e.marks(f.Marks)
+	e.put("</svg>\n")
+	return e.w.Flush()
+}
+
+// WriteInline writes the figure as an element of an HTML page that has the rules
+// of Classes; id is unique in the page.
+func (f *Figure) WriteInline(w io.Writer, id string) error {
+	e := &svgWriter{w: bufio.NewWriter(w)}
+	e.open(f, id, "")
+	e.marks(f.Marks)
+	e.put("</svg>")
+	return e.w.Flush()
+}
+
+// WriteGlyph writes the figure as a small decoration of a line that says the
+// same in words: hidden from screen readers.
+func (f *Figure) WriteGlyph(w io.Writer) error {
+	e := &svgWriter{w: bufio.NewWriter(w)}
+	e.put(fmt.Sprintf(`<svg class="glyph" width="%[1]s" height="%[2]s" viewBox="0 0 %[1]s %[2]s" aria-hidden="true" focusable="false">`, num(f.W), num(f.H)))
+	e.marks(f.Marks)
+	e.put("</svg>")
+	return e.w.Flush()
+}
+
+// svgWriter writes marks; theme is nil in a page, where paints are classes.
+type svgWriter struct {
+	w     *bufio.Writer
+	theme *Theme
+}
+
+// put writes; bufio keeps the first error for Flush.
+func (e *svgWriter) put(s string) { _, _ = e.w.WriteString(s) }
+
+func (e *svgWriter) open(f *Figure, id, more string) {
+	e.put(fmt.Sprintf(`<svg xmlns="http://www.w3.org/2000/svg" id="%[1]s" viewBox="0 0 %[2]s %[3]s" role="img" aria-labelledby="%[1]s-t %[1]s-d"%[4]s`,
+		esc(id), num(f.W), num(f.H), more))
+	e.data(f.Data)
+	e.put(fmt.Sprintf(`><title id="%[1]s-t">%[2]s</title><desc id="%[1]s-d">%[3]s</desc>`, esc(id), esc(f.Title), esc(f.Desc)))
+}
+
+func (e *svgWriter) data(attrs []Attr) {
+	for _, a := range attrs {
+		e.put(` data-` + a.Name + `="` + esc(a.Value) + `"`)
+	}
+}
+
+func (e *svgWriter) marks(ms []Mark) {
+	for _, m := range ms {
+		switch m := m.(type) {
+		case *Group:
+			e.group(m)
+		case *Path:
+			e.path(m)
+		case *Text:
+			e.text(m)
+		}
+	}
+}
+
+func (e *svgWriter) group(g *Group) {
+	if len(g.Marks) == 0 {
+		return
+	}
+	e.put("<g")
+	if g.Class != "" {
+		e.put(` class="` + esc(g.Class) + `"`)
+	}
+	e.data(g.Data)
+	e.put(">")
+	if g.Title != "" {
+		e.put("<title>" + esc(g.Title) + "</title>")
+	}
+	e.marks(g.Marks)
+	e.put("</g>")
+}
+
+func (e *svgWriter) path(p *Path) {
+	e.put(`<path d="`)
+	for _, o := range p.Ops {
+		e.op(o)
+	}
+	e.put(`"`)
+	s := p.Style
+	e.paint(s.Fill, s.Line)
+	if s.Line != None && s.Width != 0 && s.Width != 1 {
+		e.put(` stroke-width="` + num(s.Width) + `"`)
+	}
+	if len(s.Dash) > 0 {
+		d := make([]string, len(s.Dash))
+		for i, v := range s.Dash {
+			d[i] = num(v)
+		}
+		e.put(` stroke-dasharray="` + strings.Join(d, " ") + `"`)
+	}
+	if s.Opacity > 0 && s.Opacity < 1 {
+		e.put(` opacity="` + num(s.Opacity) + `"`)
+	}
+	e.put("/>")
+}
+
+// paint writes fill and stroke: classes in a page, colours in a file.
+func (e *svgWriter) paint(fill, line Role) {
+	if e.theme == nil {
+		c := "f-" + fill.String()
+		if line != None {
+			c += " l-" + line.String()
+		}
+		e.put(` class="` + c + `"`)
+		return
+	}
+	e.put(` fill="` + e.theme[fill] + `"`)
+	if line != None {
+		e.put(` stroke="` + e.theme[line] + `"`)
+	}
+}
+
+func (e *svgWriter) op(o Op) {
+	switch o.Kind {
+	case Move:
+		e.put("M" + num(o.X) + " " + num(o.Y))
+	case To:
+		e.put("L" + num(o.X) + " " + num(o.Y))
+	case Close:
+		e.put("Z")
+	case Arc:
+		e.arc(o)
+	}
+}
+
+// arc writes an arc in pieces of at most half a turn, which SVG can say without
+// doubt.
+func (e *svgWriter) arc(o Op) {
+	at := func(a float64) string {
+		s, c := math.Sincos(a)
+		return num(o.X+o.R*c) + " " + num(o.Y+o.R*s)
+	}
+	n := max(1, int(math.Ceil(math.Abs(o.Sweep)/math.Pi-1e-9)))
+	dir := "1"
+	if o.Sweep < 0 {
+		dir = "0"
+	}
+	e.put("M" + at(o.A0))
+	for i := 1; i <= n; i++ {
+		e.put("A" + num(o.R) + " " + num(o.R) + " 0 0 " + dir + " " + at(o.A0+o.Sweep*float64(i)/float64(n)))
+	}
+}
+
+func (e *svgWriter) text(t *Text) {
+	e.put(`<text x="` + num(t.X) + `" y="` + num(t.Y) + `" font-size="` + num(t.Size) + `"`)
+	switch t.Anchor {
+	case Middle:
+		e.put(` text-anchor="middle"`)
+	case End:
+		e.put(` text-anchor="end"`)
+	}
+	if t.Bold {
+		e.put(` font-weight="bold"`)
+	}
+	if t.Turn != 0 {
+		e.put(` transform="rotate(` + num(t.Turn) + " " + num(t.X) + " " + num(t.Y) + `)"`)
+	}
+	e.paint(t.Role, None)
+	e.put(">")
+	if t.Title != "" {
+		e.put("<title>" + esc(t.Title) + "</title>")
+	}
+	e.put(esc(t.S) + "</text>")
+}
+
+// num writes a coordinate to a hundredth of a pixel.
+func num(v float64) string {
+	s := strconv.FormatFloat(v, 'f', 2, 64)
+	s = strings.TrimRight(strings.TrimRight(s, "0"), ".")
+	if s == "-0" || s == "" {
+		return "0"
+	}
+	return s
+}
+
+// esc writes words as XML character data or attribute value.
+func esc(s string) string {
+	var b strings.Builder
+	_ = xml.EscapeText(&b, []byte(Clean(s))) // a strings.Builder does not fail
+	return b.String()
+}
