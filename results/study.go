@@ -87,6 +87,9 @@ type Study struct {
 	Metric          string
 	Margin          float64
 	Confidence      float64
+	NoiseLow        float64    // noise floor: the range of the controls' differences from the baseline;
+	NoiseHigh       float64    // both zero: not measured
+	NoiseFrom       string     // where it comes from: "3 replicates in binary64 and with pairwise sums"
 	MarginFixed     time.Time  // when the margin was written to the store
 	MarginChanged   string     // not empty: the margin, metric or count was changed after the first run
 	Claim           Claim      // what the plan claims now
