@@ -31,6 +31,8 @@ type Limits struct {
 	HasNaN          bool
 	DefaultOverflow Overflow
 	Flush           bool // subnormal results become zero of their sign
+	OneZero         bool // no negative zero: zero results are +0
+	Binary32        bool // every finite value is a binary32 number
 }
 
 // Mode is a rounding direction.

@@ -64,15 +64,20 @@ type Draws struct {
 // Word returns word n of the stream: word n mod 4 of the block whose counter is
 // (n div 4, Step, Site, Phase). Bits 32 and up of n div 4 enter the upper 24
 // bits of the last counter word, so no two elements share a word.
-func (d Draws) Word(n uint64) uint32 {
-	q := n / 4
-	return Block([4]uint32{uint32(q), d.Step, d.Site, d.Phase | uint32(q>>32)<<8}, d.Seed)[n%4]
+func (d Draws) Word(n uint64) uint32 { return d.Words(n / 4)[n%4] }
+
+// Words returns words 4q to 4q+3 of the stream.
+func (d Draws) Words(q uint64) [4]uint32 {
+	return Block([4]uint32{uint32(q), d.Step, d.Site, d.Phase | uint32(q>>32)<<8}, d.Seed)
 }
 
 // Lane returns word k of lane i, for the tables R[k,i] and V[k,j] of random
 // bits inside sums: word k mod 4 of counter (i, Step, Site, Phase | (k div 4)<<8).
 // The lane has a counter word of its own, so the words of a lane do not depend
 // on how many lanes or terms a product has.
-func (d Draws) Lane(k, i uint32) uint32 {
-	return Block([4]uint32{i, d.Step, d.Site, d.Phase | k/4<<8}, d.Seed)[k%4]
+func (d Draws) Lane(k, i uint32) uint32 { return d.LaneWords(k/4, i)[k%4] }
+
+// LaneWords returns words 4q to 4q+3 of lane i.
+func (d Draws) LaneWords(q, i uint32) [4]uint32 {
+	return Block([4]uint32{i, d.Step, d.Site, d.Phase | q<<8}, d.Seed)
 }

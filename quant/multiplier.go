@@ -1,0 +1,82 @@
+package quant
+
+import "fmt"
+
+// Multiplier forms products of matrices in one accumulation. It owns scratch
+// memory and serves one goroutine at a time.
+type Multiplier[T Element] struct {
+	acc Accumulate
+	ref reference[T]
+}
+
+// Check reports what makes the accumulation unusable.
+func (a Accumulate) Check() error {
+	if err := a.Sum.checkInside("sum"); err != nil {
+		return err
+	}
+	if a.Product != nil {
+		if err := a.Product.checkInside("product"); err != nil {
+			return err
+		}
+	}
+	if a.Outer != nil {
+		if err := a.Outer.checkInside("outer"); err != nil {
+			return err
+		}
+	}
+	if a.Through32 && a.Order.Kind == Wide {
+		return fmt.Errorf("through binary32 with order wide: a wide sum has one rounding and no adder to pass through")
+	}
+	return a.Order.check(a.Order.K != 0)
+}
+
+// checkInside checks a point inside sums, where 16 random bits are drawn.
+func (p Point) checkInside(name string) error {
+	if err := p.Check(); err != nil {
+		return fmt.Errorf("%s: %w", name, err)
+	}
+	if p.Rounding.Bits > 16 {
+		return fmt.Errorf("%s: %d random bits: inside sums at most 16", name, p.Rounding.Bits)
+	}
+	return nil
+}
+
+// check checks the parameter; given says whether there is one.
+func (o Order) check(given bool) error {
+	switch takes := o.Kind == Chunk || o.Kind == Lanes; {
+	case o.Kind > Lanes:
+		return fmt.Errorf("unknown summation %s", o)
+	case takes && o.K < 1:
+		return fmt.Errorf("order %s: needs a whole number of at least 1, as in %s(64)", o, word(orderWords, uint8(o.Kind), "order"))
+	case !takes && given:
+		return fmt.Errorf("order %s takes no number", o)
+	}
+	return nil
+}
+
+// NewMultiplier checks that T can hold the results of acc and chooses the kernel.
+func NewMultiplier[T Element](acc Accumulate) (*Multiplier[T], error) {
+	if err := acc.Check(); err != nil {
+		return nil, fmt.Errorf("quant: %w", err)
+	}
+	var t T
+	for _, p := range []*Point{&acc.Sum, acc.Outer} {
+		if _, narrow := any(t).(float32); narrow && p != nil && !Fits32(p.Format) {
+			return nil, fmt.Errorf("quant: sums of format %s do not fit tensors of float32: use float64", p.Format)
+		}
+	}
+	return &Multiplier[T]{acc: acc, ref: newReference[T](acc)}, nil
+}
+
+// Mul forms the product. products and sums may be nil.
+func (m *Multiplier[T]) Mul(p Product[T], products, sums *Counts) {
+	p.check()
+	m.ref.mul(&p, products, sums)
+}
+
+// SumRows forms sums of terms without products: bias gradients, statistics.
+// One sum for every row i of a rows x k strided matrix, in acc.Order; acc.Product
+// is not used. The random words are those of column 0.
+func (m *Multiplier[T]) SumRows(dst []T, terms Matrix[T], rows, k int, d Streams, sums *Counts) {
+	m.ref.sumRows(dst, terms, rows, k, d, sums)
+}
