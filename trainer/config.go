@@ -39,7 +39,7 @@ const (
 
 // LossScale multiplies the output error by S, so that small gradients do not
 // underflow. Dynamic: a step with a non-finite gradient, or with a saturation
-// at a gradient point, is skipped and S cut.
+// at a gradient point, is skipped and S cut. Zero fields take their defaults.
 type LossScale struct {
 	Kind       LossScaleKind
 	Value      float64 // fixed S, or where dynamic scaling starts (default 2^15)
@@ -71,13 +71,64 @@ type Optimizer struct {
 	Momentum float64
 }
 
+// When says after which epochs a split is evaluated. The zero value is the last one.
+type When string
+
+// The times of evaluation.
+const (
+	EveryEpoch When = "every epoch"
+	LastEpoch  When = "last epoch"
+	Never      When = "never"
+)
+
 // Training is what all arms share besides the network. Hyper-parameters are
 // used as the binary32 number nearest to what is written here.
 type Training struct {
+	Loss          string // "cross-entropy", also where empty
 	Optimizer     Optimizer
 	LearningRate  Schedule
 	Batch, Epochs int
 	Shuffle       bool
 	// EvaluateTest and EvaluateValidation: "every epoch", "last epoch", "never".
-	EvaluateTest, EvaluateValidation string
+	EvaluateTest, EvaluateValidation When
+}
+
+// due reports whether an evaluation falls after an epoch; last is set for the
+// last one, also for the one in which a run stops.
+func (w When) due(last bool) bool { return w == EveryEpoch || last && w != Never }
+
+// single is the binary32 number nearest to a hyper-parameter.
+func single(x float64) float64 { return float64(float32(x)) }
+
+// rate is the learning rate of an epoch (1 is the first): binary32 throughout,
+// each fall one binary32 product.
+func (s Schedule) rate(epoch int) float64 {
+	rate := float32(s.Start)
+	for _, at := range s.AtEpochs {
+		if at <= epoch {
+			rate = float32(rate * float32(s.Multiply))
+		}
+	}
+	return float64(rate)
+}
+
+// Everything is the arm in which every point of a network of n layers is p, sums
+// are sequential and the product is rounded before it is added. Everything with
+// binary32, nearest-even, is the baseline.
+func Everything(p quant.Point, layers, states int) Arm {
+	sums := quant.Accumulate{Product: &p, Sum: p}
+	set := Arithmetic{
+		Weight: p, Activation: p, Forward: sums,
+		InputGradient:  Backward{Sums: sums, Result: p},
+		WeightGradient: Backward{Sums: sums, Result: p},
+		Step:           p, Master: p,
+	}
+	for range states {
+		set.States = append(set.States, p)
+	}
+	arm := Arm{Input: p, LossGradient: p}
+	for range layers {
+		arm.Layers = append(arm.Layers, set)
+	}
+	return arm
 }

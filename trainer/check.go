@@ -1,0 +1,78 @@
+package trainer
+
+import (
+	"fmt"
+	"math"
+)
+
+// check finds everything that would make a job fail, or mean something else than
+// its author thinks, before a step is taken.
+func (j *Job) check() (parts, error) {
+	var p parts
+	if len(j.Network.Layers) == 0 || j.Network.Parameters() == 0 {
+		return p, fmt.Errorf("the network has nothing to train; give it a dense or convolution layer")
+	}
+	p.classes = j.Network.Outputs()
+	if err := j.checkTraining(&p); err != nil {
+		return p, err
+	}
+	if err := j.Network.checkArm(&j.Arm, p.rule.states(j.Training.Optimizer)); err != nil {
+		return p, err
+	}
+	p.double, p.wide = j.Network.containers(&j.Arm)
+	return p, j.openSets(&p)
+}
+
+// openSets checks the three sets.
+func (j *Job) openSets(p *parts) (err error) {
+	if p.train, err = j.Network.open("training", j.Train, p.classes); err != nil {
+		return err
+	}
+	if p.train.size() == 0 {
+		return fmt.Errorf("training data: no examples")
+	}
+	if p.validation, err = j.Network.open("validation", j.Validation, p.classes); err != nil {
+		return err
+	}
+	if p.test, err = j.Network.open("test", j.Test, p.classes); err != nil {
+		return err
+	}
+	p.largest = max(p.train.size(), p.validation.size(), p.test.size())
+	return nil
+}
+
+// checkTraining checks what all arms share.
+func (j *Job) checkTraining(p *parts) (err error) {
+	t := &j.Training
+	if p.rule, err = findRule(t.Optimizer); err != nil {
+		return err
+	}
+	if p.loss, err = findLoss(t.Loss); err != nil {
+		return err
+	}
+	if t.Batch < 1 || t.Epochs < 1 {
+		return fmt.Errorf("batch %d, epochs %d: both must be at least 1", t.Batch, t.Epochs)
+	}
+	for what, when := range map[string]When{"test": t.EvaluateTest, "validation": t.EvaluateValidation} {
+		if when != "" && when != EveryEpoch && when != LastEpoch && when != Never {
+			return fmt.Errorf("evaluation of %s data at %q; known: %q, %q, %q", what, when, EveryEpoch, LastEpoch, Never)
+		}
+	}
+	return t.LearningRate.check()
+}
+
+// check refuses learning rates that are not positive numbers.
+func (s Schedule) check() error {
+	if !(single(s.Start) > 0) || math.IsInf(single(s.Start), 0) {
+		return fmt.Errorf("learning rate %g; it must be positive and finite in binary32", s.Start)
+	}
+	if len(s.AtEpochs) > 0 && (!(single(s.Multiply) > 0) || math.IsInf(single(s.Multiply), 0)) {
+		return fmt.Errorf("learning rate multiplied by %g at epochs %v; the factor must be positive and finite in binary32", s.Multiply, s.AtEpochs)
+	}
+	for _, at := range s.AtEpochs {
+		if at < 1 {
+			return fmt.Errorf("learning rate multiplied at epoch %d; 1 is the first epoch", at)
+		}
+	}
+	return nil
+}

@@ -1,0 +1,245 @@
+package trainer
+
+import (
+	"fmt"
+	"math"
+
+	"ulpine/quant"
+	"ulpine/quant/random"
+)
+
+// evaluationBatch is the least number of examples an evaluation computes at
+// once. It changes no bit: nothing in a forward pass depends on the batch.
+const evaluationBatch = 64
+
+// engine holds a network in training: layers, parameters, all memory. A step
+// allocates nothing.
+type engine[T quant.Element] struct {
+	net  *Network
+	arm  *Arm
+	wide bool
+
+	edges  []*edge[T] // edges[i] lies below layer i
+	layers []layer[T]
+	params []*param[T]
+
+	judge  *judge[T]
+	mover  *mover[T]
+	scaler *scaler
+	scores *Scores // answers of the training steps of this epoch
+
+	batch  int // of training
+	train  *split
+	seed   uint64
+	pass   pass
+	tally  tally
+	gather []float32 // inputs of a shuffled batch
+	labels []int32
+}
+
+// newEngine builds layers and memory. The arm has been checked.
+func newEngine[T quant.Element](job *Job, train *split, parts parts) (*engine[T], error) {
+	e := &engine[T]{
+		net: &job.Network, arm: &job.Arm, wide: parts.wide, train: train, seed: job.Seed,
+		batch:  min(job.Training.Batch, train.size()),
+		tally:  make(tally, len(job.Network.Layers)+1),
+		scaler: newScaler(job.Arm.LossScale),
+		scores: newScores(parts.classes),
+	}
+	capacity := max(e.batch, min(evaluationBatch, parts.largest))
+	if err := e.buildLayers(capacity); err != nil {
+		return nil, err
+	}
+	e.judge = newJudge[T](parts.loss, e.batch, parts.classes)
+	e.mover = newMover(parts.rule, job.Training.Optimizer, e.params)
+	e.gather = make([]float32, e.batch*train.per)
+	e.labels = make([]int32, e.batch)
+	e.pass = pass{seed: random.Derive(job.Seed, random.RoundingBits), phase: phaseTraining, tally: e.tally}
+	return e, nil
+}
+
+// buildLayers makes an edge above every layer, of the same memory where the
+// layer is a mere view, and collects the parameters.
+func (e *engine[T]) buildLayers(capacity int) error {
+	e.edges = []*edge[T]{newEdge[T](capacity, e.net.Input)}
+	for i := range e.net.Layers {
+		spec := &e.net.Layers[i]
+		k := findKind(spec.Kind)
+		below := e.edges[i]
+		above := below
+		if k.view {
+			above = below.reshaped(capacity, spec.Out)
+		} else {
+			above = newEdge[T](capacity, spec.Out)
+		}
+		b := &bench[T]{place: place{i, &e.arm.Layers[i]}, spec: spec, below: below, above: above, batch: capacity}
+		l, err := builderOf[T](k)(b)
+		if err != nil {
+			return fmt.Errorf("%s: %w", e.net.where(i), err)
+		}
+		e.edges, e.layers, e.params = append(e.edges, above), append(e.layers, l), append(e.params, l.params()...)
+	}
+	return nil
+}
+
+// start sets the parameters: R[update.master] of the values given, or of drawn
+// ones, then the working copies; both under step 0.
+func (e *engine[T]) start(given []Param) error {
+	if err := e.checkStart(given); err != nil {
+		return err
+	}
+	for i, q := range e.params {
+		values := make([]float64, len(q.master.data))
+		if given != nil {
+			copy(values, given[i].Values)
+		} else {
+			q.drawInitial(values, e.seed, e.net.gain(q.layer))
+		}
+		q.start(&e.pass, values)
+		q.refresh(&e.pass)
+	}
+	return nil
+}
+
+// checkStart compares starting parameters with the network's.
+func (e *engine[T]) checkStart(given []Param) error {
+	if given == nil {
+		return nil
+	}
+	if len(given) != len(e.params) {
+		return fmt.Errorf("start: %d parameters for a network that has %d; start from a run of the same network", len(given), len(e.params))
+	}
+	for i, q := range e.params {
+		if shapeText(given[i].Shape) != shapeText(q.shape) || len(given[i].Values) != len(q.master.data) {
+			return fmt.Errorf("start: parameter %s has shape %s, the network's %s has %s; start from a run of the same network", given[i].Name, shapeText(given[i].Shape), paramName(q.layer, q.name), shapeText(q.shape))
+		}
+	}
+	return nil
+}
+
+// record copies the parameters.
+func (e *engine[T]) record() []Param {
+	out := make([]Param, len(e.params))
+	for i, q := range e.params {
+		out[i] = q.record(e.wide)
+	}
+	return out
+}
+
+// forward walks up the network from inputs [samples, ...] and returns the
+// outputs.
+func (e *engine[T]) forward(p *pass, inputs []float32) []T {
+	bottom := e.edges[0]
+	all := place{layer: -1}
+	round(all, p, Input, opInput, bottom.values(p.samples), inputs, &e.arm.Input, p.first*uint64(bottom.per))
+	for _, l := range e.layers {
+		l.forward(p)
+	}
+	return e.outputs(p.samples)
+}
+
+func (e *engine[T]) outputs(n int) []T { return e.edges[len(e.edges)-1].values(n) }
+
+// fate is what became of a step.
+type fate uint8
+
+const (
+	stepTaken fate = iota
+	stepSkipped
+	lossNotFinite
+	masterNotFinite
+)
+
+// step trains on the examples numbered in batch and returns their mean loss.
+func (e *engine[T]) step(batch []int32, rate float64) (loss float64, what fate) {
+	p := &e.pass
+	p.step++
+	p.samples = len(batch)
+	y := e.forward(p, e.fetch(batch))
+	labels := e.labels[:len(batch)]
+	score(e.scores, y, labels)
+
+	sum, slopes := e.judge.errors(y, labels, e.scaler.s)
+	loss = sum / float64(len(batch))
+	if loss-loss != 0 {
+		return loss, lossNotFinite
+	}
+	before := e.tally.gradientEvents()
+	e.backward(p, slopes)
+	if e.scaler.set.Kind == DynamicScale && (e.tally.gradientEvents() != before || e.gradientNotFinite()) {
+		e.scaler.skip()
+		return loss, stepSkipped
+	}
+	e.mover.move(p, rate, e.scaler.s)
+	e.scaler.taken()
+	if e.masterNotFinite() {
+		return loss, masterNotFinite
+	}
+	return loss, stepTaken
+}
+
+// fetch gathers inputs and labels of a batch.
+func (e *engine[T]) fetch(batch []int32) []float32 {
+	per := e.train.per
+	for i, n := range batch {
+		copy(e.gather[i*per:][:per], e.train.inputs[int(n)*per:])
+		e.labels[i] = e.train.labels[n]
+	}
+	return e.gather[:len(batch)*per]
+}
+
+// backward rounds the output error and walks down the network as far as there
+// are parameters.
+func (e *engine[T]) backward(p *pass, slopes []float64) {
+	top := e.edges[len(e.edges)-1]
+	round(place{layer: -1}, p, LossGradient, opLossGradient, top.gradients(p.samples), slopes, &e.arm.LossGradient, 0)
+	for i := len(e.layers) - 1; i >= 0; i-- {
+		below := e.net.propagates(i)
+		if !below && len(e.net.Layers[i].Params) == 0 {
+			return
+		}
+		e.layers[i].backward(p, below)
+	}
+}
+
+func (e *engine[T]) gradientNotFinite() bool {
+	for _, q := range e.params {
+		if notFinite(q.gradient.data) {
+			return true
+		}
+	}
+	return false
+}
+
+func (e *engine[T]) masterNotFinite() bool {
+	for _, q := range e.params {
+		if notFinite(q.master.data) {
+			return true
+		}
+	}
+	return false
+}
+
+// evaluate computes mean loss, NaN for an empty set, and answers of a set with
+// the parameters as they stand. Random bits are addressed by epoch and by the
+// example's number in the set, so they depend on no batch; nothing is counted.
+func (e *engine[T]) evaluate(set *split, phase uint32, epoch int, scores *Scores) float64 {
+	scores.reset()
+	if set.size() == 0 {
+		return math.NaN()
+	}
+	p := pass{seed: e.pass.seed, step: uint32(epoch), phase: phase}
+	var sum float64
+	for first := 0; first < set.size(); first += e.capacity() {
+		p.samples = min(e.capacity(), set.size()-first)
+		p.first = uint64(first)
+		y := e.forward(&p, set.rows(first, p.samples))
+		labels := set.labels[first:][:p.samples]
+		sum = e.judge.losses(sum, y, labels)
+		score(scores, y, labels)
+	}
+	return sum / float64(set.size())
+}
+
+// capacity is the number of examples the edges hold.
+func (e *engine[T]) capacity() int { return len(e.edges[0].value.data) / e.edges[0].per }

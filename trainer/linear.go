@@ -1,0 +1,228 @@
+package trainer
+
+import "ulpine/quant"
+
+// linear is the arithmetic that dense layers and convolutions share: one product
+// of matrices a phase, each element C[i,j] = sum over k of A[i,k] B[k,j] a sum
+// of its own, the filter side on the left.
+//
+//	phase            i              j                     k
+//	forward          unit           sample, position      term of the kernel
+//	input gradient   input channel  sample, input pos.    unit, kernel position
+//	weight gradient  unit           term of the kernel    sample, position
+//	bias gradient    unit                                 sample, position
+//
+// A dense layer has one position and as many input channels as inputs.
+// Products come out with j running fastest; tensors keep whole examples
+// together, so a result is regrouped before it is rounded and stored.
+type linear[T quant.Element] struct {
+	place
+	below, above *edge[T]
+	weight, bias *param[T]
+
+	units, terms              int // rows of the weight, terms of one forward sum
+	channels, inner, outer    int // input channels, positions below and above
+	forwardMul, belowMul, mul *quant.Multiplier[T]
+
+	forwardProduct quant.Product[T]
+	belowProduct   quant.Product[T]
+	weightProduct  quant.Product[T]
+
+	// Operands of the gradient products; each is the stored tensor itself or,
+	// where the arm sets a point, scratch for its rounding.
+	belowGradient  []T
+	belowWeight    []T
+	weightGradient []T
+	activation     []T
+
+	regrouped []T // the gradient with j fastest; nil where positions are single
+	results   []T // products before regrouping, one phase at a time
+	rearrange func(dst, weight []T)
+}
+
+// bindings are what a kind of layer adds to the shared arithmetic: right-hand
+// operands, and the left-hand one of the input gradient.
+type bindings[T quant.Element] struct {
+	forward quant.Columns[T] // B[kernel term, (sample, position)]
+	below   quant.Columns[T] // B[(unit, kernel position), (sample, input position)]
+	weight  quant.Columns[T] // B[(sample, position), kernel term]
+	// belowLeft is A[input channel, (unit, kernel position)]; rearrange, if not
+	// nil, fills its memory from a weight tensor in every step.
+	belowLeft  quant.Matrix[T]
+	belowTerms int
+	rearrange  func(dst, weight []T)
+}
+
+// newLinear allocates everything. operands holds the four gradient operands that
+// bind needs to point its columns at.
+func newLinear[T quant.Element](b *bench[T], units, terms, channels, inner, outer int, bind func(l *linear[T]) bindings[T]) (*linear[T], error) {
+	l := &linear[T]{
+		place: b.place, below: b.below, above: b.above,
+		weight: newParam(b, 0), bias: newParam(b, 1),
+		units: units, terms: terms, channels: channels, inner: inner, outer: outer,
+	}
+	l.chooseOperands(b.batch)
+	if outer > 1 {
+		l.regrouped = make([]T, b.batch*units*outer)
+	}
+	l.results = make([]T, max(b.batch*units*outer, b.batch*channels*inner, units*terms))
+	if err := l.makeMultipliers(); err != nil {
+		return nil, err
+	}
+	l.makeProducts(bind(l))
+	return l, nil
+}
+
+// chooseOperands takes the stored tensors where the arm leaves a backward operand
+// unset, else memory for its rounding.
+func (l *linear[T]) chooseOperands(batch int) {
+	own := func(set *quant.Point, stored []T) []T {
+		if set == nil {
+			return stored
+		}
+		return make([]T, len(stored))
+	}
+	in, wg := &l.set.InputGradient, &l.set.WeightGradient
+	l.belowGradient = own(in.Gradient, l.above.gradient.data)
+	l.belowWeight = own(in.First, l.weight.working.data)
+	l.weightGradient = own(wg.Gradient, l.above.gradient.data)
+	l.activation = own(wg.First, l.below.value.data)
+}
+
+func (l *linear[T]) makeMultipliers() (err error) {
+	if l.forwardMul, err = multiplier[T](l.set.Forward); err != nil {
+		return err
+	}
+	if l.belowMul, err = multiplier[T](l.set.InputGradient.Sums); err != nil {
+		return err
+	}
+	l.mul, err = multiplier[T](l.set.WeightGradient.Sums)
+	return err
+}
+
+// makeProducts builds the three products once: converting a matrix to an
+// interface in every step would allocate.
+func (l *linear[T]) makeProducts(b bindings[T]) {
+	l.rearrange = b.rearrange
+	l.forwardProduct = quant.Product[T]{
+		I: l.units, K: l.terms,
+		A:    quant.Matrix[T]{Data: l.weight.working.data, Row: l.terms, Col: 1},
+		B:    b.forward,
+		C:    l.results,
+		Bias: l.bias.working.data,
+	}
+	l.belowProduct = quant.Product[T]{I: l.channels, K: b.belowTerms, A: b.belowLeft, B: b.below, C: l.results}
+	l.weightProduct = quant.Product[T]{I: l.units, J: l.terms, B: b.weight, C: l.results}
+}
+
+func (l *linear[T]) params() []*param[T] { return []*param[T]{l.weight, l.bias} }
+
+// forward computes y = R[activation](sum over k of weight x, then + bias).
+func (l *linear[T]) forward(p *pass) {
+	columns := p.samples * l.outer
+	q := &l.forwardProduct
+	q.J, q.C, q.FirstJ = columns, l.results[:l.units*columns], p.first*uint64(l.outer)
+	q.Terms, q.Sums = l.streams(p, opForwardProduct), l.streams(p, opForwardSum)
+	l.forwardMul.Mul(*q, l.counts(p, ForwardProduct), l.counts(p, ForwardSum))
+
+	y := l.above.values(p.samples)
+	groupByExample(y, q.C, p.samples, l.units, l.outer)
+	round(l.place, p, ForwardActivation, opActivation, y, y, &l.set.Activation, p.first*uint64(l.above.per))
+}
+
+func (l *linear[T]) backward(p *pass, below bool) {
+	l.weightBackward(p)
+	if below {
+		l.inputBackward(p)
+	}
+}
+
+// weightBackward computes the gradients of weight and bias. The bias sums the
+// same operand, gradient as the weight's product sees it, without products.
+func (l *linear[T]) weightBackward(p *pass) {
+	n := p.samples
+	set := &l.set.WeightGradient
+	gradient := l.weightGradient[:n*l.above.per]
+	if set.Gradient != nil {
+		round(l.place, p, WeightGradientGradient, opWeightOperand, gradient, l.above.gradients(n), set.Gradient, 0)
+	}
+	if set.First != nil {
+		x := l.below.values(n)
+		round(l.place, p, WeightGradientActivation, opActivationAgain, l.activation[:len(x)], x, set.First, 0)
+	}
+	left := quant.Matrix[T]{Data: gradient, Row: 1, Col: l.units}
+	if l.outer > 1 {
+		groupByUnit(l.regrouped, gradient, n, l.units, l.outer)
+		left = quant.Matrix[T]{Data: l.regrouped, Row: n * l.outer, Col: 1}
+	}
+	l.weightSums(p, left, n*l.outer)
+}
+
+// weightSums forms the two sums over the mini-batch and stores their results.
+func (l *linear[T]) weightSums(p *pass, left quant.Matrix[T], terms int) {
+	set := &l.set.WeightGradient
+	products, sums := l.counts(p, WeightGradientProduct), l.counts(p, WeightGradientSum)
+	q := &l.weightProduct
+	q.K, q.A, q.C = terms, left, l.results[:l.units*l.terms]
+	q.Terms, q.Sums = l.streams(p, opWeightProduct.of(0)), l.streams(p, opWeightSum.of(0))
+	l.mul.Mul(*q, products, sums)
+	round(l.place, p, WeightGradientResult, opWeightResult.of(0), l.weight.gradient.data, q.C, &set.Result, 0)
+
+	db := l.results[:l.units]
+	l.mul.SumRows(db, left, l.units, terms, l.streams(p, opWeightSum.of(1)), sums)
+	round(l.place, p, WeightGradientResult, opWeightResult.of(1), l.bias.gradient.data, db, &set.Result, 0)
+}
+
+// inputBackward computes the gradient of the edge below.
+func (l *linear[T]) inputBackward(p *pass) {
+	n := p.samples
+	set := &l.set.InputGradient
+	if set.Gradient != nil {
+		g := l.above.gradients(n)
+		round(l.place, p, InputGradientGradient, opInputOperand, l.belowGradient[:len(g)], g, set.Gradient, 0)
+	}
+	if set.First != nil {
+		round(l.place, p, InputGradientWeight, opWeightAgain.of(0), l.belowWeight, l.weight.master.data, set.First, 0)
+	}
+	q := &l.belowProduct
+	if l.rearrange != nil {
+		l.rearrange(q.A.Data, l.belowWeight)
+	}
+	columns := n * l.inner
+	q.J, q.C = columns, l.results[:l.channels*columns]
+	q.Terms, q.Sums = l.streams(p, opInputProduct), l.streams(p, opInputSum)
+	l.belowMul.Mul(*q, l.counts(p, InputGradientProduct), l.counts(p, InputGradientSum))
+
+	dx := l.below.gradients(n)
+	groupByExample(dx, q.C, n, l.channels, l.inner)
+	round(l.place, p, InputGradientResult, opInputResult, dx, dx, &set.Result, 0)
+}
+
+// groupByExample copies [unit][sample][position] to [sample][unit][position].
+func groupByExample[T quant.Element](dst, src []T, samples, units, positions int) {
+	if positions == 1 {
+		transpose(dst, src, units, samples)
+		return
+	}
+	for u := range units {
+		for n := range samples {
+			from := (u*samples + n) * positions
+			copy(dst[(n*units+u)*positions:][:positions], src[from:from+positions])
+		}
+	}
+}
+
+// groupByUnit copies [sample][unit][position] to [unit][sample][position].
+func groupByUnit[T quant.Element](dst, src []T, samples, units, positions int) {
+	groupByExample(dst, src, units, samples, positions)
+}
+
+// transpose copies [rows][columns] to [columns][rows].
+func transpose[T quant.Element](dst, src []T, rows, columns int) {
+	for r := range rows {
+		row := src[r*columns:][:columns]
+		for c, v := range row {
+			dst[c*rows+r] = v
+		}
+	}
+}

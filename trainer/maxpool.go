@@ -1,0 +1,97 @@
+package trainer
+
+import "ulpine/quant"
+
+// maxPoolKind takes the largest input of each window, the first in row-major
+// order among equals (+0 and -0 are equal), NaN if there is one. y =
+// R[activation](largest). The gradient goes back to the chosen input. Where
+// windows do not overlap nothing is computed with it and it is not rounded
+// again; where they do, an input's gradient is the sum of those of the windows
+// that chose it, in ascending order of outputs, at the input gradient's sum
+// point, then R[input_gradient.result].
+var maxPoolKind = kind{
+	name: "maxpool", usage: "maxpool size=2 stride=2", parse: parseMaxPool,
+	build32: newMaxPool[float32], build64: newMaxPool[float64],
+}
+
+func parseMaxPool(o *options, s *Spec) error {
+	s.Points = []PointID{ForwardActivation}
+	return parsePool(o, s)
+}
+
+type maxPool[T quant.Element] struct {
+	place
+	below, above *edge[T]
+	g            window
+	choice       []int32    // per output: the chosen position within its channel
+	overlap      *summer[T] // nil: windows do not overlap
+}
+
+func newMaxPool[T quant.Element](b *bench[T]) (layer[T], error) {
+	l := &maxPool[T]{
+		place: b.place, below: b.below, above: b.above, g: b.spec.window,
+		choice: make([]int32, len(b.above.value.data)),
+	}
+	if !l.g.overlaps() {
+		return l, nil
+	}
+	columns := &covering[T]{dy: b.above.gradient.data, choice: l.choice, g: l.g.perChannel()}
+	var err error
+	l.overlap, err = newSummer[T](b.set.InputGradient.Sums, l.g.covers(), columns)
+	if err != nil {
+		return nil, err
+	}
+	return l, nil
+}
+
+func (l *maxPool[T]) forward(p *pass) {
+	g := &l.g
+	x, y := l.below.values(p.samples), l.above.values(p.samples)
+	for plane := range p.samples * g.c {
+		in := x[plane*g.inner():][:g.inner()]
+		for o := range g.outer() {
+			at := largest(in, g, o/g.ow*g.sh, o%g.ow*g.sw)
+			out := plane*g.outer() + o
+			l.choice[out] = int32(at)
+			y[out] = in[at]
+		}
+	}
+	round(l.place, p, ForwardActivation, opActivation, y, y, &l.set.Activation, p.first*uint64(l.above.per))
+}
+
+// largest is the position of the choice of the window at row top, column left.
+func largest[T quant.Element](in []T, g *window, top, left int) int {
+	best := top*g.w + left
+	for r := range g.kh {
+		row := (top+r)*g.w + left
+		for c := range g.kw {
+			v, b := in[row+c], in[best]
+			if b != b {
+				return best // a NaN is never left again
+			}
+			if v > b || v != v {
+				best = row + c
+			}
+		}
+	}
+	return best
+}
+
+func (l *maxPool[T]) backward(p *pass, below bool) {
+	if !below {
+		return
+	}
+	dy, dx := l.above.gradients(p.samples), l.below.gradients(p.samples)
+	if l.overlap != nil {
+		l.overlap.sum(dx, 0, l.streams(p, opInputSum), l.counts(p, InputGradientSum))
+		round(l.place, p, InputGradientResult, opInputResult, dx, dx, &l.set.InputGradient.Result, 0)
+		return
+	}
+	clear(dx)
+	inner, outer := l.g.inner(), l.g.outer()
+	for out, v := range dy {
+		dx[out/outer*inner+int(l.choice[out])] = v
+	}
+}
+
+func (l *maxPool[T]) params() []*param[T] { return nil }

@@ -1,0 +1,62 @@
+package trainer
+
+import "ulpine/quant"
+
+// tally holds the counts of range events: entry i+1 is layer i, entry 0 the
+// input and the loss.
+type tally [][pointCount]quant.Counts
+
+// gradientEvents counts what a dynamic loss scale takes for a sign that S is too
+// large: overflows, saturations and NaNs where gradients live.
+func (t tally) gradientEvents() (events uint64) {
+	for layer := range t {
+		for _, id := range gradientPoints {
+			c := &t[layer][id]
+			events += c.Overflow + c.Saturated + c.NaN
+		}
+	}
+	return events
+}
+
+// pass is one walk through the network, forward and maybe backward: everything
+// that its layers have in common.
+type pass struct {
+	seed    uint64 // the replicate's rounding key
+	step    uint32 // training step, the first is 1; the epoch in an evaluation
+	phase   uint32
+	samples int    // examples in this batch
+	first   uint64 // number of the batch's first example in its data set; 0 in training
+	tally   tally  // nil in an evaluation: only training is counted
+}
+
+// draws addresses the random words of an operation of a layer.
+func (p *pass) draws(layer int, o operation) quant.Draws {
+	return quant.Draws{Seed: p.seed, Step: p.step, Site: site(layer, o), Phase: p.phase}
+}
+
+// place is a layer's position in the network and its arithmetic: what turns a
+// pass into draws and counts.
+type place struct {
+	layer int
+	set   *Arithmetic
+}
+
+func (pl place) draws(p *pass, o operation) quant.Draws { return p.draws(pl.layer, o) }
+
+func (pl place) streams(p *pass, o operation) quant.Streams {
+	return streams(p.draws(pl.layer, o))
+}
+
+// counts is where the events of a point go; nil when they are not counted.
+func (pl place) counts(p *pass, id PointID) *quant.Counts {
+	if p.tally == nil {
+		return nil
+	}
+	return &p.tally[pl.layer+1][id]
+}
+
+// round is the one road by which a tensor becomes a stored tensor: dst =
+// R[point](src), element 0 being number first of the tensor.
+func round[D, S quant.Element](pl place, p *pass, id PointID, o operation, dst []D, src []S, point *quant.Point, first uint64) {
+	quant.RoundSlice(dst, src, point, pl.draws(p, o), first, pl.counts(p, id))
+}

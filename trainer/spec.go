@@ -1,0 +1,105 @@
+package trainer
+
+// Spec is a checked layer: its shapes, its parameters, and the lengths of its
+// sums, which a plan's reader must see before a format is chosen.
+type Spec struct {
+	Text string // as written
+	Name string // every option spelt out: "conv1d out=6 width=9 stride=2 pad=0"
+	Kind string
+	In   []int // shape of one example below
+	Out  []int // shape of one example above
+
+	Params []ParamSpec
+	Sums   Lengths
+	MACs   Work
+	Points []PointID // the rounding points this layer computes with
+
+	window window // geometry of convolutions and pools
+}
+
+// ParamSpec is a parameter's name ("weight", "bias") and shape, and how many
+// inputs one of its outputs sums over (0: starts at zero).
+type ParamSpec struct {
+	Name  string
+	Shape []int
+	FanIn int
+}
+
+// Lengths are numbers of terms of one sum, padding included; 0 where the layer
+// forms no such sum.
+type Lengths struct {
+	Forward       int
+	InputGradient int
+	// WeightGradient and BiasGradient count terms an example: the sums run over
+	// the whole mini-batch.
+	WeightGradient, BiasGradient int
+}
+
+// Work is a number of multiply-adds (in pools: additions) for one example,
+// padding included, because an emulated padded term costs what any other costs.
+type Work struct {
+	Forward, InputGradient, WeightGradient uint64
+}
+
+// Network is a checked list of layers.
+type Network struct {
+	Input  []int // shape of one example
+	Layers []Spec
+}
+
+// Outputs is the number of values the last layer yields for one example: the
+// number of classes.
+func (n *Network) Outputs() int {
+	if len(n.Layers) == 0 {
+		return volume(n.Input)
+	}
+	return volume(n.Layers[len(n.Layers)-1].Out)
+}
+
+// Parameters is the number of trained values.
+func (n *Network) Parameters() (count int) {
+	for i := range n.Layers {
+		for _, p := range n.Layers[i].Params {
+			count += volume(p.Shape)
+		}
+	}
+	return count
+}
+
+// propagates reports whether layer i forms an input gradient: only if a layer
+// below it has parameters to train.
+func (n *Network) propagates(i int) bool {
+	for j := range i {
+		if len(n.Layers[j].Params) > 0 {
+			return true
+		}
+	}
+	return false
+}
+
+// PointsOf lists the rounding points that layer i computes with where it stands.
+func (n *Network) PointsOf(i int) []PointID {
+	var used []PointID
+	for _, id := range n.Layers[i].Points {
+		if !id.inputGradient() || n.propagates(i) {
+			used = append(used, id)
+		}
+	}
+	return used
+}
+
+// gain is the factor in front of 1/fan-in in the variance of layer i's initial
+// weights: 2 where a ReLU follows before the next weights, because it halves the
+// second moment of what passes (He et al., Delving deep into rectifiers, ICCV
+// 2015, section 2.2), else 1.
+func (n *Network) gain(i int) float64 {
+	for _, above := range n.Layers[i+1:] {
+		if len(above.Params) > 0 {
+			break
+		}
+		if above.Kind == reluKind.name {
+			return 2
+		}
+	}
+	return 1
+}
