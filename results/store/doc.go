@@ -1,0 +1,55 @@
+// Package store keeps runs and claims in one bbolt file. It is the only package
+// that knows bbolt.
+//
+// # What is in the file
+//
+// The file holds six buckets at its root; all records are CBOR (RFC 8949, core
+// deterministic encoding) with integer keys, so that a field may be renamed but
+// its number never reused.
+//
+//	ulpine    "version": the version of this layout
+//	runs      key (32 bytes)                        -> summary of the run
+//	parts     key, part (3 bytes), piece (4 bytes)  -> at most 61,312 bytes of the part
+//	marks     key                                   -> who started this run, and when
+//	studies   study (32 bytes)                      -> title, claim as fixed, time
+//	index     study, replicate (8 bytes), slug      -> key and place of the arm in the plan
+//
+// Integers inside bucket keys are big-endian, so that bbolt's byte order is
+// their order. Parts of a run are its record (R), the losses of its steps (S)
+// and its initial (I) and final (F) tensors; numbers among them are
+// little-endian as in the digest. Values stay below 64 kB because bbolt keeps
+// each in one run of pages, which it copies whole on every change nearby.
+//
+// # Names, keys and studies
+//
+// A run is stored once under its key, which says what was asked for. What a run
+// is called (arm/replicate) belongs to a study: two arms with the same
+// arithmetic, and two plans that share an arm, point to one run. The caller
+// says what identifies a study; the store only keeps its claim and its names.
+//
+// # The claim
+//
+// Fix writes a study's claim, its SHA-256 and the time before the first run; a
+// second Fix of the same study leaves them as they are. Claim returns what was
+// fixed and says how the claim of today differs. A study that finds runs of its
+// arms in the store already (run for another study) is told how many, and
+// which other claims were fixed over them.
+//
+// # States
+//
+// Begin marks a run before it starts and Put takes the mark away together with
+// storing the run. A mark that this Store wrote reads *in flight*, one left over
+// by a process that has gone reads *broken off*. The store is held by one
+// process at a time, so there is no third case.
+//
+// # Safety
+//
+// All writing is done by one goroutine, which commits whatever has queued up in
+// one transaction: the cost of a commit is its two waits for the disk, whatever
+// its size. A commit that returned is on disk; a process that dies loses the
+// runs in flight and nothing else. Open looks at the file's own index before it
+// hands it to bbolt, which would panic on a file that was cut short, and turns
+// any panic or memory fault of bbolt into ErrDamaged. Get recomputes the digest
+// of what it read. A store must lie on a local disk: network file systems may
+// neither lock nor map it reliably.
+package store
