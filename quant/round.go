@@ -139,7 +139,10 @@ func (p *Point) Round(x Real, word uint32) (float64, Event) {
 	l := p.Format.Limits()
 	switch {
 	case !x.Neg && v > l.Max, x.Neg && v > -l.Lowest:
-		return p.beyond(x, away, l)
+		if p.policy() == Wrap {
+			return p.Format.(Wrapper).Wrap(x, away), Overflowed
+		}
+		return p.beyond(x.Neg, l)
 	case v == 0, l.Flush && v < l.MinNormal:
 		return p.zero(x.Neg), Underflowed
 	case x.Neg:
@@ -156,18 +159,15 @@ func (p *Point) zero(neg bool) float64 {
 	return 0
 }
 
-// beyond applies the overflow policy to a finite x whose rounding with unbounded
-// exponent lies beyond the largest finite value of its sign.
-func (p *Point) beyond(x Real, away bool, l Limits) (float64, Event) {
+// beyond applies the overflow policy, other than wrap, to a finite real whose
+// rounding with unbounded exponent lies beyond the largest finite value of its sign.
+func (p *Point) beyond(neg bool, l Limits) (float64, Event) {
 	policy := p.policy()
-	if policy == Wrap {
-		return p.Format.(Wrapper).Wrap(x, away), Overflowed
-	}
 	switch {
-	case policy == Saturate, p.Rounding.inward(x.Neg):
-		return l.extreme(x.Neg), Saturated
+	case policy == Saturate, p.Rounding.inward(neg):
+		return l.extreme(neg), Saturated
 	case policy == ToInfinity && l.HasInfinity:
-		return math.Inf(sign(x.Neg)), Overflowed
+		return math.Inf(sign(neg)), Overflowed
 	}
 	return nan64, Overflowed
 }
