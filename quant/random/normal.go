@@ -13,7 +13,7 @@ import (
 // of its own.
 func (d Draws) Uniform(n uint64) float64 {
 	w := d.block(n / 2)
-	i := n % 2 * 2
+	i := (n % 2) << 1
 	return uniform(w[i], w[i+1])
 }
 
@@ -28,7 +28,7 @@ func (d Draws) Uniform(n uint64) float64 {
 // draw lies beyond 8.58 in magnitude; a true normal variable does once in 10^17.
 func (d Draws) Normal(n uint64) float64 {
 	w := d.block(n / 2)
-	radius := math.Sqrt(-2 * elementary.Log(1-uniform(w[0], w[1])))
+	radius := math.Sqrt(float64(-2 * elementary.Log(1-uniform(w[0], w[1]))))
 	angle := float64(twoPi * uniform(w[2], w[3]))
 	if n%2 == 0 {
 		return float64(radius * elementary.Cos(angle))

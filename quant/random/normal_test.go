@@ -4,6 +4,8 @@ import (
 	"math"
 	"slices"
 	"testing"
+
+	"ulpine/quant/elementary/nofusion"
 )
 
 // Bounds below are mostly five standard deviations of the statistic; the
@@ -187,3 +189,11 @@ func BenchmarkNormal(b *testing.B) {
 }
 
 var sink float64
+
+// TestNoFusion reads the source of the draws.
+func TestNoFusion(t *testing.T) {
+	faults, products, err := nofusion.Check("normal.go")
+	if err != nil || len(faults) > 0 || products < 5 {
+		t.Errorf("%d products seen, faults %q, error %v", products, faults, err)
+	}
+}
