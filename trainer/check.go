@@ -38,6 +38,28 @@ func (j *Job) openSets(p *parts) (err error) {
 		return err
 	}
 	p.largest = max(p.train.size(), p.validation.size(), p.test.size())
+	return j.checkExtents(p.largest)
+}
+
+// Terms of a sum and columns of a product are numbered in the counters of random
+// words; these are the ends of the numbers.
+const (
+	termLimit   = 1 << 25
+	columnLimit = 1 << 32
+)
+
+// checkExtents refuses sums and data sets that run out of numbers.
+func (j *Job) checkExtents(largest int) error {
+	batch := min(j.Training.Batch, len(j.Train.Labels))
+	for i := range j.Network.Layers {
+		l := j.Network.describeLayer(i, batch)
+		if l.Sums.longest() >= termLimit {
+			return fmt.Errorf("%s: a sum of %d terms; fewer than %d can be numbered: use a smaller batch", j.Network.where(i), l.Sums.longest(), termLimit)
+		}
+		if widest := max(volume(l.In), volume(l.Out)); largest > columnLimit/widest {
+			return fmt.Errorf("%s: %d examples of %d values; fewer than %d values can be numbered: use fewer examples", j.Network.where(i), largest, widest, columnLimit)
+		}
+	}
 	return nil
 }
 

@@ -1,0 +1,141 @@
+// Package trainer trains small networks with emulated arithmetic: every value
+// that a training step computes passes a rounding point, and every rounding point
+// is set separately. Package quant does the arithmetic; this package says which
+// operation happens where, in which order, on which random bits. The rules below
+// determine every bit of an outcome: two programs that follow them agree.
+//
+// R[p](x) is the rounding of the exact real x at point p. Everything is binary64
+// unless a point says otherwise; no operation is fused except where a product is
+// said to be exact.
+//
+// # Rounding points
+//
+//	input                       an example entering the network
+//	forward.weight              the working copy of weights and biases
+//	forward.product .sum .outer inside the sums of the forward pass
+//	forward.activation          the output of a layer
+//	loss.gradient               the output error
+//	input_gradient.weight       operand weight; unset: the working copy
+//	input_gradient.gradient     operand gradient; unset: the gradient as stored
+//	input_gradient.product .sum .outer
+//	input_gradient.result       the gradient of the layer's input, as stored
+//	weight_gradient.activation  operand activation; unset: the layer's input as stored
+//	weight_gradient.gradient    operand gradient; unset: the gradient as stored
+//	weight_gradient.product .sum .outer
+//	weight_gradient.result      the gradients of weight and bias
+//	update.state .step .master  see Update
+//
+// A set operand is R of the stored tensor: of the master for a weight, of the
+// layer's input for an activation, of the result (or output error) for a
+// gradient. A bias is a parameter like a weight, at the same points. Every layer
+// that computes an output rounds it, ReLU and max-pool too; flatten computes
+// nothing. A gradient that passes a layer without arithmetic is not rounded
+// again. The lowest layer with parameters forms no input gradient.
+//
+// # Sums
+//
+// Every sum of products is one element of C[i,j] = sum over k of A[i,k] B[k,j],
+// the filter side on the left:
+//
+//	phase            i              j                      k, ascending
+//	forward          unit           sample, position       input channel, kernel row, kernel column
+//	input gradient   input channel  sample, input position unit, kernel row, kernel column
+//	weight gradient  unit           input channel, kernel  sample, output position
+//	                                row, kernel column
+//
+// In a dense layer every input is a channel of one position. k counts the full
+// enumeration; terms that meet padding, or fall between the strides, are skipped:
+// they add nothing and draw nothing. The bias is added to the finished forward
+// sum at outer, else sum. The gradient of a bias is a sum of its own over sample,
+// output position, of the same operand as the weight's gradient, without
+// products. The weight gradient runs over the whole mini-batch in one sum.
+//
+// Average pools, and overlapping pools in their input gradients, sum terms
+// without products; there j is the element's number in the result and i is 0. A
+// window's inputs ascend row by row; the windows over an input ascend by output,
+// and k counts them from the first that could reach it. See the layers' own
+// comments.
+//
+// # Loss
+//
+// The monitored loss of a step is the binary64 mean, over the examples in order,
+// of the losses of the rounded outputs; it never feeds training. The output error
+// is R[loss.gradient](((softmax - target)/B) S): quotient and product are rounded
+// to binary64, B is the number of examples in this batch (the last one of an
+// epoch may be short) and S the loss scale. Exponential and logarithm are package
+// elementary's, classes ascend.
+//
+// # Update
+//
+// g' = g/S, a binary64 quotient. Then, for every parameter, weight before bias,
+// from the lowest layer up:
+//
+//	u      = R[update.state](momentum v)        with momentum only
+//	v      = R[update.state](u + g')            with momentum only
+//	step   = R[update.step](rate v)             without momentum: of rate g'
+//	master = R[update.master](master - step)
+//	weight = R[forward.weight](master)          the working copy, once an update
+//
+// Products, sums and differences are exact before they are rounded. Learning
+// rate, its factor, momentum and loss scale are the binary32 numbers nearest to
+// their decimals; the learning rate of an epoch is the start times the factor,
+// one binary32 product for each fall so far. States start at +0.
+//
+// # Loss scale
+//
+// None: S = 1. Fixed: S is what it is. Dynamic: if in a step an overflow, a
+// saturation or a NaN is counted at loss.gradient or at any point of the gradient
+// phases but their first operands, or a parameter's gradient is not finite, the
+// step changes no parameter and no state, and S is multiplied by CutBy; after
+// RaiseAfter clean steps running S is multiplied by RaiseBy and the count starts
+// over. S stays a positive finite binary32 number: a change that would leave them
+// is not made.
+//
+// # Random words
+//
+// All words of a run come from keys derived from the replicate's seed alone, so
+// arms share them. A word's address is (element, step, site, phase). step counts
+// training steps from 1; the start (master, working copy) is step 0. site is
+// (layer index + 1) 256 + operation, 0 in place of layer index + 1 for the
+// network's input and output error; the operations are listed in points.go, rows
+// and columns of sums apart. phase is 0 in training, 1 in evaluations of the
+// validation set, 2 of the test set; step is then the epoch, the first is 1.
+// Element is the row-major number in the tensor [batch, shape...] or in the
+// parameter; in an evaluation the batch is the whole set, so that no word
+// depends on how the set is cut. Rows of sums count i, columns j, likewise over
+// the whole set.
+//
+// Initial weights are normal with mean 0 and variance gain/fan-in, drawn in
+// binary64: word stream of weights, step 0, the site of the parameter's working
+// copy, element by element. gain is 2 where a ReLU follows before the next layer
+// with weights, else 1. Biases start at zero. Then master = R[update.master] and
+// the working copy is made. A shuffled epoch is a Fisher-Yates permutation of its
+// own; see shuffle.
+//
+// # Scores
+//
+// The answer is the lowest index of the largest output; an example with a NaN
+// output is wrong and has no answer; shared largest outputs are counted as ties.
+// An epoch's training loss is the mean of its steps' losses weighted by batch
+// size; its training accuracy is taken from the same outputs.
+//
+// A run has diverged when a step's loss or, after an update, a master is not
+// finite; when the loss of an epoch is over 3 times the first step's for 2 epochs
+// running; or when 10 steps running were skipped. It stops there, the sets due
+// after the last epoch are evaluated, and it is scored as it stands. A run that
+// did not diverge has stalled when its last training loss is over 95 % of the
+// entropy of the training labels, the least loss of a predictor that ignores its
+// input.
+//
+// # Counters
+//
+// Range events are counted at every point over all training steps, skipped ones
+// included; evaluations are not counted. Additions at an outer point count with
+// the sum they belong to; the gradient of a bias with weight_gradient.sum.
+//
+// # Memory
+//
+// Tensors are float32 where every value of every point fits binary32, else
+// float64. The choice is a matter of memory: it changes no bit. A step allocates
+// nothing.
+package trainer
