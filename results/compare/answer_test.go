@@ -1,0 +1,163 @@
+package compare
+
+import (
+	"math"
+	"testing"
+
+	"ulpine/results"
+)
+
+// settings are those of an arm that rounds update.master in its own way.
+func settings(master string) []results.Setting {
+	return []results.Setting{
+		{Layer: -1, Point: "input", Rounding: "nearest-even"},
+		{Layer: 0, Point: "forward.product", Rounding: "exact"},
+		{Layer: 0, Point: "forward.sum", Rounding: "nearest-even"},
+		{Layer: 0, Point: "update.master", Rounding: master},
+		{Layer: 2, Point: "update.master", Rounding: master},
+		{Layer: 2, Point: "weight_gradient.activation", Rounding: "reused"},
+	}
+}
+
+var (
+	armA = results.Arm{Name: "bf16 nearest", Slug: "a", Settings: settings("nearest-even")}
+	armB = results.Arm{Name: "bf16 stochastic update", Slug: "b", Settings: settings("stochastic r=16 truncated")}
+	armC = results.Arm{Name: "fp16 nearest, fp16 sums", Slug: "c", Settings: settings("toward-zero")}
+)
+
+func compared(slug string, v results.Verdict, n int) results.Comparison {
+	return results.Comparison{
+		Arm: slug, Against: "baseline", Metric: "test accuracy", Margin: 0.005, Confidence: 0.95,
+		N: n, Planned: n, Mean: 0.0812345, SD: 0.01, Low: 0.07, High: 0.0924, Verdict: v,
+	}
+}
+
+func TestAnswer(t *testing.T) {
+	within := results.Verdict{Kind: results.Within}
+	worse := results.Verdict{Kind: results.Worse}
+	diverged := results.Verdict{Kind: results.Diverged, Diverged: 2, Of: 10}
+	open := results.Verdict{Kind: results.Undecided, Pairs: 34}
+	arms := []results.Arm{{Name: "baseline", Slug: "baseline", Baseline: true}, armA, armB, armC}
+	table := func(cs ...results.Comparison) results.Study { return results.Study{Arms: arms, Comparisons: cs} }
+	contrast := func(change func(*results.Comparison)) results.Study {
+		c := compared("b", within, 10)
+		c.Against, c.Headline = "a", true
+		change(&c)
+		return results.Study{Arms: arms, Contrasts: []results.Comparison{c}}
+	}
+	partly := compared("a", results.Verdict{Kind: results.Undecided, Pairs: 10}, 6)
+	partly.Planned = 10
+	for _, c := range []struct {
+		name  string
+		study results.Study
+		want  string
+	}{
+		{"no arm", results.Study{Arms: arms[:1]}, "There is nothing to compare: the plan has no arm besides the baseline."},
+		{"no pair", table(compared("a", open, 0)), "There is no answer yet: no pair of runs is stored."},
+		{
+			"baseline diverged", results.Study{Arms: arms, Comparisons: []results.Comparison{compared("a", open, 10)}, BaselineProblem: "the baseline diverged in 1 of 10 replicates (103)"},
+			"No verdict can be given: the baseline diverged in 1 of 10 replicates (103).",
+		},
+		{
+			"the only arm within", table(compared("a", within, 10)),
+			"The only arm, bf16 nearest (nearest-even rounding; 10 pairs), stays within the margin of 0.005 in test accuracy.",
+		},
+		{
+			"the only arm worse", table(compared("a", worse, 10)),
+			"No arm is shown to stay within the margin of 0.005 in test accuracy; bf16 nearest (nearest-even rounding; 10 pairs) is worse than the margin.",
+		},
+		{
+			"all within", table(compared("a", within, 10), compared("b", within, 10)),
+			"All 2 arms stay within the margin of 0.005 in test accuracy: bf16 nearest (nearest-even rounding; 10 pairs) and " +
+				"bf16 stochastic update (stochastic rounding at update.master, nearest-even elsewhere; 10 pairs).",
+		},
+		{
+			"one of each", table(compared("a", worse, 10), compared("b", within, 10), compared("c", diverged, 10)),
+			"Of 3 arms, one stays within the margin of 0.005 in test accuracy: bf16 stochastic update (stochastic rounding at update.master, nearest-even elsewhere; 10 pairs); " +
+				"bf16 nearest (nearest-even rounding; 10 pairs) is worse than the margin; “fp16 nearest, fp16 sums” diverged in 2 of 10 replicates.",
+		},
+		{
+			"undecided", table(compared("a", open, 10), compared("b", results.Verdict{}, 10), compared("c", results.Verdict{}, 1)),
+			"No arm is shown to stay within the margin of 0.005 in test accuracy; bf16 nearest (needs about 34 pairs, has 10), " +
+				"bf16 stochastic update (after 10 pairs) and “fp16 nearest, fp16 sums” (one pair gives no interval) are undecided.",
+		},
+		{
+			"not finished", table(partly),
+			"No arm is shown to stay within the margin of 0.005 in test accuracy; bf16 nearest (6 of 10 planned pairs stored) is undecided.",
+		},
+		{
+			"contrast", contrast(func(*results.Comparison) {}),
+			"Against bf16 nearest, bf16 stochastic update is better by 0.0812 in test accuracy (95 % interval 0.07 to 0.0924, 10 pairs): within the margin of 0.005.",
+		},
+		{
+			"contrast worse", contrast(func(c *results.Comparison) { c.Mean, c.Low, c.High, c.Verdict = -0.05, -0.06, -0.04, worse }),
+			"Against bf16 nearest, bf16 stochastic update is worse by 0.05 in test accuracy (95 % interval -0.06 to -0.04, 10 pairs): worse than the margin of 0.005.",
+		},
+		{
+			"contrast equal", contrast(func(c *results.Comparison) { c.Mean, c.SD, c.Low, c.High = 0, 0, 0, 0 }),
+			"Against bf16 nearest, bf16 stochastic update does not differ in any pair in test accuracy (95 % interval 0 to 0, 10 pairs): within the margin of 0.005.",
+		},
+		{
+			"contrast of one pair", contrast(func(c *results.Comparison) {
+				c.N, c.Planned, c.SD, c.Low, c.High, c.Verdict = 1, 1, math.NaN(), math.NaN(), math.NaN(), results.Verdict{}
+			}),
+			"Against bf16 nearest, bf16 stochastic update is better by 0.0812 in test accuracy (1 pair, no interval): undecided (one pair gives no interval).",
+		},
+		{
+			"contrast diverged", contrast(func(c *results.Comparison) { c.Mean, c.Low, c.Verdict = math.NaN(), math.NaN(), diverged }),
+			"Against bf16 nearest, bf16 stochastic update differs by an amount that is no number in test accuracy (10 pairs, no interval): it diverged in 2 of 10 replicates.",
+		},
+		{
+			"contrast with a diverged arm", contrast(func(c *results.Comparison) { c.AgainstDiverged, c.Verdict = 1, results.Verdict{} }),
+			"Against bf16 nearest, bf16 stochastic update is better by 0.0812 in test accuracy (95 % interval 0.07 to 0.0924, 10 pairs): undecided, for the other arm diverged in 1 of 10 replicates.",
+		},
+	} {
+		if got := Answer(&c.study); got != c.want {
+			t.Errorf("%s\ngot  %s\nwant %s", c.name, got, c.want)
+		}
+	}
+	both := table(compared("a", within, 10))
+	c := contrast(func(*results.Comparison) {})
+	both.Contrasts = c.Contrasts
+	want := Answer(&results.Study{Arms: arms, Comparisons: both.Comparisons}) + " " + Answer(&c)
+	if got := Answer(&both); got != want {
+		t.Errorf("arms and contrast\ngot  %s\nwant %s", got, want)
+	}
+}
+
+func TestRounding(t *testing.T) {
+	many := results.Arm{}
+	for _, p := range []string{"input", "forward.weight", "forward.activation", "update.master"} {
+		many.Settings = append(many.Settings, results.Setting{Point: p, Rounding: "stochastic r=8 centred"})
+	}
+	mixed := results.Arm{Settings: append(settings("stochastic r=16 truncated"), results.Setting{Point: "update.step", Rounding: "to-odd"})}
+	exact := results.Arm{Settings: []results.Setting{{Point: "forward.product", Rounding: "exact"}}}
+	for want, a := range map[string]*results.Arm{
+		"nearest-even rounding": &armA,
+		"stochastic rounding at update.master, nearest-even elsewhere":  &armB,
+		"toward-zero rounding at update.master, nearest-even elsewhere": &armC,
+		"stochastic rounding": &many,
+		"stochastic rounding at update.master, to-odd at update.step, nearest-even elsewhere": &mixed,
+		"no rounding":         &exact,
+		"rounding as planned": nil,
+	} {
+		if got := Rounding(a); got != want {
+			t.Errorf("got %q, want %q", got, want)
+		}
+	}
+	many.Settings = append(many.Settings, results.Setting{Point: "forward.sum", Rounding: "nearest-even"})
+	if got, want := Rounding(&many), "stochastic rounding at 4 points, nearest-even elsewhere"; got != want {
+		t.Errorf("got %q, want %q", got, want)
+	}
+}
+
+func TestAmount(t *testing.T) {
+	for x, want := range map[float64]string{
+		0.005: "0.005", 0.0812345: "0.0812", -0.1: "-0.1", 1: "1", 95: "95", 99.9: "99.9", 12345: "12300",
+		0: "0", 1e-9: "1e-09", 0.00001: "0.00001", 2.0 / 3: "0.667",
+	} {
+		if got := amount(x); got != want {
+			t.Errorf("%v printed as %s, want %s", x, got, want)
+		}
+	}
+}

@@ -1,0 +1,108 @@
+package compare
+
+import (
+	"fmt"
+	"slices"
+
+	"ulpine/results"
+)
+
+// Decide gives verdicts to a family of comparisons, those of one table. It
+// returns them anew, with Holm-adjusted p-values, verdicts and further warnings;
+// the argument is left as it is.
+func Decide(family []results.Comparison) []results.Comparison {
+	decided := judge(family)
+	for i := range decided {
+		if c := &decided[i]; c.Verdict.Kind == results.Undecided {
+			c.Verdict.Pairs = settle(c, decided)
+			noteHolm(c, len(decided))
+		}
+	}
+	return decided
+}
+
+// judge is Decide without what is said about the undecided.
+func judge(family []results.Comparison) []results.Comparison {
+	decided := slices.Clone(family)
+	p := make([]float64, len(family))
+	worse := make([]float64, len(family))
+	for i, c := range family {
+		p[i], worse[i] = c.P, c.PWorse
+		if !sound(&c) { // in the family, but never to be rejected
+			p[i], worse[i] = 1, 1
+		}
+	}
+	p, worse = Holm(p), Holm(worse)
+	for i := range decided {
+		c := &decided[i]
+		c.Warnings = slices.Clone(c.Warnings)
+		c.Holm, c.HolmWorse = p[i], worse[i]
+		c.Verdict = verdict(c)
+	}
+	return decided
+}
+
+// tail is a = (1 - confidence)/2, the probability beyond either end of the
+// interval.
+func tail(c *results.Comparison) float64 { return (1 - c.Confidence) / 2 }
+
+// complete reports whether all pairs that the plan asks for are there.
+func complete(c *results.Comparison) bool { return c.N >= c.Planned && c.N > 0 }
+
+// sound reports whether a comparison may be decided by its differences.
+func sound(c *results.Comparison) bool {
+	return complete(c) && c.N >= 2 && c.Diverged == 0 && c.AgainstDiverged == 0 && allFinite(c.Differences)
+}
+
+// verdict is the answer without a number of pairs. Divergence counts from the
+// first one, even before all pairs are there: more pairs cannot undo it.
+func verdict(c *results.Comparison) results.Verdict {
+	switch {
+	case c.Diverged > 0:
+		return results.Verdict{Kind: results.Diverged, Diverged: c.Diverged, Of: c.N}
+	case !sound(c):
+		return results.Verdict{Kind: results.Undecided}
+	case c.Holm < tail(c):
+		return results.Verdict{Kind: results.Within}
+	case c.HolmWorse < tail(c):
+		return results.Verdict{Kind: results.Worse}
+	}
+	return results.Verdict{Kind: results.Undecided}
+}
+
+// settle is about how many pairs would settle an undecided comparison: those
+// that the plan still waits for, or else more. 0: cannot be said.
+func settle(c *results.Comparison, family []results.Comparison) int {
+	switch {
+	case !complete(c):
+		return c.Planned
+	case !sound(c):
+		return 0
+	}
+	wanted := results.Within
+	if c.Mean < -c.Margin {
+		wanted = results.Worse
+	}
+	left := len(family)
+	for i := range family {
+		if family[i].Verdict.Kind == wanted {
+			left--
+		}
+	}
+	return pairsNeeded(c.Mean, c.SD, c.N, c.Margin, tail(c)/float64(left))
+}
+
+// noteHolm explains an interval that clears the margin beside a verdict that
+// does not.
+func noteHolm(c *results.Comparison, arms int) {
+	if !sound(c) || c.P >= tail(c) && c.PWorse >= tail(c) {
+		return
+	}
+	p, adjusted := c.P, c.Holm
+	if c.PWorse < c.P {
+		p, adjusted = c.PWorse, c.HolmWorse
+	}
+	c.Warnings = append(c.Warnings, fmt.Sprintf(
+		"the interval alone clears the margin (p = %.2g), but not after correction for %d comparisons (p = %.2g, needed below %.2g)",
+		p, arms, adjusted, tail(c)))
+}
