@@ -5,8 +5,12 @@ import "fmt"
 // Multiplier forms products of matrices in one accumulation. It owns scratch
 // memory and serves one goroutine at a time.
 type Multiplier[T Element] struct {
-	acc Accumulate
-	ref reference[T]
+	ref       reference[T]
+	native    *native[T] // nil where the machine's own arithmetic does not serve
+	engine    *engine    // nil where a point has no quick rounding
+	sumEngine *engine    // engine for sums without products
+	slab      []T        // a block of columns
+	line      []T        // a row of terms
 }
 
 // Check reports what makes the accumulation unusable.
@@ -65,18 +69,21 @@ func NewMultiplier[T Element](acc Accumulate) (*Multiplier[T], error) {
 			return nil, fmt.Errorf("quant: sums of format %s do not fit tensors of float32: use float64", p.Format)
 		}
 	}
-	return &Multiplier[T]{acc: acc, ref: newReference[T](acc)}, nil
+	m := &Multiplier[T]{ref: newReference[T](acc), native: newNative[T](acc), engine: newEngine(acc)}
+	acc.Product = nil
+	m.sumEngine = newEngine(acc)
+	return m, nil
 }
 
 // Mul forms the product. products and sums may be nil.
 func (m *Multiplier[T]) Mul(p Product[T], products, sums *Counts) {
 	p.check()
-	m.ref.mul(&p, products, sums)
+	m.mul(&p, products, sums)
 }
 
 // SumRows forms sums of terms without products: bias gradients, statistics.
 // One sum for every row i of a rows x k strided matrix, in acc.Order; acc.Product
 // is not used. The random words are those of column 0.
 func (m *Multiplier[T]) SumRows(dst []T, terms Matrix[T], rows, k int, d Streams, sums *Counts) {
-	m.ref.sumRows(dst, terms, rows, k, d, sums)
+	m.sumRows(dst, terms, rows, k, d, sums)
 }

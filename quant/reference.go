@@ -34,16 +34,21 @@ var (
 
 // round returns R[p](x) for addition k, zero as +0.
 func (a *adder) round(p *Point, x Real, k int) float64 {
+	var w uint32
+	if p.Rounding.Mode == Stochastic {
+		w = a.draws.word(uint32(k), a.i, a.j)
+	}
+	return a.roundWord(p, x, w)
+}
+
+// roundWord is round with the random word given.
+func (a *adder) roundWord(p *Point, x Real, w uint32) float64 {
 	overflowed := false
 	if a.through32 {
 		v, _ := binary32Point.Round(x, 0)
 		y := Exactly(v)
 		overflowed = x.Kind == Finite && y.Kind == Infinite
 		x = y
-	}
-	var w uint32
-	if p.Rounding.Mode == Stochastic {
-		w = a.draws.word(uint32(k), a.i, a.j)
 	}
 	v, e := p.Round(x, w)
 	// The adder's own overflow is one of the point, whatever the policy made of
@@ -102,10 +107,11 @@ func (r *reference[T]) element(p *Product[T], column []T, i, j int, products, su
 	return T(s)
 }
 
-// sumRows forms one sum of stored terms a row.
-func (r *reference[T]) sumRows(dst []T, terms Matrix[T], rows, k int, d Streams, sums *Counts) {
-	for i := range rows {
-		a := adder{through32: r.acc.Through32, draws: d, i: uint32(i), counts: sums}
+// sumRows forms one sum of stored terms a row, rows i0, i0+1, ..., which terms
+// starts at.
+func (r *reference[T]) sumRows(dst []T, terms Matrix[T], k, i0 int, d Streams, sums *Counts) {
+	for i := range dst {
+		a := adder{through32: r.acc.Through32, draws: d, i: uint32(i0 + i), counts: sums}
 		s, _ := r.sum(&a, k, func(k int) (Real, bool) { return Exactly(float64(terms.At(i, k))), true })
 		dst[i] = T(s)
 	}
