@@ -44,7 +44,7 @@ func Describe(n Network, arm *Arm, t Training, sizes Sizes) Description {
 		forward += n.Layers[i].MACs.Forward
 		training += n.work(i)
 	}
-	d.Steps = t.Epochs * ((sizes.Train + batch - 1) / batch)
+	d.Steps = stepCount(t.Epochs, sizes.Train, batch)
 	evaluated := t.EvaluateValidation.times(t.Epochs)*sizes.Validation + t.EvaluateTest.times(t.Epochs)*sizes.Test
 	d.TotalMACs = training*uint64(t.Epochs)*uint64(sizes.Train) + forward*uint64(evaluated)
 	if arm != nil {
@@ -80,6 +80,9 @@ func (n *Network) work(i int) uint64 {
 	}
 	return total
 }
+
+// stepCount is the number of steps of a training; a short last batch is a step.
+func stepCount(epochs, examples, batch int) int { return epochs * ((examples + batch - 1) / batch) }
 
 // longest is the longest sum of a layer.
 func (l Lengths) longest() int {

@@ -83,7 +83,7 @@ func (c *scaler) taken() {
 		return
 	}
 	c.clean = 0
-	if raised := single(c.s * c.set.RaiseBy); !math.IsInf(raised, 0) {
+	if raised := single(float64(c.s * c.set.RaiseBy)); !math.IsInf(raised, 0) {
 		c.s = raised
 	}
 }
@@ -93,7 +93,7 @@ func (c *scaler) skip() {
 	c.row++
 	c.skipped++
 	c.clean = 0
-	if cut := single(c.s * c.set.CutBy); cut > 0 {
+	if cut := single(float64(c.s * c.set.CutBy)); cut > 0 {
 		c.s = cut
 	}
 }

@@ -112,4 +112,4 @@ func subtract[T, A, B quant.Element](p *pass, q *param[T], id PointID, o operati
 }
 
 // opStateNumber numbers operation n on state tensor s.
-func opStateNumber(s, n int) operation { return opState + operation(4*s+n) }
+func opStateNumber(s, n int) operation { return opState + operation(int(4*s)+n) }

@@ -90,7 +90,7 @@ type run[T quant.Element] struct {
 
 func newRun[T quant.Element](e *engine[T], job *Job, parts parts, w Watcher) *run[T] {
 	n := e.train.size()
-	total := job.Training.Epochs * ((n + e.batch - 1) / e.batch)
+	total := stepCount(job.Training.Epochs, n, e.batch)
 	r := &run[T]{engine: e, job: job, parts: parts, watch: w, order: make([]int32, n), total: total}
 	r.out.Steps = make([]float64, 0, total)
 	r.answers = [2]*Scores{newScores(parts.classes), newScores(parts.classes)}

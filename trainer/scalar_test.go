@@ -13,6 +13,7 @@ import (
 // any address, order or rounding shows.
 type oracle struct {
 	stored, inside quant.Point
+	operand        *quant.Point // of all backward operands; nil: unset
 	seed           uint64
 	step, phase    uint32
 }
@@ -38,16 +39,52 @@ func (o *oracle) insideSum(x quant.Real, layer, operation, k, i, j int) float64 
 	return y + 0 // zeros inside sums are +0
 }
 
-// sum adds products of pairs in turn; operation numbers are those of the
-// product's rows and the sum's rows. Without a product operation b is not used.
-func (o *oracle) sum(a, b []float64, layer, product, sum, i, j int) float64 {
-	var s float64
-	for k := range a {
-		term := quant.Exactly(a[k])
-		if product != 0 {
-			term = quant.Exactly(o.insideSum(quant.ExactProduct(a[k], b[k]), layer, product, k, i, j))
+// again is a backward operand: a matrix of stored rows, rounded once more where
+// the operand is set.
+func (o *oracle) again(m [][]float64, layer, operation int) [][]float64 {
+	if o.operand == nil {
+		return m
+	}
+	var out [][]float64
+	for r, row := range m {
+		var rounded []float64
+		for c, v := range row {
+			y, _ := o.operand.Round(quant.Exactly(v), o.draws(layer, operation).Word(uint64(r*len(row)+c)))
+			rounded = append(rounded, y)
 		}
-		s = o.insideSum(quant.Exactly(s).Add(term), layer, sum, k, i, j)
+		out = append(out, rounded)
+	}
+	return out
+}
+
+// term is one term of a sum, number k of the full enumeration.
+type term struct {
+	k    int
+	a, b float64
+}
+
+// terms numbers two rows in turn; b may be nil.
+func terms(a, b []float64) (list []term) {
+	for k := range a {
+		t := term{k: k, a: a[k]}
+		if b != nil {
+			t.b = b[k]
+		}
+		list = append(list, t)
+	}
+	return list
+}
+
+// sum adds products in turn; operation numbers are those of the product's rows
+// and the sum's rows. Without a product operation the terms are their a.
+func (o *oracle) sum(list []term, layer, product, sum, i, j int) float64 {
+	var s float64
+	for _, t := range list {
+		x := quant.Exactly(t.a)
+		if product != 0 {
+			x = quant.Exactly(o.insideSum(quant.ExactProduct(t.a, t.b), layer, product, t.k, i, j))
+		}
+		s = o.insideSum(quant.Exactly(s).Add(x), layer, sum, t.k, i, j)
 	}
 	return s
 }
@@ -84,7 +121,7 @@ func (d *scalarDense) forward(o *oracle, x [][]float64, first int) [][]float64 {
 		y[s] = make([]float64, units)
 		for u := range units {
 			k := d.inputs()
-			z := o.sum(d.working[u][:k], x[s], d.layer, 4, 6, u, first+s)
+			z := o.sum(terms(d.working[u][:k], x[s]), d.layer, 4, 6, u, first+s)
 			z = o.insideSum(quant.Exactly(z).Add(quant.Exactly(d.working[u][k])), d.layer, 6, k, u, first+s)
 			y[s][u] = o.store(quant.Exactly(z), d.layer, 3, (first+s)*units+u)
 		}
@@ -104,24 +141,43 @@ func (d *scalarDense) backward(o *oracle, x, dy [][]float64, below bool) (g, dx 
 	for u := range g {
 		g[u] = make([]float64, d.inputs()+1)
 	}
+	dyAgain, xAgain := o.again(dy, d.layer, 15), o.again(x, d.layer, 14)
 	d.each(func(u, i, block, n int) {
 		var s float64
 		if i == d.inputs() {
-			s = o.sum(columns(dy, u), nil, d.layer, 0, block+4, u, 0)
+			s = o.sum(terms(columns(dyAgain, u), nil), d.layer, 0, block+4, u, 0)
 		} else {
-			s = o.sum(columns(dy, u), columns(x, i), d.layer, block+2, block+4, u, i)
+			s = o.sum(terms(columns(dyAgain, u), columns(xAgain, i)), d.layer, block+2, block+4, u, i)
 		}
 		g[u][i] = o.store(quant.Exactly(s), d.layer, block+6, n)
 	})
-	for s := 0; below && s < len(dy); s++ {
+	if below {
+		dx = d.inputGradient(o, dy, columns)
+	}
+	return g, dx
+}
+
+// inputGradient uses the working copy, or, where the operand is set, its rounding
+// of the master.
+func (d *scalarDense) inputGradient(o *oracle, dy [][]float64, columns func([][]float64, int) []float64) (dx [][]float64) {
+	weights := d.working
+	if o.operand != nil {
+		weights = nil
+		for _, row := range d.w {
+			weights = append(weights, row[:d.inputs()])
+		}
+		weights = o.again(weights, d.layer, 64+1)
+	}
+	dy = o.again(dy, d.layer, 8)
+	for s := range dy {
 		row := make([]float64, d.inputs())
 		for i := range row {
-			z := o.sum(columns(d.working, i), dy[s], d.layer, 9, 11, i, s)
+			z := o.sum(terms(columns(weights, i), dy[s]), d.layer, 9, 11, i, s)
 			row[i] = o.store(quant.Exactly(z), d.layer, 13, s*d.inputs()+i)
 		}
 		dx = append(dx, row)
 	}
-	return g, dx
+	return dx
 }
 
 func (d *scalarDense) update(o *oracle, g [][]float64, momentum, rate, scale float64) {
@@ -205,17 +261,26 @@ func softmax(y []float64, label int32) (loss float64, slope []float64) {
 
 // TestStochasticStepIsItsScalarAccount recomputes an arm in which every stored
 // tensor is stochastic bfloat16 and every product and partial sum stochastic
-// E6M9, with a fixed loss scale, over an epoch with a short last batch and an
+// E6M9, with and without operands of
+// their own, with a fixed loss scale, over an epoch with a short last batch and an
 // evaluation, from the published addresses of its random words.
 func TestStochasticStepIsItsScalarAccount(t *testing.T) {
+	checkScalarAccount(t, nil)
+	operand := stochastic(t, "E5M4", 5)
+	checkScalarAccount(t, &operand)
+}
+
+func checkScalarAccount(t *testing.T, operand *quant.Point) {
 	const examples, batch, tests, scale = 5, 2, 3, 256
 	net := network(t, []int{3}, "dense 4", "relu", "dense 3")
-	o := &oracle{stored: stochastic(t, "bf16", 12), inside: stochastic(t, "E6M9", 7), seed: random.Derive(77, random.RoundingBits)}
+	o := &oracle{stored: stochastic(t, "bf16", 12), inside: stochastic(t, "E6M9", 7), operand: operand, seed: random.Derive(77, random.RoundingBits)}
 	arm := Everything(o.stored, 3, 1)
 	sums := quant.Accumulate{Product: &o.inside, Sum: o.inside}
 	for i := range arm.Layers {
 		l := &arm.Layers[i]
 		l.Forward, l.InputGradient.Sums, l.WeightGradient.Sums = sums, sums, sums
+		l.InputGradient.First, l.InputGradient.Gradient = operand, operand
+		l.WeightGradient.First, l.WeightGradient.Gradient = operand, operand
 	}
 	arm.LossScale = LossScale{Kind: FixedScale, Value: scale}
 	job := Job{

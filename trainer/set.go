@@ -2,7 +2,6 @@ package trainer
 
 import (
 	"fmt"
-	"math"
 
 	"gorgonia.org/tensor"
 )
@@ -56,21 +55,4 @@ func (s *split) check(classes int) error {
 		}
 	}
 	return nil
-}
-
-// constantLoss is the cross-entropy, in nats, of the best predictor that ignores
-// its input: the entropy of the labels.
-func (s *split) constantLoss(classes int, log func(float64) float64) float64 {
-	counts := make([]uint64, classes)
-	for _, label := range s.labels {
-		counts[label]++
-	}
-	var loss float64
-	for _, k := range counts {
-		if k > 0 {
-			share := float64(k) / float64(s.size())
-			loss -= float64(share * log(share))
-		}
-	}
-	return math.Abs(loss) // +0, not -0, for a single class
 }

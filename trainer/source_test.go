@@ -1,0 +1,21 @@
+package trainer
+
+import (
+	"testing"
+
+	"ulpine/quant/elementary/nofusion"
+)
+
+// TestNoFusion reads the sources that do arithmetic of their own, outside quant.
+func TestNoFusion(t *testing.T) {
+	faults, products, err := nofusion.Check("config.go", "crossentropy.go", "diverge.go", "lossscale.go", "optimizer.go", "param.go", "quotient.go", "run.go", "sgd.go")
+	if err != nil {
+		t.Fatal(err)
+	}
+	for _, f := range faults {
+		t.Error(f)
+	}
+	if products < 5 {
+		t.Errorf("only %d products seen: the test is blind", products)
+	}
+}
