@@ -21,8 +21,7 @@ func (f *Figure) WritePNG(w io.Writer, scale float64) error {
 	)
 	r := raster{c, f.H}
 	r.marks(f.Marks)
-	enc := png.Encoder{CompressionLevel: png.BestCompression}
-	return enc.Encode(w, c.Image())
+	return png.Encode(w, c.Image())
 }
 
 // raster paints marks on a canvas whose y axis points up.

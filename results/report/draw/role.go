@@ -57,7 +57,7 @@ var Light = Theme{
 	None: "none", Paper: "#fcfdfc", Ink: "#16232c", Soft: "#55636c", Faint: "#d3dade",
 	Base: "#87929a", Arm: "#0a5f78", Post: "#a35b00", Floor: "#6d7f52",
 	Sign: "#16232c", Exponent: "#d19a3a", Fraction: "#79b4c3",
-	Series1: "#0a5f78", Series2: "#c07a12", Series3: "#7a3d78", Series4: "#5d8f96",
+	Series1: "#0a5f78", Series2: "#c07a12", Series3: "#541f52", Series4: "#5d8f96",
 	Series5: "#8c3a1c", Series6: "#3b4a9c",
 }
 
@@ -66,7 +66,7 @@ var Dark = Theme{
 	None: "none", Paper: "#11191f", Ink: "#e4ebee", Soft: "#9fb0b9", Faint: "#33424b",
 	Base: "#7c8b94", Arm: "#6cc3d6", Post: "#e5a44c", Floor: "#a5b884",
 	Sign: "#e4ebee", Exponent: "#b98535", Fraction: "#3f7f92",
-	Series1: "#6cc3d6", Series2: "#e5a44c", Series3: "#cf9acd", Series4: "#8fb3a8",
+	Series1: "#6cc3d6", Series2: "#e5a44c", Series3: "#fbdcf2", Series4: "#8fb3a8",
 	Series5: "#e08a68", Series6: "#97a4f0",
 }
 

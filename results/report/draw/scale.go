@@ -63,14 +63,15 @@ func (s Log) At(v float64) float64 {
 	return Linear{math.Log10(s.Lo), math.Log10(s.Hi), s.P0, s.P1}.At(math.Log10(v))
 }
 
-// Ticks implements Scale: powers of ten, with 2 and 5 (and then all digits)
-// between them while there is room, round values where less than a decade shows.
+// Ticks implements Scale: powers of ten, with 3, with 2 and 5, or with more
+// digits between them while there is room; evenly spaced round values where
+// little more than one of those shows.
 func (s Log) Ticks(n int) []float64 {
 	if !(s.Lo > 0) || !(s.Hi > s.Lo) {
 		return []float64{s.Lo}
 	}
 	var best []float64
-	for _, digits := range [][]float64{{1}, {1, 3}, {1, 2, 5}, {1, 2, 3, 4, 5, 6, 7, 8, 9}} {
+	for _, digits := range [][]float64{{1}, {1, 3}, {1, 2, 5}, {1, 1.5, 2, 3, 5, 7}} {
 		t := s.digitTicks(digits)
 		if len(t) > n && len(best) > 0 {
 			break

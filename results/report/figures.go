@@ -1,0 +1,53 @@
+package report
+
+import (
+	"fmt"
+
+	"ulpine/results/report/draw"
+)
+
+// Widths of the two drawings of a figure, in pixels.
+const (
+	wide   = 860.0
+	narrow = 372.0
+)
+
+// figureTable lists the figures in the order of the page. A figure that has too
+// much to show for one drawing comes in several parts; one that has nothing to
+// show comes in none.
+var figureTable = []struct {
+	id       string
+	fileOnly bool // drawn as a file only; the page shows the same elsewhere
+	draw     func(v *view, width float64) []*draw.Figure
+}{
+	{"bit-strips", true, stripFigure},
+	{"margin-rail", false, comparisonRails},
+	{"contrast-rail", false, contrastRails},
+	{"training-loss", false, overview},
+	{"loss-by-arm", false, panels},
+	{"score-against-bits", false, front},
+	{"step-map", false, stepMap},
+	{"recall", false, recallLattice},
+}
+
+// drawFigure draws all parts of the figure of that id.
+func drawFigure(v *view, id string, width float64) []*draw.Figure {
+	for _, f := range figureTable {
+		if f.id == id {
+			parts := f.draw(v, width)
+			for i, p := range parts {
+				p.ID = partID(id, i)
+			}
+			return parts
+		}
+	}
+	panic("report: no figure " + id)
+}
+
+// partID names part i of a figure: "margin-rail", "margin-rail-2".
+func partID(id string, i int) string {
+	if i == 0 {
+		return id
+	}
+	return fmt.Sprintf("%s-%d", id, i+1)
+}

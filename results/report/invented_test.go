@@ -1,0 +1,263 @@
+package report
+
+import (
+	"crypto/sha256"
+	"fmt"
+	"math"
+	"math/rand/v2"
+	"strings"
+	"time"
+
+	"ulpine/results"
+)
+
+// inventedArm says how an invented arm behaves.
+type inventedArm struct {
+	name, slug string
+	format     string // of stored values; sums and update have their own
+	sum        string
+	update     string
+	rounding   string // of the update
+	bits       float64
+	shift      float64 // of the accuracy
+	floor      float64 // of the loss
+	diverges   int     // replicates that do
+	stalls     bool
+	verdict    results.Verdict
+}
+
+// formats are the widths the strips need: exponent, fraction.
+var formats = map[string][2]int{
+	"binary32": {8, 23}, "bfloat16": {8, 7}, "binary16": {5, 10}, "E4M3": {4, 3}, "E5M2": {5, 2}, "E6M9": {6, 9}, "Q3.12": {0, 12},
+}
+
+// inventedArms are the arms of the invented study, one for each verdict, with
+// names that try the page: long ones, markup, right-to-left, line ends.
+var inventedArms = []inventedArm{
+	{"FP32", "baseline", "binary32", "binary32", "binary32", "nearest-even", 32, 0, 0.19, 0, false, results.Verdict{}},
+	{"bf16 stochastic update", "bf16-stochastic-update", "bfloat16", "binary32", "bfloat16", "stochastic r=16 truncated", 16, 0.0004, 0.188, 0, false, results.Verdict{Kind: results.Within}},
+	{"bf16 nearest", "bf16-nearest", "bfloat16", "binary32", "bfloat16", "nearest-even", 16, -0.079, 0.42, 0, false, results.Verdict{Kind: results.Worse}},
+	{`<b>E6M9</b> & "wide" sums`, "e6m9-wide", "E6M9", "binary32", "binary32", "nearest-even", 18.4, -0.0031, 0.2, 0, false, results.Verdict{Kind: results.Undecided, Pairs: 46}},
+	{"fp16 nearest with sequential fp16 sums and a fixed loss scale of 1024 in every layer but the last", "fp16-all", "binary16", "binary16", "binary16", "nearest-even", 16.2, -0.02, 0.3, 3, false, results.Verdict{Kind: results.Diverged, Diverged: 3, Of: 10}},
+	{"E4M3 stored,\nE5M2 gradients", "e4m3", "E4M3", "bfloat16", "binary32", "nearest-even", 9.5, -0.012, 0.24, 0, false, results.Verdict{Kind: results.Worse}},
+	{"Q3.12 נקודה קבועה", "q3-12", "Q3.12", "Q3.12", "Q3.12", "stochastic r=8 centred", 16, -0.71, 1.6, 0, true, results.Verdict{Kind: results.Worse}},
+}
+
+const (
+	inventedReplicates = 10
+	inventedEpochs     = 15
+	inventedSteps      = 63 // an epoch
+	inventedClasses    = 5
+)
+
+// invented is a study with made-up numbers: no run stands behind any of them.
+func invented() *results.Study {
+	s := &results.Study{
+		Title: "16-bit training without a master copy (invented numbers)", Question: "May 16-bit weights replace the FP32 master copy?",
+		PlanFile: "experiments/plans/invented.toml", PlanText: "title = \"invented\"\n[claim]\nmargin = 0.005 # </script><script>alert(1)</script>\n",
+		Resolved: "every point of every arm\n\tforward.weight = bfloat16", Data: "pump-vibration, invented data: 2000 training, 500 validation, 2000 test examples",
+		Network: "conv1d out=6, relu, conv1d out=8, relu, dense 16, relu, dense 5: 1 973 parameters", Training: "SGD, momentum 0.9, rate 0.02, 15 epochs, batch 32",
+		LongestSum: 3840, Metric: "test accuracy", Margin: 0.005, Confidence: 0.95,
+		MarginFixed: time.Date(2026, 2, 3, 9, 30, 0, 0, time.UTC), Written: time.Date(2026, 2, 3, 11, 2, 0, 0, time.UTC),
+		NoiseLow: -0.0012, NoiseHigh: 0.0012, NoiseFrom: "three replicates in binary64 and with pairwise sums", Planned: inventedReplicates,
+		Classes:     []string{"sound", "unbalance", "misalignment", "bearing", "cavitation"},
+		Warnings:    []string{"arm fp16-all: the loss scale 1000 is no power of two"},
+		Cautions:    []string{"The data are invented; no pump was measured."},
+		Answer:      "Within 0.5 percentage points of FP32 over 10 pairs: bf16 stochastic update. Not within it: bf16 nearest, E4M3 stored, and Q3.12, which did not learn.",
+		StoreDigest: strings.Repeat("3fa9", 16), CodeVersion: "0.0.0-invented",
+		Rerun: []string{"go run ./cmd/ulpine run experiments/plans/invented.toml", "go run ./cmd/ulpine show bf16-nearest/103"},
+	}
+	base := make([]float64, inventedReplicates)
+	for k, a := range inventedArms {
+		s.Arms = append(s.Arms, inventArm(a, k == 0))
+		rng := rand.New(rand.NewPCG(uint64(k), 7))
+		scores := make([]float64, inventedReplicates)
+		for i := range scores {
+			r := inventRun(a, i, rng)
+			scores[i] = r.Epochs[len(r.Epochs)-1].TestMetric
+			s.Runs = append(s.Runs, r)
+		}
+		if k == 0 {
+			base = scores
+			continue
+		}
+		s.Comparisons = append(s.Comparisons, inventComparison(a, "baseline", base, scores))
+	}
+	s.Arms[2].Guilty = []string{"update.master"}
+	c := inventComparison(inventedArms[1], "bf16-nearest", lastScores(s, "bf16-nearest"), lastScores(s, inventedArms[1].slug))
+	c.Headline = true
+	s.Contrasts = []results.Comparison{c}
+	s.Comparisons[1].Warnings = []string{"skewness 1.4: the t interval is doubtful"}
+	return s
+}
+
+// lastScores are the test accuracies of an arm's runs.
+func lastScores(s *results.Study, slug string) []float64 {
+	var out []float64
+	for _, r := range s.Runs {
+		if r.Arm == slug {
+			out = append(out, r.Epochs[len(r.Epochs)-1].TestMetric)
+		}
+	}
+	return out
+}
+
+func inventArm(a inventedArm, baseline bool) results.Arm {
+	out := results.Arm{Name: a.name, Slug: a.slug, Baseline: baseline, Bits: a.bits, LossScale: "none", Summary: "storage = " + a.format}
+	if a.diverges > 0 {
+		out.LossScale = "fixed 1024"
+	}
+	set := func(layer int, name, point, format, rounding, order string) {
+		f := formats[format]
+		w := 1 + f[0] + f[1]
+		if format == "Q3.12" {
+			w = 16
+		}
+		out.Settings = append(out.Settings, results.Setting{
+			Layer: layer, Name: name, Point: point, Format: format, Exponent: f[0], Fraction: f[1], Bits: w,
+			Rounding: rounding, Order: order, Overflow: "to infinity",
+		})
+	}
+	set(-1, "input", "input", a.format, "nearest-even", "")
+	set(-1, "loss", "loss.gradient", a.format, "nearest-even", "")
+	for k, layer := range []string{"conv1d out=6", "conv1d out=8", "dense 16", "dense 5"} {
+		stored := a.format
+		if k == 3 && a.diverges > 0 {
+			stored = "binary32" // the last layer of one arm is wider
+		}
+		gradient := stored
+		if a.format == "E4M3" {
+			gradient = "E5M2"
+		}
+		for _, p := range []struct{ point, format string }{
+			{"forward.weight", stored}, {"forward.activation", stored}, {"input_gradient.weight", stored}, {"input_gradient.gradient", gradient},
+			{"input_gradient.result", gradient}, {"weight_gradient.activation", stored}, {"weight_gradient.gradient", gradient}, {"weight_gradient.result", gradient},
+		} {
+			set(2*k, layer, p.point, p.format, "nearest-even", "")
+		}
+		for _, phase := range []string{"forward", "input_gradient", "weight_gradient"} {
+			set(2*k, layer, phase+".product", "binary32", "nearest-even", "")
+			order := "sequential"
+			if a.format == "E6M9" {
+				order = "wide"
+			}
+			set(2*k, layer, phase+".sum", a.sum, "nearest-even", order)
+		}
+		for _, p := range []string{"update.state", "update.step", "update.master"} {
+			set(2*k, layer, p, a.update, a.rounding, "")
+		}
+	}
+	return out
+}
+
+func inventRun(a inventedArm, i int, rng *rand.Rand) results.Run {
+	r := results.Run{
+		Arm: a.slug, Replicate: uint64(100 + i), State: results.Stored, Classes: inventedClasses, CodeVersion: "0.0.0-invented", Host: "nowhere",
+		Started: time.Date(2026, 2, 3, 9, 31+i, 0, 0, time.UTC), Wall: time.Duration(1800+40*i) * time.Millisecond, Stalled: a.stalls,
+	}
+	r.Key = sha256.Sum256([]byte("key " + r.Name()))
+	r.Digest = sha256.Sum256([]byte(r.Name()))
+	skill := math.Exp(0.1 * rng.NormFloat64())
+	stop := inventedEpochs * inventedSteps
+	if i >= inventedReplicates-a.diverges {
+		stop = inventedSteps*(4+i%3) + 17
+		r.Diverged, r.DivergedStep = "NaN in the loss", stop
+	}
+	loss := func(t float64) float64 {
+		if a.stalls {
+			return 1.6 + 0.02*rng.NormFloat64()
+		}
+		return (a.floor + (1.6-a.floor)*math.Exp(-t/2.2)) * skill * math.Exp(0.15*rng.NormFloat64())
+	}
+	for n := range stop {
+		r.Steps = append(r.Steps, loss(float64(n)/inventedSteps))
+	}
+	if r.Diverged != "" {
+		r.Steps = append(r.Steps, math.NaN())
+	}
+	for e := range (stop + inventedSteps - 1) / inventedSteps {
+		t := float64(e + 1)
+		ep := results.Epoch{
+			TrainLoss: loss(t), TrainMetric: math.NaN(), ValidationLoss: math.NaN(), ValidationMetric: math.NaN(),
+			TestLoss: loss(t) * 1.25, TestMetric: 0.935 + 0.008*math.Log(1/skill) + a.shift + 0.002*rng.NormFloat64(), LossScale: 1,
+		}
+		if r.Diverged != "" {
+			ep.TestMetric = 0.2
+		}
+		r.Epochs = append(r.Epochs, ep)
+	}
+	inventCounts(&r, a, rng)
+	return r
+}
+
+func inventCounts(r *results.Run, a inventedArm, rng *rand.Rand) {
+	r.Counters = []results.PointCounts{{Layer: 0, Name: "conv1d out=6", Point: "forward.sum"}, {Layer: 6, Name: "dense 5", Point: "weight_gradient.result"}}
+	if a.format == "binary16" || a.format == "E4M3" {
+		r.Counters[0].Counts.Overflow = rng.Uint64N(40)
+		r.Counters[1].Counts = results.Counts{Underflow: 1000 + rng.Uint64N(250000), Saturated: rng.Uint64N(3)}
+	}
+	if r.Diverged != "" {
+		r.Counters[0].Counts.NaN = 17
+	}
+	r.Confusion = make([]uint64, inventedClasses*inventedClasses)
+	for t := range inventedClasses {
+		right := uint64(340 + 12*t)
+		if a.stalls {
+			right = 80
+		}
+		right -= rng.Uint64N(20)
+		r.Confusion[t*inventedClasses+t] = right
+		r.Confusion[t*inventedClasses+(t+1)%inventedClasses] = 400 - right
+	}
+}
+
+func inventComparison(a inventedArm, against string, base, scores []float64) results.Comparison {
+	c := results.Comparison{
+		Arm: a.slug, Against: against, Metric: "test accuracy", Margin: 0.005, Confidence: 0.95, N: len(scores), Planned: inventedReplicates,
+		BootLow: math.NaN(), BootHigh: math.NaN(), Skewness: 0.3, P: 0.0004, Holm: 0.0021, PWorse: 0.9, HolmWorse: 1, Verdict: a.verdict, Diverged: a.diverges,
+	}
+	if a.stalls {
+		c.Stalled = inventedReplicates
+	}
+	for i := range scores {
+		c.Replicates = append(c.Replicates, uint64(100+i))
+		c.Differences = append(c.Differences, scores[i]-base[i])
+	}
+	e := tInterval(c.Differences, c.Confidence)
+	c.Mean, c.Low, c.High = e.Mean, e.Low, e.High
+	c.SD = (e.High - e.Low) / 4.5 * math.Sqrt(float64(c.N)) // near enough for a made-up table
+	c.BootLow, c.BootHigh = e.Low*0.97, e.High*0.98
+	return c
+}
+
+// manyArms is a study of n arms, for layouts.
+func manyArms(n int) *results.Study {
+	s := invented()
+	s.Contrasts = nil
+	template := s.Runs
+	s.Arms, s.Comparisons, s.Runs = s.Arms[:1], nil, nil
+	for _, r := range template {
+		if r.Arm == "baseline" {
+			s.Runs = append(s.Runs, r)
+		}
+	}
+	base := append([]results.Run(nil), s.Runs...)
+	for k := range n {
+		a := inventedArms[1+k%(len(inventedArms)-1)]
+		a.slug = fmt.Sprintf("%s-%d", a.slug, k)
+		a.name = fmt.Sprintf("E%dM%d %s", 2+k%7, 1+k%20, strings.Repeat("long name ", k%9))
+		arm := inventArm(a, false)
+		arm.Bits = 4 + float64(k)*0.7
+		s.Arms = append(s.Arms, arm)
+		rng := rand.New(rand.NewPCG(uint64(k), 99))
+		var scores, from []float64
+		for i := range 3 {
+			r := inventRun(a, i, rng)
+			s.Runs = append(s.Runs, r)
+			scores = append(scores, r.Epochs[len(r.Epochs)-1].TestMetric)
+			from = append(from, base[i].Epochs[inventedEpochs-1].TestMetric)
+		}
+		s.Comparisons = append(s.Comparisons, inventComparison(a, "baseline", from, scores))
+	}
+	return s
+}

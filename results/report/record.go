@@ -1,0 +1,151 @@
+package report
+
+import (
+	"fmt"
+	"math"
+	"strconv"
+	"time"
+
+	"ulpine/results"
+)
+
+// runSection lists every run, the diverged ones included.
+func runSection(v *view) any {
+	t := tabular{
+		Caption: "All runs with their digests",
+		Columns: columns("Run", "state", "outcome", "#training loss", "#"+plain(v.Metric), "#steps skipped", "#seconds", "digest"),
+	}
+	diverged, stalled := 0, 0
+	for i := range v.Runs {
+		r := &v.Runs[i]
+		if r.Diverged != "" {
+			diverged++
+		}
+		if r.Stalled {
+			stalled++
+		}
+		t.Rows = append(t.Rows, v.runRow(r))
+	}
+	return struct {
+		Summary string
+		Table   tabular
+	}{
+		fmt.Sprintf("%s; %d diverged, %d stalled. A run that diverged stopped there and is scored as it stands: it counts as an outcome. The digest covers loss curve, counters and final weights.",
+			plural(len(v.Runs), "run"), diverged, stalled), t,
+	}
+}
+
+func (v *view) runRow(r *results.Run) []string {
+	loss, score, skipped := math.NaN(), math.NaN(), uint64(0)
+	if n := len(r.Epochs); n > 0 {
+		loss = r.Epochs[n-1].TrainLoss
+		for _, e := range r.Epochs {
+			skipped += e.Skipped
+		}
+	}
+	if v.words.known {
+		score = v.words.metric.Final(r)
+	}
+	return []string{
+		plain(r.Name()), stateWords(r), outcome(r), significant(loss, 4), v.words.value(score),
+		strconv.FormatUint(skipped, 10), seconds(r.Wall), fmt.Sprintf("%x", r.Digest[:]),
+	}
+}
+
+// stateWords is a run's state in the tool's words.
+func stateWords(r *results.Run) string {
+	switch {
+	case r.State == "":
+		return missing
+	case r.State == results.Failed:
+		return fmt.Sprintf("failed (%s)", plain(r.Cause))
+	}
+	return plain(string(r.State))
+}
+
+// outcome says whether a run diverged or stalled.
+func outcome(r *results.Run) string {
+	switch {
+	case r.Diverged != "":
+		return fmt.Sprintf("diverged in step %d: %s", r.DivergedStep, plain(r.Diverged))
+	case r.Stalled:
+		return "stalled"
+	case r.State == results.Stored:
+		return "trained"
+	}
+	return missing
+}
+
+func seconds(d time.Duration) string {
+	if d <= 0 {
+		return missing
+	}
+	return fixed(d.Seconds(), 1)
+}
+
+// planSection shows the plan as written and as resolved.
+func planSection(v *view) any {
+	data := struct {
+		Lead  string
+		Texts []fact
+	}{Lead: "The plan as its author wrote it, and every setting that follows from it."}
+	for _, f := range []fact{{"As written: " + plain(v.PlanFile), v.PlanText}, {"Resolved: every point of every arm", v.Resolved}} {
+		if text := plainLines(f.Text); text != "" {
+			data.Texts = append(data.Texts, fact{f.Head, text})
+		}
+	}
+	if len(data.Texts) == 0 {
+		data.Lead = "The study holds no text of its plan."
+	}
+	return data
+}
+
+func rerunSection(v *view) any {
+	data := struct{ Commands []string }{}
+	for _, c := range v.Rerun {
+		data.Commands = append(data.Commands, plain(c))
+	}
+	return data
+}
+
+// list is a list of lines, or words in its stead.
+type list struct {
+	Items   []string
+	Without string
+}
+
+func warningSection(v *view) any {
+	l := list{Without: "None."}
+	for _, w := range v.Warnings {
+		l.Items = append(l.Items, plain(w))
+	}
+	for _, cs := range [][]results.Comparison{v.Comparisons, v.Contrasts} {
+		for i := range cs {
+			for _, w := range cs[i].Warnings {
+				l.Items = append(l.Items, v.pairName(&cs[i])+": "+plain(w))
+			}
+		}
+	}
+	return l
+}
+
+// cautionSection says what this result does not show: what always holds, then
+// what the study adds.
+func cautionSection(v *view) any {
+	l := list{}
+	sum := "The lengths of the sums in this study were not recorded: nothing can be said about longer ones."
+	if n := v.LongestSum; n > 0 {
+		sum = fmt.Sprintf("The longest sum tested here has %s. Nothing is claimed for sums beyond four times that, %d terms: rounding errors grow with the length of a sum.", plural(n, "term"), 4*n)
+	}
+	l.Items = append(l.Items,
+		"Small networks tolerate more rounding than large ones, and their sums are shorter. What holds here need not hold for a larger network.",
+		sum,
+		"The scores are those of this data and this training. Rare inputs, drift of the data and faults of the hardware are untested.",
+		"This report is no approval for a safety-related use. Such a use is a matter of the functional-safety standard that applies to it and of qualified engineers; look at the recall by class and at the worst replicate, not at means alone.",
+		"Undecided does not mean the same: it means that these pairs cannot tell.",
+	)
+	for _, c := range v.Cautions {
+		l.Items = append(l.Items, plain(c))
+	}
+	return l
+}

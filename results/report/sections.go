@@ -1,0 +1,314 @@
+package report
+
+import (
+	"fmt"
+	"html/template"
+	"math"
+	"strconv"
+	"strings"
+
+	"ulpine/results"
+)
+
+// figureWith is a figure, the table of its numbers, and the words in its stead.
+type figureWith struct {
+	Figure  template.HTML
+	Caption string
+	Table   *tabular
+	Without string
+}
+
+func differenceSection(v *view) any {
+	caption := "Each row is an arm. Bar: " + percentage(v.Confidence) + " t interval of the mean paired difference, arm − baseline; the mark on it is the verdict's, at the mean; strokes below the bar: the replicates. " +
+		"An arm is within the margin when its whole bar, Holm-corrected, lies to the right of the post."
+	if v.NoiseHigh > v.NoiseLow {
+		caption += " Hatched: the noise floor, " + plain(v.NoiseFrom) + "."
+	}
+	return figureWith{Figure: figureHTML(v, "margin-rail", caption, false), Table: v.pairTable(v.Comparisons)}
+}
+
+// contrastSection is left out when the plan asks for no contrast.
+func contrastSection(v *view) any {
+	if len(v.Contrasts) == 0 {
+		return nil
+	}
+	caption := "Each row compares two arms, replicate by replicate: to the right of \"no difference\" the first one scores better. Each has its own margin."
+	return figureWith{Figure: figureHTML(v, "contrast-rail", caption, false), Table: v.pairTable(v.Contrasts)}
+}
+
+// pairTable lists every paired difference.
+func (v *view) pairTable(cs []results.Comparison) *tabular {
+	t := &tabular{Caption: "Paired differences, replicate by replicate" + commaUnit(v), Columns: columns("Pair", "#mean", "#interval", "#n", "differences, by replicate")}
+	for i := range cs {
+		c := &cs[i]
+		var each []string
+		for k, d := range c.Differences {
+			s := v.words.diff(d)
+			if k < len(c.Replicates) {
+				s = strconv.FormatUint(c.Replicates[k], 10) + ": " + s
+			}
+			each = append(each, s)
+		}
+		t.Rows = append(t.Rows, []string{v.pairName(c), v.words.diff(c.Mean), v.words.interval(c.Low, c.High), strconv.Itoa(c.N), strings.Join(each, ", ")})
+	}
+	if len(t.Rows) == 0 {
+		return nil
+	}
+	return t
+}
+
+func commaUnit(v *view) string {
+	if u := v.words.unitWords(); u != "" {
+		return ", in " + u
+	}
+	return ""
+}
+
+// armName is an arm for the page's switches.
+type armName struct{ Slug, Name string }
+
+func curveSection(v *view) any {
+	data := struct {
+		Overview, Panels template.HTML
+		Arms             []armName
+		Table            *tabular
+	}{
+		Overview: figureHTML(v, "training-loss", "Median training loss over the replicates of each arm, the mean of the step losses in each hundredth of the training. "+
+			"A replicate that diverged counts as infinitely high from there on; a broken mark shows where a median ends for it.", true),
+		Panels: figureHTML(v, "loss-by-arm", "One plot an arm, the baseline in grey, all on the same axes (logarithmic). Lines: medians over replicates; bands: between the quartiles. "+
+			"A broken mark at the top: a replicate diverged there; a band that reaches the top: so did at least a quarter of them. Solid: training; dashed: test; dotted: validation, where they were evaluated. The figures at the ends are the last values.", true),
+		Table: v.curveTable(),
+	}
+	for _, a := range v.arms {
+		if !a.Training.empty() {
+			data.Arms = append(data.Arms, armName{a.Slug, a.Label()})
+		}
+	}
+	return data
+}
+
+// curveTable is where the curves end.
+func (v *view) curveTable() *tabular {
+	t := &tabular{
+		Caption: "Last loss of each arm: median over replicates [quartiles], n",
+		Columns: columns("Arm", "#training", "#validation", "#test", "#diverged"),
+	}
+	for _, a := range v.arms {
+		t.Rows = append(t.Rows, []string{a.Label(), lastOf(&a.Training), lastOf(&a.Validation), lastOf(&a.Test), strconv.Itoa(a.Training.Diverged)})
+	}
+	return t
+}
+
+func lastOf(c *curve) string {
+	i := c.last()
+	if i < 0 {
+		return missing
+	}
+	high := significant(c.High[i], 3)
+	if math.IsInf(c.High[i], 1) {
+		high = "diverged"
+	}
+	return fmt.Sprintf("%s [%s, %s], n = %d", significant(c.Mid[i], 3), significant(c.Low[i], 3), high, c.N)
+}
+
+func frontSection(v *view) any {
+	caption := "Marks: mean " + plain(v.Metric) + " over replicates with its own " + percentage(v.Confidence) + " t interval (not the paired one, which is narrower and decides); arms of equal width stand side by side. " +
+		"Steps: the Pareto set, the arms that no arm of fewer bits equals. Bits are those of stored values, weighted by tensor sizes; the bits of sums are not in them."
+	if v.words.percent {
+		caption += " The upright axis is logarithmic in what is missing to 100 %."
+	}
+	t := &tabular{Caption: "Scores in numbers", Columns: columns("Arm", "#bits a value", "#mean with interval")}
+	for _, a := range v.arms {
+		t.Rows = append(t.Rows, []string{a.Label(), bits(a.Bits), v.scoreLine(a.Score)})
+	}
+	return figureWith{
+		Figure: figureHTML(v, "score-against-bits", caption, false), Caption: t.Caption, Table: t,
+		Without: "No arm has both a score and a width.",
+	}
+}
+
+func mapSection(v *view) any {
+	t := &tabular{Caption: "Every setting that differs from the baseline", Columns: columns("Arm", "point", "format", "rounding", "order", "overflow", "layers")}
+	for _, a := range v.arms {
+		t.Rows = append(t.Rows, v.changes(a)...)
+	}
+	if len(t.Rows) == 0 {
+		t = nil
+	}
+	f := figureWith{
+		Figure: figureHTML(v, "step-map", "The step runs from left to right. A column is as tall as the format is wide; dark columns differ from the baseline, lighter tops show layers that use wider formats, dots on top mean stochastic rounding. "+
+			"A ring marks a point found to cause the arm's loss.", false),
+		Without: "No settings were recorded.", Table: t,
+	}
+	if t != nil {
+		f.Caption = t.Caption
+	}
+	return f
+}
+
+// changes are an arm's settings that differ from the baseline's, equal ones of
+// several layers together.
+func (v *view) changes(a *armView) [][]string {
+	if a == v.baseline {
+		return nil
+	}
+	base := map[string]results.Setting{}
+	if v.baseline != nil {
+		for _, s := range v.baseline.Settings {
+			base[fmt.Sprint(s.Layer, s.Point)] = s
+		}
+	}
+	at := map[string]int{}
+	var rows [][]string
+	for _, s := range a.Settings {
+		if b, ok := base[fmt.Sprint(s.Layer, s.Point)]; ok && !differs(s, b) {
+			continue
+		}
+		key := strings.Join([]string{s.Point, s.Format, s.Rounding, s.Order, s.Overflow}, "\x00")
+		if i, ok := at[key]; ok {
+			rows[i][6] += ", " + layerName(s.Layer, s.Name)
+			continue
+		}
+		at[key] = len(rows)
+		rows = append(rows, []string{a.Label(), plain(s.Point), plain(s.Format), plain(s.Rounding), plain(s.Order), plain(s.Overflow), layerName(s.Layer, s.Name)})
+	}
+	return rows
+}
+
+// layerName is a layer by number and name; -1 stands for input and loss.
+func layerName(layer int, name string) string {
+	if layer < 0 {
+		return plain(name)
+	}
+	return plain(fmt.Sprintf("%d %s", layer, name))
+}
+
+// shownCounters bounds the counter table of the page; the CSV file has all.
+const shownCounters = 300
+
+// counterSection sums the range counters over an arm's runs.
+func counterSection(v *view) any {
+	t := &tabular{
+		Caption: "Range events, summed over the replicates of an arm",
+		Columns: columns("Arm", "layer", "point", "#overflow", "#underflow to zero", "#saturation", "#NaN", "#runs"),
+	}
+	quiet, more := 0, 0
+	for _, a := range v.arms {
+		for _, c := range tallies(a) {
+			if c.Counts == (results.Counts{}) {
+				quiet++
+				continue
+			}
+			if len(t.Rows) == shownCounters {
+				more++
+				continue
+			}
+			t.Rows = append(t.Rows, []string{
+				a.Label(), layerName(c.Layer, c.Name), plain(c.Point),
+				count(c.Counts.Overflow), count(c.Counts.Underflow), count(c.Counts.Saturated), count(c.Counts.NaN), strconv.Itoa(len(a.Runs)),
+			})
+		}
+	}
+	t.Notes = append(t.Notes, plural(quiet, "other counted point")+" saw nothing leave the range. Underflow is counted at stored points only, not inside products and sums.")
+	if more > 0 {
+		t.Notes = append(t.Notes, fmt.Sprintf("%d more rows are in counters.csv.", more))
+	}
+	return t
+}
+
+// tallies sums an arm's counters over its runs, in order of first appearance.
+func tallies(a *armView) []results.PointCounts {
+	type place struct {
+		layer       int
+		name, point string
+	}
+	at := map[place]int{}
+	var out []results.PointCounts
+	for _, r := range a.Runs {
+		for _, c := range r.Counters {
+			k := place{c.Layer, c.Name, c.Point}
+			i, ok := at[k]
+			if !ok {
+				i = len(out)
+				at[k] = i
+				out = append(out, results.PointCounts{Layer: c.Layer, Name: c.Name, Point: c.Point})
+			}
+			n := &out[i].Counts
+			n.Overflow += c.Counts.Overflow
+			n.Underflow += c.Counts.Underflow
+			n.Saturated += c.Counts.Saturated
+			n.NaN += c.Counts.NaN
+		}
+	}
+	return out
+}
+
+// count spells a count with thin spaces between thousands.
+func count(n uint64) string {
+	s := strconv.FormatUint(n, 10)
+	for i := len(s) - 3; i > 0; i -= 3 {
+		s = s[:i] + "\u202f" + s[i:]
+	}
+	return s
+}
+
+func recallSection(v *view) any {
+	type armRecall struct {
+		Name              string
+		Recall, Confusion *tabular
+	}
+	data := struct {
+		Figure template.HTML
+		Arms   []armRecall
+	}{Figure: figureHTML(v, "recall", "Of the test examples of a class, the share that is named rightly. Disc and bar: mean over replicates with its "+percentage(v.Confidence)+" t interval; stroke: the worst replicate.", false)}
+	for _, a := range v.arms {
+		if r := v.recalls(a); len(r) > 0 {
+			data.Arms = append(data.Arms, armRecall{a.Label(), v.recallTable(r), v.confusionTable(a)})
+		}
+	}
+	return data
+}
+
+func (v *view) recallTable(rs []recall) *tabular {
+	level := percentage(v.Confidence)
+	t := &tabular{
+		Caption: "Recall by class; the worst replicate with its exact (Clopper-Pearson) interval",
+		Columns: columns("Class", "#mean recall", "#"+level+" interval", "#n", "#worst replicate", "#rightly named", "#recall", "#exact "+level+" interval"),
+	}
+	for _, r := range rs {
+		worst := missing
+		if r.Worst != nil {
+			worst = strconv.FormatUint(r.Worst.Replicate, 10)
+		}
+		t.Rows = append(t.Rows, []string{
+			r.Class, percentage3(r.Mean.Mean), shares(r.Mean.Low, r.Mean.High), strconv.Itoa(r.Mean.N),
+			worst, fmt.Sprintf("%d of %d", r.Hit, r.Of), percentage3(r.Rate()), shares(r.Low, r.High),
+		})
+	}
+	return t
+}
+
+func shares(low, high float64) string {
+	if math.IsNaN(low) || math.IsNaN(high) {
+		return missing
+	}
+	return "[" + percentage3(low) + ", " + percentage3(high) + "]"
+}
+
+func (v *view) confusionTable(a *armView) *tabular {
+	sum, classes, n := pooled(a)
+	t := &tabular{Caption: "Confusion, added over " + plural(n, "replicate") + ": rows are the true class, columns what it was called"}
+	names := []string{"True class"}
+	for c := range classes {
+		names = append(names, "#"+v.class(c))
+	}
+	t.Columns = columns(names...)
+	for c := range classes {
+		row := []string{v.class(c)}
+		for _, x := range sum[c*classes : (c+1)*classes] {
+			row = append(row, count(x))
+		}
+		t.Rows = append(t.Rows, row)
+	}
+	return t
+}

@@ -1,0 +1,229 @@
+package report
+
+import (
+	"fmt"
+	"html/template"
+	"math"
+	"strconv"
+	"strings"
+	"time"
+
+	"ulpine/results"
+)
+
+// claimSection is what was asked and what was fixed before the first run.
+func claimSection(v *view) any {
+	var facts []fact
+	add := func(head, text string) {
+		if text = plain(text); text != "" && text != missing {
+			facts = append(facts, fact{head, text})
+		}
+	}
+	add("Question", v.Question)
+	add("Metric", v.Metric+", after the last epoch")
+	add("Margin", v.marginWords())
+	add("Confidence", percentage(v.Confidence)+", two-sided intervals; verdicts are Holm-corrected across arms")
+	switch {
+	case v.MarginFixed.IsZero():
+		add("Margin fixed", "no record of when the margin was fixed")
+	default:
+		add("Margin fixed", day(v.MarginFixed)+v.firstRun())
+	}
+	if v.FixedClaim.Hash != (results.Hash{}) {
+		add("Claim's hash", fmt.Sprintf("%x", v.FixedClaim.Hash[:]))
+	}
+	add("Replicates", v.replicateWords())
+	if v.NoiseHigh > v.NoiseLow {
+		add("Noise floor", v.words.interval(v.NoiseLow, v.NoiseHigh)+v.words.unit()+"; "+v.NoiseFrom)
+	} else {
+		add("Noise floor", "not measured in this study")
+	}
+	add("Data", v.Data)
+	add("Network", v.Network)
+	if v.LongestSum > 0 {
+		add("Longest sum", plural(v.LongestSum, "term"))
+	}
+	add("Training", v.Training)
+	add("Plan", v.PlanFile)
+	return struct{ Facts []fact }{facts}
+}
+
+// marginWords spells the margin in the metric's unit.
+func (v *view) marginWords() string {
+	if !(v.Margin > 0) {
+		return "none"
+	}
+	m := v.words.scale(v.Margin)
+	s := fixed(m, marginDigits(m))
+	if u := v.words.unitWords(); u != "" {
+		s += " " + u
+	}
+	if v.words.metric.Higher {
+		return "an arm may score at most " + s + " below the baseline"
+	}
+	return "an arm may score at most " + s + " above the baseline"
+}
+
+// firstRun says how the margin's date stands to the first run's start.
+func (v *view) firstRun() string {
+	var first time.Time
+	for i := range v.Runs {
+		if t := v.Runs[i].Started; !t.IsZero() && (first.IsZero() || t.Before(first)) {
+			first = t
+		}
+	}
+	switch {
+	case first.IsZero():
+		return ""
+	case first.Before(v.MarginFixed):
+		return ", AFTER the first run here started (" + day(first) + ")"
+	}
+	return ", before the first run started (" + day(first) + ")"
+}
+
+func (v *view) replicateWords() string {
+	n := 0
+	for _, a := range v.arms {
+		n = max(n, len(a.Runs))
+	}
+	s := plural(n, "paired replicate")
+	if v.Planned > 0 {
+		s += fmt.Sprintf(" run, %d planned", v.Planned)
+	}
+	return s
+}
+
+// verdictRow is one arm of the verdict table.
+type verdictRow struct {
+	Slug, Number, Name, Verdict string
+	Mark                        template.HTML
+	Strips                      []keyed
+	Score, LossScale            string
+	Notes                       []string
+	Difference, Interval, N     string
+	Diverged, Stalled, Bits     string
+}
+
+// keyed is a small drawing with its words.
+type keyed struct {
+	Drawing template.HTML
+	Words   string
+}
+
+func verdictSection(v *view) any {
+	data := struct {
+		Unit, Level string
+		Rows        []verdictRow
+		Key         []keyed
+		Checks      *tabular
+	}{Level: percentage(v.Confidence), Checks: v.checks(v.Comparisons)}
+	if v.words.percent {
+		data.Unit = ", pp"
+	}
+	for _, a := range v.arms {
+		data.Rows = append(data.Rows, v.verdictRow(a))
+	}
+	for _, k := range []struct {
+		kind  results.VerdictKind
+		words string
+	}{
+		{results.Within, "within margin"},
+		{results.Worse, "worse than margin"},
+		{results.Undecided, "undecided, which never means \"the same\""},
+		{results.Diverged, "diverged"},
+	} {
+		data.Key = append(data.Key, keyed{glyphHTML(markGlyph(k.kind)), k.words})
+	}
+	return data
+}
+
+func (v *view) verdictRow(a *armView) verdictRow {
+	r := verdictRow{
+		Slug: a.Slug, Name: plain(a.Name), Bits: bits(a.Bits), Verdict: "no verdict",
+		Difference: missing, Interval: missing, N: missing, Diverged: missing, Stalled: missing,
+		Score: plain(v.Metric) + " " + v.scoreLine(a.Score), LossScale: plain(a.LossScale),
+	}
+	if a.Number > 0 {
+		r.Number = strconv.Itoa(a.Number)
+	}
+	if r.LossScale == "none" {
+		r.LossScale = ""
+	}
+	for _, s := range a.Strips {
+		r.Strips = append(r.Strips, keyed{glyphHTML(s.glyph()), s.Label() + " (" + s.Split() + ")"})
+	}
+	if a == v.baseline {
+		r.Verdict = "the baseline"
+		r.Diverged, r.Stalled = v.lost(a)
+	}
+	if c := a.Comparison; c != nil {
+		r.Mark, r.Verdict = glyphHTML(markGlyph(c.Verdict.Kind)), verdictWords(c.Verdict)
+		r.Difference, r.Interval, r.N = v.words.diff(c.Mean), v.words.interval(c.Low, c.High), strconv.Itoa(c.N)
+		r.Diverged, r.Stalled = strconv.Itoa(c.Diverged), strconv.Itoa(c.Stalled)
+		for _, w := range c.Warnings {
+			r.Notes = append(r.Notes, plain(w))
+		}
+	}
+	return r
+}
+
+// lost counts an arm's runs that diverged or stalled.
+func (v *view) lost(a *armView) (diverged, stalled string) {
+	d, s := 0, 0
+	for _, r := range a.Runs {
+		if r.Diverged != "" {
+			d++
+		}
+		if r.Stalled {
+			s++
+		}
+	}
+	return strconv.Itoa(d), strconv.Itoa(s)
+}
+
+// checks is the table of what stands behind verdicts; nil when there are none.
+func (v *view) checks(cs []results.Comparison) *tabular {
+	if len(cs) == 0 {
+		return nil
+	}
+	unit := ""
+	if v.words.percent {
+		unit = ", pp"
+	}
+	t := &tabular{
+		Caption: "Standard deviation of the paired differences, bootstrap interval, skewness and p-values",
+		Columns: columns("Arm", "#n", "#SD"+unit, "#t interval"+unit, "#bootstrap interval"+unit, "#skewness", "#p", "#p, Holm", "#p (worse)", "#p (worse), Holm"),
+	}
+	for i := range cs {
+		c := &cs[i]
+		t.Rows = append(t.Rows, []string{
+			v.pairName(c), strconv.Itoa(c.N), fixed(v.words.scale(c.SD), v.words.digits+1),
+			v.words.interval(c.Low, c.High), v.words.interval(c.BootLow, c.BootHigh), fixed(c.Skewness, 2),
+			probability(c.P), probability(c.Holm), probability(c.PWorse), probability(c.HolmWorse),
+		})
+	}
+	return t
+}
+
+// pairName names a comparison: the arm alone where it is against the baseline.
+func (v *view) pairName(c *results.Comparison) string {
+	if v.baseline != nil && c.Against == v.baseline.Slug {
+		for _, a := range v.arms {
+			if a.Slug == c.Arm {
+				return a.Label()
+			}
+		}
+	}
+	return v.name(c.Arm) + " against " + v.name(c.Against)
+}
+
+// probability spells a p-value.
+func probability(p float64) string {
+	switch {
+	case math.IsNaN(p):
+		return missing
+	case p > 0 && p < 1e-4:
+		return "<0.0001"
+	}
+	return strings.TrimSpace(fixed(p, 4))
+}
