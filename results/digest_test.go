@@ -76,6 +76,7 @@ func TestDigestSees(t *testing.T) {
 		"start":          func(r *Run) { r.Started = time.Now() },
 		"wall time":      func(r *Run) { r.Wall = time.Hour },
 		"initial":        func(r *Run) { r.Initial = r.Final },
+		"data":           func(r *Run) { r.Data[0]++ },
 		"layer name":     func(r *Run) { r.Counters[0].Name = "dense out=16" },
 		"tensor name":    func(r *Run) { r.Final[0].Name = "w" },
 		"NaN payload":    func(r *Run) { r.Steps[2] = math.Float64frombits(0xfff8000000000123) },

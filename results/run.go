@@ -80,11 +80,12 @@ type Run struct {
 	Confusion []uint64 `cbor:"15,keyasint"`
 	Classes   int      `cbor:"16,keyasint"`
 
-	// In neither key nor digest.
+	// Not in the digest.
 	CodeVersion string        `cbor:"17,keyasint"`
 	Host        string        `cbor:"18,keyasint"`
 	Started     time.Time     `cbor:"19,keyasint"`
 	Wall        time.Duration `cbor:"20,keyasint"`
+	Data        Hash          `cbor:"22,keyasint"` // of the examples trained and tested on
 	StepBytes   []byte        `cbor:"21,keyasint"` // Steps, little-endian binary64; written by the store
 }
 

@@ -55,7 +55,8 @@ func TestAnswer(t *testing.T) {
 		{"no arm", results.Study{Arms: arms[:1]}, "There is nothing to compare: the plan has no arm besides the baseline."},
 		{"no pair", table(compared("a", open, 0)), "There is no answer yet: no pair of runs is stored."},
 		{
-			"baseline diverged", results.Study{Arms: arms, Comparisons: []results.Comparison{compared("a", open, 10)}, BaselineProblem: "the baseline diverged in 1 of 10 replicates (103)"},
+			"baseline diverged",
+			results.Study{Arms: arms, Comparisons: []results.Comparison{compared("a", open, 10)}, BaselineProblem: "the baseline diverged in 1 of 10 replicates (103)"},
 			"No verdict can be given: the baseline diverged in 1 of 10 replicates (103).",
 		},
 		{

@@ -3,7 +3,7 @@
 //
 // # What is in the file
 //
-// The file holds six buckets at its root; all records are CBOR (RFC 8949, core
+// The file holds seven buckets at its root; all records are CBOR (RFC 8949, core
 // deterministic encoding) with integer keys, so that a field may be renamed but
 // its number never reused.
 //
@@ -13,6 +13,7 @@
 //	marks     key                                   -> who started this run, and when
 //	studies   study (32 bytes)                      -> title, claim as fixed, time
 //	index     study, replicate (8 bytes), slug      -> key and place of the arm in the plan
+//	data      what data was asked for (32 bytes)    -> SHA-256 of the examples
 //
 // Integers inside bucket keys are big-endian, so that bbolt's byte order is
 // their order. Parts of a run are its record (R), the losses of its steps (S)
@@ -26,6 +27,11 @@
 // is called (arm/replicate) belongs to a study: two arms with the same
 // arithmetic, and two plans that share an arm, point to one run. The caller
 // says what identifies a study; the store only keeps its claim and its names.
+//
+// The key of a run holds the hash of its data. Which data came of which request
+// is noted, so that a plan's keys can be known without drawing all its data
+// again. AddRuns notes it together with the names of runs on that data, before
+// any of them; where nothing is noted, nothing was run.
 //
 // # The claim
 //

@@ -10,10 +10,11 @@ import (
 	"ulpine/results"
 )
 
-// States returns the state of each key that the store knows: stored or failed,
-// in flight or broken off.
-func (s *Store) States(keys []results.Hash) (map[results.Hash]results.State, error) {
-	states := map[results.Hash]results.State{}
+// Lookup returns what the store knows of each key: runs stored or failed, in
+// flight or broken off. Arm and replicate are those of the first study that ran
+// it. Unknown keys are left out.
+func (s *Store) Lookup(keys []results.Hash) (map[results.Hash]Entry, error) {
+	known := make(map[results.Hash]Entry, len(keys))
 	err := s.view(func(tx *bolt.Tx) error {
 		for _, key := range keys {
 			e := Entry{Key: key}
@@ -22,12 +23,12 @@ func (s *Store) States(keys []results.Hash) (map[results.Hash]results.State, err
 				return err
 			}
 			if found {
-				states[key] = e.State
+				known[key] = e
 			}
 		}
 		return nil
 	})
-	return states, err
+	return known, err
 }
 
 // Get reads the run under a key, with its tensors. It recomputes the digest of a

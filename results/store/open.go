@@ -28,6 +28,7 @@ var (
 	bucketMarks   = []byte("marks")
 	bucketStudies = []byte("studies")
 	bucketIndex   = []byte("index")
+	bucketData    = []byte("data")
 
 	keyVersion = []byte("version")
 )
@@ -168,7 +169,7 @@ func initialise(path string) error {
 		return err
 	}
 	err = db.Update(func(tx *bolt.Tx) error {
-		for _, name := range [][]byte{bucketMeta, bucketRuns, bucketParts, bucketMarks, bucketStudies, bucketIndex} {
+		for _, name := range [][]byte{bucketMeta, bucketRuns, bucketParts, bucketMarks, bucketStudies, bucketIndex, bucketData} {
 			if _, err := tx.CreateBucket(name); err != nil {
 				return err
 			}
@@ -196,7 +197,7 @@ func (s *Store) checkVersion() error {
 		if version != Version {
 			return fmt.Errorf("%w: %s has version %d, this program reads version %d; use the program that wrote it, or name a different file with --store", ErrVersion, s.path, version, Version)
 		}
-		for _, name := range [][]byte{bucketRuns, bucketParts, bucketMarks, bucketStudies, bucketIndex} {
+		for _, name := range [][]byte{bucketRuns, bucketParts, bucketMarks, bucketStudies, bucketIndex, bucketData} {
 			if tx.Bucket(name) == nil {
 				return fmt.Errorf("%w: %s lacks its part %q; restore it from a copy", ErrDamaged, s.path, name)
 			}

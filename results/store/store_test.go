@@ -205,8 +205,8 @@ func TestMarks(t *testing.T) {
 		t.Fatal(err)
 	}
 	states := func(s *Store) string {
-		m, err := s.States([]results.Hash{keyOf(0), keyOf(1), keyOf(2), keyOf(9)})
-		return fmt.Sprintf("%s, %s, %s, %q %v", m[keyOf(0)], m[keyOf(1)], m[keyOf(2)], m[keyOf(9)], err)
+		m, err := s.Lookup([]results.Hash{keyOf(0), keyOf(1), keyOf(2), keyOf(9)})
+		return fmt.Sprintf("%s, %s, %s, %q %v", m[keyOf(0)].State, m[keyOf(1)].State, m[keyOf(2)].State, m[keyOf(9)].State, err)
 	}
 	if got := states(s); got != `stored, broken off, in flight, "" <nil>` {
 		t.Error(got)

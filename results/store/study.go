@@ -67,6 +67,41 @@ func (s *Store) Fix(study Study, claim results.Claim, planned []Planned) (fixed 
 	return fixed, err
 }
 
+// AddRuns adds names of runs to a study that is fixed already, and notes what
+// data their requests came to. It does not wait for the disk: whatever is put
+// later is not stored without it.
+func (s *Store) AddRuns(study results.Hash, planned []Planned, data map[results.Hash]results.Hash) error {
+	return s.enqueue(&operation{
+		write: func(tx *bolt.Tx) error {
+			for request, hash := range data {
+				if err := tx.Bucket(bucketData).Put(request[:], hash[:]); err != nil {
+					return err
+				}
+			}
+			return putIndex(tx, study, planned)
+		},
+		done: func(error) {},
+	})
+}
+
+// Data returns what each request for data came to, as far as it is noted.
+func (s *Store) Data(requests []results.Hash) (map[results.Hash]results.Hash, error) {
+	noted := make(map[results.Hash]results.Hash, len(requests))
+	err := s.view(func(tx *bolt.Tx) error {
+		for _, request := range requests {
+			switch raw := tx.Bucket(bucketData).Get(request[:]); len(raw) {
+			case 0:
+			case len(results.Hash{}):
+				noted[request] = results.Hash(raw)
+			default:
+				return fmt.Errorf("%w: %s: a data hash of %d bytes", ErrDamaged, s.path, len(raw))
+			}
+		}
+		return nil
+	})
+	return noted, err
+}
+
 // Claim returns the claim that was fixed for a study and how the claim of now
 // differs from it, empty if it does not. It errs with ErrNoStudy before Fix.
 func (s *Store) Claim(id results.Hash, now results.Claim) (fixed results.FixedClaim, differs string, err error) {

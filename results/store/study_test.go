@@ -222,3 +222,27 @@ func TestFindStudy(t *testing.T) {
 		t.Errorf("two of one title: %v", err)
 	}
 }
+
+func TestAddRuns(t *testing.T) {
+	s := open(t)
+	if _, err := s.Fix(first, claim, nil); err != nil {
+		t.Fatal(err)
+	}
+	data := map[results.Hash]results.Hash{{1}: {11}, {2}: {12}}
+	plan := planOf("baseline", "a", "b")
+	if err := s.AddRuns(first.ID, plan[:2], data); err != nil {
+		t.Fatal(err)
+	}
+	if err := s.AddRuns(first.ID, plan[2:], map[results.Hash]results.Hash{{2}: {22}}); err != nil {
+		t.Fatal(err)
+	}
+	put(t, s, run(1, false), run(5, false))
+	list, err := s.List(Filter{Study: first.ID})
+	if err != nil || names(list) != "a/100 stored; b/101 stored" {
+		t.Errorf("%s, %v", names(list), err)
+	}
+	noted, err := s.Data([]results.Hash{{1}, {2}, {3}})
+	if err != nil || len(noted) != 2 || noted[results.Hash{1}] != (results.Hash{11}) || noted[results.Hash{2}] != (results.Hash{22}) {
+		t.Errorf("noted %v, %v", noted, err)
+	}
+}
