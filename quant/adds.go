@@ -16,6 +16,8 @@ func (e *engine) add(s, t []float64, q *quick, k int, fold bool) {
 		e.addNative32(s, t, q, k)
 	case q.kind == quickStochastic:
 		e.addStochastic(s, t, q, k, fold)
+	case q.kind == quickDirected:
+		e.addDirected(s, t, q, k)
 	default:
 		e.addGeneral(s, t, q, k)
 	}
@@ -119,6 +121,25 @@ func (e *engine) addStochastic(s, t []float64, q *quick, k int, fold bool) {
 		y := math.Float64frombits((n + uint64(u&mask)<<up + centre) & keep)
 		if n&^signBit64-1 < low || !(math.Abs(y) <= limit) {
 			y = e.generalSum(q, v, t[j], x, u<<16, k, j)
+		}
+		s[j] = y
+	}
+}
+
+// addDirected is addGeneral for the modes of quick.blockDirected.
+func (e *engine) addDirected(s, t []float64, q *quick, k int) {
+	low, limit, keep, drop, add, even := q.low-1, q.max, ^uint64(0)<<q.drop, q.drop&63, q.add, q.even
+	t = t[:len(s)]
+	for j, v := range s {
+		x := v + t[j]
+		if rest := twoSumRest(x, v, t[j]); rest != 0 {
+			x = oddFold(x, rest)
+		}
+		x = e.through(x)
+		n := math.Float64bits(x)
+		y := math.Float64frombits((n + add[n>>63] + n>>drop&even) & keep)
+		if n&^signBit64-1 < low || !(math.Abs(y) <= limit) {
+			y = e.generalSum(q, v, t[j], x, 0, k, j)
 		}
 		s[j] = y
 	}

@@ -11,6 +11,8 @@ func (q *quick) block(x []float64, w *words, first uint64, n *Counts) bool {
 		q.blockNearest(x, n)
 	case quickStochastic:
 		q.blockStochastic(x, w, first, n)
+	case quickDirected:
+		q.blockDirected(x, n)
 	case quickGeneral:
 		for i, v := range x {
 			q.one(x, i, v, w.at(first+uint64(i)), n)
@@ -74,6 +76,22 @@ func (q *quick) blockStochastic(x []float64, w *words, first uint64, n *Counts) 
 		r := math.Float64frombits((b + uint64(word>>(32-q.random))<<up + q.centre) & keep)
 		if b&^signBit64-q.low >= q.high-q.low || !(math.Abs(r) <= q.max) {
 			q.one(x, i, v, word, n)
+			continue
+		}
+		x[i] = r
+	}
+}
+
+// blockDirected adds what the mode asks for below the last kept place of the exact
+// magnitude and cuts there; magnitudes below the least normal value and beyond the
+// format go one by one.
+func (q *quick) blockDirected(x []float64, n *Counts) {
+	keep := ^uint64(0) << q.drop
+	for i, v := range x {
+		b := math.Float64bits(v)
+		r := math.Float64frombits((b + q.add[b>>63] + b>>q.drop&q.even) & keep)
+		if b&^signBit64-q.low >= q.high-q.low || !(math.Abs(r) <= q.max) {
+			q.one(x, i, v, 0, n)
 			continue
 		}
 		x[i] = r

@@ -217,6 +217,8 @@ func (e *engine) term(t []float64, k int) {
 		e.termNative32(t, a, b, k)
 	case e.product.kind == quickStochastic:
 		e.termStochastic(t, a, b, k)
+	case e.product.kind == quickDirected:
+		e.termDirected(t, a, b, k)
 	case e.product.kind == quickNative64:
 		e.termNative64(t, a, b, k)
 	default:
@@ -275,6 +277,21 @@ func (e *engine) termStochastic(t []float64, a float64, b []float64, k int) {
 		r := math.Float64frombits((n + uint64(u&mask)<<up + centre) & keep)
 		if n&^signBit64-1 < low || !(math.Abs(r) <= limit) {
 			r = e.generalTerm(p, u<<16, k, j)
+		}
+		t[j] = r
+	}
+}
+
+// termDirected is termGeneral for the modes of quick.blockDirected.
+func (e *engine) termDirected(t []float64, a float64, b []float64, k int) {
+	q := &e.product
+	low, limit, keep, drop, add, even := q.low-1, q.max, ^uint64(0)<<q.drop, q.drop&63, q.add, q.even
+	for j, v := range b[:len(t)] {
+		p := float64(a * v)
+		n := math.Float64bits(p)
+		r := math.Float64frombits((n + add[n>>63] + n>>drop&even) & keep)
+		if n&^signBit64-1 < low || !(math.Abs(r) <= limit) {
+			r = e.generalTerm(p, 0, k, j)
 		}
 		t[j] = r
 	}

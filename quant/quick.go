@@ -10,6 +10,7 @@ const (
 	quickGeneral                     // integer significands, every mode
 	quickNearest                     // nearest-even by adding and subtracting a constant
 	quickStochastic                  // stochastic by integer addition below the last kept place
+	quickDirected                    // other modes by integer addition below the last kept place
 	quickNative32                    // nearest-even to binary32 by conversion
 	quickNative64                    // nearest-even to binary64: the arithmetic itself
 )
@@ -29,9 +30,11 @@ type quick struct {
 	high     uint64 // and of the binade beyond the largest finite value
 	lift     uint64 // added to exponent bits e: 1.5 x 2^(e + drop)
 	max      float64
-	floor    float64 // least positive result that is not flushed
-	random   uint    // random bits
-	centre   uint64  // what Centred adds below the last place of the random bits
+	floor    float64   // least positive result that is not flushed
+	random   uint      // random bits
+	centre   uint64    // what Centred adds below the last place of the random bits
+	add      [2]uint64 // what quickDirected adds to a magnitude before cutting, by sign
+	even     uint64    // 1 where it adds the last kept bit as well
 
 	// What becomes of a finite result beyond max, and of an infinite one, by sign.
 	over, inf           [2]float64
@@ -87,13 +90,32 @@ func (q *quick) choose(f Float, r Rounding) {
 				q.centre = 1 << (q.drop - q.random - 1)
 			}
 		}
-	case r.Mode != NearestEven || f.flush || f.fraction == 0:
-		// Without fraction bits the even neighbour is that of the even exponent
-		// field, not of the even significand.
+	case f.fraction == 0 || r.Mode == ToOdd:
+		// Without fraction bits odd and even are those of the exponent field, not
+		// of the significand.
+	case r.Mode != NearestEven || f.flush:
+		q.kind = quickDirected
+		q.setAdd(r.Mode)
 	case f.fraction == 23 && f.emin == Binary32.emin && q.max == math.MaxFloat32:
 		q.kind = quickNative32
 	default:
 		q.kind = quickNearest
+	}
+}
+
+// setAdd chooses what to add below the last kept place so that the carry out of
+// the part to be cut rounds the magnitude up where the mode does.
+func (q *quick) setAdd(m Mode) {
+	half, all := uint64(1)<<(q.drop-1), uint64(1)<<q.drop-1
+	switch m {
+	case NearestEven:
+		q.add, q.even = [2]uint64{half - 1, half - 1}, 1
+	case NearestAway:
+		q.add = [2]uint64{half, half}
+	case Up:
+		q.add[0] = all
+	case Down:
+		q.add[1] = all
 	}
 }
 
