@@ -44,7 +44,9 @@ func newAvgPool[T quant.Element](b *bench[T]) (layer[T], error) {
 	l.back = newDivider[T](l.g.size(), &b.set.InputGradient.Result, len(b.below.value.data))
 	single := l.g.perChannel()
 	var err error
-	l.window, err = newSummer[T](b.set.Forward, l.g.size(), &patches[T]{x: b.below.value.data, g: single})
+	x := paddedFrame(b.below.value.data, &single)
+	windows := &windowed[T]{frame: x, row: kernel(x, &single), column: outputs(x, &single, b.batch*l.g.c)}
+	l.window, err = newSummer[T](b.set.Forward, l.g.size(), windows)
 	if err == nil && l.g.overlaps() {
 		columns := &covering[T]{dy: b.above.gradient.data, g: single}
 		l.overlap, err = newSummer[T](b.set.InputGradient.Sums, l.g.covers(), columns)

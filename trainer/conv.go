@@ -127,19 +127,36 @@ func completeConv(s *Spec, out int) {
 // row, kernel column; the input gradient's over output channel, kernel row,
 // kernel column; the weight gradient's over sample, output row, output column.
 func newConv[T quant.Element](b *bench[T]) (layer[T], error) {
-	g := b.spec.window
+	g := &b.spec.window
 	units, terms := b.spec.Out[0], g.c*g.size()
-	back := units * g.size()
+	if err := checkFrame(g, max(units, g.c), b.batch); err != nil {
+		return nil, err
+	}
 	return asLayer(newLinear(b, units, terms, g.c, g.inner(), g.outer(), func(l *linear[T]) bindings[T] {
-		return bindings[T]{
-			forward:    &patches[T]{x: l.below.value.data, g: g},
-			below:      &holes[T]{dy: l.belowGradient, units: units, g: g},
-			weight:     &turnedPatches[T]{x: l.activation, g: g},
-			belowLeft:  quant.Matrix[T]{Data: make([]T, g.c*back), Row: back, Col: 1},
-			belowTerms: back,
-			rearrange:  func(dst, weight []T) { groupByExample(dst, weight, g.c, units, g.size()) },
-		}
+		return bindConv(l, g, units, b.batch)
 	}))
+}
+
+// bindConv frames the operands. The weight gradient reads the frame of the
+// forward pass unless its operand is a tensor of its own.
+func bindConv[T quant.Element](l *linear[T], g *window, units, batch int) bindings[T] {
+	back := units * g.size()
+	x := paddedFrame(l.below.value.data, g)
+	again := x
+	if l.set.WeightGradient.First != nil {
+		again = paddedFrame(l.activation, g)
+	}
+	dy := dilatedFrame(l.belowGradient, units, g)
+	places, terms := outputs(x, g, batch), kernel(x, g)
+	return bindings[T]{
+		forward:    &windowed[T]{frame: x, row: terms, column: places},
+		weight:     &windowed[T]{frame: again, row: places, column: terms},
+		below:      &windowed[T]{frame: dy, row: turnedKernel(dy, g), column: inputs(dy, g, batch)},
+		frames:     frames[T]{forward: x, weight: again, below: dy},
+		belowLeft:  quant.Matrix[T]{Data: make([]T, g.c*back), Row: back, Col: 1},
+		belowTerms: back,
+		rearrange:  func(dst, weight []T) { groupByExample(dst, weight, g.c, units, g.size()) },
+	}
 }
 
 // pairText writes two numbers as one where they are equal.

@@ -38,6 +38,13 @@ type linear[T quant.Element] struct {
 	regrouped []T // the gradient with j fastest; nil where positions are single
 	results   []T // products before regrouping, one phase at a time
 	rearrange func(dst, weight []T)
+	frames    frames[T]
+}
+
+// frames surround the operands of convolutions; a dense layer has none. weight
+// is forward where the two share their operand.
+type frames[T quant.Element] struct {
+	forward, weight, below *frame[T]
 }
 
 // bindings are what a kind of layer adds to the shared arithmetic: right-hand
@@ -51,6 +58,7 @@ type bindings[T quant.Element] struct {
 	belowLeft  quant.Matrix[T]
 	belowTerms int
 	rearrange  func(dst, weight []T)
+	frames     frames[T]
 }
 
 // newLinear allocates everything. operands holds the four gradient operands that
@@ -103,7 +111,7 @@ func (l *linear[T]) makeMultipliers() (err error) {
 // makeProducts builds the three products once: converting a matrix to an
 // interface in every step would allocate.
 func (l *linear[T]) makeProducts(b bindings[T]) {
-	l.rearrange = b.rearrange
+	l.rearrange, l.frames = b.rearrange, b.frames
 	l.forwardProduct = quant.Product[T]{
 		I: l.units, K: l.terms,
 		A:    quant.Matrix[T]{Data: l.weight.working.data, Row: l.terms, Col: 1},
@@ -120,6 +128,9 @@ func (l *linear[T]) params() []*param[T] { return []*param[T]{l.weight, l.bias} 
 // forward computes y = R[activation](sum over k of weight x, then + bias).
 func (l *linear[T]) forward(p *pass) {
 	columns := p.samples * l.outer
+	if l.frames.forward != nil {
+		l.frames.forward.fill(p.samples)
+	}
 	q := &l.forwardProduct
 	q.J, q.C, q.FirstJ = columns, l.results[:l.units*columns], p.first*uint64(l.outer)
 	q.Terms, q.Sums = l.streams(p, opForwardProduct), l.streams(p, opForwardSum)
@@ -149,6 +160,9 @@ func (l *linear[T]) weightBackward(p *pass) {
 	if set.First != nil {
 		x := l.below.values(n)
 		round(l.place, p, WeightGradientActivation, opActivationAgain, l.activation[:len(x)], x, set.First, 0)
+	}
+	if l.frames.weight != l.frames.forward {
+		l.frames.weight.fill(n)
 	}
 	left := quant.Matrix[T]{Data: gradient, Row: 1, Col: l.units}
 	if l.outer > 1 {
@@ -187,6 +201,7 @@ func (l *linear[T]) inputBackward(p *pass) {
 	q := &l.belowProduct
 	if l.rearrange != nil {
 		l.rearrange(q.A.Data, l.belowWeight)
+		l.frames.below.fill(n)
 	}
 	columns := n * l.inner
 	q.J, q.C = columns, l.results[:l.channels*columns]

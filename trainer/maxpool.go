@@ -1,6 +1,10 @@
 package trainer
 
-import "ulpine/quant"
+import (
+	"math"
+
+	"ulpine/quant"
+)
 
 // maxPoolKind takes the largest input of each window, the first in row-major
 // order among equals (+0 and -0 are equal), NaN if there is one. y =
@@ -62,19 +66,24 @@ func (l *maxPool[T]) forward(p *pass) {
 // largest is the position of the choice of the window at row top, column left.
 func largest[T quant.Element](in []T, g *window, top, left int) int {
 	best := top*g.w + left
+	high := rank(in[best])
 	for r := range g.kh {
-		row := (top+r)*g.w + left
-		for c := range g.kw {
-			v, b := in[row+c], in[best]
-			if b != b {
-				return best // a NaN is never left again
+		at := (top+r)*g.w + left
+		for _, v := range in[at:][:g.kw] {
+			if k := rank(v); k > high {
+				high, best = k, at
 			}
-			if v > b || v != v {
-				best = row + c
-			}
+			at++
 		}
 	}
 	return best
+}
+
+// rank orders numbers as integers, without a branch: both zeros are equal, NaN
+// (stored NaNs are positive) lies above infinity.
+func rank[T quant.Element](v T) int64 {
+	b := int64(math.Float64bits(float64(v) + 0)) // -0 + 0 is +0
+	return b ^ int64(uint64(b>>63)>>1)
 }
 
 func (l *maxPool[T]) backward(p *pass, below bool) {

@@ -1,191 +1,141 @@
 package trainer
 
-import "ulpine/quant"
+import (
+	"fmt"
+	"math"
 
-// patches is the right-hand operand of a convolution's forward product and of an
-// average pool's sums: B[(c, kr, kc), (n, oy, ox)] = x[n, c, oy sh + kr - ph,
-// ox sw + kc - pw], padding where that lies outside. x is [n, c, h, w].
-type patches[T quant.Element] struct {
-	x []T
-	g window
+	"ulpine/quant"
+)
+
+// windowed is a right-hand operand read from a frame through two tables:
+//
+//	B[k,j] = data[row[k] + column[j]]
+//
+// All operands of convolutions and the forward one of average pools have this
+// form, because where a window lies and where an element lies in a window add up.
+type windowed[T quant.Element] struct {
+	frame       *frame[T]
+	row, column []int32
 }
 
-// Pack implements quant.Columns.
-func (b *patches[T]) Pack(dst []T, width, k0, k1, j0, j1 int) {
-	g := &b.g
-	n0, oy0, ox0 := unravel(j0, g.oh, g.ow)
+// Pack implements quant.Columns. Columns whose places are neighbours are copied
+// together: an output row of a convolution without stride, a kernel row.
+func (b *windowed[T]) Pack(dst []T, width, k0, k1, j0, j1 int) {
+	column := b.column[j0:j1]
+	var list [maxStretches]stretch
+	stretches := stretchesOf(&list, column)
 	for k := k0; k < k1; k++ {
 		row := dst[(k-k0)*width:][:width]
-		clear(row[j1-j0:])
-		row = row[:j1-j0]
-		c, kr, kc := unravel(k, g.kh, g.kw)
-		n, oy, ox := n0, oy0, ox0
-		for len(row) > 0 { // one output row of one example at a time
-			m := min(len(row), g.ow-ox)
-			if y := oy*g.sh + kr - g.ph; y >= 0 && y < g.h {
-				line := b.x[((n*g.c+c)*g.h+y)*g.w:][:g.w]
-				gather(row[:m], line, ox*g.sw+kc-g.pw, g.sw)
-			} else {
-				clear(row[:m])
+		clear(row[len(column):])
+		src := b.frame.data[b.row[k]:]
+		if stretches == nil {
+			for i, at := range column {
+				row[i] = src[at]
 			}
-			row, ox = row[m:], 0
-			if oy++; oy == g.oh {
-				oy, n = 0, n+1
-			}
+			continue
+		}
+		for _, r := range stretches {
+			copy(row[r.to:r.end], src[r.from:])
 		}
 	}
 }
 
 // Padded implements quant.Columns.
-func (b *patches[T]) Padded(k, j int) bool {
-	g := &b.g
-	_, kr, kc := unravel(k, g.kh, g.kw)
-	_, oy, ox := unravel(j, g.oh, g.ow)
-	return g.outside(oy*g.sh+kr-g.ph, ox*g.sw+kc-g.pw)
+func (b *windowed[T]) Padded(k, j int) bool {
+	void := b.frame.void
+	return void != nil && void[int(b.row[k]+b.column[j])%len(void)]
 }
 
-// turnedPatches is the same operand turned round, for the weight gradient:
-// B[(n, oy, ox), (c, kr, kc)].
-type turnedPatches[T quant.Element] struct {
-	x []T
-	g window
-}
+// stretch is a sequence of columns whose places are neighbours.
+type stretch struct{ to, end, from int32 }
 
-// Pack implements quant.Columns.
-func (b *turnedPatches[T]) Pack(dst []T, width, k0, k1, j0, j1 int) {
-	g := &b.g
-	c0, kr0, kc0 := unravel(j0, g.kh, g.kw)
-	n, oy, ox := unravel(k0, g.oh, g.ow)
-	for k := k0; k < k1; k++ {
-		row := dst[(k-k0)*width:][:width]
-		clear(row[j1-j0:])
-		row = row[:j1-j0]
-		c, kr, kc := c0, kr0, kc0
-		top, left := oy*g.sh-g.ph, ox*g.sw-g.pw
-		for len(row) > 0 { // one kernel row of one channel at a time
-			m := min(len(row), g.kw-kc)
-			if y := top + kr; y >= 0 && y < g.h {
-				gather(row[:m], b.x[((n*g.c+c)*g.h+y)*g.w:][:g.w], left+kc, 1)
-			} else {
-				clear(row[:m])
-			}
-			row, kc = row[m:], 0
-			if kr++; kr == g.kh {
-				kr, c = 0, c+1
-			}
+// Copying pays from about five elements a stretch on.
+const (
+	maxStretches = 16
+	leastStretch = 5
+)
+
+// stretchesOf lists the stretches of a table, nil where they are many or short.
+func stretchesOf(list *[maxStretches]stretch, column []int32) []stretch {
+	n := 0
+	for i, at := range column {
+		if n > 0 && at == list[n-1].from+list[n-1].end-list[n-1].to {
+			list[n-1].end++
+			continue
 		}
-		if ox++; ox == g.ow {
-			ox, oy = 0, oy+1
-			if oy == g.oh {
-				oy, n = 0, n+1
+		if n == maxStretches || n > 0 && i < n*leastStretch {
+			return nil
+		}
+		list[n] = stretch{int32(i), int32(i) + 1, at}
+		n++
+	}
+	return list[:n]
+}
+
+// outputs are the places of the windows (sample, oy, ox) of a frame of the input.
+func outputs[T quant.Element](f *frame[T], g *window, samples int) []int32 {
+	table := make([]int32, 0, samples*g.outer())
+	for n := range samples {
+		for oy := range g.oh {
+			for ox := range g.ow {
+				table = append(table, int32(n*f.planes*f.plane()+oy*g.sh*f.wide+ox*g.sw))
 			}
 		}
 	}
+	return table
 }
 
-// Padded implements quant.Columns.
-func (b *turnedPatches[T]) Padded(k, j int) bool {
-	return (&patches[T]{g: b.g}).Padded(j, k)
-}
-
-// holes is the right-hand operand of a convolution's input gradient:
-// B[(o, kr, kc), (n, y, x)] = dy[n, o, oy, ox] where the output (oy, ox) met the
-// input (y, x) with kernel position (kr, kc); elsewhere, between strides and
-// beyond the edge, there is no term. dy is [n, units, oh, ow].
-type holes[T quant.Element] struct {
-	dy    []T
-	units int
-	g     window
-}
-
-// Pack implements quant.Columns.
-func (b *holes[T]) Pack(dst []T, width, k0, k1, j0, j1 int) {
-	g := &b.g
-	n0, y0, x0 := unravel(j0, g.h, g.w)
-	for k := k0; k < k1; k++ {
-		row := dst[(k-k0)*width:][:width]
-		clear(row[j1-j0:])
-		row = row[:j1-j0]
-		o, kr, kc := unravel(k, g.kh, g.kw)
-		n, y, x := n0, y0, x0
-		for len(row) > 0 { // one input row of one example at a time
-			m := min(len(row), g.w-x)
-			if oy, ok := origin(y+g.ph-kr, g.sh, g.oh); ok {
-				line := b.dy[((n*b.units+o)*g.oh+oy)*g.ow:][:g.ow]
-				spread(row[:m], line, x+g.pw-kc, g.sw)
-			} else {
-				clear(row[:m])
-			}
-			row, x = row[m:], 0
-			if y++; y == g.h {
-				y, n = 0, n+1
+// kernel are the places of the terms (c, kr, kc) within a window of the input.
+func kernel[T quant.Element](f *frame[T], g *window) []int32 {
+	table := make([]int32, 0, f.planes*g.size())
+	for c := range f.planes {
+		for kr := range g.kh {
+			for kc := range g.kw {
+				table = append(table, int32(c*f.plane()+kr*f.wide+kc))
 			}
 		}
 	}
+	return table
 }
 
-// Padded implements quant.Columns.
-func (b *holes[T]) Padded(k, j int) bool {
-	g := &b.g
-	_, kr, kc := unravel(k, g.kh, g.kw)
-	_, y, x := unravel(j, g.h, g.w)
-	_, rows := origin(y+g.ph-kr, g.sh, g.oh)
-	_, columns := origin(x+g.pw-kc, g.sw, g.ow)
-	return !rows || !columns
-}
-
-// outside reports whether a position lies in the padding.
-func (g *window) outside(y, x int) bool { return y < 0 || y >= g.h || x < 0 || x >= g.w }
-
-// origin is the output place that starts at distance at from the first one, if
-// there is one: at must be a multiple of the stride within the output.
-func origin(at, stride, places int) (int, bool) {
-	if at < 0 || at%stride != 0 {
-		return 0, false
+// inputs are the places of the inputs (sample, y, x) in a dilated frame.
+func inputs[T quant.Element](f *frame[T], g *window, samples int) []int32 {
+	table := make([]int32, 0, samples*g.inner())
+	for n := range samples {
+		for y := range g.h {
+			for x := range g.w {
+				table = append(table, int32(n*f.planes*f.plane()+y*f.wide+x))
+			}
+		}
 	}
-	return at / stride, at/stride < places
+	return table
+}
+
+// turnedKernel are the places of the terms (unit, kr, kc) seen from an input: the
+// kernel turned round.
+func turnedKernel[T quant.Element](f *frame[T], g *window) []int32 {
+	table := make([]int32, 0, f.planes*g.size())
+	for u := range f.planes {
+		for kr := range g.kh {
+			for kc := range g.kw {
+				table = append(table, int32(u*f.plane()+(g.kh-1-kr)*f.wide+g.kw-1-kc))
+			}
+		}
+	}
+	return table
+}
+
+// checkFrame refuses frames whose places 32 bits cannot number.
+func checkFrame(g *window, planes, samples int) error {
+	size := float64(g.h+2*g.kh) * float64(g.w+2*g.kw) * float64(planes) * float64(samples)
+	if size > math.MaxInt32 {
+		return fmt.Errorf("a batch of %d examples takes %.3g values with its margins; use a smaller batch or fewer channels", samples, size)
+	}
+	return nil
 }
 
 // unravel takes a row-major index of [.., rows, columns] apart.
 func unravel(index, rows, columns int) (outer, row, column int) {
 	rest := index / columns
 	return rest / rows, rest % rows, index - rest*columns
-}
-
-// gather copies line[at + i stride] to dst[i], zero where that lies outside.
-func gather[T quant.Element](dst, line []T, at, stride int) {
-	first := 0
-	if at < 0 {
-		first = min((stride-1-at)/stride, len(dst))
-	}
-	end := first
-	if at < len(line) {
-		end = max(first, min((len(line)-at+stride-1)/stride, len(dst)))
-	}
-	clear(dst[:first])
-	switch {
-	case first == end: // nothing but padding
-	case stride == 1:
-		copy(dst[first:end], line[at+first:])
-	default:
-		for i := first; i < end; i++ {
-			dst[i] = line[at+i*stride]
-		}
-	}
-	clear(dst[end:])
-}
-
-// spread is the reverse: dst[i] = line[(at + i) / stride] where stride divides
-// at + i and the place exists, zero elsewhere.
-func spread[T quant.Element](dst, line []T, at, stride int) {
-	if stride == 1 {
-		gather(dst, line, at, 1)
-		return
-	}
-	clear(dst)
-	place := max(0, (at+stride-1)/stride)
-	for i := place*stride - at; i < len(dst) && place < len(line); i += stride {
-		dst[i] = line[place]
-		place++
-	}
 }

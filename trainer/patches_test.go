@@ -91,9 +91,12 @@ func TestConvolutionOperandsAreWhatTheyAreDefinedAs(t *testing.T) {
 			}
 			return x[((n*g.c+c)*g.h+y)*g.w+column], true
 		}
-		checkColumns(t, "patches", &patches[float32]{x, g}, terms, places, patch)
+		f := paddedFrame(x, &g)
+		f.fill(samples)
+		window, term := outputs(f, &g, samples), kernel(f, &g)
+		checkColumns(t, "patches", &windowed[float32]{f, term, window}, terms, places, patch)
 		turned := func(k, j int) (float32, bool) { return patch(j, k) }
-		checkColumns(t, "turned patches", &turnedPatches[float32]{x, g}, places, terms, turned)
+		checkColumns(t, "turned patches", &windowed[float32]{f, window, term}, places, terms, turned)
 		hole := func(k, j int) (float32, bool) {
 			o, kr, kc := k/g.size(), k%g.size()/g.kw, k%g.kw
 			n, y, column := j/g.inner(), j%g.inner()/g.w, j%g.w
@@ -106,7 +109,9 @@ func TestConvolutionOperandsAreWhatTheyAreDefinedAs(t *testing.T) {
 			}
 			return 0, false
 		}
-		checkColumns(t, "holes", &holes[float32]{dy, units, g}, units*g.size(), samples*g.inner(), hole)
+		d := dilatedFrame(dy, units, &g)
+		d.fill(samples)
+		checkColumns(t, "holes", &windowed[float32]{d, turnedKernel(d, &g), inputs(d, &g, samples)}, units*g.size(), samples*g.inner(), hole)
 	}
 }
 

@@ -1,6 +1,10 @@
 package trainer
 
-import "ulpine/quant"
+import (
+	"math"
+
+	"ulpine/quant"
+)
 
 // reluKind is y = R[activation](max(x, 0)), max(NaN, 0) = NaN and max(-0, 0) =
 // +0. The gradient passes where x > 0 (or is NaN) and is +0 elsewhere, at 0
@@ -30,10 +34,7 @@ func newRelu[T quant.Element](b *bench[T]) (layer[T], error) {
 func (l *relu[T]) forward(p *pass) {
 	x, y := l.below.values(p.samples), l.above.values(p.samples)
 	for i, v := range x {
-		if v <= 0 {
-			v = 0
-		}
-		y[i] = v
+		y[i] = max(v, 0) // NaN for NaN, +0 for -0
 	}
 	round(l.place, p, ForwardActivation, opActivation, y, y, &l.set.Activation, p.first*uint64(l.above.per))
 }
@@ -43,12 +44,13 @@ func (l *relu[T]) backward(p *pass, below bool) {
 		return
 	}
 	x, dy, dx := l.below.values(p.samples), l.above.gradients(p.samples), l.below.gradients(p.samples)
+	dy, dx = dy[:len(x)], dx[:len(x)]
 	for i, v := range x {
-		g := dy[i]
-		if v <= 0 {
-			g = 0
-		}
-		dx[i] = g
+		// Signs of activations are random: a mask costs less than a branch missed.
+		// Stored NaNs are positive, so they pass like positive numbers.
+		b := int64(math.Float64bits(float64(v)))
+		positive := uint64(-b>>63) &^ uint64(b>>63)
+		dx[i] = T(math.Float64frombits(math.Float64bits(float64(dy[i])) & positive))
 	}
 }
 
