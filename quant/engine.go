@@ -33,6 +33,7 @@ type engine struct {
 	t, s, chunk, node []float64
 	nodes             [][]float64
 	level             []float64
+	place             [maxLevels]int
 }
 
 // newEngine returns the engine of acc, nil where one of its points has no quick

@@ -67,12 +67,12 @@ func addExact(level, t []float64) {
 // places chooses the place of every level from the largest and the finest term
 // that the row and the block can form.
 func (e *engine) places() ([]int, bool) {
+	places := e.place[:0]
 	top, fine, ok := e.extent()
 	if !ok {
 		return nil, false
 	}
 	grow := max(bits.Len(uint(e.terms)), 2) // the sum of all terms is below 2^grow of the largest
-	var places []int
 	for {
 		// Parts up to 2^top, sums below 2^(top+grow), in units of 2^place.
 		place := top + grow - 53

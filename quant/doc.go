@@ -1,0 +1,108 @@
+// Package quant is the arithmetic of Ulpine: number formats, rounding, the random
+// bits of stochastic rounding, elementwise operations, sums and products of
+// matrices in which every product and every partial sum is rounded. Each emulated
+// operation equals the rounding of the exact real result.
+//
+// # Where things are
+//
+//	point.go       the words: Format, Rounding, Overflow, Point, Order, Accumulate
+//	real.go        exact reals of 128 bits and a sticky rest
+//	float.go       the floating-point family; names.go its names
+//	round.go       all rounding decisions: Point.Round, the scalar reference
+//	quick.go       the same on numbers held in binary64; block.go, slice.go elementwise
+//	tensor.go      formats with scales shared along an axis
+//	product.go     the operands of a product of matrices
+//	reference.go   sums in exact reals, one result at a time: the definition
+//	multiplier.go  the choice of path; mul.go blocks of columns; native.go the
+//	               machine's own arithmetic; engine.go, adds.go, orders.go, wide.go
+//	               everything else, bit-equal to the reference
+//	text.go        words to and from plans
+//	random/        counter-based random words
+//	elementary/    the project's own exp and log
+//
+// A further family of scalar formats (fixed point, posit, logarithmic, a table of
+// values) is one file with one type that implements Format, and one line in the
+// table families of names.go. It rounds everywhere at once, at the speed of the
+// reference. Integers and fixed point that wrap also implement Wrapper. Formats
+// whose values share a scale (blocks, scaled integers) implement Blocked, one file
+// each; their sums are those of their terms, with Product.Scale.
+//
+// # Rounding
+//
+// A Point rounds an exact real in three steps. Its format brackets the magnitude
+// between two neighbours, as if the exponent had no upper bound; the mode chooses
+// one; overflow is decided on the choice. Stochastic rounding acts on the
+// magnitude: with f the exact fraction of the gap, T = floor(f 2^r), floor(f 2^r +
+// 1/2) or nearest-even(f 2^r), and U the r random bits, the result is the neighbour
+// away from zero iff T + U >= 2^r. A value of the format never moves. Ties to even,
+// and odd, mean the code of the magnitude, which for formats without fraction bits
+// is the exponent field.
+//
+// Overflow goes to infinity, to the largest finite value, to NaN, or wraps. Toward
+// zero, to odd and the inward direction of up and down stop at the largest finite
+// value under each policy but wrap. An infinity is not rounded but replaced: it
+// stays where the policy is infinity, becomes the largest finite value where it is
+// saturate, NaN otherwise, whatever the mode. NaN is always the canonical quiet
+// NaN; a format without a code for it carries it all the same, and it is counted.
+// Where subnormals are flushed, a result below the least normal value after
+// rounding becomes zero of its sign; codes of subnormals then read as zero.
+//
+// Each rounding has at most one event. Overflow: a finite result became infinite or
+// NaN, or wrapped. Saturated: a result beyond the largest finite value, infinity
+// included, became it. NaN: any other result that is NaN. Underflow: a result that
+// was not zero became zero; it is counted in elementwise operations only, not in
+// products and sums.
+//
+// # Elementwise operations
+//
+// RoundSlice, ScaleSlice, AddSlice and SubSlice round the exact result once, keep
+// the sign of a zero, and give a zero sum of opposite terms the sign +, in all modes
+// (the sum of two zeros is -0 iff both are, and x - y is x + (-y)).
+//
+// # Sums
+//
+// A sum starts at +0: s_0 = +0, s_k = R[sum](s_(k-1) + R[product](a_k b_k)), the
+// product exact where no product point is set. A partial or finished sum that is
+// zero is +0, so that a padded term, which is skipped, and a packed zero give the
+// same bits while the other operand is finite; padding opposite an infinity or NaN
+// is skipped as well.
+//
+//   - sequential: as above, k ascending.
+//   - chunk(n): every n consecutive terms from +0 in sum; the finished chunks, in
+//     turn, from +0 in outer.
+//   - lanes(n): term k goes to lane k mod n, each a sequential sum from +0; then the
+//     lanes are added pairwise. Lanes without terms hold +0.
+//   - pairwise: neighbouring terms are added, R[sum](p_0 + p_1) and so on, level by
+//     level; an odd last one is carried up unrounded. A single term is added to +0.
+//     The tree is that of all terms, padding included as a zero: an addition
+//     with padding still rounds the other term to sum.
+//   - wide: the exact sum of the terms, rounded once to sum.
+//
+// Then Product.Scale multiplies the finished sum, R[sum](scale s), and the bias is
+// added, R[outer](s + bias), outer being sum where it is not set. Through binary32,
+// every addition, and the scaling, is first rounded to binary32, nearest-even; a
+// finite result that this makes infinite counts as the point's own overflow. It has
+// no meaning for wide sums and is refused there.
+//
+// Inside sums the random number of addition k of result (i, j) is the top r of 16
+// bits, r at most 16: u = (R|1)(V) + (R>>16)(V>>16) modulo 2^16 of the halves of
+// R = word k of lane i of the row stream and V = word k of lane j of the column
+// stream. Terms, padding included, have the numbers 0 to K-1; all later additions
+// K, K+1, ... in the order in which they are performed: outer additions of chunks,
+// nodes of a tree level by level from left to right, the rounding of a wide sum, the
+// scaling, the bias. In a pairwise tree terms have no addition of their own and the
+// numbers below K stay unused; additions of padding keep their number. Products
+// draw from streams of their own with the number of their term.
+//
+// # Exactness
+//
+// Fast paths compute in binary32 or binary64 only where that provably rounds as the
+// exact real does. The proofs stand beside the code (engine.setFolds, oddFold,
+// quick.choose, engine.wide); every path is held to the reference, and the
+// reference to exact rationals of math/big, by tests. Results do not depend on the
+// machine: no expression here may fuse a product with a sum, which is why each
+// product is written float64(a*b) or float32(a*b).
+package quant
+
+// ArithmeticVersion is raised whenever a bit of any result may change.
+const ArithmeticVersion = 1
