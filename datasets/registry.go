@@ -24,6 +24,7 @@ type kind struct {
 // table lists the data sets a plan can name.
 var table = []kind{
 	{"pump-vibration", "accelerometer windows of a pump in five states; invented data", newPumpVibration},
+	{"idx", "images and labels in IDX files, plain or gzip", newIDX},
 }
 
 // Options are the keys of a task as written, apart from the data set's name.
