@@ -119,7 +119,9 @@ func describeCurves(arms []*armView) string {
 	var b strings.Builder
 	for _, a := range arms {
 		c := &a.Training
-		if i := c.last(); i >= 0 {
+		if i := c.last(); i < 0 {
+			fmt.Fprintf(&b, "%s: no finite loss, %d diverged. ", a.Label(), c.Diverged)
+		} else {
 			fmt.Fprintf(&b, "%s: median %s at epoch %s, n = %d", a.Label(), significant(c.Mid[i], 3), significant(c.X[i], 3), c.N)
 			if c.Diverged > 0 {
 				fmt.Fprintf(&b, ", %d diverged", c.Diverged)

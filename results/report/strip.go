@@ -2,6 +2,7 @@ package report
 
 import (
 	"fmt"
+	"math"
 	"regexp"
 	"slices"
 	"strconv"
@@ -186,4 +187,51 @@ func (s strip) glyph() *draw.Figure {
 	f := &draw.Figure{H: stripHeight}
 	f.W = max(1, drawStrip(&f.Group, 0, 0, stripCell, s))
 	return f
+}
+
+// stripArms is the number of arms whose strips stand in one figure.
+const stripArms = 16
+
+// stripFigure draws the bit strips of all arms, for figure files; on the page
+// they stand in the verdict table.
+func stripFigure(v *view, width float64) []*draw.Figure {
+	var out []*draw.Figure
+	for i := 0; i < len(v.arms); i += stripArms {
+		out = append(out, stripPart(v.arms[i:min(i+stripArms, len(v.arms))], width))
+	}
+	return out
+}
+
+func stripPart(arms []*armView, width float64) *draw.Figure {
+	const row = 17.0
+	f := &draw.Figure{Title: "Bit strips: the formats of each arm", W: width}
+	y := 6.0
+	left := math.Min(230, width*0.3)
+	var desc []string
+	for _, a := range arms {
+		for i, l := range draw.Wrap(a.Label(), 11.5, true, left-14, max(1, len(a.Strips))) {
+			f.Text(0, y+11+row*float64(i), l, draw.Type{Size: 11.5, Bold: true})
+		}
+		for i, s := range a.Strips {
+			top := y + row*float64(i)
+			end := left + drawStrip(&f.Group, left, top+2, stripCell, s)
+			f.Text(end+10, top+11, s.Label()+" ("+s.Split()+")", draw.Type{Size: 10.5, Role: draw.Soft, Max: width - end - 12})
+		}
+		y += row*float64(max(1, len(a.Strips))) + 8
+		desc = append(desc, a.Label()+": "+stripWords(a.Strips)+".")
+	}
+	f.H, f.Desc = y, strings.Join(desc, " ")
+	return f
+}
+
+// stripWords are an arm's strips in one line.
+func stripWords(s []strip) string {
+	if len(s) == 0 {
+		return "no settings recorded"
+	}
+	words := make([]string, len(s))
+	for i := range s {
+		words[i] = s[i].Label()
+	}
+	return strings.Join(words, "; ")
 }

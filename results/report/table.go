@@ -46,12 +46,13 @@ type terminal struct {
 
 func (t *terminal) line(s string) { t.b.WriteString(strings.TrimRight(s, " ") + "\n") }
 
-// paint sets off words when colour is wanted; s must be padded before.
+// paint sets off words when colour is wanted; blanks at their end stay outside.
 func (t *terminal) paint(code, s string) string {
-	if !t.color || s == "" {
+	words := strings.TrimRight(s, " ")
+	if !t.color || words == "" {
 		return s
 	}
-	return code + s + reset
+	return code + words + reset + s[len(words):]
 }
 
 // answer writes the sentence and what was fixed.

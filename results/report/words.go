@@ -116,9 +116,13 @@ func (s scoreWords) interval(low, high float64) string {
 	return "[" + s.bound(low) + ", " + s.bound(high) + "]"
 }
 
+// bound spells one end of an interval; an end that is not bounded is infinite.
 func (s scoreWords) bound(v float64) string {
-	if math.IsInf(v, 0) {
-		return minus(strings.TrimPrefix(fmt.Sprintf("%+.0f", v), "")) // ±Inf
+	switch {
+	case math.IsInf(v, 1):
+		return "+∞"
+	case math.IsInf(v, -1):
+		return "−∞"
 	}
 	return s.diff(v)
 }
