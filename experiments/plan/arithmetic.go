@@ -1,0 +1,145 @@
+package plan
+
+import (
+	"slices"
+
+	"ulpine/quant"
+	"ulpine/trainer"
+)
+
+// arm turns an assignment into what the trainer takes, one arithmetic a layer.
+// states is the number of state tensors of the arm's optimizer.
+func (a *assignment) arm(network *trainer.Network, states int) trainer.Arm {
+	arm := trainer.Arm{
+		Input:        a.slots[trainer.Input].value.point,
+		LossGradient: a.slots[trainer.LossGradient].value.point,
+		Layers:       make([]trainer.Arithmetic, len(network.Layers)),
+	}
+	for i := range arm.Layers {
+		arm.Layers[i] = a.layer(states)
+	}
+	for i := range arm.Layers {
+		reuseOperands(network, &arm, i)
+	}
+	return arm
+}
+
+// layer is the assignment as one layer sees it.
+func (a *assignment) layer(states int) trainer.Arithmetic {
+	at := func(id trainer.PointID) quant.Point { return a.slots[id].value.point }
+	return trainer.Arithmetic{
+		Weight:     at(trainer.ForwardWeight),
+		Activation: at(trainer.ForwardActivation),
+		Forward:    a.accumulate(trainer.ForwardProduct),
+		InputGradient: trainer.Backward{
+			First:    a.optional(trainer.InputGradientWeight),
+			Gradient: a.optional(trainer.InputGradientGradient),
+			Sums:     a.accumulate(trainer.InputGradientProduct),
+			Result:   at(trainer.InputGradientResult),
+		},
+		WeightGradient: trainer.Backward{
+			First:    a.optional(trainer.WeightGradientActivation),
+			Gradient: a.optional(trainer.WeightGradientGradient),
+			Sums:     a.accumulate(trainer.WeightGradientProduct),
+			Result:   at(trainer.WeightGradientResult),
+		},
+		States: slices.Repeat([]quant.Point{at(trainer.UpdateState)}, states),
+		Step:   at(trainer.UpdateStep),
+		Master: at(trainer.UpdateMaster),
+	}
+}
+
+// optional is a point of its own copy, or nil where it is unset.
+func (a *assignment) optional(id trainer.PointID) *quant.Point {
+	s := &a.slots[id]
+	if !s.set || s.value.exact {
+		return nil
+	}
+	p := s.value.point
+	return &p
+}
+
+// accumulate is the sum whose product point is given; sum and outer follow it in
+// the order of points.
+func (a *assignment) accumulate(product trainer.PointID) quant.Accumulate {
+	sum := a.slots[product+1].value
+	acc := quant.Accumulate{
+		Product: a.optional(product), Sum: sum.point, Order: sum.order, Through32: sum.through,
+		Outer: a.optional(product + 2),
+	}
+	if acc.Outer != nil && samePoint(*acc.Outer, acc.Sum) {
+		acc.Outer = nil // what an unset one means
+	}
+	return acc
+}
+
+// samePoint reports whether two points round every real to the same value, given
+// the same random bits. The text of a point says all of it.
+func samePoint(p, q quant.Point) bool { return p.String() == q.String() }
+
+// holds reports whether rounding at p leaves every tensor stored at q as it is:
+// it has the same format and deals with infinities alike, and a representable
+// value never moves, stochastic rounding included.
+func holds(p, q quant.Point) bool {
+	p.Rounding, q.Rounding = quant.Rounding{}, quant.Rounding{}
+	return samePoint(p, q)
+}
+
+// reuseOperands unsets the operands of layer i whose rounding cannot change a
+// value, so that an arm has one form however it is written, and no time is spent
+// on them: shorthands set every operand, mostly to what its tensor has anyway.
+func reuseOperands(network *trainer.Network, arm *trainer.Arm, i int) {
+	l := &arm.Layers[i]
+	if p := l.InputGradient.First; p != nil {
+		// Taken from the master; the forward working copy is too.
+		same := p.Rounding.Mode != quant.Stochastic && samePoint(*p, l.Weight)
+		if same || holds(*p, l.Master) && holds(l.Weight, l.Master) {
+			l.InputGradient.First = nil
+		}
+	}
+	if p := l.WeightGradient.First; p != nil && all(activationsBelow(network, arm, i), *p) {
+		l.WeightGradient.First = nil
+	}
+	gradients := gradientsAbove(network, arm, i)
+	for _, backward := range []*trainer.Backward{&l.InputGradient, &l.WeightGradient} {
+		if p := backward.Gradient; p != nil && all(gradients, *p) {
+			backward.Gradient = nil
+		}
+	}
+}
+
+// all reports whether p holds what is stored at every one of the points.
+func all(points []quant.Point, p quant.Point) bool {
+	return !slices.ContainsFunc(points, func(q quant.Point) bool { return !holds(p, q) })
+}
+
+// activationsBelow are the points that the tensor below layer i may last have
+// been rounded at: its own one, and, because a layer may pass values on
+// unrounded, those below it down to one with parameters, or the input.
+func activationsBelow(network *trainer.Network, arm *trainer.Arm, i int) []quant.Point {
+	var points []quant.Point
+	for j := i - 1; j >= 0; j-- {
+		if slices.Contains(network.Layers[j].Points, trainer.ForwardActivation) {
+			points = append(points, arm.Layers[j].Activation)
+		}
+		if len(network.Layers[j].Params) > 0 {
+			return points
+		}
+	}
+	return append(points, arm.Input)
+}
+
+// gradientsAbove are the points that the gradient of layer i's output may last
+// have been rounded at: a layer without arithmetic passes it on as it is.
+func gradientsAbove(network *trainer.Network, arm *trainer.Arm, i int) []quant.Point {
+	var points []quant.Point
+	for j := i + 1; j < len(network.Layers); j++ {
+		if slices.Contains(network.Layers[j].Points, trainer.InputGradientResult) {
+			points = append(points, arm.Layers[j].InputGradient.Result)
+		}
+		if len(network.Layers[j].Params) > 0 {
+			return points
+		}
+	}
+	return append(points, arm.LossGradient)
+}

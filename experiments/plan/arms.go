@@ -1,0 +1,226 @@
+package plan
+
+import (
+	"fmt"
+	"slices"
+	"strings"
+
+	"ulpine/quant"
+	"ulpine/trainer"
+)
+
+// armReader is what the arms of one plan are read with.
+type armReader struct {
+	*reader
+	formats  formats
+	network  *trainer.Network
+	training trainer.Training
+	examples int // of the training set, which no batch may exceed
+}
+
+// readArms returns the baseline and, behind it, the plan's arms.
+func (r *armReader) readArms(root *node) []Arm {
+	base := binary32Everywhere()
+	var scale trainer.LossScale
+	if n := r.table(root, "baseline", `[baseline] with everything = "fp32"`); n != nil {
+		r.readSettings(n, &base, r.formats, []string{"loss_scale"})
+		if at := n.table["loss_scale"]; at != nil {
+			scale = r.readLossScale(at)
+		}
+	}
+	baseline := Arm{Name: baselineSlug, Slug: baselineSlug, Baseline: true, Training: r.training}
+	arms := []Arm{r.finish(baseline, &base, scale)}
+	if root.table["arm"] == nil {
+		r.fail(&PlanError{File: root.file, Key: "arm", Reason: "the plan has no arms", Remedy: `write [[arm]] with name = "bf16" and storage = "bf16"`})
+	}
+	seen := map[string]*node{}
+	for _, n := range r.tables(root, "arm") {
+		arm := Arm{Training: r.training}
+		arm.Name, arm.Slug = r.armName(n, seen)
+		own := base.inherit()
+		r.readSettings(n, &own, r.formats, armKeys)
+		r.readOverrides(n, &arm)
+		armScale := scale
+		if at := n.table["loss_scale"]; at != nil {
+			armScale = r.readLossScale(at)
+		}
+		arms = append(arms, r.finish(arm, &own, armScale))
+	}
+	return arms
+}
+
+// armName reads the name of an arm, which must differ from all others as a slug.
+func (r *armReader) armName(n *node, seen map[string]*node) (name, slug string) {
+	at := n.table["name"]
+	name = strings.TrimSpace(r.text(n, "name", ""))
+	slug = Slug(name)
+	twin := seen[slug]
+	switch {
+	case at == nil:
+		r.fail(n.errorf(`write name = "bf16 nearest"`, "name is missing"))
+		return name, slug
+	case at.value == nil:
+	case slug == "":
+		r.fail(at.errorf("use letters a to z and digits", "the name %q has no letter or digit to call runs by", name))
+	case slug == baselineSlug || slug == pretrainSlug:
+		r.fail(at.errorf("choose another name", "%q is the name of the plan's own %s", name, slug))
+	case twin != nil && twin.value == at.value:
+		r.fail(at.errorf("give each arm a name of its own", "the name %q is taken by the arm in %s line %d", name, twin.file, twin.line))
+	case twin != nil:
+		r.fail(at.errorf("give each arm a name of its own", "the name %q and %q in %s line %d are both %q as names of runs", name, twin.value, twin.file, twin.line, slug))
+	}
+	seen[slug] = at
+	return name, slug
+}
+
+// readOverrides reads how an arm trains otherwise than the plan says.
+func (r *armReader) readOverrides(n *node, arm *Arm) {
+	t := r.training
+	if sub := r.table(n, "training", "training.learning_rate = 0.01"); sub != nil {
+		t = r.readTraining(sub, t, true, trainingOverrideKeys)
+		r.checkBatch(sub, t.Batch, r.examples)
+	}
+	if at := n.table["learning_rate"]; at != nil {
+		t.LearningRate = r.readSchedule(at)
+		if twin := n.table["training"]; twin != nil && twin.table["learning_rate"] != nil {
+			other := twin.table["learning_rate"]
+			r.fail(at.errorf("keep one of them", "the learning rate is set in %s line %d too", other.file, other.line))
+		}
+	}
+	arm.Training = t
+	for _, c := range []struct {
+		what     string
+		old, new any
+	}{
+		{"learning rate", r.training.LearningRate, t.LearningRate},
+		{"optimizer", r.training.Optimizer, t.Optimizer},
+		{"batch", r.training.Batch, t.Batch},
+		{"epochs", r.training.Epochs, t.Epochs},
+	} {
+		if fmt.Sprint(c.old) != fmt.Sprint(c.new) {
+			arm.Overrides = append(arm.Overrides, c.what)
+		}
+	}
+}
+
+// checkBatch refuses a batch in the training table n that is larger than the
+// training set.
+func (r *reader) checkBatch(n *node, batch, examples int) {
+	if at := n.table["batch"]; at != nil && examples > 0 && batch > examples {
+		r.fail(at.errorf(fmt.Sprintf("write at most %d", examples), "a batch of %d is larger than the %d training examples", batch, examples))
+	}
+}
+
+// finish resolves an arm whose settings are read.
+func (r *armReader) finish(arm Arm, a *assignment, scale trainer.LossScale) Arm {
+	states, _ := arm.Training.Optimizer.States()
+	arm.Arithmetic = a.arm(r.network, states)
+	arm.Arithmetic.LossScale = scale
+	arm.LossScale = describeLossScale(scale)
+	arm.Settings = settings(r.network, &arm.Arithmetic)
+	arm.Summary = summary(a, &arm)
+	arm.Canonical = arm.canonical(r.network)
+	arm.assignment = a
+	return arm
+}
+
+// summary is an arm in one line.
+func summary(a *assignment, arm *Arm) string {
+	parts := slices.Clone(a.spelled)
+	if len(parts) == 0 {
+		parts = []string{"as the baseline"}
+		if arm.Baseline {
+			parts = []string{"everything fp32"}
+		}
+	}
+	if arm.Arithmetic.LossScale.Kind != trainer.NoScale {
+		parts = append(parts, "loss scale "+arm.LossScale)
+	}
+	for _, o := range arm.Overrides {
+		parts = append(parts, "its own "+o)
+	}
+	return strings.Join(parts, ", ")
+}
+
+// settings lists the rounding points an arm computes with, input and loss as
+// layer -1, in the order of computation within each layer.
+func settings(network *trainer.Network, arm *trainer.Arm) []Setting {
+	rows := []Setting{
+		pointRow(-1, "input", trainer.Input, arm.Input),
+		pointRow(-1, "loss", trainer.LossGradient, arm.LossGradient),
+	}
+	for i := range network.Layers {
+		for _, id := range network.PointsOf(i) {
+			rows = append(rows, layerRows(network, arm, i, id)...)
+		}
+	}
+	return rows
+}
+
+// layerRows are the rows of one point of layer i: none for an outer sum that is
+// done as the sum is, one a state tensor at update.state.
+func layerRows(network *trainer.Network, arm *trainer.Arm, i int, id trainer.PointID) []Setting {
+	name, a := network.Layers[i].Name, &arm.Layers[i]
+	points := a.At(id)
+	switch {
+	case len(points) > 0:
+	case isProduct(id):
+		return []Setting{{Layer: i, Name: name, Point: id.String(), Format: exactWord, Rounding: exactWord}}
+	case isOperand(id):
+		row := pointRow(i, name, id, reused(network, arm, i, id))
+		row.Rounding = reusedWord
+		return []Setting{row}
+	}
+	rows := make([]Setting, len(points))
+	for k, p := range points {
+		rows[k] = pointRow(i, name, id, *p)
+		if acc := sumOf(id, a); acc != nil {
+			rows[k].Order = acc.Order.String()
+			if acc.Through32 {
+				rows[k].Order += " through binary32"
+			}
+		}
+	}
+	return rows
+}
+
+// reusedWord stands where an operand takes the stored tensor as it is.
+const reusedWord = "reused"
+
+// reused is the point at which the tensor that an unset operand takes was stored.
+func reused(network *trainer.Network, arm *trainer.Arm, i int, id trainer.PointID) quant.Point {
+	switch id {
+	case trainer.InputGradientWeight:
+		return arm.Layers[i].Weight
+	case trainer.WeightGradientActivation:
+		return activationsBelow(network, arm, i)[0]
+	}
+	return gradientsAbove(network, arm, i)[0]
+}
+
+// sumOf is the accumulation whose sum point is id, or nil.
+func sumOf(id trainer.PointID, a *trainer.Arithmetic) *quant.Accumulate {
+	switch id {
+	case trainer.ForwardSum:
+		return &a.Forward
+	case trainer.InputGradientSum:
+		return &a.InputGradient.Sums
+	case trainer.WeightGradientSum:
+		return &a.WeightGradient.Sums
+	}
+	return nil
+}
+
+// pointRow is a point as a row.
+func pointRow(layer int, name string, id trainer.PointID, p quant.Point) Setting {
+	l := p.Format.Limits()
+	policy := p.Overflow
+	if policy == quant.FormatDefault {
+		policy = l.DefaultOverflow
+	}
+	return Setting{
+		Layer: layer, Name: name, Point: id.String(), Format: p.Format.String(),
+		Exponent: l.Exponent, Fraction: l.Fraction, Bits: l.Bits,
+		Rounding: describeRounding(p.Rounding), Overflow: policy.String(),
+	}
+}

@@ -1,0 +1,238 @@
+package plan
+
+import (
+	"fmt"
+	"slices"
+	"strings"
+
+	"ulpine/quant"
+	"ulpine/trainer"
+)
+
+// slot is what one rounding point is set to, by which setting.
+type slot struct {
+	set    bool // false: an operand that is reused, or an outer sum like the sum
+	value  value
+	rank   specificity
+	at     *node  // the setting; nil: inherited
+	origin string // its key: "storage", "update.master"; "baseline"
+}
+
+// assignment is a setting for every rounding point, indexed by PointID.
+type assignment struct {
+	slots   []slot
+	spelled []string // the settings in file order, short
+}
+
+// isOperand reports whether a point is an operand of a gradient product: unset,
+// it reuses the forward working copy or the stored tensor.
+func isOperand(id trainer.PointID) bool {
+	switch id {
+	case trainer.InputGradientWeight, trainer.InputGradientGradient,
+		trainer.WeightGradientActivation, trainer.WeightGradientGradient:
+		return true
+	}
+	return false
+}
+
+func isSum(id trainer.PointID) bool {
+	return id == trainer.ForwardSum || id == trainer.InputGradientSum || id == trainer.WeightGradientSum
+}
+
+func isOuter(id trainer.PointID) bool {
+	return id == trainer.ForwardOuter || id == trainer.InputGradientOuter || id == trainer.WeightGradientOuter
+}
+
+func isProduct(id trainer.PointID) bool { return id.InsideSums() && !isSum(id) && !isOuter(id) }
+
+// classOf is what a setting of the point's own key may hold.
+func classOf(id trainer.PointID) class {
+	switch {
+	case isSum(id):
+		return sums
+	case id.InsideSums():
+		return inside
+	}
+	return stored
+}
+
+// allPoints are the rounding points in the order of computation.
+func allPoints() []trainer.PointID {
+	all := make([]trainer.PointID, len(trainer.PointNames()))
+	for i := range all {
+		all[i] = trainer.PointID(i)
+	}
+	return all
+}
+
+// binary32Everywhere is what a baseline is before its settings are read: every
+// point binary32 rounded to nearest-even, products rounded, sums sequential.
+func binary32Everywhere() assignment {
+	a := assignment{slots: make([]slot, len(allPoints()))}
+	for _, id := range allPoints() {
+		a.slots[id] = slot{
+			set:    !isOperand(id) && !isOuter(id),
+			value:  value{point: quant.Point{Format: quant.Binary32}},
+			origin: "default",
+		}
+	}
+	return a
+}
+
+// inherit is what an arm of this baseline is before its settings are read. An
+// operand that only a shorthand of the baseline set is reused again: its arm may
+// have set the tensor it is taken from.
+func (a assignment) inherit() assignment {
+	b := assignment{slots: slices.Clone(a.slots)}
+	for id := range b.slots {
+		s := &b.slots[id]
+		if isOperand(trainer.PointID(id)) && s.rank.what < pointwise {
+			s.set = false
+		}
+		s.rank, s.at, s.origin = specificity{}, nil, "baseline"
+	}
+	return b
+}
+
+// put applies one setting to one point, or reports a setting of equal rank.
+func (a *assignment) put(id trainer.PointID, s slot) *PlanError {
+	old := &a.slots[id]
+	switch c := s.rank.compare(old.rank); {
+	case c < 0:
+		return nil
+	case c == 0 && old.at != nil:
+		return s.at.errorf("keep one of them", "sets %s, as %s in %s line %d does: two equally specific settings on one point",
+			id, old.origin, old.at.file, old.at.line)
+	}
+	*old = s
+	return nil
+}
+
+// storagePoints and sumPoints are what the shorthands set.
+func storagePoints() []trainer.PointID {
+	return slices.DeleteFunc(allPoints(), trainer.PointID.InsideSums)
+}
+
+func sumPoints() []trainer.PointID {
+	return slices.DeleteFunc(allPoints(), func(id trainer.PointID) bool { return !isSum(id) && !isOuter(id) })
+}
+
+// target is a key of an arm that sets points.
+type target struct {
+	class class
+	rank  breadth
+	ids   []trainer.PointID
+}
+
+// operandKey sets both operands of a gradient product.
+const operandKey = "operand"
+
+// targets is the table of all keys that set points, dotted.
+func targets() map[string]target {
+	t := map[string]target{
+		"everything": {general, broad, allPoints()},
+		"storage":    {stored, partial, storagePoints()},
+		"accumulate": {sums, partial, sumPoints()},
+	}
+	for _, id := range allPoints() {
+		t[id.String()] = target{classOf(id), pointwise, []trainer.PointID{id}}
+		if isOperand(id) {
+			phase, _, _ := strings.Cut(id.String(), ".")
+			both := t[phase+"."+operandKey]
+			t[phase+"."+operandKey] = target{stored, pointwise, append(both.ids, id)}
+		}
+	}
+	return t
+}
+
+// armKeys are the keys of an arm that set no point.
+var armKeys = []string{"name", "loss_scale", "training", "learning_rate"}
+
+// readSettings applies the settings in the table n to a. also lists the other
+// keys that n may have.
+func (r *reader) readSettings(n *node, a *assignment, fs formats, also []string) {
+	all := targets()
+	phases := map[string][]string{} // "forward" -> "weight", "activation", ...
+	top := slices.Clone(also)
+	for key := range all {
+		phase, name, dotted := strings.Cut(key, ".")
+		if !dotted {
+			top = append(top, key)
+			continue
+		}
+		if phases[phase] == nil {
+			top = append(top, phase)
+		}
+		phases[phase] = append(phases[phase], name)
+	}
+	for _, k := range n.names() {
+		sub := n.table[k]
+		switch {
+		case phases[k] != nil && sub.table != nil:
+			r.known(sub, phases[k]...)
+			for _, name := range sub.names() {
+				if t, ok := all[k+"."+name]; ok {
+					r.applyTarget(sub.table[name], k+"."+name, t, a, fs)
+				}
+			}
+		case phases[k] != nil:
+			slices.Sort(phases[k])
+			r.wrongType(sub, "a table of points", fmt.Sprintf("%s.%s = ... (points: %s)", k, phases[k][0], strings.Join(phases[k], ", ")))
+		case all[k].ids != nil:
+			r.applyTarget(sub, k, all[k], a, fs)
+		case !slices.Contains(also, k):
+			r.fail(sub.errorf(suggestPoint(k, top, all), "unknown key"))
+		}
+	}
+}
+
+// suggestPoint suggests a key for an unknown one; a bare "master" is taken for
+// the point of that name.
+func suggestPoint(word string, top []string, all map[string]target) string {
+	var full []string
+	for key := range all {
+		if strings.HasSuffix(key, "."+word) {
+			full = append(full, key)
+		}
+	}
+	if len(full) > 0 {
+		return "write the point in full: " + listed(full)
+	}
+	return suggest(word, top)
+}
+
+// applyTarget reads the setting at n and applies it to the points of its key.
+func (r *reader) applyTarget(n *node, key string, t target, a *assignment, fs formats) {
+	v, ok := value{exact: true}, true
+	if word, _ := n.value.(string); word != exactWord || !isProduct(t.ids[0]) || len(t.ids) > 1 {
+		v, ok = r.readValue(n, t.class, fs)
+	}
+	if !ok {
+		return
+	}
+	a.spelled = append(a.spelled, key+" "+v.spell())
+	rank := specificity{allLayers, t.rank}
+	for _, id := range t.ids {
+		s := slot{set: true, rank: rank, at: n, origin: key, value: value{point: v.point, exact: v.exact}}
+		switch {
+		case isSum(id):
+			s.value.order, s.value.through = v.order, v.through
+			if v.outer != nil && t.rank == pointwise {
+				r.put(a, id+1, slot{set: true, rank: rank, at: v.outerAt, origin: key + ".outer", value: value{point: *v.outer}})
+			}
+		case isOuter(id) && t.rank < pointwise:
+			s.set = v.outer != nil
+			if s.set {
+				s.value.point = *v.outer
+			}
+		}
+		r.put(a, id, s)
+	}
+}
+
+// put applies a setting and records a conflict.
+func (r *reader) put(a *assignment, id trainer.PointID, s slot) {
+	if err := a.put(id, s); err != nil {
+		r.fail(err)
+	}
+}

@@ -1,0 +1,172 @@
+package plan
+
+import (
+	"fmt"
+	"slices"
+	"strings"
+
+	"ulpine/trainer"
+)
+
+// planKeys are the keys of a plan.
+var planKeys = []string{
+	"title", "question", "include", "task", "network", "training", "pretrain", "replicates",
+	"claim", "baseline", "arm", "contrast", "format",
+}
+
+// Load reads, checks and resolves the plan in the file name. A path such as
+// experiments/plans/first-look.toml that is not on disk is read from the copy
+// inside the program, which Notices then says. The error is a *PlanError or
+// Errors: what is wrong with the plan, one line each.
+func Load(name string) (*Plan, error) {
+	var notices []string
+	p, err := LoadFrom(disk{&notices}, name)
+	if err != nil {
+		return nil, err
+	}
+	p.Notices = append(notices, p.Notices...)
+	return p, nil
+}
+
+// LoadFrom is Load with the texts of the plan and what it includes from source.
+// Data files are read from disk all the same, relative to the file that names
+// them.
+func LoadFrom(source Source, name string) (*Plan, error) {
+	l := loader{source: source}
+	root, err := l.load(name, nil, nil)
+	if err != nil {
+		return nil, err
+	}
+	r := &reader{}
+	p := r.build(root)
+	if len(r.errs) > 0 {
+		slices.SortStableFunc(r.errs, func(a, b *PlanError) int {
+			if a.File != b.File {
+				return 0 // files stay in the order in which they were met
+			}
+			return a.Line - b.Line
+		})
+		return nil, r.errs
+	}
+	p.File, p.Text = name, l.text.String()
+	p.Warnings = p.warn()
+	return p, nil
+}
+
+// build reads every table of a plan. Tables that lean on one that failed are
+// read with a stand-in, so that their own errors are told too.
+func (r *reader) build(root *node) *Plan {
+	r.known(root, planKeys...)
+	p := &Plan{
+		Title:    r.text(root, "title", ""),
+		Question: r.text(root, "question", ""),
+	}
+	p.Task = r.readTask(root)
+	p.Network = r.readNetwork(root, &p.Task)
+	p.Training = r.readMainTraining(root, &p.Task)
+	p.Replicates = r.readReplicates(root)
+	p.Claim = r.readClaim(root)
+	arms := armReader{r, r.readFormats(root), &p.Network, p.Training, p.Task.Train}
+	p.Arms = arms.readArms(root)
+	p.Contrasts = r.readContrasts(root, p.Arms, p.Claim.Margin)
+	p.Pretrain = r.readPretrain(root, p)
+	r.checkMetric(root, p.Claim, p.Training, p.Task)
+	return p
+}
+
+// readNetwork reads [network].
+func (r *reader) readNetwork(root *node, task *Task) trainer.Network {
+	n := r.required(root, "network", `[network] with layers = ["dense 16", "relu", "dense 5"]`)
+	if n == nil {
+		return trainer.Network{}
+	}
+	r.known(n, "layers")
+	at := n.table["layers"]
+	texts, nodes := r.texts(n, "layers")
+	switch {
+	case at == nil:
+		r.fail(n.errorf(`write layers = ["dense 16", "relu", "dense 5"]`, "layers are missing"))
+		return trainer.Network{}
+	case nodes == nil, len(task.Shape) == 0:
+		return trainer.Network{}
+	case len(texts) == 0:
+		r.fail(at.errorf(fmt.Sprintf("write at least [%q]", fmt.Sprintf("dense %d", len(task.ClassNames))), "the network has no layers"))
+		return trainer.Network{}
+	}
+	network, err := trainer.ParseLayers(texts, task.Shape)
+	if err != nil {
+		r.fail(fault(faultyLayer(err, at), err))
+		return trainer.Network{}
+	}
+	r.checkOutputs(&network, task, nodes)
+	return network
+}
+
+// faultyLayer is the node of the layer that an error of the trainer names.
+func faultyLayer(err error, layers *node) *node {
+	var i, of int
+	if n, _ := fmt.Sscanf(err.Error(), "layer %d of %d", &i, &of); n == 2 && i >= 1 && i <= len(layers.list) {
+		return layers.list[i-1]
+	}
+	return layers
+}
+
+// checkOutputs holds the last layer to the classes of the task.
+func (r *reader) checkOutputs(network *trainer.Network, task *Task, nodes []*node) {
+	last := network.Layers[len(network.Layers)-1]
+	classes := len(task.ClassNames)
+	remedy := fmt.Sprintf("end with %q", fmt.Sprintf("dense %d", classes))
+	switch at := nodes[len(nodes)-1]; {
+	case network.Parameters() == 0:
+		r.fail(at.errorf(remedy, "the network has no layer with weights: nothing to train"))
+	case network.Outputs() != classes:
+		r.fail(at.errorf(remedy, "the last layer, %q, has an output of %s = %d values, but the task has %d classes",
+			last.Name, product(last.Out), network.Outputs(), classes))
+	}
+}
+
+// product writes a shape as the product that its volume is: 6 x 60.
+func product(shape []int) string {
+	words := make([]string, len(shape))
+	for i, d := range shape {
+		words[i] = fmt.Sprint(d)
+	}
+	return strings.Join(words, " x ")
+}
+
+// defaultTraining is what [training] may leave out.
+func defaultTraining() trainer.Training {
+	return trainer.Training{
+		Loss: "cross-entropy", Optimizer: trainer.Optimizer{Kind: "sgd"},
+		LearningRate: trainer.Schedule{Multiply: 1}, Shuffle: true,
+		EvaluateTest: trainer.EveryEpoch, EvaluateValidation: trainer.EveryEpoch,
+	}
+}
+
+// readMainTraining reads [training].
+func (r *reader) readMainTraining(root *node, task *Task) trainer.Training {
+	n := r.required(root, "training", "[training] with learning_rate = 0.02, batch = 32 and epochs = 15")
+	if n == nil {
+		return defaultTraining()
+	}
+	t := r.readTraining(n, defaultTraining(), false, trainingKeys)
+	r.checkBatch(n, t.Batch, task.Train)
+	return t
+}
+
+// readPretrain reads [pretrain], or returns nil.
+func (r *reader) readPretrain(root *node, p *Plan) *Pretrain {
+	n := r.table(root, "pretrain", `[pretrain] with task.variant = "plain" and training.epochs = 5`)
+	if n == nil {
+		return nil
+	}
+	r.known(n, "task", "training")
+	pre := &Pretrain{Task: r.varyTask(root, n, &p.Task), Training: p.Training}
+	if sub := r.table(n, "training", "training.epochs = 5"); sub != nil {
+		pre.Training = r.readTraining(sub, p.Training, true, trainingKeys)
+		r.checkBatch(sub, pre.Training.Batch, pre.Task.Train)
+	}
+	r.checkSameShape(n, &p.Task, &pre.Task)
+	pre.Canonical = pre.canonical(p.Baseline(), &p.Network)
+	return pre
+}

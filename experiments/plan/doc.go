@@ -1,0 +1,77 @@
+// Package plan is the plan language: it reads a TOML file, checks it, and
+// resolves it into a Plan in which nothing is left to a default. It is the only
+// package that knows TOML.
+//
+// # Tables
+//
+//	title, question     texts for the report
+//	include             another file, or an array of them, relative to the file
+//	                    that includes it; merged first, the plan's own keys win
+//	[task]              the data
+//	[network]           layers, one text each
+//	[training]          optimizer, learning_rate, batch, epochs, loss, shuffle,
+//	                    evaluate
+//	[pretrain]          task and training: what differs from the plan's own ones in
+//	                    a training that is done first, once a replicate, under the
+//	                    baseline's arithmetic, and from whose weights every arm starts
+//	[replicates]        count, first_seed
+//	[claim]             metric, margin, confidence
+//	[format.NAME]       a number format of the plan's own
+//	[baseline]          settings of the arm that all others are compared with
+//	[[arm]]             name, settings, loss_scale, training
+//	[[contrast]]        arm, against, margin: two arms to compare with each other
+//
+// Tables of an included file and of the plan merge key by key. A text, a number,
+// an array or an inline table { ... } is a value and is replaced whole. Arrays of
+// tables are joined, the included ones first; an arm of the plan with the name of
+// an included one takes its place.
+//
+// # Settings
+//
+// The rounding points are those of package trainer: input, forward.weight, ...,
+// update.master. Each is a key of an arm. Shorthands set several:
+//
+//	everything               all points, the operands of gradient products included
+//	storage                  all points at which a tensor is stored or taken
+//	accumulate               the three sums, their order and outer sums; never products
+//	input_gradient.operand   input_gradient.weight and input_gradient.gradient
+//	weight_gradient.operand  weight_gradient.activation and weight_gradient.gradient
+//
+// A setting is a format's word, "exact" at a product point, or a table:
+//
+//	format       a word; the table says no more than it holds: what it leaves out
+//	             has its default, not what a broader setting says
+//	rounding     nearest-even (default), nearest-away, toward-zero, up, down,
+//	             to-odd, stochastic
+//	random_bits  of stochastic rounding: 1 to 32, within sums to 16; default 16
+//	variant      of stochastic rounding: truncated (default), centred, centred-even
+//	overflow     infinity, saturate, nan; default: the format's own
+//	subnormals   false: results below the least normal value become zero
+//	bias, top    another exponent bias or layout of the top exponent
+//	width        bits in all, checked against the format
+//	order        of sums: sequential (default), pairwise, wide, chunk(64), lanes(8)
+//	outer        of sums: where finished chunks and the bias are added; default:
+//	             as the sum
+//	through      of sums: "binary32", an adder that first rounds to binary32
+//
+// # Which setting holds
+//
+// The more specific one, wherever it stands: everything, then storage and
+// accumulate, then a point's own key. Operand is as specific as the two keys it
+// stands for. Two equally specific settings on one point are an error. Points
+// that an arm does not set are as in the baseline, and those that the baseline
+// does not set are binary32, nearest-even, sequential, products rounded. Two
+// kinds of points can also be unset: an operand of a gradient product then reuses
+// the forward working copy or the stored tensor, an outer sum is done as the sum.
+// An arm inherits an operand from the baseline only if the baseline sets it by
+// its own key. An operand whose rounding cannot change a value, because the
+// tensor it is taken from has that format already, is resolved to a reused one:
+// arms that compute the same bits have the same canonical text.
+//
+// # Errors and warnings
+//
+// What is wrong with a plan is a *PlanError, or Errors for several: file, line,
+// key, reason, remedy, one line each. The TOML decoder yields no places of
+// values, so package plan scans the text for them. Warnings are doubts about a
+// plan that is allowed; they travel with the results into the report.
+package plan

@@ -1,0 +1,73 @@
+package plan
+
+import (
+	"fmt"
+	"strings"
+)
+
+// PlanError is one thing wrong with a plan, told in one line: where, what, and
+// what to do about it.
+type PlanError struct {
+	File   string // as the caller named it, or as an include resolved it
+	Line   int    // 1-based; 0 when the whole file is meant
+	Key    string // dotted; elements of arrays are counted from 1: "arm[2].update.master"
+	Reason string // lower case, no full stop
+	Remedy string // lower case, an instruction; may be empty only when Reason holds it
+	Err    error  // the cause, if another package found it
+}
+
+// Error is "file:line: key: reason; remedy", always one line.
+func (e *PlanError) Error() string {
+	var b strings.Builder
+	b.WriteString(e.File)
+	if e.Line > 0 {
+		fmt.Fprintf(&b, ":%d", e.Line)
+	}
+	b.WriteString(": ")
+	if e.Key != "" {
+		b.WriteString(e.Key)
+		b.WriteString(": ")
+	}
+	b.WriteString(e.Reason)
+	if e.Remedy != "" {
+		b.WriteString("; ")
+		b.WriteString(e.Remedy)
+	}
+	return oneLine(b.String())
+}
+
+// Unwrap returns the cause.
+func (e *PlanError) Unwrap() error { return e.Err }
+
+// Errors are all the things wrong with a plan, in the order of files and lines
+// in which they were found. It is never empty when returned as an error.
+type Errors []*PlanError
+
+// Error has one line for each thing wrong.
+func (e Errors) Error() string {
+	lines := make([]string, len(e))
+	for i, one := range e {
+		lines[i] = one.Error()
+	}
+	return strings.Join(lines, "\n")
+}
+
+// Unwrap lets errors.As find each *PlanError.
+func (e Errors) Unwrap() []error {
+	all := make([]error, len(e))
+	for i, one := range e {
+		all[i] = one
+	}
+	return all
+}
+
+// oneLine replaces control characters, which a plan may smuggle into a message
+// through a quoted key or value, so that one error stays one line.
+func oneLine(s string) string {
+	return strings.Map(func(r rune) rune {
+		if r < ' ' || r == 0x7f || r == '\u0085' || r == '\u2028' || r == '\u2029' {
+			return ' '
+		}
+		return r
+	}, s)
+}

@@ -1,0 +1,97 @@
+package plan
+
+import (
+	"ulpine/trainer"
+)
+
+// Plan is a plan checked and fully resolved: nothing in it is left to a default.
+type Plan struct {
+	Title, Question string
+	File            string // as the caller named it
+	Text            string // as written, included fragments first come behind it
+
+	Task       Task
+	Network    trainer.Network
+	Training   trainer.Training // what the arms share; an arm may override some of it
+	Pretrain   *Pretrain        // nil: every arm starts from initial weights
+	Replicates Replicates
+	Claim      Claim
+
+	Arms      []Arm // the baseline first, then in the order of the plan
+	Contrasts []Contrast
+
+	Warnings []string // doubts that travel into the report
+	Notices  []string // for the terminal only: where the plan was read from
+}
+
+// Baseline is the arm that all others are compared with.
+func (p *Plan) Baseline() *Arm { return &p.Arms[0] }
+
+// Runs is the number of runs the plan asks for, pretraining included.
+func (p *Plan) Runs() int {
+	each := len(p.Arms)
+	if p.Pretrain != nil {
+		each++
+	}
+	return each * p.Replicates.Count
+}
+
+// Replicates are the repetitions of every arm: replicate i has the seed
+// FirstSeed + i, i from 0.
+type Replicates struct {
+	Count     int
+	FirstSeed uint64
+}
+
+// Claim is what the plan's author fixes before the first run.
+type Claim struct {
+	Metric     string  // "test accuracy"
+	Margin     float64 // the loss of the metric that is accepted, > 0
+	Confidence float64 // of the two-sided interval, in (0.5, 1)
+}
+
+// Contrast asks for a comparison of two arms with each other.
+type Contrast struct {
+	Arm, Against string // slugs
+	Margin       float64
+}
+
+// Pretrain is a training done once a replicate under the baseline's arithmetic,
+// from whose final weights every arm of the replicate starts.
+type Pretrain struct {
+	Task      Task
+	Training  trainer.Training
+	Canonical string // what is run, for the key of its runs
+}
+
+// Arm is one full assignment of arithmetic to rounding points.
+type Arm struct {
+	Name, Slug string
+	Baseline   bool
+
+	Arithmetic trainer.Arm
+	Training   trainer.Training // the plan's with this arm's overrides
+	Overrides  []string         // what the overrides change, in words
+	Settings   []Setting        // one row a rounding point of each layer
+	Summary    string           // the settings in one line, as the plan spells them
+	LossScale  string           // in words
+	// Canonical is the resolved arm without its name: equal texts mean equal
+	// bits of every run, so it stands in the key of a run.
+	Canonical string
+
+	assignment *assignment // which setting holds where
+}
+
+// Setting is one rounding point of one layer as resolved, for tables and strips.
+type Setting struct {
+	Layer    int    // -1: input or loss
+	Name     string // of the layer
+	Point    string // "forward.weight"
+	Format   string // canonical name; "exact" for a product that is not rounded
+	Exponent int    // bits
+	Fraction int
+	Bits     int
+	Rounding string // "nearest-even", "stochastic r=16 truncated", "exact", "reused"
+	Order    string // sums: "sequential", "chunk(64)"
+	Overflow string
+}

@@ -1,0 +1,240 @@
+package plan
+
+import (
+	"fmt"
+	"math"
+	"slices"
+
+	"ulpine/trainer"
+)
+
+// trainingKeys are the keys of [training]; an arm may override all but how data
+// is ordered and when it is evaluated, which would break the pairing.
+var (
+	trainingKeys         = []string{"optimizer", "learning_rate", "batch", "epochs", "loss", "shuffle", "evaluate"}
+	trainingOverrideKeys = []string{"optimizer", "learning_rate", "batch", "epochs"}
+)
+
+// maxCount bounds epochs and examples so that their products fit an int.
+const maxCount = math.MaxInt32
+
+// readTraining reads the training table n over base. Keys that base cannot
+// supply are required unless complete is set.
+func (r *reader) readTraining(n *node, base trainer.Training, complete bool, keys []string) trainer.Training {
+	t := base
+	r.known(n, keys...)
+	if !complete {
+		for _, k := range []string{"learning_rate", "batch", "epochs"} {
+			if n.table[k] == nil {
+				r.fail(n.errorf(map[string]string{
+					"learning_rate": "write learning_rate = 0.02", "batch": "write batch = 32", "epochs": "write epochs = 15",
+				}[k], "%s is missing", k))
+			}
+		}
+	}
+	t.Loss = r.word(n, "loss", base.Loss, "cross-entropy")
+	t.Batch = int(r.whole(n, "batch", int64(base.Batch), 1, maxCount))
+	t.Epochs = int(r.whole(n, "epochs", int64(base.Epochs), 1, maxCount))
+	t.Shuffle = r.flag(n, "shuffle", base.Shuffle)
+	if at := n.table["optimizer"]; at != nil {
+		t.Optimizer = r.readOptimizer(at)
+	}
+	if at := n.table["learning_rate"]; at != nil {
+		t.LearningRate = r.readSchedule(at)
+	}
+	if at := n.table["evaluate"]; at != nil {
+		r.readEvaluate(at, &t)
+	}
+	return t
+}
+
+// readOptimizer reads an optimizer: a word or a table with its kind.
+func (r *reader) readOptimizer(n *node) (o trainer.Optimizer) {
+	before := len(r.errs)
+	switch {
+	case n.table != nil:
+		r.known(n, "kind", "momentum")
+		o.Kind = r.text(n, "kind", "sgd")
+		o.Momentum = r.number(n, "momentum", 0)
+	default:
+		word, ok := n.value.(string)
+		if !ok {
+			r.wrongType(n, "a word or a table", `optimizer = { kind = "sgd", momentum = 0.9 }`)
+		}
+		o.Kind = word
+	}
+	if len(r.errs) > before {
+		return o
+	}
+	if _, err := o.States(); err != nil {
+		r.fail(fault(n, err))
+	}
+	return o
+}
+
+// readSchedule reads a learning rate: a number, or a table that also says at
+// which epochs it is multiplied by what.
+func (r *reader) readSchedule(n *node) (s trainer.Schedule) {
+	s.Multiply = 1
+	at := n
+	if n.table == nil {
+		s.Start = r.numberAt(n, "learning_rate", 0.02)
+	} else {
+		r.known(n, "start", "multiply", "at_epochs")
+		if n.table["start"] == nil {
+			r.fail(n.errorf("write start = 0.02", "start is missing"))
+			return s
+		}
+		at = n.table["start"]
+		s.Start = r.number(n, "start", 0.02)
+		s.AtEpochs = r.wholes(n, "at_epochs", 1, maxCount)
+		s.Multiply = r.multiplier(n, s.AtEpochs)
+		if !slices.IsSorted(s.AtEpochs) {
+			r.fail(n.table["at_epochs"].errorf("write the epochs in ascending order", "%v do not ascend", s.AtEpochs))
+		}
+	}
+	if !positive32(s.Start) {
+		r.fail(at.errorf("write a positive rate, as 0.02", "a learning rate of %g is not a positive binary32 number", s.Start))
+	}
+	return s
+}
+
+// multiplier reads multiply, which goes with at_epochs.
+func (r *reader) multiplier(n *node, epochs []int) float64 {
+	at := n.table["multiply"]
+	switch {
+	case at == nil && len(epochs) > 0:
+		r.fail(n.errorf("write multiply = 0.2", "at_epochs without multiply"))
+	case at != nil && n.table["at_epochs"] == nil:
+		r.fail(at.errorf("write at_epochs = [9, 13]", "multiply without at_epochs"))
+	case at != nil:
+		factor := r.number(n, "multiply", 0.2)
+		if !positive32(factor) {
+			r.fail(at.errorf("write a positive factor, as 0.2", "a factor of %g is not a positive binary32 number", factor))
+		}
+		return factor
+	}
+	return 1
+}
+
+// positive32 reports whether the binary32 number nearest to x is positive and finite.
+func positive32(x float64) bool {
+	y := float64(float32(x))
+	return y > 0 && !math.IsInf(y, 0)
+}
+
+// whenWords are the times of evaluation.
+var whenWords = []string{string(trainer.EveryEpoch), string(trainer.LastEpoch), string(trainer.Never)}
+
+// readEvaluate reads when the test and validation sets are evaluated: one word
+// for both, or a table with a word for each.
+func (r *reader) readEvaluate(n *node, t *trainer.Training) {
+	if n.table != nil {
+		r.known(n, "test", "validation")
+		t.EvaluateTest = trainer.When(r.word(n, "test", string(t.EvaluateTest), whenWords...))
+		t.EvaluateValidation = trainer.When(r.word(n, "validation", string(t.EvaluateValidation), whenWords...))
+		return
+	}
+	word, ok := n.value.(string)
+	switch {
+	case !ok:
+		r.wrongType(n, "a text or a table", `evaluate = { test = "last epoch", validation = "every epoch" }`)
+	case !slices.Contains(whenWords, word):
+		r.fail(n.errorf(suggest(word, whenWords), "unknown word %q", word))
+	default:
+		t.EvaluateTest, t.EvaluateValidation = trainer.When(word), trainer.When(word)
+	}
+}
+
+// readLossScale reads a loss scale: a word or a table.
+func (r *reader) readLossScale(n *node) (l trainer.LossScale) {
+	kinds := []string{"none", "fixed", "dynamic"}
+	word, isWord := n.value.(string)
+	keys := []string{"kind"}
+	switch {
+	case isWord && word == "fixed":
+		r.fail(n.errorf(`write { kind = "fixed", value = 1024 }`, "a fixed loss scale needs its value"))
+	case isWord && !slices.Contains(kinds, word):
+		r.fail(n.errorf(suggest(word, kinds), "unknown word %q", word))
+	case !isWord && n.table == nil:
+		r.wrongType(n, "a word or a table", `loss_scale = { kind = "fixed", value = 1024 }`)
+	case n.table != nil:
+		if n.table["kind"] == nil {
+			r.fail(n.errorf(`write kind = "fixed"`, "kind is missing"))
+		}
+		word = r.word(n, "kind", "", kinds...)
+	}
+	switch word {
+	case "fixed":
+		l.Kind, keys = trainer.FixedScale, append(keys, "value")
+		if n.table != nil && n.table["value"] == nil {
+			r.fail(n.errorf("write value = 1024", "a fixed loss scale needs its value"))
+		}
+	case "dynamic":
+		l.Kind, keys = trainer.DynamicScale, append(keys, "value", "raise_after", "raise_by", "cut_by")
+	}
+	if n.table != nil && word != "" {
+		r.known(n, keys...)
+	}
+	r.readScaleNumbers(n, &l)
+	return l
+}
+
+// readScaleNumbers reads the figures of a loss scale. Defaults are written out,
+// so that a resolved plan shows them.
+func (r *reader) readScaleNumbers(n *node, l *trainer.LossScale) {
+	if l.Kind == trainer.NoScale {
+		return
+	}
+	check := func(key string, fallback float64, ok func(x float64) bool, remedy string) float64 {
+		x := r.number(n, key, fallback)
+		if !ok(x) {
+			r.fail(n.table[key].errorf(remedy, "%g is out of range", x))
+			return fallback
+		}
+		return x
+	}
+	l.Value = check("value", dynamicStart, positive32, "write a positive number, as 1024")
+	if l.Kind != trainer.DynamicScale {
+		return
+	}
+	l.RaiseAfter = int(r.whole(n, "raise_after", dynamicRaiseAfter, 1, maxCount))
+	l.RaiseBy = check("raise_by", dynamicRaiseBy, func(x float64) bool { return positive32(x) && x >= 1 }, "write at least 1, as 2")
+	l.CutBy = check("cut_by", dynamicCutBy, func(x float64) bool { return positive32(x) && float32(x) < 1 }, "write a number between 0 and 1, as 0.5")
+}
+
+// The defaults of dynamic loss scaling, which are the trainer's too: a test
+// compares them.
+const (
+	dynamicStart      = 1 << 15
+	dynamicRaiseAfter = 1000
+	dynamicRaiseBy    = 2
+	dynamicCutBy      = 0.5
+)
+
+// describeLossScale is a loss scale in words.
+func describeLossScale(l trainer.LossScale) string {
+	switch l.Kind {
+	case trainer.FixedScale:
+		return fmt.Sprintf("fixed %g", float32(l.Value))
+	case trainer.DynamicScale:
+		return fmt.Sprintf("dynamic from %g, x%g after %d clean steps, x%g on a skip",
+			float32(l.Value), float32(l.RaiseBy), l.RaiseAfter, float32(l.CutBy))
+	}
+	return "none"
+}
+
+// describeTraining is a training in one line, every figure that shapes a run
+// included.
+func describeTraining(t trainer.Training) string {
+	rate := fmt.Sprintf("%g", float32(t.LearningRate.Start))
+	if len(t.LearningRate.AtEpochs) > 0 {
+		rate += fmt.Sprintf(" x%g at epochs %v", float32(t.LearningRate.Multiply), t.LearningRate.AtEpochs)
+	}
+	order := "shuffled"
+	if !t.Shuffle {
+		order = "in the data's order"
+	}
+	return fmt.Sprintf("%s, %s momentum %g, learning rate %s, batch %d, epochs %d, %s, test data %s, validation data %s",
+		t.Loss, t.Optimizer.Kind, float32(t.Optimizer.Momentum), rate, t.Batch, t.Epochs, order, t.EvaluateTest, t.EvaluateValidation)
+}
