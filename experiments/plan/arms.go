@@ -28,7 +28,7 @@ func (r *armReader) readArms(root *node) []Arm {
 			scale = r.readLossScale(at)
 		}
 	}
-	baseline := Arm{Name: baselineSlug, Slug: baselineSlug, Baseline: true, Training: r.training}
+	baseline := Arm{Name: BaselineSlug, Slug: BaselineSlug, Baseline: true, Training: r.training}
 	arms := []Arm{r.finish(baseline, &base, scale)}
 	if root.table["arm"] == nil {
 		r.fail(&PlanError{File: root.file, Key: "arm", Reason: "the plan has no arms", Remedy: `write [[arm]] with name = "bf16" and storage = "bf16"`})
@@ -62,7 +62,7 @@ func (r *armReader) armName(n *node, seen map[string]*node) (name, slug string) 
 	case at.value == nil:
 	case slug == "":
 		r.fail(at.errorf("use letters a to z and digits", "the name %q has no letter or digit to call runs by", name))
-	case slug == baselineSlug || slug == pretrainSlug:
+	case slug == BaselineSlug || slug == PretrainSlug:
 		r.fail(at.errorf("choose another name", "%q is the name of the plan's own %s", name, slug))
 	case twin != nil && twin.value == at.value:
 		r.fail(at.errorf("give each arm a name of its own", "the name %q is taken by the arm in %s line %d", name, twin.file, twin.line))

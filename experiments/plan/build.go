@@ -2,7 +2,6 @@ package plan
 
 import (
 	"fmt"
-	"slices"
 	"strings"
 
 	"ulpine/trainer"
@@ -40,13 +39,7 @@ func LoadFrom(source Source, name string) (*Plan, error) {
 	r := &reader{}
 	p := r.build(root)
 	if len(r.errs) > 0 {
-		slices.SortStableFunc(r.errs, func(a, b *PlanError) int {
-			if a.File != b.File {
-				return 0 // files stay in the order in which they were met
-			}
-			return a.Line - b.Line
-		})
-		return nil, r.errs
+		return nil, r.errs.inOrder()
 	}
 	p.File, p.Text = name, l.text.String()
 	p.Warnings = p.warn()

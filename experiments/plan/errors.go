@@ -1,7 +1,9 @@
 package plan
 
 import (
+	"cmp"
 	"fmt"
+	"slices"
 	"strings"
 )
 
@@ -25,10 +27,10 @@ func (e *PlanError) Error() string {
 	}
 	b.WriteString(": ")
 	if e.Key != "" {
-		b.WriteString(e.Key)
+		b.WriteString(shorten(e.Key))
 		b.WriteString(": ")
 	}
-	b.WriteString(e.Reason)
+	b.WriteString(shorten(e.Reason))
 	if e.Remedy != "" {
 		b.WriteString("; ")
 		b.WriteString(e.Remedy)
@@ -59,6 +61,29 @@ func (e Errors) Unwrap() []error {
 		all[i] = one
 	}
 	return all
+}
+
+// shorten cuts what a plan's author wrote at a length that still fits a line.
+func shorten(s string) string {
+	const most = 300
+	if len(s) <= most {
+		return s
+	}
+	return strings.ToValidUTF8(s[:most], "") + "..."
+}
+
+// inOrder sorts errors by line, files in the order in which they were met.
+func (e Errors) inOrder() Errors {
+	met := map[string]int{}
+	for _, one := range e {
+		if _, known := met[one.File]; !known {
+			met[one.File] = len(met)
+		}
+	}
+	slices.SortStableFunc(e, func(a, b *PlanError) int {
+		return cmp.Or(met[a.File]-met[b.File], a.Line-b.Line)
+	})
+	return e
 }
 
 // oneLine replaces control characters, which a plan may smuggle into a message

@@ -3,6 +3,7 @@ package plan
 import (
 	"strings"
 	"testing"
+	"unicode/utf8"
 )
 
 // mark stands on the line that an error must name.
@@ -127,6 +128,7 @@ func TestErrorsNameLineKeyReasonRemedy(t *testing.T) {
 		"unknown data":             {`data = "pump-vibration"`, `data = "pump-vibrations" # <-`, "task.data", `unknown word "pump-vibrations"`, `did you mean "pump-vibration"?`},
 		"data missing":             {`data = "pump-vibration"`, "", "task", "data is missing", "write data ="},
 		"unknown task key":         {"test = 100", "tset = 100 # <-", "task.tset", "unknown key", `did you mean "test"?`},
+		"task key of wrong type":   {"test = 100", "test = { n = 100 } # <-", "task.test", "a table, want a single value", "test = ..."},
 		"no training data":         {"train = 200", "train = 0 # <-", "task.train", "0 is out of range", ""},
 		"syntax":                   {"batch = 20", "batch = = 20 # <-", "", "not valid TOML", "correct the line"},
 		"duplicate key":            {"batch = 20", "batch = 20\nbatch = 21 # <-", "", "not valid TOML", "correct the line"},
@@ -172,9 +174,21 @@ func TestErrorsAreCollected(t *testing.T) {
 	}
 }
 
+func TestErrorsOfFilesStayTogether(t *testing.T) {
+	e := func(file string, line int) *PlanError { return &PlanError{File: file, Line: line, Reason: "r"} }
+	all := Errors{e("b", 9), e("a", 5), e("b", 2), e("a", 1), e("a", 5)}.inOrder()
+	if got := strings.Join(strings.Fields(all.Error()), " "); got != "b:2: r b:9: r a:1: r a:5: r a:5: r" {
+		t.Error(got)
+	}
+}
+
 func TestErrorStaysOneLine(t *testing.T) {
 	all := failures(t, texts{"plan.toml": basePlan + "\"new\\nline\\u2028\" = 1\n"}, "plan.toml")
 	if len(all) != 1 || strings.ContainsAny(all[0].Error(), "\n\u2028") {
 		t.Errorf("%q", all.Error())
+	}
+	long := strings.Replace(basePlan, `"bf16"`, `"`+strings.Repeat("é", 5000)+`"`, -1)
+	if all = failures(t, texts{"plan.toml": long}, "plan.toml"); len(all.Error()) > 2000 || !utf8.ValidString(all.Error()) {
+		t.Errorf("%d bytes", len(all.Error()))
 	}
 }

@@ -139,6 +139,9 @@ func writeArm(b *strings.Builder, p *Plan, a *Arm, full bool) {
 		writeGroups(w, p, a)
 	}
 	fmt.Fprintf(w, "  loss scale\t%s\n", a.LossScale)
+	if trainer.Describe(p.Network, &a.Arithmetic, a.Training, p.Task.sizes()).Double {
+		fmt.Fprintf(w, "  memory\ttensors of eight bytes an element: not every value fits binary32\n")
+	}
 	if len(a.Overrides) > 0 {
 		fmt.Fprintf(w, "  training\t%s\n", describeTraining(a.Training))
 	}

@@ -2,10 +2,10 @@ package plan
 
 import "strings"
 
-// baselineSlug and pretrainSlug name runs that are no arm of the plan.
+// The names of runs that are not an arm's of the plan.
 const (
-	baselineSlug = "baseline"
-	pretrainSlug = "pretrain"
+	BaselineSlug = "baseline"
+	PretrainSlug = "pretrain"
 )
 
 // Slug is how an arm is called in run names and file names: its name in lower

@@ -62,11 +62,17 @@ func (r *reader) makeTask(n *node, name string, keys map[string]*node) Task {
 	if name == "" {
 		return Task{}
 	}
+	before := len(r.errs)
 	o := datasets.Options{Values: map[string]any{}, Folder: folder(n, keys)}
 	for k, sub := range keys {
-		if k != "data" {
+		if sub.table != nil {
+			r.wrongType(sub, "a single value or an array", k+" = ...")
+		} else if k != "data" {
 			o.Values[k] = sub.plain()
 		}
+	}
+	if len(r.errs) > before {
+		return Task{}
 	}
 	source, err := datasets.New(name, o)
 	if err != nil {
@@ -92,21 +98,14 @@ func folder(n *node, keys map[string]*node) string {
 
 // plain is a node's value as the decoder gave it, places stripped.
 func (n *node) plain() any {
-	switch {
-	case n.list != nil:
-		all := make([]any, len(n.list))
-		for i, e := range n.list {
-			all[i] = e.plain()
-		}
-		return all
-	case n.table != nil:
-		all := make(map[string]any, len(n.table))
-		for k, e := range n.table {
-			all[k] = e.plain()
-		}
-		return all
+	if n.list == nil {
+		return n.value
 	}
-	return n.value
+	all := make([]any, len(n.list))
+	for i, e := range n.list {
+		all[i] = e.plain()
+	}
+	return all
 }
 
 // failTask records the errors of a data set, each at the key it names.

@@ -203,8 +203,9 @@ func (r *reader) readScaleNumbers(n *node, l *trainer.LossScale) {
 	l.CutBy = check("cut_by", dynamicCutBy, func(x float64) bool { return positive32(x) && float32(x) < 1 }, "write a number between 0 and 1, as 0.5")
 }
 
-// The defaults of dynamic loss scaling, which are the trainer's too: a test
-// compares them.
+// The defaults of dynamic loss scaling, those of the trainer written out: a
+// resolved plan leaves nothing to a default. Common practice; the start keeps
+// binary16's largest finite value, 65504, just out of reach.
 const (
 	dynamicStart      = 1 << 15
 	dynamicRaiseAfter = 1000
