@@ -3,49 +3,24 @@ package quant
 import (
 	"math"
 	"math/big"
+	"sort"
 )
 
-// The oracle rounds in exact rationals (math/big.Rat) from a table of all the
-// values of a format, which it builds from the definition (-1)^s 2^(e-bias) 1.f.
-// It shares no code with Real, Bracket or Float's arithmetic.
+// The oracle rounds in exact rationals of math/big, integers over the common
+// denominator 2^unit, from a table of all magnitudes of a format, which it builds
+// from the definition (-1)^s 2^(e-bias) 1.f. It shares no code with Real, Bracket
+// or the arithmetic of Float.
+const unit = 1080
+
 type oracle struct {
 	format Float
-	grid   []*big.Rat // magnitudes 0, 1, ... with one binade beyond the largest finite one
+	grid   []*big.Int // magnitudes 0, 1, ... with two binades beyond the largest finite one
 	finite int        // number of the largest finite magnitude
-	probe  map[float64]*placed
-}
-
-// placed is a magnitude and where it lies in the grid.
-type placed struct {
-	x *big.Rat
-	n int      // number of the largest magnitude at most x
-	f *big.Rat // fraction of the gap above it, nil where x is a magnitude of the grid
-}
-
-// exact returns x as a rational with its place, computed once.
-func (o *oracle) exact(x float64) *placed {
-	p, ok := o.probe[x]
-	if !ok {
-		p = o.place(new(big.Rat).SetFloat64(x))
-		o.probe[x] = p
-	}
-	return p
-}
-
-// place finds the place of a magnitude.
-func (o *oracle) place(x *big.Rat) *placed {
-	p := &placed{x: x, n: o.below(x)}
-	if p.n < len(o.grid)-1 && o.grid[p.n].Cmp(x) != 0 {
-		gap := new(big.Rat).Sub(o.grid[p.n+1], o.grid[p.n])
-		p.f = new(big.Rat).Sub(x, o.grid[p.n])
-		p.f.Quo(p.f, gap)
-	}
-	return p
 }
 
 // newOracle tabulates the magnitudes of the format that spec describes.
 func newOracle(f Float, spec FloatSpec) *oracle {
-	o := &oracle{format: f, probe: map[float64]*placed{}}
+	o := &oracle{format: f}
 	bias := 0
 	if spec.Exponent > 0 {
 		bias = 1<<(spec.Exponent-1) - 1
@@ -61,7 +36,8 @@ func newOracle(f Float, spec FloatSpec) *oracle {
 			if field > 0 {
 				sig, exp = int64(frac)+1<<spec.Fraction, field-bias-spec.Fraction
 			}
-			o.grid = append(o.grid, timesPower(big.NewRat(sig, 1), exp))
+			v := big.NewInt(sig)
+			o.grid = append(o.grid, v.Lsh(v, uint(exp+unit)))
 		}
 	}
 	all := fields<<spec.Fraction - 1
@@ -76,58 +52,69 @@ func newOracle(f Float, spec FloatSpec) *oracle {
 	return o
 }
 
-// timesPower returns r 2^exp.
-func timesPower(r *big.Rat, exp int) *big.Rat {
-	p := new(big.Int).Lsh(big.NewInt(1), uint(max(exp, -exp)))
-	f := new(big.Rat).SetInt(p)
-	if exp < 0 {
-		f.Inv(f)
+// scaledInt returns a finite x in units of 2^-unit.
+func scaledInt(x float64) *big.Int {
+	m, e := math.Frexp(x)
+	v := big.NewInt(int64(math.Ldexp(m, 53)))
+	if s := e - 53 + unit; s >= 0 {
+		return v.Lsh(v, uint(s))
 	}
-	return new(big.Rat).Mul(r, f)
+	return v.Rsh(v, uint(53-unit-e)) // a subnormal: the bits that go are zero
 }
 
-// below returns the number of the largest magnitude of the grid that is at most x.
-func (o *oracle) below(x *big.Rat) int {
-	lo, hi := 0, len(o.grid)-1
-	for lo < hi {
-		mid := (lo + hi + 1) / 2
-		if o.grid[mid].Cmp(x) <= 0 {
-			lo = mid
-		} else {
-			hi = mid - 1
-		}
+// float returns a value of the grid.
+func (o *oracle) float(n int) float64 {
+	f := new(big.Float).SetInt(o.grid[n])
+	f.SetMantExp(f, -unit)
+	v, _ := f.Float64()
+	return v
+}
+
+// place is a magnitude's place: the number of the largest grid value at most it,
+// what it has beyond that value, and the gap to the next.
+type place struct {
+	n         int
+	over, gap *big.Int
+}
+
+// place finds the place of a magnitude in units of 2^-unit.
+func (o *oracle) place(x *big.Int) place {
+	n := sort.Search(len(o.grid), func(i int) bool { return o.grid[i].Cmp(x) > 0 }) - 1
+	p := place{n: n, over: new(big.Int).Sub(x, o.grid[n])}
+	if n < len(o.grid)-1 {
+		p.gap = new(big.Int).Sub(o.grid[n+1], o.grid[n])
 	}
-	return lo
+	return p
 }
 
 // round rounds a magnitude with a sign.
-func (o *oracle) round(x *placed, negative bool, p Point, word uint32) (float64, Event) {
-	if x.x.Sign() == 0 {
-		return withSign(0, negative), NoEvent
-	}
+func (o *oracle) round(x place, negative bool, p Point, word uint32) (float64, Event) {
 	n := x.n
-	if n == len(o.grid)-1 {
+	switch {
+	case n == 0 && x.over.Sign() == 0:
+		return withSign(0, negative), NoEvent
+	case x.gap == nil:
 		return o.beyond(negative, p) // far beyond: all directions agree there
-	}
-	if x.f != nil && awayFromZero(x.f, n, negative, p.Rounding, word) {
+	case x.over.Sign() != 0 && awayFromZero(x, negative, p.Rounding, word):
 		n++
 	}
 	if n > o.finite {
 		return o.beyond(negative, p)
 	}
-	v, _ := o.grid[n].Float64()
+	v := o.float(n)
 	if v == 0 || o.format.flush && n < 1<<o.format.fraction {
 		return withSign(0, negative), Underflowed
 	}
 	return withSign(v, negative), NoEvent
 }
 
-// awayFromZero decides for the fraction f of the gap above magnitude number n.
-func awayFromZero(f *big.Rat, n int, negative bool, r Rounding, word uint32) bool {
-	half := f.Cmp(big.NewRat(1, 2))
+// awayFromZero decides for the fraction over/gap above magnitude number n.
+func awayFromZero(x place, negative bool, r Rounding, word uint32) bool {
+	half := new(big.Int).Lsh(x.over, 1).Cmp(x.gap)
+	odd := x.n%2 == 1
 	switch r.Mode {
 	case NearestEven:
-		return half > 0 || half == 0 && n%2 == 1
+		return half > 0 || half == 0 && odd
 	case NearestAway:
 		return half >= 0
 	case TowardZero:
@@ -137,23 +124,16 @@ func awayFromZero(f *big.Rat, n int, negative bool, r Rounding, word uint32) boo
 	case Down:
 		return negative
 	case ToOdd:
-		return n%2 == 0
+		return !odd
 	}
+	// T = floor(f 2^bits), f 2^bits = t + rest/gap.
 	bits := uint(r.Bits)
-	t := timesPower(f, int(bits))
-	if r.Variant == Centred {
-		t.Add(t, big.NewRat(1, 2))
+	t, rest := new(big.Int).QuoRem(new(big.Int).Lsh(x.over, bits), x.gap, new(big.Int))
+	c := rest.Lsh(rest, 1).Cmp(x.gap)
+	if r.Variant == Centred && c >= 0 || r.Variant == CentredEven && (c > 0 || c == 0 && t.Bit(0) == 1) {
+		t.Add(t, big.NewInt(1))
 	}
-	whole := new(big.Int).Quo(t.Num(), t.Denom())
-	if r.Variant == CentredEven {
-		rest := new(big.Rat).Sub(t, new(big.Rat).SetInt(whole))
-		c := rest.Cmp(big.NewRat(1, 2))
-		if c > 0 || c == 0 && whole.Bit(0) == 1 {
-			whole.Add(whole, big.NewInt(1))
-		}
-	}
-	u := uint64(word) >> (32 - bits)
-	return whole.Uint64()+u >= 1<<bits
+	return t.Uint64()+uint64(word)>>(32-bits) >= 1<<bits
 }
 
 // beyond applies the overflow policy.
@@ -162,12 +142,11 @@ func (o *oracle) beyond(negative bool, p Point) (float64, Event) {
 	if policy == FormatDefault {
 		policy = o.format.overflow
 	}
-	largest, _ := o.grid[o.finite].Float64()
 	m := p.Rounding.Mode
 	inward := m == TowardZero || m == ToOdd || m == Up && negative || m == Down && !negative
 	switch {
 	case policy == Saturate || inward:
-		return withSign(largest, negative), Saturated
+		return withSign(o.float(o.finite), negative), Saturated
 	case policy == ToInfinity:
 		return withSign(math.Inf(1), negative), Overflowed
 	default:

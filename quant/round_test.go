@@ -47,8 +47,7 @@ var testSpecs = []FloatSpec{
 func (o *oracle) probes() []float64 {
 	var p []float64
 	for n := range len(o.grid) - 2 {
-		a, _ := o.grid[n].Float64()
-		b, _ := o.grid[n+1].Float64()
+		a, b := o.float(n), o.float(n+1)
 		for _, x := range []float64{a, a + (b-a)/4, (a + b) / 2, b - (b-a)/4} {
 			p = append(p, x, math.Nextafter(x, math.Inf(1)))
 			if x > 0 {
@@ -107,10 +106,10 @@ func (o *oracle) compare(t *testing.T, p Point, probes []float64) {
 		words = words[:1]
 	}
 	for i, x := range probes {
-		rat := o.exact(x)
+		at := o.place(scaledInt(x))
 		word := words[i%len(words)]
 		for _, neg := range []bool{false, true} {
-			want, event := o.round(rat, neg, p, word)
+			want, event := o.round(at, neg, p, word)
 			got, e := p.Round(Exactly(withSign(x, neg)), word)
 			if !same(got, want) || e != event {
 				t.Fatalf("%v: %v (negative %v, word %08x): %v %d, want %v %d", p, x, neg, word, got, e, want, event)
