@@ -25,6 +25,7 @@ type kind struct {
 var table = []kind{
 	{"pump-vibration", "accelerometer windows of a pump in five states; invented data", newPumpVibration},
 	{"idx", "images and labels in IDX files, plain or gzip", newIDX},
+	{"csv", "a table of numbers with a label column, plain or gzip", newCSV},
 }
 
 // Options are the keys of a task as written, apart from the data set's name.
