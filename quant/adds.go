@@ -116,7 +116,7 @@ func (e *engine) addStochastic(s, t []float64, q *quick, k int, fold bool) {
 			}
 		}
 		x = e.through(x)
-		u := mix(row, column[j])
+		u := halves(row, column[j])
 		n := math.Float64bits(x)
 		y := math.Float64frombits((n + uint64(u&mask)<<up + centre) & keep)
 		if n&^signBit64-1 < low || !(math.Abs(y) <= limit) {

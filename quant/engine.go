@@ -273,7 +273,7 @@ func (e *engine) termStochastic(t []float64, a float64, b []float64, k int) {
 	b, column = b[:len(t)], column[:len(t)]
 	for j, v := range b {
 		p := float64(a * v)
-		u := mix(row, column[j])
+		u := halves(row, column[j])
 		n := math.Float64bits(p)
 		r := math.Float64frombits((n + uint64(u&mask)<<up + centre) & keep)
 		if n&^signBit64-1 < low || !(math.Abs(r) <= limit) {

@@ -49,9 +49,10 @@ func (s Streams) word(k, i, j uint32) uint32 {
 // products of their low and high halves, the row word's low half forced odd,
 // modulo 2^16. Sums and products of 16-bit halves agree modulo 2^16 whether the
 // halves are read as signed or not.
-func mix(r, v uint32) uint32 {
-	return ((r|1)*v + (r>>16)*(v>>16)) & 0xffff
-}
+func mix(r, v uint32) uint32 { return halves(r|1, v) }
+
+// halves is mix with the row word's low half odd already; a and b may change places.
+func halves(a, b uint32) uint32 { return (a*b + (a>>16)*(b>>16)) & 0xffff }
 
 // Product is one product of matrices C[i,j] = sum over k of A[i,k] B[k,j].
 type Product[T Element] struct {

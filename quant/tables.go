@@ -54,7 +54,7 @@ func (t *table) word(k, j int) uint32 {
 		return 0
 	}
 	n := k - t.first
-	return mix(t.row[n], t.column[n*t.width+j]) << 16
+	return halves(t.row[n], t.column[n*t.width+j]) << 16
 }
 
 // grown returns a slice of length n, x where it is long enough.
