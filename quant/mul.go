@@ -163,14 +163,14 @@ func (m *Multiplier[T]) sumRows(dst []T, terms Matrix[T], rows, k int, d Streams
 	wide := blockWidth(k)
 	for i0 := 0; i0 < rows; i0 += wide {
 		width := min(wide, rows-i0)
-		part := Matrix[T]{terms.Data[i0*terms.Row:], terms.Row, terms.Col}
-		if e == nil || !m.sumBlock(dst[i0:][:width], part, k, i0, d, sums) {
-			m.ref.sumRows(dst[i0:][:width], part, k, i0, d, sums)
+		if e == nil || !m.sumBlock(dst[i0:][:width], terms, k, i0, d, sums) {
+			m.ref.sumRows(dst[i0:][:width], terms, k, i0, d, sums)
 		}
 	}
 }
 
-// sumBlock forms the sums of rows i0, i0+1, ... in the engine; terms starts at i0.
+// sumBlock forms the sums of rows i0, i0+1, ... in the engine; false where that has
+// no place for them.
 func (m *Multiplier[T]) sumBlock(dst []T, terms Matrix[T], k, i0 int, d Streams, sums *Counts) bool {
 	e := m.sumEngine
 	e.begin(k, len(dst))
@@ -178,7 +178,7 @@ func (m *Multiplier[T]) sumBlock(dst []T, terms Matrix[T], k, i0 int, d Streams,
 	for n := range k {
 		e.a[n] = 1
 		for i := range dst {
-			m.slab[n*len(dst)+i] = terms.At(i, n)
+			m.slab[n*len(dst)+i] = terms.At(i0+i, n)
 		}
 	}
 	if !narrowed(e.b, m.slab) {

@@ -107,12 +107,11 @@ func (r *reference[T]) element(p *Product[T], column []T, i, j int, products, su
 	return T(s)
 }
 
-// sumRows forms one sum of stored terms a row, rows i0, i0+1, ..., which terms
-// starts at.
+// sumRows forms one sum of stored terms a row, rows i0, i0+1, ...
 func (r *reference[T]) sumRows(dst []T, terms Matrix[T], k, i0 int, d Streams, sums *Counts) {
 	for i := range dst {
 		a := adder{through32: r.acc.Through32, draws: d, i: uint32(i0 + i), counts: sums}
-		s, _ := r.sum(&a, k, func(k int) (Real, bool) { return Exactly(float64(terms.At(i, k))), true })
+		s, _ := r.sum(&a, k, func(k int) (Real, bool) { return Exactly(float64(terms.At(i0+i, k))), true })
 		dst[i] = T(s)
 	}
 }
