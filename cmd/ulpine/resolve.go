@@ -1,0 +1,88 @@
+package main
+
+import (
+	"context"
+	"fmt"
+	"runtime"
+	"time"
+
+	"github.com/spf13/cobra"
+	"gorgonia.org/tensor"
+
+	"ulpine/experiments/plan"
+	"ulpine/quant/random"
+	"ulpine/trainer"
+)
+
+func newResolve() *cobra.Command {
+	cmd := &cobra.Command{
+		Use:   "resolve PLAN",
+		Short: "Spell a plan out: every rounding point, shape, sum and run",
+		Long: `Check a plan and print it with nothing left to a default: the rounding points of
+each layer and arm, the shapes, the length of every sum, the number of runs, and
+an estimate of the time, for which a few steps of every arm are timed on
+invented numbers.`,
+		Args: exactly("PLAN"),
+	}
+	full := cmd.Flags().Bool("full", false, "a line for each point of each layer")
+	workers := cmd.Flags().Int("workers", 0, "runs at a time, for the estimate (0: one a core)")
+	cmd.RunE = func(cmd *cobra.Command, args []string) error {
+		p, err := loadPlan(args[0], cmd.ErrOrStderr())
+		if err != nil {
+			return err
+		}
+		if *workers <= 0 {
+			*workers = runtime.GOMAXPROCS(0)
+		}
+		rate, err := measureRate(cmd.Context(), p)
+		if err != nil {
+			return err
+		}
+		_, err = fmt.Fprint(cmd.OutOrStdout(), plan.ResolveText(p, plan.ResolveOptions{
+			Full: *full, Rate: rate, Workers: *workers,
+		}))
+		return err
+	}
+	return cmd
+}
+
+// measureRate times a few training steps of every arm and returns multiply-adds
+// a second of one worker, over all arms.
+func measureRate(ctx context.Context, p *plan.Plan) (float64, error) {
+	const batches = 3
+	var macs uint64
+	var spent time.Duration
+	for i := range p.Arms {
+		t := p.Arms[i].Training
+		t.Epochs = 1
+		n := batches * t.Batch
+		job := trainer.Job{
+			Network: p.Network, Arm: p.Arms[i].Arithmetic, Training: t, Seed: 1,
+			Train: inventedSet(p.Network, n),
+		}
+		began := time.Now()
+		if _, err := trainer.Run(ctx, job, nil); err != nil {
+			return 0, err
+		}
+		spent += time.Since(began)
+		macs += trainer.Describe(p.Network, &job.Arm, t, trainer.Sizes{Train: n}).TotalMACs
+	}
+	return float64(macs) / spent.Seconds(), nil
+}
+
+// inventedSet is n examples of normal numbers with labels in turn.
+func inventedSet(n trainer.Network, examples int) trainer.Set {
+	shape := append([]int{examples}, n.Input...)
+	set := trainer.Set{
+		Inputs: tensor.New(tensor.WithShape(shape...), tensor.Of(tensor.Float32)),
+		Labels: make([]int32, examples),
+	}
+	draws := random.Draws{Seed: random.Derive(1, random.Data)}
+	for i, values := 0, set.Inputs.Float32s(); i < len(values); i++ {
+		values[i] = float32(draws.Normal(uint64(i)))
+	}
+	for i := range set.Labels {
+		set.Labels[i] = int32(i % n.Outputs())
+	}
+	return set
+}
