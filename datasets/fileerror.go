@@ -3,6 +3,7 @@ package datasets
 import (
 	"fmt"
 	"strings"
+	"unicode"
 )
 
 // FileError says what is wrong with a file, where, and what to do.
@@ -16,7 +17,8 @@ type FileError struct {
 	Err    error // what the system or a decoder reported; may be nil
 }
 
-// Error names file, place, reason and remedy in one line.
+// Error names file, place, reason and remedy in one line: control characters that
+// come from the file become spaces.
 func (e *FileError) Error() string {
 	var b strings.Builder
 	b.WriteString(e.File)
@@ -33,7 +35,13 @@ func (e *FileError) Error() string {
 	if e.Err != nil {
 		fmt.Fprintf(&b, ": %v", e.Err)
 	}
-	return b.String() + "; " + e.Remedy
+	b.WriteString("; " + e.Remedy)
+	return strings.Map(func(r rune) rune {
+		if unicode.IsControl(r) {
+			return ' '
+		}
+		return r
+	}, b.String())
 }
 
 // Unwrap returns what the system or a decoder reported.

@@ -130,7 +130,7 @@ func TestMNIST(t *testing.T) {
 
 func TestMNISTStandardised(t *testing.T) {
 	s := mnist(t)
-	s.Scale = Standardise
+	s.Scale, s.TestImages, s.TestLabels = Standardise, "", ""
 	d, err := s.Load(1)
 	if err != nil {
 		t.Fatal(err)
