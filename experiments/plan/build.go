@@ -160,6 +160,9 @@ func (r *reader) readPretrain(root *node, p *Plan) *Pretrain {
 		r.checkBatch(sub, pre.Training.Batch, pre.Task.Train)
 	}
 	r.checkSameShape(n, &p.Task, &pre.Task)
-	pre.Canonical = pre.canonical(p.Baseline(), &p.Network)
+	states, _ := pre.Training.Optimizer.States()
+	pre.Arithmetic = p.Baseline().assignment.arm(&p.Network, states)
+	pre.Arithmetic.LossScale = p.Baseline().Arithmetic.LossScale
+	pre.Canonical = pre.canonical(&p.Network)
 	return pre
 }

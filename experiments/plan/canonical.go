@@ -69,9 +69,8 @@ func (p *Plan) TaskCanonical() string {
 }
 
 // canonical is what a pretraining is made of.
-func (pre *Pretrain) canonical(baseline *Arm, network *trainer.Network) string {
-	as := *baseline
-	as.Training = pre.Training
+func (pre *Pretrain) canonical(network *trainer.Network) string {
+	as := Arm{Arithmetic: pre.Arithmetic, Training: pre.Training, LossScale: describeLossScale(pre.Arithmetic.LossScale)}
 	return "pretrain data: " + pre.Task.Canonical + "\npretrain " + as.canonical(network)
 }
 

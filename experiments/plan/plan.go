@@ -59,9 +59,10 @@ type Contrast struct {
 // Pretrain is a training done once a replicate under the baseline's arithmetic,
 // from whose final weights every arm of the replicate starts.
 type Pretrain struct {
-	Task      Task
-	Training  trainer.Training
-	Canonical string // what is run, for the key of its runs
+	Task       Task
+	Training   trainer.Training
+	Arithmetic trainer.Arm // the baseline's, for this training's optimizer
+	Canonical  string      // what is run, for the key of its runs
 }
 
 // Arm is one full assignment of arithmetic to rounding points.

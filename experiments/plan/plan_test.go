@@ -102,6 +102,11 @@ func TestPretrain(t *testing.T) {
 	if p.Training.Epochs != 3 || p.Runs() != 12 || !strings.Contains(p.TaskCanonical(), pre.Canonical) {
 		t.Errorf("epochs %d, runs %d", p.Training.Epochs, p.Runs())
 	}
+	// Its optimizer keeps states of its own.
+	momentum := vary(t, "[claim]", "[pretrain]\ntraining.optimizer = \"sgd\"\n[claim]", `everything = "fp32"`, "everything = \"fp64\"\nloss_scale = { kind = \"fixed\", value = 2 }").Pretrain
+	if l := momentum.Arithmetic.Layers[2]; len(l.States) != 0 || l.Master.Format.String() != "binary64" || momentum.Arithmetic.LossScale.Value != 2 || len(pre.Arithmetic.Layers[2].States) != 1 {
+		t.Errorf("arithmetic of the pretraining: %+v", momentum.Arithmetic)
+	}
 	// The pretraining follows the baseline's arithmetic.
 	other := vary(t, "[claim]", "[pretrain]\ntask = { variant = \"remounted\", train = 300 }\ntraining.epochs = 9\ntraining.learning_rate = 0.5\n[claim]",
 		`everything = "fp32"`, `everything = "fp64"`)
