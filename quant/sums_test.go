@@ -121,7 +121,7 @@ func TestOnesStall(t *testing.T) {
 		return
 	}
 	const n = 1<<24 + 10
-	m, err := NewMultiplier[float32](mustAccumulate(t, "sum fp32"))
+	m, err := NewMultiplier[float32](mustAccumulate(t, "product fp32; sum fp32"))
 	if err != nil {
 		t.Fatal(err)
 	}
