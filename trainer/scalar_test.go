@@ -13,6 +13,7 @@ import (
 // any address, order or rounding shows.
 type oracle struct {
 	stored, inside quant.Point
+	working        quant.Point    // of working copies
 	operand        *quant.Point // of all backward operands; nil: unset
 	seed           uint64
 	step, phase    uint32
@@ -109,7 +110,7 @@ func (d *scalarDense) each(f func(u, i, block, n int)) {
 
 func (d *scalarDense) refresh(o *oracle) {
 	d.each(func(u, i, block, n int) {
-		d.working[u][i] = o.store(quant.Exactly(d.w[u][i]), d.layer, block+0, n)
+		d.working[u][i], _ = o.working.Round(quant.Exactly(d.w[u][i]), o.draws(d.layer, block+0).Word(uint64(n)))
 	})
 }
 
@@ -191,8 +192,8 @@ func (d *scalarDense) update(o *oracle, g [][]float64, momentum, rate, scale flo
 	d.refresh(o)
 }
 
-// take reads the parameters of a layer from an outcome.
-func take(layer int, weight, bias Param) *scalarDense {
+// start rounds the parameters that a run of a layer is to start from.
+func (o *oracle) start(layer int, weight, bias Param) *scalarDense {
 	d := &scalarDense{layer: layer}
 	units, inputs := weight.Shape[0], weight.Shape[1]
 	for u := range units {
@@ -201,6 +202,8 @@ func take(layer int, weight, bias Param) *scalarDense {
 		d.v = append(d.v, make([]float64, inputs+1))
 		d.working = append(d.working, make([]float64, inputs+1))
 	}
+	d.each(func(u, i, block, n int) { d.w[u][i] = o.store(quant.Exactly(d.w[u][i]), layer, block+8, n) })
+	d.refresh(o)
 	return d
 }
 
@@ -270,15 +273,25 @@ func TestStochasticStepIsItsScalarAccount(t *testing.T) {
 	checkScalarAccount(t, &operand)
 }
 
+// startParam draws exact starting values that no format in play holds.
+func startParam(seed uint64, shape ...int) Param {
+	p := Param{Shape: shape}
+	for _, v := range uniform(volume(shape), seed) {
+		p.Values = append(p.Values, float64(v)/3)
+	}
+	return p
+}
+
 func checkScalarAccount(t *testing.T, operand *quant.Point) {
 	const examples, batch, tests, scale = 5, 2, 3, 256
 	net := network(t, []int{3}, "dense 4", "relu", "dense 3")
-	o := &oracle{stored: stochastic(t, "bf16", 12), inside: stochastic(t, "E6M9", 7), operand: operand, seed: random.Derive(77, random.RoundingBits)}
+	o := &oracle{stored: stochastic(t, "bf16", 12), working: stochastic(t, "E8M4", 9), inside: stochastic(t, "E6M9", 7), operand: operand, seed: random.Derive(77, random.RoundingBits)}
 	arm := Everything(o.stored, 3, 1)
 	sums := quant.Accumulate{Product: &o.inside, Sum: o.inside}
 	for i := range arm.Layers {
 		l := &arm.Layers[i]
 		l.Forward, l.InputGradient.Sums, l.WeightGradient.Sums = sums, sums, sums
+		l.Weight = o.working
 		l.InputGradient.First, l.InputGradient.Gradient = operand, operand
 		l.WeightGradient.First, l.WeightGradient.Gradient = operand, operand
 	}
@@ -287,11 +300,10 @@ func checkScalarAccount(t *testing.T, operand *quant.Point) {
 		Network: net, Arm: arm, Training: sgdTraining(batch, 1), Seed: 77,
 		Train: dataset(examples, net.Input, 3, 1), Test: dataset(tests, net.Input, 3, 2),
 	}
+	job.Start = []Param{startParam(3, 4, 3), startParam(4, 4), startParam(5, 3, 4), startParam(6, 3)}
 	out := mustRun(t, job)
 
-	n := &scalarNet{o: o, lo: take(0, out.Initial[0], out.Initial[1]), hi: take(2, out.Initial[2], out.Initial[3])}
-	n.lo.refresh(o)
-	n.hi.refresh(o)
+	n := &scalarNet{o: o, lo: o.start(0, job.Start[0], job.Start[1]), hi: o.start(2, job.Start[2], job.Start[3])}
 	var losses []float64
 	x := job.Train.Inputs.Float32s()
 	for first := 0; first < examples; first += batch {

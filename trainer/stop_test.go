@@ -67,6 +67,36 @@ func TestDynamicScaleWatchesSaturation(t *testing.T) {
 	}
 }
 
+// TestDynamicScaleWatchesGradientsThemselves: an operand that overflowed to
+// infinity makes gradients infinite without an event at any point of gradients.
+func TestDynamicScaleWatchesGradientsThemselves(t *testing.T) {
+	arm := baseline(t, 1)
+	operand := point(t, "E5M2")
+	operand.Overflow = quant.ToInfinity
+	arm.Layers[0].WeightGradient.First = &operand
+	arm.LossScale = LossScale{Kind: DynamicScale}
+	job := oneWeight(t, arm, []float32{1e6}, []int32{0}, 1)
+	e := engineFor[float32](t, &job)
+	if _, what := e.step([]int32{0}, 0.05); what != stepSkipped || e.params[0].master.data[0] != 0 {
+		t.Errorf("step %v, gradient %v", what, e.params[0].gradient.data)
+	}
+}
+
+func TestSkipsStartTheCountOfCleanStepsOver(t *testing.T) {
+	s := newScaler(LossScale{Kind: DynamicScale, Value: 64, RaiseAfter: 3})
+	s.taken()
+	s.taken()
+	s.skip()
+	s.taken()
+	s.taken()
+	if s.s != 32 || s.row != 0 {
+		t.Errorf("S is %v after two clean steps", s.s)
+	}
+	if s.taken(); s.s != 64 {
+		t.Errorf("S is %v after three clean steps", s.s)
+	}
+}
+
 // TestTenSkippedStepsDiverge: S cannot fall fast enough.
 func TestTenSkippedStepsDiverge(t *testing.T) {
 	arm := storageArm(t, point(t, "fp16"), 1)

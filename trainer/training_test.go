@@ -69,6 +69,14 @@ func TestShuffleIsAPermutationOfItsEpoch(t *testing.T) {
 			t.Fatal("not a permutation")
 		}
 	}
+	heads, pair := 0, make([]int32, 2)
+	for epoch := range 200 { // 100 are expected, and 60 lie nearly six deviations away
+		shuffle(pair, 3, epoch)
+		heads += int(pair[0])
+	}
+	if heads < 60 || heads > 140 {
+		t.Errorf("two examples are exchanged %d times of 200", heads)
+	}
 	// A fixed point has probability 1/n: 20 epochs see about 20, and 60 would be
 	// nine standard deviations away.
 	fixed := 0
@@ -113,6 +121,27 @@ func TestInitialWeightsHaveTheirVariance(t *testing.T) {
 	pooled := network(t, []int{1, 9}, "conv1d out=2 width=2", "maxpool size=2", "relu", "dense 3")
 	if pooled.gain(0) != 2 || pooled.gain(3) != 1 {
 		t.Error("a pool between weights and ReLU hides the ReLU")
+	}
+}
+
+// TestOutputErrorIsDividedThenScaled: quotient and product are rounded in turn.
+func TestOutputErrorIsDividedThenScaled(t *testing.T) {
+	y, labels := []float64{0.3, -0.2, 0.1, 0.7, 0.4, -0.6}, []int32{0, 1, 0}
+	for _, s := range []float64{10, 1000, 3} {
+		j := newJudge[float64](crossEntropy{}, 3, 2)
+		sum, got := j.errors(y, labels, s)
+		var loss float64
+		var want []float64
+		for n, label := range labels {
+			l, slope := softmax(y[2*n:][:2], label)
+			loss += l
+			for _, v := range slope {
+				v /= 3
+				want = append(want, float64(v*s))
+			}
+		}
+		sameBits(t, "loss", []float64{sum, j.losses(0, y, labels)}, []float64{loss, loss})
+		sameBits(t, "error", got, want)
 	}
 }
 
