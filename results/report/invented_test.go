@@ -130,8 +130,14 @@ func inventArm(a inventedArm, baseline bool) results.Arm {
 			gradient = "E5M2"
 		}
 		for _, p := range []struct{ point, format string }{
-			{"forward.weight", stored}, {"forward.activation", stored}, {"input_gradient.weight", stored}, {"input_gradient.gradient", gradient},
-			{"input_gradient.result", gradient}, {"weight_gradient.activation", stored}, {"weight_gradient.gradient", gradient}, {"weight_gradient.result", gradient},
+			{"forward.weight", stored},
+			{"forward.activation", stored},
+			{"input_gradient.weight", stored},
+			{"input_gradient.gradient", gradient},
+			{"input_gradient.result", gradient},
+			{"weight_gradient.activation", stored},
+			{"weight_gradient.gradient", gradient},
+			{"weight_gradient.result", gradient},
 		} {
 			set(2*k, layer, p.point, p.format, "nearest-even", "")
 		}

@@ -109,9 +109,19 @@ func comparisonObjects(cs []results.Comparison) []object {
 			key string
 			v   float64
 		}{
-			{"margin", c.Margin}, {"confidence", c.Confidence}, {"mean", c.Mean}, {"sd", c.SD}, {"low", c.Low}, {"high", c.High},
-			{"boot_low", c.BootLow}, {"boot_high", c.BootHigh}, {"skewness", c.Skewness},
-			{"p", c.P}, {"holm", c.Holm}, {"p_worse", c.PWorse}, {"holm_worse", c.HolmWorse},
+			{"margin", c.Margin},
+			{"confidence", c.Confidence},
+			{"mean", c.Mean},
+			{"sd", c.SD},
+			{"low", c.Low},
+			{"high", c.High},
+			{"boot_low", c.BootLow},
+			{"boot_high", c.BootHigh},
+			{"skewness", c.Skewness},
+			{"p", c.P},
+			{"holm", c.Holm},
+			{"p_worse", c.PWorse},
+			{"holm_worse", c.HolmWorse},
 		} {
 			o.float(x.key, x.v)
 		}

@@ -114,8 +114,10 @@ func TestPageOrder(t *testing.T) {
 	s := invented()
 	page := pageOf(t, s)
 	at := strings.Index(page, "<main>")
-	for _, want := range []string{html.EscapeString(s.Answer), `id="claim"`, `id="verdicts"`, `id="differences"`, `id="contrasts"`, `id="curves"`, `id="front"`,
-		`id="step-map-section"`, `id="counters"`, `id="recall-section"`, `id="runs"`, `id="plan"`, `id="rerun"`, `id="warnings"`, `id="cautions"`, `id="glossary"`} {
+	for _, want := range []string{
+		html.EscapeString(s.Answer), `id="claim"`, `id="verdicts"`, `id="differences"`, `id="contrasts"`, `id="curves"`, `id="front"`,
+		`id="step-map-section"`, `id="counters"`, `id="recall-section"`, `id="runs"`, `id="plan"`, `id="rerun"`, `id="warnings"`, `id="cautions"`, `id="glossary"`,
+	} {
 		k := strings.Index(page[at:], want)
 		if k < 0 {
 			t.Fatalf("%s is missing or comes too early", want)

@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"html/template"
 	"math"
+	"slices"
 	"strconv"
 	"strings"
 
@@ -128,7 +129,7 @@ func frontSection(v *view) any {
 }
 
 func mapSection(v *view) any {
-	t := &tabular{Caption: "Every setting that differs from the baseline", Columns: columns("Arm", "point", "format", "rounding", "order", "overflow", "layers")}
+	t := &tabular{Caption: "Every setting that differs from the baseline", Columns: columns("Arm", "format", "rounding", "order", "overflow", "points, with layers where not all")}
 	for _, a := range v.arms {
 		t.Rows = append(t.Rows, v.changes(a)...)
 	}
@@ -146,33 +147,75 @@ func mapSection(v *view) any {
 	return f
 }
 
-// changes are an arm's settings that differ from the baseline's, equal ones of
-// several layers together.
+// changes are an arm's settings that differ from the baseline's: a row for each
+// way of rounding, with the points that round so.
 func (v *view) changes(a *armView) [][]string {
-	if a == v.baseline {
-		return nil
+	type place struct {
+		layer int
+		point string
 	}
-	base := map[string]results.Setting{}
+	base := map[place]results.Setting{}
 	if v.baseline != nil {
 		for _, s := range v.baseline.Settings {
-			base[fmt.Sprint(s.Layer, s.Point)] = s
+			base[place{s.Layer, s.Point}] = s
 		}
 	}
-	at := map[string]int{}
-	var rows [][]string
+	layers := map[string][]string{} // those that have the point
 	for _, s := range a.Settings {
-		if b, ok := base[fmt.Sprint(s.Layer, s.Point)]; ok && !differs(s, b) {
+		layers[s.Point] = append(layers[s.Point], layerName(s.Layer, s.Name))
+	}
+	var ways []results.Setting // of which only format, rounding, order and overflow count
+	var points []*pointList
+	for _, s := range a.Settings {
+		if b, ok := base[place{s.Layer, s.Point}]; a == v.baseline || ok && !differs(s, b) {
 			continue
 		}
-		key := strings.Join([]string{s.Point, s.Format, s.Rounding, s.Order, s.Overflow}, "\x00")
-		if i, ok := at[key]; ok {
-			rows[i][6] += ", " + layerName(s.Layer, s.Name)
-			continue
+		i := slices.IndexFunc(ways, func(w results.Setting) bool { return !differs(w, s) })
+		if i < 0 {
+			i = len(ways)
+			ways, points = append(ways, s), append(points, &pointList{})
 		}
-		at[key] = len(rows)
-		rows = append(rows, []string{a.Label(), plain(s.Point), plain(s.Format), plain(s.Rounding), plain(s.Order), plain(s.Overflow), layerName(s.Layer, s.Name)})
+		points[i].add(s)
+	}
+	var rows [][]string
+	for i, w := range ways {
+		rows = append(rows, []string{a.Label(), plain(w.Format), plain(w.Rounding), plain(w.Order), plain(w.Overflow), points[i].words(layers)})
 	}
 	return rows
+}
+
+// pointList collects points with the layers they were seen in.
+type pointList struct {
+	points []string
+	layers map[string][]string
+}
+
+func (l *pointList) add(s results.Setting) {
+	if l.layers == nil {
+		l.layers = map[string][]string{}
+	}
+	if l.layers[s.Point] == nil {
+		l.points = append(l.points, s.Point)
+	}
+	l.layers[s.Point] = append(l.layers[s.Point], layerName(s.Layer, s.Name))
+}
+
+// words lists the points, with their layers where those are not all, or with
+// the layers that are missing where those are fewer.
+func (l *pointList) words(all map[string][]string) string {
+	out := make([]string, len(l.points))
+	for i, p := range l.points {
+		out[i] = plain(p)
+		at := l.layers[p]
+		rest := slices.DeleteFunc(slices.Clone(all[p]), func(n string) bool { return slices.Contains(at, n) })
+		switch {
+		case len(rest) > 0 && len(rest) < len(at):
+			out[i] += " (all but " + strings.Join(rest, ", ") + ")"
+		case len(rest) > 0:
+			out[i] += " (" + strings.Join(at, ", ") + ")"
+		}
+	}
+	return strings.Join(out, "; ")
 }
 
 // layerName is a layer by number and name; -1 stands for input and loss.

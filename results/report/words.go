@@ -26,14 +26,12 @@ func fixed(v float64, decimals int) string {
 	return minus(strconv.FormatFloat(v+0, 'f', decimals, 64))
 }
 
-// signed is fixed with a plus sign where it belongs.
+// signed is fixed with a sign, which tells +0.00 and −0.00, the roundings of
+// small differences, from 0.00, no difference at all.
 func signed(v float64, decimals int) string {
 	s := fixed(v, decimals)
 	if v > 0 && s != missing {
 		return "+" + s
-	}
-	if strings.Trim(s, "−0.") == "" && s != missing {
-		return strings.TrimPrefix(s, "−") // no minus zero
 	}
 	return s
 }
