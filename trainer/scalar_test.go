@@ -13,7 +13,7 @@ import (
 // any address, order or rounding shows.
 type oracle struct {
 	stored, inside quant.Point
-	working        quant.Point    // of working copies
+	working        quant.Point  // of working copies
 	operand        *quant.Point // of all backward operands; nil: unset
 	seed           uint64
 	step, phase    uint32
