@@ -71,8 +71,6 @@ func (s FloatSpec) layout() (Float, error) {
 		return Float{}, fmt.Errorf("quant: unknown layout %d of the top exponent", s.Top)
 	case s.Exponent == 0 && s.Top == TopIEEE:
 		return Float{}, fmt.Errorf("quant: a format without exponent bits has no top exponent for infinity: choose the layout nan or finite")
-	case s.Exponent == 0 && s.Flush:
-		return Float{}, fmt.Errorf("quant: a format without exponent bits has only subnormal values: they cannot be flushed")
 	}
 	bias := 1<<max(s.Exponent-1, 0) - 1
 	if s.Bias != nil {
@@ -90,6 +88,9 @@ func (s FloatSpec) layout() (Float, error) {
 	}
 	if f.last == 0 || f.last == math.MaxUint64 {
 		return Float{}, fmt.Errorf("quant: E%dM%d has no finite value but zero", s.Exponent, s.Fraction)
+	}
+	if f.flush && f.last>>f.fraction == 0 {
+		return Float{}, fmt.Errorf("quant: E%dM%d has only subnormal values: they cannot be flushed", s.Exponent, s.Fraction)
 	}
 	if err := checkOverflow(f.overflow, f.top == TopIEEE, false); err != nil {
 		return Float{}, fmt.Errorf("quant: E%dM%d: %w", s.Exponent, s.Fraction, err)
