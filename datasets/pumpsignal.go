@@ -221,6 +221,6 @@ func (w *window) addBubbles(dst []float64) {
 // convert is the converter's reading of x, in g: the nearest step, half up, within
 // its range.
 func convert(x float64) float64 {
-	code := math.Floor(x/converterStep + 0.5)
+	code := math.Floor(float64(x/converterStep) + 0.5)
 	return float64(min(max(code, converterMin), converterMax) * converterStep)
 }

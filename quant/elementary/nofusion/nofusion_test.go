@@ -1,6 +1,10 @@
 package nofusion
 
-import "testing"
+import (
+	"os"
+	"path/filepath"
+	"testing"
+)
 
 // TestSeesFaults: one source with every fault, one without.
 func TestSeesFaults(t *testing.T) {
@@ -23,5 +27,32 @@ func f(a, b, c float64) float64 { return math.Sqrt(a) + float64(b*float64(c*a)) 
 	}
 	if _, _, err := CheckSource("broken.go", []byte("package")); err == nil {
 		t.Error("no error for a source that does not parse")
+	}
+}
+
+// TestFused compiles packages of measured values for arm64. That they ask for some
+// fused products by name shows that the listing is read.
+func TestFused(t *testing.T) {
+	faults, asked, err := Fused("ulpine/quant/elementary", "ulpine/quant/random", "ulpine/datasets")
+	if err != nil {
+		t.Fatal(err)
+	}
+	for _, f := range faults {
+		t.Error(f)
+	}
+	if asked < 3 {
+		t.Errorf("%d fused products asked for by name, want at least the three of package elementary", asked)
+	}
+}
+
+// TestFusedCanFail compiles one fault.
+func TestFusedCanFail(t *testing.T) {
+	file := filepath.Join(t.TempDir(), "p.go")
+	if err := os.WriteFile(file, []byte("package p\n\nfunc F(a, b, c float64) float64 { return a*b + c }\n"), 0o644); err != nil {
+		t.Fatal(err)
+	}
+	faults, _, err := Fused(file)
+	if err != nil || len(faults) != 1 {
+		t.Errorf("faults %q, error %v, want one fault", faults, err)
 	}
 }
