@@ -1,6 +1,7 @@
 package trainer
 
 import (
+	"context"
 	"fmt"
 	"math"
 
@@ -223,14 +224,17 @@ func (e *engine[T]) masterNotFinite() bool {
 // evaluate computes mean loss, NaN for an empty set, and answers of a set with
 // the parameters as they stand. Random bits are addressed by epoch and by the
 // example's number in the set, so they depend on no batch; nothing is counted.
-func (e *engine[T]) evaluate(set *split, phase uint32, epoch int, scores *Scores) float64 {
+func (e *engine[T]) evaluate(ctx context.Context, set *split, phase uint32, epoch int, scores *Scores) (float64, error) {
 	scores.reset()
 	if set.size() == 0 {
-		return math.NaN()
+		return math.NaN(), nil
 	}
 	p := pass{seed: e.pass.seed, step: uint32(epoch), phase: phase}
 	var sum float64
 	for first := 0; first < set.size(); first += e.capacity() {
+		if err := ctx.Err(); err != nil {
+			return 0, fmt.Errorf("stopped evaluating %s data after epoch %d: %w", set.name, epoch, err)
+		}
 		p.samples = min(e.capacity(), set.size()-first)
 		p.first = uint64(first)
 		y := e.forward(&p, set.rows(first, p.samples))
@@ -238,7 +242,7 @@ func (e *engine[T]) evaluate(set *split, phase uint32, epoch int, scores *Scores
 		sum = e.judge.losses(sum, y, labels)
 		score(scores, y, labels)
 	}
-	return sum / float64(set.size())
+	return sum / float64(set.size()), nil
 }
 
 // capacity is the number of examples the edges hold.

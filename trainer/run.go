@@ -40,9 +40,9 @@ type parts struct {
 	test         *split
 }
 
-// Run trains. Cancelling ctx stops it within a step, with ctx's error; a run that
-// diverges is an outcome, not an error. w may be nil. The outcome depends on the
-// job alone: not on machine, memory or time.
+// Run trains. Cancelling ctx stops it within a step, or a batch of an evaluation,
+// with ctx's error; a run that diverges is an outcome, not an error. w may be nil.
+// The outcome depends on the job alone: not on machine, memory or time.
 func Run(ctx context.Context, job Job, w Watcher) (Outcome, error) {
 	p, err := job.check()
 	if err != nil {
@@ -112,8 +112,9 @@ func (r *run[T]) epoch(ctx context.Context, epoch int) error {
 	}
 	r.judgeEpoch(loss)
 	last := epoch == r.job.Training.Epochs || r.out.Diverged != ""
-	r.out.Epochs = append(r.out.Epochs, r.measure(epoch, loss, last))
-	return nil
+	m, err := r.measure(ctx, epoch, loss, last)
+	r.out.Epochs = append(r.out.Epochs, m)
+	return err
 }
 
 // steps takes the steps of one epoch and returns the mean of their losses,
@@ -141,24 +142,27 @@ func (r *run[T]) steps(ctx context.Context, rate float64) (float64, error) {
 }
 
 // measure writes down an epoch and evaluates what is due.
-func (r *run[T]) measure(epoch int, loss float64, last bool) Epoch {
+func (r *run[T]) measure(ctx context.Context, epoch int, loss float64, last bool) (m Epoch, err error) {
 	t := &r.job.Training
 	nan := math.NaN()
-	m := Epoch{
+	m = Epoch{
 		TrainLoss: loss, TrainAccuracy: r.scores.Accuracy(),
 		ValidationLoss: nan, ValidationAccuracy: nan, TestLoss: nan, TestAccuracy: nan,
 		LossScale: r.scaler.s, Skipped: r.scaler.skipped - r.skipped0,
 	}
 	if r.parts.validation.size() > 0 && t.EvaluateValidation.due(last) {
-		m.ValidationLoss = r.evaluate(r.parts.validation, phaseValidation, epoch, r.answers[0])
+		m.ValidationLoss, err = r.evaluate(ctx, r.parts.validation, phaseValidation, epoch, r.answers[0])
+		if err != nil {
+			return m, err
+		}
 		m.ValidationAccuracy = r.answers[0].Accuracy()
 	}
 	if r.parts.test.size() > 0 && t.EvaluateTest.due(last) {
-		m.TestLoss = r.evaluate(r.parts.test, phaseTest, epoch, r.answers[1])
+		m.TestLoss, err = r.evaluate(ctx, r.parts.test, phaseTest, epoch, r.answers[1])
 		m.TestAccuracy, m.Ties = r.answers[1].Accuracy(), r.answers[1].Ties
 		r.out.Test = r.answers[1]
 	}
-	return m
+	return m, err
 }
 
 // finish completes the outcome.

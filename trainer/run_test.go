@@ -119,7 +119,11 @@ func TestEvaluationKnowsNoBatch(t *testing.T) {
 			t.Fatal(err)
 		}
 		scores := newScores(3)
-		return e.evaluate(set, phaseTest, 5, scores), scores
+		loss, err := e.evaluate(context.Background(), set, phaseTest, 5, scores)
+		if err != nil {
+			t.Fatal(err)
+		}
+		return loss, scores
 	}
 	want, answers := loss(7)
 	for _, capacity := range []int{1, 2, 3, 64} {
@@ -205,6 +209,11 @@ func TestCancellingStopsWithinAStep(t *testing.T) {
 		t.Errorf("stopped with %v after %d of %d steps", err, w.done, w.total)
 	}
 	w = &watcher{stop: cancel}
+	ctx, cancel = context.WithCancel(context.Background())
+	late := &watcher{stopAt: 3, stop: cancel} // the last step of an epoch: evaluation is next
+	if _, err := Run(ctx, job, late); !errors.Is(err, context.Canceled) || !strings.Contains(err.Error(), "evaluating validation data after epoch 1") {
+		t.Errorf("stopped with %v", err)
+	}
 	if out, err := Run(context.Background(), job, w); err != nil || w.done != 6 || len(out.Steps) != 6 {
 		t.Errorf("%v, %d steps of 6 reported", err, w.done)
 	}
