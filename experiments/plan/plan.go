@@ -20,7 +20,7 @@ type Plan struct {
 	Arms      []Arm // the baseline first, then in the order of the plan
 	Contrasts []Contrast
 
-	Warnings []string // doubts that travel into the report
+	Warnings []string // doubts that travel into the report; those about data are the Task's
 	Notices  []string // for the terminal only: where the plan was read from
 }
 

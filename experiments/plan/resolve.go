@@ -33,10 +33,19 @@ func ResolveText(p *Plan, o ResolveOptions) string {
 		writeArm(&b, p, &p.Arms[i], o.Full)
 	}
 	writeContrasts(&b, p)
-	for _, w := range p.Warnings {
+	for _, w := range allWarnings(p) {
 		fmt.Fprintln(&b, "warning:", oneLine(w))
 	}
 	return b.String()
+}
+
+// allWarnings are the doubts about a plan and about its data.
+func allWarnings(p *Plan) []string {
+	w := slices.Concat(p.Warnings, p.Task.Warnings)
+	if p.Pretrain != nil && p.Pretrain.Task.Canonical != p.Task.Canonical {
+		w = append(w, p.Pretrain.Task.Warnings...)
+	}
+	return w
 }
 
 // table starts aligned columns, two spaces apart.

@@ -3,6 +3,9 @@ package plan
 import (
 	"bytes"
 	"encoding/binary"
+	"errors"
+	"fmt"
+	"io/fs"
 	"os"
 	"path/filepath"
 	"strings"
@@ -59,6 +62,37 @@ func writeDigits(t *testing.T, folder string) {
 	}{{"train", 64}, {"t10k", 20}} {
 		writeIDX(t, filepath.Join(folder, set.name+"-images-idx3-ubyte.gz"), []uint32{set.n, 28, 28}, func(i int) byte { return byte(i) })
 		writeIDX(t, filepath.Join(folder, set.name+"-labels-idx1-ubyte.gz"), []uint32{set.n}, func(i int) byte { return byte(i % 10) })
+	}
+}
+
+// What data and a pretraining on other data have to do with the plan.
+func TestTasksFromTables(t *testing.T) {
+	folder := t.TempDir()
+	rows := "x,y,note,kind\n"
+	for i := range 24 {
+		rows += fmt.Sprintf("%d,%d,7,%s\n", i, i*i, []string{"even", "odd"}[i%2])
+	}
+	if err := os.WriteFile(filepath.Join(folder, "t.csv"), []byte(rows), 0o600); err != nil {
+		t.Fatal(err)
+	}
+	task := "data = \"csv\"\nfile = \"t.csv\"\nlabel = \"kind\"\nignore = [\"note\"]\ntest_every = 4\n[network]\nlayers = [\"dense 2\"]\n[training]\nlearning_rate = 0.1\nbatch = 4\nepochs = 1\n"
+	rest := basePlan[strings.Index(basePlan, "[replicates]"):]
+	file := filepath.Join(folder, "x.toml")
+	p, err := LoadFrom(texts{file: "[task]\n" + task + rest}, file)
+	if err != nil {
+		t.Fatal(err)
+	}
+	if p.Task.Train != 18 || p.Task.Test != 6 || volume(p.Task.Shape) != 2 || len(p.Task.ClassNames) != 2 {
+		t.Errorf("%+v", p.Task.Facts)
+	}
+	// Pretraining on data of another shape cannot leave weights that fit.
+	all := failures(t, texts{file: "[task]\n" + task + "[pretrain.task]\ndata = \"pump-vibration\"\n" + rest}, file)
+	if len(all) != 1 || all[0].Key != "pretrain.task" || !strings.Contains(all[0].Reason, "examples of 1x128 in 5 classes do not fit the network, which takes 2 in 2 classes") {
+		t.Errorf("%v", all)
+	}
+	_, err = LoadFrom(texts{file: "[task]\n" + strings.Replace(task, "t.csv", "gone.csv", 1) + rest}, file)
+	if !errors.Is(err, fs.ErrNotExist) {
+		t.Errorf("the cause is not wrapped: %v", err)
 	}
 }
 

@@ -3,7 +3,6 @@ package plan
 import (
 	"fmt"
 	"math"
-	"slices"
 
 	"ulpine/quant"
 	"ulpine/trainer"
@@ -12,12 +11,7 @@ import (
 // warn lists what is allowed but makes a reader doubt the result. Warnings
 // travel with the results into the report.
 func (p *Plan) warn() []string {
-	w := slices.Clone(p.Task.Warnings)
-	if p.Pretrain != nil {
-		for _, text := range p.Pretrain.Task.Warnings {
-			w = append(w, "pretraining: "+text)
-		}
-	}
+	var w []string
 	if p.Replicates.Count == 1 {
 		w = append(w, "one replicate: no interval can be given, and so no verdict")
 	}
