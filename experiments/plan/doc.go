@@ -7,7 +7,8 @@
 //	title, question     texts for the report
 //	include             another file, or an array of them, relative to the file
 //	                    that includes it; merged first, the plan's own keys win
-//	[task]              the data
+//	[task]              data and the keys of that data set (package datasets); a
+//	                    relative path starts at the folder of the file with data
 //	[network]           layers, one text each
 //	[training]          optimizer, learning_rate, batch, epochs, loss, shuffle,
 //	                    evaluate
@@ -18,7 +19,9 @@
 //	[claim]             metric, margin, confidence
 //	[format.NAME]       a number format of the plan's own
 //	[baseline]          settings of the arm that all others are compared with
-//	[[arm]]             name, settings, loss_scale, training
+//	[[arm]]             name, settings, loss_scale; training: what differs from the
+//	                    plan's own optimizer, learning_rate, batch, epochs;
+//	                    learning_rate is short for training.learning_rate
 //	[[contrast]]        arm, against, margin: two arms to compare with each other
 //
 // Tables of an included file and of the plan merge key by key. A text, a number,
