@@ -47,7 +47,7 @@ type Facts struct {
 	Warnings                []string
 }
 
-// Facts are the facts of loaded data.
+// facts are those of loaded data.
 func (d *Data) facts() Facts {
 	return Facts{
 		Shape: d.Shape, ClassNames: d.ClassNames,

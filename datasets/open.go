@@ -28,7 +28,7 @@ type input struct {
 	most int64
 }
 
-// openInput opens a regular file. key is the option that names it.
+// openInput opens a regular file; key is the option that names it, for errors.
 func openInput(key, name string) (*input, error) {
 	fail := func(reason string, err error) (*input, error) {
 		var path *fs.PathError

@@ -52,7 +52,7 @@ func New(name string, o Options) (Source, error) {
 	return source, nil
 }
 
-// Names lists the data sets there are, and Summaries what each is.
+// Names lists the data sets there are.
 func Names() []string {
 	names := make([]string, len(table))
 	for i, k := range table {
