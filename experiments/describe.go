@@ -1,0 +1,160 @@
+package experiments
+
+import (
+	"fmt"
+	"strings"
+
+	"ulpine/experiments/plan"
+	"ulpine/results"
+	"ulpine/results/store"
+)
+
+// describe sets what a study says of its plan alone.
+func describe(l *layout) *results.Study {
+	p := l.Plan
+	s := &results.Study{
+		Title: p.Title, Question: p.Question, PlanFile: p.File, PlanText: p.Text,
+		Resolved: plan.ResolveText(p, plan.ResolveOptions{Full: true}),
+		Data:     p.Task.Description, Network: networkLine(p), Training: trainingLine(p),
+		LongestSum: p.Work().LongestSum, Classes: p.Task.ClassNames,
+		Metric: p.Claim.Metric, Margin: p.Claim.Margin, Confidence: p.Claim.Confidence,
+		Claim: l.claim, Planned: p.Replicates.Count,
+	}
+	for i := range p.Arms {
+		s.Arms = append(s.Arms, describeArm(p, &p.Arms[i]))
+	}
+	s.Warnings = append(s.Warnings, p.Warnings...)
+	s.Warnings = append(s.Warnings, p.Task.Warnings...)
+	if p.Pretrain != nil && p.Pretrain.Task.Canonical != p.Task.Canonical {
+		s.Warnings = append(s.Warnings, p.Pretrain.Task.Warnings...)
+	}
+	return s
+}
+
+func describeArm(p *plan.Plan, a *plan.Arm) results.Arm {
+	arm := results.Arm{
+		Name: a.Name, Slug: a.Slug, Baseline: a.Baseline, Summary: a.Summary,
+		LossScale: a.LossScale, Bits: meanBits(p, a),
+	}
+	for _, s := range a.Settings {
+		arm.Settings = append(arm.Settings, results.Setting(s))
+	}
+	return arm
+}
+
+// networkLine is the network in one line, with its number of parameters.
+func networkLine(p *plan.Plan) string {
+	words := make([]string, len(p.Network.Layers))
+	for i := range p.Network.Layers {
+		words[i] = p.Network.Layers[i].Text
+	}
+	return fmt.Sprintf("%s; %d parameters", strings.Join(words, ", "), p.Network.Parameters())
+}
+
+// trainingLine is the training in one line.
+func trainingLine(p *plan.Plan) string {
+	t := &p.Training
+	line := fmt.Sprintf("%s, momentum %g, learning rate %g", t.Optimizer.Kind, t.Optimizer.Momentum, t.LearningRate.Start)
+	if len(t.LearningRate.AtEpochs) > 0 {
+		line += fmt.Sprintf(" (times %g at epochs %s)", t.LearningRate.Multiply, strings.Trim(fmt.Sprint(t.LearningRate.AtEpochs), "[]"))
+	}
+	line += fmt.Sprintf(", batch %d, %s", t.Batch, number(t.Epochs, "epoch"))
+	if pre := p.Pretrain; pre != nil {
+		line += fmt.Sprintf("; after pretraining for %s on %s", number(pre.Training.Epochs, "epoch"), pre.Task.Description)
+	}
+	return line
+}
+
+// rerun are the commands that repeat the study.
+func rerun(p *plan.Plan, s *store.Store) []string {
+	command := "go run ./cmd/ulpine run " + quoted(p.File)
+	if s.Path() != store.DefaultPath {
+		command += " --store " + quoted(s.Path())
+	}
+	return []string{command}
+}
+
+// quoted puts a path in quotation marks where a shell would take it apart.
+func quoted(path string) string {
+	if strings.ContainsAny(path, " \t'\"\\$&|;<>()*?[]{}~#`!") {
+		return "'" + strings.ReplaceAll(path, "'", `'\''`) + "'"
+	}
+	return path
+}
+
+// meanBits is the mean width in bits of a value that a training step stores,
+// weighted by how many of each there are in a full batch: inputs, activations,
+// output errors and gradients of a batch; masters, gradients and states of
+// parameters; working copies where their format is not the master's.
+func meanBits(p *plan.Plan, a *plan.Arm) float64 {
+	batch := max(1, min(a.Training.Batch, p.Task.Train))
+	masters := map[int]string{}
+	for _, s := range a.Settings {
+		if s.Point == "update.master" {
+			masters[s.Layer] = s.Format
+		}
+	}
+	var bits, values float64
+	for _, s := range a.Settings {
+		n := storedValues(p, s, batch)
+		if s.Point == "forward.weight" && masters[s.Layer] == s.Format {
+			n = 0
+		}
+		bits += float64(n * s.Bits)
+		values += float64(n)
+	}
+	return bits / max(values, 1)
+}
+
+// storedValues is how many values are stored at a rounding point; 0 where none
+// is, inside sums and products.
+func storedValues(p *plan.Plan, s plan.Setting, batch int) int {
+	if s.Layer < 0 {
+		switch s.Point {
+		case "input":
+			return batch * volume(p.Network.Input)
+		case "loss.gradient":
+			return batch * p.Network.Outputs()
+		}
+		return 0
+	}
+	layer := &p.Network.Layers[s.Layer]
+	parameters := 0
+	for _, param := range layer.Params {
+		parameters += volume(param.Shape)
+	}
+	switch s.Point {
+	case "forward.weight", "weight_gradient.result", "update.state", "update.master":
+		return parameters
+	case "forward.activation":
+		return batch * volume(layer.Out)
+	case "input_gradient.result":
+		return batch * volume(layer.In)
+	}
+	return 0
+}
+
+func volume(shape []int) int {
+	n := 1
+	for _, d := range shape {
+		n *= d
+	}
+	return n
+}
+
+// tested is how far beyond the longest sum that was run anything may be said.
+const tested = 4
+
+// cautions are what a reader must never be misled about.
+func cautions(p *plan.Plan, s *results.Study) []string {
+	all := []string{
+		fmt.Sprintf("Small networks tolerate more rounding than large ones, and their sums are shorter. The longest sum here has %s; nothing follows for sums of more than %d.",
+			number(s.LongestSum, "term"), tested*s.LongestSum),
+		"Every mean is of the pairs stated beside it; an undecided comparison does not mean that two arms are the same.",
+	}
+	if strings.Contains(p.Task.Description, "invented") {
+		all = append(all, "The data are invented: they show how arithmetic behaves on a task of this kind, not how good a classifier of real data would be.")
+	}
+	return append(all, "This is no approval for a safety-related use. Rare inputs, drift of the data and hardware faults are untested; "+
+		"the applicable functional-safety standard and qualified engineers decide.")
+}

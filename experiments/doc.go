@@ -1,0 +1,39 @@
+// Package experiments runs plans: it turns arms x replicates into runs, runs
+// them on several workers, keeps what came out in a store, and builds from plan
+// and store the study that terminal and report show.
+//
+// # Runs
+//
+// A run is one arm x one replicate. Its key is a SHA-256 of everything that
+// decides its bits: the arithmetic version, the resolved arm without its name,
+// the task with its network, the data, the replicate's seed and, where arms
+// start from pretrained weights, the key of the pretraining (see runKey). What
+// is stored under a key is not run again, whoever ran it; a run that was broken
+// off or failed starts over. Two arms with the same arithmetic have the same
+// keys: they are run once and listed under both names.
+//
+// # Order
+//
+// Replicates are taken one after another, and within each first the
+// pretraining, then the baseline, then the arms in the order of the plan. A
+// worker without work in the replicates at hand opens the next one. The data of a
+// replicate is loaded once, shared by its runs, and let go after the last; never
+// are more replicates open than there are workers. No result depends on this
+// order: the bits of a run depend on its key alone.
+//
+// # The study
+//
+// What identifies a study, so that its claim can be fixed once, is the task with
+// its network and pretraining, and the arms with their names, in any order. Title,
+// question, replicates and claim do not: changing those is changing one's mind
+// about the same study, and shows. A plan with another arm is another study; the
+// store tells it how many of its runs were there before its claim.
+//
+// # Ends
+//
+// A run that fails, by an error or a panic, is stored as failed with its cause;
+// the others go on. A run that diverges is a result. If the baseline or a
+// pretraining diverges, all runs are still done and stored, but Run returns
+// ErrBaseline and no verdict is given. A cancelled context ends within a second:
+// runs in flight are marked as broken off, everything else is kept.
+package experiments

@@ -1,0 +1,186 @@
+package experiments
+
+import (
+	"context"
+	"slices"
+	"strings"
+	"testing"
+
+	"github.com/google/go-cmp/cmp"
+
+	"ulpine/experiments/plan"
+	"ulpine/results"
+)
+
+// TestMetricLists: what a plan may claim is what runs record.
+func TestMetricLists(t *testing.T) {
+	if d := cmp.Diff(plan.Metrics(), results.MetricNames()); d != "" {
+		t.Errorf("plans and results differ (-plan +results):\n%s", d)
+	}
+}
+
+// keysOfPlan are the keys of one replicate on invented data hashes, by arm.
+func keysOfPlan(p *plan.Plan, seed uint64) map[string]results.Hash {
+	l := newLayout(p)
+	k := l.keysOf(seed, results.Hash{1}, results.Hash{2})
+	all := map[string]results.Hash{}
+	for _, run := range l.planned(seed, k) {
+		all[run.Arm] = run.Key
+	}
+	return all
+}
+
+func TestKeys(t *testing.T) {
+	base := keysOfPlan(tinyPlan(t, ""), 100)
+	if base["baseline"] != base["fp32-again"] || base["baseline"] == base["bf16-nearest"] || base["bf16-nearest"] == base["bf16-stochastic"] {
+		t.Errorf("keys %v", base)
+	}
+	same := map[string][]string{
+		"arm's name":  {`name = "bf16 nearest"`, `name = "brain float"`, `against = "bf16 nearest"`, `against = "brain float"`},
+		"title":       {"a tiny plan", "another title"},
+		"margin":      {"margin = 0.2", "margin = 0.3"},
+		"count":       {"count = 3", "count = 30"},
+		"first seed":  {"first_seed = 100", "first_seed = 90"}, // replicate 100 is still replicate 100
+		"other arm":   {`name = "bf16 stochastic"` + "\nstorage = { format", `name = "bf16 stochastic"` + "\nstorage = { overflow = \"saturate\", format"},
+		"spelling":    {`storage = "bf16"`, `storage = "bfloat16"`},
+		"in the file": {"batch = 16\nepochs = 2", "epochs = 2\nbatch = 16"},
+	}
+	for name, change := range same {
+		got := keysOfPlan(tinyPlan(t, "", change...), 100)
+		nearest := got["bf16-nearest"]
+		if name == "arm's name" {
+			nearest = got["brain-float"]
+		}
+		if got["baseline"] != base["baseline"] || nearest != base["bf16-nearest"] {
+			t.Errorf("%s changed a key", name)
+		}
+	}
+	other := map[string][]string{
+		"learning rate": {"learning_rate = 0.05", "learning_rate = 0.06"},
+		"batch":         {"batch = 16", "batch = 12"},
+		"epochs":        {"epochs = 2", "epochs = 3"},
+		"layers":        {"out=2", "out=3"},
+		"examples":      {"train = 48", "train = 47"},
+		"data seed":     {"data_seed = 1", "data_seed = 5"},
+		"format":        {`"bf16"`, `"fp16"`, `everything = "fp32"`, `everything = "fp64"`},
+	}
+	for name, change := range other {
+		got := keysOfPlan(tinyPlan(t, "", change...), 100)
+		if got["baseline"] == base["baseline"] || got["bf16-nearest"] == base["bf16-nearest"] {
+			t.Errorf("%s did not change the keys", name)
+		}
+	}
+	if next := keysOfPlan(tinyPlan(t, ""), 101); next["baseline"] == base["baseline"] {
+		t.Error("another replicate has the same key")
+	}
+	l := newLayout(tinyPlan(t, ""))
+	if l.keysOf(100, results.Hash{9}, results.Hash{}).groups[0] == base["baseline"] {
+		t.Error("other data has the same key")
+	}
+}
+
+// TestPretrainKeys: a pretraining is shared by plans that go on differently;
+// arms depend on it.
+func TestPretrainKeys(t *testing.T) {
+	p := keysOfPlan(tinyPlan(t, pretraining), 100)
+	if plain := keysOfPlan(tinyPlan(t, ""), 100); plain["baseline"] == p["baseline"] {
+		t.Error("an arm's key does not know of its pretraining")
+	}
+	later := tinyPlan(t, pretraining, "test = 32", "test = 32\nvariant = \"remounted\"", "task = { data_seed = 2 }", "task = { data_seed = 2, variant = \"mounted\" }")
+	if k := keysOfPlan(later, 100); k["pretrain"] != p["pretrain"] || k["baseline"] == p["baseline"] {
+		t.Error("a plan that goes on differently does not share the pretraining")
+	}
+	longer := keysOfPlan(tinyPlan(t, strings.Replace(pretraining, "epochs = 1", "epochs = 2", 1)), 100)
+	if longer["pretrain"] == p["pretrain"] || longer["baseline"] == p["baseline"] {
+		t.Error("a longer pretraining has the same keys")
+	}
+	wider := keysOfPlan(tinyPlan(t, pretraining, "out=2", "out=3"), 100)
+	if wider["pretrain"] == p["pretrain"] {
+		t.Error("a pretraining does not know its network")
+	}
+}
+
+func TestStudyIdentity(t *testing.T) {
+	base := studyID(tinyPlan(t, ""))
+	for name, change := range map[string][]string{
+		"title":      {"a tiny plan", "another title"},
+		"question":   {"Does it run?", "Why?"},
+		"margin":     {"margin = 0.2", "margin = 0.3"},
+		"confidence": {"confidence = 0.95", "confidence = 0.9"},
+		"count":      {"count = 3", "count = 30"},
+		"first seed": {"first_seed = 100", "first_seed = 90"},
+		"contrast":   {"margin = 0.1", "margin = 0.15"},
+	} {
+		if studyID(tinyPlan(t, "", change...)) != base {
+			t.Errorf("another %s makes another study", name)
+		}
+	}
+	for name, change := range map[string][]string{
+		"arm":      {`storage = "bf16"`, `storage = "fp16"`},
+		"arm name": {`"fp32 again"`, `"fp32 once more"`},
+		"data":     {"train = 48", "train = 47"},
+		"network":  {"out=2", "out=3"},
+		"training": {"epochs = 2", "epochs = 3"},
+	} {
+		if studyID(tinyPlan(t, "", change...)) == base {
+			t.Errorf("another %s is the same study", name)
+		}
+	}
+	if studyID(tinyPlan(t, pretraining)) == base {
+		t.Error("a pretraining makes no difference")
+	}
+	p := tinyPlan(t, "")
+	slices.Reverse(p.Arms[1:])
+	if studyID(p) != base {
+		t.Error("the order of arms makes another study")
+	}
+	if p.Arms[1].Slug != "fp32-again" {
+		t.Error("the plan's arms were sorted")
+	}
+}
+
+func TestHashedHasNoCollisionsOfJoins(t *testing.T) {
+	seen := map[results.Hash][]string{}
+	for _, texts := range [][]string{{}, {""}, {"", ""}, {"ab"}, {"a", "b"}, {"a", "b", ""}, {"1:a"}, {"1:a1:b"}} {
+		h := hashed("run", texts...)
+		if other, double := seen[h]; double {
+			t.Errorf("%q and %q have one hash", texts, other)
+		}
+		seen[h] = texts
+	}
+	if hashed("run") == hashed("data") {
+		t.Error("kinds do not matter")
+	}
+}
+
+// TestPlansShareRuns: a second plan with other names and one more arm runs only
+// what is new, and lists everything under its own names.
+func TestPlansShareRuns(t *testing.T) {
+	s := openStore(t)
+	p := tinyPlan(t, "")
+	if _, err := Run(context.Background(), p, s, Options{Workers: 2}); err != nil {
+		t.Fatal(err)
+	}
+	q := tinyPlan(t, "[[arm]]\nname = \"fp16\"\nstorage = \"fp16\"\n", "a tiny plan", "a second plan", `"bf16 nearest"`, `"brain float"`, "margin = 0.2", "margin = 0.25")
+	got, err := Run(context.Background(), q, s, Options{Workers: 2})
+	if err != nil || got.Before != 9 || got.Done != 3 {
+		t.Fatalf("%+v, %v", got, err)
+	}
+	if got.Claim.RunsBefore != 6 || len(got.Claim.Earlier) != 1 || !strings.Contains(got.Claim.Earlier[0], "margin was 0.2, is 0.25") {
+		t.Errorf("claim %+v", got.Claim)
+	}
+	all := states(t, s)
+	for _, name := range []string{"bf16-nearest/100", "brain-float/100", "fp16/102", "fp32-again/101", "baseline/101"} {
+		if all[name] != results.Stored {
+			t.Errorf("%s is %q", name, all[name])
+		}
+	}
+	first, err := Study(p, s)
+	if err != nil || first.MarginChanged != "" || len(first.Runs) != 12 {
+		t.Errorf("first study: %d runs, %q, %v", len(first.Runs), first.MarginChanged, err)
+	}
+	second, err := Study(q, s)
+	if err != nil || len(second.Runs) != 15 || !strings.Contains(second.MarginChanged, "when 6 runs of its arms had been stored under another claim") {
+		t.Errorf("second study: %d runs, %q, %v", len(second.Runs), second.MarginChanged, err)
+	}
+}
