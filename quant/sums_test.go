@@ -293,10 +293,10 @@ func TestSumRowsAgainstReference(t *testing.T) {
 	}
 	for range rounds {
 		for _, order := range testOrders {
-			for _, sum := range points {
+			for _, sum := range points[:len(points)-1] {
 				acc := Accumulate{Sum: *sum, Order: order, Through32: r.IntN(4) == 0 && order.Kind != Wide}
 				if r.IntN(2) == 0 {
-					acc.Outer = points[r.IntN(len(points))]
+					acc.Outer = points[r.IntN(len(points)-1)]
 				}
 				sumRowsOnce[float32](t, r, acc)
 				sumRowsOnce[float64](t, r, acc)
