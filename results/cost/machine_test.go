@@ -182,6 +182,8 @@ func TestInvalidInput(t *testing.T) {
 		"optimizer.states arms[1].layers[1].states arms[1].layers[3].states": func(in *Input) { in.Optimizer.States = nil },
 		"arms[1].name":                                 func(in *Input) { in.Arms[0].Name = "" },
 		"arms[1].layers":                               func(in *Input) { in.Arms[0].Layers = in.Arms[0].Layers[:2] },
+		"arms[1].input":                                func(in *Input) { in.Arms[0].Input = Point{} },
+		"arms[1].layers[1].forward.product":            func(in *Input) { in.Arms[0].Layers[0].Forward.Product = &Point{} },
 		"arms[1].loss":                                 func(in *Input) { in.Arms[0].Loss = Point{} },
 		"arms[1].layers[1].master":                     func(in *Input) { in.Arms[0].Layers[0].Master = Point{} },
 		"arms[1].layers[1].weight.random_bits":         func(in *Input) { in.Arms[0].Layers[0].Weight.RandomBits = 99 },

@@ -95,7 +95,7 @@ func stochasticArm(t testing.TB, n *Network) Arm {
 		outer := draw(FP32, 7)
 		a.Activation.RandomBits, a.Weight.RandomBits, a.Master.RandomBits, a.Step.RandomBits = 8, 9, 10, 11
 		a.States[0].RandomBits = 12
-		a.InputGradient.First, a.WeightGradient.Gradient = &e4m3, &e4m3
+		a.InputGradient.First, a.InputGradient.Gradient, a.WeightGradient.Gradient = &e4m3, &e4m3, &e4m3
 		a.Forward = Sums{Product: &product, Sum: draw(bf16, 6), Outer: &outer, Order: Chunk, K: 16}
 		a.InputGradient.Sums.Order, a.InputGradient.Sums.K = Lanes, 4
 		a.WeightGradient.Sums.Order = Compensated

@@ -68,8 +68,9 @@ func TestRandomBits(t *testing.T) {
 		// Products, inner additions, 7 chunks of 16 for 100 terms and the bias in the
 		// outer format, outputs.
 		5*products + 6*products + 7*(7*sums+sums) + 8*sums,
-		// The weights converted to E4M3; sums and results round to nearest.
-		3 * 1000,
+		// The weights and the output's gradient converted to E4M3; sums and results
+		// round to nearest.
+		3*1000 + 3*sums,
 		// The output's gradient converted to E4M3; four additions a term of the
 		// weights' and the biases' sums.
 		3*sums + 4*products + 4*sums,

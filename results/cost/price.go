@@ -121,7 +121,7 @@ func (p *pricer) joules(bits uint64, o *operations) Energy {
 	e.Add += p.charge(&e, o.scales, 1, func(x term) charge { return charge{t.add(x.a).pj, ruleScale} })
 	for _, x := range o.operands {
 		width := x.a.BitsPerValue() + x.b.BitsPerValue()
-		e.Operands += float64(x.count) * (float64(width*t.near()) / t.Reuse)
+		e.Operands += float64(float64(x.count) * (width * t.near() / t.Reuse))
 	}
 	e.Total = e.Multiply + e.Add + e.Random + e.Operands + e.Cache + e.Memory
 	return e

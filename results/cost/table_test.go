@@ -77,6 +77,30 @@ func aligned(t *testing.T, text string) {
 	}
 }
 
+// TestRows holds two rows against what TestByHand and TestMasterByHand work out:
+// in training (16 + 32 + 32 + 16) bits a parameter, and 16 bits of each kept
+// activation (784 + 100 + 100 + 10 an example) and live gradient (100 + 100).
+func TestRows(t *testing.T) {
+	n := twoLayers()
+	text := render(t, estimate(t, n, "cpu-core-2020", masterArm(t, &n, "bf16")), false)
+	const params, acts, grads = 79510, 32 * 994, 32 * 200
+	bits := (96*params + 16*(acts+grads)) / float64(4*params+acts+grads)
+	for _, want := range [][]string{
+		{"bf16 storage, fp32 master", "16.00", "16.00", "16.00", "32.00", "32.00", width(bits)},
+		{"fp32", "32.00", "32.00", "32.00", "32.00", "-", "32.00"},
+		{"bf16 storage, fp32 master", "2.08 MB", "0.810"}, // 243796 values of 2 bytes, 397550 of 4
+		{"bf16 storage, fp32 master", "161 kB", "0.500"},  // 79510 + 784 + 300 + 110 values
+		// dense 100: (32 78400 + 3200) / 48e9 s forward and again for the weight
+		// gradient, 5 78500 4 / 51.2e9 s for the update, 52.33 + 52.33 + 30.66 µs;
+		// dense 10 likewise 0.67 + 0.67 + 0.67 + 0.39; ReLU 1.25, loss 0.05 of traffic.
+		{"fp32", "2.57 MB", "1.000", "139 µs", "1.00", "arithmetic"},
+	} {
+		if !strings.Contains(strings.Join(strings.Fields(text), " "), strings.Join(want, " ")) {
+			t.Errorf("no row %q in\n%s", want, text)
+		}
+	}
+}
+
 // TestAnswers: what the sentence says in each case.
 func TestAnswers(t *testing.T) {
 	n := twoLayers()
@@ -86,6 +110,7 @@ func TestAnswers(t *testing.T) {
 	}{
 		{nil, []string{"No arms to compare", "2.57 MB"}},
 		{[]Arm{uniform(t, &n, "fp64")}, []string{"No arm moves fewer bytes than FP32", "fp64 comes nearest with 2.000"}},
+		{[]Arm{masterArm(t, &n, "fp32"), uniform(t, &n, "int8")}, []string{"int8 moves the fewest bytes: 0.250", "4.00 times as fast"}},
 		{
 			[]Arm{masterArm(t, &n, "bf16"), uniform(t, &n, "bf16")},
 			[]string{"bf16 moves the fewest bytes: 0.500", "2.00 times as fast", "bound by memory", "by model"},
@@ -97,6 +122,18 @@ func TestAnswers(t *testing.T) {
 				t.Errorf("answer %q lacks %q", r.Answer, s)
 			}
 		}
+	}
+}
+
+// TestNoFaster: fewer bytes are no speed where arithmetic binds.
+func TestNoFaster(t *testing.T) {
+	n := twoLayers()
+	r, err := Estimate(&Input{
+		Network: n, Optimizer: Momentum, Batch: 32, Machine: slow(1e4), Energy: DefaultEnergy(),
+		Arms: []Arm{uniform(t, &n, "bf16")},
+	})
+	if err != nil || !strings.Contains(r.Answer, "would run no faster than in FP32, bound by arithmetic") {
+		t.Errorf("answer %q, error %v", r.Answer, err)
 	}
 }
 

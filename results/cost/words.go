@@ -30,7 +30,12 @@ func answer(r *Result) string {
 }
 
 // fast says a speed-up in words.
-func fast(x float64) string { return significant(x) + " times as fast as in FP32" }
+func fast(x float64) string {
+	if s := significant(x); s != "1.00" {
+		return s + " times as fast as in FP32"
+	}
+	return "no faster than in FP32"
+}
 
 // assumptions are what the figures rest on, in words.
 func (e *estimator) assumptions() []string {
