@@ -40,6 +40,22 @@ func TestTable(t *testing.T) {
 		}
 		at += i
 	}
+	once, tiled := &r.Reference.Once, &r.Reference.Tiled
+	if once.Step.Total.Bits == tiled.Step.Total.Bits || once.Inference.Total.Bits == tiled.Inference.Total.Bits {
+		t.Fatal("the two models agree, the captions are not tested")
+	}
+	for caption, a := range map[string]*Activity{
+		"A training step of 32 examples on microcontroller-2011, each tensor moved once a phase":     &once.Step,
+		"An inference of 1 example on microcontroller-2011, each tensor moved once a phase":          &once.Inference,
+		"A training step of 32 examples on microcontroller-2011, in blocks through a cache of 128 B": &tiled.Step,
+		"An inference of 1 example on microcontroller-2011, in blocks through a cache of 128 B":      &tiled.Inference,
+	} {
+		_, section, _ := strings.Cut(plain, caption+"\n")
+		section, _, _ = strings.Cut(section, "\n\n")
+		if want := "fp32 " + bytesOf(a.Total.Bits) + " 1.000 "; !strings.Contains(strings.Join(strings.Fields(section), " "), want) {
+			t.Errorf("under %q no %q:\n%s", caption, want, section)
+		}
+	}
 	for _, arm := range r.Arms[1:] { // the first is called like the reference
 		if got := strings.Count(plain, "\n  "+arm.Name+"  "); got != 6 {
 			t.Errorf("%s has %d rows, want 6", arm.Name, got)

@@ -36,6 +36,30 @@ func TestAdam(t *testing.T) {
 	}
 }
 
+// TestOptimizers counts the operations of the other formulas a parameter, the
+// final difference included.
+func TestOptimizers(t *testing.T) {
+	for _, c := range []struct {
+		o                     Optimizer
+		multiplies, additions uint64
+	}{
+		{SGD, 1, 1},      // lr g; w - step
+		{Momentum, 2, 2}, // mu v, lr v; + g, w - step
+		{Nesterov, 3, 3}, // mu v, mu v again, lr (); + g twice, w - step
+		{AdamW, 9, 5},    // as Adam; (lr decay) w; its addition
+	} {
+		in := Input{Network: twoLayers(), Optimizer: c.o, Batch: 1, Machine: slow(1), Energy: DefaultEnergy()}
+		r, err := Estimate(&in)
+		if err != nil {
+			t.Fatal(err)
+		}
+		f := &r.Reference.Once.Step.Phases[3]
+		if f.Multiplies != c.multiplies*79510 || f.Additions != c.additions*79510 {
+			t.Errorf("%s: %d multiplications and %d additions a parameter", c.o.Name, f.Multiplies/79510, f.Additions/79510)
+		}
+	}
+}
+
 // TestLossScale: dividing by the loss scale is one multiplication a parameter.
 func TestLossScale(t *testing.T) {
 	n := twoLayers()
