@@ -66,7 +66,7 @@ func (x *runner) loadShared(ctx context.Context) (err error) {
 	}
 	for i, t := range tasks {
 		if err := ctx.Err(); err != nil {
-			return fmt.Errorf("stopped before the first run: %w", err)
+			return &stopError{"stopped before the first run", err}
 		}
 		if t.PerReplicate {
 			continue

@@ -20,10 +20,23 @@ import (
 var (
 	// ErrBaseline: the baseline or a pretraining diverged, so the plan cannot be
 	// answered. All its runs are stored.
-	ErrBaseline = errors.New("the baseline diverged")
+	ErrBaseline = errors.New("the plan has no answer")
 	// ErrRunsFailed: some runs failed. The others are stored.
 	ErrRunsFailed = errors.New("runs failed")
+	// ErrStopped: the context was cancelled before all runs were done. The error
+	// wraps the context's too.
+	ErrStopped = errors.New("stopped")
 )
+
+// stopError is an ErrStopped that also is the context's error without saying
+// "context canceled".
+type stopError struct {
+	text string
+	err  error
+}
+
+func (e *stopError) Error() string   { return e.text }
+func (e *stopError) Unwrap() []error { return []error{ErrStopped, e.err} }
 
 // Options say how a plan is run. The zero value runs it on all cores and tells
 // nobody.
@@ -81,7 +94,7 @@ type runner struct {
 // workers as the options say; the bits of the results do not depend on them. It
 // fixes the plan's claim in the store before the first run.
 //
-// A cancelled context ends it within a second with an error that wraps ctx's;
+// A cancelled context ends it within a second with ErrStopped;
 // runs in flight are marked as broken off. Runs that fail are stored as such and
 // give ErrRunsFailed, a diverged baseline gives ErrBaseline, both after
 // everything else is stored. Other errors (data that cannot be loaded, a store
@@ -178,8 +191,8 @@ func (x *runner) settle(ctx context.Context, broken []results.Hash, wall time.Du
 	case err != nil:
 		return *s, err
 	case stopped:
-		return *s, fmt.Errorf("stopped with %d of %d runs stored, %d broken off; run the plan again to go on: %w",
-			s.Before+s.Done, s.Runs, s.BrokenOff, context.Cause(ctx))
+		return *s, &stopError{fmt.Sprintf("stopped with %d of %d runs stored, %d broken off; run the plan again to go on",
+			s.Before+s.Done, s.Runs, s.BrokenOff), ctx.Err()}
 	}
 	return *s, errors.Join(x.failed(), x.baseline())
 }
@@ -228,7 +241,7 @@ func (x *runner) baseline() error {
 		runs[i].Diverged = known[key].Diverged
 	}
 	if problem := baselineProblem(x.Plan, runs); problem != "" {
-		return fmt.Errorf("%w: %s: no arm can be compared with it; lower the learning rate or change the task", ErrBaseline, problem)
+		return fmt.Errorf("%w: %s, and no arm can be compared with that; lower the learning rate or change the task", ErrBaseline, problem)
 	}
 	return nil
 }

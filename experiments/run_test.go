@@ -119,7 +119,7 @@ func TestCancel(t *testing.T) {
 	if took := time.Since(cancelled); took > time.Second {
 		t.Errorf("ended %v after it was cancelled", took)
 	}
-	if !errors.Is(err, context.Canceled) || !strings.Contains(err.Error(), "3 of 12 runs stored, 2 broken off; run the plan again") {
+	if !errors.Is(err, context.Canceled) || !errors.Is(err, ErrStopped) || !strings.Contains(err.Error(), "3 of 12 runs stored, 2 broken off; run the plan again") {
 		t.Errorf("error %v", err)
 	}
 	if got.Done != 3 || got.BrokenOff != 2 {
@@ -201,7 +201,7 @@ func TestCancelledBeforeTheFirstRun(t *testing.T) {
 	ctx, cancel := context.WithCancel(context.Background())
 	cancel()
 	got, err := Run(ctx, p, s, Options{Workers: 2})
-	if !errors.Is(err, context.Canceled) || got.Done != 0 || len(states(t, s)) != 0 {
+	if !errors.Is(err, context.Canceled) || !errors.Is(err, ErrStopped) || got.Done != 0 || len(states(t, s)) != 0 {
 		t.Errorf("%+v, %v", got, err)
 	}
 }
