@@ -12,7 +12,7 @@ func TestListedOperations(t *testing.T) {
 	for name, want := range map[string][2]float64{
 		"int8": {0.2, 0.03}, "int32": {3.1, 0.1}, "fp16": {1.1, 0.4}, "fp32": {3.7, 0.9},
 	} {
-		f := named1(t, name)
+		f := formatOf(t, name)
 		if m := e.multiply(f, f); m != (charge{pj: want[0]}) {
 			t.Errorf("%s multiplication: %+v, want %v", name, m, want[0])
 		}
@@ -20,7 +20,7 @@ func TestListedOperations(t *testing.T) {
 			t.Errorf("%s addition: %+v, want %v", name, a, want[1])
 		}
 	}
-	if a := e.add(named1(t, "int16")); a != (charge{pj: 0.05}) {
+	if a := e.add(formatOf(t, "int16")); a != (charge{pj: 0.05}) {
 		t.Errorf("int16 addition: %+v, want 0.05", a)
 	}
 }
@@ -30,7 +30,7 @@ func TestListedOperations(t *testing.T) {
 func TestExtrapolation(t *testing.T) {
 	e := DefaultEnergy()
 	logarithm := Format{Name: "log8", Family: Logarithmic, Bits: 8, Exponent: 4, Fraction: 3}
-	bf16, e4m3, fp16, fp64 := named1(t, "bf16"), named1(t, "e4m3"), named1(t, "fp16"), named1(t, "fp64")
+	bf16, e4m3, fp16, fp64 := formatOf(t, "bf16"), formatOf(t, "e4m3"), formatOf(t, "fp16"), formatOf(t, "fp64")
 	for _, c := range []struct {
 		what string
 		got  charge
@@ -39,18 +39,18 @@ func TestExtrapolation(t *testing.T) {
 	}{
 		{"bf16 multiplication", e.multiply(bf16, bf16), 1.1 * 64 / 121, ruleMultiply},
 		{"E4M3 multiplication", e.multiply(e4m3, e4m3), 1.1 * 16 / 121, ruleMultiply},
-		{"MXFP8 multiplication", e.multiply(named1(t, "mxfp8"), named1(t, "mxfp8")), 1.1 * 16 / 121, ruleMultiply},
+		{"MXFP8 multiplication", e.multiply(formatOf(t, "mxfp8"), formatOf(t, "mxfp8")), 1.1 * 16 / 121, ruleMultiply},
 		{"fp64 multiplication", e.multiply(fp64, fp64), 3.7 * 53 * 53 / 576, ruleMultiply},
 		{"fp16 x fp32", e.multiply(fp16, FP32), 1.1 + (3.7-1.1)*(264-121)/(576-121), ruleMultiply},
 		{"fp32 x fp16", e.multiply(FP32, fp16), 1.1 + (3.7-1.1)*(264-121)/(576-121), ruleMultiply},
-		{"1-8-10 multiplication", e.multiply(named1(t, "E8M10"), named1(t, "E8M10")), 1.1, ruleMultiply},
-		{"int16 multiplication", e.multiply(named1(t, "int16"), named1(t, "int16")), 0.2 + (3.1-0.2)*(256-64)/(1024-64), ruleMultiply},
-		{"int4 multiplication", e.multiply(named1(t, "int4"), named1(t, "int4")), 0.2 * 16 / 64, ruleMultiply},
-		{"int8 x fp16", e.multiply(named1(t, "int8"), fp16), 1.1 * 88 / 121, ruleMultiply},
+		{"1-8-10 multiplication", e.multiply(formatOf(t, "E8M10"), formatOf(t, "E8M10")), 1.1, ruleMultiply},
+		{"int16 multiplication", e.multiply(formatOf(t, "int16"), formatOf(t, "int16")), 0.2 + (3.1-0.2)*(256-64)/(1024-64), ruleMultiply},
+		{"int4 multiplication", e.multiply(formatOf(t, "int4"), formatOf(t, "int4")), 0.2 * 16 / 64, ruleMultiply},
+		{"int8 x fp16", e.multiply(formatOf(t, "int8"), fp16), 1.1 * 88 / 121, ruleMultiply},
 		{"logarithmic multiplication", e.multiply(logarithm, logarithm), 0.03, ruleLog},
 		{"bf16 addition", e.add(bf16), 0.4 * 8 / 11, ruleAdd},
 		{"18-bit significand addition", e.add(Plain("E8M16", 8, 16)), 0.4 + (0.9-0.4)*(17-11)/(24-11), ruleAdd},
-		{"int24 addition", e.add(named1(t, "int24")), 0.05 + (0.1-0.05)*8/16, ruleAdd},
+		{"int24 addition", e.add(formatOf(t, "int24")), 0.05 + (0.1-0.05)*8/16, ruleAdd},
 		{"exact accumulator", e.addition(wideFormat(fp16, fp16, 1000)), 0.1 * 91 / 32, ruleExact},
 	} {
 		if !near(c.got.pj, c.want) || c.got.extrapolated != c.rule {
@@ -91,7 +91,7 @@ func TestOneFamily(t *testing.T) {
 // TestScaleCharge: a product of two blocks adds its two scales once.
 func TestScaleCharge(t *testing.T) {
 	n := twoLayers()
-	mx := named1(t, "mxfp8")
+	mx := formatOf(t, "mxfp8")
 	plain := Uniform(&n, &Momentum, "plain", Plain("E4M3", 4, 3))
 	blocks := Uniform(&n, &Momentum, "blocks", mx)
 	r := estimate(t, n, DefaultMachine, plain, blocks)

@@ -111,9 +111,9 @@ func (f Format) same(g Format) bool {
 	return f == g
 }
 
-// range_ is the number of exponent bits that a decoded value needs: a block's
+// reach is the number of exponent bits that a decoded value needs: a block's
 // scale widens its elements' range.
-func (f Format) range_() int {
+func (f Format) reach() int {
 	if f.Family == Float && f.Block > 0 {
 		return max(f.Exponent, f.ScaleBits)
 	}
@@ -130,7 +130,7 @@ func (f Format) heldBy(g Format) bool {
 	case g.Block > 0, f.Family == Logarithmic, g.Family == Logarithmic:
 		return false
 	case f.Family == Float && g.Family == Float:
-		return f.range_() <= g.Exponent && f.Fraction <= g.Fraction
+		return f.reach() <= g.Exponent && f.Fraction <= g.Fraction
 	case f.Family == Integer && g.Family == Integer:
 		return f.Bits <= g.Bits
 	case f.Family == Integer && g.Family == Float:

@@ -24,7 +24,7 @@ func TestBlockWidth(t *testing.T) {
 		"binary64":   big.NewRat(64, 1),
 		"int12":      big.NewRat(12, 1),
 	} {
-		f := named1(t, name)
+		f := formatOf(t, name)
 		if f.Width().Cmp(want) != 0 {
 			t.Errorf("%s takes %v bits a value, want %v", name, f.Width(), want)
 		}
@@ -40,7 +40,7 @@ func TestBlockWidth(t *testing.T) {
 
 // TestSize counts the scales that a tensor really needs.
 func TestSize(t *testing.T) {
-	mx := named1(t, "mxfp8")
+	mx := formatOf(t, "mxfp8")
 	tensorScale := Fixed("int8 scaled", 8)
 	tensorScale.TensorBits = 32
 	for _, c := range []struct {
@@ -81,7 +81,7 @@ func TestFormatNamed(t *testing.T) {
 			t.Errorf("%q is taken for %+v", name, f)
 		}
 	}
-	if !named1(t, "E5M10").same(named1(t, "fp16")) || named1(t, "bf16").same(named1(t, "fp16")) {
+	if !formatOf(t, "E5M10").same(formatOf(t, "fp16")) || formatOf(t, "bf16").same(formatOf(t, "fp16")) {
 		t.Error("formats are alike by name, not by build")
 	}
 }
@@ -110,7 +110,7 @@ func TestHeldBy(t *testing.T) {
 		{"int25", "fp32", true},
 		{"fp16", "int32", false},
 	} {
-		if got := named1(t, c.f).heldBy(named1(t, c.g)); got != c.want {
+		if got := formatOf(t, c.f).heldBy(formatOf(t, c.g)); got != c.want {
 			t.Errorf("%s held by %s: %v", c.f, c.g, got)
 		}
 	}

@@ -65,7 +65,7 @@ func TestRate(t *testing.T) {
 		{&wish, "bf16", "bf16", "fp32", 156e12, true},
 		{&wish, "fp16", "bf16", "fp32", 78e12 * 19 / 16, false},
 	} {
-		got := c.machine.rate(named1(t, c.a), named1(t, c.b), named1(t, c.sum))
+		got := c.machine.rate(formatOf(t, c.a), formatOf(t, c.b), formatOf(t, c.sum))
 		if !near(got.rate, c.want) || (got.extrapolated == "") != c.exact {
 			t.Errorf("%s x %s into %s: %g (%q), want %g, exact %v", c.a, c.b, c.sum, got.rate, got.extrapolated, c.want, c.exact)
 		}

@@ -46,7 +46,7 @@ func convolutions() Network {
 	}}
 }
 
-func named1(t testing.TB, name string) Format {
+func formatOf(t testing.TB, name string) Format {
 	t.Helper()
 	f, ok := FormatNamed(name)
 	if !ok {
@@ -57,7 +57,7 @@ func named1(t testing.TB, name string) Format {
 
 // uniform is Uniform for momentum, by the format's name.
 func uniform(t testing.TB, n *Network, format string) Arm {
-	return Uniform(n, &Momentum, format, named1(t, format))
+	return Uniform(n, &Momentum, format, formatOf(t, format))
 }
 
 // masterArm keeps momentum and master copy in FP32 and has FP32 sums.
@@ -83,14 +83,14 @@ func masterArm(t testing.TB, n *Network, format string) Arm {
 func stochasticArm(t testing.TB, n *Network) Arm {
 	arm := masterArm(t, n, "bf16")
 	arm.Name, arm.LossScaled = "stochastic", true
-	bf16 := named1(t, "bf16")
+	bf16 := formatOf(t, "bf16")
 	draw := func(f Format, bits int) Point { return Point{Format: f, RandomBits: bits} }
 	for i := range arm.Layers {
 		a := &arm.Layers[i]
 		if n.Layers[i].parameters() == 0 {
 			continue
 		}
-		e4m3 := draw(named1(t, "E4M3"), 3)
+		e4m3 := draw(formatOf(t, "E4M3"), 3)
 		product := draw(bf16, 5)
 		outer := draw(FP32, 7)
 		a.Activation.RandomBits, a.Weight.RandomBits, a.Master.RandomBits, a.Step.RandomBits = 8, 9, 10, 11

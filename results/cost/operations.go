@@ -245,5 +245,5 @@ func span(f Format) int {
 	if f.Family == Integer {
 		return f.Bits
 	}
-	return max(1<<min(f.range_(), 15)-2, 1) + f.Fraction
+	return max(1<<min(f.reach(), 15)-2, 1) + f.Fraction
 }

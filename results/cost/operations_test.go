@@ -98,7 +98,7 @@ func TestCharges(t *testing.T) {
 	plain, stochastic, compensated := uniform(t, &n, "bf16"), uniform(t, &n, "bf16"), uniform(t, &n, "bf16")
 	for _, i := range []int{0, 2} {
 		stochastic.Layers[i].Master.RandomBits = 16
-		compensated.Layers[i].Compensation = &Point{Format: named1(t, "bf16")}
+		compensated.Layers[i].Compensation = &Point{Format: formatOf(t, "bf16")}
 	}
 	m := slow(1e12)
 	m.RandomBits = 1e9
@@ -140,7 +140,7 @@ func TestCharges(t *testing.T) {
 func TestConvertedWeights(t *testing.T) {
 	n := twoLayers()
 	arm := masterArm(t, &n, "bf16")
-	e4m3 := Point{Format: named1(t, "e4m3")}
+	e4m3 := Point{Format: formatOf(t, "e4m3")}
 	arm.Layers[2].InputGradient.First = &e4m3
 	r := estimate(t, n, DefaultMachine, arm, masterArm(t, &n, "bf16"))
 	f, plain := &r.Arms[0].Once.Step.Layers[2].Phases[1], &r.Arms[1].Once.Step.Layers[2].Phases[1]
@@ -170,7 +170,7 @@ func TestFirstLayers(t *testing.T) {
 
 // TestShorterBlock: the scales of a product change where either operand's do.
 func TestShorterBlock(t *testing.T) {
-	mx, long := named1(t, "mxfp8"), Fixed("", 8).WithBlocks("rows", 100, 32)
+	mx, long := formatOf(t, "mxfp8"), Fixed("", 8).WithBlocks("rows", 100, 32)
 	for _, c := range []struct {
 		a, b       Format
 		axis, want uint64
@@ -193,12 +193,12 @@ func TestShorterBlock(t *testing.T) {
 // 2^-48 to 65504^2 < 2^32, so 80 places; with the carries of 1024 terms and a
 // sign the model's width may exceed that by a few, never fall below.
 func TestExactAccumulator(t *testing.T) {
-	fp16 := named1(t, "fp16")
+	fp16 := formatOf(t, "fp16")
 	const need = 80 + 10 + 1
 	if got := wideFormat(fp16, fp16, 1024).Bits; got < need || got > need+4 {
 		t.Errorf("the exact accumulator of binary16 products has %d bits, needs %d", got, need)
 	}
-	if got := wideFormat(named1(t, "int8"), named1(t, "int8"), 1<<16).Bits; got < 32 || got > 36 {
+	if got := wideFormat(formatOf(t, "int8"), formatOf(t, "int8"), 1<<16).Bits; got < 32 || got > 36 {
 		t.Errorf("the exact accumulator of 65536 8-bit products has %d bits", got)
 	}
 }
@@ -223,7 +223,7 @@ func TestStrideGaps(t *testing.T) {
 func TestGradientFormats(t *testing.T) {
 	n := convolutions()
 	arm := uniform(t, &n, "fp32")
-	e4m3, bf16 := Point{Format: named1(t, "e4m3")}, Point{Format: named1(t, "bf16"), RandomBits: 4}
+	e4m3, bf16 := Point{Format: formatOf(t, "e4m3")}, Point{Format: formatOf(t, "bf16"), RandomBits: 4}
 	arm.Loss = e4m3
 	arm.Layers[6].InputGradient.Result = e4m3
 	arm.Layers[4].InputGradient = Backward{Sums: arm.Layers[4].InputGradient.Sums}

@@ -39,7 +39,7 @@ func exhaustive(t tile) uint64 {
 
 // TestTileIsBest holds the search against trying every block.
 func TestTileIsBest(t *testing.T) {
-	fp16, e4m3 := named1(t, "fp16"), named1(t, "e4m3")
+	fp16, e4m3 := formatOf(t, "fp16"), formatOf(t, "e4m3")
 	for _, shape := range [][3]uint64{{1, 1, 1}, {1, 40, 30}, {40, 1, 30}, {40, 30, 1}, {17, 23, 29}, {32, 8, 64}, {7, 60, 5}, {3, 4, 70}} {
 		for _, f := range [][3]Format{{FP32, FP32, FP32}, {fp16, e4m3, FP32}, {e4m3, FP32, fp16}} {
 			for cache := uint64(96); cache < 1<<18; cache = cache*5/3 + 1 {

@@ -77,7 +77,7 @@ func TestMixedStates(t *testing.T) {
 	n := twoLayers()
 	arm := Uniform(&n, &Adam, "mixed", FP32)
 	for _, i := range []int{0, 2} {
-		arm.Layers[i].States[1] = Point{Format: named1(t, "bf16"), RandomBits: 8}
+		arm.Layers[i].States[1] = Point{Format: formatOf(t, "bf16"), RandomBits: 8}
 	}
 	m, _ := FindMachine(DefaultMachine)
 	r, err := Estimate(&Input{Network: n, Optimizer: Adam, Batch: 32, Machine: m, Energy: DefaultEnergy(), Arms: []Arm{arm}})

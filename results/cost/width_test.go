@@ -15,11 +15,11 @@ func TestHalvedWidth(t *testing.T) {
 	for _, name := range MachineNames() {
 		m, _ := FindMachine(name)
 		for _, c := range []struct{ wide, narrow Format }{
-			{FP32, named1(t, "fp16")},
-			{FP32, named1(t, "bf16")},
-			{named1(t, "fp64"), FP32},
-			{named1(t, "bf16"), named1(t, "e4m3")},
-			{named1(t, "int16"), named1(t, "int8")},
+			{FP32, formatOf(t, "fp16")},
+			{FP32, formatOf(t, "bf16")},
+			{formatOf(t, "fp64"), FP32},
+			{formatOf(t, "bf16"), formatOf(t, "e4m3")},
+			{formatOf(t, "int16"), formatOf(t, "int8")},
 			{Plain("", 8, 7).WithBlocks("w", 16, 8), Plain("", 4, 3).WithBlocks("n", 32, 8)}, // 16.5 and 8.25
 			{odd, half},
 		} {
