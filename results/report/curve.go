@@ -6,8 +6,18 @@ import (
 	"ulpine/results"
 )
 
-// curveBins is the number of points of a drawn training curve.
-const curveBins = 100
+// A drawn training curve has four points an epoch, and within these bounds: the
+// losses of single steps scatter too much to be read as a line.
+const (
+	binsAnEpoch = 4
+	leastBins   = 24
+	mostBins    = 100
+)
+
+// bins is the number of points of a training curve.
+func (c clock) bins() int {
+	return min(max(leastBins, min(mostBins, binsAnEpoch*c.epochs)), c.steps)
+}
 
 // curve is one figure of an arm over training time: the median over replicates
 // and the band between the quartiles, and each replicate by itself. X is in
@@ -70,7 +80,7 @@ func (c clock) training(runs []*results.Run) curve {
 	if c.steps == 0 {
 		return c.byEpoch(runs, func(e *results.Epoch) float64 { return e.TrainLoss })
 	}
-	n := min(curveBins, c.steps)
+	n := c.bins()
 	var out curve
 	for b := range n {
 		// A bin stands at the middle of its steps.

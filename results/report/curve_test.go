@@ -10,7 +10,7 @@ import (
 func TestTrainingCurve(t *testing.T) {
 	var runs []*results.Run
 	for k := range 3 {
-		r := &results.Run{Replicate: uint64(k), Epochs: make([]results.Epoch, 2)}
+		r := &results.Run{Replicate: uint64(k), Epochs: make([]results.Epoch, 25)}
 		for i := range 400 {
 			r.Steps = append(r.Steps, float64(k+1)*float64(i))
 		}
@@ -18,17 +18,17 @@ func TestTrainingCurve(t *testing.T) {
 	}
 	// The last one diverges in step 120, which the loss shows; it holds no more.
 	runs[2].Steps = append(runs[2].Steps[:120], math.NaN())
-	runs[2].Diverged, runs[2].Epochs = "NaN in the loss", runs[2].Epochs[:1]
+	runs[2].Diverged, runs[2].Epochs = "NaN in the loss", runs[2].Epochs[:8]
 	k := newClock(runs)
-	if k.per != 200 || k.steps != 400 {
+	if k.per != 16 || k.steps != 400 {
 		t.Fatalf("%+v", k)
 	}
 	c := k.training(runs)
-	if len(c.X) != curveBins || c.N != 3 || c.Diverged != 1 {
+	if len(c.X) != mostBins || c.N != 3 || c.Diverged != 1 {
 		t.Fatalf("%d points, %d runs, %d diverged", len(c.X), c.N, c.Diverged)
 	}
 	// Bin 10 holds steps 40..43, mean 41.5; it stands at step 42.
-	if c.X[10] != 42.0/200 || c.Mid[10] != 83 || c.Low[10] != 41.5 || c.High[10] != 3*41.5 {
+	if c.X[10] != 42.0/16 || c.Mid[10] != 83 || c.Low[10] != 41.5 || c.High[10] != 3*41.5 {
 		t.Errorf("bin 10: x %v, %v %v %v", c.X[10], c.Low[10], c.Mid[10], c.High[10])
 	}
 	if got := c.Each[2][29]; got != 3*117.5 {
@@ -42,8 +42,8 @@ func TestTrainingCurve(t *testing.T) {
 }
 
 func TestCurveOfRunsBrokenOff(t *testing.T) {
-	full := &results.Run{Steps: make([]float64, 300), Epochs: make([]results.Epoch, 3)}
-	part := &results.Run{Steps: make([]float64, 150), Epochs: make([]results.Epoch, 1), State: results.BrokenOff}
+	full := &results.Run{Steps: make([]float64, 300), Epochs: make([]results.Epoch, 30)}
+	part := &results.Run{Steps: make([]float64, 150), Epochs: make([]results.Epoch, 10), State: results.BrokenOff}
 	for i := range full.Steps {
 		full.Steps[i] = 1
 	}
@@ -53,6 +53,14 @@ func TestCurveOfRunsBrokenOff(t *testing.T) {
 	c := newClock([]*results.Run{part, full}).training([]*results.Run{part, full})
 	if c.Mid[10] != 2 || c.Mid[99] != 1 {
 		t.Errorf("what is missing is not left out: %v, %v", c.Mid[10], c.Mid[99])
+	}
+}
+
+func TestBins(t *testing.T) {
+	for _, c := range []struct{ steps, epochs, want int }{{0, 10, 0}, {10, 1, 10}, {1000, 1, 24}, {1000, 10, 40}, {1000, 300, 100}} {
+		if got := (clock{steps: c.steps, epochs: c.epochs}).bins(); got != c.want {
+			t.Errorf("%+v: %d", c, got)
+		}
 	}
 }
 

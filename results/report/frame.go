@@ -17,7 +17,7 @@ type frame struct {
 func (f frame) epochAxis(g *draw.Group, words string) {
 	g.Line(f.x0, f.y1, f.x1, f.y1, draw.Line(draw.Ink, 1))
 	last := math.Inf(-1)
-	for _, t := range f.x.Ticks(max(2, int((f.x1-f.x0)/45))) {
+	for _, t := range f.x.Ticks(max(2, int((f.x1-f.x0)/34))) {
 		if t != math.Trunc(t) {
 			continue // no half epochs
 		}

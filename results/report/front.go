@@ -1,9 +1,11 @@
 package report
 
 import (
+	"cmp"
 	"fmt"
 	"math"
 	"slices"
+	"strconv"
 	"strings"
 
 	"ulpine/results"
@@ -21,7 +23,7 @@ func front(v *view, width float64) []*draw.Figure {
 	if width < 600 {
 		names = 128
 	}
-	height := math.Max(290, 15*float64(len(arms))+20)
+	height := math.Max(290, 15*float64(min(len(arms), namedArms+8))+20)
 	f := &draw.Figure{
 		Title: plain(v.Metric) + " against bits per value", Desc: v.describeFront(arms),
 		W: width, H: height + 58,
@@ -31,8 +33,9 @@ func front(v *view, width float64) []*draw.Figure {
 	p.grid(&f.Group, v.scoreTick)
 	bitAxis(&f.Group, p)
 	f.Group.Text((p.x0+p.x1)/2, p.y1+32, "mean bits of a stored value", draw.Type{Size: 10.5, Anchor: draw.Middle})
-	drawSteps(&f.Group, p, pareto(v, arms))
-	v.frontPoints(&f.Group, p, arms, width)
+	set := pareto(v, arms)
+	drawSteps(&f.Group, p, set)
+	v.frontPoints(&f.Group, p, arms, set, width)
 	return []*draw.Figure{f}
 }
 
@@ -85,6 +88,33 @@ func bitAxis(g *draw.Group, p frame) {
 	}
 }
 
+// frontBounds are the ends of the interval drawn at an arm: that of its paired
+// difference, laid around its mean. The interval of the mean by itself would
+// hold what all arms share, easy and hard replicates, and hide the differences.
+// The baseline, which has no difference, shows its own.
+func (v *view) frontBounds(a *armView) (low, high float64) {
+	c := a.Comparison
+	switch {
+	case a == v.baseline:
+		return a.Score.Low, a.Score.High
+	case c == nil:
+		return math.NaN(), math.NaN()
+	case v.words.metric.Higher:
+		return a.Score.Mean + (c.Low - c.Mean), a.Score.Mean + (c.High - c.Mean)
+	}
+	// Less is better: a gain lowers the score.
+	return a.Score.Mean - (c.High - c.Mean), a.Score.Mean - (c.Low - c.Mean)
+}
+
+// differenceLine spells an arm's difference to the baseline with interval and n.
+func (v *view) differenceLine(a *armView) string {
+	c := a.Comparison
+	if c == nil {
+		return missing
+	}
+	return fmt.Sprintf("%s%s %s, n = %d", v.words.diff(c.Mean), v.words.unit(), v.words.interval(c.Low, c.High), c.N)
+}
+
 // shortfall spreads shares of one by the logarithm of what is missing to one,
 // so that 99 and 98 % are as far apart as 80 and 60 %.
 type shortfall struct{ log draw.Log }
@@ -107,7 +137,8 @@ func (s shortfall) Ticks(n int) []float64 {
 func (v *view) scoreScale(arms []*armView, p frame) draw.Scale {
 	lo, hi := math.Inf(1), math.Inf(-1)
 	for _, a := range arms {
-		for _, x := range []float64{a.Score.Low, a.Score.Mean, a.Score.High} {
+		low, high := v.frontBounds(a)
+		for _, x := range []float64{low, a.Score.Mean, high} {
 			if !math.IsNaN(x) && !math.IsInf(x, 0) {
 				lo, hi = math.Min(lo, x), math.Max(hi, x)
 			}
@@ -140,41 +171,20 @@ func (v *view) scoreTick(t float64) string {
 // pareto are the arms that no other arm equals or beats in both bits and mean
 // score, by ascending bits. Arms that diverged are not in it.
 func pareto(v *view, arms []*armView) []*armView {
-	gain := func(a *armView) float64 {
-		if v.words.metric.Higher {
-			return a.Score.Mean
-		}
-		return -a.Score.Mean
-	}
 	byBits := slices.Clone(arms)
 	slices.SortStableFunc(byBits, func(a, b *armView) int {
-		switch {
-		case a.Bits != b.Bits:
-			return cmpFloat(a.Bits, b.Bits)
-		default:
-			return cmpFloat(gain(b), gain(a))
-		}
+		return cmp.Or(cmp.Compare(a.Bits, b.Bits), cmp.Compare(v.gain(b), v.gain(a)))
 	})
 	var out []*armView
 	best := math.Inf(-1)
 	for _, a := range byBits {
 		k, ok := a.kind()
-		if g := gain(a); g > best && (!ok || k != results.Diverged) {
+		if g := v.gain(a); g > best && (!ok || k != results.Diverged) {
 			best = g
 			out = append(out, a)
 		}
 	}
 	return out
-}
-
-func cmpFloat(a, b float64) int {
-	switch {
-	case a < b:
-		return -1
-	case a > b:
-		return 1
-	}
-	return 0
 }
 
 // drawSteps draws what is reached with at most so many bits.
@@ -195,47 +205,121 @@ func drawSteps(g *draw.Group, p frame, set []*armView) {
 	g.Titled("Pareto set: no arm needs fewer bits and scores better").Polyline(pts, draw.Line(draw.Ink, 1.5))
 }
 
+// namedArms is the number of arms up to which each has its name at the edge of
+// the front. With more, the leaders to the names would hide the marks: then only
+// the Pareto set is named there, and the others carry their numbers.
+const namedArms = 16
+
 // frontPoints draws the arms' marks, intervals and names.
-func (v *view) frontPoints(g *draw.Group, p frame, arms []*armView, width float64) {
-	want := make([]float64, len(arms))
+func (v *view) frontPoints(g *draw.Group, p frame, arms, set []*armView, width float64) {
+	shift := v.sideways(arms)
+	places := make([]draw.Point, len(arms))
+	var named []int
 	for i, a := range arms {
-		want[i] = p.y.At(a.Score.Mean)
+		places[i] = draw.Point{X: p.x.At(a.Bits) + shift[i], Y: p.y.At(a.Score.Mean)}
+		if len(arms) <= namedArms || slices.Contains(set, a) {
+			named = append(named, i)
+		}
 	}
-	at := draw.Spread(want, 14.5, p.y0+4, p.y1-4)
-	shift := sideways(arms)
+	groups := make([]*draw.Group, len(arms))
 	for i, a := range arms {
-		s := g.Sub("arm", draw.Attr{Name: "arm", Value: a.Slug})
-		x, y := p.x.At(a.Bits)+shift[i], want[i]
-		s.Polyline([]draw.Point{{X: x, Y: y}, {X: p.x1 + 2, Y: y}, {X: p.x1 + 12, Y: at[i]}, {X: p.x1 + 15, Y: at[i]}}, draw.Line(draw.Soft, 0.7).With(0.55))
-		t := s.Titled(a.Label() + ": " + v.scoreLine(a.Score) + ", " + bits(a.Bits) + " bits")
-		lo, hi := p.y.At(a.Score.Low), p.y.At(a.Score.High)
-		t.Line(x, lo, x, hi, draw.Line(draw.Arm, 2.4))
-		for _, e := range []float64{lo, hi} {
-			t.Line(x-3.5, e, x+3.5, e, draw.Line(draw.Arm, 1.4))
+		groups[i] = g.Sub("arm", draw.Attr{Name: "arm", Value: a.Slug})
+	}
+	// Leaders first, so that they pass under every mark.
+	want := make([]float64, len(named))
+	for k, i := range named {
+		want[k] = places[i].Y
+	}
+	for k, y := range draw.Spread(want, 14.5, p.y0+4, p.y1-4) {
+		a, at, s := arms[named[k]], places[named[k]], groups[named[k]]
+		s.Polyline([]draw.Point{at, {X: p.x1 + 2, Y: at.Y}, {X: p.x1 + 12, Y: y}, {X: p.x1 + 15, Y: y}}, draw.Line(draw.Soft, 0.7).With(0.55))
+		s.Text(p.x1+18, y+3.8, a.Label(), draw.Type{Size: 11, Bold: a.Number == 0, Max: width - p.x1 - 19})
+	}
+	for i, a := range arms {
+		v.frontPoint(groups[i], p, a, places[i])
+	}
+	if len(arms) > namedArms {
+		numberPoints(groups, p, arms, places)
+	}
+}
+
+// frontPoint draws one arm's interval and mark.
+func (v *view) frontPoint(g *draw.Group, p frame, a *armView, at draw.Point) {
+	t := g.Titled(a.Label() + ": " + v.scoreLine(a.Score) + "; difference " + v.differenceLine(a) + "; " + bits(a.Bits) + " bits")
+	low, high := v.frontBounds(a)
+	lo, hi, role := p.y.At(low), p.y.At(high), draw.Arm
+	if a == v.baseline {
+		role = draw.Base
+	}
+	t.Line(at.X, lo, at.X, hi, draw.Line(role, 2.4))
+	for _, e := range []float64{lo, hi} {
+		t.Line(at.X-3.5, e, at.X+3.5, e, draw.Line(role, 1.4))
+	}
+	if k, ok := a.kind(); ok {
+		drawMark(t, at.X, at.Y, 4.8, k)
+	} else { // the baseline has no verdict
+		t.Rect(at.X-4, at.Y-4, 8, 8, draw.Style{Fill: draw.Base, Line: draw.Ink, Width: 1.2})
+	}
+}
+
+// numberPoints writes the arms' numbers beside their marks, on the first side
+// that is free; where none is, the mark's title has to do.
+func numberPoints(groups []*draw.Group, p frame, arms []*armView, places []draw.Point) {
+	var taken []draw.Box
+	for _, q := range places {
+		taken = append(taken, draw.Box{X0: q.X - 5, Y0: q.Y - 5, X1: q.X + 5, Y1: q.Y + 5})
+	}
+	for i, a := range arms {
+		words := strconv.Itoa(a.Number)
+		if a.Number == 0 { // the baseline has no number
+			words = draw.Fit(a.Label(), 9.5, false, 60)
 		}
-		if k, ok := a.kind(); ok {
-			drawMark(t, x, y, 4.8, k)
-		} else {
-			t.Rect(x-4, y-4, 8, 8, draw.Style{Fill: draw.Base, Line: draw.Ink, Width: 1.2})
+		w := draw.Width(words, 9.5, false)
+		for _, side := range []draw.Point{{X: 7, Y: 3.4}, {X: -7 - w, Y: 3.4}, {X: -w / 2, Y: -8}, {X: -w / 2, Y: 15}} {
+			t := draw.Text{X: places[i].X + side.X, Y: places[i].Y + side.Y, S: words, Size: 9.5}
+			b := t.Box()
+			free := b.X0 > p.x0 && b.X1 < p.x1 && b.Y0 > 2
+			for k, o := range taken {
+				free = free && (k == i || b.Overlap(o) == 0)
+			}
+			if free {
+				groups[i].Text(t.X, t.Y, words, draw.Type{Size: t.Size, Role: draw.Soft})
+				taken = append(taken, b)
+				break
+			}
 		}
-		s.Text(p.x1+18, at[i]+3.8, a.Label(), draw.Type{Size: 11, Bold: a.Number == 0, Max: width - p.x1 - 19})
 	}
 }
 
 // sideways parts arms of (nearly) the same bits by a few pixels, so that their
-// intervals do not hide each other.
-func sideways(arms []*armView) []float64 {
+// intervals do not hide each other. The best of them stays where it belongs: it
+// is the one on which a step of the Pareto set may stand.
+func (v *view) sideways(arms []*armView) []float64 {
+	const step, most = 9.0, 27.0 // pixels
+	byScore := make([]int, len(arms))
+	for i := range byScore {
+		byScore[i] = i
+	}
+	slices.SortStableFunc(byScore, func(a, b int) int { return cmp.Compare(v.gain(arms[b]), v.gain(arms[a])) })
 	out := make([]float64, len(arms))
-	count := map[int]int{}
-	for i, a := range arms {
-		k := int(math.Round(a.Bits * 2))
+	count := map[int]int{} // by half bits
+	for _, i := range byScore {
+		k := int(math.Round(arms[i].Bits * 2))
 		n := count[k]
 		count[k]++
-		step := float64((n+1)/2) * 9
+		out[i] = step * float64((n+1)/2) // 0, -1, +1, -2, +2 ... steps
 		if n%2 == 1 {
-			step = -step
+			out[i] = -out[i]
 		}
-		out[i] = math.Max(-27, math.Min(27, step))
+		out[i] = math.Max(-most, math.Min(most, out[i]))
 	}
 	return out
+}
+
+// gain is an arm's mean score, more being better.
+func (v *view) gain(a *armView) float64 {
+	if v.words.metric.Higher {
+		return a.Score.Mean
+	}
+	return -a.Score.Mean
 }

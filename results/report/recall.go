@@ -211,8 +211,9 @@ func latticeScale(lo, x, cell float64) draw.Linear {
 
 func latticeColumn(g *draw.Group, lo, x, cell, top, bottom float64, class string) {
 	s := latticeScale(lo, x, cell)
-	for i, l := range draw.Wrap(class, 11, false, cell-8, 2) {
-		g.Text(x+cell/2-1, top-22+13*float64(i), l, draw.Type{Anchor: draw.Middle})
+	lines := draw.Wrap(class, 11, false, cell-8, 2)
+	for i, l := range lines {
+		g.Text(x+cell/2-1, top-9-13*float64(len(lines)-1-i), l, draw.Type{Anchor: draw.Middle})
 	}
 	for _, t := range []float64{lo, (lo + 1) / 2, 1} {
 		g.Line(s.At(t), top, s.At(t), bottom, draw.Line(draw.Faint, 0.9))

@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"math"
 	"strconv"
+	"strings"
 	"time"
 
 	"ulpine/results"
@@ -129,21 +130,33 @@ func warningSection(v *view) any {
 	return l
 }
 
-// cautionSection says what this result does not show: what always holds, then
-// what the study adds.
-func cautionSection(v *view) any {
-	l := list{}
+// standing are the cautions that every report carries, each with the words by
+// which a study's own caution about the same shows.
+func (v *view) standing() []fact {
 	sum := "The lengths of the sums in this study were not recorded: nothing can be said about longer ones."
 	if n := v.LongestSum; n > 0 {
 		sum = fmt.Sprintf("The longest sum tested here has %s. Nothing is claimed for sums beyond four times that, %d terms: rounding errors grow with the length of a sum.", plural(n, "term"), 4*n)
 	}
-	l.Items = append(l.Items,
-		"Small networks tolerate more rounding than large ones, and their sums are shorter. What holds here need not hold for a larger network.",
-		sum,
-		"The scores are those of this data and this training. Rare inputs, drift of the data and faults of the hardware are untested.",
-		"This report is no approval for a safety-related use. Such a use is a matter of the functional-safety standard that applies to it and of qualified engineers; look at the recall by class and at the worst replicate, not at means alone.",
-		"Undecided does not mean the same: it means that these pairs cannot tell.",
-	)
+	return []fact{
+		{"small networks", "Small networks tolerate more rounding than large ones, and their sums are shorter. What holds here need not hold for a larger network."},
+		{"longest sum", sum},
+		{"undecided", "Undecided does not mean the same: it means that these pairs cannot tell."},
+		{"rare inputs", "The scores are those of this data and this training. Rare inputs, drift of the data and faults of the hardware are untested."},
+		{"safety-related", "This report is no approval for a safety-related use. Such a use is a matter of the functional-safety standard that applies to it and of qualified engineers."},
+		{"worst replicate", "Means hide single failures: look at the recall by class and at the worst replicate of each, with its exact interval."},
+	}
+}
+
+// cautionSection says what this result does not show: the study's own cautions,
+// and every standing one that they do not speak of.
+func cautionSection(v *view) any {
+	l := list{}
+	said := strings.ToLower(strings.Join(v.Cautions, "\n"))
+	for _, c := range v.standing() {
+		if !strings.Contains(said, c.Head) {
+			l.Items = append(l.Items, c.Text)
+		}
+	}
 	for _, c := range v.Cautions {
 		l.Items = append(l.Items, plain(c))
 	}

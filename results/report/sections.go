@@ -39,7 +39,7 @@ func contrastSection(v *view) any {
 
 // pairTable lists every paired difference.
 func (v *view) pairTable(cs []results.Comparison) *tabular {
-	t := &tabular{Caption: "Paired differences, replicate by replicate" + commaUnit(v), Columns: columns("Pair", "#mean", "#interval", "#n", "differences, by replicate")}
+	t := &tabular{Caption: "Paired differences, replicate by replicate" + commaUnit(v), Columns: columns("Pair", "verdict", "#mean", "#interval", "#n", "differences, by replicate")}
 	for i := range cs {
 		c := &cs[i]
 		var each []string
@@ -50,7 +50,7 @@ func (v *view) pairTable(cs []results.Comparison) *tabular {
 			}
 			each = append(each, s)
 		}
-		t.Rows = append(t.Rows, []string{v.pairName(c), v.words.diff(c.Mean), v.words.interval(c.Low, c.High), strconv.Itoa(c.N), strings.Join(each, ", ")})
+		t.Rows = append(t.Rows, []string{v.pairName(c), verdictWords(c.Verdict), v.words.diff(c.Mean), v.words.interval(c.Low, c.High), strconv.Itoa(c.N), strings.Join(each, ", ")})
 	}
 	if len(t.Rows) == 0 {
 		return nil
@@ -74,7 +74,7 @@ func curveSection(v *view) any {
 		Arms             []armName
 		Table            *tabular
 	}{
-		Overview: figureHTML(v, "training-loss", "Median training loss over the replicates of each arm, the mean of the step losses in each hundredth of the training. "+
+		Overview: figureHTML(v, "training-loss", fmt.Sprintf("Median training loss over the replicates of each arm; the step losses are averaged over %d equal stretches of the training. ", max(1, v.clock.bins()))+
 			"A replicate that diverged counts as infinitely high from there on; a broken mark shows where a median ends for it.", true),
 		Panels: figureHTML(v, "loss-by-arm", "One plot an arm, the baseline in grey, all on the same axes (logarithmic). Lines: medians over replicates; bands: between the quartiles. "+
 			"A broken mark at the top: a replicate diverged there; a band that reaches the top: so did at least a quarter of them. Solid: training; dashed: test; dotted: validation, where they were evaluated. The figures at the ends are the last values.", true),
@@ -113,14 +113,17 @@ func lastOf(c *curve) string {
 }
 
 func frontSection(v *view) any {
-	caption := "Marks: mean " + plain(v.Metric) + " over replicates with its own " + percentage(v.Confidence) + " t interval (not the paired one, which is narrower and decides); arms of equal width stand side by side. " +
+	caption := "Marks: mean " + plain(v.Metric) + " over replicates. Interval: the " + percentage(v.Confidence) + " interval of the paired difference to the baseline, drawn around the arm's mean; grey, at the baseline, that of its own mean. Arms of equal width stand side by side. " +
 		"Steps: the Pareto set, the arms that no arm of fewer bits equals. Bits are those of stored values, weighted by tensor sizes; the bits of sums are not in them."
 	if v.words.percent {
 		caption += " The upright axis is logarithmic in what is missing to 100 %."
 	}
-	t := &tabular{Caption: "Scores in numbers", Columns: columns("Arm", "#bits a value", "#mean with interval")}
+	if len(v.scored()) > namedArms {
+		caption += " The arms are numbered as in the verdict table; the names are those of the Pareto set."
+	}
+	t := &tabular{Caption: "Scores in numbers", Columns: columns("Arm", "#bits a value", "#mean with its own interval", "#difference to the baseline with interval")}
 	for _, a := range v.arms {
-		t.Rows = append(t.Rows, []string{a.Label(), bits(a.Bits), v.scoreLine(a.Score)})
+		t.Rows = append(t.Rows, []string{a.Label(), bits(a.Bits), v.scoreLine(a.Score), v.differenceLine(a)})
 	}
 	return figureWith{
 		Figure: figureHTML(v, "score-against-bits", caption, false), Caption: t.Caption, Table: t,
@@ -137,7 +140,7 @@ func mapSection(v *view) any {
 		t = nil
 	}
 	f := figureWith{
-		Figure: figureHTML(v, "step-map", "The step runs from left to right. A column is as tall as the format is wide; dark columns differ from the baseline, lighter tops show layers that use wider formats, dots on top mean stochastic rounding. "+
+		Figure: figureHTML(v, "step-map", "The step runs from left to right. A column is as tall as the format is wide; dark columns differ from the baseline, outlined ones take over what another point has rounded, lighter tops show layers that use wider formats, dots on top mean stochastic rounding. "+
 			"A ring marks a point found to cause the arm's loss.", false),
 		Without: "No settings were recorded.", Table: t,
 	}

@@ -97,6 +97,23 @@ func TestPareto(t *testing.T) {
 	}
 }
 
+func TestFrontBounds(t *testing.T) {
+	v := newView(invented())
+	for _, a := range v.others() {
+		low, high := v.frontBounds(a)
+		c := a.Comparison
+		near(t, a.Slug+" low", low-a.Score.Mean, c.Low-c.Mean, 1e-12)
+		near(t, a.Slug+" high", high-a.Score.Mean, c.High-c.Mean, 1e-12)
+	}
+	v.words = newScoreWords("test loss", 0.01) // a gain of 1 is a loss lower by 1
+	a := v.arms[1]
+	a.Comparison = &results.Comparison{Mean: 0.1, Low: 0.05, High: 0.3}
+	a.Score.Mean = 2
+	if low, high := v.frontBounds(a); math.Abs(low-1.8) > 1e-12 || math.Abs(high-2.05) > 1e-12 {
+		t.Errorf("with a loss: %v to %v", low, high)
+	}
+}
+
 func TestShortfall(t *testing.T) {
 	v := newView(invented())
 	s := v.scoreScale(v.scored(), frame{y0: 10, y1: 300})

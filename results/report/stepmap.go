@@ -62,6 +62,7 @@ func stationOf(point string) station {
 // stop is what an arm does at a station, over all layers.
 type stop struct {
 	there      bool
+	idle       bool // every layer reuses what another point has rounded
 	changed    bool // differs from the baseline in at least one layer
 	least      int  // fewest bits over the layers
 	most       int
@@ -90,6 +91,7 @@ func (v *view) stops(a *armView, at []station) []stop {
 		if !o.there || s.Bits < o.least {
 			o.least = s.Bits
 		}
+		o.idle = s.Rounding == reused && (o.idle || !o.there)
 		o.there, o.most = true, max(o.most, s.Bits)
 		b, known := base[place{s.Layer, s.Point}]
 		if known && differs(s, b) || !known && v.baseline != nil && a != v.baseline {
@@ -108,8 +110,12 @@ func (v *view) stops(a *armView, at []station) []stop {
 	return out
 }
 
-// differs compares what changes a rounded value.
+// differs compares what changes a rounded value. Where both reuse another
+// point's values, any difference is that point's.
 func differs(a, b results.Setting) bool {
+	if a.Rounding == reused && b.Rounding == reused {
+		return false
+	}
 	return a.Format != b.Format || a.Rounding != b.Rounding || a.Order != b.Order || a.Overflow != b.Overflow
 }
 
@@ -291,6 +297,10 @@ func (m *mapLayout) column(g *draw.Group, x, foot, tall float64, s stop, at stat
 	paint := draw.Fill(draw.Faint)
 	if s.changed {
 		paint = draw.Fill(draw.Arm)
+	}
+	if s.idle && !s.changed {
+		t.Rect(x-w/2+0.6, foot-height(s.most), w-1.2, height(s.most), draw.Line(draw.Faint, 1.2))
+		return
 	}
 	t.Rect(x-w/2, foot-height(s.least), w, height(s.least), paint)
 	if s.most > s.least {

@@ -95,6 +95,10 @@ func (s strip) Split() string {
 	return strings.Join(parts, "+")
 }
 
+// reused is the rounding of a point that takes over what another point has
+// rounded: nothing happens there.
+const reused = "reused"
+
 // perGroup is how many strips a group shows before it counts the rest in words.
 const perGroup = 2
 
@@ -107,6 +111,9 @@ func strips(settings []results.Setting) []strip {
 	}
 	found := map[string][]use{}
 	for _, set := range settings {
+		if set.Rounding == reused {
+			continue
+		}
 		g, s := groupOf(set.Point), newStrip(set)
 		i := slices.IndexFunc(found[g], func(u use) bool { return u.s == s })
 		if i < 0 {

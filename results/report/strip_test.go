@@ -31,6 +31,9 @@ func TestStrips(t *testing.T) {
 			t.Errorf("strip %d is %+v, want %+v", i, got[i], want[i])
 		}
 	}
+	if got = strips([]results.Setting{set("forward.weight", "a", 4, 3, 8, "", ""), set("input_gradient.weight", "a", 4, 3, 8, "reused", "")}); len(got) != 1 || got[0].How != "" {
+		t.Errorf("a reused value has a strip of its own: %+v", got)
+	}
 	one := strips([]results.Setting{set("input", "fp32", 8, 23, 32, "nearest-even", ""), set("update.step", "fp32", 8, 23, 32, "nearest-even", "")})
 	if len(one) != 1 || one[0].Where != "everything" {
 		t.Errorf("%+v", one)
@@ -95,6 +98,12 @@ func TestStops(t *testing.T) {
 	if s := find(3, "forward", "sum"); !s.changed || s.least != 32 {
 		t.Errorf("the order of a sum is a change: %+v", s)
 	}
+	v.arms[2].Settings = []results.Setting{{Layer: 0, Point: "input_gradient.weight", Format: "bfloat16", Bits: 16, Rounding: "reused"}}
+	v.baseline.Settings = []results.Setting{{Layer: 0, Point: "input_gradient.weight", Format: "binary32", Bits: 32, Rounding: "reused"}}
+	if s := find(2, "input gradient", "weight"); s.changed || !s.idle {
+		t.Errorf("a point that reuses another's values: %+v", s)
+	}
+	v.baseline = newView(invented()).baseline
 	if s := find(4, "forward", "weight"); s.least != 16 || s.most != 32 {
 		t.Errorf("layers that differ: %+v", s)
 	}

@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"html/template"
 	"math"
+	"slices"
 	"strconv"
 	"strings"
 	"time"
@@ -56,6 +57,9 @@ func (v *view) marginWords() string {
 	m := v.words.scale(v.Margin)
 	s := fixed(m, marginDigits(m))
 	if u := v.words.unitWords(); u != "" {
+		if m == 1 {
+			u = strings.TrimSuffix(u, "s")
+		}
 		s += " " + u
 	}
 	if v.words.metric.Higher {
@@ -116,7 +120,7 @@ func verdictSection(v *view) any {
 		Rows        []verdictRow
 		Key         []keyed
 		Checks      *tabular
-	}{Level: percentage(v.Confidence), Checks: v.checks(v.Comparisons)}
+	}{Level: percentage(v.Confidence), Checks: v.checks(slices.Concat(v.Comparisons, v.Contrasts))}
 	if v.words.percent {
 		data.Unit = ", pp"
 	}

@@ -207,11 +207,11 @@ func pixels(t *testing.T, f *Figure, scale float64) func(x, y float64) [3]int {
 	if err != nil {
 		t.Fatal(err)
 	}
-	if w := im.Bounds().Dx(); math.Abs(float64(w)-f.W*scale) > 1 {
+	if w := im.Bounds().Dx(); math.Abs(float64(w)-(f.W+2*FilePad)*scale) > 1 {
 		t.Fatalf("%d dots wide, want %v", w, f.W*scale)
 	}
 	return func(x, y float64) [3]int {
-		r, g, b, _ := im.At(int(x*scale), int(y*scale)).RGBA()
+		r, g, b, _ := im.At(int((x+FilePad)*scale), int((y+FilePad)*scale)).RGBA()
 		return [3]int{int(r >> 8), int(g >> 8), int(b >> 8)}
 	}
 }

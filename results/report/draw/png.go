@@ -15,10 +15,11 @@ func (f *Figure) WritePNG(w io.Writer, scale float64) error {
 	ground, _ := Light.Colour(Paper)
 	// One pixel of the figure is one vg point, and 72 points are an inch.
 	c := vgimg.NewWith(
-		vgimg.UseWH(vg.Length(f.W), vg.Length(f.H)),
+		vgimg.UseWH(vg.Length(f.W+2*FilePad), vg.Length(f.H+2*FilePad)),
 		vgimg.UseDPI(int(math.Round(72*scale))),
 		vgimg.UseBackgroundColor(ground),
 	)
+	c.Translate(vg.Point{X: FilePad, Y: FilePad})
 	r := raster{c, f.H}
 	r.marks(f.Marks)
 	return png.Encode(w, c.Image())

@@ -14,13 +14,17 @@ import (
 // them on nearly every machine.
 const Families = `'Helvetica Neue', Helvetica, Arial, 'Liberation Sans', sans-serif`
 
+// FilePad is the margin around a figure in a file of its own, pixels.
+const FilePad = 10.0
+
 // WriteFile writes the figure as an SVG file of its own, in the light theme,
 // with a ground.
 func (f *Figure) WriteFile(w io.Writer) error {
 	e := &svgWriter{w: bufio.NewWriter(w), theme: &Light}
 	e.put(`<?xml version="1.0" encoding="UTF-8"?>` + "\n")
-	e.open(f, f.ID, fmt.Sprintf(` width="%s" height="%s" font-family="%s"`, num(f.W), num(f.H), Families))
-	e.put(`<rect width="100%" height="100%" fill="` + Light[Paper] + `"/>`)
+	w2, h2 := num(f.W+2*FilePad), num(f.H+2*FilePad)
+	e.open(f, f.ID, FilePad, fmt.Sprintf(` width="%s" height="%s" font-family="%s"`, w2, h2, Families))
+	e.put(fmt.Sprintf(`<rect x="%[1]s" y="%[1]s" width="%[2]s" height="%[3]s" fill="%[4]s"/>`, num(-FilePad), w2, h2, Light[Paper]))
 	e.marks(f.Marks)
 	e.put("</svg>\n")
 	return e.w.Flush()
@@ -30,7 +34,7 @@ func (f *Figure) WriteFile(w io.Writer) error {
 // of Classes; id is unique in the page.
 func (f *Figure) WriteInline(w io.Writer, id string) error {
 	e := &svgWriter{w: bufio.NewWriter(w)}
-	e.open(f, id, "")
+	e.open(f, id, 0, "")
 	e.marks(f.Marks)
 	e.put("</svg>")
 	return e.w.Flush()
@@ -55,9 +59,10 @@ type svgWriter struct {
 // put writes; bufio keeps the first error for Flush.
 func (e *svgWriter) put(s string) { _, _ = e.w.WriteString(s) }
 
-func (e *svgWriter) open(f *Figure, id, more string) {
-	e.put(fmt.Sprintf(`<svg xmlns="http://www.w3.org/2000/svg" id="%[1]s" viewBox="0 0 %[2]s %[3]s" role="img" aria-labelledby="%[1]s-t %[1]s-d"%[4]s`,
-		esc(id), num(f.W), num(f.H), more))
+// open starts the element, with a margin of pad pixels around the figure.
+func (e *svgWriter) open(f *Figure, id string, pad float64, more string) {
+	e.put(fmt.Sprintf(`<svg xmlns="http://www.w3.org/2000/svg" id="%[1]s" viewBox="%[2]s %[2]s %[3]s %[4]s" role="img" aria-labelledby="%[1]s-t %[1]s-d"%[5]s`,
+		esc(id), num(-pad), num(f.W+2*pad), num(f.H+2*pad), more))
 	e.data(f.Data)
 	e.put(fmt.Sprintf(`><title id="%[1]s-t">%[2]s</title><desc id="%[1]s-d">%[3]s</desc>`, esc(id), esc(f.Title), esc(f.Desc)))
 }
