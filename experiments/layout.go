@@ -10,9 +10,6 @@ import (
 	"ulpine/trainer"
 )
 
-// pretrainSlug is what the run of a pretraining is called in the arm's place.
-const pretrainSlug = "pretrain"
-
 // group is the arms of a plan that share their runs, because they have the same
 // arithmetic and training; usually one. The pretraining is a group without arms.
 type group struct {
@@ -79,7 +76,7 @@ func (l *layout) perReplicate() (runs int, macs uint64) {
 // slug is the name under which a group's runs are made: that of its first arm.
 func (l *layout) slug(g *group) string {
 	if g == l.pre {
-		return pretrainSlug
+		return plan.PretrainSlug
 	}
 	return l.Arms[g.arms[0]].Slug
 }
@@ -135,7 +132,7 @@ func (l *layout) planned(seed uint64, k keys) []store.Planned {
 		}
 	}
 	if l.pre != nil {
-		runs = append(runs, store.Planned{Arm: pretrainSlug, Replicate: seed, Key: k.pre, Place: len(l.Arms)})
+		runs = append(runs, store.Planned{Arm: plan.PretrainSlug, Replicate: seed, Key: k.pre, Place: len(l.Arms)})
 	}
 	return runs
 }

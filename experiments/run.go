@@ -229,7 +229,7 @@ func (x *runner) baseline() error {
 		runs = append(runs, results.Run{Arm: x.Baseline().Slug, Replicate: r.seed})
 		keys = append(keys, r.keys.groups[0])
 		if x.pre != nil {
-			runs = append(runs, results.Run{Arm: pretrainSlug, Replicate: r.seed})
+			runs = append(runs, results.Run{Arm: plan.PretrainSlug, Replicate: r.seed})
 			keys = append(keys, r.keys.pre)
 		}
 	}

@@ -108,7 +108,7 @@ func (r *reader) replicate(seed uint64, k keys) error {
 	if r.pre == nil {
 		return nil
 	}
-	return r.take(known[k.pre], pretrainSlug, seed)
+	return r.take(known[k.pre], plan.PretrainSlug, seed)
 }
 
 // take adds one run under the name that the plan gives it.
@@ -157,7 +157,7 @@ func comparisons(l *layout, study *results.Study) {
 // diverged; empty: in none.
 func baselineProblem(p *plan.Plan, runs []results.Run) string {
 	var problems []string
-	for _, arm := range []struct{ slug, name string }{{p.Baseline().Slug, "the baseline"}, {pretrainSlug, "the pretraining"}} {
+	for _, arm := range []struct{ slug, name string }{{p.Baseline().Slug, "the baseline"}, {plan.PretrainSlug, "the pretraining"}} {
 		var seeds []string
 		for _, r := range runs {
 			if r.Arm == arm.slug && r.Diverged != "" {
