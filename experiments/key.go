@@ -10,19 +10,15 @@ import (
 
 	"ulpine/experiments/plan"
 	"ulpine/results"
+	"ulpine/trainer"
 )
-
-// ArithmeticVersion stands in every key. It is raised whenever a bit of any
-// result may change: in arithmetic, initial weights, order of batches, data
-// generation, scores or counters.
-const ArithmeticVersion = 1
 
 // hashed is the SHA-256 of a kind and some texts. Each text goes in behind its
 // length in bytes as a decimal number and a colon, so that no two lists of texts
 // have the same bytes.
 func hashed(kind string, texts ...string) results.Hash {
 	h := sha256.New()
-	for _, text := range append([]string{"ulpine " + kind, strconv.Itoa(ArithmeticVersion)}, texts...) {
+	for _, text := range append([]string{"ulpine " + kind, strconv.Itoa(trainer.ArithmeticVersion)}, texts...) {
 		fmt.Fprintf(h, "%d:", len(text))
 		io.WriteString(h, text)
 	}
