@@ -20,8 +20,9 @@ type engine struct {
 	terms, width int
 	a            []float64 // terms of the row
 	b            []float64 // terms x width
-	padded       func(k, j int) bool
-	maxB         float64 // for exact sums: the extent of b
+	columns      padder    // tells padding; nil in sums without products
+	firstColumn  int       // number of the block's first column there
+	maxB         float64   // for exact sums: the extent of b
 	fineB        int
 	finiteB      bool
 	termWords    table
@@ -35,6 +36,9 @@ type engine struct {
 	level             []float64
 	place             [maxLevels]int
 }
+
+// padder is what an engine asks of the columns, which it holds packed.
+type padder interface{ Padded(k, j int) bool }
 
 // newEngine returns the engine of acc, nil where one of its points has no quick
 // rounding.
@@ -201,7 +205,7 @@ func (e *engine) later() int {
 
 // isPadded reports whether term k of column j of the block is padding.
 func (e *engine) isPadded(k, j int) bool {
-	return e.padded != nil && k < e.terms && e.padded(k, j)
+	return e.columns != nil && k < e.terms && e.columns.Padded(k, e.firstColumn+j)
 }
 
 // term writes R[product](a b[j]) of term k to t.

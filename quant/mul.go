@@ -2,12 +2,18 @@ package quant
 
 import "math"
 
-// mul forms the product by blocks of columns.
-func (m *Multiplier[T]) mul(p *Product[T], products, sums *Counts) {
+// mul forms the product m.work by blocks of columns.
+func (m *Multiplier[T]) mul(products, sums *Counts) {
+	p := &m.work
 	wide := blockWidth(p.K)
 	for j0 := 0; j0 < p.J; j0 += wide {
-		b := block[T]{Multiplier: m, p: p, j0: j0, width: min(wide, p.J-j0), products: products, sums: sums}
-		b.form()
+		m.block = block[T]{Multiplier: m, p: p, j0: j0, width: min(wide, p.J-j0), products: products, sums: sums}
+		m.block.form()
+	}
+	// Keep no hold on the caller's tensors.
+	m.work, m.block = Product[T]{}, block[T]{}
+	if m.engine != nil {
+		m.engine.columns = nil
 	}
 }
 
@@ -26,9 +32,8 @@ type block[T Element] struct {
 	p              *Product[T]
 	j0, width      int
 	products, sums *Counts
-	packed         bool // the columns are in slab
-	engineReady    bool // and in the engine, if it can take them
-	engineServes   bool
+	engineReady    bool // the columns were offered to the engine
+	engineServes   bool // and it could take them
 }
 
 // form forms all rows of the block.
@@ -118,11 +123,7 @@ func (b *block[T]) prepareEngine() bool {
 	if !narrowed(e.b, b.slab) {
 		return false
 	}
-	e.padded = nil
-	if _, dense := p.B.(Matrix[T]); !dense {
-		j0 := b.j0
-		e.padded = func(k, j int) bool { return p.B.Padded(k, j0+j) }
-	}
+	e.columns, e.firstColumn = p.B, b.j0
 	e.fillColumns(p.Terms.Column, p.Sums.Column, uint32(p.FirstJ)+uint32(b.j0))
 	b.engineServes = true
 	return true

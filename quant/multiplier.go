@@ -11,6 +11,8 @@ type Multiplier[T Element] struct {
 	sumEngine *engine    // engine for sums without products
 	slab      []T        // a block of columns
 	line      []T        // a row of terms
+	work      Product[T] // the product being formed
+	block     block[T]   // and its block of columns
 }
 
 // Check reports what makes the accumulation unusable.
@@ -78,7 +80,8 @@ func NewMultiplier[T Element](acc Accumulate) (*Multiplier[T], error) {
 // Mul forms the product. products and sums may be nil.
 func (m *Multiplier[T]) Mul(p Product[T], products, sums *Counts) {
 	p.check()
-	m.mul(&p, products, sums)
+	m.work = p
+	m.mul(products, sums)
 }
 
 // SumRows forms sums of terms without products: bias gradients, statistics.
