@@ -121,7 +121,7 @@ func TestRunListShowReport(t *testing.T) {
 	})
 	t.Run("show", func(t *testing.T) {
 		text := must(t, "show", "bf16-nearest/101")
-		for _, want := range []string{"digest", "step 1", "training loss", "█"} {
+		for _, want := range []string{"digest", "step 1", "training loss", "▀"} {
 			if !strings.Contains(text, want) {
 				t.Errorf("show lacks %q:\n%s", want, text)
 			}
