@@ -18,7 +18,7 @@ var dashes = [][]float64{nil, {7, 3}, {2, 3}, {9, 3, 2, 3}}
 // where training began say only "lost" and are cut off at the top edge.
 func lossRange(v *view) (lo, hi float64, ok bool) {
 	lo, hi = math.Inf(1), 0
-	start := 0.0
+	start := 0.0 // the highest median of the first stretch: where training began
 	for _, a := range v.arms {
 		for i, m := range a.Training.Mid {
 			if i == 0 && m > start && !math.IsInf(m, 0) {
@@ -35,14 +35,14 @@ func lossRange(v *view) (lo, hi float64, ok bool) {
 			}
 		}
 	}
-	if hi == 0 {
+	if hi == 0 { // no positive loss anywhere: a logarithmic axis has nothing to show
 		return 0, 0, false
 	}
 	if start > 0 {
 		hi = math.Min(hi, 3*start)
 	}
 	lo = math.Min(lo, hi)
-	if hi < lo*1.2 {
+	if hi < lo*1.2 { // a flat curve still needs an axis of some length
 		lo, hi = lo/1.1, hi*1.1
 	}
 	return lo / 1.06, hi * 1.06, true
@@ -56,6 +56,8 @@ type panelData struct {
 	Arms   []string   `json:"arms"`
 }
 
+// data describes the frame to the page's script. The baseline, when it is
+// there, comes first, the arm the plot is about last.
 func (f frame) data(lo, hi, epochs float64, arms ...*armView) panelData {
 	d := panelData{Box: [4]float64{f.x0, f.y0, f.x1, f.y1}, Epochs: [2]float64{0, epochs}, Loss: [2]float64{lo, hi}}
 	for _, a := range arms {
@@ -97,10 +99,11 @@ func overview(v *view, width float64) []*draw.Figure {
 	if len(shown) == 0 {
 		return nil
 	}
-	names := 190.0
+	names := 190.0 // pixels at the right edge for the lines' names
 	if width < 600 {
 		names = 118
 	}
+	// As high as the names need when every one stands alone.
 	height := math.Max(300, 15*float64(len(shown))+20)
 	f := &draw.Figure{Title: "Training loss of every arm, medians over replicates", W: width, H: height + 50}
 	p := frame{x0: 44, y0: 14, x1: width - names, y1: 14 + height}
@@ -140,23 +143,24 @@ func endLabels(g *draw.Group, p frame, arms []*armView, width float64) {
 		ends[i] = p.inside(a.Training.Mid[a.Training.last()])
 	}
 	at := draw.Spread(ends, 14.5, p.y0+4, p.y1-4)
-	lines := 0
+	lines := 0 // drawn so far, the baseline aside
 	for i, a := range arms {
 		role, dash, wide := draw.Base, []float64(nil), 3.2
 		if a.Number > 0 {
 			role, dash, wide = draw.SeriesRole(lines), dashes[lines/draw.SeriesCount%len(dashes)], 1.8
-			if lines >= draw.SeriesCount*len(dashes) {
+			if lines >= draw.SeriesCount*len(dashes) { // paints and dashes are used up: the names have to do
 				dash = []float64{1, 2}
 			}
 			lines++
 		}
 		s := g.Sub("arm", draw.Attr{Name: "arm", Value: a.Slug})
+		// The line, then a thin leader: level to the edge of the plot, then over to the name.
 		s.Polyline(p.line(a.Training.X, a.Training.Mid), draw.Line(role, wide).Dashed(dash...))
 		k := a.Training.last()
 		ex, ey := p.x.At(a.Training.X[k]), ends[i]
 		s.Polyline([]draw.Point{{X: ex, Y: ey}, {X: math.Max(ex, p.x1-2), Y: ey}, {X: p.x1 + 12, Y: at[i]}, {X: p.x1 + 16, Y: at[i]}},
 			draw.Line(role, 0.8).With(0.7))
-		if k < len(a.Training.Mid)-1 && a.Training.Diverged > 0 {
+		if k < len(a.Training.Mid)-1 && a.Training.Diverged > 0 { // more than half of the replicates are lost
 			drawMark(s, ex, ey, 4.5, results.Diverged)
 		}
 		if role == draw.Base {
@@ -178,7 +182,7 @@ func panels(v *view, width float64) []*draw.Figure {
 		return nil
 	}
 	arms := v.others()
-	if len(arms) == 0 && v.baseline != nil {
+	if len(arms) == 0 && v.baseline != nil { // a study of the baseline alone shows the baseline
 		arms = []*armView{v.baseline}
 	}
 	var out []*draw.Figure
@@ -188,15 +192,17 @@ func panels(v *view, width float64) []*draw.Figure {
 	return out
 }
 
+// panelFigure lays panels out in three columns, or in one where it is narrow.
+// All share one pair of axes, so that they can be compared by eye.
 func panelFigure(v *view, arms []*armView, width, lo, hi float64) *draw.Figure {
 	columns := 3
 	if width < 600 {
 		columns = 1
 	}
 	columns = min(columns, max(1, len(arms)))
-	const head, plot, foot = 34.0, 128.0, 44.0
+	const head, plot, foot = 34.0, 128.0, 44.0 // pixels: two lines of title, the plot, the time axis
 	cell := width / float64(columns)
-	if columns == 1 {
+	if columns == 1 { // one arm alone is not stretched over the page
 		cell = math.Min(width, 420)
 	}
 	rows := (len(arms) + columns - 1) / columns
@@ -221,7 +227,7 @@ func panelFigure(v *view, arms []*armView, width, lo, hi float64) *draw.Figure {
 
 // drawPanel draws one arm's plot in a cell that starts at x.
 func drawPanel(g *draw.Group, v *view, p frame, a *armView, x, cell float64) {
-	tx := x + 2
+	tx := x + 2 // where the title starts: after the mark, when there is one
 	if k, ok := a.kind(); ok {
 		drawMark(g, x+8, p.y0-21, 4.6, k)
 		tx = x + 20
@@ -235,6 +241,7 @@ func drawPanel(g *draw.Group, v *view, p frame, a *armView, x, cell float64) {
 	}
 	p.grid(g, draw.TickLabel)
 	p.epochAxis(g, "epoch")
+	// The baseline lies under the arm: where they coincide, the arm is seen.
 	var ends []lineEnd
 	if b := v.baseline; b != nil && b != a {
 		p.band(g, &b.Training, draw.Fill(draw.Base).With(0.28))
@@ -302,7 +309,7 @@ func writeEnds(g *draw.Group, p frame, ends []lineEnd) {
 		g.Polyline([]draw.Point{{X: e.x, Y: e.y}, {X: math.Max(e.x, p.x1), Y: e.y}, {X: p.x1 + 6, Y: y}}, draw.Line(e.role, 0.7).With(0.7))
 		role := e.role
 		if role == draw.Base {
-			role = draw.Soft
+			role = draw.Soft // grey enough to read
 		}
 		g.Text(p.x1+8, y+3.5, e.name, draw.Type{Size: 10, Role: role, Max: 92})
 	}

@@ -30,7 +30,7 @@ func tInterval(values []float64, confidence float64) estimate {
 	if e.N < 2 || !(confidence > 0 && confidence < 1) {
 		return e
 	}
-	ss := 0.0
+	ss := 0.0 // sum of squared deviations
 	for _, v := range x {
 		ss += (v - e.Mean) * (v - e.Mean)
 	}

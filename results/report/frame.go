@@ -16,7 +16,7 @@ type frame struct {
 // not empty.
 func (f frame) epochAxis(g *draw.Group, words string) {
 	g.Line(f.x0, f.y1, f.x1, f.y1, draw.Line(draw.Ink, 1))
-	last := math.Inf(-1)
+	last := math.Inf(-1) // right edge of the last label
 	for _, t := range f.x.Ticks(max(2, int((f.x1-f.x0)/34))) {
 		if t != math.Trunc(t) {
 			continue // no half epochs
@@ -34,7 +34,7 @@ func (f frame) epochAxis(g *draw.Group, words string) {
 
 // grid draws the horizontal grid with its labels, spelt by label, left of the frame.
 func (f frame) grid(g *draw.Group, label func(float64) string) {
-	last := math.Inf(1)
+	last := math.Inf(1) // the last label's height: labels closer than a line are left out
 	for _, t := range f.y.Ticks(max(2, int((f.y1-f.y0)/30))) {
 		y := f.y.At(t)
 		if y < f.y0-0.5 || y > f.y1+0.5 {

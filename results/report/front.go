@@ -19,7 +19,7 @@ func front(v *view, width float64) []*draw.Figure {
 	if len(arms) == 0 {
 		return nil
 	}
-	names := 214.0
+	names := 214.0 // pixels at the right edge for names
 	if width < 600 {
 		names = 128
 	}
@@ -50,6 +50,7 @@ func (v *view) scored() []*armView {
 	return out
 }
 
+// describeFront tells the front in words.
 func (v *view) describeFront(arms []*armView) string {
 	var b strings.Builder
 	for _, a := range arms {
@@ -70,6 +71,7 @@ func (v *view) scoreLine(e estimate) string {
 	return fmt.Sprintf("%s %s, n = %d", v.words.value(e.Mean), iv, e.N)
 }
 
+// bitScale leaves at least one bit of room on either side.
 func bitScale(arms []*armView, p frame) draw.Linear {
 	lo, hi := math.Inf(1), 0.0
 	for _, a := range arms {
@@ -79,6 +81,7 @@ func bitScale(arms []*armView, p frame) draw.Linear {
 	return draw.Linear{Lo: math.Max(0, lo-pad), Hi: hi + pad, P0: p.x0, P1: p.x1}
 }
 
+// bitAxis draws the axis of bits below the frame.
 func bitAxis(g *draw.Group, p frame) {
 	g.Line(p.x0, p.y1, p.x1, p.y1, draw.Line(draw.Ink, 1))
 	for _, t := range p.x.Ticks(max(2, int((p.x1-p.x0)/50))) {
@@ -145,22 +148,26 @@ func (v *view) scoreScale(arms []*armView, p frame) draw.Scale {
 		}
 	}
 	if v.words.percent {
+		// A perfect score lies at no finite place: five in ten thousand is the
+		// least shortfall shown.
 		least, most := math.Max(1-hi, 5e-4), math.Max(1-lo, 1e-3)
 		if most < least*1.15 {
 			least, most = least/1.08, most*1.08
 		}
 		return shortfall{draw.Log{Lo: least / 1.08, Hi: math.Min(1, most*1.08), P0: p.y0, P1: p.y1}}
 	}
-	if lo == hi {
+	if lo == hi { // one score, or equal ones
 		lo, hi = lo-math.Abs(lo)*0.1-1e-9, hi+math.Abs(hi)*0.1+1e-9
 	}
 	s := draw.Linear{Lo: lo - (hi-lo)*0.06, Hi: hi + (hi-lo)*0.06, P0: p.y1, P1: p.y0}
-	if !v.words.metric.Higher {
+	if !v.words.metric.Higher { // a loss: low is better, and better is up
 		s.P0, s.P1 = s.P1, s.P0
 	}
 	return s
 }
 
+// scoreTick spells a tick of the axis of scores; the rounding removes what
+// binary fractions leave behind.
 func (v *view) scoreTick(t float64) string {
 	if v.words.percent {
 		return draw.TickLabel(math.Round(1e6*t)/1e4) + " %"
@@ -194,7 +201,7 @@ func drawSteps(g *draw.Group, p frame, set []*armView) {
 		x, y := p.x.At(a.Bits), p.y.At(a.Score.Mean)
 		if i > 0 {
 			pts = append(pts, draw.Point{X: x, Y: pts[len(pts)-1].Y})
-		} else {
+		} else { // with fewer bits than any arm, nothing is reached: the steps rise from the axis
 			pts = append(pts, draw.Point{X: x, Y: p.y1})
 		}
 		pts = append(pts, draw.Point{X: x, Y: y})

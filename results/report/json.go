@@ -97,6 +97,7 @@ func filled(s []string) []string {
 	return s
 }
 
+// comparisonObjects are comparisons with all their numbers.
 func comparisonObjects(cs []results.Comparison) []object {
 	out := []object{}
 	for _, c := range cs {
@@ -131,6 +132,7 @@ func comparisonObjects(cs []results.Comparison) []object {
 	return out
 }
 
+// armObjects are arms with their settings, score, recall and median curve.
 func (v *view) armObjects() []object {
 	out := []object{}
 	for _, a := range v.arms {
@@ -150,6 +152,7 @@ func (v *view) armObjects() []object {
 	return out
 }
 
+// object is a mean with its interval and n.
 func (e estimate) object() object {
 	o := object{"n": e.N}
 	o.float("mean", e.Mean)
@@ -158,6 +161,7 @@ func (e estimate) object() object {
 	return o
 }
 
+// recallObjects are an arm's recalls by class.
 func (v *view) recallObjects(a *armView) []object {
 	out := []object{}
 	for _, r := range v.recalls(a) {
@@ -173,6 +177,8 @@ func (v *view) recallObjects(a *armView) []object {
 	return out
 }
 
+// runObjects are runs with epochs and counters; a matrix of the wrong size is
+// left out.
 func (v *view) runObjects() []object {
 	out := []object{}
 	for i := range v.Runs {
@@ -191,6 +197,7 @@ func (v *view) runObjects() []object {
 	return out
 }
 
+// epochObjects are what is known after each epoch, the first one first.
 func epochObjects(es []results.Epoch) []object {
 	out := []object{}
 	for _, e := range es {

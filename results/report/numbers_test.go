@@ -4,6 +4,7 @@ import (
 	"bytes"
 	"encoding/csv"
 	"encoding/json"
+	"fmt"
 	"math"
 	"os"
 	"path/filepath"
@@ -180,8 +181,12 @@ func checkFlags(t *testing.T, name string, o map[string]any) {
 func TestWrite(t *testing.T) {
 	dir := filepath.Join(t.TempDir(), "a", "report")
 	s := invented()
+	before := fmt.Sprintf("%+v", *s)
 	if err := Write(dir, s); err != nil {
 		t.Fatal(err)
+	}
+	if fmt.Sprintf("%+v", *s) != before {
+		t.Error("writing a report alters the study")
 	}
 	want := []string{PageName, "numbers/numbers.json"}
 	for _, n := range SheetNames() {

@@ -69,6 +69,8 @@ func HTML(w io.Writer, s *results.Study) error {
 	return newView(s).html(w)
 }
 
+// html renders the sections first and then the frame around them, into memory:
+// a page with an error in it is never written.
 func (v *view) html(w io.Writer) error {
 	style, err := v.style()
 	if err != nil {
@@ -164,6 +166,7 @@ func (n number) MarshalJSON() ([]byte, error) {
 	return []byte(strconv.FormatFloat(float64(n), 'g', 4, 64)), nil
 }
 
+// shortened are numbers for the page's script.
 func shortened(x []float64) []number {
 	out := make([]number, len(x))
 	for i, v := range x {
@@ -222,6 +225,7 @@ func figureHTML(v *view, id, caption string, curves bool) template.HTML {
 		attr = ` data-curves="` + id + `"`
 	}
 	fmt.Fprintf(&b, `<figure id="figure-%s"%s>`, id, attr)
+	// Style sheets show one of the two sets; ids differ by the set's name.
 	for _, set := range []struct {
 		class string
 		parts []*draw.Figure

@@ -41,6 +41,8 @@ func contrastRails(v *view, width float64) []*draw.Figure {
 	return rails(v, v.Contrasts, "Contrasts: arms against each other on one margin rail", width)
 }
 
+// rails spreads comparisons over as many rails as they need. All of them share
+// one scale, so that rows of different rails can be compared.
 func rails(v *view, cs []results.Comparison, title string, width float64) []*draw.Figure {
 	var out []*draw.Figure
 	scale := railDomain(v, cs)
@@ -58,6 +60,8 @@ func rails(v *view, cs []results.Comparison, title string, width float64) []*dra
 // largest margin on it.
 type domain struct{ lo, hi, margin float64 }
 
+// railDomain takes in everything that will be drawn, and enough on either side
+// of the margin that a rail of small differences still shows the post.
 func railDomain(v *view, cs []results.Comparison) domain {
 	var d domain
 	take := func(x float64) {
@@ -81,7 +85,7 @@ func railDomain(v *view, cs []results.Comparison) domain {
 	take(v.NoiseLow)
 	take(v.NoiseHigh)
 	d.lo, d.hi = math.Min(d.lo, -1.5*d.margin), math.Max(d.hi, d.margin)
-	if d.lo == d.hi {
+	if d.lo == d.hi { // no margin and no difference: any range around zero will do
 		d.lo, d.hi = -1, 1
 	}
 	pad := (d.hi - d.lo) * 0.04
@@ -109,13 +113,15 @@ func (d domain) scale(fold, p0, p1 float64) draw.Scale {
 	return draw.Linear{Lo: d.lo, Hi: d.hi, P0: p0, P1: p1}
 }
 
+// draw lays the rail out. Wide: names left, numbers right, the rail between.
+// Narrow: both above the rail, which takes the whole width.
 func (r *rail) draw(title string, d domain) *draw.Figure {
 	r.left, r.right, r.top, r.row = 226, r.width-176, 30, 38
 	if r.narrow {
 		r.left, r.right, r.row = 12, r.width-12, 62
 	}
 	r.folded = d.fold()
-	r.scale = d.scale(r.folded, r.left+9, r.right-9)
+	r.scale = d.scale(r.folded, r.left+9, r.right-9) // room for a mark at either end
 	bottom := r.top + r.row*float64(len(r.rows))
 	f := &draw.Figure{Title: title, W: r.width, H: bottom + 52}
 	f.Desc = r.describe()
@@ -146,7 +152,7 @@ func (r *rail) ground(g *draw.Group, bottom float64) {
 	}
 	ticks := r.scale.Ticks(int((r.right - r.left) / 60))
 	labels := draw.TickLabels(ticks)
-	last := math.Inf(-1)
+	last := math.Inf(-1) // right edge of the last label
 	for i, t := range ticks {
 		x := r.scale.At(t)
 		if x < r.left-1 || x > r.right+1 {
@@ -155,7 +161,7 @@ func (r *rail) ground(g *draw.Group, bottom float64) {
 		g.Line(x, r.top, x, bottom, draw.Line(draw.Faint, 0.8))
 		g.Line(x, bottom, x, bottom+4, draw.Line(draw.Ink, 1))
 		w := draw.Width(labels[i], 10.5, false)
-		if x-w/2 > last+5 {
+		if x-w/2 > last+5 { // where labels would touch, the tick stands without one
 			g.Text(x, bottom+16, labels[i], draw.Type{Size: 10.5, Anchor: draw.Middle, Role: draw.Soft})
 			last = x + w/2
 		}
@@ -165,7 +171,7 @@ func (r *rail) ground(g *draw.Group, bottom float64) {
 		g.Line(zero, r.top-6, zero, bottom, draw.Line(draw.Ink, 1.2))
 		g.Text(zero+4, r.top-10, "no difference", draw.Type{Size: 10.5, Role: draw.Soft})
 	}
-	if r.folded > 0 {
+	if r.folded > 0 { // where the scale turns logarithmic, a reader must see it
 		for _, x := range []float64{r.scale.At(-r.folded), r.scale.At(r.folded)} {
 			if x > r.left && x < r.right {
 				g.Line(x, r.top, x, bottom+8, draw.Line(draw.Soft, 1).Dashed(2, 3))
@@ -175,6 +181,7 @@ func (r *rail) ground(g *draw.Group, bottom float64) {
 	r.axisWords(g, bottom)
 }
 
+// axisWords says what the axis shows, with its unit and its good direction.
 func (r *rail) axisWords(g *draw.Group, bottom float64) {
 	unit := r.v.words.unitWords()
 	if unit != "" {
@@ -206,6 +213,8 @@ func (r *rail) comparison(g *draw.Group, y float64, i int, c *results.Comparison
 	r.names(g, y, at, c)
 	g.Line(r.left, at, r.right, at, draw.Line(draw.Faint, 1))
 	r.post(g, y, i, c)
+	// Replicates are short strokes below the bar rather than dots on it: strokes
+	// stay countable where they lie close.
 	for k, d := range c.Differences {
 		x := r.scale.At(r.v.words.scale(d))
 		if k < len(c.Replicates) {
@@ -215,6 +224,7 @@ func (r *rail) comparison(g *draw.Group, y float64, i int, c *results.Comparison
 	}
 	words := g.Titled(fmt.Sprintf("%s: %s, mean %s%s, interval %s, n = %d", r.v.pairName(c), verdictWords(c.Verdict),
 		r.v.words.diff(c.Mean), r.v.words.unit(), r.v.words.interval(c.Low, c.High), c.N))
+	// Without an interval the ends are NaN, and the kit leaves the bar out.
 	lo, hi := r.clamp(c.Low), r.clamp(c.High)
 	words.Line(lo, at, hi, at, draw.Line(draw.Arm, 5))
 	for _, x := range []float64{lo, hi} {
@@ -242,7 +252,7 @@ func (r *rail) post(g *draw.Group, y float64, i int, c *results.Comparison) {
 	if i == 0 {
 		top = r.top - 6
 		g.Text(x-4, r.top-10, "margin "+fixed(-m, marginDigits(m)), draw.Type{Size: 10.5, Anchor: draw.End, Role: draw.Post, Bold: true})
-	} else if r.rows[i-1].Margin != c.Margin {
+	} else if r.rows[i-1].Margin != c.Margin { // contrasts may have margins of their own
 		g.Text(x-6, y+r.row-5, fixed(-m, marginDigits(m)), draw.Type{Size: 10, Anchor: draw.End, Role: draw.Post, Bold: true})
 	}
 	foot := draw.Line(draw.Post, 4)
@@ -276,7 +286,7 @@ func (r *rail) names(g *draw.Group, y, at float64, c *results.Comparison) {
 		numbers = r.v.words.diff(c.Mean) + ", no interval"
 	}
 	rest := verdictWords(c.Verdict)
-	if c.Verdict.Kind == results.Undecided {
+	if c.Verdict.Kind == results.Undecided { // the pairs it needs stand in the verdict table
 		rest = "undecided"
 	}
 	rest += fmt.Sprintf(", n = %d", c.N)

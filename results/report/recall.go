@@ -46,6 +46,8 @@ func (v *view) recalls(a *armView) []recall {
 	return out
 }
 
+// recallOf is an arm's recall of one class over its replicates. With equal rates
+// the first replicate counts as the worst.
 func (v *view) recallOf(a *armView, class int) recall {
 	out := recall{Class: v.class(class), Low: math.NaN(), High: math.NaN()}
 	var rates []float64
@@ -126,7 +128,7 @@ func recallLattice(v *view, width float64) []*draw.Figure {
 	if width < 600 {
 		perFigure = 3
 	}
-	// Classes are shared out evenly.
+	// Eleven classes become six and five, not ten and one.
 	groups := (classes + perFigure - 1) / perFigure
 	var out []*draw.Figure
 	for g := range groups {
@@ -209,6 +211,8 @@ func latticeScale(lo, x, cell float64) draw.Linear {
 	return draw.Linear{Lo: lo, Hi: 1, P0: x + 6, P1: x + cell - 8}
 }
 
+// latticeColumn draws a class's head, its grid at the ends and the middle of the
+// scale, and its axis.
 func latticeColumn(g *draw.Group, lo, x, cell, top, bottom float64, class string) {
 	s := latticeScale(lo, x, cell)
 	lines := draw.Wrap(class, 11, false, cell-8, 2)
@@ -225,6 +229,7 @@ func latticeColumn(g *draw.Group, lo, x, cell, top, bottom float64, class string
 	}
 }
 
+// latticeCell draws one arm's recall of one class.
 func latticeCell(g *draw.Group, lo, x, cell, at float64, a *armView, r recall) {
 	s := latticeScale(lo, x, cell)
 	t := g.Titled(fmt.Sprintf("%s, %s: mean recall %s [%s, %s], n = %d; worst replicate %d of %d", a.Label(), r.Class,

@@ -36,6 +36,7 @@ func runSection(v *view) any {
 	}
 }
 
+// runRow is one run: its last epoch, and the steps skipped in all of them.
 func (v *view) runRow(r *results.Run) []string {
 	loss, score, skipped := math.NaN(), math.NaN(), uint64(0)
 	if n := len(r.Epochs); n > 0 {
@@ -77,6 +78,7 @@ func outcome(r *results.Run) string {
 	return missing
 }
 
+// seconds spells a duration in seconds; zero means that it was not recorded.
 func seconds(d time.Duration) string {
 	if d <= 0 {
 		return missing
@@ -101,6 +103,7 @@ func planSection(v *view) any {
 	return data
 }
 
+// rerunSection is the commands that repeat the study.
 func rerunSection(v *view) any {
 	data := struct{ Commands []string }{}
 	for _, c := range v.Rerun {
@@ -115,6 +118,7 @@ type list struct {
 	Without string
 }
 
+// warningSection gathers the study's warnings and those of its comparisons.
 func warningSection(v *view) any {
 	l := list{Without: "None."}
 	for _, w := range v.Warnings {

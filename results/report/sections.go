@@ -19,6 +19,7 @@ type figureWith struct {
 	Without string
 }
 
+// differenceSection is the rail of the arms against the baseline.
 func differenceSection(v *view) any {
 	caption := "Each row is an arm. Bar: " + percentage(v.Confidence) + " t interval of the mean paired difference, arm − baseline; the mark on it is the verdict's, at the mean; strokes below the bar: the replicates. " +
 		"An arm is within the margin when its whole bar, Holm-corrected, lies to the right of the post."
@@ -58,6 +59,7 @@ func (v *view) pairTable(cs []results.Comparison) *tabular {
 	return t
 }
 
+// commaUnit is the unit of differences for the end of a caption.
 func commaUnit(v *view) string {
 	if u := v.words.unitWords(); u != "" {
 		return ", in " + u
@@ -68,6 +70,7 @@ func commaUnit(v *view) string {
 // armName is an arm for the page's switches.
 type armName struct{ Slug, Name string }
 
+// curveSection is the loss curves with the switches that the script works.
 func curveSection(v *view) any {
 	data := struct {
 		Overview, Panels template.HTML
@@ -100,6 +103,7 @@ func (v *view) curveTable() *tabular {
 	return t
 }
 
+// lastOf spells the end of a curve; a quartile of runs that diverged is called so.
 func lastOf(c *curve) string {
 	i := c.last()
 	if i < 0 {
@@ -112,6 +116,7 @@ func lastOf(c *curve) string {
 	return fmt.Sprintf("%s [%s, %s], n = %d", significant(c.Mid[i], 3), significant(c.Low[i], 3), high, c.N)
 }
 
+// frontSection is the metric against bits.
 func frontSection(v *view) any {
 	caption := "Marks: mean " + plain(v.Metric) + " over replicates. Interval: the " + percentage(v.Confidence) + " interval of the paired difference to the baseline, drawn around the arm's mean; grey, at the baseline, that of its own mean. Arms of equal width stand side by side. " +
 		"Steps: the Pareto set, the arms that no arm of fewer bits equals. Bits are those of stored values, weighted by tensor sizes; the bits of sums are not in them."
@@ -131,6 +136,7 @@ func frontSection(v *view) any {
 	}
 }
 
+// mapSection is the step map and the settings behind it.
 func mapSection(v *view) any {
 	t := &tabular{Caption: "Every setting that differs from the baseline", Columns: columns("Arm", "format", "rounding", "order", "overflow", "points, with layers where not all")}
 	for _, a := range v.arms {
@@ -238,7 +244,7 @@ func counterSection(v *view) any {
 		Caption: "Range events, summed over the replicates of an arm",
 		Columns: columns("Arm", "layer", "point", "#overflow", "#underflow to zero", "#saturation", "#NaN", "#runs"),
 	}
-	quiet, more := 0, 0
+	quiet, more := 0, 0 // points without events; rows beyond what is shown
 	for _, a := range v.arms {
 		for _, c := range tallies(a) {
 			if c.Counts == (results.Counts{}) {
@@ -298,6 +304,7 @@ func count(n uint64) string {
 	return s
 }
 
+// recallSection is recall by class, with a table and a confusion matrix an arm.
 func recallSection(v *view) any {
 	type armRecall struct {
 		Name              string
@@ -315,6 +322,8 @@ func recallSection(v *view) any {
 	return data
 }
 
+// recallTable gives the mean over replicates and, with an exact interval, the
+// worst of them: a mean may hide the run that matters.
 func (v *view) recallTable(rs []recall) *tabular {
 	level := percentage(v.Confidence)
 	t := &tabular{
@@ -334,6 +343,7 @@ func (v *view) recallTable(rs []recall) *tabular {
 	return t
 }
 
+// shares spells an interval of shares of one.
 func shares(low, high float64) string {
 	if math.IsNaN(low) || math.IsNaN(high) {
 		return missing
@@ -341,6 +351,8 @@ func shares(low, high float64) string {
 	return "[" + percentage3(low) + ", " + percentage3(high) + "]"
 }
 
+// confusionTable adds the replicates' matrices. No interval stands beside the
+// sums: where replicates share one test set, they are not independent.
 func (v *view) confusionTable(a *armView) *tabular {
 	sum, classes, n := pooled(a)
 	t := &tabular{Caption: "Confusion, added over " + plural(n, "replicate") + ": rows are the true class, columns what it was called"}

@@ -28,6 +28,8 @@ var sheetTable = []struct {
 	{"confusion", []string{"arm", "replicate", "true_class", "called", "count"}, confusionRows},
 }
 
+// comparisonHeader are the columns of comparisons.csv, arms against the baseline
+// first, then contrasts.
 var comparisonHeader = []string{
 	"arm", "against", "metric", "margin", "confidence", "n", "planned", "mean", "sd", "low", "high", "boot_low", "boot_high",
 	"skewness", "p", "holm", "p_worse", "holm_worse", "verdict", "pairs_needed", "diverged", "against_diverged", "stalled",
@@ -47,6 +49,7 @@ func SheetNames() []string {
 	return out
 }
 
+// sheet writes one sheet; encoding/csv quotes what needs it.
 func (v *view) sheet(w io.Writer, name string) error {
 	for _, s := range sheetTable {
 		if s.name != name {
@@ -64,17 +67,20 @@ func (v *view) sheet(w io.Writer, name string) error {
 	return fmt.Errorf("report: no sheet %q", name)
 }
 
-// f spells a float for a sheet, i an integer, u an unsigned one.
-func f(v float64) string { return strconv.FormatFloat(v, 'g', -1, 64) }
-func i(v int) string     { return strconv.Itoa(v) }
-func u(v uint64) string  { return strconv.FormatUint(v, 10) }
+// floatCell spells a float for a sheet, intCell an integer, uintCell an unsigned one.
+func floatCell(v float64) string { return strconv.FormatFloat(v, 'g', -1, 64) }
+func intCell(v int) string       { return strconv.Itoa(v) }
+func uintCell(v uint64) string   { return strconv.FormatUint(v, 10) }
+
+// Each sheet has a function that lists its rows; names and slugs are written as
+// they are, with no character replaced.
 
 func comparisonRows(cs []results.Comparison) (rows [][]string) {
 	for _, c := range cs {
 		rows = append(rows, []string{
-			c.Arm, c.Against, c.Metric, f(c.Margin), f(c.Confidence), i(c.N), i(c.Planned), f(c.Mean), f(c.SD), f(c.Low), f(c.High),
-			f(c.BootLow), f(c.BootHigh), f(c.Skewness), f(c.P), f(c.Holm), f(c.PWorse), f(c.HolmWorse), verdictWords(c.Verdict),
-			i(c.Verdict.Pairs), i(c.Diverged), i(c.AgainstDiverged), i(c.Stalled),
+			c.Arm, c.Against, c.Metric, floatCell(c.Margin), floatCell(c.Confidence), intCell(c.N), intCell(c.Planned), floatCell(c.Mean), floatCell(c.SD), floatCell(c.Low), floatCell(c.High),
+			floatCell(c.BootLow), floatCell(c.BootHigh), floatCell(c.Skewness), floatCell(c.P), floatCell(c.Holm), floatCell(c.PWorse), floatCell(c.HolmWorse), verdictWords(c.Verdict),
+			intCell(c.Verdict.Pairs), intCell(c.Diverged), intCell(c.AgainstDiverged), intCell(c.Stalled),
 		})
 	}
 	return rows
@@ -86,9 +92,9 @@ func differenceRows(v *view) (rows [][]string) {
 			for k, d := range c.Differences {
 				rep := ""
 				if k < len(c.Replicates) {
-					rep = u(c.Replicates[k])
+					rep = uintCell(c.Replicates[k])
 				}
-				rows = append(rows, []string{c.Arm, c.Against, rep, f(d)})
+				rows = append(rows, []string{c.Arm, c.Against, rep, floatCell(d)})
 			}
 		}
 	}
@@ -98,8 +104,8 @@ func differenceRows(v *view) (rows [][]string) {
 func armRows(v *view) (rows [][]string) {
 	for _, a := range v.arms {
 		rows = append(rows, []string{
-			a.Slug, a.Name, strconv.FormatBool(a.Baseline), f(a.Bits), f(a.Score.Mean), f(a.Score.Low), f(a.Score.High),
-			i(a.Score.N), a.LossScale, a.Summary,
+			a.Slug, a.Name, strconv.FormatBool(a.Baseline), floatCell(a.Bits), floatCell(a.Score.Mean), floatCell(a.Score.Low), floatCell(a.Score.High),
+			intCell(a.Score.N), a.LossScale, a.Summary,
 		})
 	}
 	return rows
@@ -108,7 +114,7 @@ func armRows(v *view) (rows [][]string) {
 func settingRows(v *view) (rows [][]string) {
 	for _, a := range v.arms {
 		for _, s := range a.Settings {
-			rows = append(rows, []string{a.Slug, i(s.Layer), s.Name, s.Point, s.Format, i(s.Bits), i(s.Exponent), i(s.Fraction), s.Rounding, s.Order, s.Overflow})
+			rows = append(rows, []string{a.Slug, intCell(s.Layer), s.Name, s.Point, s.Format, intCell(s.Bits), intCell(s.Exponent), intCell(s.Fraction), s.Rounding, s.Order, s.Overflow})
 		}
 	}
 	return rows
@@ -119,15 +125,15 @@ func runRows(v *view) (rows [][]string) {
 		r := &v.Runs[k]
 		score := "NaN"
 		if v.words.known {
-			score = f(v.words.metric.Final(r))
+			score = floatCell(v.words.metric.Final(r))
 		}
 		started := ""
 		if !r.Started.IsZero() {
 			started = r.Started.UTC().Format("2006-01-02T15:04:05Z")
 		}
 		rows = append(rows, []string{
-			r.Arm, u(r.Replicate), stateWords(r), r.Diverged, i(r.DivergedStep), strconv.FormatBool(r.Stalled), score,
-			fmt.Sprintf("%x", r.Key[:]), fmt.Sprintf("%x", r.Digest[:]), r.CodeVersion, r.Host, started, f(r.Wall.Seconds()),
+			r.Arm, uintCell(r.Replicate), stateWords(r), r.Diverged, intCell(r.DivergedStep), strconv.FormatBool(r.Stalled), score,
+			fmt.Sprintf("%x", r.Key[:]), fmt.Sprintf("%x", r.Digest[:]), r.CodeVersion, r.Host, started, floatCell(r.Wall.Seconds()),
 		})
 	}
 	return rows
@@ -138,8 +144,8 @@ func epochRows(v *view) (rows [][]string) {
 		r := &v.Runs[k]
 		for n, e := range r.Epochs {
 			rows = append(rows, []string{
-				r.Arm, u(r.Replicate), i(n + 1), f(e.TrainLoss), f(e.TrainMetric), f(e.ValidationLoss), f(e.ValidationMetric),
-				f(e.TestLoss), f(e.TestMetric), u(e.Ties), f(e.LossScale), u(e.Skipped),
+				r.Arm, uintCell(r.Replicate), intCell(n + 1), floatCell(e.TrainLoss), floatCell(e.TrainMetric), floatCell(e.ValidationLoss), floatCell(e.ValidationMetric),
+				floatCell(e.TestLoss), floatCell(e.TestMetric), uintCell(e.Ties), floatCell(e.LossScale), uintCell(e.Skipped),
 			})
 		}
 	}
@@ -150,7 +156,7 @@ func curveRows(v *view) (rows [][]string) {
 	for _, a := range v.arms {
 		c := &a.Training
 		for k := range c.X {
-			rows = append(rows, []string{a.Slug, f(c.X[k]), f(c.Low[k]), f(c.Mid[k]), f(c.High[k]), i(c.N)})
+			rows = append(rows, []string{a.Slug, floatCell(c.X[k]), floatCell(c.Low[k]), floatCell(c.Mid[k]), floatCell(c.High[k]), intCell(c.N)})
 		}
 	}
 	return rows
@@ -161,7 +167,7 @@ func counterRows(v *view) (rows [][]string) {
 		r := &v.Runs[k]
 		for _, c := range r.Counters {
 			n := c.Counts
-			rows = append(rows, []string{r.Arm, u(r.Replicate), i(c.Layer), c.Name, c.Point, u(n.Overflow), u(n.Underflow), u(n.Saturated), u(n.NaN)})
+			rows = append(rows, []string{r.Arm, uintCell(r.Replicate), intCell(c.Layer), c.Name, c.Point, uintCell(n.Overflow), uintCell(n.Underflow), uintCell(n.Saturated), uintCell(n.NaN)})
 		}
 	}
 	return rows
@@ -172,11 +178,11 @@ func recallRows(v *view) (rows [][]string) {
 		for _, r := range v.recalls(a) {
 			worst := ""
 			if r.Worst != nil {
-				worst = u(r.Worst.Replicate)
+				worst = uintCell(r.Worst.Replicate)
 			}
 			rows = append(rows, []string{
-				a.Slug, r.Class, f(r.Mean.Mean), f(r.Mean.Low), f(r.Mean.High), i(r.Mean.N),
-				worst, u(r.Hit), u(r.Of), f(r.Low), f(r.High),
+				a.Slug, r.Class, floatCell(r.Mean.Mean), floatCell(r.Mean.Low), floatCell(r.Mean.High), intCell(r.Mean.N),
+				worst, uintCell(r.Hit), uintCell(r.Of), floatCell(r.Low), floatCell(r.High),
 			})
 		}
 	}
@@ -190,7 +196,7 @@ func confusionRows(v *view) (rows [][]string) {
 			continue
 		}
 		for n, x := range r.Confusion {
-			rows = append(rows, []string{r.Arm, u(r.Replicate), v.class(n / r.Classes), v.class(n % r.Classes), u(x)})
+			rows = append(rows, []string{r.Arm, uintCell(r.Replicate), v.class(n / r.Classes), v.class(n % r.Classes), uintCell(x)})
 		}
 	}
 	return rows

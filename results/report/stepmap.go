@@ -93,6 +93,7 @@ func (v *view) stops(a *armView, at []station) []stop {
 		}
 		o.idle = s.Rounding == reused && (o.idle || !o.there)
 		o.there, o.most = true, max(o.most, s.Bits)
+		// A point that the baseline has no setting for is a change by being there.
 		b, known := base[place{s.Layer, s.Point}]
 		if known && differs(s, b) || !known && v.baseline != nil && a != v.baseline {
 			o.changed = true
@@ -130,6 +131,7 @@ func stepMap(v *view, width float64) []*draw.Figure {
 	if len(at) == 0 {
 		return nil
 	}
+	// Every part repeats the map, so that each can be read by itself.
 	var out []*draw.Figure
 	for i := 0; i < len(v.arms); i += mapRows {
 		m := &mapLayout{v: v, at: at, width: width, arms: v.arms[i:min(i+mapRows, len(v.arms))]}
@@ -152,6 +154,7 @@ type mapLayout struct {
 	most   int     // bits of the tallest column
 }
 
+// draw lays the map out: the track above, a row an arm below.
 func (m *mapLayout) draw() *draw.Figure {
 	m.narrow = m.width < 600
 	m.left, m.line = 200, 62
@@ -187,7 +190,7 @@ func (m *mapLayout) columns() {
 			gaps++
 		}
 	}
-	const gap = 0.7 // of a pitch
+	const gap = 0.7 // of a pitch, the distance of two stations
 	m.pitch = math.Min(34, (m.width-m.left-16)/(float64(len(m.at))+gap*float64(gaps)))
 	x := m.left + m.pitch/2
 	for i := range m.at {
@@ -210,6 +213,7 @@ func (m *mapLayout) track(g *draw.Group, bottom float64) {
 		x0, x1, y := m.xs[m.start()], m.xs[n-1], 12.0
 		g.Polyline([]draw.Point{{X: x1, Y: m.line - 6}, {X: x1, Y: y}, {X: x0, Y: y}, {X: x0, Y: m.line - 6}}, back)
 		g.Polyline([]draw.Point{{X: x0 - 4, Y: m.line - 13}, {X: x0, Y: m.line - 6}, {X: x0 + 4, Y: m.line - 13}}, draw.Line(draw.Soft, 1.4))
+		// The words stand in a gap of the line back.
 		words := "next step"
 		w := draw.Width(words, 10.5, false)
 		g.Rect((x0+x1-w)/2-5, y-7, w+10, 14, draw.Fill(draw.Paper))
@@ -217,6 +221,7 @@ func (m *mapLayout) track(g *draw.Group, bottom float64) {
 	}
 	for i, st := range m.at {
 		g.Circle(m.xs[i], m.line, 3.6, draw.Style{Fill: draw.Paper, Line: draw.Ink, Width: 1.8})
+		// Turned by a quarter, words hang from their base line to the right of it.
 		g.Text(m.xs[i]-3.6, m.line+11, st.point, draw.Type{Size: math.Min(10.5, m.pitch-0.6), Turn: 90, Role: draw.Soft})
 	}
 	m.phases(g, bottom)
@@ -261,7 +266,7 @@ func (m *mapLayout) phases(g *draw.Group, bottom float64) {
 func (m *mapLayout) arm(g *draw.Group, y, row float64, a *armView) string {
 	g = g.Sub("arm", draw.Attr{Name: "arm", Value: a.Slug})
 	foot := y + row - 8
-	if m.narrow {
+	if m.narrow { // the name stands above the row, on clean ground
 		g.Rect(0, y, m.width, 18, draw.Fill(draw.Paper))
 		g.Text(m.left-7, y+13, a.Label(), draw.Type{Size: 11.5, Bold: true, Max: m.width - 2*m.left})
 	} else {
@@ -270,7 +275,7 @@ func (m *mapLayout) arm(g *draw.Group, y, row float64, a *armView) string {
 			g.Text(0, foot-8-14*float64(len(lines)-1-k), l, draw.Type{Size: 11.5, Bold: true})
 		}
 	}
-	tall := 25.0
+	const tall = 25.0 // pixels of the widest format
 	g.Line(m.xs[0]-m.pitch/2, foot+0.5, m.xs[len(m.xs)-1]+m.pitch/2, foot+0.5, draw.Line(draw.Faint, 1))
 	var changed []string
 	for i, s := range m.v.stops(a, m.at) {
@@ -307,7 +312,7 @@ func (m *mapLayout) column(g *draw.Group, x, foot, tall float64, s stop, at stat
 		t.Rect(x-w/2, foot-height(s.most), w, height(s.most)-height(s.least), paint.With(0.4))
 	}
 	top := foot - height(s.most)
-	if s.changed && w >= 12 {
+	if s.changed && w >= 12 { // the width in figures: in the column, or on it when it is too low
 		if height(s.least) >= 11 {
 			t.Text(x, foot-2.5, fmt.Sprint(s.least), draw.Type{Size: 9, Anchor: draw.Middle, Role: draw.Paper, Bold: true})
 		} else {

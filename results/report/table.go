@@ -44,6 +44,7 @@ type terminal struct {
 	color bool
 }
 
+// line ends a line; blanks at its end are left out, so that tables can be compared.
 func (t *terminal) line(s string) { t.b.WriteString(strings.TrimRight(s, " ") + "\n") }
 
 // paint sets off words when colour is wanted; blanks at their end stay outside.
@@ -85,6 +86,7 @@ type row struct {
 	n, bits                           string
 }
 
+// rows spells comparisons.
 func (t *terminal) rows(cs []results.Comparison) []row {
 	out := make([]row, len(cs))
 	for i := range cs {
@@ -122,7 +124,7 @@ func (t *terminal) verdicts(title string, cs []results.Comparison) {
 		{head: "n", right: true, cell: func(r row) string { return r.n }},
 		{head: "bits", right: true, cell: func(r row) string { return r.bits }},
 	}
-	used := 2
+	used := 2 // characters: the mark and a blank
 	for i := range cols {
 		cols[i].measure(rows)
 		used += cols[i].wide + 2
@@ -152,6 +154,7 @@ func longestName(rows []row) int {
 	return n
 }
 
+// legend explains the rail.
 func (t *terminal) legend(tr *textRail) {
 	for _, l := range wrapText(tr.legend(), t.width) {
 		t.line(t.paint(dim, l))
@@ -166,6 +169,8 @@ type textColumn struct {
 	wide  int
 }
 
+// measure makes the column as wide as its widest cell, in columns of the
+// terminal: some characters take two, some none.
 func (c *textColumn) measure(rows []row) {
 	c.wide = runewidth.StringWidth(c.head)
 	for _, r := range rows {

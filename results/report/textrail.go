@@ -15,6 +15,7 @@ type textRail struct {
 	fold  float64 // see rail
 }
 
+// newTextRail makes a rail with the same scale as the drawn one.
 func newTextRail(v *view, cs []results.Comparison, cells int) *textRail {
 	d := railDomain(v, cs)
 	return &textRail{v: v, cells: max(cells, 12), d: d, fold: d.fold()}
@@ -45,6 +46,7 @@ func (r *textRail) head() string {
 		word := []rune(fixed(-m, marginDigits(m)))
 		p := r.cell(-m) - len(word)/2
 		for i, c := range word {
+			// The zero keeps its place and a blank before it.
 			if k := p + i; k >= 0 && k < len(line) && line[k] == ' ' && k != r.at(0)-1 {
 				line[k] = c
 			}
@@ -61,7 +63,7 @@ func (r *textRail) draw(c *results.Comparison) string {
 			line[k] = c
 		}
 	}
-	put(0, '│')
+	put(0, '│') // later marks cover earlier ones: the mean is always seen
 	if c.Margin > 0 {
 		put(-c.Margin, '┃')
 	}

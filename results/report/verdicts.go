@@ -15,7 +15,7 @@ import (
 // claimSection is what was asked and what was fixed before the first run.
 func claimSection(v *view) any {
 	var facts []fact
-	add := func(head, text string) {
+	add := func(head, text string) { // what is not known is not listed
 		if text = plain(text); text != "" && text != missing {
 			facts = append(facts, fact{head, text})
 		}
@@ -79,12 +79,13 @@ func (v *view) firstRun() string {
 	switch {
 	case first.IsZero():
 		return ""
-	case first.Before(v.MarginFixed):
+	case first.Before(v.MarginFixed): // the one thing a reader must not overlook here
 		return ", AFTER the first run here started (" + day(first) + ")"
 	}
 	return ", before the first run started (" + day(first) + ")"
 }
 
+// replicateWords says how many replicates there are, of how many planned.
 func (v *view) replicateWords() string {
 	n := 0
 	for _, a := range v.arms {
@@ -114,6 +115,8 @@ type keyed struct {
 	Words   string
 }
 
+// verdictSection is the table of verdicts, the baseline first, with the key to
+// its marks.
 func verdictSection(v *view) any {
 	data := struct {
 		Unit, Level string
@@ -141,6 +144,7 @@ func verdictSection(v *view) any {
 	return data
 }
 
+// verdictRow is one arm's row; what it has no comparison for stays missing.
 func (v *view) verdictRow(a *armView) verdictRow {
 	r := verdictRow{
 		Slug: a.Slug, Name: plain(a.Name), Bits: bits(a.Bits), Verdict: "no verdict",
@@ -150,7 +154,7 @@ func (v *view) verdictRow(a *armView) verdictRow {
 	if a.Number > 0 {
 		r.Number = strconv.Itoa(a.Number)
 	}
-	if r.LossScale == "none" {
+	if r.LossScale == "none" { // the usual case needs no line
 		r.LossScale = ""
 	}
 	for _, s := range a.Strips {
@@ -200,7 +204,7 @@ func (v *view) checks(cs []results.Comparison) *tabular {
 	}
 	for i := range cs {
 		c := &cs[i]
-		t.Rows = append(t.Rows, []string{
+		t.Rows = append(t.Rows, []string{ // the SD with one decimal more than the differences it is of
 			v.pairName(c), strconv.Itoa(c.N), fixed(v.words.scale(c.SD), v.words.digits+1),
 			v.words.interval(c.Low, c.High), v.words.interval(c.BootLow, c.BootHigh), fixed(c.Skewness, 2),
 			probability(c.P), probability(c.Holm), probability(c.PWorse), probability(c.HolmWorse),

@@ -34,7 +34,7 @@ type armView struct {
 func newView(s *results.Study) *view {
 	v := &view{Study: s, words: newScoreWords(s.Metric, s.Margin)}
 	bySlug := map[string]*armView{}
-	next := 1
+	next := 1 // numbers follow the plan's order and are the same in all figures
 	for _, a := range s.Arms {
 		av := &armView{Arm: a, Strips: strips(a.Settings)}
 		if a.Baseline && v.baseline == nil {
@@ -47,11 +47,13 @@ func newView(s *results.Study) *view {
 		bySlug[a.Slug] = av
 	}
 	for i := range s.Comparisons {
+		// The first comparison counts: an arm has one with the baseline.
 		if av := bySlug[s.Comparisons[i].Arm]; av != nil && av.Comparison == nil {
 			av.Comparison = &s.Comparisons[i]
 		}
 	}
 	for i := range s.Runs {
+		// Runs of no arm, pretraining say, appear in the list of runs alone.
 		if av := bySlug[s.Runs[i].Arm]; av != nil {
 			av.Runs = append(av.Runs, &s.Runs[i])
 		}

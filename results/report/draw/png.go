@@ -44,12 +44,14 @@ func (r raster) marks(ms []Mark) {
 	}
 }
 
+// at is a place of the figure on the canvas.
 func (r raster) at(x, y float64) vg.Point {
 	return vg.Point{X: vg.Length(x), Y: vg.Length(r.h - y)}
 }
 
 func (r raster) path(p *Path) {
 	var v vg.Path
+	// Angles turn the other way where y points up.
 	for _, o := range p.Ops {
 		switch o.Kind {
 		case Move:
@@ -101,6 +103,7 @@ func (r raster) paint(role Role, opacity float64) bool {
 	return true
 }
 
+// text writes words from their left end: the canvas knows no anchors.
 func (r raster) text(t *Text) {
 	w := Width(t.S, t.Size, t.Bold)
 	dx := 0.0

@@ -84,6 +84,8 @@ func (s Log) Ticks(n int) []float64 {
 	return thin(best, n)
 }
 
+// digitTicks are the digits times powers of ten in range; they are read from
+// decimals, so that they print as such.
 func (s Log) digitTicks(digits []float64) []float64 {
 	var out []float64
 	first, last := int(math.Floor(math.Log10(s.Lo))), int(math.Ceil(math.Log10(s.Hi)))
@@ -116,6 +118,7 @@ func thin(t []float64, n int) []float64 {
 // same rail without pressing the near ones together.
 type SymLog struct{ Lo, Hi, Linear, Decade, P0, P1 float64 }
 
+// fold is a value on the rail in lengths of the linear half.
 func (s SymLog) fold(v float64) float64 {
 	a := math.Abs(v) / s.Linear
 	if a > 1 {

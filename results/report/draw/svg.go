@@ -50,7 +50,7 @@ func (f *Figure) WriteGlyph(w io.Writer) error {
 	return e.w.Flush()
 }
 
-// svgWriter writes marks; theme is nil in a page, where paints are classes.
+// svgWriter writes marks as SVG 1.1 elements; theme is nil in a page, where paints are classes.
 type svgWriter struct {
 	w     *bufio.Writer
 	theme *Theme
@@ -67,6 +67,7 @@ func (e *svgWriter) open(f *Figure, id string, pad float64, more string) {
 	e.put(fmt.Sprintf(`><title id="%[1]s-t">%[2]s</title><desc id="%[1]s-d">%[3]s</desc>`, esc(id), esc(f.Title), esc(f.Desc)))
 }
 
+// data writes attributes for the page's script.
 func (e *svgWriter) data(attrs []Attr) {
 	for _, a := range attrs {
 		e.put(` data-` + a.Name + `="` + esc(a.Value) + `"`)
@@ -87,7 +88,7 @@ func (e *svgWriter) marks(ms []Mark) {
 }
 
 func (e *svgWriter) group(g *Group) {
-	if len(g.Marks) == 0 {
+	if len(g.Marks) == 0 { // all its marks had no place
 		return
 	}
 	e.put("<g")
@@ -143,6 +144,7 @@ func (e *svgWriter) paint(fill, line Role) {
 	}
 }
 
+// op writes one step of a path.
 func (e *svgWriter) op(o Op) {
 	switch o.Kind {
 	case Move:
@@ -164,7 +166,7 @@ func (e *svgWriter) arc(o Op) {
 		return num(o.X+o.R*c) + " " + num(o.Y+o.R*s)
 	}
 	n := max(1, int(math.Ceil(math.Abs(o.Sweep)/math.Pi-1e-9)))
-	dir := "1"
+	dir := "1" // clockwise on the screen
 	if o.Sweep < 0 {
 		dir = "0"
 	}

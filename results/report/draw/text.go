@@ -95,6 +95,7 @@ func face(size float64, bold bool) font.Face {
 	return lookup(size, bold)
 }
 
+// lookup finds a face in the cache; the caller holds the lock.
 func lookup(size float64, bold bool) font.Face {
 	if faces.cache == nil {
 		faces.cache = font.NewCache(liberation.Collection())
@@ -124,7 +125,7 @@ func Width(s string, size float64, bold bool) float64 {
 	for _, r := range s {
 		a, ok := faces.advance[i][r]
 		if !ok {
-			a = 1
+			a = 1 // an em, for what the font cannot draw
 			if adv, has := faces.face[i].GlyphAdvance(r); has {
 				a = float64(adv) / 64 / 100
 			}
@@ -140,6 +141,7 @@ func Fit(s string, size float64, bold bool, limit float64) string {
 	if Width(s, size, bold) <= limit {
 		return s
 	}
+	// The longest beginning that fits, by halving.
 	rs := []rune(s)
 	lo, hi := 0, len(rs)
 	for lo < hi {
@@ -175,7 +177,7 @@ func breakAt(s string, size float64, bold bool, limit float64) int {
 	if Width(s, size, bold) <= limit {
 		return len(s)
 	}
-	best, last := 0, 0
+	best, last := 0, 0 // the last blank, and the last character, that fit
 	for i, r := range s {
 		if i > 0 && Width(s[:i], size, bold) > limit {
 			break
@@ -191,7 +193,7 @@ func breakAt(s string, size float64, bold bool, limit float64) int {
 	case last > 0:
 		return last
 	}
-	return len(string([]rune(s)[:1]))
+	return len(string([]rune(s)[:1])) // not one fits: take one, or the loop would not end
 }
 
 // Box is a rectangle of a figure.
