@@ -6,6 +6,7 @@ import "fmt"
 // memory and serves one goroutine at a time.
 type Multiplier[T Element] struct {
 	ref       reference[T]
+	fast      *fast      // nil where the kernels do not serve
 	native    *native[T] // nil where the machine's own arithmetic does not serve
 	engine    *engine    // nil where a point has no quick rounding
 	sumEngine *engine    // engine for sums without products
@@ -71,7 +72,7 @@ func NewMultiplier[T Element](acc Accumulate) (*Multiplier[T], error) {
 			return nil, fmt.Errorf("quant: sums of format %s do not fit tensors of float32: use float64", p.Format)
 		}
 	}
-	m := &Multiplier[T]{ref: newReference[T](acc), native: newNative[T](acc), engine: newEngine(acc)}
+	m := &Multiplier[T]{ref: newReference[T](acc), fast: newFast[T](acc), native: newNative[T](acc), engine: newEngine(acc)}
 	acc.Product = nil
 	m.sumEngine = newEngine(acc)
 	return m, nil

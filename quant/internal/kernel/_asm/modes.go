@@ -1,0 +1,183 @@
+package main
+
+// A mode is an arithmetic of a sum of products, as a list of operations a term.
+type mode struct {
+	name      string
+	doc       string
+	double    bool     // binary64 lanes
+	constants []string // read from the table, in order of need of a register
+	random    bool     // reads the tables R and V
+	truncate  bool     // AVX2: runs under rounding toward zero
+	watch     bool     // watches the greatest magnitude against Limit
+	keepRight bool     // B[k, columns] in registers instead of memory operands
+	step      func(g *tile, r, v int) chain
+}
+
+// modes are all kernels. The name is the Go function's stem.
+var modes = []mode{
+	{
+		name: "baseline", doc: "the loop s = binary32(s + binary32(a b)), terms ascending.",
+		keepRight: true,
+		step: func(g *tile, r, v int) chain {
+			p := g.reg()
+			return join(g.multiply(p, r, v), g.plus(g.sums[r][v], p))
+		},
+	},
+	{
+		name: "fmaChain", doc: "the loop s = binary32(s + a b), terms ascending.",
+		keepRight: true,
+		step:      func(g *tile, r, v int) chain { return g.fuse(r, v) },
+	},
+	{
+		name: "rounded", doc: "the loop s = binary32(s + R(a b)), R nearest-even, terms ascending.",
+		constants: []string{"Grow", "ExponentMask", "Least"},
+		step: func(g *tile, r, v int) chain {
+			p := g.reg()
+			return join(g.multiply(p, r, v), g.nearest(p, "Least", "Grow"), g.plus(g.sums[r][v], p))
+		},
+	},
+	{
+		name: "both", doc: "the loop s = R(s + R(a b)), R nearest-even, terms ascending.",
+		constants: []string{"Grow", "SumSplit", "Least", "ExponentMask"},
+		step: func(g *tile, r, v int) chain {
+			p, s := g.reg(), g.sums[r][v]
+			return join(g.multiply(p, r, v), g.nearest(p, "Least", "Grow"), g.plus(s, p), g.split(s))
+		},
+	},
+	{
+		name: "bothScaled", doc: "the loop s = S(s + R(a b)), R and S nearest-even and no quantum of R finer than S's, terms ascending.",
+		constants: []string{"Grow", "SumSplit", "Rescale", "Least", "ExponentMask"},
+		step: func(g *tile, r, v int) chain {
+			p, s := g.reg(), g.sums[r][v]
+			return join(g.multiply(p, r, v), g.nearest(p, "Least", "Grow"), g.plusRescaled(s, p), g.split(s))
+		},
+	},
+	{
+		name: "bothCare", doc: "the loop s = S(binary32(s + R(a b))), R and S nearest-even, terms ascending.",
+		constants: []string{"Grow", "SumGrow", "Rescale", "Least", "SumLeast", "ExponentMask"},
+		step: func(g *tile, r, v int) chain {
+			p, s := g.reg(), g.sums[r][v]
+			return join(g.multiply(p, r, v), g.nearest(p, "Least", "Grow"), g.plusRescaled(s, p), g.nearest(s, "SumLeast", "SumGrow"))
+		},
+	},
+	{
+		name: "through", doc: "the loop s = R(binary32(s + a b)), R nearest-even, terms ascending.",
+		constants: []string{"SumGrow", "SumLeast", "ExponentMask"},
+		step: func(g *tile, r, v int) chain {
+			return join(g.fuse(r, v), g.nearest(g.sums[r][v], "SumLeast", "SumGrow"))
+		},
+	},
+	{
+		name: "throughFree", doc: "the loop s = R(binary32(s + a b)), R nearest-even, no sum subnormal and inexact, terms ascending.",
+		constants: []string{"SumSplit"},
+		step: func(g *tile, r, v int) chain {
+			return join(g.fuse(r, v), g.split(g.sums[r][v]))
+		},
+	},
+	{
+		name: "productThrough", doc: "the loop s = R(binary32(s + binary32(a b))), R nearest-even, terms ascending.",
+		constants: []string{"SumGrow", "SumLeast", "ExponentMask"},
+		step: func(g *tile, r, v int) chain {
+			p, s := g.reg(), g.sums[r][v]
+			return join(g.multiply(p, r, v), g.plus(s, p), g.nearest(s, "SumLeast", "SumGrow"))
+		},
+	},
+	{
+		name: "odd", doc: "the loop s = R(s + binary32(a b)), R nearest-even of the exact sum, terms ascending.",
+		constants: []string{"SumGrow", "SumLeast", "ExponentMask", "Ones"},
+		step: func(g *tile, r, v int) chain {
+			p, s := g.reg(), g.sums[r][v]
+			return join(g.multiply(p, r, v), g.plusOdd(s, p), g.nearest(s, "SumLeast", "SumGrow"))
+		},
+	},
+	{
+		name: "fused", doc: "the loop s = R(s + a b), R nearest-even of a sum exact in binary64, terms ascending.",
+		double: true, constants: []string{"SumGrow", "SumLeast", "ExponentMask"},
+		step: func(g *tile, r, v int) chain {
+			return join(g.fuse(r, v), g.nearest(g.sums[r][v], "SumLeast", "SumGrow"))
+		},
+	},
+	{
+		name: "fusedFree", doc: "the loop s = R(s + a b), R nearest-even of a sum exact in binary64, no sum subnormal and inexact, terms ascending.",
+		double: true, constants: []string{"SumSplit"},
+		step: func(g *tile, r, v int) chain {
+			return join(g.fuse(r, v), g.split(g.sums[r][v]))
+		},
+	},
+	{
+		name: "stochastic", doc: "the loop s = S(binary32(s + R(a b))), R nearest-even, S stochastic without subnormals, terms ascending.",
+		constants: []string{"RandomShift", "Grow", "Rescale", "Keep", "RandomMask", "Least", "ExponentMask"}, random: true,
+		step: func(g *tile, r, v int) chain {
+			p, u, s := g.reg(), g.reg(), g.sums[r][v]
+			return join(g.multiply(p, r, v), g.nearest(p, "Least", "Grow"), g.plusRescaled(s, p), g.mix(u, r, v), g.stochastic(s, u))
+		},
+	},
+	{
+		name: "stochasticFused", doc: "the loop s = S(binary32(s + a b)), S stochastic without subnormals, terms ascending.",
+		constants: []string{"RandomShift", "Keep", "RandomMask"}, random: true,
+		step: func(g *tile, r, v int) chain {
+			u, s := g.reg(), g.sums[r][v]
+			return join(g.fuse(r, v), g.mix(u, r, v), g.stochastic(s, u))
+		},
+	},
+	{
+		name: "stochasticCare", doc: "the loop s = S(binary32(s + a b)), S stochastic, terms ascending.",
+		constants: careConstants, random: true,
+		step: func(g *tile, r, v int) chain {
+			u, s := g.reg(), g.sums[r][v]
+			return join(g.fuse(r, v), g.mix(u, r, v), g.stochasticCare(s, u))
+		},
+	},
+	{
+		name: "stochasticProductCare", doc: "the loop s = S(binary32(s + R(a b))), R nearest-even, S stochastic, terms ascending.",
+		constants: append([]string{"Grow", "Rescale", "Least"}, careConstants...), random: true,
+		step: func(g *tile, r, v int) chain {
+			p, u, s := g.reg(), g.reg(), g.sums[r][v]
+			return join(g.multiply(p, r, v), g.nearest(p, "Least", "Grow"), g.plusRescaled(s, p), g.mix(u, r, v), g.stochasticCare(s, u))
+		},
+	},
+	{
+		name: "stochasticWide", doc: "the loop s = S(s + a b), S stochastic of the exact sum, terms ascending.",
+		double: true, truncate: true, watch: true, random: true,
+		constants: []string{"RandomShift", "SumLeast", "SignMask", "MagnitudeMask", "RandomMask", "RandomHalf", "Keep"},
+		step: func(g *tile, r, v int) chain {
+			u, s := g.reg(), g.sums[r][v]
+			return join(g.fuseTruncated(r, v), g.mix(u, r, v), g.stochasticWide(s, u))
+		},
+	},
+	{
+		name: "stochasticProduct", doc: "the loop s = S(s + R(a b)), R nearest-even, S stochastic of a sum exact in binary64 and without subnormals, terms ascending.",
+		double: true, watch: true, random: true,
+		constants: []string{"RandomShift", "Grow", "Rescale", "Least", "ExponentMask", "RandomMask", "RandomHalf", "Keep", "MagnitudeMask"},
+		step: func(g *tile, r, v int) chain {
+			p, u, s := g.reg(), g.reg(), g.sums[r][v]
+			return join(g.multiply(p, r, v), g.nearest(p, "Least", "Grow"), g.plusRescaled(s, p), g.watch(s), g.mix(u, r, v), g.align(u), g.carry(s, u))
+		},
+	},
+	{
+		name: "baseline64", doc: "the loop s = binary64(s + binary64(a b)), terms ascending.",
+		double: true, keepRight: true,
+		step: func(g *tile, r, v int) chain {
+			p := g.reg()
+			return join(g.multiply(p, r, v), g.plus(g.sums[r][v], p))
+		},
+	},
+	{
+		name: "fmaChain64", doc: "the loop s = binary64(s + a b), terms ascending.",
+		double: true, keepRight: true,
+		step: func(g *tile, r, v int) chain { return g.fuse(r, v) },
+	},
+}
+
+var careConstants = []string{
+	"RandomShift", "PreShift", "WholeShift", "ExponentMask", "SumLeast", "BaseShift",
+	"Fraction", "Implicit", "RandomHalf", "QuantumStep", "SignMask",
+}
+
+func join(parts ...chain) chain {
+	var c chain
+	for _, p := range parts {
+		c = append(c, p...)
+	}
+	return c
+}

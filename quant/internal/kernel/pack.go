@@ -1,0 +1,91 @@
+package kernel
+
+import "math"
+
+// pairsOf is the number of pairs of rows that hold n rows; the last may hold a row
+// of zeros.
+func pairsOf(n int) int { return (n + 1) / 2 }
+
+// packRows writes A 2^scale by pairs of rows: dst[(i/2*K + k)*2 + i%2].
+func packRows[L, T lanes](dst []L, p *Product[T], scale int) {
+	factor := L(math.Ldexp(1, scale))
+	for i := 0; i < p.I; i += 2 {
+		to := dst[i*p.K:][:2*p.K]
+		first := p.A[i*p.ARow:]
+		if i+1 == p.I {
+			for k := range p.K {
+				to[2*k], to[2*k+1] = L(first[k*p.ACol])*factor, 0
+			}
+			continue
+		}
+		second := p.A[(i+1)*p.ARow:]
+		for k := range p.K {
+			to[2*k], to[2*k+1] = L(first[k*p.ACol])*factor, L(second[k*p.ACol])*factor
+		}
+	}
+}
+
+// measureRows returns the span of A, and whether all of A is finite.
+func measureRows(p *Product[float32]) Span {
+	e := noExtent
+	for i := range p.I {
+		row := p.A[i*p.ARow:]
+		if p.ACol == 1 {
+			e.merge(measure(row[:p.K]))
+			continue
+		}
+		for k := range p.K {
+			e.add(math.Float32bits(row[k*p.ACol]))
+		}
+	}
+	if e.greatest >= exponentMask32 {
+		e = finiteExtent(p)
+	}
+	return e.span()
+}
+
+// finiteExtent is the extent of the finite values of A.
+func finiteExtent(p *Product[float32]) extent {
+	e := noExtent
+	for i := range p.I {
+		for k := range p.K {
+			addFinite(&e, p.A[i*p.ARow+k*p.ACol])
+		}
+	}
+	return e
+}
+
+// measurePanel returns the span of the finite values of packed columns.
+func measurePanel(x []float32) Span {
+	e := measure(x)
+	if e.greatest >= exponentMask32 {
+		e = noExtent
+		for _, v := range x {
+			addFinite(&e, v)
+		}
+	}
+	return e.span()
+}
+
+func addFinite(e *extent, v float32) {
+	if c := math.Float32bits(v); c&exponentMask32 != exponentMask32 {
+		e.add(c)
+	}
+}
+
+// measure returns the extent of all of x.
+func measure(x []float32) extent {
+	e := noExtent
+	for _, v := range x {
+		e.add(math.Float32bits(v))
+	}
+	return e
+}
+
+// widen converts binary32 numbers to binary64.
+func widen(dst []float64, src []float32) {
+	dst = dst[:len(src)]
+	for i, v := range src {
+		dst[i] = float64(v)
+	}
+}

@@ -1,0 +1,298 @@
+package kernel
+
+// panel is a set of neighbouring columns on its way through the blocks of terms.
+type panel struct {
+	*Multiplier
+	j0, columns int
+	wide        bool // binary64 lanes
+	width       int  // columns of the kernels
+	row         int  // length of a row of binary32 sums: the binary32 kernels' width
+	grain       int  // see block
+	only        *Span
+}
+
+// formPanel forms the panel that starts at column j0 and returns its columns.
+//
+// The first block chooses the lanes. Where a later block asks for the others, the
+// panel starts again with lanes that serve the span of all its blocks.
+func (m *Multiplier) formPanel(j0 int) int {
+	for range 2 {
+		n := m.newPanel(j0, m.wide)
+		switch n.form() {
+		case formed:
+			n.handBack()
+			return n.columns
+		case impossible:
+			m.redo(0, m.p.I, j0, j0+n.columns)
+			return n.columns
+		}
+		m.wide = !m.wide // the other lanes, from the first block on
+	}
+	return m.formMeasured(j0)
+}
+
+// formMeasured forms a panel whose blocks do not agree on their lanes.
+func (m *Multiplier) formMeasured(j0 int) int {
+	for _, wide := range []bool{false, true} {
+		n := m.newPanel(j0, wide)
+		span := n.measureAll()
+		n.only = &span
+		if n.form() == formed {
+			n.handBack()
+			return n.columns
+		}
+	}
+	n := m.newPanel(j0, m.wide)
+	m.redo(0, m.p.I, j0, j0+n.columns)
+	return n.columns
+}
+
+func (m *Multiplier) newPanel(j0 int, wide bool) *panel {
+	left := m.p.J - j0
+	one, two := &m.set.single, &m.set.double
+	n := &panel{Multiplier: m, j0: j0, wide: wide, width: one.panel(left)}
+	n.row = n.width
+	if wide {
+		n.width, n.row = two.panel(left), one.narrow
+		if n.width > one.narrow {
+			n.row = one.width
+		}
+	}
+	n.columns = min(n.width, left)
+	clear(m.bad)
+	return n
+}
+
+// outcome of forming a panel.
+type outcome int
+
+const (
+	formed     outcome = iota
+	otherLanes         // a block asks for the other lanes
+	impossible         // a block has no kernel
+)
+
+// form runs all terms, the chunks and the bias.
+func (n *panel) form() outcome {
+	p := n.p
+	pairs := pairsOf(p.I)
+	n.result = grown(n.result, 2*pairs*n.row)
+	if n.row != n.width {
+		clear(n.result) // columns between the two widths take part in the bias's flags
+	}
+	chunk := p.K
+	if n.a.Chunk > 0 {
+		chunk = n.a.Chunk
+		n.chunk = grown(n.chunk, 2*pairs*n.row)
+		clear(n.chunk)
+		clear(n.result)
+	}
+	for from := 0; from < p.K; from += chunk {
+		if o := n.sum(from, min(from+chunk, p.K)); o != formed {
+			return o
+		}
+		if n.a.Chunk > 0 {
+			n.outer(n.result, n.chunk, &n.outerC)
+		}
+	}
+	if p.Bias != nil {
+		n.addBias()
+	}
+	if p.Bias != nil || n.a.Chunk > 0 {
+		n.copyOut(0, p.I)
+	}
+	return formed
+}
+
+// sum adds terms from <= k < to from +0.
+func (n *panel) sum(from, to int) outcome {
+	n.grain = 1 << 20
+	for k := from; k < to; k += blockTerms {
+		terms := min(blockTerms, to-k)
+		plan := n.packBlock(k, terms)
+		switch {
+		case plan == nil:
+			return impossible
+		case plan.double != n.wide:
+			return otherLanes
+		}
+		first, last := k == from, k+terms == to
+		if n.wide {
+			n.runWide(plan, k, terms, first, last)
+		} else {
+			n.runSingle(plan, k, terms, first, last)
+		}
+	}
+	return formed
+}
+
+// packBlock packs a block of columns and chooses its plan.
+func (n *panel) packBlock(k, terms int) *plan {
+	n.raw = grown(n.raw, terms*n.width)
+	n.p.B.Pack(n.raw, n.width, k, k+terms, n.j0, n.j0+n.columns)
+	b := block{a: n.spanA, grain: n.grain}
+	if n.only != nil {
+		b.b = *n.only
+	} else {
+		b.b = measurePanel(n.raw)
+	}
+	n.grain = b.sumLow()
+	plan := n.main.choose(&b)
+	if n.a.Sum.Kind == StochasticSum && plan != nil {
+		n.columnWords = grown(n.columnWords, terms*n.width)
+		fillColumns(n.columnWords, n.p.Sums.Column, n.width, k, terms, n.p.FirstJ+uint32(n.j0))
+	}
+	return plan
+}
+
+// measureAll returns the span of all blocks.
+func (n *panel) measureAll() Span {
+	all := empty
+	for k := 0; k < n.p.K; k += blockTerms {
+		terms := min(blockTerms, n.p.K-k)
+		n.raw = grown(n.raw, terms*n.width)
+		n.p.B.Pack(n.raw, n.width, k, k+terms, n.j0, n.j0+n.columns)
+		s := measurePanel(n.raw)
+		all = Span{max(all.Bits, s.Bits), max(all.Top, s.Top), min(all.Low, s.Low)}
+	}
+	return all
+}
+
+// direct is the number of rows that the last block may write to C itself: pairs of
+// rows that exist, of full panels that nothing is added to.
+func (n *panel) direct(last bool) int {
+	if !last || n.columns < n.width || n.p.Bias != nil || n.a.Chunk > 0 {
+		return 0
+	}
+	return n.p.I &^ 1
+}
+
+// runSingle forms a block in binary32 lanes.
+func (n *panel) runSingle(plan *plan, k, terms int, first, last bool) {
+	p, s := n.p, &n.one
+	w := &work[float32]{
+		mode: plan.mode, c: &plan.c, width: n.width, terms: terms,
+		a: pack(s, p, plan.scale)[2*k:], aStride: 2 * p.K, b: n.raw,
+		in: n.sums32(), inRow: n.row, out: n.sums32(), outRow: n.row,
+	}
+	n.words(&w.r, &w.v, k)
+	if first {
+		w.in, w.inRow = s.zeros, 0
+	}
+	direct := n.direct(last)
+	if direct > 0 {
+		d := *w
+		d.last = direct / 2
+		d.out, d.outRow = p.C[n.j0:], p.J
+		s.sweep(&d, n.bad)
+	}
+	w.first, w.last = direct/2, pairsOf(p.I)
+	s.sweep(w, n.bad)
+	if last && p.Bias == nil && n.a.Chunk == 0 {
+		n.copyOut(direct, p.I)
+	}
+}
+
+// runWide forms a block in binary64 lanes; the last one leaves binary32 sums.
+func (n *panel) runWide(plan *plan, k, terms int, first, last bool) {
+	p, s := n.p, &n.two
+	s.panel = grown(s.panel, terms*n.width)
+	widen(s.panel, n.raw)
+	s.sums = grown(s.sums, 2*pairsOf(p.I)*n.width)
+	w := &work[float64]{
+		mode: plan.mode, c: &plan.c, width: n.width, terms: terms,
+		a: pack(s, p, plan.scale)[2*k:], aStride: 2 * p.K, b: s.panel,
+		in: s.sums, inRow: n.width, out: s.sums, outRow: n.width,
+	}
+	n.words(&w.r, &w.v, k)
+	if first {
+		w.in, w.inRow = s.zeros, 0
+	}
+	direct := n.direct(last)
+	if direct > 0 {
+		d := *w
+		d.last = direct / 2
+		d.final, d.finalRow = p.C[n.j0:], p.J
+		s.sweep(&d, n.bad)
+	}
+	w.first, w.last = direct/2, pairsOf(p.I)
+	if last && !(p.Bias != nil && n.bias.double && n.a.Chunk == 0) {
+		w.final, w.finalRow = n.sums32(), n.row
+	}
+	s.sweep(w, n.bad)
+	if last && p.Bias == nil && n.a.Chunk == 0 {
+		n.copyOut(direct, p.I)
+	}
+}
+
+// sums32 is where binary32 sums of terms go: to the result, or to the chunk.
+func (n *panel) sums32() []float32 {
+	if n.a.Chunk > 0 {
+		return n.chunk
+	}
+	return n.result
+}
+
+// words sets the random words of a block that starts at term k.
+func (n *panel) words(r, v *[]uint32, k int) {
+	if len(n.rowWords) > 0 {
+		*r, *v = n.rowWords[2*k:], n.columnWords
+	}
+}
+
+// addBias adds the biases to the waiting sums.
+func (n *panel) addBias() {
+	p := n.p
+	pairs := pairsOf(p.I)
+	var r, v []uint32
+	if len(n.biasRow) > 0 {
+		width := max(n.row, n.width)
+		n.columnWords = grown(n.columnWords, width)
+		fillColumns(n.columnWords, p.Sums.Column, width, p.K, 1, p.FirstJ+uint32(n.j0))
+		r, v = n.biasRow, n.columnWords
+	}
+	if n.bias.double {
+		s := &n.two
+		s.sweep(&work[float64]{
+			mode: n.bias.mode, c: &n.bias.c, width: n.width, last: pairs, terms: 1,
+			a: n.biasA64, aStride: 2, b: s.ones, r: r, v: v,
+			in: s.sums, inRow: n.width, out: s.sums, outRow: n.width, final: n.result, finalRow: n.row,
+		}, n.bad)
+		return
+	}
+	s := &n.one
+	s.sweep(&work[float32]{
+		mode: n.bias.mode, c: &n.bias.c, width: n.row, last: pairs, terms: 1,
+		a: n.biasA, aStride: 2, b: s.ones, r: r, v: v,
+		in: n.result, inRow: n.row, out: n.result, outRow: n.row,
+	}, n.bad)
+}
+
+// copyOut copies finished rows to C, and hands back what is not finite: sums of
+// chunks have no flags of their own.
+func (n *panel) copyOut(first, last int) {
+	for i := first; i < last; i++ {
+		row := n.result[i*n.row:][:n.columns]
+		if n.a.Chunk > 0 {
+			for _, v := range row {
+				if v-v != 0 {
+					n.bad[i/2] = true
+				}
+			}
+		}
+		copy(n.p.C[i*n.p.J+n.j0:], row)
+	}
+}
+
+// handBack hands back runs of rows with a flag.
+func (n *panel) handBack() {
+	for q := 0; q < len(n.bad); q++ {
+		first := q
+		for q < len(n.bad) && n.bad[q] {
+			q++
+		}
+		if q > first {
+			n.redo(2*first, min(2*q, n.p.I), n.j0, n.j0+n.columns)
+		}
+	}
+}

@@ -1,0 +1,145 @@
+package kernel
+
+import "math"
+
+// The portable kernels. Each is a loop over the columns of one row for one term;
+// sweep runs it over the terms and rows of a tile. They use the sequences of the
+// assembly, operation by operation, with explicit conversions so that no compiler
+// fuses what is written apart.
+
+// term is one row of one term: s[j] = mode(s[j], a, b[j], word, words[j]).
+type term[L lanes] func(c *numbers[L], s, b []L, words []uint32, a L, word uint32)
+
+// numbers are the constants as scalars.
+type numbers[L lanes] struct {
+	least, grow, rescale         L
+	sumLeast, sumGrow, sumSplit  L
+	keep, randomMask, randomHalf uint64
+	randomShift                  uint8
+	preShift, baseShift, whole   uint8
+	quantumStep                  uint32
+	limit                        L
+	greatest                     [maxWidth]L // where a mode watches magnitudes
+}
+
+// maxWidth and maxRows bound a tile of any set.
+const (
+	maxWidth = 32
+	maxRows  = 8
+)
+
+// PortableWidth and PortableNarrow are the panels of the portable set.
+const (
+	portableWidth  = 24
+	portableNarrow = 8
+	portableRows   = 4
+)
+
+// Portable is the set of kernels in Go.
+var Portable = &Set{
+	Name: "portable",
+	single: family[float32]{width: portableWidth, narrow: portableNarrow, tiles: portableTiles([]term[float32]{
+		baseline: termBaseline[float32], fmaChain: termFmaChain, rounded: termRounded, both: termBoth,
+		bothScaled: termBothScaled, bothCare: termBothCare, through: termThrough, throughFree: termThroughFree,
+		productThrough: termProductThrough, odd: termOdd, stochastic: termStochastic,
+		stochasticFused: termStochasticFused, stochasticCare: termStochasticCare,
+		stochasticProductCare: termStochasticProductCare,
+	})},
+	double: family[float64]{width: portableWidth, narrow: portableNarrow, tiles: portableTiles([]term[float64]{
+		baseline64: termBaseline[float64], fmaChain64: termFmaChain64, fused: termFused, fusedFree: termFusedFree,
+		stochasticWide: termStochasticWide, stochasticProduct: termStochasticProduct,
+	})},
+}
+
+func portableTiles[L lanes](terms []term[L]) [][2][]shape[L] {
+	tiles := make([][2][]shape[L], len(terms))
+	for m, f := range terms {
+		run := func(t *Tile[L]) { sweep(t, f) }
+		shapes := []shape[L]{{portableRows, run}, {2, run}}
+		tiles[m] = [2][]shape[L]{shapes, shapes}
+	}
+	return tiles
+}
+
+// sweep is the loop that every kernel stands for, see Tile.
+func sweep[L lanes](t *Tile[L], f term[L]) {
+	c := scalars[L](t.C)
+	scale, unscale := laneValue[L](&t.C.Scale), laneValue[L](&t.C.Unscale)
+	var sums [maxRows * maxWidth]L
+	var noWords [maxWidth]uint32
+	w := t.Width
+	for g := range t.Groups {
+		clear(c.greatest[:])
+		for r := range t.Rows {
+			in := t.In[(g*t.Rows+r)*t.InRow:][:w]
+			for j, v := range in {
+				sums[r*w+j] = v * scale
+			}
+		}
+		for k := range t.K {
+			b, words := t.B[k*w:][:w], noWords[:w]
+			if t.V != nil {
+				words = t.V[k*w:][:w]
+			}
+			for r := range t.Rows {
+				at := (g*t.Rows+r)/2*t.AStride + 2*k + r%2
+				var word uint32
+				if t.R != nil {
+					word = t.R[at]
+				}
+				f(&c, sums[r*w:][:w], b, words, t.A[at], word)
+			}
+		}
+		t.Flags[g] = storeGroup(t, &c, sums[:t.Rows*w], g, unscale)
+	}
+}
+
+// storeGroup writes a group's sums and reports whether one of them is not finite or
+// stood in a column whose greatest magnitude reached the limit.
+func storeGroup[L lanes](t *Tile[L], c *numbers[L], sums []L, g int, unscale L) uint8 {
+	flag, w := uint8(0), t.Width
+	for i, s := range sums {
+		r, j := g*t.Rows+i/w, i%w
+		if c.greatest[j] >= c.limit {
+			s = L(math.NaN())
+		}
+		if s-s != 0 {
+			flag = 1
+		}
+		s = L(s*unscale) + 0
+		if t.Final != nil {
+			t.Final[r*t.FinalRow+j] = float32(s)
+		} else {
+			t.Out[r*t.OutRow+j] = s
+		}
+	}
+	return flag
+}
+
+// laneValue is a constant as a number of the lane.
+func laneValue[L lanes](v *vector) L {
+	var l L
+	if _, ok := any(l).(float32); ok {
+		return L(v.single())
+	}
+	return L(v.double())
+}
+
+// laneBits is a constant as an integer of the lane's width.
+func laneBits[L lanes](v *vector) uint64 {
+	var l L
+	if _, ok := any(l).(float32); ok {
+		return uint64(v[0])
+	}
+	return v.bits64()
+}
+
+func scalars[L lanes](c *Constants) numbers[L] {
+	return numbers[L]{
+		least: laneValue[L](&c.Least), grow: laneValue[L](&c.Grow), rescale: laneValue[L](&c.Rescale),
+		sumLeast: laneValue[L](&c.SumLeast), sumGrow: laneValue[L](&c.SumGrow), sumSplit: laneValue[L](&c.SumSplit),
+		keep: laneBits[L](&c.Keep), randomMask: laneBits[L](&c.RandomMask), randomHalf: laneBits[L](&c.RandomHalf),
+		randomShift: uint8(c.RandomShift[0]), preShift: uint8(c.PreShift[0]), baseShift: uint8(c.BaseShift[0]),
+		whole: uint8(c.WholeShift[0]), quantumStep: c.QuantumStep[0], limit: laneValue[L](&c.Limit),
+	}
+}

@@ -1,0 +1,26 @@
+package kernel
+
+import "ulpine/quant/random"
+
+// Columns yields the right-hand operand of a product by rectangles.
+type Columns[T lanes] interface {
+	// Pack writes B[k, j] for k0 <= k < k1, j0 <= j < j1 to
+	// dst[(k-k0)*width + (j-j0)], zero for padded terms and for columns beyond j1.
+	Pack(dst []T, width, k0, k1, j0, j1 int)
+}
+
+// Streams are the random words of the additions: word k of lane i for the rows, of
+// lane j for the columns.
+type Streams struct{ Row, Column random.Draws }
+
+// Product is one product of matrices C[i,j] = sum over k of A[i,k] B[k,j].
+type Product[T lanes] struct {
+	I, J, K    int
+	A          []T // A[i,k] is A[i*ARow + k*ACol]
+	ARow, ACol int
+	B          Columns[T]
+	C          []T // I x J, row-major
+	Bias       []T // nil, or I values added to the finished sums of their row
+	Sums       Streams
+	FirstJ     uint32 // number of column 0 among the lanes of Sums.Column
+}

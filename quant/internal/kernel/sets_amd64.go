@@ -1,0 +1,31 @@
+//go:build !purego
+
+package kernel
+
+import "golang.org/x/sys/cpu"
+
+// AVX2 and AVX512 are the sets of kernels in assembly.
+var (
+	AVX2 = &Set{
+		Name:   "avx2",
+		single: family[float32]{width: widthAVX232, narrow: narrowAVX232, tiles: tilesAVX232},
+		double: family[float64]{width: widthAVX264, narrow: narrowAVX264, tiles: tilesAVX264},
+	}
+	AVX512 = &Set{
+		Name:   "avx512",
+		single: family[float32]{width: widthAVX51232, narrow: narrowAVX51232, tiles: tilesAVX51232},
+		double: family[float64]{width: widthAVX51264, narrow: narrowAVX51264, tiles: tilesAVX51264},
+	}
+)
+
+// supported returns the sets that the processor can run, the fastest first.
+func supported() []*Set {
+	sets := []*Set{Portable}
+	if cpu.X86.HasAVX2 && cpu.X86.HasFMA {
+		sets = append([]*Set{AVX2}, sets...)
+		if cpu.X86.HasAVX512F && cpu.X86.HasAVX512BW && cpu.X86.HasAVX512DQ && cpu.X86.HasAVX512VL {
+			sets = append([]*Set{AVX512}, sets...)
+		}
+	}
+	return sets
+}
