@@ -20,8 +20,9 @@ func describe(l *layout) *results.Study {
 		Metric: p.Claim.Metric, Margin: p.Claim.Margin, Confidence: p.Claim.Confidence,
 		Claim: l.claim, Planned: p.Replicates.Count,
 	}
+	bits := widths(p)
 	for i := range p.Arms {
-		s.Arms = append(s.Arms, describeArm(p, &p.Arms[i]))
+		s.Arms = append(s.Arms, describeArm(&p.Arms[i], bits[i]))
 	}
 	s.Warnings = append(s.Warnings, p.Warnings...)
 	s.Warnings = append(s.Warnings, p.Task.Warnings...)
@@ -31,10 +32,11 @@ func describe(l *layout) *results.Study {
 	return s
 }
 
-func describeArm(p *plan.Plan, a *plan.Arm) results.Arm {
+// describeArm is an arm for print; bits is the mean width of its stored values.
+func describeArm(a *plan.Arm, bits float64) results.Arm {
 	arm := results.Arm{
 		Name: a.Name, Slug: a.Slug, Baseline: a.Baseline, Summary: a.Summary,
-		LossScale: a.LossScale, Bits: meanBits(p, a),
+		LossScale: a.LossScale, Bits: bits,
 	}
 	for _, s := range a.Settings {
 		arm.Settings = append(arm.Settings, results.Setting(s))
@@ -80,58 +82,6 @@ func quoted(path string) string {
 		return "'" + strings.ReplaceAll(path, "'", `'\''`) + "'"
 	}
 	return path
-}
-
-// meanBits is the mean width in bits of a value that a training step stores,
-// weighted by how many of each there are in a full batch: inputs, activations,
-// output errors and gradients of a batch; masters, gradients and states of
-// parameters; working copies where their format is not the master's.
-func meanBits(p *plan.Plan, a *plan.Arm) float64 {
-	batch := max(1, min(a.Training.Batch, p.Task.Train))
-	masters := map[int]string{}
-	for _, s := range a.Settings {
-		if s.Point == "update.master" {
-			masters[s.Layer] = s.Format
-		}
-	}
-	var bits, values float64
-	for _, s := range a.Settings {
-		n := storedValues(p, s, batch)
-		if s.Point == "forward.weight" && masters[s.Layer] == s.Format {
-			n = 0
-		}
-		bits += float64(n * s.Bits)
-		values += float64(n)
-	}
-	return bits / max(values, 1)
-}
-
-// storedValues is how many values are stored at a rounding point; 0 where none
-// is, inside sums and products.
-func storedValues(p *plan.Plan, s plan.Setting, batch int) int {
-	if s.Layer < 0 {
-		switch s.Point {
-		case "input":
-			return batch * volume(p.Network.Input)
-		case "loss.gradient":
-			return batch * p.Network.Outputs()
-		}
-		return 0
-	}
-	layer := &p.Network.Layers[s.Layer]
-	parameters := 0
-	for _, param := range layer.Params {
-		parameters += volume(param.Shape)
-	}
-	switch s.Point {
-	case "forward.weight", "weight_gradient.result", "update.state", "update.master":
-		return parameters
-	case "forward.activation":
-		return batch * volume(layer.Out)
-	case "input_gradient.result":
-		return batch * volume(layer.In)
-	}
-	return 0
 }
 
 func volume(shape []int) int {

@@ -29,6 +29,12 @@
 // about the same study, and shows. A plan with another arm is another study; the
 // store tells it how many of its runs were there before its claim.
 //
+// # Costs
+//
+// Costs hands a plan's shapes and resolved points to the cost model of package
+// results/cost, without running anything. The bits of an arm in a study are that
+// model's bits a value in training memory.
+//
 // # Ends
 //
 // A run that fails, by an error or a panic, is stored as failed with its cause;

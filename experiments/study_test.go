@@ -2,7 +2,6 @@ package experiments
 
 import (
 	"context"
-	"math"
 	"slices"
 	"strings"
 	"testing"
@@ -91,23 +90,6 @@ func checkDescription(t *testing.T, study *results.Study) {
 	}
 	if b := study.Arms[1].Bits; b != 16 {
 		t.Errorf("bf16 everywhere takes %v bits a value", b)
-	}
-}
-
-// TestMeanBits counts by hand: conv 128 -> 2 x 15 with 20 parameters, ReLU,
-// dense 30 -> 5 with 155; batch 16.
-func TestMeanBits(t *testing.T) {
-	p := tinyPlan(t, "[[arm]]\nname = \"x\"\nforward.activation = \"E4M3\"\nforward.weight = \"bf16\"\n")
-	a := &p.Arms[len(p.Arms)-1]
-	const params, batch = 20 + 155, 16
-	bits8 := batch * (30 + 30 + 5)
-	bits16 := params // working copies, apart from the masters
-	// input, output error, gradient of the dense layer's input, which passes ReLU
-	// without arithmetic
-	bits32 := batch*(128+5+30) + 3*params // gradient, state, master
-	want := float64(8*bits8+16*bits16+32*bits32) / float64(bits8+bits16+bits32)
-	if got := meanBits(p, a); math.Abs(got-want) > 1e-12 {
-		t.Errorf("%v bits a value, want %v", got, want)
 	}
 }
 

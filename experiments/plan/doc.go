@@ -71,6 +71,23 @@
 // tensor it is taken from has that format already, is resolved to a reused one:
 // arms that compute the same bits have the same canonical text.
 //
+// # Cost tables
+//
+// A machine's and an energy table are files of their own, read by the same
+// reader with the same errors; what their figures must be like is the cost
+// model's to say, and a table knows the line of each field for it:
+//
+//	[machine]              name, date, source, bandwidth (bytes a second), cache
+//	                       (bytes), elementwise, random_bits (a second), absent
+//	[[machine.rate]]       operands, sum, multiply_adds (a second), source
+//	[[machine.format]]     name, family, bits, exponent, fraction, block,
+//	                       scale_bits, tensor_bits
+//	[energy]               name, date, source, process, memory_per_64_bits,
+//	                       random_bit, uses_per_read, notes (picojoules)
+//	[[energy.operation]]   format, multiply, add, source
+//	[[energy.cache]]       bytes, per_64_bits, source
+//	[[energy.format]]      as of a machine
+//
 // # Errors and warnings
 //
 // What is wrong with a plan is a *PlanError, or Errors for several: file, line,

@@ -1,0 +1,232 @@
+package experiments
+
+import (
+	"fmt"
+	"math"
+	"slices"
+	"strings"
+
+	"ulpine/experiments/plan"
+	"ulpine/results/cost"
+	"ulpine/trainer"
+)
+
+// Costs works out what every arm of a plan but the baseline would cost on a
+// machine, beside the same training in FP32. Nothing is trained, no data drawn.
+// An arm that overrides batch or optimizer is set beside an FP32 training of the
+// same batch and optimizer, which a warning says. It errs when a table makes no
+// sense (cost.FieldErrors takes that apart) or an optimizer's costs are unknown.
+func Costs(p *plan.Plan, machine cost.Machine, energy cost.EnergyTable) (*cost.Result, error) {
+	return estimate(p, p.Arms[1:], machine, energy)
+}
+
+// estimate is Costs for some arms of a plan.
+func estimate(p *plan.Plan, arms []plan.Arm, machine cost.Machine, energy cost.EnergyTable) (*cost.Result, error) {
+	network := costNetwork(&p.Network)
+	shared, err := costInput(p, &p.Training, network, machine, energy)
+	if err != nil {
+		return nil, err
+	}
+	var own []int // arms of another batch or optimizer
+	for i := range arms {
+		if !sameStep(&arms[i].Training, &p.Training) {
+			own = append(own, i)
+			continue
+		}
+		shared.Arms = append(shared.Arms, costArm(p, &arms[i]))
+	}
+	r, err := cost.Estimate(shared)
+	if err != nil {
+		return nil, err
+	}
+	for _, at := range own { // ascending, so that each lands in its place of the plan
+		a := &arms[at]
+		in, err := costInput(p, &a.Training, network, machine, energy)
+		if err != nil {
+			return nil, fmt.Errorf("arm %q: %w", a.Name, err)
+		}
+		in.Arms = []cost.Arm{costArm(p, a)}
+		one, err := cost.Estimate(in)
+		if err != nil {
+			return nil, err
+		}
+		r.Arms = slices.Insert(r.Arms, at, one.Arms[0])
+		r.Warnings = append(r.Warnings, fmt.Sprintf(
+			"%s trains with %s and a batch of %d, not with the plan's: it is set beside FP32 with the same, and the answer leaves it out",
+			a.Name, in.Optimizer.Name, in.Batch))
+	}
+	return r, nil
+}
+
+// widths are the mean bits of a value in training memory, one an arm, the
+// baseline included; NaN where the model has no answer.
+func widths(p *plan.Plan) []float64 {
+	all := slices.Repeat([]float64{math.NaN()}, len(p.Arms))
+	machine, _ := cost.FindMachine(cost.DefaultMachine) // memory depends on no machine
+	r, err := estimate(p, p.Arms, machine, cost.DefaultEnergy())
+	if err != nil {
+		return all
+	}
+	for i := range all {
+		all[i] = r.Arms[i].Memory.Width
+	}
+	return all
+}
+
+// sameStep reports whether a training step has the same shapes and operations.
+func sameStep(a, b *trainer.Training) bool {
+	x, xerr := costOptimizer(a.Optimizer)
+	y, yerr := costOptimizer(b.Optimizer)
+	return a.Batch == b.Batch && xerr == nil && yerr == nil && x.Name == y.Name
+}
+
+// costInput is everything the model needs but the arms.
+func costInput(p *plan.Plan, t *trainer.Training, n cost.Network, m cost.Machine, e cost.EnergyTable) (*cost.Input, error) {
+	optimizer, err := costOptimizer(t.Optimizer)
+	if err != nil {
+		return nil, err
+	}
+	batch := t.Batch
+	if p.Task.Train > 0 {
+		batch = min(batch, p.Task.Train)
+	}
+	return &cost.Input{Network: n, Optimizer: optimizer, Batch: max(1, batch), Machine: m, Energy: e}, nil
+}
+
+// costOptimizer is an optimizer's number of states and operations.
+func costOptimizer(o trainer.Optimizer) (cost.Optimizer, error) {
+	switch o.Kind {
+	case "sgd":
+		if o.Momentum == 0 {
+			return cost.SGD, nil
+		}
+		return cost.Momentum, nil
+	case "nesterov":
+		return cost.Nesterov, nil
+	case "adam":
+		return cost.Adam, nil
+	case "adamw":
+		return cost.AdamW, nil
+	}
+	return cost.Optimizer{}, fmt.Errorf("the cost model does not know the optimizer %q; it knows sgd, nesterov, adam, adamw", o.Kind)
+}
+
+// costNetwork is a network as the cost model sees it.
+func costNetwork(n *trainer.Network) cost.Network {
+	layers := make([]cost.Layer, len(n.Layers))
+	for i := range n.Layers {
+		layers[i] = costLayer(&n.Layers[i])
+	}
+	return cost.Network{Layers: layers}
+}
+
+// costLayer counts for one example, which is what a Spec does too.
+func costLayer(s *trainer.Spec) cost.Layer {
+	l := cost.Layer{
+		Name: s.Name, Kind: s.Kind, Inputs: uint64(volume(s.In)), Outputs: uint64(volume(s.Out)),
+		Work:  cost.Work(s.MACs),
+		Terms: cost.Work{Forward: uint64(s.Sums.Forward), InputGradient: uint64(s.Sums.InputGradient), WeightGradient: uint64(s.Sums.WeightGradient)},
+	}
+	for _, p := range s.Params {
+		if p.FanIn > 0 { // enters products
+			l.Weights += uint64(volume(p.Shape))
+		} else {
+			l.Biases += uint64(volume(p.Shape))
+		}
+	}
+	if len(s.Params) > 0 { // shared scales run along the axis that is summed over
+		l.InAxis, l.OutAxis = uint64(s.In[0]), uint64(s.Out[0])
+		if len(s.Out) == 1 { // dense: it reads its input row-major
+			l.InAxis = l.Inputs
+		}
+	}
+	return l
+}
+
+// costArm is an arm as the cost model sees it: only the points that its network
+// computes with are filled in.
+func costArm(p *plan.Plan, a *plan.Arm) cost.Arm {
+	arm := cost.Arm{
+		Name: a.Name, Slug: a.Slug, Input: costPoint(a.Arithmetic.Input), Loss: costPoint(a.Arithmetic.LossGradient),
+		Layers:     make([]cost.Assignment, len(p.Network.Layers)),
+		LossScaled: a.Arithmetic.LossScale.Kind != trainer.NoScale,
+	}
+	for i := range arm.Layers {
+		from := &a.Arithmetic.Layers[i]
+		for _, id := range p.Network.PointsOf(i) {
+			fill(&arm.Layers[i], from, id)
+		}
+	}
+	return arm
+}
+
+// fill copies one point of a layer. The sum of a phase brings its product, its
+// outer sum and its order along.
+func fill(to *cost.Assignment, from *trainer.Arithmetic, id trainer.PointID) {
+	switch id {
+	case trainer.ForwardWeight:
+		to.Weight = costPoint(from.Weight)
+	case trainer.ForwardActivation:
+		to.Activation = costPoint(from.Activation)
+	case trainer.ForwardSum:
+		to.Forward = costSums(&from.Forward)
+	case trainer.InputGradientWeight:
+		to.InputGradient.First = costPointer(from.InputGradient.First)
+	case trainer.InputGradientGradient:
+		to.InputGradient.Gradient = costPointer(from.InputGradient.Gradient)
+	case trainer.InputGradientSum:
+		to.InputGradient.Sums = costSums(&from.InputGradient.Sums)
+	case trainer.InputGradientResult:
+		to.InputGradient.Result = costPoint(from.InputGradient.Result)
+	case trainer.WeightGradientActivation:
+		to.WeightGradient.First = costPointer(from.WeightGradient.First)
+	case trainer.WeightGradientGradient:
+		to.WeightGradient.Gradient = costPointer(from.WeightGradient.Gradient)
+	case trainer.WeightGradientSum:
+		to.WeightGradient.Sums = costSums(&from.WeightGradient.Sums)
+	case trainer.WeightGradientResult:
+		to.WeightGradient.Result = costPoint(from.WeightGradient.Result)
+	case trainer.UpdateState:
+		for _, s := range from.States {
+			to.States = append(to.States, costPoint(s))
+		}
+	case trainer.UpdateStep:
+		to.Step = costPoint(from.Step)
+	case trainer.UpdateMaster:
+		to.Master = costPoint(from.Master)
+	}
+}
+
+// costSums is an accumulation; the model's words of orders are a plan's.
+func costSums(a *plan.Accumulate) cost.Sums {
+	word, _, _ := strings.Cut(a.Order.String(), "(")
+	return cost.Sums{
+		Product: costPointer(a.Product), Sum: costPoint(a.Sum), Outer: costPointer(a.Outer),
+		Order: cost.Order(word), K: a.Order.K, Through32: a.Through32,
+	}
+}
+
+func costPointer(p *plan.Point) *cost.Point {
+	if p == nil {
+		return nil
+	}
+	c := costPoint(*p)
+	return &c
+}
+
+// costPoint is a format's bits and what a rounding to it draws.
+func costPoint(p plan.Point) cost.Point {
+	return cost.Point{Format: costFormat(p.Format), RandomBits: plan.RandomBits(p)}
+}
+
+// costFormat is a format by its bit counts; one without exponent bits is an
+// integer to the arithmetic.
+func costFormat(f plan.Format) cost.Format {
+	l := f.Limits()
+	if l.Exponent == 0 {
+		return cost.Fixed(plan.ShortName(f), l.Bits)
+	}
+	c := cost.Plain(plan.ShortName(f), l.Exponent, l.Fraction)
+	c.Bits = l.Bits
+	return c
+}
