@@ -4,15 +4,18 @@ import "ulpine/quant/internal/kernel"
 
 // fast forms products with the kernels, where all points have kernels; what those
 // hand back, and all other arithmetic, is left to the engine.
-type fast struct {
-	kernel *kernel.Multiplier
+type fast[T Element] struct {
+	kernel         *kernel.Multiplier
+	owner          *Multiplier[T]
+	product        kernel.Product[float32]
+	products, sums *Counts
+	redo           func(i0, i1, j0, j1 int)
 }
 
 // newFast returns the fast path of acc for tensors of float32, nil where there is
 // none.
-func newFast[T Element](acc Accumulate) *fast {
-	var t T
-	if _, narrow := any(t).(float32); !narrow {
+func newFast[T Element](owner *Multiplier[T], acc Accumulate) *fast[T] {
+	if _, narrow := any(owner).(*Multiplier[float32]); !narrow {
 		return nil
 	}
 	a, ok := kernelArithmetic(acc)
@@ -23,7 +26,9 @@ func newFast[T Element](acc Accumulate) *fast {
 	if k == nil {
 		return nil
 	}
-	return &fast{kernel: k}
+	f := &fast[T]{kernel: k, owner: owner}
+	f.redo = f.redoRows // bound once: a product allocates nothing
+	return f
 }
 
 // kernelArithmetic translates an accumulation; false where the kernels lack a
@@ -79,33 +84,37 @@ func kernelSum(p *Point, through32 bool) (s kernel.Sum, ok bool) {
 	return s, true
 }
 
-// mulFast forms the product with the kernels; false where they do not serve.
-func (m *Multiplier[T]) mulFast(p *Product[T], products, sums *Counts) bool {
-	narrow, ok := any(p).(*Product[float32])
-	if m.fast == nil || !ok || p.Scale != nil {
+// mul forms the owner's product; false where the kernels do not serve.
+func (f *fast[T]) mul(products, sums *Counts) bool {
+	p, narrow := any(&f.owner.work).(*Product[float32])
+	if !narrow || p.Scale != nil {
 		return false
 	}
-	m.fast.kernel.Mul(&kernel.Product[float32]{
-		I: p.I, J: p.J, K: p.K, A: narrow.A.Data, ARow: p.A.Row, ACol: p.A.Col, B: narrow.B, C: narrow.C,
-		Bias: narrow.Bias, Sums: kernel.Streams(p.Sums), FirstJ: uint32(p.FirstJ),
-	}, func(i0, i1, j0, j1 int) {
-		b := block[T]{Multiplier: m, p: p, j0: j0, width: j1 - j0, products: products, sums: sums}
-		b.formRows(i0, i1)
-	})
+	f.products, f.sums = products, sums
+	f.product = kernel.Product[float32]{
+		I: p.I, J: p.J, K: p.K, A: p.A.Data, ARow: p.A.Row, ACol: p.A.Col, B: p.B, C: p.C,
+		Bias: p.Bias, Sums: kernel.Streams(p.Sums), FirstJ: uint32(p.FirstJ),
+	}
+	f.kernel.Mul(&f.product, f.redo)
+	f.product = kernel.Product[float32]{}
+	f.products, f.sums = nil, nil
 	return true
 }
 
-// formRows forms rows i0 <= i < i1 of the block in the engine or in exact reals.
-func (b *block[T]) formRows(i0, i1 int) {
-	p := b.p
+// redoRows forms rows i0 <= i < i1 of columns j0 <= j < j1 in the engine or in exact
+// reals.
+func (f *fast[T]) redoRows(i0, i1, j0, j1 int) {
+	m, p := f.owner, &f.owner.work
+	m.block = block[T]{Multiplier: m, p: p, j0: j0, width: j1 - j0, products: f.products, sums: f.sums}
+	b := &m.block
 	b.slab = grown(b.slab, p.K*b.width)
-	p.B.Pack(b.slab, b.width, 0, p.K, b.j0, b.j0+b.width)
+	p.B.Pack(b.slab, b.width, 0, p.K, j0, j1)
 	b.line = grown(b.line, p.K)
 	for i := i0; i < i1; i++ {
 		for k := range b.line {
 			b.line[k] = p.A.At(i, k)
 		}
-		to := p.C[i*p.J+b.j0:][:b.width]
+		to := p.C[i*p.J+j0:][:b.width]
 		if !b.engineRow(to, i) {
 			b.referenceRow(to, i)
 		}

@@ -10,7 +10,10 @@ func (m *Multiplier[T]) mul(products, sums *Counts) {
 		m.block = block[T]{Multiplier: m, p: p, j0: j0, width: min(wide, p.J-j0), products: products, sums: sums}
 		m.block.form()
 	}
-	// Keep no hold on the caller's tensors.
+}
+
+// release lets go of the caller's tensors.
+func (m *Multiplier[T]) release() {
 	m.work, m.block = Product[T]{}, block[T]{}
 	if m.engine != nil {
 		m.engine.columns = nil

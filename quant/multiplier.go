@@ -6,7 +6,7 @@ import "fmt"
 // memory and serves one goroutine at a time.
 type Multiplier[T Element] struct {
 	ref       reference[T]
-	fast      *fast      // nil where the kernels do not serve
+	fast      *fast[T]   // nil where the kernels do not serve
 	native    *native[T] // nil where the machine's own arithmetic does not serve
 	engine    *engine    // nil where a point has no quick rounding
 	sumEngine *engine    // engine for sums without products
@@ -72,7 +72,8 @@ func NewMultiplier[T Element](acc Accumulate) (*Multiplier[T], error) {
 			return nil, fmt.Errorf("quant: sums of format %s do not fit tensors of float32: use float64", p.Format)
 		}
 	}
-	m := &Multiplier[T]{ref: newReference[T](acc), fast: newFast[T](acc), native: newNative[T](acc), engine: newEngine(acc)}
+	m := &Multiplier[T]{ref: newReference[T](acc), native: newNative[T](acc), engine: newEngine(acc)}
+	m.fast = newFast(m, acc)
 	acc.Product = nil
 	m.sumEngine = newEngine(acc)
 	return m, nil
@@ -82,7 +83,10 @@ func NewMultiplier[T Element](acc Accumulate) (*Multiplier[T], error) {
 func (m *Multiplier[T]) Mul(p Product[T], products, sums *Counts) {
 	p.check()
 	m.work = p
-	m.mul(products, sums)
+	if m.fast == nil || !m.fast.mul(products, sums) {
+		m.mul(products, sums)
+	}
+	m.release()
 }
 
 // SumRows forms sums of terms without products: bias gradients, statistics.

@@ -32,6 +32,7 @@ type Multiplier struct {
 	columnWords []uint32
 	result      []float32 // finished or waiting binary32 sums
 	chunk       []float32
+	panel       panel
 	bad         []bool // pairs of rows to be handed back
 }
 
@@ -132,7 +133,14 @@ func (m *Multiplier) Mul(p *Product[float32], redo func(i0, i1, j0, j1 int)) {
 	for j := 0; j < p.J; {
 		j += m.formPanel(j)
 	}
+	m.release()
+}
+
+// release lets go of the caller's tensors.
+func (m *Multiplier) release() {
 	m.p, m.redo = nil, nil
+	m.panel = panel{}
+	m.one.work, m.two.work = work[float32]{}, work[float64]{}
 }
 
 // begin prepares what all panels share.
@@ -160,12 +168,11 @@ func (m *Multiplier) packBias(pairs int) {
 		m.biasRow = grown(m.biasRow, 2*pairs)
 		fillRows(m.biasRow, p.Sums.Row, p.I, p.K, 1)
 	}
-	one := Product[float32]{I: p.I, K: 1, A: p.Bias, ARow: 1, ACol: 1}
 	if m.bias.double {
 		m.biasA64 = grown(m.biasA64, 2*pairs)
-		packRows(m.biasA64, &one, m.bias.scale)
+		packRows(m.biasA64, p.Bias, 1, 1, p.I, 1, m.bias.scale)
 		return
 	}
 	m.biasA = grown(m.biasA, 2*pairs)
-	packRows(m.biasA, &one, m.bias.scale)
+	packRows(m.biasA, p.Bias, 1, 1, p.I, 1, m.bias.scale)
 }

@@ -6,21 +6,22 @@ import "math"
 // of zeros.
 func pairsOf(n int) int { return (n + 1) / 2 }
 
-// packRows writes A 2^scale by pairs of rows: dst[(i/2*K + k)*2 + i%2].
-func packRows[L, T lanes](dst []L, p *Product[T], scale int) {
+// packRows writes the rows x terms matrix a times 2^scale by pairs of rows:
+// dst[(i/2*terms + k)*2 + i%2].
+func packRows[L, T lanes](dst []L, a []T, row, col, rows, terms, scale int) {
 	factor := L(math.Ldexp(1, scale))
-	for i := 0; i < p.I; i += 2 {
-		to := dst[i*p.K:][:2*p.K]
-		first := p.A[i*p.ARow:]
-		if i+1 == p.I {
-			for k := range p.K {
-				to[2*k], to[2*k+1] = L(first[k*p.ACol])*factor, 0
+	for i := 0; i < rows; i += 2 {
+		to := dst[i*terms:][:2*terms]
+		first := a[i*row:]
+		if i+1 == rows {
+			for k := range terms {
+				to[2*k], to[2*k+1] = L(first[k*col])*factor, 0
 			}
 			continue
 		}
-		second := p.A[(i+1)*p.ARow:]
-		for k := range p.K {
-			to[2*k], to[2*k+1] = L(first[k*p.ACol])*factor, L(second[k*p.ACol])*factor
+		second := a[(i+1)*row:]
+		for k := range terms {
+			to[2*k], to[2*k+1] = L(first[k*col])*factor, L(second[k*col])*factor
 		}
 	}
 }

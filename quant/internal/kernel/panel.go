@@ -17,7 +17,7 @@ type panel struct {
 // panel starts again with lanes that serve the span of all its blocks.
 func (m *Multiplier) formPanel(j0 int) int {
 	for range 2 {
-		n := m.newPanel(j0, m.wide)
+		n := m.startPanel(j0, m.wide)
 		switch n.form() {
 		case formed:
 			n.handBack()
@@ -34,7 +34,7 @@ func (m *Multiplier) formPanel(j0 int) int {
 // formMeasured forms a panel whose blocks do not agree on their lanes.
 func (m *Multiplier) formMeasured(j0 int) int {
 	for _, wide := range []bool{false, true} {
-		n := m.newPanel(j0, wide)
+		n := m.startPanel(j0, wide)
 		span := n.measureAll()
 		n.only = &span
 		if n.form() == formed {
@@ -42,15 +42,17 @@ func (m *Multiplier) formMeasured(j0 int) int {
 			return n.columns
 		}
 	}
-	n := m.newPanel(j0, m.wide)
+	n := m.startPanel(j0, m.wide)
 	m.redo(0, m.p.I, j0, j0+n.columns)
 	return n.columns
 }
 
-func (m *Multiplier) newPanel(j0 int, wide bool) *panel {
+// startPanel sizes the panel that starts at column j0 for lanes of one kind.
+func (m *Multiplier) startPanel(j0 int, wide bool) *panel {
 	left := m.p.J - j0
 	one, two := &m.set.single, &m.set.double
-	n := &panel{Multiplier: m, j0: j0, wide: wide, width: one.panel(left)}
+	n := &m.panel
+	*n = panel{Multiplier: m, j0: j0, wide: wide, width: one.panel(left)}
 	n.row = n.width
 	if wide {
 		n.width, n.row = two.panel(left), one.narrow
@@ -170,7 +172,8 @@ func (n *panel) direct(last bool) int {
 // runSingle forms a block in binary32 lanes.
 func (n *panel) runSingle(plan *plan, k, terms int, first, last bool) {
 	p, s := n.p, &n.one
-	w := &work[float32]{
+	w := &s.work
+	*w = work[float32]{
 		mode: plan.mode, c: &plan.c, width: n.width, terms: terms,
 		a: pack(s, p, plan.scale)[2*k:], aStride: 2 * p.K, b: n.raw,
 		in: n.sums32(), inRow: n.row, out: n.sums32(), outRow: n.row,
@@ -181,13 +184,13 @@ func (n *panel) runSingle(plan *plan, k, terms int, first, last bool) {
 	}
 	direct := n.direct(last)
 	if direct > 0 {
-		d := *w
-		d.last = direct / 2
-		d.out, d.outRow = p.C[n.j0:], p.J
-		s.sweep(&d, n.bad)
+		out := w.out
+		w.last, w.out, w.outRow = direct/2, p.C[n.j0:], p.J
+		s.sweep(n.bad)
+		w.out, w.outRow = out, n.row
 	}
 	w.first, w.last = direct/2, pairsOf(p.I)
-	s.sweep(w, n.bad)
+	s.sweep(n.bad)
 	if last && p.Bias == nil && n.a.Chunk == 0 {
 		n.copyOut(direct, p.I)
 	}
@@ -199,7 +202,8 @@ func (n *panel) runWide(plan *plan, k, terms int, first, last bool) {
 	s.panel = grown(s.panel, terms*n.width)
 	widen(s.panel, n.raw)
 	s.sums = grown(s.sums, 2*pairsOf(p.I)*n.width)
-	w := &work[float64]{
+	w := &s.work
+	*w = work[float64]{
 		mode: plan.mode, c: &plan.c, width: n.width, terms: terms,
 		a: pack(s, p, plan.scale)[2*k:], aStride: 2 * p.K, b: s.panel,
 		in: s.sums, inRow: n.width, out: s.sums, outRow: n.width,
@@ -210,16 +214,15 @@ func (n *panel) runWide(plan *plan, k, terms int, first, last bool) {
 	}
 	direct := n.direct(last)
 	if direct > 0 {
-		d := *w
-		d.last = direct / 2
-		d.final, d.finalRow = p.C[n.j0:], p.J
-		s.sweep(&d, n.bad)
+		w.last, w.final, w.finalRow = direct/2, p.C[n.j0:], p.J
+		s.sweep(n.bad)
+		w.final, w.finalRow = nil, 0
 	}
 	w.first, w.last = direct/2, pairsOf(p.I)
 	if last && !(p.Bias != nil && n.bias.double && n.a.Chunk == 0) {
 		w.final, w.finalRow = n.sums32(), n.row
 	}
-	s.sweep(w, n.bad)
+	s.sweep(n.bad)
 	if last && p.Bias == nil && n.a.Chunk == 0 {
 		n.copyOut(direct, p.I)
 	}
@@ -253,19 +256,21 @@ func (n *panel) addBias() {
 	}
 	if n.bias.double {
 		s := &n.two
-		s.sweep(&work[float64]{
+		s.work = work[float64]{
 			mode: n.bias.mode, c: &n.bias.c, width: n.width, last: pairs, terms: 1,
 			a: n.biasA64, aStride: 2, b: s.ones, r: r, v: v,
 			in: s.sums, inRow: n.width, out: s.sums, outRow: n.width, final: n.result, finalRow: n.row,
-		}, n.bad)
+		}
+		s.sweep(n.bad)
 		return
 	}
 	s := &n.one
-	s.sweep(&work[float32]{
+	s.work = work[float32]{
 		mode: n.bias.mode, c: &n.bias.c, width: n.row, last: pairs, terms: 1,
 		a: n.biasA, aStride: 2, b: s.ones, r: r, v: v,
 		in: n.result, inRow: n.row, out: n.result, outRow: n.row,
-	}, n.bad)
+	}
+	s.sweep(n.bad)
 }
 
 // copyOut copies finished rows to C, and hands back what is not finite: sums of

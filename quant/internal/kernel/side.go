@@ -11,6 +11,7 @@ type side[L lanes] struct {
 	ones   []L
 	tile   *Tile[L]
 	flags  []uint8
+	work   work[L]
 }
 
 // packed is A times 2^scale by pairs of rows.
@@ -50,7 +51,7 @@ func pack[L, T lanes](s *side[L], p *Product[T], scale int) []L {
 	}
 	if !at.ready {
 		at.a = grown(at.a, 2*pairsOf(p.I)*p.K)
-		packRows(at.a, p, scale)
+		packRows(at.a, p.A, p.ARow, p.ACol, p.I, p.K, scale)
 		at.ready = true
 	}
 	return at.a
@@ -74,10 +75,10 @@ type work[L lanes] struct {
 	finalRow      int
 }
 
-// sweep runs the kernels of a mode over the rows, and marks the pairs of rows in
-// which a sum is not finite.
-func (s *side[L]) sweep(w *work[L], bad []bool) {
-	t := s.tile
+// sweep runs the kernels of a mode over the rows of s.work, and marks the pairs of
+// rows in which a sum is not finite.
+func (s *side[L]) sweep(bad []bool) {
+	t, w := s.tile, &s.work
 	*t = Tile[L]{
 		K: w.terms, AStride: w.aStride, B: w.b, V: w.v, InRow: w.inRow, OutRow: w.outRow,
 		FinalRow: w.finalRow, C: w.c, Width: w.width,
