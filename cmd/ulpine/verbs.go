@@ -6,7 +6,6 @@ import "github.com/spf13/cobra"
 func verbs() []*cobra.Command {
 	return []*cobra.Command{
 		newRun(), newResolve(), newList(), newShow(), newVerdicts(), newReport(),
-		newRound(),
 		newCost(),
 	}
 }
