@@ -57,7 +57,7 @@ func (b *bars) worker(n int) *workerBar {
 		return w
 	}
 	w := &workerBar{}
-	w.bar = b.container.New(1,
+	w.bar = b.container.New(0, // a total of its own can only be set on a bar that starts without one
 		mpb.BarStyle().Lbound("").Filler("█").Tip("▌").Padding("·").Rbound(""),
 		mpb.BarRemoveOnComplete(),
 		mpb.BarPriority(n),
