@@ -34,6 +34,9 @@ func (a Accumulate) Check() error {
 	if a.Through32 && a.Order.Kind == Wide {
 		return fmt.Errorf("through binary32 with order wide: a wide sum has one rounding and no adder to pass through")
 	}
+	if a.Order.Kind == Aligned && a.Through32 {
+		return fmt.Errorf("through binary32 with order %s: its additions are those of integers", a.Order)
+	}
 	return a.Order.check(a.Order.K != 0)
 }
 
@@ -50,9 +53,13 @@ func (p Point) checkInside(name string) error {
 
 // check checks the parameter; given says whether there is one.
 func (o Order) check(given bool) error {
-	switch takes := o.Kind == Chunk || o.Kind == Lanes; {
-	case o.Kind > Lanes:
+	switch takes := o.Kind == Chunk || o.Kind == Lanes || o.Kind == Aligned; {
+	case o.Kind > Aligned:
 		return fmt.Errorf("unknown summation %s", o)
+	case o.Kind == Aligned && (o.K < 1 || o.W < 2 || o.W > maxAligned):
+		return fmt.Errorf("order %s: needs groups of at least 1 term and 2 to %d bits, as in aligned(4, 24)", o, maxAligned)
+	case o.Kind != Aligned && o.W != 0:
+		return fmt.Errorf("order %s takes no width", o)
 	case takes && o.K < 1:
 		return fmt.Errorf("order %s: needs a whole number of at least 1, as in %s(64)", o, word(orderWords, uint8(o.Kind), "order"))
 	case !takes && given:
@@ -72,7 +79,11 @@ func NewMultiplier[T Element](acc Accumulate) (*Multiplier[T], error) {
 			return nil, fmt.Errorf("quant: sums of format %s do not fit tensors of float32: use float64", p.Format)
 		}
 	}
-	m := &Multiplier[T]{ref: newReference[T](acc), native: newNative[T](acc), engine: newEngine(acc)}
+	m := &Multiplier[T]{ref: newReference[T](acc)}
+	if acc.Order.Kind > Lanes {
+		return m, nil // the reference alone knows the orders of hardware models
+	}
+	m.native, m.engine = newNative[T](acc), newEngine(acc)
 	m.fast = newFast(m, acc)
 	acc.Product = nil
 	m.sumEngine = newEngine(acc)

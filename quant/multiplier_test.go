@@ -91,7 +91,7 @@ func innerPoints(t testing.TB) []*Point {
 	return p
 }
 
-var testOrders = []Order{{Sequential, 0}, {Chunk, 1}, {Chunk, 5}, {Wide, 0}, {Pairwise, 0}, {Lanes, 1}, {Lanes, 4}, {Chunk, 64}}
+var testOrders = []Order{{}, {Kind: Chunk, K: 1}, {Kind: Chunk, K: 5}, {Kind: Wide}, {Kind: Pairwise}, {Kind: Lanes, K: 1}, {Kind: Lanes, K: 4}, {Kind: Chunk, K: 64}}
 
 // randomProduct draws operands of an I x K by K x J product.
 func randomProduct[T Element](r *rand.Rand, i, j, k int, a, b func(*rand.Rand) float64) Product[T] {

@@ -18,6 +18,16 @@ type Format interface {
 	Bracket(x Real) Bracket
 }
 
+// Coded is a format whose values have codes; every scalar family implements it.
+type Coded interface {
+	Format
+	// Encode returns the code of a value of the format, right-aligned in
+	// Limits().Bits bits; false where x has none.
+	Encode(x float64) (uint64, bool)
+	// Decode returns the value of a code; higher bits are ignored.
+	Decode(code uint64) float64
+}
+
 // Limits are the figures of a format that a reader asks for first.
 type Limits struct {
 	Bits            int     // width of a code
@@ -32,6 +42,8 @@ type Limits struct {
 	DefaultOverflow Overflow
 	Flush           bool // subnormal results become zero of their sign
 	OneZero         bool // no negative zero: zero results are +0
+	NoZero          bool // zero is no value: it is rounded like any other number
+	InfinityIsNaN   bool // an infinity becomes NaN under every policy (posits)
 	Binary32        bool // every finite value is a binary32 number
 }
 
@@ -59,6 +71,7 @@ const (
 	Truncated   Variant = iota // T = floor(f 2^r): biased toward zero by up to 2^-r/2 of a gap
 	Centred                    // T = floor(f 2^r + 1/2)
 	CentredEven                // T = nearest-even(f 2^r): unbiased
+	Equal                      // T = 2^(r-1): up and down equally probable, whatever f
 )
 
 // DefaultRandomBits is r where a plan asks for stochastic rounding without
@@ -70,6 +83,7 @@ type Rounding struct {
 	Mode    Mode
 	Bits    uint8 // random bits r, 1..32; at most 16 inside sums
 	Variant Variant
+	Source  Source // where the random bits come from; the zero value: a word for each rounding
 }
 
 // Overflow says what becomes of a result whose rounding with unbounded exponent
@@ -103,13 +117,16 @@ const (
 	Wide
 	Pairwise
 	Lanes
+	Compensated // Kahan's, see compensated.go
+	Aligned     // groups of products added as integers, see aligned.go
 )
 
-// Order is a summation order with its parameter: the chunk length or the
-// number of lanes.
+// Order is a summation order with its parameters: the chunk length, the number of
+// lanes, or the terms of a group and the bits they are cut to.
 type Order struct {
 	Kind OrderKind
 	K    int
+	W    int // aligned sums: bits of the largest term that are kept
 }
 
 // Accumulate says how a sum of products is formed.

@@ -46,7 +46,7 @@ type quick struct {
 func newQuick(p *Point) quick {
 	q := quick{point: p}
 	f, ok := p.Format.(Float)
-	if !ok {
+	if !ok || !p.Rounding.Source.plain() {
 		return q
 	}
 	l := f.Limits()
@@ -84,7 +84,7 @@ func (q *quick) choose(f Float, r Rounding) {
 		// Deciding on r random bits takes bits r and r+1 of the fraction and, in
 		// the folded case, one bit more for the rest.
 		q.foldable = q.random+2 <= q.drop
-		if q.foldable && !f.flush && r.Variant != CentredEven {
+		if q.foldable && !f.flush && r.Variant <= Centred {
 			q.kind = quickStochastic
 			if r.Variant == Centred {
 				q.centre = 1 << (q.drop - q.random - 1)

@@ -27,13 +27,35 @@ const (
 )
 
 // Bracket encloses a magnitude: Toward <= |x| < Away, two neighbours of the
-// format, and how far x lies between them.
+// format, and how far x lies between them. Where a format lacks zero, the gap
+// around it lies between a negative and a positive value: Toward is then negative,
+// the value of the other sign.
 type Bracket struct {
 	Toward, Away float64 // magnitudes; equal Toward = |x| exactly when Exact
 	Exact        bool
 	Odd          bool   // the code of Toward is odd
 	Fraction     uint64 // floor of the fraction of the gap times 2^64
 	Rest         bool   // the fraction has further bits below
+	// Nearest rounding compares with the middle of the gap, but where OwnTie is set
+	// with a point of the format's own: Side is -1, 0, +1 as |x| is below, at or
+	// above it (posits, whose tie is the next longer pattern).
+	OwnTie bool
+	Side   int8
+}
+
+// side is -1, 0, +1 as the magnitude is below, at or above the point that parts
+// what nearest rounding sends toward zero from what it sends away.
+func (b *Bracket) side() int8 {
+	const half = 1 << 63
+	switch {
+	case b.OwnTie:
+		return b.Side
+	case b.Fraction < half:
+		return -1
+	case b.Fraction == half && !b.Rest:
+		return 0
+	}
+	return 1
 }
 
 // The layout of binary64 (IEEE 754).

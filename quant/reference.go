@@ -36,7 +36,7 @@ var (
 func (a *adder) round(p *Point, x Real, k int) float64 {
 	var w uint32
 	if p.Rounding.Mode == Stochastic {
-		w = a.draws.word(uint32(k), a.i, a.j)
+		w = a.draws.from(p.Rounding.Source, uint32(k), a.i, a.j)
 	}
 	return a.roundWord(p, x, w)
 }
@@ -128,6 +128,10 @@ func (r *reference[T]) sum(a *adder, n int, term func(k int) (Real, bool)) (s fl
 		return r.pairwise(a, n, term)
 	case Lanes:
 		return r.lanes(a, n, term)
+	case Compensated:
+		return r.compensated(a, n, term)
+	case Aligned:
+		return r.aligned(a, n, term)
 	default:
 		return r.sequential(a, 0, n, 1, term), n
 	}

@@ -52,18 +52,19 @@ func (r Rounding) bits() uint {
 // away decides whether a magnitude rounds to the upper end of its bracket. The
 // top r bits of word are the random number of stochastic rounding.
 func (r Rounding) away(b Bracket, neg bool, word uint32) bool {
-	const half = 1 << 63
 	if b.Exact {
 		return false // a representable value never moves
 	}
 	switch r.Mode {
 	case NearestEven:
-		tie := b.Fraction == half && !b.Rest
-		return b.Fraction >= half && (!tie || b.Odd)
+		side := b.side()
+		return side > 0 || side == 0 && b.Odd
 	case NearestAway:
-		return b.Fraction >= half
+		return b.side() >= 0
 	case TowardZero:
-		return false
+		// In the gap around a zero that the format lacks nothing lies toward
+		// zero: the nearest value serves.
+		return b.Toward < 0 && (b.side() > 0 || b.side() == 0 && b.Odd)
 	case Up:
 		return !neg
 	case Down:
@@ -86,6 +87,8 @@ func (r Rounding) threshold(b Bracket, n uint) uint64 {
 		return whole
 	case Centred:
 		return whole + rest>>63
+	case Equal:
+		return 1 << (n - 1)
 	case CentredEven:
 		if rest > half || rest == half && (b.Rest || whole&1 != 0) {
 			whole++
@@ -127,7 +130,7 @@ func (p *Point) Round(x Real, word uint32) (float64, Event) {
 		return nan64, BecameNaN
 	case x.Kind == Infinite:
 		return p.roundInfinity(x.Neg)
-	case x.IsZero():
+	case x.IsZero() && !p.Format.Limits().NoZero:
 		return p.zero(x.Neg), NoEvent
 	}
 	b := p.Format.Bracket(x)
@@ -138,17 +141,25 @@ func (p *Point) Round(x Real, word uint32) (float64, Event) {
 	}
 	l := p.Format.Limits()
 	switch {
-	case !x.Neg && v > l.Max, x.Neg && v > -l.Lowest:
+	case l.beyond(v, x.Neg):
 		if p.policy() == Wrap {
 			return p.Format.(Wrapper).Wrap(x, away), Overflowed
 		}
-		return p.beyond(x.Neg, l)
+		return p.beyond(x.Neg != (v < 0), l)
 	case v == 0, l.Flush && v < l.MinNormal:
 		return p.zero(x.Neg), Underflowed
 	case x.Neg:
 		return -v, NoEvent
 	}
 	return v, NoEvent
+}
+
+// beyond reports whether a magnitude with a sign lies outside the finite values.
+func (l *Limits) beyond(v float64, neg bool) bool {
+	if neg {
+		return v > -l.Lowest || v < -l.Max
+	}
+	return v > l.Max || v < l.Lowest
 }
 
 // zero is the zero of a sign, +0 where the format has but one.
@@ -185,6 +196,8 @@ func (l Limits) extreme(neg bool) float64 {
 func (p *Point) roundInfinity(neg bool) (float64, Event) {
 	l := p.Format.Limits()
 	switch policy := p.policy(); {
+	case l.InfinityIsNaN:
+		return nan64, BecameNaN
 	case policy == Saturate:
 		return l.extreme(neg), Saturated
 	case policy == ToInfinity && l.HasInfinity:
@@ -203,12 +216,15 @@ func (p Point) Check() error {
 	switch {
 	case r.Mode > Stochastic:
 		return fmt.Errorf("%s: unknown rounding %s", p.Format, r.Mode)
-	case r.Mode != Stochastic && (r.Bits != 0 || r.Variant != Truncated):
-		return fmt.Errorf("%s: random bits or a variant with rounding %s: only stochastic rounding has them", p.Format, r.Mode)
+	case r.Mode != Stochastic && (r.Bits != 0 || r.Variant != Truncated || r.Source != Source{}):
+		return fmt.Errorf("%s: random bits, a variant or a source with rounding %s: only stochastic rounding has them", p.Format, r.Mode)
 	case r.Bits > 32:
 		return fmt.Errorf("%s: %d random bits: 1 to 32 can be used", p.Format, r.Bits)
-	case r.Variant > CentredEven:
+	case r.Variant > Equal:
 		return fmt.Errorf("%s: unknown %s of stochastic rounding", p.Format, r.Variant)
+	}
+	if err := r.Source.check(r.bits()); err != nil {
+		return fmt.Errorf("%s: %w", p.Format, err)
 	}
 	_, wraps := p.Format.(Wrapper)
 	if err := checkOverflow(p.Overflow, p.Format.Limits().HasInfinity, wraps); err != nil {

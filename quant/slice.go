@@ -12,7 +12,7 @@ func RoundSlice[D, S Element](dst []D, src []S, p *Point, d Draws, first uint64,
 	sameLength(len(dst), len(src))
 	holds[D](p)
 	q := newQuick(p)
-	w := words{draws: d, on: p.Rounding.Mode == Stochastic}
+	w := newWords(d, p.Rounding)
 	var x [blockLength]float64
 	for at := 0; at < len(src); at += blockLength {
 		s := src[at:min(at+blockLength, len(src))]
@@ -35,7 +35,7 @@ func ScaleSlice[D, S Element](dst []D, alpha float64, src []S, p *Point, d Draws
 	sameLength(len(dst), len(src))
 	holds[D](p)
 	q := newQuick(p)
-	w := words{draws: d, on: p.Rounding.Mode == Stochastic}
+	w := newWords(d, p.Rounding)
 	var x [blockLength]float64
 	for at := 0; at < len(src); at += blockLength {
 		s := src[at:min(at+blockLength, len(src))]
@@ -66,7 +66,7 @@ func addScaled[D, A, B Element](dst []D, a []A, sign float64, b []B, p *Point, d
 	sameLength(len(dst), len(b))
 	holds[D](p)
 	q := newQuick(p)
-	w := words{draws: d, on: p.Rounding.Mode == Stochastic}
+	w := newWords(d, p.Rounding)
 	var x [blockLength]float64
 	for at := 0; at < len(dst); at += blockLength {
 		end := min(at+blockLength, len(dst))
@@ -144,26 +144,6 @@ func store[D Element](dst []D, x []float64) {
 	}
 }
 
-// words yields the words of a stream in ascending order, four a block.
-type words struct {
-	draws Draws
-	on    bool // words are needed at all
-	valid bool
-	block uint64
-	four  [4]uint32
-}
-
-// at returns word n, zero when no words are needed.
-func (w *words) at(n uint64) uint32 {
-	if !w.on {
-		return 0
-	}
-	if !w.valid || n/4 != w.block {
-		w.valid, w.block, w.four = true, n/4, w.draws.Words(n/4)
-	}
-	return w.four[n%4]
-}
-
 func sameLength(a, b int) {
 	if a != b {
 		panic("quant: slices of different length")
@@ -173,6 +153,14 @@ func sameLength(a, b int) {
 // holds panics when tensors of D cannot hold the values of the point: they would
 // be rounded twice.
 func holds[D Element](p *Point) {
+	if _, shared := p.Format.(Blocked); shared {
+		panic("quant: " + p.Format.String() + " shares scales along an axis: round with RoundTensor")
+	}
+	fits[D](p)
+}
+
+// fits is holds for formats with scales, too.
+func fits[D Element](p *Point) {
 	var d D
 	if _, narrow := any(d).(float32); narrow && !Fits32(p.Format) {
 		panic("quant: values of format " + p.Format.String() + " do not fit a slice of float32")

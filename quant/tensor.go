@@ -37,10 +37,10 @@ func RoundTensor[D, S Element](dst []D, src []S, shape Shape, p *Point, d Draws,
 	}
 	sameLength(len(dst), len(src))
 	sameLength(len(src), shape.Outer*shape.Axis*shape.Inner)
-	holds[D](p)
+	fits[D](p)
 	scale := blocked.TensorScale(largestFinite(src))
 	line := make([]float64, shape.Axis)
-	w := words{draws: d, on: p.Rounding.Mode == Stochastic}
+	w := newWords(d, p.Rounding)
 	var word []uint32
 	if w.on {
 		word = make([]uint32, shape.Axis)

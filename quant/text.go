@@ -2,6 +2,7 @@ package quant
 
 import (
 	"fmt"
+	"math"
 	"slices"
 	"strconv"
 	"strings"
@@ -10,9 +11,9 @@ import (
 // The words of the settings, by their constants.
 var (
 	modeWords     = []string{"nearest-even", "nearest-away", "toward-zero", "up", "down", "to-odd", "stochastic"}
-	variantWords  = []string{"truncated", "centred", "centred-even"}
+	variantWords  = []string{"truncated", "centred", "centred-even", "equal"}
 	overflowWords = []string{"default", "infinity", "saturate", "nan", "wrap"}
-	orderWords    = []string{"sequential", "chunk", "wide", "pairwise", "lanes"}
+	orderWords    = []string{"sequential", "chunk", "wide", "pairwise", "lanes", "compensated", "aligned"}
 )
 
 // word returns entry i of a table of words.
@@ -41,7 +42,7 @@ func ParseMode(text string) (Mode, error) {
 	return Mode(i), err
 }
 
-// String returns the variant's word: "truncated", "centred", "centred-even".
+// String returns the variant's word: "truncated", "centred", "centred-even", "equal".
 func (v Variant) String() string { return word(variantWords, uint8(v), "variant") }
 
 // ParseVariant reads a variant's word.
@@ -59,16 +60,23 @@ func ParseOverflow(text string) (Overflow, error) {
 	return Overflow(i), err
 }
 
-// String returns "nearest-even", ..., "stochastic(16)" or "stochastic(8, centred)".
+// String returns "nearest-even", ..., "stochastic(16)", "stochastic(8, centred)" or,
+// with a source of its own, "stochastic(8, centred, share=4, register=12)".
 func (r Rounding) String() string {
-	switch {
-	case r.Mode != Stochastic:
+	if r.Mode != Stochastic {
 		return r.Mode.String()
-	case r.Variant == Truncated:
-		return fmt.Sprintf("stochastic(%d)", r.bits())
-	default:
-		return fmt.Sprintf("stochastic(%d, %s)", r.bits(), r.Variant)
 	}
+	parts := []string{strconv.Itoa(int(r.bits()))}
+	if r.Variant != Truncated {
+		parts = append(parts, r.Variant.String())
+	}
+	if r.Source.Share > 1 {
+		parts = append(parts, fmt.Sprintf("share=%d", r.Source.Share))
+	}
+	if r.Source.Register != 0 {
+		parts = append(parts, fmt.Sprintf("register=%d", r.Source.Register))
+	}
+	return fmt.Sprintf("stochastic(%s)", strings.Join(parts, ", "))
 }
 
 // ParseRounding reads what String writes, and "stochastic" for the default
@@ -93,23 +101,53 @@ func ParseRounding(text string) (Rounding, error) {
 	if !has {
 		return r, nil
 	}
-	n, variant, hasVariant := strings.Cut(arguments, ",")
-	count, err := strconv.Atoi(strings.TrimSpace(n))
+	parts := strings.Split(arguments, ",")
+	count, err := strconv.Atoi(strings.TrimSpace(parts[0]))
 	if err != nil || count < 1 || count > 32 {
 		return Rounding{}, fmt.Errorf("rounding %q: random bits must be 1 to 32", text)
 	}
 	r.Bits = uint8(count)
-	if hasVariant {
-		r.Variant, err = ParseVariant(variant)
+	for _, part := range parts[1:] {
+		if err := r.parsePart(part); err != nil {
+			return Rounding{}, fmt.Errorf("rounding %q: %w", text, err)
+		}
 	}
-	return r, err
+	if err := r.Source.check(r.bits()); err != nil {
+		return Rounding{}, fmt.Errorf("rounding %q: %w", text, err)
+	}
+	return r, nil
 }
 
-// String returns "sequential", "chunk(64)", "wide", "pairwise" or "lanes(8)".
+// parsePart reads a variant, "share=n" or "register=n".
+func (r *Rounding) parsePart(part string) (err error) {
+	key, value, has := strings.Cut(strings.ToLower(strings.TrimSpace(part)), "=")
+	if !has {
+		r.Variant, err = ParseVariant(key)
+		return err
+	}
+	n, err := strconv.Atoi(value)
+	switch {
+	case key != "share" && key != "register":
+		return fmt.Errorf("unknown option %q: a variant (%s), share=n or register=n", key, strings.Join(variantWords, ", "))
+	case err != nil || n < 1 || n > math.MaxUint16:
+		return fmt.Errorf("%s %q: want a whole number from 1 to %d", key, value, math.MaxUint16)
+	case key == "share" && n > 1:
+		r.Source.Share = uint16(n)
+	case key == "register":
+		r.Source.Register = uint8(min(n, math.MaxUint8))
+	}
+	return nil
+}
+
+// String returns "sequential", "chunk(64)", "wide", "pairwise", "lanes(8)",
+// "compensated" or "aligned(4, 24)".
 func (o Order) String() string {
 	w := word(orderWords, uint8(o.Kind), "order")
-	if o.Kind == Chunk || o.Kind == Lanes {
+	switch o.Kind {
+	case Chunk, Lanes:
 		return fmt.Sprintf("%s(%d)", w, o.K)
+	case Aligned:
+		return fmt.Sprintf("%s(%d, %d)", w, o.K, o.W)
 	}
 	return w
 }
@@ -125,12 +163,22 @@ func ParseOrder(text string) (Order, error) {
 		return Order{}, err
 	}
 	o := Order{Kind: OrderKind(kind)}
-	if has {
-		if o.K, err = strconv.Atoi(strings.TrimSpace(arguments)); err != nil {
-			return Order{}, fmt.Errorf("order %q: %q is not a whole number", text, arguments)
+	if !has {
+		return o, o.check(false)
+	}
+	first, second, two := strings.Cut(arguments, ",")
+	if o.K, err = strconv.Atoi(strings.TrimSpace(first)); err != nil {
+		return Order{}, fmt.Errorf("order %q: %q is not a whole number", text, first)
+	}
+	if two != (o.Kind == Aligned) {
+		return Order{}, fmt.Errorf("order %q: only aligned takes two numbers, the terms of a group and their bits, as in aligned(4, 24)", text)
+	}
+	if two {
+		if o.W, err = strconv.Atoi(strings.TrimSpace(second)); err != nil {
+			return Order{}, fmt.Errorf("order %q: %q is not a whole number", text, second)
 		}
 	}
-	return o, o.check(has)
+	return o, o.check(true)
 }
 
 // call splits "name(arguments)".

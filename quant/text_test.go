@@ -51,7 +51,7 @@ func TestTextRoundTrips(t *testing.T) {
 // TestTextDefaults: the short forms.
 func TestTextDefaults(t *testing.T) {
 	r, err := ParseRounding(" Stochastic ")
-	if err != nil || r != (Rounding{Stochastic, DefaultRandomBits, Truncated}) {
+	if err != nil || r != (Rounding{Mode: Stochastic, Bits: DefaultRandomBits}) {
 		t.Errorf("stochastic: %+v, %v", r, err)
 	}
 	p, err := ParsePoint("fp16")
