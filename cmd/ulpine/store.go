@@ -3,6 +3,7 @@ package main
 import (
 	"errors"
 	"fmt"
+	"time"
 
 	"github.com/spf13/cobra"
 
@@ -17,7 +18,11 @@ func storeFlag(cmd *cobra.Command) *string {
 
 // openStore opens a store; what is wrong with the file is the input's fault.
 func openStore(path string, readOnly bool) (*store.Store, error) {
-	s, err := store.Open(path, store.Options{ReadOnly: readOnly})
+	o := store.Options{ReadOnly: readOnly}
+	if readOnly {
+		o.Timeout = 100 * time.Millisecond // then a copy is read
+	}
+	s, err := store.Open(path, o)
 	if err == nil {
 		return s, nil
 	}

@@ -45,8 +45,9 @@
 //
 // Begin marks a run before it starts and Put takes the mark away together with
 // storing the run. A mark that this Store wrote reads *in flight*, one left over
-// by a process that has gone reads *broken off*. The store is held by one
-// process at a time, so there is no third case.
+// by a process that has gone reads *broken off*. The store is written by one
+// process at a time; a reader that finds it held reads a copy of its last
+// committed state, in which the marks of a process that still runs are *in flight*.
 //
 // # Safety
 //

@@ -87,15 +87,80 @@ func TestOpenRefuses(t *testing.T) {
 
 func TestHeld(t *testing.T) {
 	s := open(t)
-	for _, readOnly := range []bool{false, true} {
-		start := time.Now()
-		_, err := Open(s.Path(), Options{ReadOnly: readOnly})
-		if !errors.Is(err, ErrHeld) || !strings.Contains(err.Error(), "another process holds the store") {
-			t.Errorf("read-only %v: %v", readOnly, err)
+	start := time.Now()
+	_, err := Open(s.Path(), Options{})
+	if !errors.Is(err, ErrHeld) || !strings.Contains(err.Error(), "another process holds the store") {
+		t.Errorf("a second writer: %v", err)
+	}
+	if waited := time.Since(start); waited < 800*time.Millisecond || waited > 3*time.Second {
+		t.Errorf("waited %v for the other process, want about 1 s", waited)
+	}
+}
+
+// TestReadWhileHeld reads a store in use: what is committed is there, runs under
+// way read as in flight, and the reader cannot disturb the writer.
+func TestReadWhileHeld(t *testing.T) {
+	s := open(t)
+	stored, flying := run(0, false), run(1, false)
+	put(t, s, stored)
+	if err := s.Begin(flying.Arm, flying.Replicate, flying.Key); err != nil {
+		t.Fatal(err)
+	}
+	put(t, s, run(2, false)) // waits for the disk, and for the mark before it
+	reader := openAt(t, s.Path(), Options{ReadOnly: true, Timeout: 10 * time.Millisecond})
+	entries, err := reader.List(Filter{})
+	if err != nil {
+		t.Fatal(err)
+	}
+	states := map[results.State]int{}
+	for i := range entries {
+		states[entries[i].State]++
+	}
+	if states[results.Stored] != 2 || states[results.InFlight] != 1 || len(entries) != 3 {
+		t.Errorf("read %v", states)
+	}
+	if err := reader.Put(run(3, false)); !errors.Is(err, ErrReadOnly) {
+		t.Errorf("writing to a copy: %v", err)
+	}
+	put(t, s, flying)
+	if _, err := s.Get(flying.Key); err != nil {
+		t.Error(err)
+	}
+}
+
+// TestReadWhileWriting copies a store again and again under a writer that never
+// rests: every copy opens and every run in it reads back whole.
+func TestReadWhileWriting(t *testing.T) {
+	s := open(t)
+	done := make(chan struct{})
+	go func() {
+		defer close(done)
+		for n := range 60 {
+			if err := s.Put(run(n, false)); err != nil {
+				t.Error(err)
+			}
 		}
-		if waited := time.Since(start); waited < 800*time.Millisecond || waited > 3*time.Second {
-			t.Errorf("waited %v for the other process, want about 1 s", waited)
+	}()
+	for busy := true; busy; {
+		select {
+		case <-done:
+			busy = false
+		default:
 		}
+		reader, err := Open(s.Path(), Options{ReadOnly: true, Timeout: time.Millisecond})
+		if err != nil {
+			t.Fatal(err)
+		}
+		entries, err := reader.List(Filter{})
+		if err != nil {
+			t.Fatal(err)
+		}
+		for i := range entries {
+			if _, err := reader.Get(entries[i].Key); err != nil {
+				t.Error(err)
+			}
+		}
+		reader.Close()
 	}
 }
 

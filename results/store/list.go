@@ -185,9 +185,11 @@ func (s *Store) fill(tx *bolt.Tx, e *Entry) (found bool, err error) {
 	return true, nil
 }
 
-// markState: a mark of this session is a run in flight, any other was left over.
+// markState: a mark of this session is a run in flight, any other was left over,
+// unless this is a copy of a store in use and the process that wrote the mark
+// still runs.
 func (s *Store) markState(m mark) results.State {
-	if m.Session == s.session {
+	if m.Session == s.session || s.copied && m.Session != (session{}) && alive(m) {
 		return results.InFlight
 	}
 	return results.BrokenOff

@@ -34,7 +34,9 @@ var (
 )
 
 // Options say how a store is opened. The zero value opens it for writing,
-// creates it if there is none, and waits one second for another process to let go.
+// creates it if there is none, and waits one second for another process to let
+// go. Reading only, a store that another process holds is read from a copy of its
+// last committed state.
 type Options struct {
 	ReadOnly bool
 	Timeout  time.Duration
@@ -46,6 +48,7 @@ type Store struct {
 	db      *bolt.DB
 	options Options
 	session session
+	copied  bool // a copy of a store that another process holds
 
 	mu     sync.RWMutex // guards closed against sending on queue
 	closed bool
@@ -67,10 +70,14 @@ func Open(path string, o Options) (*Store, error) {
 		return nil, err
 	}
 	db, err := openBolt(path, o)
+	copied := o.ReadOnly && errors.Is(err, ErrHeld)
+	if copied {
+		db, err = openCopy(path, o)
+	}
 	if err != nil {
 		return nil, err
 	}
-	s := &Store{path: path, db: db, options: o, session: newSession()}
+	s := &Store{path: path, db: db, options: o, session: newSession(), copied: copied}
 	if err := s.checkVersion(); err != nil {
 		return nil, errors.Join(err, db.Close())
 	}
