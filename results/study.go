@@ -71,6 +71,8 @@ type Arm struct {
 	Bits       float64 // mean bits of a stored value, weighted by tensor sizes
 	LossScale  string
 	Guilty     []string // points ("update.master") found to cause the arm's loss; empty: not looked for
+	Grid       string   // the grid that the arm comes from; empty: the plan spells it out
+	Axes       []Coordinate
 }
 
 // Study is everything a report says: the plan, its arms, their runs, the
@@ -107,5 +109,9 @@ type Study struct {
 	StoreDigest     string
 	CodeVersion     string
 	Rerun           []string // commands
+	Costs           *Costs   // nil: not worked out
+	Volumes         []Volume // of a run, by layer and point; empty: not known
+	Ranges          []Range  // of the formats that histograms are held against
+	Diagnoses       []Diagnosis
 	Written         time.Time
 }
