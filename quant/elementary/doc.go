@@ -1,5 +1,6 @@
 // Package elementary holds the transcendental functions that training, data
-// generation and initialisation may use: Exp, Log, Sin, Cos and Tanh, in binary64.
+// generation and initialisation may use: Exp, Log, Sin, Cos, Tanh, Sigmoid, Erf and
+// Erfc, in binary64.
 //
 // The standard library's versions differ between machines (assembly on some,
 // fused multiply-adds on others), so they have no place where results are

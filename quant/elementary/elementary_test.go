@@ -59,6 +59,13 @@ var functions = []function{
 	{"Tanh/large", Tanh, overBig(bigTanh), 0.55, uniform(-21, 21), []float64{0.125, 0.625, 20}},
 	{"Tanh/medium", Tanh, overBig(bigTanh), 0.55, uniform(-1, 1), nil},
 	{"Tanh/small", Tanh, overBig(bigTanh), 0.55, spread(-40, -3), nil},
+	{"Erf/medium", Erf, overBig(bigErf), 0.7, uniform(-6.1, 6.1), []float64{0.5, 0.53125, 5.96875, 6}},
+	{"Erf/small", Erf, overBig(bigErf), 0.7, spread(-60, -1), nil},
+	{"Erfc/medium", Erfc, overBig(bigErfc), 0.9, uniform(-6, 7), []float64{0.5, -0.5, 0.53125, 7, -6, 5}},
+	{"Erfc/tail", Erfc, overBig(bigErfc), 0.9, uniform(7, 26.5), []float64{7}},
+	{"Sigmoid/medium", Sigmoid, overBig(bigSigmoid), 0.6, uniform(-42, 42), []float64{40, -40}},
+	{"Sigmoid/small", Sigmoid, overBig(bigSigmoid), 0.6, spread(-60, 1), nil},
+	{"Sigmoid/low", Sigmoid, overBig(bigSigmoid), 0.6, uniform(-708, -40), nil},
 }
 
 // TestErrorBounds holds every function to the error its comment states.
@@ -178,6 +185,22 @@ func TestSpecialValues(t *testing.T) {
 		{"Tanh", Tanh, -inf, -1},
 		{"Tanh", Tanh, nan, nan},
 		{"Tanh", Tanh, 5e-324, 5e-324},
+		{"Erf", Erf, 0, 0},
+		{"Erf", Erf, negZero, negZero},
+		{"Erf", Erf, inf, 1},
+		{"Erf", Erf, -inf, -1},
+		{"Erf", Erf, nan, nan},
+		{"Erfc", Erfc, 0, 1},
+		{"Erfc", Erfc, negZero, 1},
+		{"Erfc", Erfc, inf, 0},
+		{"Erfc", Erfc, -inf, 2},
+		{"Erfc", Erfc, nan, nan},
+		{"Erfc", Erfc, 27.3, 0},
+		{"Sigmoid", Sigmoid, 0, 0.5},
+		{"Sigmoid", Sigmoid, negZero, 0.5},
+		{"Sigmoid", Sigmoid, inf, 1},
+		{"Sigmoid", Sigmoid, -inf, 0},
+		{"Sigmoid", Sigmoid, nan, nan},
 	} {
 		if got := c.f(c.x); math.Float64bits(got) != math.Float64bits(c.want) {
 			t.Errorf("%s(%x) = %x, want %x", c.name, c.x, got, c.want)
@@ -190,7 +213,7 @@ func TestSymmetry(t *testing.T) {
 	r := rand.New(rand.NewPCG(22, 0))
 	for range 20000 {
 		x := spread(-30, 30)(r)
-		if Sin(-x) != -Sin(x) || Tanh(-x) != -Tanh(x) || Cos(-x) != Cos(x) {
+		if Sin(-x) != -Sin(x) || Tanh(-x) != -Tanh(x) || Erf(-x) != -Erf(x) || Cos(-x) != Cos(x) {
 			t.Fatalf("%x: not symmetric", x)
 		}
 	}
@@ -250,4 +273,7 @@ func BenchmarkLog(b *testing.B)     { benchmark(b, Log, 0.001, 1) }
 func BenchmarkSin(b *testing.B)     { benchmark(b, Sin, 0, 6.28) }
 func BenchmarkCos(b *testing.B)     { benchmark(b, Cos, 0, 6.28) }
 func BenchmarkTanh(b *testing.B)    { benchmark(b, Tanh, -3, 3) }
+func BenchmarkErf(b *testing.B)     { benchmark(b, Erf, -3, 3) }
+func BenchmarkErfc(b *testing.B)    { benchmark(b, Erfc, -3, 3) }
+func BenchmarkSigmoid(b *testing.B) { benchmark(b, Sigmoid, -6, 6) }
 func BenchmarkSinHuge(b *testing.B) { benchmark(b, Sin, 0x1p100, 0x1p101) }

@@ -24,7 +24,7 @@ func golden() string {
 	for _, f := range []struct {
 		name string
 		f    func(float64) float64
-	}{{"exp", Exp}, {"log", Log}, {"sin", Sin}, {"cos", Cos}, {"tanh", Tanh}} {
+	}{{"exp", Exp}, {"log", Log}, {"sin", Sin}, {"cos", Cos}, {"tanh", Tanh}, {"erf", Erf}, {"erfc", Erfc}, {"sigmoid", Sigmoid}} {
 		for _, x := range goldenArguments {
 			fmt.Fprintf(&b, "%s %x %016x\n", f.name, x, math.Float64bits(f.f(x)))
 		}

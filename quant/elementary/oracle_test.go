@@ -143,6 +143,49 @@ func bigTanh(x *big.Float) *big.Float {
 	return newBig().Quo(newBig().Sub(e, one), newBig().Add(e, one))
 }
 
+// bigErfSlope is 2/sqrt(pi) exp(-x^2).
+func bigErfSlope(x *big.Float) *big.Float {
+	root := new(big.Float).SetPrec(2 * oracleBits).Sqrt(new(big.Float).SetPrec(2 * oracleBits).Set(bigPi))
+	square := newBig().Mul(x, x)
+	two := newBig().Quo(newBig().SetInt64(2), root)
+	return two.Mul(two, bigExp(square.Neg(square)))
+}
+
+// bigErf sums x + 2 x^3/3 + (2 x^2)^2 x/(3 5) + ..., all terms of one sign, times
+// the slope.
+func bigErf(x *big.Float) *big.Float {
+	twice := newBig().SetMantExp(newBig().Mul(x, x), 1)
+	sum, term := newBig().Set(x), newBig().Set(x)
+	for k := int64(3); !negligible(term, sum); k += 2 {
+		term.Mul(term, twice)
+		term.Quo(term, newBig().SetInt64(k))
+		sum.Add(sum, term)
+	}
+	return sum.Mul(sum, bigErfSlope(x))
+}
+
+// bigErfc is 1 - erf, which cancels up to 60 bits below 6 and all of them beyond
+// 14: above 5 the continued fraction of A. M. Legendre, evaluated from far out, x +
+// (1/2)/(x + 1/(x + (3/2)/(x + ...))), under exp(-x^2)/sqrt(pi).
+func bigErfc(x *big.Float) *big.Float {
+	if x.Cmp(bigFloat(5)) < 0 {
+		return newBig().Sub(newBig().SetInt64(1), bigErf(x))
+	}
+	down := newBig().Set(x)
+	for k := int64(250); k > 0; k-- {
+		part := newBig().Quo(newBig().SetMantExp(newBig().SetInt64(k), -1), down)
+		down.Add(x, part)
+	}
+	half := newBig().SetMantExp(bigErfSlope(x), -1)
+	return half.Quo(half, down)
+}
+
+// bigSigmoid is 1/(1 + exp(-x)).
+func bigSigmoid(x *big.Float) *big.Float {
+	one := newBig().SetInt64(1)
+	return newBig().Quo(one, newBig().Add(one, bigExp(newBig().Neg(x))))
+}
+
 // ulps returns |got - want| in units of the last place of want.
 func ulps(got float64, want *big.Float) float64 {
 	if math.IsNaN(got) || math.IsInf(got, 0) {

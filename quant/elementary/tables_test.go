@@ -37,6 +37,7 @@ func tablesSource(t *testing.T) []byte {
 	constants(&b)
 	expTableSource(&b)
 	logTableSource(&b)
+	erfTableSource(&b)
 	source, err := format.Source(b.Bytes())
 	if err != nil {
 		t.Fatal(err)
@@ -70,6 +71,8 @@ func constants(b *bytes.Buffer) {
 		{"halfPi2", p2, "33 bits"},
 		{"halfPi3", p3, "33 bits"},
 		{"halfPi4", p4, ""},
+		{"twoOverRootPiHi", nearest(bigErfSlope(newBig())), "2/sqrt(pi)"},
+		{"twoOverRootPiLo", nearest(minus(bigErfSlope(newBig()), nearest(bigErfSlope(newBig())))), ""},
 	} {
 		fmt.Fprintf(b, "\t%s = %x", c.name, c.value)
 		if c.comment != "" {
@@ -104,6 +107,20 @@ func logTableSource(b *bytes.Buffer) {
 		exact := newBig().Sub(newBig(), bigLog(bigFloat(c)))
 		hi := cut(exact, -42)
 		fmt.Fprintf(b, "{%x, %x, %x},\n", c, hi, nearest(minus(exact, hi)))
+	}
+	fmt.Fprint(b, "}\n\n")
+}
+
+// erfTableSource: row i belongs to the centre 1/2 + i/16.
+func erfTableSource(b *bytes.Buffer) {
+	fmt.Fprint(b, "// erfTable holds erf and erfc at 1/2 + i/16, each the nearest number and what it\n// leaves, and the derivative of erf likewise.\nvar erfTable = [105]erfRow{\n")
+	for i := range 105 {
+		c := bigFloat(0.5 + float64(i)/16)
+		erf := bigErf(c)
+		slope := bigErfSlope(c)
+		erfc := newBig().Sub(newBig().SetInt64(1), erf)
+		fmt.Fprintf(b, "{%x, %x, %x, %x, %x, %x},\n", nearest(erf), nearest(minus(erf, nearest(erf))),
+			nearest(erfc), nearest(minus(erfc, nearest(erfc))), nearest(slope), nearest(minus(slope, nearest(slope))))
 	}
 	fmt.Fprint(b, "}\n")
 }
