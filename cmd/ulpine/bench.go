@@ -151,3 +151,14 @@ func usableBits(what string, p *quant.Point, finest int) error {
 	}
 	return badInput(fmt.Errorf("%d random bits: %s to %s discards at most %d bits, so the others decide nothing; use --random-bits %d", r, what, p.Format, lost, lost))
 }
+
+// lowerBits lowers a default number of random bits to what rounding to the point
+// can use.
+func lowerBits(p *quant.Point, finest int) {
+	if p == nil || p.Rounding.Mode != quant.Stochastic {
+		return
+	}
+	if _, coarsest, ok := places(p.Format); ok && coarsest-finest >= 1 {
+		p.Rounding.Bits = uint8(min(int(p.Rounding.Bits), coarsest-finest))
+	}
+}
