@@ -16,7 +16,7 @@ func (a *assignment) arm(network *trainer.Network, states int) trainer.Arm {
 		Layers:       make([]trainer.Arithmetic, len(network.Layers)),
 	}
 	for i := range arm.Layers {
-		arm.Layers[i] = a.layer(states)
+		arm.Layers[i] = assigned(a.layers[i]).layer(states)
 	}
 	for i := range arm.Layers {
 		reuseOperands(network, &arm, i)
@@ -24,9 +24,12 @@ func (a *assignment) arm(network *trainer.Network, states int) trainer.Arm {
 	return arm
 }
 
-// layer is the assignment as one layer sees it.
-func (a *assignment) layer(states int) trainer.Arithmetic {
-	at := func(id trainer.PointID) quant.Point { return a.slots[id].value.point }
+// assigned are the slots of one layer.
+type assigned []slot
+
+// layer is the arithmetic of one layer.
+func (a assigned) layer(states int) trainer.Arithmetic {
+	at := func(id trainer.PointID) quant.Point { return a[id].value.point }
 	return trainer.Arithmetic{
 		Weight:     at(trainer.ForwardWeight),
 		Activation: at(trainer.ForwardActivation),
@@ -50,8 +53,8 @@ func (a *assignment) layer(states int) trainer.Arithmetic {
 }
 
 // optional is a point of its own copy, or nil where it is unset.
-func (a *assignment) optional(id trainer.PointID) *quant.Point {
-	s := &a.slots[id]
+func (a assigned) optional(id trainer.PointID) *quant.Point {
+	s := &a[id]
 	if !s.set || s.value.exact {
 		return nil
 	}
@@ -61,8 +64,8 @@ func (a *assignment) optional(id trainer.PointID) *quant.Point {
 
 // accumulate is the sum whose product point is given; sum and outer follow it in
 // the order of points.
-func (a *assignment) accumulate(product trainer.PointID) quant.Accumulate {
-	sum := a.slots[product+1].value
+func (a assigned) accumulate(product trainer.PointID) quant.Accumulate {
+	sum := a[product+1].value
 	acc := quant.Accumulate{
 		Product: a.optional(product), Sum: sum.point, Order: sum.order, Through32: sum.through,
 		Outer: a.optional(product + 2),

@@ -20,10 +20,11 @@ type armReader struct {
 
 // readArms returns the baseline and, behind it, the plan's arms.
 func (r *armReader) readArms(root *node) []Arm {
-	base := binary32Everywhere()
+	base := binary32Everywhere(len(r.network.Layers))
 	var scale trainer.LossScale
 	if n := r.table(root, "baseline", `[baseline] with everything = "fp32"`); n != nil {
-		r.readSettings(n, &base, r.formats, []string{"loss_scale"})
+		r.readSettings(n, selection{}, &base, r.formats, []string{"layer", "loss_scale"})
+		r.readLayers(n, &base)
 		if at := n.table["loss_scale"]; at != nil {
 			scale = r.readLossScale(at)
 		}
@@ -38,7 +39,8 @@ func (r *armReader) readArms(root *node) []Arm {
 		arm := Arm{Training: r.training}
 		arm.Name, arm.Slug = r.armName(n, seen)
 		own := base.inherit()
-		r.readSettings(n, &own, r.formats, armKeys)
+		r.readSettings(n, selection{}, &own, r.formats, armKeys)
+		r.readLayers(n, &own)
 		r.readOverrides(n, &arm)
 		armScale := scale
 		if at := n.table["loss_scale"]; at != nil {

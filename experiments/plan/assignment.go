@@ -18,10 +18,19 @@ type slot struct {
 	origin string // its key: "storage", "update.master"; "baseline"
 }
 
-// assignment is a setting for every rounding point, indexed by PointID.
+// assignment is a setting for every rounding point of every layer.
 type assignment struct {
-	slots   []slot
+	slots   []slot   // indexed by PointID: what no layer sets otherwise, input and loss
+	layers  [][]slot // one list a layer of the network
 	spelled []string // the settings in file order, short
+}
+
+// of are the slots of a layer; -1: those of input and loss.
+func (a *assignment) of(layer int) []slot {
+	if layer < 0 {
+		return a.slots
+	}
+	return a.layers[layer]
 }
 
 // isOperand reports whether a point is an operand of a gradient product: unset,
@@ -67,14 +76,17 @@ func allPoints() []trainer.PointID {
 
 // binary32Everywhere is what a baseline is before its settings are read: every
 // point binary32 rounded to nearest-even, products rounded, sums sequential.
-func binary32Everywhere() assignment {
-	a := assignment{slots: make([]slot, len(allPoints()))}
+func binary32Everywhere(layers int) assignment {
+	a := assignment{slots: make([]slot, len(allPoints())), layers: make([][]slot, layers)}
 	for _, id := range allPoints() {
 		a.slots[id] = slot{
 			set:    !isOperand(id) && !isOuter(id),
 			value:  value{point: quant.Point{Format: quant.Binary32}},
 			origin: "default",
 		}
+	}
+	for i := range a.layers {
+		a.layers[i] = slices.Clone(a.slots)
 	}
 	return a
 }
@@ -83,20 +95,28 @@ func binary32Everywhere() assignment {
 // operand that only a shorthand of the baseline set is reused again: its arm may
 // have set the tensor it is taken from.
 func (a assignment) inherit() assignment {
-	b := assignment{slots: slices.Clone(a.slots)}
-	for id := range b.slots {
-		s := &b.slots[id]
+	b := assignment{slots: passedOn(a.slots), layers: make([][]slot, len(a.layers))}
+	for i := range b.layers {
+		b.layers[i] = passedOn(a.layers[i])
+	}
+	return b
+}
+
+func passedOn(slots []slot) []slot {
+	own := slices.Clone(slots)
+	for id := range own {
+		s := &own[id]
 		if isOperand(trainer.PointID(id)) && s.rank.what < pointwise {
 			s.set = false
 		}
 		s.rank, s.at, s.origin = specificity{}, nil, "baseline"
 	}
-	return b
+	return own
 }
 
 // put applies one setting to one point, or reports a setting of equal rank.
-func (a *assignment) put(id trainer.PointID, s slot) *PlanError {
-	old := &a.slots[id]
+func put(slots []slot, id trainer.PointID, s slot) *PlanError {
+	old := &slots[id]
 	switch c := s.rank.compare(old.rank); {
 	case c < 0:
 		return nil
@@ -146,12 +166,12 @@ func targets() map[string]target {
 }
 
 // armKeys are the keys of an arm that set no point.
-var armKeys = []string{"name", "loss_scale", "training", "learning_rate"}
+var armKeys = []string{"name", "layer", "loss_scale", "training", "learning_rate"}
 
-// readSettings applies the settings in the table n to a. also lists the other
-// keys that n may have.
-func (r *reader) readSettings(n *node, a *assignment, fs formats, also []string) {
-	all := targets()
+// readSettings applies the settings in the table n to the layers that s selects.
+// also lists the other keys that n may have.
+func (r *reader) readSettings(n *node, s selection, a *assignment, fs formats, also []string) {
+	all := s.targets()
 	phases := map[string][]string{} // "forward" -> "weight", "activation", ...
 	top := slices.Clone(also)
 	for key := range all {
@@ -172,16 +192,16 @@ func (r *reader) readSettings(n *node, a *assignment, fs formats, also []string)
 			r.known(sub, phases[k]...)
 			for _, name := range sub.names() {
 				if t, ok := all[k+"."+name]; ok {
-					r.applyTarget(sub.table[name], k+"."+name, t, a, fs)
+					r.applyTarget(sub.table[name], k+"."+name, t, s, a, fs)
 				}
 			}
 		case phases[k] != nil:
 			slices.Sort(phases[k])
 			r.wrongType(sub, "a table of points", fmt.Sprintf("%s.%s = ... (points: %s)", k, phases[k][0], strings.Join(phases[k], ", ")))
 		case all[k].ids != nil:
-			r.applyTarget(sub, k, all[k], a, fs)
+			r.applyTarget(sub, k, all[k], s, a, fs)
 		case !slices.Contains(also, k):
-			r.fail(sub.errorf(suggestPoint(k, top, all), "unknown key"))
+			r.fail(sub.errorf(s.suggest(k, top, all), "unknown key"))
 		}
 	}
 }
@@ -201,8 +221,9 @@ func suggestPoint(word string, top []string, all map[string]target) string {
 	return suggest(word, top)
 }
 
-// applyTarget reads the setting at n and applies it to the points of its key.
-func (r *reader) applyTarget(n *node, key string, t target, a *assignment, fs formats) {
+// applyTarget reads the setting at n and applies it to the points of its key in
+// the selected layers.
+func (r *reader) applyTarget(n *node, key string, t target, sel selection, a *assignment, fs formats) {
 	v, ok := value{exact: true}, true
 	if word, _ := n.value.(string); word != exactWord || !isProduct(t.ids[0]) || len(t.ids) > 1 {
 		v, ok = r.readValue(n, t.class, fs)
@@ -210,15 +231,16 @@ func (r *reader) applyTarget(n *node, key string, t target, a *assignment, fs fo
 	if !ok {
 		return
 	}
-	a.spelled = append(a.spelled, key+" "+v.spell())
-	rank := specificity{allLayers, t.rank}
+	origin := sel.prefix() + key
+	a.spelled = append(a.spelled, origin+" "+v.spell())
+	r.applies(n, key, t, sel)
 	for _, id := range t.ids {
-		s := slot{set: true, rank: rank, at: n, origin: key, value: value{point: v.point, exact: v.exact}}
+		s := slot{set: true, rank: specificity{what: t.rank}, at: n, origin: origin, value: value{point: v.point, exact: v.exact}}
 		switch {
 		case isSum(id):
 			s.value.order, s.value.through = v.order, v.through
 			if v.outer != nil && t.rank == pointwise {
-				r.put(a, id+1, slot{set: true, rank: rank, at: v.outerAt, origin: key + ".outer", value: value{point: *v.outer}})
+				r.put(a, sel, id+1, slot{set: true, rank: s.rank, at: v.outerAt, origin: origin + ".outer", value: value{point: *v.outer}})
 			}
 		case isOuter(id) && t.rank < pointwise:
 			s.set = v.outer != nil
@@ -226,13 +248,31 @@ func (r *reader) applyTarget(n *node, key string, t target, a *assignment, fs fo
 				s.value.point = *v.outer
 			}
 		}
-		r.put(a, id, s)
+		r.put(a, sel, id, s)
 	}
 }
 
-// put applies a setting and records a conflict.
-func (r *reader) put(a *assignment, id trainer.PointID, s slot) {
-	if err := a.put(id, s); err != nil {
-		r.fail(err)
+// put applies a setting to one point of the selected layers and records a
+// conflict, once for all layers.
+func (r *reader) put(a *assignment, sel selection, id trainer.PointID, s slot) {
+	if sel.layers == nil {
+		if err := put(a.slots, id, s); err != nil {
+			r.fail(err)
+			return
+		}
+	}
+	if ofNoLayer(id) {
+		return // only a.slots counts
+	}
+	for i := range a.layers {
+		where, selected := sel.reach(i)
+		if !selected {
+			continue
+		}
+		s.rank.where = where
+		if err := put(a.layers[i], id, s); err != nil {
+			r.fail(err)
+			return
+		}
 	}
 }

@@ -22,6 +22,7 @@
 //	[[arm]]             name, settings, loss_scale; training: what differs from the
 //	                    plan's own optimizer, learning_rate, batch, epochs;
 //	                    learning_rate is short for training.learning_rate
+//	[[arm.layer]]       select, settings: what differs in some layers; [[baseline.layer]]
 //	[[contrast]]        arm, against, margin: two arms to compare with each other
 //
 // Tables of an included file and of the plan merge key by key. A text, a number,
@@ -57,10 +58,24 @@
 //	             as the sum
 //	through      of sums: "binary32", an adder that first rounds to binary32
 //
+// # Layers
+//
+// select says which layers an [[arm.layer]] is for, one selector or an array:
+//
+//	"conv1d"    all layers of a kind
+//	"dense 16"  all layers of a name, as the plan or as resolve spells it
+//	"first"     the first layer that has weights; "last": the last one
+//	3           a layer's number, as resolve prints it: the first is 1
+//
+// A selector that selects nothing is an error, and so is a point's own key where
+// no selected layer computes with that point; shorthands set what there is.
+//
 // # Which setting holds
 //
-// The more specific one, wherever it stands: everything, then storage and
-// accumulate, then a point's own key. Operand is as specific as the two keys it
+// The more specific one, wherever it stands. One for some layers beats one for
+// all, and among those for some a number beats first and last, which beat a name,
+// which beats a kind. Among equals: everything, then storage and accumulate, then
+// a point's own key. Operand is as specific as the two keys it
 // stands for. Two equally specific settings on one point are an error. Points
 // that an arm does not set are as in the baseline, and those that the baseline
 // does not set are binary32, nearest-even, sequential, products rounded. Two

@@ -185,7 +185,7 @@ func writePoints(w *tabwriter.Writer, a *Arm) {
 
 // origin says which setting holds at a point.
 func (a *Arm) origin(s Setting) string {
-	from := a.assignment.slots[slices.Index(trainer.PointNames(), s.Point)]
+	from := a.assignment.of(s.Layer)[slices.Index(trainer.PointNames(), s.Point)]
 	switch {
 	case s.Rounding == reusedWord && !from.set:
 		return "not set"

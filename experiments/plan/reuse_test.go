@@ -43,8 +43,8 @@ func TestReusedOperandsChangeNoBit(t *testing.T) {
 		written := a.Arithmetic
 		written.Layers = nil
 		restored := 0
-		for _, l := range a.Arithmetic.Layers {
-			full := a.assignment.layer(len(l.States))
+		for i, l := range a.Arithmetic.Layers {
+			full := assigned(a.assignment.layers[i]).layer(len(l.States))
 			if l.InputGradient.First == nil && full.InputGradient.First != nil {
 				restored++
 			}

@@ -172,7 +172,7 @@ func TestOperandsLookThroughLayersThatMayPassValuesOn(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	base := binary32Everywhere()
+	base := binary32Everywhere(len(network.Layers))
 	for _, c := range []struct {
 		conv, relu, operand string
 		reused              bool

@@ -13,11 +13,16 @@ type specificity struct {
 	what  breadth
 }
 
-// reach is which layers a setting speaks about. Plans have one reach so far; a
-// selector of layers is a constant above it.
+// reach is which layers a setting speaks about, the least specific first.
 type reach uint8
 
-const allLayers reach = iota
+const (
+	allLayers reach = iota
+	ofKind          // select = "conv1d"
+	ofName          // select = "dense 16"
+	atEnd           // select = "first" or "last"
+	atIndex         // select = 3
+)
 
 // breadth is how many points a key names, the widest first.
 type breadth uint8

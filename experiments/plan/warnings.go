@@ -15,7 +15,7 @@ func (p *Plan) warn() []string {
 	if p.Replicates.Count == 1 {
 		w = append(w, "one replicate: no interval can be given, and so no verdict")
 	}
-	if fp32 := binary32Everywhere(); !p.sameArithmetic(p.Baseline(), &fp32) {
+	if fp32 := binary32Everywhere(len(p.Network.Layers)); !p.sameArithmetic(p.Baseline(), &fp32) {
 		w = append(w, "the baseline is not binary32 throughout: differences are against "+p.Baseline().Summary)
 	}
 	for i := range p.Arms {
