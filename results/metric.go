@@ -11,18 +11,26 @@ type Metric struct {
 	Name   string
 	Higher bool   // more is better
 	Data   string // "training", "validation" or "test": the examples it is measured on
+	Share  bool   // a share of one, printed per cent; its differences in percentage points
+	Unit   string // of a difference as it is printed, in the singular: "percentage point", "nat"
 	read   func(*Epoch) float64
 }
+
+// Units of differences; losses are cross-entropies with natural logarithms.
+const (
+	point = "percentage point"
+	nat   = "nat"
+)
 
 // metrics is the table of what a plan may claim something about. A new metric
 // is one more line.
 var metrics = []Metric{
-	{"test accuracy", true, "test", func(e *Epoch) float64 { return e.TestMetric }},
-	{"test loss", false, "test", func(e *Epoch) float64 { return e.TestLoss }},
-	{"validation accuracy", true, "validation", func(e *Epoch) float64 { return e.ValidationMetric }},
-	{"validation loss", false, "validation", func(e *Epoch) float64 { return e.ValidationLoss }},
-	{"training accuracy", true, "training", func(e *Epoch) float64 { return e.TrainMetric }},
-	{"training loss", false, "training", func(e *Epoch) float64 { return e.TrainLoss }},
+	{"test accuracy", true, "test", true, point, func(e *Epoch) float64 { return e.TestMetric }},
+	{"test loss", false, "test", false, nat, func(e *Epoch) float64 { return e.TestLoss }},
+	{"validation accuracy", true, "validation", true, point, func(e *Epoch) float64 { return e.ValidationMetric }},
+	{"validation loss", false, "validation", false, nat, func(e *Epoch) float64 { return e.ValidationLoss }},
+	{"training accuracy", true, "training", true, point, func(e *Epoch) float64 { return e.TrainMetric }},
+	{"training loss", false, "training", false, nat, func(e *Epoch) float64 { return e.TrainLoss }},
 }
 
 // FindMetric returns the metric of that name.

@@ -46,6 +46,33 @@ type Comparison struct {
 	Stalled           int
 	Headline          bool // a contrast the plan asks for, not arm against baseline
 	Warnings          []string
+
+	// Intervals at Confidence beside Low to High, NaN where there are none; an end
+	// is infinite where the pairs are too few for one.
+	StudentLow, StudentHigh float64 // of the mean, studentised bootstrap
+	FlipLow, FlipHigh       float64 // of the centre of symmetric differences, by flipping signs
+	Middle                  float64 // Hodges-Lehmann estimate of that centre
+	RankLow, RankHigh       float64 // its interval, by signed ranks
+	Offered                 string  // the interval to trust before the t interval; empty: no need
+
+	// DivergedLow to DivergedHigh is the exact interval at Confidence of the share
+	// of replicates that diverge; NaN without a pair.
+	DivergedLow, DivergedHigh float64
+	Classes                   []ClassDifference // differences of recall, when runs were counted by class
+}
+
+// ClassDifference is how the recall of one class differs between two arms over
+// paired replicates, positive = better: a share of one.
+type ClassDifference struct {
+	Class     int
+	Name      string // empty: the class has none
+	N         int    // pairs whose test data holds the class
+	Mean      float64
+	Low, High float64 // two-sided t interval at the comparison's confidence; NaN with N < 2
+	Worst     float64 // the least difference
+	Replicate uint64  // where it was found, the first one
+	P         float64 // one-sided p-value against "the class does not lose"
+	Holm      float64 // P adjusted for the number of classes
 }
 
 // Setting is one rounding point of one layer as resolved, for tables and strips.
