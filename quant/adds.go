@@ -8,6 +8,8 @@ func (e *engine) add(s, t []float64, q *quick, k int, fold bool) {
 	switch {
 	case q.kind == quickNearest && fold:
 		e.addNearestFold(s, t, q, k)
+	case q.kind == quickNearest && q == &e.sum && e.splitSum:
+		e.addSplit(s, t, k)
 	case q.kind == quickNearest:
 		e.addNearest(s, t, q, k)
 	case q.kind == quickNative32 && fold:
@@ -30,6 +32,34 @@ func (e *engine) through(x float64) float64 {
 		return float64(float32(x))
 	}
 	return x
+}
+
+// split is the factor 2^drop + 1 of addSplit.
+func (q *quick) split() float64 { return powerOfTwo(int(q.drop)) + 1 }
+
+// addSplit is addGeneral for nearest-even where no sum needs its rest and all terms
+// are multiples of the format's last place, so that sums below its least normal
+// value are exact. It rounds to 53 - drop bits by Veltkamp's splitting (T. J.
+// Dekker: A floating-point technique for extending the available precision, Numer.
+// Math. 18, 1971): g = x (2^drop + 1), y = g - (g - x) is x to nearest. It takes ties
+// to even as well: let x = (X + 1/2) 2^drop in units of its last place, 2^52 <= x <
+// 2^53. Then x is even, g/2^drop = x + X + 1/2 is again a tie, and so rounds to the
+// even one of x + X and x + X + 1, that is by the even one of X and X + 1; the
+// difference g - x is a tie for which the same holds. (The last places of g and
+// g - x are 2^drop unless x lies within 2^(53-drop) units of 2^53, where there is no
+// tie if drop > 26.)
+func (e *engine) addSplit(s, t []float64, k int) {
+	split, limit := e.sum.split(), e.sum.max
+	t = t[:len(s)]
+	for j, v := range s {
+		x := v + t[j]
+		g := float64(x * split)
+		y := g - (g - x)
+		if !(math.Abs(y) <= limit) {
+			y = e.oddSum(&e.sum, v, t[j], x, k, j)
+		}
+		s[j] = y
+	}
 }
 
 // addNearest is addGeneral for nearest-even without rests, see quick.blockNearest.

@@ -9,12 +9,14 @@ import "math"
 // It serves tensors of float32, whose products are exact in binary64, and points
 // that all have a quick rounding.
 type engine struct {
-	acc     Accumulate
-	product quick // used where acc.Product is set
-	sum     quick
-	outer   quick // sum where no outer point is set
-	foldSum bool  // additions of terms need the rest of the binary64 sum
-	foldTop bool  // so do those of two terms, in a pairwise tree
+	acc      Accumulate
+	product  quick // used where acc.Product is set
+	sum      quick
+	outer    quick // sum where no outer point is set
+	foldSum  bool  // additions of terms need the rest of the binary64 sum
+	foldTop  bool  // so do those of two terms, in a pairwise tree
+	foldNode bool  // so do those of two sums, in a tree of lanes
+	splitSum bool  // additions of terms round by splitting, see addSplit
 
 	// The block.
 	terms, width int
@@ -95,6 +97,8 @@ func (e *engine) setFolds(termBits, place int) {
 		last = -149
 	}
 	e.foldTop = e.foldSum || place < last
+	e.foldNode = !(nearest && inner)
+	e.splitSum = !e.foldTop && !e.acc.Through32 && e.sum.kind == quickNearest
 }
 
 // begin sizes the block.

@@ -25,8 +25,7 @@ func (e *engine) row() (s []float64, next int, ok bool) {
 // sequential adds terms from, from+step, ... below to, starting from +0.
 func (e *engine) sequential(s []float64, from, to, step int) {
 	clear(s)
-	if e.acc.Product != nil && e.product.kind == quickNearest &&
-		e.sum.kind == quickNearest && !e.foldSum && !e.acc.Through32 {
+	if e.product.kind == quickNearest && e.splitSum {
 		for k := from; k < to; k += step {
 			e.stepNearest(s, k)
 		}
@@ -39,11 +38,11 @@ func (e *engine) sequential(s []float64, from, to, step int) {
 }
 
 // stepNearest adds R[product](a b[j]) of term k to s[j] in one pass, product and
-// sum to nearest-even.
+// sum to nearest-even, as termNearest and addSplit do.
 func (e *engine) stepNearest(s []float64, k int) {
 	a, b := e.a[k], e.b[k*e.width:][:len(s)]
 	lowP, liftP, limitP := e.product.low, e.product.lift, e.product.max
-	lowS, liftS, limitS := e.sum.low, e.sum.lift, e.sum.max
+	split, limitS := e.sum.split(), e.sum.max
 	for j, v := range s {
 		p := float64(a * b[j])
 		c := math.Float64frombits(max(math.Float64bits(p)&exponentMask64, lowP) + liftP)
@@ -52,8 +51,8 @@ func (e *engine) stepNearest(s []float64, k int) {
 			r = e.oddTerm(p, k, j)
 		}
 		x := v + r
-		c = math.Float64frombits(max(math.Float64bits(x)&exponentMask64, lowS) + liftS)
-		y := (x + c) - c
+		g := float64(x * split)
+		y := g - (g - x)
 		if !(math.Abs(y) <= limitS) {
 			y = e.oddSum(&e.sum, v, r, x, k, j)
 		}
@@ -106,7 +105,7 @@ func (e *engine) lanes() ([]float64, int) {
 	for lane, n := range nodes {
 		e.sequential(n, lane, e.terms, len(nodes))
 	}
-	return e.tree(nodes, e.terms, true)
+	return e.tree(nodes, e.terms, e.foldNode)
 }
 
 // block returns n scratch rows of the block's width.
