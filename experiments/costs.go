@@ -2,7 +2,6 @@ package experiments
 
 import (
 	"fmt"
-	"math"
 	"slices"
 	"strings"
 
@@ -56,21 +55,6 @@ func estimate(p *plan.Plan, arms []plan.Arm, machine cost.Machine, energy cost.E
 			a.Name, in.Optimizer.Name, in.Batch))
 	}
 	return r, nil
-}
-
-// widths are the mean bits of a value in training memory, one an arm, the
-// baseline included; NaN where the model has no answer.
-func widths(p *plan.Plan) []float64 {
-	all := slices.Repeat([]float64{math.NaN()}, len(p.Arms))
-	machine, _ := cost.FindMachine(cost.DefaultMachine) // memory depends on no machine
-	r, err := estimate(p, p.Arms, machine, cost.DefaultEnergy())
-	if err != nil {
-		return all
-	}
-	for i := range all {
-		all[i] = r.Arms[i].Memory.Width
-	}
-	return all
 }
 
 // sameStep reports whether a training step has the same shapes and operations.

@@ -129,9 +129,9 @@ loss_scale = { kind = "fixed", value = 8 }
 	}
 }
 
-// TestWidths counts by hand: batch 16; conv 128 -> 2 x 15 with 20 parameters,
+// TestBills counts by hand: batch 16; conv 128 -> 2 x 15 with 20 parameters,
 // ReLU, dense 30 -> 5 with 155.
-func TestWidths(t *testing.T) {
+func TestBills(t *testing.T) {
 	p := tinyPlan(t, "[[arm]]\nname = \"x\"\nforward.activation = \"E4M3\"\nforward.weight = \"bf16\"\n")
 	const params, batch = 20 + 155, 16
 	const (
@@ -140,9 +140,21 @@ func TestWidths(t *testing.T) {
 		bits32 = batch*128 + 3*params + 2*batch*30 // input; gradient, state, master; gradients on both sides of ReLU
 	)
 	want := float64(8*bits8+16*bits16+32*bits32) / float64(bits8+bits16+bits32)
-	got := widths(p)
-	if len(got) != 5 || got[0] != 32 || got[1] != 16 || math.Abs(got[4]-want) > 1e-12 {
-		t.Errorf("%v bits a value, want 32, 16, ... and %v", got, want)
+	s := describe(newLayout(p))
+	got := s.Arms
+	if len(got) != 5 || got[0].Bits != 32 || got[1].Bits != 16 || math.Abs(got[4].Bits-want) > 1e-12 {
+		t.Errorf("%+v bits a value, want 32, 16, ... and %v", got, want)
+	}
+	// The study's costs are those of the verb, the baseline first.
+	r := costsOf(t, p)
+	if len(s.Costs.Bills) != 5 || s.Costs.Bills[0].Arm != "baseline" || s.Costs.Bills[0].Step != s.Costs.Reference.Step {
+		t.Errorf("%+v", s.Costs.Bills)
+	}
+	x, model := s.Costs.Bills[4], r.Arms[3]
+	if x.Arm != "x" || x.TrainingBits != 8*bits8+16*bits16+32*bits32 || x.Step.Bits != model.Once.Step.Total.Bits ||
+		x.StepTiled.Seconds != model.Tiled.Step.Total.Time.Seconds || x.Inference.Picojoules != model.Once.Inference.Total.Energy.Total ||
+		x.Step.BitShare != model.Once.Step.Total.Against.Bits || s.Costs.Answer != r.Answer {
+		t.Errorf("%+v", x)
 	}
 }
 

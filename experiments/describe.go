@@ -20,23 +20,22 @@ func describe(l *layout) *results.Study {
 		Metric: p.Claim.Metric, Margin: p.Claim.Margin, Confidence: p.Claim.Confidence,
 		Claim: l.claim, Planned: p.Replicates.Count,
 	}
-	bits := widths(p)
 	for i := range p.Arms {
-		s.Arms = append(s.Arms, describeArm(&p.Arms[i], bits[i]))
+		s.Arms = append(s.Arms, describeArm(&p.Arms[i]))
 	}
 	s.Warnings = append(s.Warnings, p.Warnings...)
 	s.Warnings = append(s.Warnings, p.Task.Warnings...)
 	if p.Pretrain != nil && p.Pretrain.Task.Canonical != p.Task.Canonical {
 		s.Warnings = append(s.Warnings, p.Pretrain.Task.Warnings...)
 	}
+	bill(p, s)
 	return s
 }
 
-// describeArm is an arm for print; bits is the mean width of its stored values.
-func describeArm(a *plan.Arm, bits float64) results.Arm {
+func describeArm(a *plan.Arm) results.Arm {
 	arm := results.Arm{
 		Name: a.Name, Slug: a.Slug, Baseline: a.Baseline, Summary: a.Summary,
-		LossScale: a.LossScale, Bits: bits,
+		LossScale: a.LossScale,
 	}
 	for _, s := range a.Settings {
 		arm.Settings = append(arm.Settings, results.Setting(s))
