@@ -253,7 +253,11 @@ func (f Float) canonicalName() string {
 		named = fmt.Sprintf("E%dM%d", f.exponent, f.fraction)
 		base, _ = FloatSpec{Exponent: f.exponent, Fraction: f.fraction}.layout()
 	}
-	if options := f.optionsOver(base); len(options) > 0 {
+	options := f.optionsOver(base)
+	if len(options) == 0 && f.exponent == 8 && f.fraction == 0 {
+		options = []string{"top=ieee"} // the bare name is that of the scale format
+	}
+	if len(options) > 0 {
 		return named + "(" + strings.Join(options, ",") + ")"
 	}
 	return named

@@ -71,6 +71,12 @@ type family struct {
 
 // families is the table of families: a new family adds one line.
 var families = []family{
+	{parsePowerScale, []string{"E8M0"}},
+	{parseDraft, []string{"binary8p3-draft", "binary8p4-draft"}},
+	{parseFixed, []string{"Q2.14", "UQ0.8"}},
+	{parsePosit, []string{"posit8", "posit16", "posit32"}},
+	{parseLogarithmic, []string{"LNS4.3", "LNS5.10"}},
+	{parseTable, nil},
 	{parseFloat, floatNames()},
 }
 
@@ -90,6 +96,10 @@ func FormatNames() []string {
 // override what the name stands for: E4M3(top=ieee), E6M9(bias=15),
 // E5M10(subnormals=flush). Case does not matter. The error for an unknown name
 // lists the nearest known ones.
+//
+// The other scalar families: E8M0, the scale of MX (a signed float of that split is
+// written E8M0(top=ieee)); Q2.14 and UQ0.8, fixed point, with overflow=wrap or nan;
+// posit8 and other widths; LNS5.10, logarithmic; binary8p4-draft; table(-1,0,1).
 func ParseFormat(name string) (Format, error) {
 	word := strings.TrimSpace(name)
 	for _, fam := range families {
@@ -101,7 +111,7 @@ func ParseFormat(name string) (Format, error) {
 			return f, nil
 		}
 	}
-	return nil, fmt.Errorf("unknown format %q: nearest known: %s (or EeMm for another split of exponent and fraction bits)",
+	return nil, fmt.Errorf("unknown format %q: nearest known: %s (or EeMm for another split of exponent and fraction bits, Qi.f, positN, LNSi.f, table(VALUE,...))",
 		name, strings.Join(nearest(word, FormatNames(), 3), ", "))
 }
 

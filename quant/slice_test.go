@@ -13,7 +13,7 @@ func slicePoints(t testing.TB) []*Point {
 	p := innerPoints(t)
 	for _, text := range []string{
 		"bf16 stochastic(32)", "fp32 stochastic(32)", "fp32 stochastic(32,centred)", "E4M3 stochastic(32,centred-even)",
-		"E5M10(subnormals=flush) stochastic(24)", "E0M7(bias=0,top=finite)", "E8M0 to-odd",
+		"E5M10(subnormals=flush) stochastic(24)", "E0M7(bias=0,top=finite)", "E8M0(top=ieee) to-odd",
 	} {
 		x, err := ParsePoint(text)
 		if err != nil {
