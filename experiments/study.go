@@ -83,14 +83,16 @@ func readRuns(l *layout, s *store.Store, study *results.Study) error {
 			return err
 		}
 	}
+	study.Warnings = append(study.Warnings, failureWarnings(r.failures)...)
 	return nil
 }
 
 // reader gathers runs into a study.
 type reader struct {
 	*layout
-	store *store.Store
-	study *results.Study
+	store    *store.Store
+	study    *results.Study
+	failures []failure
 }
 
 func (r *reader) replicate(seed uint64, k keys) error {
@@ -115,7 +117,7 @@ func (r *reader) replicate(seed uint64, k keys) error {
 func (r *reader) take(e store.Entry, arm string, seed uint64) error {
 	switch e.State {
 	case results.Failed:
-		r.study.Warnings = append(r.study.Warnings, fmt.Sprintf("%s failed: %s", results.RunName(arm, seed), e.Cause))
+		r.failures = append(r.failures, failure{arm, seed, e.Cause})
 		return nil
 	case results.Stored:
 	default:

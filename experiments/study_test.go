@@ -63,7 +63,7 @@ func checkComparisons(t *testing.T, study *results.Study) {
 		study.Contrasts[0].Margin != 0.1 || !study.Contrasts[0].Headline {
 		t.Errorf("contrasts %+v", study.Contrasts)
 	}
-	if study.Answer != compare.Answer(study) || !strings.Contains(study.Answer, "fp32 again (nearest-even rounding; 3 pairs)") {
+	if study.Answer != compare.Answer(study) || !strings.Contains(study.Answer, "fp32 again, with nearest-even rounding") {
 		t.Errorf("answer %q", study.Answer)
 	}
 }

@@ -4,16 +4,16 @@ import (
 	"fmt"
 	"math"
 	"slices"
-	"strconv"
 	"strings"
 
 	"ulpine/results"
 )
 
-// Answer is the sentence that stands first in terminal and page: what stays
-// within the margin, under which rounding, from how many pairs, and what does
-// not; a second sentence for each contrast. It reads arms, comparisons and
-// contrasts of the study.
+// Answer is what stands first in terminal and page, in short sentences: what
+// stays within the margin, under which rounding, from how many pairs; then what
+// is worse, what diverged, what is undecided and how many pairs would settle it;
+// then a sentence for each contrast. It reads arms, comparisons and contrasts of
+// the study.
 func Answer(s *results.Study) string {
 	switch {
 	case s.BaselineProblem != "":
@@ -23,14 +23,14 @@ func Answer(s *results.Study) string {
 	case !anyPair(s):
 		return "There is no answer yet: no pair of runs is stored."
 	}
-	var sentences []string
+	var said []string
 	if len(s.Comparisons) > 0 {
-		sentences = append(sentences, sentence(s))
+		said = aboutArms(s)
 	}
 	for i := range s.Contrasts {
-		sentences = append(sentences, contrast(s, &s.Contrasts[i]))
+		said = append(said, contrast(s, &s.Contrasts[i]))
 	}
-	return strings.Join(sentences, " ")
+	return strings.Join(said, " ")
 }
 
 func anyPair(s *results.Study) bool {
@@ -38,127 +38,176 @@ func anyPair(s *results.Study) bool {
 	return slices.ContainsFunc(s.Comparisons, some) || slices.ContainsFunc(s.Contrasts, some)
 }
 
-// sentence is the answer about the arms against the baseline, a clause a verdict.
-func sentence(s *results.Study) string {
-	groups := map[results.VerdictKind][]*results.Comparison{}
+// aboutArms are the sentences about the arms against the baseline.
+func aboutArms(s *results.Study) []string {
+	verdicts := map[results.VerdictKind][]*results.Comparison{}
 	for i := range s.Comparisons {
 		c := &s.Comparisons[i]
-		groups[c.Verdict.Kind] = append(groups[c.Verdict.Kind], c)
+		verdicts[c.Verdict.Kind] = append(verdicts[c.Verdict.Kind], c)
 	}
-	clauses := []string{withinClause(s, groups[results.Within])}
-	if group := groups[results.Worse]; len(group) > 0 {
-		clauses = append(clauses, each(s, group, under)+be(len(group))+"worse than the margin")
+	said := []string{withinSentence(s, verdicts[results.Within])}
+	for _, g := range alike(verdicts[results.Worse], func(c *results.Comparison) string { return under(s, c) }) {
+		said = append(said, fmt.Sprintf("%s%s%sworse than the margin (%s).",
+			names(s, g.of), comma(g.by), be(len(g.of)), pairs(g.of)))
 	}
-	if group := groups[results.Diverged]; len(group) > 0 {
-		clauses = append(clauses, divergedClause(s, group))
+	if diverged := verdicts[results.Diverged]; len(diverged) > 0 {
+		said = append(said, divergedSentence(s, diverged))
 	}
-	if group := groups[results.Undecided]; len(group) > 0 {
-		clauses = append(clauses, each(s, group, needs)+be(len(group))+"undecided")
+	for _, g := range alike(verdicts[results.Undecided], needs) {
+		said = append(said, names(s, g.of)+be(len(g.of))+"undecided"+g.by+".")
 	}
-	return strings.Join(clauses, "; ") + "."
+	return said
 }
 
-// withinClause leads the sentence, also when no arm stays within the margin.
-func withinClause(s *results.Study, group []*results.Comparison) string {
+// withinSentence comes first, also when no arm stays within the margin.
+func withinSentence(s *results.Study, within []*results.Comparison) string {
 	first := &s.Comparisons[0]
-	margin := fmt.Sprintf("within the margin of %s in %s", amount(first.Margin), first.Metric)
-	all := len(s.Comparisons)
-	switch n := len(group); {
-	case n == 0:
-		return "No arm is shown to stay " + margin
-	case all == 1:
-		return "The only arm, " + each(s, group, under) + ", stays " + margin
+	margin := fmt.Sprintf("within the margin of %s in %s", newMeasure(first).margin(first.Margin), first.Metric)
+	all, n := len(s.Comparisons), len(within)
+	if n == 0 {
+		return "No arm is shown to stay " + margin + "."
+	}
+	if all == 1 {
+		return fmt.Sprintf("The only arm, %s%s stays %s (%s).", names(s, within), comma(under(s, within[0])), margin, pairs(within))
+	}
+	var who []string
+	for _, g := range alike(within, func(c *results.Comparison) string { return under(s, c) }) {
+		who = append(who, fmt.Sprintf("%s%s (%s)", names(s, g.of), strings.TrimSuffix(comma(g.by), ","), pairs(g.of)))
+	}
+	lead := fmt.Sprintf("Of %d arms, %d stay ", all, n)
+	switch {
 	case n == all:
-		return fmt.Sprintf("All %d arms stay %s: %s", n, margin, each(s, group, under))
+		lead = fmt.Sprintf("All %d arms stay ", n)
 	case n == 1:
-		return fmt.Sprintf("Of %d arms, one stays %s: %s", all, margin, each(s, group, under))
-	default:
-		return fmt.Sprintf("Of %d arms, %d stay %s: %s", all, n, margin, each(s, group, under))
+		lead = fmt.Sprintf("Of %d arms, one stays ", all)
 	}
+	return lead + margin + ": " + strings.Join(who, "; ") + "."
 }
 
-func divergedClause(s *results.Study, group []*results.Comparison) string {
-	words := make([]string, len(group))
-	for i, c := range group {
-		words[i] = fmt.Sprintf("%s diverged in %d of %s", armName(s, c.Arm), c.Verdict.Diverged, number(c.Verdict.Of, "replicate"))
+// comma sets a remark off from what it follows and what comes next.
+func comma(remark string) string { return ", " + remark + "," }
+
+// group is what can be said of several arms at once.
+type group struct {
+	of []*results.Comparison
+	by string // what they share
+}
+
+// alike groups comparisons of which the same can be said, from as many pairs.
+func alike(all []*results.Comparison, what func(*results.Comparison) string) (groups []group) {
+next:
+	for _, c := range all {
+		by := what(c)
+		for i := range groups {
+			if g := &groups[i]; g.by == by && g.of[0].N == c.N {
+				g.of = append(g.of, c)
+				continue next
+			}
+		}
+		groups = append(groups, group{[]*results.Comparison{c}, by})
+	}
+	return groups
+}
+
+// names lists the arms of comparisons.
+func names(s *results.Study, of []*results.Comparison) string {
+	words := make([]string, len(of))
+	for i, c := range of {
+		words[i] = armName(s, c.Arm)
 	}
 	return list(words)
 }
 
-// each lists arms, a remark in brackets behind each.
-func each(s *results.Study, group []*results.Comparison, remark func(*results.Study, *results.Comparison) string) string {
-	words := make([]string, len(group))
-	for i, c := range group {
-		words[i] = armName(s, c.Arm) + " (" + remark(s, c) + ")"
+// pairs says from how many pairs each of a group was judged.
+func pairs(of []*results.Comparison) string {
+	if len(of) == 1 {
+		return number(of[0].N, "pair")
 	}
-	return list(words)
+	return number(of[0].N, "pair") + " each"
 }
 
-// under is the remark of a decided arm: rounding and pairs.
-func under(s *results.Study, c *results.Comparison) string {
-	return Rounding(arm(s, c.Arm)) + "; " + number(c.N, "pair")
+// under is the rounding of an arm, as a remark.
+func under(s *results.Study, c *results.Comparison) string { return "with " + Rounding(arm(s, c.Arm)) }
+
+func divergedSentence(s *results.Study, diverged []*results.Comparison) string {
+	words := make([]string, len(diverged))
+	for i, c := range diverged {
+		words[i] = fmt.Sprintf("%s in %d of %d", armName(s, c.Arm), c.Verdict.Diverged, c.Verdict.Of)
+		if i == 0 {
+			words[i] = fmt.Sprintf("%s diverged in %d of %s", armName(s, c.Arm), c.Verdict.Diverged, number(c.Verdict.Of, "replicate"))
+		}
+	}
+	return list(words) + "."
 }
 
-// needs is the remark of an undecided arm.
-func needs(_ *results.Study, c *results.Comparison) string {
+// needs is what follows "undecided".
+func needs(c *results.Comparison) string {
 	switch {
 	case c.N < c.Planned:
-		return fmt.Sprintf("%d of %s stored", c.N, number(c.Planned, "planned pair"))
+		return fmt.Sprintf(": %d of %s stored", c.N, number(c.Planned, "planned pair"))
 	case c.N == 1:
-		return "one pair gives no interval"
+		return ": one pair gives no interval"
 	case c.Verdict.Pairs > 0:
-		return fmt.Sprintf("needs about %s, has %d", number(c.Verdict.Pairs, "pair"), c.N)
+		return fmt.Sprintf(" after %s; about %d would settle it", number(c.N, "pair"), c.Verdict.Pairs)
 	}
-	return "after " + number(c.N, "pair")
+	return " after " + number(c.N, "pair")
 }
 
 // contrast is the sentence about one arm against another.
 func contrast(s *results.Study, c *results.Comparison) string {
-	lead := fmt.Sprintf("Against %s, %s ", armName(s, c.Against), armName(s, c.Arm))
 	if c.N == 0 {
-		return lead + "has no pair of runs stored yet."
+		return fmt.Sprintf("%s and %s have no pair of runs stored yet.", armName(s, c.Arm), armName(s, c.Against))
 	}
-	return lead + change(c) + fmt.Sprintf(" in %s", c.Metric) + evidence(c) + ": " + outcome(c) + "."
+	return fmt.Sprintf("%s %s %s%s: %s.", armName(s, c.Arm), change(c), armName(s, c.Against), evidence(c), outcome(c))
 }
 
-// change says which way the mean difference points.
+// change is the verb between two arms: which way the mean difference points, and
+// how far.
 func change(c *results.Comparison) string {
+	w := newMeasure(c)
+	size := w.with(w.figure(math.Abs(c.Mean)))
 	switch {
 	case math.IsNaN(c.Mean):
-		return "differs by an amount that is no number"
+		return "differs by an amount that is no number from"
+	case c.Mean == 0 && c.SD == 0:
+		return "does not differ in any pair from"
+	case c.Mean == 0:
+		return "does not differ on average from"
+	case w.figure(c.Mean) == w.figure(0):
+		return "differs by less than " + w.with(amount(math.Pow10(-w.decimals))) + " from"
+	case w.metric.Higher && c.Mean > 0:
+		return "scores " + size + " above"
+	case w.metric.Higher:
+		return "scores " + size + " below"
 	case c.Mean > 0:
-		return "is better by " + amount(c.Mean)
-	case c.Mean < 0:
-		return "is worse by " + amount(-c.Mean)
-	case c.SD == 0:
-		return "does not differ in any pair"
+		return "is better by " + size + " than"
 	}
-	return "does not differ on average"
+	return "is worse by " + size + " than"
 }
 
-// evidence is the interval and the number of pairs, in brackets.
+// evidence is the interval of the difference and the number of pairs, in brackets.
 func evidence(c *results.Comparison) string {
 	if math.IsNaN(c.Low) {
 		return fmt.Sprintf(" (%s, no interval)", number(c.N, "pair"))
 	}
-	return fmt.Sprintf(" (%s %% interval %s to %s, %s)", amount(100*c.Confidence), amount(c.Low), amount(c.High), number(c.N, "pair"))
+	return fmt.Sprintf(" (%s %% interval %s, %s)", amount(100*c.Confidence), newMeasure(c).span(c.Low, c.High), number(c.N, "pair"))
 }
 
 // outcome is the verdict of a contrast in words.
 func outcome(c *results.Comparison) string {
-	v := c.Verdict
-	switch v.Kind {
+	margin := newMeasure(c).margin(c.Margin)
+	switch v := c.Verdict; v.Kind {
 	case results.Within:
-		return "within the margin of " + amount(c.Margin)
+		return "within the margin of " + margin
 	case results.Worse:
-		return "worse than the margin of " + amount(c.Margin)
+		return "worse than the margin of " + margin
 	case results.Diverged:
 		return fmt.Sprintf("it diverged in %d of %s", v.Diverged, number(v.Of, "replicate"))
 	}
 	if c.AgainstDiverged > 0 {
 		return fmt.Sprintf("undecided, for the other arm diverged in %d of %s", c.AgainstDiverged, number(c.N, "replicate"))
 	}
-	return "undecided (" + needs(nil, c) + ")"
+	return "undecided" + needs(c)
 }
 
 // arm returns the arm with that slug, nil if the study does not describe it.
@@ -182,38 +231,4 @@ func armName(s *results.Study, slug string) string {
 		return "“" + name + "”"
 	}
 	return name
-}
-
-// list joins words as prose does.
-func list(words []string) string {
-	if len(words) < 2 {
-		return strings.Join(words, "")
-	}
-	return strings.Join(words[:len(words)-1], ", ") + " and " + words[len(words)-1]
-}
-
-// be is the verb between n subjects and what is said of them.
-func be(n int) string {
-	if n == 1 {
-		return " is "
-	}
-	return " are "
-}
-
-// number is a count with its noun, plural by an s.
-func number(n int, noun string) string {
-	if n == 1 {
-		return "1 " + noun
-	}
-	return strconv.Itoa(n) + " " + noun + "s"
-}
-
-// amount prints a figure with at most three significant digits, without an
-// exponent where four decimals suffice.
-func amount(x float64) string {
-	rounded, err := strconv.ParseFloat(strconv.FormatFloat(x, 'g', 3, 64), 64)
-	if err != nil || rounded != 0 && math.Abs(rounded) < 1e-5 {
-		return strconv.FormatFloat(x, 'g', 3, 64)
-	}
-	return strconv.FormatFloat(rounded, 'f', -1, 64)
 }

@@ -22,6 +22,7 @@ func settings(master string) []results.Setting {
 var (
 	armA = results.Arm{Name: "bf16 nearest", Slug: "a", Settings: settings("nearest-even")}
 	armB = results.Arm{Name: "bf16 stochastic update", Slug: "b", Settings: settings("stochastic r=16 truncated")}
+	armD = results.Arm{Name: "bf16 again", Slug: "d", Settings: settings("nearest-even")}
 	armC = results.Arm{Name: "fp16 nearest, fp16 sums", Slug: "c", Settings: settings("toward-zero")}
 )
 
@@ -37,7 +38,7 @@ func TestAnswer(t *testing.T) {
 	worse := results.Verdict{Kind: results.Worse}
 	diverged := results.Verdict{Kind: results.Diverged, Diverged: 2, Of: 10}
 	open := results.Verdict{Kind: results.Undecided, Pairs: 34}
-	arms := []results.Arm{{Name: "baseline", Slug: "baseline", Baseline: true}, armA, armB, armC}
+	arms := []results.Arm{{Name: "baseline", Slug: "baseline", Baseline: true}, armA, armB, armC, armD}
 	table := func(cs ...results.Comparison) results.Study { return results.Study{Arms: arms, Comparisons: cs} }
 	contrast := func(change func(*results.Comparison)) results.Study {
 		c := compared("b", within, 10)
@@ -61,56 +62,77 @@ func TestAnswer(t *testing.T) {
 		},
 		{
 			"the only arm within", table(compared("a", within, 10)),
-			"The only arm, bf16 nearest (nearest-even rounding; 10 pairs), stays within the margin of 0.005 in test accuracy.",
+			"The only arm, bf16 nearest, with nearest-even rounding, stays within the margin of 0.5 percentage points in test accuracy (10 pairs).",
 		},
 		{
 			"the only arm worse", table(compared("a", worse, 10)),
-			"No arm is shown to stay within the margin of 0.005 in test accuracy; bf16 nearest (nearest-even rounding; 10 pairs) is worse than the margin.",
+			"No arm is shown to stay within the margin of 0.5 percentage points in test accuracy. bf16 nearest, with nearest-even rounding, is worse than the margin (10 pairs).",
 		},
 		{
 			"all within", table(compared("a", within, 10), compared("b", within, 10)),
-			"All 2 arms stay within the margin of 0.005 in test accuracy: bf16 nearest (nearest-even rounding; 10 pairs) and " +
-				"bf16 stochastic update (stochastic rounding at update.master, nearest-even elsewhere; 10 pairs).",
+			"All 2 arms stay within the margin of 0.5 percentage points in test accuracy: bf16 nearest, with nearest-even rounding (10 pairs); " +
+				"bf16 stochastic update, with stochastic rounding at update.master, nearest-even elsewhere (10 pairs).",
 		},
 		{
 			"one of each", table(compared("a", worse, 10), compared("b", within, 10), compared("c", diverged, 10)),
-			"Of 3 arms, one stays within the margin of 0.005 in test accuracy: bf16 stochastic update (stochastic rounding at update.master, nearest-even elsewhere; 10 pairs); " +
-				"bf16 nearest (nearest-even rounding; 10 pairs) is worse than the margin; “fp16 nearest, fp16 sums” diverged in 2 of 10 replicates.",
+			"Of 3 arms, one stays within the margin of 0.5 percentage points in test accuracy: bf16 stochastic update, with stochastic rounding at update.master, nearest-even elsewhere (10 pairs). " +
+				"bf16 nearest, with nearest-even rounding, is worse than the margin (10 pairs). “fp16 nearest, fp16 sums” diverged in 2 of 10 replicates.",
 		},
 		{
 			"undecided", table(compared("a", open, 10), compared("b", results.Verdict{}, 10), compared("c", results.Verdict{}, 1)),
-			"No arm is shown to stay within the margin of 0.005 in test accuracy; bf16 nearest (needs about 34 pairs, has 10), " +
-				"bf16 stochastic update (after 10 pairs) and “fp16 nearest, fp16 sums” (one pair gives no interval) are undecided.",
+			"No arm is shown to stay within the margin of 0.5 percentage points in test accuracy. bf16 nearest is undecided after 10 pairs; about 34 would settle it. " +
+				"bf16 stochastic update is undecided after 10 pairs. “fp16 nearest, fp16 sums” is undecided: one pair gives no interval.",
 		},
 		{
 			"not finished", table(partly),
-			"No arm is shown to stay within the margin of 0.005 in test accuracy; bf16 nearest (6 of 10 planned pairs stored) is undecided.",
+			"No arm is shown to stay within the margin of 0.5 percentage points in test accuracy. bf16 nearest is undecided: 6 of 10 planned pairs stored.",
 		},
 		{
 			"contrast", contrast(func(*results.Comparison) {}),
-			"Against bf16 nearest, bf16 stochastic update is better by 0.0812 in test accuracy (95 % interval 0.07 to 0.0924, 10 pairs): within the margin of 0.005.",
+			"bf16 stochastic update scores 8.12 percentage points above bf16 nearest (95 % interval 7.00 to 9.24, 10 pairs): within the margin of 0.5 percentage points.",
+		},
+		{
+			"alike", table(compared("a", within, 10), compared("d", within, 10), compared("b", diverged, 10), compared("c", diverged, 10)),
+			"Of 4 arms, 2 stay within the margin of 0.5 percentage points in test accuracy: bf16 nearest and bf16 again, with nearest-even rounding (10 pairs each). " +
+				"bf16 stochastic update diverged in 2 of 10 replicates and “fp16 nearest, fp16 sums” in 2 of 10.",
+		},
+		{
+			"contrast of losses", contrast(func(c *results.Comparison) {
+				c.Metric, c.Margin, c.Mean, c.Low, c.High = "test loss", 0.02, -0.0234, -0.0311, 0.00001
+				c.Verdict = open
+			}),
+			"bf16 stochastic update is worse by 0.0234 nats than bf16 nearest (95 % interval −0.0311 to 0.0000, 10 pairs): undecided after 10 pairs; about 34 would settle it.",
+		},
+		{
+			"contrast near zero", contrast(func(c *results.Comparison) { c.Mean = -1e-6 }),
+			"bf16 stochastic update differs by less than 0.01 percentage points from bf16 nearest (95 % interval 7.00 to 9.24, 10 pairs): within the margin of 0.5 percentage points.",
+		},
+		{
+			"contrast not begun", results.Study{Arms: arms, Comparisons: []results.Comparison{compared("a", within, 10)}, Contrasts: []results.Comparison{{Arm: "b", Against: "a"}}},
+			"The only arm, bf16 nearest, with nearest-even rounding, stays within the margin of 0.5 percentage points in test accuracy (10 pairs). " +
+				"bf16 stochastic update and bf16 nearest have no pair of runs stored yet.",
 		},
 		{
 			"contrast worse", contrast(func(c *results.Comparison) { c.Mean, c.Low, c.High, c.Verdict = -0.05, -0.06, -0.04, worse }),
-			"Against bf16 nearest, bf16 stochastic update is worse by 0.05 in test accuracy (95 % interval -0.06 to -0.04, 10 pairs): worse than the margin of 0.005.",
+			"bf16 stochastic update scores 5.00 percentage points below bf16 nearest (95 % interval −6.00 to −4.00, 10 pairs): worse than the margin of 0.5 percentage points.",
 		},
 		{
 			"contrast equal", contrast(func(c *results.Comparison) { c.Mean, c.SD, c.Low, c.High = 0, 0, 0, 0 }),
-			"Against bf16 nearest, bf16 stochastic update does not differ in any pair in test accuracy (95 % interval 0 to 0, 10 pairs): within the margin of 0.005.",
+			"bf16 stochastic update does not differ in any pair from bf16 nearest (95 % interval 0.00 to 0.00, 10 pairs): within the margin of 0.5 percentage points.",
 		},
 		{
 			"contrast of one pair", contrast(func(c *results.Comparison) {
 				c.N, c.Planned, c.SD, c.Low, c.High, c.Verdict = 1, 1, math.NaN(), math.NaN(), math.NaN(), results.Verdict{}
 			}),
-			"Against bf16 nearest, bf16 stochastic update is better by 0.0812 in test accuracy (1 pair, no interval): undecided (one pair gives no interval).",
+			"bf16 stochastic update scores 8.12 percentage points above bf16 nearest (1 pair, no interval): undecided: one pair gives no interval.",
 		},
 		{
 			"contrast diverged", contrast(func(c *results.Comparison) { c.Mean, c.Low, c.Verdict = math.NaN(), math.NaN(), diverged }),
-			"Against bf16 nearest, bf16 stochastic update differs by an amount that is no number in test accuracy (10 pairs, no interval): it diverged in 2 of 10 replicates.",
+			"bf16 stochastic update differs by an amount that is no number from bf16 nearest (10 pairs, no interval): it diverged in 2 of 10 replicates.",
 		},
 		{
 			"contrast with a diverged arm", contrast(func(c *results.Comparison) { c.AgainstDiverged, c.Verdict = 1, results.Verdict{} }),
-			"Against bf16 nearest, bf16 stochastic update is better by 0.0812 in test accuracy (95 % interval 0.07 to 0.0924, 10 pairs): undecided, for the other arm diverged in 1 of 10 replicates.",
+			"bf16 stochastic update scores 8.12 percentage points above bf16 nearest (95 % interval 7.00 to 9.24, 10 pairs): undecided, for the other arm diverged in 1 of 10 replicates.",
 		},
 	} {
 		if got := Answer(&c.study); got != c.want {
@@ -154,8 +176,8 @@ func TestRounding(t *testing.T) {
 
 func TestAmount(t *testing.T) {
 	for x, want := range map[float64]string{
-		0.005: "0.005", 0.0812345: "0.0812", -0.1: "-0.1", 1: "1", 95: "95", 99.9: "99.9", 12345: "12300",
-		0: "0", 1e-9: "1e-09", 0.00001: "0.00001", 2.0 / 3: "0.667",
+		0.005: "0.005", 0.0812345: "0.0812", -0.1: "−0.1", 1: "1", 95: "95", 99.9: "99.9", 12345: "12300",
+		0: "0", 1e-9: "1e−09", 0.00001: "0.00001", 2.0 / 3: "0.667",
 	} {
 		if got := amount(x); got != want {
 			t.Errorf("%v printed as %s, want %s", x, got, want)

@@ -11,6 +11,7 @@ import (
 const fewForSkewness = 8
 
 // doubts are the warnings that travel with a comparison into the report.
+// Their readers put the arm's name before them, so none begins with it.
 // identical: every pair of runs has one digest.
 func doubts(c *results.Comparison, identical bool) (warnings []string) {
 	warn := func(format string, args ...any) { warnings = append(warnings, fmt.Sprintf(format, args...)) }
@@ -24,13 +25,15 @@ func doubts(c *results.Comparison, identical bool) (warnings []string) {
 		warn("one pair gives no interval and no verdict: ask for two replicates or more")
 	}
 	if c.Diverged > 0 {
-		warn("%s diverged in %d of %d replicates; they are scored as they stood", c.Arm, c.Diverged, c.N)
+		low, high := results.ExactRate(uint64(c.Diverged), uint64(c.N), c.Confidence)
+		warn("diverged in %d of %s (exact %s %% interval %s to %s %%); they are scored as they stood",
+			c.Diverged, number(c.N, "replicate"), amount(100*c.Confidence), amount(100*low), amount(100*high))
 	}
 	if c.AgainstDiverged > 0 {
-		warn("%s, which it is compared with, diverged in %d of %d replicates: no verdict", c.Against, c.AgainstDiverged, c.N)
+		warn("the arm it is compared with diverged in %d of %s: no verdict", c.AgainstDiverged, number(c.N, "replicate"))
 	}
 	if c.Stalled > 0 {
-		warn("%s stalled in %d of %d replicates: its training loss hardly fell below a constant predictor's", c.Arm, c.Stalled, c.N)
+		warn("stalled in %d of %s: the training loss hardly fell below a constant predictor's", c.Stalled, number(c.N, "replicate"))
 	}
 	if c.N > 0 && !allFinite(c.Differences) {
 		warn("the %s of some runs is not a finite number: no mean, no interval", c.Metric)
@@ -40,22 +43,24 @@ func doubts(c *results.Comparison, identical bool) (warnings []string) {
 
 // spreadDoubts are the doubts about how the differences are distributed.
 func spreadDoubts(c *results.Comparison, identical bool) (warnings []string) {
+	w := newMeasure(c)
 	switch {
 	case math.IsNaN(c.SD):
 		return nil
 	case c.SD == 0 && !identical:
-		return []string{fmt.Sprintf("all %d differences are exactly %.4g, so the interval has no width, although the runs differ: the metric is too coarse to tell", c.N, c.Mean)}
+		return []string{fmt.Sprintf("all %d differences are exactly %s, so the interval has no width, although the runs differ: the metric is too coarse to tell",
+			c.N, w.with(amount(w.scale(c.Mean))))}
 	case c.SD == 0:
 		return nil
 	}
 	// two standard errors: common practice
 	if limit := 2 * skewnessError(max(c.N, 3)); c.N >= fewForSkewness && math.Abs(c.Skewness) > limit {
 		warnings = append(warnings, fmt.Sprintf(
-			"the differences are skewed (skewness %.2f, more than %.2f, two standard errors): trust the bootstrap interval as much as the t interval", c.Skewness, limit))
+			"the differences are skewed (skewness %s, beyond two standard errors, %.2f): trust the bootstrap interval as much as the t interval", minus(fmt.Sprintf("%.2f", c.Skewness)), limit))
 	}
 	if side(c.Low, c.High, c.Margin) != side(c.BootLow, c.BootHigh, c.Margin) {
 		warnings = append(warnings, fmt.Sprintf(
-			"t and bootstrap intervals do not agree about the margin (bootstrap %.4g to %.4g)", c.BootLow, c.BootHigh))
+			"t and bootstrap intervals do not agree about the margin (bootstrap %s)", w.with(w.span(c.BootLow, c.BootHigh))))
 	}
 	return warnings
 }

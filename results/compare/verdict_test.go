@@ -199,7 +199,7 @@ func TestDoubts(t *testing.T) {
 	outlier[5] = 0.4
 	c := Pair(question("a", 0.2), runs("a", outlier...), runs("baseline", constant(12, 0.9)...))
 	all := strings.Join(c.Warnings, "\n")
-	if !strings.Contains(all, "skewed (skewness -3.4") {
+	if !strings.Contains(all, "skewed (skewness −3.4") {
 		t.Errorf("skewness %v, warnings %q", c.Skewness, all)
 	}
 	// the bootstrap reaches further down than t here
