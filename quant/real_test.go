@@ -169,9 +169,19 @@ func TestRealCompareSticky(t *testing.T) {
 		a, b Real
 		want int
 	}{
-		{third, cut, 1}, {cut, third, -1}, {third.Negated(), cut.Negated(), -1}, {cut.Negated(), third.Negated(), 1},
-		{cut, cut, 0}, {Real{}, third, -1}, {third, Real{}, 1}, {Real{}, third.Negated(), 1}, {Real{}, Real{Neg: true}, 0},
-		{third, third.Negated(), 1}, {third.Negated(), third, -1}, {Exactly(2), Exactly(3), -1}, {Exactly(-2), Exactly(-3), 1},
+		{third, cut, 1},
+		{cut, third, -1},
+		{third.Negated(), cut.Negated(), -1},
+		{cut.Negated(), third.Negated(), 1},
+		{cut, cut, 0},
+		{Real{}, third, -1},
+		{third, Real{}, 1},
+		{Real{}, third.Negated(), 1},
+		{Real{}, Real{Neg: true}, 0},
+		{third, third.Negated(), 1},
+		{third.Negated(), third, -1},
+		{Exactly(2), Exactly(3), -1},
+		{Exactly(-2), Exactly(-3), 1},
 	} {
 		if got := c.a.Compare(c.b); got != c.want {
 			t.Errorf("compare %+v with %+v: %d, want %d", c.a, c.b, got, c.want)

@@ -6,7 +6,6 @@ type reference[T Element] struct {
 	acc   Accumulate
 	outer *Point
 	leaf  []Real // terms of one result, for the orders that form trees
-	node  []float64
 }
 
 func newReference[T Element](acc Accumulate) reference[T] {

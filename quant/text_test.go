@@ -111,8 +111,11 @@ func TestTextErrors(t *testing.T) {
 		t.Error("chunks of no terms are accepted")
 	}
 	for _, p := range []Point{
-		{Format: Binary16, Rounding: Rounding{Bits: 3}}, {Format: Binary16, Rounding: Rounding{Mode: 77}},
-		{Format: Binary16, Rounding: Rounding{Mode: Stochastic, Variant: 7}}, {Format: Binary16, Overflow: 17}, {},
+		{Format: Binary16, Rounding: Rounding{Bits: 3}},
+		{Format: Binary16, Rounding: Rounding{Mode: 77}},
+		{Format: Binary16, Rounding: Rounding{Mode: Stochastic, Variant: 7}},
+		{Format: Binary16, Overflow: 17},
+		{},
 	} {
 		if p.Check() == nil {
 			t.Errorf("%+v is accepted", p)

@@ -16,11 +16,13 @@ func TestBlockKnownAnswers(t *testing.T) {
 	}{
 		{want: [4]uint32{0x6627e8d5, 0xe169c58d, 0xbc57ac4c, 0x9b00dbd8}},
 		{
-			[4]uint32{0xffffffff, 0xffffffff, 0xffffffff, 0xffffffff}, 0xffffffffffffffff,
+			[4]uint32{0xffffffff, 0xffffffff, 0xffffffff, 0xffffffff},
+			0xffffffffffffffff,
 			[4]uint32{0x408f276d, 0x41c83b0e, 0xa20bc7c6, 0x6d5451fd},
 		},
 		{ // the digits of pi
-			[4]uint32{0x243f6a88, 0x85a308d3, 0x13198a2e, 0x03707344}, 0x299f31d0a4093822,
+			[4]uint32{0x243f6a88, 0x85a308d3, 0x13198a2e, 0x03707344},
+			0x299f31d0a4093822,
 			[4]uint32{0xd16cfe09, 0x94fdcceb, 0x5001e420, 0x24126ea1},
 		},
 	} {
