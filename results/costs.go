@@ -3,15 +3,15 @@ package results
 // Costs is what the arms of a study would cost on hardware that has their
 // formats: figures of a model, never measurements. Bits are exact counts.
 type Costs struct {
-	Machine     string `json:"machine"` // the table's name, source and date
-	Energy      string `json:"energy"`  // likewise
-	Answer      string `json:"answer"`
-	Batch       uint64 `json:"batch"`     // examples of a training step
-	Reference   Bill   `json:"reference"` // everything in FP32
-	Bills       []Bill `json:"bills"`     // of the arms, in the plan's order
-	Assumptions []string
-	Cautions    []string
-	Warnings    []string
+	Machine     string   `json:"machine"` // the table's name, source and date
+	Energy      string   `json:"energy"`  // likewise
+	Answer      string   `json:"answer"`
+	Batch       uint64   `json:"batch"`     // examples of a training step
+	Reference   Bill     `json:"reference"` // everything in FP32
+	Bills       []Bill   `json:"bills"`     // of the arms, in the plan's order
+	Assumptions []string `json:"assumptions"`
+	Cautions    []string `json:"cautions"`
+	Warnings    []string `json:"warnings,omitempty"`
 }
 
 // Bill is the cost of one arm.

@@ -351,7 +351,7 @@ func browseWithoutScripts(t *testing.T, b *browser) {
 		return err
 	})
 	b.open(t, study{"usual", invented()}, 800)
-	if s := eval[string](t, b, `return document.querySelector('.sentence').textContent`); s != invented().Answer {
+	if s := eval[string](t, b, `return [...document.querySelectorAll('.sentence')].map(e => e.textContent).join(' ')`); s != invented().Answer {
 		t.Errorf("the answer is %q", s)
 	}
 	if eval[bool](t, b, `return [...document.querySelectorAll('.controls, .switches')].some(e => e.getClientRects().length)`) {

@@ -14,9 +14,29 @@ import (
 // they repeat together only after 24 lines.
 var dashes = [][]float64{nil, {7, 3}, {2, 3}, {9, 3, 2, 3}}
 
-// lossRange is the common logarithmic range of all loss curves. Values far above
-// where training began say only "lost" and are cut off at the top edge.
+// lossRange is the common logarithmic range of all loss curves with their bands.
 func lossRange(v *view) (lo, hi float64, ok bool) {
+	return rangeOf(v, func(take func(curves ...[]float64)) {
+		for _, a := range v.arms {
+			for _, c := range []*curve{&a.Training, &a.Validation, &a.Test} {
+				take(c.Low, c.Mid, c.High)
+			}
+		}
+	})
+}
+
+// medianRange is the range of the medians of the training loss.
+func medianRange(v *view) (lo, hi float64, ok bool) {
+	return rangeOf(v, func(take func(curves ...[]float64)) {
+		for _, a := range v.arms {
+			take(a.Training.Mid)
+		}
+	})
+}
+
+// rangeOf is the logarithmic range of what each passes on. Values far above
+// where training began say only "lost" and are cut off at the top edge.
+func rangeOf(v *view, each func(take func(curves ...[]float64))) (lo, hi float64, ok bool) {
 	lo, hi = math.Inf(1), 0
 	start := 0.0 // the highest median of the first stretch: where training began
 	for _, a := range v.arms {
@@ -25,16 +45,16 @@ func lossRange(v *view) (lo, hi float64, ok bool) {
 				start = m
 			}
 		}
-		for _, c := range []*curve{&a.Training, &a.Validation, &a.Test} {
-			for i := range c.Mid {
-				for _, x := range []float64{c.Low[i], c.Mid[i], c.High[i]} {
-					if x > 0 && !math.IsInf(x, 0) {
-						lo, hi = math.Min(lo, x), math.Max(hi, x)
-					}
+	}
+	each(func(curves ...[]float64) {
+		for _, c := range curves {
+			for _, x := range c {
+				if x > 0 && !math.IsInf(x, 0) {
+					lo, hi = math.Min(lo, x), math.Max(hi, x)
 				}
 			}
 		}
-	}
+	})
 	if hi == 0 { // no positive loss anywhere: a logarithmic axis has nothing to show
 		return 0, 0, false
 	}
@@ -86,7 +106,7 @@ func (v *view) duration() float64 {
 // overview draws the median training loss of all arms in one plot, each line
 // named at its end.
 func overview(v *view, width float64) []*draw.Figure {
-	lo, hi, ok := lossRange(v)
+	lo, hi, ok := medianRange(v)
 	if !ok {
 		return nil
 	}

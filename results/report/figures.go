@@ -27,6 +27,7 @@ var figureTable = []struct {
 	{"loss-by-arm", false, panels},
 	{"score-against-bits", false, front},
 	{"step-map", false, stepMap},
+	{"range-map", false, rangeMap},
 	{"recall", false, recallLattice},
 }
 

@@ -83,6 +83,9 @@ func invented() *results.Study {
 		}
 		s.Comparisons = append(s.Comparisons, inventComparison(a, "baseline", base, scores))
 	}
+	for _, c := range s.Runs[0].Counters {
+		s.Volumes = append(s.Volumes, results.Volume{Layer: c.Layer, Point: c.Point, Values: 4_000_000})
+	}
 	s.Arms[2].Guilty = []string{"update.master"}
 	c := inventComparison(inventedArms[1], "bf16-nearest", lastScores(s, "bf16-nearest"), lastScores(s, inventedArms[1].slug))
 	c.Headline = true

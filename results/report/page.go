@@ -45,14 +45,15 @@ var sectionTable = []struct {
 
 // pageData is what the page's frame needs.
 type pageData struct {
-	Heading, Answer string
-	Alarms          []fact
-	WarningCount    string
-	WrittenOn       string
-	Code, Digest    string
-	Style           template.CSS
-	Script, Curves  template.JS
-	Sections        []section
+	Heading        string
+	Answer         []string // sentences and clauses
+	Alarms         []fact
+	WarningCount   string
+	WrittenOn      string
+	Code, Digest   string
+	Style          template.CSS
+	Script, Curves template.JS
+	Sections       []section
 }
 
 // section is one rendered section.
@@ -81,7 +82,7 @@ func (v *view) html(w io.Writer) error {
 		return fmt.Errorf("report: %w", err)
 	}
 	p := pageData{
-		Heading: v.heading(), Answer: v.answer(), Alarms: v.alarms(), WrittenOn: day(v.Written),
+		Heading: v.heading(), Answer: v.sentences(), Alarms: v.alarms(), WrittenOn: day(v.Written),
 		Code: plain(v.CodeVersion), Digest: plain(v.StoreDigest),
 		// The three are the project's own files and JSON that escapes <, > and &.
 		Style: template.CSS(style), Script: template.JS(script), Curves: template.JS(v.curveData()),

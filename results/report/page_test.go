@@ -115,7 +115,7 @@ func TestPageOrder(t *testing.T) {
 	page := pageOf(t, s)
 	at := strings.Index(page, "<main>")
 	for _, want := range []string{
-		html.EscapeString(s.Answer), `id="claim"`, `id="verdicts"`, `id="differences"`, `id="contrasts"`, `id="curves"`, `id="front"`,
+		html.EscapeString(newView(s).sentences()[0]), `id="claim"`, `id="verdicts"`, `id="differences"`, `id="contrasts"`, `id="curves"`, `id="front"`,
 		`id="step-map-section"`, `id="counters"`, `id="recall-section"`, `id="runs"`, `id="plan"`, `id="rerun"`, `id="warnings"`, `id="cautions"`, `id="glossary"`,
 	} {
 		k := strings.Index(page[at:], want)

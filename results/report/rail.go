@@ -3,6 +3,7 @@ package report
 import (
 	"fmt"
 	"math"
+	"slices"
 	"strings"
 
 	"ulpine/results"
@@ -150,22 +151,7 @@ func (r *rail) ground(g *draw.Group, bottom float64) {
 		s.Rect(x0, r.top, x1-x0, bottom-r.top, draw.Fill(draw.Floor).With(0.12))
 		s.Hatch(x0, r.top, x1-x0, bottom-r.top, 6, draw.Line(draw.Floor, 0.9).With(0.75))
 	}
-	ticks := r.scale.Ticks(int((r.right - r.left) / 60))
-	labels := draw.TickLabels(ticks)
-	last := math.Inf(-1) // right edge of the last label
-	for i, t := range ticks {
-		x := r.scale.At(t)
-		if x < r.left-1 || x > r.right+1 {
-			continue
-		}
-		g.Line(x, r.top, x, bottom, draw.Line(draw.Faint, 0.8))
-		g.Line(x, bottom, x, bottom+4, draw.Line(draw.Ink, 1))
-		w := draw.Width(labels[i], 10.5, false)
-		if x-w/2 > last+5 { // where labels would touch, the tick stands without one
-			g.Text(x, bottom+16, labels[i], draw.Type{Size: 10.5, Anchor: draw.Middle, Role: draw.Soft})
-			last = x + w/2
-		}
-	}
+	r.ticks(g, bottom)
 	g.Line(r.left, bottom, r.right, bottom, draw.Line(draw.Ink, 1))
 	if zero := r.scale.At(0); zero >= r.left && zero <= r.right {
 		g.Line(zero, r.top-6, zero, bottom, draw.Line(draw.Ink, 1.2))
@@ -179,6 +165,42 @@ func (r *rail) ground(g *draw.Group, bottom float64) {
 		}
 	}
 	r.axisWords(g, bottom)
+}
+
+// tickGap is the least distance of two labels of the axis, pixels; closer ones
+// read as one number.
+const tickGap = 12.0
+
+// ticks draws grid and axis labels. Where labels would come close, the tick
+// stands without one; zero and the ends of the linear part keep theirs.
+func (r *rail) ticks(g *draw.Group, bottom float64) {
+	ticks := r.scale.Ticks(int((r.right - r.left) / 60))
+	rank := func(t float64) int {
+		switch {
+		case t == 0:
+			return 0
+		case r.folded > 0 && math.Abs(math.Abs(t)-r.folded) < 1e-9*r.folded:
+			return 1
+		}
+		return 2
+	}
+	slices.SortStableFunc(ticks, func(a, b float64) int { return rank(a) - rank(b) })
+	var taken []draw.Box
+	for _, t := range ticks {
+		x := r.scale.At(t)
+		if x < r.left-1 || x > r.right+1 {
+			continue
+		}
+		g.Line(x, r.top, x, bottom, draw.Line(draw.Faint, 0.8))
+		g.Line(x, bottom, x, bottom+4, draw.Line(draw.Ink, 1))
+		words := draw.TickLabel(t)
+		w := draw.Width(words, 10.5, false)
+		b := draw.Box{X0: x - (w+tickGap)/2, X1: x + (w+tickGap)/2, Y1: 1}
+		if !slices.ContainsFunc(taken, func(o draw.Box) bool { return b.Overlap(o) > 0 }) {
+			g.Text(x, bottom+16, words, draw.Type{Size: 10.5, Anchor: draw.Middle, Role: draw.Soft})
+			taken = append(taken, b)
+		}
+	}
 }
 
 // axisWords says what the axis shows, with its unit and its good direction.

@@ -227,81 +227,13 @@ func (l *pointList) words(all map[string][]string) string {
 	return strings.Join(out, "; ")
 }
 
-// layerName is a layer by number and name; -1 stands for input and loss.
+// layerName is a layer by number and name, the first one 1, as a resolved plan
+// counts them; index -1 stands for input and loss.
 func layerName(layer int, name string) string {
 	if layer < 0 {
 		return plain(name)
 	}
-	return plain(fmt.Sprintf("%d %s", layer, name))
-}
-
-// shownCounters bounds the counter table of the page; the CSV file has all.
-const shownCounters = 300
-
-// counterSection sums the range counters over an arm's runs.
-func counterSection(v *view) any {
-	t := &tabular{
-		Caption: "Range events, summed over the replicates of an arm",
-		Columns: columns("Arm", "layer", "point", "#overflow", "#underflow to zero", "#saturation", "#NaN", "#runs"),
-	}
-	quiet, more := 0, 0 // points without events; rows beyond what is shown
-	for _, a := range v.arms {
-		for _, c := range tallies(a) {
-			if c.Counts == (results.Counts{}) {
-				quiet++
-				continue
-			}
-			if len(t.Rows) == shownCounters {
-				more++
-				continue
-			}
-			t.Rows = append(t.Rows, []string{
-				a.Label(), layerName(c.Layer, c.Name), plain(c.Point),
-				count(c.Counts.Overflow), count(c.Counts.Underflow), count(c.Counts.Saturated), count(c.Counts.NaN), strconv.Itoa(len(a.Runs)),
-			})
-		}
-	}
-	t.Notes = append(t.Notes, plural(quiet, "other counted point")+" saw nothing leave the range. Underflow is counted at stored points only, not inside products and sums.")
-	if more > 0 {
-		t.Notes = append(t.Notes, fmt.Sprintf("%d more rows are in counters.csv.", more))
-	}
-	return t
-}
-
-// tallies sums an arm's counters over its runs, in order of first appearance.
-func tallies(a *armView) []results.PointCounts {
-	type place struct {
-		layer       int
-		name, point string
-	}
-	at := map[place]int{}
-	var out []results.PointCounts
-	for _, r := range a.Runs {
-		for _, c := range r.Counters {
-			k := place{c.Layer, c.Name, c.Point}
-			i, ok := at[k]
-			if !ok {
-				i = len(out)
-				at[k] = i
-				out = append(out, results.PointCounts{Layer: c.Layer, Name: c.Name, Point: c.Point})
-			}
-			n := &out[i].Counts
-			n.Overflow += c.Counts.Overflow
-			n.Underflow += c.Counts.Underflow
-			n.Saturated += c.Counts.Saturated
-			n.NaN += c.Counts.NaN
-		}
-	}
-	return out
-}
-
-// count spells a count with thin spaces between thousands.
-func count(n uint64) string {
-	s := strconv.FormatUint(n, 10)
-	for i := len(s) - 3; i > 0; i -= 3 {
-		s = s[:i] + "\u202f" + s[i:]
-	}
-	return s
+	return plain(fmt.Sprintf("%d %s", layer+1, name))
 }
 
 // recallSection is recall by class, with a table and a confusion matrix an arm.

@@ -21,7 +21,7 @@ func TestChanges(t *testing.T) {
 		one[1][2] != "stochastic r=16 truncated" || one[1][5] != "update.state; update.step; update.master" {
 		t.Errorf("%q", one)
 	}
-	if four := v.changes(v.arms[4]); !strings.Contains(four[0][5], "forward.weight (all but 6 dense 5)") {
+	if four := v.changes(v.arms[4]); !strings.Contains(four[0][5], "forward.weight (all but 7 dense 5)") {
 		t.Errorf("%q", four[0])
 	}
 	for i := range s.Arms[1].Settings { // one layer alone
@@ -29,7 +29,7 @@ func TestChanges(t *testing.T) {
 			*x = s.Arms[0].Settings[i]
 		}
 	}
-	if one = newView(s).changes(newView(s).arms[1]); !strings.HasPrefix(one[0][5], "forward.weight (2 conv1d out=8)") {
+	if one = newView(s).changes(newView(s).arms[1]); !strings.HasPrefix(one[0][5], "forward.weight (3 conv1d out=8)") {
 		t.Errorf("%q", one)
 	}
 }

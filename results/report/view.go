@@ -3,6 +3,7 @@ package report
 import (
 	"sort"
 	"strconv"
+	"unicode"
 
 	"ulpine/results"
 )
@@ -121,6 +122,35 @@ func (a *armView) kind() (k results.VerdictKind, ok bool) {
 		return 0, false
 	}
 	return a.Comparison.Verdict.Kind, true
+}
+
+// sentences are the answer's sentences and, within them, its clauses, each with
+// its own stop: the first is what a reader takes away, the others qualify it.
+// Joined by blanks they are the answer. What stands in brackets or in quotation
+// marks is not taken apart.
+func (v *view) sentences() []string {
+	var out []string
+	rest := []rune(v.answer())
+	depth, quoted, from := 0, false, 0
+	for i, r := range rest {
+		switch r {
+		case '(', '[':
+			depth++
+		case ')', ']':
+			depth = max(0, depth-1)
+		case '“', '”':
+			quoted = r == '“'
+		case ' ':
+			if depth > 0 || quoted || i == from {
+				continue
+			}
+			stop := rest[i-1] == '.' && i+1 < len(rest) && (unicode.IsUpper(rest[i+1]) || rest[i+1] == '“')
+			if stop || rest[i-1] == ';' {
+				out, from = append(out, string(rest[from:i])), i+1
+			}
+		}
+	}
+	return append(out, string(rest[from:]))
 }
 
 // answer is the sentence that comes first everywhere.
