@@ -58,6 +58,9 @@ func (e *edge[T]) reshaped(batch int, shape []int) *edge[T] {
 	}
 }
 
+// first is the number of the batch's first element in the tensor of the whole set.
+func (e *edge[T]) first(p *pass) uint64 { return p.first * uint64(e.per) }
+
 // values are the first n examples.
 func (e *edge[T]) values(n int) []T { return e.value.data[:n*e.per] }
 

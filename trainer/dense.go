@@ -29,11 +29,12 @@ func parseDense(o *options, s *Spec) error {
 // the input gradient, by sample in the weight gradient.
 func newDense[T quant.Element](b *bench[T]) (layer[T], error) {
 	units, inputs := b.spec.Out[0], volume(b.spec.In)
-	return asLayer(newLinear(b, units, inputs, inputs, 1, 1, func(l *linear[T]) bindings[T] {
+	s := shape{units: units, terms: inputs, channels: inputs, inner: 1, outer: 1, groups: 1}
+	return asLayer(newLinear(b, s, func(l *linear[T]) bindings[T] {
 		return bindings[T]{
-			forward:    quant.Matrix[T]{Data: l.below.value.data, Row: 1, Col: inputs},
-			below:      quant.Matrix[T]{Data: l.belowGradient, Row: 1, Col: units},
-			weight:     quant.Matrix[T]{Data: l.activation, Row: inputs, Col: 1},
+			forward:    []quant.Columns[T]{quant.Matrix[T]{Data: l.below.value.data, Row: 1, Col: inputs}},
+			below:      []quant.Columns[T]{quant.Matrix[T]{Data: l.belowGradient, Row: 1, Col: units}},
+			weight:     []quant.Columns[T]{quant.Matrix[T]{Data: l.activation, Row: inputs, Col: 1}},
 			belowLeft:  quant.Matrix[T]{Data: l.belowWeight, Row: 1, Col: inputs},
 			belowTerms: units,
 		}

@@ -43,7 +43,9 @@
 //	weight gradient  unit           input channel, kernel  sample, output position
 //	                                row, kernel column
 //
-// In a dense layer every input is a channel of one position. k counts the full
+// In a dense layer every input is a channel of one position. Where a convolution's
+// channels fall into groups there is one such product a group, and i, the input
+// channel and k count within it. k counts the full
 // enumeration; terms that meet padding, or fall between the strides, are skipped:
 // they add nothing and draw nothing. The bias is added to the finished forward
 // sum at outer, else sum. The gradient of a bias is a sum of its own over sample,
@@ -55,6 +57,14 @@
 // window's inputs ascend row by row; the windows over an input ascend by output,
 // and k counts them from the first that could reach it. See the layers' own
 // comments.
+//
+// # Elementwise layers
+//
+// ReLU and max-pool choose; the others compute y = R[forward.activation](...) and
+// dx = R[input_gradient.result](...) of every element, one rounding each: leaky
+// ReLU and dropout exact products, smooth activations binary64 values of package
+// elementary (their comments state the formulas). Dropout leaves evaluations alone
+// and draws its masks from a stream that arms share.
 //
 // # Loss
 //
@@ -94,7 +104,9 @@
 // # Random words
 //
 // All words of a run come from keys derived from the replicate's seed alone, so
-// arms share them. A word's address is (element, step, site, phase). step counts
+// arms share them. Groups of channels after the first draw the words inside their
+// sums from a key of their own, because rows count within a group; see pass.group.
+// Masks of dropout are a stream beside those of rounding; see dropoutKind. A word's address is (element, step, site, phase). step counts
 // training steps from 1; the start (master, working copy) is step 0. site is
 // (layer index + 1) 256 + operation, 0 in place of layer index + 1 for the
 // network's input and output error; the operations are listed in points.go, rows
@@ -108,7 +120,7 @@
 // Initial weights are normal with mean 0 and variance gain/fan-in, drawn in
 // binary64: word stream of weights, step 0, the site of the parameter's working
 // copy, element by element. gain is 2 where a ReLU follows before the next layer
-// with weights, else 1. Biases start at zero. Then master = R[update.master] and
+// with weights, 2/(1 + slope^2) where a leaky one does, else 1. Biases start at zero. Then master = R[update.master] and
 // the working copy is made. A shuffled epoch is a Fisher-Yates permutation of its
 // own; see shuffle.
 //

@@ -55,7 +55,7 @@ func newEngine[T quant.Element](job *Job, train *split, parts parts) (*engine[T]
 	e.mover = newMover(parts.rule, job.Training.Optimizer, e.params)
 	e.gather = make([]float32, e.batch*train.per)
 	e.labels = make([]int32, e.batch)
-	e.pass = pass{seed: random.Derive(job.Seed, random.RoundingBits), phase: phaseTraining, tally: e.tally}
+	e.pass = pass{seed: random.Derive(job.Seed, random.RoundingBits), phase: phaseTraining, tally: e.tally, dropout: random.Derive(job.Seed, random.Dropout)}
 	return e, nil
 }
 

@@ -26,13 +26,14 @@ func paddedFrame[T quant.Element](from []T, g *window) *frame[T] {
 
 // dilatedFrame spreads a convolution's output gradient [samples, units, oh, ow]
 // by the strides and surrounds it so that every kernel position of every input
-// finds a place: kernel position (kr, kc) of input (y, x) is at row y + kh-1 - kr,
-// column x + kw-1 - kc.
+// finds a place: kernel position (kr, kc) of input (y, x) is at row y + (kh-1 - kr)
+// dh, column x + (kw-1 - kc) dw.
 func dilatedFrame[T quant.Element](from []T, units int, g *window) *frame[T] {
+	high, wide := g.reach()
 	f := &frame[T]{
 		from: from, planes: units, h: g.oh, w: g.ow,
-		high: g.h + g.kh - 1, wide: g.w + g.kw - 1,
-		top: g.kh - 1 - g.ph, left: g.kw - 1 - g.pw, sh: g.sh, sw: g.sw,
+		high: g.h + high - 1, wide: g.w + wide - 1,
+		top: high - 1 - g.ph, left: wide - 1 - g.pw, sh: g.sh, sw: g.sw,
 	}
 	return f.allocate()
 }

@@ -44,9 +44,15 @@ var kinds = []*kind{
 	&conv1dKind,
 	&conv2dKind,
 	&reluKind,
+	&leakyReluKind,
+	&tanhKind,
+	&sigmoidKind,
+	&geluKind,
 	&maxPoolKind,
 	&avgPoolKind,
+	&globalAvgPoolKind,
 	&flattenKind,
+	&dropoutKind,
 }
 
 // findKind returns the row of a name, or nil.

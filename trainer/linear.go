@@ -12,7 +12,10 @@ import "ulpine/quant"
 //	weight gradient  unit           term of the kernel    sample, position
 //	bias gradient    unit                                 sample, position
 //
-// A dense layer has one position and as many input channels as inputs.
+// A dense layer has one position and as many input channels as inputs. Where
+// channels fall into groups there is one such product a group: i counts units (or
+// input channels), and k terms, within the group, and the random words of group n
+// >= 1 come from a key of its own (see pass.group).
 // Products come out with j running fastest; tensors keep whole examples
 // together, so a result is regrouped before it is rounded and stored.
 type linear[T quant.Element] struct {
@@ -20,13 +23,13 @@ type linear[T quant.Element] struct {
 	below, above *edge[T]
 	weight, bias *param[T]
 
-	units, terms              int // rows of the weight, terms of one forward sum
-	channels, inner, outer    int // input channels, positions below and above
+	shape
 	forwardMul, belowMul, mul *quant.Multiplier[T]
 
-	forwardProduct quant.Product[T]
-	belowProduct   quant.Product[T]
-	weightProduct  quant.Product[T]
+	// One product a group.
+	forwardProduct []quant.Product[T]
+	belowProduct   []quant.Product[T]
+	weightProduct  []quant.Product[T]
 
 	// Operands of the gradient products; each is the stored tensor itself or,
 	// where the arm sets a point, scratch for its rounding.
@@ -41,6 +44,10 @@ type linear[T quant.Element] struct {
 	frames    frames[T]
 }
 
+// shape are the numbers of a linear layer: rows of the weight, terms of one forward
+// sum, input channels, positions below and above, groups of channels.
+type shape struct{ units, terms, channels, inner, outer, groups int }
+
 // frames surround the operands of convolutions; a dense layer has none. weight
 // is forward where the two share their operand.
 type frames[T quant.Element] struct {
@@ -48,13 +55,13 @@ type frames[T quant.Element] struct {
 }
 
 // bindings are what a kind of layer adds to the shared arithmetic: right-hand
-// operands, and the left-hand one of the input gradient.
+// operands, one a group, and the left-hand one of the input gradient.
 type bindings[T quant.Element] struct {
-	forward quant.Columns[T] // B[kernel term, (sample, position)]
-	below   quant.Columns[T] // B[(unit, kernel position), (sample, input position)]
-	weight  quant.Columns[T] // B[(sample, position), kernel term]
-	// belowLeft is A[input channel, (unit, kernel position)]; rearrange, if not
-	// nil, fills its memory from a weight tensor in every step.
+	forward []quant.Columns[T] // B[kernel term, (sample, position)]
+	below   []quant.Columns[T] // B[(unit, kernel position), (sample, input position)]
+	weight  []quant.Columns[T] // B[(sample, position), kernel term]
+	// belowLeft is A[input channel, (unit, kernel position)], the groups in turn;
+	// rearrange, if not nil, fills its memory from a weight tensor in every step.
 	belowLeft  quant.Matrix[T]
 	belowTerms int
 	rearrange  func(dst, weight []T)
@@ -63,17 +70,17 @@ type bindings[T quant.Element] struct {
 
 // newLinear allocates everything. operands holds the four gradient operands that
 // bind needs to point its columns at.
-func newLinear[T quant.Element](b *bench[T], units, terms, channels, inner, outer int, bind func(l *linear[T]) bindings[T]) (*linear[T], error) {
+func newLinear[T quant.Element](b *bench[T], s shape, bind func(l *linear[T]) bindings[T]) (*linear[T], error) {
 	l := &linear[T]{
 		place: b.place, below: b.below, above: b.above,
 		weight: newParam(b, 0), bias: newParam(b, 1),
-		units: units, terms: terms, channels: channels, inner: inner, outer: outer,
+		shape: s,
 	}
 	l.chooseOperands(b.batch)
-	if outer > 1 {
-		l.regrouped = make([]T, b.batch*units*outer)
+	if s.outer > 1 {
+		l.regrouped = make([]T, b.batch*s.units*s.outer)
 	}
-	l.results = make([]T, max(b.batch*units*outer, b.batch*channels*inner, units*terms))
+	l.results = make([]T, max(b.batch*s.units*s.outer, b.batch*s.channels*s.inner, s.units*s.terms))
 	if err := l.makeMultipliers(); err != nil {
 		return nil, err
 	}
@@ -112,15 +119,19 @@ func (l *linear[T]) makeMultipliers() (err error) {
 // interface in every step would allocate.
 func (l *linear[T]) makeProducts(b bindings[T]) {
 	l.rearrange, l.frames = b.rearrange, b.frames
-	l.forwardProduct = quant.Product[T]{
-		I: l.units, K: l.terms,
-		A:    quant.Matrix[T]{Data: l.weight.working.data, Row: l.terms, Col: 1},
-		B:    b.forward,
-		C:    l.results,
-		Bias: l.bias.working.data,
+	units, channels := l.units/l.groups, l.channels/l.groups
+	for n := range l.groups {
+		left := b.belowLeft
+		left.Data = left.Data[n*channels*b.belowTerms:]
+		l.forwardProduct = append(l.forwardProduct, quant.Product[T]{
+			I: units, K: l.terms,
+			A:    quant.Matrix[T]{Data: l.weight.working.data[n*units*l.terms:], Row: l.terms, Col: 1},
+			B:    b.forward[n],
+			Bias: l.bias.working.data[n*units:],
+		})
+		l.belowProduct = append(l.belowProduct, quant.Product[T]{I: channels, K: b.belowTerms, A: left, B: b.below[n]})
+		l.weightProduct = append(l.weightProduct, quant.Product[T]{I: units, J: l.terms, B: b.weight[n]})
 	}
-	l.belowProduct = quant.Product[T]{I: l.channels, K: b.belowTerms, A: b.belowLeft, B: b.below, C: l.results}
-	l.weightProduct = quant.Product[T]{I: l.units, J: l.terms, B: b.weight, C: l.results}
 }
 
 func (l *linear[T]) params() []*param[T] { return []*param[T]{l.weight, l.bias} }
@@ -131,13 +142,16 @@ func (l *linear[T]) forward(p *pass) {
 	if l.frames.forward != nil {
 		l.frames.forward.fill(p.samples)
 	}
-	q := &l.forwardProduct
-	q.J, q.C, q.FirstJ = columns, l.results[:l.units*columns], p.first*uint64(l.outer)
-	q.Terms, q.Sums = l.streams(p, opForwardProduct), l.streams(p, opForwardSum)
-	l.forwardMul.Mul(*q, l.counts(p, ForwardProduct), l.counts(p, ForwardSum))
+	results := l.results[:l.units*columns]
+	for n := range l.forwardProduct {
+		q := &l.forwardProduct[n]
+		q.J, q.C, q.FirstJ = columns, results[n*q.I*columns:], p.first*uint64(l.outer)
+		q.Terms, q.Sums = p.group(n, l.streams(p, opForwardProduct)), p.group(n, l.streams(p, opForwardSum))
+		l.forwardMul.Mul(*q, l.counts(p, ForwardProduct), l.counts(p, ForwardSum))
+	}
 
 	y := l.above.values(p.samples)
-	groupByExample(y, q.C, p.samples, l.units, l.outer)
+	groupByExample(y, results, p.samples, l.units, l.outer)
 	round(l.place, p, ForwardActivation, opActivation, y, y, &l.set.Activation, p.first*uint64(l.above.per))
 }
 
@@ -176,11 +190,15 @@ func (l *linear[T]) weightBackward(p *pass) {
 func (l *linear[T]) weightSums(p *pass, left quant.Matrix[T], terms int) {
 	set := &l.set.WeightGradient
 	products, sums := l.counts(p, WeightGradientProduct), l.counts(p, WeightGradientSum)
-	q := &l.weightProduct
-	q.K, q.A, q.C = terms, left, l.results[:l.units*l.terms]
-	q.Terms, q.Sums = l.streams(p, opWeightProduct.of(0)), l.streams(p, opWeightSum.of(0))
-	l.mul.Mul(*q, products, sums)
-	round(l.place, p, WeightGradientResult, opWeightResult.of(0), l.weight.gradient.data, q.C, &set.Result, 0)
+	results := l.results[:l.units*l.terms]
+	for n := range l.weightProduct {
+		q := &l.weightProduct[n]
+		q.K, q.A, q.C = terms, left, results[n*q.I*l.terms:]
+		q.A.Data = left.Data[n*q.I*left.Row:]
+		q.Terms, q.Sums = p.group(n, l.streams(p, opWeightProduct.of(0))), p.group(n, l.streams(p, opWeightSum.of(0)))
+		l.mul.Mul(*q, products, sums)
+	}
+	round(l.place, p, WeightGradientResult, opWeightResult.of(0), l.weight.gradient.data, results, &set.Result, 0)
 
 	db := l.results[:l.units]
 	l.mul.SumRows(db, left, l.units, terms, l.streams(p, opWeightSum.of(1)), sums)
@@ -198,18 +216,21 @@ func (l *linear[T]) inputBackward(p *pass) {
 	if set.First != nil {
 		round(l.place, p, InputGradientWeight, opWeightAgain.of(0), l.belowWeight, l.weight.master.data, set.First, 0)
 	}
-	q := &l.belowProduct
 	if l.rearrange != nil {
-		l.rearrange(q.A.Data, l.belowWeight)
+		l.rearrange(l.belowProduct[0].A.Data, l.belowWeight)
 		l.frames.below.fill(n)
 	}
 	columns := n * l.inner
-	q.J, q.C = columns, l.results[:l.channels*columns]
-	q.Terms, q.Sums = l.streams(p, opInputProduct), l.streams(p, opInputSum)
-	l.belowMul.Mul(*q, l.counts(p, InputGradientProduct), l.counts(p, InputGradientSum))
+	results := l.results[:l.channels*columns]
+	for k := range l.belowProduct {
+		q := &l.belowProduct[k]
+		q.J, q.C = columns, results[k*q.I*columns:]
+		q.Terms, q.Sums = p.group(k, l.streams(p, opInputProduct)), p.group(k, l.streams(p, opInputSum))
+		l.belowMul.Mul(*q, l.counts(p, InputGradientProduct), l.counts(p, InputGradientSum))
+	}
 
 	dx := l.below.gradients(n)
-	groupByExample(dx, q.C, n, l.channels, l.inner)
+	groupByExample(dx, results, n, l.channels, l.inner)
 	round(l.place, p, InputGradientResult, opInputResult, dx, dx, &set.Result, 0)
 }
 

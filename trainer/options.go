@@ -76,6 +76,39 @@ func (o *options) only(what string, least int) (int, error) {
 	return n, err
 }
 
+// decimal reads an option of one decimal number, to its nearest binary32 number.
+func (o *options) decimal(key string, fallback float64) (float64, error) {
+	o.asked = append(o.asked, key)
+	text, ok := o.keyed[key]
+	if !ok {
+		return single(fallback), nil
+	}
+	delete(o.keyed, key)
+	return decimalNumber(key, text)
+}
+
+// onlyDecimal reads the single bare value of a layer such as "dropout 0.5".
+func (o *options) onlyDecimal(what string) (float64, error) {
+	if len(o.bare) == 0 {
+		return 0, fmt.Errorf("the %s is missing; write %q", what, o.kind.usage)
+	}
+	text := o.bare[0]
+	o.bare = o.bare[1:]
+	return decimalNumber("the "+what, text)
+}
+
+// decimalNumber reads a finite number, to its nearest binary32 number.
+func decimalNumber(what, text string) (float64, error) {
+	x, err := strconv.ParseFloat(text, 64)
+	if err != nil || x-x != 0 {
+		return 0, fmt.Errorf("%s is %q, not a number", what, text)
+	}
+	return single(x), nil
+}
+
+// decimalText is the shortest decimal that a binary32 number is nearest to.
+func decimalText(x float64) string { return strconv.FormatFloat(x, 'g', -1, 32) }
+
 // leftover finds words nobody asked for.
 func (o *options) leftover() error {
 	if len(o.bare) > 0 {

@@ -26,6 +26,15 @@ func TestLayersAreSpeltOut(t *testing.T) {
 	if got := net.Layers[1].Name + " " + shapeText(net.Layers[1].Out); got != "avgpool size=2x3 stride=2x3 2x2x2" {
 		t.Error(got)
 	}
+	net2 := network(t, []int{4, 30, 30}, "conv2d out=4 size=3 dilation=2x1 groups=4", "leakyrelu", "dropout 0.25", "gelu", "globalavgpool")
+	for i, want := range []string{"conv2d out=4 size=3 stride=1 pad=0 dilation=2x1 groups=4 4x26x28", "leakyrelu slope=0.01 4x26x28", "dropout 0.25 4x26x28", "gelu 4x26x28", "globalavgpool 4"} {
+		if got := net2.Layers[i].Name + " " + shapeText(net2.Layers[i].Out); got != want {
+			t.Errorf("layer %d is %q, want %q", i, got, want)
+		}
+		if again, err := parseLayer(net2.Layers[i].Name, net2.Layers[i].In); err != nil || again.Name != net2.Layers[i].Name {
+			t.Errorf("%q read again: %v", net2.Layers[i].Name, err)
+		}
+	}
 	again := network(t, net.Input, net.Layers[0].Name, net.Layers[1].Name, net.Layers[2].Name)
 	if fmt.Sprint(again.Layers[1].Out, again.Outputs()) != fmt.Sprint(net.Layers[1].Out, 8) {
 		t.Error("a name spelt out does not parse to the same layer")
@@ -55,7 +64,7 @@ func TestParseErrorsNameLayerAndRemedy(t *testing.T) {
 		{signal, []string{"conv1d out=2 width=3 strid=2"}, []string{`unknown option "strid"`, `did you mean "stride"?`}},
 		{signal, []string{"conv1d out=2 out=3 width=3"}, []string{"out is given twice"}},
 		{signal, []string{"conv1d out= width=3"}, []string{`"out=" is no option`, "key=value"}},
-		{signal, []string{"conv1d out=2 width=11"}, []string{"output length (10 + 2*0 - 11)/1 + 1 is below 1", "kernel of at most 10 or pad=1"}},
+		{signal, []string{"conv1d out=2 width=11"}, []string{"output length (10 + 2*0 - 11)/1 + 1 is below 1", "reaches over at most 10 or pad=1"}},
 		{signal, []string{"conv1d out=2 width=3 pad=3"}, []string{"pad=3 is not smaller than the kernel's 3", "use pad=2 or less"}},
 		{signal, []string{"conv1d out=2 width=3 stride=0"}, []string{"stride is 0; it must be at least 1"}},
 		{signal, []string{"conv2d out=2 size=3"}, []string{"conv2d needs an input of channels x rows x columns", "use conv1d"}},
@@ -63,6 +72,16 @@ func TestParseErrorsNameLayerAndRemedy(t *testing.T) {
 		{[]int{128}, []string{"maxpool size=2"}, []string{"maxpool needs an input of channels x rows x columns or of channels x length"}},
 		{image, []string{"conv2d out=2 size=5", "maxpool size=30"}, []string{"layer 2 of 2", "on an input of 2x24x24", "(24 + 2*0 - 30)/30 + 1"}},
 		{image, []string{"maxpool size=2 pad=1"}, []string{`unknown option "pad"`, "known: size, stride"}},
+		{signal, []string{"conv1d out=2 width=3 groups=3"}, []string{"groups=3 does not divide 2 input channels and 2 output channels"}},
+		{signal, []string{"conv1d out=3 width=3 groups=2"}, []string{"groups=2 does not divide", "common divisor"}},
+		{signal, []string{"conv1d out=2 width=3 dilation=5"}, []string{"(10 + 2*0 - 11)/1 + 1 is below 1"}},
+		{signal, []string{"conv1d out=2 width=3 dilation=0"}, []string{"dilation is 0; it must be at least 1"}},
+		{signal, []string{"dropout"}, []string{"probability of dropping is missing", `write "dropout 0.5"`}},
+		{signal, []string{"dropout 1"}, []string{"is 1; it must lie between 0 and 1"}},
+		{signal, []string{"dropout half"}, []string{`is "half", not a number`}},
+		{signal, []string{"leakyrelu slope=2"}, []string{"slope is 2; it must lie between 0 and 1"}},
+		{signal, []string{"leakyrelu slope=NaN"}, []string{`"NaN", not a number`}},
+		{[]int{5}, []string{"globalavgpool"}, []string{"globalavgpool needs an input of channels x rows x columns or of channels x length"}},
 		{image, []string{"dense 99999999"}, []string{"weight of 99999999x784", "more than"}},
 	}
 	for _, c := range cases {

@@ -1,6 +1,9 @@
 package trainer
 
-import "ulpine/quant"
+import (
+	"ulpine/quant"
+	"ulpine/quant/random"
+)
 
 // tally holds the counts of range events: entry i+1 is layer i, entry 0 the
 // input and the loss.
@@ -24,6 +27,7 @@ type pass struct {
 	seed    uint64 // the replicate's rounding key
 	step    uint32 // training step, the first is 1; the epoch in an evaluation
 	phase   uint32
+	dropout uint64 // the replicate's key of dropout masks
 	samples int    // examples in this batch
 	first   uint64 // number of the batch's first example in its data set; 0 in training
 	tally   tally  // nil in an evaluation: only training is counted
@@ -32,6 +36,21 @@ type pass struct {
 // draws addresses the random words of an operation of a layer.
 func (p *pass) draws(layer int, o operation) quant.Draws {
 	return quant.Draws{Seed: p.seed, Step: p.step, Site: site(layer, o), Phase: p.phase}
+}
+
+// groupStreams is the number of the stream of group 0; the package random's own
+// streams lie far below.
+const groupStreams = 1 << 16
+
+// group is the streams of group n of a layer's channels: those given for the first,
+// for the others the same under a key derived from the rounding key and n, because
+// rows are counted within a group.
+func (p *pass) group(n int, s quant.Streams) quant.Streams {
+	if n > 0 {
+		s.Row.Seed = random.Derive(p.seed, random.Stream(groupStreams+n))
+		s.Column.Seed = s.Row.Seed
+	}
+	return s
 }
 
 // place is a layer's position in the network and its arithmetic: what turns a
@@ -53,6 +72,11 @@ func (pl place) counts(p *pass, id PointID) *quant.Counts {
 		return nil
 	}
 	return &p.tally[pl.layer+1][id]
+}
+
+// combined is combine as an operation of a layer.
+func combined[T quant.Element](pl place, p *pass, id PointID, o operation, dst, a, b []T, how arithmetic, point *quant.Point, first uint64) {
+	combine(dst, a, b, how, point, pl.draws(p, o), first, pl.counts(p, id))
 }
 
 // round is the one road by which a tensor becomes a stored tensor: dst =

@@ -88,10 +88,11 @@ func outputs[T quant.Element](f *frame[T], g *window, samples int) []int32 {
 // kernel are the places of the terms (c, kr, kc) within a window of the input.
 func kernel[T quant.Element](f *frame[T], g *window) []int32 {
 	table := make([]int32, 0, f.planes*g.size())
+	dh, dw := g.apart()
 	for c := range f.planes {
 		for kr := range g.kh {
 			for kc := range g.kw {
-				table = append(table, int32(c*f.plane()+kr*f.wide+kc))
+				table = append(table, int32(c*f.plane()+kr*dh*f.wide+kc*dw))
 			}
 		}
 	}
@@ -115,10 +116,11 @@ func inputs[T quant.Element](f *frame[T], g *window, samples int) []int32 {
 // kernel turned round.
 func turnedKernel[T quant.Element](f *frame[T], g *window) []int32 {
 	table := make([]int32, 0, f.planes*g.size())
+	dh, dw := g.apart()
 	for u := range f.planes {
 		for kr := range g.kh {
 			for kc := range g.kw {
-				table = append(table, int32(u*f.plane()+(g.kh-1-kr)*f.wide+g.kw-1-kc))
+				table = append(table, int32(u*f.plane()+(g.kh-1-kr)*dh*f.wide+(g.kw-1-kc)*dw))
 			}
 		}
 	}
@@ -127,7 +129,8 @@ func turnedKernel[T quant.Element](f *frame[T], g *window) []int32 {
 
 // checkFrame refuses frames whose places 32 bits cannot number.
 func checkFrame(g *window, planes, samples int) error {
-	size := float64(g.h+2*g.kh) * float64(g.w+2*g.kw) * float64(planes) * float64(samples)
+	high, wide := g.reach()
+	size := float64(g.h+2*high) * float64(g.w+2*wide) * float64(planes) * float64(samples)
 	if size > math.MaxInt32 {
 		return fmt.Errorf("a batch of %d examples takes %.3g values with its margins; use a smaller batch or fewer channels", samples, size)
 	}

@@ -14,7 +14,9 @@ type Spec struct {
 	MACs   Work
 	Points []PointID // the rounding points this layer computes with
 
-	window window // geometry of convolutions and pools
+	window window  // geometry of convolutions and pools
+	groups int     // of a convolution's channels
+	number float64 // the one decimal of a kind that has one, a binary32 number
 }
 
 // ParamSpec is a parameter's name ("weight", "bias") and shape, and how many
@@ -90,15 +92,18 @@ func (n *Network) PointsOf(i int) []PointID {
 
 // gain is the factor in front of 1/fan-in in the variance of layer i's initial
 // weights: 2 where a ReLU follows before the next weights, because it halves the
-// second moment of what passes (He et al., Delving deep into rectifiers, ICCV
-// 2015, section 2.2), else 1.
+// second moment of what passes, 2/(1 + slope^2) where a leaky one does (He et al.,
+// Delving deep into rectifiers, ICCV 2015, section 2.2), else 1.
 func (n *Network) gain(i int) float64 {
 	for _, above := range n.Layers[i+1:] {
 		if len(above.Params) > 0 {
 			break
 		}
-		if above.Kind == reluKind.name {
+		switch above.Kind {
+		case reluKind.name:
 			return 2
+		case leakyReluKind.name:
+			return 2 / (1 + float64(above.number*above.number))
 		}
 	}
 	return 1
