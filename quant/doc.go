@@ -13,9 +13,10 @@
 //	tensor.go      formats with scales shared along an axis
 //	product.go     the operands of a product of matrices
 //	reference.go   sums in exact reals, one result at a time: the definition
-//	multiplier.go  the choice of path; mul.go blocks of columns; native.go the
-//	               machine's own arithmetic; engine.go, adds.go, orders.go, wide.go
-//	               everything else, bit-equal to the reference
+//	multiplier.go  the choice of path, each bit-equal to the reference: fast.go hands
+//	               products to internal/kernel; mul.go forms blocks of columns, in
+//	               the machine's own arithmetic (native.go) or in steps of binary64
+//	               (engine.go, adds.go, orders.go, wide.go, tables.go)
 //	text.go        words to and from plans
 //	random/        counter-based random words
 //	elementary/    the project's own exp and log

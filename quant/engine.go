@@ -43,8 +43,9 @@ type engine struct {
 type padder interface{ Padded(k, j int) bool }
 
 // newEngine returns the engine of acc, nil where one of its points has no quick
-// rounding.
-func newEngine(acc Accumulate) *engine {
+// rounding. Terms that are not rounded to a product point have at most bits bits
+// and are multiples of 2^place.
+func newEngine(acc Accumulate, bits, place int) *engine {
 	e := &engine{acc: acc, sum: newQuick(&acc.Sum)}
 	e.outer = e.sum
 	if acc.Outer != nil {
@@ -53,7 +54,6 @@ func newEngine(acc Accumulate) *engine {
 	if !e.sum.foldable || !e.outer.foldable {
 		return nil
 	}
-	termBits, place := 2*24, -2*149 // products of binary32 numbers
 	if acc.Product != nil {
 		e.product = newQuick(acc.Product)
 		switch {
@@ -61,13 +61,13 @@ func newEngine(acc Accumulate) *engine {
 		case !e.product.foldable:
 			return nil
 		default:
-			termBits, place = e.product.fraction+1, e.product.emin-e.product.fraction
+			bits, place = e.product.fraction+1, e.product.emin-e.product.fraction
 		}
 		if e.product.drop < 16 && e.product.kind == quickStochastic {
 			e.product.kind = quickGeneral // the 16 bits of a word reach below the last bit
 		}
 	}
-	e.setFolds(termBits, place)
+	e.setFolds(bits, place)
 	e.termWords.on = acc.Product != nil && acc.Product.Rounding.Mode == Stochastic
 	e.sumWords.on = acc.Sum.Rounding.Mode == Stochastic || e.outer.point.Rounding.Mode == Stochastic
 	return e

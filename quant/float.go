@@ -290,9 +290,6 @@ func (f Float) optionsOver(base Float) []string {
 	return o
 }
 
-// precision is the number of significand bits of a normal value.
-func (f Float) precision() int { return f.fraction + 1 }
-
 // exponentOf returns floor(log2 x) of a positive finite x.
 func exponentOf(x float64) int {
 	b := math.Float64bits(x)

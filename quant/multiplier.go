@@ -83,10 +83,10 @@ func NewMultiplier[T Element](acc Accumulate) (*Multiplier[T], error) {
 	if acc.Order.Kind > Lanes {
 		return m, nil // the reference alone knows the orders of hardware models
 	}
-	m.native, m.engine = newNative[T](acc), newEngine(acc)
+	m.native, m.engine = newNative[T](acc), newEngine(acc, 2*24, -2*149) // products of binary32 numbers
 	m.fast = newFast(m, acc)
 	acc.Product = nil
-	m.sumEngine = newEngine(acc)
+	m.sumEngine = newEngine(acc, 24, -149) // binary32 numbers
 	return m, nil
 }
 

@@ -74,7 +74,7 @@ func TestQuickKinds(t *testing.T) {
 		"fp64": quickNative64, "fp16 stochastic": quickStochastic, "fp16 stochastic(8,centred)": quickStochastic,
 		"fp16 stochastic(8,centred-even)": quickGeneral, "fp16 toward-zero": quickDirected, "fp32 up": quickDirected,
 		"fp16 nearest-away": quickDirected, "fp16 to-odd": quickGeneral, "E5M10(subnormals=flush)": quickDirected,
-		"E8M0": quickGeneral, "fp64 stochastic": quickNone, "E11M40": quickNone, "fp32 stochastic(32)": quickGeneral,
+		"E9M0": quickGeneral, "fp64 stochastic": quickNone, "E11M40": quickNone, "fp32 stochastic(32)": quickGeneral,
 	} {
 		p, err := ParsePoint(text)
 		if err != nil {
