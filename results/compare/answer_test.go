@@ -108,7 +108,8 @@ func TestAnswer(t *testing.T) {
 			"bf16 stochastic update differs by less than 0.01 percentage points from bf16 nearest (95 % interval 7.00 to 9.24, 10 pairs): within the margin of 0.5 percentage points.",
 		},
 		{
-			"contrast not begun", results.Study{Arms: arms, Comparisons: []results.Comparison{compared("a", within, 10)}, Contrasts: []results.Comparison{{Arm: "b", Against: "a"}}},
+			"contrast not begun",
+			results.Study{Arms: arms, Comparisons: []results.Comparison{compared("a", within, 10)}, Contrasts: []results.Comparison{{Arm: "b", Against: "a"}}},
 			"The only arm, bf16 nearest, with nearest-even rounding, stays within the margin of 0.5 percentage points in test accuracy (10 pairs). " +
 				"bf16 stochastic update and bf16 nearest have no pair of runs stored yet.",
 		},
