@@ -114,9 +114,10 @@ func TestFixedPointFits(t *testing.T) {
 // under a tensor scale that makes the largest magnitude 1.
 type shared struct{ Float }
 
-func (shared) TensorScale(largest float64) float64 { return largest }
+func (shared) Scaling(x []float64) Scaling { return Scaling{Factor: largestFinite(x)} }
 
-func (s shared) RoundLine(line []float64, scale float64, p *Point, word []uint32, n *Counts) {
+func (s shared) RoundLine(line []float64, tensor Scaling, p *Point, word []uint32, n *Counts) {
+	scale := tensor.Factor
 	for at := 0; at < len(line); at += 2 {
 		block := line[at:min(at+2, len(line))]
 		unit := powerOfTwo(exponentOf(max(largestFinite(block), 0x1p-60)) - exponentOf(scale))
@@ -187,9 +188,9 @@ type probe struct {
 	words *[]uint32
 }
 
-func (probe) TensorScale(float64) float64 { return 1 }
+func (probe) Scaling([]float64) Scaling { return Scaling{Factor: 1} }
 
-func (p probe) RoundLine(_ []float64, _ float64, _ *Point, word []uint32, _ *Counts) {
+func (p probe) RoundLine(_ []float64, _ Scaling, _ *Point, word []uint32, _ *Counts) {
 	*p.words = append(*p.words, word...)
 }
 

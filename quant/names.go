@@ -70,14 +70,21 @@ type family struct {
 }
 
 // families is the table of families: a new family adds one line.
-var families = []family{
-	{parsePowerScale, []string{"E8M0"}},
-	{parseDraft, []string{"binary8p3-draft", "binary8p4-draft"}},
-	{parseFixed, []string{"Q2.14", "UQ0.8"}},
-	{parsePosit, []string{"posit8", "posit16", "posit32"}},
-	{parseLogarithmic, []string{"LNS4.3", "LNS5.10"}},
-	{parseTable, nil},
-	{parseFloat, floatNames()},
+var families []family
+
+// It is filled at start because the elements of blocks have names themselves.
+func init() {
+	families = []family{
+		{parsePowerScale, []string{"E8M0"}},
+		{parseDraft, []string{"binary8p3-draft", "binary8p4-draft"}},
+		{parseFixed, []string{"Q2.14", "UQ0.8"}},
+		{parsePosit, []string{"posit8", "posit16", "posit32"}},
+		{parseLogarithmic, []string{"LNS4.3", "LNS5.10"}},
+		{parseTable, nil},
+		{parseInteger, []string{"INT8", "UINT8", "INT4"}},
+		{parseBlock, []string{"MXFP8", "MXFP6", "MXFP4", "MXINT8"}},
+		{parseFloat, floatNames()},
+	}
 }
 
 // FormatNames lists the names that ParseFormat knows besides the open families.
@@ -100,6 +107,10 @@ func FormatNames() []string {
 // The other scalar families: E8M0, the scale of MX (a signed float of that split is
 // written E8M0(top=ieee)); Q2.14 and UQ0.8, fixed point, with overflow=wrap or nan;
 // posit8 and other widths; LNS5.10, logarithmic; binary8p4-draft; table(-1,0,1).
+//
+// Formats with shared scales, for operands only: INT8(scale=99.9%,zero=fit,per=channel);
+// MXFP8(E4M3), MXFP6(E2M3), MXFP4(block=16,rule=up), MXINT8, and
+// block(E2M1,block=16,scale=E4M3,rule=nearest,tensor=binary32) for any other.
 func ParseFormat(name string) (Format, error) {
 	word := strings.TrimSpace(name)
 	for _, fam := range families {

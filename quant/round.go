@@ -208,7 +208,18 @@ func (p *Point) roundInfinity(neg bool) (float64, Event) {
 
 // Check reports what makes the point unusable: no format, random bits without
 // stochastic rounding or out of range, an overflow policy that the format lacks.
+//
+// A format with shared scales is refused: it rounds operands of products, see
+// CheckOperand.
 func (p Point) Check() error {
+	if _, shared := p.Format.(Blocked); shared {
+		return fmt.Errorf("%s: values share scales along an axis: only operands of products have such a format (a sum of codes is one of fixed point, Q32.0)", p.Format)
+	}
+	return p.CheckOperand()
+}
+
+// CheckOperand is Check for points that RoundTensor or RoundChannels serve.
+func (p Point) CheckOperand() error {
 	if p.Format == nil {
 		return fmt.Errorf("point without a format")
 	}
