@@ -10,6 +10,7 @@ import (
 	"ulpine/experiments/plan"
 	"ulpine/results"
 	"ulpine/results/compare"
+	"ulpine/results/cost"
 	"ulpine/results/store"
 )
 
@@ -37,6 +38,11 @@ func Study(p *plan.Plan, s *store.Store) (*results.Study, error) {
 	comparisons(l, study)
 	study.Cautions = cautions(p, study)
 	study.Answer = compare.Answer(study)
+	study.Volumes, study.Ranges = volumes(p), ranges(p)
+	machine, _ := cost.FindMachine(cost.DefaultMachine)
+	if err := AddCosts(study, p, machine, cost.DefaultEnergy()); err != nil {
+		study.Warnings = append(study.Warnings, "costs are left out: "+err.Error())
+	}
 	return study, nil
 }
 

@@ -53,14 +53,36 @@ func spreadDoubts(c *results.Comparison, identical bool) (warnings []string) {
 	case c.SD == 0:
 		return nil
 	}
-	// two standard errors: common practice
-	if limit := 2 * skewnessError(max(c.N, 3)); c.N >= fewForSkewness && math.Abs(c.Skewness) > limit {
+	if skewed(c) {
 		warnings = append(warnings, fmt.Sprintf(
-			"the differences are skewed (skewness %s, beyond two standard errors, %.2f): trust the bootstrap interval as much as the t interval", minus(fmt.Sprintf("%.2f", c.Skewness)), limit))
+			"the differences are skewed (skewness %s, beyond two standard errors), and the t interval then misses too often; the %s interval holds best: %s",
+			minus(fmt.Sprintf("%.2f", c.Skewness)), c.Offered, w.with(w.span(c.StudentLow, c.StudentHigh))))
+		if where := side(c.StudentLow, c.StudentHigh, c.Margin); where != side(c.Low, c.High, c.Margin) {
+			warnings = append(warnings, fmt.Sprintf("the %s interval and the t interval do not agree about the margin", c.Offered))
+		}
 	}
-	if side(c.Low, c.High, c.Margin) != side(c.BootLow, c.BootHigh, c.Margin) {
+	return append(warnings, disagreement(c)...)
+}
+
+// skewed reports whether the skewness lies beyond two of its standard errors
+// (common practice); below a few pairs it says next to nothing.
+func skewed(c *results.Comparison) bool {
+	return c.N >= fewForSkewness && math.Abs(c.Skewness) > 2*skewnessError(c.N)
+}
+
+// disagreement says which intervals see the margin elsewhere than the t interval
+// does. One without ends, for want of pairs, sees nothing.
+func disagreement(c *results.Comparison) (warnings []string) {
+	w := newMeasure(c)
+	for _, other := range []struct {
+		name      string
+		low, high float64
+	}{{"bootstrap", c.BootLow, c.BootHigh}, {"sign-flip", c.FlipLow, c.FlipHigh}} {
+		if math.IsNaN(other.low) || math.IsInf(other.low, 0) || side(c.Low, c.High, c.Margin) == side(other.low, other.high, c.Margin) {
+			continue
+		}
 		warnings = append(warnings, fmt.Sprintf(
-			"t and bootstrap intervals do not agree about the margin (bootstrap %s)", w.with(w.span(c.BootLow, c.BootHigh))))
+			"t and %s intervals do not agree about the margin (%s %s)", other.name, other.name, w.with(w.span(other.low, other.high))))
 	}
 	return warnings
 }

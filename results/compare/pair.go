@@ -11,10 +11,11 @@ import (
 type Question struct {
 	Arm, Against string // slugs
 	Metric       results.Metric
-	Margin       float64 // > 0
-	Confidence   float64 // of the two-sided interval, in (0, 1)
-	Planned      int     // pairs the plan asks for; 0: as many as there are
-	Headline     bool    // a contrast the plan asks for
+	Margin       float64  // > 0
+	Confidence   float64  // of the two-sided interval, in (0, 1)
+	Planned      int      // pairs the plan asks for; 0: as many as there are
+	Headline     bool     // a contrast the plan asks for
+	Classes      []string // names of the classes, for what is said of them
 }
 
 // Pair compares the runs of an arm with those of another by replicate. Runs that
@@ -34,8 +35,10 @@ func Pair(q Question, arm, against []results.Run) results.Comparison {
 	}
 	slices.Sort(c.Replicates)
 	identical := true
+	var pairs [][2]*results.Run
 	for _, replicate := range c.Replicates {
 		a, b := mine[replicate], theirs[replicate]
+		pairs = append(pairs, [2]*results.Run{a, b})
 		c.Differences = append(c.Differences, q.Metric.Gain(q.Metric.Final(a), q.Metric.Final(b)))
 		c.Diverged += count(a.Diverged != "")
 		c.AgainstDiverged += count(b.Diverged != "")
@@ -43,6 +46,8 @@ func Pair(q Question, arm, against []results.Run) results.Comparison {
 		identical = identical && a.Digest == b.Digest && !a.Digest.IsZero()
 	}
 	c.N = len(c.Differences)
+	c.Classes = classDifferences(q, pairs)
+	c.DivergedLow, c.DivergedHigh = results.ExactRate(uint64(c.Diverged), uint64(c.N), c.Confidence)
 	estimate(&c)
 	c.Warnings = doubts(&c, identical)
 	return c
@@ -72,6 +77,8 @@ func estimate(c *results.Comparison) {
 	nan := math.NaN()
 	c.Mean, c.SD, c.Skewness = nan, nan, nan
 	c.Low, c.High, c.BootLow, c.BootHigh = nan, nan, nan, nan
+	c.StudentLow, c.StudentHigh, c.FlipLow, c.FlipHigh = nan, nan, nan, nan
+	c.Middle, c.RankLow, c.RankHigh = nan, nan, nan
 	c.P, c.Holm, c.PWorse, c.HolmWorse = nan, nan, nan, nan
 	if c.N == 0 {
 		return
@@ -83,9 +90,29 @@ func estimate(c *results.Comparison) {
 	c.SD = deviation(c.Differences)
 	c.Skewness = skewness(c.Differences)
 	c.Low, c.High = interval(c.Mean, c.SD, c.N, c.Confidence)
-	c.BootLow, c.BootHigh = bootstrap(c.Differences, mean, c.Confidence)
 	c.P, c.PWorse = pValues(c.Mean, c.SD, c.N, c.Margin)
+	if c.N <= mostPairs {
+		further(c)
+	}
 }
+
+// mostPairs is up to how many pairs the intervals beside the t interval are
+// formed: beyond, they agree with it and take long.
+const mostPairs = 2000
+
+// further sets the intervals beside the t interval.
+func further(c *results.Comparison) {
+	c.BootLow, c.BootHigh = bootstrap(c.Differences, mean, c.Confidence)
+	c.StudentLow, c.StudentHigh = studentised(c.Differences, c.Confidence)
+	c.FlipLow, c.FlipHigh = signFlip(c.Differences, c.Confidence)
+	c.Middle, c.RankLow, c.RankHigh = signedRank(c.Differences, c.Confidence)
+	if skewed(c) {
+		c.Offered = Studentised
+	}
+}
+
+// Studentised is the name of the interval that holds best for skewed differences.
+const Studentised = "studentised bootstrap"
 
 func allFinite(xs []float64) bool {
 	return !slices.ContainsFunc(xs, func(x float64) bool { return math.IsNaN(x) || math.IsInf(x, 0) })

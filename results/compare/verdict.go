@@ -13,9 +13,12 @@ import (
 func Decide(family []results.Comparison) []results.Comparison {
 	decided := judge(family)
 	for i := range decided {
-		if c := &decided[i]; c.Verdict.Kind == results.Undecided {
+		switch c := &decided[i]; c.Verdict.Kind {
+		case results.Undecided:
 			c.Verdict.Pairs = settle(c, decided)
 			noteHolm(c, len(decided))
+		case results.Within:
+			noteClasses(c)
 		}
 	}
 	return decided

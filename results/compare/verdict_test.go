@@ -202,6 +202,12 @@ func TestDoubts(t *testing.T) {
 	if !strings.Contains(all, "skewed (skewness −3.4") {
 		t.Errorf("skewness %v, warnings %q", c.Skewness, all)
 	}
+	if c.Offered != Studentised || !strings.Contains(all, "the studentised bootstrap interval holds best: ") || !(c.StudentLow < c.Low) {
+		t.Errorf("offered %q, %v to %v; warnings %q", c.Offered, c.StudentLow, c.StudentHigh, all)
+	}
+	if !(c.FlipLow < c.Mean) || !(c.FlipHigh > c.Mean) || math.Abs(c.Middle) > 0.002 || !(c.RankLow > -0.01) {
+		t.Errorf("sign-flip %v to %v, centre %v, by ranks from %v", c.FlipLow, c.FlipHigh, c.Middle, c.RankLow)
+	}
 	// the bootstrap reaches further down than t here
 	c = Pair(question("a", -c.Low+1e-4), runs("a", outlier...), runs("baseline", constant(12, 0.9)...))
 	if all = strings.Join(c.Warnings, "\n"); !strings.Contains(all, "do not agree about the margin") {

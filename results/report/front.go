@@ -12,10 +12,55 @@ import (
 	"ulpine/results/report/draw"
 )
 
-// front draws the metric against bits per value: every arm its verdict's mark
-// with an upright interval, and the arms that none beats in both as steps.
-func front(v *view, width float64) []*draw.Figure {
-	arms := v.scored()
+// expense is what a front sets the score against: something to have less of.
+type expense struct {
+	id, title, axis string
+	// of is an arm's expense, and the ends of its interval where it has one:
+	// what different models of the same expense say. 0: not known.
+	of    func(v *view, a *armView) (x, low, high float64)
+	spell func(x float64) string
+}
+
+// expenses are the fronts of the report.
+var expenses = []expense{
+	{
+		"bits", "bits a value", "mean bits of a stored value",
+		func(_ *view, a *armView) (x, low, high float64) { return a.Bits, a.Bits, a.Bits },
+		func(x float64) string { return bits(x) + " bits" },
+	},
+	{
+		"bytes", "bytes moved", "bytes moved in a training step, % of FP32's",
+		func(_ *view, a *armView) (x, low, high float64) {
+			if a.Bill == nil {
+				return 0, 0, 0
+			}
+			x, tiled := 100*a.Bill.Step.BitShare, 100*a.Bill.StepTiled.BitShare
+			return x, math.Min(x, tiled), math.Max(x, tiled)
+		},
+		func(x float64) string { return significant(x, 3) + " % of FP32's bytes" },
+	},
+	{
+		"energy", "energy", "energy of a training step by model, % of FP32's",
+		func(_ *view, a *armView) (x, low, high float64) {
+			if a.Bill == nil {
+				return 0, 0, 0
+			}
+			x, tiled := 100*a.Bill.Step.EnergyShare, 100*a.Bill.StepTiled.EnergyShare
+			return x, math.Min(x, tiled), math.Max(x, tiled)
+		},
+		func(x float64) string { return significant(x, 3) + " % of FP32's energy" },
+	},
+}
+
+// frontOf is the drawing function of the front of expense i.
+func frontOf(i int) func(v *view, width float64) []*draw.Figure {
+	return func(v *view, width float64) []*draw.Figure { return v.front(&expenses[i], width) }
+}
+
+// front draws the metric against an expense: every arm its verdict's mark with
+// an upright interval, and the arms that none beats in both as steps.
+func (v *view) front(e *expense, width float64) []*draw.Figure {
+	arms := v.scored(e)
 	if len(arms) == 0 {
 		return nil
 	}
@@ -25,25 +70,29 @@ func front(v *view, width float64) []*draw.Figure {
 	}
 	height := math.Max(290, 15*float64(min(len(arms), namedArms+8))+20)
 	f := &draw.Figure{
-		Title: plain(v.Metric) + " against bits per value", Desc: v.describeFront(arms),
+		Title: plain(v.Metric) + " against " + e.title, Desc: v.describeFront(e, arms),
 		W: width, H: height + 58,
 	}
+	axis := draw.Wrap(e.axis, 10.5, false, width-60, 2)
+	f.H += 12 * float64(len(axis)-1)
 	p := frame{x0: 52, y0: 14, x1: width - names, y1: 14 + height}
-	p.x, p.y = bitScale(arms, p), v.scoreScale(arms, p)
+	p.x, p.y = v.expenseScale(e, arms, p), v.scoreScale(arms, p)
 	p.grid(&f.Group, v.scoreTick)
-	bitAxis(&f.Group, p)
-	f.Group.Text((p.x0+p.x1)/2, p.y1+32, "mean bits of a stored value", draw.Type{Size: 10.5, Anchor: draw.Middle})
-	set := pareto(v, arms)
-	drawSteps(&f.Group, p, set)
-	v.frontPoints(&f.Group, p, arms, set, width)
+	p.valueAxis(&f.Group)
+	for k, l := range axis {
+		f.Group.Text(p.x0, p.y1+32+12*float64(k), l, draw.Type{Size: 10.5})
+	}
+	set := pareto(v, e, arms)
+	v.drawSteps(&f.Group, e, p, set)
+	v.frontPoints(&f.Group, e, p, arms, set, width)
 	return []*draw.Figure{f}
 }
 
-// scored are the arms that have a score and a width.
-func (v *view) scored() []*armView {
+// scored are the arms that have a score and an expense.
+func (v *view) scored(e *expense) []*armView {
 	var out []*armView
 	for _, a := range v.arms {
-		if a.Score.N > 0 && a.Bits > 0 && !math.IsInf(a.Bits, 0) {
+		if x, _, _ := e.of(v, a); a.Score.N > 0 && x > 0 && !math.IsInf(x, 0) {
 			out = append(out, a)
 		}
 	}
@@ -51,10 +100,11 @@ func (v *view) scored() []*armView {
 }
 
 // describeFront tells the front in words.
-func (v *view) describeFront(arms []*armView) string {
+func (v *view) describeFront(e *expense, arms []*armView) string {
 	var b strings.Builder
 	for _, a := range arms {
-		fmt.Fprintf(&b, "%s: %s bits, %s. ", a.Label(), bits(a.Bits), v.scoreLine(a.Score))
+		x, _, _ := e.of(v, a)
+		fmt.Fprintf(&b, "%s: %s, %s. ", a.Label(), e.spell(x), v.scoreLine(a.Score))
 	}
 	return strings.TrimSpace(b.String())
 }
@@ -71,18 +121,19 @@ func (v *view) scoreLine(e estimate) string {
 	return fmt.Sprintf("%s %s, n = %d", v.words.value(e.Mean), iv, e.N)
 }
 
-// bitScale leaves at least one bit of room on either side.
-func bitScale(arms []*armView, p frame) draw.Linear {
+// expenseScale leaves at least one unit of room on either side.
+func (v *view) expenseScale(e *expense, arms []*armView, p frame) draw.Linear {
 	lo, hi := math.Inf(1), 0.0
 	for _, a := range arms {
-		lo, hi = math.Min(lo, a.Bits), math.Max(hi, a.Bits)
+		_, low, high := e.of(v, a)
+		lo, hi = math.Min(lo, low), math.Max(hi, high)
 	}
 	pad := math.Max(1, (hi-lo)*0.08)
 	return draw.Linear{Lo: math.Max(0, lo-pad), Hi: hi + pad, P0: p.x0, P1: p.x1}
 }
 
-// bitAxis draws the axis of bits below the frame.
-func bitAxis(g *draw.Group, p frame) {
+// valueAxis draws the level axis of values below the frame.
+func (p frame) valueAxis(g *draw.Group) {
 	g.Line(p.x0, p.y1, p.x1, p.y1, draw.Line(draw.Ink, 1))
 	for _, t := range p.x.Ticks(max(2, int((p.x1-p.x0)/50))) {
 		x := p.x.At(t)
@@ -175,16 +226,18 @@ func (v *view) scoreTick(t float64) string {
 	return draw.TickLabel(t)
 }
 
-// pareto are the arms that no other arm equals or beats in both bits and mean
-// score, by ascending bits. Arms that diverged are not in it.
-func pareto(v *view, arms []*armView) []*armView {
-	byBits := slices.Clone(arms)
-	slices.SortStableFunc(byBits, func(a, b *armView) int {
-		return cmp.Or(cmp.Compare(a.Bits, b.Bits), cmp.Compare(v.gain(b), v.gain(a)))
+// pareto are the arms that no other arm equals or beats in both expense and mean
+// score, by ascending expense. Arms that diverged are not in it.
+func pareto(v *view, e *expense, arms []*armView) []*armView {
+	byExpense := slices.Clone(arms)
+	slices.SortStableFunc(byExpense, func(a, b *armView) int {
+		x, _, _ := e.of(v, a)
+		y, _, _ := e.of(v, b)
+		return cmp.Or(cmp.Compare(x, y), cmp.Compare(v.gain(b), v.gain(a)))
 	})
 	var out []*armView
 	best := math.Inf(-1)
-	for _, a := range byBits {
+	for _, a := range byExpense {
 		k, ok := a.kind()
 		if g := v.gain(a); g > best && (!ok || k != results.Diverged) {
 			best = g
@@ -194,14 +247,15 @@ func pareto(v *view, arms []*armView) []*armView {
 	return out
 }
 
-// drawSteps draws what is reached with at most so many bits.
-func drawSteps(g *draw.Group, p frame, set []*armView) {
+// drawSteps draws what is reached with at most so much.
+func (v *view) drawSteps(g *draw.Group, e *expense, p frame, set []*armView) {
 	var pts []draw.Point
 	for i, a := range set {
-		x, y := p.x.At(a.Bits), p.y.At(a.Score.Mean)
+		spent, _, _ := e.of(v, a)
+		x, y := p.x.At(spent), p.y.At(a.Score.Mean)
 		if i > 0 {
 			pts = append(pts, draw.Point{X: x, Y: pts[len(pts)-1].Y})
-		} else { // with fewer bits than any arm, nothing is reached: the steps rise from the axis
+		} else { // with less than any arm, nothing is reached: the steps rise from the axis
 			pts = append(pts, draw.Point{X: x, Y: p.y1})
 		}
 		pts = append(pts, draw.Point{X: x, Y: y})
@@ -209,7 +263,7 @@ func drawSteps(g *draw.Group, p frame, set []*armView) {
 	if len(pts) > 0 {
 		pts = append(pts, draw.Point{X: p.x1, Y: pts[len(pts)-1].Y})
 	}
-	g.Titled("Pareto set: no arm needs fewer bits and scores better").Polyline(pts, draw.Line(draw.Ink, 1.5))
+	g.Titled("Pareto set: no arm needs less and scores better").Polyline(pts, draw.Line(draw.Ink, 1.5))
 }
 
 // namedArms is the number of arms up to which each has its name at the edge of
@@ -218,12 +272,13 @@ func drawSteps(g *draw.Group, p frame, set []*armView) {
 const namedArms = 16
 
 // frontPoints draws the arms' marks, intervals and names.
-func (v *view) frontPoints(g *draw.Group, p frame, arms, set []*armView, width float64) {
-	shift := v.sideways(arms)
+func (v *view) frontPoints(g *draw.Group, e *expense, p frame, arms, set []*armView, width float64) {
+	shift := v.sideways(e, p, arms)
 	places := make([]draw.Point, len(arms))
 	var named []int
 	for i, a := range arms {
-		places[i] = draw.Point{X: p.x.At(a.Bits) + shift[i], Y: p.y.At(a.Score.Mean)}
+		x, _, _ := e.of(v, a)
+		places[i] = draw.Point{X: p.x.At(x) + shift[i], Y: p.y.At(a.Score.Mean)}
 		if len(arms) <= namedArms || slices.Contains(set, a) {
 			named = append(named, i)
 		}
@@ -243,7 +298,7 @@ func (v *view) frontPoints(g *draw.Group, p frame, arms, set []*armView, width f
 		s.Text(p.x1+18, y+3.8, a.Label(), draw.Type{Size: 11, Bold: a.Number == 0, Max: width - p.x1 - 19})
 	}
 	for i, a := range arms {
-		v.frontPoint(groups[i], p, a, places[i])
+		v.frontPoint(groups[i], e, p, a, places[i])
 	}
 	if len(arms) > namedArms {
 		numberPoints(groups, p, arms, places)
@@ -251,16 +306,24 @@ func (v *view) frontPoints(g *draw.Group, p frame, arms, set []*armView, width f
 }
 
 // frontPoint draws one arm's interval and mark.
-func (v *view) frontPoint(g *draw.Group, p frame, a *armView, at draw.Point) {
-	t := g.Titled(a.Label() + ": " + v.scoreLine(a.Score) + "; difference " + v.differenceLine(a) + "; " + bits(a.Bits) + " bits")
+func (v *view) frontPoint(g *draw.Group, e *expense, p frame, a *armView, at draw.Point) {
+	x, left, right := e.of(v, a)
+	t := g.Titled(a.Label() + ": " + v.scoreLine(a.Score) + "; difference " + v.differenceLine(a) + "; " + e.spell(x))
 	low, high := v.frontBounds(a)
 	lo, hi, role := p.y.At(low), p.y.At(high), draw.Arm
 	if a == v.baseline {
 		role = draw.Base
 	}
+	if right > left { // what the models of the expense say, moved with the mark
+		d := at.X - p.x.At(x)
+		t.Line(p.x.At(left)+d, at.Y, p.x.At(right)+d, at.Y, draw.Line(role, 1.6))
+		for _, end := range []float64{left, right} {
+			t.Line(p.x.At(end)+d, at.Y-3.5, p.x.At(end)+d, at.Y+3.5, draw.Line(role, 1.4))
+		}
+	}
 	t.Line(at.X, lo, at.X, hi, draw.Line(role, 2.4))
-	for _, e := range []float64{lo, hi} {
-		t.Line(at.X-3.5, e, at.X+3.5, e, draw.Line(role, 1.4))
+	for _, end := range []float64{lo, hi} {
+		t.Line(at.X-3.5, end, at.X+3.5, end, draw.Line(role, 1.4))
 	}
 	if k, ok := a.kind(); ok {
 		drawMark(t, at.X, at.Y, 4.8, k)
@@ -298,10 +361,10 @@ func numberPoints(groups []*draw.Group, p frame, arms []*armView, places []draw.
 	}
 }
 
-// sideways parts arms of (nearly) the same bits by a few pixels, so that their
+// sideways parts arms of (nearly) the same expense by a few pixels, so that their
 // intervals do not hide each other. The best of them stays where it belongs: it
 // is the one on which a step of the Pareto set may stand.
-func (v *view) sideways(arms []*armView) []float64 {
+func (v *view) sideways(e *expense, p frame, arms []*armView) []float64 {
 	const step, most = 9.0, 27.0 // pixels
 	byScore := make([]int, len(arms))
 	for i := range byScore {
@@ -309,9 +372,10 @@ func (v *view) sideways(arms []*armView) []float64 {
 	}
 	slices.SortStableFunc(byScore, func(a, b int) int { return cmp.Compare(v.gain(arms[b]), v.gain(arms[a])) })
 	out := make([]float64, len(arms))
-	count := map[int]int{} // by half bits
+	count := map[int]int{} // by stretches of the axis
 	for _, i := range byScore {
-		k := int(math.Round(arms[i].Bits * 2))
+		x, _, _ := e.of(v, arms[i])
+		k := int(math.Round(p.x.At(x) / step))
 		n := count[k]
 		count[k]++
 		out[i] = step * float64((n+1)/2) // 0, -1, +1, -2, +2 ... steps

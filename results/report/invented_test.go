@@ -86,12 +86,39 @@ func invented() *results.Study {
 	for _, c := range s.Runs[0].Counters {
 		s.Volumes = append(s.Volumes, results.Volume{Layer: c.Layer, Point: c.Point, Values: 4_000_000})
 	}
+	s.Costs = inventCosts(s)
 	s.Arms[2].Guilty = []string{"update.master"}
 	c := inventComparison(inventedArms[1], "bf16-nearest", lastScores(s, "bf16-nearest"), lastScores(s, inventedArms[1].slug))
 	c.Headline = true
 	s.Contrasts = []results.Comparison{c}
 	s.Comparisons[1].Warnings = []string{"skewness 1.4: the t interval is doubtful"}
 	return s
+}
+
+// inventCosts charges every arm by its width.
+func inventCosts(s *results.Study) *results.Costs {
+	c := &results.Costs{
+		Machine: "invented machine, 2026", Energy: "invented table", Answer: "E4M3 stored moves the fewest bytes.", Batch: 32,
+		Assumptions: []string{"layers are not fused"}, Cautions: []string{"These are figures of a model, not measurements."}, Warnings: []string{"everything fits the cache"},
+	}
+	bill := func(slug string, bits float64) results.Bill {
+		charge := func(scale float64) results.Charge {
+			n := uint64(1e6 * bits * scale)
+			return results.Charge{
+				Bits: n, Weights: n / 4, Activations: n - n/4, Random: 16, Seconds: 1e-6 * bits, Binds: "memory", Picojoules: 3e5 * bits * scale,
+				BitShare: bits / 32, Speedup: 32 / bits, EnergyShare: (bits + 4*scale) / 36, EnergyExtrapolated: bits < 16,
+			}
+		}
+		return results.Bill{
+			Arm: slug, TrainingBits: uint64(2e5 * bits), EndpointBits: uint64(6e4 * bits),
+			Step: charge(1), StepTiled: charge(1.4), Inference: charge(0.1), InferenceTiled: charge(0.12),
+		}
+	}
+	c.Reference = bill("", 32)
+	for _, a := range s.Arms[1:] {
+		c.Bills = append(c.Bills, bill(a.Slug, a.Bits))
+	}
+	return c
 }
 
 // lastScores are the test accuracies of an arm's runs.

@@ -26,20 +26,23 @@ var sectionTable = []struct {
 	id, heading, template string
 	data                  func(v *view) any
 }{
-	{"claim", "The question and what was fixed beforehand", "claim", claimSection},
 	{"verdicts", "Verdicts", "verdicts", verdictSection},
+	{"claim", "The question and what was fixed beforehand", "claim", claimSection},
+	{"recommend", "How few bits, point by point", "recommend", recommendSection},
+	{"step-map-section", "Where the arithmetic differs", "figure", mapSection},
+	{"front", "Score against bits, bytes and energy", "figures", frontSection},
 	{"differences", "Paired differences", "differences", differenceSection},
 	{"contrasts", "Contrasts", "differences", contrastSection},
 	{"curves", "Loss curves", "curves", curveSection},
-	{"front", "Score against bits", "figure", frontSection},
-	{"step-map-section", "Where the arithmetic differs", "figure", mapSection},
+	{"roundings", "Stochastic beside nearest rounding", "differences", twinSection},
 	{"counters", "What left the range of its format", "counters", counterSection},
 	{"recall-section", "Recall by class", "recall", recallSection},
+	{"costs", "What it would cost", "costs", costSection},
+	{"warnings", "Warnings", "list", warningSection},
+	{"cautions", "Limits", "list", cautionSection},
 	{"runs", "Every run", "runs", runSection},
 	{"plan", "The plan", "plan", planSection},
 	{"rerun", "How to rerun", "rerun", rerunSection},
-	{"warnings", "Warnings", "list", warningSection},
-	{"cautions", "Limits", "list", cautionSection},
 	{"glossary", "Words", "glossary", func(*view) any { return glossary }},
 }
 

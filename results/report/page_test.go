@@ -115,8 +115,8 @@ func TestPageOrder(t *testing.T) {
 	page := pageOf(t, s)
 	at := strings.Index(page, "<main>")
 	for _, want := range []string{
-		html.EscapeString(newView(s).sentences()[0]), `id="claim"`, `id="verdicts"`, `id="differences"`, `id="contrasts"`, `id="curves"`, `id="front"`,
-		`id="step-map-section"`, `id="counters"`, `id="recall-section"`, `id="runs"`, `id="plan"`, `id="rerun"`, `id="warnings"`, `id="cautions"`, `id="glossary"`,
+		html.EscapeString(newView(s).sentences()[0]), `id="verdicts"`, `id="claim"`, `id="recommend"`, `id="front"`, `id="differences"`, `id="contrasts"`, `id="curves"`,
+		`id="counters"`, `id="recall-section"`, `id="cautions"`, `id="runs"`, `id="plan"`, `id="rerun"`, `id="glossary"`,
 	} {
 		k := strings.Index(page[at:], want)
 		if k < 0 {

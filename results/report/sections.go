@@ -116,24 +116,44 @@ func lastOf(c *curve) string {
 	return fmt.Sprintf("%s [%s, %s], n = %d", significant(c.Mid[i], 3), significant(c.Low[i], 3), high, c.N)
 }
 
-// frontSection is the metric against bits.
+// frontSection is the metric against bits, bytes moved and energy.
 func frontSection(v *view) any {
-	caption := "Marks: mean " + plain(v.Metric) + " over replicates. Interval: the " + percentage(v.Confidence) + " interval of the paired difference to the baseline, drawn around the arm's mean; grey, at the baseline, that of its own mean. Arms of equal width stand side by side. " +
-		"Steps: the Pareto set, the arms that no arm of fewer bits equals. Bits are those of stored values, weighted by tensor sizes; the bits of sums are not in them."
+	caption := "Marks: mean " + plain(v.Metric) + " over replicates. Upright bar: the " + percentage(v.Confidence) + " interval of the paired difference to the baseline, drawn around the arm's mean; grey, at the baseline, that of its own mean. Arms of equal width stand side by side. " +
+		"Steps: the Pareto set, the arms that no arm of less expense equals. Bits are those of stored values, weighted by tensor sizes, and exact: they have no interval; the bits of sums are not in them."
 	if v.words.percent {
 		caption += " The upright axis is logarithmic in what is missing to 100 %."
 	}
-	if len(v.scored()) > namedArms {
+	if len(v.scored(&expenses[0])) > namedArms {
 		caption += " The arms are numbered as in the verdict table; the names are those of the Pareto set."
 	}
-	t := &tabular{Caption: "Scores in numbers", Columns: columns("Arm", "#bits a value", "#mean with its own interval", "#difference to the baseline with interval")}
+	model := "A figure of a model, not a measurement. Level bar: from each tensor moved once a phase (the mark) to products in blocks through a cache. "
+	t := &tabular{Caption: "Scores in numbers", Columns: columns("Arm", "#bits a value", "#bytes moved, % of FP32", "#energy, % of FP32", "#mean with its own interval", "#difference to the baseline with interval")}
 	for _, a := range v.arms {
-		t.Rows = append(t.Rows, []string{a.Label(), bits(a.Bits), v.scoreLine(a.Score), v.differenceLine(a)})
+		row := []string{a.Label(), bits(a.Bits), missing, missing, v.scoreLine(a.Score), v.differenceLine(a)}
+		if b := a.Bill; b != nil {
+			row[2], row[3] = shareSpan(b.Step.BitShare, b.StepTiled.BitShare), shareSpan(b.Step.EnergyShare, b.StepTiled.EnergyShare)
+		}
+		t.Rows = append(t.Rows, row)
 	}
-	return figureWith{
-		Figure: figureHTML(v, "score-against-bits", caption, false), Caption: t.Caption, Table: t,
-		Without: "No arm has both a score and a width.",
+	data := struct {
+		Figures []template.HTML
+		figureWith
+	}{figureWith: figureWith{Caption: t.Caption, Table: t, Without: "No arm has both a score and a width."}}
+	for i, c := range []string{caption, model + "Traffic between memory and cache in a training step.", model + "Energy of a training step; tables and assumptions stand under the costs."} {
+		if f := figureHTML(v, "score-against-"+expenses[i].id, c, false); f != "" {
+			data.Figures = append(data.Figures, f)
+		}
 	}
+	return data
+}
+
+// shareSpan spells what two models say of a share of FP32's expense.
+func shareSpan(once, tiled float64) string {
+	a, b := significant(100*once, 3), significant(100*tiled, 3)
+	if a == b {
+		return a
+	}
+	return a + " to " + b
 }
 
 // mapSection is the step map and the settings behind it.

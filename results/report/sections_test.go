@@ -79,7 +79,7 @@ func TestPareto(t *testing.T) {
 	s := invented()
 	v := newView(s)
 	var names []string
-	for _, a := range pareto(v, v.scored()) {
+	for _, a := range pareto(v, &expenses[0], v.scored(&expenses[0])) {
 		names = append(names, a.Slug)
 	}
 	// E4M3 has the fewest bits; the stochastic update scores better with more; no
@@ -89,7 +89,7 @@ func TestPareto(t *testing.T) {
 	}
 	s.Metric = "test loss"
 	v = newView(s)
-	best := pareto(v, v.scored())
+	best := pareto(v, &expenses[0], v.scored(&expenses[0]))
 	for i := 1; i < len(best); i++ {
 		if best[i].Score.Mean >= best[i-1].Score.Mean || best[i].Bits <= best[i-1].Bits {
 			t.Errorf("with a loss: %v %v after %v %v", best[i].Bits, best[i].Score.Mean, best[i-1].Bits, best[i-1].Score.Mean)
@@ -116,7 +116,7 @@ func TestFrontBounds(t *testing.T) {
 
 func TestShortfall(t *testing.T) {
 	v := newView(invented())
-	s := v.scoreScale(v.scored(), frame{y0: 10, y1: 300})
+	s := v.scoreScale(v.scored(&expenses[0]), frame{y0: 10, y1: 300})
 	if !(s.At(0.95) < s.At(0.93) && s.At(0.93) < s.At(0.5)) {
 		t.Error("a better score is not higher")
 	}

@@ -25,6 +25,7 @@ type armView struct {
 	Comparison *results.Comparison // with the baseline; nil: none
 	Runs       []*results.Run      // ascending replicates
 	Strips     []strip
+	Bill       *results.Bill // what it costs by model; nil: not known
 	Score      estimate // the metric after the last epoch
 	Training   curve
 	Validation curve
@@ -57,6 +58,16 @@ func newView(s *results.Study) *view {
 		// Runs of no arm, pretraining say, appear in the list of runs alone.
 		if av := bySlug[s.Runs[i].Arm]; av != nil {
 			av.Runs = append(av.Runs, &s.Runs[i])
+		}
+	}
+	if c := s.Costs; c != nil {
+		for i := range c.Bills {
+			if av := bySlug[c.Bills[i].Arm]; av != nil {
+				av.Bill = &c.Bills[i]
+			}
+		}
+		if v.baseline != nil && v.baseline.Bill == nil { // the baseline is the model's reference
+			v.baseline.Bill = &c.Reference
 		}
 	}
 	v.gather()
