@@ -89,14 +89,18 @@ func figuresOf(f quant.Format) figures {
 	}
 	_, g.SharedScale = f.(quant.Blocked)
 	finest, coarsest, known := places(f)
-	switch _, float := f.(quant.Float); {
-	case float && known:
-		bias, u := 1-l.Fraction-finest, math.Ldexp(1, -1-l.Fraction)
-		g.Bias = &bias
-		if l.MinNormal != 0 {
+	_, float := f.(quant.Float)
+	_, draft := f.(quant.Draft)
+	switch {
+	case float && known, draft:
+		bias, u := 1-math.Ilogb(l.MinNormal), math.Ldexp(1, -1-l.Fraction)
+		if l.MinNormal == 0 { // a format of subnormal values alone
+			bias = 1 - l.Fraction - finest
+		} else {
 			g.LeastNormal, g.UnitRoundoff = &l.MinNormal, &u
 		}
-		if !l.Flush && l.Fraction > 0 {
+		g.Bias = &bias
+		if !l.Flush && l.MinSubnormal != l.MinNormal {
 			g.LeastSubnormal = &l.MinSubnormal
 		}
 	case known && finest == coarsest:

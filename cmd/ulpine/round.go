@@ -48,6 +48,9 @@ Value number n of the line draws word n of the seed's stream.`,
 		if err != nil {
 			return err
 		}
+		if p.Rounding.Source != (quant.Source{}) {
+			return badInput(fmt.Errorf("rounding %s: shared draws and registers serve tensors; use matmul or sum, or stochastic(%d) here", p.Rounding, p.Rounding.Bits))
+		}
 		numbers, err := readNumbers(cmd, args)
 		if err != nil {
 			return err
@@ -144,10 +147,10 @@ func roundNumber(p quant.Point, n exactNumber, word uint32, given bool) roundedN
 	r := roundedNumber{exactNumber: n, format: p.Format, up: new(big.Rat)}
 	r.result, r.event = p.Round(x, word)
 	r.below, r.above = r.result, r.result
-	if x.Kind == quant.Finite && !x.IsZero() {
+	if x.Kind == quant.Finite && (!x.IsZero() || p.Format.Limits().NoZero) {
 		b := p.Format.Bracket(x)
-		if !b.Exact || beyondRange(p.Format, n.negative, b.Toward) || flushed(p.Format, b.Toward) {
-			r.below, r.above = neighbours(p.Format, n.negative, b)
+		r.below, r.above = neighbours(p.Format, n.value, n.negative, b)
+		if r.below != r.above {
 			r.chances(p, x, b, given)
 			return r
 		}
@@ -159,39 +162,35 @@ func roundNumber(p quant.Point, n exactNumber, word uint32, given bool) roundedN
 	return r
 }
 
-// beyondRange reports a magnitude beyond the finite values of a sign.
-func beyondRange(f quant.Format, negative bool, magnitude float64) bool {
+// neighbours are the values of the format at or around a finite number, infinities
+// beyond its range; equal where the number is a value, or is taken for one.
+func neighbours(f quant.Format, x *big.Rat, negative bool, b quant.Bracket) (below, above float64) {
 	l := f.Limits()
-	if negative {
-		return magnitude > -l.Lowest
+	switch {
+	case x.Cmp(ratOf(l.Max)) > 0:
+		return l.Max, math.Inf(1)
+	case x.Cmp(ratOf(l.Lowest)) < 0:
+		return math.Inf(-1), l.Lowest
 	}
-	return magnitude > l.Max
-}
-
-// flushed reports a magnitude that the format would have if it kept subnormals.
-func flushed(f quant.Format, magnitude float64) bool {
-	l := f.Limits()
-	return l.Flush && magnitude < l.MinNormal
-}
-
-// neighbours are the values of the format around a number that it does not have,
-// infinities beyond its range.
-func neighbours(f quant.Format, negative bool, b quant.Bracket) (below, above float64) {
-	l := f.Limits()
 	toward, away := b.Toward, b.Away
-	if l.Flush && toward < l.MinNormal {
+	m := new(big.Rat).Abs(x)
+	switch {
+	case l.Flush && m.Sign() != 0 && toward < l.MinNormal:
 		toward, away = 0, l.MinNormal // what lies between becomes zero
+	case b.Exact && !l.NoZero && m.Sign() != 0 && m.Cmp(ratOf(l.MinSubnormal)) < 0:
+		toward, away = 0, b.Toward // a posit's least value, which small numbers become
+	case b.Exact:
+		away = toward
 	}
-	end := l.Max
 	if negative {
-		end = -l.Lowest
+		toward, away = -away+0, -toward+0
 	}
-	if away > end {
+	// The range may end inside the gap: unsigned formats, two's complement.
+	if toward < l.Lowest {
+		toward = math.Inf(-1)
+	}
+	if away > l.Max {
 		away = math.Inf(1)
-	}
-	toward = math.Min(toward, end)
-	if negative {
-		return -away, -toward + 0
 	}
 	return toward, away
 }

@@ -149,7 +149,7 @@ func (s *sumStudy) run() error {
 		terms := s.source.terms(s.length, a.terms)
 		a.exact = exactSums(terms, s.lengths)
 		var err error
-		if a.acc.Order.Kind == quant.Sequential {
+		if a.acc.Order.Kind == quant.Sequential && plainDraws(a.acc) {
 			a.sequential(terms, s.lengths, s.draws)
 		} else if err = a.byLength(terms, s.lengths, s.draws); err != nil {
 			return err

@@ -102,6 +102,9 @@ func (t *tracer) product(k int) (exact, rounded quant.Real) {
 
 // total adds the terms in their order.
 func (t *tracer) total() (float64, error) {
+	if !plainDraws(t.acc) {
+		return 0, fmt.Errorf("random bits that are not each addition's own")
+	}
 	if t.acc.Order.Kind == quant.Wide {
 		return t.wide()
 	}
@@ -118,6 +121,17 @@ func (t *tracer) total() (float64, error) {
 	}
 	v, _ := (&quant.Point{Format: quant.Binary64}).Round(s, 0) // a binary64 number already
 	return v, nil
+}
+
+// plainDraws reports whether every rounding of a sum has random bits of its own, as
+// streamWord draws them.
+func plainDraws(a quant.Accumulate) bool {
+	for _, p := range []*quant.Point{a.Product, &a.Sum, a.Outer} {
+		if p != nil && p.Rounding.Source != (quant.Source{}) {
+			return false
+		}
+	}
+	return true
 }
 
 // kindWord is the order's word without its number.

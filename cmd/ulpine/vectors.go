@@ -125,6 +125,9 @@ func newVectorSet(a *arithmetic, format, from, op string, count int, exhaustive 
 	if v.point, err = a.point(format, quant.DefaultRandomBits); err != nil {
 		return nil, err
 	}
+	if v.point.Rounding.Source != (quant.Source{}) {
+		return nil, badInput(fmt.Errorf("rounding %s: vectors carry the random bits of each line, whatever their source; use stochastic(%d)", v.point.Rounding, v.point.Rounding.Bits))
+	}
 	if v.from, err = v.operandFormat(from); err != nil {
 		return nil, badInput(err)
 	}
