@@ -1,9 +1,6 @@
 package trainer
 
-import (
-	"fmt"
-	"math"
-)
+import "fmt"
 
 // check finds everything that would make a job fail, or mean something else than
 // its author thinks, before a step is taken.
@@ -16,7 +13,7 @@ func (j *Job) check() (parts, error) {
 	if err := j.checkTraining(&p); err != nil {
 		return p, err
 	}
-	if err := j.Network.checkArm(&j.Arm, p.rule.states(j.Training.Optimizer)); err != nil {
+	if err := j.Network.checkArm(&j.Arm, j.Training.Optimizer.stateCount(p.rule)); err != nil {
 		return p, err
 	}
 	p.double, p.wide = j.Network.containers(&j.Arm)
@@ -38,6 +35,10 @@ func (j *Job) openSets(p *parts) (err error) {
 		return err
 	}
 	p.largest = max(p.train.size(), p.validation.size(), p.test.size())
+	total := stepCount(j.Training.Epochs, p.train.size(), min(j.Training.Batch, p.train.size()))
+	if err = j.Training.LearningRate.checkLength(total); err != nil {
+		return err
+	}
 	return j.checkExtents(p.largest)
 }
 
@@ -81,20 +82,4 @@ func (j *Job) checkTraining(p *parts) (err error) {
 		}
 	}
 	return t.LearningRate.check()
-}
-
-// check refuses learning rates that are not positive numbers.
-func (s Schedule) check() error {
-	if !(single(s.Start) > 0) || math.IsInf(single(s.Start), 0) {
-		return fmt.Errorf("learning rate %g; it must be positive and finite in binary32", s.Start)
-	}
-	if len(s.AtEpochs) > 0 && (!(single(s.Multiply) > 0) || math.IsInf(single(s.Multiply), 0)) {
-		return fmt.Errorf("learning rate multiplied by %g at epochs %v; the factor must be positive and finite in binary32", s.Multiply, s.AtEpochs)
-	}
-	for _, at := range s.AtEpochs {
-		if at < 1 {
-			return fmt.Errorf("learning rate multiplied at epoch %d; 1 is the first epoch", at)
-		}
-	}
-	return nil
 }

@@ -57,18 +57,31 @@ type Arm struct {
 	LossScale    LossScale
 }
 
-// Schedule is a learning rate by epoch: Start, multiplied by Multiply at the
-// start of each epoch in AtEpochs (1 is the first epoch).
+// Schedule is a learning rate: Start, multiplied by Multiply at the start of each
+// epoch in AtEpochs (1 is the first epoch), or falling to End along half a cosine
+// over all steps of the training; risen to linearly in the first WarmUp steps.
 type Schedule struct {
 	Start    float64
 	Multiply float64
 	AtEpochs []int
+	Cosine   bool
+	End      float64 // of the cosine
+	WarmUp   int     // steps; 0: none
 }
 
 // Optimizer is a rule and its hyper-parameters.
 type Optimizer struct {
-	Kind     string // "sgd"
+	Kind     string // "sgd", "nesterov", "adam", "adamw"
 	Momentum float64
+
+	// Adam's; 0: the defaults of its paper, 0.9, 0.999, 1e-8.
+	Beta1, Beta2, Epsilon float64
+	EpsilonInside         bool // epsilon is added under the root
+
+	WeightDecay float64
+	Decoupled   bool    // decay the weight, not the gradient; adamw always does
+	ClipNorm    float64 // the gradient's norm is cut to it; 0: not at all
+	Compensated bool    // a further state, the last, keeps what masters round off
 }
 
 // When says after which epochs a split is evaluated. The zero value is the last one.
@@ -99,18 +112,6 @@ func (w When) due(last bool) bool { return w == EveryEpoch || last && w != Never
 
 // single is the binary32 number nearest to a hyper-parameter.
 func single(x float64) float64 { return float64(float32(x)) }
-
-// rate is the learning rate of an epoch (1 is the first): binary32 throughout,
-// each fall one binary32 product.
-func (s Schedule) rate(epoch int) float64 {
-	rate := float32(s.Start)
-	for _, at := range s.AtEpochs {
-		if at <= epoch {
-			rate = float32(rate * float32(s.Multiply))
-		}
-	}
-	return float64(rate)
-}
 
 // Everything is the arm in which every point of a network of n layers is p, sums
 // are sequential and the product is rounded before it is added. Everything with

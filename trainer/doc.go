@@ -78,7 +78,7 @@
 // # Update
 //
 // g' = g/S, a binary64 quotient. Then, for every parameter, weight before bias,
-// from the lowest layer up:
+// from the lowest layer up, the optimizer's formula, here that of sgd:
 //
 //	u      = R[update.state](momentum v)        with momentum only
 //	v      = R[update.state](u + g')            with momentum only
@@ -86,10 +86,14 @@
 //	master = R[update.master](master - step)
 //	weight = R[forward.weight](master)          the working copy, once an update
 //
-// Products, sums and differences are exact before they are rounded. Learning
-// rate, its factor, momentum and loss scale are the binary32 numbers nearest to
-// their decimals; the learning rate of an epoch is the start times the factor,
-// one binary32 product for each fall so far. States start at +0.
+// Products, sums and differences are exact before they are rounded. Other
+// optimizers, weight decay, clipping and compensated updates are written out at
+// nesterovKind, adamKind and mover. Learning rate, its factor, the other
+// hyper-parameters and the loss scale are the binary32 numbers nearest to their
+// decimals; the learning rate of an epoch is the start times the factor, one
+// binary32 product for each fall so far; warm-up and cosine: see Schedule.at. States
+// start at +0. Without a master copy update.master is what forward.weight is: the
+// working copy then equals the master, since a value of a format never moves.
 //
 // # Loss scale
 //

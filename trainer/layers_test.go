@@ -7,6 +7,7 @@ import (
 	"strings"
 	"testing"
 
+	"ulpine/quant"
 	"ulpine/quant/random"
 )
 
@@ -58,6 +59,11 @@ func TestEveryKindAllocatesNothing(t *testing.T) {
 			"baseline": func(n int) Arm { return baseline(t, n) }, "rough": rough(t),
 		} {
 			job := zooJob(t, i, arm)
+			job.Training.Optimizer = Optimizer{Kind: "adamw", WeightDecay: 0.1, ClipNorm: 0.5, Compensated: true}
+			for k := range job.Arm.Layers {
+				l := &job.Arm.Layers[k]
+				l.States = []quant.Point{l.States[0], l.States[0], l.States[0]}
+			}
 			e := engineFor[float32](t, &job)
 			batch := []int32{3, 1, 4, 2}
 			e.step(batch, 0.05)

@@ -163,10 +163,10 @@ func TestOperationsHaveNumbersOfTheirOwn(t *testing.T) {
 		opActivationAgain, opWeightOperand,
 	}
 	for q := range 2 {
-		for _, o := range []operation{opWorking, opWeightAgain, opWeightProduct, opWeightProduct + 1, opWeightSum, opWeightSum + 1, opWeightResult, opStep, opMaster} {
+		for _, o := range []operation{opWorking, opWeightAgain, opWeightProduct, opWeightProduct + 1, opWeightSum, opWeightSum + 1, opWeightResult, opStep, opMaster, opAhead, opAheadSum, opRoot, opRootSum, opRatio, opDecay, opDecaySum} {
 			numbers = append(numbers, o.of(q))
 		}
-		for s := range 2 {
+		for s := range 4 {
 			for n := range 4 {
 				numbers = append(numbers, opStateNumber(s, n).of(q))
 			}

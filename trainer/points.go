@@ -130,6 +130,13 @@ const (
 	opWeightResult   operation = 6
 	opStep           operation = 7
 	opMaster         operation = 8
+	opAhead          operation = 9 // Nesterov's product, Adam's numerator
+	opAheadSum       operation = 10
+	opRoot           operation = 11 // Adam's root
+	opRootSum        operation = 12
+	opRatio          operation = 13
+	opDecay          operation = 14 // of weights
+	opDecaySum       operation = 15
 	opState          operation = 16 // + 4 s + n for operation n on state tensor s
 	opParameterBlock operation = 64
 )

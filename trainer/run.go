@@ -106,7 +106,7 @@ func (r *run[T]) epoch(ctx context.Context, epoch int) error {
 	}
 	r.scores.reset()
 	r.skipped0 = r.scaler.skipped
-	loss, err := r.steps(ctx, r.job.Training.LearningRate.rate(epoch))
+	loss, err := r.steps(ctx, epoch)
 	if err != nil {
 		return err
 	}
@@ -119,7 +119,7 @@ func (r *run[T]) epoch(ctx context.Context, epoch int) error {
 
 // steps takes the steps of one epoch and returns the mean of their losses,
 // weighted by batch size, in the order of the steps.
-func (r *run[T]) steps(ctx context.Context, rate float64) (float64, error) {
+func (r *run[T]) steps(ctx context.Context, epoch int) (float64, error) {
 	var sum float64
 	done := 0
 	for done < len(r.order) {
@@ -127,6 +127,7 @@ func (r *run[T]) steps(ctx context.Context, rate float64) (float64, error) {
 			return 0, fmt.Errorf("stopped in step %d of %d: %w", len(r.out.Steps)+1, r.total, err)
 		}
 		batch := r.order[done:min(done+r.batch, len(r.order))]
+		rate := r.job.Training.LearningRate.at(epoch, len(r.out.Steps)+1, r.total)
 		loss, what := r.step(batch, rate)
 		r.out.Steps = append(r.out.Steps, loss)
 		sum += float64(loss * float64(len(batch)))

@@ -9,11 +9,10 @@ import (
 // sgdKind is stochastic gradient descent, with or without momentum. Every
 // operation is one rounding of an exact result:
 //
-//	with momentum mu:  u      = R[state](mu v)
-//	                   v      = R[state](u + g')
-//	                   step   = R[step](rate v)
-//	without:           step   = R[step](rate g')
-//	both:              master = R[master](master - step)
+//	with momentum mu:  u    = R[state](mu v)
+//	                   v    = R[state](u + g')
+//	                   step = R[step](rate v)
+//	without:           step = R[step](rate g')
 //
 // mu and rate are binary32 numbers. The two operations on the state draw their
 // random bits under numbers of their own.
@@ -36,21 +35,27 @@ func checkSGD(o Optimizer) error {
 	if !(o.Momentum >= 0 && o.Momentum < 1) {
 		return fmt.Errorf("momentum is %g; it must be at least 0 and below 1", o.Momentum)
 	}
-	return nil
+	return o.noAdam()
 }
 
 type sgd[T quant.Element] struct{ momentum float64 }
 
-func newSGD[T quant.Element](o Optimizer) rule[T] { return sgd[T]{single(o.Momentum)} }
+func newSGD[T quant.Element](o Optimizer, _ int) rule[T] { return sgd[T]{single(o.Momentum)} }
 
-func (r sgd[T]) update(p *pass, q *param[T], gradient []float64, step []T, rate float64) {
-	if len(q.states) == 0 {
+func (sgd[T]) begin() {}
+
+func (r sgd[T]) step(p *pass, q *param[T], gradient []float64, step []T, rate float64) {
+	if r.momentum == 0 {
 		scale(p, q, UpdateStep, opStep, step, rate, gradient, &q.set.Step)
-	} else {
-		v, point := q.states[0].data, &q.set.States[0]
-		scale(p, q, UpdateState, opStateNumber(0, 0), v, r.momentum, v, point)
-		add(p, q, UpdateState, opStateNumber(0, 1), v, v, gradient, point)
-		scale(p, q, UpdateStep, opStep, step, rate, v, &q.set.Step)
+		return
 	}
-	subtract(p, q, UpdateMaster, opMaster, q.master.data, q.master.data, step, &q.set.Master)
+	accumulate(p, q, r.momentum, gradient)
+	scale(p, q, UpdateStep, opStep, step, rate, q.states[0].data, &q.set.Step)
+}
+
+// accumulate is v = R[state](R[state](mu v) + g') of the first state.
+func accumulate[T quant.Element](p *pass, q *param[T], momentum float64, gradient []float64) {
+	v, point := q.states[0].data, &q.set.States[0]
+	scale(p, q, UpdateState, opStateNumber(0, 0), v, momentum, v, point)
+	add(p, q, UpdateState, opStateNumber(0, 1), v, v, gradient, point)
 }
