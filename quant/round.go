@@ -133,6 +133,9 @@ func (p *Point) Round(x Real, word uint32) (float64, Event) {
 	case x.IsZero() && !p.Format.Limits().NoZero:
 		return p.zero(x.Neg), NoEvent
 	}
+	if x.IsZero() {
+		x.Neg = false // -0 is 0 where zero is rounded
+	}
 	b := p.Format.Bracket(x)
 	away := p.Rounding.away(b, x.Neg, word)
 	v := b.Toward

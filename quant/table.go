@@ -156,9 +156,6 @@ func (t Table) below(x Real, equal bool) int {
 // Bracket implements Format. The neighbours are those of x itself; the one nearer
 // to zero, or beyond it, is called Toward.
 func (t Table) Bracket(x Real) Bracket {
-	if x.IsZero() {
-		x.Neg = false
-	}
 	first := t.below(x, !x.Neg) // the first value away from zero, if x is above it
 	n := t.Len()
 	outside := Bracket{Toward: math.MaxFloat64, Away: math.Inf(1), Exact: true}
