@@ -39,7 +39,8 @@ type Comparison struct {
 	Holm              float64 // Holm-adjusted P, the one that decides
 	PWorse            float64 // one-sided p-value against "not worse than the margin"
 	HolmWorse         float64 // Holm-adjusted PWorse
-	Planned           int     // pairs the plan asks for; 0: unknown
+	Planned           int     // pairs the plan asks for, at most that many with looks; 0: unknown
+	LookEvery         int     // a look after every so many pairs may decide early; 0: only the last one decides
 	Verdict           Verdict
 	Diverged          int // replicates that diverged in the arm
 	AgainstDiverged   int // replicates that diverged in the arm it is compared with

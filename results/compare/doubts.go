@@ -18,8 +18,10 @@ func doubts(c *results.Comparison, identical bool) (warnings []string) {
 	switch {
 	case c.N == 0:
 		warn("no pair of runs is stored yet")
+	case c.N < c.Planned && complete(c):
+		warn("looked at after %d of at most %d pairs; the chance of error is shared out among the looks, but the drawn interval is not widened for them", lookedAt(c), c.Planned)
 	case c.N < c.Planned:
-		warn("%d of %d planned pairs are stored; the verdict waits for all of them", c.N, c.Planned)
+		warn("%d of %d planned pairs are stored; the verdict waits for %s", c.N, c.Planned, awaited(c))
 	}
 	if c.N == 1 {
 		warn("one pair gives no interval and no verdict: ask for two replicates or more")
@@ -39,6 +41,14 @@ func doubts(c *results.Comparison, identical bool) (warnings []string) {
 		warn("the %s of some runs is not a finite number: no mean, no interval", c.Metric)
 	}
 	return append(warnings, spreadDoubts(c, identical)...)
+}
+
+// awaited says which pairs a verdict waits for.
+func awaited(c *results.Comparison) string {
+	if l, several := looks(c); several {
+		return fmt.Sprintf("the first look at %d", l.At()[0])
+	}
+	return "all of them"
 }
 
 // spreadDoubts are the doubts about how the differences are distributed.

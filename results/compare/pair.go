@@ -14,6 +14,7 @@ type Question struct {
 	Margin       float64  // > 0
 	Confidence   float64  // of the two-sided interval, in (0, 1)
 	Planned      int      // pairs the plan asks for; 0: as many as there are
+	LookEvery    int      // pairs between looks; 0: one look, at Planned pairs
 	Headline     bool     // a contrast the plan asks for
 	Classes      []string // names of the classes, for what is said of them
 }
@@ -25,7 +26,7 @@ type Question struct {
 func Pair(q Question, arm, against []results.Run) results.Comparison {
 	c := results.Comparison{
 		Arm: q.Arm, Against: q.Against, Metric: q.Metric.Name, Margin: q.Margin,
-		Confidence: q.Confidence, Planned: q.Planned, Headline: q.Headline,
+		Confidence: q.Confidence, Planned: q.Planned, LookEvery: q.LookEvery, Headline: q.Headline,
 	}
 	mine, theirs := byReplicate(arm), byReplicate(against)
 	for replicate := range mine {

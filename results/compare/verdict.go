@@ -29,9 +29,11 @@ func judge(family []results.Comparison) []results.Comparison {
 	decided := slices.Clone(family)
 	p := make([]float64, len(family))
 	worse := make([]float64, len(family))
+	spending := shares{}
 	for i, c := range family {
-		p[i], worse[i] = c.P, c.PWorse
-		if !sound(&c) { // in the family, but never to be rejected
+		if sound(&c) {
+			p[i], worse[i] = spending.overLooks(&c)
+		} else { // in the family, but never to be rejected
 			p[i], worse[i] = 1, 1
 		}
 	}
@@ -49,8 +51,14 @@ func judge(family []results.Comparison) []results.Comparison {
 // interval.
 func tail(c *results.Comparison) float64 { return (1 - c.Confidence) / 2 }
 
-// complete reports whether all pairs that the plan asks for are there.
-func complete(c *results.Comparison) bool { return c.N >= c.Planned && c.N > 0 }
+// complete reports whether all pairs that the plan asks for are there, or as many
+// as its first look takes.
+func complete(c *results.Comparison) bool {
+	if _, several := looks(c); several {
+		return lookedAt(c) > 0
+	}
+	return c.N >= c.Planned && c.N > 0
+}
 
 // sound reports whether a comparison may be decided by its differences.
 func sound(c *results.Comparison) bool {
@@ -77,7 +85,7 @@ func verdict(c *results.Comparison) results.Verdict {
 // that the plan still waits for, or else more. 0: cannot be said.
 func settle(c *results.Comparison, family []results.Comparison) int {
 	switch {
-	case !complete(c):
+	case !complete(c) || c.N < c.Planned:
 		return c.Planned
 	case !sound(c):
 		return 0
@@ -105,7 +113,14 @@ func noteHolm(c *results.Comparison, arms int) {
 	if c.PWorse < c.P {
 		p, adjusted = c.PWorse, c.HolmWorse
 	}
+	what := number(arms, "comparison")
+	if _, several := looks(c); several {
+		what += " and several looks"
+	}
 	c.Warnings = append(c.Warnings, fmt.Sprintf(
-		"the interval alone clears the margin (p = %.2g), but not after correction for %d comparisons (p = %.2g, needed below %.2g)",
-		p, arms, adjusted, tail(c)))
+		"the interval alone clears the margin (p = %s), but not after correction for %s (p = %s, needed below %s)",
+		pWords(p), what, pWords(adjusted), pWords(tail(c))))
 }
+
+// pWords spells a p-value in two digits.
+func pWords(p float64) string { return minus(fmt.Sprintf("%.2g", p)) }
