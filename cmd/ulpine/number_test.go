@@ -50,7 +50,7 @@ func TestNumberFigures(t *testing.T) {
 
 // TestNumberCodes holds the tables of narrow formats to the oracle's decoding.
 func TestNumberCodes(t *testing.T) {
-	for _, name := range []string{"E4M3", "E5M2", "E3M2", "E2M3", "E2M1", "E4M3(top=ieee)", "E3M4(bias=9)", "E4M3(subnormals=flush)"} {
+	for _, name := range []string{"E4M3", "E5M2", "E3M2", "E2M3", "E2M1", "E4M3(top=ieee)", "E3M4(bias=9)", "E4M3(subnormals=flush)", "Q2.6", "UQ1.5", "posit8", "posit5", "binary8p3-draft", "binary4p2-draft"} {
 		f, err := quant.ParseFormat(name)
 		if err != nil {
 			t.Fatal(err)

@@ -3,7 +3,6 @@ package main
 import (
 	"fmt"
 	"math"
-	"math/big"
 
 	"ulpine/quant"
 	"ulpine/quant/oracle"
@@ -16,8 +15,16 @@ func oracleOf(f quant.Format) (*oracle.Format, error) {
 	if _, blocked := f.(quant.Blocked); blocked {
 		return nil, fmt.Errorf("%s: its values share scales: the oracle rounds numbers one by one", f)
 	}
-	if float, ok := f.(quant.Float); ok {
-		return oracleOfFloat(float)
+	switch f := f.(type) {
+	case quant.Float:
+		return oracleOfFloat(f)
+	case quant.Draft:
+		l := f.Limits()
+		return oracle.NewSplit(oracle.Split{
+			Exponent: l.Exponent, Fraction: l.Fraction, Bias: 1 << (l.Exponent - 1), Top: "infinity", Overflow: l.DefaultOverflow.String(),
+		})
+	case quant.Posit:
+		return oracle.NewPosit(f.Limits().Bits)
 	}
 	if _, integer := f.(quant.Wrapper); integer {
 		return oracleOfIntegers(f)
@@ -47,32 +54,22 @@ func oracleOfFloat(f quant.Float) (*oracle.Format, error) {
 	return oracle.NewSplit(s)
 }
 
-// maxListed is the width up to which integers are listed.
-const maxListed = 16
-
-// oracleOfIntegers lists the codes of integers and fixed point, two's complement
-// where there are negative values.
+// oracleOfIntegers describes fixed point, two's complement where there are negative
+// values.
 func oracleOfIntegers(f quant.Format) (*oracle.Format, error) {
 	l := f.Limits()
 	finest, _, ok := places(f)
-	if !ok || l.Bits > maxListed {
-		return nil, fmt.Errorf("%s: the oracle lists integers of at most %d bits", f, maxListed)
+	if !ok {
+		return nil, fmt.Errorf("%s: its values are not the multiples of a power of two", f)
 	}
-	step := ratOf(math.Ldexp(1, finest))
-	list := oracle.List{Width: l.Bits, Overflow: l.DefaultOverflow.String()}
-	first, count := int64(0), int64(1)<<l.Bits
-	if l.Lowest < 0 {
-		first = -count / 2
+	o, err := oracle.NewInteger(l.Bits, finest, l.Lowest >= 0, l.DefaultOverflow.String())
+	if err != nil {
+		return nil, err
 	}
-	at := func(n int64) *big.Rat { return new(big.Rat).Mul(step, new(big.Rat).SetInt64(n)) }
-	for n := first; n < first+count; n++ {
-		list.Values = append(list.Values, oracle.Value{X: at(n), Code: uint64(n) & uint64(count-1)})
+	if o.Max().Cmp(ratOf(l.Max)) != 0 || o.Lowest().Cmp(ratOf(l.Lowest)) != 0 {
+		return nil, fmt.Errorf("%s: its range is not that of %d bits", f, l.Bits)
 	}
-	list.Above, list.Below = at(first+count), at(first-1)
-	if got, _ := at(first + count - 1).Float64(); got != l.Max {
-		return nil, fmt.Errorf("%s: its largest value %v is not that of %d bits", f, l.Max, l.Bits)
-	}
-	return oracle.NewList(list)
+	return o, nil
 }
 
 // oracleRounding puts a rounding into the oracle's words.

@@ -90,6 +90,7 @@ func TestRoundAgainstOracle(t *testing.T) {
 	formats := []string{
 		"fp16", "bf16", "fp32", "fp64", "E4M3", "E5M2", "E3M2", "E2M3", "E2M1", "E6M9", "E5M10(subnormals=flush)",
 		"E4M3(top=ieee,bias=3)", "E5M0", "E3M2(top=nan)",
+		"Q2.6", "UQ3.5", "posit8", "posit16", "binary8p4-draft", "binary5p2-draft",
 	}
 	for round := range 400 {
 		name := formats[r.IntN(len(formats))]

@@ -23,6 +23,8 @@ type Format struct {
 	width    int      // bits of a code
 	decode   func(code uint64) float64
 	emptyNaN uint64 // code of the canonical NaN
+	// wrap brings a signed multiple of the step into the range; nil: nothing wraps.
+	wrap func(v *big.Rat) *big.Rat
 }
 
 // gap is where a magnitude lies: toward <= |x| < away, |x| = toward + (over/width)
@@ -31,6 +33,10 @@ type gap struct {
 	toward, away *big.Rat
 	over, width  *big.Int
 	odd          bool // the code of toward is odd
+	// Where ownTie is set, nearest compares with a tie of the format's own: side is
+	// -1, 0, 1 as the magnitude is below, at or above it.
+	ownTie bool
+	side   int
 }
 
 // gapper finds the neighbours of a magnitude above zero on the side of a sign, as
@@ -44,7 +50,8 @@ type gapper interface {
 type Split struct {
 	Exponent, Fraction, Bias int
 	// Top says what the codes of the largest exponent stand for: "ieee" (infinity
-	// and NaN), "nan" (numbers, NaN at all ones) or "finite".
+	// and NaN), "nan" (numbers, NaN at all ones), "finite", or "infinity" (numbers,
+	// infinity at all ones, one zero and NaN in the place of -0: the IEEE P3109 draft).
 	Top      string
 	Flush    bool
 	Overflow string // "": infinity for the layout ieee, else saturate
@@ -67,6 +74,9 @@ func NewSplit(s Split) (*Format, error) {
 		}
 	case "nan":
 		last, f.NaN = all-1, true
+	case "infinity":
+		last, f.Infinity, f.NaN, f.OneZero = all-1, true, true, true
+		f.emptyNaN = all + 1
 	case "finite":
 	default:
 		return nil, fmt.Errorf("oracle: unknown layout %q of the top exponent", s.Top)
@@ -105,7 +115,9 @@ func (s Split) decode(code, last uint64) float64 {
 		sign = -1
 	}
 	switch {
-	case s.Top == "ieee" && n == last+1:
+	case s.Top == "infinity" && n == 0 && sign < 0:
+		return nan
+	case (s.Top == "ieee" || s.Top == "infinity") && n == last+1:
 		return math.Inf(int(sign))
 	case n > last:
 		return math.NaN()
@@ -248,6 +260,9 @@ func (f *Format) Decode(code uint64) float64 { return f.decode(code) }
 
 // NaNCode is the code of the canonical NaN.
 func (f *Format) NaNCode() (uint64, bool) { return f.emptyNaN, f.NaN }
+
+// nan is NaN.
+var nan = math.NaN()
 
 // log2 returns floor(log2 |x|) of x != 0.
 func log2(x *big.Rat) int {

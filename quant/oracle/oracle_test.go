@@ -195,3 +195,96 @@ func TestWalk(t *testing.T) {
 		t.Error("an unknown order has a sum")
 	}
 }
+
+// TestPosits: values of posit8 by hand from the 2022 standard's definition (from
+// memory): one, its neighbours, the ends; a tie that is a geometric mean.
+func TestPosits(t *testing.T) {
+	f, err := NewPosit(8)
+	if err != nil {
+		t.Fatal(err)
+	}
+	for code, want := range map[uint64]float64{
+		0: 0, 0x40: 1, 0x41: 1.125, 0x3f: 0.9375, 0x48: 2, 0x7f: 0x1p24, 0x01: 0x1p-24, 0xc0: -1, 0xff: -0x1p-24, 0x7e: 0x1p20,
+	} {
+		if got := f.Decode(code); got != want {
+			t.Errorf("code %02x: %v, want %v", code, got, want)
+		}
+	}
+	if !math.IsNaN(f.Decode(0x80)) {
+		t.Error("NaR is not NaN")
+	}
+	for x, want := range map[string]float64{
+		"4194303":   0x1p20, // below 2^22, the tie of 2^20 and 2^24
+		"4194305":   0x1p24,
+		"4194304":   0x1p20, // 7e is even
+		"1e-30":     0x1p-24,
+		"-1e30":     -0x1p24,
+		"1.0625":    1,
+		"1.1875":    1.25,
+		"1.0626":    1.125,
+		"-1.062501": -1.125,
+	} {
+		if got, _ := f.Round(rat(t, x), false, Rounding{Mode: "nearest-even"}, "", 0); got != want {
+			t.Errorf("%s -> %v, want %v", x, got, want)
+		}
+	}
+}
+
+// TestDraftLayout: the ends of two formats of the IEEE P3109 draft, v4.0 (as the
+// interim report of 2026-06-26 states them): Binary8p4 224, Binary8p3 49152.
+func TestDraftLayout(t *testing.T) {
+	for _, c := range []struct {
+		s   Split
+		max float64
+	}{
+		{Split{Exponent: 4, Fraction: 3, Bias: 8, Top: "infinity", Overflow: "infinity"}, 224},
+		{Split{Exponent: 5, Fraction: 2, Bias: 16, Top: "infinity", Overflow: "infinity"}, 49152},
+	} {
+		f := split(t, c.s)
+		if got := f.Decode(0x7e); got != c.max {
+			t.Errorf("%+v: 7e is %v", c.s, got)
+		}
+		if !math.IsInf(f.Decode(0x7f), 1) || !math.IsInf(f.Decode(0xff), -1) || !math.IsNaN(f.Decode(0x80)) || f.Decode(0x40) != 1 {
+			t.Errorf("%+v: specials", c.s)
+		}
+	}
+}
+
+// TestIntegers: fixed point by hand: bounds, ties to even codes, one zero, wrapping.
+func TestIntegers(t *testing.T) {
+	signed, err := NewInteger(8, -4, false, "saturate")
+	if err != nil {
+		t.Fatal(err)
+	}
+	for _, c := range []struct {
+		x, overflow string
+		want        float64
+	}{
+		{"1/32", "", 0},
+		{"3/32", "", 0.125},
+		{"100", "", 7.9375},
+		{"-100", "", -8},
+		{"8", "wrap", -8},
+		{"-17/2", "wrap", 7.5},
+		{"16", "wrap", 0},
+		{"-1/100", "", 0},
+	} {
+		got, _ := signed.Round(rat(t, c.x), false, Rounding{Mode: "nearest-even"}, c.overflow, 0)
+		if got != c.want || math.Signbit(got) != (c.want < 0) {
+			t.Errorf("%s %q -> %v, want %v", c.x, c.overflow, got, c.want)
+		}
+	}
+	if signed.Decode(0x80) != -8 || signed.Decode(0x7f) != 7.9375 || signed.Decode(0xff) != -0.0625 {
+		t.Error("codes")
+	}
+	unsigned, err := NewInteger(4, 0, true, "saturate")
+	if err != nil {
+		t.Fatal(err)
+	}
+	if got, _ := unsigned.Round(rat(t, "-1"), false, Rounding{Mode: "nearest-even"}, "wrap", 0); got != 15 {
+		t.Errorf("-1 wraps to %v", got)
+	}
+	if unsigned.Decode(15) != 15 {
+		t.Error("unsigned codes")
+	}
+}

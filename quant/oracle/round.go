@@ -39,6 +39,12 @@ func (f *Format) Round(x *big.Rat, minusZero bool, r Rounding, overflow string, 
 		end = negated(f.lowest)
 	}
 	switch {
+	case v.Cmp(end) > 0 && f.wraps(overflow):
+		if negative {
+			v = negated(v)
+		}
+		y, _ := f.wrap(v).Float64()
+		return y, Overflow
 	case v.Cmp(end) > 0:
 		return f.beyond(negative, r, overflow)
 	case v.Sign() == 0, f.Normal != nil && v.Cmp(f.Normal) < 0:
@@ -75,6 +81,9 @@ func (f *Format) Chance(x *big.Rat, r Rounding) *big.Rat {
 // goesAway decides for a magnitude strictly inside its gap.
 func (g gap) goesAway(r Rounding, negative bool, draw uint64) bool {
 	half := new(big.Int).Lsh(g.over, 1).Cmp(g.width)
+	if g.ownTie {
+		half = g.side
+	}
 	switch r.Mode {
 	case "nearest-even":
 		return half > 0 || half == 0 && g.odd
@@ -117,6 +126,11 @@ func (g gap) threshold(r Rounding) *big.Int {
 	return t
 }
 
+// wraps reports whether results beyond the range wrap around.
+func (f *Format) wraps(overflow string) bool {
+	return f.wrap != nil && (overflow == "wrap" || f.Overflow == "wrap" && (overflow == "" || overflow == "default"))
+}
+
 // zero is the zero of a sign.
 func (f *Format) zero(negative bool) float64 {
 	if negative && !f.OneZero {
@@ -145,7 +159,7 @@ func (f *Format) beyond(negative bool, r Rounding, overflow string) (float64, st
 		}
 		return math.Inf(1), Overflow
 	case overflow == "wrap":
-		panic("oracle: wrapping is not known here")
+		panic("oracle: this format does not wrap")
 	}
 	return math.NaN(), Overflow
 }
