@@ -414,7 +414,7 @@ func browseShots(t *testing.T, b *browser) {
 	if dir == "" {
 		t.Skipf("skipped: %s names no directory for pictures", shotsDir)
 	}
-	for _, s := range []study{{"usual", invented()}, {"forty", manyArms(40)}} {
+	for _, s := range []study{{"usual", invented()}, {"forty", manyArms(40)}, {"grid", gridStudy()}} {
 		for _, w := range []int64{1300, 420} {
 			b.open(t, s, w)
 			b.shot(t, fmt.Sprintf("%s-%d", s.name, w))

@@ -23,6 +23,8 @@ var figureTable = []struct {
 	{"bit-strips", true, stripFigure},
 	{"margin-rail", false, comparisonRails},
 	{"contrast-rail", false, contrastRails},
+	{"grids", false, gridFigures},
+	{"grid-bits", false, gridBits},
 	{"stochastic-beside-nearest", false, twinFigure},
 	{"training-loss", false, overview},
 	{"loss-by-arm", false, panels},
@@ -31,6 +33,8 @@ var figureTable = []struct {
 	{"score-against-energy", false, frontOf(2)},
 	{"step-map", false, stepMap},
 	{"range-map", false, rangeMap},
+	{"range-by-epoch", false, epochMap},
+	{"exponents", false, exponentFigures},
 	{"recall", false, recallLattice},
 }
 

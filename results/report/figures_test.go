@@ -106,10 +106,14 @@ func checkSVG(t *testing.T, name string, f *draw.Figure) {
 // TestFiguresThere says which figures a usual study has, and that an empty one
 // has none.
 func TestFiguresThere(t *testing.T) {
-	v := newView(invented())
+	usual, grid := newView(invented()), newView(gridStudy())
 	for _, entry := range figureTable {
+		v := usual
+		if strings.HasPrefix(entry.id, "grid") {
+			v = grid
+		}
 		if len(drawFigure(v, entry.id, wide)) == 0 {
-			t.Errorf("the usual study has no figure %s", entry.id)
+			t.Errorf("the study has no figure %s", entry.id)
 		}
 		if n := len(drawFigure(newView(studies()[1].Study), entry.id, wide)); n != 0 {
 			t.Errorf("the empty study has %d figures %s", n, entry.id)
@@ -126,7 +130,7 @@ func TestEveryArmNamed(t *testing.T) {
 	s := invented()
 	v := newView(s)
 	for _, entry := range figureTable {
-		if slices.Contains([]string{"contrast-rail", "range-map", "stochastic-beside-nearest"}, entry.id) { // of some arms only
+		if slices.Contains([]string{"contrast-rail", "range-map", "range-by-epoch", "exponents", "grids", "grid-bits", "stochastic-beside-nearest"}, entry.id) { // of some arms only
 			continue
 		}
 		for _, width := range []float64{wide, narrow} {

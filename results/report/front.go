@@ -15,6 +15,7 @@ import (
 // expense is what a front sets the score against: something to have less of.
 type expense struct {
 	id, title, axis string
+	height          float64 // of the plot at least, pixels
 	// of is an arm's expense, and the ends of its interval where it has one:
 	// what different models of the same expense say. 0: not known.
 	of    func(v *view, a *armView) (x, low, high float64)
@@ -24,12 +25,12 @@ type expense struct {
 // expenses are the fronts of the report.
 var expenses = []expense{
 	{
-		"bits", "bits a value", "mean bits of a stored value",
+		"bits", "bits a value", "mean bits of a stored value", 290,
 		func(_ *view, a *armView) (x, low, high float64) { return a.Bits, a.Bits, a.Bits },
 		func(x float64) string { return bits(x) + " bits" },
 	},
 	{
-		"bytes", "bytes moved", "bytes moved in a training step, % of FP32's",
+		"bytes", "bytes moved", "bytes moved in a training step, % of FP32's", 210,
 		func(_ *view, a *armView) (x, low, high float64) {
 			if a.Bill == nil {
 				return 0, 0, 0
@@ -40,7 +41,7 @@ var expenses = []expense{
 		func(x float64) string { return significant(x, 3) + " % of FP32's bytes" },
 	},
 	{
-		"energy", "energy", "energy of a training step by model, % of FP32's",
+		"energy", "energy", "energy of a training step by model, % of FP32's", 210,
 		func(_ *view, a *armView) (x, low, high float64) {
 			if a.Bill == nil {
 				return 0, 0, 0
@@ -68,7 +69,7 @@ func (v *view) front(e *expense, width float64) []*draw.Figure {
 	if width < 600 {
 		names = 128
 	}
-	height := math.Max(290, 15*float64(min(len(arms), namedArms+8))+20)
+	height := math.Max(e.height, 15*float64(min(len(arms), namedArms+8))+20)
 	f := &draw.Figure{
 		Title: plain(v.Metric) + " against " + e.title, Desc: v.describeFront(e, arms),
 		W: width, H: height + 58,

@@ -87,6 +87,7 @@ func invented() *results.Study {
 		s.Volumes = append(s.Volumes, results.Volume{Layer: c.Layer, Point: c.Point, Values: 4_000_000})
 	}
 	s.Costs = inventCosts(s)
+	inventDiagnosis(s)
 	s.Arms[2].Guilty = []string{"update.master"}
 	c := inventComparison(inventedArms[1], "bf16-nearest", lastScores(s, "bf16-nearest"), lastScores(s, inventedArms[1].slug))
 	c.Headline = true
@@ -264,6 +265,48 @@ func inventComparison(a inventedArm, against string, base, scores []float64) res
 	c.SD = (e.High - e.Low) / 4.5 * math.Sqrt(float64(c.N)) // near enough for a made-up table
 	c.BootLow, c.BootHigh = e.Low*0.97, e.High*0.98
 	return c
+}
+
+// inventDiagnosis is a closer look at one run.
+func inventDiagnosis(s *results.Study) {
+	d := results.Diagnosis{Arm: "e4m3", Replicate: 101}
+	for e := range inventedEpochs {
+		for _, c := range s.Runs[0].Counters {
+			c.Counts = results.Counts{Underflow: uint64(e * e * 100), Saturated: uint64(max(0, 3-e))}
+			d.Epochs = append(d.Epochs, results.EpochCounts{PointCounts: c, Epoch: e + 1})
+		}
+	}
+	for k, p := range []string{"forward.weight", "forward.activation", "weight_gradient.result", "update.master"} {
+		h := results.Histogram{Layer: 6, Name: "dense 5", Point: p, Epoch: 1 + k, Lowest: -18 - 3*k, Zeros: 400}
+		for i := range 24 {
+			h.Counts = append(h.Counts, uint64(1e5*math.Exp(-math.Pow(float64(i-14)/4, 2))))
+		}
+		d.Histograms = append(d.Histograms, h)
+	}
+	d.Histograms = append(d.Histograms, d.Histograms[0]) // a later epoch of the first point
+	d.Histograms[4].Epoch = 9
+	s.Diagnoses = []results.Diagnosis{d, {Arm: "unknown"}}
+	s.Ranges = []results.Range{{Format: "E4M3", Least: -9, Normal: -6, Largest: 8}, {Format: "E5M2", Least: -16, Normal: -14, Largest: 15}}
+}
+
+// gridStudy is a study of a grid: splits by rounding by order of sums.
+func gridStudy() *results.Study {
+	s := manyArms(36)
+	for i := range s.Arms[1:] {
+		a := &s.Arms[i+1]
+		a.Grid = "nine bits stored"
+		a.Axes = []results.Coordinate{
+			{Axis: "split", Value: fmt.Sprintf("E%dM%d", 2+i%6, 6-i%6)},
+			{Axis: "rounding", Value: []string{"nearest-even", "stochastic"}[i/6%2]},
+			{Axis: "order", Value: []string{"sequential", "chunk(64)", "wide"}[i/12]},
+		}
+		if i/6%2 == 1 {
+			for k := range a.Settings {
+				a.Settings[k].Rounding = "stochastic r=16 truncated"
+			}
+		}
+	}
+	return s
 }
 
 // manyArms is a study of n arms, for layouts.

@@ -33,9 +33,11 @@ var sectionTable = []struct {
 	{"front", "Score against bits, bytes and energy", "figures", frontSection},
 	{"differences", "Paired differences", "differences", differenceSection},
 	{"contrasts", "Contrasts", "differences", contrastSection},
+	{"grids", "Grids", "grids", gridSection},
 	{"curves", "Loss curves", "curves", curveSection},
 	{"roundings", "Stochastic beside nearest rounding", "differences", twinSection},
 	{"counters", "What left the range of its format", "counters", counterSection},
+	{"histograms", "Exponents against the range of formats", "figure", histogramSection},
 	{"recall-section", "Recall by class", "recall", recallSection},
 	{"costs", "What it would cost", "costs", costSection},
 	{"warnings", "Warnings", "list", warningSection},
@@ -49,7 +51,7 @@ var sectionTable = []struct {
 // pageData is what the page's frame needs.
 type pageData struct {
 	Heading        string
-	Answer         []string // sentences and clauses
+	Answer         []string // sentence by sentence
 	Alarms         []fact
 	WarningCount   string
 	WrittenOn      string

@@ -77,11 +77,21 @@ const (
 
 func (b *rangeBlock) height() float64 { return blockHead + cellPitch*float64(len(b.layers)) + 8 }
 
-// rangeBlock gathers an arm's cells; no layers when nothing left its range.
+// rangeBlock gathers the cells of an arm's layers in which something left its
+// range.
 func (v *view) rangeBlock(a *armView) rangeBlock {
 	b := rangeBlock{arm: a, names: map[int]string{}, cells: map[int][]mapCell{}}
-	some := false
-	for _, c := range tallies(a) {
+	all := tallies(a)
+	eventful := map[int]bool{} // layers in which something left its range
+	for _, c := range all {
+		if events(c.Counts) > 0 {
+			eventful[c.Layer] = true
+		}
+	}
+	for _, c := range all {
+		if !eventful[c.Layer] {
+			continue
+		}
 		over := c.Counts.Overflow + c.Counts.Saturated + c.Counts.NaN
 		cell := mapCell{PointCounts: c}
 		if over > 0 {
@@ -90,7 +100,6 @@ func (v *view) rangeBlock(a *armView) rangeBlock {
 		if c.Counts.Underflow > 0 {
 			cell.under = v.share(a, c, c.Counts.Underflow)
 		}
-		some = some || events(c.Counts) > 0
 		if b.cells[c.Layer] == nil {
 			b.layers = append(b.layers, c.Layer)
 		}
@@ -99,9 +108,6 @@ func (v *view) rangeBlock(a *armView) rangeBlock {
 			b.names[c.Layer] = "input and loss"
 		}
 		b.cells[c.Layer] = append(b.cells[c.Layer], cell)
-	}
-	if !some {
-		b.layers = nil
 	}
 	slices.SortFunc(b.layers, cmp.Compare[int])
 	return b

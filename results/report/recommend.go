@@ -39,7 +39,7 @@ func recommendSection(v *view) any {
 	data.Lead = append(data.Lead, fmt.Sprintf("As a whole, %s is the arm within the margin with the fewest bits a stored value (%s): difference to the baseline %s%s %s, n = %d.",
 		best.Label(), bits(best.Bits), v.words.diff(c.Mean), v.words.unit(), v.words.interval(c.Low, c.High), c.N))
 	data.Lead = append(data.Lead, "The table asks point by point. An arm is evidence for all its settings together, not for each by itself: rows of different arms have not been tested in one arm, and must be before they are used so. "+
-		"Where the last column says \"alone\", the arm differs from the baseline at that point only.")
+		"Where the evidence is \"alone\", the arm differs from the baseline at that point only.")
 	data.Table = v.adviceTable()
 	return data
 }

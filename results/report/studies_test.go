@@ -15,7 +15,7 @@ type study struct {
 
 // studies are the invented study and what is left of it in odd cases.
 func studies() []study {
-	out := []study{{"usual", invented()}, {"empty", &results.Study{}}, {"forty arms", manyArms(40)}}
+	out := []study{{"usual", invented()}, {"empty", &results.Study{}}, {"forty arms", manyArms(40)}, {"grid", gridStudy()}}
 	add := func(name string, change func(*results.Study)) {
 		s := invented()
 		change(s)

@@ -3,7 +3,6 @@ package report
 import (
 	"sort"
 	"strconv"
-	"unicode"
 
 	"ulpine/results"
 )
@@ -26,7 +25,7 @@ type armView struct {
 	Runs       []*results.Run      // ascending replicates
 	Strips     []strip
 	Bill       *results.Bill // what it costs by model; nil: not known
-	Score      estimate // the metric after the last epoch
+	Score      estimate      // the metric after the last epoch
 	Training   curve
 	Validation curve
 	Test       curve
@@ -135,10 +134,9 @@ func (a *armView) kind() (k results.VerdictKind, ok bool) {
 	return a.Comparison.Verdict.Kind, true
 }
 
-// sentences are the answer's sentences and, within them, its clauses, each with
-// its own stop: the first is what a reader takes away, the others qualify it.
-// Joined by blanks they are the answer. What stands in brackets or in quotation
-// marks is not taken apart.
+// sentences are the answer's sentences: the first is what a reader takes away, the
+// others qualify it. Joined by blanks they are the answer. What stands in
+// brackets or in quotation marks is not taken apart.
 func (v *view) sentences() []string {
 	var out []string
 	rest := []rune(v.answer())
@@ -152,11 +150,7 @@ func (v *view) sentences() []string {
 		case '“', '”':
 			quoted = r == '“'
 		case ' ':
-			if depth > 0 || quoted || i == from {
-				continue
-			}
-			stop := rest[i-1] == '.' && i+1 < len(rest) && (unicode.IsUpper(rest[i+1]) || rest[i+1] == '“')
-			if stop || rest[i-1] == ';' {
+			if depth == 0 && !quoted && i > from && rest[i-1] == '.' {
 				out, from = append(out, string(rest[from:i])), i+1
 			}
 		}

@@ -1,0 +1,242 @@
+package report
+
+import (
+	"fmt"
+	"html/template"
+	"math"
+	"slices"
+	"strings"
+
+	"ulpine/results"
+	"ulpine/results/report/draw"
+)
+
+// seen is one histogram with the format that it is held against.
+type seen struct {
+	results.Histogram
+	arm       *armView
+	replicate uint64
+	format    string
+	limits    *results.Range // nil: the format's range is not known
+}
+
+// histograms are those of the last epoch of every point, arm by arm.
+func (v *view) histograms() []seen {
+	var out []seen
+	for i := range v.Diagnoses {
+		d := &v.Diagnoses[i]
+		k := slices.IndexFunc(v.arms, func(a *armView) bool { return a.Slug == d.Arm })
+		if k < 0 {
+			continue
+		}
+		for _, h := range d.Histograms {
+			if total(&h) == 0 {
+				continue
+			}
+			at := slices.IndexFunc(out, func(s seen) bool {
+				return s.arm == v.arms[k] && s.replicate == d.Replicate && s.Layer == h.Layer && s.Point == h.Point
+			})
+			if at >= 0 {
+				if h.Epoch > out[at].Epoch {
+					out[at].Histogram = h
+				}
+				continue
+			}
+			s := seen{Histogram: h, arm: v.arms[k], replicate: d.Replicate}
+			v.measure(&s)
+			out = append(out, s)
+		}
+	}
+	return out
+}
+
+// measure finds the format at the histogram's point, and its range.
+func (v *view) measure(s *seen) {
+	for _, x := range s.arm.Settings {
+		if x.Layer == s.Layer && x.Point == s.Point {
+			s.format = plain(x.Format)
+		}
+	}
+	for i := range v.Ranges {
+		if plain(v.Ranges[i].Format) == s.format {
+			s.limits = &v.Ranges[i]
+		}
+	}
+}
+
+// total is the number of values in a histogram.
+func total(h *results.Histogram) uint64 {
+	n := h.Zeros + h.NotFinite
+	for _, c := range h.Counts {
+		n += c
+	}
+	return n
+}
+
+// outside are the values below the least and above the largest value of the
+// format, by exponent: values within the last binade of rounding to zero or
+// beyond the largest fraction are not told apart.
+func (s *seen) outside() (below, above uint64) {
+	if s.limits == nil {
+		return 0, 0
+	}
+	for i, c := range s.Counts {
+		switch e := s.Lowest + i; {
+		case e < s.limits.Least:
+			below += c
+		case e > s.limits.Largest:
+			above += c
+		}
+	}
+	return below, above
+}
+
+// words counts what falls outside.
+func (s *seen) words() string {
+	n := float64(total(&s.Histogram))
+	share := func(c uint64) string { return significant(100*float64(c)/n, 2) + " %" }
+	out := []string{share(s.Zeros) + " zeros"}
+	if s.limits == nil {
+		out = append(out, "range not recorded")
+	} else {
+		below, above := s.outside()
+		out = append([]string{share(below) + " below", share(above) + " above"}, out...)
+	}
+	if s.NotFinite > 0 {
+		out = append(out, share(s.NotFinite)+" not finite")
+	}
+	return strings.Join(out, ", ")
+}
+
+// head names a histogram.
+func (s *seen) head() string {
+	h := layerName(s.Layer, s.Name) + ", " + plain(s.Point)
+	if s.Epoch > 0 {
+		h += fmt.Sprintf(", epoch %d", s.Epoch)
+	}
+	return h
+}
+
+// histogramSection is left out when nothing was recorded.
+func histogramSection(v *view) any {
+	all := v.histograms()
+	if len(all) == 0 {
+		return nil
+	}
+	t := &tabular{
+		Caption: "Values at a rounding point, before rounding, against its format",
+		Columns: columns("Arm and replicate", "layer", "point", "format", "#values", "#below the least", "#above the largest", "#zeros", "#not finite"),
+	}
+	for i := range all {
+		s := &all[i]
+		below, above := s.outside()
+		row := []string{fmt.Sprintf("%s, %d", s.arm.Label(), s.replicate), layerName(s.Layer, s.Name), plain(s.Point), orMissing(s.format), count(total(&s.Histogram)), count(below), count(above), count(s.Zeros), count(s.NotFinite)}
+		if s.limits == nil {
+			row[5], row[6] = missing, missing
+		}
+		t.Rows = append(t.Rows, row)
+	}
+	return struct {
+		Figure  template.HTML
+		Caption string
+		Table   *tabular
+		Without string
+	}{
+		figureHTML(v, "exponents", "Columns: values by binary exponent, as shares of all values at the point, before they are rounded. Below them the range of the format as a ruler: its thin part holds subnormal numbers. What lies outside it is hatched and counted in words.", false),
+		t.Caption, t, "",
+	}
+}
+
+// exponentFigures draws histograms as small plots in three columns.
+func exponentFigures(v *view, width float64) []*draw.Figure {
+	all := v.histograms()
+	var out []*draw.Figure
+	for i := 0; i < len(all); i += panelsPerFigure {
+		out = append(out, exponentPart(all[i:min(i+panelsPerFigure, len(all))], width))
+	}
+	return out
+}
+
+// exponentPart is one figure of histograms.
+func exponentPart(all []seen, width float64) *draw.Figure {
+	columns := min(3, len(all))
+	if width < 600 {
+		columns = 1
+	}
+	const head, plot, foot = 46.0, 96.0, 62.0
+	cell := width / float64(columns)
+	if columns == 1 {
+		cell = math.Min(width, 420)
+	}
+	rows := (len(all) + columns - 1) / columns
+	f := &draw.Figure{Title: "Exponents of values against the range of their format", W: width, H: float64(rows) * (head + plot + foot)}
+	var said []string
+	for i := range all {
+		s := &all[i]
+		x, y := cell*float64(i%columns), (head+plot+foot)*float64(i/columns)
+		f.Group.Text(x+2, y+12, s.arm.Label(), draw.Type{Size: 11, Bold: true, Max: cell - 16})
+		f.Group.Text(x+2, y+26, s.head(), draw.Type{Size: 10.5, Role: draw.Soft, Max: cell - 16})
+		f.Group.Text(x+2, y+39, s.words(), draw.Type{Size: 10.5, Max: cell - 16})
+		p := frame{x0: x + 6, y0: y + head, x1: x + cell - 18, y1: y + head + plot}
+		drawExponents(f.Sub("arm", draw.Attr{Name: "arm", Value: s.arm.Slug}), p, s)
+		said = append(said, s.arm.Label()+", "+s.head()+": "+s.words()+".")
+	}
+	f.Desc = strings.Join(said, " ")
+	return f
+}
+
+// drawExponents draws one histogram over its ruler.
+func drawExponents(g *draw.Group, p frame, s *seen) {
+	lo, hi := s.Lowest, s.Lowest+len(s.Counts)
+	if s.limits != nil {
+		lo, hi = min(lo, s.limits.Least), max(hi, s.limits.Largest+1)
+	}
+	// An exponent's column spans its binade.
+	scale := draw.Linear{Lo: float64(lo) - 0.5, Hi: float64(hi) + 0.5, P0: p.x0, P1: p.x1}
+	most := uint64(1)
+	for _, c := range s.Counts {
+		most = max(most, c)
+	}
+	for i, c := range s.Counts {
+		if c == 0 {
+			continue
+		}
+		e := s.Lowest + i
+		x0, x1 := scale.At(float64(e)), scale.At(float64(e+1))
+		h := math.Max(1, (p.y1-p.y0)*float64(c)/float64(most))
+		t := g.Titled(fmt.Sprintf("2^%d: %s of %s values", e, count(c), count(total(&s.Histogram))))
+		if s.limits != nil && (e < s.limits.Least || e > s.limits.Largest) {
+			t.Rect(x0, p.y1-h, x1-x0, h, draw.Fill(draw.Post).With(0.18))
+			t.Hatch(x0, p.y1-h, x1-x0, h, 4, draw.Line(draw.Post, 1))
+			continue
+		}
+		t.Rect(x0, p.y1-h, math.Max(0.8, x1-x0-0.6), h, draw.Fill(draw.Arm))
+	}
+	g.Line(p.x0, p.y1, p.x1, p.y1, draw.Line(draw.Ink, 1))
+	last := math.Inf(-1)
+	for _, t := range scale.Ticks(max(2, int((p.x1-p.x0)/52))) {
+		words := "2^" + draw.TickLabel(t)
+		w := draw.Width(words, 10, false)
+		x := scale.At(t)
+		if t != math.Trunc(t) || x-w/2 < last+4 || x-w/2 < p.x0-6 || x+w/2 > p.x1+16 {
+			continue
+		}
+		g.Line(x, p.y1, x, p.y1+4, draw.Line(draw.Ink, 1))
+		g.Text(x, p.y1+15, words, draw.Type{Size: 10, Anchor: draw.Middle, Role: draw.Soft})
+		last = x + w/2
+	}
+	if s.limits == nil {
+		return
+	}
+	// The ruler: subnormal numbers thin, normal ones thick.
+	y := p.y1 + 25
+	least, normal, largest := scale.At(float64(s.limits.Least)), scale.At(float64(s.limits.Normal)), scale.At(float64(s.limits.Largest+1))
+	g.Rect(least, y+2, normal-least, 4, draw.Fill(draw.Fraction))
+	g.Rect(normal, y, largest-normal, 8, draw.Fill(draw.Exponent))
+	for _, x := range []float64{least, normal, largest} {
+		g.Line(x, y-3, x, y+11, draw.Line(draw.Ink, 1))
+	}
+	words := draw.Fit(s.format, 10, false, p.x1-p.x0)
+	half := draw.Width(words, 10, false) / 2
+	g.Text(math.Max(p.x0+half, math.Min(p.x1-half, (least+largest)/2)), y+22, words, draw.Type{Size: 10, Anchor: draw.Middle})
+}
