@@ -35,7 +35,10 @@ func describe(l *layout) *results.Study {
 func describeArm(a *plan.Arm) results.Arm {
 	arm := results.Arm{
 		Name: a.Name, Slug: a.Slug, Baseline: a.Baseline, Summary: a.Summary,
-		LossScale: a.LossScale,
+		LossScale: a.LossScale, Grid: a.Grid,
+	}
+	for _, c := range a.Axes {
+		arm.Axes = append(arm.Axes, results.Coordinate(c))
 	}
 	for _, s := range a.Settings {
 		arm.Settings = append(arm.Settings, results.Setting(s))

@@ -5,6 +5,7 @@ import (
 	"errors"
 	"fmt"
 	"io"
+	"runtime"
 
 	"github.com/spf13/cobra"
 
@@ -64,6 +65,11 @@ func runPlan(ctx context.Context, cmd *cobra.Command, p *plan.Plan, s *store.Sto
 	for _, w := range p.Warnings {
 		fmt.Fprintln(errw, "ulpine: warning:", w)
 	}
+	if !o.quiet {
+		if err := announce(ctx, errw, p, o.workers); err != nil {
+			return err
+		}
+	}
 	progress := newProgress(errw, o.quiet)
 	summary, err := experiments.Run(ctx, p, s, experiments.Options{
 		Workers: o.workers, Progress: progress,
@@ -87,6 +93,23 @@ func runPlan(ctx context.Context, cmd *cobra.Command, p *plan.Plan, s *store.Sto
 	if o.dir != "" {
 		return errors.Join(err, writeReport(out, o.dir, study))
 	}
+	return err
+}
+
+// announce says before the first run how many there are and about how long they
+// would take if none were stored.
+func announce(ctx context.Context, w io.Writer, p *plan.Plan, workers int) error {
+	rate, err := measureRate(ctx, p)
+	if ctx.Err() != nil {
+		return err
+	}
+	if err != nil {
+		rate = 0 // an arm that fails is told with its runs
+	}
+	if workers == 0 {
+		workers = runtime.GOMAXPROCS(0)
+	}
+	_, err = fmt.Fprintln(w, plan.WorkText(p, plan.ResolveOptions{Rate: rate, Workers: workers}))
 	return err
 }
 

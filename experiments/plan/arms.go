@@ -18,8 +18,9 @@ type armReader struct {
 	examples int // of the training set, which no batch may exceed
 }
 
-// readArms returns the baseline and, behind it, the plan's arms.
-func (r *armReader) readArms(root *node) []Arm {
+// readArms returns the baseline and, behind it, the plan's arms: those it spells
+// out, then those of its grids.
+func (r *armReader) readArms(root *node) ([]Arm, []*grid) {
 	base := binary32Everywhere(len(r.network.Layers))
 	var scale trainer.LossScale
 	if n := r.table(root, "baseline", `[baseline] with everything = "fp32"`); n != nil {
@@ -31,24 +32,37 @@ func (r *armReader) readArms(root *node) []Arm {
 	}
 	baseline := Arm{Name: BaselineSlug, Slug: BaselineSlug, Baseline: true, Training: r.training}
 	arms := []Arm{r.finish(baseline, &base, scale)}
-	if root.table["arm"] == nil {
+	if root.table["arm"] == nil && root.table["grid"] == nil {
 		r.fail(&PlanError{File: root.file, Key: "arm", Reason: "the plan has no arms", Remedy: `write [[arm]] with name = "bf16" and storage = "bf16"`})
 	}
 	seen := map[string]*node{}
-	for _, n := range r.tables(root, "arm") {
-		arm := Arm{Training: r.training}
-		arm.Name, arm.Slug = r.armName(n, seen)
-		own := base.inherit()
-		r.readSettings(n, selection{}, &own, r.formats, armKeys)
-		r.readLayers(n, &own)
-		r.readOverrides(n, &arm)
-		armScale := scale
-		if at := n.table["loss_scale"]; at != nil {
-			armScale = r.readLossScale(at)
-		}
-		arms = append(arms, r.finish(arm, &own, armScale))
+	spelled := r.tables(root, "arm")
+	if len(spelled) > maxArms {
+		r.fail(root.table["arm"].errorf("make several plans of it", "%d arms, more than the %d a plan may have", len(spelled), maxArms))
+		spelled = spelled[:maxArms]
 	}
-	return arms
+	for _, n := range spelled {
+		arms = append(arms, r.readArm(n, &base, scale, seen))
+	}
+	grids := r.readGrids(root, len(spelled))
+	for _, g := range grids {
+		arms = append(arms, r.readGridArms(g, &base, scale, seen)...)
+	}
+	return arms, grids
+}
+
+// readArm reads one arm; base and scale are the baseline's, seen the names taken.
+func (r *armReader) readArm(n *node, base *assignment, scale trainer.LossScale, seen map[string]*node) Arm {
+	arm := Arm{Training: r.training}
+	arm.Name, arm.Slug = r.armName(n, seen)
+	own := base.inherit()
+	r.readSettings(n, selection{}, &own, r.formats, armKeys)
+	r.readLayers(n, &own)
+	r.readOverrides(n, &arm)
+	if at := n.table["loss_scale"]; at != nil {
+		scale = r.readLossScale(at)
+	}
+	return r.finish(arm, &own, scale)
 }
 
 // armName reads the name of an arm, which must differ from all others as a slug.

@@ -94,7 +94,7 @@ func binary32Everywhere(layers int) assignment {
 // inherit is what an arm of this baseline is before its settings are read. An
 // operand that only a shorthand of the baseline set is reused again: its arm may
 // have set the tensor it is taken from.
-func (a assignment) inherit() assignment {
+func (a *assignment) inherit() assignment {
 	b := assignment{slots: passedOn(a.slots), layers: make([][]slot, len(a.layers))}
 	for i := range b.layers {
 		b.layers[i] = passedOn(a.layers[i])

@@ -2,6 +2,7 @@ package plan
 
 import (
 	"fmt"
+	"slices"
 	"strings"
 
 	"ulpine/trainer"
@@ -10,7 +11,7 @@ import (
 // planKeys are the keys of a plan.
 var planKeys = []string{
 	"title", "question", "include", "task", "network", "training", "pretrain", "replicates",
-	"claim", "baseline", "arm", "contrast", "format",
+	"claim", "baseline", "arm", "grid", "contrast", "format",
 }
 
 // Load reads, checks and resolves the plan in the file name. A path such as
@@ -60,11 +61,26 @@ func (r *reader) build(root *node) *Plan {
 	p.Replicates = r.readReplicates(root)
 	p.Claim = r.readClaim(root)
 	arms := armReader{r, r.readFormats(root), &p.Network, p.Training, p.Task.Train}
-	p.Arms = arms.readArms(root)
+	var grids []*grid
+	p.Arms, grids = arms.readArms(root)
 	p.Contrasts = r.readContrasts(root, p.Arms, p.Claim.Margin)
+	for _, g := range grids {
+		p.Grids = append(p.Grids, g.Grid)
+		p.addContrasts(r.contrasts(g, p.Claim.Margin))
+	}
 	p.Pretrain = r.readPretrain(root, p)
 	r.checkMetric(root, p.Claim, p.Training, p.Task)
 	return p
+}
+
+// addContrasts adds those that the plan does not spell out.
+func (p *Plan) addContrasts(all []Contrast) {
+	for _, c := range all {
+		same := func(d Contrast) bool { return d.Arm == c.Arm && d.Against == c.Against }
+		if !slices.ContainsFunc(p.Contrasts, same) {
+			p.Contrasts = append(p.Contrasts, c)
+		}
+	}
 }
 
 // readNetwork reads [network].

@@ -23,6 +23,8 @@
 //	                    plan's own optimizer, learning_rate, batch, epochs;
 //	                    learning_rate is short for training.learning_rate
 //	[[arm.layer]]       select, settings: what differs in some layers; [[baseline.layer]]
+//	[[grid]]            title, name, axis, contrast, and all that an arm may have:
+//	                    arms that differ along axes
 //	[[contrast]]        arm, against, margin: two arms to compare with each other
 //
 // Tables of an included file and of the plan merge key by key. A text, a number,
@@ -69,6 +71,28 @@
 //
 // A selector that selects nothing is an error, and so is a point's own key where
 // no selected layer computes with that point; shorthands set what there is.
+//
+// # Grids
+//
+// A [[grid]] is an arm with placeholders, and axes of values for them:
+//
+//	[[grid]]
+//	name = "{split} {rounding}"
+//	axis.split = { splits = 9 }
+//	axis.rounding = ["nearest-even", "stochastic"]
+//	storage = { format = "{split}", rounding = "{rounding}" }
+//	contrast = { axis = "rounding", against = "nearest-even" }
+//
+// It stands for one arm at each place, the last axis varying fastest. An axis is
+// an array of values; { from, to, step } or { from, to, times }: numbers a step or
+// a factor apart; or { splits = 9 }, or of several totals { splits = [8, 9] }: all
+// EeMm of so many bits, E from 2 to 8, as the words are read everywhere (E4M3 is
+// OCP's). A text that is nothing but {axis} becomes the value, whatever its
+// kind; within a text ("E8M{m}", "chunk({k})") and in a key ("{point}") the value's
+// text is put. A value that is a table has a name, which is its text and no part
+// of the value. The name must tell the values of every axis apart, and every axis
+// must be used. contrast compares, along one axis, every value with one of them.
+// A plan has at most 1000 arms.
 //
 // # Which setting holds
 //

@@ -17,7 +17,8 @@ type Plan struct {
 	Replicates Replicates
 	Claim      Claim
 
-	Arms      []Arm // the baseline first, then in the order of the plan
+	Arms      []Arm // the baseline first, then in the order of the plan, those of grids last
+	Grids     []Grid
 	Contrasts []Contrast
 
 	Warnings []string // doubts that travel into the report; those about data are the Task's
@@ -73,6 +74,8 @@ type Arm struct {
 	Arithmetic trainer.Arm
 	Training   trainer.Training // the plan's with this arm's overrides
 	Overrides  []string         // what the overrides change, in words
+	Grid       string           // title of the grid it comes from; empty: spelt out
+	Axes       []Coordinate     // its place there
 	Settings   []Setting        // one row a rounding point of each layer
 	Summary    string           // the settings in one line, as the plan spells them
 	LossScale  string           // in words

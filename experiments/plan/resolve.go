@@ -28,7 +28,8 @@ func ResolveText(p *Plan, o ResolveOptions) string {
 	}
 	writeFacts(&b, p)
 	writeLayers(&b, p)
-	writeWork(&b, p, o)
+	fmt.Fprintf(&b, "\n%s\n", WorkText(p, o))
+	writeGrids(&b, p)
 	for i := range p.Arms {
 		writeArm(&b, p, &p.Arms[i], o.Full)
 	}
@@ -90,14 +91,16 @@ func orDash(n int) string {
 	return fmt.Sprint(n)
 }
 
-// writeWork writes the number of runs, their work and about how long they take.
-func writeWork(b *strings.Builder, p *Plan, o ResolveOptions) {
+// WorkText is one line on the number of runs, their work and, if a rate is given,
+// about how long they take.
+func WorkText(p *Plan, o ResolveOptions) string {
+	var b strings.Builder
 	work := p.Work()
-	fmt.Fprintf(b, "\n%d runs: %d arms x %d replicates", work.Runs, len(p.Arms), p.Replicates.Count)
+	fmt.Fprintf(&b, "%d runs: %d arms x %d replicates", work.Runs, len(p.Arms), p.Replicates.Count)
 	if work.Pretraining > 0 {
-		fmt.Fprintf(b, ", and %d pretrainings", work.Pretraining)
+		fmt.Fprintf(&b, ", and %d pretrainings", work.Pretraining)
 	}
-	fmt.Fprintf(b, "; %s multiply-adds in all", magnitude(float64(work.MACs)))
+	fmt.Fprintf(&b, "; %s multiply-adds in all", magnitude(float64(work.MACs)))
 	if o.Rate > 0 {
 		workers := max(1, o.Workers)
 		seconds := float64(work.MACs) / (o.Rate * float64(workers))
@@ -105,9 +108,27 @@ func writeWork(b *strings.Builder, p *Plan, o ResolveOptions) {
 		if workers == 1 {
 			plural = ""
 		}
-		fmt.Fprintf(b, ", about %s at %s a second on %d worker%s", duration(seconds), magnitude(o.Rate), workers, plural)
+		fmt.Fprintf(&b, ", about %s at %s a second on %d worker%s", duration(seconds), magnitude(o.Rate), workers, plural)
 	}
-	fmt.Fprintln(b)
+	return b.String()
+}
+
+// writeGrids writes the axes of each grid.
+func writeGrids(b *strings.Builder, p *Plan) {
+	for _, g := range p.Grids {
+		fmt.Fprintf(b, "\ngrid %q: %d arms\n", oneLine(g.Title), len(g.Arms))
+		w := table(b)
+		for _, a := range g.Axes {
+			for i, line := range wrap(a.Values, 72) {
+				name := oneLine(a.Name)
+				if i > 0 {
+					name = ""
+				}
+				fmt.Fprintf(w, "  %s\t%s\n", name, oneLine(line))
+			}
+		}
+		w.Flush()
+	}
 }
 
 // magnitude writes a count with three digits and an SI prefix.
