@@ -13,6 +13,8 @@ import (
 type Set struct {
 	Inputs *tensor.Dense // [n, shape of one example...], float32, row-major
 	Labels []int32       // n classes, counted from 0
+	// Targets are those of a regression, [n, outputs], float32; nil where Labels serve.
+	Targets *tensor.Dense
 }
 
 // Len is the number of examples.

@@ -1,10 +1,14 @@
 package trainer
 
-import "ulpine/quant"
+import (
+	"math"
+
+	"ulpine/quant"
+)
 
 // Scores counts answers. The answer is the class of the largest output, the
 // lowest index among equals; an example with a NaN among its outputs has no
-// answer and is wrong.
+// answer and is wrong. In a regression Classes is 0 and only distances are summed.
 type Scores struct {
 	Examples uint64
 	Right    uint64
@@ -14,27 +18,74 @@ type Scores struct {
 	Confusion []uint64
 	// Unanswered[t] counts examples of class t with a NaN among their outputs.
 	Unanswered []uint64
+
+	// Of evaluations: the alarm score and the class of every example, in order.
+	Alarm []float64
+	Truth []int32
+
+	Outputs int     // of a regression
+	Squares float64 // the squared distances, summed in binary64 in the order of examples and outputs
+
+	keep bool // keep alarm scores
 }
 
-func newScores(classes int) *Scores {
-	return &Scores{Classes: classes, Confusion: make([]uint64, classes*classes), Unanswered: make([]uint64, classes)}
+// newScores returns empty counts of a classification, or sums of a regression.
+func newScores(outputs int, regression bool) *Scores {
+	if regression {
+		return &Scores{Outputs: outputs}
+	}
+	return &Scores{Classes: outputs, Confusion: make([]uint64, outputs*outputs), Unanswered: make([]uint64, outputs)}
 }
 
-// Accuracy is the fraction of right answers, in binary64.
-func (s *Scores) Accuracy() float64 { return float64(s.Right) / float64(s.Examples) }
+// Accuracy is the fraction of right answers, in binary64; NaN in a regression.
+func (s *Scores) Accuracy() float64 {
+	if s.Classes == 0 {
+		return math.NaN()
+	}
+	return float64(s.Right) / float64(s.Examples)
+}
+
+// RMSE is the root of the mean squared distance over examples and outputs, in
+// binary64; NaN in a classification.
+func (s *Scores) RMSE() float64 {
+	if s.Outputs == 0 {
+		return math.NaN()
+	}
+	return math.Sqrt(s.Squares / (float64(s.Examples) * float64(s.Outputs)))
+}
+
+// Recall is the fraction of the examples of a class that were answered rightly; NaN
+// where there are none.
+func (s *Scores) Recall(class int) float64 {
+	all := s.Unanswered[class]
+	for _, n := range s.Confusion[class*s.Classes:][:s.Classes] {
+		all += n
+	}
+	return float64(s.Confusion[class*s.Classes+class]) / float64(all)
+}
 
 // reset forgets all answers.
 func (s *Scores) reset() {
 	clear(s.Confusion)
 	clear(s.Unanswered)
-	s.Examples, s.Right, s.Ties = 0, 0, 0
+	s.Examples, s.Right, s.Ties, s.Squares = 0, 0, 0, 0
+	s.Alarm, s.Truth = s.Alarm[:0], s.Truth[:0]
 }
 
-// score adds the answers of a batch of outputs [len(labels), Classes].
-func score[T quant.Element](s *Scores, y []T, labels []int32) {
-	for n, label := range labels {
+// score adds the outputs [examples, outputs] of a batch.
+func score[T quant.Element](s *Scores, y []T, t truth) {
+	if s.Classes == 0 {
+		s.Squares = addSquares(s.Squares, y, t.values)
+		s.Examples += uint64(len(y) / s.Outputs)
+		return
+	}
+	for n, label := range t.labels {
 		s.Examples++
-		best, tie := answer(y[n*s.Classes:][:s.Classes])
+		row := y[n*s.Classes:][:s.Classes]
+		if s.keep {
+			s.Alarm, s.Truth = append(s.Alarm, alarmScore(row)), append(s.Truth, label)
+		}
+		best, tie := answer(row)
 		if best < 0 {
 			s.Unanswered[label]++
 			continue

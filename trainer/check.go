@@ -22,16 +22,16 @@ func (j *Job) check() (parts, error) {
 
 // openSets checks the three sets.
 func (j *Job) openSets(p *parts) (err error) {
-	if p.train, err = j.Network.open("training", j.Train, p.classes); err != nil {
+	if p.train, err = j.Network.open("training", j.Train, p.classes, p.loss.regression()); err != nil {
 		return err
 	}
 	if p.train.size() == 0 {
 		return fmt.Errorf("training data: no examples")
 	}
-	if p.validation, err = j.Network.open("validation", j.Validation, p.classes); err != nil {
+	if p.validation, err = j.Network.open("validation", j.Validation, p.classes, p.loss.regression()); err != nil {
 		return err
 	}
-	if p.test, err = j.Network.open("test", j.Test, p.classes); err != nil {
+	if p.test, err = j.Network.open("test", j.Test, p.classes, p.loss.regression()); err != nil {
 		return err
 	}
 	p.largest = max(p.train.size(), p.validation.size(), p.test.size())
@@ -39,7 +39,7 @@ func (j *Job) openSets(p *parts) (err error) {
 	if err = j.Training.LearningRate.checkLength(total); err != nil {
 		return err
 	}
-	return j.checkExtents(p.largest)
+	return j.checkExtents(p)
 }
 
 // Terms of a sum and columns of a product are numbered in the counters of random
@@ -50,8 +50,8 @@ const (
 )
 
 // checkExtents refuses sums and data sets that run out of numbers.
-func (j *Job) checkExtents(largest int) error {
-	batch := min(j.Training.Batch, len(j.Train.Labels))
+func (j *Job) checkExtents(p *parts) error {
+	batch, largest := min(j.Training.Batch, p.train.size()), p.largest
 	for i := range j.Network.Layers {
 		l := j.Network.describeLayer(i, batch)
 		if l.Sums.longest() >= termLimit {
@@ -70,7 +70,7 @@ func (j *Job) checkTraining(p *parts) (err error) {
 	if p.rule, err = findRule(t.Optimizer); err != nil {
 		return err
 	}
-	if p.loss, err = findLoss(t.Loss); err != nil {
+	if p.loss, err = findLoss(t); err != nil {
 		return err
 	}
 	if t.Batch < 1 || t.Epochs < 1 {

@@ -97,11 +97,13 @@ const (
 // Training is what all arms share besides the network. Hyper-parameters are
 // used as the binary32 number nearest to what is written here.
 type Training struct {
-	Loss          string // "cross-entropy", also where empty
-	Optimizer     Optimizer
-	LearningRate  Schedule
-	Batch, Epochs int
-	Shuffle       bool
+	Loss           string  // "cross-entropy", also where empty, "mean-squared-error", "huber"
+	LabelSmoothing float64 // of cross-entropy
+	HuberWidth     float64 // where the huber loss turns straight; 0: 1
+	Optimizer      Optimizer
+	LearningRate   Schedule
+	Batch, Epochs  int
+	Shuffle        bool
 	// EvaluateTest and EvaluateValidation: "every epoch", "last epoch", "never".
 	EvaluateTest, EvaluateValidation When
 }

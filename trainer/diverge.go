@@ -1,7 +1,5 @@
 package trainer
 
-import "math"
-
 // When a run is given up, and when it is said to have learnt nothing.
 const (
 	highFactor = 3 // an epoch's loss over this many times the first step's ...
@@ -43,21 +41,4 @@ func (r *run[T]) judgeEpoch(loss float64) {
 
 func (r *run[T]) diverge(reason string) {
 	r.out.Diverged, r.out.DivergedStep = reason, len(r.out.Steps)
-}
-
-// constantLoss is the cross-entropy, in nats, of the best predictor that ignores
-// its input: the entropy of the labels.
-func (s *split) constantLoss(classes int, log func(float64) float64) float64 {
-	counts := make([]uint64, classes)
-	for _, label := range s.labels {
-		counts[label]++
-	}
-	var loss float64
-	for _, k := range counts {
-		if k > 0 {
-			share := float64(k) / float64(s.size())
-			loss -= float64(share * log(share))
-		}
-	}
-	return math.Abs(loss) // +0, not -0, for a single class
 }

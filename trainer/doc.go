@@ -73,7 +73,9 @@
 // is R[loss.gradient](((softmax - target)/B) S): quotient and product are rounded
 // to binary64, B is the number of examples in this batch (the last one of an
 // epoch may be short) and S the loss scale. Exponential and logarithm are package
-// elementary's, classes ascend.
+// elementary's, classes ascend. Label smoothing moves the target; the losses of
+// regressions, half the squared distance and Huber's, have slopes of their own in
+// place of softmax - target: see crossEntropy, squaredError, huber.
 //
 // # Update
 //
@@ -133,7 +135,9 @@
 // The answer is the lowest index of the largest output; an example with a NaN
 // output is wrong and has no answer; shared largest outputs are counted as ties.
 // An epoch's training loss is the mean of its steps' losses weighted by batch
-// size; its training accuracy is taken from the same outputs.
+// size; its training accuracy is taken from the same outputs. A regression has no
+// answers but the root of the mean squared distance. Class 0 is the sound state
+// where faults are counted that raised no alarm: see Scores.MissedFaults.
 //
 // A run has diverged when a step's loss or, after an update, a master is not
 // finite; when the loss of an epoch is over 3 times the first step's for 2 epochs
@@ -141,7 +145,7 @@
 // after the last epoch are evaluated, and it is scored as it stands. A run that
 // did not diverge has stalled when its last training loss is over 95 % of the
 // entropy of the training labels, the least loss of a predictor that ignores its
-// input.
+// input; in a regression, of the loss of always answering with the mean target.
 //
 // # Counters
 //

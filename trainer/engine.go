@@ -35,7 +35,7 @@ type engine[T quant.Element] struct {
 	pass   pass
 	tally  tally
 	gather []float32 // inputs of a shuffled batch
-	labels []int32
+	truth  truth     // and its targets
 }
 
 // newEngine builds layers and memory. The arm has been checked.
@@ -45,7 +45,7 @@ func newEngine[T quant.Element](job *Job, train *split, parts parts) (*engine[T]
 		batch:  min(job.Training.Batch, train.size()),
 		tally:  make(tally, len(job.Network.Layers)+1),
 		scaler: newScaler(job.Arm.LossScale),
-		scores: newScores(parts.classes),
+		scores: newScores(parts.classes, parts.loss.regression()),
 	}
 	capacity := max(e.batch, min(evaluationBatch, parts.largest))
 	if err := e.buildLayers(capacity); err != nil {
@@ -54,7 +54,7 @@ func newEngine[T quant.Element](job *Job, train *split, parts parts) (*engine[T]
 	e.judge = newJudge[T](parts.loss, e.batch, parts.classes)
 	e.mover = newMover(parts.rule, job.Training.Optimizer, e.params)
 	e.gather = make([]float32, e.batch*train.per)
-	e.labels = make([]int32, e.batch)
+	e.truth = newTruth(e.batch, train)
 	e.pass = pass{seed: random.Derive(job.Seed, random.RoundingBits), phase: phaseTraining, tally: e.tally, dropout: random.Derive(job.Seed, random.Dropout)}
 	return e, nil
 }
@@ -157,10 +157,9 @@ func (e *engine[T]) step(batch []int32, rate float64) (loss float64, what fate) 
 	p.step++
 	p.samples = len(batch)
 	y := e.forward(p, e.fetch(batch))
-	labels := e.labels[:len(batch)]
-	score(e.scores, y, labels)
+	score(e.scores, y, e.truths(len(batch)))
 
-	sum, slopes := e.judge.errors(y, labels, e.scaler.s)
+	sum, slopes := e.judge.errors(y, e.truths(len(batch)), e.scaler.s)
 	loss = sum / float64(len(batch))
 	if loss-loss != 0 {
 		return loss, lossNotFinite
@@ -179,14 +178,35 @@ func (e *engine[T]) step(batch []int32, rate float64) (loss float64, what fate) 
 	return loss, stepTaken
 }
 
-// fetch gathers inputs and labels of a batch.
+// fetch gathers inputs and targets of a batch.
 func (e *engine[T]) fetch(batch []int32) []float32 {
 	per := e.train.per
 	for i, n := range batch {
 		copy(e.gather[i*per:][:per], e.train.inputs[int(n)*per:])
-		e.labels[i] = e.train.labels[n]
+		if e.truth.values != nil {
+			width := e.train.outputs
+			copy(e.truth.values[i*width:][:width], e.train.targets[int(n)*width:])
+		} else {
+			e.truth.labels[i] = e.train.labels[n]
+		}
 	}
 	return e.gather[:len(batch)*per]
+}
+
+// truths are the targets of the n examples fetched last.
+func (e *engine[T]) truths(n int) truth {
+	if e.truth.values != nil {
+		return truth{values: e.truth.values[:n*e.train.outputs]}
+	}
+	return truth{labels: e.truth.labels[:n]}
+}
+
+// newTruth is memory for the targets of a batch of a set.
+func newTruth(batch int, s *split) truth {
+	if s.targets != nil {
+		return truth{values: make([]float32, batch*s.outputs)}
+	}
+	return truth{labels: make([]int32, batch)}
 }
 
 // backward rounds the output error and walks down the network as far as there
@@ -238,9 +258,9 @@ func (e *engine[T]) evaluate(ctx context.Context, set *split, phase uint32, epoc
 		p.samples = min(e.capacity(), set.size()-first)
 		p.first = uint64(first)
 		y := e.forward(&p, set.rows(first, p.samples))
-		labels := set.labels[first:][:p.samples]
-		sum = e.judge.losses(sum, y, labels)
-		score(scores, y, labels)
+		targets := set.truths(first, p.samples)
+		sum = e.judge.losses(sum, y, targets)
+		score(scores, y, targets)
 	}
 	return sum / float64(set.size()), nil
 }

@@ -65,10 +65,10 @@ func checkGradients(t *testing.T, input []int, layers []string) {
 	loss := func() float64 {
 		e.pass.samples = 3
 		y := e.forward(&e.pass, e.fetch(batch))
-		return e.judge.losses(0, y, e.labels[:3]) / 3
+		return e.judge.losses(0, y, e.truths(3)) / 3
 	}
 	loss()
-	_, slopes := e.judge.errors(e.outputs(3), e.labels[:3], 1)
+	_, slopes := e.judge.errors(e.outputs(3), e.truths(3), 1)
 	e.backward(&e.pass, slopes)
 
 	// h balances truncation (h^2) against rounding (2^-52/h): errors near 1e-10.

@@ -79,7 +79,7 @@ func dataset(n int, shape []int, classes int, seed uint64) Set {
 		}
 		labels[i] = int32(class)
 	}
-	return Set{tensor.New(tensor.WithShape(append([]int{n}, shape...)...), tensor.WithBacking(inputs)), labels}
+	return Set{tensor.New(tensor.WithShape(append([]int{n}, shape...)...), tensor.WithBacking(inputs)), labels, nil}
 }
 
 // sgdTraining is a short training without shuffling.

@@ -17,7 +17,9 @@ type Param struct {
 func paramName(layer int, name string) string { return fmt.Sprintf("layer%d.%s", layer, name) }
 
 // Epoch is what is known after one pass over the training data. Losses are means
-// in nats, accuracies fractions of one; NaN where a split was not evaluated.
+// (of cross-entropy in nats), accuracies fractions of one, RMSE roots of mean squared
+// distances over examples and outputs; NaN where a split was not evaluated, and
+// accuracies of a regression, and RMSE of a classification.
 type Epoch struct {
 	TrainLoss          float64 // mean of step losses weighted by batch size
 	TrainAccuracy      float64 // of the same outputs, each before its step's update
@@ -25,6 +27,9 @@ type Epoch struct {
 	ValidationAccuracy float64
 	TestLoss           float64
 	TestAccuracy       float64
+	TrainRMSE          float64
+	ValidationRMSE     float64
+	TestRMSE           float64
 	Ties               uint64  // test examples whose largest output is shared
 	LossScale          float64 // S at the end of the epoch
 	Skipped            uint64  // steps the loss scale skipped

@@ -6,7 +6,6 @@ import (
 	"math"
 
 	"ulpine/quant"
-	"ulpine/quant/elementary"
 )
 
 // Job is one training: what is trained, with which arithmetic, on what.
@@ -93,7 +92,10 @@ func newRun[T quant.Element](e *engine[T], job *Job, parts parts, w Watcher) *ru
 	total := stepCount(job.Training.Epochs, n, e.batch)
 	r := &run[T]{engine: e, job: job, parts: parts, watch: w, order: make([]int32, n), total: total}
 	r.out.Steps = make([]float64, 0, total)
-	r.answers = [2]*Scores{newScores(parts.classes), newScores(parts.classes)}
+	for i := range r.answers {
+		r.answers[i] = newScores(parts.classes, parts.loss.regression())
+		r.answers[i].keep = true
+	}
 	return r
 }
 
@@ -147,8 +149,9 @@ func (r *run[T]) measure(ctx context.Context, epoch int, loss float64, last bool
 	t := &r.job.Training
 	nan := math.NaN()
 	m = Epoch{
-		TrainLoss: loss, TrainAccuracy: r.scores.Accuracy(),
+		TrainLoss: loss, TrainAccuracy: r.scores.Accuracy(), TrainRMSE: r.scores.RMSE(),
 		ValidationLoss: nan, ValidationAccuracy: nan, TestLoss: nan, TestAccuracy: nan,
+		ValidationRMSE: nan, TestRMSE: nan,
 		LossScale: r.scaler.s, Skipped: r.scaler.skipped - r.skipped0,
 	}
 	if r.parts.validation.size() > 0 && t.EvaluateValidation.due(last) {
@@ -156,11 +159,11 @@ func (r *run[T]) measure(ctx context.Context, epoch int, loss float64, last bool
 		if err != nil {
 			return m, err
 		}
-		m.ValidationAccuracy = r.answers[0].Accuracy()
+		m.ValidationAccuracy, m.ValidationRMSE = r.answers[0].Accuracy(), r.answers[0].RMSE()
 	}
 	if r.parts.test.size() > 0 && t.EvaluateTest.due(last) {
 		m.TestLoss, err = r.evaluate(ctx, r.parts.test, phaseTest, epoch, r.answers[1])
-		m.TestAccuracy, m.Ties = r.answers[1].Accuracy(), r.answers[1].Ties
+		m.TestAccuracy, m.TestRMSE, m.Ties = r.answers[1].Accuracy(), r.answers[1].RMSE(), r.answers[1].Ties
 		r.out.Test = r.answers[1]
 	}
 	return m, err
@@ -171,7 +174,7 @@ func (r *run[T]) finish() Outcome {
 	r.out.Final = r.record()
 	r.out.Counters = r.net.counters(r.tally)
 	if last := len(r.out.Epochs) - 1; r.out.Diverged == "" && last >= 0 {
-		constant := r.parts.train.constantLoss(r.parts.classes, elementary.Log)
+		constant := r.parts.loss.constant(r.parts.train, r.parts.classes)
 		r.out.Stalled = r.out.Epochs[last].TrainLoss > float64(stallShare*constant)
 	}
 	return r.out

@@ -114,11 +114,11 @@ func TestEvaluationKnowsNoBatch(t *testing.T) {
 		if err := e.start(nil); err != nil {
 			t.Fatal(err)
 		}
-		set, err := job.Network.open("test", job.Test, 3)
+		set, err := job.Network.open("test", job.Test, 3, false)
 		if err != nil {
 			t.Fatal(err)
 		}
-		scores := newScores(3)
+		scores := newScores(3, false)
 		loss, err := e.evaluate(context.Background(), set, phaseTest, 5, scores)
 		if err != nil {
 			t.Fatal(err)

@@ -30,8 +30,8 @@ func TestAnswersAndTies(t *testing.T) {
 			t.Errorf("%v: class %d, tie %v", c.y, best, tie)
 		}
 	}
-	s := newScores(2)
-	score(s, []float64{1, 1, 2, 3, n, 0, 5, 4}, []int32{0, 1, 1, 1})
+	s := newScores(2, false)
+	score(s, []float64{1, 1, 2, 3, n, 0, 5, 4}, truth{labels: []int32{0, 1, 1, 1}})
 	if s.Examples != 4 || s.Right != 2 || s.Ties != 1 || s.Unanswered[1] != 1 || !slices.Equal(s.Confusion, []uint64{1, 0, 1, 1}) || s.Accuracy() != 0.5 {
 		t.Errorf("%+v", s)
 	}
@@ -129,7 +129,7 @@ func TestOutputErrorIsDividedThenScaled(t *testing.T) {
 	y, labels := []float64{0.3, -0.2, 0.1, 0.7, 0.4, -0.6}, []int32{0, 1, 0}
 	for _, s := range []float64{10, 1000, 3} {
 		j := newJudge[float64](crossEntropy{}, 3, 2)
-		sum, got := j.errors(y, labels, s)
+		sum, got := j.errors(y, truth{labels: labels}, s)
 		var loss float64
 		var want []float64
 		for n, label := range labels {
@@ -140,7 +140,7 @@ func TestOutputErrorIsDividedThenScaled(t *testing.T) {
 				want = append(want, float64(v*s))
 			}
 		}
-		sameBits(t, "loss", []float64{sum, j.losses(0, y, labels)}, []float64{loss, loss})
+		sameBits(t, "loss", []float64{sum, j.losses(0, y, truth{labels: labels})}, []float64{loss, loss})
 		sameBits(t, "error", got, want)
 	}
 }
