@@ -21,9 +21,8 @@ func gapFraction(x Real, toward, away float64) (fraction uint64, rest bool) {
 	if num.IsZero() {
 		return 0, rest
 	}
-	rest = rest || num.Sticky
-	if den.Lo != 0 || den.Sticky {
-		f, more := longFraction(num, toward, away)
+	if den.Lo != 0 || den.Sticky || num.Sticky {
+		f, more := longFraction(x, toward, away)
 		return f, more || rest
 	}
 	// num = N 2^e, den = d 2^64 2^(e+s) with d normalised: f 2^64 = N/d 2^-s.
@@ -44,19 +43,20 @@ func gapFraction(x Real, toward, away float64) (fraction uint64, rest bool) {
 	}
 }
 
-// longFraction is gapFraction for gaps of more than 64 significant bits.
-func longFraction(num Real, toward, away float64) (fraction uint64, rest bool) {
+// longFraction is gapFraction for gaps of more than 64 significant bits and places
+// in them of more than 128.
+func longFraction(x Real, toward, away float64) (fraction uint64, rest bool) {
 	exact := func(x float64) *big.Rat { return new(big.Rat).SetFloat64(x) }
-	den := new(big.Rat).Sub(exact(away), exact(toward))
-	n := new(big.Int).SetUint64(num.Hi)
-	n.Lsh(n, 64).Or(n, new(big.Int).SetUint64(num.Lo)).Mul(n, den.Denom())
-	d := new(big.Int).Set(den.Num())
-	if e := num.Exp + 64; e > 0 {
-		n.Lsh(n, uint(e))
+	n := new(big.Int).SetUint64(x.Hi)
+	n.Lsh(n, 64).Or(n, new(big.Int).SetUint64(x.Lo))
+	f := new(big.Rat).SetInt(n)
+	if x.Exp < 0 {
+		f.SetFrac(n, new(big.Int).Lsh(big.NewInt(1), uint(-x.Exp)))
 	} else {
-		d.Lsh(d, uint(-e))
+		f.SetInt(n.Lsh(n, uint(x.Exp)))
 	}
-	q, r := n.QuoRem(n, d, new(big.Int))
+	f.Sub(f, exact(toward)).Quo(f, new(big.Rat).Sub(exact(away), exact(toward)))
+	q, r := n.QuoRem(n.Lsh(f.Num(), 64), f.Denom(), new(big.Int))
 	return q.Uint64(), r.Sign() != 0
 }
 
