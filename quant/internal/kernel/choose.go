@@ -101,6 +101,13 @@ func (p *plans) chooseNative(b *block) *plan {
 	return p.native
 }
 
+// fixes tells whether sums rounded as fixed-point numbers are normal in binary32 (or
+// zero), or far below the grid's least binade, where only their smallness matters.
+func (b *block) fixes(g Grid) bool {
+	scale := single.carryScale(g)
+	return b.sumLow()+scale >= -126 || g.MinExponent+scale > -126+32
+}
+
 // chooseNearest: after a rounded product of no more bits than the sum, the binary32
 // sum of two values of at most 11 bits, rounded again to at most 11, is their exact
 // sum rounded (24 >= 2 x 11 + 2: S. A. Figueroa, When is double rounding innocuous?,
@@ -109,7 +116,7 @@ func (p *plans) chooseNearest(b *block) *plan {
 	a, g := p.arithmetic, p.sum.Grid
 	switch {
 	case a.Product == RoundedProduct:
-		if !b.roundsOnce(a.Grid) || !p.sum.Through && a.Grid.Fraction > g.Fraction {
+		if !b.roundsOnce(a.Grid) {
 			return nil
 		}
 		return p.rounded
@@ -141,12 +148,14 @@ func (p *plans) chooseStochastic(b *block) *plan {
 	case a.Product == NativeProduct && !b.exact():
 		return nil
 	case p.sum.Through && a.Product == RoundedProduct:
-		if !b.roundsOnce(a.Grid) {
+		if !b.roundsOnce(a.Grid) || p.rounded.mode == stochasticProductCare && !b.fixes(g) {
 			return nil
 		}
 		return p.rounded
 	case p.sum.Through && p.random != nil && b.subnormalFree(g):
 		return p.random
+	case p.sum.Through && !b.fixes(g):
+		return nil
 	case p.sum.Through:
 		return p.randomCare
 	case a.Product == RoundedProduct:

@@ -91,5 +91,5 @@ func (c *Constants) fixed(s Sum, scale int) {
 	c.PreShift = bits32(uint32(max(0, places-spare)))
 	c.BaseShift = bits32(uint32(max(0, spare-places)))
 	c.WholeShift = bits32(uint32(places))
-	c.QuantumStep = bits32(uint32(g.Fraction) << 23)
+	c.Quantum = single.power(1, -g.Fraction)
 }

@@ -16,6 +16,7 @@ const (
 	throughFree
 	productThrough
 	odd
+	oddRounded
 	stochastic
 	stochasticFused
 	stochasticCare
@@ -52,6 +53,7 @@ type Set struct {
 	Name   string
 	single family[float32]
 	double family[float64]
+	loops  loops
 }
 
 // of returns the shapes of a mode for panels of the given width.

@@ -11,8 +11,10 @@ type Multiplier struct {
 	a      Arithmetic
 	set    *Set
 	main   *plans
-	bias   *plan // adds the bias in Outer
+	bias   *plan // adds the bias in Outer, nil where no plan serves
+	biases *plans
 	outer  func(total, chunk []float32, c *Constants)
+	loops  loops // the set's, and their scratch
 	outerC Constants
 	one    side[float32]
 	two    side[float64]
@@ -45,37 +47,39 @@ func NewWith(set *Set, a Arithmetic) *Multiplier {
 	if !a.Sum.supported() || !a.Outer.supported() || a.Product == RoundedProduct && !a.Grid.supported() {
 		return nil
 	}
-	m := &Multiplier{a: a, set: set, one: newSide(&set.single), two: newSide(&set.double)}
+	m := &Multiplier{a: a, set: set, loops: set.loops, one: newSide(&set.single), two: newSide(&set.double)}
 	m.main = newPlans(&m.a, a.Sum)
 	if a.Chunk > 0 && !m.setOuter() {
 		return nil
 	}
-	m.bias = biasPlan(a)
-	if m.bias == nil || m.bias.double && !m.alwaysWide() {
+	m.biases = newPlans(&Arithmetic{Product: ExactProduct, Sum: a.Outer, Outer: a.Outer}, a.Outer)
+	if a.Outer.Kind == StochasticSum && (a.Chunk > 0 || a.Outer.Through != a.Sum.Through || a.Sum.Kind != StochasticSum) {
 		return nil
 	}
 	return m
 }
 
-// alwaysWide tells whether every panel is formed in binary64 lanes.
-func (m *Multiplier) alwaysWide() bool { return m.a.Sum.Kind == StochasticSum && !m.a.Sum.Through }
-
 // biasPlan adds a bias, an exact product with one, to sums that may be of another
-// grid: by plans whose conditions any operands fulfil.
-func biasPlan(a Arithmetic) *plan {
-	exact := &Arithmetic{Product: ExactProduct, Sum: a.Outer, Outer: a.Outer}
-	p := newPlans(exact, a.Outer)
+// grid: by plans whose conditions any operands fulfil, but for stochastic rounding
+// through binary32 to a grid with the exponents of binary32, where the bias must be
+// a multiple of the grid's least value as the sum is.
+func (p *plans) biasPlan(bias Span) *plan {
+	s := p.sum
 	switch {
-	case a.Outer.Kind == NativeSum:
+	case s.Kind == NativeSum:
 		return p.native
-	case a.Outer.Kind == NearestSum && a.Outer.Through:
+	case s.Kind == NearestSum && s.Through:
 		return p.care
-	case a.Outer.Kind == NearestSum:
+	case s.Kind == NearestSum:
 		return p.odd
-	case a.Outer.Through:
+	case !s.Through:
+		return p.wide
+	case (&block{a: bias, grain: s.Grid.quantum()}).fixes(s.Grid):
 		return p.randomCare
+	case bias.Low >= s.Grid.quantum():
+		return p.random // nil where there is none
 	}
-	return p.wide
+	return nil
 }
 
 // setOuter chooses the addition of finished chunks; false where there is none. Two
@@ -85,7 +89,7 @@ func (m *Multiplier) setOuter() bool {
 	o, s := m.a.Outer, m.a.Sum
 	switch o.Kind {
 	case NativeSum:
-		m.outer = addNative
+		m.outer = m.loops.added
 		return true
 	case NearestSum:
 		g := o.Grid
@@ -94,28 +98,10 @@ func (m *Multiplier) setOuter() bool {
 		}
 		m.outerC = single.masks()
 		m.outerC.nearest(single, g, single.nearestScale(g))
-		m.outer = addNearest
+		m.outer = m.loops.addedNearest
 		return true
 	}
 	return false
-}
-
-// addNative is total = binary32(total + chunk).
-func addNative(total, chunk []float32, _ *Constants) {
-	chunk = chunk[:len(total)]
-	for i, v := range chunk {
-		total[i] += v
-	}
-}
-
-// addNearest is total = R(total + chunk), R nearest-even.
-func addNearest(total, chunk []float32, c *Constants) {
-	least, grow, scale, unscale := c.SumLeast.single(), c.SumGrow.single(), c.Scale.single(), c.Unscale.single()
-	chunk = chunk[:len(total)]
-	for i, v := range chunk {
-		x := float32(total[i]*scale) + float32(v*scale)
-		total[i] = float32(near32(x, least, grow) * unscale)
-	}
 }
 
 // Mul forms the product. Rows i0 <= i < i1 of columns j0 <= j < j1 that the kernels
@@ -130,6 +116,10 @@ func (m *Multiplier) Mul(p *Product[float32], redo func(i0, i1, j0, j1 int)) {
 		return
 	}
 	m.begin(p, redo)
+	if p.Bias != nil && m.bias == nil {
+		redo(0, p.I, 0, p.J)
+		return
+	}
 	for j := 0; j < p.J; {
 		j += m.formPanel(j)
 	}
@@ -146,7 +136,7 @@ func (m *Multiplier) release() {
 // begin prepares what all panels share.
 func (m *Multiplier) begin(p *Product[float32], redo func(i0, i1, j0, j1 int)) {
 	m.p, m.redo = p, redo
-	m.spanA = measureRows(p)
+	m.spanA = m.measureRows()
 	m.one.begin()
 	m.two.begin()
 	pairs := pairsOf(p.I)
@@ -154,10 +144,12 @@ func (m *Multiplier) begin(p *Product[float32], redo func(i0, i1, j0, j1 int)) {
 	m.rowWords, m.biasRow = m.rowWords[:0], m.biasRow[:0]
 	if m.a.Sum.Kind == StochasticSum {
 		m.rowWords = grown(m.rowWords, 2*pairs*p.K)
-		fillRows(m.rowWords, p.Sums.Row, p.I, 0, p.K)
+		m.loops.rowWords(m.rowWords, p.Sums.Row, p.I, p.K)
 	}
 	if p.Bias != nil {
-		m.packBias(pairs)
+		if m.bias = m.biases.biasPlan(m.loops.spanOf(p.Bias[:p.I])); m.bias != nil {
+			m.packBias(pairs)
+		}
 	}
 }
 
@@ -170,9 +162,9 @@ func (m *Multiplier) packBias(pairs int) {
 	}
 	if m.bias.double {
 		m.biasA64 = grown(m.biasA64, 2*pairs)
-		packRows(m.biasA64, p.Bias, 1, 1, p.I, 1, m.bias.scale)
+		packRows(&m.loops, m.biasA64, p.Bias, 1, 1, p.I, 1, m.bias.scale)
 		return
 	}
 	m.biasA = grown(m.biasA, 2*pairs)
-	packRows(m.biasA, p.Bias, 1, 1, p.I, 1, m.bias.scale)
+	packRows(&m.loops, m.biasA, p.Bias, 1, 1, p.I, 1, m.bias.scale)
 }

@@ -8,57 +8,62 @@ func pairsOf(n int) int { return (n + 1) / 2 }
 
 // packRows writes the rows x terms matrix a times 2^scale by pairs of rows:
 // dst[(i/2*terms + k)*2 + i%2].
-func packRows[L, T lanes](dst []L, a []T, row, col, rows, terms, scale int) {
+func packRows[L, T lanes](l *loops, dst []L, a []T, row, col, rows, terms, scale int) {
 	factor := L(math.Ldexp(1, scale))
 	for i := 0; i < rows; i += 2 {
 		to := dst[i*terms:][:2*terms]
-		first := a[i*row:]
-		if i+1 == rows {
-			for k := range terms {
-				to[2*k], to[2*k+1] = L(first[k*col])*factor, 0
-			}
+		first, second := a[i*row:], a[i*row:]
+		last := i+1 == rows
+		if !last {
+			second = a[(i+1)*row:]
+		}
+		if to32, ok := any(to).([]float32); ok && col == 1 && !last {
+			l.interleaved(to32, any(first[:terms]).([]float32), any(second[:terms]).([]float32), float32(factor))
 			continue
 		}
-		second := a[(i+1)*row:]
 		for k := range terms {
 			to[2*k], to[2*k+1] = L(first[k*col])*factor, L(second[k*col])*factor
+		}
+		if last {
+			for k := range terms {
+				to[2*k+1] = 0
+			}
 		}
 	}
 }
 
-// measureRows returns the span of A, and whether all of A is finite.
-func measureRows(p *Product[float32]) Span {
+// measureRows returns the span of the finite values of A.
+func (m *Multiplier) measureRows() Span {
+	p := m.p
 	e := noExtent
-	for i := range p.I {
-		row := p.A[i*p.ARow:]
-		if p.ACol == 1 {
-			e.merge(measure(row[:p.K]))
+	rows, terms, row, col := p.I, p.K, p.ARow, p.ACol
+	if p.ARow == 1 {
+		rows, terms, row, col = p.K, p.I, p.ACol, 1
+	}
+	for i := range rows {
+		x := p.A[i*row:]
+		if col == 1 {
+			e.merge(m.loops.extentOf(x[:terms]))
 			continue
 		}
-		for k := range p.K {
-			e.add(math.Float32bits(row[k*p.ACol]))
+		for k := range terms {
+			e.add(math.Float32bits(x[k*col]))
 		}
 	}
 	if e.greatest >= exponentMask32 {
-		e = finiteExtent(p)
+		e = noExtent
+		for i := range p.I {
+			for k := range p.K {
+				addFinite(&e, p.A[i*p.ARow+k*p.ACol])
+			}
+		}
 	}
 	return e.span()
 }
 
-// finiteExtent is the extent of the finite values of A.
-func finiteExtent(p *Product[float32]) extent {
-	e := noExtent
-	for i := range p.I {
-		for k := range p.K {
-			addFinite(&e, p.A[i*p.ARow+k*p.ACol])
-		}
-	}
-	return e
-}
-
-// measurePanel returns the span of the finite values of packed columns.
-func measurePanel(x []float32) Span {
-	e := measure(x)
+// spanOf returns the span of the finite values of x.
+func (l *loops) spanOf(x []float32) Span {
+	e := l.extentOf(x)
 	if e.greatest >= exponentMask32 {
 		e = noExtent
 		for _, v := range x {
@@ -71,22 +76,5 @@ func measurePanel(x []float32) Span {
 func addFinite(e *extent, v float32) {
 	if c := math.Float32bits(v); c&exponentMask32 != exponentMask32 {
 		e.add(c)
-	}
-}
-
-// measure returns the extent of all of x.
-func measure(x []float32) extent {
-	e := noExtent
-	for _, v := range x {
-		e.add(math.Float32bits(v))
-	}
-	return e
-}
-
-// widen converts binary32 numbers to binary64.
-func widen(dst []float64, src []float32) {
-	dst = dst[:len(src)]
-	for i, v := range src {
-		dst[i] = float64(v)
 	}
 }

@@ -136,13 +136,13 @@ func (n *panel) packBlock(k, terms int) *plan {
 	if n.only != nil {
 		b.b = *n.only
 	} else {
-		b.b = measurePanel(n.raw)
+		b.b = n.loops.spanOf(n.raw)
 	}
 	n.grain = b.sumLow()
 	plan := n.main.choose(&b)
 	if n.a.Sum.Kind == StochasticSum && plan != nil {
-		n.columnWords = grown(n.columnWords, terms*n.width)
-		fillColumns(n.columnWords, n.p.Sums.Column, n.width, k, terms, n.p.FirstJ+uint32(n.j0))
+		n.columnWords = grown(n.columnWords, (terms+3)/4*4*n.width+philoxSlack)
+		n.loops.columnWords(n.columnWords, n.p.Sums.Column, n.width, k, terms, n.p.FirstJ+uint32(n.j0))
 	}
 	return plan
 }
@@ -154,7 +154,7 @@ func (n *panel) measureAll() Span {
 		terms := min(blockTerms, n.p.K-k)
 		n.raw = grown(n.raw, terms*n.width)
 		n.p.B.Pack(n.raw, n.width, k, k+terms, n.j0, n.j0+n.columns)
-		s := measurePanel(n.raw)
+		s := n.loops.spanOf(n.raw)
 		all = Span{max(all.Bits, s.Bits), max(all.Top, s.Top), min(all.Low, s.Low)}
 	}
 	return all
@@ -175,7 +175,7 @@ func (n *panel) runSingle(plan *plan, k, terms int, first, last bool) {
 	w := &s.work
 	*w = work[float32]{
 		mode: plan.mode, c: &plan.c, width: n.width, terms: terms,
-		a: pack(s, p, plan.scale)[2*k:], aStride: 2 * p.K, b: n.raw,
+		a: pack(s, &n.loops, p, plan.scale)[2*k:], aStride: 2 * p.K, b: n.raw,
 		in: n.sums32(), inRow: n.row, out: n.sums32(), outRow: n.row,
 	}
 	n.words(&w.r, &w.v, k)
@@ -200,12 +200,12 @@ func (n *panel) runSingle(plan *plan, k, terms int, first, last bool) {
 func (n *panel) runWide(plan *plan, k, terms int, first, last bool) {
 	p, s := n.p, &n.two
 	s.panel = grown(s.panel, terms*n.width)
-	widen(s.panel, n.raw)
+	n.loops.widened(s.panel, n.raw)
 	s.sums = grown(s.sums, 2*pairsOf(p.I)*n.width)
 	w := &s.work
 	*w = work[float64]{
 		mode: plan.mode, c: &plan.c, width: n.width, terms: terms,
-		a: pack(s, p, plan.scale)[2*k:], aStride: 2 * p.K, b: s.panel,
+		a: pack(s, &n.loops, p, plan.scale)[2*k:], aStride: 2 * p.K, b: s.panel,
 		in: s.sums, inRow: n.width, out: s.sums, outRow: n.width,
 	}
 	n.words(&w.r, &w.v, k)

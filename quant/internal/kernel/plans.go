@@ -63,7 +63,9 @@ func (p *plans) planNearest(a *Arithmetic) {
 		n.scale = single.nearestScale(a.Grid)
 		n.c.product(single, a.Grid, n.scale, scale)
 		switch {
-		case a.Grid.quantum() < g.quantum() || a.Grid.Fraction > g.Fraction:
+		case !p.sum.Through && a.Grid.Fraction > g.Fraction:
+			n.mode = oddRounded
+		case a.Grid.quantum() < g.quantum():
 			n.mode = bothCare
 		case n.scale == scale:
 			n.mode = both
@@ -87,37 +89,31 @@ func (p *plans) planStochastic(a *Arithmetic) {
 	spare := single.fraction - s.Grid.Fraction
 	productFree := a.Product != RoundedProduct || a.Grid.quantum() >= s.Grid.quantum()
 	carries := spare <= 16 && (!s.Centred || s.Bits >= spare)
-	fixes := s.Grid.quantum()+scale >= -126
 	switch {
 	case !s.Through:
 		p.planWide(a, productFree)
 	case a.Product == RoundedProduct:
-		p.planStochasticProduct(a, scale, carries && productFree, fixes)
+		p.planStochasticProduct(a, scale, carries && productFree)
 	default:
 		if carries {
 			p.random = &plan{mode: stochasticFused, scale: scale, c: single.masks()}
 			p.random.c.carry(single, s, scale)
 		}
-		if fixes {
-			p.randomCare = &plan{mode: stochasticCare, scale: scale, c: single.masks()}
-			p.randomCare.c.fixed(s, scale)
-		}
+		p.randomCare = &plan{mode: stochasticCare, scale: scale, c: single.masks()}
+		p.randomCare.c.fixed(s, scale)
 	}
 }
 
 // planStochasticProduct chooses between the carry, free of subnormals where no
 // product is finer than the sum's least value, and fixed point.
-func (p *plans) planStochasticProduct(a *Arithmetic, sumScale int, carries, fixes bool) {
+func (p *plans) planStochasticProduct(a *Arithmetic, sumScale int, carries bool) {
 	n := &plan{scale: single.nearestScale(a.Grid), c: single.masks()}
-	switch {
-	case carries:
+	if carries {
 		n.mode = stochastic
 		n.c.carry(single, p.sum, sumScale)
-	case fixes:
+	} else {
 		n.mode = stochasticProductCare
 		n.c.fixed(p.sum, sumScale)
-	default:
-		return
 	}
 	n.c.product(single, a.Grid, n.scale, sumScale)
 	p.rounded = n

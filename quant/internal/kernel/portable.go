@@ -12,14 +12,16 @@ type term[L lanes] func(c *numbers[L], s, b []L, words []uint32, a L, word uint3
 
 // numbers are the constants as scalars.
 type numbers[L lanes] struct {
-	least, grow, rescale         L
-	sumLeast, sumGrow, sumSplit  L
-	keep, randomMask, randomHalf uint64
-	randomShift                  uint8
-	preShift, baseShift, whole   uint8
-	quantumStep                  uint32
-	limit                        L
-	greatest                     [maxWidth]L // where a mode watches magnitudes
+	least, grow, rescale, quantum L
+	sumLeast, sumGrow, sumSplit   L
+	keep, randomMask, randomHalf  uint64
+	randomShift                   uint8
+	preShift, baseShift, whole    uint8
+	limit                         L
+	greatest                      [maxWidth]L // where a mode watches magnitudes
+
+	sums    [maxRows * maxWidth]L
+	noWords [maxWidth]uint32
 }
 
 // maxWidth and maxRows bound a tile of any set.
@@ -41,7 +43,7 @@ var Portable = &Set{
 	single: family[float32]{width: portableWidth, narrow: portableNarrow, tiles: portableTiles([]term[float32]{
 		baseline: termBaseline[float32], fmaChain: termFmaChain, rounded: termRounded, both: termBoth,
 		bothScaled: termBothScaled, bothCare: termBothCare, through: termThrough, throughFree: termThroughFree,
-		productThrough: termProductThrough, odd: termOdd, stochastic: termStochastic,
+		productThrough: termProductThrough, odd: termOdd, oddRounded: termOddRounded, stochastic: termStochastic,
 		stochasticFused: termStochasticFused, stochasticCare: termStochasticCare,
 		stochasticProductCare: termStochasticProductCare,
 	})},
@@ -63,21 +65,21 @@ func portableTiles[L lanes](terms []term[L]) [][2][]shape[L] {
 
 // sweep is the loop that every kernel stands for, see Tile.
 func sweep[L lanes](t *Tile[L], f term[L]) {
-	c := scalars[L](t.C)
+	c := t.numbers
+	c.read(t.C)
 	scale, unscale := laneValue[L](&t.C.Scale), laneValue[L](&t.C.Unscale)
-	var sums [maxRows * maxWidth]L
-	var noWords [maxWidth]uint32
 	w := t.Width
+	sums := c.sums[:t.Rows*w]
 	for g := range t.Groups {
 		clear(c.greatest[:])
 		for r := range t.Rows {
 			in := t.In[(g*t.Rows+r)*t.InRow:][:w]
 			for j, v := range in {
-				sums[r*w+j] = v * scale
+				sums[r*w+j] = L(v * scale)
 			}
 		}
 		for k := range t.K {
-			b, words := t.B[k*w:][:w], noWords[:w]
+			b, words := t.B[k*w:][:w], c.noWords[:w]
 			if t.V != nil {
 				words = t.V[k*w:][:w]
 			}
@@ -87,10 +89,10 @@ func sweep[L lanes](t *Tile[L], f term[L]) {
 				if t.R != nil {
 					word = t.R[at]
 				}
-				f(&c, sums[r*w:][:w], b, words, t.A[at], word)
+				f(c, sums[r*w:][:w], b, words, t.A[at], word)
 			}
 		}
-		t.Flags[g] = storeGroup(t, &c, sums[:t.Rows*w], g, unscale)
+		t.Flags[g] = storeGroup(t, c, sums, g, unscale)
 	}
 }
 
@@ -134,12 +136,13 @@ func laneBits[L lanes](v *vector) uint64 {
 	return v.bits64()
 }
 
-func scalars[L lanes](c *Constants) numbers[L] {
-	return numbers[L]{
+// read takes the values of the constants.
+func (n *numbers[L]) read(c *Constants) {
+	*n = numbers[L]{
 		least: laneValue[L](&c.Least), grow: laneValue[L](&c.Grow), rescale: laneValue[L](&c.Rescale),
 		sumLeast: laneValue[L](&c.SumLeast), sumGrow: laneValue[L](&c.SumGrow), sumSplit: laneValue[L](&c.SumSplit),
 		keep: laneBits[L](&c.Keep), randomMask: laneBits[L](&c.RandomMask), randomHalf: laneBits[L](&c.RandomHalf),
 		randomShift: uint8(c.RandomShift[0]), preShift: uint8(c.PreShift[0]), baseShift: uint8(c.BaseShift[0]),
-		whole: uint8(c.WholeShift[0]), quantumStep: c.QuantumStep[0], limit: laneValue[L](&c.Limit),
+		whole: uint8(c.WholeShift[0]), quantum: laneValue[L](&c.Quantum), limit: laneValue[L](&c.Limit),
 	}
 }

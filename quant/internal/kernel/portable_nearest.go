@@ -55,6 +55,13 @@ func oddNeighbour64(x, rest float64) float64 {
 	return math.Float64frombits(b + even - 2*(even&opposite))
 }
 
+// plusScaled is s + p scale rounded once to binary32, scale a power of two: p scale
+// may lie beyond binary32, and binary64 is wide enough for its second rounding to
+// change nothing.
+func plusScaled(s, p, scale float32) float32 {
+	return float32(float64(s) + float64(float64(p)*float64(scale)))
+}
+
 // plusOdd32 is s + p rounded to odd in binary32.
 func plusOdd32(s, p float32) float32 {
 	x := s + p
@@ -109,7 +116,7 @@ func termBothScaled(c *numbers[float32], s, b []float32, _ []uint32, a float32, 
 	least, grow, split, rescale := c.least, c.grow, c.sumSplit, c.rescale
 	for j, v := range b {
 		p := near32(float32(a*v), least, grow)
-		s[j] = split32(s[j]+float32(p*rescale), split)
+		s[j] = split32(plusScaled(s[j], p, rescale), split)
 	}
 }
 
@@ -117,7 +124,7 @@ func termBothScaled(c *numbers[float32], s, b []float32, _ []uint32, a float32, 
 func termBothCare(c *numbers[float32], s, b []float32, _ []uint32, a float32, _ uint32) {
 	for j, v := range b {
 		p := near32(float32(a*v), c.least, c.grow)
-		s[j] = near32(s[j]+float32(p*c.rescale), c.sumLeast, c.sumGrow)
+		s[j] = near32(plusScaled(s[j], p, c.rescale), c.sumLeast, c.sumGrow)
 	}
 }
 
@@ -149,6 +156,14 @@ func termProductThrough(c *numbers[float32], s, b []float32, _ []uint32, a float
 func termOdd(c *numbers[float32], s, b []float32, _ []uint32, a float32, _ uint32) {
 	for j, v := range b {
 		s[j] = near32(plusOdd32(s[j], float32(a*v)), c.sumLeast, c.sumGrow)
+	}
+}
+
+// termOddRounded: s = S(s + R(a b)), one rounding of the sum.
+func termOddRounded(c *numbers[float32], s, b []float32, _ []uint32, a float32, _ uint32) {
+	for j, v := range b {
+		p := float32(near32(float32(a*v), c.least, c.grow) * c.rescale)
+		s[j] = near32(plusOdd32(s[j], p), c.sumLeast, c.sumGrow)
 	}
 }
 

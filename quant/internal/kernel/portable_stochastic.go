@@ -20,9 +20,9 @@ func fixed32(c *numbers[float32], x float32, u uint32) float32 {
 	e := n & exponentMask32
 	scale := max(e, math.Float32bits(c.sumLeast))
 	shift := (scale-e)>>23 + uint32(c.baseShift)
-	w := (n&fractionMask32 | 1<<23) << c.preShift >> shift
+	w := (n&fractionMask32 | min(e, 1<<23)) << c.preShift >> shift
 	w += u<<16>>c.randomShift | uint32(c.randomHalf)
-	size := float32(w>>c.whole) * math.Float32frombits(scale-c.quantumStep)
+	size := float32(float32(w>>c.whole)*c.quantum) * math.Float32frombits(scale)
 	return math.Float32frombits(math.Float32bits(size) | n&signBit32)
 }
 
@@ -46,7 +46,7 @@ func termStochastic(c *numbers[float32], s, b []float32, words []uint32, a float
 	words = words[:len(b)]
 	for j, v := range b {
 		p := near32(float32(a*v), c.least, c.grow)
-		s[j] = carry32(c, s[j]+float32(p*c.rescale), mix(word, words[j]))
+		s[j] = carry32(c, plusScaled(s[j], p, c.rescale), mix(word, words[j]))
 	}
 }
 
@@ -71,7 +71,7 @@ func termStochasticProductCare(c *numbers[float32], s, b []float32, words []uint
 	words = words[:len(b)]
 	for j, v := range b {
 		p := near32(float32(a*v), c.least, c.grow)
-		s[j] = fixed32(c, s[j]+float32(p*c.rescale), mix(word, words[j]))
+		s[j] = fixed32(c, plusScaled(s[j], p, c.rescale), mix(word, words[j]))
 	}
 }
 

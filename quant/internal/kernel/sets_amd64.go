@@ -10,13 +10,24 @@ var (
 		Name:   "avx2",
 		single: family[float32]{width: widthAVX232, narrow: narrowAVX232, tiles: tilesAVX232},
 		double: family[float64]{width: widthAVX264, narrow: narrowAVX264, tiles: tilesAVX264},
+		loops: loops{
+			measure: measureAVX2, widen: widenAVX2, interleave: interleaveAVX2,
+			addNative: addNativeAVX2, addNearest: addNearestAVX2, philox: philoxAVX2,
+		},
 	}
 	AVX512 = &Set{
 		Name:   "avx512",
 		single: family[float32]{width: widthAVX51232, narrow: narrowAVX51232, tiles: tilesAVX51232},
 		double: family[float64]{width: widthAVX51264, narrow: narrowAVX51264, tiles: tilesAVX51264},
+		loops: loops{
+			measure: measureAVX512, widen: widenAVX512, interleave: interleaveAVX512,
+			addNative: addNativeAVX512, addNearest: addNearestAVX512, philox: philoxAVX512,
+		},
 	}
 )
+
+// assembly tells that this build has kernels in assembly.
+const assembly = true
 
 // supported returns the sets that the processor can run, the fastest first.
 func supported() []*Set {

@@ -12,6 +12,8 @@ type side[L lanes] struct {
 	tile   *Tile[L]
 	flags  []uint8
 	work   work[L]
+
+	numbers numbers[L]
 }
 
 // packed is A times 2^scale by pairs of rows.
@@ -38,7 +40,7 @@ func (s *side[L]) begin() {
 }
 
 // pack returns A at a scale.
-func pack[L, T lanes](s *side[L], p *Product[T], scale int) []L {
+func pack[L, T lanes](s *side[L], l *loops, p *Product[T], scale int) []L {
 	var at *packed[L]
 	for i := range s.packs {
 		if s.packs[i].scale == scale {
@@ -51,7 +53,7 @@ func pack[L, T lanes](s *side[L], p *Product[T], scale int) []L {
 	}
 	if !at.ready {
 		at.a = grown(at.a, 2*pairsOf(p.I)*p.K)
-		packRows(at.a, p.A, p.ARow, p.ACol, p.I, p.K, scale)
+		packRows(l, at.a, p.A, p.ARow, p.ACol, p.I, p.K, scale)
 		at.ready = true
 	}
 	return at.a
@@ -81,7 +83,7 @@ func (s *side[L]) sweep(bad []bool) {
 	t, w := s.tile, &s.work
 	*t = Tile[L]{
 		K: w.terms, AStride: w.aStride, B: w.b, V: w.v, InRow: w.inRow, OutRow: w.outRow,
-		FinalRow: w.finalRow, C: w.c, Width: w.width,
+		FinalRow: w.finalRow, C: w.c, Width: w.width, numbers: &s.numbers,
 	}
 	pair := w.first
 	for _, shape := range s.family.of(w.mode, w.width) {

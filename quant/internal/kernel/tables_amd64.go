@@ -43,9 +43,19 @@ const (
 	_ = uint(unsafe.Offsetof(Constants{}.PreShift)-1088) + uint(1088-unsafe.Offsetof(Constants{}.PreShift))
 	_ = uint(unsafe.Offsetof(Constants{}.BaseShift)-1152) + uint(1152-unsafe.Offsetof(Constants{}.BaseShift))
 	_ = uint(unsafe.Offsetof(Constants{}.WholeShift)-1216) + uint(1216-unsafe.Offsetof(Constants{}.WholeShift))
-	_ = uint(unsafe.Offsetof(Constants{}.QuantumStep)-1280) + uint(1280-unsafe.Offsetof(Constants{}.QuantumStep))
+	_ = uint(unsafe.Offsetof(Constants{}.Quantum)-1280) + uint(1280-unsafe.Offsetof(Constants{}.Quantum))
 	_ = uint(unsafe.Offsetof(Constants{}.Limit)-1344) + uint(1344-unsafe.Offsetof(Constants{}.Limit))
 	_ = uint(unsafe.Offsetof(Constants{}.Ones)-1408) + uint(1408-unsafe.Offsetof(Constants{}.Ones))
+	_ = uint(unsafe.Offsetof(philoxArgs{}.Dst)-0) + uint(0-unsafe.Offsetof(philoxArgs{}.Dst))
+	_ = uint(unsafe.Offsetof(philoxArgs{}.Blocks)-24) + uint(24-unsafe.Offsetof(philoxArgs{}.Blocks))
+	_ = uint(unsafe.Offsetof(philoxArgs{}.Width)-32) + uint(32-unsafe.Offsetof(philoxArgs{}.Width))
+	_ = uint(unsafe.Offsetof(philoxArgs{}.Lane)-40) + uint(40-unsafe.Offsetof(philoxArgs{}.Lane))
+	_ = uint(unsafe.Offsetof(philoxArgs{}.First)-48) + uint(48-unsafe.Offsetof(philoxArgs{}.First))
+	_ = uint(unsafe.Offsetof(philoxArgs{}.Step)-56) + uint(56-unsafe.Offsetof(philoxArgs{}.Step))
+	_ = uint(unsafe.Offsetof(philoxArgs{}.Site)-64) + uint(64-unsafe.Offsetof(philoxArgs{}.Site))
+	_ = uint(unsafe.Offsetof(philoxArgs{}.Phase)-72) + uint(72-unsafe.Offsetof(philoxArgs{}.Phase))
+	_ = uint(unsafe.Offsetof(philoxArgs{}.Key0)-80) + uint(80-unsafe.Offsetof(philoxArgs{}.Key0))
+	_ = uint(unsafe.Offsetof(philoxArgs{}.Key1)-88) + uint(88-unsafe.Offsetof(philoxArgs{}.Key1))
 )
 
 // The kernels of each set, by mode: wide panels, narrow panels.
@@ -75,6 +85,7 @@ func init() {
 	tilesAVX232[throughFree] = [2][]shape[float32]{{{4, throughFreeAVX2R4V3}, {2, throughFreeAVX2R2V3}}, {{8, throughFreeAVX2R8V1}, {2, throughFreeAVX2R2V1}}}
 	tilesAVX232[productThrough] = [2][]shape[float32]{{{4, productThroughAVX2R4V3}, {2, productThroughAVX2R2V3}}, {{8, productThroughAVX2R8V1}, {2, productThroughAVX2R2V1}}}
 	tilesAVX232[odd] = [2][]shape[float32]{{{2, oddAVX2R2V3}}, {{8, oddAVX2R8V1}, {2, oddAVX2R2V1}}}
+	tilesAVX232[oddRounded] = [2][]shape[float32]{{{2, oddRoundedAVX2R2V3}}, {{8, oddRoundedAVX2R8V1}, {2, oddRoundedAVX2R2V1}}}
 	tilesAVX232[stochastic] = [2][]shape[float32]{{{2, stochasticAVX2R2V3}}, {{8, stochasticAVX2R8V1}, {2, stochasticAVX2R2V1}}}
 	tilesAVX232[stochasticFused] = [2][]shape[float32]{{{2, stochasticFusedAVX2R2V3}}, {{8, stochasticFusedAVX2R8V1}, {2, stochasticFusedAVX2R2V1}}}
 	tilesAVX232[stochasticCare] = [2][]shape[float32]{{{2, stochasticCareAVX2R2V3}}, {{8, stochasticCareAVX2R8V1}, {2, stochasticCareAVX2R2V1}}}
@@ -95,6 +106,7 @@ func init() {
 	tilesAVX51232[throughFree] = [2][]shape[float32]{{{8, throughFreeAVX512R8V2}, {4, throughFreeAVX512R4V2}, {2, throughFreeAVX512R2V2}}, {{8, throughFreeAVX512R8V1}, {2, throughFreeAVX512R2V1}}}
 	tilesAVX51232[productThrough] = [2][]shape[float32]{{{8, productThroughAVX512R8V2}, {4, productThroughAVX512R4V2}, {2, productThroughAVX512R2V2}}, {{8, productThroughAVX512R8V1}, {2, productThroughAVX512R2V1}}}
 	tilesAVX51232[odd] = [2][]shape[float32]{{{8, oddAVX512R8V2}, {4, oddAVX512R4V2}, {2, oddAVX512R2V2}}, {{8, oddAVX512R8V1}, {2, oddAVX512R2V1}}}
+	tilesAVX51232[oddRounded] = [2][]shape[float32]{{{4, oddRoundedAVX512R4V2}, {2, oddRoundedAVX512R2V2}}, {{8, oddRoundedAVX512R8V1}, {2, oddRoundedAVX512R2V1}}}
 	tilesAVX51232[stochastic] = [2][]shape[float32]{{{4, stochasticAVX512R4V2}, {2, stochasticAVX512R2V2}}, {{8, stochasticAVX512R8V1}, {2, stochasticAVX512R2V1}}}
 	tilesAVX51232[stochasticFused] = [2][]shape[float32]{{{8, stochasticFusedAVX512R8V2}, {4, stochasticFusedAVX512R4V2}, {2, stochasticFusedAVX512R2V2}}, {{8, stochasticFusedAVX512R8V1}, {2, stochasticFusedAVX512R2V1}}}
 	tilesAVX51232[stochasticCare] = [2][]shape[float32]{{{4, stochasticCareAVX512R4V2}, {2, stochasticCareAVX512R2V2}}, {{8, stochasticCareAVX512R8V1}, {2, stochasticCareAVX512R2V1}}}

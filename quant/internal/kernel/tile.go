@@ -33,6 +33,7 @@ type Tile[L lanes] struct {
 	C        *Constants
 	Rows     int // the kernel's rows and width; the portable loops read them
 	Width    int
+	numbers  *numbers[L] // scratch of the portable loops
 }
 
 // vector is one value in every lane of a 512-bit register: the assembly uses it
@@ -77,11 +78,11 @@ type Constants struct {
 	RandomShift   vector // a shift that puts them below the last place
 	RandomHalf    vector // the half of centred thresholds
 	Fraction      vector // the fraction field
-	Implicit      vector // the bit above it
+	Implicit      vector // the bit above it, of numbers other than zero
 	PreShift      vector // significand to fixed point: up by this,
 	BaseShift     vector // then down by this and the distance below the least binade;
 	WholeShift    vector // fraction bits of the fixed point
-	QuantumStep   vector // m as a step of the exponent field
+	Quantum       vector // 2^-m
 	Limit         vector // sums of this magnitude are handed back
 	Ones          vector // 1, as an integer
 

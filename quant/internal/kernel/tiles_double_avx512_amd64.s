@@ -2150,103 +2150,103 @@ group:
 	VMOVUPD            (R9), Z18
 	VBROADCASTSD       (BX)(R11*8), Z16
 	VPBROADCASTD       (DI)(R11*4), Z17
-	VFMADD231PD.RZ_SAE Z18, Z16, Z7
 	VPMOVZXDQ          (DX), Z20
 	VPMADDWD           Z20, Z17, Z20
+	VFMADD231PD.RZ_SAE Z18, Z16, Z7
 	VANDPD             Z3, Z7, Z21
 	VMOVUPD            64(R9), Z19
-	VFMADD231PD.RZ_SAE Z19, Z16, Z8
+	VPMOVZXDQ          32(DX), Z22
 	VMAXPD             Z21, Z15, Z15
-	VPMOVZXDQ          32(DX), Z16
+	VPMADDWD           Z22, Z17, Z22
 	VCMPPD             $0x11, Z1, Z21, K1
-	VPMADDWD           Z16, Z17, Z16
+	VFMADD231PD.RZ_SAE Z19, Z16, Z8
 	VMOVAPD            Z7, Z21
-	VANDPD             Z3, Z8, Z17
-	VBROADCASTSD       8(BX)(R11*8), Z23
-	VPBROADCASTD       4(DI)(R11*4), Z29
-	VFMADD231PD.RZ_SAE Z18, Z23, Z9
+	VANDPD             Z3, Z8, Z23
+	VBROADCASTSD       8(BX)(R11*8), Z16
+	VPBROADCASTD       4(DI)(R11*4), Z17
+	VPMOVZXDQ          (DX), Z24
 	VPTERNLOGQ         $0xea, Z1, Z2, Z21
-	VMAXPD             Z17, Z15, Z15
-	VPMOVZXDQ          (DX), Z22
+	VMAXPD             Z23, Z15, Z15
+	VPMADDWD           Z24, Z17, Z24
 	VADDPD.RZ_SAE      Z21, Z7, K1, Z7
-	VCMPPD             $0x11, Z1, Z17, K2
-	VPMADDWD           Z22, Z29, Z22
+	VCMPPD             $0x11, Z1, Z23, K2
+	VFMADD231PD.RZ_SAE Z18, Z16, Z9
 	VPSLLVQ            Z0, Z20, Z20
-	VMOVAPD            Z8, Z17
-	VANDPD             Z3, Z9, Z24
-	VFMADD231PD.RZ_SAE Z19, Z23, Z10
+	VMOVAPD            Z8, Z23
+	VANDPD             Z3, Z9, Z25
+	VPMOVZXDQ          32(DX), Z26
 	VPANDQ             Z4, Z20, Z20
-	VPTERNLOGQ         $0xea, Z1, Z2, Z17
-	VMAXPD             Z24, Z15, Z15
-	VPMOVZXDQ          32(DX), Z25
+	VPTERNLOGQ         $0xea, Z1, Z2, Z23
+	VMAXPD             Z25, Z15, Z15
+	VPMADDWD           Z26, Z17, Z26
 	VPORQ              Z5, Z20, Z20
-	VADDPD.RZ_SAE      Z17, Z8, K2, Z8
-	VCMPPD             $0x11, Z1, Z24, K3
-	VPMADDWD           Z25, Z29, Z25
+	VADDPD.RZ_SAE      Z23, Z8, K2, Z8
+	VCMPPD             $0x11, Z1, Z25, K3
+	VFMADD231PD.RZ_SAE Z19, Z16, Z10
 	VPADDQ             Z20, Z7, Z7
-	VPSLLVQ            Z0, Z16, Z16
-	VMOVAPD            Z9, Z24
-	VANDPD             Z3, Z10, Z20
-	VBROADCASTSD       (SI)(R11*8), Z29
-	VPBROADCASTD       (R8)(R11*4), Z23
-	VFMADD231PD.RZ_SAE Z18, Z29, Z11
-	VPANDQ             Z6, Z7, Z7
-	VPANDQ             Z4, Z16, Z16
-	VPTERNLOGQ         $0xea, Z1, Z2, Z24
-	VMAXPD             Z20, Z15, Z15
-	VPMOVZXDQ          (DX), Z26
-	VSUBPD             Z21, Z7, K1, Z7
-	VPORQ              Z5, Z16, Z16
-	VADDPD.RZ_SAE      Z24, Z9, K3, Z9
-	VCMPPD             $0x11, Z1, Z20, K1
-	VPMADDWD           Z26, Z23, Z26
-	VPADDQ             Z16, Z8, Z8
 	VPSLLVQ            Z0, Z22, Z22
+	VMOVAPD            Z9, Z25
+	VANDPD             Z3, Z10, Z20
+	VBROADCASTSD       (SI)(R11*8), Z16
+	VPBROADCASTD       (R8)(R11*4), Z17
+	VPMOVZXDQ          (DX), Z27
+	VPANDQ             Z6, Z7, Z7
+	VPANDQ             Z4, Z22, Z22
+	VPTERNLOGQ         $0xea, Z1, Z2, Z25
+	VMAXPD             Z20, Z15, Z15
+	VPMADDWD           Z27, Z17, Z27
+	VSUBPD             Z21, Z7, K1, Z7
+	VPORQ              Z5, Z22, Z22
+	VADDPD.RZ_SAE      Z25, Z9, K3, Z9
+	VCMPPD             $0x11, Z1, Z20, K1
+	VFMADD231PD.RZ_SAE Z18, Z16, Z11
+	VPADDQ             Z22, Z8, Z8
+	VPSLLVQ            Z0, Z24, Z24
 	VMOVAPD            Z10, Z20
 	VANDPD             Z3, Z11, Z21
-	VFMADD231PD.RZ_SAE Z19, Z29, Z12
+	VPMOVZXDQ          32(DX), Z22
 	VPANDQ             Z6, Z8, Z8
-	VPANDQ             Z4, Z22, Z22
+	VPANDQ             Z4, Z24, Z24
 	VPTERNLOGQ         $0xea, Z1, Z2, Z20
 	VMAXPD             Z21, Z15, Z15
-	VPMOVZXDQ          32(DX), Z29
-	VSUBPD             Z17, Z8, K2, Z8
-	VPORQ              Z5, Z22, Z22
+	VPMADDWD           Z22, Z17, Z22
+	VSUBPD             Z23, Z8, K2, Z8
+	VPORQ              Z5, Z24, Z24
 	VADDPD.RZ_SAE      Z20, Z10, K1, Z10
 	VCMPPD             $0x11, Z1, Z21, K2
-	VPMADDWD           Z29, Z23, Z29
-	VPADDQ             Z22, Z9, Z9
-	VPSLLVQ            Z0, Z25, Z25
+	VFMADD231PD.RZ_SAE Z19, Z16, Z12
+	VPADDQ             Z24, Z9, Z9
+	VPSLLVQ            Z0, Z26, Z26
 	VMOVAPD            Z11, Z21
-	VANDPD             Z3, Z12, Z22
+	VANDPD             Z3, Z12, Z23
 	VBROADCASTSD       8(SI)(R11*8), Z16
 	VPBROADCASTD       4(R8)(R11*4), Z17
-	VFMADD231PD.RZ_SAE Z18, Z16, Z13
+	VPMOVZXDQ          (DX), Z24
 	VPANDQ             Z6, Z9, Z9
-	VPANDQ             Z4, Z25, Z25
-	VPTERNLOGQ         $0xea, Z1, Z2, Z21
-	VMAXPD             Z22, Z15, Z15
-	VPMOVZXDQ          (DX), Z23
-	VSUBPD             Z24, Z9, K3, Z9
-	VPORQ              Z5, Z25, Z25
-	VADDPD.RZ_SAE      Z21, Z11, K2, Z11
-	VCMPPD             $0x11, Z1, Z22, K3
-	VPMADDWD           Z23, Z17, Z23
-	VPADDQ             Z25, Z10, Z10
-	VPSLLVQ            Z0, Z26, Z26
-	VMOVAPD            Z12, Z22
-	VANDPD             Z3, Z13, Z24
-	VFMADD231PD.RZ_SAE Z19, Z16, Z14
-	VPANDQ             Z6, Z10, Z10
 	VPANDQ             Z4, Z26, Z26
-	VPTERNLOGQ         $0xea, Z1, Z2, Z22
-	VMAXPD             Z24, Z15, Z15
-	VPMOVZXDQ          32(DX), Z25
-	VSUBPD             Z20, Z10, K1, Z10
+	VPTERNLOGQ         $0xea, Z1, Z2, Z21
+	VMAXPD             Z23, Z15, Z15
+	VPMADDWD           Z24, Z17, Z24
+	VSUBPD             Z25, Z9, K3, Z9
 	VPORQ              Z5, Z26, Z26
-	VADDPD.RZ_SAE      Z22, Z12, K3, Z12
-	VCMPPD             $0x11, Z1, Z24, K4
-	VPMADDWD           Z25, Z17, Z25
+	VADDPD.RZ_SAE      Z21, Z11, K2, Z11
+	VCMPPD             $0x11, Z1, Z23, K3
+	VFMADD231PD.RZ_SAE Z18, Z16, Z13
+	VPADDQ             Z26, Z10, Z10
+	VPSLLVQ            Z0, Z27, Z27
+	VMOVAPD            Z12, Z23
+	VANDPD             Z3, Z13, Z25
+	VPMOVZXDQ          32(DX), Z26
+	VPANDQ             Z6, Z10, Z10
+	VPANDQ             Z4, Z27, Z27
+	VPTERNLOGQ         $0xea, Z1, Z2, Z23
+	VMAXPD             Z25, Z15, Z15
+	VPMADDWD           Z26, Z17, Z26
+	VSUBPD             Z20, Z10, K1, Z10
+	VPORQ              Z5, Z27, Z27
+	VADDPD.RZ_SAE      Z23, Z12, K3, Z12
+	VCMPPD             $0x11, Z1, Z25, K4
+	VFMADD231PD.RZ_SAE Z19, Z16, Z14
 	ADDQ               $0x00000080, R9
 	ADDQ               $0x00000040, DX
 	ADDQ               $0x02, R11
@@ -2254,136 +2254,136 @@ group:
 	JGE                last
 
 term:
-	VPADDQ             Z26, Z11, Z11
-	VPSLLVQ            Z0, Z29, Z29
-	VMOVAPD            Z13, Z24
-	VANDPD             Z3, Z14, Z26
+	VPADDQ             Z27, Z11, Z11
+	VPSLLVQ            Z0, Z22, Z22
+	VMOVAPD            Z13, Z25
+	VANDPD             Z3, Z14, Z27
 	VMOVUPD            (R9), Z18
 	VBROADCASTSD       (BX)(R11*8), Z16
 	VPBROADCASTD       (DI)(R11*4), Z17
-	VFMADD231PD.RZ_SAE Z18, Z16, Z7
-	VPANDQ             Z6, Z11, Z11
-	VPANDQ             Z4, Z29, Z29
-	VPTERNLOGQ         $0xea, Z1, Z2, Z24
-	VMAXPD             Z26, Z15, Z15
 	VPMOVZXDQ          (DX), Z20
-	VSUBPD             Z21, Z11, K2, Z11
-	VPORQ              Z5, Z29, Z29
-	VADDPD.RZ_SAE      Z24, Z13, K4, Z13
-	VCMPPD             $0x11, Z1, Z26, K5
+	VPANDQ             Z6, Z11, Z11
+	VPANDQ             Z4, Z22, Z22
+	VPTERNLOGQ         $0xea, Z1, Z2, Z25
+	VMAXPD             Z27, Z15, Z15
 	VPMADDWD           Z20, Z17, Z20
-	VPADDQ             Z29, Z12, Z12
-	VPSLLVQ            Z0, Z23, Z23
-	VMOVAPD            Z14, Z26
+	VSUBPD             Z21, Z11, K2, Z11
+	VPORQ              Z5, Z22, Z22
+	VADDPD.RZ_SAE      Z25, Z13, K4, Z13
+	VCMPPD             $0x11, Z1, Z27, K5
+	VFMADD231PD.RZ_SAE Z18, Z16, Z7
+	VPADDQ             Z22, Z12, Z12
+	VPSLLVQ            Z0, Z24, Z24
+	VMOVAPD            Z14, Z27
 	VANDPD             Z3, Z7, Z21
 	VMOVUPD            64(R9), Z19
-	VFMADD231PD.RZ_SAE Z19, Z16, Z8
+	VPMOVZXDQ          32(DX), Z22
 	VPANDQ             Z6, Z12, Z12
-	VPANDQ             Z4, Z23, Z23
-	VPTERNLOGQ         $0xea, Z1, Z2, Z26
+	VPANDQ             Z4, Z24, Z24
+	VPTERNLOGQ         $0xea, Z1, Z2, Z27
 	VMAXPD             Z21, Z15, Z15
-	VPMOVZXDQ          32(DX), Z16
-	VSUBPD             Z22, Z12, K3, Z12
-	VPORQ              Z5, Z23, Z23
-	VADDPD.RZ_SAE      Z26, Z14, K5, Z14
+	VPMADDWD           Z22, Z17, Z22
+	VSUBPD             Z23, Z12, K3, Z12
+	VPORQ              Z5, Z24, Z24
+	VADDPD.RZ_SAE      Z27, Z14, K5, Z14
 	VCMPPD             $0x11, Z1, Z21, K1
-	VPMADDWD           Z16, Z17, Z16
-	VPADDQ             Z23, Z13, Z13
-	VPSLLVQ            Z0, Z25, Z25
+	VFMADD231PD.RZ_SAE Z19, Z16, Z8
+	VPADDQ             Z24, Z13, Z13
+	VPSLLVQ            Z0, Z26, Z26
 	VMOVAPD            Z7, Z21
-	VANDPD             Z3, Z8, Z17
-	VBROADCASTSD       8(BX)(R11*8), Z23
-	VPBROADCASTD       4(DI)(R11*4), Z29
-	VFMADD231PD.RZ_SAE Z18, Z23, Z9
+	VANDPD             Z3, Z8, Z23
+	VBROADCASTSD       8(BX)(R11*8), Z16
+	VPBROADCASTD       4(DI)(R11*4), Z17
+	VPMOVZXDQ          (DX), Z24
 	VPANDQ             Z6, Z13, Z13
-	VPANDQ             Z4, Z25, Z25
+	VPANDQ             Z4, Z26, Z26
 	VPTERNLOGQ         $0xea, Z1, Z2, Z21
-	VMAXPD             Z17, Z15, Z15
-	VPMOVZXDQ          (DX), Z22
-	VSUBPD             Z24, Z13, K4, Z13
-	VPORQ              Z5, Z25, Z25
+	VMAXPD             Z23, Z15, Z15
+	VPMADDWD           Z24, Z17, Z24
+	VSUBPD             Z25, Z13, K4, Z13
+	VPORQ              Z5, Z26, Z26
 	VADDPD.RZ_SAE      Z21, Z7, K1, Z7
-	VCMPPD             $0x11, Z1, Z17, K2
-	VPMADDWD           Z22, Z29, Z22
-	VPADDQ             Z25, Z14, Z14
+	VCMPPD             $0x11, Z1, Z23, K2
+	VFMADD231PD.RZ_SAE Z18, Z16, Z9
+	VPADDQ             Z26, Z14, Z14
 	VPSLLVQ            Z0, Z20, Z20
-	VMOVAPD            Z8, Z17
-	VANDPD             Z3, Z9, Z24
-	VFMADD231PD.RZ_SAE Z19, Z23, Z10
+	VMOVAPD            Z8, Z23
+	VANDPD             Z3, Z9, Z25
+	VPMOVZXDQ          32(DX), Z26
 	VPANDQ             Z6, Z14, Z14
 	VPANDQ             Z4, Z20, Z20
-	VPTERNLOGQ         $0xea, Z1, Z2, Z17
-	VMAXPD             Z24, Z15, Z15
-	VPMOVZXDQ          32(DX), Z25
-	VSUBPD             Z26, Z14, K5, Z14
+	VPTERNLOGQ         $0xea, Z1, Z2, Z23
+	VMAXPD             Z25, Z15, Z15
+	VPMADDWD           Z26, Z17, Z26
+	VSUBPD             Z27, Z14, K5, Z14
 	VPORQ              Z5, Z20, Z20
-	VADDPD.RZ_SAE      Z17, Z8, K2, Z8
-	VCMPPD             $0x11, Z1, Z24, K3
-	VPMADDWD           Z25, Z29, Z25
+	VADDPD.RZ_SAE      Z23, Z8, K2, Z8
+	VCMPPD             $0x11, Z1, Z25, K3
+	VFMADD231PD.RZ_SAE Z19, Z16, Z10
 	VPADDQ             Z20, Z7, Z7
-	VPSLLVQ            Z0, Z16, Z16
-	VMOVAPD            Z9, Z24
-	VANDPD             Z3, Z10, Z20
-	VBROADCASTSD       (SI)(R11*8), Z29
-	VPBROADCASTD       (R8)(R11*4), Z23
-	VFMADD231PD.RZ_SAE Z18, Z29, Z11
-	VPANDQ             Z6, Z7, Z7
-	VPANDQ             Z4, Z16, Z16
-	VPTERNLOGQ         $0xea, Z1, Z2, Z24
-	VMAXPD             Z20, Z15, Z15
-	VPMOVZXDQ          (DX), Z26
-	VSUBPD             Z21, Z7, K1, Z7
-	VPORQ              Z5, Z16, Z16
-	VADDPD.RZ_SAE      Z24, Z9, K3, Z9
-	VCMPPD             $0x11, Z1, Z20, K1
-	VPMADDWD           Z26, Z23, Z26
-	VPADDQ             Z16, Z8, Z8
 	VPSLLVQ            Z0, Z22, Z22
+	VMOVAPD            Z9, Z25
+	VANDPD             Z3, Z10, Z20
+	VBROADCASTSD       (SI)(R11*8), Z16
+	VPBROADCASTD       (R8)(R11*4), Z17
+	VPMOVZXDQ          (DX), Z27
+	VPANDQ             Z6, Z7, Z7
+	VPANDQ             Z4, Z22, Z22
+	VPTERNLOGQ         $0xea, Z1, Z2, Z25
+	VMAXPD             Z20, Z15, Z15
+	VPMADDWD           Z27, Z17, Z27
+	VSUBPD             Z21, Z7, K1, Z7
+	VPORQ              Z5, Z22, Z22
+	VADDPD.RZ_SAE      Z25, Z9, K3, Z9
+	VCMPPD             $0x11, Z1, Z20, K1
+	VFMADD231PD.RZ_SAE Z18, Z16, Z11
+	VPADDQ             Z22, Z8, Z8
+	VPSLLVQ            Z0, Z24, Z24
 	VMOVAPD            Z10, Z20
 	VANDPD             Z3, Z11, Z21
-	VFMADD231PD.RZ_SAE Z19, Z29, Z12
+	VPMOVZXDQ          32(DX), Z22
 	VPANDQ             Z6, Z8, Z8
-	VPANDQ             Z4, Z22, Z22
+	VPANDQ             Z4, Z24, Z24
 	VPTERNLOGQ         $0xea, Z1, Z2, Z20
 	VMAXPD             Z21, Z15, Z15
-	VPMOVZXDQ          32(DX), Z29
-	VSUBPD             Z17, Z8, K2, Z8
-	VPORQ              Z5, Z22, Z22
+	VPMADDWD           Z22, Z17, Z22
+	VSUBPD             Z23, Z8, K2, Z8
+	VPORQ              Z5, Z24, Z24
 	VADDPD.RZ_SAE      Z20, Z10, K1, Z10
 	VCMPPD             $0x11, Z1, Z21, K2
-	VPMADDWD           Z29, Z23, Z29
-	VPADDQ             Z22, Z9, Z9
-	VPSLLVQ            Z0, Z25, Z25
+	VFMADD231PD.RZ_SAE Z19, Z16, Z12
+	VPADDQ             Z24, Z9, Z9
+	VPSLLVQ            Z0, Z26, Z26
 	VMOVAPD            Z11, Z21
-	VANDPD             Z3, Z12, Z22
+	VANDPD             Z3, Z12, Z23
 	VBROADCASTSD       8(SI)(R11*8), Z16
 	VPBROADCASTD       4(R8)(R11*4), Z17
-	VFMADD231PD.RZ_SAE Z18, Z16, Z13
+	VPMOVZXDQ          (DX), Z24
 	VPANDQ             Z6, Z9, Z9
-	VPANDQ             Z4, Z25, Z25
-	VPTERNLOGQ         $0xea, Z1, Z2, Z21
-	VMAXPD             Z22, Z15, Z15
-	VPMOVZXDQ          (DX), Z23
-	VSUBPD             Z24, Z9, K3, Z9
-	VPORQ              Z5, Z25, Z25
-	VADDPD.RZ_SAE      Z21, Z11, K2, Z11
-	VCMPPD             $0x11, Z1, Z22, K3
-	VPMADDWD           Z23, Z17, Z23
-	VPADDQ             Z25, Z10, Z10
-	VPSLLVQ            Z0, Z26, Z26
-	VMOVAPD            Z12, Z22
-	VANDPD             Z3, Z13, Z24
-	VFMADD231PD.RZ_SAE Z19, Z16, Z14
-	VPANDQ             Z6, Z10, Z10
 	VPANDQ             Z4, Z26, Z26
-	VPTERNLOGQ         $0xea, Z1, Z2, Z22
-	VMAXPD             Z24, Z15, Z15
-	VPMOVZXDQ          32(DX), Z25
-	VSUBPD             Z20, Z10, K1, Z10
+	VPTERNLOGQ         $0xea, Z1, Z2, Z21
+	VMAXPD             Z23, Z15, Z15
+	VPMADDWD           Z24, Z17, Z24
+	VSUBPD             Z25, Z9, K3, Z9
 	VPORQ              Z5, Z26, Z26
-	VADDPD.RZ_SAE      Z22, Z12, K3, Z12
-	VCMPPD             $0x11, Z1, Z24, K4
-	VPMADDWD           Z25, Z17, Z25
+	VADDPD.RZ_SAE      Z21, Z11, K2, Z11
+	VCMPPD             $0x11, Z1, Z23, K3
+	VFMADD231PD.RZ_SAE Z18, Z16, Z13
+	VPADDQ             Z26, Z10, Z10
+	VPSLLVQ            Z0, Z27, Z27
+	VMOVAPD            Z12, Z23
+	VANDPD             Z3, Z13, Z25
+	VPMOVZXDQ          32(DX), Z26
+	VPANDQ             Z6, Z10, Z10
+	VPANDQ             Z4, Z27, Z27
+	VPTERNLOGQ         $0xea, Z1, Z2, Z23
+	VMAXPD             Z25, Z15, Z15
+	VPMADDWD           Z26, Z17, Z26
+	VSUBPD             Z20, Z10, K1, Z10
+	VPORQ              Z5, Z27, Z27
+	VADDPD.RZ_SAE      Z23, Z12, K3, Z12
+	VCMPPD             $0x11, Z1, Z25, K4
+	VFMADD231PD.RZ_SAE Z19, Z16, Z14
 	ADDQ               $0x00000080, R9
 	ADDQ               $0x00000040, DX
 	ADDQ               $0x02, R11
@@ -2391,39 +2391,39 @@ term:
 	JLT                term
 
 last:
-	VPADDQ        Z26, Z11, Z11
-	VPSLLVQ       Z0, Z29, Z29
-	VMOVAPD       Z13, Z24
-	VANDPD        Z3, Z14, Z26
+	VPADDQ        Z27, Z11, Z11
+	VPSLLVQ       Z0, Z22, Z22
+	VMOVAPD       Z13, Z25
+	VANDPD        Z3, Z14, Z27
 	VPANDQ        Z6, Z11, Z11
-	VPANDQ        Z4, Z29, Z29
-	VPTERNLOGQ    $0xea, Z1, Z2, Z24
-	VMAXPD        Z26, Z15, Z15
+	VPANDQ        Z4, Z22, Z22
+	VPTERNLOGQ    $0xea, Z1, Z2, Z25
+	VMAXPD        Z27, Z15, Z15
 	VSUBPD        Z21, Z11, K2, Z11
-	VPORQ         Z5, Z29, Z29
-	VADDPD.RZ_SAE Z24, Z13, K4, Z13
-	VCMPPD        $0x11, Z1, Z26, K5
-	VPADDQ        Z29, Z12, Z12
-	VPSLLVQ       Z0, Z23, Z23
-	VMOVAPD       Z14, Z26
+	VPORQ         Z5, Z22, Z22
+	VADDPD.RZ_SAE Z25, Z13, K4, Z13
+	VCMPPD        $0x11, Z1, Z27, K5
+	VPADDQ        Z22, Z12, Z12
+	VPSLLVQ       Z0, Z24, Z24
+	VMOVAPD       Z14, Z27
 	VPANDQ        Z6, Z12, Z12
-	VPANDQ        Z4, Z23, Z23
-	VPTERNLOGQ    $0xea, Z1, Z2, Z26
-	VSUBPD        Z22, Z12, K3, Z12
-	VPORQ         Z5, Z23, Z23
-	VADDPD.RZ_SAE Z26, Z14, K5, Z14
-	VPADDQ        Z23, Z13, Z13
-	VPSLLVQ       Z0, Z25, Z25
+	VPANDQ        Z4, Z24, Z24
+	VPTERNLOGQ    $0xea, Z1, Z2, Z27
+	VSUBPD        Z23, Z12, K3, Z12
+	VPORQ         Z5, Z24, Z24
+	VADDPD.RZ_SAE Z27, Z14, K5, Z14
+	VPADDQ        Z24, Z13, Z13
+	VPSLLVQ       Z0, Z26, Z26
 	VPANDQ        Z6, Z13, Z13
-	VPANDQ        Z4, Z25, Z25
-	VSUBPD        Z24, Z13, K4, Z13
-	VPORQ         Z5, Z25, Z25
-	VPADDQ        Z25, Z14, Z14
+	VPANDQ        Z4, Z26, Z26
+	VSUBPD        Z25, Z13, K4, Z13
+	VPORQ         Z5, Z26, Z26
+	VPADDQ        Z26, Z14, Z14
 	VPANDQ        Z6, Z14, Z14
-	VSUBPD        Z26, Z14, K5, Z14
+	VSUBPD        Z27, Z14, K5, Z14
 	VMOVUPD       640(CX), Z16
-	VPXORQ        Z27, Z27, Z27
 	VPXORQ        Z28, Z28, Z28
+	VPXORQ        Z29, Z29, Z29
 	VCMPPD        $0x05, 1344(CX), Z15, K1
 	VPMOVM2Q      K1, Z15
 	VORPD         Z15, Z7, Z7
@@ -2434,30 +2434,30 @@ last:
 	VORPD         Z15, Z12, Z12
 	VORPD         Z15, Z13, Z13
 	VORPD         Z15, Z14, Z14
-	VFMADD231PD   Z27, Z7, Z28
+	VFMADD231PD   Z28, Z7, Z29
 	VMULPD        Z16, Z7, Z7
-	VADDPD        Z27, Z7, Z7
-	VFMADD231PD   Z27, Z8, Z28
+	VADDPD        Z28, Z7, Z7
+	VFMADD231PD   Z28, Z8, Z29
 	VMULPD        Z16, Z8, Z8
-	VADDPD        Z27, Z8, Z8
-	VFMADD231PD   Z27, Z9, Z28
+	VADDPD        Z28, Z8, Z8
+	VFMADD231PD   Z28, Z9, Z29
 	VMULPD        Z16, Z9, Z9
-	VADDPD        Z27, Z9, Z9
-	VFMADD231PD   Z27, Z10, Z28
+	VADDPD        Z28, Z9, Z9
+	VFMADD231PD   Z28, Z10, Z29
 	VMULPD        Z16, Z10, Z10
-	VADDPD        Z27, Z10, Z10
-	VFMADD231PD   Z27, Z11, Z28
+	VADDPD        Z28, Z10, Z10
+	VFMADD231PD   Z28, Z11, Z29
 	VMULPD        Z16, Z11, Z11
-	VADDPD        Z27, Z11, Z11
-	VFMADD231PD   Z27, Z12, Z28
+	VADDPD        Z28, Z11, Z11
+	VFMADD231PD   Z28, Z12, Z29
 	VMULPD        Z16, Z12, Z12
-	VADDPD        Z27, Z12, Z12
-	VFMADD231PD   Z27, Z13, Z28
+	VADDPD        Z28, Z12, Z12
+	VFMADD231PD   Z28, Z13, Z29
 	VMULPD        Z16, Z13, Z13
-	VADDPD        Z27, Z13, Z13
-	VFMADD231PD   Z27, Z14, Z28
+	VADDPD        Z28, Z13, Z13
+	VFMADD231PD   Z28, Z14, Z29
 	VMULPD        Z16, Z14, Z14
-	VADDPD        Z27, Z14, Z14
+	VADDPD        Z28, Z14, Z14
 	CMPQ          48(SP), $0x00
 	JNE           narrow
 	MOVQ          16(SP), DX
@@ -2503,7 +2503,7 @@ narrow:
 	MOVQ      DX, 48(SP)
 
 stored:
-	VCMPPD $0x03, Z28, Z28, K1
+	VCMPPD $0x03, Z29, Z29, K1
 	KMOVW  K1, DX
 	TESTL  DX, DX
 	MOVQ   24(SP), DX
@@ -2574,95 +2574,95 @@ term:
 	VMOVUPD            (DI), Z14
 	VBROADCASTSD       (BX)(R9*8), Z12
 	VPBROADCASTD       (SI)(R9*4), Z13
-	VFMADD231PD.RZ_SAE Z14, Z12, Z7
 	VPMOVZXDQ          (DX), Z15
 	VPMADDWD           Z15, Z13, Z15
-	VANDPD             Z3, Z7, Z18
-	VMAXPD             Z18, Z11, Z11
-	VCMPPD             $0x11, Z1, Z18, K1
-	VMOVAPD            Z7, Z18
-	VPTERNLOGQ         $0xea, Z1, Z2, Z18
-	VADDPD.RZ_SAE      Z18, Z7, K1, Z7
+	VFMADD231PD.RZ_SAE Z14, Z12, Z7
+	VANDPD             Z3, Z7, Z16
+	VMAXPD             Z16, Z11, Z11
+	VCMPPD             $0x11, Z1, Z16, K1
+	VMOVAPD            Z7, Z16
+	VPTERNLOGQ         $0xea, Z1, Z2, Z16
+	VADDPD.RZ_SAE      Z16, Z7, K1, Z7
 	VPSLLVQ            Z0, Z15, Z15
 	VPANDQ             Z4, Z15, Z15
 	VPORQ              Z5, Z15, Z15
 	VPADDQ             Z15, Z7, Z7
 	VPANDQ             Z6, Z7, Z7
-	VSUBPD             Z18, Z7, K1, Z7
+	VSUBPD             Z16, Z7, K1, Z7
 	VMOVUPD            64(DI), Z15
+	VPMOVZXDQ          32(DX), Z16
+	VPMADDWD           Z16, Z13, Z16
 	VFMADD231PD.RZ_SAE Z15, Z12, Z8
-	VPMOVZXDQ          32(DX), Z12
-	VPMADDWD           Z12, Z13, Z12
-	VANDPD             Z3, Z8, Z13
-	VMAXPD             Z13, Z11, Z11
-	VCMPPD             $0x11, Z1, Z13, K1
-	VMOVAPD            Z8, Z13
-	VPTERNLOGQ         $0xea, Z1, Z2, Z13
-	VADDPD.RZ_SAE      Z13, Z8, K1, Z8
-	VPSLLVQ            Z0, Z12, Z12
-	VPANDQ             Z4, Z12, Z12
-	VPORQ              Z5, Z12, Z12
-	VPADDQ             Z12, Z8, Z8
+	VANDPD             Z3, Z8, Z12
+	VMAXPD             Z12, Z11, Z11
+	VCMPPD             $0x11, Z1, Z12, K1
+	VMOVAPD            Z8, Z12
+	VPTERNLOGQ         $0xea, Z1, Z2, Z12
+	VADDPD.RZ_SAE      Z12, Z8, K1, Z8
+	VPSLLVQ            Z0, Z16, Z16
+	VPANDQ             Z4, Z16, Z16
+	VPORQ              Z5, Z16, Z16
+	VPADDQ             Z16, Z8, Z8
 	VPANDQ             Z6, Z8, Z8
-	VSUBPD             Z13, Z8, K1, Z8
+	VSUBPD             Z12, Z8, K1, Z8
 	VBROADCASTSD       8(BX)(R9*8), Z12
 	VPBROADCASTD       4(SI)(R9*4), Z13
+	VPMOVZXDQ          (DX), Z16
+	VPMADDWD           Z16, Z13, Z16
 	VFMADD231PD.RZ_SAE Z14, Z12, Z9
-	VPMOVZXDQ          (DX), Z14
+	VANDPD             Z3, Z9, Z14
+	VMAXPD             Z14, Z11, Z11
+	VCMPPD             $0x11, Z1, Z14, K1
+	VMOVAPD            Z9, Z14
+	VPTERNLOGQ         $0xea, Z1, Z2, Z14
+	VADDPD.RZ_SAE      Z14, Z9, K1, Z9
+	VPSLLVQ            Z0, Z16, Z16
+	VPANDQ             Z4, Z16, Z16
+	VPORQ              Z5, Z16, Z16
+	VPADDQ             Z16, Z9, Z9
+	VPANDQ             Z6, Z9, Z9
+	VSUBPD             Z14, Z9, K1, Z9
+	VPMOVZXDQ          32(DX), Z14
 	VPMADDWD           Z14, Z13, Z14
-	VANDPD             Z3, Z9, Z18
-	VMAXPD             Z18, Z11, Z11
-	VCMPPD             $0x11, Z1, Z18, K1
-	VMOVAPD            Z9, Z18
-	VPTERNLOGQ         $0xea, Z1, Z2, Z18
-	VADDPD.RZ_SAE      Z18, Z9, K1, Z9
+	VFMADD231PD.RZ_SAE Z15, Z12, Z10
+	VANDPD             Z3, Z10, Z12
+	VMAXPD             Z12, Z11, Z11
+	VCMPPD             $0x11, Z1, Z12, K1
+	VMOVAPD            Z10, Z12
+	VPTERNLOGQ         $0xea, Z1, Z2, Z12
+	VADDPD.RZ_SAE      Z12, Z10, K1, Z10
 	VPSLLVQ            Z0, Z14, Z14
 	VPANDQ             Z4, Z14, Z14
 	VPORQ              Z5, Z14, Z14
-	VPADDQ             Z14, Z9, Z9
-	VPANDQ             Z6, Z9, Z9
-	VSUBPD             Z18, Z9, K1, Z9
-	VFMADD231PD.RZ_SAE Z15, Z12, Z10
-	VPMOVZXDQ          32(DX), Z12
-	VPMADDWD           Z12, Z13, Z12
-	VANDPD             Z3, Z10, Z13
-	VMAXPD             Z13, Z11, Z11
-	VCMPPD             $0x11, Z1, Z13, K1
-	VMOVAPD            Z10, Z13
-	VPTERNLOGQ         $0xea, Z1, Z2, Z13
-	VADDPD.RZ_SAE      Z13, Z10, K1, Z10
-	VPSLLVQ            Z0, Z12, Z12
-	VPANDQ             Z4, Z12, Z12
-	VPORQ              Z5, Z12, Z12
-	VPADDQ             Z12, Z10, Z10
+	VPADDQ             Z14, Z10, Z10
 	VPANDQ             Z6, Z10, Z10
-	VSUBPD             Z13, Z10, K1, Z10
+	VSUBPD             Z12, Z10, K1, Z10
 	ADDQ               $0x00000080, DI
 	ADDQ               $0x00000040, DX
 	ADDQ               $0x02, R9
 	CMPQ               R9, R8
 	JLT                term
 	VMOVUPD            640(CX), Z12
-	VPXORQ             Z16, Z16, Z16
 	VPXORQ             Z17, Z17, Z17
+	VPXORQ             Z18, Z18, Z18
 	VCMPPD             $0x05, 1344(CX), Z11, K1
 	VPMOVM2Q           K1, Z11
 	VORPD              Z11, Z7, Z7
 	VORPD              Z11, Z8, Z8
 	VORPD              Z11, Z9, Z9
 	VORPD              Z11, Z10, Z10
-	VFMADD231PD        Z16, Z7, Z17
+	VFMADD231PD        Z17, Z7, Z18
 	VMULPD             Z12, Z7, Z7
-	VADDPD             Z16, Z7, Z7
-	VFMADD231PD        Z16, Z8, Z17
+	VADDPD             Z17, Z7, Z7
+	VFMADD231PD        Z17, Z8, Z18
 	VMULPD             Z12, Z8, Z8
-	VADDPD             Z16, Z8, Z8
-	VFMADD231PD        Z16, Z9, Z17
+	VADDPD             Z17, Z8, Z8
+	VFMADD231PD        Z17, Z9, Z18
 	VMULPD             Z12, Z9, Z9
-	VADDPD             Z16, Z9, Z9
-	VFMADD231PD        Z16, Z10, Z17
+	VADDPD             Z17, Z9, Z9
+	VFMADD231PD        Z17, Z10, Z18
 	VMULPD             Z12, Z10, Z10
-	VADDPD             Z16, Z10, Z10
+	VADDPD             Z17, Z10, Z10
 	CMPQ               48(SP), $0x00
 	JNE                narrow
 	MOVQ               16(SP), DX
@@ -2692,7 +2692,7 @@ narrow:
 	MOVQ      DX, 48(SP)
 
 stored:
-	VCMPPD $0x03, Z17, Z17, K1
+	VCMPPD $0x03, Z18, Z18, K1
 	KMOVW  K1, DX
 	TESTL  DX, DX
 	MOVQ   24(SP), DX
@@ -2781,110 +2781,110 @@ group:
 	VMOVUPD            (R13), Z18
 	VBROADCASTSD       (BX)(R15*8), Z16
 	VPBROADCASTD       (R9)(R15*4), Z17
+	VPMOVZXDQ          (DX), Z19
+	VPMADDWD           Z19, Z17, Z19
 	VFMADD231PD.RZ_SAE Z18, Z16, Z7
-	VPMOVZXDQ          (DX), Z16
-	VPMADDWD           Z16, Z17, Z16
 	VANDPD             Z3, Z7, Z20
-	VBROADCASTSD       8(BX)(R15*8), Z17
-	VPBROADCASTD       4(R9)(R15*4), Z19
-	VFMADD231PD.RZ_SAE Z18, Z17, Z8
+	VBROADCASTSD       8(BX)(R15*8), Z16
+	VPBROADCASTD       4(R9)(R15*4), Z17
+	VPMOVZXDQ          (DX), Z21
 	VMAXPD             Z20, Z15, Z15
-	VPMOVZXDQ          (DX), Z17
+	VPMADDWD           Z21, Z17, Z21
 	VCMPPD             $0x11, Z1, Z20, K1
-	VPMADDWD           Z17, Z19, Z17
+	VFMADD231PD.RZ_SAE Z18, Z16, Z8
 	VMOVAPD            Z7, Z20
-	VANDPD             Z3, Z8, Z21
-	VBROADCASTSD       (SI)(R15*8), Z22
-	VPBROADCASTD       (R10)(R15*4), Z19
-	VFMADD231PD.RZ_SAE Z18, Z22, Z9
+	VANDPD             Z3, Z8, Z22
+	VBROADCASTSD       (SI)(R15*8), Z16
+	VPBROADCASTD       (R10)(R15*4), Z17
+	VPMOVZXDQ          (DX), Z23
 	VPTERNLOGQ         $0xea, Z1, Z2, Z20
-	VMAXPD             Z21, Z15, Z15
-	VPMOVZXDQ          (DX), Z22
+	VMAXPD             Z22, Z15, Z15
+	VPMADDWD           Z23, Z17, Z23
 	VADDPD.RZ_SAE      Z20, Z7, K1, Z7
-	VCMPPD             $0x11, Z1, Z21, K2
-	VPMADDWD           Z22, Z19, Z22
-	VPSLLVQ            Z0, Z16, Z16
-	VMOVAPD            Z8, Z21
-	VANDPD             Z3, Z9, Z23
-	VBROADCASTSD       8(SI)(R15*8), Z24
-	VPBROADCASTD       4(R10)(R15*4), Z19
-	VFMADD231PD.RZ_SAE Z18, Z24, Z10
-	VPANDQ             Z4, Z16, Z16
-	VPTERNLOGQ         $0xea, Z1, Z2, Z21
-	VMAXPD             Z23, Z15, Z15
-	VPMOVZXDQ          (DX), Z24
-	VPORQ              Z5, Z16, Z16
-	VADDPD.RZ_SAE      Z21, Z8, K2, Z8
-	VCMPPD             $0x11, Z1, Z23, K3
-	VPMADDWD           Z24, Z19, Z24
-	VPADDQ             Z16, Z7, Z7
-	VPSLLVQ            Z0, Z17, Z17
-	VMOVAPD            Z9, Z23
-	VANDPD             Z3, Z10, Z16
-	VBROADCASTSD       (DI)(R15*8), Z25
-	VPBROADCASTD       (R11)(R15*4), Z19
-	VFMADD231PD.RZ_SAE Z18, Z25, Z11
-	VPANDQ             Z6, Z7, Z7
-	VPANDQ             Z4, Z17, Z17
-	VPTERNLOGQ         $0xea, Z1, Z2, Z23
-	VMAXPD             Z16, Z15, Z15
+	VCMPPD             $0x11, Z1, Z22, K2
+	VFMADD231PD.RZ_SAE Z18, Z16, Z9
+	VPSLLVQ            Z0, Z19, Z19
+	VMOVAPD            Z8, Z22
+	VANDPD             Z3, Z9, Z24
+	VBROADCASTSD       8(SI)(R15*8), Z16
+	VPBROADCASTD       4(R10)(R15*4), Z17
 	VPMOVZXDQ          (DX), Z25
-	VSUBPD             Z20, Z7, K1, Z7
-	VPORQ              Z5, Z17, Z17
-	VADDPD.RZ_SAE      Z23, Z9, K3, Z9
-	VCMPPD             $0x11, Z1, Z16, K1
-	VPMADDWD           Z25, Z19, Z25
-	VPADDQ             Z17, Z8, Z8
-	VPSLLVQ            Z0, Z22, Z22
-	VMOVAPD            Z10, Z16
-	VANDPD             Z3, Z11, Z19
-	VBROADCASTSD       8(DI)(R15*8), Z20
-	VPBROADCASTD       4(R11)(R15*4), Z17
-	VFMADD231PD.RZ_SAE Z18, Z20, Z12
-	VPANDQ             Z6, Z8, Z8
-	VPANDQ             Z4, Z22, Z22
-	VPTERNLOGQ         $0xea, Z1, Z2, Z16
+	VPANDQ             Z4, Z19, Z19
+	VPTERNLOGQ         $0xea, Z1, Z2, Z22
+	VMAXPD             Z24, Z15, Z15
+	VPMADDWD           Z25, Z17, Z25
+	VPORQ              Z5, Z19, Z19
+	VADDPD.RZ_SAE      Z22, Z8, K2, Z8
+	VCMPPD             $0x11, Z1, Z24, K3
+	VFMADD231PD.RZ_SAE Z18, Z16, Z10
+	VPADDQ             Z19, Z7, Z7
+	VPSLLVQ            Z0, Z21, Z21
+	VMOVAPD            Z9, Z24
+	VANDPD             Z3, Z10, Z19
+	VBROADCASTSD       (DI)(R15*8), Z16
+	VPBROADCASTD       (R11)(R15*4), Z17
+	VPMOVZXDQ          (DX), Z26
+	VPANDQ             Z6, Z7, Z7
+	VPANDQ             Z4, Z21, Z21
+	VPTERNLOGQ         $0xea, Z1, Z2, Z24
 	VMAXPD             Z19, Z15, Z15
-	VPMOVZXDQ          (DX), Z20
-	VSUBPD             Z21, Z8, K2, Z8
-	VPORQ              Z5, Z22, Z22
-	VADDPD.RZ_SAE      Z16, Z10, K1, Z10
-	VCMPPD             $0x11, Z1, Z19, K2
-	VPMADDWD           Z20, Z17, Z20
-	VPADDQ             Z22, Z9, Z9
-	VPSLLVQ            Z0, Z24, Z24
-	VMOVAPD            Z11, Z19
-	VANDPD             Z3, Z12, Z21
-	VBROADCASTSD       (R8)(R15*8), Z22
-	VPBROADCASTD       (R12)(R15*4), Z17
-	VFMADD231PD.RZ_SAE Z18, Z22, Z13
-	VPANDQ             Z6, Z9, Z9
-	VPANDQ             Z4, Z24, Z24
+	VPMADDWD           Z26, Z17, Z26
+	VSUBPD             Z20, Z7, K1, Z7
+	VPORQ              Z5, Z21, Z21
+	VADDPD.RZ_SAE      Z24, Z9, K3, Z9
+	VCMPPD             $0x11, Z1, Z19, K1
+	VFMADD231PD.RZ_SAE Z18, Z16, Z11
+	VPADDQ             Z21, Z8, Z8
+	VPSLLVQ            Z0, Z23, Z23
+	VMOVAPD            Z10, Z19
+	VANDPD             Z3, Z11, Z20
+	VBROADCASTSD       8(DI)(R15*8), Z16
+	VPBROADCASTD       4(R11)(R15*4), Z17
+	VPMOVZXDQ          (DX), Z21
+	VPANDQ             Z6, Z8, Z8
+	VPANDQ             Z4, Z23, Z23
 	VPTERNLOGQ         $0xea, Z1, Z2, Z19
-	VMAXPD             Z21, Z15, Z15
-	VPMOVZXDQ          (DX), Z22
-	VSUBPD             Z23, Z9, K3, Z9
-	VPORQ              Z5, Z24, Z24
-	VADDPD.RZ_SAE      Z19, Z11, K2, Z11
-	VCMPPD             $0x11, Z1, Z21, K3
-	VPMADDWD           Z22, Z17, Z22
-	VPADDQ             Z24, Z10, Z10
+	VMAXPD             Z20, Z15, Z15
+	VPMADDWD           Z21, Z17, Z21
+	VSUBPD             Z22, Z8, K2, Z8
+	VPORQ              Z5, Z23, Z23
+	VADDPD.RZ_SAE      Z19, Z10, K1, Z10
+	VCMPPD             $0x11, Z1, Z20, K2
+	VFMADD231PD.RZ_SAE Z18, Z16, Z12
+	VPADDQ             Z23, Z9, Z9
 	VPSLLVQ            Z0, Z25, Z25
-	VMOVAPD            Z12, Z21
-	VANDPD             Z3, Z13, Z23
-	VBROADCASTSD       8(R8)(R15*8), Z24
-	VPBROADCASTD       4(R12)(R15*4), Z17
-	VFMADD231PD.RZ_SAE Z18, Z24, Z14
-	VPANDQ             Z6, Z10, Z10
+	VMOVAPD            Z11, Z20
+	VANDPD             Z3, Z12, Z22
+	VBROADCASTSD       (R8)(R15*8), Z16
+	VPBROADCASTD       (R12)(R15*4), Z17
+	VPMOVZXDQ          (DX), Z23
+	VPANDQ             Z6, Z9, Z9
 	VPANDQ             Z4, Z25, Z25
-	VPTERNLOGQ         $0xea, Z1, Z2, Z21
-	VMAXPD             Z23, Z15, Z15
-	VPMOVZXDQ          (DX), Z24
-	VSUBPD             Z16, Z10, K1, Z10
+	VPTERNLOGQ         $0xea, Z1, Z2, Z20
+	VMAXPD             Z22, Z15, Z15
+	VPMADDWD           Z23, Z17, Z23
+	VSUBPD             Z24, Z9, K3, Z9
 	VPORQ              Z5, Z25, Z25
-	VADDPD.RZ_SAE      Z21, Z12, K3, Z12
-	VCMPPD             $0x11, Z1, Z23, K4
-	VPMADDWD           Z24, Z17, Z24
+	VADDPD.RZ_SAE      Z20, Z11, K2, Z11
+	VCMPPD             $0x11, Z1, Z22, K3
+	VFMADD231PD.RZ_SAE Z18, Z16, Z13
+	VPADDQ             Z25, Z10, Z10
+	VPSLLVQ            Z0, Z26, Z26
+	VMOVAPD            Z12, Z22
+	VANDPD             Z3, Z13, Z24
+	VBROADCASTSD       8(R8)(R15*8), Z16
+	VPBROADCASTD       4(R12)(R15*4), Z17
+	VPMOVZXDQ          (DX), Z25
+	VPANDQ             Z6, Z10, Z10
+	VPANDQ             Z4, Z26, Z26
+	VPTERNLOGQ         $0xea, Z1, Z2, Z22
+	VMAXPD             Z24, Z15, Z15
+	VPMADDWD           Z25, Z17, Z25
+	VSUBPD             Z19, Z10, K1, Z10
+	VPORQ              Z5, Z26, Z26
+	VADDPD.RZ_SAE      Z22, Z12, K3, Z12
+	VCMPPD             $0x11, Z1, Z24, K4
+	VFMADD231PD.RZ_SAE Z18, Z16, Z14
 	ADDQ               $0x00000040, R13
 	ADDQ               $0x00000020, DX
 	ADDQ               $0x02, R15
@@ -2892,143 +2892,143 @@ group:
 	JGE                last
 
 term:
-	VPADDQ             Z25, Z11, Z11
-	VPSLLVQ            Z0, Z20, Z20
-	VMOVAPD            Z13, Z23
-	VANDPD             Z3, Z14, Z25
+	VPADDQ             Z26, Z11, Z11
+	VPSLLVQ            Z0, Z21, Z21
+	VMOVAPD            Z13, Z24
+	VANDPD             Z3, Z14, Z26
 	VMOVUPD            (R13), Z18
 	VBROADCASTSD       (BX)(R15*8), Z16
 	VPBROADCASTD       (R9)(R15*4), Z17
-	VFMADD231PD.RZ_SAE Z18, Z16, Z7
+	VPMOVZXDQ          (DX), Z19
 	VPANDQ             Z6, Z11, Z11
-	VPANDQ             Z4, Z20, Z20
-	VPTERNLOGQ         $0xea, Z1, Z2, Z23
-	VMAXPD             Z25, Z15, Z15
-	VPMOVZXDQ          (DX), Z16
-	VSUBPD             Z19, Z11, K2, Z11
-	VPORQ              Z5, Z20, Z20
-	VADDPD.RZ_SAE      Z23, Z13, K4, Z13
-	VCMPPD             $0x11, Z1, Z25, K5
-	VPMADDWD           Z16, Z17, Z16
-	VPADDQ             Z20, Z12, Z12
-	VPSLLVQ            Z0, Z22, Z22
-	VMOVAPD            Z14, Z25
+	VPANDQ             Z4, Z21, Z21
+	VPTERNLOGQ         $0xea, Z1, Z2, Z24
+	VMAXPD             Z26, Z15, Z15
+	VPMADDWD           Z19, Z17, Z19
+	VSUBPD             Z20, Z11, K2, Z11
+	VPORQ              Z5, Z21, Z21
+	VADDPD.RZ_SAE      Z24, Z13, K4, Z13
+	VCMPPD             $0x11, Z1, Z26, K5
+	VFMADD231PD.RZ_SAE Z18, Z16, Z7
+	VPADDQ             Z21, Z12, Z12
+	VPSLLVQ            Z0, Z23, Z23
+	VMOVAPD            Z14, Z26
 	VANDPD             Z3, Z7, Z20
-	VBROADCASTSD       8(BX)(R15*8), Z17
-	VPBROADCASTD       4(R9)(R15*4), Z19
-	VFMADD231PD.RZ_SAE Z18, Z17, Z8
+	VBROADCASTSD       8(BX)(R15*8), Z16
+	VPBROADCASTD       4(R9)(R15*4), Z17
+	VPMOVZXDQ          (DX), Z21
 	VPANDQ             Z6, Z12, Z12
-	VPANDQ             Z4, Z22, Z22
-	VPTERNLOGQ         $0xea, Z1, Z2, Z25
+	VPANDQ             Z4, Z23, Z23
+	VPTERNLOGQ         $0xea, Z1, Z2, Z26
 	VMAXPD             Z20, Z15, Z15
-	VPMOVZXDQ          (DX), Z17
-	VSUBPD             Z21, Z12, K3, Z12
-	VPORQ              Z5, Z22, Z22
-	VADDPD.RZ_SAE      Z25, Z14, K5, Z14
+	VPMADDWD           Z21, Z17, Z21
+	VSUBPD             Z22, Z12, K3, Z12
+	VPORQ              Z5, Z23, Z23
+	VADDPD.RZ_SAE      Z26, Z14, K5, Z14
 	VCMPPD             $0x11, Z1, Z20, K1
-	VPMADDWD           Z17, Z19, Z17
-	VPADDQ             Z22, Z13, Z13
-	VPSLLVQ            Z0, Z24, Z24
-	VMOVAPD            Z7, Z20
-	VANDPD             Z3, Z8, Z21
-	VBROADCASTSD       (SI)(R15*8), Z22
-	VPBROADCASTD       (R10)(R15*4), Z19
-	VFMADD231PD.RZ_SAE Z18, Z22, Z9
-	VPANDQ             Z6, Z13, Z13
-	VPANDQ             Z4, Z24, Z24
-	VPTERNLOGQ         $0xea, Z1, Z2, Z20
-	VMAXPD             Z21, Z15, Z15
-	VPMOVZXDQ          (DX), Z22
-	VSUBPD             Z23, Z13, K4, Z13
-	VPORQ              Z5, Z24, Z24
-	VADDPD.RZ_SAE      Z20, Z7, K1, Z7
-	VCMPPD             $0x11, Z1, Z21, K2
-	VPMADDWD           Z22, Z19, Z22
-	VPADDQ             Z24, Z14, Z14
-	VPSLLVQ            Z0, Z16, Z16
-	VMOVAPD            Z8, Z21
-	VANDPD             Z3, Z9, Z23
-	VBROADCASTSD       8(SI)(R15*8), Z24
-	VPBROADCASTD       4(R10)(R15*4), Z19
-	VFMADD231PD.RZ_SAE Z18, Z24, Z10
-	VPANDQ             Z6, Z14, Z14
-	VPANDQ             Z4, Z16, Z16
-	VPTERNLOGQ         $0xea, Z1, Z2, Z21
-	VMAXPD             Z23, Z15, Z15
-	VPMOVZXDQ          (DX), Z24
-	VSUBPD             Z25, Z14, K5, Z14
-	VPORQ              Z5, Z16, Z16
-	VADDPD.RZ_SAE      Z21, Z8, K2, Z8
-	VCMPPD             $0x11, Z1, Z23, K3
-	VPMADDWD           Z24, Z19, Z24
-	VPADDQ             Z16, Z7, Z7
-	VPSLLVQ            Z0, Z17, Z17
-	VMOVAPD            Z9, Z23
-	VANDPD             Z3, Z10, Z16
-	VBROADCASTSD       (DI)(R15*8), Z25
-	VPBROADCASTD       (R11)(R15*4), Z19
-	VFMADD231PD.RZ_SAE Z18, Z25, Z11
-	VPANDQ             Z6, Z7, Z7
-	VPANDQ             Z4, Z17, Z17
-	VPTERNLOGQ         $0xea, Z1, Z2, Z23
-	VMAXPD             Z16, Z15, Z15
-	VPMOVZXDQ          (DX), Z25
-	VSUBPD             Z20, Z7, K1, Z7
-	VPORQ              Z5, Z17, Z17
-	VADDPD.RZ_SAE      Z23, Z9, K3, Z9
-	VCMPPD             $0x11, Z1, Z16, K1
-	VPMADDWD           Z25, Z19, Z25
-	VPADDQ             Z17, Z8, Z8
-	VPSLLVQ            Z0, Z22, Z22
-	VMOVAPD            Z10, Z16
-	VANDPD             Z3, Z11, Z19
-	VBROADCASTSD       8(DI)(R15*8), Z20
-	VPBROADCASTD       4(R11)(R15*4), Z17
-	VFMADD231PD.RZ_SAE Z18, Z20, Z12
-	VPANDQ             Z6, Z8, Z8
-	VPANDQ             Z4, Z22, Z22
-	VPTERNLOGQ         $0xea, Z1, Z2, Z16
-	VMAXPD             Z19, Z15, Z15
-	VPMOVZXDQ          (DX), Z20
-	VSUBPD             Z21, Z8, K2, Z8
-	VPORQ              Z5, Z22, Z22
-	VADDPD.RZ_SAE      Z16, Z10, K1, Z10
-	VCMPPD             $0x11, Z1, Z19, K2
-	VPMADDWD           Z20, Z17, Z20
-	VPADDQ             Z22, Z9, Z9
-	VPSLLVQ            Z0, Z24, Z24
-	VMOVAPD            Z11, Z19
-	VANDPD             Z3, Z12, Z21
-	VBROADCASTSD       (R8)(R15*8), Z22
-	VPBROADCASTD       (R12)(R15*4), Z17
-	VFMADD231PD.RZ_SAE Z18, Z22, Z13
-	VPANDQ             Z6, Z9, Z9
-	VPANDQ             Z4, Z24, Z24
-	VPTERNLOGQ         $0xea, Z1, Z2, Z19
-	VMAXPD             Z21, Z15, Z15
-	VPMOVZXDQ          (DX), Z22
-	VSUBPD             Z23, Z9, K3, Z9
-	VPORQ              Z5, Z24, Z24
-	VADDPD.RZ_SAE      Z19, Z11, K2, Z11
-	VCMPPD             $0x11, Z1, Z21, K3
-	VPMADDWD           Z22, Z17, Z22
-	VPADDQ             Z24, Z10, Z10
+	VFMADD231PD.RZ_SAE Z18, Z16, Z8
+	VPADDQ             Z23, Z13, Z13
 	VPSLLVQ            Z0, Z25, Z25
-	VMOVAPD            Z12, Z21
-	VANDPD             Z3, Z13, Z23
-	VBROADCASTSD       8(R8)(R15*8), Z24
-	VPBROADCASTD       4(R12)(R15*4), Z17
-	VFMADD231PD.RZ_SAE Z18, Z24, Z14
-	VPANDQ             Z6, Z10, Z10
+	VMOVAPD            Z7, Z20
+	VANDPD             Z3, Z8, Z22
+	VBROADCASTSD       (SI)(R15*8), Z16
+	VPBROADCASTD       (R10)(R15*4), Z17
+	VPMOVZXDQ          (DX), Z23
+	VPANDQ             Z6, Z13, Z13
 	VPANDQ             Z4, Z25, Z25
-	VPTERNLOGQ         $0xea, Z1, Z2, Z21
-	VMAXPD             Z23, Z15, Z15
-	VPMOVZXDQ          (DX), Z24
-	VSUBPD             Z16, Z10, K1, Z10
+	VPTERNLOGQ         $0xea, Z1, Z2, Z20
+	VMAXPD             Z22, Z15, Z15
+	VPMADDWD           Z23, Z17, Z23
+	VSUBPD             Z24, Z13, K4, Z13
 	VPORQ              Z5, Z25, Z25
-	VADDPD.RZ_SAE      Z21, Z12, K3, Z12
-	VCMPPD             $0x11, Z1, Z23, K4
-	VPMADDWD           Z24, Z17, Z24
+	VADDPD.RZ_SAE      Z20, Z7, K1, Z7
+	VCMPPD             $0x11, Z1, Z22, K2
+	VFMADD231PD.RZ_SAE Z18, Z16, Z9
+	VPADDQ             Z25, Z14, Z14
+	VPSLLVQ            Z0, Z19, Z19
+	VMOVAPD            Z8, Z22
+	VANDPD             Z3, Z9, Z24
+	VBROADCASTSD       8(SI)(R15*8), Z16
+	VPBROADCASTD       4(R10)(R15*4), Z17
+	VPMOVZXDQ          (DX), Z25
+	VPANDQ             Z6, Z14, Z14
+	VPANDQ             Z4, Z19, Z19
+	VPTERNLOGQ         $0xea, Z1, Z2, Z22
+	VMAXPD             Z24, Z15, Z15
+	VPMADDWD           Z25, Z17, Z25
+	VSUBPD             Z26, Z14, K5, Z14
+	VPORQ              Z5, Z19, Z19
+	VADDPD.RZ_SAE      Z22, Z8, K2, Z8
+	VCMPPD             $0x11, Z1, Z24, K3
+	VFMADD231PD.RZ_SAE Z18, Z16, Z10
+	VPADDQ             Z19, Z7, Z7
+	VPSLLVQ            Z0, Z21, Z21
+	VMOVAPD            Z9, Z24
+	VANDPD             Z3, Z10, Z19
+	VBROADCASTSD       (DI)(R15*8), Z16
+	VPBROADCASTD       (R11)(R15*4), Z17
+	VPMOVZXDQ          (DX), Z26
+	VPANDQ             Z6, Z7, Z7
+	VPANDQ             Z4, Z21, Z21
+	VPTERNLOGQ         $0xea, Z1, Z2, Z24
+	VMAXPD             Z19, Z15, Z15
+	VPMADDWD           Z26, Z17, Z26
+	VSUBPD             Z20, Z7, K1, Z7
+	VPORQ              Z5, Z21, Z21
+	VADDPD.RZ_SAE      Z24, Z9, K3, Z9
+	VCMPPD             $0x11, Z1, Z19, K1
+	VFMADD231PD.RZ_SAE Z18, Z16, Z11
+	VPADDQ             Z21, Z8, Z8
+	VPSLLVQ            Z0, Z23, Z23
+	VMOVAPD            Z10, Z19
+	VANDPD             Z3, Z11, Z20
+	VBROADCASTSD       8(DI)(R15*8), Z16
+	VPBROADCASTD       4(R11)(R15*4), Z17
+	VPMOVZXDQ          (DX), Z21
+	VPANDQ             Z6, Z8, Z8
+	VPANDQ             Z4, Z23, Z23
+	VPTERNLOGQ         $0xea, Z1, Z2, Z19
+	VMAXPD             Z20, Z15, Z15
+	VPMADDWD           Z21, Z17, Z21
+	VSUBPD             Z22, Z8, K2, Z8
+	VPORQ              Z5, Z23, Z23
+	VADDPD.RZ_SAE      Z19, Z10, K1, Z10
+	VCMPPD             $0x11, Z1, Z20, K2
+	VFMADD231PD.RZ_SAE Z18, Z16, Z12
+	VPADDQ             Z23, Z9, Z9
+	VPSLLVQ            Z0, Z25, Z25
+	VMOVAPD            Z11, Z20
+	VANDPD             Z3, Z12, Z22
+	VBROADCASTSD       (R8)(R15*8), Z16
+	VPBROADCASTD       (R12)(R15*4), Z17
+	VPMOVZXDQ          (DX), Z23
+	VPANDQ             Z6, Z9, Z9
+	VPANDQ             Z4, Z25, Z25
+	VPTERNLOGQ         $0xea, Z1, Z2, Z20
+	VMAXPD             Z22, Z15, Z15
+	VPMADDWD           Z23, Z17, Z23
+	VSUBPD             Z24, Z9, K3, Z9
+	VPORQ              Z5, Z25, Z25
+	VADDPD.RZ_SAE      Z20, Z11, K2, Z11
+	VCMPPD             $0x11, Z1, Z22, K3
+	VFMADD231PD.RZ_SAE Z18, Z16, Z13
+	VPADDQ             Z25, Z10, Z10
+	VPSLLVQ            Z0, Z26, Z26
+	VMOVAPD            Z12, Z22
+	VANDPD             Z3, Z13, Z24
+	VBROADCASTSD       8(R8)(R15*8), Z16
+	VPBROADCASTD       4(R12)(R15*4), Z17
+	VPMOVZXDQ          (DX), Z25
+	VPANDQ             Z6, Z10, Z10
+	VPANDQ             Z4, Z26, Z26
+	VPTERNLOGQ         $0xea, Z1, Z2, Z22
+	VMAXPD             Z24, Z15, Z15
+	VPMADDWD           Z25, Z17, Z25
+	VSUBPD             Z19, Z10, K1, Z10
+	VPORQ              Z5, Z26, Z26
+	VADDPD.RZ_SAE      Z22, Z12, K3, Z12
+	VCMPPD             $0x11, Z1, Z24, K4
+	VFMADD231PD.RZ_SAE Z18, Z16, Z14
 	ADDQ               $0x00000040, R13
 	ADDQ               $0x00000020, DX
 	ADDQ               $0x02, R15
@@ -3036,39 +3036,39 @@ term:
 	JLT                term
 
 last:
-	VPADDQ        Z25, Z11, Z11
-	VPSLLVQ       Z0, Z20, Z20
-	VMOVAPD       Z13, Z23
-	VANDPD        Z3, Z14, Z25
+	VPADDQ        Z26, Z11, Z11
+	VPSLLVQ       Z0, Z21, Z21
+	VMOVAPD       Z13, Z24
+	VANDPD        Z3, Z14, Z26
 	VPANDQ        Z6, Z11, Z11
-	VPANDQ        Z4, Z20, Z20
-	VPTERNLOGQ    $0xea, Z1, Z2, Z23
-	VMAXPD        Z25, Z15, Z15
-	VSUBPD        Z19, Z11, K2, Z11
-	VPORQ         Z5, Z20, Z20
-	VADDPD.RZ_SAE Z23, Z13, K4, Z13
-	VCMPPD        $0x11, Z1, Z25, K5
-	VPADDQ        Z20, Z12, Z12
-	VPSLLVQ       Z0, Z22, Z22
-	VMOVAPD       Z14, Z25
+	VPANDQ        Z4, Z21, Z21
+	VPTERNLOGQ    $0xea, Z1, Z2, Z24
+	VMAXPD        Z26, Z15, Z15
+	VSUBPD        Z20, Z11, K2, Z11
+	VPORQ         Z5, Z21, Z21
+	VADDPD.RZ_SAE Z24, Z13, K4, Z13
+	VCMPPD        $0x11, Z1, Z26, K5
+	VPADDQ        Z21, Z12, Z12
+	VPSLLVQ       Z0, Z23, Z23
+	VMOVAPD       Z14, Z26
 	VPANDQ        Z6, Z12, Z12
-	VPANDQ        Z4, Z22, Z22
-	VPTERNLOGQ    $0xea, Z1, Z2, Z25
-	VSUBPD        Z21, Z12, K3, Z12
-	VPORQ         Z5, Z22, Z22
-	VADDPD.RZ_SAE Z25, Z14, K5, Z14
-	VPADDQ        Z22, Z13, Z13
-	VPSLLVQ       Z0, Z24, Z24
+	VPANDQ        Z4, Z23, Z23
+	VPTERNLOGQ    $0xea, Z1, Z2, Z26
+	VSUBPD        Z22, Z12, K3, Z12
+	VPORQ         Z5, Z23, Z23
+	VADDPD.RZ_SAE Z26, Z14, K5, Z14
+	VPADDQ        Z23, Z13, Z13
+	VPSLLVQ       Z0, Z25, Z25
 	VPANDQ        Z6, Z13, Z13
-	VPANDQ        Z4, Z24, Z24
-	VSUBPD        Z23, Z13, K4, Z13
-	VPORQ         Z5, Z24, Z24
-	VPADDQ        Z24, Z14, Z14
+	VPANDQ        Z4, Z25, Z25
+	VSUBPD        Z24, Z13, K4, Z13
+	VPORQ         Z5, Z25, Z25
+	VPADDQ        Z25, Z14, Z14
 	VPANDQ        Z6, Z14, Z14
-	VSUBPD        Z25, Z14, K5, Z14
+	VSUBPD        Z26, Z14, K5, Z14
 	VMOVUPD       640(CX), Z16
-	VPXORQ        Z26, Z26, Z26
 	VPXORQ        Z27, Z27, Z27
+	VPXORQ        Z28, Z28, Z28
 	VCMPPD        $0x05, 1344(CX), Z15, K1
 	VPMOVM2Q      K1, Z15
 	VORPD         Z15, Z7, Z7
@@ -3079,30 +3079,30 @@ last:
 	VORPD         Z15, Z12, Z12
 	VORPD         Z15, Z13, Z13
 	VORPD         Z15, Z14, Z14
-	VFMADD231PD   Z26, Z7, Z27
+	VFMADD231PD   Z27, Z7, Z28
 	VMULPD        Z16, Z7, Z7
-	VADDPD        Z26, Z7, Z7
-	VFMADD231PD   Z26, Z8, Z27
+	VADDPD        Z27, Z7, Z7
+	VFMADD231PD   Z27, Z8, Z28
 	VMULPD        Z16, Z8, Z8
-	VADDPD        Z26, Z8, Z8
-	VFMADD231PD   Z26, Z9, Z27
+	VADDPD        Z27, Z8, Z8
+	VFMADD231PD   Z27, Z9, Z28
 	VMULPD        Z16, Z9, Z9
-	VADDPD        Z26, Z9, Z9
-	VFMADD231PD   Z26, Z10, Z27
+	VADDPD        Z27, Z9, Z9
+	VFMADD231PD   Z27, Z10, Z28
 	VMULPD        Z16, Z10, Z10
-	VADDPD        Z26, Z10, Z10
-	VFMADD231PD   Z26, Z11, Z27
+	VADDPD        Z27, Z10, Z10
+	VFMADD231PD   Z27, Z11, Z28
 	VMULPD        Z16, Z11, Z11
-	VADDPD        Z26, Z11, Z11
-	VFMADD231PD   Z26, Z12, Z27
+	VADDPD        Z27, Z11, Z11
+	VFMADD231PD   Z27, Z12, Z28
 	VMULPD        Z16, Z12, Z12
-	VADDPD        Z26, Z12, Z12
-	VFMADD231PD   Z26, Z13, Z27
+	VADDPD        Z27, Z12, Z12
+	VFMADD231PD   Z27, Z13, Z28
 	VMULPD        Z16, Z13, Z13
-	VADDPD        Z26, Z13, Z13
-	VFMADD231PD   Z26, Z14, Z27
+	VADDPD        Z27, Z13, Z13
+	VFMADD231PD   Z27, Z14, Z28
 	VMULPD        Z16, Z14, Z14
-	VADDPD        Z26, Z14, Z14
+	VADDPD        Z27, Z14, Z14
 	CMPQ          48(SP), $0x00
 	JNE           narrow
 	MOVQ          16(SP), DX
@@ -3156,7 +3156,7 @@ narrow:
 	MOVQ      DX, 48(SP)
 
 stored:
-	VCMPPD $0x03, Z27, Z27, K1
+	VCMPPD $0x03, Z28, Z28, K1
 	KMOVW  K1, DX
 	TESTL  DX, DX
 	MOVQ   24(SP), DX
@@ -3223,56 +3223,56 @@ term:
 	VMOVUPD            (DI), Z12
 	VBROADCASTSD       (BX)(R9*8), Z10
 	VPBROADCASTD       (SI)(R9*4), Z11
+	VPMOVZXDQ          (DX), Z13
+	VPMADDWD           Z13, Z11, Z13
 	VFMADD231PD.RZ_SAE Z12, Z10, Z7
-	VPMOVZXDQ          (DX), Z10
-	VPMADDWD           Z10, Z11, Z10
-	VANDPD             Z3, Z7, Z11
-	VMAXPD             Z11, Z9, Z9
-	VCMPPD             $0x11, Z1, Z11, K1
-	VMOVAPD            Z7, Z11
-	VPTERNLOGQ         $0xea, Z1, Z2, Z11
-	VADDPD.RZ_SAE      Z11, Z7, K1, Z7
-	VPSLLVQ            Z0, Z10, Z10
-	VPANDQ             Z4, Z10, Z10
-	VPORQ              Z5, Z10, Z10
-	VPADDQ             Z10, Z7, Z7
+	VANDPD             Z3, Z7, Z10
+	VMAXPD             Z10, Z9, Z9
+	VCMPPD             $0x11, Z1, Z10, K1
+	VMOVAPD            Z7, Z10
+	VPTERNLOGQ         $0xea, Z1, Z2, Z10
+	VADDPD.RZ_SAE      Z10, Z7, K1, Z7
+	VPSLLVQ            Z0, Z13, Z13
+	VPANDQ             Z4, Z13, Z13
+	VPORQ              Z5, Z13, Z13
+	VPADDQ             Z13, Z7, Z7
 	VPANDQ             Z6, Z7, Z7
-	VSUBPD             Z11, Z7, K1, Z7
+	VSUBPD             Z10, Z7, K1, Z7
 	VBROADCASTSD       8(BX)(R9*8), Z10
 	VPBROADCASTD       4(SI)(R9*4), Z11
+	VPMOVZXDQ          (DX), Z13
+	VPMADDWD           Z13, Z11, Z13
 	VFMADD231PD.RZ_SAE Z12, Z10, Z8
-	VPMOVZXDQ          (DX), Z10
-	VPMADDWD           Z10, Z11, Z10
-	VANDPD             Z3, Z8, Z11
-	VMAXPD             Z11, Z9, Z9
-	VCMPPD             $0x11, Z1, Z11, K1
-	VMOVAPD            Z8, Z11
-	VPTERNLOGQ         $0xea, Z1, Z2, Z11
-	VADDPD.RZ_SAE      Z11, Z8, K1, Z8
-	VPSLLVQ            Z0, Z10, Z10
-	VPANDQ             Z4, Z10, Z10
-	VPORQ              Z5, Z10, Z10
-	VPADDQ             Z10, Z8, Z8
+	VANDPD             Z3, Z8, Z10
+	VMAXPD             Z10, Z9, Z9
+	VCMPPD             $0x11, Z1, Z10, K1
+	VMOVAPD            Z8, Z10
+	VPTERNLOGQ         $0xea, Z1, Z2, Z10
+	VADDPD.RZ_SAE      Z10, Z8, K1, Z8
+	VPSLLVQ            Z0, Z13, Z13
+	VPANDQ             Z4, Z13, Z13
+	VPORQ              Z5, Z13, Z13
+	VPADDQ             Z13, Z8, Z8
 	VPANDQ             Z6, Z8, Z8
-	VSUBPD             Z11, Z8, K1, Z8
+	VSUBPD             Z10, Z8, K1, Z8
 	ADDQ               $0x00000040, DI
 	ADDQ               $0x00000020, DX
 	ADDQ               $0x02, R9
 	CMPQ               R9, R8
 	JLT                term
 	VMOVUPD            640(CX), Z10
-	VPXORQ             Z13, Z13, Z13
 	VPXORQ             Z14, Z14, Z14
+	VPXORQ             Z15, Z15, Z15
 	VCMPPD             $0x05, 1344(CX), Z9, K1
 	VPMOVM2Q           K1, Z9
 	VORPD              Z9, Z7, Z7
 	VORPD              Z9, Z8, Z8
-	VFMADD231PD        Z13, Z7, Z14
+	VFMADD231PD        Z14, Z7, Z15
 	VMULPD             Z10, Z7, Z7
-	VADDPD             Z13, Z7, Z7
-	VFMADD231PD        Z13, Z8, Z14
+	VADDPD             Z14, Z7, Z7
+	VFMADD231PD        Z14, Z8, Z15
 	VMULPD             Z10, Z8, Z8
-	VADDPD             Z13, Z8, Z8
+	VADDPD             Z14, Z8, Z8
 	CMPQ               48(SP), $0x00
 	JNE                narrow
 	MOVQ               16(SP), DX
@@ -3296,7 +3296,7 @@ narrow:
 	MOVQ      DX, 48(SP)
 
 stored:
-	VCMPPD $0x03, Z14, Z14, K1
+	VCMPPD $0x03, Z15, Z15, K1
 	KMOVW  K1, DX
 	TESTL  DX, DX
 	MOVQ   24(SP), DX
@@ -3378,96 +3378,102 @@ group:
 	XORQ         R11, R11
 	VBROADCASTSD (BX)(R11*8), Z18
 	VPBROADCASTD (DI)(R11*4), Z19
-	VMULPD       (R9), Z18, Z22
-	VANDPD       Z4, Z22, Z23
-	VMAXPD       Z3, Z23, Z23
-	VMULPD       64(R9), Z18, Z18
-	VFMADD231PD  Z1, Z23, Z22
-	VANDPD       Z4, Z18, Z28
-	VFNMADD231PD Z1, Z23, Z22
-	VMAXPD       Z3, Z28, Z28
-	VFMADD231PD  Z2, Z22, Z9
-	VBROADCASTSD 8(BX)(R11*8), Z26
-	VPBROADCASTD 4(DI)(R11*4), Z22
-	VMULPD       (R9), Z26, Z20
-	VFMADD231PD  Z1, Z28, Z18
-	VANDPD       Z8, Z9, Z27
-	VANDPD       Z4, Z20, Z25
-	VFNMADD231PD Z1, Z28, Z18
-	VMAXPD       Z27, Z17, Z17
-	VMAXPD       Z3, Z25, Z25
-	VFMADD231PD  Z2, Z18, Z10
-	VMULPD       64(R9), Z26, Z27
-	VPMOVZXDQ    (DX), Z24
-	VFMADD231PD  Z1, Z25, Z20
-	VANDPD       Z8, Z10, Z18
-	VANDPD       Z4, Z27, Z28
-	VPMADDWD     Z24, Z19, Z24
-	VFNMADD231PD Z1, Z25, Z20
-	VMAXPD       Z18, Z17, Z17
-	VMAXPD       Z3, Z28, Z28
-	VPSLLVQ      Z0, Z24, Z24
-	VFMADD231PD  Z2, Z20, Z11
-	VBROADCASTSD (SI)(R11*8), Z25
-	VPBROADCASTD (R8)(R11*4), Z20
-	VMULPD       (R9), Z25, Z18
+	VPMOVZXDQ    (DX), Z21
+	VPMADDWD     Z21, Z19, Z21
+	VMULPD       (R9), Z18, Z20
+	VANDPD       Z4, Z20, Z22
 	VPMOVZXDQ    32(DX), Z23
-	VFMADD231PD  Z1, Z28, Z27
-	VPANDQ       Z5, Z24, Z24
-	VANDPD       Z8, Z11, Z26
-	VANDPD       Z4, Z18, Z21
+	VMAXPD       Z3, Z22, Z22
 	VPMADDWD     Z23, Z19, Z23
-	VFNMADD231PD Z1, Z28, Z27
-	VPORQ        Z6, Z24, Z24
-	VMAXPD       Z26, Z17, Z17
-	VMAXPD       Z3, Z21, Z21
-	VPSLLVQ      Z0, Z23, Z23
-	VFMADD231PD  Z2, Z27, Z12
-	VMULPD       64(R9), Z25, Z27
-	VPADDQ       Z24, Z9, Z9
-	VPMOVZXDQ    (DX), Z24
-	VFMADD231PD  Z1, Z21, Z18
-	VPANDQ       Z5, Z23, Z23
-	VANDPD       Z8, Z12, Z19
-	VANDPD       Z4, Z27, Z28
-	VPANDQ       Z7, Z9, Z9
-	VPMADDWD     Z24, Z22, Z24
-	VFNMADD231PD Z1, Z21, Z18
-	VPORQ        Z6, Z23, Z23
+	VFMADD231PD  Z1, Z22, Z20
+	VMULPD       64(R9), Z18, Z19
+	VFNMADD231PD Z1, Z22, Z20
+	VANDPD       Z4, Z19, Z18
+	VBROADCASTSD 8(BX)(R11*8), Z24
+	VPBROADCASTD 4(DI)(R11*4), Z26
+	VPMOVZXDQ    (DX), Z22
+	VFMADD231PD  Z2, Z20, Z9
+	VMAXPD       Z3, Z18, Z18
+	VPMADDWD     Z22, Z26, Z22
+	VANDPD       Z8, Z9, Z20
+	VFMADD231PD  Z1, Z18, Z19
+	VMULPD       (R9), Z24, Z25
+	VMAXPD       Z20, Z17, Z17
+	VFNMADD231PD Z1, Z18, Z19
+	VANDPD       Z4, Z25, Z20
+	VPMOVZXDQ    32(DX), Z18
+	VPSLLVQ      Z0, Z21, Z21
+	VFMADD231PD  Z2, Z19, Z10
+	VMAXPD       Z3, Z20, Z20
+	VPMADDWD     Z18, Z26, Z18
+	VPANDQ       Z5, Z21, Z21
+	VANDPD       Z8, Z10, Z19
+	VFMADD231PD  Z1, Z20, Z25
+	VMULPD       64(R9), Z24, Z27
+	VPORQ        Z6, Z21, Z21
 	VMAXPD       Z19, Z17, Z17
-	VMAXPD       Z3, Z28, Z28
-	VPSLLVQ      Z0, Z24, Z24
-	VFMADD231PD  Z2, Z18, Z13
-	VBROADCASTSD 8(SI)(R11*8), Z25
-	VPBROADCASTD 4(R8)(R11*4), Z21
-	VMULPD       (R9), Z25, Z18
-	VPADDQ       Z23, Z10, Z10
-	VPMOVZXDQ    32(DX), Z23
-	VFMADD231PD  Z1, Z28, Z27
-	VPANDQ       Z5, Z24, Z24
-	VANDPD       Z8, Z13, Z26
-	VANDPD       Z4, Z18, Z19
-	VPANDQ       Z7, Z10, Z10
-	VPMADDWD     Z23, Z22, Z23
-	VFNMADD231PD Z1, Z28, Z27
-	VPORQ        Z6, Z24, Z24
-	VMAXPD       Z26, Z17, Z17
-	VMAXPD       Z3, Z19, Z19
+	VFNMADD231PD Z1, Z20, Z25
+	VANDPD       Z4, Z27, Z24
+	VBROADCASTSD (SI)(R11*8), Z19
+	VPBROADCASTD (R8)(R11*4), Z26
+	VPMOVZXDQ    (DX), Z20
+	VPADDQ       Z21, Z9, Z9
 	VPSLLVQ      Z0, Z23, Z23
-	VFMADD231PD  Z2, Z27, Z14
-	VMULPD       64(R9), Z25, Z27
-	VPADDQ       Z24, Z11, Z11
-	VPMOVZXDQ    (DX), Z24
-	VFMADD231PD  Z1, Z19, Z18
+	VFMADD231PD  Z2, Z25, Z11
+	VMAXPD       Z3, Z24, Z24
+	VPMADDWD     Z20, Z26, Z20
+	VPANDQ       Z7, Z9, Z9
 	VPANDQ       Z5, Z23, Z23
-	VANDPD       Z8, Z14, Z22
-	VANDPD       Z4, Z27, Z28
-	VPANDQ       Z7, Z11, Z11
-	VPMADDWD     Z24, Z20, Z24
-	VFNMADD231PD Z1, Z19, Z18
+	VANDPD       Z8, Z11, Z25
+	VFMADD231PD  Z1, Z24, Z27
+	VMULPD       (R9), Z19, Z21
 	VPORQ        Z6, Z23, Z23
-	VMAXPD       Z22, Z17, Z17
-	VMAXPD       Z3, Z28, Z28
+	VMAXPD       Z25, Z17, Z17
+	VFNMADD231PD Z1, Z24, Z27
+	VANDPD       Z4, Z21, Z25
+	VPMOVZXDQ    32(DX), Z24
+	VPADDQ       Z23, Z10, Z10
+	VPSLLVQ      Z0, Z22, Z22
+	VFMADD231PD  Z2, Z27, Z12
+	VMAXPD       Z3, Z25, Z25
+	VPMADDWD     Z24, Z26, Z24
+	VPANDQ       Z7, Z10, Z10
+	VPANDQ       Z5, Z22, Z22
+	VANDPD       Z8, Z12, Z23
+	VFMADD231PD  Z1, Z25, Z21
+	VMULPD       64(R9), Z19, Z26
+	VPORQ        Z6, Z22, Z22
+	VMAXPD       Z23, Z17, Z17
+	VFNMADD231PD Z1, Z25, Z21
+	VANDPD       Z4, Z26, Z27
+	VBROADCASTSD 8(SI)(R11*8), Z19
+	VPBROADCASTD 4(R8)(R11*4), Z23
+	VPMOVZXDQ    (DX), Z25
+	VPADDQ       Z22, Z11, Z11
+	VPSLLVQ      Z0, Z18, Z18
+	VFMADD231PD  Z2, Z21, Z13
+	VMAXPD       Z3, Z27, Z27
+	VPMADDWD     Z25, Z23, Z25
+	VPANDQ       Z7, Z11, Z11
+	VPANDQ       Z5, Z18, Z18
+	VANDPD       Z8, Z13, Z21
+	VFMADD231PD  Z1, Z27, Z26
+	VMULPD       (R9), Z19, Z22
+	VPORQ        Z6, Z18, Z18
+	VMAXPD       Z21, Z17, Z17
+	VFNMADD231PD Z1, Z27, Z26
+	VANDPD       Z4, Z22, Z21
+	VPMOVZXDQ    32(DX), Z27
+	VPADDQ       Z18, Z12, Z12
+	VPSLLVQ      Z0, Z20, Z20
+	VFMADD231PD  Z2, Z26, Z14
+	VMAXPD       Z3, Z21, Z21
+	VPMADDWD     Z27, Z23, Z27
+	VPANDQ       Z7, Z12, Z12
+	VPANDQ       Z5, Z20, Z20
+	VANDPD       Z8, Z14, Z18
+	VFMADD231PD  Z1, Z21, Z22
+	VMULPD       64(R9), Z19, Z26
 	ADDQ         $0x00000080, R9
 	ADDQ         $0x00000040, DX
 	ADDQ         $0x02, R11
@@ -3475,134 +3481,134 @@ group:
 	JGE          last
 
 term:
-	VPSLLVQ      Z0, Z24, Z24
-	VFMADD231PD  Z2, Z18, Z15
+	VPORQ        Z6, Z20, Z20
+	VMAXPD       Z18, Z17, Z17
+	VFNMADD231PD Z1, Z21, Z22
+	VANDPD       Z4, Z26, Z23
 	VBROADCASTSD (BX)(R11*8), Z18
 	VPBROADCASTD (DI)(R11*4), Z19
-	VMULPD       (R9), Z18, Z22
-	VPADDQ       Z23, Z12, Z12
-	VPMOVZXDQ    32(DX), Z25
-	VFMADD231PD  Z1, Z28, Z27
-	VPANDQ       Z5, Z24, Z24
-	VANDPD       Z8, Z15, Z26
-	VANDPD       Z4, Z22, Z23
-	VPANDQ       Z7, Z12, Z12
-	VPMADDWD     Z25, Z20, Z25
-	VFNMADD231PD Z1, Z28, Z27
-	VPORQ        Z6, Z24, Z24
-	VMAXPD       Z26, Z17, Z17
+	VPMOVZXDQ    (DX), Z21
+	VPADDQ       Z20, Z13, Z13
+	VPSLLVQ      Z0, Z24, Z24
+	VFMADD231PD  Z2, Z22, Z15
 	VMAXPD       Z3, Z23, Z23
-	VPSLLVQ      Z0, Z25, Z25
-	VFMADD231PD  Z2, Z27, Z16
-	VMULPD       64(R9), Z18, Z18
-	VPADDQ       Z24, Z13, Z13
-	VPMOVZXDQ    (DX), Z24
-	VFMADD231PD  Z1, Z23, Z22
-	VPANDQ       Z5, Z25, Z25
-	VANDPD       Z8, Z16, Z20
-	VANDPD       Z4, Z18, Z28
+	VPMADDWD     Z21, Z19, Z21
 	VPANDQ       Z7, Z13, Z13
-	VPMADDWD     Z24, Z21, Z24
-	VFNMADD231PD Z1, Z23, Z22
-	VPORQ        Z6, Z25, Z25
-	VMAXPD       Z20, Z17, Z17
-	VMAXPD       Z3, Z28, Z28
-	VPSLLVQ      Z0, Z24, Z24
-	VFMADD231PD  Z2, Z22, Z9
-	VBROADCASTSD 8(BX)(R11*8), Z26
-	VPBROADCASTD 4(DI)(R11*4), Z22
-	VMULPD       (R9), Z26, Z20
-	VPADDQ       Z25, Z14, Z14
-	VPMOVZXDQ    32(DX), Z23
-	VFMADD231PD  Z1, Z28, Z18
 	VPANDQ       Z5, Z24, Z24
-	VANDPD       Z8, Z9, Z27
-	VANDPD       Z4, Z20, Z25
-	VPANDQ       Z7, Z14, Z14
-	VPMADDWD     Z23, Z21, Z23
-	VFNMADD231PD Z1, Z28, Z18
+	VANDPD       Z8, Z15, Z22
+	VFMADD231PD  Z1, Z23, Z26
+	VMULPD       (R9), Z18, Z20
 	VPORQ        Z6, Z24, Z24
-	VMAXPD       Z27, Z17, Z17
-	VMAXPD       Z3, Z25, Z25
-	VPSLLVQ      Z0, Z23, Z23
-	VFMADD231PD  Z2, Z18, Z10
-	VMULPD       64(R9), Z26, Z27
-	VPADDQ       Z24, Z15, Z15
-	VPMOVZXDQ    (DX), Z24
-	VFMADD231PD  Z1, Z25, Z20
-	VPANDQ       Z5, Z23, Z23
-	VANDPD       Z8, Z10, Z18
-	VANDPD       Z4, Z27, Z28
-	VPANDQ       Z7, Z15, Z15
-	VPMADDWD     Z24, Z19, Z24
-	VFNMADD231PD Z1, Z25, Z20
-	VPORQ        Z6, Z23, Z23
-	VMAXPD       Z18, Z17, Z17
-	VMAXPD       Z3, Z28, Z28
-	VPSLLVQ      Z0, Z24, Z24
-	VFMADD231PD  Z2, Z20, Z11
-	VBROADCASTSD (SI)(R11*8), Z25
-	VPBROADCASTD (R8)(R11*4), Z20
-	VMULPD       (R9), Z25, Z18
-	VPADDQ       Z23, Z16, Z16
-	VPMOVZXDQ    32(DX), Z23
-	VFMADD231PD  Z1, Z28, Z27
-	VPANDQ       Z5, Z24, Z24
-	VANDPD       Z8, Z11, Z26
-	VANDPD       Z4, Z18, Z21
-	VPANDQ       Z7, Z16, Z16
-	VPMADDWD     Z23, Z19, Z23
-	VFNMADD231PD Z1, Z28, Z27
-	VPORQ        Z6, Z24, Z24
-	VMAXPD       Z26, Z17, Z17
-	VMAXPD       Z3, Z21, Z21
-	VPSLLVQ      Z0, Z23, Z23
-	VFMADD231PD  Z2, Z27, Z12
-	VMULPD       64(R9), Z25, Z27
-	VPADDQ       Z24, Z9, Z9
-	VPMOVZXDQ    (DX), Z24
-	VFMADD231PD  Z1, Z21, Z18
-	VPANDQ       Z5, Z23, Z23
-	VANDPD       Z8, Z12, Z19
-	VANDPD       Z4, Z27, Z28
-	VPANDQ       Z7, Z9, Z9
-	VPMADDWD     Z24, Z22, Z24
-	VFNMADD231PD Z1, Z21, Z18
-	VPORQ        Z6, Z23, Z23
-	VMAXPD       Z19, Z17, Z17
-	VMAXPD       Z3, Z28, Z28
-	VPSLLVQ      Z0, Z24, Z24
-	VFMADD231PD  Z2, Z18, Z13
-	VBROADCASTSD 8(SI)(R11*8), Z25
-	VPBROADCASTD 4(R8)(R11*4), Z21
-	VMULPD       (R9), Z25, Z18
-	VPADDQ       Z23, Z10, Z10
-	VPMOVZXDQ    32(DX), Z23
-	VFMADD231PD  Z1, Z28, Z27
-	VPANDQ       Z5, Z24, Z24
-	VANDPD       Z8, Z13, Z26
-	VANDPD       Z4, Z18, Z19
-	VPANDQ       Z7, Z10, Z10
-	VPMADDWD     Z23, Z22, Z23
-	VFNMADD231PD Z1, Z28, Z27
-	VPORQ        Z6, Z24, Z24
-	VMAXPD       Z26, Z17, Z17
-	VMAXPD       Z3, Z19, Z19
-	VPSLLVQ      Z0, Z23, Z23
-	VFMADD231PD  Z2, Z27, Z14
-	VMULPD       64(R9), Z25, Z27
-	VPADDQ       Z24, Z11, Z11
-	VPMOVZXDQ    (DX), Z24
-	VFMADD231PD  Z1, Z19, Z18
-	VPANDQ       Z5, Z23, Z23
-	VANDPD       Z8, Z14, Z22
-	VANDPD       Z4, Z27, Z28
-	VPANDQ       Z7, Z11, Z11
-	VPMADDWD     Z24, Z20, Z24
-	VFNMADD231PD Z1, Z19, Z18
-	VPORQ        Z6, Z23, Z23
 	VMAXPD       Z22, Z17, Z17
-	VMAXPD       Z3, Z28, Z28
+	VFNMADD231PD Z1, Z23, Z26
+	VANDPD       Z4, Z20, Z22
+	VPMOVZXDQ    32(DX), Z23
+	VPADDQ       Z24, Z14, Z14
+	VPSLLVQ      Z0, Z25, Z25
+	VFMADD231PD  Z2, Z26, Z16
+	VMAXPD       Z3, Z22, Z22
+	VPMADDWD     Z23, Z19, Z23
+	VPANDQ       Z7, Z14, Z14
+	VPANDQ       Z5, Z25, Z25
+	VANDPD       Z8, Z16, Z24
+	VFMADD231PD  Z1, Z22, Z20
+	VMULPD       64(R9), Z18, Z19
+	VPORQ        Z6, Z25, Z25
+	VMAXPD       Z24, Z17, Z17
+	VFNMADD231PD Z1, Z22, Z20
+	VANDPD       Z4, Z19, Z18
+	VBROADCASTSD 8(BX)(R11*8), Z24
+	VPBROADCASTD 4(DI)(R11*4), Z26
+	VPMOVZXDQ    (DX), Z22
+	VPADDQ       Z25, Z15, Z15
+	VPSLLVQ      Z0, Z27, Z27
+	VFMADD231PD  Z2, Z20, Z9
+	VMAXPD       Z3, Z18, Z18
+	VPMADDWD     Z22, Z26, Z22
+	VPANDQ       Z7, Z15, Z15
+	VPANDQ       Z5, Z27, Z27
+	VANDPD       Z8, Z9, Z20
+	VFMADD231PD  Z1, Z18, Z19
+	VMULPD       (R9), Z24, Z25
+	VPORQ        Z6, Z27, Z27
+	VMAXPD       Z20, Z17, Z17
+	VFNMADD231PD Z1, Z18, Z19
+	VANDPD       Z4, Z25, Z20
+	VPMOVZXDQ    32(DX), Z18
+	VPADDQ       Z27, Z16, Z16
+	VPSLLVQ      Z0, Z21, Z21
+	VFMADD231PD  Z2, Z19, Z10
+	VMAXPD       Z3, Z20, Z20
+	VPMADDWD     Z18, Z26, Z18
+	VPANDQ       Z7, Z16, Z16
+	VPANDQ       Z5, Z21, Z21
+	VANDPD       Z8, Z10, Z19
+	VFMADD231PD  Z1, Z20, Z25
+	VMULPD       64(R9), Z24, Z27
+	VPORQ        Z6, Z21, Z21
+	VMAXPD       Z19, Z17, Z17
+	VFNMADD231PD Z1, Z20, Z25
+	VANDPD       Z4, Z27, Z24
+	VBROADCASTSD (SI)(R11*8), Z19
+	VPBROADCASTD (R8)(R11*4), Z26
+	VPMOVZXDQ    (DX), Z20
+	VPADDQ       Z21, Z9, Z9
+	VPSLLVQ      Z0, Z23, Z23
+	VFMADD231PD  Z2, Z25, Z11
+	VMAXPD       Z3, Z24, Z24
+	VPMADDWD     Z20, Z26, Z20
+	VPANDQ       Z7, Z9, Z9
+	VPANDQ       Z5, Z23, Z23
+	VANDPD       Z8, Z11, Z25
+	VFMADD231PD  Z1, Z24, Z27
+	VMULPD       (R9), Z19, Z21
+	VPORQ        Z6, Z23, Z23
+	VMAXPD       Z25, Z17, Z17
+	VFNMADD231PD Z1, Z24, Z27
+	VANDPD       Z4, Z21, Z25
+	VPMOVZXDQ    32(DX), Z24
+	VPADDQ       Z23, Z10, Z10
+	VPSLLVQ      Z0, Z22, Z22
+	VFMADD231PD  Z2, Z27, Z12
+	VMAXPD       Z3, Z25, Z25
+	VPMADDWD     Z24, Z26, Z24
+	VPANDQ       Z7, Z10, Z10
+	VPANDQ       Z5, Z22, Z22
+	VANDPD       Z8, Z12, Z23
+	VFMADD231PD  Z1, Z25, Z21
+	VMULPD       64(R9), Z19, Z26
+	VPORQ        Z6, Z22, Z22
+	VMAXPD       Z23, Z17, Z17
+	VFNMADD231PD Z1, Z25, Z21
+	VANDPD       Z4, Z26, Z27
+	VBROADCASTSD 8(SI)(R11*8), Z19
+	VPBROADCASTD 4(R8)(R11*4), Z23
+	VPMOVZXDQ    (DX), Z25
+	VPADDQ       Z22, Z11, Z11
+	VPSLLVQ      Z0, Z18, Z18
+	VFMADD231PD  Z2, Z21, Z13
+	VMAXPD       Z3, Z27, Z27
+	VPMADDWD     Z25, Z23, Z25
+	VPANDQ       Z7, Z11, Z11
+	VPANDQ       Z5, Z18, Z18
+	VANDPD       Z8, Z13, Z21
+	VFMADD231PD  Z1, Z27, Z26
+	VMULPD       (R9), Z19, Z22
+	VPORQ        Z6, Z18, Z18
+	VMAXPD       Z21, Z17, Z17
+	VFNMADD231PD Z1, Z27, Z26
+	VANDPD       Z4, Z22, Z21
+	VPMOVZXDQ    32(DX), Z27
+	VPADDQ       Z18, Z12, Z12
+	VPSLLVQ      Z0, Z20, Z20
+	VFMADD231PD  Z2, Z26, Z14
+	VMAXPD       Z3, Z21, Z21
+	VPMADDWD     Z27, Z23, Z27
+	VPANDQ       Z7, Z12, Z12
+	VPANDQ       Z5, Z20, Z20
+	VANDPD       Z8, Z14, Z18
+	VFMADD231PD  Z1, Z21, Z22
+	VMULPD       64(R9), Z19, Z26
 	ADDQ         $0x00000080, R9
 	ADDQ         $0x00000040, DX
 	ADDQ         $0x02, R11
@@ -3610,45 +3616,39 @@ term:
 	JLT          term
 
 last:
+	VPORQ        Z6, Z20, Z20
+	VMAXPD       Z18, Z17, Z17
+	VFNMADD231PD Z1, Z21, Z22
+	VANDPD       Z4, Z26, Z23
+	VPADDQ       Z20, Z13, Z13
 	VPSLLVQ      Z0, Z24, Z24
-	VFMADD231PD  Z2, Z18, Z15
-	VPADDQ       Z23, Z12, Z12
-	VPMOVZXDQ    32(DX), Z25
-	VFMADD231PD  Z1, Z28, Z27
-	VPANDQ       Z5, Z24, Z24
-	VANDPD       Z8, Z15, Z26
-	VPANDQ       Z7, Z12, Z12
-	VPMADDWD     Z25, Z20, Z25
-	VFNMADD231PD Z1, Z28, Z27
-	VPORQ        Z6, Z24, Z24
-	VMAXPD       Z26, Z17, Z17
-	VPSLLVQ      Z0, Z25, Z25
-	VFMADD231PD  Z2, Z27, Z16
-	VPADDQ       Z24, Z13, Z13
-	VPMOVZXDQ    (DX), Z24
-	VPANDQ       Z5, Z25, Z25
-	VANDPD       Z8, Z16, Z20
+	VFMADD231PD  Z2, Z22, Z15
+	VMAXPD       Z3, Z23, Z23
 	VPANDQ       Z7, Z13, Z13
-	VPMADDWD     Z24, Z21, Z24
-	VPORQ        Z6, Z25, Z25
-	VMAXPD       Z20, Z17, Z17
-	VPSLLVQ      Z0, Z24, Z24
-	VPADDQ       Z25, Z14, Z14
-	VPMOVZXDQ    32(DX), Z23
 	VPANDQ       Z5, Z24, Z24
-	VPANDQ       Z7, Z14, Z14
-	VPMADDWD     Z23, Z21, Z23
+	VANDPD       Z8, Z15, Z22
+	VFMADD231PD  Z1, Z23, Z26
 	VPORQ        Z6, Z24, Z24
-	VPSLLVQ      Z0, Z23, Z23
-	VPADDQ       Z24, Z15, Z15
-	VPANDQ       Z5, Z23, Z23
+	VMAXPD       Z22, Z17, Z17
+	VFNMADD231PD Z1, Z23, Z26
+	VPADDQ       Z24, Z14, Z14
+	VPSLLVQ      Z0, Z25, Z25
+	VFMADD231PD  Z2, Z26, Z16
+	VPANDQ       Z7, Z14, Z14
+	VPANDQ       Z5, Z25, Z25
+	VANDPD       Z8, Z16, Z24
+	VPORQ        Z6, Z25, Z25
+	VMAXPD       Z24, Z17, Z17
+	VPADDQ       Z25, Z15, Z15
+	VPSLLVQ      Z0, Z27, Z27
 	VPANDQ       Z7, Z15, Z15
-	VPORQ        Z6, Z23, Z23
-	VPADDQ       Z23, Z16, Z16
+	VPANDQ       Z5, Z27, Z27
+	VPORQ        Z6, Z27, Z27
+	VPADDQ       Z27, Z16, Z16
 	VPANDQ       Z7, Z16, Z16
 	VMOVUPD      640(CX), Z18
+	VPXORQ       Z28, Z28, Z28
 	VPXORQ       Z29, Z29, Z29
-	VPXORQ       Z30, Z30, Z30
 	VCMPPD       $0x05, 1344(CX), Z17, K1
 	VPMOVM2Q     K1, Z17
 	VORPD        Z17, Z9, Z9
@@ -3659,30 +3659,30 @@ last:
 	VORPD        Z17, Z14, Z14
 	VORPD        Z17, Z15, Z15
 	VORPD        Z17, Z16, Z16
-	VFMADD231PD  Z29, Z9, Z30
+	VFMADD231PD  Z28, Z9, Z29
 	VMULPD       Z18, Z9, Z9
-	VADDPD       Z29, Z9, Z9
-	VFMADD231PD  Z29, Z10, Z30
+	VADDPD       Z28, Z9, Z9
+	VFMADD231PD  Z28, Z10, Z29
 	VMULPD       Z18, Z10, Z10
-	VADDPD       Z29, Z10, Z10
-	VFMADD231PD  Z29, Z11, Z30
+	VADDPD       Z28, Z10, Z10
+	VFMADD231PD  Z28, Z11, Z29
 	VMULPD       Z18, Z11, Z11
-	VADDPD       Z29, Z11, Z11
-	VFMADD231PD  Z29, Z12, Z30
+	VADDPD       Z28, Z11, Z11
+	VFMADD231PD  Z28, Z12, Z29
 	VMULPD       Z18, Z12, Z12
-	VADDPD       Z29, Z12, Z12
-	VFMADD231PD  Z29, Z13, Z30
+	VADDPD       Z28, Z12, Z12
+	VFMADD231PD  Z28, Z13, Z29
 	VMULPD       Z18, Z13, Z13
-	VADDPD       Z29, Z13, Z13
-	VFMADD231PD  Z29, Z14, Z30
+	VADDPD       Z28, Z13, Z13
+	VFMADD231PD  Z28, Z14, Z29
 	VMULPD       Z18, Z14, Z14
-	VADDPD       Z29, Z14, Z14
-	VFMADD231PD  Z29, Z15, Z30
+	VADDPD       Z28, Z14, Z14
+	VFMADD231PD  Z28, Z15, Z29
 	VMULPD       Z18, Z15, Z15
-	VADDPD       Z29, Z15, Z15
-	VFMADD231PD  Z29, Z16, Z30
+	VADDPD       Z28, Z15, Z15
+	VFMADD231PD  Z28, Z16, Z29
 	VMULPD       Z18, Z16, Z16
-	VADDPD       Z29, Z16, Z16
+	VADDPD       Z28, Z16, Z16
 	CMPQ         48(SP), $0x00
 	JNE          narrow
 	MOVQ         16(SP), DX
@@ -3728,7 +3728,7 @@ narrow:
 	MOVQ      DX, 48(SP)
 
 stored:
-	VCMPPD $0x03, Z30, Z30, K1
+	VCMPPD $0x03, Z29, Z29, K1
 	KMOVW  K1, DX
 	TESTL  DX, DX
 	MOVQ   24(SP), DX
@@ -3800,67 +3800,67 @@ group:
 term:
 	VBROADCASTSD (BX)(R9*8), Z14
 	VPBROADCASTD (SI)(R9*4), Z15
+	VPMOVZXDQ    (DX), Z17
+	VPMADDWD     Z17, Z15, Z17
 	VMULPD       (DI), Z14, Z16
-	VANDPD       Z4, Z16, Z17
-	VMAXPD       Z3, Z17, Z17
-	VFMADD231PD  Z1, Z17, Z16
-	VFNMADD231PD Z1, Z17, Z16
+	VANDPD       Z4, Z16, Z18
+	VMAXPD       Z3, Z18, Z18
+	VFMADD231PD  Z1, Z18, Z16
+	VFNMADD231PD Z1, Z18, Z16
 	VFMADD231PD  Z2, Z16, Z9
 	VANDPD       Z8, Z9, Z16
 	VMAXPD       Z16, Z13, Z13
-	VPMOVZXDQ    (DX), Z16
-	VPMADDWD     Z16, Z15, Z16
-	VPSLLVQ      Z0, Z16, Z16
-	VPANDQ       Z5, Z16, Z16
-	VPORQ        Z6, Z16, Z16
-	VPADDQ       Z16, Z9, Z9
+	VPSLLVQ      Z0, Z17, Z17
+	VPANDQ       Z5, Z17, Z17
+	VPORQ        Z6, Z17, Z17
+	VPADDQ       Z17, Z9, Z9
 	VPANDQ       Z7, Z9, Z9
+	VPMOVZXDQ    32(DX), Z16
+	VPMADDWD     Z16, Z15, Z16
 	VMULPD       64(DI), Z14, Z14
-	VANDPD       Z4, Z14, Z16
-	VMAXPD       Z3, Z16, Z16
-	VFMADD231PD  Z1, Z16, Z14
-	VFNMADD231PD Z1, Z16, Z14
+	VANDPD       Z4, Z14, Z15
+	VMAXPD       Z3, Z15, Z15
+	VFMADD231PD  Z1, Z15, Z14
+	VFNMADD231PD Z1, Z15, Z14
 	VFMADD231PD  Z2, Z14, Z10
 	VANDPD       Z8, Z10, Z14
 	VMAXPD       Z14, Z13, Z13
-	VPMOVZXDQ    32(DX), Z14
-	VPMADDWD     Z14, Z15, Z14
-	VPSLLVQ      Z0, Z14, Z14
-	VPANDQ       Z5, Z14, Z14
-	VPORQ        Z6, Z14, Z14
-	VPADDQ       Z14, Z10, Z10
-	VPANDQ       Z7, Z10, Z10
-	VBROADCASTSD 8(BX)(R9*8), Z14
-	VPBROADCASTD 4(SI)(R9*4), Z15
-	VMULPD       (DI), Z14, Z16
-	VANDPD       Z4, Z16, Z17
-	VMAXPD       Z3, Z17, Z17
-	VFMADD231PD  Z1, Z17, Z16
-	VFNMADD231PD Z1, Z17, Z16
-	VFMADD231PD  Z2, Z16, Z11
-	VANDPD       Z8, Z11, Z16
-	VMAXPD       Z16, Z13, Z13
-	VPMOVZXDQ    (DX), Z16
-	VPMADDWD     Z16, Z15, Z16
 	VPSLLVQ      Z0, Z16, Z16
 	VPANDQ       Z5, Z16, Z16
 	VPORQ        Z6, Z16, Z16
-	VPADDQ       Z16, Z11, Z11
+	VPADDQ       Z16, Z10, Z10
+	VPANDQ       Z7, Z10, Z10
+	VBROADCASTSD 8(BX)(R9*8), Z14
+	VPBROADCASTD 4(SI)(R9*4), Z15
+	VPMOVZXDQ    (DX), Z17
+	VPMADDWD     Z17, Z15, Z17
+	VMULPD       (DI), Z14, Z16
+	VANDPD       Z4, Z16, Z18
+	VMAXPD       Z3, Z18, Z18
+	VFMADD231PD  Z1, Z18, Z16
+	VFNMADD231PD Z1, Z18, Z16
+	VFMADD231PD  Z2, Z16, Z11
+	VANDPD       Z8, Z11, Z16
+	VMAXPD       Z16, Z13, Z13
+	VPSLLVQ      Z0, Z17, Z17
+	VPANDQ       Z5, Z17, Z17
+	VPORQ        Z6, Z17, Z17
+	VPADDQ       Z17, Z11, Z11
 	VPANDQ       Z7, Z11, Z11
+	VPMOVZXDQ    32(DX), Z16
+	VPMADDWD     Z16, Z15, Z16
 	VMULPD       64(DI), Z14, Z14
-	VANDPD       Z4, Z14, Z16
-	VMAXPD       Z3, Z16, Z16
-	VFMADD231PD  Z1, Z16, Z14
-	VFNMADD231PD Z1, Z16, Z14
+	VANDPD       Z4, Z14, Z15
+	VMAXPD       Z3, Z15, Z15
+	VFMADD231PD  Z1, Z15, Z14
+	VFNMADD231PD Z1, Z15, Z14
 	VFMADD231PD  Z2, Z14, Z12
 	VANDPD       Z8, Z12, Z14
 	VMAXPD       Z14, Z13, Z13
-	VPMOVZXDQ    32(DX), Z14
-	VPMADDWD     Z14, Z15, Z14
-	VPSLLVQ      Z0, Z14, Z14
-	VPANDQ       Z5, Z14, Z14
-	VPORQ        Z6, Z14, Z14
-	VPADDQ       Z14, Z12, Z12
+	VPSLLVQ      Z0, Z16, Z16
+	VPANDQ       Z5, Z16, Z16
+	VPORQ        Z6, Z16, Z16
+	VPADDQ       Z16, Z12, Z12
 	VPANDQ       Z7, Z12, Z12
 	ADDQ         $0x00000080, DI
 	ADDQ         $0x00000040, DX
@@ -3868,26 +3868,26 @@ term:
 	CMPQ         R9, R8
 	JLT          term
 	VMOVUPD      640(CX), Z14
-	VPXORQ       Z18, Z18, Z18
 	VPXORQ       Z19, Z19, Z19
+	VPXORQ       Z20, Z20, Z20
 	VCMPPD       $0x05, 1344(CX), Z13, K1
 	VPMOVM2Q     K1, Z13
 	VORPD        Z13, Z9, Z9
 	VORPD        Z13, Z10, Z10
 	VORPD        Z13, Z11, Z11
 	VORPD        Z13, Z12, Z12
-	VFMADD231PD  Z18, Z9, Z19
+	VFMADD231PD  Z19, Z9, Z20
 	VMULPD       Z14, Z9, Z9
-	VADDPD       Z18, Z9, Z9
-	VFMADD231PD  Z18, Z10, Z19
+	VADDPD       Z19, Z9, Z9
+	VFMADD231PD  Z19, Z10, Z20
 	VMULPD       Z14, Z10, Z10
-	VADDPD       Z18, Z10, Z10
-	VFMADD231PD  Z18, Z11, Z19
+	VADDPD       Z19, Z10, Z10
+	VFMADD231PD  Z19, Z11, Z20
 	VMULPD       Z14, Z11, Z11
-	VADDPD       Z18, Z11, Z11
-	VFMADD231PD  Z18, Z12, Z19
+	VADDPD       Z19, Z11, Z11
+	VFMADD231PD  Z19, Z12, Z20
 	VMULPD       Z14, Z12, Z12
-	VADDPD       Z18, Z12, Z12
+	VADDPD       Z19, Z12, Z12
 	CMPQ         48(SP), $0x00
 	JNE          narrow
 	MOVQ         16(SP), DX
@@ -3917,7 +3917,7 @@ narrow:
 	MOVQ      DX, 48(SP)
 
 stored:
-	VCMPPD $0x03, Z19, Z19, K1
+	VCMPPD $0x03, Z20, Z20, K1
 	KMOVW  K1, DX
 	TESTL  DX, DX
 	MOVQ   24(SP), DX
@@ -4007,104 +4007,104 @@ group:
 	XORQ         R15, R15
 	VBROADCASTSD (BX)(R15*8), Z18
 	VPBROADCASTD (R9)(R15*4), Z19
-	VMULPD       (R13), Z18, Z18
-	VANDPD       Z4, Z18, Z23
-	VMAXPD       Z3, Z23, Z23
-	VBROADCASTSD 8(BX)(R15*8), Z20
-	VPBROADCASTD 4(R9)(R15*4), Z25
-	VMULPD       (R13), Z20, Z20
-	VFMADD231PD  Z1, Z23, Z18
-	VANDPD       Z4, Z20, Z24
-	VFNMADD231PD Z1, Z23, Z18
-	VMAXPD       Z3, Z24, Z24
-	VFMADD231PD  Z2, Z18, Z9
-	VBROADCASTSD (SI)(R15*8), Z18
-	VPBROADCASTD (R10)(R15*4), Z21
-	VMULPD       (R13), Z18, Z18
-	VFMADD231PD  Z1, Z24, Z20
-	VANDPD       Z8, Z9, Z23
-	VANDPD       Z4, Z18, Z29
-	VFNMADD231PD Z1, Z24, Z20
-	VMAXPD       Z23, Z17, Z17
-	VMAXPD       Z3, Z29, Z29
-	VFMADD231PD  Z2, Z20, Z10
-	VBROADCASTSD 8(SI)(R15*8), Z20
-	VPBROADCASTD 4(R10)(R15*4), Z22
-	VMULPD       (R13), Z20, Z20
-	VPMOVZXDQ    (DX), Z23
-	VFMADD231PD  Z1, Z29, Z18
-	VANDPD       Z8, Z10, Z24
-	VANDPD       Z4, Z20, Z26
-	VPMADDWD     Z23, Z19, Z23
-	VFNMADD231PD Z1, Z29, Z18
-	VMAXPD       Z24, Z17, Z17
-	VMAXPD       Z3, Z26, Z26
-	VPSLLVQ      Z0, Z23, Z23
-	VFMADD231PD  Z2, Z18, Z11
-	VBROADCASTSD (DI)(R15*8), Z19
-	VPBROADCASTD (R11)(R15*4), Z18
+	VPMOVZXDQ    (DX), Z20
+	VPMADDWD     Z20, Z19, Z20
+	VMULPD       (R13), Z18, Z24
+	VBROADCASTSD 8(BX)(R15*8), Z19
+	VPBROADCASTD 4(R9)(R15*4), Z21
+	VPMOVZXDQ    (DX), Z18
+	VANDPD       Z4, Z24, Z22
+	VPMADDWD     Z18, Z21, Z18
+	VMAXPD       Z3, Z22, Z22
 	VMULPD       (R13), Z19, Z19
-	VPMOVZXDQ    (DX), Z24
-	VFMADD231PD  Z1, Z26, Z20
-	VPANDQ       Z5, Z23, Z23
-	VANDPD       Z8, Z11, Z29
-	VANDPD       Z4, Z19, Z30
-	VPMADDWD     Z24, Z25, Z24
-	VFNMADD231PD Z1, Z26, Z20
-	VPORQ        Z6, Z23, Z23
-	VMAXPD       Z29, Z17, Z17
-	VMAXPD       Z3, Z30, Z30
-	VPSLLVQ      Z0, Z24, Z24
-	VFMADD231PD  Z2, Z20, Z12
-	VBROADCASTSD 8(DI)(R15*8), Z25
-	VPBROADCASTD 4(R11)(R15*4), Z20
-	VMULPD       (R13), Z25, Z25
-	VPADDQ       Z23, Z9, Z9
+	VFMADD231PD  Z1, Z22, Z24
+	VBROADCASTSD (SI)(R15*8), Z21
+	VPBROADCASTD (R10)(R15*4), Z27
 	VPMOVZXDQ    (DX), Z26
-	VFMADD231PD  Z1, Z30, Z19
-	VPANDQ       Z5, Z24, Z24
-	VANDPD       Z8, Z12, Z23
-	VANDPD       Z4, Z25, Z29
-	VPANDQ       Z7, Z9, Z9
-	VPMADDWD     Z26, Z21, Z26
-	VFNMADD231PD Z1, Z30, Z19
-	VPORQ        Z6, Z24, Z24
-	VMAXPD       Z23, Z17, Z17
-	VMAXPD       Z3, Z29, Z29
-	VPSLLVQ      Z0, Z26, Z26
-	VFMADD231PD  Z2, Z19, Z13
-	VBROADCASTSD (R8)(R15*8), Z19
-	VPBROADCASTD (R12)(R15*4), Z21
-	VMULPD       (R13), Z19, Z19
-	VPADDQ       Z24, Z10, Z10
+	VANDPD       Z4, Z19, Z23
+	VFNMADD231PD Z1, Z22, Z24
+	VPMADDWD     Z26, Z27, Z26
+	VMAXPD       Z3, Z23, Z23
+	VFMADD231PD  Z2, Z24, Z9
+	VMULPD       (R13), Z21, Z24
+	VFMADD231PD  Z1, Z23, Z19
+	VBROADCASTSD 8(SI)(R15*8), Z22
+	VPBROADCASTD 4(R10)(R15*4), Z27
+	VPMOVZXDQ    (DX), Z21
+	VANDPD       Z8, Z9, Z25
+	VANDPD       Z4, Z24, Z31
+	VFNMADD231PD Z1, Z23, Z19
+	VPMADDWD     Z21, Z27, Z21
+	VMAXPD       Z25, Z17, Z17
+	VMAXPD       Z3, Z31, Z31
+	VFMADD231PD  Z2, Z19, Z10
+	VMULPD       (R13), Z22, Z19
+	VPSLLVQ      Z0, Z20, Z20
+	VFMADD231PD  Z1, Z31, Z24
+	VBROADCASTSD (DI)(R15*8), Z23
+	VPBROADCASTD (R11)(R15*4), Z25
+	VPMOVZXDQ    (DX), Z22
+	VANDPD       Z8, Z10, Z27
+	VANDPD       Z4, Z19, Z28
+	VPANDQ       Z5, Z20, Z20
+	VFNMADD231PD Z1, Z31, Z24
+	VPMADDWD     Z22, Z25, Z22
+	VMAXPD       Z27, Z17, Z17
+	VMAXPD       Z3, Z28, Z28
+	VPORQ        Z6, Z20, Z20
+	VFMADD231PD  Z2, Z24, Z11
+	VMULPD       (R13), Z23, Z24
+	VPSLLVQ      Z0, Z18, Z18
+	VFMADD231PD  Z1, Z28, Z19
+	VBROADCASTSD 8(DI)(R15*8), Z25
+	VPBROADCASTD 4(R11)(R15*4), Z27
 	VPMOVZXDQ    (DX), Z23
-	VFMADD231PD  Z1, Z29, Z25
+	VPADDQ       Z20, Z9, Z9
+	VANDPD       Z8, Z11, Z20
+	VANDPD       Z4, Z24, Z31
+	VPANDQ       Z5, Z18, Z18
+	VFNMADD231PD Z1, Z28, Z19
+	VPMADDWD     Z23, Z27, Z23
+	VPANDQ       Z7, Z9, Z9
+	VMAXPD       Z20, Z17, Z17
+	VMAXPD       Z3, Z31, Z31
+	VPORQ        Z6, Z18, Z18
+	VFMADD231PD  Z2, Z19, Z12
+	VMULPD       (R13), Z25, Z19
+	VPSLLVQ      Z0, Z26, Z26
+	VFMADD231PD  Z1, Z31, Z24
+	VBROADCASTSD (R8)(R15*8), Z20
+	VPBROADCASTD (R12)(R15*4), Z27
+	VPMOVZXDQ    (DX), Z25
+	VPADDQ       Z18, Z10, Z10
+	VANDPD       Z8, Z12, Z28
+	VANDPD       Z4, Z19, Z18
 	VPANDQ       Z5, Z26, Z26
-	VANDPD       Z8, Z13, Z24
-	VANDPD       Z4, Z19, Z30
+	VFNMADD231PD Z1, Z31, Z24
+	VPMADDWD     Z25, Z27, Z25
 	VPANDQ       Z7, Z10, Z10
-	VPMADDWD     Z23, Z22, Z23
-	VFNMADD231PD Z1, Z29, Z25
+	VMAXPD       Z28, Z17, Z17
+	VMAXPD       Z3, Z18, Z18
 	VPORQ        Z6, Z26, Z26
-	VMAXPD       Z24, Z17, Z17
-	VMAXPD       Z3, Z30, Z30
-	VPSLLVQ      Z0, Z23, Z23
-	VFMADD231PD  Z2, Z25, Z14
-	VBROADCASTSD 8(R8)(R15*8), Z24
-	VPBROADCASTD 4(R12)(R15*4), Z22
-	VMULPD       (R13), Z24, Z25
+	VFMADD231PD  Z2, Z24, Z13
+	VMULPD       (R13), Z20, Z24
+	VPSLLVQ      Z0, Z21, Z21
+	VFMADD231PD  Z1, Z18, Z19
+	VBROADCASTSD 8(R8)(R15*8), Z20
+	VPBROADCASTD 4(R12)(R15*4), Z27
+	VPMOVZXDQ    (DX), Z28
 	VPADDQ       Z26, Z11, Z11
-	VPMOVZXDQ    (DX), Z24
-	VFMADD231PD  Z1, Z30, Z19
-	VPANDQ       Z5, Z23, Z23
-	VANDPD       Z8, Z14, Z29
-	VANDPD       Z4, Z25, Z26
+	VANDPD       Z8, Z13, Z31
+	VANDPD       Z4, Z24, Z26
+	VPANDQ       Z5, Z21, Z21
+	VFNMADD231PD Z1, Z18, Z19
+	VPMADDWD     Z28, Z27, Z28
 	VPANDQ       Z7, Z11, Z11
-	VPMADDWD     Z24, Z18, Z24
-	VFNMADD231PD Z1, Z30, Z19
-	VPORQ        Z6, Z23, Z23
-	VMAXPD       Z29, Z17, Z17
+	VMAXPD       Z31, Z17, Z17
 	VMAXPD       Z3, Z26, Z26
+	VPORQ        Z6, Z21, Z21
+	VFMADD231PD  Z2, Z19, Z14
+	VMULPD       (R13), Z20, Z27
 	ADDQ         $0x00000040, R13
 	ADDQ         $0x00000020, DX
 	ADDQ         $0x02, R15
@@ -4112,142 +4112,142 @@ group:
 	JGE          last
 
 term:
-	VPSLLVQ      Z0, Z24, Z24
-	VFMADD231PD  Z2, Z19, Z15
+	VPSLLVQ      Z0, Z22, Z22
+	VFMADD231PD  Z1, Z26, Z24
 	VBROADCASTSD (BX)(R15*8), Z18
 	VPBROADCASTD (R9)(R15*4), Z19
-	VMULPD       (R13), Z18, Z18
-	VPADDQ       Z23, Z12, Z12
-	VPMOVZXDQ    (DX), Z29
-	VFMADD231PD  Z1, Z26, Z25
-	VPANDQ       Z5, Z24, Z24
-	VANDPD       Z8, Z15, Z30
-	VANDPD       Z4, Z18, Z23
+	VPMOVZXDQ    (DX), Z20
+	VPADDQ       Z21, Z12, Z12
+	VANDPD       Z8, Z14, Z21
+	VANDPD       Z4, Z27, Z31
+	VPANDQ       Z5, Z22, Z22
+	VFNMADD231PD Z1, Z26, Z24
+	VPMADDWD     Z20, Z19, Z20
 	VPANDQ       Z7, Z12, Z12
-	VPMADDWD     Z29, Z20, Z29
-	VFNMADD231PD Z1, Z26, Z25
-	VPORQ        Z6, Z24, Z24
-	VMAXPD       Z30, Z17, Z17
-	VMAXPD       Z3, Z23, Z23
-	VPSLLVQ      Z0, Z29, Z29
-	VFMADD231PD  Z2, Z25, Z16
-	VBROADCASTSD 8(BX)(R15*8), Z20
-	VPBROADCASTD 4(R9)(R15*4), Z25
-	VMULPD       (R13), Z20, Z20
-	VPADDQ       Z24, Z13, Z13
-	VPMOVZXDQ    (DX), Z26
-	VFMADD231PD  Z1, Z23, Z18
-	VPANDQ       Z5, Z29, Z29
-	VANDPD       Z8, Z16, Z30
-	VANDPD       Z4, Z20, Z24
+	VMAXPD       Z21, Z17, Z17
+	VMAXPD       Z3, Z31, Z31
+	VPORQ        Z6, Z22, Z22
+	VFMADD231PD  Z2, Z24, Z15
+	VMULPD       (R13), Z18, Z24
+	VPSLLVQ      Z0, Z23, Z23
+	VFMADD231PD  Z1, Z31, Z27
+	VBROADCASTSD 8(BX)(R15*8), Z19
+	VPBROADCASTD 4(R9)(R15*4), Z21
+	VPMOVZXDQ    (DX), Z18
+	VPADDQ       Z22, Z13, Z13
+	VANDPD       Z8, Z15, Z26
+	VANDPD       Z4, Z24, Z22
+	VPANDQ       Z5, Z23, Z23
+	VFNMADD231PD Z1, Z31, Z27
+	VPMADDWD     Z18, Z21, Z18
 	VPANDQ       Z7, Z13, Z13
-	VPMADDWD     Z26, Z21, Z26
-	VFNMADD231PD Z1, Z23, Z18
-	VPORQ        Z6, Z29, Z29
-	VMAXPD       Z30, Z17, Z17
-	VMAXPD       Z3, Z24, Z24
-	VPSLLVQ      Z0, Z26, Z26
-	VFMADD231PD  Z2, Z18, Z9
-	VBROADCASTSD (SI)(R15*8), Z18
-	VPBROADCASTD (R10)(R15*4), Z21
-	VMULPD       (R13), Z18, Z18
-	VPADDQ       Z29, Z14, Z14
-	VPMOVZXDQ    (DX), Z30
-	VFMADD231PD  Z1, Z24, Z20
-	VPANDQ       Z5, Z26, Z26
-	VANDPD       Z8, Z9, Z23
-	VANDPD       Z4, Z18, Z29
-	VPANDQ       Z7, Z14, Z14
-	VPMADDWD     Z30, Z22, Z30
-	VFNMADD231PD Z1, Z24, Z20
-	VPORQ        Z6, Z26, Z26
-	VMAXPD       Z23, Z17, Z17
-	VMAXPD       Z3, Z29, Z29
-	VPSLLVQ      Z0, Z30, Z30
-	VFMADD231PD  Z2, Z20, Z10
-	VBROADCASTSD 8(SI)(R15*8), Z20
-	VPBROADCASTD 4(R10)(R15*4), Z22
-	VMULPD       (R13), Z20, Z20
-	VPADDQ       Z26, Z15, Z15
-	VPMOVZXDQ    (DX), Z23
-	VFMADD231PD  Z1, Z29, Z18
-	VPANDQ       Z5, Z30, Z30
-	VANDPD       Z8, Z10, Z24
-	VANDPD       Z4, Z20, Z26
-	VPANDQ       Z7, Z15, Z15
-	VPMADDWD     Z23, Z19, Z23
-	VFNMADD231PD Z1, Z29, Z18
-	VPORQ        Z6, Z30, Z30
-	VMAXPD       Z24, Z17, Z17
-	VMAXPD       Z3, Z26, Z26
-	VPSLLVQ      Z0, Z23, Z23
-	VFMADD231PD  Z2, Z18, Z11
-	VBROADCASTSD (DI)(R15*8), Z19
-	VPBROADCASTD (R11)(R15*4), Z18
-	VMULPD       (R13), Z19, Z19
-	VPADDQ       Z30, Z16, Z16
-	VPMOVZXDQ    (DX), Z24
-	VFMADD231PD  Z1, Z26, Z20
-	VPANDQ       Z5, Z23, Z23
-	VANDPD       Z8, Z11, Z29
-	VANDPD       Z4, Z19, Z30
-	VPANDQ       Z7, Z16, Z16
-	VPMADDWD     Z24, Z25, Z24
-	VFNMADD231PD Z1, Z26, Z20
+	VMAXPD       Z26, Z17, Z17
+	VMAXPD       Z3, Z22, Z22
 	VPORQ        Z6, Z23, Z23
-	VMAXPD       Z29, Z17, Z17
-	VMAXPD       Z3, Z30, Z30
-	VPSLLVQ      Z0, Z24, Z24
-	VFMADD231PD  Z2, Z20, Z12
-	VBROADCASTSD 8(DI)(R15*8), Z25
-	VPBROADCASTD 4(R11)(R15*4), Z20
-	VMULPD       (R13), Z25, Z25
-	VPADDQ       Z23, Z9, Z9
+	VFMADD231PD  Z2, Z27, Z16
+	VMULPD       (R13), Z19, Z19
+	VPSLLVQ      Z0, Z25, Z25
+	VFMADD231PD  Z1, Z22, Z24
+	VBROADCASTSD (SI)(R15*8), Z21
+	VPBROADCASTD (R10)(R15*4), Z27
 	VPMOVZXDQ    (DX), Z26
-	VFMADD231PD  Z1, Z30, Z19
-	VPANDQ       Z5, Z24, Z24
-	VANDPD       Z8, Z12, Z23
-	VANDPD       Z4, Z25, Z29
-	VPANDQ       Z7, Z9, Z9
-	VPMADDWD     Z26, Z21, Z26
-	VFNMADD231PD Z1, Z30, Z19
-	VPORQ        Z6, Z24, Z24
-	VMAXPD       Z23, Z17, Z17
-	VMAXPD       Z3, Z29, Z29
-	VPSLLVQ      Z0, Z26, Z26
-	VFMADD231PD  Z2, Z19, Z13
-	VBROADCASTSD (R8)(R15*8), Z19
-	VPBROADCASTD (R12)(R15*4), Z21
-	VMULPD       (R13), Z19, Z19
-	VPADDQ       Z24, Z10, Z10
+	VPADDQ       Z23, Z14, Z14
+	VANDPD       Z8, Z16, Z31
+	VANDPD       Z4, Z19, Z23
+	VPANDQ       Z5, Z25, Z25
+	VFNMADD231PD Z1, Z22, Z24
+	VPMADDWD     Z26, Z27, Z26
+	VPANDQ       Z7, Z14, Z14
+	VMAXPD       Z31, Z17, Z17
+	VMAXPD       Z3, Z23, Z23
+	VPORQ        Z6, Z25, Z25
+	VFMADD231PD  Z2, Z24, Z9
+	VMULPD       (R13), Z21, Z24
+	VPSLLVQ      Z0, Z28, Z28
+	VFMADD231PD  Z1, Z23, Z19
+	VBROADCASTSD 8(SI)(R15*8), Z22
+	VPBROADCASTD 4(R10)(R15*4), Z27
+	VPMOVZXDQ    (DX), Z21
+	VPADDQ       Z25, Z15, Z15
+	VANDPD       Z8, Z9, Z25
+	VANDPD       Z4, Z24, Z31
+	VPANDQ       Z5, Z28, Z28
+	VFNMADD231PD Z1, Z23, Z19
+	VPMADDWD     Z21, Z27, Z21
+	VPANDQ       Z7, Z15, Z15
+	VMAXPD       Z25, Z17, Z17
+	VMAXPD       Z3, Z31, Z31
+	VPORQ        Z6, Z28, Z28
+	VFMADD231PD  Z2, Z19, Z10
+	VMULPD       (R13), Z22, Z19
+	VPSLLVQ      Z0, Z20, Z20
+	VFMADD231PD  Z1, Z31, Z24
+	VBROADCASTSD (DI)(R15*8), Z23
+	VPBROADCASTD (R11)(R15*4), Z25
+	VPMOVZXDQ    (DX), Z22
+	VPADDQ       Z28, Z16, Z16
+	VANDPD       Z8, Z10, Z27
+	VANDPD       Z4, Z19, Z28
+	VPANDQ       Z5, Z20, Z20
+	VFNMADD231PD Z1, Z31, Z24
+	VPMADDWD     Z22, Z25, Z22
+	VPANDQ       Z7, Z16, Z16
+	VMAXPD       Z27, Z17, Z17
+	VMAXPD       Z3, Z28, Z28
+	VPORQ        Z6, Z20, Z20
+	VFMADD231PD  Z2, Z24, Z11
+	VMULPD       (R13), Z23, Z24
+	VPSLLVQ      Z0, Z18, Z18
+	VFMADD231PD  Z1, Z28, Z19
+	VBROADCASTSD 8(DI)(R15*8), Z25
+	VPBROADCASTD 4(R11)(R15*4), Z27
 	VPMOVZXDQ    (DX), Z23
-	VFMADD231PD  Z1, Z29, Z25
+	VPADDQ       Z20, Z9, Z9
+	VANDPD       Z8, Z11, Z20
+	VANDPD       Z4, Z24, Z31
+	VPANDQ       Z5, Z18, Z18
+	VFNMADD231PD Z1, Z28, Z19
+	VPMADDWD     Z23, Z27, Z23
+	VPANDQ       Z7, Z9, Z9
+	VMAXPD       Z20, Z17, Z17
+	VMAXPD       Z3, Z31, Z31
+	VPORQ        Z6, Z18, Z18
+	VFMADD231PD  Z2, Z19, Z12
+	VMULPD       (R13), Z25, Z19
+	VPSLLVQ      Z0, Z26, Z26
+	VFMADD231PD  Z1, Z31, Z24
+	VBROADCASTSD (R8)(R15*8), Z20
+	VPBROADCASTD (R12)(R15*4), Z27
+	VPMOVZXDQ    (DX), Z25
+	VPADDQ       Z18, Z10, Z10
+	VANDPD       Z8, Z12, Z28
+	VANDPD       Z4, Z19, Z18
 	VPANDQ       Z5, Z26, Z26
-	VANDPD       Z8, Z13, Z24
-	VANDPD       Z4, Z19, Z30
+	VFNMADD231PD Z1, Z31, Z24
+	VPMADDWD     Z25, Z27, Z25
 	VPANDQ       Z7, Z10, Z10
-	VPMADDWD     Z23, Z22, Z23
-	VFNMADD231PD Z1, Z29, Z25
+	VMAXPD       Z28, Z17, Z17
+	VMAXPD       Z3, Z18, Z18
 	VPORQ        Z6, Z26, Z26
-	VMAXPD       Z24, Z17, Z17
-	VMAXPD       Z3, Z30, Z30
-	VPSLLVQ      Z0, Z23, Z23
-	VFMADD231PD  Z2, Z25, Z14
-	VBROADCASTSD 8(R8)(R15*8), Z24
-	VPBROADCASTD 4(R12)(R15*4), Z22
-	VMULPD       (R13), Z24, Z25
+	VFMADD231PD  Z2, Z24, Z13
+	VMULPD       (R13), Z20, Z24
+	VPSLLVQ      Z0, Z21, Z21
+	VFMADD231PD  Z1, Z18, Z19
+	VBROADCASTSD 8(R8)(R15*8), Z20
+	VPBROADCASTD 4(R12)(R15*4), Z27
+	VPMOVZXDQ    (DX), Z28
 	VPADDQ       Z26, Z11, Z11
-	VPMOVZXDQ    (DX), Z24
-	VFMADD231PD  Z1, Z30, Z19
-	VPANDQ       Z5, Z23, Z23
-	VANDPD       Z8, Z14, Z29
-	VANDPD       Z4, Z25, Z26
+	VANDPD       Z8, Z13, Z31
+	VANDPD       Z4, Z24, Z26
+	VPANDQ       Z5, Z21, Z21
+	VFNMADD231PD Z1, Z18, Z19
+	VPMADDWD     Z28, Z27, Z28
 	VPANDQ       Z7, Z11, Z11
-	VPMADDWD     Z24, Z18, Z24
-	VFNMADD231PD Z1, Z30, Z19
-	VPORQ        Z6, Z23, Z23
-	VMAXPD       Z29, Z17, Z17
+	VMAXPD       Z31, Z17, Z17
 	VMAXPD       Z3, Z26, Z26
+	VPORQ        Z6, Z21, Z21
+	VFMADD231PD  Z2, Z19, Z14
+	VMULPD       (R13), Z20, Z27
 	ADDQ         $0x00000040, R13
 	ADDQ         $0x00000020, DX
 	ADDQ         $0x02, R15
@@ -4255,45 +4255,45 @@ term:
 	JLT          term
 
 last:
-	VPSLLVQ      Z0, Z24, Z24
-	VFMADD231PD  Z2, Z19, Z15
-	VPADDQ       Z23, Z12, Z12
-	VPMOVZXDQ    (DX), Z29
-	VFMADD231PD  Z1, Z26, Z25
-	VPANDQ       Z5, Z24, Z24
-	VANDPD       Z8, Z15, Z30
+	VPSLLVQ      Z0, Z22, Z22
+	VFMADD231PD  Z1, Z26, Z24
+	VPADDQ       Z21, Z12, Z12
+	VANDPD       Z8, Z14, Z21
+	VANDPD       Z4, Z27, Z31
+	VPANDQ       Z5, Z22, Z22
+	VFNMADD231PD Z1, Z26, Z24
 	VPANDQ       Z7, Z12, Z12
-	VPMADDWD     Z29, Z20, Z29
-	VFNMADD231PD Z1, Z26, Z25
-	VPORQ        Z6, Z24, Z24
-	VMAXPD       Z30, Z17, Z17
-	VPSLLVQ      Z0, Z29, Z29
-	VFMADD231PD  Z2, Z25, Z16
-	VPADDQ       Z24, Z13, Z13
-	VPMOVZXDQ    (DX), Z26
-	VPANDQ       Z5, Z29, Z29
-	VANDPD       Z8, Z16, Z30
+	VMAXPD       Z21, Z17, Z17
+	VMAXPD       Z3, Z31, Z31
+	VPORQ        Z6, Z22, Z22
+	VFMADD231PD  Z2, Z24, Z15
+	VPSLLVQ      Z0, Z23, Z23
+	VFMADD231PD  Z1, Z31, Z27
+	VPADDQ       Z22, Z13, Z13
+	VANDPD       Z8, Z15, Z26
+	VPANDQ       Z5, Z23, Z23
+	VFNMADD231PD Z1, Z31, Z27
 	VPANDQ       Z7, Z13, Z13
-	VPMADDWD     Z26, Z21, Z26
-	VPORQ        Z6, Z29, Z29
-	VMAXPD       Z30, Z17, Z17
-	VPSLLVQ      Z0, Z26, Z26
-	VPADDQ       Z29, Z14, Z14
-	VPMOVZXDQ    (DX), Z30
-	VPANDQ       Z5, Z26, Z26
+	VMAXPD       Z26, Z17, Z17
+	VPORQ        Z6, Z23, Z23
+	VFMADD231PD  Z2, Z27, Z16
+	VPSLLVQ      Z0, Z25, Z25
+	VPADDQ       Z23, Z14, Z14
+	VANDPD       Z8, Z16, Z31
+	VPANDQ       Z5, Z25, Z25
 	VPANDQ       Z7, Z14, Z14
-	VPMADDWD     Z30, Z22, Z30
-	VPORQ        Z6, Z26, Z26
-	VPSLLVQ      Z0, Z30, Z30
-	VPADDQ       Z26, Z15, Z15
-	VPANDQ       Z5, Z30, Z30
+	VMAXPD       Z31, Z17, Z17
+	VPORQ        Z6, Z25, Z25
+	VPSLLVQ      Z0, Z28, Z28
+	VPADDQ       Z25, Z15, Z15
+	VPANDQ       Z5, Z28, Z28
 	VPANDQ       Z7, Z15, Z15
-	VPORQ        Z6, Z30, Z30
-	VPADDQ       Z30, Z16, Z16
+	VPORQ        Z6, Z28, Z28
+	VPADDQ       Z28, Z16, Z16
 	VPANDQ       Z7, Z16, Z16
 	VMOVUPD      640(CX), Z18
-	VPXORQ       Z27, Z27, Z27
-	VPXORQ       Z28, Z28, Z28
+	VPXORQ       Z29, Z29, Z29
+	VPXORQ       Z30, Z30, Z30
 	VCMPPD       $0x05, 1344(CX), Z17, K1
 	VPMOVM2Q     K1, Z17
 	VORPD        Z17, Z9, Z9
@@ -4304,30 +4304,30 @@ last:
 	VORPD        Z17, Z14, Z14
 	VORPD        Z17, Z15, Z15
 	VORPD        Z17, Z16, Z16
-	VFMADD231PD  Z27, Z9, Z28
+	VFMADD231PD  Z29, Z9, Z30
 	VMULPD       Z18, Z9, Z9
-	VADDPD       Z27, Z9, Z9
-	VFMADD231PD  Z27, Z10, Z28
+	VADDPD       Z29, Z9, Z9
+	VFMADD231PD  Z29, Z10, Z30
 	VMULPD       Z18, Z10, Z10
-	VADDPD       Z27, Z10, Z10
-	VFMADD231PD  Z27, Z11, Z28
+	VADDPD       Z29, Z10, Z10
+	VFMADD231PD  Z29, Z11, Z30
 	VMULPD       Z18, Z11, Z11
-	VADDPD       Z27, Z11, Z11
-	VFMADD231PD  Z27, Z12, Z28
+	VADDPD       Z29, Z11, Z11
+	VFMADD231PD  Z29, Z12, Z30
 	VMULPD       Z18, Z12, Z12
-	VADDPD       Z27, Z12, Z12
-	VFMADD231PD  Z27, Z13, Z28
+	VADDPD       Z29, Z12, Z12
+	VFMADD231PD  Z29, Z13, Z30
 	VMULPD       Z18, Z13, Z13
-	VADDPD       Z27, Z13, Z13
-	VFMADD231PD  Z27, Z14, Z28
+	VADDPD       Z29, Z13, Z13
+	VFMADD231PD  Z29, Z14, Z30
 	VMULPD       Z18, Z14, Z14
-	VADDPD       Z27, Z14, Z14
-	VFMADD231PD  Z27, Z15, Z28
+	VADDPD       Z29, Z14, Z14
+	VFMADD231PD  Z29, Z15, Z30
 	VMULPD       Z18, Z15, Z15
-	VADDPD       Z27, Z15, Z15
-	VFMADD231PD  Z27, Z16, Z28
+	VADDPD       Z29, Z15, Z15
+	VFMADD231PD  Z29, Z16, Z30
 	VMULPD       Z18, Z16, Z16
-	VADDPD       Z27, Z16, Z16
+	VADDPD       Z29, Z16, Z16
 	CMPQ         48(SP), $0x00
 	JNE          narrow
 	MOVQ         16(SP), DX
@@ -4381,7 +4381,7 @@ narrow:
 	MOVQ      DX, 48(SP)
 
 stored:
-	VCMPPD $0x03, Z28, Z28, K1
+	VCMPPD $0x03, Z30, Z30, K1
 	KMOVW  K1, DX
 	TESTL  DX, DX
 	MOVQ   24(SP), DX
@@ -4449,37 +4449,37 @@ group:
 term:
 	VBROADCASTSD (BX)(R9*8), Z12
 	VPBROADCASTD (SI)(R9*4), Z13
+	VPMOVZXDQ    (DX), Z14
+	VPMADDWD     Z14, Z13, Z14
 	VMULPD       (DI), Z12, Z12
-	VANDPD       Z4, Z12, Z16
-	VMAXPD       Z3, Z16, Z16
-	VFMADD231PD  Z1, Z16, Z12
-	VFNMADD231PD Z1, Z16, Z12
+	VANDPD       Z4, Z12, Z13
+	VMAXPD       Z3, Z13, Z13
+	VFMADD231PD  Z1, Z13, Z12
+	VFNMADD231PD Z1, Z13, Z12
 	VFMADD231PD  Z2, Z12, Z9
 	VANDPD       Z8, Z9, Z12
 	VMAXPD       Z12, Z11, Z11
-	VPMOVZXDQ    (DX), Z12
-	VPMADDWD     Z12, Z13, Z12
-	VPSLLVQ      Z0, Z12, Z12
-	VPANDQ       Z5, Z12, Z12
-	VPORQ        Z6, Z12, Z12
-	VPADDQ       Z12, Z9, Z9
+	VPSLLVQ      Z0, Z14, Z14
+	VPANDQ       Z5, Z14, Z14
+	VPORQ        Z6, Z14, Z14
+	VPADDQ       Z14, Z9, Z9
 	VPANDQ       Z7, Z9, Z9
 	VBROADCASTSD 8(BX)(R9*8), Z12
 	VPBROADCASTD 4(SI)(R9*4), Z13
+	VPMOVZXDQ    (DX), Z14
+	VPMADDWD     Z14, Z13, Z14
 	VMULPD       (DI), Z12, Z12
-	VANDPD       Z4, Z12, Z16
-	VMAXPD       Z3, Z16, Z16
-	VFMADD231PD  Z1, Z16, Z12
-	VFNMADD231PD Z1, Z16, Z12
+	VANDPD       Z4, Z12, Z13
+	VMAXPD       Z3, Z13, Z13
+	VFMADD231PD  Z1, Z13, Z12
+	VFNMADD231PD Z1, Z13, Z12
 	VFMADD231PD  Z2, Z12, Z10
 	VANDPD       Z8, Z10, Z12
 	VMAXPD       Z12, Z11, Z11
-	VPMOVZXDQ    (DX), Z12
-	VPMADDWD     Z12, Z13, Z12
-	VPSLLVQ      Z0, Z12, Z12
-	VPANDQ       Z5, Z12, Z12
-	VPORQ        Z6, Z12, Z12
-	VPADDQ       Z12, Z10, Z10
+	VPSLLVQ      Z0, Z14, Z14
+	VPANDQ       Z5, Z14, Z14
+	VPORQ        Z6, Z14, Z14
+	VPADDQ       Z14, Z10, Z10
 	VPANDQ       Z7, Z10, Z10
 	ADDQ         $0x00000040, DI
 	ADDQ         $0x00000020, DX
@@ -4487,18 +4487,18 @@ term:
 	CMPQ         R9, R8
 	JLT          term
 	VMOVUPD      640(CX), Z12
-	VPXORQ       Z14, Z14, Z14
 	VPXORQ       Z15, Z15, Z15
+	VPXORQ       Z16, Z16, Z16
 	VCMPPD       $0x05, 1344(CX), Z11, K1
 	VPMOVM2Q     K1, Z11
 	VORPD        Z11, Z9, Z9
 	VORPD        Z11, Z10, Z10
-	VFMADD231PD  Z14, Z9, Z15
+	VFMADD231PD  Z15, Z9, Z16
 	VMULPD       Z12, Z9, Z9
-	VADDPD       Z14, Z9, Z9
-	VFMADD231PD  Z14, Z10, Z15
+	VADDPD       Z15, Z9, Z9
+	VFMADD231PD  Z15, Z10, Z16
 	VMULPD       Z12, Z10, Z10
-	VADDPD       Z14, Z10, Z10
+	VADDPD       Z15, Z10, Z10
 	CMPQ         48(SP), $0x00
 	JNE          narrow
 	MOVQ         16(SP), DX
@@ -4522,7 +4522,7 @@ narrow:
 	MOVQ      DX, 48(SP)
 
 stored:
-	VCMPPD $0x03, Z15, Z15, K1
+	VCMPPD $0x03, Z16, Z16, K1
 	KMOVW  K1, DX
 	TESTL  DX, DX
 	MOVQ   24(SP), DX

@@ -208,6 +208,24 @@ func oddAVX2R8V1(t *Tile[float32])
 //go:noescape
 func oddAVX2R2V1(t *Tile[float32])
 
+// oddRoundedAVX2R2V3 is the loop s = S(s + R(a b)), R and S nearest-even, S of the exact sum, terms ascending.
+// It keeps a tile of 2 x 24 sums in registers.
+//
+//go:noescape
+func oddRoundedAVX2R2V3(t *Tile[float32])
+
+// oddRoundedAVX2R8V1 is the loop s = S(s + R(a b)), R and S nearest-even, S of the exact sum, terms ascending.
+// It keeps a tile of 8 x 8 sums in registers.
+//
+//go:noescape
+func oddRoundedAVX2R8V1(t *Tile[float32])
+
+// oddRoundedAVX2R2V1 is the loop s = S(s + R(a b)), R and S nearest-even, S of the exact sum, terms ascending.
+// It keeps a tile of 2 x 8 sums in registers.
+//
+//go:noescape
+func oddRoundedAVX2R2V1(t *Tile[float32])
+
 // stochasticAVX2R2V3 is the loop s = S(binary32(s + R(a b))), R nearest-even, S stochastic without subnormals, terms ascending.
 // It keeps a tile of 2 x 24 sums in registers.
 //

@@ -280,6 +280,30 @@ func oddAVX512R8V1(t *Tile[float32])
 //go:noescape
 func oddAVX512R2V1(t *Tile[float32])
 
+// oddRoundedAVX512R4V2 is the loop s = S(s + R(a b)), R and S nearest-even, S of the exact sum, terms ascending.
+// It keeps a tile of 4 x 32 sums in registers.
+//
+//go:noescape
+func oddRoundedAVX512R4V2(t *Tile[float32])
+
+// oddRoundedAVX512R2V2 is the loop s = S(s + R(a b)), R and S nearest-even, S of the exact sum, terms ascending.
+// It keeps a tile of 2 x 32 sums in registers.
+//
+//go:noescape
+func oddRoundedAVX512R2V2(t *Tile[float32])
+
+// oddRoundedAVX512R8V1 is the loop s = S(s + R(a b)), R and S nearest-even, S of the exact sum, terms ascending.
+// It keeps a tile of 8 x 16 sums in registers.
+//
+//go:noescape
+func oddRoundedAVX512R8V1(t *Tile[float32])
+
+// oddRoundedAVX512R2V1 is the loop s = S(s + R(a b)), R and S nearest-even, S of the exact sum, terms ascending.
+// It keeps a tile of 2 x 16 sums in registers.
+//
+//go:noescape
+func oddRoundedAVX512R2V1(t *Tile[float32])
+
 // stochasticAVX512R4V2 is the loop s = S(binary32(s + R(a b))), R nearest-even, S stochastic without subnormals, terms ascending.
 // It keeps a tile of 4 x 32 sums in registers.
 //

@@ -63,9 +63,23 @@ var constantFields = []field{
 	{"PreShift", vector},
 	{"BaseShift", vector},
 	{"WholeShift", vector},
-	{"QuantumStep", vector},
+	{"Quantum", vector},
 	{"Limit", vector},
 	{"Ones", vector},
+}
+
+// philoxFields are the fields of kernel.philoxArgs.
+var philoxFields = []field{
+	{"Dst", slice},
+	{"Blocks", word},
+	{"Width", word},
+	{"Lane", word},
+	{"First", word},
+	{"Step", word},
+	{"Site", word},
+	{"Phase", word},
+	{"Key0", word},
+	{"Key1", word},
 }
 
 // offset is the distance of a field from the start of its structure.
@@ -90,11 +104,21 @@ func signature(double bool) *gotypes.Signature {
 	return pointerSignature(name)
 }
 
+// pointerSignature is func(t *name).
 func pointerSignature(name string) *gotypes.Signature {
 	named := types.NewNamed(types.NewTypeName(token.NoPos, nil, name, nil), types.NewStruct(nil, nil), nil)
 	params := types.NewTuple(types.NewVar(token.NoPos, nil, "t", types.NewPointer(named)))
 	return gotypes.NewSignature(nil, types.NewSignatureType(nil, nil, nil, params, nil, false))
 }
+
+// declared is a stand-in for package kernel, with the types that signatures name.
+var declared = func() *types.Package {
+	p := types.NewPackage("kernel", "kernel")
+	name := types.NewTypeName(token.NoPos, p, "Constants", nil)
+	types.NewNamed(name, types.NewStruct(nil, nil), nil)
+	p.Scope().Insert(name)
+	return p
+}()
 
 // assertions renders constants that fail to compile as soon as a field of the
 // Go structure is not where the assembly reads it.
@@ -104,7 +128,7 @@ func assertions() string {
 	for _, s := range []struct {
 		kind   string
 		fields []field
-	}{{"Tile[float32]", tileFields}, {"Constants", constantFields}} {
+	}{{"Tile[float32]", tileFields}, {"Constants", constantFields}, {"philoxArgs", philoxFields}} {
 		for _, f := range s.fields {
 			at := offset(s.fields, f.name)
 			fmt.Fprintf(&b, "\t_ = uint(unsafe.Offsetof(%s{}.%s)-%d) + uint(%d-unsafe.Offsetof(%s{}.%s))\n",

@@ -36,6 +36,7 @@ import (
 	"log"
 	"os"
 	"path/filepath"
+	"strings"
 
 	"github.com/mmcloughlin/avo/build"
 	"github.com/mmcloughlin/avo/ir"
@@ -72,15 +73,51 @@ func generate(dir string) error {
 			}
 		}
 	}
+	for _, t := range targets {
+		if err := generateLoops(dir, t); err != nil {
+			return err
+		}
+	}
 	return os.WriteFile(filepath.Join(dir, "tables_amd64.go"), tables.source(), 0o644)
 }
 
-// narrowest finds the widest spacing up to the shape's that fits the registers, and
-// compiles with it.
-func narrowest(t target, m mode, s shape, vectors int, name string) (*ir.File, error) {
-	for ; s.spacing >= 0; s.spacing-- {
-		if f, err := compile(t, m, s, vectors, name); err == nil {
-			return f, nil
+// generateLoops writes the loops over slices of a target.
+func generateLoops(dir string, t target) error {
+	file := ir.NewFile()
+	add := func(generate func(*build.Context, string), name string) error {
+		c := build.NewContext()
+		generate(c, name)
+		f, err := compiled(c, t.zmm)
+		if err != nil {
+			return fmt.Errorf("%s: %w", name, err)
+		}
+		file.Sections = append(file.Sections, f.Sections...)
+		if len(f.Includes) > 0 {
+			file.Includes = f.Includes // textflag.h, where a function has data
+		}
+		return nil
+	}
+	p := philox{lanes: lanes{zmm: t.zmm}}
+	if err := add(p.generate, "philox"+t.name); err != nil {
+		return err
+	}
+	for _, l := range loops {
+		l.zmm = t.zmm
+		if err := add(l.generate, l.name+t.name); err != nil {
+			return err
+		}
+	}
+	return write(filepath.Join(dir, "loops_"+strings.ToLower(t.name)), file)
+}
+
+// fit compiles with the widest spacing and then the most constants in registers, up
+// to the shape's, that the registers hold.
+func fit(t target, m mode, s shape, vectors int, name string) (*ir.File, error) {
+	for kept := min(s.kept, len(m.constants)); kept >= 0; kept-- {
+		for spacing := s.spacing; spacing >= 0; spacing-- {
+			if f, err := compile(t, m, shape{s.rows, kept, spacing}, vectors, name); err == nil {
+				return f, nil
+			}
 		}
 	}
 	return nil, fmt.Errorf("%s does not fit the registers", name)
@@ -100,6 +137,11 @@ func compile(t target, m mode, s shape, vectors int, name string) (*ir.File, err
 	if !g.generate(c, name) {
 		return nil, errors.New("spacing too wide")
 	}
+	return compiled(c, t.zmm)
+}
+
+// compiled allocates the registers of a context's function.
+func compiled(c *build.Context, zmm bool) (*ir.File, error) {
 	f, err := c.Result()
 	if err != nil {
 		return nil, err
@@ -107,7 +149,7 @@ func compile(t target, m mode, s shape, vectors int, name string) (*ir.File, err
 	if err := pass.Compile.Execute(f); err != nil {
 		return nil, err
 	}
-	if !t.zmm && beyond15(f) {
+	if !zmm && beyond15(f) {
 		return nil, errors.New("more than 16 vector registers")
 	}
 	return f, nil

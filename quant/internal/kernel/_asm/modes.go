@@ -91,6 +91,15 @@ var modes = []mode{
 		},
 	},
 	{
+		name: "oddRounded", doc: "the loop s = S(s + R(a b)), R and S nearest-even, S of the exact sum, terms ascending.",
+		constants: []string{"Grow", "SumGrow", "Rescale", "Least", "SumLeast", "ExponentMask", "Ones"},
+		step: func(g *tile, r, v int) chain {
+			p, s := g.reg(), g.sums[r][v]
+			rescale := chain{func() { g.mul(p, p, g.constant("Rescale")) }}
+			return join(g.multiply(p, r, v), g.nearest(p, "Least", "Grow"), rescale, g.plusOdd(s, p), g.nearest(s, "SumLeast", "SumGrow"))
+		},
+	},
+	{
 		name: "fused", doc: "the loop s = R(s + a b), R nearest-even of a sum exact in binary64, terms ascending.",
 		double: true, constants: []string{"SumGrow", "SumLeast", "ExponentMask"},
 		step: func(g *tile, r, v int) chain {
@@ -109,7 +118,7 @@ var modes = []mode{
 		constants: []string{"RandomShift", "Grow", "Rescale", "Keep", "RandomMask", "Least", "ExponentMask"}, random: true,
 		step: func(g *tile, r, v int) chain {
 			p, u, s := g.reg(), g.reg(), g.sums[r][v]
-			return join(g.multiply(p, r, v), g.nearest(p, "Least", "Grow"), g.plusRescaled(s, p), g.mix(u, r, v), g.stochastic(s, u))
+			return join(g.mix(u, r, v), g.multiply(p, r, v), g.nearest(p, "Least", "Grow"), g.plusRescaled(s, p), g.stochastic(s, u))
 		},
 	},
 	{
@@ -117,7 +126,7 @@ var modes = []mode{
 		constants: []string{"RandomShift", "Keep", "RandomMask"}, random: true,
 		step: func(g *tile, r, v int) chain {
 			u, s := g.reg(), g.sums[r][v]
-			return join(g.fuse(r, v), g.mix(u, r, v), g.stochastic(s, u))
+			return join(g.mix(u, r, v), g.fuse(r, v), g.stochastic(s, u))
 		},
 	},
 	{
@@ -125,7 +134,7 @@ var modes = []mode{
 		constants: careConstants, random: true,
 		step: func(g *tile, r, v int) chain {
 			u, s := g.reg(), g.sums[r][v]
-			return join(g.fuse(r, v), g.mix(u, r, v), g.stochasticCare(s, u))
+			return join(g.mix(u, r, v), g.fuse(r, v), g.stochasticCare(s, u))
 		},
 	},
 	{
@@ -133,7 +142,7 @@ var modes = []mode{
 		constants: append([]string{"Grow", "Rescale", "Least"}, careConstants...), random: true,
 		step: func(g *tile, r, v int) chain {
 			p, u, s := g.reg(), g.reg(), g.sums[r][v]
-			return join(g.multiply(p, r, v), g.nearest(p, "Least", "Grow"), g.plusRescaled(s, p), g.mix(u, r, v), g.stochasticCare(s, u))
+			return join(g.mix(u, r, v), g.multiply(p, r, v), g.nearest(p, "Least", "Grow"), g.plusRescaled(s, p), g.stochasticCare(s, u))
 		},
 	},
 	{
@@ -142,7 +151,7 @@ var modes = []mode{
 		constants: []string{"RandomShift", "SumLeast", "SignMask", "MagnitudeMask", "RandomMask", "RandomHalf", "Keep"},
 		step: func(g *tile, r, v int) chain {
 			u, s := g.reg(), g.sums[r][v]
-			return join(g.fuseTruncated(r, v), g.mix(u, r, v), g.stochasticWide(s, u))
+			return join(g.mix(u, r, v), g.fuseTruncated(r, v), g.stochasticWide(s, u))
 		},
 	},
 	{
@@ -151,7 +160,7 @@ var modes = []mode{
 		constants: []string{"RandomShift", "Grow", "Rescale", "Least", "ExponentMask", "RandomMask", "RandomHalf", "Keep", "MagnitudeMask"},
 		step: func(g *tile, r, v int) chain {
 			p, u, s := g.reg(), g.reg(), g.sums[r][v]
-			return join(g.multiply(p, r, v), g.nearest(p, "Least", "Grow"), g.plusRescaled(s, p), g.watch(s), g.mix(u, r, v), g.align(u), g.carry(s, u))
+			return join(g.mix(u, r, v), g.multiply(p, r, v), g.nearest(p, "Least", "Grow"), g.plusRescaled(s, p), g.watch(s), g.align(u), g.carry(s, u))
 		},
 	},
 	{
@@ -169,9 +178,21 @@ var modes = []mode{
 	},
 }
 
+// heads is the number of operations at the start of a chain that read the operands
+// of the term.
+func (m mode) heads() int {
+	switch {
+	case !m.random:
+		return 1
+	case m.double:
+		return 3
+	}
+	return 2
+}
+
 var careConstants = []string{
 	"RandomShift", "PreShift", "WholeShift", "ExponentMask", "SumLeast", "BaseShift",
-	"Fraction", "Implicit", "RandomHalf", "QuantumStep", "SignMask",
+	"Fraction", "Implicit", "RandomHalf", "Quantum", "SignMask",
 }
 
 func join(parts ...chain) chain {

@@ -61,7 +61,7 @@ func (t *table) add(file *ir.File, to target, m mode) error {
 		vectors := to.vectors(m, n == 1)
 		for _, s := range main.tails(n == 1) {
 			name := fmt.Sprintf("%s%sR%dV%d", m.name, to.name, s.rows, vectors)
-			f, err := narrowest(to, m, s, vectors, name)
+			f, err := fit(to, m, s, vectors, name)
 			if err != nil {
 				return err
 			}

@@ -25,11 +25,15 @@ type slotted struct {
 }
 
 // pipeline builds the schedule. It returns false where the spacing would let a
-// chain outlive the term after its own.
-func pipeline(chains []chain, spacing int) (schedule, bool) {
+// chain outlive the term after its own, or one of its first operations, the heads
+// that read the operands of the term, fall into the next.
+func pipeline(chains []chain, heads, spacing int) (schedule, bool) {
 	var s schedule
 	n := len(chains[0]) - 1
 	term := n * len(chains)
+	if (heads-1)*spacing >= n {
+		return s, false
+	}
 	for c, operations := range chains {
 		for i, emit := range operations {
 			slot := c*n + max(i-1, 0)*spacing

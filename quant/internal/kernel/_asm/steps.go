@@ -131,15 +131,16 @@ func (g *tile) stochastic(x, u reg.Register) chain {
 // |x| / quantum as a fixed-point number of r fraction bits (r + 1 where the
 // threshold is centred, the last for the half), plus U, floor, times the quantum.
 func (g *tile) stochasticCare(x, u reg.Register) chain {
-	e, shift, w := g.reg(), g.reg(), g.reg()
+	e, shift, w, top := g.reg(), g.reg(), g.reg(), g.reg()
 	return chain{
 		func() { g.and(e, x, g.constant("ExponentMask")) },
+		func() { g.VPMINUD(g.constant("Implicit"), e, top) }, // no bit for zero
 		func() { g.max(shift, e, g.constant("SumLeast")) },
 		func() { g.subInt(e, shift, e) }, // distance below the least binade
 		func() { g.VPSRLD(operand.Imm(23), e, e) },
 		func() { g.addInt(e, e, g.constant("BaseShift")) },
 		func() { g.andInt(w, x, g.constant("Fraction")) },
-		func() { g.orInt(w, w, g.constant("Implicit")) },
+		func() { g.orInt(w, w, top) },
 		func() { g.shiftLeft(w, w, g.constant("PreShift")) },
 		func() { g.shiftRight(w, w, e) },
 		func() { g.VPSLLD(operand.Imm(16), u, u) },
@@ -148,7 +149,7 @@ func (g *tile) stochasticCare(x, u reg.Register) chain {
 		func() { g.addInt(w, w, u) },
 		func() { g.shiftRight(w, w, g.constant("WholeShift")) },
 		func() { g.VCVTDQ2PS(w, w) },
-		func() { g.subInt(shift, shift, g.constant("QuantumStep")) },
+		func() { g.mul(w, w, g.constant("Quantum")) },
 		func() { g.mul(w, w, shift) },
 		func() { g.and(x, x, g.constant("SignMask")) },
 		func() { g.or(x, x, w) },

@@ -1,8 +1,6 @@
 package main
 
 import (
-	"strconv"
-
 	"github.com/mmcloughlin/avo/build"
 	"github.com/mmcloughlin/avo/operand"
 	"github.com/mmcloughlin/avo/reg"
@@ -58,7 +56,7 @@ func (g *tile) generate(c *build.Context, name string) bool {
 	g.Context = c
 	c.Function(name)
 	c.Pragma("noescape")
-	c.Doc(name+" is "+g.mode.doc, "It keeps a tile of "+strconv.Itoa(g.rows)+" x "+strconv.Itoa(g.width())+" sums in registers.")
+	c.Doc(name+" is "+g.mode.doc, "It keeps a tile of "+itoa(g.rows)+" x "+itoa(g.width())+" sums in registers.")
 	c.Signature(signature(g.double))
 	g.args = c.Load(c.Param("t"), c.GP64())
 	g.table = g.loadArg("C")
@@ -211,7 +209,7 @@ func (g *tile) terms() bool {
 			chains = append(chains, append(chain{func() { g.operands(r, v) }}, g.mode.step(g, r, v)...))
 		}
 	}
-	s, ok := pipeline(chains, g.spacing)
+	s, ok := pipeline(chains, g.mode.heads(), g.spacing)
 	if !ok {
 		return false
 	}

@@ -1,0 +1,204 @@
+package main
+
+import (
+	"strconv"
+	"strings"
+
+	"github.com/mmcloughlin/avo/attr"
+	"github.com/mmcloughlin/avo/build"
+	"github.com/mmcloughlin/avo/gotypes"
+	"github.com/mmcloughlin/avo/operand"
+	"github.com/mmcloughlin/avo/reg"
+)
+
+const readOnly = attr.RODATA | attr.NOPTR
+
+func itoa(n int) string { return strconv.Itoa(n) }
+
+// A loop is a function over slices of one length, a multiple of a register's lanes.
+type loop struct {
+	lanes
+	name, doc, signature string
+	emit                 func(g *loop)
+}
+
+func (g *loop) generate(c *build.Context, name string) {
+	g.Context = c
+	c.Function(name)
+	c.Pragma("noescape")
+	c.Doc(strings.Split(name+" "+g.doc, "\n")...)
+	s, err := gotypes.ParseSignatureInPackage(declared, g.signature)
+	if err != nil {
+		panic(err)
+	}
+	c.Signature(s)
+	g.emit(g)
+}
+
+// base loads the address of a slice argument.
+func (g *loop) base(name string) reg.Register {
+	return g.Load(g.Param(name).Base(), g.GP64())
+}
+
+// length loads the length of a slice argument.
+func (g *loop) length(name string) reg.Register {
+	return g.Load(g.Param(name).Len(), g.GP64())
+}
+
+// at is the element i of the slice at base.
+func (g *loop) at(base, i reg.Register, size int) operand.Mem {
+	return operand.Mem{Base: base, Index: i, Scale: uint8(size)}
+}
+
+// each runs body for i = 0, step, 2 step, ... below n.
+func (g *loop) each(n reg.Register, step int, body func(i reg.Register)) {
+	i := g.GP64()
+	g.XORQ(i, i)
+	g.Label("next")
+	body(i)
+	g.ADDQ(operand.Imm(uint64(step)), i)
+	g.CMPQ(i, n)
+	g.JLT(operand.LabelRef("next"))
+}
+
+// return_ ends the function.
+func (g *loop) end() {
+	g.VZEROUPPER()
+	g.RET()
+}
+
+// literal is a vector of one 32-bit value, in a register.
+func (g *loop) literal(v uint32) reg.VecVirtual {
+	bits, r, x := g.GP32(), g.reg(), g.XMM()
+	g.MOVL(operand.U32(v), bits)
+	g.VMOVD(bits, x)
+	g.VPBROADCASTD(x, r)
+	return r
+}
+
+// loops are the elementwise functions; their lengths must be multiples of 16 and
+// not zero.
+var loops = []loop{
+	{
+		name: "measure", signature: "func(x []float32, e *[48]uint32)",
+		doc: "gathers an extent lane by lane: e[0:16] bits that occur, e[16:32] greatest\nmagnitudes, e[32:48] least magnitudes less one.",
+		emit: func(g *loop) {
+			x, n := g.base("x"), g.length("x")
+			any, greatest, least := g.reg(), g.reg(), g.reg()
+			g.zero(any)
+			g.zero(greatest)
+			magnitude, ones := g.literal(1<<31-1), g.literal(1<<32-1)
+			g.VMOVUPS(ones, least)
+			g.each(n, g.bytes()/4, func(i reg.Register) {
+				v, w := g.reg(), g.reg()
+				g.load(v, g.at(x, i, 4))
+				g.orInt(any, any, v)
+				g.andInt(v, v, magnitude)
+				g.VPMAXUD(v, greatest, greatest)
+				g.addInt(w, v, ones)
+				g.VPMINUD(w, least, least)
+			})
+			e := g.Load(g.Param("e"), g.GP64())
+			for n, v := range []reg.Register{any, greatest, least} {
+				for at := 0; at < 64; at += g.bytes() {
+					g.store(operand.Mem{Base: e, Disp: 64*n + at}, v)
+				}
+			}
+			g.end()
+		},
+	},
+	{
+		name: "widen", signature: "func(dst []float64, src []float32)",
+		doc: "converts src to binary64.",
+		emit: func(g *loop) {
+			dst, src, n := g.base("dst"), g.base("src"), g.length("src")
+			g.each(n, g.bytes()/8, func(i reg.Register) {
+				v := g.reg()
+				g.VCVTPS2PD(g.at(src, i, 4), v)
+				g.VMOVUPD(v, g.at(dst, i, 8))
+			})
+			g.end()
+		},
+	},
+	{
+		name: "interleave", signature: "func(dst, first, second []float32, factor float32)",
+		doc: "writes first[k] factor and second[k] factor by turns to dst.",
+		emit: func(g *loop) {
+			dst, first, second, n := g.base("dst"), g.base("first"), g.base("second"), g.length("first")
+			factor := g.reg()
+			m, err := g.Param("factor").Resolve()
+			if err != nil {
+				panic(err)
+			}
+			g.spread(factor, m.Addr)
+			i := g.GP64()
+			g.XORQ(i, i)
+			g.Label("next")
+			// Halves of registers of 256 bits: the width at which lanes cross simply.
+			x, y, low, high := g.YMM(), g.YMM(), g.YMM(), g.YMM()
+			f := factor
+			g.VMULPS(g.at(first, i, 4), half(f, g.zmm), x)
+			g.VMULPS(g.at(second, i, 4), half(f, g.zmm), y)
+			g.VUNPCKLPS(y, x, low)
+			g.VUNPCKHPS(y, x, high)
+			g.VPERM2F128(operand.Imm(0x20), high, low, x)
+			g.VPERM2F128(operand.Imm(0x31), high, low, y)
+			g.VMOVUPS(x, g.at(dst, i, 8))
+			g.VMOVUPS(y, g.at(dst, i, 8).Offset(32))
+			g.ADDQ(operand.Imm(8), i)
+			g.CMPQ(i, n)
+			g.JLT(operand.LabelRef("next"))
+			g.end()
+		},
+	},
+	{
+		name: "addNative", signature: "func(total, chunk []float32)",
+		doc: "adds chunk to total.",
+		emit: func(g *loop) {
+			total, chunk, n := g.base("total"), g.base("chunk"), g.length("total")
+			g.each(n, g.bytes()/4, func(i reg.Register) {
+				v := g.reg()
+				g.load(v, g.at(total, i, 4))
+				g.add(v, v, g.at(chunk, i, 4))
+				g.store(g.at(total, i, 4), v)
+			})
+			g.end()
+		},
+	},
+	{
+		name: "addNearest", signature: "func(total, chunk []float32, c *Constants)",
+		doc: "is total = R(binary32(total + chunk)), R nearest-even to the grid of c's sums.",
+		emit: func(g *loop) {
+			total, chunk, n := g.base("total"), g.base("chunk"), g.length("total")
+			table := g.Load(g.Param("c"), g.GP64())
+			constant := func(name string) reg.VecVirtual {
+				r := g.reg()
+				g.load(r, operand.Mem{Base: table, Disp: offset(constantFields, name)})
+				return r
+			}
+			least, grow, mask := constant("SumLeast"), constant("SumGrow"), constant("ExponentMask")
+			scale, unscale := constant("Scale"), constant("Unscale")
+			g.each(n, g.bytes()/4, func(i reg.Register) {
+				v, e := g.reg(), g.reg()
+				g.load(v, g.at(total, i, 4))
+				g.mul(v, v, scale)
+				g.fma(v, scale, g.at(chunk, i, 4))
+				g.and(e, v, mask)
+				g.max(e, e, least)
+				g.fma(v, e, grow)
+				g.fnma(v, e, grow)
+				g.mul(v, v, unscale)
+				g.store(g.at(total, i, 4), v)
+			})
+			g.end()
+		},
+	},
+}
+
+// half is the low 256 bits of a register.
+func half(r reg.VecVirtual, zmm bool) reg.Register {
+	if zmm {
+		return r.AsY()
+	}
+	return r
+}
