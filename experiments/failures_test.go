@@ -29,15 +29,18 @@ func TestFailureWarnings(t *testing.T) {
 		{"one", []failure{{"a", 102, "no room"}}, []string{"a/102 failed: no room"}},
 		{"all that start from pretrainings", eight, []string{"40 runs failed because pretrain/100 to pretrain/107 failed: no room"}},
 		{
-			"a diverged pretraining", []failure{{"a", 101, "pretrain/101 diverged: loss is NaN"}, {"b", 101, "pretrain/101 diverged: loss is NaN"}},
+			"a diverged pretraining",
+			[]failure{{"a", 101, "pretrain/101 diverged: loss is NaN"}, {"b", 101, "pretrain/101 diverged: loss is NaN"}},
 			[]string{"2 runs failed because pretrain/101 diverged: loss is NaN"},
 		},
 		{
-			"two causes", []failure{{"b", 104, "no room"}, {"a", 102, "no room"}, {"a", 101, "panic: x"}, {"a", 101 + 2, "no room"}},
+			"two causes",
+			[]failure{{"b", 104, "no room"}, {"a", 102, "no room"}, {"a", 101, "panic: x"}, {"a", 101 + 2, "no room"}},
 			[]string{"b/104, a/102 and a/103 failed: no room", "a/101 failed: panic: x"},
 		},
 		{
-			"in rows", []failure{{"a", 7, "x"}, {"a", 3, "x"}, {"a", 4, "x"}, {"a", 5, "x"}, {"a", 8, "x"}},
+			"in rows",
+			[]failure{{"a", 7, "x"}, {"a", 3, "x"}, {"a", 4, "x"}, {"a", 5, "x"}, {"a", 8, "x"}},
 			[]string{"a/3 to a/5, a/7 and a/8 failed: x"},
 		},
 		{"another replicate's pretraining is no root", []failure{{"a", 1, "pretrain/2 failed: x"}}, []string{"a/1 failed: pretrain/2 failed: x"}},
