@@ -6,7 +6,7 @@ import "github.com/spf13/cobra"
 func verbs() []*cobra.Command {
 	return []*cobra.Command{
 		newRun(), newResolve(), newList(), newShow(), newVerdicts(), newReport(),
-		newNumber(), newRound(), newMatmul(), newSum(), newVectors(),
+		newNumber(), newRound(), newMatmul(), newSum(), newVectors(), newSelftest(),
 		newCost(),
 	}
 }
