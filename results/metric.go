@@ -9,11 +9,13 @@ import (
 // of it is better, and how it is read from an epoch.
 type Metric struct {
 	Name   string
-	Higher bool   // more is better
-	Data   string // "training", "validation" or "test": the examples it is measured on
-	Share  bool   // a share of one, printed per cent; its differences in percentage points
-	Unit   string // of a difference as it is printed, in the singular: "percentage point", "nat"
+	Higher bool    // more is better
+	Data   string  // "training", "validation" or "test": the examples it is measured on
+	Share  bool    // a share of one, printed per cent; its differences in percentage points
+	Unit   string  // of a difference as it is printed, in the singular: "percentage point", "nat"
+	Target float64 // of a metric that counts epochs to a target, else 0
 	read   func(*Epoch) float64
+	of     *Metric // what is to reach the target; nil: not a metric of epochs
 }
 
 // Units of differences; losses are cross-entropies with natural logarithms.
@@ -25,25 +27,28 @@ const (
 // metrics is the table of what a plan may claim something about. A new metric
 // is one more line.
 var metrics = []Metric{
-	{"test accuracy", true, "test", true, point, func(e *Epoch) float64 { return e.TestMetric }},
-	{"test loss", false, "test", false, nat, func(e *Epoch) float64 { return e.TestLoss }},
-	{"validation accuracy", true, "validation", true, point, func(e *Epoch) float64 { return e.ValidationMetric }},
-	{"validation loss", false, "validation", false, nat, func(e *Epoch) float64 { return e.ValidationLoss }},
-	{"training accuracy", true, "training", true, point, func(e *Epoch) float64 { return e.TrainMetric }},
-	{"training loss", false, "training", false, nat, func(e *Epoch) float64 { return e.TrainLoss }},
+	{Name: "test accuracy", Higher: true, Data: "test", Share: true, Unit: point, read: func(e *Epoch) float64 { return e.TestMetric }},
+	{Name: "test loss", Higher: false, Data: "test", Share: false, Unit: nat, read: func(e *Epoch) float64 { return e.TestLoss }},
+	{Name: "validation accuracy", Higher: true, Data: "validation", Share: true, Unit: point, read: func(e *Epoch) float64 { return e.ValidationMetric }},
+	{Name: "validation loss", Higher: false, Data: "validation", Share: false, Unit: nat, read: func(e *Epoch) float64 { return e.ValidationLoss }},
+	{Name: "training accuracy", Higher: true, Data: "training", Share: true, Unit: point, read: func(e *Epoch) float64 { return e.TrainMetric }},
+	{Name: "training loss", Higher: false, Data: "training", Share: false, Unit: nat, read: func(e *Epoch) float64 { return e.TrainLoss }},
 }
 
-// FindMetric returns the metric of that name.
+// FindMetric returns the metric of that name; besides those that MetricNames
+// lists, "epochs to test accuracy 0.9" and its like with any of them and any
+// target.
 func FindMetric(name string) (Metric, bool) {
+	name = strings.TrimSpace(name)
 	for _, m := range metrics {
-		if m.Name == strings.TrimSpace(name) {
+		if m.Name == name {
 			return m, true
 		}
 	}
-	return Metric{}, false
+	return findTarget(name)
 }
 
-// MetricNames are the names that FindMetric knows.
+// MetricNames are the names of the metrics that take no target.
 func MetricNames() []string {
 	names := make([]string, len(metrics))
 	for i, m := range metrics {
@@ -54,9 +59,13 @@ func MetricNames() []string {
 
 // Final is the metric after the last epoch of a run, never the best one. A run
 // that diverged is scored as it stands. NaN: the run has no epoch, or the
-// metric was not evaluated at its last one.
+// metric was not evaluated at its last one. A metric that counts epochs to a
+// target is read from all of them.
 func (m Metric) Final(r *Run) float64 {
-	if len(r.Epochs) == 0 {
+	switch {
+	case m.of != nil:
+		return m.epochsTo(r)
+	case len(r.Epochs) == 0:
 		return math.NaN()
 	}
 	return m.read(&r.Epochs[len(r.Epochs)-1])

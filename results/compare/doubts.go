@@ -10,6 +10,10 @@ import (
 // fewForSkewness: below this many values a skewness says next to nothing.
 const fewForSkewness = 8
 
+// fewForBootstrap: below this many values the BCa interval misses about twice as
+// often as it says, as the package's simulation shows.
+const fewForBootstrap = 20
+
 // doubts are the warnings that travel with a comparison into the report.
 // Their readers put the arm's name before them, so none begins with it.
 // identical: every pair of runs has one digest.
@@ -41,6 +45,19 @@ func doubts(c *results.Comparison, identical bool) (warnings []string) {
 		warn("the %s of some runs is not a finite number: no mean, no interval", c.Metric)
 	}
 	return append(warnings, spreadDoubts(c, identical)...)
+}
+
+// missedDoubts are about runs that never reached the target of the metric, in the
+// arm and in the one it is compared with.
+func missedDoubts(c *results.Comparison, missed [2]int) (warnings []string) {
+	for i, who := range []string{"", "the arm it is compared with "} {
+		if missed[i] > 0 {
+			warnings = append(warnings, fmt.Sprintf(
+				"%snever reached the target in %d of %s: one epoch more than was trained for is counted, the least it can have needed",
+				who, missed[i], number(c.N, "replicate")))
+		}
+	}
+	return warnings
 }
 
 // awaited says which pairs a verdict waits for.
@@ -91,8 +108,11 @@ func disagreement(c *results.Comparison) (warnings []string) {
 		if math.IsNaN(other.low) || math.IsInf(other.low, 0) || side(c.Low, c.High, c.Margin) == side(other.low, other.high, c.Margin) {
 			continue
 		}
-		warnings = append(warnings, fmt.Sprintf(
-			"t and %s intervals do not agree about the margin (%s %s)", other.name, other.name, w.with(w.span(other.low, other.high))))
+		text := fmt.Sprintf("t and %s intervals do not agree about the margin (%s %s)", other.name, other.name, w.with(w.span(other.low, other.high)))
+		if other.name == "bootstrap" && c.N < fewForBootstrap && !skewed(c) {
+			text += "; from so few pairs the bootstrap misses more often"
+		}
+		warnings = append(warnings, text)
 	}
 	return warnings
 }

@@ -37,6 +37,7 @@ func Pair(q Question, arm, against []results.Run) results.Comparison {
 	slices.Sort(c.Replicates)
 	identical := true
 	var pairs [][2]*results.Run
+	var missed [2]int
 	for _, replicate := range c.Replicates {
 		a, b := mine[replicate], theirs[replicate]
 		pairs = append(pairs, [2]*results.Run{a, b})
@@ -44,13 +45,15 @@ func Pair(q Question, arm, against []results.Run) results.Comparison {
 		c.Diverged += count(a.Diverged != "")
 		c.AgainstDiverged += count(b.Diverged != "")
 		c.Stalled += count(a.Stalled)
+		missed[0] += count(q.Metric.Missed(a))
+		missed[1] += count(q.Metric.Missed(b))
 		identical = identical && a.Digest == b.Digest && !a.Digest.IsZero()
 	}
 	c.N = len(c.Differences)
 	c.Classes = classDifferences(q, pairs)
 	c.DivergedLow, c.DivergedHigh = results.ExactRate(uint64(c.Diverged), uint64(c.N), c.Confidence)
 	estimate(&c)
-	c.Warnings = doubts(&c, identical)
+	c.Warnings = append(doubts(&c, identical), missedDoubts(&c, missed)...)
 	return c
 }
 

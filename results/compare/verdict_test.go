@@ -292,3 +292,25 @@ func TestFalseWithin(t *testing.T) {
 		t.Errorf("clearly worse, but found in %.3f of tables", got)
 	}
 }
+
+// TestEpochsToTarget: fewer epochs are better, and a target that was never
+// reached is told.
+func TestEpochsToTarget(t *testing.T) {
+	q := question("a", 1)
+	q.Metric, _ = results.FindMetric("epochs to test accuracy 0.9")
+	base := runs("baseline", around(6, 0.95, 0.01)...) // in the second epoch
+	arm := runs("a", around(6, 0.95, 0.02)...)
+	arm[3].Epochs[0].TestMetric = 0.92 // in the first
+	arm[5].Epochs[1].TestMetric = 0.8  // never
+	c := Pair(q, arm, base)
+	if d := cmp.Diff([]float64{0, 0, 0, 1, 0, -1}, c.Differences); d != "" {
+		t.Errorf("%v", c.Differences)
+	}
+	if w := strings.Join(c.Warnings, "\n"); !strings.Contains(w, "never reached the target in 1 of 6 replicates") || strings.Contains(w, "compared with") {
+		t.Errorf("warnings %q", w)
+	}
+	c.Against = "b"
+	if got := contrast(&results.Study{}, &c); got != "a does not differ on average from b (95 % interval −0.66 to 0.66, 6 pairs): undecided after 6 pairs." {
+		t.Error(got)
+	}
+}
