@@ -2,6 +2,7 @@ package main
 
 import (
 	"errors"
+	"strings"
 
 	"github.com/spf13/cobra"
 
@@ -32,21 +33,33 @@ func newVerdicts() *cobra.Command {
 		} else {
 			err = table(cmd.OutOrStdout(), study)
 		}
-		if err == nil && *strict && !allWithin(study) {
-			return &exitError{exitVerdict, errors.New("not every arm is within its margin")}
+		if err == nil && *strict {
+			err = requireWithin(study)
 		}
 		return err
 	}
 	return cmd
 }
 
-func allWithin(s *results.Study) bool {
-	for _, family := range [][]results.Comparison{s.Comparisons, s.Contrasts} {
-		for i := range family {
-			if family[i].Verdict.Kind != results.Within {
-				return false
-			}
+// requireWithin errs, with exit code 3, unless there are comparisons and every one
+// is within its margin; it names those that are not.
+func requireWithin(s *results.Study) error {
+	var open []string
+	for i := range s.Comparisons {
+		if c := &s.Comparisons[i]; c.Verdict.Kind != results.Within {
+			open = append(open, c.Arm)
 		}
 	}
-	return true
+	for i := range s.Contrasts {
+		if c := &s.Contrasts[i]; c.Verdict.Kind != results.Within {
+			open = append(open, c.Arm+" against "+c.Against)
+		}
+	}
+	switch {
+	case len(s.Comparisons)+len(s.Contrasts) == 0:
+		return &exitError{exitVerdict, errors.New("no arm was compared, so none is within the margin")}
+	case len(open) > 0:
+		return &exitError{exitVerdict, errors.New("not within the margin: " + strings.Join(open, ", "))}
+	}
+	return nil
 }

@@ -2,9 +2,11 @@ package main
 
 import (
 	"encoding/json"
+	"errors"
 	"strings"
 	"testing"
 
+	"ulpine/results"
 	"ulpine/results/store"
 )
 
@@ -17,6 +19,37 @@ type verdictsJSON struct {
 		Mean, Low    *float64
 		Warnings     []string
 		NotFinite    map[string]string `json:"not_finite"`
+	}
+}
+
+// TestRequireWithinNamesThem: what is not within is named; nothing is not within.
+func TestRequireWithinNamesThem(t *testing.T) {
+	within, worse := results.Verdict{Kind: results.Within}, results.Verdict{Kind: results.Worse}
+	for _, c := range []struct {
+		study results.Study
+		want  string
+	}{
+		{results.Study{}, "no arm was compared, so none is within the margin"},
+		{results.Study{Comparisons: []results.Comparison{{Arm: "a", Verdict: within}}}, ""},
+		{results.Study{Comparisons: []results.Comparison{{Arm: "a", Verdict: within}, {Arm: "b"}}}, "not within the margin: b"},
+		{
+			results.Study{
+				Comparisons: []results.Comparison{{Arm: "a", Verdict: worse}},
+				Contrasts:   []results.Comparison{{Arm: "b", Against: "a", Verdict: results.Verdict{Kind: results.Diverged}}},
+			},
+			"not within the margin: a, b against a",
+		},
+	} {
+		err := requireWithin(&c.study)
+		var coded *exitError
+		switch {
+		case c.want == "":
+			if err != nil {
+				t.Error(err)
+			}
+		case !errors.As(err, &coded) || coded.code != exitVerdict || err.Error() != c.want:
+			t.Errorf("%v, want %q", err, c.want)
+		}
 	}
 }
 
@@ -58,7 +91,7 @@ func TestVerdictsOfOnePair(t *testing.T) {
 	inFolder(t, map[string]string{"tiny.toml": strings.Replace(tiny, "count = 3", "count = 1", 1)})
 	must(t, "run", "tiny.toml", "--no-report", "--quiet")
 	out, errs, code := ulpine(t, "verdicts", "tiny.toml", "--require-within")
-	if code != exitVerdict || !strings.Contains(errs, "not every arm is within its margin") {
+	if code != exitVerdict || !strings.Contains(errs, "not within the margin: bf16-nearest, same-as-baseline") {
 		t.Errorf("exit code %d, %q", code, errs)
 	}
 	for _, want := range []string{"No arm is shown to stay within", "one pair gives no interval", "undecided"} {
