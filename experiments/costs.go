@@ -123,6 +123,10 @@ func costLayer(s *trainer.Spec) cost.Layer {
 		if len(s.Out) == 1 { // dense: it reads its input row-major
 			l.InAxis = l.Inputs
 		}
+		if shape := s.Params[0].Shape; len(shape) > 2 && shape[1] > 0 && s.In[0] > shape[1] { // kernels over a part of the channels
+			l.Groups = uint64(s.In[0] / shape[1])
+			l.InAxis, l.OutAxis = l.InAxis/l.Groups, l.OutAxis/l.Groups
+		}
 	}
 	return l
 }
@@ -139,6 +143,10 @@ func costArm(p *plan.Plan, a *plan.Arm) cost.Arm {
 		from := &a.Arithmetic.Layers[i]
 		for _, id := range p.Network.PointsOf(i) {
 			fill(&arm.Layers[i], from, id)
+		}
+		if to := &arm.Layers[i]; a.Training.Optimizer.Compensated && len(to.States) > 0 {
+			last := len(to.States) - 1 // what the model charges apart from the states
+			to.Compensation, to.States = &to.States[last], to.States[:last]
 		}
 	}
 	return arm

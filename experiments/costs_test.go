@@ -12,6 +12,7 @@ import (
 
 	"ulpine/experiments/plan"
 	"ulpine/results/cost"
+	"ulpine/trainer"
 )
 
 // costsOf is the costs of a plan on the default tables.
@@ -51,6 +52,15 @@ func TestCostNetwork(t *testing.T) {
 	}
 	if diff := cmp.Diff(want, got); diff != "" {
 		t.Error(diff)
+	}
+}
+
+// TestCostGroups: two groups of three channels each, four kernels.
+func TestCostGroups(t *testing.T) {
+	const old = `layers = ["conv1d out=2 width=9 stride=8", "relu", "dense 5"]`
+	l := costsOf(t, tinyPlan(t, "", old, `layers = ["conv1d out=6 width=9 stride=8", "conv1d out=4 width=3 groups=2", "dense 5"]`)).Network.Layers[1]
+	if l.Groups != 2 || l.InAxis != 3 || l.OutAxis != 2 || l.Weights != 4*3*3 || l.Terms.Forward != 9 || l.Work.Forward != 9*4*13 {
+		t.Errorf("%+v", l)
 	}
 }
 
@@ -129,9 +139,9 @@ loss_scale = { kind = "fixed", value = 8 }
 	}
 }
 
-// TestBills counts by hand: batch 16; conv 128 -> 2 x 15 with 20 parameters,
+// TestBits counts by hand: batch 16; conv 128 -> 2 x 15 with 20 parameters,
 // ReLU, dense 30 -> 5 with 155.
-func TestBills(t *testing.T) {
+func TestBits(t *testing.T) {
 	p := tinyPlan(t, "[[arm]]\nname = \"x\"\nforward.activation = \"E4M3\"\nforward.weight = \"bf16\"\n")
 	const params, batch = 20 + 155, 16
 	const (
@@ -145,16 +155,8 @@ func TestBills(t *testing.T) {
 	if len(got) != 5 || got[0].Bits != 32 || got[1].Bits != 16 || math.Abs(got[4].Bits-want) > 1e-12 {
 		t.Errorf("%+v bits a value, want 32, 16, ... and %v", got, want)
 	}
-	// The study's costs are those of the verb, the baseline first.
-	r := costsOf(t, p)
-	if len(s.Costs.Bills) != 5 || s.Costs.Bills[0].Arm != "baseline" || s.Costs.Bills[0].Step != s.Costs.Reference.Step {
-		t.Errorf("%+v", s.Costs.Bills)
-	}
-	x, model := s.Costs.Bills[4], r.Arms[3]
-	if x.Arm != "x" || x.TrainingBits != 8*bits8+16*bits16+32*bits32 || x.Step.Bits != model.Once.Step.Total.Bits ||
-		x.StepTiled.Seconds != model.Tiled.Step.Total.Time.Seconds || x.Inference.Picojoules != model.Once.Inference.Total.Energy.Total ||
-		x.Step.BitShare != model.Once.Step.Total.Against.Bits || s.Costs.Answer != r.Answer {
-		t.Errorf("%+v", x)
+	if x := costsOf(t, p).Arms[3]; x.Slug != "x" || x.Memory.Training.Bits != 8*bits8+16*bits16+32*bits32 {
+		t.Errorf("%s: %d bits", x.Slug, x.Memory.Training.Bits)
 	}
 }
 
@@ -303,5 +305,21 @@ func TestShippedTables(t *testing.T) {
 	}
 	if _, err := Costs(tinyPlan(t, ""), m, e); err != nil {
 		t.Error(err)
+	}
+}
+
+// TestCostsOfOptimizers: every kind of the trainer has a cost, compensation too.
+func TestCostsOfOptimizers(t *testing.T) {
+	const old = `optimizer = { kind = "sgd", momentum = 0.9 }`
+	for _, kind := range trainer.OptimizerNames() {
+		momentum := ""
+		if kind == "nesterov" {
+			momentum = ", momentum = 0.9"
+		}
+		plain := costsOf(t, tinyPlan(t, "", old, `optimizer = { kind = "`+kind+`"`+momentum+` }`)).Arms[0].Memory.Training
+		kept := costsOf(t, tinyPlan(t, "", old, `optimizer = { kind = "`+kind+`"`+momentum+`, compensated = true }`)).Arms[0].Memory.Training
+		if kept.State != plain.State+175*16 {
+			t.Errorf("%s: %d bits of states, %d with compensation, want 175 bf16 numbers more", kind, plain.State, kept.State)
+		}
 	}
 }

@@ -28,7 +28,7 @@ func describe(l *layout) *results.Study {
 	if p.Pretrain != nil && p.Pretrain.Task.Canonical != p.Task.Canonical {
 		s.Warnings = append(s.Warnings, p.Pretrain.Task.Warnings...)
 	}
-	bill(p, s)
+	setBits(p, s)
 	return s
 }
 
@@ -58,10 +58,7 @@ func networkLine(p *plan.Plan) string {
 // trainingLine is the training in one line.
 func trainingLine(p *plan.Plan) string {
 	t := &p.Training
-	line := fmt.Sprintf("%s, momentum %g, learning rate %g", t.Optimizer.Kind, t.Optimizer.Momentum, t.LearningRate.Start)
-	if len(t.LearningRate.AtEpochs) > 0 {
-		line += fmt.Sprintf(" (times %g at epochs %s)", t.LearningRate.Multiply, strings.Trim(fmt.Sprint(t.LearningRate.AtEpochs), "[]"))
-	}
+	line := fmt.Sprintf("%s, learning rate %s", plan.DescribeOptimizer(t.Optimizer), plan.DescribeRate(t.LearningRate))
 	line += fmt.Sprintf(", batch %d, %s", t.Batch, number(t.Epochs, "epoch"))
 	if pre := p.Pretrain; pre != nil {
 		line += fmt.Sprintf("; after pretraining for %s on %s", number(pre.Training.Epochs, "epoch"), pre.Task.Description)

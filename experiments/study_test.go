@@ -73,7 +73,7 @@ func checkDescription(t *testing.T, study *results.Study) {
 	if study.Network != "conv1d out=2 width=9 stride=8, relu, dense 5; 175 parameters" {
 		t.Errorf("network %q", study.Network)
 	}
-	if !strings.HasPrefix(study.Training, "sgd, momentum 0.9, learning rate 0.05, batch 16, 2 epochs; after pretraining for 1 epoch on pump") {
+	if !strings.HasPrefix(study.Training, "sgd momentum 0.9, learning rate 0.05, batch 16, 2 epochs; after pretraining for 1 epoch on pump") {
 		t.Errorf("training %q", study.Training)
 	}
 	if len(study.Classes) != 5 || study.Planned != 3 || study.Claim.FirstSeed != 100 || study.PlanText == "" || study.Resolved == "" || study.LongestSum == 0 {

@@ -17,6 +17,9 @@ func (a *assignment) arm(network *trainer.Network, states int) trainer.Arm {
 	}
 	for i := range arm.Layers {
 		arm.Layers[i] = assigned(a.layers[i]).layer(states)
+		if slices.Contains(network.Layers[i].Points, trainer.ForwardStatistic) {
+			assigned(a.layers[i]).normalise(&arm.Layers[i])
+		}
 	}
 	for i := range arm.Layers {
 		reuseOperands(network, &arm, i)
@@ -46,10 +49,36 @@ func (a assigned) layer(states int) trainer.Arithmetic {
 			Sums:     a.accumulate(trainer.WeightGradientProduct),
 			Result:   at(trainer.WeightGradientResult),
 		},
-		States: slices.Repeat([]quant.Point{at(trainer.UpdateState)}, states),
+		States: a.states(states),
 		Step:   at(trainer.UpdateStep),
 		Master: at(trainer.UpdateMaster),
 	}
+}
+
+// normalise sets the points of a normalisation: sums in turn, whose squares and
+// products are rounded as the sums are.
+func (a assigned) normalise(l *trainer.Arithmetic) {
+	statistic := func(id trainer.PointID) *quant.Accumulate {
+		p := a[id].value.point
+		return &quant.Accumulate{Product: &p, Sum: p}
+	}
+	moment := a[trainer.ForwardMoment].value.point
+	l.Statistic, l.Moment = statistic(trainer.ForwardStatistic), &moment
+	l.InputGradient.Statistic = statistic(trainer.InputGradientStatistic)
+}
+
+// states are the points of the state tensors; where another optimizer keeps more
+// of them than were listed, as a pretraining's may, the last stands for the rest.
+func (a assigned) states(count int) []quant.Point {
+	v := a[trainer.UpdateState].value
+	all := slices.Clone(v.states)
+	if len(all) == 0 {
+		all = append(all, v.point)
+	}
+	for len(all) < count {
+		all = append(all, all[len(all)-1])
+	}
+	return all[:count]
 }
 
 // optional is a point of its own copy, or nil where it is unset.

@@ -94,7 +94,7 @@ func (r *armReader) readOverrides(n *node, arm *Arm) {
 	t := r.training
 	if sub := r.table(n, "training", "training.learning_rate = 0.01"); sub != nil {
 		t = r.readTraining(sub, t, true, trainingOverrideKeys)
-		r.checkBatch(sub, t.Batch, r.examples)
+		r.checkBatch(sub, &t, r.examples)
 	}
 	if at := n.table["learning_rate"]; at != nil {
 		t.LearningRate = r.readSchedule(at)
@@ -102,6 +102,7 @@ func (r *armReader) readOverrides(n *node, arm *Arm) {
 			other := twin.table["learning_rate"]
 			r.fail(at.errorf("keep one of them", "the learning rate is set in %s line %d too", other.file, other.line))
 		}
+		r.checkBatch(n, &t, r.examples)
 	}
 	arm.Training = t
 	for _, c := range []struct {
@@ -120,8 +121,14 @@ func (r *armReader) readOverrides(n *node, arm *Arm) {
 }
 
 // checkBatch refuses a batch in the training table n that is larger than the
-// training set.
-func (r *reader) checkBatch(n *node, batch, examples int) {
+// training set, and a warm-up that outlasts the training.
+func (r *reader) checkBatch(n *node, t *trainer.Training, examples int) {
+	batch := t.Batch
+	if rate := n.table["learning_rate"]; rate != nil && rate.table["warm_up"] != nil && examples > 0 {
+		if steps := trainer.Describe(trainer.Network{}, nil, *t, trainer.Sizes{Train: examples}).Steps; t.LearningRate.WarmUp >= steps {
+			r.fail(rate.table["warm_up"].errorf("rise over fewer steps", "the training has %d steps, no more than the warm-up", steps))
+		}
+	}
 	if at := n.table["batch"]; at != nil && examples > 0 && batch > examples {
 		r.fail(at.errorf(fmt.Sprintf("write at most %d", examples), "a batch of %d is larger than the %d training examples", batch, examples))
 	}
@@ -130,6 +137,7 @@ func (r *reader) checkBatch(n *node, batch, examples int) {
 // finish resolves an arm whose settings are read.
 func (r *armReader) finish(arm Arm, a *assignment, scale trainer.LossScale) Arm {
 	states, _ := arm.Training.Optimizer.States()
+	r.checkStates(a, states)
 	arm.Arithmetic = a.arm(r.network, states)
 	arm.Arithmetic.LossScale = scale
 	arm.LossScale = describeLossScale(scale)
@@ -138,6 +146,19 @@ func (r *armReader) finish(arm Arm, a *assignment, scale trainer.LossScale) Arm 
 	arm.Canonical = arm.canonical(r.network)
 	arm.assignment = a
 	return arm
+}
+
+// checkStates holds lists of formats of states to the optimizer's number of them,
+// each list once.
+func (r *armReader) checkStates(a *assignment, states int) {
+	told := map[*node]bool{}
+	for i := range a.layers {
+		s := &a.layers[i][trainer.UpdateState]
+		if n := len(s.value.states); s.at != nil && n > 0 && n != states && !told[s.at] {
+			told[s.at] = true
+			r.fail(s.at.errorf(fmt.Sprintf("write %d, or one for all", states), "%d formats for the %d state tensors of the optimizer", n, states))
+		}
+	}
 }
 
 // summary is an arm in one line.

@@ -225,7 +225,11 @@ func suggestPoint(word string, top []string, all map[string]target) string {
 // the selected layers.
 func (r *reader) applyTarget(n *node, key string, t target, sel selection, a *assignment, fs formats) {
 	v, ok := value{exact: true}, true
-	if word, _ := n.value.(string); word != exactWord || !isProduct(t.ids[0]) || len(t.ids) > 1 {
+	word, _ := n.value.(string)
+	switch {
+	case key == trainer.UpdateState.String() && n.list != nil:
+		v, ok = r.readStates(n, fs)
+	case word != exactWord || !isProduct(t.ids[0]) || len(t.ids) > 1:
 		v, ok = r.readValue(n, t.class, fs)
 	}
 	if !ok {
@@ -235,7 +239,7 @@ func (r *reader) applyTarget(n *node, key string, t target, sel selection, a *as
 	a.spelled = append(a.spelled, origin+" "+v.spell())
 	r.applies(n, key, t, sel)
 	for _, id := range t.ids {
-		s := slot{set: true, rank: specificity{what: t.rank}, at: n, origin: origin, value: value{point: v.point, exact: v.exact}}
+		s := slot{set: true, rank: specificity{what: t.rank}, at: n, origin: origin, value: value{point: v.point, exact: v.exact, states: v.states}}
 		switch {
 		case isSum(id):
 			s.value.order, s.value.through = v.order, v.through

@@ -159,7 +159,7 @@ func (r *reader) readMainTraining(root *node, task *Task) trainer.Training {
 		return defaultTraining()
 	}
 	t := r.readTraining(n, defaultTraining(), false, trainingKeys)
-	r.checkBatch(n, t.Batch, task.Train)
+	r.checkBatch(n, &t, task.Train)
 	return t
 }
 
@@ -173,7 +173,7 @@ func (r *reader) readPretrain(root *node, p *Plan) *Pretrain {
 	pre := &Pretrain{Task: r.varyTask(root, n, &p.Task), Training: p.Training}
 	if sub := r.table(n, "training", "training.epochs = 5"); sub != nil {
 		pre.Training = r.readTraining(sub, p.Training, true, trainingKeys)
-		r.checkBatch(sub, pre.Training.Batch, pre.Task.Train)
+		r.checkBatch(sub, &pre.Training, pre.Task.Train)
 	}
 	r.checkSameShape(n, &p.Task, &pre.Task)
 	states, _ := pre.Training.Optimizer.States()

@@ -32,6 +32,15 @@
 // tables are joined, the included ones first; an arm of the plan with the name of
 // an included one takes its place.
 //
+// # Training
+//
+//	optimizer      a kind (sgd, nesterov, adam, adamw) or a table: kind, momentum;
+//	               beta1, beta2, epsilon, epsilon_inside; weight_decay, decoupled;
+//	               clip_norm; compensated = true keeps what masters round off in a
+//	               further state
+//	learning_rate  a number or a table: start; multiply, at_epochs; or cosine = true,
+//	               end; warm_up: steps over which it rises first
+//
 // # Settings
 //
 // The rounding points are those of package trainer: input, forward.weight, ...,
@@ -59,6 +68,10 @@
 //	outer        of sums: where finished chunks and the bias are added; default:
 //	             as the sum
 //	through      of sums: "binary32", an adder that first rounds to binary32
+//
+// update.state also takes an array, a setting for each state tensor in the order of
+// the optimizer's formula: velocity; first and second moment; last the compensation,
+// if it is asked for.
 //
 // # Layers
 //

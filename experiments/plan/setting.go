@@ -27,6 +27,8 @@ type value struct {
 	point quant.Point
 	exact bool // a product that is not rounded
 
+	states []quant.Point // a point for each state tensor; nil: the one point for all
+
 	// Sums only.
 	order   quant.Order
 	through bool         // every addition first rounds to binary32
@@ -196,8 +198,31 @@ func (r *reader) readRounding(n *node, c class) (round quant.Rounding) {
 	return round
 }
 
+// readStates reads a point for each state tensor, in the order of the optimizer's
+// formula.
+func (r *reader) readStates(n *node, fs formats) (v value, ok bool) {
+	before := len(r.errs)
+	for _, e := range n.list {
+		one, _ := r.readValue(e, stored, fs)
+		v.states = append(v.states, one.point)
+	}
+	if len(n.list) == 0 {
+		r.fail(n.errorf(`write update.state = ["bf16", "fp32"] or one format for all`, "no format"))
+		return v, false
+	}
+	v.point = v.states[0]
+	return v, len(r.errs) == before
+}
+
 // spell writes a setting as a plan would, short: "bf16 stochastic r=16".
 func (v value) spell() string {
+	if v.states != nil {
+		words := make([]string, len(v.states))
+		for i, p := range v.states {
+			words[i] = value{point: p}.spell()
+		}
+		return "[" + strings.Join(words, ", ") + "]"
+	}
 	if v.exact {
 		return exactWord
 	}

@@ -48,75 +48,6 @@ func (r *reader) readTraining(n *node, base trainer.Training, complete bool, key
 	return t
 }
 
-// readOptimizer reads an optimizer: a word or a table with its kind.
-func (r *reader) readOptimizer(n *node) (o trainer.Optimizer) {
-	before := len(r.errs)
-	switch {
-	case n.table != nil:
-		r.known(n, "kind", "momentum")
-		o.Kind = r.text(n, "kind", "sgd")
-		o.Momentum = r.number(n, "momentum", 0)
-	default:
-		word, ok := n.value.(string)
-		if !ok {
-			r.wrongType(n, "a word or a table", `optimizer = { kind = "sgd", momentum = 0.9 }`)
-		}
-		o.Kind = word
-	}
-	if len(r.errs) > before {
-		return o
-	}
-	if _, err := o.States(); err != nil {
-		r.fail(fault(n, err))
-	}
-	return o
-}
-
-// readSchedule reads a learning rate: a number, or a table that also says at
-// which epochs it is multiplied by what.
-func (r *reader) readSchedule(n *node) (s trainer.Schedule) {
-	s.Multiply = 1
-	at := n
-	if n.table == nil {
-		s.Start = r.numberAt(n, "learning_rate", 0.02)
-	} else {
-		r.known(n, "start", "multiply", "at_epochs")
-		if n.table["start"] == nil {
-			r.fail(n.errorf("write start = 0.02", "start is missing"))
-			return s
-		}
-		at = n.table["start"]
-		s.Start = r.number(n, "start", 0.02)
-		s.AtEpochs = r.wholes(n, "at_epochs", 1, maxCount)
-		s.Multiply = r.multiplier(n, s.AtEpochs)
-		if !slices.IsSorted(s.AtEpochs) {
-			r.fail(n.table["at_epochs"].errorf("write the epochs in ascending order", "%v do not ascend", s.AtEpochs))
-		}
-	}
-	if !positive32(s.Start) {
-		r.fail(at.errorf("write a positive rate, as 0.02", "a learning rate of %g is not a positive binary32 number", s.Start))
-	}
-	return s
-}
-
-// multiplier reads multiply, which goes with at_epochs.
-func (r *reader) multiplier(n *node, epochs []int) float64 {
-	at := n.table["multiply"]
-	switch {
-	case at == nil && len(epochs) > 0:
-		r.fail(n.errorf("write multiply = 0.2", "at_epochs without multiply"))
-	case at != nil && n.table["at_epochs"] == nil:
-		r.fail(at.errorf("write at_epochs = [9, 13]", "multiply without at_epochs"))
-	case at != nil:
-		factor := r.number(n, "multiply", 0.2)
-		if !positive32(factor) {
-			r.fail(at.errorf("write a positive factor, as 0.2", "a factor of %g is not a positive binary32 number", factor))
-		}
-		return factor
-	}
-	return 1
-}
-
 // positive32 reports whether the binary32 number nearest to x is positive and finite.
 func positive32(x float64) bool {
 	y := float64(float32(x))
@@ -228,14 +159,10 @@ func describeLossScale(l trainer.LossScale) string {
 // describeTraining is a training in one line, every figure that shapes a run
 // included.
 func describeTraining(t trainer.Training) string {
-	rate := fmt.Sprintf("%g", float32(t.LearningRate.Start))
-	if len(t.LearningRate.AtEpochs) > 0 {
-		rate += fmt.Sprintf(" x%g at epochs %v", float32(t.LearningRate.Multiply), t.LearningRate.AtEpochs)
-	}
 	order := "shuffled"
 	if !t.Shuffle {
 		order = "in the data's order"
 	}
-	return fmt.Sprintf("%s, %s momentum %g, learning rate %s, batch %d, epochs %d, %s, test data %s, validation data %s",
-		t.Loss, t.Optimizer.Kind, float32(t.Optimizer.Momentum), rate, t.Batch, t.Epochs, order, t.EvaluateTest, t.EvaluateValidation)
+	return fmt.Sprintf("%s, %s, learning rate %s, batch %d, epochs %d, %s, test data %s, validation data %s",
+		t.Loss, DescribeOptimizer(t.Optimizer), DescribeRate(t.LearningRate), t.Batch, t.Epochs, order, t.EvaluateTest, t.EvaluateValidation)
 }
