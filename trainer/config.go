@@ -14,6 +14,11 @@ type Arithmetic struct {
 	InputGradient  Backward // dL/dx; First is the weight operand
 	WeightGradient Backward // dL/dw; First is the activation operand
 
+	// Normalisations: the sums of their statistics and what is made of them. nil:
+	// as Forward, as Activation. Their backward sums are InputGradient.Statistic.
+	Statistic *quant.Accumulate
+	Moment    *quant.Point // mean, variance, inverse deviation, running statistics
+
 	States []quant.Point // one a state tensor of the optimizer
 	Step   quant.Point
 	Master quant.Point
@@ -25,6 +30,32 @@ type Backward struct {
 	Gradient *quant.Point // nil: the gradient as stored
 	Sums     quant.Accumulate
 	Result   quant.Point
+	// Statistic is that of the sums in a normalisation's input gradient; nil: as Sums.
+	Statistic *quant.Accumulate
+}
+
+// statistic is the accumulation of a normalisation's forward sums.
+func (a *Arithmetic) statistic() quant.Accumulate {
+	if a.Statistic != nil {
+		return *a.Statistic
+	}
+	return a.Forward
+}
+
+// moment is the point of what a normalisation makes of its sums.
+func (a *Arithmetic) moment() *quant.Point {
+	if a.Moment != nil {
+		return a.Moment
+	}
+	return &a.Activation
+}
+
+// statistic is the accumulation of a normalisation's backward sums.
+func (b *Backward) statistic() quant.Accumulate {
+	if b.Statistic != nil {
+		return *b.Statistic
+	}
+	return b.Sums
 }
 
 // LossScaleKind is how the loss is scaled before the backward pass.

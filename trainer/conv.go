@@ -111,7 +111,7 @@ func poolShapes(kind string) string {
 
 // convParams are the shapes of kernel and bias: [out, in, ...] and [out].
 func convParams(out int, rest []int) []ParamSpec {
-	return []ParamSpec{{"weight", append([]int{out}, rest...), volume(rest)}, {"bias", []int{out}, 0}}
+	return []ParamSpec{{Name: "weight", Shape: append([]int{out}, rest...), FanIn: volume(rest)}, {Name: "bias", Shape: []int{out}}}
 }
 
 // completeConv reads the groups and fills in what follows from the geometry.

@@ -17,7 +17,7 @@ func parseDense(o *options, s *Spec) error {
 	inputs := volume(s.In)
 	s.Name = "dense " + itoa(units)
 	s.Out = []int{units}
-	s.Params = []ParamSpec{{"weight", []int{units, inputs}, inputs}, {"bias", []int{units}, 0}}
+	s.Params = []ParamSpec{{Name: "weight", Shape: []int{units, inputs}, FanIn: inputs}, {Name: "bias", Shape: []int{units}}}
 	s.Sums = Lengths{Forward: inputs, InputGradient: units, WeightGradient: 1, BiasGradient: 1}
 	work := uint64(units) * uint64(inputs)
 	s.MACs = Work{Forward: work, InputGradient: work, WeightGradient: work}

@@ -66,7 +66,9 @@ func (n *Network) describeLayer(i, batch int) LayerDescription {
 		l.Sums.InputGradient = 0
 	}
 	for _, p := range s.Params {
-		l.Parameters += volume(p.Shape)
+		if !p.Statistic {
+			l.Parameters += volume(p.Shape)
+		}
 	}
 	return l
 }

@@ -24,6 +24,10 @@
 //	weight_gradient.product .sum .outer
 //	weight_gradient.result      the gradients of weight and bias
 //	update.state .step .master  see Update
+//	forward.statistic           sums of a normalisation; unset: the forward points
+//	forward.moment              mean, variance, inverse deviation, running
+//	                            statistics; unset: forward.activation
+//	input_gradient.statistic    sums of its input gradient; unset: that phase's points
 //
 // A set operand is R of the stored tensor: of the master for a weight, of the
 // layer's input for an activation, of the result (or output error) for a
@@ -65,6 +69,15 @@
 // ReLU and dropout exact products, smooth activations binary64 values of package
 // elementary (their comments state the formulas). Dropout leaves evaluations alone
 // and draws its masks from a stream that arms share.
+//
+// # Normalisations and joins
+//
+// Batch and layer normalisation sum, divide, subtract and scale one rounding at a
+// time: standard lists the lines, batchNormKind the running statistics that
+// evaluations use and that are recorded like parameters. A skipped step leaves them
+// alone. A residual block adds its input to its output at the forward sum point; the
+// two gradients of its input join in the input gradient's sum point, the one that
+// comes from the lower layer first; see residualKind.
 //
 // # Loss
 //

@@ -20,9 +20,10 @@ type engine[T quant.Element] struct {
 	arm  *Arm
 	wide bool
 
-	edges  []*edge[T] // edges[i] lies below layer i
-	layers []layer[T]
-	params []*param[T]
+	edges    []*edge[T] // edges[i] lies below layer i
+	layers   []layer[T]
+	params   []*param[T]
+	settlers []settler
 
 	judge  *judge[T]
 	mover  *mover[T]
@@ -73,10 +74,13 @@ func (e *engine[T]) buildLayers(capacity int) error {
 		} else {
 			above = newEdge[T](capacity, spec.Out)
 		}
-		b := &bench[T]{place: place{i, &e.arm.Layers[i]}, spec: spec, below: below, above: above, batch: capacity}
+		b := &bench[T]{place: place{i, &e.arm.Layers[i]}, spec: spec, below: below, above: above, batch: capacity, earlier: e.layers}
 		l, err := builderOf[T](k)(b)
 		if err != nil {
 			return fmt.Errorf("%s: %w", e.net.where(i), err)
+		}
+		if s, ok := l.(settler); ok {
+			e.settlers = append(e.settlers, s)
 		}
 		e.edges, e.layers, e.params = append(e.edges, above), append(e.layers, l), append(e.params, l.params()...)
 	}
@@ -171,6 +175,9 @@ func (e *engine[T]) step(batch []int32, rate float64) (loss float64, what fate) 
 		return loss, stepSkipped
 	}
 	e.mover.move(p, rate, e.scaler.s)
+	for _, l := range e.settlers {
+		l.settle(p)
+	}
 	e.scaler.taken()
 	if e.masterNotFinite() {
 		return loss, masterNotFinite

@@ -14,13 +14,18 @@ type layer[T quant.Element] interface {
 	params() []*param[T]
 }
 
+// settler is a layer that keeps more than its parameters from a step: settle is
+// called after every step that was taken, not after skipped ones.
+type settler interface{ settle(p *pass) }
+
 // bench is what a layer is built from.
 type bench[T quant.Element] struct {
 	place
-	spec  *Spec
-	below *edge[T]
-	above *edge[T] // nil until the layer is built, unless the layer makes its own
-	batch int      // capacity of the edges, in examples
+	spec    *Spec
+	below   *edge[T]
+	above   *edge[T]   // nil until the layer is built, unless the layer makes its own
+	batch   int        // capacity of the edges, in examples
+	earlier []layer[T] // the layers below
 }
 
 // builder constructs a layer.
@@ -51,6 +56,9 @@ var kinds = []*kind{
 	&maxPoolKind,
 	&avgPoolKind,
 	&globalAvgPoolKind,
+	&batchNormKind,
+	&layerNormKind,
+	&residualKind,
 	&flattenKind,
 	&dropoutKind,
 }

@@ -21,6 +21,10 @@ var zoo = []struct {
 		"conv2d out=4 size=3 pad=1 groups=2", "leakyrelu", "maxpool size=3 stride=2", "dropout 0.25",
 		"conv2d out=4 size=2 dilation=2", "relu", "avgpool size=2", "flatten", "dense 3",
 	}},
+	{"blocks", []int{2, 8, 8}, []string{
+		"conv2d out=3 size=3 pad=1", "batchnorm", "relu", "residual begin", "conv2d out=3 size=3 pad=1", "batchnorm momentum=0.3",
+		"residual begin", "relu", "residual end", "residual end", "globalavgpool", "layernorm", "dense 4", "layernorm epsilon=1e-3", "dense 3",
+	}},
 	{"signals", []int{2, 15}, []string{
 		"conv1d out=4 width=3 dilation=2", "gelu", "conv1d out=4 width=3 groups=4", "tanh", "globalavgpool", "sigmoid", "dense 3",
 	}},

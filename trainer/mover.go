@@ -46,6 +46,9 @@ func newMover[T quant.Element](k *ruleKind, o Optimizer, params []*param[T]) *mo
 	m := &mover[T]{set: o.resolved()}
 	largest := 0
 	for _, q := range params {
+		if q.fixed {
+			continue
+		}
 		m.params = append(m.params, q)
 		largest = max(largest, len(q.master.data))
 		for range o.stateCount(k) {

@@ -13,7 +13,9 @@ type param[T quant.Element] struct {
 	number int // within the layer: 0 weight, 1 bias
 	name   string
 	shape  []int
-	fanIn  int // 0: starts at zero
+	fanIn  int // 0: starts at first
+	first  float64
+	fixed  bool // running means, then variances: not trained
 
 	master   array[T] // what the optimizer updates
 	working  array[T] // R[forward.weight](master): what the forward pass multiplies
@@ -25,7 +27,7 @@ type param[T quant.Element] struct {
 func newParam[T quant.Element](b *bench[T], number int) *param[T] {
 	s := b.spec.Params[number]
 	return &param[T]{
-		place: b.place, number: number, name: s.Name, shape: s.Shape, fanIn: s.FanIn,
+		place: b.place, number: number, name: s.Name, shape: s.Shape, fanIn: s.FanIn, first: s.Start, fixed: s.Statistic,
 		master: newArray[T](s.Shape...), working: newArray[T](s.Shape...), gradient: newArray[T](s.Shape...),
 	}
 }
@@ -35,22 +37,36 @@ func (q *param[T]) draws(p *pass, o operation) quant.Draws {
 	return q.place.draws(p, o.of(q.number))
 }
 
-// start sets the master to R[update.master] of exact values.
+// start sets the master to R[update.master] of exact values; running statistics are
+// R[forward.moment].
 func (q *param[T]) start(p *pass, values []float64) {
+	if q.fixed {
+		round(q.place, p, ForwardMoment, opMaster.of(q.number), q.master.data, values, q.set.moment(), 0)
+		return
+	}
 	round(q.place, p, UpdateMaster, opMaster.of(q.number), q.master.data, values, &q.set.Master, 0)
 }
 
 // refresh makes the working copy anew; once after every update of the master.
 func (q *param[T]) refresh(p *pass) {
+	if q.fixed {
+		return // evaluations read what is stored
+	}
 	round(q.place, p, ForwardWeight, opWorking.of(q.number), q.working.data, q.master.data, &q.set.Weight, 0)
 }
 
 // drawInitial fills binary64 initial values: normal with variance gain/fan-in
 // from the replicate's stream of weights, zero for a bias. They depend on the
 // seed, the layer and the element alone, so all arms of a replicate share them.
+// Weights of normalisations start at one; running means at zero, variances at one.
 func (q *param[T]) drawInitial(values []float64, seed uint64, gain float64) {
 	if q.fanIn == 0 {
-		clear(values)
+		for i := range values {
+			values[i] = q.first
+			if q.fixed && i >= len(values)/2 {
+				values[i] = 1
+			}
+		}
 		return
 	}
 	d := quant.Draws{Seed: random.Derive(seed, random.Weights), Site: site(q.layer, opWorking.of(q.number))}

@@ -30,6 +30,9 @@ func ParseLayers(texts []string, input []int) (Network, error) {
 		n.Layers = append(n.Layers, *spec)
 		shape = spec.Out
 	}
+	if err := n.pairResiduals(); err != nil {
+		return Network{}, err
+	}
 	return n, nil
 }
 

@@ -82,6 +82,13 @@ func TestParseErrorsNameLayerAndRemedy(t *testing.T) {
 		{signal, []string{"leakyrelu slope=2"}, []string{"slope is 2; it must lie between 0 and 1"}},
 		{signal, []string{"leakyrelu slope=NaN"}, []string{`"NaN", not a number`}},
 		{[]int{5}, []string{"globalavgpool"}, []string{"globalavgpool needs an input of channels x rows x columns or of channels x length"}},
+		{signal, []string{"residual"}, []string{"one of two words", `"residual begin"`}},
+		{signal, []string{"residual end", "dense 2"}, []string{"layer 1", "without a begin"}},
+		{signal, []string{"residual begin", "dense 2"}, []string{"layer 1", "without an end"}},
+		{signal, []string{"residual begin", "dense 2", "residual end"}, []string{"layer 3", "adds 2x10, begun at layer 1, to 2"}},
+		{[]int{1}, []string{"layernorm"}, []string{"would always give 0"}},
+		{signal, []string{"layernorm epsilon=0"}, []string{"epsilon is 0"}},
+		{signal, []string{"batchnorm momentum=2"}, []string{"momentum is 2"}},
 		{image, []string{"dense 99999999"}, []string{"weight of 99999999x784", "more than"}},
 	}
 	for _, c := range cases {
@@ -149,7 +156,7 @@ func TestPointsHaveNames(t *testing.T) {
 		}
 		seen[name] = true
 	}
-	if len(seen) != 22 || PointID(99).String() != "unknown point" {
+	if len(seen) != 25 || PointID(99).String() != "unknown point" {
 		t.Errorf("%d points", len(seen))
 	}
 }
@@ -161,6 +168,10 @@ func TestOperationsHaveNumbersOfTheirOwn(t *testing.T) {
 		opInput, opLossGradient, opActivation, opForwardProduct, opForwardProduct + 1, opForwardSum, opForwardSum + 1,
 		opInputOperand, opInputProduct, opInputProduct + 1, opInputSum, opInputSum + 1, opInputResult,
 		opActivationAgain, opWeightOperand,
+		opMeanSum, opMeanSum + 1, opMean, opDeviation, opSquare, opSquare + 1, opSquareSum, opSquareSum + 1, opVariance,
+		opInverse, opNormal, opUnbiased, opFollowMean, opFollowMean + 1, opFollowMean + 2, opFollowVariance,
+		opFollowVariance + 1, opFollowVariance + 2, opBackSum, opBackSum + 1, opBackMean, opCentre, opDot, opDot + 1,
+		opDotSum, opDotSum + 1, opBackDot, opShare, opRest, opNormalResult,
 	}
 	for q := range 2 {
 		for _, o := range []operation{opWorking, opWeightAgain, opWeightProduct, opWeightProduct + 1, opWeightSum, opWeightSum + 1, opWeightResult, opStep, opMaster, opAhead, opAheadSum, opRoot, opRootSum, opRatio, opDecay, opDecaySum} {

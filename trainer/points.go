@@ -30,6 +30,11 @@ const (
 	UpdateStep
 	UpdateMaster
 
+	// The points of normalisations, in numbers behind the others'.
+	ForwardStatistic       // the sums of mean and variance
+	ForwardMoment          // mean, variance, inverse deviation, running statistics
+	InputGradientStatistic // the sums in the gradient of the input
+
 	pointCount int = iota
 )
 
@@ -57,6 +62,9 @@ var pointNames = [pointCount]string{
 	UpdateState:              "update.state",
 	UpdateStep:               "update.step",
 	UpdateMaster:             "update.master",
+	ForwardStatistic:         "forward.statistic",
+	ForwardMoment:            "forward.moment",
+	InputGradientStatistic:   "input_gradient.statistic",
 }
 
 // String is the name plans use: "forward.sum".
@@ -91,13 +99,14 @@ var (
 		LossGradient,
 		InputGradientGradient, InputGradientProduct, InputGradientSum, InputGradientOuter, InputGradientResult,
 		WeightGradientGradient, WeightGradientProduct, WeightGradientSum, WeightGradientOuter, WeightGradientResult,
+		InputGradientStatistic,
 	}
 )
 
 // inputGradient reports whether the point belongs to the input gradient, which
 // layers with no parameters below them never form.
 func (p PointID) inputGradient() bool {
-	return p >= InputGradientWeight && p <= InputGradientResult
+	return p >= InputGradientWeight && p <= InputGradientResult || p == InputGradientStatistic
 }
 
 // An operation is the low byte of Draws.Site: every operation that may draw
@@ -119,6 +128,30 @@ const (
 	opInputResult     operation = 13
 	opActivationAgain operation = 14 // the activation as operand of the weight gradient
 	opWeightOperand   operation = 15 // the gradient as operand of the weight gradient
+)
+
+// Operations of normalisations, beside those of their weights; see standard.
+const (
+	opMeanSum        operation = 16 // and 17
+	opMean           operation = 18
+	opDeviation      operation = 19
+	opSquare         operation = 20 // and 21
+	opSquareSum      operation = 22 // and 23
+	opVariance       operation = 24
+	opInverse        operation = 25
+	opNormal         operation = 26
+	opUnbiased       operation = 27
+	opFollowMean     operation = 28 // to 30
+	opFollowVariance operation = 31 // to 33
+	opBackSum        operation = 34 // and 35
+	opBackMean       operation = 36
+	opCentre         operation = 37
+	opDot            operation = 38 // and 39
+	opDotSum         operation = 40 // and 41
+	opBackDot        operation = 42
+	opShare          operation = 43
+	opRest           operation = 44
+	opNormalResult   operation = 45
 )
 
 // Operations on parameter number p of a layer add 64 (p + 1).

@@ -14,17 +14,22 @@ type Spec struct {
 	MACs   Work
 	Points []PointID // the rounding points this layer computes with
 
-	window window  // geometry of convolutions and pools
-	groups int     // of a convolution's channels
-	number float64 // the one decimal of a kind that has one, a binary32 number
+	window   window  // geometry of convolutions and pools
+	partner  int     // a residual end's begin
+	momentum float64 // of running statistics
+	groups   int     // of a convolution's channels
+	number   float64 // the one decimal of a kind that has one, a binary32 number
 }
 
 // ParamSpec is a parameter's name ("weight", "bias") and shape, and how many
-// inputs one of its outputs sums over (0: starts at zero).
+// inputs one of its outputs sums over (0: it starts at Start). Statistic: it is not
+// trained but follows the data; see batchNormKind.
 type ParamSpec struct {
-	Name  string
-	Shape []int
-	FanIn int
+	Name      string
+	Shape     []int
+	FanIn     int
+	Start     float64
+	Statistic bool
 }
 
 // Lengths are numbers of terms of one sum, padding included; 0 where the layer
@@ -62,7 +67,9 @@ func (n *Network) Outputs() int {
 func (n *Network) Parameters() (count int) {
 	for i := range n.Layers {
 		for _, p := range n.Layers[i].Params {
-			count += volume(p.Shape)
+			if !p.Statistic {
+				count += volume(p.Shape)
+			}
 		}
 	}
 	return count

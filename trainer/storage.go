@@ -34,14 +34,16 @@ func (p PointID) InsideSums() bool {
 	switch p {
 	case ForwardProduct, ForwardSum, ForwardOuter,
 		InputGradientProduct, InputGradientSum, InputGradientOuter,
-		WeightGradientProduct, WeightGradientSum, WeightGradientOuter:
+		WeightGradientProduct, WeightGradientSum, WeightGradientOuter,
+		ForwardStatistic, InputGradientStatistic:
 		return true
 	}
 	return false
 }
 
 // At is what the arithmetic holds at a point of a layer: nothing where the point
-// is unset, one point, or one a state tensor at update.state. input and
+// is unset, one point, one a state tensor at update.state, sum, product and outer of a
+// statistic. input and
 // loss.gradient are the arm's own.
 func (a *Arithmetic) At(id PointID) []*quant.Point {
 	switch id {
@@ -65,6 +67,12 @@ func (a *Arithmetic) At(id PointID) []*quant.Point {
 			points[i] = &a.States[i]
 		}
 		return points
+	case ForwardStatistic:
+		return throughout(a.Statistic)
+	case InputGradientStatistic:
+		return throughout(a.InputGradient.Statistic)
+	case ForwardMoment:
+		return given(a.Moment)
 	case UpdateStep:
 		return []*quant.Point{&a.Step}
 	case UpdateMaster:
@@ -76,6 +84,15 @@ func (a *Arithmetic) At(id PointID) []*quant.Point {
 // within is the product, the sum or the outer point of an accumulation.
 func within(acc *quant.Accumulate, which PointID) []*quant.Point {
 	return given([...]*quant.Point{acc.Product, &acc.Sum, acc.Outer}[which])
+}
+
+// throughout are all points of a statistic's sums: sum, product, outer.
+func throughout(acc *quant.Accumulate) []*quant.Point {
+	if acc == nil {
+		return nil
+	}
+	points := []*quant.Point{&acc.Sum}
+	return append(append(points, given(acc.Product)...), given(acc.Outer)...)
 }
 
 // beside is a backward phase's first operand, its gradient operand or, last, its
