@@ -100,7 +100,24 @@ func (a *arithmetic) point(format string, bits int) (quant.Point, error) {
 	if p.Overflow, err = quant.ParseOverflow(a.overflow); err != nil {
 		return p, badInput(err)
 	}
-	return p, badInput(p.Check())
+	return p, badInput(p.CheckOperand())
+}
+
+// spelt reads a format under the flags, or a format with a rounding and an overflow
+// policy of its own, parted by spaces.
+func (a *arithmetic) spelt(text string, bits int) (quant.Point, error) {
+	fields := strings.Fields(text)
+	if len(fields) < 2 {
+		return a.point(text, bits)
+	}
+	if len(fields) > 3 {
+		return quant.Point{}, badInput(fmt.Errorf("point %q: want a format, a rounding and an overflow policy", text))
+	}
+	own := arithmetic{rounding: fields[1], overflow: "default"}
+	if len(fields) == 3 {
+		own.overflow = fields[2]
+	}
+	return own.point(fields[0], bits)
 }
 
 // required is an error for a flag that has no default.

@@ -122,21 +122,23 @@ func (m *matmulJob) run(fileA, fileB string, out, errw io.Writer) error {
 // readPoints reads the formats and the order.
 func (m *matmulJob) readPoints() error {
 	scalar := func(text, flag string) (*quant.Point, error) {
-		p, err := m.pointOf(text)
+		p, err := m.spelt(text, quant.DefaultRandomBits)
 		if err != nil {
 			return nil, err
 		}
 		if _, shared := p.Format.(quant.Blocked); shared {
 			return nil, badInput(fmt.Errorf("--%s %s: values of this format share scales: only operands can have it", flag, p.Format))
 		}
-		return p, nil
+		return &p, nil
 	}
-	var err error
 	if m.operands != "" {
-		if m.first, err = m.pointOf(m.operands); err != nil {
+		p, err := m.spelt(m.operands, quant.DefaultRandomBits)
+		if err != nil {
 			return err
 		}
+		m.first = &p
 	}
+	var err error
 	if m.product != "exact" {
 		if m.acc.Product, err = scalar(m.product, "product"); err != nil {
 			return err
@@ -163,17 +165,6 @@ func (m *matmulJob) readPoints() error {
 	}
 	m.acc.Through32 = m.through != ""
 	return badInput(m.acc.Check())
-}
-
-// pointOf reads a format under the flags, or a format with a rounding and an
-// overflow policy of its own.
-func (m *matmulJob) pointOf(text string) (*quant.Point, error) {
-	if len(strings.Fields(text)) > 1 {
-		p, err := quant.ParsePoint(text)
-		return &p, badInput(err)
-	}
-	p, err := m.point(text, quant.DefaultRandomBits)
-	return &p, err
 }
 
 // checkBits refuses random bits that no rounding of the product can use, and lowers

@@ -293,6 +293,9 @@ func TestMatmulErrors(t *testing.T) {
 		{[]string{a, b, "--sum", "fp16", "--order", "chunk"}, "chunk(64)"},
 		{[]string{a, b, "--sum", "fp16", "--order", "wide", "--through", "binary32"}, "wide"},
 		{[]string{a, b, "--sum", "fp16", "--outer", "fp32"}, "chunk"},
+		{[]string{a, b, "--sum", "MXFP4"}, "only operands"},
+		{[]string{a, b, "--sum", "fp16", "--product", "MXINT8"}, "only operands"},
+		{[]string{a, b, "--sum", "fp16 nearest-even nan more"}, "overflow policy"},
 		{[]string{a, b, "--sum", "fp16", "--through", "fp8"}, "binary32"},
 		{[]string{a, b, "--sum", "fp16", "--rounding", "stochastic", "--random-bits", "20"}, "at most 16"},
 		{[]string{a, b, "--operands", "E2M1 nearest-even", "--sum", "E2M1", "--rounding", "stochastic(16)"}, "--random-bits 3"},
@@ -354,4 +357,53 @@ func TestPrefixes(t *testing.T) {
 			t.Errorf("step %d: %v and %v", n, lines[n].sum, short[n].sum)
 		}
 	}
+}
+
+// TestMatmulBlocks: operands with shared scales: a matrix times the identity is the
+// matrix as its blocks decode (MX 1.0, floor rule; codes computed with an independent
+// program), and its trace ends with the element.
+func TestMatmulBlocks(t *testing.T) {
+	dir := t.TempDir()
+	v := []float64{1, -0.5, 0.3, 7.9, 0.01, -3.1, 0, 2.5}
+	a := writeArray(t, dir, "a.npy", false, []int{1, 8}, v)
+	eye := make([]float64, 64)
+	for i := range 8 {
+		eye[9*i] = 1
+	}
+	b := writeArray(t, dir, "b.npy", false, []int{8, 8}, eye)
+	for _, c := range []struct {
+		format string
+		want   []float64
+	}{
+		{"MXFP4", []float64{1, -0.5, 0.5, 6, 0, -3, 0, 2}},
+		{"MXFP6(E2M3)", []float64{1, -0.5, 0.25, 7.5, 0, -3, 0, 2.5}},
+		{"MXINT8", []float64{1, -0.5, 0.3125, 7.875, 0, -3.125, 0, 2.5}},
+	} {
+		out := filepath.Join(dir, "c.npy")
+		must(t, "matmul", a, b, "--operands", c.format, "--sum", "fp32", "--out", out, "--trace", "0,3", "--trace-to", filepath.Join(dir, "t.csv"))
+		got, err := readArray(out)
+		if err != nil {
+			t.Fatal(err)
+		}
+		for i, want := range c.want {
+			if got.Values[i] != want {
+				t.Errorf("%s: %v becomes %v, want %v", c.format, v[i], got.Values[i], want)
+			}
+		}
+		checkTrace(t, filepath.Join(dir, "t.csv"), 8, got.Values[3])
+	}
+	// One scale for the whole tensor multiplies the finished sums.
+	out := filepath.Join(dir, "c.npy")
+	must(t, "matmul", a, b, "--operands", "INT8", "--sum", "Q32.0", "--out", out)
+	must(t, "matmul", a, b, "--operands", "INT8", "--sum", "fp32", "--out", out, "--trace", "0,3", "--trace-to", filepath.Join(dir, "t.csv"))
+	got, err := readArray(out)
+	if err != nil {
+		t.Fatal(err)
+	}
+	for i, x := range v {
+		if d := math.Abs(got.Values[i] - x); d > 7.9/254*1.01 {
+			t.Errorf("INT8: %v becomes %v", x, got.Values[i])
+		}
+	}
+	checkTrace(t, filepath.Join(dir, "t.csv"), 8, got.Values[3])
 }

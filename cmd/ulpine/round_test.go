@@ -268,6 +268,22 @@ func TestRoundInput(t *testing.T) {
 	}
 }
 
+// TestRoundBlock: the numbers of a line share scales (the example of TestMatmulBlocks).
+func TestRoundBlock(t *testing.T) {
+	out := must(t, "round", "--format", "MXFP4", "1", "-0.5", "0.3", "7.9", "0.01", "-3.1", "0", "2.5")
+	want := []string{"1", "-0.5", "0.5", "6", "0", "-3", "0", "2"}
+	lines := strings.Split(strings.TrimSpace(out), "\n")
+	for i, w := range want {
+		if f := strings.Fields(lines[len(lines)-len(want)+i]); f[1] != w {
+			t.Errorf("value %d: %v, want %s", i, f, w)
+		}
+	}
+	out = must(t, "round", "--json", "--format", "MXINT8", "1", "7.9")
+	if !strings.Contains(out, `"result":7.875`) {
+		t.Error(out)
+	}
+}
+
 // TestRoundErrors: one line, exit code 2, the remedy in it.
 func TestRoundErrors(t *testing.T) {
 	for _, c := range []struct {
@@ -288,6 +304,7 @@ func TestRoundErrors(t *testing.T) {
 		{[]string{"--format", "E4M3", "--overflow", "infinity", "1"}, "no infinity"},
 		{[]string{"--format", "E4M3", "--overflow", "wrap", "1"}, "wrap"},
 		{[]string{"--format", "E40M3", "1"}, "exponent bits"},
+		{[]string{"--format", "fp16", "--rounding", "stochastic(8, share=4)", "1"}, "stochastic(8)"},
 		{[]string{"--formt", "fp16", "1"}, "--formt"},
 		{[]string{"--format", "fp16", "--seed", "-3", "1"}, "-3"},
 	} {
