@@ -1,17 +1,28 @@
 package main
 
-import "github.com/spf13/cobra"
+import (
+	"fmt"
+
+	"github.com/spf13/cobra"
+
+	"ulpine/results/report"
+)
 
 func newReport() *cobra.Command {
 	cmd := &cobra.Command{
 		Use:   "report PLAN",
 		Short: "Write the report on a plan from what the store holds",
-		Long: `Write the report: one HTML page that needs nothing else, its figures as SVG and
-PNG files, and its numbers as CSV and JSON.`,
+		Long: `Write the report: one HTML page that needs nothing else, the same as Markdown, its
+figures as SVG and PNG files, and its numbers as CSV and JSON.
+
+With --figures, write the figures alone, on a white ground and without a margin,
+as a paper wants them.`,
 		Args: exactly("PLAN"),
 	}
 	path := storeFlag(cmd)
 	dir := cmd.Flags().String("to", "", "`directory` of the report (default ulpine-report/PLAN)")
+	figures := cmd.Flags().String("figures", "", "write only the figures, for a paper, to this `directory`")
+	cmd.MarkFlagsMutuallyExclusive("to", "figures")
 	cmd.RunE = func(cmd *cobra.Command, args []string) error {
 		p, err := loadPlan(args[0], cmd.ErrOrStderr())
 		if err != nil {
@@ -19,6 +30,13 @@ PNG files, and its numbers as CSV and JSON.`,
 		}
 		study, err := studyOf(p, *path)
 		if err != nil {
+			return err
+		}
+		if *figures != "" {
+			if err := report.WriteFigures(*figures, study); err != nil {
+				return err
+			}
+			_, err := fmt.Fprintf(cmd.OutOrStdout(), "\nfigures: %s\n", *figures)
 			return err
 		}
 		if *dir == "" {

@@ -2,6 +2,7 @@ package report
 
 import (
 	"fmt"
+	"slices"
 	"strings"
 
 	"ulpine/results"
@@ -13,20 +14,34 @@ func costSection(v *view) any {
 	if c == nil {
 		return nil
 	}
-	data := struct {
-		Answer      string
-		Tables      []*tabular
-		Assumptions list
-		Cautions    list
-	}{Answer: plain(c.Answer)}
-	data.Tables = append(data.Tables, v.costTable(), v.trafficTable())
-	for _, a := range append([]string{"Machine: " + c.Machine, "Energy: " + c.Energy}, c.Assumptions...) {
-		data.Assumptions.Items = append(data.Assumptions.Items, plain(a))
+	return struct {
+		Answer                string
+		Tables                []*tabular
+		Assumptions, Cautions list
+	}{plain(c.Answer), v.costTables(), list{Items: v.assumptions()}, list{Items: v.costCautions()}}
+}
+
+// costTables are the tables of the section.
+func (v *view) costTables() []*tabular {
+	return []*tabular{v.costTable(), v.inferenceTable(), v.trafficTable()}
+}
+
+// assumptions are the tables and rules that the figures rest on.
+func (v *view) assumptions() []string {
+	out := []string{"Machine: " + plain(v.Costs.Machine), "Energy: " + plain(v.Costs.Energy)}
+	for _, a := range v.Costs.Assumptions {
+		out = append(out, plain(a))
 	}
-	for _, a := range append(append([]string(nil), c.Cautions...), c.Warnings...) {
-		data.Cautions.Items = append(data.Cautions.Items, plain(a))
+	return out
+}
+
+// costCautions are what a reader must not be misled about, and doubts.
+func (v *view) costCautions() []string {
+	var out []string
+	for _, a := range slices.Concat(v.Costs.Cautions, v.Costs.Warnings) {
+		out = append(out, plain(a))
 	}
-	return data
+	return out
 }
 
 // billed goes through the arms that have a bill, the baseline first.
@@ -38,25 +53,39 @@ func (v *view) billed(each func(a *armView, b *results.Bill)) {
 	}
 }
 
-// costTable is memory, traffic, time and energy of every arm.
+// costTable is a training step of every arm.
 func (v *view) costTable() *tabular {
 	t := &tabular{
-		Caption: fmt.Sprintf("A training step of %s and an inference, by model, against FP32", plural(int(v.Costs.Batch), "example")),
-		Columns: columns("Arm", "#memory, training", "#memory, endpoint", "#bytes a step", "#of FP32", "#step: times as fast", "step waits for", "#energy of FP32", "#bytes an inference", "#inference: energy of FP32"),
+		Caption: fmt.Sprintf("A training step of %s, by model, against FP32", plural(int(v.Costs.Batch), "example")),
+		Columns: columns("Arm", "#memory", "#bytes moved", "#% of FP32's", "#times as fast", "waits for", "#energy, % of FP32's"),
 		Notes:   []string{"Two figures are two models of reuse: each tensor moved once a phase, and products in blocks through a cache. A star marks figures for which a table had no row and a stated rule stood in."},
 	}
 	v.billed(func(a *armView, b *results.Bill) {
-		t.Rows = append(t.Rows, []string{
-			a.Label(), byteWords(b.TrainingBits), byteWords(b.EndpointBits), byteSpan(b.Step.Bits, b.StepTiled.Bits),
-			shareSpan(b.Step.BitShare, b.StepTiled.BitShare) + " %",
-			starred(span(significant(b.Step.Speedup, 3), significant(b.StepTiled.Speedup, 3)), b.Step.TimeExtrapolated || b.StepTiled.TimeExtrapolated),
-			span(plain(b.Step.Binds), plain(b.StepTiled.Binds)),
-			starred(shareSpan(b.Step.EnergyShare, b.StepTiled.EnergyShare)+" %", b.Step.EnergyExtrapolated || b.StepTiled.EnergyExtrapolated),
-			byteSpan(b.Inference.Bits, b.InferenceTiled.Bits),
-			starred(shareSpan(b.Inference.EnergyShare, b.InferenceTiled.EnergyShare)+" %", b.Inference.EnergyExtrapolated || b.InferenceTiled.EnergyExtrapolated),
-		})
+		t.Rows = append(t.Rows, append([]string{a.Label(), byteWords(b.TrainingBits)}, chargeCells(&b.Step, &b.StepTiled)...))
 	})
 	return t
+}
+
+// inferenceTable is an inference of every arm.
+func (v *view) inferenceTable() *tabular {
+	t := &tabular{
+		Caption: "An inference, by model, against FP32",
+		Columns: columns("Arm", "#memory at the endpoint", "#bytes moved", "#% of FP32's", "#times as fast", "waits for", "#energy, % of FP32's"),
+	}
+	v.billed(func(a *armView, b *results.Bill) {
+		t.Rows = append(t.Rows, append([]string{a.Label(), byteWords(b.EndpointBits)}, chargeCells(&b.Inference, &b.InferenceTiled)...))
+	})
+	return t
+}
+
+// chargeCells spells traffic, time and energy under both models of reuse.
+func chargeCells(once, tiled *results.Charge) []string {
+	return []string{
+		byteSpan(once.Bits, tiled.Bits), shareSpan(once.BitShare, tiled.BitShare),
+		starred(span(significant(once.Speedup, 3), significant(tiled.Speedup, 3)), once.TimeExtrapolated || tiled.TimeExtrapolated),
+		span(plain(once.Binds), plain(tiled.Binds)),
+		starred(shareSpan(once.EnergyShare, tiled.EnergyShare), once.EnergyExtrapolated || tiled.EnergyExtrapolated),
+	}
 }
 
 // trafficTable is the bytes of a step by what they hold.

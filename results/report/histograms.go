@@ -2,7 +2,6 @@ package report
 
 import (
 	"fmt"
-	"html/template"
 	"math"
 	"slices"
 	"strings"
@@ -119,6 +118,18 @@ func (s *seen) head() string {
 
 // histogramSection is left out when nothing was recorded.
 func histogramSection(v *view) any {
+	t := v.histogramTable()
+	if t == nil {
+		return nil
+	}
+	return figureWith{
+		Figure:  figureHTML(v, "exponents", "Columns: values by binary exponent, as shares of all values at the point, before they are rounded. Below them the range of the format as a ruler: its thin part holds subnormal numbers. What lies outside it is hatched and counted in words.", false),
+		Caption: t.Caption, Table: t,
+	}
+}
+
+// histogramTable counts what lies outside the range; nil when nothing was recorded.
+func (v *view) histogramTable() *tabular {
 	all := v.histograms()
 	if len(all) == 0 {
 		return nil
@@ -130,21 +141,16 @@ func histogramSection(v *view) any {
 	for i := range all {
 		s := &all[i]
 		below, above := s.outside()
-		row := []string{fmt.Sprintf("%s, %d", s.arm.Label(), s.replicate), layerName(s.Layer, s.Name), plain(s.Point), orMissing(s.format), count(total(&s.Histogram)), count(below), count(above), count(s.Zeros), count(s.NotFinite)}
+		row := []string{
+			fmt.Sprintf("%s, %d", s.arm.Label(), s.replicate), layerName(s.Layer, s.Name), plain(s.Point), orMissing(s.format),
+			count(total(&s.Histogram)), count(below), count(above), count(s.Zeros), count(s.NotFinite),
+		}
 		if s.limits == nil {
 			row[5], row[6] = missing, missing
 		}
 		t.Rows = append(t.Rows, row)
 	}
-	return struct {
-		Figure  template.HTML
-		Caption string
-		Table   *tabular
-		Without string
-	}{
-		figureHTML(v, "exponents", "Columns: values by binary exponent, as shares of all values at the point, before they are rounded. Below them the range of the format as a ruler: its thin part holds subnormal numbers. What lies outside it is hatched and counted in words.", false),
-		t.Caption, t, "",
-	}
+	return t
 }
 
 // exponentFigures draws histograms as small plots in three columns.

@@ -65,6 +65,11 @@ func (v *view) json(w io.Writer) error {
 		"comparisons": comparisonObjects(v.Comparisons), "contrasts": comparisonObjects(v.Contrasts),
 		"arms": v.armObjects(), "runs": v.runObjects(),
 	}
+	if v.Costs != nil {
+		top["costs"] = v.Costs
+	}
+	top["volumes"], top["ranges"] = append([]results.Volume{}, v.Volumes...), append([]results.Range{}, v.Ranges...)
+	top["diagnoses"] = append([]results.Diagnosis{}, v.Diagnoses...)
 	top.float("margin", v.Margin)
 	top.float("confidence", v.Confidence)
 	if v.NoiseHigh > v.NoiseLow {
@@ -139,6 +144,7 @@ func (v *view) armObjects() []object {
 		o := object{
 			"name": a.Name, "slug": a.Slug, "baseline": a.Baseline, "settings": a.Settings, "summary": a.Summary,
 			"loss_scale": a.LossScale, "score": a.Score.object(), "recall": v.recallObjects(a), "guilty": filled(a.Guilty),
+			"grid": a.Grid, "axes": append([]results.Coordinate{}, a.Axes...),
 		}
 		o.float("bits", a.Bits)
 		c := object{"n": a.Training.N, "diverged": a.Training.Diverged}

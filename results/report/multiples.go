@@ -68,7 +68,11 @@ func (m *multiples) draw(ps []plotOf) *draw.Figure {
 	}
 	rows := (len(ps) + columns - 1) / columns
 	f := &draw.Figure{Title: m.title, W: m.width, H: 16 + float64(rows)*(multipleHead+multiplePlot+foot)}
-	f.Group.Text(0, 11, m.title+": difference to the baseline"+commaUnit(m.v), draw.Type{Size: 11, Role: draw.Soft, Max: m.width})
+	words := m.title + ": difference to the baseline" + commaUnit(m.v)
+	if m.d.fold() > 0 {
+		words += "; linear between the dotted lines, logarithmic outside"
+	}
+	f.Group.Text(0, 11, words, draw.Type{Size: 11, Role: draw.Soft, Max: m.width})
 	var said []string
 	for i, p := range ps {
 		x, y := cell*float64(i%columns), 16+(multipleHead+multiplePlot+foot)*float64(i/columns)
@@ -116,6 +120,13 @@ func (m *multiples) ground(g *draw.Group, f frame, turned bool) {
 	}
 	f.grid(g, draw.TickLabel)
 	g.Line(f.x0, f.inside(0), f.x1, f.inside(0), draw.Line(draw.Ink, 1.2))
+	if fold := m.d.fold(); fold > 0 { // where the scale turns logarithmic
+		for _, at := range []float64{-fold, fold} {
+			if y := f.y.At(at); y > f.y0 && y < f.y1 {
+				g.Line(f.x0, y, f.x1, y, draw.Line(draw.Soft, 1).Dashed(2, 3))
+			}
+		}
+	}
 	if m.d.margin > 0 {
 		y := f.inside(-m.d.margin)
 		t := g.Titled("margin " + fixed(-m.d.margin, marginDigits(m.d.margin)))
@@ -158,7 +169,7 @@ func (m *multiples) plot(g *draw.Group, f frame, p plotOf, lines []string) {
 		for _, a := range arms {
 			pts = append(pts, draw.Point{X: f.x.At(m.place(a)) + shift, Y: f.inside(m.v.words.scale(a.Comparison.Mean))})
 		}
-		g.Polyline(pts, draw.Line(role, 1.3).Dashed(dashes[k%len(dashes)]...).With(0.8))
+		g.Polyline(m.joined(arms, pts), draw.Line(role, 1.3).Dashed(dashes[k%len(dashes)]...).With(0.8))
 		for i, a := range arms {
 			m.mark(g, f, pts[i], a, role)
 		}
@@ -170,6 +181,20 @@ func (m *multiples) plot(g *draw.Group, f frame, p plotOf, lines []string) {
 		}
 	}
 	writeEnds(g, f, ends)
+}
+
+// joined are the points that a line passes: where arms share a place, the best.
+func (m *multiples) joined(arms []*armView, pts []draw.Point) []draw.Point {
+	var out []draw.Point
+	for i, q := range pts {
+		switch n := len(out); {
+		case n == 0 || m.place(arms[i])-m.place(arms[i-1]) > 0.05:
+			out = append(out, q)
+		case !(out[n-1].Y <= q.Y): // higher up is better
+			out[n-1] = q
+		}
+	}
+	return out
 }
 
 // mark draws one arm: its interval and, at its mean, its verdict's mark.

@@ -58,6 +58,22 @@ func counterSection(v *view) any {
 	return d
 }
 
+// rangeTable is the same as one table.
+func (v *view) rangeTable() *tabular {
+	d := counterSection(v).(rangesData)
+	t := &tabular{Caption: d.Caption, Columns: append(columns("Arm"), d.Columns...), Notes: d.Notes}
+	for _, g := range d.Groups {
+		rows := g.Rows
+		if g.More != nil {
+			rows = append(slices.Clone(rows), g.More.Rows...)
+		}
+		for _, r := range rows {
+			t.Rows = append(t.Rows, append([]string{g.Head}, r...))
+		}
+	}
+	return t
+}
+
 // rangeGroup is an arm's rows and the number of its points without an event.
 func (v *view) rangeGroup(a *armView, cols []column) (g rowGroup, quiet int) {
 	all := tallies(a)

@@ -19,13 +19,18 @@ type advice struct {
 	narrower []string // arms with fewer bits here that were not shown to stay within
 }
 
+// recommendation is what the section says.
+type recommendation struct {
+	Lead  []string
+	Table *tabular
+}
+
 // recommendSection is, for each rounding point, the fewest bits among the arms
 // within the margin.
-func recommendSection(v *view) any {
-	data := struct {
-		Lead  []string
-		Table *tabular
-	}{}
+func recommendSection(v *view) any { return v.recommendation() }
+
+func (v *view) recommendation() recommendation {
+	var data recommendation
 	best := v.leanest()
 	switch {
 	case len(v.Comparisons) == 0:

@@ -12,7 +12,16 @@ import (
 
 // runSection lists every run, the diverged ones included.
 func runSection(v *view) any {
-	t := tabular{
+	summary, t := v.runTable()
+	return struct {
+		Summary string
+		Table   tabular
+	}{summary, t}
+}
+
+// runTable is the table of runs with its summary.
+func (v *view) runTable() (summary string, t tabular) {
+	t = tabular{
 		Caption: "All runs with their digests",
 		Columns: columns("Run", "state", "outcome", "#training loss", "#"+plain(v.Metric), "#steps skipped", "#seconds", "digest"),
 	}
@@ -27,13 +36,8 @@ func runSection(v *view) any {
 		}
 		t.Rows = append(t.Rows, v.runRow(r))
 	}
-	return struct {
-		Summary string
-		Table   tabular
-	}{
-		fmt.Sprintf("%s; %d diverged, %d stalled. A run that diverged stopped there and is scored as it stands: it counts as an outcome. The digest covers loss curve, counters and final weights.",
-			plural(len(v.Runs), "run"), diverged, stalled), t,
-	}
+	return fmt.Sprintf("%s; %d diverged, %d stalled. A run that diverged stopped there and is scored as it stands: it counts as an outcome. The digest covers loss curve, counters and final weights.",
+		plural(len(v.Runs), "run"), diverged, stalled), t
 }
 
 // runRow is one run: its last epoch, and the steps skipped in all of them.
@@ -105,11 +109,15 @@ func planSection(v *view) any {
 
 // rerunSection is the commands that repeat the study.
 func rerunSection(v *view) any {
-	data := struct{ Commands []string }{}
+	return struct{ Commands []string }{rerunLines(v)}
+}
+
+func rerunLines(v *view) []string {
+	var out []string
 	for _, c := range v.Rerun {
-		data.Commands = append(data.Commands, plain(c))
+		out = append(out, plain(c))
 	}
-	return data
+	return out
 }
 
 // list is a list of lines, or words in its stead.

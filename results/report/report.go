@@ -19,7 +19,8 @@ const PageName = "report.html"
 const dots = 2.5
 
 // Write writes a study to a directory, which it makes when it is missing:
-// report.html, figures/NAME.svg and .png, numbers/NAME.csv and numbers/numbers.json.
+// report.html, report.md, figures/NAME.svg and .png, numbers/NAME.csv and
+// numbers/numbers.json.
 // The page is written last and needs none of the other files.
 func Write(dir string, s *results.Study) error {
 	v := newView(s)
@@ -46,7 +47,28 @@ func Write(dir string, s *results.Study) error {
 	if err := file(filepath.Join(dir, "numbers", "numbers.json"), v.json); err != nil {
 		return err
 	}
+	if err := file(filepath.Join(dir, MarkdownName), v.markdown); err != nil {
+		return err
+	}
 	return file(filepath.Join(dir, PageName), v.html)
+}
+
+// WriteFigures writes the figures alone, as SVG and PNG files on a white ground
+// and without a margin, for papers. The directory is made when it is missing.
+func WriteFigures(dir string, s *results.Study) error {
+	if err := os.MkdirAll(dir, 0o755); err != nil {
+		return fmt.Errorf("report: %w", err)
+	}
+	for _, f := range newView(s).figures() {
+		base := filepath.Join(dir, f.ID)
+		if err := file(base+".svg", f.WritePlain); err != nil {
+			return err
+		}
+		if err := file(base+".png", func(w io.Writer) error { return f.WritePlainPNG(w, dots) }); err != nil {
+			return err
+		}
+	}
+	return nil
 }
 
 // Figures draws every figure of a study that has something to show, as the

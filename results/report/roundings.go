@@ -19,7 +19,7 @@ type twin struct {
 	contrast            *results.Comparison // of the two, where the plan asks for it; nil: not
 }
 
-// twins finds them, each pair once, in the plan's order.
+// twins finds them, each stochastic arm once, in the plan's order.
 func (v *view) twins() []twin {
 	var out []twin
 	arms := v.arms
@@ -36,6 +36,7 @@ func (v *view) twins() []twin {
 				}
 			}
 			out = append(out, t)
+			break
 		}
 	}
 	return out
@@ -74,6 +75,19 @@ func isStochastic(rounding string) bool {
 // twinSection sets stochastic beside nearest rounding; nil where no two arms
 // differ in that alone.
 func twinSection(v *view) any {
+	t := v.twinTable()
+	if t == nil {
+		return nil
+	}
+	caption := "Two arms that share everything but the rounding at the named points: above the line rounded to nearest, below it stochastically (dotted). Bars, marks, post and scale as among the paired differences to the baseline."
+	return struct {
+		Figure template.HTML
+		Table  *tabular
+	}{figureHTML(v, "stochastic-beside-nearest", caption, false), t}
+}
+
+// twinTable has a row a pair; nil when there is none.
+func (v *view) twinTable() *tabular {
 	all := v.twins()
 	if len(all) == 0 {
 		return nil
@@ -89,11 +103,7 @@ func twinSection(v *view) any {
 		}
 		t.Rows = append(t.Rows, []string{strings.Join(w.points, "; "), v.twinCell(w.nearest), v.twinCell(w.stochastic), direct})
 	}
-	caption := "Two arms that share everything but the rounding at the named points: above the line rounded to nearest, below it stochastically (dotted). Bars, marks, post and scale as among the paired differences to the baseline."
-	return struct {
-		Figure template.HTML
-		Table  *tabular
-	}{figureHTML(v, "stochastic-beside-nearest", caption, false), t}
+	return t
 }
 
 // twinCell is one of two arms with its difference.

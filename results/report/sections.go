@@ -127,14 +127,7 @@ func frontSection(v *view) any {
 		caption += " The arms are numbered as in the verdict table; the names are those of the Pareto set."
 	}
 	model := "A figure of a model, not a measurement. Level bar: from each tensor moved once a phase (the mark) to products in blocks through a cache. "
-	t := &tabular{Caption: "Scores in numbers", Columns: columns("Arm", "#bits a value", "#bytes moved, % of FP32", "#energy, % of FP32", "#mean with its own interval", "#difference to the baseline with interval")}
-	for _, a := range v.arms {
-		row := []string{a.Label(), bits(a.Bits), missing, missing, v.scoreLine(a.Score), v.differenceLine(a)}
-		if b := a.Bill; b != nil {
-			row[2], row[3] = shareSpan(b.Step.BitShare, b.StepTiled.BitShare), shareSpan(b.Step.EnergyShare, b.StepTiled.EnergyShare)
-		}
-		t.Rows = append(t.Rows, row)
-	}
+	t := v.frontTable()
 	data := struct {
 		Figures []template.HTML
 		figureWith
@@ -145,6 +138,19 @@ func frontSection(v *view) any {
 		}
 	}
 	return data
+}
+
+// frontTable is the scores in numbers.
+func (v *view) frontTable() *tabular {
+	t := &tabular{Caption: "Scores in numbers", Columns: columns("Arm", "#bits a value", "#bytes moved, % of FP32", "#energy, % of FP32", "#mean with its own interval", "#difference to the baseline with interval")}
+	for _, a := range v.arms {
+		row := []string{a.Label(), bits(a.Bits), missing, missing, v.scoreLine(a.Score), v.differenceLine(a)}
+		if b := a.Bill; b != nil {
+			row[2], row[3] = shareSpan(b.Step.BitShare, b.StepTiled.BitShare), shareSpan(b.Step.EnergyShare, b.StepTiled.EnergyShare)
+		}
+		t.Rows = append(t.Rows, row)
+	}
+	return t
 }
 
 // shareSpan spells what two models say of a share of FP32's expense.

@@ -25,6 +25,9 @@ var sheetTable = []struct {
 	{"curves", []string{"arm", "epoch", "training_loss_lower_quartile", "training_loss_median", "training_loss_upper_quartile", "n"}, curveRows},
 	{"counters", []string{"arm", "replicate", "layer", "layer_name", "point", "overflow", "underflow", "saturated", "nan"}, counterRows},
 	{"recall", []string{"arm", "class", "mean", "low", "high", "n", "worst_replicate", "worst_right", "worst_of", "worst_low", "worst_high"}, recallRows},
+	{"costs", costHeader, costRows},
+	{"histograms", []string{"arm", "replicate", "layer", "layer_name", "point", "epoch", "exponent", "count", "zeros", "not_finite"}, histogramRows},
+	{"grid", []string{"arm", "grid", "axis", "value"}, gridRows},
 	{"confusion", []string{"arm", "replicate", "true_class", "called", "count"}, confusionRows},
 }
 
@@ -184,6 +187,58 @@ func recallRows(v *view) (rows [][]string) {
 				a.Slug, r.Class, floatCell(r.Mean.Mean), floatCell(r.Mean.Low), floatCell(r.Mean.High), intCell(r.Mean.N),
 				worst, uintCell(r.Hit), uintCell(r.Of), floatCell(r.Low), floatCell(r.High),
 			})
+		}
+	}
+	return rows
+}
+
+// costHeader are the columns of costs.csv: a row an arm, work (a training step, an
+// inference) and model of reuse. Bits, seconds and picojoules.
+var costHeader = []string{
+	"arm", "work", "reuse", "memory_bits", "bits", "weights", "activations", "gradients", "optimizer_state", "master_copy", "random_bits",
+	"seconds", "binds", "picojoules", "bit_share", "speed_up", "energy_share", "time_extrapolated", "energy_extrapolated",
+}
+
+func costRows(v *view) (rows [][]string) {
+	v.billed(func(a *armView, b *results.Bill) {
+		for _, x := range []struct {
+			work, reuse string
+			memory      uint64
+			c           *results.Charge
+		}{
+			{"step", "once", b.TrainingBits, &b.Step},
+			{"step", "tiled", b.TrainingBits, &b.StepTiled},
+			{"inference", "once", b.EndpointBits, &b.Inference},
+			{"inference", "tiled", b.EndpointBits, &b.InferenceTiled},
+		} {
+			c := x.c
+			rows = append(rows, []string{
+				a.Slug, x.work, x.reuse, uintCell(x.memory), uintCell(c.Bits), uintCell(c.Weights), uintCell(c.Activations), uintCell(c.Gradients),
+				uintCell(c.State), uintCell(c.Master), uintCell(c.Random), floatCell(c.Seconds), c.Binds, floatCell(c.Picojoules),
+				floatCell(c.BitShare), floatCell(c.Speedup), floatCell(c.EnergyShare), strconv.FormatBool(c.TimeExtrapolated), strconv.FormatBool(c.EnergyExtrapolated),
+			})
+		}
+	})
+	return rows
+}
+
+func histogramRows(v *view) (rows [][]string) {
+	for _, d := range v.Diagnoses {
+		for _, h := range d.Histograms {
+			for i, n := range h.Counts {
+				rows = append(rows, []string{
+					d.Arm, uintCell(d.Replicate), intCell(h.Layer), h.Name, h.Point, intCell(h.Epoch), intCell(h.Lowest + i), uintCell(n), uintCell(h.Zeros), uintCell(h.NotFinite),
+				})
+			}
+		}
+	}
+	return rows
+}
+
+func gridRows(v *view) (rows [][]string) {
+	for _, a := range v.arms {
+		for _, c := range a.Axes {
+			rows = append(rows, []string{a.Slug, a.Grid, c.Axis, c.Value})
 		}
 	}
 	return rows

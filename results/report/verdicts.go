@@ -13,7 +13,10 @@ import (
 )
 
 // claimSection is what was asked and what was fixed before the first run.
-func claimSection(v *view) any {
+func claimSection(v *view) any { return struct{ Facts []fact }{v.claimFacts()} }
+
+// claimFacts lists it.
+func (v *view) claimFacts() []fact {
 	var facts []fact
 	add := func(head, text string) { // what is not known is not listed
 		if text = plain(text); text != "" && text != missing {
@@ -46,7 +49,7 @@ func claimSection(v *view) any {
 	}
 	add("Training", v.Training)
 	add("Plan", v.PlanFile)
-	return struct{ Facts []fact }{facts}
+	return facts
 }
 
 // marginWords spells the margin in the metric's unit.
@@ -173,6 +176,30 @@ func (v *view) verdictRow(a *armView) verdictRow {
 		}
 	}
 	return r
+}
+
+// verdictTable is the table of verdicts in words alone.
+func (v *view) verdictTable() *tabular {
+	t := &tabular{
+		Caption: "Verdicts, the baseline first",
+		Columns: columns("Arm", "verdict", "#mean difference"+commaShort(v), "#"+percentage(v.Confidence)+" interval", "#pairs", "#diverged", "#stalled", "#bits a value", "formats", "score"),
+	}
+	for _, a := range v.arms {
+		r := v.verdictRow(a)
+		words := r.Verdict
+		if k, ok := a.kind(); ok {
+			words = verdictMark(k) + " " + words
+		}
+		var formats []string
+		for _, s := range a.Strips {
+			formats = append(formats, s.Label()+" ("+s.Split()+")")
+		}
+		if r.LossScale != "" {
+			formats = append(formats, "loss scale "+r.LossScale)
+		}
+		t.Rows = append(t.Rows, []string{a.Label(), words, r.Difference, r.Interval, r.N, r.Diverged, r.Stalled, r.Bits, strings.Join(formats, "; "), r.Score})
+	}
+	return t
 }
 
 // lost counts an arm's runs that diverged or stalled.

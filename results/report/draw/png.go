@@ -10,25 +10,35 @@ import (
 )
 
 // WritePNG writes the figure in the light theme at scale dots a pixel (2 is
-// good for a screen, 3 for print).
+// good for a screen, 3 for print), with a margin.
 func (f *Figure) WritePNG(w io.Writer, scale float64) error {
-	ground, _ := Light.Colour(Paper)
+	return f.writePNG(w, &Light, FilePad, scale)
+}
+
+// WritePlainPNG writes the figure for a paper: on white, without a margin.
+func (f *Figure) WritePlainPNG(w io.Writer, scale float64) error {
+	return f.writePNG(w, &White, 0, scale)
+}
+
+func (f *Figure) writePNG(w io.Writer, theme *Theme, pad, scale float64) error {
+	ground, _ := theme.Colour(Paper)
 	// One pixel of the figure is one vg point, and 72 points are an inch.
 	c := vgimg.NewWith(
-		vgimg.UseWH(vg.Length(f.W+2*FilePad), vg.Length(f.H+2*FilePad)),
+		vgimg.UseWH(vg.Length(f.W+2*pad), vg.Length(f.H+2*pad)),
 		vgimg.UseDPI(int(math.Round(72*scale))),
 		vgimg.UseBackgroundColor(ground),
 	)
-	c.Translate(vg.Point{X: FilePad, Y: FilePad})
-	r := raster{c, f.H}
+	c.Translate(vg.Point{X: vg.Length(pad), Y: vg.Length(pad)})
+	r := raster{c, f.H, theme}
 	r.marks(f.Marks)
 	return png.Encode(w, c.Image())
 }
 
 // raster paints marks on a canvas whose y axis points up.
 type raster struct {
-	c vg.Canvas
-	h float64
+	c     vg.Canvas
+	h     float64
+	theme *Theme
 }
 
 func (r raster) marks(ms []Mark) {
@@ -92,7 +102,7 @@ func width(s Style) float64 {
 
 // paint sets the colour; false when there is nothing to paint.
 func (r raster) paint(role Role, opacity float64) bool {
-	c, ok := Light.Colour(role)
+	c, ok := r.theme.Colour(role)
 	if !ok {
 		return false
 	}

@@ -61,6 +61,13 @@ var Light = Theme{
 	Series5: "#8c3a1c", Series6: "#3b4a9c",
 }
 
+// White is Light on a white ground, for papers.
+var White = func() Theme {
+	t := Light
+	t[Paper] = "#ffffff"
+	return t
+}()
+
 // Dark is the theme of the page on dark screens.
 var Dark = Theme{
 	None: "none", Paper: "#11191f", Ink: "#e4ebee", Soft: "#9fb0b9", Faint: "#33424b",

@@ -18,13 +18,19 @@ const Families = `'Helvetica Neue', Helvetica, Arial, 'Liberation Sans', sans-se
 const FilePad = 10.0
 
 // WriteFile writes the figure as an SVG file of its own, in the light theme,
-// with a ground.
-func (f *Figure) WriteFile(w io.Writer) error {
-	e := &svgWriter{w: bufio.NewWriter(w), theme: &Light}
+// with a ground and a margin.
+func (f *Figure) WriteFile(w io.Writer) error { return f.writeSVG(w, &Light, FilePad) }
+
+// WritePlain writes the figure as an SVG file for a paper: on white, without a
+// margin.
+func (f *Figure) WritePlain(w io.Writer) error { return f.writeSVG(w, &White, 0) }
+
+func (f *Figure) writeSVG(w io.Writer, theme *Theme, pad float64) error {
+	e := &svgWriter{w: bufio.NewWriter(w), theme: theme}
 	e.put(`<?xml version="1.0" encoding="UTF-8"?>` + "\n")
-	w2, h2 := num(f.W+2*FilePad), num(f.H+2*FilePad)
-	e.open(f, f.ID, FilePad, fmt.Sprintf(` width="%s" height="%s" font-family="%s"`, w2, h2, Families))
-	e.put(fmt.Sprintf(`<rect x="%[1]s" y="%[1]s" width="%[2]s" height="%[3]s" fill="%[4]s"/>`, num(-FilePad), w2, h2, Light[Paper]))
+	w2, h2 := num(f.W+2*pad), num(f.H+2*pad)
+	e.open(f, f.ID, pad, fmt.Sprintf(` width="%s" height="%s" font-family="%s"`, w2, h2, Families))
+	e.put(fmt.Sprintf(`<rect x="%[1]s" y="%[1]s" width="%[2]s" height="%[3]s" fill="%[4]s"/>`, num(-pad), w2, h2, theme[Paper]))
 	e.marks(f.Marks)
 	e.put("</svg>\n")
 	return e.w.Flush()
