@@ -213,7 +213,7 @@ func (c *checker) oneElement(m *matmulJob, p quant.Product[float64]) {
 		c.that(sameBits(one.C[m.traceRow], want), "%s: element %d,%d alone is %v, in the product %v", m.acc, m.traceRow, m.traceCol, one.C[m.traceRow], want)
 		return
 	}
-	_, err := traceOf(m, p, 1)
+	_, err := traceOf(m, p)
 	c.that(err == nil, "%s: element %d,%d: %v", m.acc, m.traceRow, m.traceCol, err)
 }
 

@@ -5,6 +5,7 @@ import (
 	"io"
 	"math"
 	"os"
+	"slices"
 	"strconv"
 	"strings"
 	"text/tabwriter"
@@ -37,7 +38,8 @@ func newMatmul() *cobra.Command {
 every partial sum rounded as a datapath would, and write the result: float32, or
 float64 where the sum's format needs it.
 
---operands rounds the inputs first. --product is exact (one rounding a step) or a
+--operands rounds the inputs first; where a format has a scale per channel, the rows
+of A are the channels, and B has one scale. --product is exact (one rounding a step) or a
 format; --outer is the format in which finished chunks are added. A format may be
 followed by a rounding and an overflow policy of its own ("fp16 toward-zero
 saturate"); the flags hold for the others.
@@ -271,7 +273,7 @@ func shapeWords(shape []int) string {
 func multiply[T quant.Element](m *matmulJob, a, b *npy.Array, out, errw io.Writer) error {
 	left, right := make([]T, len(a.Values)), make([]T, len(b.Values))
 	var stored, products, sums quant.Counts
-	scale := m.prepare(a, b, func(i int, x float64) { left[i] = T(x) }, func(i int, x float64) { right[i] = T(x) }, &stored)
+	factors := m.prepare(a, b, func(i int, x float64) { left[i] = T(x) }, func(i int, x float64) { right[i] = T(x) }, &stored)
 	mul, err := quant.NewMultiplier[T](m.acc)
 	if err != nil {
 		return badInput(err)
@@ -283,11 +285,8 @@ func multiply[T quant.Element](m *matmulJob, a, b *npy.Array, out, errw io.Write
 		Terms: quant.Streams{Row: m.draws(siteTermRow), Column: m.draws(siteTermColumn)},
 		Sums:  quant.Streams{Row: m.draws(siteSumRow), Column: m.draws(siteSumColumn)},
 	}
-	if scale != 1 {
-		p.Scale = make([]float64, m.i)
-		for i := range p.Scale {
-			p.Scale[i] = scale
-		}
+	if slices.ContainsFunc(factors, func(f float64) bool { return f != 1 }) {
+		p.Scale = factors
 	}
 	mul.Mul(p, &products, &sums)
 	report := out
@@ -295,7 +294,7 @@ func multiply[T quant.Element](m *matmulJob, a, b *npy.Array, out, errw io.Write
 		if m.traceTo == "" {
 			report = errw // standard output is the trace's
 		}
-		lines, err := traceOf(m, p, scale)
+		lines, err := traceOf(m, p)
 		if err != nil {
 			return err
 		}
@@ -316,28 +315,30 @@ func multiply[T quant.Element](m *matmulJob, a, b *npy.Array, out, errw io.Write
 }
 
 // prepare rounds the operands, if it is asked for, hands them over and returns the
-// factor of the finished sums.
-func (m *matmulJob) prepare(a, b *npy.Array, setA, setB func(int, float64), n *quant.Counts) float64 {
-	scale := 1.0
-	for _, side := range []struct {
-		x     *npy.Array
-		shape quant.Shape // the axis of the sums is the second of A and the first of B
-		site  uint32
-		set   func(int, float64)
-	}{
-		{a, quant.Shape{Outer: m.i, Axis: m.k, Inner: 1}, siteA, setA},
-		{b, quant.Shape{Outer: 1, Axis: m.k, Inner: m.j}, siteB, setB},
-	} {
-		values := side.x.Values
-		if m.first != nil {
-			values = make([]float64, len(side.x.Values))
-			scale *= quant.RoundTensor(values, side.x.Values, side.shape, m.first, m.draws(side.site), 0, n)
-		}
-		for i, v := range values {
-			side.set(i, v)
+// factors of the finished sums of every row. The rows of A are its channels; B has
+// one scale.
+func (m *matmulJob) prepare(a, b *npy.Array, setA, setB func(int, float64), n *quant.Counts) []float64 {
+	factors := make([]float64, m.i)
+	for i := range factors {
+		factors[i] = 1
+	}
+	left, right := a.Values, b.Values
+	if m.first != nil {
+		// The axis of the sums is the second of A and the first of B.
+		left, right = make([]float64, len(a.Values)), make([]float64, len(b.Values))
+		quant.RoundChannels(left, a.Values, quant.Shape{Outer: m.i, Axis: m.k, Inner: 1}, m.first, m.draws(siteA), 0, n, factors)
+		f := quant.RoundTensor(right, b.Values, quant.Shape{Outer: 1, Axis: m.k, Inner: m.j}, m.first, m.draws(siteB), 0, n)
+		for i := range factors {
+			factors[i] = float64(factors[i] * f) // both are binary32 numbers: exact
 		}
 	}
-	return scale
+	for i, v := range left {
+		setA(i, v)
+	}
+	for i, v := range right {
+		setB(i, v)
+	}
+	return factors
 }
 
 // report prints what was computed and what left its range.

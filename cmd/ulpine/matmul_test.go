@@ -344,7 +344,7 @@ func TestPrefixes(t *testing.T) {
 		t.Fatal(err)
 	}
 	mul.Mul(p, nil, nil)
-	lines, err := traceOf(m, p, 1)
+	lines, err := traceOf(m, p)
 	if err != nil {
 		t.Fatal(err)
 	}
@@ -406,4 +406,17 @@ func TestMatmulBlocks(t *testing.T) {
 		}
 	}
 	checkTrace(t, filepath.Join(dir, "t.csv"), 8, got.Values[3])
+	// A scale per row of A: the small row keeps its precision.
+	two := writeArray(t, dir, "two.npy", false, []int{2, 2}, []float64{127, 1, 0.127, 0.001})
+	unit := writeArray(t, dir, "unit.npy", false, []int{2, 2}, []float64{127, 0, 0, 127})
+	for format, want := range map[string]float64{"INT8": 0, "INT8(per=channel)": 0.001 * 127} {
+		must(t, "matmul", two, unit, "--operands", format, "--sum", "fp32", "--out", out, "--trace", "1,1", "--trace-to", filepath.Join(dir, "t.csv"))
+		got, err := readArray(out)
+		if err != nil {
+			t.Fatal(err)
+		}
+		if math.Abs(got.Values[3]-want) > 1e-5 {
+			t.Errorf("%s: %v, want %v", format, got.Values[3], want)
+		}
+	}
 }

@@ -137,7 +137,7 @@ func (g *figures) print(w io.Writer, f quant.Format) error {
 		row("width", "%d bits", g.Bits)
 	}
 	if g.SharedScale {
-		row("scale", "shared by the values of a block or tensor; the figures are an element's")
+		row("scale", "%s", scaleWords(f))
 	}
 	row("largest", "%s", valueAndCode(f, g.Max))
 	if g.Lowest != -g.Max {
@@ -167,6 +167,16 @@ func (g *figures) print(w io.Writer, f quant.Format) error {
 		return err
 	}
 	return g.printCodes(w)
+}
+
+// scaleWords says who shares the scale of a format.
+func scaleWords(f quant.Format) string {
+	b, ok := f.(quant.Block)
+	if !ok {
+		return "shared by the values of a tensor or channel; the figures are those of the codes"
+	}
+	s := b.Spec()
+	return fmt.Sprintf("shared by blocks of %d, in %s; elements in %s, which the figures are of", s.Size, s.Scale, s.Element)
 }
 
 // printCodes prints the table of codes, the fields of a floating-point code apart.

@@ -44,7 +44,7 @@ func streamWord(s quant.Streams, k int, i, j uint32) uint32 {
 
 // traceOf returns the additions of the traced element, and fails where their end is
 // not the element that the multiplier formed.
-func traceOf[T quant.Element](m *matmulJob, p quant.Product[T], scale float64) ([]traceLine, error) {
+func traceOf[T quant.Element](m *matmulJob, p quant.Product[T]) ([]traceLine, error) {
 	t := &tracer{acc: m.acc, terms: p.Terms, sums: p.Sums, i: uint32(m.traceRow), j: uint32(m.traceCol), lastAddition: m.k - 1}
 	for k := range m.k {
 		t.a = append(t.a, float64(p.A.At(m.traceRow, k)))
@@ -54,7 +54,8 @@ func traceOf[T quant.Element](m *matmulJob, p quant.Product[T], scale float64) (
 	if err != nil {
 		return prefixes(m, p)
 	}
-	if scale != 1 {
+	if p.Scale != nil {
+		scale := p.Scale[m.traceRow]
 		s = t.round(&t.acc.Sum, quant.ExactProduct(scale, s), t.lastAddition+1)
 		t.lines = append(t.lines, traceLine{where: "scale", term: -1, scaledFactor: scale, sum: s})
 	}
