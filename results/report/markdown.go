@@ -212,6 +212,9 @@ func (t *tabular) markdown(b *strings.Builder) {
 // inline writes words so that Markdown shows them as they are: names come from
 // a plan and may hold anything.
 func inline(s string) string {
+	if s == missing {
+		return s
+	}
 	var b strings.Builder
 	for i, r := range plain(s) {
 		switch {

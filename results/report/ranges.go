@@ -36,7 +36,7 @@ type rangesData struct {
 // points with the most events first.
 func counterSection(v *view) any {
 	d := rangesData{
-		Figure: figureHTML(v, "range-map", "Upper row of figures: rounding points in the order of computation; rows: layers of an arm. "+
+		Figure: figureHTML(v, "range-map", "Columns: the rounding points in the order of computation; rows: the layers of an arm. "+
 			"A cell fills from below with values that underflowed to zero and from above with values that overflowed, saturated or became no number, on a logarithmic scale from one in ten million to all of them. "+
 			"The figure in a cell is their number in a million values. An empty cell was counted and saw none; no cell: nothing is rounded there. Layers and arms without any event are not drawn.", false),
 		Epochs:  figureHTML(v, "range-by-epoch", "The same, epoch by epoch, of the runs that were looked at more closely. Cells as above.", false),

@@ -161,7 +161,7 @@ func (v *view) advices() []advice {
 		for _, arm := range v.others() {
 			s, _, there := widest(arm, st)
 			if k, ok := arm.kind(); there && s.Bits < a.setting.Bits && !(ok && k == results.Within) {
-				a.narrower = append(a.narrower, fmt.Sprintf("%s (%s)", arm.Label(), plain(s.Format)))
+				a.narrower = append(a.narrower, fmt.Sprintf("%s (%s, %s)", arm.Label(), plain(s.Format), shortVerdict(arm)))
 			}
 		}
 		if a.arm != nil {
@@ -170,6 +170,17 @@ func (v *view) advices() []advice {
 		out = append(out, a)
 	}
 	return out
+}
+
+// shortVerdict is an arm's verdict without the pairs it needs.
+func shortVerdict(a *armView) string {
+	switch {
+	case a.Comparison == nil:
+		return "no verdict"
+	case a.Comparison.Verdict.Kind == results.Undecided:
+		return "undecided"
+	}
+	return verdictWords(a.Comparison.Verdict)
 }
 
 // widest is an arm's setting with the most bits at a station, over its layers;
