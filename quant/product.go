@@ -1,5 +1,7 @@
 package quant
 
+import "ulpine/quant/internal/kernel"
+
 // Columns yields the right-hand operand of a product by rectangles, so that a
 // convolution's patches need never be materialised.
 type Columns[T Element] interface {
@@ -23,6 +25,10 @@ func (m Matrix[T]) At(r, c int) T { return m.Data[r*m.Row+c*m.Col] }
 
 // Pack implements Columns: a matrix has no padding.
 func (m Matrix[T]) Pack(dst []T, width, k0, k1, j0, j1 int) {
+	if to, ok := any(dst).([]float32); ok {
+		kernel.PackMatrix(to, any(m.Data).([]float32), m.Row, m.Col, width, k0, k1, j0, j1)
+		return
+	}
 	for k := k0; k < k1; k++ {
 		row := dst[(k-k0)*width:][:width]
 		for j := j0; j < j1; j++ {

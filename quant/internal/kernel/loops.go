@@ -12,6 +12,7 @@ type loops struct {
 	measure    func(x []float32, e *[48]uint32)
 	widen      func(dst []float64, src []float32)
 	interleave func(dst, first, second []float32, factor float32)
+	transpose  func(dst, src []float32, dstRow, srcRow, blocks int)
 	addNative  func(total, chunk []float32)
 	addNearest func(total, chunk []float32, c *Constants)
 	philox     func(t *philoxArgs)

@@ -27,6 +27,11 @@ func widenAVX2(dst []float64, src []float32)
 //go:noescape
 func interleaveAVX2(dst []float32, first []float32, second []float32, factor float32)
 
+// transposeAVX2 writes dst[k*dstRow + j] = src[j*srcRow + k] for j below 8, k below 8*blocks.
+//
+//go:noescape
+func transposeAVX2(dst []float32, src []float32, dstRow int, srcRow int, blocks int)
+
 // addNativeAVX2 adds chunk to total.
 //
 //go:noescape

@@ -27,6 +27,11 @@ func widenAVX512(dst []float64, src []float32)
 //go:noescape
 func interleaveAVX512(dst []float32, first []float32, second []float32, factor float32)
 
+// transposeAVX512 writes dst[k*dstRow + j] = src[j*srcRow + k] for j below 8, k below 8*blocks.
+//
+//go:noescape
+func transposeAVX512(dst []float32, src []float32, dstRow int, srcRow int, blocks int)
+
 // addNativeAVX512 adds chunk to total.
 //
 //go:noescape

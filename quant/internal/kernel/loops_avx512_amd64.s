@@ -331,6 +331,78 @@ next:
 	VZEROUPPER
 	RET
 
+// func transposeAVX512(dst []float32, src []float32, dstRow int, srcRow int, blocks int)
+// Requires: AVX
+TEXT ·transposeAVX512(SB), $0-72
+	MOVQ dst_base+0(FP), AX
+	MOVQ src_base+24(FP), CX
+	MOVQ dstRow+48(FP), DX
+	MOVQ srcRow+56(FP), BX
+	MOVQ blocks+64(FP), SI
+
+next:
+	MOVQ       CX, DI
+	VMOVUPS    (DI), Y0
+	LEAQ       (DI)(BX*4), DI
+	VMOVUPS    (DI), Y1
+	LEAQ       (DI)(BX*4), DI
+	VMOVUPS    (DI), Y2
+	LEAQ       (DI)(BX*4), DI
+	VMOVUPS    (DI), Y3
+	LEAQ       (DI)(BX*4), DI
+	VMOVUPS    (DI), Y4
+	LEAQ       (DI)(BX*4), DI
+	VMOVUPS    (DI), Y5
+	LEAQ       (DI)(BX*4), DI
+	VMOVUPS    (DI), Y6
+	LEAQ       (DI)(BX*4), DI
+	VMOVUPS    (DI), Y7
+	VUNPCKLPS  Y1, Y0, Y8
+	VUNPCKHPS  Y1, Y0, Y9
+	VUNPCKLPS  Y3, Y2, Y1
+	VUNPCKHPS  Y3, Y2, Y10
+	VUNPCKLPS  Y5, Y4, Y11
+	VUNPCKHPS  Y5, Y4, Y12
+	VUNPCKLPS  Y7, Y6, Y5
+	VUNPCKHPS  Y7, Y6, Y7
+	VUNPCKLPD  Y1, Y8, Y0
+	VUNPCKHPD  Y1, Y8, Y1
+	VUNPCKLPD  Y10, Y9, Y2
+	VUNPCKHPD  Y10, Y9, Y3
+	VUNPCKLPD  Y5, Y11, Y4
+	VUNPCKHPD  Y5, Y11, Y5
+	VUNPCKLPD  Y7, Y12, Y6
+	VUNPCKHPD  Y7, Y12, Y7
+	VPERM2F128 $0x20, Y4, Y0, Y8
+	VPERM2F128 $0x31, Y4, Y0, Y11
+	VPERM2F128 $0x20, Y5, Y1, Y9
+	VPERM2F128 $0x31, Y5, Y1, Y12
+	VPERM2F128 $0x20, Y6, Y2, Y1
+	VPERM2F128 $0x31, Y6, Y2, Y5
+	VPERM2F128 $0x20, Y7, Y3, Y10
+	VPERM2F128 $0x31, Y7, Y3, Y7
+	VMOVUPS    Y8, (AX)
+	LEAQ       (AX)(DX*4), AX
+	VMOVUPS    Y9, (AX)
+	LEAQ       (AX)(DX*4), AX
+	VMOVUPS    Y1, (AX)
+	LEAQ       (AX)(DX*4), AX
+	VMOVUPS    Y10, (AX)
+	LEAQ       (AX)(DX*4), AX
+	VMOVUPS    Y11, (AX)
+	LEAQ       (AX)(DX*4), AX
+	VMOVUPS    Y12, (AX)
+	LEAQ       (AX)(DX*4), AX
+	VMOVUPS    Y5, (AX)
+	LEAQ       (AX)(DX*4), AX
+	VMOVUPS    Y7, (AX)
+	LEAQ       (AX)(DX*4), AX
+	ADDQ       $0x20, CX
+	DECQ       SI
+	JNZ        next
+	VZEROUPPER
+	RET
+
 // func addNativeAVX512(total []float32, chunk []float32)
 // Requires: AVX, AVX512F
 TEXT ·addNativeAVX512(SB), $0-48

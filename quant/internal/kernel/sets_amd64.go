@@ -11,7 +11,7 @@ var (
 		single: family[float32]{width: widthAVX232, narrow: narrowAVX232, tiles: tilesAVX232},
 		double: family[float64]{width: widthAVX264, narrow: narrowAVX264, tiles: tilesAVX264},
 		loops: loops{
-			measure: measureAVX2, widen: widenAVX2, interleave: interleaveAVX2,
+			measure: measureAVX2, widen: widenAVX2, interleave: interleaveAVX2, transpose: transposeAVX2,
 			addNative: addNativeAVX2, addNearest: addNearestAVX2, philox: philoxAVX2,
 		},
 	}
@@ -20,7 +20,7 @@ var (
 		single: family[float32]{width: widthAVX51232, narrow: narrowAVX51232, tiles: tilesAVX51232},
 		double: family[float64]{width: widthAVX51264, narrow: narrowAVX51264, tiles: tilesAVX51264},
 		loops: loops{
-			measure: measureAVX512, widen: widenAVX512, interleave: interleaveAVX512,
+			measure: measureAVX512, widen: widenAVX512, interleave: interleaveAVX512, transpose: transposeAVX512,
 			addNative: addNativeAVX512, addNearest: addNearestAVX512, philox: philoxAVX512,
 		},
 	}

@@ -152,6 +152,34 @@ var loops = []loop{
 		},
 	},
 	{
+		name: "transpose", signature: "func(dst, src []float32, dstRow, srcRow, blocks int)",
+		doc: "writes dst[k*dstRow + j] = src[j*srcRow + k] for j below 8, k below 8*blocks.",
+		emit: func(g *loop) {
+			dst, src := g.base("dst"), g.base("src")
+			load := func(name string) reg.Register { return g.Load(g.Param(name), g.GP64()) }
+			dstRow, srcRow, blocks := load("dstRow"), load("srcRow"), load("blocks")
+			g.Label("next")
+			at := g.GP64()
+			g.MOVQ(src, at)
+			var rows [8]reg.VecVirtual
+			for j := range rows {
+				rows[j] = g.YMM()
+				g.VMOVUPS(operand.Mem{Base: at}, rows[j])
+				if j < 7 {
+					g.LEAQ(g.at(at, srcRow, 4), at)
+				}
+			}
+			for _, column := range g.transpose8(rows) {
+				g.VMOVUPS(column, operand.Mem{Base: dst})
+				g.LEAQ(g.at(dst, dstRow, 4), dst)
+			}
+			g.ADDQ(operand.Imm(32), src)
+			g.DECQ(blocks)
+			g.JNZ(operand.LabelRef("next"))
+			g.end()
+		},
+	},
+	{
 		name: "addNative", signature: "func(total, chunk []float32)",
 		doc: "adds chunk to total.",
 		emit: func(g *loop) {
@@ -193,6 +221,29 @@ var loops = []loop{
 			g.end()
 		},
 	},
+}
+
+// transpose8 transposes eight registers of eight lanes: pairs of lanes, pairs of
+// pairs, halves.
+func (g *loop) transpose8(r [8]reg.VecVirtual) (t [8]reg.VecVirtual) {
+	for n := range t {
+		t[n] = g.YMM()
+	}
+	for n := 0; n < 8; n += 2 {
+		g.VUNPCKLPS(r[n+1], r[n], t[n])
+		g.VUNPCKHPS(r[n+1], r[n], t[n+1])
+	}
+	for n := 0; n < 8; n += 4 {
+		g.VUNPCKLPD(t[n+2], t[n], r[n])
+		g.VUNPCKHPD(t[n+2], t[n], r[n+1])
+		g.VUNPCKLPD(t[n+3], t[n+1], r[n+2])
+		g.VUNPCKHPD(t[n+3], t[n+1], r[n+3])
+	}
+	for n := range 4 {
+		g.VPERM2F128(operand.Imm(0x20), r[n+4], r[n], t[n])
+		g.VPERM2F128(operand.Imm(0x31), r[n+4], r[n], t[n+4])
+	}
+	return t
 }
 
 // half is the low 256 bits of a register.
