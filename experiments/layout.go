@@ -13,7 +13,7 @@ import (
 // group is the arms of a plan that share their runs, because they have the same
 // arithmetic and training; usually one. The pretraining is a group without arms.
 type group struct {
-	arms     []int // places in the plan, ascending
+	arms     []int // places in layout.all, ascending
 	training trainer.Training
 	arm      trainer.Arm
 	macs     uint64 // multiply-adds of one run
@@ -22,6 +22,7 @@ type group struct {
 // layout is a plan as the runner sees it.
 type layout struct {
 	*plan.Plan
+	all    []plan.Arm // the arms, then the controls
 	study  results.Hash
 	claim  results.Claim
 	groups []group // the baseline's first
@@ -29,10 +30,10 @@ type layout struct {
 }
 
 func newLayout(p *plan.Plan) *layout {
-	l := &layout{Plan: p, study: studyID(p), claim: claimOf(p)}
+	l := &layout{Plan: p, all: slices.Concat(p.Arms, p.Controls), study: studyID(p), claim: claimOf(p)}
 	place := map[string]int{}
-	for i := range p.Arms {
-		a := &p.Arms[i]
+	for i := range l.all {
+		a := &l.all[i]
 		if at, known := place[a.Canonical]; known {
 			l.groups[at].arms = append(l.groups[at].arms, i)
 			continue
@@ -78,7 +79,7 @@ func (l *layout) slug(g *group) string {
 	if g == l.pre {
 		return plan.PretrainSlug
 	}
-	return l.Arms[g.arms[0]].Slug
+	return l.all[g.arms[0]].Slug
 }
 
 // label is a group's arms as the plan calls them.
@@ -88,7 +89,7 @@ func (l *layout) label(g *group) string {
 	}
 	names := make([]string, len(g.arms))
 	for i, at := range g.arms {
-		names[i] = l.Arms[at].Name
+		names[i] = l.all[at].Name
 	}
 	return strings.Join(names, " = ")
 }
@@ -107,7 +108,7 @@ func (l *layout) keysOf(seed uint64, data, pre results.Hash) keys {
 		k.pre = pretrainKey(l.Plan, pre, seed)
 	}
 	for i := range l.groups {
-		k.groups[i] = runKey(l.Plan, &l.Arms[l.groups[i].arms[0]], data, seed, k.pre)
+		k.groups[i] = runKey(l.Plan, &l.all[l.groups[i].arms[0]], data, seed, k.pre)
 	}
 	return k
 }
@@ -120,6 +121,10 @@ func (k keys) all() []results.Hash {
 	return append(slices.Clone(k.groups), k.pre)
 }
 
+// compared reports whether a group's runs are an arm's, and not only the
+// baseline's or a control's.
+func (l *layout) compared(g *group) bool { return g.arms[0] != 0 && g.arms[0] < len(l.Arms) }
+
 // planned names the runs of a replicate for the store: every arm, and the
 // pretraining behind them.
 func (l *layout) planned(seed uint64, k keys) []store.Planned {
@@ -127,12 +132,12 @@ func (l *layout) planned(seed uint64, k keys) []store.Planned {
 	for i := range l.groups {
 		for _, at := range l.groups[i].arms {
 			runs = append(runs, store.Planned{
-				Arm: l.Arms[at].Slug, Replicate: seed, Key: k.groups[i], Place: at, Compared: l.groups[i].arms[0] != 0,
+				Arm: l.all[at].Slug, Replicate: seed, Key: k.groups[i], Place: at, Compared: l.compared(&l.groups[i]),
 			})
 		}
 	}
 	if l.pre != nil {
-		runs = append(runs, store.Planned{Arm: plan.PretrainSlug, Replicate: seed, Key: k.pre, Place: len(l.Arms)})
+		runs = append(runs, store.Planned{Arm: plan.PretrainSlug, Replicate: seed, Key: k.pre, Place: len(l.all)})
 	}
 	return runs
 }

@@ -108,7 +108,7 @@ func (r *reader) replicate(seed uint64, k keys) error {
 	}
 	for i := range r.groups {
 		for _, at := range r.groups[i].arms {
-			if err := r.take(known[k.groups[i]], r.Arms[at].Slug, seed); err != nil {
+			if err := r.take(known[k.groups[i]], r.all[at].Slug, seed); err != nil {
 				return err
 			}
 		}
@@ -158,6 +158,7 @@ func comparisons(l *layout, study *results.Study) {
 	for _, c := range l.Contrasts {
 		study.Contrasts = append(study.Contrasts, pair(c.Arm, c.Against, c.Margin, true))
 	}
+	noiseFloor(l, study, pair)
 	study.Comparisons, study.Contrasts = compare.Decide(study.Comparisons), compare.Decide(study.Contrasts)
 }
 

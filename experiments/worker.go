@@ -160,7 +160,7 @@ func (x *runner) do(ctx context.Context, number int, u *unit) {
 // place says where a unit is.
 func (x *runner) place(number int, u *unit) Place {
 	p := Place{
-		Worker: number, Arm: x.slug(u.group), Name: x.label(u.group), Arms: len(x.Arms),
+		Worker: number, Arm: x.slug(u.group), Name: x.label(u.group), Arms: len(x.all),
 		Replicate: u.replicate.seed, ReplicateNumber: u.replicate.number, Replicates: x.Replicates.Count,
 	}
 	if u.group != x.pre {

@@ -78,7 +78,7 @@ func (r *armReader) armName(n *node, seen map[string]*node) (name, slug string) 
 	case at.value == nil:
 	case slug == "":
 		r.fail(at.errorf("use letters a to z and digits", "the name %q has no letter or digit to call runs by", name))
-	case slug == BaselineSlug || slug == PretrainSlug:
+	case slug == BaselineSlug || slug == PretrainSlug || slices.Contains(controlSlugs, slug):
 		r.fail(at.errorf("choose another name", "%q is the name of the plan's own %s", name, slug))
 	case twin != nil && twin.value == at.value:
 		r.fail(at.errorf("give each arm a name of its own", "the name %q is taken by the arm in %s line %d", name, twin.file, twin.line))

@@ -76,12 +76,15 @@ func allPoints() []trainer.PointID {
 
 // binary32Everywhere is what a baseline is before its settings are read: every
 // point binary32 rounded to nearest-even, products rounded, sums sequential.
-func binary32Everywhere(layers int) assignment {
+func binary32Everywhere(layers int) assignment { return everywhere(quant.Binary32, layers) }
+
+// everywhere is binary32Everywhere in another format.
+func everywhere(f quant.Format, layers int) assignment {
 	a := assignment{slots: make([]slot, len(allPoints())), layers: make([][]slot, layers)}
 	for _, id := range allPoints() {
 		a.slots[id] = slot{
 			set:    !isOperand(id) && !isOuter(id),
-			value:  value{point: quant.Point{Format: quant.Binary32}},
+			value:  value{point: quant.Point{Format: f}},
 			origin: "default",
 		}
 	}

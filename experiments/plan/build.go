@@ -11,7 +11,7 @@ import (
 // planKeys are the keys of a plan.
 var planKeys = []string{
 	"title", "question", "include", "task", "network", "training", "pretrain", "replicates",
-	"claim", "baseline", "arm", "grid", "contrast", "format",
+	"claim", "baseline", "arm", "grid", "contrast", "controls", "format",
 }
 
 // Load reads, checks and resolves the plan in the file name. A path such as
@@ -63,6 +63,7 @@ func (r *reader) build(root *node) *Plan {
 	arms := armReader{r, r.readFormats(root), &p.Network, p.Training, p.Task.Train}
 	var grids []*grid
 	p.Arms, grids = arms.readArms(root)
+	p.Controls = arms.readControls(root, p.Baseline())
 	p.Contrasts = r.readContrasts(root, p.Arms, p.Claim.Margin)
 	for _, g := range grids {
 		p.Grids = append(p.Grids, g.Grid)

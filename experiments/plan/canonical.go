@@ -85,6 +85,9 @@ func (p *Plan) Canonical() string {
 	for i := range p.Arms {
 		fmt.Fprintf(&b, "called %s: %s", p.Arms[i].Slug, p.Arms[i].Canonical)
 	}
+	for i := range p.Controls {
+		fmt.Fprintf(&b, "control %s: %s", p.Controls[i].Slug, p.Controls[i].Canonical)
+	}
 	for _, c := range p.Contrasts {
 		fmt.Fprintf(&b, "contrast: %s against %s within %g\n", c.Arm, c.Against, c.Margin)
 	}

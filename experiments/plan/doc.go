@@ -25,6 +25,9 @@
 //	[[arm.layer]]       select, settings: what differs in some layers; [[baseline.layer]]
 //	[[grid]]            title, name, axis, contrast, and all that an arm may have:
 //	                    arms that differ along axes
+//	[controls]          fp64, pairwise: the baseline again in binary64 and with pairwise
+//	                    sums, both unless told otherwise; their differences from it
+//	                    are the noise floor, they are no arms and get no verdict
 //	[[contrast]]        arm, against, margin: two arms to compare with each other
 //
 // Tables of an included file and of the plan merge key by key. A text, a number,

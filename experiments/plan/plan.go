@@ -19,6 +19,7 @@ type Plan struct {
 
 	Arms      []Arm // the baseline first, then in the order of the plan, those of grids last
 	Grids     []Grid
+	Controls  []Arm // the baseline otherwise computed, for the noise floor; no arms
 	Contrasts []Contrast
 
 	Warnings []string // doubts that travel into the report; those about data are the Task's
@@ -28,9 +29,9 @@ type Plan struct {
 // Baseline is the arm that all others are compared with.
 func (p *Plan) Baseline() *Arm { return &p.Arms[0] }
 
-// Runs is the number of runs the plan asks for, pretraining included.
+// Runs is the number of runs the plan asks for, controls and pretraining included.
 func (p *Plan) Runs() int {
-	each := len(p.Arms)
+	each := len(p.Arms) + len(p.Controls)
 	if p.Pretrain != nil {
 		each++
 	}

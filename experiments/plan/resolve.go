@@ -31,7 +31,10 @@ func ResolveText(p *Plan, o ResolveOptions) string {
 	fmt.Fprintf(&b, "\n%s\n", WorkText(p, o))
 	writeGrids(&b, p)
 	for i := range p.Arms {
-		writeArm(&b, p, &p.Arms[i], o.Full)
+		writeArm(&b, p, &p.Arms[i], "arm", o.Full)
+	}
+	for i := range p.Controls {
+		writeArm(&b, p, &p.Controls[i], "control", o.Full)
 	}
 	writeContrasts(&b, p)
 	for _, w := range allWarnings(p) {
@@ -100,6 +103,9 @@ func WorkText(p *Plan, o ResolveOptions) string {
 	if work.Pretraining > 0 {
 		fmt.Fprintf(&b, ", and %d pretrainings", work.Pretraining)
 	}
+	if work.Controls > 0 {
+		fmt.Fprintf(&b, ", and %d of controls", work.Controls)
+	}
 	fmt.Fprintf(&b, "; %s multiply-adds in all", magnitude(float64(work.MACs)))
 	if o.Rate > 0 {
 		workers := max(1, o.Workers)
@@ -159,9 +165,9 @@ func duration(seconds float64) string {
 	return "more than a century"
 }
 
-// writeArm writes the rounding points of one arm.
-func writeArm(b *strings.Builder, p *Plan, a *Arm, full bool) {
-	fmt.Fprintf(b, "\narm %q, runs %s/...: %s\n", a.Name, a.Slug, a.Summary)
+// writeArm writes the rounding points of one arm; what is the word for it.
+func writeArm(b *strings.Builder, p *Plan, a *Arm, what string, full bool) {
+	fmt.Fprintf(b, "\n%s %q, runs %s/...: %s\n", what, a.Name, a.Slug, a.Summary)
 	w := table(b)
 	if full {
 		writePoints(w, a)

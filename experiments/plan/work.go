@@ -4,8 +4,9 @@ import "ulpine/trainer"
 
 // Work is what a plan costs before it is run.
 type Work struct {
-	Runs        int    // pretrainings included
+	Runs        int    // pretrainings and controls included
 	Pretraining int    // of those
+	Controls    int    // of those
 	MACs        uint64 // multiply-adds of all runs, backward passes and evaluations included
 	LongestSum  int    // terms of the longest sum of any run
 }
@@ -21,6 +22,10 @@ func (p *Plan) Work() Work {
 	}
 	for i := range p.Arms {
 		add(p.Arms[i].Training, &p.Task)
+	}
+	for i := range p.Controls {
+		w.Controls += p.Replicates.Count
+		add(p.Controls[i].Training, &p.Task)
 	}
 	if p.Pretrain != nil {
 		w.Pretraining = p.Replicates.Count
