@@ -81,7 +81,7 @@ func (s shares) overLooks(c *results.Comparison) (p, worse float64) {
 	return s.least(l, ps), s.least(l, worses)
 }
 
-// least is the smallest alpha, to a part in 10^4, at which some look rejects; 1
+// least is the smallest alpha, to a part in 10^3, at which some look rejects; 1
 // if none does at one half.
 func (s shares) least(l Looks, ps []float64) float64 {
 	rejects := func(alpha float64) bool {
@@ -97,7 +97,7 @@ func (s shares) least(l Looks, ps []float64) float64 {
 	if !rejects(math.Exp(high)) {
 		return 1
 	}
-	for high-low > 1e-4 {
+	for high-low > 1e-3 {
 		if middle := (low + high) / 2; rejects(math.Exp(middle)) {
 			high = middle
 		} else {

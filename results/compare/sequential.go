@@ -49,13 +49,19 @@ func spent(alpha, t float64) float64 {
 const nodes = 160
 
 // Levels are the one-sided p-values below which each look rejects, such that all
-// looks together do so by chance with probability alpha. The recursion is that of
-// Armitage, McPherson and Rowe (J. R. Statist. Soc. A 132, 1969, 235-244) on the
-// sum of normal differences; p-values of t statistics are held to the same
-// levels, which is exact at large n only (the package's tests measure the rate).
-// Levels rise with alpha at every look, so a schedule can be combined with
-// Holm's method.
+// looks together do so by chance with probability alpha. Levels rise with alpha
+// at every look, so a schedule can be combined with Holm's method.
 func (l Looks) Levels(alpha float64) []float64 {
+	if l.UpTo <= exactLooks {
+		return l.tLevels(alpha)
+	}
+	return l.normalLevels(alpha)
+}
+
+// normalLevels are the levels for sums of normal differences with a known standard
+// deviation, by the recursion of Armitage, McPherson and Rowe (J. R. Statist. Soc.
+// A 132, 1969, 235-244).
+func (l Looks) normalLevels(alpha float64) []float64 {
 	at := l.At()
 	levels := make([]float64, len(at))
 	var walk density

@@ -23,7 +23,7 @@ func TestLevels(t *testing.T) {
 		{Looks{20, 10}, []float64{2.963, 1.969}},
 		{Looks{20, 4}, []float64{4.877, 3.357, 2.680, 2.290, 2.031}},
 	} {
-		for k, level := range c.looks.Levels(0.025) {
+		for k, level := range c.looks.normalLevels(0.025) {
 			near(t, "z", -quantileOfNormal(level), c.want[k], 6e-4)
 		}
 	}
@@ -40,6 +40,62 @@ func quantileOfNormal(p float64) float64 {
 		}
 	}
 	return low
+}
+
+// TestTLevelsAreExact simulates t statistics of normal differences, looked at in
+// several ways: the rate is alpha, not merely at most that. The levels of the normal
+// law, as a check of the check, exceed it.
+func TestTLevelsAreExact(t *testing.T) {
+	plans := 300_000
+	if testing.Short() {
+		plans = 60_000
+	}
+	rng := rand.New(rand.NewPCG(99, 5))
+	rate := func(l Looks, levels []float64) float64 {
+		at, hits := l.At(), 0
+		bounds := make([]float64, len(at))
+		for k, n := range at {
+			bounds[k] = tBound(levels[k], n)
+		}
+		for range plans {
+			var sum, squares float64
+			n := 0
+			for k, look := range at {
+				for ; n < look; n++ {
+					x := rng.NormFloat64()
+					sum, squares = sum+x, squares+x*x
+				}
+				if sum/math.Sqrt(float64(n)*squares) > bounds[k] {
+					hits++
+					break
+				}
+			}
+		}
+		return float64(hits) / float64(plans)
+	}
+	for _, l := range []Looks{{40, 5}, {30, 2}, {12, 5}, {10, 1}} {
+		for _, alpha := range []float64{0.025, 0.1} {
+			near(t, "rate", rate(l, l.tLevels(alpha)), alpha, slack(alpha, plans))
+		}
+	}
+	l := Looks{10, 1}
+	if got := rate(l, l.normalLevels(0.025)); got < 0.027 {
+		t.Errorf("the normal law's levels give %v", got)
+	}
+}
+
+// TestTLevels: one look spends all, and many pairs give the levels of the normal
+// law.
+func TestTLevels(t *testing.T) {
+	near(t, "one look", Looks{9, 9}.tLevels(0.025)[0], 0.025, 1e-9)
+	few, normal := Looks{40, 5}.tLevels(0.025), Looks{40, 5}.normalLevels(0.025)
+	if last := len(few) - 1; !(few[last] < normal[last]) || few[last] < 0.9*normal[last] {
+		t.Errorf("last levels %v, normal %v", few[last], normal[last])
+	}
+	many, normal := Looks{200, 50}.tLevels(0.025), Looks{200, 50}.normalLevels(0.025)
+	for k := range many {
+		near(t, "many pairs", many[k]/normal[k], 1, 0.03)
+	}
 }
 
 func TestLooks(t *testing.T) {
