@@ -101,25 +101,30 @@ func narrowFormats() []quant.Format {
 	return all
 }
 
-// checkCodes decodes every code and encodes its value again.
+// checkCodes goes through every code of the narrow formats.
 func checkCodes(c *checker) {
 	for _, f := range narrowFormats() {
-		o, err := oracleOf(f)
-		if !c.noError(err) {
-			continue
-		}
-		codes := f.(coder)
-		l := f.Limits()
-		for code := range uint64(1) << l.Bits {
-			v := codes.Decode(code)
-			c.that(sameBits(v, o.Decode(code)), "%s code %x: %v, want %v", f, code, v, o.Decode(code))
-			back, ok := codes.Encode(v)
-			switch {
-			case v != v, v == 0 && l.Flush: // several codes have one value
-				c.that(ok && sameBits(codes.Decode(back), v), "%s code %x does not come back", f, code)
-			default:
-				c.that(ok && back == code, "%s code %x comes back as %x", f, code, back)
-			}
+		c.everyCode(f)
+	}
+}
+
+// everyCode decodes every code of a format and encodes its value again.
+func (c *checker) everyCode(f quant.Format) {
+	o, err := oracleOf(f)
+	if !c.noError(err) {
+		return
+	}
+	codes := f.(coder)
+	l := f.Limits()
+	for code := range uint64(1) << l.Bits {
+		v := codes.Decode(code)
+		c.that(sameBits(v, o.Decode(code)), "%s code %x: %v, want %v", f, code, v, o.Decode(code))
+		back, ok := codes.Encode(v)
+		switch {
+		case v != v, v == 0 && l.Flush: // several codes have one value
+			c.that(ok && sameBits(codes.Decode(back), v), "%s code %x does not come back", f, code)
+		default:
+			c.that(ok && back == code, "%s code %x comes back as %x", f, code, back)
 		}
 	}
 }
