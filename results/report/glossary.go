@@ -27,7 +27,12 @@ var glossary = []entry{
 	{"loss scale", "A factor on the loss that keeps small gradients from vanishing; a step whose gradients overflow is skipped."},
 	{"overflow, saturation, underflow", "A result beyond the format's largest value that became infinity or NaN; one that became the largest value; a nonzero result that became zero."},
 	{"recall", "Of the test examples of a class, the share that is named rightly."},
-	{"Pareto set", "The arms that no other arm beats in both score and bits."},
+	{"Pareto set", "The arms that no other arm beats in both score and bits, or bytes, or energy."},
+	{"grid", "Arms that the plan makes from lists of values, one arm for each combination."},
+	{"evidence: the whole arm, alone", "Whether the arm that a row rests on changes other rounding points too, or that one alone."},
+	{"once, through a cache", "Two models of the traffic between memory and arithmetic: each tensor moved once a phase, or products in blocks that fit a cache."},
+	{"in a million", "Range events per million values that a point rounded while training; k is a thousand."},
+	{"BCa, studentised, flipped signs, signed ranks", "Ways to an interval that lean less on the normal distribution than the t interval does: two bootstraps, the test that flips the signs of differences, and Wilcoxon's."},
 	{"pp", "Percentage points: the difference of two percentages."},
 	{"digest", "SHA-256 over a run's loss curve, counters and final weights. The same digest is the same result, bit for bit."},
 }

@@ -128,10 +128,36 @@ func comparisonObjects(cs []results.Comparison) []object {
 			{"holm", c.Holm},
 			{"p_worse", c.PWorse},
 			{"holm_worse", c.HolmWorse},
+			{"student_low", c.StudentLow},
+			{"student_high", c.StudentHigh},
+			{"flip_low", c.FlipLow},
+			{"flip_high", c.FlipHigh},
+			{"hodges_lehmann", c.Middle},
+			{"rank_low", c.RankLow},
+			{"rank_high", c.RankHigh},
+			{"diverged_low", c.DivergedLow},
+			{"diverged_high", c.DivergedHigh},
 		} {
 			o.float(x.key, x.v)
 		}
 		o.floats("differences", c.Differences)
+		o["offered"], o["look_every"], o["classes"] = c.Offered, c.LookEvery, classObjects(c.Classes)
+		out = append(out, o)
+	}
+	return out
+}
+
+// classObjects are differences of recall by class.
+func classObjects(ks []results.ClassDifference) []object {
+	out := []object{}
+	for _, k := range ks {
+		o := object{"class": k.Class, "name": k.Name, "n": k.N, "worst_replicate": k.Replicate}
+		for _, x := range []struct {
+			key string
+			v   float64
+		}{{"mean", k.Mean}, {"low", k.Low}, {"high", k.High}, {"worst", k.Worst}, {"p", k.P}, {"holm", k.Holm}} {
+			o.float(x.key, x.v)
+		}
 		out = append(out, o)
 	}
 	return out

@@ -3,6 +3,7 @@ package report
 import (
 	"fmt"
 	"io"
+	"slices"
 	"strings"
 
 	"ulpine/results"
@@ -17,7 +18,13 @@ var markdownTable = []struct {
 	heading string
 	blocks  func(v *view) []block
 }{
-	{"Verdicts", func(v *view) []block { return []block{tableBlock(v.verdictTable())} }},
+	{"Verdicts", func(v *view) []block {
+		out := []block{tableBlock(v.verdictTable())}
+		for _, t := range v.checks(slices.Concat(v.Comparisons, v.Contrasts)) {
+			out = append(out, tableBlock(t))
+		}
+		return out
+	}},
 	{"The question and what was fixed beforehand", func(v *view) []block { return []block{factBlock(v.claimFacts())} }},
 	{"How few bits, point by point", func(v *view) []block {
 		d := v.recommendation()
@@ -53,7 +60,7 @@ var markdownTable = []struct {
 	{"Exponents against the range of formats", func(v *view) []block {
 		return append(v.figureBlocks("exponents"), tableBlock(v.histogramTable()))
 	}},
-	{"Recall by class", func(v *view) []block { return v.figureBlocks("recall") }},
+	{"Recall by class", func(v *view) []block { return append(v.figureBlocks("recall"), tableBlock(v.classTable())) }},
 	{"What it would cost", func(v *view) []block {
 		if v.Costs == nil {
 			return nil

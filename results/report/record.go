@@ -152,11 +152,20 @@ func (v *view) standing() []fact {
 	return []fact{
 		{"small networks", "Small networks tolerate more rounding than large ones, and their sums are shorter. What holds here need not hold for a larger network."},
 		{"longest sum", sum},
+		{"network tested", v.networkLimit()},
 		{"undecided", "Undecided does not mean the same: it means that these pairs cannot tell."},
 		{"rare inputs", "The scores are those of this data and this training. Rare inputs, drift of the data and faults of the hardware are untested."},
 		{"safety-related", "This report is no approval for a safety-related use. Such a use is a matter of the functional-safety standard that applies to it and of qualified engineers."},
 		{"worst replicate", "Means hide single failures: look at the recall by class and at the worst replicate of each, with its exact interval."},
 	}
+}
+
+// networkLimit names the network that was tested.
+func (v *view) networkLimit() string {
+	if n := plain(v.Network); n != "" {
+		return "The network tested: " + n + ". Every verdict is of this network, this data and this training."
+	}
+	return "The network was not recorded: nothing can be said about its size."
 }
 
 // cautionSection says what this result does not show: the study's own cautions,

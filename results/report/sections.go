@@ -269,9 +269,10 @@ func recallSection(v *view) any {
 		Recall, Confusion *tabular
 	}
 	data := struct {
-		Figure template.HTML
-		Arms   []armRecall
-	}{Figure: figureHTML(v, "recall", "Of the test examples of a class, the share that is named rightly. Disc and bar: mean over replicates with its "+percentage(v.Confidence)+" t interval; stroke: the worst replicate.", false)}
+		Figure  template.HTML
+		Classes *tabular
+		Arms    []armRecall
+	}{Classes: v.classTable(), Figure: figureHTML(v, "recall", "Of the test examples of a class, the share that is named rightly. Disc and bar: mean over replicates with its "+percentage(v.Confidence)+" t interval; stroke: the worst replicate.", false)}
 	for _, a := range v.arms {
 		if r := v.recalls(a); len(r) > 0 {
 			data.Arms = append(data.Arms, armRecall{a.Label(), v.recallTable(r), v.confusionTable(a)})

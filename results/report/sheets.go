@@ -25,6 +25,7 @@ var sheetTable = []struct {
 	{"curves", []string{"arm", "epoch", "training_loss_lower_quartile", "training_loss_median", "training_loss_upper_quartile", "n"}, curveRows},
 	{"counters", []string{"arm", "replicate", "layer", "layer_name", "point", "overflow", "underflow", "saturated", "nan"}, counterRows},
 	{"recall", []string{"arm", "class", "mean", "low", "high", "n", "worst_replicate", "worst_right", "worst_of", "worst_low", "worst_high"}, recallRows},
+	{"class_differences", []string{"arm", "against", "class", "n", "mean", "low", "high", "worst", "worst_replicate", "p", "holm"}, classRows},
 	{"costs", costHeader, costRows},
 	{"histograms", []string{"arm", "replicate", "layer", "layer_name", "point", "epoch", "exponent", "count", "zeros", "not_finite"}, histogramRows},
 	{"grid", []string{"arm", "grid", "axis", "value"}, gridRows},
@@ -36,6 +37,7 @@ var sheetTable = []struct {
 var comparisonHeader = []string{
 	"arm", "against", "metric", "margin", "confidence", "n", "planned", "mean", "sd", "low", "high", "boot_low", "boot_high",
 	"skewness", "p", "holm", "p_worse", "holm_worse", "verdict", "pairs_needed", "diverged", "against_diverged", "stalled",
+	"student_low", "student_high", "flip_low", "flip_high", "middle", "rank_low", "rank_high", "offered", "diverged_low", "diverged_high",
 }
 
 // Sheet writes one of the CSV files by its name; SheetNames lists them.
@@ -84,6 +86,8 @@ func comparisonRows(cs []results.Comparison) (rows [][]string) {
 			c.Arm, c.Against, c.Metric, floatCell(c.Margin), floatCell(c.Confidence), intCell(c.N), intCell(c.Planned), floatCell(c.Mean), floatCell(c.SD), floatCell(c.Low), floatCell(c.High),
 			floatCell(c.BootLow), floatCell(c.BootHigh), floatCell(c.Skewness), floatCell(c.P), floatCell(c.Holm), floatCell(c.PWorse), floatCell(c.HolmWorse), verdictWords(c.Verdict),
 			intCell(c.Verdict.Pairs), intCell(c.Diverged), intCell(c.AgainstDiverged), intCell(c.Stalled),
+			floatCell(c.StudentLow), floatCell(c.StudentHigh), floatCell(c.FlipLow), floatCell(c.FlipHigh), floatCell(c.Middle), floatCell(c.RankLow), floatCell(c.RankHigh),
+			c.Offered, floatCell(c.DivergedLow), floatCell(c.DivergedHigh),
 		})
 	}
 	return rows
@@ -187,6 +191,24 @@ func recallRows(v *view) (rows [][]string) {
 				a.Slug, r.Class, floatCell(r.Mean.Mean), floatCell(r.Mean.Low), floatCell(r.Mean.High), intCell(r.Mean.N),
 				worst, uintCell(r.Hit), uintCell(r.Of), floatCell(r.Low), floatCell(r.High),
 			})
+		}
+	}
+	return rows
+}
+
+func classRows(v *view) (rows [][]string) {
+	for _, cs := range [][]results.Comparison{v.Comparisons, v.Contrasts} {
+		for _, c := range cs {
+			for _, k := range c.Classes {
+				name := k.Name
+				if name == "" {
+					name = v.class(k.Class)
+				}
+				rows = append(rows, []string{
+					c.Arm, c.Against, name, intCell(k.N), floatCell(k.Mean), floatCell(k.Low), floatCell(k.High), floatCell(k.Worst), uintCell(k.Replicate),
+					floatCell(k.P), floatCell(k.Holm),
+				})
+			}
 		}
 	}
 	return rows

@@ -86,6 +86,7 @@ func oneReplicate(s *results.Study) {
 			c.N, c.Replicates, c.Differences = 1, c.Replicates[:1], c.Differences[:1]
 			c.Mean, c.Verdict = c.Differences[0], results.Verdict{}
 			c.SD, c.Low, c.High, c.BootLow, c.BootHigh = math.NaN(), math.NaN(), math.NaN(), math.NaN(), math.NaN()
+			c.StudentLow, c.StudentHigh, c.FlipLow, c.FlipHigh, c.RankLow, c.RankHigh = math.NaN(), math.NaN(), math.NaN(), math.NaN(), math.NaN(), math.NaN()
 		}
 	}
 }

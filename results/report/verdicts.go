@@ -125,7 +125,7 @@ func verdictSection(v *view) any {
 		Unit, Level string
 		Rows        []verdictRow
 		Key         []keyed
-		Checks      *tabular
+		Checks      []*tabular
 	}{Level: percentage(v.Confidence), Checks: v.checks(slices.Concat(v.Comparisons, v.Contrasts))}
 	if v.words.percent {
 		data.Unit = ", pp"
@@ -216,26 +216,69 @@ func (v *view) lost(a *armView) (diverged, stalled string) {
 	return strconv.Itoa(d), strconv.Itoa(s)
 }
 
-// checks is the table of what stands behind verdicts; nil when there are none.
-func (v *view) checks(cs []results.Comparison) *tabular {
+// checks are the tables of what stands behind verdicts: the intervals side by
+// side, the p-values that decide, and how sure the shares of diverged runs are.
+// Nil when there is no comparison.
+func (v *view) checks(cs []results.Comparison) []*tabular {
 	if len(cs) == 0 {
 		return nil
 	}
-	unit := ""
-	if v.words.percent {
-		unit = ", pp"
+	unit := commaShort(v)
+	intervals := &tabular{
+		Caption: "Intervals of the paired difference" + commaUnit(v) + ", each at " + percentage(v.Confidence),
+		Columns: columns("Arm", "#n", "#SD", "#t (drawn)", "#bootstrap, BCa", "#bootstrap, studentised", "#flipped signs", "#Hodges-Lehmann, signed ranks", "to trust before t"),
 	}
-	t := &tabular{
-		Caption: "Standard deviation of the paired differences, bootstrap interval, skewness and p-values",
-		Columns: columns("Arm", "#n", "#SD"+unit, "#t interval"+unit, "#bootstrap interval"+unit, "#skewness", "#p", "#p, Holm", "#p (worse)", "#p (worse), Holm"),
+	decided := &tabular{
+		Caption: "What decides, and what casts doubt",
+		Columns: columns("Arm", "#mean"+unit, "#skewness", "#p", "#p, Holm", "#p (worse)", "#p (worse), Holm", "#diverged", "#exact interval of that share"),
 	}
 	for i := range cs {
 		c := &cs[i]
-		t.Rows = append(t.Rows, []string{ // the SD with one decimal more than the differences it is of
+		intervals.Rows = append(intervals.Rows, []string{ // the SD with one decimal more than the differences it is of
 			v.pairName(c), strconv.Itoa(c.N), fixed(v.words.scale(c.SD), v.words.digits+1),
-			v.words.interval(c.Low, c.High), v.words.interval(c.BootLow, c.BootHigh), fixed(c.Skewness, 2),
-			probability(c.P), probability(c.Holm), probability(c.PWorse), probability(c.HolmWorse),
+			v.words.interval(c.Low, c.High), v.words.interval(c.BootLow, c.BootHigh), v.words.interval(c.StudentLow, c.StudentHigh),
+			v.words.interval(c.FlipLow, c.FlipHigh), v.middleWords(c), orMissing(plain(c.Offered)),
 		})
+		decided.Rows = append(decided.Rows, []string{
+			v.pairName(c), v.words.diff(c.Mean), fixed(c.Skewness, 2),
+			probability(c.P), probability(c.Holm), probability(c.PWorse), probability(c.HolmWorse),
+			fmt.Sprintf("%d of %d", c.Diverged, c.N), shares(c.DivergedLow, c.DivergedHigh),
+		})
+	}
+	return []*tabular{intervals, decided}
+}
+
+// middleWords is the Hodges-Lehmann estimate with its interval.
+func (v *view) middleWords(c *results.Comparison) string {
+	if math.IsNaN(c.Middle) || math.IsNaN(c.RankLow) {
+		return missing
+	}
+	return v.words.diff(c.Middle) + " " + v.words.interval(c.RankLow, c.RankHigh)
+}
+
+// classTable is how recall differs by class, of every comparison; nil when none
+// was counted.
+func (v *view) classTable() *tabular {
+	t := &tabular{
+		Caption: "Differences of recall by class, paired, in percentage points: a mean over classes can hide the one that loses",
+		Columns: columns("Comparison", "class", "#mean", "#interval", "#n", "#worst replicate", "#its difference", "#p, Holm over classes"),
+		Notes:   []string{"p is one-sided, against \"the class does not lose\": a small one says that it does."},
+	}
+	w := scoreWords{percent: true, digits: 1}
+	for i, cs := 0, slices.Concat(v.Comparisons, v.Contrasts); i < len(cs); i++ {
+		for _, k := range cs[i].Classes {
+			name := plain(k.Name)
+			if name == "" {
+				name = v.class(k.Class)
+			}
+			t.Rows = append(t.Rows, []string{
+				v.pairName(&cs[i]), name, w.diff(k.Mean), w.interval(k.Low, k.High), strconv.Itoa(k.N),
+				strconv.FormatUint(k.Replicate, 10), w.diff(k.Worst), probability(k.Holm),
+			})
+		}
+	}
+	if len(t.Rows) == 0 {
+		return nil
 	}
 	return t
 }
