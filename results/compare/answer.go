@@ -53,10 +53,35 @@ func aboutArms(s *results.Study) []string {
 	if diverged := verdicts[results.Diverged]; len(diverged) > 0 {
 		said = append(said, divergedSentence(s, diverged))
 	}
-	for _, g := range alike(verdicts[results.Undecided], needs) {
+	return append(said, undecidedSentences(s, verdicts[results.Undecided])...)
+}
+
+// undecidedSentences are one for each number of pairs that would settle an arm, or,
+// of many arms, one with the range of those numbers.
+func undecidedSentences(s *results.Study, undecided []*results.Comparison) (said []string) {
+	groups := alike(undecided, needs)
+	if len(groups) > spelt {
+		groups = alike(undecided, func(c *results.Comparison) string { return needsOfMany(c, undecided) })
+	}
+	for _, g := range groups {
 		said = append(said, names(s, g.of)+be(len(g.of))+"undecided"+g.by+".")
 	}
 	return said
+}
+
+// needsOfMany is needs with the range of pairs that would settle those of many
+// arms that have as many.
+func needsOfMany(c *results.Comparison, all []*results.Comparison) string {
+	if c.N < c.Planned || c.N == 1 || c.Verdict.Pairs == 0 {
+		return needs(c)
+	}
+	least, most := c.Verdict.Pairs, c.Verdict.Pairs
+	for _, other := range all {
+		if other.N == c.N && other.Verdict.Pairs > 0 {
+			least, most = min(least, other.Verdict.Pairs), max(most, other.Verdict.Pairs)
+		}
+	}
+	return fmt.Sprintf(" after %s; about %d to %d would settle them", number(c.N, "pair"), least, most)
 }
 
 // withinSentence comes first, also when no arm stays within the margin.
@@ -109,11 +134,19 @@ next:
 	return groups
 }
 
+// spelt is how many arms a sentence names before it counts the rest: a table with
+// all of them stands below it.
+const spelt = 5
+
 // names lists the arms of comparisons.
 func names(s *results.Study, of []*results.Comparison) string {
-	words := make([]string, len(of))
+	var words []string
 	for i, c := range of {
-		words[i] = armName(s, c.Arm)
+		if i == spelt && len(of) > spelt+1 {
+			words = append(words, fmt.Sprintf("%d more", len(of)-spelt))
+			break
+		}
+		words = append(words, armName(s, c.Arm))
 	}
 	return list(words)
 }
@@ -132,6 +165,10 @@ func under(s *results.Study, c *results.Comparison) string { return "with " + Ro
 func divergedSentence(s *results.Study, diverged []*results.Comparison) string {
 	words := make([]string, len(diverged))
 	for i, c := range diverged {
+		if i == spelt && len(diverged) > spelt+1 {
+			words = append(words[:i], fmt.Sprintf("%d more arms in some", len(diverged)-spelt))
+			break
+		}
 		words[i] = fmt.Sprintf("%s in %d of %d", armName(s, c.Arm), c.Verdict.Diverged, c.Verdict.Of)
 		if i == 0 {
 			words[i] = fmt.Sprintf("%s diverged in %d of %s", armName(s, c.Arm), c.Verdict.Diverged, number(c.Verdict.Of, "replicate"))

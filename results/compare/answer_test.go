@@ -1,7 +1,9 @@
 package compare
 
 import (
+	"fmt"
 	"math"
+	"strings"
 	"testing"
 
 	"ulpine/results"
@@ -146,6 +148,56 @@ func TestAnswer(t *testing.T) {
 	want := Answer(&results.Study{Arms: arms, Comparisons: both.Comparisons}) + " " + Answer(&c)
 	if got := Answer(&both); got != want {
 		t.Errorf("arms and contrast\ngot  %s\nwant %s", got, want)
+	}
+}
+
+// TestAnswerAboutManyArms: a grid's answer stays short enough to be read aloud.
+func TestAnswerAboutManyArms(t *testing.T) {
+	var s results.Study
+	for i, kind := range []results.VerdictKind{results.Within, results.Worse, results.Diverged, results.Undecided} {
+		for k := range 8 {
+			slug := fmt.Sprintf("%c%d", "abcd"[i], k)
+			s.Arms = append(s.Arms, results.Arm{Name: slug, Slug: slug})
+			v := results.Verdict{Kind: kind}
+			switch kind {
+			case results.Diverged:
+				v.Diverged, v.Of = k+1, 10
+			case results.Undecided:
+				v.Pairs = 20 + 5*k
+			}
+			s.Comparisons = append(s.Comparisons, compared(slug, v, 10))
+		}
+	}
+	want := "Of 32 arms, 8 stay within the margin of 0.5 percentage points in test accuracy: a0, a1, a2, a3, a4 and 3 more, with rounding as planned (10 pairs each). " +
+		"b0, b1, b2, b3, b4 and 3 more, with rounding as planned, are worse than the margin (10 pairs each). " +
+		"c0 diverged in 1 of 10 replicates, c1 in 2 of 10, c2 in 3 of 10, c3 in 4 of 10, c4 in 5 of 10 and 3 more arms in some. " +
+		"d0, d1, d2, d3, d4 and 3 more are undecided after 10 pairs; about 20 to 55 would settle them."
+	if got := Answer(&s); got != want {
+		t.Errorf("got  %s\nwant %s", got, want)
+	}
+	six := s.Comparisons[:6]
+	if got := Answer(&results.Study{Arms: s.Arms, Comparisons: six}); !strings.Contains(got, "a4 and a5,") {
+		t.Errorf("six are named: %s", got)
+	}
+}
+
+func TestFigures(t *testing.T) {
+	share := newMeasure(&results.Comparison{Metric: "test accuracy", Margin: 0.002})
+	loss := newMeasure(&results.Comparison{Metric: "test loss", Margin: 0.05})
+	other := newMeasure(&results.Comparison{Metric: "speed", Margin: math.NaN()})
+	for got, want := range map[string]string{
+		share.figure(-0.01234):                "−1.234",
+		share.figure(-1e-7):                   "0.000",
+		share.span(math.Inf(-1), math.Inf(1)): "−∞ to +∞",
+		share.margin(0.01):                    "1 percentage point",
+		share.margin(0.002):                   "0.2 percentage points",
+		loss.margin(0.05):                     "0.05 nats",
+		loss.figure(-0.0123):                  "−0.012",
+		other.with(other.figure(-2)):          "−2.0000",
+	} {
+		if got != want {
+			t.Errorf("got %s, want %s", got, want)
+		}
 	}
 }
 

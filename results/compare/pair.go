@@ -102,7 +102,7 @@ func estimate(c *results.Comparison) {
 
 // mostPairs is up to how many pairs the intervals beside the t interval are
 // formed: beyond, they agree with it and take long.
-const mostPairs = 2000
+const mostPairs = 1000
 
 // further sets the intervals beside the t interval.
 func further(c *results.Comparison) {

@@ -78,6 +78,9 @@ func TestTLevelsAreExact(t *testing.T) {
 			near(t, "rate", rate(l, l.tLevels(alpha)), alpha, slack(alpha, plans))
 		}
 	}
+	if !slices.Equal(Looks{300, 100}.Levels(0.025), Looks{300, 100}.normalLevels(0.025)) || !slices.Equal(Looks{12, 5}.Levels(0.025), Looks{12, 5}.tLevels(0.025)) {
+		t.Error("few pairs take the levels of t, many those of the normal law")
+	}
 	l := Looks{10, 1}
 	if got := rate(l, l.normalLevels(0.025)); got < 0.027 {
 		t.Errorf("the normal law's levels give %v", got)
