@@ -98,3 +98,14 @@ func TestAddCosts(t *testing.T) {
 		t.Errorf("everything in 16 bits moves %v of FP32's bits", last.Step.BitShare)
 	}
 }
+
+// TestStudyHasFacts: a study holds what its report needs beside the runs.
+func TestStudyHasFacts(t *testing.T) {
+	s, err := Study(tinyPlan(t, ""), openStore(t))
+	if err != nil {
+		t.Fatal(err)
+	}
+	if s.Costs == nil || len(s.Costs.Bills) != len(s.Arms)-1 || len(s.Volumes) == 0 || len(s.Ranges) < 2 {
+		t.Errorf("costs %v, %d volumes, %d ranges", s.Costs, len(s.Volumes), len(s.Ranges))
+	}
+}
