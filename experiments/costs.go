@@ -112,6 +112,9 @@ func costLayer(s *trainer.Spec) cost.Layer {
 		Terms: cost.Work{Forward: uint64(s.Sums.Forward), InputGradient: uint64(s.Sums.InputGradient), WeightGradient: uint64(s.Sums.WeightGradient)},
 	}
 	for _, p := range s.Params {
+		if p.Statistic {
+			continue // a running mean, neither trained nor large
+		}
 		if p.FanIn > 0 { // enters products
 			l.Weights += uint64(volume(p.Shape))
 		} else {

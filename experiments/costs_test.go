@@ -64,6 +64,28 @@ func TestCostGroups(t *testing.T) {
 	}
 }
 
+// TestCostOfEveryLayer: the model takes whatever layers the trainer has.
+func TestCostOfEveryLayer(t *testing.T) {
+	const old = `layers = ["conv1d out=2 width=9 stride=8", "relu", "dense 5"]`
+	p := tinyPlan(t, "", old, `layers = ["conv1d out=4 width=9 stride=4", "batchnorm", "leakyrelu", "residual begin", "conv1d out=4 width=3 pad=1", "layernorm", "gelu", "residual end",
+	    "maxpool size=2", "avgpool size=2", "dropout 0.1", "tanh", "sigmoid", "globalavgpool", "dense 5"]`)
+	r := costsOf(t, p)
+	for i, l := range r.Network.Layers {
+		if want := uint64(parameters(&p.Network.Layers[i])); l.Weights+l.Biases != want {
+			t.Errorf("%s: %d weights and %d biases, want %d parameters", l.Name, l.Weights, l.Biases, want)
+		}
+	}
+	if a := r.Arms[0]; a.Once.Step.Total.Against.Bits > 0.6 || a.Once.Step.Total.Against.Bits < 0.45 {
+		t.Errorf("everything stored in bf16 moves %g of FP32's bits", a.Once.Step.Total.Against.Bits)
+	}
+}
+
+// parameters are the trained values of a layer.
+func parameters(s *trainer.Spec) int {
+	n := trainer.Network{Layers: []trainer.Spec{*s}}
+	return n.Parameters()
+}
+
 // TestCostArm holds every point that a layer has to where the plan set it.
 func TestCostArm(t *testing.T) {
 	p := tinyPlan(t, `

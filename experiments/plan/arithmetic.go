@@ -1,6 +1,7 @@
 package plan
 
 import (
+	"fmt"
 	"slices"
 
 	"ulpine/quant"
@@ -17,9 +18,6 @@ func (a *assignment) arm(network *trainer.Network, states int) trainer.Arm {
 	}
 	for i := range arm.Layers {
 		arm.Layers[i] = assigned(a.layers[i]).layer(states)
-		if slices.Contains(network.Layers[i].Points, trainer.ForwardStatistic) {
-			assigned(a.layers[i]).normalise(&arm.Layers[i])
-		}
 	}
 	for i := range arm.Layers {
 		reuseOperands(network, &arm, i)
@@ -34,6 +32,8 @@ type assigned []slot
 func (a assigned) layer(states int) trainer.Arithmetic {
 	at := func(id trainer.PointID) quant.Point { return a[id].value.point }
 	return trainer.Arithmetic{
+		Statistic:  a.statistic(trainer.ForwardStatistic, trainer.ForwardProduct),
+		Moment:     a.moment(),
 		Weight:     at(trainer.ForwardWeight),
 		Activation: at(trainer.ForwardActivation),
 		Forward:    a.accumulate(trainer.ForwardProduct),
@@ -42,6 +42,8 @@ func (a assigned) layer(states int) trainer.Arithmetic {
 			Gradient: a.optional(trainer.InputGradientGradient),
 			Sums:     a.accumulate(trainer.InputGradientProduct),
 			Result:   at(trainer.InputGradientResult),
+
+			Statistic: a.statistic(trainer.InputGradientStatistic, trainer.InputGradientProduct),
 		},
 		WeightGradient: trainer.Backward{
 			First:    a.optional(trainer.WeightGradientActivation),
@@ -53,18 +55,6 @@ func (a assigned) layer(states int) trainer.Arithmetic {
 		Step:   at(trainer.UpdateStep),
 		Master: at(trainer.UpdateMaster),
 	}
-}
-
-// normalise sets the points of a normalisation: sums in turn, whose squares and
-// products are rounded as the sums are.
-func (a assigned) normalise(l *trainer.Arithmetic) {
-	statistic := func(id trainer.PointID) *quant.Accumulate {
-		p := a[id].value.point
-		return &quant.Accumulate{Product: &p, Sum: p}
-	}
-	moment := a[trainer.ForwardMoment].value.point
-	l.Statistic, l.Moment = statistic(trainer.ForwardStatistic), &moment
-	l.InputGradient.Statistic = statistic(trainer.InputGradientStatistic)
 }
 
 // states are the points of the state tensors; where another optimizer keeps more
@@ -103,6 +93,52 @@ func (a assigned) accumulate(product trainer.PointID) quant.Accumulate {
 		acc.Outer = nil // what an unset one means
 	}
 	return acc
+}
+
+// statistic is the accumulation of a normalisation's sums, products rounded as
+// those of its phase; nil where it is that of the phase, whose product point is given.
+func (a assigned) statistic(id, product trainer.PointID) *quant.Accumulate {
+	s := &a[id]
+	if !s.set {
+		return nil
+	}
+	acc := quant.Accumulate{
+		Product: a.optional(product), Sum: s.value.point, Order: s.value.order, Through32: s.value.through, Outer: s.value.outer,
+	}
+	if acc.Outer != nil && samePoint(*acc.Outer, acc.Sum) {
+		acc.Outer = nil
+	}
+	phase := a.accumulate(product)
+	if accumulateText(&acc) == accumulateText(&phase) {
+		return nil
+	}
+	return &acc
+}
+
+// moment is the point of a normalisation's moments; nil: as the activation.
+func (a assigned) moment() *quant.Point {
+	p := a.optional(trainer.ForwardMoment)
+	if p != nil && samePoint(*p, a[trainer.ForwardActivation].value.point) {
+		return nil
+	}
+	return p
+}
+
+// accumulateText says all of an accumulation: equal texts, equal sums.
+func accumulateText(acc *quant.Accumulate) string {
+	text := fmt.Sprintf("%s %s", acc.Sum, acc.Order)
+	if acc.Through32 {
+		text += " through binary32"
+	}
+	for _, part := range []struct {
+		name  string
+		point *quant.Point
+	}{{"product", acc.Product}, {"outer", acc.Outer}} {
+		if part.point != nil {
+			text += fmt.Sprintf(" %s %s", part.name, part.point)
+		}
+	}
+	return text
 }
 
 // samePoint reports whether two points round every real to the same value, given

@@ -200,6 +200,8 @@ func layerRows(network *trainer.Network, arm *trainer.Arm, i int, id trainer.Poi
 	name, a := network.Layers[i].Name, &arm.Layers[i]
 	points := a.At(id)
 	switch {
+	case follows(id):
+		return []Setting{followerRow(i, name, id, a)}
 	case len(points) > 0:
 	case isProduct(id):
 		return []Setting{{Layer: i, Name: name, Point: id.String(), Format: exactWord, Rounding: exactWord}}
@@ -219,6 +221,44 @@ func layerRows(network *trainer.Network, arm *trainer.Arm, i int, id trainer.Poi
 		}
 	}
 	return rows
+}
+
+// followerRow is the row of a point that may follow another: what is computed.
+func followerRow(i int, name string, id trainer.PointID, a *trainer.Arithmetic) Setting {
+	if id == trainer.ForwardMoment {
+		p := a.Activation
+		if a.Moment != nil {
+			p = *a.Moment
+		}
+		return pointRow(i, name, id, p)
+	}
+	acc := statisticOf(id, a)
+	if acc == nil {
+		acc = &a.Forward
+		if id == trainer.InputGradientStatistic {
+			acc = &a.InputGradient.Sums
+		}
+	}
+	row := pointRow(i, name, id, acc.Sum)
+	row.Order = acc.Order.String()
+	if acc.Outer != nil {
+		row.Order += ", outer " + shortName(acc.Outer.Format)
+	}
+	if acc.Through32 {
+		row.Order += " through binary32"
+	}
+	return row
+}
+
+// statisticOf is the accumulation of a statistic's own, or nil.
+func statisticOf(id trainer.PointID, a *trainer.Arithmetic) *quant.Accumulate {
+	switch id {
+	case trainer.ForwardStatistic:
+		return a.Statistic
+	case trainer.InputGradientStatistic:
+		return a.InputGradient.Statistic
+	}
+	return nil
 }
 
 // reusedWord stands where an operand takes the stored tensor as it is.

@@ -52,12 +52,24 @@ func isOuter(id trainer.PointID) bool {
 	return id == trainer.ForwardOuter || id == trainer.InputGradientOuter || id == trainer.WeightGradientOuter
 }
 
-func isProduct(id trainer.PointID) bool { return id.InsideSums() && !isSum(id) && !isOuter(id) }
+func isProduct(id trainer.PointID) bool {
+	return id.InsideSums() && !isSum(id) && !isOuter(id) && !isStatistic(id)
+}
+
+// isStatistic reports whether a point is one of the sums of a normalisation.
+func isStatistic(id trainer.PointID) bool {
+	return id == trainer.ForwardStatistic || id == trainer.InputGradientStatistic
+}
+
+// follows reports whether a point, unless its own key sets it, is computed as
+// another: statistics as the sums of their phase, moments as activations. No
+// shorthand sets it, so that it follows where the shorthand leads.
+func follows(id trainer.PointID) bool { return isStatistic(id) || id == trainer.ForwardMoment }
 
 // classOf is what a setting of the point's own key may hold.
 func classOf(id trainer.PointID) class {
 	switch {
-	case isSum(id):
+	case isSum(id), isStatistic(id):
 		return sums
 	case id.InsideSums():
 		return inside
@@ -83,7 +95,7 @@ func everywhere(f quant.Format, layers int) assignment {
 	a := assignment{slots: make([]slot, len(allPoints())), layers: make([][]slot, layers)}
 	for _, id := range allPoints() {
 		a.slots[id] = slot{
-			set:    !isOperand(id) && !isOuter(id),
+			set:    !isOperand(id) && !isOuter(id) && !follows(id),
 			value:  value{point: quant.Point{Format: f}},
 			origin: "default",
 		}
@@ -131,9 +143,12 @@ func put(slots []slot, id trainer.PointID, s slot) *PlanError {
 	return nil
 }
 
+// leading are the points that shorthands set.
+func leading() []trainer.PointID { return slices.DeleteFunc(allPoints(), follows) }
+
 // storagePoints and sumPoints are what the shorthands set.
 func storagePoints() []trainer.PointID {
-	return slices.DeleteFunc(allPoints(), trainer.PointID.InsideSums)
+	return slices.DeleteFunc(leading(), trainer.PointID.InsideSums)
 }
 
 func sumPoints() []trainer.PointID {
@@ -153,7 +168,7 @@ const operandKey = "operand"
 // targets is the table of all keys that set points, dotted.
 func targets() map[string]target {
 	t := map[string]target{
-		"everything": {general, broad, allPoints()},
+		"everything": {general, broad, leading()},
 		"storage":    {stored, partial, storagePoints()},
 		"accumulate": {sums, partial, sumPoints()},
 	}
@@ -244,6 +259,8 @@ func (r *reader) applyTarget(n *node, key string, t target, sel selection, a *as
 	for _, id := range t.ids {
 		s := slot{set: true, rank: specificity{what: t.rank}, at: n, origin: origin, value: value{point: v.point, exact: v.exact, states: v.states}}
 		switch {
+		case isStatistic(id):
+			s.value = v
 		case isSum(id):
 			s.value.order, s.value.through = v.order, v.through
 			if v.outer != nil && t.rank == pointwise {

@@ -161,6 +161,7 @@ func (r *reader) readMainTraining(root *node, task *Task) trainer.Training {
 	}
 	t := r.readTraining(n, defaultTraining(), false, trainingKeys)
 	r.checkBatch(n, &t, task.Train)
+	r.checkTargets(n, &t, task)
 	return t
 }
 
@@ -175,6 +176,7 @@ func (r *reader) readPretrain(root *node, p *Plan) *Pretrain {
 	if sub := r.table(n, "training", "training.epochs = 5"); sub != nil {
 		pre.Training = r.readTraining(sub, p.Training, true, trainingKeys)
 		r.checkBatch(sub, &pre.Training, pre.Task.Train)
+		r.checkTargets(sub, &pre.Training, &pre.Task)
 	}
 	r.checkSameShape(n, &p.Task, &pre.Task)
 	states, _ := pre.Training.Optimizer.States()

@@ -33,7 +33,13 @@ func (a *Arm) canonical(network *trainer.Network) string {
 // canonicalPoint writes what a layer holds at one point.
 func canonicalPoint(b *strings.Builder, i int, id trainer.PointID, a *trainer.Arithmetic) {
 	points := a.At(id)
-	if len(points) == 0 && !isOuter(id) && id != trainer.UpdateState {
+	if acc := statisticOf(id, a); isStatistic(id) {
+		if acc != nil {
+			fmt.Fprintf(b, "layer %d %s: %s\n", i, id, accumulateText(acc))
+		}
+		return
+	}
+	if len(points) == 0 && !isOuter(id) && !follows(id) && id != trainer.UpdateState {
 		word := exactWord
 		if isOperand(id) {
 			word = reusedWord

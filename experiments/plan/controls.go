@@ -37,7 +37,7 @@ func (r *armReader) readControls(root *node, baseline *Arm) []Arm {
 		a.spelled = []string{"as the baseline, sums pairwise"}
 		for _, slots := range append(slices.Clone(a.layers), a.slots) {
 			for _, id := range allPoints() {
-				if isSum(id) {
+				if isSum(id) || isStatistic(id) {
 					slots[id].value.order = quant.Order{Kind: quant.Pairwise}
 				}
 			}

@@ -41,6 +41,8 @@
 //	               beta1, beta2, epsilon, epsilon_inside; weight_decay, decoupled;
 //	               clip_norm; compensated = true keeps what masters round off in a
 //	               further state
+//	loss           a kind (cross-entropy, mean-squared-error, huber) or a table: kind;
+//	               label_smoothing of cross-entropy, width of huber
 //	learning_rate  a number or a table: start; multiply, at_epochs; or cosine = true,
 //	               end; warm_up: steps over which it rises first
 //
@@ -71,6 +73,11 @@
 //	outer        of sums: where finished chunks and the bias are added; default:
 //	             as the sum
 //	through      of sums: "binary32", an adder that first rounds to binary32
+//
+// forward.statistic and input_gradient.statistic are the sums of a normalisation,
+// with order, outer and through of their own; forward.moment is what is made of them.
+// Only their own keys set them: unset, they are as the sums and activations of their
+// phase, so shorthands reach them through those.
 //
 // update.state also takes an array, a setting for each state tensor in the order of
 // the optimizer's formula: velocity; first and second moment; last the compensation,

@@ -214,6 +214,8 @@ func writePoints(w *tabwriter.Writer, a *Arm) {
 func (a *Arm) origin(s Setting) string {
 	from := a.assignment.of(s.Layer)[slices.Index(trainer.PointNames(), s.Point)]
 	switch {
+	case s.Rounding != reusedWord && !from.set:
+		return "not set: follows its phase" // a normalisation's
 	case s.Rounding == reusedWord && !from.set:
 		return "not set"
 	case s.Rounding == reusedWord:

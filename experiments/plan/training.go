@@ -32,7 +32,9 @@ func (r *reader) readTraining(n *node, base trainer.Training, complete bool, key
 			}
 		}
 	}
-	t.Loss = r.word(n, "loss", base.Loss, "cross-entropy")
+	if at := n.table["loss"]; at != nil {
+		r.readLoss(at, &t)
+	}
 	t.Batch = int(r.whole(n, "batch", int64(base.Batch), 1, maxCount))
 	t.Epochs = int(r.whole(n, "epochs", int64(base.Epochs), 1, maxCount))
 	t.Shuffle = r.flag(n, "shuffle", base.Shuffle)
@@ -46,6 +48,65 @@ func (r *reader) readTraining(n *node, base trainer.Training, complete bool, key
 		r.readEvaluate(at, &t)
 	}
 	return t
+}
+
+// readLoss reads a loss: a word, or a table with its kind.
+func (r *reader) readLoss(n *node, t *trainer.Training) {
+	t.LabelSmoothing, t.HuberWidth = 0, 0
+	if n.table == nil {
+		word, isWord := n.value.(string)
+		if t.Loss = word; !isWord {
+			r.wrongType(n, "a word or a table", `loss = { kind = "cross-entropy", label_smoothing = 0.1 }`)
+		} else if !slices.Contains(trainer.LossNames(), word) {
+			r.fail(n.errorf(suggest(word, trainer.LossNames()), "unknown word %q", word))
+		}
+	} else {
+		if n.table["kind"] == nil {
+			r.fail(n.errorf(`write kind = "cross-entropy"`, "kind is missing"))
+		}
+		keys := []string{"kind"}
+		switch t.Loss = r.word(n, "kind", t.Loss, trainer.LossNames()...); t.Loss {
+		case "cross-entropy":
+			keys = append(keys, "label_smoothing")
+		case "huber":
+			keys = append(keys, "width")
+		}
+		r.known(n, keys...)
+		t.LabelSmoothing = r.number(n, "label_smoothing", 0)
+		t.HuberWidth = r.number(n, "width", 0)
+		if !(float32(t.LabelSmoothing) >= 0 && float32(t.LabelSmoothing) < 1) {
+			r.fail(n.table["label_smoothing"].errorf("write a number from 0 to below 1, as 0.1", "a smoothing of %g is out of range", t.LabelSmoothing))
+		}
+		if at := n.table["width"]; at != nil && !positive32(t.HuberWidth) {
+			r.fail(at.errorf("write a positive width, as 1", "a width of %g is not a positive binary32 number", t.HuberWidth))
+		}
+	}
+	if t.Loss == "huber" && t.HuberWidth == 0 {
+		t.HuberWidth = huberWidth
+	}
+}
+
+// huberWidth is the trainer's default written out.
+const huberWidth = 1
+
+// describeLoss is a loss in words.
+func describeLoss(t trainer.Training) string {
+	switch {
+	case t.LabelSmoothing != 0:
+		return fmt.Sprintf("%s with labels smoothed by %g", t.Loss, float32(t.LabelSmoothing))
+	case t.HuberWidth != 0:
+		return fmt.Sprintf("%s of width %g", t.Loss, float32(t.HuberWidth))
+	}
+	return t.Loss
+}
+
+// checkTargets holds the loss to what the data has.
+func (r *reader) checkTargets(n *node, t *trainer.Training, task *Task) {
+	at := n.table["loss"]
+	if at == nil || task.Source == nil || !t.Regression() || len(task.ClassNames) == 0 {
+		return
+	}
+	r.fail(at.errorf(`write loss = "cross-entropy"`, "%s takes targets of values, but the data of %s has classes", t.Loss, task.Data))
 }
 
 // positive32 reports whether the binary32 number nearest to x is positive and finite.
@@ -164,5 +225,5 @@ func describeTraining(t trainer.Training) string {
 		order = "in the data's order"
 	}
 	return fmt.Sprintf("%s, %s, learning rate %s, batch %d, epochs %d, %s, test data %s, validation data %s",
-		t.Loss, DescribeOptimizer(t.Optimizer), DescribeRate(t.LearningRate), t.Batch, t.Epochs, order, t.EvaluateTest, t.EvaluateValidation)
+		describeLoss(t), DescribeOptimizer(t.Optimizer), DescribeRate(t.LearningRate), t.Batch, t.Epochs, order, t.EvaluateTest, t.EvaluateValidation)
 }
