@@ -80,7 +80,7 @@ func spreadDoubts(c *results.Comparison, identical bool) (warnings []string) {
 	case c.SD == 0:
 		return nil
 	}
-	if skewed(c) {
+	if c.Offered != "" {
 		warnings = append(warnings, fmt.Sprintf(
 			"the differences are skewed (skewness %s, beyond two standard errors), and the t interval then misses too often; the %s interval holds best: %s",
 			minus(fmt.Sprintf("%.2f", c.Skewness)), c.Offered, w.with(w.span(c.StudentLow, c.StudentHigh))))

@@ -215,6 +215,19 @@ func TestDoubts(t *testing.T) {
 	}
 }
 
+// TestVeryManyPairs: beyond a thousand the t interval stands alone, and nothing is
+// said of intervals that were not formed.
+func TestVeryManyPairs(t *testing.T) {
+	arm, base := runs("a", constant(mostPairs+1, 0.9)...), runs("baseline", constant(mostPairs+1, 0.9)...)
+	for i := range 5 {
+		arm[i].Epochs[1].TestMetric = 0.5
+	}
+	c := one(Pair(question("a", 0.02), arm, base))
+	if c.Verdict.Kind != results.Within || !skewed(&c) || c.Offered != "" || !math.IsNaN(c.StudentLow) || !math.IsNaN(c.FlipLow) || len(c.Warnings) != 0 {
+		t.Errorf("%+v, offered %q, warnings %q", c.Verdict, c.Offered, c.Warnings)
+	}
+}
+
 // TestHolmDecides: alone the arm is within; among five it is not, while its
 // drawn interval stays the same.
 func TestHolmDecides(t *testing.T) {
