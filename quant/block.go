@@ -26,6 +26,11 @@ func (q *quick) block(x []float64, w *words, first uint64, n *Counts) bool {
 	default:
 		return false
 	}
+	if q.oneZero {
+		for i := range x {
+			x[i] += 0 // -0 becomes +0
+		}
+	}
 	return true
 }
 

@@ -344,6 +344,8 @@ func (q *quick) odd(x float64, fresh bool) (float64, Event) {
 	switch {
 	case x != x:
 		return nan64, BecameNaN
+	case math.Abs(x) <= math.MaxFloat64 && q.uneven:
+		return q.round(x, 0) // nearest-even: the other kinds come here with specials only
 	case math.Abs(x) <= math.MaxFloat64:
 		return q.over[side], q.overEvent[side]
 	case fresh && q.infEvent[side] != Saturated:

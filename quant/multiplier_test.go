@@ -78,6 +78,8 @@ func innerPoints(t testing.TB) []*Point {
 		"fp16 stochastic(4,centred-even)", "E5M2 stochastic(2)", "fp32 stochastic(16,centred)", "fp16 toward-zero",
 		"bf16 to-odd", "fp32 up", "E4M3 down nan", "fp16 nearest-away saturate", "bf16 nearest-even nan",
 		"E5M10(subnormals=flush)", "E4M0", "E2M1", "fp32 nearest-even saturate", "E8M20", "E4M3(top=ieee)",
+		"Q2.14", "Q4.4", "Q2.14 stochastic(16)", "Q8.8 toward-zero", "Q3.5 nearest-even nan", "Q2.6 to-odd", "UQ2.6",
+		"Q10.14 stochastic(3,centred)", "binary8p4", "binary8p3 stochastic(4)", "binary6p2 up saturate", "E4M1 down", "posit8",
 		"fp32 toward-zero", "E9M10",
 	}
 	var p []*Point

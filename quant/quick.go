@@ -15,26 +15,29 @@ const (
 	quickNative64                    // nearest-even to binary64: the arithmetic itself
 )
 
-// quick rounds numbers held in binary64 to one point of the family Float. Such a
-// number is either the exact result or that result rounded to odd at 53 bits
-// (see oddFold), whose last bit then stands for the rest; the kinds are chosen so
-// that both round alike.
+// quick rounds numbers held in binary64 to one point of the families Float and Draft
+// or of signed fixed point. Such a number is either the exact result or that result
+// rounded to odd at 53 bits (see oddFold), whose last bit then stands for the rest;
+// the kinds are chosen so that both round alike.
 type quick struct {
 	point    *Point
 	kind     quickKind
 	foldable bool // a result rounded to odd at 53 bits rounds as the exact one does
 	emin     int
 	fraction int
-	drop     uint   // fraction bits of binary64 below the last kept place of a normal result
-	low      uint64 // binary64 exponent bits of the least normal value
-	high     uint64 // and of the binade beyond the largest finite value
-	lift     uint64 // added to exponent bits e: 1.5 x 2^(e + drop)
-	max      float64
-	floor    float64   // least positive result that is not flushed
-	random   uint      // random bits
-	centre   uint64    // what Centred adds below the last place of the random bits
-	add      [2]uint64 // what quickDirected adds to a magnitude before cutting, by sign
-	even     uint64    // 1 where it adds the last kept bit as well
+	drop     uint       // fraction bits of binary64 below the last kept place of a normal result
+	low      uint64     // binary64 exponent bits of the least normal value
+	high     uint64     // and of the binade beyond the largest finite value
+	lift     uint64     // added to exponent bits e: 1.5 x 2^(e + drop)
+	max      float64    // up to which the loops look no further
+	limit    [2]float64 // largest finite magnitude by sign, max or the next one
+	uneven   bool       // the two limits differ
+	oneZero  bool       // zero has no sign
+	floor    float64    // least positive result that is not flushed
+	random   uint       // random bits
+	centre   uint64     // what Centred adds below the last place of the random bits
+	add      [2]uint64  // what quickDirected adds to a magnitude before cutting, by sign
+	even     uint64     // 1 where it adds the last kept bit as well
 
 	// What becomes of a finite result beyond max, and of an infinite one, by sign.
 	over, inf           [2]float64
@@ -45,11 +48,13 @@ type quick struct {
 // none.
 func newQuick(p *Point) quick {
 	q := quick{point: p}
-	f, ok := p.Format.(Float)
+	f, ok := gridOf(p)
 	if !ok || !p.Rounding.Source.plain() {
 		return q
 	}
-	l := f.Limits()
+	l := p.Format.Limits()
+	q.oneZero, q.uneven = l.OneZero, l.Lowest != -l.Max
+	q.limit = [2]float64{l.Max, -l.Lowest}
 	q.emin, q.fraction, q.max = f.emin, f.fraction, l.Max
 	for s := range 2 {
 		q.over[s], q.overEvent[s] = p.beyond(s == 1, l)
@@ -73,6 +78,23 @@ func newQuick(p *Point) quick {
 	}
 	q.choose(f, p.Rounding)
 	return q
+}
+
+// gridOf returns the floating-point format whose magnitudes are those of a point's
+// format: signed fixed point that does not wrap is one of subnormal values alone, but
+// for its most negative value, which is the next magnitude, and its one zero; a
+// draft format is one but for its specials and its one zero.
+func gridOf(p *Point) (Float, bool) {
+	switch f := p.Format.(type) {
+	case Float:
+		return f, true
+	case Draft:
+		return f.grid, true
+	case Fixed:
+		fraction := f.width - 1
+		return Float{fraction: fraction, emin: fraction - f.fraction}, f.lo < 0 && p.policy() != Wrap
+	}
+	return Float{}, false
 }
 
 // choose sets the kind.
@@ -125,8 +147,8 @@ func (q *quick) setAdd(m Mode) {
 // G. Melquiond: Emulation of FMA and correctly rounded sums, IEEE TC 57, 2008).
 func oddFold(x, rest float64) float64 {
 	b := math.Float64bits(x)
-	if rest == 0 || b&1 != 0 {
-		return x
+	if rest == 0 || b&1 != 0 || rest != rest {
+		return x // a NaN must not gain a payload, which a carry could push out
 	}
 	// x is even: the odd neighbour lies on the side of the rest.
 	if math.Signbit(x) == math.Signbit(rest) {
@@ -144,6 +166,8 @@ func (q *quick) round(x float64, word uint32) (float64, Event) {
 		return nan64, BecameNaN
 	case mag == exponentMask64:
 		return q.inf[sign], q.infEvent[sign]
+	case mag == 0 && q.oneZero:
+		return 0, NoEvent
 	case mag == 0:
 		return x, NoEvent
 	}
@@ -162,8 +186,10 @@ func (q *quick) round(x float64, word uint32) (float64, Event) {
 	}
 	v := float64(n) * powerOfTwo(exponent-q.fraction)
 	switch {
-	case v > q.max:
+	case v > q.limit[sign]:
 		return q.over[sign], q.overEvent[sign]
+	case (v == 0 || v < q.floor) && q.oneZero:
+		return 0, Underflowed
 	case v == 0 || v < q.floor:
 		return math.Float64frombits(b & signBit64), Underflowed
 	}

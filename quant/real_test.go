@@ -271,6 +271,9 @@ func TestOddFold(t *testing.T) {
 			t.Fatalf("%v: %x + %x: %v %d, want %v %d", p, a, b, got, e, want, event)
 		}
 		q := newQuick(&p)
+		if q.kind == quickNone {
+			return // the reference serves it
+		}
 		if got, e := q.round(folded, word); !same(got, want) || e != event {
 			t.Fatalf("%v: quick %x + %x: %v %d, want %v %d", p, a, b, got, e, want, event)
 		}
