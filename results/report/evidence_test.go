@@ -1,6 +1,7 @@
 package report
 
 import (
+	"bytes"
 	"fmt"
 	"math"
 	"slices"
@@ -225,6 +226,14 @@ func TestSentences(t *testing.T) {
 	got := v.sentences()
 	if len(got) != 4 || got[1] != "“A. B” is worse." || strings.Join(got, " ") != v.answer() {
 		t.Errorf("%q", got)
+	}
+	v.Answer = strings.Repeat("One more. ", 8)
+	var page bytes.Buffer
+	if err := v.html(&page); err != nil {
+		t.Fatal(err)
+	}
+	if n := strings.Count(page.String(), ">One more.</span>"); n != 8 || !strings.Contains(page.String(), "<summary>2 more sentences</summary>") {
+		t.Errorf("%d sentences of 8", n)
 	}
 	if got := newView(&results.Study{}).sentences(); len(got) != 1 {
 		t.Errorf("%q", got)

@@ -34,8 +34,13 @@ func (f frame) epochAxis(g *draw.Group, words string) {
 
 // grid draws the horizontal grid with its labels, spelt by label, left of the frame.
 func (f frame) grid(g *draw.Group, label func(float64) string) {
+	f.gridAt(g, label, f.y.Ticks(max(2, int((f.y1-f.y0)/30))))
+}
+
+// gridAt is grid for given ticks.
+func (f frame) gridAt(g *draw.Group, label func(float64) string, ticks []float64) {
 	last := math.Inf(1) // the last label's height: labels closer than a line are left out
-	for _, t := range f.y.Ticks(max(2, int((f.y1-f.y0)/30))) {
+	for _, t := range ticks {
 		y := f.y.At(t)
 		if y < f.y0-0.5 || y > f.y1+0.5 {
 			continue

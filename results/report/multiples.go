@@ -118,7 +118,7 @@ func (m *multiples) ground(g *draw.Group, f frame, turned bool) {
 		s.Rect(f.x0, y0, f.x1-f.x0, y1-y0, draw.Fill(draw.Floor).With(0.12))
 		s.Hatch(f.x0, y0, f.x1-f.x0, y1-y0, 6, draw.Line(draw.Floor, 0.9).With(0.75))
 	}
-	f.grid(g, draw.TickLabel)
+	f.gridAt(g, draw.TickLabel, f.y.Ticks(10))
 	g.Line(f.x0, f.inside(0), f.x1, f.inside(0), draw.Line(draw.Ink, 1.2))
 	if fold := m.d.fold(); fold > 0 { // where the scale turns logarithmic
 		for _, at := range []float64{-fold, fold} {
@@ -131,6 +131,7 @@ func (m *multiples) ground(g *draw.Group, f frame, turned bool) {
 		y := f.inside(-m.d.margin)
 		t := g.Titled("margin " + fixed(-m.d.margin, marginDigits(m.d.margin)))
 		t.Line(f.x0, y, f.x1, y, draw.Line(draw.Post, 3))
+		t.Text(f.x0+4, y+12, "margin "+fixed(-m.d.margin, marginDigits(m.d.margin)), draw.Type{Size: 9.5, Role: draw.Post, Bold: true, Max: f.x1 - f.x0})
 	}
 	g.Line(f.x0, f.y1, f.x1, f.y1, draw.Line(draw.Ink, 1))
 	if m.ticks == nil {

@@ -48,10 +48,16 @@ var sectionTable = []struct {
 	{"glossary", "Words", "glossary", func(*view) any { return glossary }},
 }
 
+// shownSentences is the number of sentences of the answer before the rest is
+// folded away.
+const shownSentences = 6
+
 // pageData is what the page's frame needs.
 type pageData struct {
 	Heading        string
 	Answer         []string // sentence by sentence
+	AnswerRest     []string // those that are folded away
+	RestCount      string
 	Alarms         []fact
 	WarningCount   string
 	WrittenOn      string
@@ -91,6 +97,10 @@ func (v *view) html(w io.Writer) error {
 		Code: plain(v.CodeVersion), Digest: plain(v.StoreDigest),
 		// The three are the project's own files and JSON that escapes <, > and &.
 		Style: template.CSS(style), Script: template.JS(script), Curves: template.JS(v.curveData()),
+	}
+	if rest := len(p.Answer) - shownSentences; rest > 1 { // one more is no gain
+		p.AnswerRest, p.Answer = p.Answer[shownSentences:], p.Answer[:shownSentences]
+		p.RestCount = plural(rest, "more sentence")
 	}
 	if n := len(warningSection(v).(list).Items); n > 0 {
 		p.WarningCount = plural(n, "warning")

@@ -186,6 +186,10 @@ func (m *mapLayout) cell(g *draw.Group, x, top float64, c mapCell) {
 	for size > 7 && draw.Width(words, size, true) > w-2 {
 		size -= 0.5
 	}
+	if over > 0 { // on the darker fill the words need a ground
+		ww := draw.Width(words, size, true)
+		t.Rect(x-ww/2-1, top+cellHeight/2-5, ww+2, 10, draw.Fill(draw.Paper).With(0.8))
+	}
 	t.Text(x, top+13.5, words, draw.Type{Size: size, Anchor: draw.Middle, Bold: true})
 }
 
