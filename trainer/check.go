@@ -84,5 +84,8 @@ func (j *Job) checkTraining(p *parts) (err error) {
 			return fmt.Errorf("evaluation of %s data at %q; known: %q, %q, %q", what, when, EveryEpoch, LastEpoch, Never)
 		}
 	}
+	if err := j.Diagnostics.check(); err != nil {
+		return err
+	}
 	return t.LearningRate.check()
 }

@@ -166,6 +166,15 @@
 // included; evaluations are not counted. Additions at an outer point count with
 // the sum they belong to; the gradient of a bias with weight_gradient.sum.
 //
+// # Diagnostics
+//
+// A job may ask to be looked at (Diagnostics): values before and after they are
+// rounded at stored points, some sums against the exact sums of their operands,
+// what masters moved by against the steps they were to take, gradients against those
+// of binary64 on the same masters, batch and masks. Looking reads only: a run has
+// the same bits with and without. Findings are no part of what is compared or
+// counted; what they mean stands at their types.
+//
 // # Memory
 //
 // Tensors are float32 where every value of every point fits binary32, else

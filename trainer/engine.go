@@ -24,6 +24,8 @@ type engine[T quant.Element] struct {
 	layers   []layer[T]
 	params   []*param[T]
 	settlers []settler
+	observer *observer // nil: nobody looks
+	twin     *twin     // nil: gradients are not compared
 
 	judge  *judge[T]
 	mover  *mover[T]
@@ -160,6 +162,7 @@ func (e *engine[T]) step(batch []int32, rate float64) (loss float64, what fate) 
 	p := &e.pass
 	p.step++
 	p.samples = len(batch)
+	p.watch = e.observer.due(p.step)
 	y := e.forward(p, e.fetch(batch))
 	score(e.scores, y, e.truths(len(batch)))
 
@@ -170,6 +173,9 @@ func (e *engine[T]) step(batch []int32, rate float64) (loss float64, what fate) 
 	}
 	before := e.tally.gradientEvents()
 	e.backward(p, slopes)
+	if e.twin != nil && p.step%uint32(e.observer.set.Gradient) == 0 {
+		cosines(e.twin, e, batch, e.observer.found)
+	}
 	if e.scaler.set.Kind == DynamicScale && (e.tally.gradientEvents() != before || e.gradientNotFinite()) {
 		e.scaler.skip()
 		return loss, stepSkipped

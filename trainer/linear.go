@@ -148,6 +148,9 @@ func (l *linear[T]) forward(p *pass) {
 		q.J, q.C, q.FirstJ = columns, results[n*q.I*columns:], p.first*uint64(l.outer)
 		q.Terms, q.Sums = p.group(n, l.streams(p, opForwardProduct)), p.group(n, l.streams(p, opForwardSum))
 		l.forwardMul.Mul(*q, l.counts(p, ForwardProduct), l.counts(p, ForwardSum))
+		if p.watch != nil {
+			lookSums(p.watch, l.layer, ForwardProduct, ForwardSum, &l.set.Forward, q)
+		}
 	}
 
 	y := l.above.values(p.samples)
@@ -197,6 +200,9 @@ func (l *linear[T]) weightSums(p *pass, left quant.Matrix[T], terms int) {
 		q.A.Data = left.Data[n*q.I*left.Row:]
 		q.Terms, q.Sums = p.group(n, l.streams(p, opWeightProduct.of(0))), p.group(n, l.streams(p, opWeightSum.of(0)))
 		l.mul.Mul(*q, products, sums)
+		if p.watch != nil {
+			lookSums(p.watch, l.layer, WeightGradientProduct, WeightGradientSum, &set.Sums, q)
+		}
 	}
 	round(l.place, p, WeightGradientResult, opWeightResult.of(0), l.weight.gradient.data, results, &set.Result, 0)
 
@@ -227,6 +233,9 @@ func (l *linear[T]) inputBackward(p *pass) {
 		q.J, q.C = columns, results[k*q.I*columns:]
 		q.Terms, q.Sums = p.group(k, l.streams(p, opInputProduct)), p.group(k, l.streams(p, opInputSum))
 		l.belowMul.Mul(*q, l.counts(p, InputGradientProduct), l.counts(p, InputGradientSum))
+		if p.watch != nil {
+			lookSums(p.watch, l.layer, InputGradientProduct, InputGradientSum, &set.Sums, q)
+		}
 	}
 
 	dx := l.below.gradients(n)

@@ -39,6 +39,8 @@ type mover[T quant.Element] struct {
 	scaled []float64   // g', of the largest parameter's size
 	step   []T
 	part   []T
+
+	old, steps []T // of an update that is looked at
 }
 
 // newMover allocates states and scratch.
@@ -65,7 +67,7 @@ func newMover[T quant.Element](k *ruleKind, o Optimizer, params []*param[T]) *mo
 func (m *mover[T]) move(p *pass, rate, s float64) {
 	shrink := m.shrink(s)
 	m.rule.begin()
-	for _, q := range m.params {
+	for number, q := range m.params {
 		g := m.scaled[:len(q.gradient.data)]
 		for i, v := range q.gradient.data {
 			g[i] = float64(v) / s
@@ -75,13 +77,13 @@ func (m *mover[T]) move(p *pass, rate, s float64) {
 				g[i] = float64(v * shrink)
 			}
 		}
-		m.apply(p, q, g, rate)
+		m.apply(p, number, q, g, rate)
 		q.refresh(p)
 	}
 }
 
 // apply moves one master.
-func (m *mover[T]) apply(p *pass, q *param[T], g []float64, rate float64) {
+func (m *mover[T]) apply(p *pass, number int, q *param[T], g []float64, rate float64) {
 	step, part := m.step[:len(g)], m.part[:len(g)]
 	point := &q.set.Step
 	decay := m.set.WeightDecay
@@ -96,11 +98,23 @@ func (m *mover[T]) apply(p *pass, q *param[T], g []float64, rate float64) {
 		scale(p, q, UpdateStep, opDecay, part, single(float64(rate*decay)), q.master.data, point)
 		add(p, q, UpdateStep, opDecaySum, step, step, part, point)
 	}
+	if p.watch != nil {
+		p.watch.remember(number, q.layer, q.name)
+		keep(m, q, step)
+	}
 	if m.set.Compensated {
 		m.compensate(p, q, step, part)
-		return
+	} else {
+		subtract(p, q, UpdateMaster, opMaster, q.master.data, q.master.data, step, &q.set.Master)
 	}
-	subtract(p, q, UpdateMaster, opMaster, q.master.data, q.master.data, step, &q.set.Master)
+	if p.watch != nil {
+		moved(p.watch, number, m.old, m.steps, q.master.data)
+	}
+}
+
+// keep copies masters and steps before an update that is looked at.
+func keep[T quant.Element](m *mover[T], q *param[T], step []T) {
+	m.old, m.steps = append(m.old[:0], q.master.data...), append(m.steps[:0], step...)
 }
 
 // compensate is the compensated update.
@@ -136,22 +150,40 @@ func (m *mover[T]) shrink(s float64) float64 {
 
 // rounded writes R[point](src).
 func rounded[T quant.Element](p *pass, q *param[T], id PointID, o operation, dst []T, src []float64, point *quant.Point) {
-	quant.RoundSlice(dst, src, point, q.draws(p, o), 0, q.counts(p, id))
+	round(q.place, p, id, o.of(q.number), dst, src, point, 0)
 }
 
 // scale writes R[point](alpha src), the product exact.
 func scale[T, S quant.Element](p *pass, q *param[T], id PointID, o operation, dst []T, alpha float64, src []S, point *quant.Point) {
+	if p.watch != nil {
+		lookCombined(p.watch, src, []float64{alpha}, product)
+	}
 	quant.ScaleSlice(dst, alpha, src, point, q.draws(p, o), q.counts(p, id))
+	if p.watch != nil {
+		compare(p.watch, q.layer, id, dst, point)
+	}
 }
 
 // add writes R[point](a + b), the sum exact.
 func add[T, A, B quant.Element](p *pass, q *param[T], id PointID, o operation, dst []T, a []A, b []B, point *quant.Point) {
+	if p.watch != nil {
+		lookCombined(p.watch, a, b, sum)
+	}
 	quant.AddSlice(dst, a, b, point, q.draws(p, o), q.counts(p, id))
+	if p.watch != nil {
+		compare(p.watch, q.layer, id, dst, point)
+	}
 }
 
 // subtract writes R[point](a - b), the difference exact.
 func subtract[T, A, B quant.Element](p *pass, q *param[T], id PointID, o operation, dst []T, a []A, b []B, point *quant.Point) {
+	if p.watch != nil {
+		lookCombined(p.watch, a, b, difference)
+	}
 	quant.SubSlice(dst, a, b, point, q.draws(p, o), q.counts(p, id))
+	if p.watch != nil {
+		compare(p.watch, q.layer, id, dst, point)
+	}
 }
 
 // opStateNumber numbers operation n on state tensor s.

@@ -56,8 +56,9 @@ type Outcome struct {
 	// in DivergedStep (1 is the first) and its last epoch stands as it was.
 	Diverged     string
 	DivergedStep int
-	Stalled      bool    // not diverged, yet the final loss is over 95 % of a constant predictor's
-	Test         *Scores // answers of the last evaluation of the test set; nil if there was none
+	Stalled      bool      // not diverged, yet the final loss is over 95 % of a constant predictor's
+	Findings     *Findings // of diagnostics; nil if none were asked for
+	Test         *Scores   // answers of the last evaluation of the test set; nil if there was none
 }
 
 // counters lists the tallies of every point a network computes with.

@@ -27,10 +27,11 @@ type pass struct {
 	seed    uint64 // the replicate's rounding key
 	step    uint32 // training step, the first is 1; the epoch in an evaluation
 	phase   uint32
-	dropout uint64 // the replicate's key of dropout masks
-	samples int    // examples in this batch
-	first   uint64 // number of the batch's first example in its data set; 0 in training
-	tally   tally  // nil in an evaluation: only training is counted
+	watch   *observer // nil: nobody looks at this step
+	dropout uint64    // the replicate's key of dropout masks
+	samples int       // examples in this batch
+	first   uint64    // number of the batch's first example in its data set; 0 in training
+	tally   tally     // nil in an evaluation: only training is counted
 }
 
 // draws addresses the random words of an operation of a layer.
@@ -76,11 +77,23 @@ func (pl place) counts(p *pass, id PointID) *quant.Counts {
 
 // combined is combine as an operation of a layer.
 func combined[T quant.Element](pl place, p *pass, id PointID, o operation, dst, a, b []T, how arithmetic, point *quant.Point, first uint64) {
+	if p.watch != nil {
+		lookCombined(p.watch, a, b, how)
+	}
 	combine(dst, a, b, how, point, pl.draws(p, o), first, pl.counts(p, id))
+	if p.watch != nil {
+		compare(p.watch, pl.layer, id, dst, point)
+	}
 }
 
 // round is the one road by which a tensor becomes a stored tensor: dst =
 // R[point](src), element 0 being number first of the tensor.
 func round[D, S quant.Element](pl place, p *pass, id PointID, o operation, dst []D, src []S, point *quant.Point, first uint64) {
+	if p.watch != nil {
+		look(p.watch, src)
+	}
 	quant.RoundSlice(dst, src, point, pl.draws(p, o), first, pl.counts(p, id))
+	if p.watch != nil {
+		compare(p.watch, pl.layer, id, dst, point)
+	}
 }

@@ -19,6 +19,7 @@ type Job struct {
 	Start []Param // nil: initial weights are drawn
 	// Train must hold examples; Validation and Test may be empty.
 	Train, Validation, Test Set
+	Diagnostics             Diagnostics
 }
 
 // Watcher is told how far a run is: training steps done, of all it may take. A
@@ -58,6 +59,9 @@ func runIn[T quant.Element](ctx context.Context, job *Job, w Watcher, parts part
 	e, err := newEngine[T](job, parts.train, parts)
 	if err == nil {
 		err = e.start(job.Start)
+	}
+	if err == nil {
+		err = e.observe(job, parts)
 	}
 	if err != nil {
 		return Outcome{}, fmt.Errorf("trainer: %w", err)
@@ -113,6 +117,9 @@ func (r *run[T]) epoch(ctx context.Context, epoch int) error {
 		return err
 	}
 	r.judgeEpoch(loss)
+	if r.observer != nil {
+		r.observer.end(epoch)
+	}
 	last := epoch == r.job.Training.Epochs || r.out.Diverged != ""
 	m, err := r.measure(ctx, epoch, loss, last)
 	r.out.Epochs = append(r.out.Epochs, m)
@@ -172,6 +179,9 @@ func (r *run[T]) measure(ctx context.Context, epoch int, loss float64, last bool
 // finish completes the outcome.
 func (r *run[T]) finish() Outcome {
 	r.out.Final = r.record()
+	if r.observer != nil {
+		r.out.Findings = r.observer.found
+	}
 	r.out.Counters = r.net.counters(r.tally)
 	if last := len(r.out.Epochs) - 1; r.out.Diverged == "" && last >= 0 {
 		constant := r.parts.loss.constant(r.parts.train, r.parts.classes)
