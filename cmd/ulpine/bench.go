@@ -46,7 +46,7 @@ func arithmeticFlags(cmd *cobra.Command) *arithmetic {
 	a := &arithmetic{}
 	f := cmd.Flags()
 	f.StringVar(&a.rounding, "rounding", "nearest-even", "`rounding`: nearest-even, nearest-away, toward-zero, up, down, to-odd, stochastic")
-	f.StringVar(&a.overflow, "overflow", "default", "what becomes of results beyond the range: infinity, saturate, nan, or wrap for integers (default the format's own)")
+	f.StringVar(&a.overflow, "overflow", "", "`policy` for results beyond the range: infinity, saturate, nan, or wrap for integers (default the format's own)")
 	f.IntVar(&a.bits, "random-bits", 0, "random `bits` of stochastic rounding")
 	f.StringVar(&a.variant, "variant", "", "`variant` of stochastic rounding with few bits: truncated, centred, centred-even (default truncated)")
 	f.Uint64Var(&a.seed, "seed", 1, "seed of the random bits")
@@ -97,8 +97,10 @@ func (a *arithmetic) point(format string, bits int) (quant.Point, error) {
 	if p.Rounding, err = a.roundingOf(bits); err != nil {
 		return p, badInput(err)
 	}
-	if p.Overflow, err = quant.ParseOverflow(a.overflow); err != nil {
-		return p, badInput(err)
+	if a.overflow != "" {
+		if p.Overflow, err = quant.ParseOverflow(a.overflow); err != nil {
+			return p, badInput(err)
+		}
 	}
 	return p, badInput(p.CheckOperand())
 }
@@ -113,7 +115,7 @@ func (a *arithmetic) spelt(text string, bits int) (quant.Point, error) {
 	if len(fields) > 3 {
 		return quant.Point{}, badInput(fmt.Errorf("point %q: want a format, a rounding and an overflow policy", text))
 	}
-	own := arithmetic{rounding: fields[1], overflow: "default"}
+	own := arithmetic{rounding: fields[1]}
 	if len(fields) == 3 {
 		own.overflow = fields[2]
 	}
@@ -124,7 +126,7 @@ func (a *arithmetic) spelt(text string, bits int) (quant.Point, error) {
 func required(cmd *cobra.Command, flags ...string) error {
 	for _, name := range flags {
 		if f := cmd.Flags().Lookup(name); f.Value.String() == "" || f.Value.String() == "[]" {
-			return badInput(fmt.Errorf("%s needs --%s: %s", cmd.CommandPath(), name, f.Usage))
+			return badInput(fmt.Errorf("%s needs --%s: %s", cmd.CommandPath(), name, strings.ReplaceAll(f.Usage, "`", "")))
 		}
 	}
 	return nil

@@ -98,6 +98,7 @@ func narrowFormats() []quant.Format {
 		}
 	}
 	add("E4M3(subnormals=flush)")
+	add("table(-1,-0.7,-0.5,-0.2,0,0.1,0.25,0.3,1,3)")
 	return all
 }
 
@@ -121,6 +122,8 @@ func (c *checker) everyCode(f quant.Format) {
 		c.that(sameBits(v, o.Decode(code)), "%s code %x: %v, want %v", f, code, v, o.Decode(code))
 		back, ok := codes.Encode(v)
 		switch {
+		case v != v && !l.HasNaN:
+			c.that(!ok, "%s code %x stands for nothing and has the code %x", f, code, back)
 		case v != v, v == 0 && l.Flush: // several codes have one value
 			c.that(ok && sameBits(codes.Decode(back), v), "%s code %x does not come back", f, code)
 		default:

@@ -25,6 +25,8 @@ func oracleOf(f quant.Format) (*oracle.Format, error) {
 		})
 	case quant.Posit:
 		return oracle.NewPosit(f.Limits().Bits)
+	case quant.Table:
+		return oracleOfTable(f)
 	}
 	if _, integer := f.(quant.Wrapper); integer {
 		return oracleOfIntegers(f)
@@ -70,6 +72,16 @@ func oracleOfIntegers(f quant.Format) (*oracle.Format, error) {
 		return nil, fmt.Errorf("%s: its range is not that of %d bits", f, l.Bits)
 	}
 	return o, nil
+}
+
+// oracleOfTable lists the values of a code book, which has to have a zero.
+func oracleOfTable(f quant.Table) (*oracle.Format, error) {
+	l := f.Limits()
+	list := oracle.List{Width: l.Bits, Overflow: l.DefaultOverflow.String()}
+	for code := range uint64(f.Len()) {
+		list.Values = append(list.Values, oracle.Value{X: ratOf(f.Decode(code)), Code: code})
+	}
+	return oracle.NewList(list)
 }
 
 // oracleRounding puts a rounding into the oracle's words.

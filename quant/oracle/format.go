@@ -28,9 +28,11 @@ type Format struct {
 }
 
 // gap is where a magnitude lies: toward <= |x| < away, |x| = toward + (over/width)
-// (away - toward).
+// (away - toward). Where toward is nil the two are n 2^q and (n+1) 2^q.
 type gap struct {
 	toward, away *big.Rat
+	n            *big.Int
+	q            int
 	over, width  *big.Int
 	odd          bool // the code of toward is odd
 	// Where ownTie is set, nearest compares with a tie of the format's own: side is
@@ -140,13 +142,26 @@ func (s Split) gap(x *big.Rat, _ bool) gap {
 		num.Lsh(num, uint(-q))
 	}
 	n, over := new(big.Int).QuoRem(num, den, new(big.Int))
-	g := gap{over: over, width: den, odd: n.Bit(0) == 1}
+	g := gap{n: n, q: q, over: over, width: den, odd: n.Bit(0) == 1}
 	if s.Fraction == 0 && n.Sign() > 0 {
 		g.odd = (e+s.Bias)&1 == 1 // the code is the exponent alone
 	}
-	g.toward = times2(new(big.Rat).SetInt(n), q)
-	g.away = times2(new(big.Rat).SetInt(n.Add(n, big.NewInt(1))), q)
 	return g
+}
+
+// end is the neighbour toward or away from zero.
+func (g gap) end(away bool) *big.Rat {
+	switch {
+	case g.toward != nil && away:
+		return g.away
+	case g.toward != nil:
+		return g.toward
+	}
+	n := new(big.Int).Set(g.n)
+	if away {
+		n.Add(n, big.NewInt(1))
+	}
+	return times2(new(big.Rat).SetInt(n), g.q)
 }
 
 // Value is one value of a listed format.

@@ -30,10 +30,7 @@ func (f *Format) Round(x *big.Rat, minusZero bool, r Rounding, overflow string, 
 	}
 	negative := x.Sign() < 0
 	g := f.gaps.gap(x, negative)
-	v := g.toward
-	if g.over.Sign() != 0 && g.goesAway(r, negative, draw) {
-		v = g.away
-	}
+	v := g.end(g.over.Sign() != 0 && g.goesAway(r, negative, draw))
 	end := f.most
 	if negative {
 		end = negated(f.lowest)
@@ -64,7 +61,7 @@ func (f *Format) Round(x *big.Rat, minusZero bool, r Rounding, overflow string, 
 // not zero, as if the range had no bound, and the exact fraction of the gap.
 func (f *Format) Neighbours(x *big.Rat) (toward, away, fraction *big.Rat) {
 	g := f.gaps.gap(x, x.Sign() < 0)
-	return g.toward, g.away, new(big.Rat).SetFrac(g.over, g.width)
+	return g.end(false), g.end(true), new(big.Rat).SetFrac(g.over, g.width)
 }
 
 // Chance is the exact probability that stochastic rounding moves x != 0 to its
