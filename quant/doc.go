@@ -176,6 +176,7 @@
 //	registers and shared draws                           TestRegisterPeriods, TestSources,
 //	                                                     TestSourcesInUse
 //	quick and elementwise roundings equal Point.Round    TestRoundingProperties, TestSlices,
+//	                                                     TestQuickFixed, TestQuickDraft,
 //	                                                     TestFamilySlices
 //	numbers folded to odd round as exact ones            TestOddFold, TestOddSafe
 //	sums in every order, against rationals or steps      TestSumsAgainstRationals,

@@ -141,10 +141,21 @@ func TestPositTable(t *testing.T) {
 		code uint64
 		want float64
 	}{
-		{"posit8", 0x40, 1}, {"posit8", 0x01, 0x1p-24}, {"posit8", 0x7f, 0x1p24}, {"posit8", 0x02, 0x1p-20},
-		{"posit8", 0x44, 1.5}, {"posit8", 0x48, 2}, {"posit8", 0x60, 16}, {"posit8", 0xc0, -1}, {"posit8", 0x30, 0.25},
-		{"posit16", 0x4000, 1}, {"posit16", 0x7fff, 0x1p56}, {"posit16", 0x0001, 0x1p-56}, {"posit16", 0x4c00, 3},
-		{"posit32", 0x7fffffff, 0x1p120}, {"posit32", 0x40000001, 1 + 0x1p-27},
+		{"posit8", 0x40, 1},
+		{"posit8", 0x01, 0x1p-24},
+		{"posit8", 0x7f, 0x1p24},
+		{"posit8", 0x02, 0x1p-20},
+		{"posit8", 0x44, 1.5},
+		{"posit8", 0x48, 2},
+		{"posit8", 0x60, 16},
+		{"posit8", 0xc0, -1},
+		{"posit8", 0x30, 0.25},
+		{"posit16", 0x4000, 1},
+		{"posit16", 0x7fff, 0x1p56},
+		{"posit16", 0x0001, 0x1p-56},
+		{"posit16", 0x4c00, 3},
+		{"posit32", 0x7fffffff, 0x1p120},
+		{"posit32", 0x40000001, 1 + 0x1p-27},
 	} {
 		f := mustFormatOf(c.name).(Posit)
 		if got := f.Decode(c.code); got != c.want {

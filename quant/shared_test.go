@@ -181,7 +181,7 @@ func nearestElement(f Format, x *big.Rat) float64 {
 // positiveValues lists the positive values of a scale format.
 func positiveValues(f Format) []float64 {
 	var all []float64
-	for c := range uint64(1) << (f.Limits().Bits) {
+	for c := range uint64(1) << f.Limits().Bits {
 		if v := f.(Coded).Decode(c); v > 0 && v <= math.MaxFloat64 {
 			all = append(all, v)
 		}

@@ -125,9 +125,11 @@ func TestTextErrors(t *testing.T) {
 
 // FuzzParse: the parsers neither panic nor accept what they cannot write back.
 func FuzzParse(f *testing.F) {
-	for _, s := range []string{"fp16", "E4M3(top=ieee,bias=3)", "chunk(64)", "stochastic(8,centred)", "sum fp16; product exact; lanes(4)", "E0M0()", "(", "E99M99",
+	for _, s := range []string{
+		"fp16", "E4M3(top=ieee,bias=3)", "chunk(64)", "stochastic(8,centred)", "sum fp16; product exact; lanes(4)", "E0M0()", "(", "E99M99",
 		"Q2.14(overflow=wrap)", "posit16", "LNS5.10", "table(name=x,-1,0,1)", "binary8p4-draft", "E8M0", "INT8(scale=99.9%,zero=fit)",
-		"block(E2M1,block=16,scale=E4M3,rule=nearest,tensor=binary32)", "MXFP8(E5M2)", "aligned(4,24)", "stochastic(8,equal,share=4,register=9)"} {
+		"block(E2M1,block=16,scale=E4M3,rule=nearest,tensor=binary32)", "MXFP8(E5M2)", "aligned(4,24)", "stochastic(8,equal,share=4,register=9)",
+	} {
 		f.Add(s)
 	}
 	f.Fuzz(func(t *testing.T, s string) {
