@@ -192,9 +192,13 @@ func fill(to *cost.Assignment, from *trainer.Arithmetic, id trainer.PointID) {
 	}
 }
 
-// costSums is an accumulation; the model's words of orders are a plan's.
+// costSums is an accumulation; the model's words of orders are a plan's, but for
+// aligned groups, which it counts as chunks: an addition a term and one a group.
 func costSums(a *plan.Accumulate) cost.Sums {
 	word, _, _ := strings.Cut(a.Order.String(), "(")
+	if word == "aligned" {
+		word = string(cost.Chunk)
+	}
 	return cost.Sums{
 		Product: costPointer(a.Product), Sum: costPoint(a.Sum), Outer: costPointer(a.Outer),
 		Order: cost.Order(word), K: a.Order.K, Through32: a.Through32,
@@ -214,14 +218,11 @@ func costPoint(p plan.Point) cost.Point {
 	return cost.Point{Format: costFormat(p.Format), RandomBits: plan.RandomBits(p)}
 }
 
-// costFormat is a format by its bit counts; one without exponent bits is an
-// integer to the arithmetic.
+// costFormat is a format by its bit counts.
 func costFormat(f plan.Format) cost.Format {
-	l := f.Limits()
-	if l.Exponent == 0 {
-		return cost.Fixed(plan.ShortName(f), l.Bits)
+	s := plan.ShapeOf(f)
+	return cost.Format{
+		Name: plan.ShortName(f), Family: cost.Family(s.Family), Bits: s.Bits, Exponent: s.Exponent, Fraction: s.Fraction,
+		Block: s.Block, ScaleBits: s.ScaleBits, TensorBits: s.TensorBits,
 	}
-	c := cost.Plain(plan.ShortName(f), l.Exponent, l.Fraction)
-	c.Bits = l.Bits
-	return c
 }

@@ -17,7 +17,8 @@
 //	                    baseline's arithmetic, and from whose weights every arm starts
 //	[replicates]        count, first_seed
 //	[claim]             metric, margin, confidence
-//	[format.NAME]       a number format of the plan's own
+//	[format.NAME]       a number format of the plan's own: exponent, fraction, bias,
+//	                    subnormals, top; or values, the list of all there are
 //	[baseline]          settings of the arm that all others are compared with
 //	[[arm]]             name, settings, loss_scale; training: what differs from the
 //	                    plan's own optimizer, learning_rate, batch, epochs;
@@ -64,12 +65,16 @@
 //	rounding     nearest-even (default), nearest-away, toward-zero, up, down,
 //	             to-odd, stochastic
 //	random_bits  of stochastic rounding: 1 to 32, within sums to 16; default 16
-//	variant      of stochastic rounding: truncated (default), centred, centred-even
+//	variant      of stochastic rounding: truncated (default), centred, centred-even,
+//	             equal (up and down alike)
+//	share        of stochastic rounding: so many lanes take one draw
+//	register     of stochastic rounding: draws of a shift register of 4 to 16 bits
 //	overflow     infinity, saturate, nan; default: the format's own
 //	subnormals   false: results below the least normal value become zero
 //	bias, top    another exponent bias or layout of the top exponent
 //	width        bits in all, checked against the format
-//	order        of sums: sequential (default), pairwise, wide, chunk(64), lanes(8)
+//	order        of sums: sequential (default), pairwise, wide, compensated, chunk(64),
+//	             lanes(8), aligned(8,24)
 //	outer        of sums: where finished chunks and the bias are added; default:
 //	             as the sum
 //	through      of sums: "binary32", an adder that first rounds to binary32

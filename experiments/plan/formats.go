@@ -45,12 +45,46 @@ func (r *reader) readFormats(root *node) formats {
 		case name != strings.TrimSpace(name) || name == "" || name == exactWord:
 			r.fail(n.errorf("choose a name of letters and digits", "%q cannot name a format", name))
 		default:
-			if f := r.readSplit(n); f != nil {
-				fs.own[strings.ToLower(name)] = f
+			f := r.readOwn(n, name)
+			if f == nil {
+				f = quant.Binary32 // a stand-in: who names it has made no mistake
 			}
+			fs.own[strings.ToLower(name)] = f
 		}
 	}
 	return fs
+}
+
+// tableKeys are the keys of a [format.NAME] table that lists its values.
+var tableKeys = []string{"values", "overflow", "width"}
+
+// readOwn reads a format of the plan's own: a split written out, or a list of the
+// values that there are.
+func (r *reader) readOwn(n *node, name string) quant.Format {
+	at := n.table["values"]
+	if at == nil {
+		return r.readSplit(n)
+	}
+	before := len(r.errs)
+	r.known(n, tableKeys...)
+	if at.list == nil {
+		r.wrongType(at, "an array of numbers", "values = [-1, 0, 1]")
+		return nil
+	}
+	values := make([]float64, len(at.list))
+	for i, e := range at.list {
+		values[i] = r.numberAt(e, "values", 0)
+	}
+	overflow := r.overflow(n)
+	if len(r.errs) > before {
+		return nil
+	}
+	f, err := quant.NewTable(name, values, overflow)
+	if err != nil {
+		r.fail(fault(at, err))
+		return nil
+	}
+	return r.checkWidth(n, f)
 }
 
 // readSplit reads a format written out, or returns nil. What the table leaves

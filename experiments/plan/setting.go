@@ -2,6 +2,7 @@ package plan
 
 import (
 	"fmt"
+	"math"
 	"slices"
 	"strconv"
 	"strings"
@@ -37,7 +38,7 @@ type value struct {
 }
 
 // pointKeys are what the table of any point may hold.
-var pointKeys = []string{"format", "rounding", "random_bits", "variant", "overflow", "subnormals", "bias", "top", "width"}
+var pointKeys = []string{"format", "rounding", "random_bits", "variant", "share", "register", "overflow", "subnormals", "bias", "top", "width"}
 
 // sumKeys are what the table of a sum may hold besides.
 var sumKeys = []string{"order", "outer", "through"}
@@ -111,9 +112,9 @@ func (r *reader) readTable(n *node, c class, fs formats) (v value) {
 
 // orderError tells what is wrong with an order.
 func orderError(n *node, text string, err error) *PlanError {
-	words := []string{"sequential", "pairwise", "wide", "chunk(64)", "lanes(8)"}
+	words := []string{"sequential", "pairwise", "wide", "compensated", "chunk(64)", "lanes(8)", "aligned(8,24)"}
 	name, _, _ := strings.Cut(text, "(")
-	names := []string{"sequential", "pairwise", "wide", "chunk", "lanes"}
+	names := []string{"sequential", "pairwise", "wide", "compensated", "chunk", "lanes", "aligned"}
 	e := n.errorf("write one of "+strings.Join(words, ", "), "%v", err)
 	if best, ok := nearest(name, names); ok && best != name {
 		e.Reason, e.Remedy = fmt.Sprintf("unknown order %q", text), suggest(name, names)
@@ -171,7 +172,7 @@ func (r *reader) readFormat(n *node, fs formats) quant.Format {
 // roundingWords and variantWords are quant's words, in its order.
 var (
 	roundingWords = []string{"nearest-even", "nearest-away", "toward-zero", "up", "down", "to-odd", "stochastic"}
-	variantWords  = []string{"truncated", "centred", "centred-even"}
+	variantWords  = []string{"truncated", "centred", "centred-even", "equal"}
 )
 
 // readRounding reads rounding, random_bits and variant.
@@ -179,7 +180,7 @@ func (r *reader) readRounding(n *node, c class) (round quant.Rounding) {
 	word := r.word(n, "rounding", roundingWords[0], roundingWords...)
 	round.Mode, _ = quant.ParseMode(word)
 	if round.Mode != quant.Stochastic {
-		for _, k := range []string{"random_bits", "variant"} {
+		for _, k := range []string{"random_bits", "variant", "share", "register"} {
 			if at := n.table[k]; at != nil {
 				r.fail(at.errorf(`write rounding = "stochastic" or leave `+k+" out", "%s without stochastic rounding", k))
 			}
@@ -194,6 +195,8 @@ func (r *reader) readRounding(n *node, c class) (round quant.Rounding) {
 		}
 		round.Bits = uint8(bits)
 	}
+	round.Source.Share = uint16(r.whole(n, "share", 0, 2, math.MaxUint16))
+	round.Source.Register = uint8(r.whole(n, "register", 0, 4, 16))
 	round.Variant, _ = quant.ParseVariant(r.word(n, "variant", variantWords[0], variantWords...))
 	return round
 }
@@ -256,5 +259,12 @@ func describeRounding(r quant.Rounding) string {
 	if r.Mode != quant.Stochastic {
 		return r.Mode.String()
 	}
-	return "stochastic r=" + strconv.Itoa(int(r.Bits)) + " " + r.Variant.String()
+	text := "stochastic r=" + strconv.Itoa(int(r.Bits)) + " " + r.Variant.String()
+	if r.Source.Share > 1 {
+		text += fmt.Sprintf(" share=%d", r.Source.Share)
+	}
+	if r.Source.Register > 0 {
+		text += fmt.Sprintf(" register=%d", r.Source.Register)
+	}
+	return text
 }
