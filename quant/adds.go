@@ -26,10 +26,10 @@ func (e *engine) add(s, t []float64, q *quick, k int, fold bool) {
 }
 
 // through rounds a binary64 sum, exact or rounded to odd, to binary32 where the
-// adder passes through it.
+// adder passes through it; what underflows there is +0.
 func (e *engine) through(x float64) float64 {
 	if e.acc.Through32 {
-		return float64(float32(x))
+		return float64(float32(x)) + 0
 	}
 	return x
 }
@@ -132,9 +132,17 @@ func oddFoldQuick(x, rest float64) float64 {
 	return math.Float64frombits(b + (even & 1) + (toward & -even))
 }
 
+// magnitude splits the code of x. Whatever is added to the magnitude of a NaN below
+// the last kept place may carry into the sign bit, but compared as an integer the
+// result is beyond every limit all the same.
+func magnitude(x float64) (sign, n uint64) {
+	b := math.Float64bits(x)
+	return b & signBit64, b &^ signBit64
+}
+
 // addStochastic is addGeneral for stochastic rounding, see quick.blockStochastic.
 func (e *engine) addStochastic(s, t []float64, q *quick, k int, fold bool) {
-	low, limit, centre, keep := q.low-1, q.max, q.centre, ^uint64(0)<<q.drop
+	low, limit, centre, keep := q.low-1, math.Float64bits(q.max), q.centre, ^uint64(0)<<q.drop
 	mask, up := uint32(0xffff)&^(1<<(16-q.random)-1), q.drop-16
 	row, column := e.sumWords.at(k)
 	t, column = t[:len(s)], column[:len(s)]
@@ -147,9 +155,10 @@ func (e *engine) addStochastic(s, t []float64, q *quick, k int, fold bool) {
 		}
 		x = e.through(x)
 		u := halves(row, column[j])
-		n := math.Float64bits(x)
-		y := math.Float64frombits((n + uint64(u&mask)<<up + centre) & keep)
-		if n&^signBit64-1 < low || !(math.Abs(y) <= limit) {
+		sign, n := magnitude(x)
+		r := (n + uint64(u&mask)<<up + centre) & keep
+		y := math.Float64frombits(r | sign)
+		if n-1 < low || r > limit {
 			y = e.generalSum(q, v, t[j], x, u<<16, k, j)
 		}
 		s[j] = y
@@ -158,7 +167,8 @@ func (e *engine) addStochastic(s, t []float64, q *quick, k int, fold bool) {
 
 // addDirected is addGeneral for the modes of quick.blockDirected.
 func (e *engine) addDirected(s, t []float64, q *quick, k int) {
-	low, limit, keep, drop, add, even := q.low-1, q.max, ^uint64(0)<<q.drop, q.drop&63, q.add, q.even
+	low, limit, keep := q.low-1, math.Float64bits(q.max), ^uint64(0)<<q.drop
+	drop, add, even := q.drop&63, q.add, q.even
 	t = t[:len(s)]
 	for j, v := range s {
 		x := v + t[j]
@@ -166,9 +176,10 @@ func (e *engine) addDirected(s, t []float64, q *quick, k int) {
 			x = oddFold(x, rest)
 		}
 		x = e.through(x)
-		n := math.Float64bits(x)
-		y := math.Float64frombits((n + add[n>>63] + n>>drop&even) & keep)
-		if n&^signBit64-1 < low || !(math.Abs(y) <= limit) {
+		sign, n := magnitude(x)
+		r := (n + add[sign>>63] + n>>drop&even) & keep
+		y := math.Float64frombits(r | sign)
+		if n-1 < low || r > limit {
 			y = e.generalSum(q, v, t[j], x, 0, k, j)
 		}
 		s[j] = y

@@ -275,34 +275,37 @@ func (e *engine) termNative64(t []float64, a float64, b []float64, k int) {
 // termStochastic is termGeneral for stochastic rounding, see quick.blockStochastic.
 func (e *engine) termStochastic(t []float64, a float64, b []float64, k int) {
 	q := &e.product
-	low, limit, centre, keep := q.low-1, q.max, q.centre, ^uint64(0)<<q.drop
+	low, limit, centre, keep := q.low-1, math.Float64bits(q.max), q.centre, ^uint64(0)<<q.drop
 	mask, up := uint32(0xffff)&^(1<<(16-q.random)-1), q.drop-16
 	row, column := e.termWords.at(k)
 	b, column = b[:len(t)], column[:len(t)]
 	for j, v := range b {
 		p := float64(a * v)
 		u := halves(row, column[j])
-		n := math.Float64bits(p)
-		r := math.Float64frombits((n + uint64(u&mask)<<up + centre) & keep)
-		if n&^signBit64-1 < low || !(math.Abs(r) <= limit) {
-			r = e.generalTerm(p, u<<16, k, j)
+		sign, n := magnitude(p)
+		r := (n + uint64(u&mask)<<up + centre) & keep
+		y := math.Float64frombits(r | sign)
+		if n-1 < low || r > limit {
+			y = e.generalTerm(p, u<<16, k, j)
 		}
-		t[j] = r
+		t[j] = y
 	}
 }
 
 // termDirected is termGeneral for the modes of quick.blockDirected.
 func (e *engine) termDirected(t []float64, a float64, b []float64, k int) {
 	q := &e.product
-	low, limit, keep, drop, add, even := q.low-1, q.max, ^uint64(0)<<q.drop, q.drop&63, q.add, q.even
+	low, limit, keep := q.low-1, math.Float64bits(q.max), ^uint64(0)<<q.drop
+	drop, add, even := q.drop&63, q.add, q.even
 	for j, v := range b[:len(t)] {
 		p := float64(a * v)
-		n := math.Float64bits(p)
-		r := math.Float64frombits((n + add[n>>63] + n>>drop&even) & keep)
-		if n&^signBit64-1 < low || !(math.Abs(r) <= limit) {
-			r = e.generalTerm(p, 0, k, j)
+		sign, n := magnitude(p)
+		r := (n + add[sign>>63] + n>>drop&even) & keep
+		y := math.Float64frombits(r | sign)
+		if n-1 < low || r > limit {
+			y = e.generalTerm(p, 0, k, j)
 		}
-		t[j] = r
+		t[j] = y
 	}
 }
 
