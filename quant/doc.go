@@ -133,8 +133,8 @@
 // Then Product.Scale multiplies the finished sum, R[sum](scale s), and the bias is
 // added, R[outer](s + bias), outer being sum where it is not set. Through binary32,
 // every addition, and the scaling, is first rounded to binary32, nearest-even; a
-// finite result that this makes infinite counts as the point's own overflow. It has
-// no meaning for wide and aligned sums and is refused there.
+// finite result that this makes infinite counts as the point's own overflow, and is an
+// infinity for the point's rounding, whatever its direction. It has no meaning for wide and aligned sums and is refused there.
 //
 // Inside sums the random number of addition k of result (i, j) is the top r of 16
 // bits, r at most 16: u = (R|1)(V) + (R>>16)(V>>16) modulo 2^16 of the halves of

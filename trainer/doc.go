@@ -88,7 +88,9 @@
 // epoch may be short) and S the loss scale. Exponential and logarithm are package
 // elementary's, classes ascend. Label smoothing moves the target; the losses of
 // regressions, half the squared distance and Huber's, have slopes of their own in
-// place of softmax - target: see crossEntropy, squaredError, huber.
+// place of softmax - target: see crossEntropy, squaredError, huber. With m the
+// largest of the outputs y, e[c] = exp(y[c] - m) and z their sum, softmax is e[c]/z,
+// from which the target is subtracted, and the loss log(z) - (y[label] - m).
 //
 // # Update
 //
@@ -128,20 +130,41 @@
 // Masks of dropout are a stream beside those of rounding; see dropoutKind. A word's address is (element, step, site, phase). step counts
 // training steps from 1; the start (master, working copy) is step 0. site is
 // (layer index + 1) 256 + operation, 0 in place of layer index + 1 for the
-// network's input and output error; the operations are listed in points.go, rows
-// and columns of sums apart. phase is 0 in training, 1 in evaluations of the
+// network's input and output error; see the table of operations below. phase is 0 in training, 1 in evaluations of the
 // validation set, 2 of the test set; step is then the epoch, the first is 1.
 // Element is the row-major number in the tensor [batch, shape...] or in the
 // parameter; in an evaluation the batch is the whole set, so that no word
 // depends on how the set is cut. Rows of sums count i, columns j, likewise over
 // the whole set.
 //
+// Operations; where two numbers stand, the first is that of the rows of a sum and
+// the second that of its columns. On tensors of a layer:
+//
+//	1   input                              8    input_gradient.gradient
+//	2   loss.gradient                      9,10   input_gradient.product
+//	3   forward.activation                 11,12  input_gradient.sum
+//	4,5 forward.product          13   input_gradient.result
+//	6,7 forward.sum              14   weight_gradient.activation
+//	                                       15   weight_gradient.gradient
+//	16 to 45: normalisations, see the layer
+//
+// On parameter p of a layer, 0 the weight and 1 the bias, 64 (p + 1) plus:
+//
+//	0   forward.weight                     8    update.master
+//	1   input_gradient.weight              9,10   Nesterov's product and sum, Adam's numerator
+//	2,3 weight_gradient.product            11,12  Adam's root and its sum
+//	4,5 weight_gradient.sum                13   Adam's ratio
+//	6   weight_gradient.result             14,15  weight decay: product, sum
+//	7   update.step                        16 + 4 s + n: operation n on state tensor s
+//
 // Initial weights are normal with mean 0 and variance gain/fan-in, drawn in
 // binary64: word stream of weights, step 0, the site of the parameter's working
 // copy, element by element. gain is 2 where a ReLU follows before the next layer
 // with weights, 2/(1 + slope^2) where a leaky one does, else 1. Biases start at zero. Then master = R[update.master] and
 // the working copy is made. A shuffled epoch is a Fisher-Yates permutation of its
-// own; see shuffle.
+// own, from the identity downwards: place i is exchanged with place floor(x (i+1) /
+// 2^64), x being the words 2i (high half) and 2i+1 of the stream of orders at step
+// = epoch, site 0, phase 0.
 //
 // # Scores
 //

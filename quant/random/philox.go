@@ -46,7 +46,11 @@ const (
 	Dropout
 )
 
-// Derive returns the 64-bit key of one stream of a seed.
+// Derive returns the 64-bit key of one stream of a seed: the first two words, low
+// half first, of the block with counter (stream, 0x756c7069, 0x6e65, 0) and the
+// seed as key. The streams are numbered from 1: data, weights, order, rounding
+// bits, augmentation, dropout. The two constants, the letters "ulpine", only keep
+// these blocks apart from those of small counters.
 func Derive(seed uint64, s Stream) uint64 {
 	w := Block([4]uint32{uint32(s), 0x756c7069, 0x6e65, 0}, seed)
 	return uint64(w[0]) | uint64(w[1])<<32
