@@ -122,7 +122,8 @@ func (v *view) scoreLine(e estimate) string {
 	return fmt.Sprintf("%s %s, n = %d", v.words.value(e.Mean), iv, e.N)
 }
 
-// expenseScale leaves at least one unit of room on either side.
+// expenseScale leaves at least one unit of room on either side, and room for marks
+// that stand beside each other.
 func (v *view) expenseScale(e *expense, arms []*armView, p frame) draw.Linear {
 	lo, hi := math.Inf(1), 0.0
 	for _, a := range arms {
@@ -130,7 +131,7 @@ func (v *view) expenseScale(e *expense, arms []*armView, p frame) draw.Linear {
 		lo, hi = math.Min(lo, low), math.Max(hi, high)
 	}
 	pad := math.Max(1, (hi-lo)*0.08)
-	return draw.Linear{Lo: math.Max(0, lo-pad), Hi: hi + pad, P0: p.x0, P1: p.x1}
+	return draw.Linear{Lo: math.Max(0, lo-pad), Hi: hi + pad, P0: p.x0 + 24, P1: p.x1 - 10}
 }
 
 // valueAxis draws the level axis of values below the frame.
