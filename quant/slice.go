@@ -13,8 +13,14 @@ func RoundSlice[D, S Element](dst []D, src []S, p *Point, d Draws, first uint64,
 	holds[D](p)
 	q := newQuick(p)
 	w := newWords(d, p.Rounding)
+	f := newFastSlice[D](&q, n)
+	defer f.end()
 	var x [blockLength]float64
-	for at := 0; at < len(src); at += blockLength {
+	for at := 0; ; at += blockLength {
+		at += fastRound(f, dst[min(at, len(dst)):], src[min(at, len(src)):], d, first+uint64(at))
+		if at >= len(src) {
+			break
+		}
 		s := src[at:min(at+blockLength, len(src))]
 		b := x[:len(s)]
 		for i, v := range s {
@@ -36,8 +42,14 @@ func ScaleSlice[D, S Element](dst []D, alpha float64, src []S, p *Point, d Draws
 	holds[D](p)
 	q := newQuick(p)
 	w := newWords(d, p.Rounding)
+	f := newFastSlice[D](&q, n)
+	defer f.end()
 	var x [blockLength]float64
-	for at := 0; at < len(src); at += blockLength {
+	for at := 0; ; at += blockLength {
+		at += fastScale(f, dst[min(at, len(dst)):], alpha, src[min(at, len(src)):], d, uint64(at))
+		if at >= len(src) {
+			break
+		}
 		s := src[at:min(at+blockLength, len(src))]
 		b := x[:len(s)]
 		if scaleBlock(b, alpha, s, &q) && q.block(b, &w, uint64(at), n) {
@@ -67,8 +79,14 @@ func addScaled[D, A, B Element](dst []D, a []A, sign float64, b []B, p *Point, d
 	holds[D](p)
 	q := newQuick(p)
 	w := newWords(d, p.Rounding)
+	f := newFastSlice[D](&q, n)
+	defer f.end()
 	var x [blockLength]float64
-	for at := 0; at < len(dst); at += blockLength {
+	for at := 0; ; at += blockLength {
+		at += fastAdd(f, dst[min(at, len(dst)):], a[min(at, len(a)):], sign, b[min(at, len(b)):], d, uint64(at))
+		if at >= len(dst) {
+			break
+		}
 		end := min(at+blockLength, len(dst))
 		s := x[:end-at]
 		if addBlock(s, a[at:end], sign, b[at:end], &q) && q.block(s, &w, uint64(at), n) {

@@ -17,6 +17,15 @@ type loops struct {
 	addNearest func(total, chunk []float32, c *Constants)
 	philox     func(t *philoxArgs)
 
+	// See slices.go.
+	philoxStream      func(t *philoxArgs)
+	roundNearest32    func(dst, src []float32, c *Constants, t *[2]uint64)
+	roundStochastic32 func(dst, src []float32, words []uint32, c *Constants, t *[2]uint64)
+	roundNearest64    func(dst []float32, src []float64, c *Constants, t *[2]uint64)
+	roundStochastic64 func(dst []float32, src []float64, words []uint32, c *Constants, t *[2]uint64)
+	scale64           func(y []float64, alpha float64, c *Constants, t *[2]uint64)
+	add64             func(x, b []float64, factor float64, c *Constants, t *[2]uint64)
+
 	// Scratch of a multiplier's copy.
 	extents [48]uint32
 	arg     philoxArgs

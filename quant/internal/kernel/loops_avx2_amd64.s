@@ -68,7 +68,7 @@ columns:
 	VBROADCASTSD 88(AX), Y8
 	MOVQ         40(AX), R8
 	ADDQ         DI, R8
-	INCQ         R8
+	ADDQ         $0x01, R8
 	VMOVQ        R8, X2
 	VPBROADCASTQ X2, Y9
 	VPADDQ       philoxAVX2Constants<>+192(SB), Y9, Y9
@@ -288,6 +288,278 @@ done:
 	VZEROUPPER
 	RET
 
+DATA philoxStreamAVX2Constants<>+0(SB)/8, $0x00000000d2511f53
+DATA philoxStreamAVX2Constants<>+8(SB)/8, $0x00000000cd9e8d57
+DATA philoxStreamAVX2Constants<>+16(SB)/8, $0x0000000000000000
+DATA philoxStreamAVX2Constants<>+24(SB)/8, $0x0000000000000000
+DATA philoxStreamAVX2Constants<>+32(SB)/8, $0x0000000000000000
+DATA philoxStreamAVX2Constants<>+40(SB)/8, $0x0000000000000000
+DATA philoxStreamAVX2Constants<>+48(SB)/8, $0x0000000000000000
+DATA philoxStreamAVX2Constants<>+56(SB)/8, $0x0000000000000000
+DATA philoxStreamAVX2Constants<>+64(SB)/8, $0x000000009e3779b9
+DATA philoxStreamAVX2Constants<>+72(SB)/8, $0x000000009e3779b9
+DATA philoxStreamAVX2Constants<>+80(SB)/8, $0x000000009e3779b9
+DATA philoxStreamAVX2Constants<>+88(SB)/8, $0x000000009e3779b9
+DATA philoxStreamAVX2Constants<>+96(SB)/8, $0x000000009e3779b9
+DATA philoxStreamAVX2Constants<>+104(SB)/8, $0x000000009e3779b9
+DATA philoxStreamAVX2Constants<>+112(SB)/8, $0x000000009e3779b9
+DATA philoxStreamAVX2Constants<>+120(SB)/8, $0x000000009e3779b9
+DATA philoxStreamAVX2Constants<>+128(SB)/8, $0x00000000bb67ae85
+DATA philoxStreamAVX2Constants<>+136(SB)/8, $0x00000000bb67ae85
+DATA philoxStreamAVX2Constants<>+144(SB)/8, $0x00000000bb67ae85
+DATA philoxStreamAVX2Constants<>+152(SB)/8, $0x00000000bb67ae85
+DATA philoxStreamAVX2Constants<>+160(SB)/8, $0x00000000bb67ae85
+DATA philoxStreamAVX2Constants<>+168(SB)/8, $0x00000000bb67ae85
+DATA philoxStreamAVX2Constants<>+176(SB)/8, $0x00000000bb67ae85
+DATA philoxStreamAVX2Constants<>+184(SB)/8, $0x00000000bb67ae85
+DATA philoxStreamAVX2Constants<>+192(SB)/8, $0x0000000000000000
+DATA philoxStreamAVX2Constants<>+200(SB)/8, $0x0000000000000001
+DATA philoxStreamAVX2Constants<>+208(SB)/8, $0x0000000000000002
+DATA philoxStreamAVX2Constants<>+216(SB)/8, $0x0000000000000003
+DATA philoxStreamAVX2Constants<>+224(SB)/8, $0x0000000000000004
+DATA philoxStreamAVX2Constants<>+232(SB)/8, $0x0000000000000005
+DATA philoxStreamAVX2Constants<>+240(SB)/8, $0x0000000000000006
+DATA philoxStreamAVX2Constants<>+248(SB)/8, $0x0000000000000007
+GLOBL philoxStreamAVX2Constants<>(SB), RODATA|NOPTR, $256
+
+// func philoxStreamAVX2(t *philoxArgs)
+// Requires: AVX, AVX2
+TEXT ·philoxStreamAVX2(SB), $0-8
+	MOVQ         t+0(FP), AX
+	VBROADCASTSD philoxStreamAVX2Constants<>+0(SB), Y0
+	VBROADCASTSD philoxStreamAVX2Constants<>+8(SB), Y1
+	MOVQ         (AX), CX
+	MOVQ         24(AX), DX
+	MOVQ         72(AX), BX
+	XORQ         SI, SI
+
+counters:
+	VBROADCASTSD 80(AX), Y3
+	MOVQ         40(AX), DI
+	ADDQ         SI, DI
+	VMOVQ        DI, X2
+	VPBROADCASTQ X2, Y4
+	VPADDQ       philoxStreamAVX2Constants<>+192(SB), Y4, Y4
+	VBROADCASTSD 56(AX), Y5
+	VBROADCASTSD 64(AX), Y6
+	VMOVQ        BX, X2
+	VPBROADCASTQ X2, Y7
+	VBROADCASTSD 88(AX), Y8
+	MOVQ         40(AX), DI
+	ADDQ         SI, DI
+	ADDQ         $0x04, DI
+	VMOVQ        DI, X2
+	VPBROADCASTQ X2, Y9
+	VPADDQ       philoxStreamAVX2Constants<>+192(SB), Y9, Y9
+	VBROADCASTSD 56(AX), Y10
+	VBROADCASTSD 64(AX), Y11
+	VMOVQ        BX, X2
+	VPBROADCASTQ X2, Y2
+	VPMULUDQ     Y4, Y0, Y4
+	VPMULUDQ     Y6, Y1, Y6
+	VPSRLQ       $0x20, Y4, Y12
+	VPSRLQ       $0x20, Y6, Y13
+	VPXOR        Y5, Y13, Y13
+	VPXOR        Y3, Y13, Y13
+	VPXOR        Y7, Y12, Y12
+	VPXOR        Y8, Y12, Y12
+	VPMULUDQ     Y9, Y0, Y5
+	VPMULUDQ     Y11, Y1, Y7
+	VPSRLQ       $0x20, Y5, Y9
+	VPSRLQ       $0x20, Y7, Y11
+	VPXOR        Y10, Y11, Y11
+	VPXOR        Y3, Y11, Y11
+	VPXOR        Y2, Y9, Y9
+	VPXOR        Y8, Y9, Y9
+	VPADDQ       philoxStreamAVX2Constants<>+64(SB), Y3, Y3
+	VPADDQ       philoxStreamAVX2Constants<>+128(SB), Y8, Y8
+	VPMULUDQ     Y13, Y0, Y2
+	VPMULUDQ     Y12, Y1, Y10
+	VPSRLQ       $0x20, Y2, Y12
+	VPSRLQ       $0x20, Y10, Y13
+	VPXOR        Y6, Y13, Y13
+	VPXOR        Y3, Y13, Y13
+	VPXOR        Y4, Y12, Y12
+	VPXOR        Y8, Y12, Y12
+	VPMULUDQ     Y11, Y0, Y4
+	VPMULUDQ     Y9, Y1, Y6
+	VPSRLQ       $0x20, Y4, Y9
+	VPSRLQ       $0x20, Y6, Y11
+	VPXOR        Y7, Y11, Y11
+	VPXOR        Y3, Y11, Y11
+	VPXOR        Y5, Y9, Y9
+	VPXOR        Y8, Y9, Y9
+	VPADDQ       philoxStreamAVX2Constants<>+64(SB), Y3, Y3
+	VPADDQ       philoxStreamAVX2Constants<>+128(SB), Y8, Y8
+	VPMULUDQ     Y13, Y0, Y5
+	VPMULUDQ     Y12, Y1, Y7
+	VPSRLQ       $0x20, Y5, Y12
+	VPSRLQ       $0x20, Y7, Y13
+	VPXOR        Y10, Y13, Y13
+	VPXOR        Y3, Y13, Y13
+	VPXOR        Y2, Y12, Y12
+	VPXOR        Y8, Y12, Y12
+	VPMULUDQ     Y11, Y0, Y2
+	VPMULUDQ     Y9, Y1, Y9
+	VPSRLQ       $0x20, Y2, Y10
+	VPSRLQ       $0x20, Y9, Y11
+	VPXOR        Y6, Y11, Y11
+	VPXOR        Y3, Y11, Y11
+	VPXOR        Y4, Y10, Y10
+	VPXOR        Y8, Y10, Y10
+	VPADDQ       philoxStreamAVX2Constants<>+64(SB), Y3, Y3
+	VPADDQ       philoxStreamAVX2Constants<>+128(SB), Y8, Y8
+	VPMULUDQ     Y13, Y0, Y4
+	VPMULUDQ     Y12, Y1, Y6
+	VPSRLQ       $0x20, Y4, Y12
+	VPSRLQ       $0x20, Y6, Y13
+	VPXOR        Y7, Y13, Y13
+	VPXOR        Y3, Y13, Y13
+	VPXOR        Y5, Y12, Y12
+	VPXOR        Y8, Y12, Y12
+	VPMULUDQ     Y11, Y0, Y5
+	VPMULUDQ     Y10, Y1, Y7
+	VPSRLQ       $0x20, Y5, Y10
+	VPSRLQ       $0x20, Y7, Y11
+	VPXOR        Y9, Y11, Y11
+	VPXOR        Y3, Y11, Y11
+	VPXOR        Y2, Y10, Y10
+	VPXOR        Y8, Y10, Y10
+	VPADDQ       philoxStreamAVX2Constants<>+64(SB), Y3, Y3
+	VPADDQ       philoxStreamAVX2Constants<>+128(SB), Y8, Y8
+	VPMULUDQ     Y13, Y0, Y2
+	VPMULUDQ     Y12, Y1, Y9
+	VPSRLQ       $0x20, Y2, Y12
+	VPSRLQ       $0x20, Y9, Y13
+	VPXOR        Y6, Y13, Y13
+	VPXOR        Y3, Y13, Y13
+	VPXOR        Y4, Y12, Y12
+	VPXOR        Y8, Y12, Y12
+	VPMULUDQ     Y11, Y0, Y4
+	VPMULUDQ     Y10, Y1, Y6
+	VPSRLQ       $0x20, Y4, Y10
+	VPSRLQ       $0x20, Y6, Y11
+	VPXOR        Y7, Y11, Y11
+	VPXOR        Y3, Y11, Y11
+	VPXOR        Y5, Y10, Y10
+	VPXOR        Y8, Y10, Y10
+	VPADDQ       philoxStreamAVX2Constants<>+64(SB), Y3, Y3
+	VPADDQ       philoxStreamAVX2Constants<>+128(SB), Y8, Y8
+	VPMULUDQ     Y13, Y0, Y5
+	VPMULUDQ     Y12, Y1, Y7
+	VPSRLQ       $0x20, Y5, Y12
+	VPSRLQ       $0x20, Y7, Y13
+	VPXOR        Y9, Y13, Y13
+	VPXOR        Y3, Y13, Y13
+	VPXOR        Y2, Y12, Y12
+	VPXOR        Y8, Y12, Y12
+	VPMULUDQ     Y11, Y0, Y2
+	VPMULUDQ     Y10, Y1, Y9
+	VPSRLQ       $0x20, Y2, Y10
+	VPSRLQ       $0x20, Y9, Y11
+	VPXOR        Y6, Y11, Y11
+	VPXOR        Y3, Y11, Y11
+	VPXOR        Y4, Y10, Y10
+	VPXOR        Y8, Y10, Y10
+	VPADDQ       philoxStreamAVX2Constants<>+64(SB), Y3, Y3
+	VPADDQ       philoxStreamAVX2Constants<>+128(SB), Y8, Y8
+	VPMULUDQ     Y13, Y0, Y4
+	VPMULUDQ     Y12, Y1, Y6
+	VPSRLQ       $0x20, Y4, Y12
+	VPSRLQ       $0x20, Y6, Y13
+	VPXOR        Y7, Y13, Y13
+	VPXOR        Y3, Y13, Y13
+	VPXOR        Y5, Y12, Y12
+	VPXOR        Y8, Y12, Y12
+	VPMULUDQ     Y11, Y0, Y5
+	VPMULUDQ     Y10, Y1, Y7
+	VPSRLQ       $0x20, Y5, Y10
+	VPSRLQ       $0x20, Y7, Y11
+	VPXOR        Y9, Y11, Y11
+	VPXOR        Y3, Y11, Y11
+	VPXOR        Y2, Y10, Y10
+	VPXOR        Y8, Y10, Y10
+	VPADDQ       philoxStreamAVX2Constants<>+64(SB), Y3, Y3
+	VPADDQ       philoxStreamAVX2Constants<>+128(SB), Y8, Y8
+	VPMULUDQ     Y13, Y0, Y2
+	VPMULUDQ     Y12, Y1, Y9
+	VPSRLQ       $0x20, Y2, Y12
+	VPSRLQ       $0x20, Y9, Y13
+	VPXOR        Y6, Y13, Y13
+	VPXOR        Y3, Y13, Y13
+	VPXOR        Y4, Y12, Y12
+	VPXOR        Y8, Y12, Y12
+	VPMULUDQ     Y11, Y0, Y4
+	VPMULUDQ     Y10, Y1, Y6
+	VPSRLQ       $0x20, Y4, Y10
+	VPSRLQ       $0x20, Y6, Y11
+	VPXOR        Y7, Y11, Y11
+	VPXOR        Y3, Y11, Y11
+	VPXOR        Y5, Y10, Y10
+	VPXOR        Y8, Y10, Y10
+	VPADDQ       philoxStreamAVX2Constants<>+64(SB), Y3, Y3
+	VPADDQ       philoxStreamAVX2Constants<>+128(SB), Y8, Y8
+	VPMULUDQ     Y13, Y0, Y5
+	VPMULUDQ     Y12, Y1, Y7
+	VPSRLQ       $0x20, Y5, Y12
+	VPSRLQ       $0x20, Y7, Y13
+	VPXOR        Y9, Y13, Y13
+	VPXOR        Y3, Y13, Y13
+	VPXOR        Y2, Y12, Y12
+	VPXOR        Y8, Y12, Y12
+	VPMULUDQ     Y11, Y0, Y2
+	VPMULUDQ     Y10, Y1, Y9
+	VPSRLQ       $0x20, Y2, Y10
+	VPSRLQ       $0x20, Y9, Y11
+	VPXOR        Y6, Y11, Y11
+	VPXOR        Y3, Y11, Y11
+	VPXOR        Y4, Y10, Y10
+	VPXOR        Y8, Y10, Y10
+	VPADDQ       philoxStreamAVX2Constants<>+64(SB), Y3, Y3
+	VPADDQ       philoxStreamAVX2Constants<>+128(SB), Y8, Y8
+	VPMULUDQ     Y13, Y0, Y4
+	VPMULUDQ     Y12, Y1, Y6
+	VPSRLQ       $0x20, Y4, Y12
+	VPSRLQ       $0x20, Y6, Y13
+	VPXOR        Y7, Y13, Y13
+	VPXOR        Y3, Y13, Y13
+	VPXOR        Y5, Y12, Y12
+	VPXOR        Y8, Y12, Y12
+	VPMULUDQ     Y11, Y0, Y5
+	VPMULUDQ     Y10, Y1, Y7
+	VPSRLQ       $0x20, Y5, Y10
+	VPSRLQ       $0x20, Y7, Y11
+	VPXOR        Y9, Y11, Y11
+	VPXOR        Y3, Y11, Y11
+	VPXOR        Y2, Y10, Y10
+	VPXOR        Y8, Y10, Y10
+	VPSLLQ       $0x20, Y6, Y6
+	VPBLENDD     $0xaa, Y6, Y13, Y13
+	VPSLLQ       $0x20, Y4, Y4
+	VPBLENDD     $0xaa, Y4, Y12, Y12
+	VPUNPCKLQDQ  Y12, Y13, Y2
+	VPUNPCKHQDQ  Y12, Y13, Y3
+	VPERM2I128   $0x20, Y3, Y2, Y13
+	VPERM2I128   $0x31, Y3, Y2, Y12
+	VMOVUPD      Y13, (CX)
+	VMOVUPD      Y12, 32(CX)
+	VPSLLQ       $0x20, Y7, Y7
+	VPBLENDD     $0xaa, Y7, Y11, Y11
+	VPSLLQ       $0x20, Y5, Y5
+	VPBLENDD     $0xaa, Y5, Y10, Y10
+	VPUNPCKLQDQ  Y10, Y11, Y2
+	VPUNPCKHQDQ  Y10, Y11, Y3
+	VPERM2I128   $0x20, Y3, Y2, Y11
+	VPERM2I128   $0x31, Y3, Y2, Y10
+	VMOVUPD      Y11, 64(CX)
+	VMOVUPD      Y10, 96(CX)
+	ADDQ         $0x00000080, CX
+	ADDQ         $0x08, SI
+	CMPQ         SI, DX
+	JLT          counters
+	VZEROUPPER
+	RET
+
 // func measureAVX2(x []float32, e *[48]uint32)
 // Requires: AVX, AVX2
 TEXT ·measureAVX2(SB), $0-32
@@ -453,6 +725,405 @@ next:
 	ADDQ    $0x08, BX
 	CMPQ    BX, DX
 	JLT     next
+	VZEROUPPER
+	RET
+
+// func roundNearest32AVX2(dst []float32, src []float32, c *Constants, t *[2]uint64)
+// Requires: AVX, AVX2, FMA3
+TEXT ·roundNearest32AVX2(SB), $64-64
+	MOVQ    c+48(FP), AX
+	VPXOR   Y0, Y0, Y0
+	VPXOR   Y1, Y1, Y1
+	MOVQ    dst_base+0(FP), CX
+	MOVQ    src_base+24(FP), DX
+	MOVQ    src_len+32(FP), BX
+	VMOVUPS (AX), Y2
+	VMOVUPS 384(AX), Y3
+	VMOVUPS 448(AX), Y4
+	VMOVUPS 64(AX), Y5
+	VMOVUPS 128(AX), Y6
+	XORQ    SI, SI
+
+next:
+	VMOVUPS      (DX)(SI*4), Y7
+	VANDPS       Y6, Y7, Y8
+	VCMPPS       $0x06, 1344(AX), Y8, Y8
+	VPOR         Y8, Y1, Y1
+	VANDPS       Y2, Y7, Y8
+	VMAXPS       Y3, Y8, Y8
+	VMOVAPS      Y7, Y9
+	VFMADD231PS  Y4, Y8, Y9
+	VFNMADD231PS Y4, Y8, Y9
+	VANDPS       Y6, Y9, Y9
+	VPXOR        Y8, Y8, Y8
+	VCMPPS       $0x00, Y8, Y9, Y10
+	VCMPPS       $0x04, Y8, Y7, Y8
+	VPAND        Y8, Y10, Y10
+	VPSUBD       Y10, Y0, Y0
+	VANDPS       Y5, Y7, Y8
+	VORPS        Y8, Y9, Y9
+	VMOVUPS      Y9, (CX)(SI*4)
+	ADDQ         $0x08, SI
+	CMPQ         SI, BX
+	JLT          next
+	MOVQ         t+56(FP), AX
+	VMOVDQU      Y0, (SP)
+	XORQ         CX, CX
+	MOVL         (SP), DX
+	ADDQ         DX, CX
+	MOVL         4(SP), DX
+	ADDQ         DX, CX
+	MOVL         8(SP), DX
+	ADDQ         DX, CX
+	MOVL         12(SP), DX
+	ADDQ         DX, CX
+	MOVL         16(SP), DX
+	ADDQ         DX, CX
+	MOVL         20(SP), DX
+	ADDQ         DX, CX
+	MOVL         24(SP), DX
+	ADDQ         DX, CX
+	MOVL         28(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, (AX)
+	VMOVDQU      Y1, (SP)
+	XORQ         CX, CX
+	ORQ          (SP), CX
+	ORQ          8(SP), CX
+	ORQ          16(SP), CX
+	ORQ          24(SP), CX
+	ADDQ         CX, 8(AX)
+	VZEROUPPER
+	RET
+
+// func roundStochastic32AVX2(dst []float32, src []float32, words []uint32, c *Constants, t *[2]uint64)
+// Requires: AVX, AVX2
+TEXT ·roundStochastic32AVX2(SB), $64-88
+	MOVQ         c+72(FP), AX
+	VPXOR        Y0, Y0, Y0
+	VPXOR        Y1, Y1, Y1
+	MOVQ         dst_base+0(FP), CX
+	MOVQ         src_base+24(FP), DX
+	MOVQ         words_base+48(FP), BX
+	MOVQ         src_len+32(FP), SI
+	MOVL         $0x00000020, DI
+	VMOVD        DI, X2
+	VPBROADCASTD X2, Y2
+	MOVL         $0xffffffff, DI
+	VMOVD        DI, X3
+	VPBROADCASTD X3, Y3
+	XORQ         DI, DI
+
+next:
+	VMOVUPS      (DX)(DI*4), Y4
+	VANDPS       128(AX), Y4, Y5
+	VCMPPS       $0x06, 1344(AX), Y5, Y6
+	VPOR         Y6, Y1, Y1
+	MOVL         $0x007ffffe, R8
+	VMOVD        R8, X6
+	VPBROADCASTD X6, Y6
+	VPADDD       Y3, Y5, Y5
+	VPMINUD      Y5, Y6, Y6
+	VPCMPEQD     Y5, Y6, Y5
+	VPOR         Y5, Y1, Y1
+	VANDPS       (AX), Y4, Y5
+	VPMINUD      1024(AX), Y5, Y8
+	VPAND        960(AX), Y4, Y7
+	VPOR         Y8, Y7, Y7
+	VMAXPS       384(AX), Y5, Y6
+	VPSUBD       Y5, Y6, Y5
+	VPSRLD       $0x17, Y5, Y5
+	VPADDD       1152(AX), Y5, Y5
+	VPSRLVD      Y5, Y7, Y10
+	VPSUBD       Y5, Y2, Y8
+	VPSLLVD      Y8, Y7, Y9
+	VPSUBD       Y2, Y5, Y8
+	VPSRLVD      Y8, Y7, Y5
+	VPOR         Y5, Y9, Y9
+	VMOVUPS      (BX)(DI*4), Y5
+	VPAND        768(AX), Y5, Y5
+	VPOR         896(AX), Y5, Y5
+	VPADDD       Y5, Y9, Y9
+	VPSUBD       Y3, Y10, Y10
+	VPMAXUD      Y5, Y9, Y5
+	VPCMPEQD     Y5, Y9, Y9
+	VPADDD       Y9, Y10, Y10
+	VCVTDQ2PS    Y10, Y10
+	VMULPS       1280(AX), Y10, Y10
+	VMULPS       Y6, Y10, Y10
+	VPXOR        Y5, Y5, Y5
+	VCMPPS       $0x00, Y5, Y10, Y6
+	VCMPPS       $0x04, Y5, Y4, Y5
+	VPAND        Y5, Y6, Y6
+	VPSUBD       Y6, Y0, Y0
+	VANDPS       64(AX), Y4, Y4
+	VORPS        Y10, Y4, Y4
+	VMOVUPS      Y4, (CX)(DI*4)
+	ADDQ         $0x08, DI
+	CMPQ         DI, SI
+	JLT          next
+	MOVQ         t+80(FP), AX
+	VMOVDQU      Y0, (SP)
+	XORQ         CX, CX
+	MOVL         (SP), DX
+	ADDQ         DX, CX
+	MOVL         4(SP), DX
+	ADDQ         DX, CX
+	MOVL         8(SP), DX
+	ADDQ         DX, CX
+	MOVL         12(SP), DX
+	ADDQ         DX, CX
+	MOVL         16(SP), DX
+	ADDQ         DX, CX
+	MOVL         20(SP), DX
+	ADDQ         DX, CX
+	MOVL         24(SP), DX
+	ADDQ         DX, CX
+	MOVL         28(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, (AX)
+	VMOVDQU      Y1, (SP)
+	XORQ         CX, CX
+	ORQ          (SP), CX
+	ORQ          8(SP), CX
+	ORQ          16(SP), CX
+	ORQ          24(SP), CX
+	ADDQ         CX, 8(AX)
+	VZEROUPPER
+	RET
+
+// func roundNearest64AVX2(dst []float32, src []float64, c *Constants, t *[2]uint64)
+// Requires: AVX, AVX2, FMA3
+TEXT ·roundNearest64AVX2(SB), $64-64
+	MOVQ    c+48(FP), AX
+	VPXOR   Y0, Y0, Y0
+	VPXOR   Y1, Y1, Y1
+	MOVQ    dst_base+0(FP), CX
+	MOVQ    src_base+24(FP), DX
+	MOVQ    src_len+32(FP), BX
+	VMOVUPD (AX), Y2
+	VMOVUPD 384(AX), Y3
+	VMOVUPD 448(AX), Y4
+	VMOVUPD 64(AX), Y5
+	VMOVUPD 128(AX), Y6
+	XORQ    SI, SI
+
+next:
+	VMOVUPD      (DX)(SI*8), Y7
+	VANDPD       Y6, Y7, Y8
+	VCMPPD       $0x06, 1344(AX), Y8, Y8
+	VPOR         Y8, Y1, Y1
+	VANDPD       Y2, Y7, Y8
+	VMAXPD       Y3, Y8, Y8
+	VMOVAPS      Y7, Y9
+	VFMADD231PD  Y4, Y8, Y9
+	VFNMADD231PD Y4, Y8, Y9
+	VANDPD       Y6, Y9, Y9
+	VPXOR        Y8, Y8, Y8
+	VCMPPD       $0x00, Y8, Y9, Y10
+	VCMPPD       $0x04, Y8, Y7, Y8
+	VPAND        Y8, Y10, Y10
+	VPSUBQ       Y10, Y0, Y0
+	VANDPD       Y5, Y7, Y8
+	VORPD        Y8, Y9, Y9
+	VCVTPD2PSY   Y9, X9
+	VMOVUPS      X9, (CX)(SI*4)
+	ADDQ         $0x04, SI
+	CMPQ         SI, BX
+	JLT          next
+	MOVQ         t+56(FP), AX
+	VMOVDQU      Y0, (SP)
+	XORQ         CX, CX
+	ADDQ         (SP), CX
+	ADDQ         8(SP), CX
+	ADDQ         16(SP), CX
+	ADDQ         24(SP), CX
+	ADDQ         CX, (AX)
+	VMOVDQU      Y1, (SP)
+	XORQ         CX, CX
+	ORQ          (SP), CX
+	ORQ          8(SP), CX
+	ORQ          16(SP), CX
+	ORQ          24(SP), CX
+	ADDQ         CX, 8(AX)
+	VZEROUPPER
+	RET
+
+// func roundStochastic64AVX2(dst []float32, src []float64, words []uint32, c *Constants, t *[2]uint64)
+// Requires: AVX, AVX2, SSE
+TEXT ·roundStochastic64AVX2(SB), $72-88
+	MOVQ    c+72(FP), AX
+	VPXOR   Y0, Y0, Y0
+	VPXOR   Y1, Y1, Y1
+	MOVQ    dst_base+0(FP), CX
+	MOVQ    src_base+24(FP), DX
+	MOVQ    words_base+48(FP), BX
+	MOVQ    src_len+32(FP), SI
+	STMXCSR (SP)
+	MOVL    (SP), DI
+	ORL     $0x00006000, DI
+	MOVL    DI, 4(SP)
+	LDMXCSR 4(SP)
+	VMOVUPD 64(AX), Y2
+	VMOVUPD 128(AX), Y3
+	VMOVUPD 384(AX), Y4
+	XORQ    DI, DI
+
+next:
+	VMOVUPD    (DX)(DI*8), Y5
+	VANDPD     Y3, Y5, Y6
+	VCMPPD     $0x06, 1344(AX), Y6, Y7
+	VPOR       Y7, Y1, Y1
+	VCMPPD     $0x11, Y4, Y6, Y6
+	VANDPD     Y4, Y6, Y6
+	VANDPD     Y2, Y5, Y7
+	VORPD      Y7, Y6, Y6
+	VADDPD     Y6, Y5, Y7
+	VPMOVZXDQ  (BX)(DI*4), Y8
+	VPAND      768(AX), Y8, Y8
+	VPSLLVQ    1088(AX), Y8, Y8
+	VPSRLVQ    832(AX), Y8, Y8
+	VPOR       896(AX), Y8, Y8
+	VPADDQ     Y8, Y7, Y7
+	VPAND      704(AX), Y7, Y7
+	VSUBPD     Y6, Y7, Y7
+	VANDPD     Y3, Y7, Y7
+	VPXOR      Y6, Y6, Y6
+	VCMPPD     $0x00, Y6, Y7, Y8
+	VCMPPD     $0x04, Y6, Y5, Y6
+	VPAND      Y6, Y8, Y8
+	VPSUBQ     Y8, Y0, Y0
+	VANDPD     Y2, Y5, Y5
+	VORPD      Y5, Y7, Y7
+	VCVTPD2PSY Y7, X7
+	VMOVUPS    X7, (CX)(DI*4)
+	ADDQ       $0x04, DI
+	CMPQ       DI, SI
+	JLT        next
+	LDMXCSR    (SP)
+	MOVQ       t+80(FP), AX
+	VMOVDQU    Y0, 8(SP)
+	XORQ       CX, CX
+	ADDQ       8(SP), CX
+	ADDQ       16(SP), CX
+	ADDQ       24(SP), CX
+	ADDQ       32(SP), CX
+	ADDQ       CX, (AX)
+	VMOVDQU    Y1, 8(SP)
+	XORQ       CX, CX
+	ORQ        8(SP), CX
+	ORQ        16(SP), CX
+	ORQ        24(SP), CX
+	ORQ        32(SP), CX
+	ADDQ       CX, 8(AX)
+	VZEROUPPER
+	RET
+
+// func scale64AVX2(y []float64, alpha float64, c *Constants, t *[2]uint64)
+// Requires: AVX, AVX2, FMA3
+TEXT ·scale64AVX2(SB), $64-48
+	MOVQ         c+32(FP), AX
+	VPXOR        Y0, Y0, Y0
+	VPXOR        Y1, Y1, Y1
+	MOVQ         y_base+0(FP), CX
+	MOVQ         y_len+8(FP), DX
+	VBROADCASTSD alpha+24(FP), Y2
+	XORQ         BX, BX
+
+next:
+	VMOVUPD     (CX)(BX*8), Y3
+	VMULPD      Y2, Y3, Y4
+	VMOVAPD     Y4, Y5
+	VFMSUB231PD Y2, Y3, Y5
+	VANDPD      128(AX), Y4, Y6
+	VCMPPD      $0x06, 1344(AX), Y6, Y7
+	VPOR        Y7, Y1, Y1
+	VCMPPD      $0x11, 384(AX), Y6, Y7
+	VPXOR       Y6, Y6, Y6
+	VCMPPD      $0x04, Y6, Y3, Y3
+	VPAND       Y3, Y7, Y7
+	VPOR        Y7, Y1, Y1
+	VPXOR       Y6, Y6, Y6
+	VCMPPD      $0x0c, Y6, Y5, Y3
+	VPXOR       Y5, Y4, Y5
+	VPCMPGTQ    Y5, Y6, Y5
+	VPAND       Y3, Y5, Y5
+	VPADDQ      Y5, Y4, Y4
+	VPSRLQ      $0x3f, Y3, Y3
+	VPOR        Y3, Y4, Y4
+	VMOVUPD     Y4, (CX)(BX*8)
+	ADDQ        $0x04, BX
+	CMPQ        BX, DX
+	JLT         next
+	MOVQ        t+40(FP), AX
+	VMOVDQU     Y0, (SP)
+	XORQ        CX, CX
+	ADDQ        (SP), CX
+	ADDQ        8(SP), CX
+	ADDQ        16(SP), CX
+	ADDQ        24(SP), CX
+	ADDQ        CX, (AX)
+	VMOVDQU     Y1, (SP)
+	XORQ        CX, CX
+	ORQ         (SP), CX
+	ORQ         8(SP), CX
+	ORQ         16(SP), CX
+	ORQ         24(SP), CX
+	ADDQ        CX, 8(AX)
+	VZEROUPPER
+	RET
+
+// func add64AVX2(x []float64, b []float64, factor float64, c *Constants, t *[2]uint64)
+// Requires: AVX, AVX2
+TEXT ·add64AVX2(SB), $64-72
+	MOVQ         c+56(FP), AX
+	VPXOR        Y0, Y0, Y0
+	VPXOR        Y1, Y1, Y1
+	MOVQ         x_base+0(FP), CX
+	MOVQ         b_base+24(FP), DX
+	MOVQ         x_len+8(FP), BX
+	VBROADCASTSD factor+48(FP), Y2
+	XORQ         SI, SI
+
+next:
+	VMOVUPD  (CX)(SI*8), Y3
+	VMULPD   (DX)(SI*8), Y2, Y4
+	VADDPD   Y4, Y3, Y5
+	VSUBPD   Y3, Y5, Y6
+	VSUBPD   Y6, Y5, Y7
+	VSUBPD   Y7, Y3, Y7
+	VSUBPD   Y6, Y4, Y4
+	VADDPD   Y4, Y7, Y7
+	VANDPD   128(AX), Y5, Y6
+	VCMPPD   $0x06, 1344(AX), Y6, Y3
+	VPOR     Y3, Y1, Y1
+	VPXOR    Y4, Y4, Y4
+	VCMPPD   $0x0c, Y4, Y7, Y3
+	VPXOR    Y7, Y5, Y6
+	VPCMPGTQ Y6, Y4, Y6
+	VPAND    Y3, Y6, Y6
+	VPADDQ   Y6, Y5, Y5
+	VPSRLQ   $0x3f, Y3, Y3
+	VPOR     Y3, Y5, Y5
+	VMOVUPD  Y5, (CX)(SI*8)
+	ADDQ     $0x04, SI
+	CMPQ     SI, BX
+	JLT      next
+	MOVQ     t+64(FP), AX
+	VMOVDQU  Y0, (SP)
+	XORQ     CX, CX
+	ADDQ     (SP), CX
+	ADDQ     8(SP), CX
+	ADDQ     16(SP), CX
+	ADDQ     24(SP), CX
+	ADDQ     CX, (AX)
+	VMOVDQU  Y1, (SP)
+	XORQ     CX, CX
+	ORQ      (SP), CX
+	ORQ      8(SP), CX
+	ORQ      16(SP), CX
+	ORQ      24(SP), CX
+	ADDQ     CX, 8(AX)
 	VZEROUPPER
 	RET
 

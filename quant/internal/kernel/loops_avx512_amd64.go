@@ -11,6 +11,12 @@ package kernel
 //go:noescape
 func philoxAVX512(t *philoxArgs)
 
+// philoxStreamAVX512 fills Dst with the words of one stream: Dst[4n + w] = word w of Philox4x32-10,
+// counter (Lane + n, Step, Site, Phase), for n below Blocks and on to a multiple of 16.
+//
+//go:noescape
+func philoxStreamAVX512(t *philoxArgs)
+
 // measureAVX512 gathers an extent lane by lane: e[0:16] bits that occur, e[16:32] greatest
 // magnitudes, e[32:48] least magnitudes less one.
 //
@@ -36,6 +42,36 @@ func transposeAVX512(dst []float32, src []float32, dstRow int, srcRow int, block
 //
 //go:noescape
 func addNativeAVX512(total []float32, chunk []float32)
+
+// roundNearest32AVX512 is dst = R(src), R nearest-even to the grid of c's sums, t as in slices.go.
+//
+//go:noescape
+func roundNearest32AVX512(dst []float32, src []float32, c *Constants, t *[2]uint64)
+
+// roundStochastic32AVX512 is dst = S(src), S stochastic to the grid of c's sums, t as in slices.go.
+//
+//go:noescape
+func roundStochastic32AVX512(dst []float32, src []float32, words []uint32, c *Constants, t *[2]uint64)
+
+// roundNearest64AVX512 is dst = R(src), R nearest-even to the grid of c's sums, t as in slices.go.
+//
+//go:noescape
+func roundNearest64AVX512(dst []float32, src []float64, c *Constants, t *[2]uint64)
+
+// roundStochastic64AVX512 is dst = S(src), S stochastic to the grid of c's sums, t as in slices.go.
+//
+//go:noescape
+func roundStochastic64AVX512(dst []float32, src []float64, words []uint32, c *Constants, t *[2]uint64)
+
+// scale64AVX512 is y = alpha y rounded to odd, t as in slices.go.
+//
+//go:noescape
+func scale64AVX512(y []float64, alpha float64, c *Constants, t *[2]uint64)
+
+// add64AVX512 is x = x + factor b rounded to odd, factor 1 or -1, t as in slices.go.
+//
+//go:noescape
+func add64AVX512(x []float64, b []float64, factor float64, c *Constants, t *[2]uint64)
 
 // addNearestAVX512 is total = R(binary32(total + chunk)), R nearest-even to the grid of c's sums.
 //

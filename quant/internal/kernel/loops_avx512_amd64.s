@@ -68,7 +68,7 @@ columns:
 	VBROADCASTSD 88(AX), Z8
 	MOVQ         40(AX), R8
 	ADDQ         DI, R8
-	INCQ         R8
+	ADDQ         $0x01, R8
 	VMOVQ        R8, X2
 	VPBROADCASTQ X2, Z9
 	VPADDQ       philoxAVX512Constants<>+192(SB), Z9, Z9
@@ -256,6 +256,250 @@ done:
 	VZEROUPPER
 	RET
 
+DATA philoxStreamAVX512Constants<>+0(SB)/8, $0x00000000d2511f53
+DATA philoxStreamAVX512Constants<>+8(SB)/8, $0x00000000cd9e8d57
+DATA philoxStreamAVX512Constants<>+16(SB)/8, $0x0000000000000000
+DATA philoxStreamAVX512Constants<>+24(SB)/8, $0x0000000000000000
+DATA philoxStreamAVX512Constants<>+32(SB)/8, $0x0000000000000000
+DATA philoxStreamAVX512Constants<>+40(SB)/8, $0x0000000000000000
+DATA philoxStreamAVX512Constants<>+48(SB)/8, $0x0000000000000000
+DATA philoxStreamAVX512Constants<>+56(SB)/8, $0x0000000000000000
+DATA philoxStreamAVX512Constants<>+64(SB)/8, $0x000000009e3779b9
+DATA philoxStreamAVX512Constants<>+72(SB)/8, $0x000000009e3779b9
+DATA philoxStreamAVX512Constants<>+80(SB)/8, $0x000000009e3779b9
+DATA philoxStreamAVX512Constants<>+88(SB)/8, $0x000000009e3779b9
+DATA philoxStreamAVX512Constants<>+96(SB)/8, $0x000000009e3779b9
+DATA philoxStreamAVX512Constants<>+104(SB)/8, $0x000000009e3779b9
+DATA philoxStreamAVX512Constants<>+112(SB)/8, $0x000000009e3779b9
+DATA philoxStreamAVX512Constants<>+120(SB)/8, $0x000000009e3779b9
+DATA philoxStreamAVX512Constants<>+128(SB)/8, $0x00000000bb67ae85
+DATA philoxStreamAVX512Constants<>+136(SB)/8, $0x00000000bb67ae85
+DATA philoxStreamAVX512Constants<>+144(SB)/8, $0x00000000bb67ae85
+DATA philoxStreamAVX512Constants<>+152(SB)/8, $0x00000000bb67ae85
+DATA philoxStreamAVX512Constants<>+160(SB)/8, $0x00000000bb67ae85
+DATA philoxStreamAVX512Constants<>+168(SB)/8, $0x00000000bb67ae85
+DATA philoxStreamAVX512Constants<>+176(SB)/8, $0x00000000bb67ae85
+DATA philoxStreamAVX512Constants<>+184(SB)/8, $0x00000000bb67ae85
+DATA philoxStreamAVX512Constants<>+192(SB)/8, $0x0000000000000000
+DATA philoxStreamAVX512Constants<>+200(SB)/8, $0x0000000000000001
+DATA philoxStreamAVX512Constants<>+208(SB)/8, $0x0000000000000002
+DATA philoxStreamAVX512Constants<>+216(SB)/8, $0x0000000000000003
+DATA philoxStreamAVX512Constants<>+224(SB)/8, $0x0000000000000004
+DATA philoxStreamAVX512Constants<>+232(SB)/8, $0x0000000000000005
+DATA philoxStreamAVX512Constants<>+240(SB)/8, $0x0000000000000006
+DATA philoxStreamAVX512Constants<>+248(SB)/8, $0x0000000000000007
+GLOBL philoxStreamAVX512Constants<>(SB), RODATA|NOPTR, $256
+
+// func philoxStreamAVX512(t *philoxArgs)
+// Requires: AVX, AVX512F
+TEXT ·philoxStreamAVX512(SB), $0-8
+	MOVQ         t+0(FP), AX
+	VBROADCASTSD philoxStreamAVX512Constants<>+0(SB), Z0
+	VBROADCASTSD philoxStreamAVX512Constants<>+8(SB), Z1
+	MOVQ         (AX), CX
+	MOVQ         24(AX), DX
+	MOVQ         72(AX), BX
+	XORQ         SI, SI
+
+counters:
+	VBROADCASTSD 80(AX), Z3
+	MOVQ         40(AX), DI
+	ADDQ         SI, DI
+	VMOVQ        DI, X2
+	VPBROADCASTQ X2, Z4
+	VPADDQ       philoxStreamAVX512Constants<>+192(SB), Z4, Z4
+	VBROADCASTSD 56(AX), Z5
+	VBROADCASTSD 64(AX), Z6
+	VMOVQ        BX, X2
+	VPBROADCASTQ X2, Z7
+	VBROADCASTSD 88(AX), Z8
+	MOVQ         40(AX), DI
+	ADDQ         SI, DI
+	ADDQ         $0x08, DI
+	VMOVQ        DI, X2
+	VPBROADCASTQ X2, Z9
+	VPADDQ       philoxStreamAVX512Constants<>+192(SB), Z9, Z9
+	VBROADCASTSD 56(AX), Z10
+	VBROADCASTSD 64(AX), Z11
+	VMOVQ        BX, X2
+	VPBROADCASTQ X2, Z2
+	VPMULUDQ     Z4, Z0, Z4
+	VPMULUDQ     Z6, Z1, Z6
+	VPSRLQ       $0x20, Z4, Z12
+	VPSRLQ       $0x20, Z6, Z13
+	VPTERNLOGQ   $0x96, Z5, Z3, Z13
+	VPTERNLOGQ   $0x96, Z7, Z8, Z12
+	VPMULUDQ     Z9, Z0, Z5
+	VPMULUDQ     Z11, Z1, Z7
+	VPSRLQ       $0x20, Z5, Z9
+	VPSRLQ       $0x20, Z7, Z11
+	VPTERNLOGQ   $0x96, Z10, Z3, Z11
+	VPTERNLOGQ   $0x96, Z2, Z8, Z9
+	VPADDQ       philoxStreamAVX512Constants<>+64(SB), Z3, Z3
+	VPADDQ       philoxStreamAVX512Constants<>+128(SB), Z8, Z8
+	VPMULUDQ     Z13, Z0, Z2
+	VPMULUDQ     Z12, Z1, Z10
+	VPSRLQ       $0x20, Z2, Z12
+	VPSRLQ       $0x20, Z10, Z13
+	VPTERNLOGQ   $0x96, Z6, Z3, Z13
+	VPTERNLOGQ   $0x96, Z4, Z8, Z12
+	VPMULUDQ     Z11, Z0, Z4
+	VPMULUDQ     Z9, Z1, Z6
+	VPSRLQ       $0x20, Z4, Z9
+	VPSRLQ       $0x20, Z6, Z11
+	VPTERNLOGQ   $0x96, Z7, Z3, Z11
+	VPTERNLOGQ   $0x96, Z5, Z8, Z9
+	VPADDQ       philoxStreamAVX512Constants<>+64(SB), Z3, Z3
+	VPADDQ       philoxStreamAVX512Constants<>+128(SB), Z8, Z8
+	VPMULUDQ     Z13, Z0, Z5
+	VPMULUDQ     Z12, Z1, Z7
+	VPSRLQ       $0x20, Z5, Z12
+	VPSRLQ       $0x20, Z7, Z13
+	VPTERNLOGQ   $0x96, Z10, Z3, Z13
+	VPTERNLOGQ   $0x96, Z2, Z8, Z12
+	VPMULUDQ     Z11, Z0, Z2
+	VPMULUDQ     Z9, Z1, Z9
+	VPSRLQ       $0x20, Z2, Z10
+	VPSRLQ       $0x20, Z9, Z11
+	VPTERNLOGQ   $0x96, Z6, Z3, Z11
+	VPTERNLOGQ   $0x96, Z4, Z8, Z10
+	VPADDQ       philoxStreamAVX512Constants<>+64(SB), Z3, Z3
+	VPADDQ       philoxStreamAVX512Constants<>+128(SB), Z8, Z8
+	VPMULUDQ     Z13, Z0, Z4
+	VPMULUDQ     Z12, Z1, Z6
+	VPSRLQ       $0x20, Z4, Z12
+	VPSRLQ       $0x20, Z6, Z13
+	VPTERNLOGQ   $0x96, Z7, Z3, Z13
+	VPTERNLOGQ   $0x96, Z5, Z8, Z12
+	VPMULUDQ     Z11, Z0, Z5
+	VPMULUDQ     Z10, Z1, Z7
+	VPSRLQ       $0x20, Z5, Z10
+	VPSRLQ       $0x20, Z7, Z11
+	VPTERNLOGQ   $0x96, Z9, Z3, Z11
+	VPTERNLOGQ   $0x96, Z2, Z8, Z10
+	VPADDQ       philoxStreamAVX512Constants<>+64(SB), Z3, Z3
+	VPADDQ       philoxStreamAVX512Constants<>+128(SB), Z8, Z8
+	VPMULUDQ     Z13, Z0, Z2
+	VPMULUDQ     Z12, Z1, Z9
+	VPSRLQ       $0x20, Z2, Z12
+	VPSRLQ       $0x20, Z9, Z13
+	VPTERNLOGQ   $0x96, Z6, Z3, Z13
+	VPTERNLOGQ   $0x96, Z4, Z8, Z12
+	VPMULUDQ     Z11, Z0, Z4
+	VPMULUDQ     Z10, Z1, Z6
+	VPSRLQ       $0x20, Z4, Z10
+	VPSRLQ       $0x20, Z6, Z11
+	VPTERNLOGQ   $0x96, Z7, Z3, Z11
+	VPTERNLOGQ   $0x96, Z5, Z8, Z10
+	VPADDQ       philoxStreamAVX512Constants<>+64(SB), Z3, Z3
+	VPADDQ       philoxStreamAVX512Constants<>+128(SB), Z8, Z8
+	VPMULUDQ     Z13, Z0, Z5
+	VPMULUDQ     Z12, Z1, Z7
+	VPSRLQ       $0x20, Z5, Z12
+	VPSRLQ       $0x20, Z7, Z13
+	VPTERNLOGQ   $0x96, Z9, Z3, Z13
+	VPTERNLOGQ   $0x96, Z2, Z8, Z12
+	VPMULUDQ     Z11, Z0, Z2
+	VPMULUDQ     Z10, Z1, Z9
+	VPSRLQ       $0x20, Z2, Z10
+	VPSRLQ       $0x20, Z9, Z11
+	VPTERNLOGQ   $0x96, Z6, Z3, Z11
+	VPTERNLOGQ   $0x96, Z4, Z8, Z10
+	VPADDQ       philoxStreamAVX512Constants<>+64(SB), Z3, Z3
+	VPADDQ       philoxStreamAVX512Constants<>+128(SB), Z8, Z8
+	VPMULUDQ     Z13, Z0, Z4
+	VPMULUDQ     Z12, Z1, Z6
+	VPSRLQ       $0x20, Z4, Z12
+	VPSRLQ       $0x20, Z6, Z13
+	VPTERNLOGQ   $0x96, Z7, Z3, Z13
+	VPTERNLOGQ   $0x96, Z5, Z8, Z12
+	VPMULUDQ     Z11, Z0, Z5
+	VPMULUDQ     Z10, Z1, Z7
+	VPSRLQ       $0x20, Z5, Z10
+	VPSRLQ       $0x20, Z7, Z11
+	VPTERNLOGQ   $0x96, Z9, Z3, Z11
+	VPTERNLOGQ   $0x96, Z2, Z8, Z10
+	VPADDQ       philoxStreamAVX512Constants<>+64(SB), Z3, Z3
+	VPADDQ       philoxStreamAVX512Constants<>+128(SB), Z8, Z8
+	VPMULUDQ     Z13, Z0, Z2
+	VPMULUDQ     Z12, Z1, Z9
+	VPSRLQ       $0x20, Z2, Z12
+	VPSRLQ       $0x20, Z9, Z13
+	VPTERNLOGQ   $0x96, Z6, Z3, Z13
+	VPTERNLOGQ   $0x96, Z4, Z8, Z12
+	VPMULUDQ     Z11, Z0, Z4
+	VPMULUDQ     Z10, Z1, Z6
+	VPSRLQ       $0x20, Z4, Z10
+	VPSRLQ       $0x20, Z6, Z11
+	VPTERNLOGQ   $0x96, Z7, Z3, Z11
+	VPTERNLOGQ   $0x96, Z5, Z8, Z10
+	VPADDQ       philoxStreamAVX512Constants<>+64(SB), Z3, Z3
+	VPADDQ       philoxStreamAVX512Constants<>+128(SB), Z8, Z8
+	VPMULUDQ     Z13, Z0, Z5
+	VPMULUDQ     Z12, Z1, Z7
+	VPSRLQ       $0x20, Z5, Z12
+	VPSRLQ       $0x20, Z7, Z13
+	VPTERNLOGQ   $0x96, Z9, Z3, Z13
+	VPTERNLOGQ   $0x96, Z2, Z8, Z12
+	VPMULUDQ     Z11, Z0, Z2
+	VPMULUDQ     Z10, Z1, Z9
+	VPSRLQ       $0x20, Z2, Z10
+	VPSRLQ       $0x20, Z9, Z11
+	VPTERNLOGQ   $0x96, Z6, Z3, Z11
+	VPTERNLOGQ   $0x96, Z4, Z8, Z10
+	VPADDQ       philoxStreamAVX512Constants<>+64(SB), Z3, Z3
+	VPADDQ       philoxStreamAVX512Constants<>+128(SB), Z8, Z8
+	VPMULUDQ     Z13, Z0, Z4
+	VPMULUDQ     Z12, Z1, Z6
+	VPSRLQ       $0x20, Z4, Z12
+	VPSRLQ       $0x20, Z6, Z13
+	VPTERNLOGQ   $0x96, Z7, Z3, Z13
+	VPTERNLOGQ   $0x96, Z5, Z8, Z12
+	VPMULUDQ     Z11, Z0, Z5
+	VPMULUDQ     Z10, Z1, Z7
+	VPSRLQ       $0x20, Z5, Z10
+	VPSRLQ       $0x20, Z7, Z11
+	VPTERNLOGQ   $0x96, Z9, Z3, Z11
+	VPTERNLOGQ   $0x96, Z2, Z8, Z10
+	VPSLLQ       $0x20, Z6, Z6
+	MOVL         $0x0000aaaa, DI
+	KMOVW        DI, K1
+	VPBLENDMD    Z6, Z13, K1, Z13
+	VPSLLQ       $0x20, Z4, Z4
+	MOVL         $0x0000aaaa, DI
+	KMOVW        DI, K1
+	VPBLENDMD    Z4, Z12, K1, Z12
+	VPUNPCKLQDQ  Z12, Z13, Z2
+	VPUNPCKHQDQ  Z12, Z13, Z3
+	VSHUFI64X2   $0x44, Z3, Z2, Z13
+	VSHUFI64X2   $0xd8, Z13, Z13, Z13
+	VSHUFI64X2   $0xee, Z3, Z2, Z12
+	VSHUFI64X2   $0xd8, Z12, Z12, Z12
+	VMOVUPD      Z13, (CX)
+	VMOVUPD      Z12, 64(CX)
+	VPSLLQ       $0x20, Z7, Z7
+	MOVL         $0x0000aaaa, DI
+	KMOVW        DI, K1
+	VPBLENDMD    Z7, Z11, K1, Z11
+	VPSLLQ       $0x20, Z5, Z5
+	MOVL         $0x0000aaaa, DI
+	KMOVW        DI, K1
+	VPBLENDMD    Z5, Z10, K1, Z10
+	VPUNPCKLQDQ  Z10, Z11, Z2
+	VPUNPCKHQDQ  Z10, Z11, Z3
+	VSHUFI64X2   $0x44, Z3, Z2, Z11
+	VSHUFI64X2   $0xd8, Z11, Z11, Z11
+	VSHUFI64X2   $0xee, Z3, Z2, Z10
+	VSHUFI64X2   $0xd8, Z10, Z10, Z10
+	VMOVUPD      Z11, 128(CX)
+	VMOVUPD      Z10, 192(CX)
+	ADDQ         $0x00000100, CX
+	ADDQ         $0x10, SI
+	CMPQ         SI, DX
+	JLT          counters
+	VZEROUPPER
+	RET
+
 // func measureAVX512(x []float32, e *[48]uint32)
 // Requires: AVX, AVX512F
 TEXT ·measureAVX512(SB), $0-32
@@ -418,6 +662,506 @@ next:
 	ADDQ    $0x10, BX
 	CMPQ    BX, DX
 	JLT     next
+	VZEROUPPER
+	RET
+
+// func roundNearest32AVX512(dst []float32, src []float32, c *Constants, t *[2]uint64)
+// Requires: AVX, AVX512DQ, AVX512F
+TEXT ·roundNearest32AVX512(SB), $64-64
+	MOVQ    c+48(FP), AX
+	VPXORD  Z0, Z0, Z0
+	VPXORD  Z1, Z1, Z1
+	MOVQ    dst_base+0(FP), CX
+	MOVQ    src_base+24(FP), DX
+	MOVQ    src_len+32(FP), BX
+	VMOVUPS (AX), Z2
+	VMOVUPS 384(AX), Z3
+	VMOVUPS 448(AX), Z4
+	VMOVUPS 64(AX), Z5
+	VMOVUPS 128(AX), Z6
+	XORQ    SI, SI
+
+next:
+	VMOVUPS       (DX)(SI*4), Z7
+	VANDPS        Z6, Z7, Z8
+	VCMPPS        $0x06, 1344(AX), Z8, K1
+	VPMOVM2D      K1, Z8
+	VPORD         Z8, Z1, Z1
+	VANDPS        Z2, Z7, Z8
+	VMAXPS        Z3, Z8, Z8
+	VMOVAPS       Z7, Z9
+	VFMADD231PS   Z4, Z8, Z9
+	VFNMADD231PS  Z4, Z8, Z9
+	VANDPS        Z6, Z9, Z9
+	VPXORD        Z10, Z10, Z10
+	VCMPPS        $0x00, Z10, Z9, K1
+	VCMPPS        $0x04, Z10, Z7, K1, K1
+	VPTERNLOGD    $0xff, Z11, Z11, Z11
+	VPSUBD        Z11, Z0, K1, Z0
+	VANDPS        Z5, Z7, Z8
+	VORPS         Z8, Z9, Z9
+	VMOVUPS       Z9, (CX)(SI*4)
+	ADDQ          $0x10, SI
+	CMPQ          SI, BX
+	JLT           next
+	MOVQ          t+56(FP), AX
+	VMOVDQU       Y0, (SP)
+	VEXTRACTI64X4 $0x01, Z0, Y0
+	VMOVDQU       Y0, 32(SP)
+	XORQ          CX, CX
+	MOVL          (SP), DX
+	ADDQ          DX, CX
+	MOVL          4(SP), DX
+	ADDQ          DX, CX
+	MOVL          8(SP), DX
+	ADDQ          DX, CX
+	MOVL          12(SP), DX
+	ADDQ          DX, CX
+	MOVL          16(SP), DX
+	ADDQ          DX, CX
+	MOVL          20(SP), DX
+	ADDQ          DX, CX
+	MOVL          24(SP), DX
+	ADDQ          DX, CX
+	MOVL          28(SP), DX
+	ADDQ          DX, CX
+	MOVL          32(SP), DX
+	ADDQ          DX, CX
+	MOVL          36(SP), DX
+	ADDQ          DX, CX
+	MOVL          40(SP), DX
+	ADDQ          DX, CX
+	MOVL          44(SP), DX
+	ADDQ          DX, CX
+	MOVL          48(SP), DX
+	ADDQ          DX, CX
+	MOVL          52(SP), DX
+	ADDQ          DX, CX
+	MOVL          56(SP), DX
+	ADDQ          DX, CX
+	MOVL          60(SP), DX
+	ADDQ          DX, CX
+	ADDQ          CX, (AX)
+	VMOVDQU       Y1, (SP)
+	VEXTRACTI64X4 $0x01, Z1, Y0
+	VMOVDQU       Y0, 32(SP)
+	XORQ          CX, CX
+	ORQ           (SP), CX
+	ORQ           8(SP), CX
+	ORQ           16(SP), CX
+	ORQ           24(SP), CX
+	ORQ           32(SP), CX
+	ORQ           40(SP), CX
+	ORQ           48(SP), CX
+	ORQ           56(SP), CX
+	ADDQ          CX, 8(AX)
+	VZEROUPPER
+	RET
+
+// func roundStochastic32AVX512(dst []float32, src []float32, words []uint32, c *Constants, t *[2]uint64)
+// Requires: AVX, AVX512DQ, AVX512F
+TEXT ·roundStochastic32AVX512(SB), $64-88
+	MOVQ         c+72(FP), AX
+	VPXORD       Z0, Z0, Z0
+	VPXORD       Z1, Z1, Z1
+	MOVQ         dst_base+0(FP), CX
+	MOVQ         src_base+24(FP), DX
+	MOVQ         words_base+48(FP), BX
+	MOVQ         src_len+32(FP), SI
+	MOVL         $0x00000020, DI
+	VMOVD        DI, X2
+	VPBROADCASTD X2, Z2
+	MOVL         $0xffffffff, DI
+	VMOVD        DI, X3
+	VPBROADCASTD X3, Z3
+	XORQ         DI, DI
+
+next:
+	VMOVUPS       (DX)(DI*4), Z4
+	VANDPS        128(AX), Z4, Z5
+	VCMPPS        $0x06, 1344(AX), Z5, K1
+	VPMOVM2D      K1, Z6
+	VPORD         Z6, Z1, Z1
+	MOVL          $0x007ffffe, R8
+	VMOVD         R8, X6
+	VPBROADCASTD  X6, Z6
+	VPADDD        Z3, Z5, Z5
+	VPMINUD       Z5, Z6, Z6
+	VPCMPEQD      Z5, Z6, K1
+	VPMOVM2D      K1, Z5
+	VPORD         Z5, Z1, Z1
+	VANDPS        (AX), Z4, Z5
+	VPMINUD       1024(AX), Z5, Z8
+	VPANDD        960(AX), Z4, Z7
+	VPORD         Z8, Z7, Z7
+	VMAXPS        384(AX), Z5, Z6
+	VPSUBD        Z5, Z6, Z5
+	VPSRLD        $0x17, Z5, Z5
+	VPADDD        1152(AX), Z5, Z5
+	VPSRLVD       Z5, Z7, Z10
+	VPSUBD        Z5, Z2, Z8
+	VPSLLVD       Z8, Z7, Z9
+	VPSUBD        Z2, Z5, Z8
+	VPSRLVD       Z8, Z7, Z5
+	VPORD         Z5, Z9, Z9
+	VMOVUPS       (BX)(DI*4), Z5
+	VPANDD        768(AX), Z5, Z5
+	VPORD         896(AX), Z5, Z5
+	VPADDD        Z5, Z9, Z9
+	VPSUBD        Z3, Z10, Z10
+	VPCMPUD       $0x05, Z5, Z9, K1
+	VPADDD        Z3, Z10, K1, Z10
+	VCVTDQ2PS     Z10, Z10
+	VMULPS        1280(AX), Z10, Z10
+	VMULPS        Z6, Z10, Z10
+	VPXORD        Z11, Z11, Z11
+	VCMPPS        $0x00, Z11, Z10, K1
+	VCMPPS        $0x04, Z11, Z4, K1, K1
+	VPTERNLOGD    $0xff, Z12, Z12, Z12
+	VPSUBD        Z12, Z0, K1, Z0
+	VANDPS        64(AX), Z4, Z4
+	VORPS         Z10, Z4, Z4
+	VMOVUPS       Z4, (CX)(DI*4)
+	ADDQ          $0x10, DI
+	CMPQ          DI, SI
+	JLT           next
+	MOVQ          t+80(FP), AX
+	VMOVDQU       Y0, (SP)
+	VEXTRACTI64X4 $0x01, Z0, Y0
+	VMOVDQU       Y0, 32(SP)
+	XORQ          CX, CX
+	MOVL          (SP), DX
+	ADDQ          DX, CX
+	MOVL          4(SP), DX
+	ADDQ          DX, CX
+	MOVL          8(SP), DX
+	ADDQ          DX, CX
+	MOVL          12(SP), DX
+	ADDQ          DX, CX
+	MOVL          16(SP), DX
+	ADDQ          DX, CX
+	MOVL          20(SP), DX
+	ADDQ          DX, CX
+	MOVL          24(SP), DX
+	ADDQ          DX, CX
+	MOVL          28(SP), DX
+	ADDQ          DX, CX
+	MOVL          32(SP), DX
+	ADDQ          DX, CX
+	MOVL          36(SP), DX
+	ADDQ          DX, CX
+	MOVL          40(SP), DX
+	ADDQ          DX, CX
+	MOVL          44(SP), DX
+	ADDQ          DX, CX
+	MOVL          48(SP), DX
+	ADDQ          DX, CX
+	MOVL          52(SP), DX
+	ADDQ          DX, CX
+	MOVL          56(SP), DX
+	ADDQ          DX, CX
+	MOVL          60(SP), DX
+	ADDQ          DX, CX
+	ADDQ          CX, (AX)
+	VMOVDQU       Y1, (SP)
+	VEXTRACTI64X4 $0x01, Z1, Y0
+	VMOVDQU       Y0, 32(SP)
+	XORQ          CX, CX
+	ORQ           (SP), CX
+	ORQ           8(SP), CX
+	ORQ           16(SP), CX
+	ORQ           24(SP), CX
+	ORQ           32(SP), CX
+	ORQ           40(SP), CX
+	ORQ           48(SP), CX
+	ORQ           56(SP), CX
+	ADDQ          CX, 8(AX)
+	VZEROUPPER
+	RET
+
+// func roundNearest64AVX512(dst []float32, src []float64, c *Constants, t *[2]uint64)
+// Requires: AVX, AVX512DQ, AVX512F
+TEXT ·roundNearest64AVX512(SB), $64-64
+	MOVQ    c+48(FP), AX
+	VPXORQ  Z0, Z0, Z0
+	VPXORQ  Z1, Z1, Z1
+	MOVQ    dst_base+0(FP), CX
+	MOVQ    src_base+24(FP), DX
+	MOVQ    src_len+32(FP), BX
+	VMOVUPD (AX), Z2
+	VMOVUPD 384(AX), Z3
+	VMOVUPD 448(AX), Z4
+	VMOVUPD 64(AX), Z5
+	VMOVUPD 128(AX), Z6
+	XORQ    SI, SI
+
+next:
+	VMOVUPD       (DX)(SI*8), Z7
+	VANDPD        Z6, Z7, Z8
+	VCMPPD        $0x06, 1344(AX), Z8, K1
+	VPMOVM2Q      K1, Z8
+	VPORQ         Z8, Z1, Z1
+	VANDPD        Z2, Z7, Z8
+	VMAXPD        Z3, Z8, Z8
+	VMOVAPS       Z7, Z9
+	VFMADD231PD   Z4, Z8, Z9
+	VFNMADD231PD  Z4, Z8, Z9
+	VANDPD        Z6, Z9, Z9
+	VPXORQ        Z10, Z10, Z10
+	VCMPPD        $0x00, Z10, Z9, K1
+	VCMPPD        $0x04, Z10, Z7, K1, K1
+	VPTERNLOGQ    $0xff, Z11, Z11, Z11
+	VPSUBQ        Z11, Z0, K1, Z0
+	VANDPD        Z5, Z7, Z8
+	VORPD         Z8, Z9, Z9
+	VCVTPD2PS     Z9, Y9
+	VMOVUPS       Y9, (CX)(SI*4)
+	ADDQ          $0x08, SI
+	CMPQ          SI, BX
+	JLT           next
+	MOVQ          t+56(FP), AX
+	VMOVDQU       Y0, (SP)
+	VEXTRACTI64X4 $0x01, Z0, Y0
+	VMOVDQU       Y0, 32(SP)
+	XORQ          CX, CX
+	ADDQ          (SP), CX
+	ADDQ          8(SP), CX
+	ADDQ          16(SP), CX
+	ADDQ          24(SP), CX
+	ADDQ          32(SP), CX
+	ADDQ          40(SP), CX
+	ADDQ          48(SP), CX
+	ADDQ          56(SP), CX
+	ADDQ          CX, (AX)
+	VMOVDQU       Y1, (SP)
+	VEXTRACTI64X4 $0x01, Z1, Y0
+	VMOVDQU       Y0, 32(SP)
+	XORQ          CX, CX
+	ORQ           (SP), CX
+	ORQ           8(SP), CX
+	ORQ           16(SP), CX
+	ORQ           24(SP), CX
+	ORQ           32(SP), CX
+	ORQ           40(SP), CX
+	ORQ           48(SP), CX
+	ORQ           56(SP), CX
+	ADDQ          CX, 8(AX)
+	VZEROUPPER
+	RET
+
+// func roundStochastic64AVX512(dst []float32, src []float64, words []uint32, c *Constants, t *[2]uint64)
+// Requires: AVX, AVX512DQ, AVX512F
+TEXT ·roundStochastic64AVX512(SB), $72-88
+	MOVQ    c+72(FP), AX
+	VPXORQ  Z0, Z0, Z0
+	VPXORQ  Z1, Z1, Z1
+	MOVQ    dst_base+0(FP), CX
+	MOVQ    src_base+24(FP), DX
+	MOVQ    words_base+48(FP), BX
+	MOVQ    src_len+32(FP), SI
+	VMOVUPD 64(AX), Z2
+	VMOVUPD 128(AX), Z3
+	VMOVUPD 384(AX), Z4
+	XORQ    DI, DI
+
+next:
+	VMOVUPD       (DX)(DI*8), Z5
+	VANDPD        Z3, Z5, Z6
+	VCMPPD        $0x06, 1344(AX), Z6, K1
+	VPMOVM2Q      K1, Z7
+	VPORQ         Z7, Z1, Z1
+	VCMPPD        $0x11, Z4, Z6, K1
+	VPMOVM2Q      K1, Z6
+	VANDPD        Z4, Z6, Z6
+	VANDPD        Z2, Z5, Z7
+	VORPD         Z7, Z6, Z6
+	VADDPD.RZ_SAE Z6, Z5, Z7
+	VPMOVZXDQ     (BX)(DI*4), Z10
+	VPANDQ        768(AX), Z10, Z10
+	VPSLLVQ       1088(AX), Z10, Z10
+	VPSRLVQ       832(AX), Z10, Z10
+	VPORQ         896(AX), Z10, Z10
+	VPADDQ        Z10, Z7, Z7
+	VPANDQ        704(AX), Z7, Z7
+	VSUBPD        Z6, Z7, Z7
+	VANDPD        Z3, Z7, Z7
+	VPXORQ        Z8, Z8, Z8
+	VCMPPD        $0x00, Z8, Z7, K1
+	VCMPPD        $0x04, Z8, Z5, K1, K1
+	VPTERNLOGQ    $0xff, Z9, Z9, Z9
+	VPSUBQ        Z9, Z0, K1, Z0
+	VANDPD        Z2, Z5, Z5
+	VORPD         Z5, Z7, Z7
+	VCVTPD2PS     Z7, Y7
+	VMOVUPS       Y7, (CX)(DI*4)
+	ADDQ          $0x08, DI
+	CMPQ          DI, SI
+	JLT           next
+	MOVQ          t+80(FP), AX
+	VMOVDQU       Y0, 8(SP)
+	VEXTRACTI64X4 $0x01, Z0, Y0
+	VMOVDQU       Y0, 40(SP)
+	XORQ          CX, CX
+	ADDQ          8(SP), CX
+	ADDQ          16(SP), CX
+	ADDQ          24(SP), CX
+	ADDQ          32(SP), CX
+	ADDQ          40(SP), CX
+	ADDQ          48(SP), CX
+	ADDQ          56(SP), CX
+	ADDQ          64(SP), CX
+	ADDQ          CX, (AX)
+	VMOVDQU       Y1, 8(SP)
+	VEXTRACTI64X4 $0x01, Z1, Y0
+	VMOVDQU       Y0, 40(SP)
+	XORQ          CX, CX
+	ORQ           8(SP), CX
+	ORQ           16(SP), CX
+	ORQ           24(SP), CX
+	ORQ           32(SP), CX
+	ORQ           40(SP), CX
+	ORQ           48(SP), CX
+	ORQ           56(SP), CX
+	ORQ           64(SP), CX
+	ADDQ          CX, 8(AX)
+	VZEROUPPER
+	RET
+
+// func scale64AVX512(y []float64, alpha float64, c *Constants, t *[2]uint64)
+// Requires: AVX, AVX512DQ, AVX512F
+TEXT ·scale64AVX512(SB), $64-48
+	MOVQ         c+32(FP), AX
+	VPXORQ       Z0, Z0, Z0
+	VPXORQ       Z1, Z1, Z1
+	MOVQ         y_base+0(FP), CX
+	MOVQ         y_len+8(FP), DX
+	VBROADCASTSD alpha+24(FP), Z2
+	XORQ         BX, BX
+
+next:
+	VMOVUPD       (CX)(BX*8), Z3
+	VMULPD        Z2, Z3, Z4
+	VMOVAPD       Z4, Z5
+	VFMSUB231PD   Z2, Z3, Z5
+	VANDPD        128(AX), Z4, Z6
+	VCMPPD        $0x06, 1344(AX), Z6, K1
+	VPMOVM2Q      K1, Z7
+	VPORQ         Z7, Z1, Z1
+	VCMPPD        $0x11, 384(AX), Z6, K1
+	VPMOVM2Q      K1, Z7
+	VPXORQ        Z6, Z6, Z6
+	VCMPPD        $0x04, Z6, Z3, K1
+	VPMOVM2Q      K1, Z3
+	VPANDQ        Z3, Z7, Z7
+	VPORQ         Z7, Z1, Z1
+	VPXORQ        Z8, Z8, Z8
+	VCMPPD        $0x0c, Z8, Z5, K1
+	VPMOVM2Q      K1, Z3
+	VPXORQ        Z5, Z4, Z5
+	VPSRAQ        $0x3f, Z5, Z5
+	VPANDQ        Z3, Z5, Z5
+	VPADDQ        Z5, Z4, Z4
+	VPSRLQ        $0x3f, Z3, Z3
+	VPORQ         Z3, Z4, Z4
+	VMOVUPD       Z4, (CX)(BX*8)
+	ADDQ          $0x08, BX
+	CMPQ          BX, DX
+	JLT           next
+	MOVQ          t+40(FP), AX
+	VMOVDQU       Y0, (SP)
+	VEXTRACTI64X4 $0x01, Z0, Y0
+	VMOVDQU       Y0, 32(SP)
+	XORQ          CX, CX
+	ADDQ          (SP), CX
+	ADDQ          8(SP), CX
+	ADDQ          16(SP), CX
+	ADDQ          24(SP), CX
+	ADDQ          32(SP), CX
+	ADDQ          40(SP), CX
+	ADDQ          48(SP), CX
+	ADDQ          56(SP), CX
+	ADDQ          CX, (AX)
+	VMOVDQU       Y1, (SP)
+	VEXTRACTI64X4 $0x01, Z1, Y0
+	VMOVDQU       Y0, 32(SP)
+	XORQ          CX, CX
+	ORQ           (SP), CX
+	ORQ           8(SP), CX
+	ORQ           16(SP), CX
+	ORQ           24(SP), CX
+	ORQ           32(SP), CX
+	ORQ           40(SP), CX
+	ORQ           48(SP), CX
+	ORQ           56(SP), CX
+	ADDQ          CX, 8(AX)
+	VZEROUPPER
+	RET
+
+// func add64AVX512(x []float64, b []float64, factor float64, c *Constants, t *[2]uint64)
+// Requires: AVX, AVX512DQ, AVX512F
+TEXT ·add64AVX512(SB), $64-72
+	MOVQ         c+56(FP), AX
+	VPXORQ       Z0, Z0, Z0
+	VPXORQ       Z1, Z1, Z1
+	MOVQ         x_base+0(FP), CX
+	MOVQ         b_base+24(FP), DX
+	MOVQ         x_len+8(FP), BX
+	VBROADCASTSD factor+48(FP), Z2
+	XORQ         SI, SI
+
+next:
+	VMOVUPD       (CX)(SI*8), Z3
+	VMULPD        (DX)(SI*8), Z2, Z4
+	VADDPD        Z4, Z3, Z5
+	VSUBPD        Z3, Z5, Z6
+	VSUBPD        Z6, Z5, Z7
+	VSUBPD        Z7, Z3, Z7
+	VSUBPD        Z6, Z4, Z4
+	VADDPD        Z4, Z7, Z7
+	VANDPD        128(AX), Z5, Z6
+	VCMPPD        $0x06, 1344(AX), Z6, K1
+	VPMOVM2Q      K1, Z3
+	VPORQ         Z3, Z1, Z1
+	VPXORQ        Z8, Z8, Z8
+	VCMPPD        $0x0c, Z8, Z7, K1
+	VPMOVM2Q      K1, Z3
+	VPXORQ        Z7, Z5, Z4
+	VPSRAQ        $0x3f, Z4, Z4
+	VPANDQ        Z3, Z4, Z4
+	VPADDQ        Z4, Z5, Z5
+	VPSRLQ        $0x3f, Z3, Z3
+	VPORQ         Z3, Z5, Z5
+	VMOVUPD       Z5, (CX)(SI*8)
+	ADDQ          $0x08, SI
+	CMPQ          SI, BX
+	JLT           next
+	MOVQ          t+64(FP), AX
+	VMOVDQU       Y0, (SP)
+	VEXTRACTI64X4 $0x01, Z0, Y0
+	VMOVDQU       Y0, 32(SP)
+	XORQ          CX, CX
+	ADDQ          (SP), CX
+	ADDQ          8(SP), CX
+	ADDQ          16(SP), CX
+	ADDQ          24(SP), CX
+	ADDQ          32(SP), CX
+	ADDQ          40(SP), CX
+	ADDQ          48(SP), CX
+	ADDQ          56(SP), CX
+	ADDQ          CX, (AX)
+	VMOVDQU       Y1, (SP)
+	VEXTRACTI64X4 $0x01, Z1, Y0
+	VMOVDQU       Y0, 32(SP)
+	XORQ          CX, CX
+	ORQ           (SP), CX
+	ORQ           8(SP), CX
+	ORQ           16(SP), CX
+	ORQ           24(SP), CX
+	ORQ           32(SP), CX
+	ORQ           40(SP), CX
+	ORQ           48(SP), CX
+	ORQ           56(SP), CX
+	ADDQ          CX, 8(AX)
 	VZEROUPPER
 	RET
 

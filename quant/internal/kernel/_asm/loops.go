@@ -194,6 +194,30 @@ var loops = []loop{
 		},
 	},
 	{
+		name: "roundNearest32", signature: "func(dst, src []float32, c *Constants, t *[2]uint64)", emit: emitNearest32,
+		doc: "is dst = R(src), R nearest-even to the grid of c's sums, t as in slices.go.",
+	},
+	{
+		name: "roundStochastic32", signature: "func(dst, src []float32, words []uint32, c *Constants, t *[2]uint64)", emit: emitStochastic32,
+		doc: "is dst = S(src), S stochastic to the grid of c's sums, t as in slices.go.",
+	},
+	{
+		name: "roundNearest64", signature: "func(dst []float32, src []float64, c *Constants, t *[2]uint64)", emit: emitNearest64,
+		doc: "is dst = R(src), R nearest-even to the grid of c's sums, t as in slices.go.",
+	},
+	{
+		name: "roundStochastic64", signature: "func(dst []float32, src []float64, words []uint32, c *Constants, t *[2]uint64)", emit: emitStochastic64,
+		doc: "is dst = S(src), S stochastic to the grid of c's sums, t as in slices.go.",
+	},
+	{
+		name: "scale64", signature: "func(y []float64, alpha float64, c *Constants, t *[2]uint64)", emit: emitScale64,
+		doc: "is y = alpha y rounded to odd, t as in slices.go.",
+	},
+	{
+		name: "add64", signature: "func(x, b []float64, factor float64, c *Constants, t *[2]uint64)", emit: emitAdd64,
+		doc: "is x = x + factor b rounded to odd, factor 1 or -1, t as in slices.go.",
+	},
+	{
 		name: "addNearest", signature: "func(total, chunk []float32, c *Constants)",
 		doc: "is total = R(binary32(total + chunk)), R nearest-even to the grid of c's sums.",
 		emit: func(g *loop) {

@@ -101,6 +101,10 @@ func generateLoops(dir string, t target) error {
 	if err := add(p.generate, "philox"+t.name); err != nil {
 		return err
 	}
+	p = philox{lanes: lanes{zmm: t.zmm}, stream: true}
+	if err := add(p.generate, "philoxStream"+t.name); err != nil {
+		return err
+	}
 	for _, l := range loops {
 		l.zmm = t.zmm
 		if err := add(l.generate, l.name+t.name); err != nil {

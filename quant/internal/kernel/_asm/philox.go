@@ -21,6 +21,7 @@ const (
 // that a shift and a blend give neighbouring columns.
 type philox struct {
 	lanes
+	stream     bool // the words of one stream instead of lanes of a table
 	multiplier [2]reg.VecVirtual
 	weyl       [2]operand.Mem
 	key        [2]reg.VecVirtual
@@ -32,6 +33,10 @@ type philox struct {
 func (g *philox) generate(c *build.Context, name string) {
 	g.Context = c
 	g.double = true
+	if g.stream {
+		g.generateStream(name)
+		return
+	}
 	constants := g.constants(name)
 	c.Function(name)
 	c.Pragma("noescape")
@@ -98,8 +103,12 @@ func (g *philox) constants(name string) operand.Mem {
 			g.AppendDatum(operand.U64(v))
 		}
 	}
+	step := 2
+	if g.stream {
+		step = 1
+	}
 	for n := range 8 {
-		g.AppendDatum(operand.U64(2 * n))
+		g.AppendDatum(operand.U64(step * n))
 	}
 	return m
 }
@@ -122,7 +131,7 @@ func (g *philox) start(arg func(string) operand.Mem, column, phase reg.Register,
 		g.MOVQ(arg("Lane"), lane)
 		g.ADDQ(column, lane)
 		if n == 1 {
-			g.INCQ(lane)
+			g.ADDQ(operand.Imm(uint64(g.apart())), lane)
 		}
 		g.VMOVQ(lane, x)
 		g.VPBROADCASTQ(x, g.counter[n][0])
@@ -132,6 +141,84 @@ func (g *philox) start(arg func(string) operand.Mem, column, phase reg.Register,
 		g.VMOVQ(phase, x)
 		g.VPBROADCASTQ(x, g.counter[n][3])
 	}
+}
+
+// apart is the distance of the two sets of counters.
+func (g *philox) apart() int {
+	if g.stream {
+		return g.count()
+	}
+	return 1
+}
+
+// generateStream emits the function for one stream: four words a counter, counters
+// ascending.
+func (g *philox) generateStream(name string) {
+	constants := g.constants(name)
+	g.Function(name)
+	g.Pragma("noescape")
+	g.Doc(name+" fills Dst with the words of one stream: Dst[4n + w] = word w of Philox4x32-10,",
+		"counter (Lane + n, Step, Site, Phase), for n below Blocks and on to a multiple of "+itoa(2*g.count())+".")
+	g.Signature(pointerSignature("philoxArgs"))
+	args := g.Load(g.Param("t"), g.GP64())
+	arg := func(name string) operand.Mem { return operand.Mem{Base: args, Disp: offset(philoxFields, name)} }
+	for n := range 2 {
+		g.multiplier[n] = g.constant(constants, 8*n)
+		g.weyl[n] = constants.Offset(64 * (1 + n))
+	}
+	dst, blocks, phase, at := g.GP64(), g.GP64(), g.GP64(), g.GP64()
+	g.MOVQ(arg("Dst"), dst)
+	g.MOVQ(arg("Blocks"), blocks)
+	g.MOVQ(arg("Phase"), phase)
+	g.XORQ(at, at)
+	g.Label("counters")
+	g.start(arg, at, phase, constants.Offset(64*3))
+	g.rounds()
+	for set := range g.counter {
+		g.storeCounters(operand.Mem{Base: dst, Disp: set * 2 * g.bytes()}, &g.counter[set])
+	}
+	g.ADDQ(operand.U32(uint64(4*g.bytes())), dst)
+	g.ADDQ(operand.Imm(uint64(2*g.count())), at)
+	g.CMPQ(at, blocks)
+	g.JLT(operand.LabelRef("counters"))
+	g.VZEROUPPER()
+	g.RET()
+}
+
+// storeCounters stores the four words of each counter of a set, side by side.
+func (g *philox) storeCounters(m operand.Mem, c *[4]reg.VecVirtual) {
+	for _, pair := range [][2]reg.VecVirtual{{c[0], c[1]}, {c[2], c[3]}} {
+		g.VPSLLQ(operand.Imm(32), pair[1], pair[1])
+		g.merge(pair[0], pair[1])
+	}
+	low, high := g.reg(), g.reg() // even counters, odd ones
+	g.VPUNPCKLQDQ(c[2], c[0], low)
+	g.VPUNPCKHQDQ(c[2], c[0], high)
+	a, b := c[0], c[2]
+	if g.zmm {
+		const lowHalves, highHalves, inTurn = 0x44, 0xEE, 0xD8
+		g.VSHUFI64X2(operand.Imm(lowHalves), high, low, a)
+		g.VSHUFI64X2(operand.Imm(inTurn), a, a, a)
+		g.VSHUFI64X2(operand.Imm(highHalves), high, low, b)
+		g.VSHUFI64X2(operand.Imm(inTurn), b, b, b)
+	} else {
+		g.VPERM2I128(operand.Imm(0x20), high, low, a)
+		g.VPERM2I128(operand.Imm(0x31), high, low, b)
+	}
+	g.store(m, a)
+	g.store(m.Offset(g.bytes()), b)
+}
+
+// merge: even = the low halves of even, the high halves of odd.
+func (g *philox) merge(even, odd reg.Register) {
+	if g.zmm {
+		k, bits := g.K(), g.GP32()
+		g.MOVL(operand.U32(0xAAAA), bits)
+		g.KMOVW(bits, k)
+		g.VPBLENDMD(odd, even, k, even)
+		return
+	}
+	g.VPBLENDD(operand.Imm(0xAA), odd, even, even)
 }
 
 // rounds runs the ten rounds on both sets of counters.
@@ -177,14 +264,7 @@ func (g *philox) storeRows(dst, column, width reg.Register) {
 	for w := range 4 {
 		even, odd := g.counter[0][w], g.counter[1][w]
 		g.VPSLLQ(operand.Imm(32), odd, odd)
-		if g.zmm {
-			k, bits := g.K(), g.GP32()
-			g.MOVL(operand.U32(0xAAAA), bits)
-			g.KMOVW(bits, k)
-			g.VPBLENDMD(odd, even, k, even)
-		} else {
-			g.VPBLENDD(operand.Imm(0xAA), odd, even, even)
-		}
+		g.merge(even, odd)
 		g.store(operand.Mem{Base: at}, even)
 		if w < 3 {
 			g.LEAQ(operand.Mem{Base: at, Index: width, Scale: 4}, at)

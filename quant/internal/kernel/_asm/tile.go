@@ -117,15 +117,22 @@ func (g *tile) loadConstants() {
 func (g *tile) setRounding(towardZero bool) {
 	if towardZero {
 		g.frame = g.AllocLocal(8)
-		t := g.GP32()
-		g.STMXCSR(g.frame)
-		g.MOVL(g.frame, t)
-		g.ORL(operand.U32(0x6000), t)
-		g.MOVL(t, g.frame.Offset(4))
-		g.LDMXCSR(g.frame.Offset(4))
+		roundTowardZero(g.Context, g.frame)
 		return
 	}
 	g.LDMXCSR(g.frame)
+}
+
+// roundTowardZero keeps MXCSR in the first four bytes of frame and changes its
+// rounding mode.
+func roundTowardZero(c *build.Context, frame operand.Mem) {
+	const towardZero = 0x6000
+	t := c.GP32()
+	c.STMXCSR(frame)
+	c.MOVL(frame, t)
+	c.ORL(operand.U32(towardZero), t)
+	c.MOVL(t, frame.Offset(4))
+	c.LDMXCSR(frame.Offset(4))
 }
 
 // cursors are the arguments that advance from group to group. They live in the
