@@ -44,6 +44,10 @@ format; --outer is the format in which finished chunks are added. A format may b
 followed by a rounding and an overflow policy of its own ("fp16 toward-zero
 saturate"); the flags hold for the others.
 
+Random bits come from the stream of roundings of --seed at step 0 and phase 0;
+sites are 1 for the elements of A, 2 for those of B, 3 and 4 for rows and columns
+in products, 5 and 6 in sums (go doc ulpine/quant says how they are used).
+
 --trace i,j writes every addition of one element of the result as CSV.`,
 		Example: `  ulpine matmul a.npy b.npy --sum fp16 --order "chunk(64)" --outer fp32 --out c.npy
   ulpine matmul a.npy b.npy --operands E4M3 --product exact --sum E6M9 --trace 0,0`,
