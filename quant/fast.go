@@ -120,3 +120,48 @@ func (f *fast[T]) redoRows(i0, i1, j0, j1 int) {
 		}
 	}
 }
+
+// fastSums forms sums without products with the kernels: the rows of the terms are
+// the columns of a product with a single row of ones.
+type fastSums struct {
+	kernel  *kernel.Multiplier
+	product kernel.Product[float32]
+	terms   Matrix[float32] // transposed
+	back    []int           // columns handed back, from and to by turns
+	redo    func(i0, i1, j0, j1 int)
+}
+
+// one is the row of ones.
+var one = []float32{1}
+
+// newFastSums returns the fast path of sums without products for tensors of float32,
+// nil where there is none.
+func newFastSums[T Element](acc Accumulate) *fastSums {
+	var t T
+	acc.Product = nil
+	a, ok := kernelArithmetic(acc)
+	if _, narrow := any(t).(float32); !narrow || !ok {
+		return nil
+	}
+	k := kernel.New(a)
+	if k == nil {
+		return nil
+	}
+	f := &fastSums{kernel: k}
+	f.redo = func(_, _, j0, j1 int) { f.back = append(f.back, j0, j1) }
+	return f
+}
+
+// sum forms the sums of rows i0, i0+1, ... and returns the runs of rows that are left
+// to do.
+func (f *fastSums) sum(dst []float32, terms Matrix[float32], rows, k int, d Streams) []int {
+	f.terms = Matrix[float32]{terms.Data, terms.Col, terms.Row}
+	f.product = kernel.Product[float32]{
+		I: 1, J: rows, K: k, A: one, B: &f.terms, C: dst,
+		Sums: kernel.Streams{Row: d.Column, Column: d.Row}, OddColumns: true,
+	}
+	f.back = f.back[:0]
+	f.kernel.Mul(&f.product, f.redo)
+	f.product, f.terms = kernel.Product[float32]{}, Matrix[float32]{}
+	return f.back
+}

@@ -9,8 +9,8 @@ import (
 	"ulpine/quant/internal/kernel"
 )
 
-// fastSums are accumulations that the kernels serve, by the words of a plan.
-var fastSums = []string{
+// fastTexts are accumulations that the kernels serve, by the words of a plan.
+var fastTexts = []string{
 	"product fp32; sum fp32",
 	"product exact; sum fp32",
 	"product fp16; sum fp32",
@@ -45,7 +45,7 @@ func TestFastAgainstEngine(t *testing.T) {
 	if testing.Short() {
 		rounds = 4
 	}
-	for n, text := range fastSums {
+	for n, text := range fastTexts {
 		t.Run(text, func(t *testing.T) {
 			t.Parallel()
 			acc, err := ParseAccumulate(text)

@@ -163,10 +163,23 @@ func finite[T Element](x []T) bool {
 // sumRows forms one sum of stored terms a row, the rows of the matrix being the
 // columns of blocks whose one row is all ones.
 func (m *Multiplier[T]) sumRows(dst []T, terms Matrix[T], rows, k int, d Streams, sums *Counts) {
+	to, narrow := any(dst).([]float32)
+	if m.fastSums == nil || !narrow {
+		m.sumRange(dst, terms, 0, rows, k, d, sums)
+		return
+	}
+	left := m.fastSums.sum(to, Matrix[float32]{any(terms.Data).([]float32), terms.Row, terms.Col}, rows, k, d)
+	for i := 0; i < len(left); i += 2 {
+		m.sumRange(dst, terms, left[i], left[i+1], k, d, sums)
+	}
+}
+
+// sumRange forms the sums of rows first to last in the engine or in exact reals.
+func (m *Multiplier[T]) sumRange(dst []T, terms Matrix[T], first, last, k int, d Streams, sums *Counts) {
 	e := m.sumEngine
 	wide := blockWidth(k)
-	for i0 := 0; i0 < rows; i0 += wide {
-		width := min(wide, rows-i0)
+	for i0 := first; i0 < last; i0 += wide {
+		width := min(wide, last-i0)
 		if e == nil || !m.sumBlock(dst[i0:][:width], terms, k, i0, d, sums) {
 			m.ref.sumRows(dst[i0:][:width], terms, k, i0, d, sums)
 		}

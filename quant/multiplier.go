@@ -10,6 +10,7 @@ type Multiplier[T Element] struct {
 	native    *native[T] // nil where the machine's own arithmetic does not serve
 	engine    *engine    // nil where a point has no quick rounding
 	sumEngine *engine    // engine for sums without products
+	fastSums  *fastSums  // and their kernels, nil where they do not serve
 	slab      []T        // a block of columns
 	line      []T        // a row of terms
 	work      Product[T] // the product being formed
@@ -84,7 +85,7 @@ func NewMultiplier[T Element](acc Accumulate) (*Multiplier[T], error) {
 		return m, nil // the reference alone knows the orders of hardware models
 	}
 	m.native, m.engine = newNative[T](acc), newEngine(acc, 2*24, -2*149) // products of binary32 numbers
-	m.fast = newFast(m, acc)
+	m.fast, m.fastSums = newFast(m, acc), newFastSums[T](acc)
 	acc.Product = nil
 	m.sumEngine = newEngine(acc, 24, -149) // binary32 numbers
 	return m, nil

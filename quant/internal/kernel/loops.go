@@ -154,10 +154,10 @@ func (l *loops) columnWords(dst []uint32, d random.Draws, width, k0, terms int, 
 }
 
 // rowWords writes the words of additions 0 <= k < terms of lanes 0, 1, ... by pairs
-// of rows, low bit set: dst[(i/2*terms + k)*2 + i%2].
-func (l *loops) rowWords(dst []uint32, d random.Draws, rows, terms int) {
+// of rows, or-ed with odd: dst[(i/2*terms + k)*2 + i%2].
+func (l *loops) rowWords(dst []uint32, d random.Draws, rows, terms int, odd uint32) {
 	if l.philox == nil {
-		fillRows(dst, d, rows, 0, terms)
+		fillRows(dst, d, rows, 0, terms, odd)
 		return
 	}
 	const lanes = 16
@@ -170,7 +170,7 @@ func (l *loops) rowWords(dst []uint32, d random.Draws, rows, terms int) {
 			for i := 0; i < width; i += 2 {
 				to := dst[((i0+i)*terms + 2*k):][:2*n]
 				for t := range n {
-					to[2*t], to[2*t+1] = l.block[t*lanes+i]|1, l.block[t*lanes+i+1]|1
+					to[2*t], to[2*t+1] = l.block[t*lanes+i]|odd, l.block[t*lanes+i+1]|odd
 				}
 			}
 		}

@@ -144,7 +144,7 @@ func (m *Multiplier) begin(p *Product[float32], redo func(i0, i1, j0, j1 int)) {
 	m.rowWords, m.biasRow = m.rowWords[:0], m.biasRow[:0]
 	if m.a.Sum.Kind == StochasticSum {
 		m.rowWords = grown(m.rowWords, 2*pairs*p.K)
-		m.loops.rowWords(m.rowWords, p.Sums.Row, p.I, p.K)
+		m.loops.rowWords(m.rowWords, p.Sums.Row, p.I, p.K, m.oddRows())
 	}
 	if p.Bias != nil {
 		if m.bias = m.biases.biasPlan(m.loops.spanOf(p.Bias[:p.I])); m.bias != nil {
@@ -153,12 +153,20 @@ func (m *Multiplier) begin(p *Product[float32], redo func(i0, i1, j0, j1 int)) {
 	}
 }
 
+// oddRows is what the words of rows are or-ed with.
+func (m *Multiplier) oddRows() uint32 {
+	if m.p.OddColumns {
+		return 0
+	}
+	return 1
+}
+
 // packBias packs the biases as a term of their own.
 func (m *Multiplier) packBias(pairs int) {
 	p := m.p
 	if m.a.Outer.Kind == StochasticSum {
 		m.biasRow = grown(m.biasRow, 2*pairs)
-		fillRows(m.biasRow, p.Sums.Row, p.I, p.K, 1)
+		fillRows(m.biasRow, p.Sums.Row, p.I, p.K, 1, m.oddRows())
 	}
 	if m.bias.double {
 		m.biasA64 = grown(m.biasA64, 2*pairs)

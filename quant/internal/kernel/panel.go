@@ -143,8 +143,18 @@ func (n *panel) packBlock(k, terms int) *plan {
 	if n.a.Sum.Kind == StochasticSum && plan != nil {
 		n.columnWords = grown(n.columnWords, (terms+3)/4*4*n.width+philoxSlack)
 		n.loops.columnWords(n.columnWords, n.p.Sums.Column, n.width, k, terms, n.p.FirstJ+uint32(n.j0))
+		n.setOdd()
 	}
 	return plan
+}
+
+// setOdd sets the low bit of the columns' words where the product asks for it.
+func (n *panel) setOdd() {
+	if n.p.OddColumns {
+		for i := range n.columnWords {
+			n.columnWords[i] |= 1
+		}
+	}
 }
 
 // measureAll returns the span of all blocks.
@@ -252,6 +262,7 @@ func (n *panel) addBias() {
 		width := max(n.row, n.width)
 		n.columnWords = grown(n.columnWords, width)
 		fillColumns(n.columnWords, p.Sums.Column, width, p.K, 1, p.FirstJ+uint32(n.j0))
+		n.setOdd()
 		r, v = n.biasRow, n.columnWords
 	}
 	if n.bias.double {

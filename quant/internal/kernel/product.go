@@ -23,4 +23,5 @@ type Product[T lanes] struct {
 	Bias       []T // nil, or I values added to the finished sums of their row
 	Sums       Streams
 	FirstJ     uint32 // number of column 0 among the lanes of Sums.Column
+	OddColumns bool   // the low bit of the columns' words is set, instead of the rows'
 }
