@@ -5,30 +5,45 @@ import "ulpine/quant/internal/kernel"
 // fast forms products with the kernels, where all points have kernels; what those
 // hand back, and all other arithmetic, is left to the engine.
 type fast[T Element] struct {
-	kernel         *kernel.Multiplier
+	kernel         *kernel.Multiplier // tensors of float32
+	wide           *kernel.Wide       // tensors of float64
 	owner          *Multiplier[T]
 	product        kernel.Product[float32]
+	wideProduct    kernel.Product[float64]
 	products, sums *Counts
 	redo           func(i0, i1, j0, j1 int)
 }
 
-// newFast returns the fast path of acc for tensors of float32, nil where there is
-// none.
+// newFast returns the fast path of acc, nil where there is none.
 func newFast[T Element](owner *Multiplier[T], acc Accumulate) *fast[T] {
-	if _, narrow := any(owner).(*Multiplier[float32]); !narrow {
+	f := &fast[T]{owner: owner}
+	if _, narrow := any(owner).(*Multiplier[float32]); narrow {
+		if a, ok := kernelArithmetic(acc); ok {
+			f.kernel = kernel.New(a)
+		}
+	} else {
+		f.wide = newWide(acc)
+	}
+	if f.kernel == nil && f.wide == nil {
 		return nil
 	}
-	a, ok := kernelArithmetic(acc)
-	if !ok {
-		return nil
-	}
-	k := kernel.New(a)
-	if k == nil {
-		return nil
-	}
-	f := &fast[T]{kernel: k, owner: owner}
 	f.redo = f.redoRows // bound once: a product allocates nothing
 	return f
+}
+
+// newWide returns the kernels of sequential sums in binary64's own arithmetic, nil
+// where acc is something else.
+func newWide(acc Accumulate) *kernel.Wide {
+	native := func(p *Point) bool { return newQuick(p).kind == quickNative64 }
+	switch {
+	case acc.Order.Kind != Sequential, acc.Through32, !native(&acc.Sum), acc.Outer != nil && !native(acc.Outer):
+		return nil
+	case acc.Product == nil:
+		return kernel.NewWide(true)
+	case !native(acc.Product):
+		return nil
+	}
+	return kernel.NewWide(false)
 }
 
 // kernelArithmetic translates an accumulation; false where the kernels lack a
@@ -38,6 +53,8 @@ func kernelArithmetic(acc Accumulate) (a kernel.Arithmetic, ok bool) {
 	case Sequential:
 	case Chunk:
 		a.Chunk = acc.Order.K
+	case Pairwise:
+		a.Pairwise = true
 	default:
 		return a, false
 	}
@@ -86,18 +103,26 @@ func kernelSum(p *Point, through32 bool) (s kernel.Sum, ok bool) {
 
 // mul forms the owner's product; false where the kernels do not serve.
 func (f *fast[T]) mul(products, sums *Counts) bool {
-	p, narrow := any(&f.owner.work).(*Product[float32])
-	if !narrow || p.Scale != nil {
+	if f.owner.work.Scale != nil {
 		return false
 	}
 	f.products, f.sums = products, sums
+	defer func() { f.products, f.sums = nil, nil }()
+	if p, wide := any(&f.owner.work).(*Product[float64]); wide {
+		f.wideProduct = kernel.Product[float64]{
+			I: p.I, J: p.J, K: p.K, A: p.A.Data, ARow: p.A.Row, ACol: p.A.Col, B: p.B, C: p.C, Bias: p.Bias,
+		}
+		f.wide.Mul(&f.wideProduct, f.redo)
+		f.wideProduct = kernel.Product[float64]{}
+		return true
+	}
+	p := any(&f.owner.work).(*Product[float32])
 	f.product = kernel.Product[float32]{
 		I: p.I, J: p.J, K: p.K, A: p.A.Data, ARow: p.A.Row, ACol: p.A.Col, B: p.B, C: p.C,
 		Bias: p.Bias, Sums: kernel.Streams(p.Sums), FirstJ: uint32(p.FirstJ),
 	}
 	f.kernel.Mul(&f.product, f.redo)
 	f.product = kernel.Product[float32]{}
-	f.products, f.sums = nil, nil
 	return true
 }
 
@@ -142,6 +167,9 @@ func newFastSums[T Element](acc Accumulate) *fastSums {
 	a, ok := kernelArithmetic(acc)
 	if _, narrow := any(t).(float32); !narrow || !ok {
 		return nil
+	}
+	if a.Pairwise {
+		a.Product = kernel.NativeProduct // one times a term is the term
 	}
 	k := kernel.New(a)
 	if k == nil {

@@ -34,6 +34,7 @@ var fastTexts = []string{
 	"product fp32; sum bf16 stochastic(16,centred); through binary32",
 	"product fp16; sum fp16; outer fp32; chunk(7)",
 	"product fp16; sum fp16; chunk(64)",
+	"product fp32; sum fp32; pairwise",
 	"product fp32; sum bf16; outer fp32; chunk(16)",
 }
 
@@ -95,6 +96,28 @@ func fastAgainstEngine(t *testing.T, acc Accumulate, p Product[float32], label s
 		}
 		if products != wantProducts || sums != wantSums {
 			t.Fatalf("%s, %s: counts %+v %+v, want %+v %+v", label, set.Name, products, sums, wantProducts, wantSums)
+		}
+	}
+}
+
+// TestWideAgainstReference holds products in binary64 to exact reals.
+func TestWideAgainstReference(t *testing.T) {
+	for n, text := range []string{"product fp64; sum fp64", "product exact; sum fp64", "product fp64; sum fp64; outer fp64"} {
+		acc, err := ParseAccumulate(text)
+		if err != nil {
+			t.Fatal(err)
+		}
+		if m, _ := NewMultiplier[float64](acc); m.fast == nil || m.fast.wide == nil {
+			t.Fatalf("%s: no kernels", text)
+		}
+		r := rand.New(rand.NewPCG(uint64(n), 13))
+		for round := range 40 {
+			a, b := kindsOfData[round%len(kindsOfData)], kindsOfData[r.IntN(len(kindsOfData))]
+			p := randomProduct[float64](r, r.IntN(6), r.IntN(40), r.IntN(40), a.draw, b.draw)
+			for i := range p.A.Data { // more than 24 bits
+				p.A.Data[i] *= math.Exp(r.NormFloat64())
+			}
+			againstReference(t, acc, p, fmt.Sprintf("%s, %s x %s", text, a.name, b.name))
 		}
 	}
 }

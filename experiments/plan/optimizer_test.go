@@ -37,7 +37,8 @@ func TestOptimizers(t *testing.T) {
 		},
 		{
 			`optimizer = { kind = "sgd", momentum = 0.9, weight_decay = 0.5, clip_norm = 2 }`,
-			trainer.Optimizer{Kind: "sgd", Momentum: 0.9, WeightDecay: 0.5, ClipNorm: 2}, "sgd momentum 0.9 weight decay 0.5 clipped at norm 2,",
+			trainer.Optimizer{Kind: "sgd", Momentum: 0.9, WeightDecay: 0.5, ClipNorm: 2},
+			"sgd momentum 0.9 weight decay 0.5 clipped at norm 2,",
 		},
 	} {
 		p := load(t, changed(oldOptimizer, c.text))

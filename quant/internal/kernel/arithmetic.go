@@ -37,5 +37,8 @@ type Arithmetic struct {
 	// Chunk is the number of consecutive terms that are added from +0 in Sum
 	// before Outer adds the finished chunks, from +0, in turn; 0: one sum.
 	Chunk int
-	Outer Sum // adds chunks and the bias; equal to Sum where nothing else is meant
+	// Pairwise adds neighbouring terms, then neighbouring sums, until one is left.
+	// There are kernels where product and sum are native.
+	Pairwise bool
+	Outer    Sum // adds chunks and the bias; equal to Sum where nothing else is meant
 }

@@ -48,6 +48,7 @@ var benchModes = []struct {
 }{
 	{"baseline", in(NativeProduct, Grid{}, Sum{}), fp16},
 	{"fma-chain", in(ExactProduct, Grid{}, Sum{}), fp16},
+	{"baseline-pairwise", Arithmetic{Product: NativeProduct, Pairwise: true}, fp16},
 	{"rounded-product-and-sum", in(RoundedProduct, fp16, nearestSum(fp16)), fp16},
 	{"rounded-product-and-sum-bf16", in(RoundedProduct, bf16, nearestSum(bf16)), bf16},
 	{"rounded-product-binary32-sum", in(RoundedProduct, fp16, Sum{}), fp16},

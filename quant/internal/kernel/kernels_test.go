@@ -24,6 +24,7 @@ func planned() (singles, doubles []*plan) {
 			add(q)
 		}
 	}
+	singles = append(singles, &plan{mode: tree8, c: single.masks()})
 	for _, m := range []mode{baseline64, fmaChain64} {
 		add(&plan{double: true, mode: m, c: double.masks()})
 	}
@@ -53,6 +54,7 @@ func againstPortable[L lanes](t *testing.T, set *Set, f, portable *family[L], pl
 	for _, p := range plans {
 		seen[fmt.Sprint(p.double, p.mode)] = true
 		loop := portable.tiles[p.mode][0][0].run
+		tree := !p.double && p.mode == tree8
 		for narrow, width := range []int{f.width, f.narrow} {
 			for _, s := range f.tiles[p.mode][narrow] {
 				for range rounds {
@@ -60,6 +62,9 @@ func againstPortable[L lanes](t *testing.T, set *Set, f, portable *family[L], pl
 					k := 1 + r.IntN(12)
 					if r.IntN(4) == 0 {
 						k = 40 + r.IntN(60)
+					}
+					if tree {
+						k = treeTerms
 					}
 					label := fmt.Sprintf("%s, mode %v %d of %dx%d, %d terms, %s", set.Name, p.double, p.mode, s.rows, width, k, kind.name)
 					oneTile(t, r, s, loop, p, width, k, kind.draw, label)

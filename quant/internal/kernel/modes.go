@@ -8,6 +8,7 @@ type mode int
 const (
 	baseline mode = iota
 	fmaChain
+	tree8
 	rounded
 	both
 	bothScaled

@@ -34,6 +34,8 @@ type Multiplier struct {
 	columnWords []uint32
 	result      []float32 // finished or waiting binary32 sums
 	chunk       []float32
+	stack       []subtree // of pairwise sums, depth of them in use
+	depth       int
 	panel       panel
 	bad         []bool // pairs of rows to be handed back
 }
@@ -45,6 +47,9 @@ func New(a Arithmetic) *Multiplier { return NewWith(Sets[0], a) }
 // NewWith is New with a given set.
 func NewWith(set *Set, a Arithmetic) *Multiplier {
 	if !a.Sum.supported() || !a.Outer.supported() || a.Product == RoundedProduct && !a.Grid.supported() {
+		return nil
+	}
+	if a.Pairwise && (a.Product != NativeProduct || a.Sum.Kind != NativeSum || a.Chunk > 0) {
 		return nil
 	}
 	m := &Multiplier{a: a, set: set, loops: set.loops, one: newSide(&set.single), two: newSide(&set.double)}

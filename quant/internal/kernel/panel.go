@@ -20,7 +20,7 @@ func (m *Multiplier) formPanel(j0 int) int {
 		n := m.startPanel(j0, m.wide)
 		switch n.form() {
 		case formed:
-			n.handBack()
+			handBack(n.bad, m.p.I, j0, n.columns, m.redo)
 			return n.columns
 		case impossible:
 			m.redo(0, m.p.I, j0, j0+n.columns)
@@ -38,7 +38,7 @@ func (m *Multiplier) formMeasured(j0 int) int {
 		span := n.measureAll()
 		n.only = &span
 		if n.form() == formed {
-			n.handBack()
+			handBack(n.bad, m.p.I, j0, n.columns, m.redo)
 			return n.columns
 		}
 	}
@@ -82,6 +82,11 @@ func (n *panel) form() outcome {
 	if n.row != n.width {
 		clear(n.result) // columns between the two widths take part in the bias's flags
 	}
+	if n.a.Pairwise {
+		n.pairwise()
+		n.finish()
+		return formed
+	}
 	chunk := p.K
 	if n.a.Chunk > 0 {
 		chunk = n.a.Chunk
@@ -97,13 +102,18 @@ func (n *panel) form() outcome {
 			n.outer(n.result, n.chunk, &n.outerC)
 		}
 	}
-	if p.Bias != nil {
-		n.addBias()
-	}
 	if p.Bias != nil || n.a.Chunk > 0 {
-		n.copyOut(0, p.I)
+		n.finish()
 	}
 	return formed
+}
+
+// finish adds the biases and copies the waiting sums to C.
+func (n *panel) finish() {
+	if n.p.Bias != nil {
+		n.addBias()
+	}
+	n.copyOut(0, n.p.I)
 }
 
 // sum adds terms from <= k < to from +0.
@@ -285,11 +295,11 @@ func (n *panel) addBias() {
 }
 
 // copyOut copies finished rows to C, and hands back what is not finite: sums of
-// chunks have no flags of their own.
+// chunks and of subtrees have no flags of their own.
 func (n *panel) copyOut(first, last int) {
 	for i := first; i < last; i++ {
 		row := n.result[i*n.row:][:n.columns]
-		if n.a.Chunk > 0 {
+		if n.a.Chunk > 0 || n.a.Pairwise {
 			for _, v := range row {
 				if v-v != 0 {
 					n.bad[i/2] = true
@@ -300,15 +310,15 @@ func (n *panel) copyOut(first, last int) {
 	}
 }
 
-// handBack hands back runs of rows with a flag.
-func (n *panel) handBack() {
-	for q := 0; q < len(n.bad); q++ {
+// handBack hands back runs of pairs of rows that are marked bad.
+func handBack(bad []bool, rows, j0, columns int, redo func(i0, i1, j0, j1 int)) {
+	for q := 0; q < len(bad); q++ {
 		first := q
-		for q < len(n.bad) && n.bad[q] {
+		for q < len(bad) && bad[q] {
 			q++
 		}
 		if q > first {
-			n.redo(2*first, min(2*q, n.p.I), n.j0, n.j0+n.columns)
+			redo(2*first, min(2*q, rows), j0, j0+columns)
 		}
 	}
 }

@@ -41,7 +41,7 @@ const (
 var Portable = &Set{
 	Name: "portable",
 	single: family[float32]{width: portableWidth, narrow: portableNarrow, tiles: portableTiles([]term[float32]{
-		baseline: termBaseline[float32], fmaChain: termFmaChain, rounded: termRounded, both: termBoth,
+		baseline: termBaseline[float32], fmaChain: termFmaChain, tree8: nil, rounded: termRounded, both: termBoth,
 		bothScaled: termBothScaled, bothCare: termBothCare, through: termThrough, throughFree: termThroughFree,
 		productThrough: termProductThrough, odd: termOdd, oddRounded: termOddRounded, stochastic: termStochastic,
 		stochasticFused: termStochasticFused, stochasticCare: termStochasticCare,
@@ -57,6 +57,9 @@ func portableTiles[L lanes](terms []term[L]) [][2][]shape[L] {
 	tiles := make([][2][]shape[L], len(terms))
 	for m, f := range terms {
 		run := func(t *Tile[L]) { sweep(t, f) }
+		if f == nil { // the one mode that is no loop over terms
+			run = sweepTree[L]
+		}
 		shapes := []shape[L]{{portableRows, run}, {2, run}}
 		tiles[m] = [2][]shape[L]{shapes, shapes}
 	}

@@ -28,6 +28,10 @@ func result(a *Arithmetic, p *Product[float32], column []float32, i, j int) refe
 		s16 := func(x uint32) int32 { return int32(int16(x)) }
 		return uint32(s16(row)*s16(col)+s16(row>>16)*s16(col>>16)) & 0xffff
 	}
+	if a.Pairwise {
+		r.value = float32(r.pairwise(a, p, column, i))
+		return r
+	}
 	chunk := a.Chunk
 	if chunk == 0 {
 		chunk = p.K
@@ -56,6 +60,29 @@ func result(a *Arithmetic, p *Product[float32], column []float32, i, j int) refe
 	}
 	r.value = float32(total)
 	return r
+}
+
+// pairwise is result for pairwise sums of native products, level by level.
+func (r *reference) pairwise(a *Arithmetic, p *Product[float32], column []float32, i int) float64 {
+	var level []float64
+	for k, b := range column {
+		x := float64(p.A[i*p.ARow+k*p.ACol]) * float64(b)
+		level = append(level, r.keep(float64(float32(x)), math.MaxFloat32)+0)
+	}
+	for len(level) > 1 {
+		var next []float64
+		for n := 0; n+1 < len(level); n += 2 {
+			next = append(next, r.add(&a.Sum, level[n], level[n+1], 0))
+		}
+		if len(level)%2 == 1 {
+			next = append(next, level[len(level)-1])
+		}
+		level = next
+	}
+	if p.Bias != nil {
+		return r.add(&a.Outer, level[0], float64(p.Bias[i]), 0)
+	}
+	return level[0]
 }
 
 // add is one addition.
@@ -132,6 +159,7 @@ func stochasticTo(x float64, s *Sum, u uint32) float64 {
 var arithmetics = []Arithmetic{
 	in(NativeProduct, Grid{}, Sum{}),
 	in(ExactProduct, Grid{}, Sum{}),
+	{Product: NativeProduct, Pairwise: true},
 	in(RoundedProduct, fp16, Sum{}),
 	in(RoundedProduct, bf16, Sum{}),
 	in(RoundedProduct, fp16, nearestSum(fp16)),

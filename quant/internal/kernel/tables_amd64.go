@@ -77,6 +77,7 @@ const (
 func init() {
 	tilesAVX232[baseline] = [2][]shape[float32]{{{2, baselineAVX2R2V3}}, {{8, baselineAVX2R8V1}, {2, baselineAVX2R2V1}}}
 	tilesAVX232[fmaChain] = [2][]shape[float32]{{{4, fmaChainAVX2R4V3}, {2, fmaChainAVX2R2V3}}, {{8, fmaChainAVX2R8V1}, {2, fmaChainAVX2R2V1}}}
+	tilesAVX232[tree8] = [2][]shape[float32]{{{4, tree8AVX2R4V3}, {2, tree8AVX2R2V3}}, {{4, tree8AVX2R4V1}, {2, tree8AVX2R2V1}}}
 	tilesAVX232[rounded] = [2][]shape[float32]{{{2, roundedAVX2R2V3}}, {{8, roundedAVX2R8V1}, {2, roundedAVX2R2V1}}}
 	tilesAVX232[both] = [2][]shape[float32]{{{2, bothAVX2R2V3}}, {{8, bothAVX2R8V1}, {2, bothAVX2R2V1}}}
 	tilesAVX232[bothScaled] = [2][]shape[float32]{{{2, bothScaledAVX2R2V3}}, {{8, bothScaledAVX2R8V1}, {2, bothScaledAVX2R2V1}}}
@@ -98,6 +99,7 @@ func init() {
 	tilesAVX264[fmaChain64] = [2][]shape[float64]{{{4, fmaChain64AVX2R4V3}, {2, fmaChain64AVX2R2V3}}, {{8, fmaChain64AVX2R8V1}, {2, fmaChain64AVX2R2V1}}}
 	tilesAVX51232[baseline] = [2][]shape[float32]{{{8, baselineAVX512R8V2}, {4, baselineAVX512R4V2}, {2, baselineAVX512R2V2}}, {{8, baselineAVX512R8V1}, {2, baselineAVX512R2V1}}}
 	tilesAVX51232[fmaChain] = [2][]shape[float32]{{{8, fmaChainAVX512R8V2}, {4, fmaChainAVX512R4V2}, {2, fmaChainAVX512R2V2}}, {{8, fmaChainAVX512R8V1}, {2, fmaChainAVX512R2V1}}}
+	tilesAVX51232[tree8] = [2][]shape[float32]{{{4, tree8AVX512R4V2}, {2, tree8AVX512R2V2}}, {{8, tree8AVX512R8V1}, {2, tree8AVX512R2V1}}}
 	tilesAVX51232[rounded] = [2][]shape[float32]{{{4, roundedAVX512R4V2}, {2, roundedAVX512R2V2}}, {{8, roundedAVX512R8V1}, {2, roundedAVX512R2V1}}}
 	tilesAVX51232[both] = [2][]shape[float32]{{{4, bothAVX512R4V2}, {2, bothAVX512R2V2}}, {{8, bothAVX512R8V1}, {2, bothAVX512R2V1}}}
 	tilesAVX51232[bothScaled] = [2][]shape[float32]{{{4, bothScaledAVX512R4V2}, {2, bothScaledAVX512R2V2}}, {{8, bothScaledAVX512R8V1}, {2, bothScaledAVX512R2V1}}}

@@ -46,6 +46,30 @@ func fmaChainAVX2R8V1(t *Tile[float32])
 //go:noescape
 func fmaChainAVX2R2V1(t *Tile[float32])
 
+// tree8AVX2R4V3 is the pairwise sum of binary32 products of eight terms, neighbours first, each rounded.
+// It keeps a tile of 4 x 24 sums in registers.
+//
+//go:noescape
+func tree8AVX2R4V3(t *Tile[float32])
+
+// tree8AVX2R2V3 is the pairwise sum of binary32 products of eight terms, neighbours first, each rounded.
+// It keeps a tile of 2 x 24 sums in registers.
+//
+//go:noescape
+func tree8AVX2R2V3(t *Tile[float32])
+
+// tree8AVX2R4V1 is the pairwise sum of binary32 products of eight terms, neighbours first, each rounded.
+// It keeps a tile of 4 x 8 sums in registers.
+//
+//go:noescape
+func tree8AVX2R4V1(t *Tile[float32])
+
+// tree8AVX2R2V1 is the pairwise sum of binary32 products of eight terms, neighbours first, each rounded.
+// It keeps a tile of 2 x 8 sums in registers.
+//
+//go:noescape
+func tree8AVX2R2V1(t *Tile[float32])
+
 // roundedAVX2R2V3 is the loop s = binary32(s + R(a b)), R nearest-even, terms ascending.
 // It keeps a tile of 2 x 24 sums in registers.
 //

@@ -64,6 +64,30 @@ func fmaChainAVX512R8V1(t *Tile[float32])
 //go:noescape
 func fmaChainAVX512R2V1(t *Tile[float32])
 
+// tree8AVX512R4V2 is the pairwise sum of binary32 products of eight terms, neighbours first, each rounded.
+// It keeps a tile of 4 x 32 sums in registers.
+//
+//go:noescape
+func tree8AVX512R4V2(t *Tile[float32])
+
+// tree8AVX512R2V2 is the pairwise sum of binary32 products of eight terms, neighbours first, each rounded.
+// It keeps a tile of 2 x 32 sums in registers.
+//
+//go:noescape
+func tree8AVX512R2V2(t *Tile[float32])
+
+// tree8AVX512R8V1 is the pairwise sum of binary32 products of eight terms, neighbours first, each rounded.
+// It keeps a tile of 8 x 16 sums in registers.
+//
+//go:noescape
+func tree8AVX512R8V1(t *Tile[float32])
+
+// tree8AVX512R2V1 is the pairwise sum of binary32 products of eight terms, neighbours first, each rounded.
+// It keeps a tile of 2 x 16 sums in registers.
+//
+//go:noescape
+func tree8AVX512R2V1(t *Tile[float32])
+
 // roundedAVX512R4V2 is the loop s = binary32(s + R(a b)), R nearest-even, terms ascending.
 // It keeps a tile of 4 x 32 sums in registers.
 //

@@ -10,6 +10,7 @@ type mode struct {
 	truncate  bool     // AVX2: runs under rounding toward zero
 	watch     bool     // watches the greatest magnitude against Limit
 	keepRight bool     // B[k, columns] in registers instead of memory operands
+	tree      bool     // adds the products of eight terms pairwise, see tree.go
 	step      func(g *tile, r, v int) chain
 }
 
@@ -27,6 +28,10 @@ var modes = []mode{
 		name: "fmaChain", doc: "the loop s = binary32(s + a b), terms ascending.",
 		keepRight: true,
 		step:      func(g *tile, r, v int) chain { return g.fuse(r, v) },
+	},
+	{
+		name: "tree8", doc: "the pairwise sum of binary32 products of eight terms, neighbours first, each rounded.",
+		tree: true,
 	},
 	{
 		name: "rounded", doc: "the loop s = binary32(s + R(a b)), R nearest-even, terms ascending.",

@@ -70,14 +70,18 @@ func (g *tile) generate(c *build.Context, name string) bool {
 	}
 
 	c.Label("group")
-	g.loadSums()
+	if !g.mode.tree {
+		g.loadSums()
+	}
 	g.a = g.pairs("A", g.element())
 	if g.mode.random {
 		g.r = g.pairs("R", 4)
 		g.v = g.loadArg("V")
 	}
 	g.b = g.loadArg("B")
-	if !g.terms() {
+	if g.mode.tree {
+		g.tree()
+	} else if !g.terms() {
 		return false
 	}
 	g.storeSums()

@@ -37,6 +37,7 @@ var targets = []target{
 		shapes: map[string][2]shape{
 			"baseline":              {{2, 0, 10}, {8, 0, 6}},
 			"fmaChain":              {{4, 0, 6}, {8, 0, 3}},
+			"tree8":                 {{4, 0, 0}, {4, 0, 0}},
 			"rounded":               {{2, 3, 4}, {8, 3, 2}},
 			"both":                  {{2, 2, 5}, {8, 3, 4}},
 			"bothScaled":            {{2, 3, 5}, {8, 3, 4}},
@@ -63,6 +64,7 @@ var targets = []target{
 		shapes: map[string][2]shape{
 			"baseline":              {{8, all, 6}, {8, all, 8}},
 			"fmaChain":              {{8, all, 6}, {8, all, 3}},
+			"tree8":                 {{4, 0, 0}, {8, 0, 0}},
 			"rounded":               {{4, all, 8}, {8, all, 8}},
 			"both":                  {{4, all, 8}, {8, all, 8}},
 			"bothScaled":            {{4, all, 8}, {8, all, 8}},
