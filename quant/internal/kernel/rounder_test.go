@@ -35,30 +35,40 @@ type operation struct {
 }
 
 var operations = []operation{
-	{"round", func(a, _, _ float64) float64 { return a },
+	{
+		"round", func(a, _, _ float64) float64 { return a },
 		func(r *Rounder, dst, a, _ []float32, _ float64, d random.Draws, first uint64) (int, int) {
 			return r.Round(dst, a, d, first)
-		}},
-	{"round wide", func(a, _, _ float64) float64 { return a },
+		},
+	},
+	{
+		"round wide", func(a, _, _ float64) float64 { return a },
 		func(r *Rounder, dst, a, _ []float32, _ float64, d random.Draws, first uint64) (int, int) {
 			wide := make([]float64, len(a))
 			for i, v := range a {
 				wide[i] = float64(v)
 			}
 			return r.RoundWide(dst, wide, d, first)
-		}},
-	{"scale", func(a, _, alpha float64) float64 { return oddProduct(alpha, a) },
+		},
+	},
+	{
+		"scale", func(a, _, alpha float64) float64 { return oddProduct(alpha, a) },
 		func(r *Rounder, dst, a, _ []float32, alpha float64, d random.Draws, first uint64) (int, int) {
 			return Scale(r, dst, alpha, a, d, first)
-		}},
-	{"add", func(a, b, _ float64) float64 { return oddSum(a, b) },
+		},
+	},
+	{
+		"add", func(a, b, _ float64) float64 { return oddSum(a, b) },
 		func(r *Rounder, dst, a, b []float32, _ float64, d random.Draws, first uint64) (int, int) {
 			return Add(r, dst, a, 1, b, d, first)
-		}},
-	{"subtract", func(a, b, _ float64) float64 { return oddSum(a, -b) },
+		},
+	},
+	{
+		"subtract", func(a, b, _ float64) float64 { return oddSum(a, -b) },
 		func(r *Rounder, dst, a, b []float32, _ float64, d random.Draws, first uint64) (int, int) {
 			return Add(r, dst, a, -1, b, d, first)
-		}},
+		},
+	},
 }
 
 // oddProduct is x y rounded to odd.

@@ -79,6 +79,7 @@ func (l lanes) sub(dst, x reg.Register, y operand.Op) { l.pick(l.VSUBPS, l.VSUBP
 func (l lanes) fma(dst, x reg.Register, y operand.Op) {
 	l.pick(l.VFMADD231PS, l.VFMADD231PD)(y, x, dst)
 }
+
 func (l lanes) fnma(dst, x reg.Register, y operand.Op) {
 	l.pick(l.VFNMADD231PS, l.VFNMADD231PD)(y, x, dst)
 }
@@ -122,5 +123,6 @@ func (l lanes) subInt(dst, x reg.Register, y operand.Op) { l.pick(l.VPSUBD, l.VP
 
 // shiftLeft, shiftRight: logical shifts of each lane of x by the count in the
 // same lane of n, zero for counts beyond the lane.
-func (l lanes) shiftLeft(dst, x reg.Register, n operand.Op)  { l.pick(l.VPSLLVD, l.VPSLLVQ)(n, x, dst) }
+func (l lanes) shiftLeft(dst, x reg.Register, n operand.Op) { l.pick(l.VPSLLVD, l.VPSLLVQ)(n, x, dst) }
+
 func (l lanes) shiftRight(dst, x reg.Register, n operand.Op) { l.pick(l.VPSRLVD, l.VPSRLVQ)(n, x, dst) }
