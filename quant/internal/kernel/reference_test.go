@@ -65,6 +65,9 @@ func result(a *Arithmetic, p *Product[float32], column []float32, i, j int) refe
 // pairwise is result for pairwise sums of native products, level by level.
 func (r *reference) pairwise(a *Arithmetic, p *Product[float32], column []float32, i int) float64 {
 	var level []float64
+	if len(column) == 0 {
+		level = []float64{0}
+	}
 	for k, b := range column {
 		x := float64(p.A[i*p.ARow+k*p.ACol]) * float64(b)
 		level = append(level, r.keep(float64(float32(x)), math.MaxFloat32)+0)
