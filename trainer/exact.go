@@ -2,6 +2,7 @@ package trainer
 
 import (
 	"math"
+	"sync"
 
 	"ulpine/quant"
 )
@@ -29,7 +30,8 @@ const combineLength = 256
 // rounding again to a short format is rounding once. A quotient by zero is that
 // of IEEE 754.
 func combine[T quant.Element](dst, a, b []T, how arithmetic, point *quant.Point, draws quant.Draws, first uint64, counts *quant.Counts) {
-	var x [combineLength]float64
+	x := blocks.Get().(*[combineLength]float64)
+	defer blocks.Put(x)
 	odd, native := roads(point)
 	mask := -1 // of the indices into b
 	if len(b) == 1 {
@@ -45,6 +47,10 @@ func combine[T quant.Element](dst, a, b []T, how arithmetic, point *quant.Point,
 		combineScalar(dst[at:end], a[at:end], right, mask, how, point, draws, first+uint64(at), counts)
 	}
 }
+
+// blocks lends the scratch of combine: rounding by vector would move it to the heap,
+// and a training step allocates nothing.
+var blocks = sync.Pool{New: func() any { return new([combineLength]float64) }}
 
 // roads reports which of the fast roads a point may take: one rounding to odd
 // first, or binary64's own arithmetic.
