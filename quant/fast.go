@@ -65,6 +65,9 @@ func kernelArithmetic(acc Accumulate) (a kernel.Arithmetic, ok bool) {
 			a.Product = kernel.NativeProduct
 		case quickNearest:
 			a.Product, a.Grid = kernel.RoundedProduct, q.grid()
+		case quickStochastic:
+			a.Product, a.Grid = kernel.RandomProduct, q.grid()
+			a.Bits, a.Centred = int(q.random), acc.Product.Rounding.Variant == Centred
 		default:
 			return a, false
 		}
@@ -119,7 +122,7 @@ func (f *fast[T]) mul(products, sums *Counts) bool {
 	p := any(&f.owner.work).(*Product[float32])
 	f.product = kernel.Product[float32]{
 		I: p.I, J: p.J, K: p.K, A: p.A.Data, ARow: p.A.Row, ACol: p.A.Col, B: p.B, C: p.C,
-		Bias: p.Bias, Sums: kernel.Streams(p.Sums), FirstJ: uint32(p.FirstJ),
+		Bias: p.Bias, Sums: kernel.Streams(p.Sums), Terms: kernel.Streams(p.Terms), FirstJ: uint32(p.FirstJ),
 	}
 	f.kernel.Mul(&f.product, f.redo)
 	f.product = kernel.Product[float32]{}

@@ -32,6 +32,8 @@ var fastTexts = []string{
 	"product exact; sum bf16 stochastic(8)",
 	"product fp16; sum fp16 stochastic; through binary32",
 	"product fp32; sum bf16 stochastic(16,centred); through binary32",
+	"product fp16 stochastic; sum fp16 stochastic",
+	"product bf16 stochastic(8,centred); sum fp16 stochastic(12)",
 	"product fp16; sum fp16; outer fp32; chunk(7)",
 	"product fp16; sum fp16; chunk(64)",
 	"product fp32; sum fp32; pairwise",

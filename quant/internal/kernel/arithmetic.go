@@ -7,7 +7,8 @@ type ProductKind uint8
 const (
 	ExactProduct   ProductKind = iota // enters the sum unrounded
 	NativeProduct                     // rounded to nearest-even to the type of the elements
-	RoundedProduct                    // rounded to nearest-even to the grid Product
+	RoundedProduct                    // rounded to nearest-even to Grid
+	RandomProduct                     // rounded stochastically to Grid
 )
 
 // SumKind says how a sum is rounded.
@@ -32,7 +33,9 @@ type Sum struct {
 // Arithmetic is how a sum of products is formed.
 type Arithmetic struct {
 	Product ProductKind
-	Grid    Grid // of RoundedProduct
+	Grid    Grid // of rounded products
+	Bits    int  // of RandomProduct: random bits, 1 to 16
+	Centred bool // of RandomProduct, as in Sum
 	Sum     Sum
 	// Chunk is the number of consecutive terms that are added from +0 in Sum
 	// before Outer adds the finished chunks, from +0, in turn; 0: one sum.

@@ -41,6 +41,11 @@ func in(p ProductKind, g Grid, s Sum) Arithmetic {
 	return Arithmetic{Product: p, Grid: g, Sum: s, Outer: s}
 }
 
+// randomBoth rounds products stochastically too.
+func randomBoth(g Grid, r int, centred bool, s Sum) Arithmetic {
+	return Arithmetic{Product: RandomProduct, Grid: g, Bits: r, Centred: centred, Sum: s, Outer: s}
+}
+
 var benchModes = []struct {
 	name string
 	a    Arithmetic
@@ -62,6 +67,7 @@ var benchModes = []struct {
 	{"exact-product-stochastic-sum", in(ExactProduct, Grid{}, randomSum(fp16, 16, false, false)), fp16},
 	{"exact-product-stochastic-sum-through-binary32", in(ExactProduct, Grid{}, randomSum(fp16, 16, true, false)), fp16},
 	{"exact-product-stochastic-sum-through-binary32-bf16", in(ExactProduct, Grid{}, randomSum(bf16, 16, true, false)), bf16},
+	{"stochastic-product-and-sum", randomBoth(fp16, 16, false, randomSum(fp16, 16, false, false)), fp16},
 	{"chunk64-binary32-outside", Arithmetic{Product: RoundedProduct, Grid: fp16, Sum: nearestSum(fp16), Chunk: 64}, fp16},
 }
 
@@ -103,7 +109,7 @@ func benchProduct(b *testing.B, m *Multiplier, g Grid, s [3]int) {
 	p := Product[float32]{
 		I: s[0], J: s[1], K: s[2], A: draw(s[0] * s[2]), ARow: s[2], ACol: 1,
 		B: dense{draw(s[1] * s[2]), s[1]}, C: make([]float32, s[0]*s[1]),
-		Sums: Streams{random.Draws{Seed: 1}, random.Draws{Seed: 2}},
+		Sums: Streams{random.Draws{Seed: 1}, random.Draws{Seed: 2}}, Terms: Streams{random.Draws{Seed: 3}, random.Draws{Seed: 4}},
 	}
 	back := 0
 	redo := func(i0, i1, j0, j1 int) { back += (i1 - i0) * (j1 - j0) }

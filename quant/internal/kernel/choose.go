@@ -161,7 +161,7 @@ func (p *plans) chooseStochastic(b *block) *plan {
 	case a.Product == RoundedProduct:
 		return p.watched(b)
 	}
-	return p.wide
+	return p.wide // random products too: they are exact in binary64 before rounding
 }
 
 // watched sets the limit of exact sums after rounded products.

@@ -30,6 +30,7 @@ func (l lane) masks() Constants {
 	return Constants{
 		ExponentMask: l.word(exponent), SignMask: l.word(sign), MagnitudeMask: l.word(sign - 1),
 		Scale: l.bits(1), Unscale: l.bits(1), Ones: l.word(1), Limit: l.bits(math.Inf(1)),
+		TermLimit: l.bits(math.Inf(1)),
 	}
 }
 
@@ -72,6 +73,14 @@ func (c *Constants) carry(l lane, s Sum, scale int) {
 	} else {
 		c.RandomHalf = l.word(0)
 	}
+}
+
+// carryTerms sets the constants of products rounded stochastically in binary64 lanes.
+func (c *Constants) carryTerms(a *Arithmetic) {
+	var t Constants
+	t.carry(double, Sum{Grid: a.Grid, Bits: a.Bits, Centred: a.Centred}, 0)
+	c.Least, c.TermLimit = t.SumLeast, t.Limit
+	c.TermKeep, c.TermMask, c.TermShift, c.TermHalf = t.Keep, t.RandomMask, t.RandomShift, t.RandomHalf
 }
 
 // fixed sets the constants of sums rounded stochastically as fixed-point numbers in

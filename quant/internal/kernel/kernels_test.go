@@ -99,7 +99,7 @@ func oneTile[L lanes](t *testing.T, r *rand.Rand, s shape[L], loop func(*Tile[L]
 		K: k, Groups: groups, Rows: s.rows, Width: width, C: &p.c, AStride: stride,
 		A: fill(rows/2*stride, p.scale), B: fill(k*width, 0), R: word(rows / 2 * stride), V: word(k * width),
 		In: make([]L, rows*max(inRow, 1)+width), InRow: inRow, OutRow: outRow, FinalRow: outRow,
-		numbers: &numbers[L]{},
+		TermR: word(rows / 2 * stride), TermV: word(k * width), numbers: &numbers[L]{},
 	}
 	const margin = 19
 	out := func() (space []L, flags []uint8) {

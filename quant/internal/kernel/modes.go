@@ -33,6 +33,7 @@ const (
 	fusedFree
 	stochasticWide
 	stochasticProduct
+	stochasticBoth
 	doubleModes
 )
 

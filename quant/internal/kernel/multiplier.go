@@ -25,6 +25,7 @@ type Multiplier struct {
 	redo     func(i0, i1, j0, j1 int)
 	spanA    Span
 	rowWords []uint32 // by pairs of rows, K terms
+	termRows []uint32 // the same for the rounding of products
 	biasRow  []uint32 // the same for the addition of the bias
 	biasA    []float32
 	biasA64  []float64
@@ -32,6 +33,7 @@ type Multiplier struct {
 	// The panel.
 	raw         []float32 // packed columns of a block
 	columnWords []uint32
+	termColumns []uint32
 	result      []float32 // finished or waiting binary32 sums
 	chunk       []float32
 	stack       []subtree // of pairwise sums, depth of them in use
@@ -46,7 +48,10 @@ func New(a Arithmetic) *Multiplier { return NewWith(Sets[0], a) }
 
 // NewWith is New with a given set.
 func NewWith(set *Set, a Arithmetic) *Multiplier {
-	if !a.Sum.supported() || !a.Outer.supported() || a.Product == RoundedProduct && !a.Grid.supported() {
+	if !a.Sum.supported() || !a.Outer.supported() || a.Product >= RoundedProduct && !a.Grid.supported() {
+		return nil
+	}
+	if a.Product == RandomProduct && (a.Sum.Kind != StochasticSum || a.Sum.Through || a.Bits < 1 || a.Bits > 16) {
 		return nil
 	}
 	if a.Pairwise && (a.Product != NativeProduct || a.Sum.Kind != NativeSum || a.Chunk > 0) {
@@ -150,6 +155,11 @@ func (m *Multiplier) begin(p *Product[float32], redo func(i0, i1, j0, j1 int)) {
 	if m.a.Sum.Kind == StochasticSum {
 		m.rowWords = grown(m.rowWords, 2*pairs*p.K)
 		m.loops.rowWords(m.rowWords, p.Sums.Row, p.I, p.K, m.oddRows())
+	}
+	m.termRows = m.termRows[:0]
+	if m.a.Product == RandomProduct {
+		m.termRows = grown(m.termRows, 2*pairs*p.K)
+		m.loops.rowWords(m.termRows, p.Terms.Row, p.I, p.K, 1)
 	}
 	if p.Bias != nil {
 		if m.bias = m.biases.biasPlan(m.loops.spanOf(p.Bias[:p.I])); m.bias != nil {

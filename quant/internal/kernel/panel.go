@@ -155,6 +155,10 @@ func (n *panel) packBlock(k, terms int) *plan {
 		n.loops.columnWords(n.columnWords, n.p.Sums.Column, n.width, k, terms, n.p.FirstJ+uint32(n.j0))
 		n.setOdd()
 	}
+	if n.a.Product == RandomProduct {
+		n.termColumns = grown(n.termColumns, (terms+3)/4*4*n.width+philoxSlack)
+		n.loops.columnWords(n.termColumns, n.p.Terms.Column, n.width, k, terms, n.p.FirstJ+uint32(n.j0))
+	}
 	return plan
 }
 
@@ -229,6 +233,9 @@ func (n *panel) runWide(plan *plan, k, terms int, first, last bool) {
 		in: s.sums, inRow: n.width, out: s.sums, outRow: n.width,
 	}
 	n.words(&w.r, &w.v, k)
+	if len(n.termRows) > 0 {
+		w.termR, w.termV = n.termRows[2*k:], n.termColumns
+	}
 	if first {
 		w.in, w.inRow = s.zeros, 0
 	}

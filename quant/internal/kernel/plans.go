@@ -124,10 +124,13 @@ func (p *plans) planStochasticProduct(a *Arithmetic, sumScale int, carries bool)
 func (p *plans) planWide(a *Arithmetic, productFree bool) {
 	n := &plan{double: true, mode: stochasticWide, c: double.masks()}
 	n.c.carry(double, p.sum, 0)
-	if a.Product == RoundedProduct {
-		if !productFree {
-			return
-		}
+	switch {
+	case a.Product == RandomProduct:
+		n.mode = stochasticBoth
+		n.c.carryTerms(a)
+	case a.Product == RoundedProduct && !productFree:
+		return
+	case a.Product == RoundedProduct:
 		n.mode = stochasticProduct
 		n.scale = double.nearestScale(a.Grid)
 		n.c.product(double, a.Grid, n.scale, 0)

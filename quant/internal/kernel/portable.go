@@ -17,11 +17,22 @@ type numbers[L lanes] struct {
 	keep, randomMask, randomHalf  uint64
 	randomShift                   uint8
 	preShift, baseShift, whole    uint8
-	limit                         L
-	greatest                      [maxWidth]L // where a mode watches magnitudes
+	sum, term                     carrying // binary64 lanes
 
-	sums    [maxRows * maxWidth]L
-	noWords [maxWidth]uint32
+	sums      [maxRows * maxWidth]L
+	noWords   [maxWidth]uint32
+	termWords []uint32 // of the term, where products are rounded stochastically
+	termWord  uint32
+}
+
+// carrying is a stochastic rounding of binary64 numbers: where the random bits go,
+// the half of centred thresholds, the bits kept, the least binade, and the magnitudes
+// watched.
+type carrying struct {
+	mask, half, keep uint64
+	shift            uint8
+	least, limit     float64
+	greatest         [maxWidth]float64
 }
 
 // maxWidth and maxRows bound a tile of any set.
@@ -49,7 +60,7 @@ var Portable = &Set{
 	})},
 	double: family[float64]{width: portableWidth, narrow: portableNarrow, tiles: portableTiles([]term[float64]{
 		baseline64: termBaseline[float64], fmaChain64: termFmaChain64, fused: termFused, fusedFree: termFusedFree,
-		stochasticWide: termStochasticWide, stochasticProduct: termStochasticProduct,
+		stochasticWide: termStochasticWide, stochasticProduct: termStochasticProduct, stochasticBoth: termStochasticBoth,
 	})},
 }
 
@@ -74,7 +85,8 @@ func sweep[L lanes](t *Tile[L], f term[L]) {
 	w := t.Width
 	sums := c.sums[:t.Rows*w]
 	for g := range t.Groups {
-		clear(c.greatest[:])
+		clear(c.sum.greatest[:])
+		clear(c.term.greatest[:])
 		for r := range t.Rows {
 			in := t.In[(g*t.Rows+r)*t.InRow:][:w]
 			for j, v := range in {
@@ -86,11 +98,17 @@ func sweep[L lanes](t *Tile[L], f term[L]) {
 			if t.V != nil {
 				words = t.V[k*w:][:w]
 			}
+			if t.TermV != nil {
+				c.termWords = t.TermV[k*w:][:w]
+			}
 			for r := range t.Rows {
 				at := (g*t.Rows+r)/2*t.AStride + 2*k + r%2
 				var word uint32
 				if t.R != nil {
 					word = t.R[at]
+				}
+				if t.TermR != nil {
+					c.termWord = t.TermR[at]
 				}
 				f(c, sums[r*w:][:w], b, words, t.A[at], word)
 			}
@@ -105,7 +123,7 @@ func storeGroup[L lanes](t *Tile[L], c *numbers[L], sums []L, g int, unscale L) 
 	flag, w := uint8(0), t.Width
 	for i, s := range sums {
 		r, j := g*t.Rows+i/w, i%w
-		if c.greatest[j] >= c.limit {
+		if c.sum.greatest[j] >= c.sum.limit || c.term.greatest[j] >= c.term.limit {
 			s = L(math.NaN())
 		}
 		if s-s != 0 {
@@ -146,6 +164,14 @@ func (n *numbers[L]) read(c *Constants) {
 		sumLeast: laneValue[L](&c.SumLeast), sumGrow: laneValue[L](&c.SumGrow), sumSplit: laneValue[L](&c.SumSplit),
 		keep: laneBits[L](&c.Keep), randomMask: laneBits[L](&c.RandomMask), randomHalf: laneBits[L](&c.RandomHalf),
 		randomShift: uint8(c.RandomShift[0]), preShift: uint8(c.PreShift[0]), baseShift: uint8(c.BaseShift[0]),
-		whole: uint8(c.WholeShift[0]), quantum: laneValue[L](&c.Quantum), limit: laneValue[L](&c.Limit),
+		whole: uint8(c.WholeShift[0]), quantum: laneValue[L](&c.Quantum),
+		sum: carrying{
+			mask: c.RandomMask.bits64(), half: c.RandomHalf.bits64(), keep: c.Keep.bits64(),
+			shift: uint8(c.RandomShift[0]), least: c.SumLeast.double(), limit: c.Limit.double(),
+		},
+		term: carrying{
+			mask: c.TermMask.bits64(), half: c.TermHalf.bits64(), keep: c.TermKeep.bits64(),
+			shift: uint8(c.TermShift[0]), least: c.Least.double(), limit: c.TermLimit.double(),
+		},
 	}
 }

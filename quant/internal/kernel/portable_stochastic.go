@@ -36,9 +36,28 @@ func truncatedSum(s, p float64) float64 {
 	return math.Float64frombits(b - inexact&((b^r)>>63))
 }
 
-// align64 moves the random bits below the last place of a binary64 number.
-func align64(c *numbers[float64], u uint32) uint64 {
-	return uint64(u)<<c.randomShift&c.randomMask | c.randomHalf
+// align moves the random bits below the last place of a binary64 number.
+func (c *carrying) align(u uint32) uint64 { return uint64(u)<<c.shift&c.mask | c.half }
+
+// watch keeps the greatest magnitude of column j; a NaN stays in the sum it comes
+// from.
+func (c *carrying) watch(j int, x float64) float64 {
+	size := math.Abs(x)
+	if size > c.greatest[j] {
+		c.greatest[j] = size
+	}
+	return size
+}
+
+// round rounds the exact or truncated x of column j. Below the least binade it is
+// lifted by that binade, which puts its quantum at the last place kept.
+func (c *carrying) round(j int, x float64, u uint32) float64 {
+	lift := 0.0
+	if c.watch(j, x) < c.least {
+		lift = math.Copysign(c.least, x)
+	}
+	y := math.Float64bits(truncatedSum(x, lift)) + c.align(u)
+	return math.Float64frombits(y&c.keep) - lift
 }
 
 // termStochastic: s = S(binary32(s + R(a b))), no sum subnormal and inexact.
@@ -75,20 +94,11 @@ func termStochasticProductCare(c *numbers[float32], s, b []float32, words []uint
 	}
 }
 
-// termStochasticWide: s = S(s + a b). Below the least binade the truncated sum is
-// lifted by that binade, which puts its quantum at the last place kept.
+// termStochasticWide: s = S(s + a b).
 func termStochasticWide(c *numbers[float64], s, b []float64, words []uint32, a float64, word uint32) {
 	words = words[:len(b)]
 	for j, v := range b {
-		x := truncatedSum(s[j], float64(a*v))
-		size := math.Abs(x)
-		c.greatest[j] = greater(c.greatest[j], size)
-		lift := 0.0
-		if size < c.sumLeast {
-			lift = math.Copysign(c.sumLeast, x)
-		}
-		y := math.Float64bits(truncatedSum(x, lift)) + align64(c, mix(word, words[j]))
-		s[j] = math.Float64frombits(y&c.keep) - lift
+		s[j] = c.sum.round(j, truncatedSum(s[j], float64(a*v)), mix(word, words[j]))
 	}
 }
 
@@ -97,16 +107,17 @@ func termStochasticProduct(c *numbers[float64], s, b []float64, words []uint32, 
 	words = words[:len(b)]
 	for j, v := range b {
 		x := s[j] + float64(near64(float64(a*v), c.least, c.grow)*c.rescale)
-		c.greatest[j] = greater(c.greatest[j], math.Abs(x))
-		y := math.Float64bits(x) + align64(c, mix(word, words[j]))
-		s[j] = math.Float64frombits(y & c.keep)
+		c.sum.watch(j, x)
+		y := math.Float64bits(x) + c.sum.align(mix(word, words[j]))
+		s[j] = math.Float64frombits(y & c.sum.keep)
 	}
 }
 
-// greater is the larger of two magnitudes; a NaN stays in the sum it comes from.
-func greater(x, y float64) float64 {
-	if y > x {
-		return y
+// termStochasticBoth: s = S(s + R(a b)), R and S stochastic.
+func termStochasticBoth(c *numbers[float64], s, b []float64, words []uint32, a float64, word uint32) {
+	words = words[:len(b)]
+	for j, v := range b {
+		p := c.term.round(j, float64(a*v), mix(c.termWord, c.termWords[j]))
+		s[j] = c.sum.round(j, truncatedSum(s[j], p), mix(word, words[j]))
 	}
-	return x
 }

@@ -22,6 +22,7 @@ type Product[T lanes] struct {
 	C          []T // I x J, row-major
 	Bias       []T // nil, or I values added to the finished sums of their row
 	Sums       Streams
-	FirstJ     uint32 // number of column 0 among the lanes of Sums.Column
-	OddColumns bool   // the low bit of the columns' words is set, instead of the rows'
+	Terms      Streams // of the rounding of products
+	FirstJ     uint32  // number of column 0 among the lanes of Sums.Column
+	OddColumns bool    // the low bit of the columns' words is set, instead of the rows'
 }

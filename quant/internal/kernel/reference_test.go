@@ -22,9 +22,9 @@ type reference struct {
 // result forms C[i,j].
 func result(a *Arithmetic, p *Product[float32], column []float32, i, j int) reference {
 	var r reference
-	word := func(k int) uint32 {
-		row := p.Sums.Row.Lane(uint32(k), uint32(i)) | 1
-		col := p.Sums.Column.Lane(uint32(k), p.FirstJ+uint32(j))
+	word := func(s *Streams, k int) uint32 {
+		row := s.Row.Lane(uint32(k), uint32(i)) | 1
+		col := s.Column.Lane(uint32(k), p.FirstJ+uint32(j))
 		s16 := func(x uint32) int32 { return int32(int16(x)) }
 		return uint32(s16(row)*s16(col)+s16(row>>16)*s16(col>>16)) & 0xffff
 	}
@@ -46,8 +46,11 @@ func result(a *Arithmetic, p *Product[float32], column []float32, i, j int) refe
 				x = r.keep(float64(float32(x)), math.MaxFloat32)
 			case RoundedProduct:
 				x = r.keep(nearestTo(x, a.Grid), a.Grid.Max)
+			case RandomProduct:
+				t := &Sum{Grid: a.Grid, Bits: a.Bits, Centred: a.Centred}
+				x = r.keep(stochasticTo(x, t, word(&p.Terms, k)>>(16-a.Bits)), a.Grid.Max)
 			}
-			s = r.add(&a.Sum, s, x, word(k))
+			s = r.add(&a.Sum, s, x, word(&p.Sums, k))
 		}
 		if a.Chunk == 0 {
 			total = s
@@ -56,7 +59,7 @@ func result(a *Arithmetic, p *Product[float32], column []float32, i, j int) refe
 		}
 	}
 	if p.Bias != nil {
-		total = r.add(&a.Outer, total, float64(p.Bias[i]), word(p.K))
+		total = r.add(&a.Outer, total, float64(p.Bias[i]), word(&p.Sums, p.K))
 	}
 	r.value = float32(total)
 	return r
@@ -198,6 +201,9 @@ var arithmetics = []Arithmetic{
 	in(ExactProduct, Grid{}, randomSum(fp16, 16, false, true)),
 	in(ExactProduct, Grid{}, randomSum(bf16, 16, false, false)),
 	in(NativeProduct, Grid{}, randomSum(e5m2, 3, false, false)),
+	randomBoth(fp16, 16, false, randomSum(fp16, 16, false, false)),
+	randomBoth(bf16, 7, true, randomSum(fp16, 11, false, true)),
+	randomBoth(e5m2, 16, false, randomSum(bf16, 8, false, false)),
 	{Product: RoundedProduct, Grid: fp16, Sum: nearestSum(fp16), Chunk: 5},
 	{Product: RoundedProduct, Grid: fp16, Sum: nearestSum(fp16), Outer: nearestSum(fp16), Chunk: 7},
 	{Product: ExactProduct, Sum: nearestSum(bf16), Chunk: 64},
@@ -293,6 +299,6 @@ func draw(r *rand.Rand, i, j, k int, a, b func(*rand.Rand) float64) *Product[flo
 	stream := func() random.Draws {
 		return random.Draws{Seed: r.Uint64(), Step: r.Uint32(), Site: r.Uint32(), Phase: uint32(r.IntN(256))}
 	}
-	p.Sums = Streams{stream(), stream()}
+	p.Sums, p.Terms = Streams{stream(), stream()}, Streams{stream(), stream()}
 	return p
 }

@@ -71,6 +71,7 @@ type work[L lanes] struct {
 	aStride       int
 	b             []L
 	r, v          []uint32
+	termR, termV  []uint32
 	in, out       []L
 	inRow, outRow int
 	final         []float32
@@ -96,6 +97,7 @@ func (s *side[L]) sweep(bad []bool) {
 		t.A = w.a[pair*w.aStride:]
 		t.In, t.Out = w.in[2*pair*w.inRow:], from(w.out, 2*pair*w.outRow)
 		t.R, t.Final = from(w.r, pair*w.aStride), from(w.final, 2*pair*w.finalRow)
+		t.TermR, t.TermV = from(w.termR, pair*w.aStride), w.termV
 		s.flags = grown(s.flags, t.Groups)
 		t.Flags = s.flags
 		shape.run(t)

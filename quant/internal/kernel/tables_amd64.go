@@ -23,6 +23,8 @@ const (
 	_ = uint(unsafe.Offsetof(Tile[float32]{}.FinalRow)-208) + uint(208-unsafe.Offsetof(Tile[float32]{}.FinalRow))
 	_ = uint(unsafe.Offsetof(Tile[float32]{}.Flags)-216) + uint(216-unsafe.Offsetof(Tile[float32]{}.Flags))
 	_ = uint(unsafe.Offsetof(Tile[float32]{}.C)-240) + uint(240-unsafe.Offsetof(Tile[float32]{}.C))
+	_ = uint(unsafe.Offsetof(Tile[float32]{}.TermR)-248) + uint(248-unsafe.Offsetof(Tile[float32]{}.TermR))
+	_ = uint(unsafe.Offsetof(Tile[float32]{}.TermV)-272) + uint(272-unsafe.Offsetof(Tile[float32]{}.TermV))
 	_ = uint(unsafe.Offsetof(Constants{}.ExponentMask)-0) + uint(0-unsafe.Offsetof(Constants{}.ExponentMask))
 	_ = uint(unsafe.Offsetof(Constants{}.SignMask)-64) + uint(64-unsafe.Offsetof(Constants{}.SignMask))
 	_ = uint(unsafe.Offsetof(Constants{}.MagnitudeMask)-128) + uint(128-unsafe.Offsetof(Constants{}.MagnitudeMask))
@@ -46,6 +48,11 @@ const (
 	_ = uint(unsafe.Offsetof(Constants{}.Quantum)-1280) + uint(1280-unsafe.Offsetof(Constants{}.Quantum))
 	_ = uint(unsafe.Offsetof(Constants{}.Limit)-1344) + uint(1344-unsafe.Offsetof(Constants{}.Limit))
 	_ = uint(unsafe.Offsetof(Constants{}.Ones)-1408) + uint(1408-unsafe.Offsetof(Constants{}.Ones))
+	_ = uint(unsafe.Offsetof(Constants{}.TermKeep)-1472) + uint(1472-unsafe.Offsetof(Constants{}.TermKeep))
+	_ = uint(unsafe.Offsetof(Constants{}.TermMask)-1536) + uint(1536-unsafe.Offsetof(Constants{}.TermMask))
+	_ = uint(unsafe.Offsetof(Constants{}.TermShift)-1600) + uint(1600-unsafe.Offsetof(Constants{}.TermShift))
+	_ = uint(unsafe.Offsetof(Constants{}.TermHalf)-1664) + uint(1664-unsafe.Offsetof(Constants{}.TermHalf))
+	_ = uint(unsafe.Offsetof(Constants{}.TermLimit)-1728) + uint(1728-unsafe.Offsetof(Constants{}.TermLimit))
 	_ = uint(unsafe.Offsetof(philoxArgs{}.Dst)-0) + uint(0-unsafe.Offsetof(philoxArgs{}.Dst))
 	_ = uint(unsafe.Offsetof(philoxArgs{}.Blocks)-24) + uint(24-unsafe.Offsetof(philoxArgs{}.Blocks))
 	_ = uint(unsafe.Offsetof(philoxArgs{}.Width)-32) + uint(32-unsafe.Offsetof(philoxArgs{}.Width))
@@ -95,6 +102,7 @@ func init() {
 	tilesAVX264[fusedFree] = [2][]shape[float64]{{{4, fusedFreeAVX2R4V3}, {2, fusedFreeAVX2R2V3}}, {{8, fusedFreeAVX2R8V1}, {2, fusedFreeAVX2R2V1}}}
 	tilesAVX264[stochasticWide] = [2][]shape[float64]{{{2, stochasticWideAVX2R2V3}}, {{8, stochasticWideAVX2R8V1}, {2, stochasticWideAVX2R2V1}}}
 	tilesAVX264[stochasticProduct] = [2][]shape[float64]{{{2, stochasticProductAVX2R2V3}}, {{8, stochasticProductAVX2R8V1}, {2, stochasticProductAVX2R2V1}}}
+	tilesAVX264[stochasticBoth] = [2][]shape[float64]{{{2, stochasticBothAVX2R2V3}}, {{4, stochasticBothAVX2R4V1}, {2, stochasticBothAVX2R2V1}}}
 	tilesAVX264[baseline64] = [2][]shape[float64]{{{2, baseline64AVX2R2V3}}, {{8, baseline64AVX2R8V1}, {2, baseline64AVX2R2V1}}}
 	tilesAVX264[fmaChain64] = [2][]shape[float64]{{{4, fmaChain64AVX2R4V3}, {2, fmaChain64AVX2R2V3}}, {{8, fmaChain64AVX2R8V1}, {2, fmaChain64AVX2R2V1}}}
 	tilesAVX51232[baseline] = [2][]shape[float32]{{{8, baselineAVX512R8V2}, {4, baselineAVX512R4V2}, {2, baselineAVX512R2V2}}, {{8, baselineAVX512R8V1}, {2, baselineAVX512R2V1}}}
@@ -117,6 +125,7 @@ func init() {
 	tilesAVX51264[fusedFree] = [2][]shape[float64]{{{8, fusedFreeAVX512R8V2}, {4, fusedFreeAVX512R4V2}, {2, fusedFreeAVX512R2V2}}, {{8, fusedFreeAVX512R8V1}, {2, fusedFreeAVX512R2V1}}}
 	tilesAVX51264[stochasticWide] = [2][]shape[float64]{{{4, stochasticWideAVX512R4V2}, {2, stochasticWideAVX512R2V2}}, {{8, stochasticWideAVX512R8V1}, {2, stochasticWideAVX512R2V1}}}
 	tilesAVX51264[stochasticProduct] = [2][]shape[float64]{{{4, stochasticProductAVX512R4V2}, {2, stochasticProductAVX512R2V2}}, {{8, stochasticProductAVX512R8V1}, {2, stochasticProductAVX512R2V1}}}
+	tilesAVX51264[stochasticBoth] = [2][]shape[float64]{{{4, stochasticBothAVX512R4V2}, {2, stochasticBothAVX512R2V2}}, {{4, stochasticBothAVX512R4V1}, {2, stochasticBothAVX512R2V1}}}
 	tilesAVX51264[baseline64] = [2][]shape[float64]{{{8, baseline64AVX512R8V2}, {4, baseline64AVX512R4V2}, {2, baseline64AVX512R2V2}}, {{8, baseline64AVX512R8V1}, {2, baseline64AVX512R2V1}}}
 	tilesAVX51264[fmaChain64] = [2][]shape[float64]{{{8, fmaChain64AVX512R8V2}, {4, fmaChain64AVX512R4V2}, {2, fmaChain64AVX512R2V2}}, {{8, fmaChain64AVX512R8V1}, {2, fmaChain64AVX512R2V1}}}
 }

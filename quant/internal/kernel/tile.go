@@ -31,6 +31,8 @@ type Tile[L lanes] struct {
 	FinalRow int       //
 	Flags    []uint8   // one a group
 	C        *Constants
+	TermR    []uint32 // as R and V, of the rounding of products
+	TermV    []uint32
 	Rows     int // the kernel's rows and width; the portable loops read them
 	Width    int
 	numbers  *numbers[L] // scratch of the portable loops
@@ -85,6 +87,9 @@ type Constants struct {
 	Quantum       vector // 2^-m
 	Limit         vector // sums of this magnitude are handed back
 	Ones          vector // 1, as an integer
-
-	_ [64]byte // keeps the size a multiple of the cache line that Go allocates aligned
+	TermKeep      vector // as Keep, RandomMask, RandomShift, RandomHalf and Limit, of products
+	TermMask      vector
+	TermShift     vector
+	TermHalf      vector
+	TermLimit     vector
 }

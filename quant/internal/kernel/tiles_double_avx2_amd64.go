@@ -88,6 +88,24 @@ func stochasticProductAVX2R8V1(t *Tile[float64])
 //go:noescape
 func stochasticProductAVX2R2V1(t *Tile[float64])
 
+// stochasticBothAVX2R2V3 is the loop s = S(s + R(a b)), R and S stochastic, S of the exact sum, terms ascending.
+// It keeps a tile of 2 x 12 sums in registers.
+//
+//go:noescape
+func stochasticBothAVX2R2V3(t *Tile[float64])
+
+// stochasticBothAVX2R4V1 is the loop s = S(s + R(a b)), R and S stochastic, S of the exact sum, terms ascending.
+// It keeps a tile of 4 x 4 sums in registers.
+//
+//go:noescape
+func stochasticBothAVX2R4V1(t *Tile[float64])
+
+// stochasticBothAVX2R2V1 is the loop s = S(s + R(a b)), R and S stochastic, S of the exact sum, terms ascending.
+// It keeps a tile of 2 x 4 sums in registers.
+//
+//go:noescape
+func stochasticBothAVX2R2V1(t *Tile[float64])
+
 // baseline64AVX2R2V3 is the loop s = binary64(s + binary64(a b)), terms ascending.
 // It keeps a tile of 2 x 12 sums in registers.
 //

@@ -3476,6 +3476,1186 @@ stored:
 	VZEROUPPER
 	RET
 
+// func stochasticBothAVX2R2V3(t *Tile[float64])
+// Requires: AVX, AVX2, FMA3, SSE
+TEXT ·stochasticBothAVX2R2V3(SB), $72-8
+	MOVQ    t+0(FP), AX
+	MOVQ    240(AX), CX
+	STMXCSR (SP)
+	MOVL    (SP), DX
+	ORL     $0x00006000, DX
+	MOVL    DX, 4(SP)
+	LDMXCSR 4(SP)
+	MOVQ    8(AX), DX
+	MOVQ    DX, 8(SP)
+	MOVQ    120(AX), DX
+	MOVQ    DX, 16(SP)
+	MOVQ    152(AX), DX
+	MOVQ    DX, 24(SP)
+	MOVQ    216(AX), DX
+	MOVQ    DX, 32(SP)
+	MOVQ    16(AX), DX
+	MOVQ    DX, 40(SP)
+	MOVQ    72(AX), DX
+	MOVQ    DX, 48(SP)
+	MOVQ    248(AX), DX
+	MOVQ    DX, 56(SP)
+	MOVQ    184(AX), DX
+	MOVQ    DX, 64(SP)
+
+group:
+	MOVQ         16(SP), DX
+	MOVQ         144(AX), BX
+	VMOVUPD      (DX), Y0
+	VMULPD       576(CX), Y0, Y0
+	VMOVUPD      32(DX), Y1
+	VMULPD       576(CX), Y1, Y1
+	VMOVUPD      64(DX), Y2
+	VMULPD       576(CX), Y2, Y2
+	LEAQ         (DX)(BX*8), DX
+	VMOVUPD      (DX), Y3
+	VMULPD       576(CX), Y3, Y3
+	VMOVUPD      32(DX), Y4
+	VMULPD       576(CX), Y4, Y4
+	VMOVUPD      64(DX), Y5
+	VMULPD       576(CX), Y5, Y5
+	LEAQ         (DX)(BX*8), DX
+	MOVQ         DX, 16(SP)
+	VPXOR        Y6, Y6, Y6
+	VPXOR        Y7, Y7, Y7
+	MOVQ         40(AX), DX
+	MOVQ         40(SP), BX
+	LEAQ         (BX)(DX*8), DX
+	MOVQ         DX, 40(SP)
+	MOVQ         40(AX), DX
+	MOVQ         48(SP), SI
+	LEAQ         (SI)(DX*4), DX
+	MOVQ         DX, 48(SP)
+	MOVQ         96(AX), DX
+	MOVQ         40(AX), DI
+	MOVQ         56(SP), R8
+	LEAQ         (R8)(DI*4), DI
+	MOVQ         DI, 56(SP)
+	MOVQ         272(AX), DI
+	MOVQ         48(AX), R9
+	MOVQ         (AX), R10
+	ADDQ         R10, R10
+	XORQ         R11, R11
+	VBROADCASTSD (BX)(R11*8), Y8
+	VPBROADCASTD (SI)(R11*4), Y9
+	VPBROADCASTD (R8)(R11*4), Y10
+	VPMOVZXDQ    (DI), Y12
+	VPMADDWD     Y12, Y10, Y12
+	VPMOVZXDQ    (DX), Y13
+	VPMADDWD     Y13, Y9, Y13
+	VMULPD       (R9), Y8, Y11
+	VANDPD       128(CX), Y11, Y14
+	VMAXPD       Y14, Y7, Y7
+	VCMPPD       $0x11, 192(CX), Y14, Y14
+	VANDPD       192(CX), Y14, Y14
+	VANDPD       64(CX), Y11, Y15
+	VORPD        Y15, Y14, Y14
+	VADDPD       Y14, Y11, Y11
+	VPSLLVQ      1600(CX), Y12, Y12
+	VPAND        1536(CX), Y12, Y12
+	VPOR         1664(CX), Y12, Y12
+	VPADDQ       Y12, Y11, Y11
+	VPAND        1472(CX), Y11, Y11
+	VSUBPD       Y14, Y11, Y11
+	VADDPD       Y11, Y0, Y0
+	VANDPD       128(CX), Y0, Y11
+	VMAXPD       Y11, Y6, Y6
+	VCMPPD       $0x11, 384(CX), Y11, Y11
+	VANDPD       384(CX), Y11, Y11
+	VANDPD       64(CX), Y0, Y12
+	VORPD        Y12, Y11, Y11
+	VADDPD       Y11, Y0, Y0
+	VPSLLVQ      832(CX), Y13, Y13
+	VPAND        768(CX), Y13, Y13
+	VPOR         896(CX), Y13, Y13
+	VPADDQ       Y13, Y0, Y0
+	VPAND        704(CX), Y0, Y0
+	VSUBPD       Y11, Y0, Y0
+	VPMOVZXDQ    16(DI), Y12
+	VPMADDWD     Y12, Y10, Y12
+	VPMOVZXDQ    16(DX), Y13
+	VPMADDWD     Y13, Y9, Y13
+	VMULPD       32(R9), Y8, Y11
+	VANDPD       128(CX), Y11, Y14
+	VMAXPD       Y14, Y7, Y7
+	VCMPPD       $0x11, 192(CX), Y14, Y14
+	VANDPD       192(CX), Y14, Y14
+	VANDPD       64(CX), Y11, Y15
+	VORPD        Y15, Y14, Y14
+	VADDPD       Y14, Y11, Y11
+	VPSLLVQ      1600(CX), Y12, Y12
+	VPAND        1536(CX), Y12, Y12
+	VPOR         1664(CX), Y12, Y12
+	VPADDQ       Y12, Y11, Y11
+	VPAND        1472(CX), Y11, Y11
+	VSUBPD       Y14, Y11, Y11
+	VADDPD       Y11, Y1, Y1
+	VANDPD       128(CX), Y1, Y11
+	VMAXPD       Y11, Y6, Y6
+	VCMPPD       $0x11, 384(CX), Y11, Y11
+	VANDPD       384(CX), Y11, Y11
+	VANDPD       64(CX), Y1, Y12
+	VORPD        Y12, Y11, Y11
+	VADDPD       Y11, Y1, Y1
+	VPSLLVQ      832(CX), Y13, Y13
+	VPAND        768(CX), Y13, Y13
+	VPOR         896(CX), Y13, Y13
+	VPADDQ       Y13, Y1, Y1
+	VPAND        704(CX), Y1, Y1
+	VSUBPD       Y11, Y1, Y1
+	VPMOVZXDQ    32(DI), Y11
+	VPMADDWD     Y11, Y10, Y11
+	VPMOVZXDQ    32(DX), Y10
+	VPMADDWD     Y10, Y9, Y10
+	VMULPD       64(R9), Y8, Y8
+	VANDPD       128(CX), Y8, Y9
+	VMAXPD       Y9, Y7, Y7
+	VCMPPD       $0x11, 192(CX), Y9, Y9
+	VANDPD       192(CX), Y9, Y9
+	VANDPD       64(CX), Y8, Y12
+	VORPD        Y12, Y9, Y9
+	VADDPD       Y9, Y8, Y8
+	VPSLLVQ      1600(CX), Y11, Y11
+	VPAND        1536(CX), Y11, Y11
+	VPOR         1664(CX), Y11, Y11
+	VPADDQ       Y11, Y8, Y8
+	VPAND        1472(CX), Y8, Y8
+	VSUBPD       Y9, Y8, Y8
+	VADDPD       Y8, Y2, Y2
+	VANDPD       128(CX), Y2, Y8
+	VMAXPD       Y8, Y6, Y6
+	VCMPPD       $0x11, 384(CX), Y8, Y8
+	VANDPD       384(CX), Y8, Y8
+	VANDPD       64(CX), Y2, Y9
+	VORPD        Y9, Y8, Y8
+	VADDPD       Y8, Y2, Y2
+	VPSLLVQ      832(CX), Y10, Y10
+	VPAND        768(CX), Y10, Y10
+	VPOR         896(CX), Y10, Y10
+	VPADDQ       Y10, Y2, Y2
+	VPAND        704(CX), Y2, Y2
+	VSUBPD       Y8, Y2, Y2
+	VBROADCASTSD 8(BX)(R11*8), Y8
+	VPBROADCASTD 4(SI)(R11*4), Y9
+	VPBROADCASTD 4(R8)(R11*4), Y10
+	VPMOVZXDQ    (DI), Y12
+	VPMADDWD     Y12, Y10, Y12
+	VPMOVZXDQ    (DX), Y13
+	VPMADDWD     Y13, Y9, Y13
+	VMULPD       (R9), Y8, Y11
+	VANDPD       128(CX), Y11, Y14
+	VMAXPD       Y14, Y7, Y7
+	VCMPPD       $0x11, 192(CX), Y14, Y14
+	VANDPD       192(CX), Y14, Y14
+	VANDPD       64(CX), Y11, Y15
+	VORPD        Y15, Y14, Y14
+	VADDPD       Y14, Y11, Y11
+	VPSLLVQ      1600(CX), Y12, Y12
+	VPAND        1536(CX), Y12, Y12
+	VPOR         1664(CX), Y12, Y12
+	VPADDQ       Y12, Y11, Y11
+	VPAND        1472(CX), Y11, Y11
+	VSUBPD       Y14, Y11, Y11
+	VADDPD       Y11, Y3, Y3
+	VANDPD       128(CX), Y3, Y11
+	VMAXPD       Y11, Y6, Y6
+	VCMPPD       $0x11, 384(CX), Y11, Y11
+	VANDPD       384(CX), Y11, Y11
+	VANDPD       64(CX), Y3, Y12
+	VORPD        Y12, Y11, Y11
+	VADDPD       Y11, Y3, Y3
+	VPSLLVQ      832(CX), Y13, Y13
+	VPAND        768(CX), Y13, Y13
+	VPOR         896(CX), Y13, Y13
+	VPADDQ       Y13, Y3, Y3
+	VPAND        704(CX), Y3, Y3
+	VSUBPD       Y11, Y3, Y3
+	VPMOVZXDQ    16(DI), Y12
+	VPMADDWD     Y12, Y10, Y12
+	VPMOVZXDQ    16(DX), Y13
+	VPMADDWD     Y13, Y9, Y13
+	VMULPD       32(R9), Y8, Y11
+	VANDPD       128(CX), Y11, Y14
+	VMAXPD       Y14, Y7, Y7
+	VCMPPD       $0x11, 192(CX), Y14, Y14
+	VANDPD       192(CX), Y14, Y14
+	VANDPD       64(CX), Y11, Y15
+	VORPD        Y15, Y14, Y14
+	VADDPD       Y14, Y11, Y11
+	VPSLLVQ      1600(CX), Y12, Y12
+	VPAND        1536(CX), Y12, Y12
+	VPOR         1664(CX), Y12, Y12
+	VPADDQ       Y12, Y11, Y11
+	VPAND        1472(CX), Y11, Y11
+	VSUBPD       Y14, Y11, Y11
+	VADDPD       Y11, Y4, Y4
+	VANDPD       128(CX), Y4, Y11
+	VMAXPD       Y11, Y6, Y6
+	VCMPPD       $0x11, 384(CX), Y11, Y11
+	VANDPD       384(CX), Y11, Y11
+	VANDPD       64(CX), Y4, Y12
+	VORPD        Y12, Y11, Y11
+	VADDPD       Y11, Y4, Y4
+	VPSLLVQ      832(CX), Y13, Y13
+	VPAND        768(CX), Y13, Y13
+	VPOR         896(CX), Y13, Y13
+	VPADDQ       Y13, Y4, Y4
+	VPAND        704(CX), Y4, Y4
+	VSUBPD       Y11, Y4, Y4
+	VPMOVZXDQ    32(DI), Y11
+	VPMADDWD     Y11, Y10, Y11
+	VPMOVZXDQ    32(DX), Y10
+	VPMADDWD     Y10, Y9, Y10
+	VMULPD       64(R9), Y8, Y8
+	VANDPD       128(CX), Y8, Y9
+	VMAXPD       Y9, Y7, Y7
+	VCMPPD       $0x11, 192(CX), Y9, Y9
+	VANDPD       192(CX), Y9, Y9
+	VANDPD       64(CX), Y8, Y12
+	VORPD        Y12, Y9, Y9
+	VADDPD       Y9, Y8, Y8
+	VPSLLVQ      1600(CX), Y11, Y11
+	VPAND        1536(CX), Y11, Y11
+	VPOR         1664(CX), Y11, Y11
+	VPADDQ       Y11, Y8, Y8
+	VPAND        1472(CX), Y8, Y8
+	VSUBPD       Y9, Y8, Y8
+	VADDPD       Y8, Y5, Y5
+	VANDPD       128(CX), Y5, Y8
+	VMAXPD       Y8, Y6, Y6
+	VCMPPD       $0x11, 384(CX), Y8, Y8
+	VANDPD       384(CX), Y8, Y8
+	VANDPD       64(CX), Y5, Y9
+	VORPD        Y9, Y8, Y8
+	VADDPD       Y8, Y5, Y5
+	VPSLLVQ      832(CX), Y10, Y10
+	VPAND        768(CX), Y10, Y10
+	VPOR         896(CX), Y10, Y10
+	VPADDQ       Y10, Y5, Y5
+	VPAND        704(CX), Y5, Y5
+	VSUBPD       Y8, Y5, Y5
+	ADDQ         $0x00000060, R9
+	ADDQ         $0x00000030, DX
+	ADDQ         $0x00000030, DI
+	ADDQ         $0x02, R11
+	CMPQ         R11, R10
+	JGE          last
+
+term:
+	VBROADCASTSD (BX)(R11*8), Y8
+	VPBROADCASTD (SI)(R11*4), Y9
+	VPBROADCASTD (R8)(R11*4), Y10
+	VPMOVZXDQ    (DI), Y12
+	VPMADDWD     Y12, Y10, Y12
+	VPMOVZXDQ    (DX), Y13
+	VPMADDWD     Y13, Y9, Y13
+	VMULPD       (R9), Y8, Y11
+	VANDPD       128(CX), Y11, Y14
+	VMAXPD       Y14, Y7, Y7
+	VCMPPD       $0x11, 192(CX), Y14, Y14
+	VANDPD       192(CX), Y14, Y14
+	VANDPD       64(CX), Y11, Y15
+	VORPD        Y15, Y14, Y14
+	VADDPD       Y14, Y11, Y11
+	VPSLLVQ      1600(CX), Y12, Y12
+	VPAND        1536(CX), Y12, Y12
+	VPOR         1664(CX), Y12, Y12
+	VPADDQ       Y12, Y11, Y11
+	VPAND        1472(CX), Y11, Y11
+	VSUBPD       Y14, Y11, Y11
+	VADDPD       Y11, Y0, Y0
+	VANDPD       128(CX), Y0, Y11
+	VMAXPD       Y11, Y6, Y6
+	VCMPPD       $0x11, 384(CX), Y11, Y11
+	VANDPD       384(CX), Y11, Y11
+	VANDPD       64(CX), Y0, Y12
+	VORPD        Y12, Y11, Y11
+	VADDPD       Y11, Y0, Y0
+	VPSLLVQ      832(CX), Y13, Y13
+	VPAND        768(CX), Y13, Y13
+	VPOR         896(CX), Y13, Y13
+	VPADDQ       Y13, Y0, Y0
+	VPAND        704(CX), Y0, Y0
+	VSUBPD       Y11, Y0, Y0
+	VPMOVZXDQ    16(DI), Y12
+	VPMADDWD     Y12, Y10, Y12
+	VPMOVZXDQ    16(DX), Y13
+	VPMADDWD     Y13, Y9, Y13
+	VMULPD       32(R9), Y8, Y11
+	VANDPD       128(CX), Y11, Y14
+	VMAXPD       Y14, Y7, Y7
+	VCMPPD       $0x11, 192(CX), Y14, Y14
+	VANDPD       192(CX), Y14, Y14
+	VANDPD       64(CX), Y11, Y15
+	VORPD        Y15, Y14, Y14
+	VADDPD       Y14, Y11, Y11
+	VPSLLVQ      1600(CX), Y12, Y12
+	VPAND        1536(CX), Y12, Y12
+	VPOR         1664(CX), Y12, Y12
+	VPADDQ       Y12, Y11, Y11
+	VPAND        1472(CX), Y11, Y11
+	VSUBPD       Y14, Y11, Y11
+	VADDPD       Y11, Y1, Y1
+	VANDPD       128(CX), Y1, Y11
+	VMAXPD       Y11, Y6, Y6
+	VCMPPD       $0x11, 384(CX), Y11, Y11
+	VANDPD       384(CX), Y11, Y11
+	VANDPD       64(CX), Y1, Y12
+	VORPD        Y12, Y11, Y11
+	VADDPD       Y11, Y1, Y1
+	VPSLLVQ      832(CX), Y13, Y13
+	VPAND        768(CX), Y13, Y13
+	VPOR         896(CX), Y13, Y13
+	VPADDQ       Y13, Y1, Y1
+	VPAND        704(CX), Y1, Y1
+	VSUBPD       Y11, Y1, Y1
+	VPMOVZXDQ    32(DI), Y11
+	VPMADDWD     Y11, Y10, Y11
+	VPMOVZXDQ    32(DX), Y10
+	VPMADDWD     Y10, Y9, Y10
+	VMULPD       64(R9), Y8, Y8
+	VANDPD       128(CX), Y8, Y9
+	VMAXPD       Y9, Y7, Y7
+	VCMPPD       $0x11, 192(CX), Y9, Y9
+	VANDPD       192(CX), Y9, Y9
+	VANDPD       64(CX), Y8, Y12
+	VORPD        Y12, Y9, Y9
+	VADDPD       Y9, Y8, Y8
+	VPSLLVQ      1600(CX), Y11, Y11
+	VPAND        1536(CX), Y11, Y11
+	VPOR         1664(CX), Y11, Y11
+	VPADDQ       Y11, Y8, Y8
+	VPAND        1472(CX), Y8, Y8
+	VSUBPD       Y9, Y8, Y8
+	VADDPD       Y8, Y2, Y2
+	VANDPD       128(CX), Y2, Y8
+	VMAXPD       Y8, Y6, Y6
+	VCMPPD       $0x11, 384(CX), Y8, Y8
+	VANDPD       384(CX), Y8, Y8
+	VANDPD       64(CX), Y2, Y9
+	VORPD        Y9, Y8, Y8
+	VADDPD       Y8, Y2, Y2
+	VPSLLVQ      832(CX), Y10, Y10
+	VPAND        768(CX), Y10, Y10
+	VPOR         896(CX), Y10, Y10
+	VPADDQ       Y10, Y2, Y2
+	VPAND        704(CX), Y2, Y2
+	VSUBPD       Y8, Y2, Y2
+	VBROADCASTSD 8(BX)(R11*8), Y8
+	VPBROADCASTD 4(SI)(R11*4), Y9
+	VPBROADCASTD 4(R8)(R11*4), Y10
+	VPMOVZXDQ    (DI), Y12
+	VPMADDWD     Y12, Y10, Y12
+	VPMOVZXDQ    (DX), Y13
+	VPMADDWD     Y13, Y9, Y13
+	VMULPD       (R9), Y8, Y11
+	VANDPD       128(CX), Y11, Y14
+	VMAXPD       Y14, Y7, Y7
+	VCMPPD       $0x11, 192(CX), Y14, Y14
+	VANDPD       192(CX), Y14, Y14
+	VANDPD       64(CX), Y11, Y15
+	VORPD        Y15, Y14, Y14
+	VADDPD       Y14, Y11, Y11
+	VPSLLVQ      1600(CX), Y12, Y12
+	VPAND        1536(CX), Y12, Y12
+	VPOR         1664(CX), Y12, Y12
+	VPADDQ       Y12, Y11, Y11
+	VPAND        1472(CX), Y11, Y11
+	VSUBPD       Y14, Y11, Y11
+	VADDPD       Y11, Y3, Y3
+	VANDPD       128(CX), Y3, Y11
+	VMAXPD       Y11, Y6, Y6
+	VCMPPD       $0x11, 384(CX), Y11, Y11
+	VANDPD       384(CX), Y11, Y11
+	VANDPD       64(CX), Y3, Y12
+	VORPD        Y12, Y11, Y11
+	VADDPD       Y11, Y3, Y3
+	VPSLLVQ      832(CX), Y13, Y13
+	VPAND        768(CX), Y13, Y13
+	VPOR         896(CX), Y13, Y13
+	VPADDQ       Y13, Y3, Y3
+	VPAND        704(CX), Y3, Y3
+	VSUBPD       Y11, Y3, Y3
+	VPMOVZXDQ    16(DI), Y12
+	VPMADDWD     Y12, Y10, Y12
+	VPMOVZXDQ    16(DX), Y13
+	VPMADDWD     Y13, Y9, Y13
+	VMULPD       32(R9), Y8, Y11
+	VANDPD       128(CX), Y11, Y14
+	VMAXPD       Y14, Y7, Y7
+	VCMPPD       $0x11, 192(CX), Y14, Y14
+	VANDPD       192(CX), Y14, Y14
+	VANDPD       64(CX), Y11, Y15
+	VORPD        Y15, Y14, Y14
+	VADDPD       Y14, Y11, Y11
+	VPSLLVQ      1600(CX), Y12, Y12
+	VPAND        1536(CX), Y12, Y12
+	VPOR         1664(CX), Y12, Y12
+	VPADDQ       Y12, Y11, Y11
+	VPAND        1472(CX), Y11, Y11
+	VSUBPD       Y14, Y11, Y11
+	VADDPD       Y11, Y4, Y4
+	VANDPD       128(CX), Y4, Y11
+	VMAXPD       Y11, Y6, Y6
+	VCMPPD       $0x11, 384(CX), Y11, Y11
+	VANDPD       384(CX), Y11, Y11
+	VANDPD       64(CX), Y4, Y12
+	VORPD        Y12, Y11, Y11
+	VADDPD       Y11, Y4, Y4
+	VPSLLVQ      832(CX), Y13, Y13
+	VPAND        768(CX), Y13, Y13
+	VPOR         896(CX), Y13, Y13
+	VPADDQ       Y13, Y4, Y4
+	VPAND        704(CX), Y4, Y4
+	VSUBPD       Y11, Y4, Y4
+	VPMOVZXDQ    32(DI), Y11
+	VPMADDWD     Y11, Y10, Y11
+	VPMOVZXDQ    32(DX), Y10
+	VPMADDWD     Y10, Y9, Y10
+	VMULPD       64(R9), Y8, Y8
+	VANDPD       128(CX), Y8, Y9
+	VMAXPD       Y9, Y7, Y7
+	VCMPPD       $0x11, 192(CX), Y9, Y9
+	VANDPD       192(CX), Y9, Y9
+	VANDPD       64(CX), Y8, Y12
+	VORPD        Y12, Y9, Y9
+	VADDPD       Y9, Y8, Y8
+	VPSLLVQ      1600(CX), Y11, Y11
+	VPAND        1536(CX), Y11, Y11
+	VPOR         1664(CX), Y11, Y11
+	VPADDQ       Y11, Y8, Y8
+	VPAND        1472(CX), Y8, Y8
+	VSUBPD       Y9, Y8, Y8
+	VADDPD       Y8, Y5, Y5
+	VANDPD       128(CX), Y5, Y8
+	VMAXPD       Y8, Y6, Y6
+	VCMPPD       $0x11, 384(CX), Y8, Y8
+	VANDPD       384(CX), Y8, Y8
+	VANDPD       64(CX), Y5, Y9
+	VORPD        Y9, Y8, Y8
+	VADDPD       Y8, Y5, Y5
+	VPSLLVQ      832(CX), Y10, Y10
+	VPAND        768(CX), Y10, Y10
+	VPOR         896(CX), Y10, Y10
+	VPADDQ       Y10, Y5, Y5
+	VPAND        704(CX), Y5, Y5
+	VSUBPD       Y8, Y5, Y5
+	ADDQ         $0x00000060, R9
+	ADDQ         $0x00000030, DX
+	ADDQ         $0x00000030, DI
+	ADDQ         $0x02, R11
+	CMPQ         R11, R10
+	JLT          term
+
+last:
+	VMOVUPD     640(CX), Y8
+	VPXOR       Y9, Y9, Y9
+	VPXOR       Y10, Y10, Y10
+	VCMPPD      $0x05, 1344(CX), Y6, Y6
+	VORPD       Y6, Y0, Y0
+	VORPD       Y6, Y1, Y1
+	VORPD       Y6, Y2, Y2
+	VORPD       Y6, Y3, Y3
+	VORPD       Y6, Y4, Y4
+	VORPD       Y6, Y5, Y5
+	VCMPPD      $0x05, 1728(CX), Y7, Y7
+	VORPD       Y7, Y0, Y0
+	VORPD       Y7, Y1, Y1
+	VORPD       Y7, Y2, Y2
+	VORPD       Y7, Y3, Y3
+	VORPD       Y7, Y4, Y4
+	VORPD       Y7, Y5, Y5
+	VFMADD231PD Y9, Y0, Y10
+	VMULPD      Y8, Y0, Y0
+	VADDPD      Y9, Y0, Y0
+	VFMADD231PD Y9, Y1, Y10
+	VMULPD      Y8, Y1, Y1
+	VADDPD      Y9, Y1, Y1
+	VFMADD231PD Y9, Y2, Y10
+	VMULPD      Y8, Y2, Y2
+	VADDPD      Y9, Y2, Y2
+	VFMADD231PD Y9, Y3, Y10
+	VMULPD      Y8, Y3, Y3
+	VADDPD      Y9, Y3, Y3
+	VFMADD231PD Y9, Y4, Y10
+	VMULPD      Y8, Y4, Y4
+	VADDPD      Y9, Y4, Y4
+	VFMADD231PD Y9, Y5, Y10
+	VMULPD      Y8, Y5, Y5
+	VADDPD      Y9, Y5, Y5
+	CMPQ        64(SP), $0x00
+	JNE         narrow
+	MOVQ        24(SP), DX
+	MOVQ        176(AX), BX
+	VMOVUPD     Y0, (DX)
+	VMOVUPD     Y1, 32(DX)
+	VMOVUPD     Y2, 64(DX)
+	LEAQ        (DX)(BX*8), DX
+	VMOVUPD     Y3, (DX)
+	VMOVUPD     Y4, 32(DX)
+	VMOVUPD     Y5, 64(DX)
+	LEAQ        (DX)(BX*8), DX
+	MOVQ        DX, 24(SP)
+	JMP         stored
+
+narrow:
+	MOVQ       64(SP), DX
+	MOVQ       208(AX), BX
+	VCVTPD2PSY Y0, X0
+	VMOVUPS    X0, (DX)
+	VCVTPD2PSY Y1, X1
+	VMOVUPS    X1, 16(DX)
+	VCVTPD2PSY Y2, X2
+	VMOVUPS    X2, 32(DX)
+	LEAQ       (DX)(BX*4), DX
+	VCVTPD2PSY Y3, X3
+	VMOVUPS    X3, (DX)
+	VCVTPD2PSY Y4, X4
+	VMOVUPS    X4, 16(DX)
+	VCVTPD2PSY Y5, X5
+	VMOVUPS    X5, 32(DX)
+	LEAQ       (DX)(BX*4), DX
+	MOVQ       DX, 64(SP)
+
+stored:
+	VCMPPD    $0x03, Y10, Y10, Y10
+	VMOVMSKPD Y10, DX
+	TESTL     DX, DX
+	MOVQ      32(SP), DX
+	SETNE     (DX)
+	INCQ      32(SP)
+	DECQ      8(SP)
+	JNZ       group
+	LDMXCSR   (SP)
+	VZEROUPPER
+	RET
+
+// func stochasticBothAVX2R4V1(t *Tile[float64])
+// Requires: AVX, AVX2, FMA3, SSE
+TEXT ·stochasticBothAVX2R4V1(SB), $72-8
+	MOVQ    t+0(FP), AX
+	MOVQ    240(AX), CX
+	VMOVUPD 64(CX), Y0
+	VMOVUPD 128(CX), Y1
+	STMXCSR (SP)
+	MOVL    (SP), DX
+	ORL     $0x00006000, DX
+	MOVL    DX, 4(SP)
+	LDMXCSR 4(SP)
+	MOVQ    8(AX), DX
+	MOVQ    DX, 8(SP)
+	MOVQ    120(AX), DX
+	MOVQ    DX, 16(SP)
+	MOVQ    152(AX), DX
+	MOVQ    DX, 24(SP)
+	MOVQ    216(AX), DX
+	MOVQ    DX, 32(SP)
+	MOVQ    16(AX), DX
+	MOVQ    DX, 40(SP)
+	MOVQ    72(AX), DX
+	MOVQ    DX, 48(SP)
+	MOVQ    248(AX), DX
+	MOVQ    DX, 56(SP)
+	MOVQ    184(AX), DX
+	MOVQ    DX, 64(SP)
+
+group:
+	MOVQ         16(SP), DX
+	MOVQ         144(AX), BX
+	VMOVUPD      (DX), Y2
+	VMULPD       576(CX), Y2, Y2
+	LEAQ         (DX)(BX*8), DX
+	VMOVUPD      (DX), Y3
+	VMULPD       576(CX), Y3, Y3
+	LEAQ         (DX)(BX*8), DX
+	VMOVUPD      (DX), Y4
+	VMULPD       576(CX), Y4, Y4
+	LEAQ         (DX)(BX*8), DX
+	VMOVUPD      (DX), Y5
+	VMULPD       576(CX), Y5, Y5
+	LEAQ         (DX)(BX*8), DX
+	MOVQ         DX, 16(SP)
+	VPXOR        Y6, Y6, Y6
+	VPXOR        Y7, Y7, Y7
+	MOVQ         40(AX), DX
+	MOVQ         40(SP), BX
+	LEAQ         (BX)(DX*8), SI
+	LEAQ         (SI)(DX*8), DX
+	MOVQ         DX, 40(SP)
+	MOVQ         40(AX), DX
+	MOVQ         48(SP), DI
+	LEAQ         (DI)(DX*4), R8
+	LEAQ         (R8)(DX*4), DX
+	MOVQ         DX, 48(SP)
+	MOVQ         96(AX), DX
+	MOVQ         40(AX), R9
+	MOVQ         56(SP), R10
+	LEAQ         (R10)(R9*4), R11
+	LEAQ         (R11)(R9*4), R9
+	MOVQ         R9, 56(SP)
+	MOVQ         272(AX), R9
+	MOVQ         48(AX), R12
+	MOVQ         (AX), R13
+	ADDQ         R13, R13
+	XORQ         R14, R14
+	VBROADCASTSD (BX)(R14*8), Y8
+	VPBROADCASTD (DI)(R14*4), Y9
+	VPBROADCASTD (R10)(R14*4), Y10
+	VPMOVZXDQ    (R9), Y11
+	VPMADDWD     Y11, Y10, Y11
+	VPMOVZXDQ    (DX), Y10
+	VPMADDWD     Y10, Y9, Y10
+	VMULPD       (R12), Y8, Y8
+	VANDPD       Y1, Y8, Y9
+	VMAXPD       Y9, Y7, Y7
+	VCMPPD       $0x11, 192(CX), Y9, Y9
+	VANDPD       192(CX), Y9, Y9
+	VANDPD       Y0, Y8, Y12
+	VORPD        Y12, Y9, Y9
+	VADDPD       Y9, Y8, Y8
+	VPSLLVQ      1600(CX), Y11, Y11
+	VPAND        1536(CX), Y11, Y11
+	VPOR         1664(CX), Y11, Y11
+	VPADDQ       Y11, Y8, Y8
+	VPAND        1472(CX), Y8, Y8
+	VSUBPD       Y9, Y8, Y8
+	VADDPD       Y8, Y2, Y2
+	VANDPD       Y1, Y2, Y8
+	VMAXPD       Y8, Y6, Y6
+	VCMPPD       $0x11, 384(CX), Y8, Y8
+	VANDPD       384(CX), Y8, Y8
+	VANDPD       Y0, Y2, Y9
+	VORPD        Y9, Y8, Y8
+	VADDPD       Y8, Y2, Y2
+	VPSLLVQ      832(CX), Y10, Y10
+	VPAND        768(CX), Y10, Y10
+	VPOR         896(CX), Y10, Y10
+	VPADDQ       Y10, Y2, Y2
+	VPAND        704(CX), Y2, Y2
+	VSUBPD       Y8, Y2, Y2
+	VBROADCASTSD 8(BX)(R14*8), Y8
+	VPBROADCASTD 4(DI)(R14*4), Y9
+	VPBROADCASTD 4(R10)(R14*4), Y10
+	VPMOVZXDQ    (R9), Y11
+	VPMADDWD     Y11, Y10, Y11
+	VPMOVZXDQ    (DX), Y10
+	VPMADDWD     Y10, Y9, Y10
+	VMULPD       (R12), Y8, Y8
+	VANDPD       Y1, Y8, Y9
+	VMAXPD       Y9, Y7, Y7
+	VCMPPD       $0x11, 192(CX), Y9, Y9
+	VANDPD       192(CX), Y9, Y9
+	VANDPD       Y0, Y8, Y12
+	VORPD        Y12, Y9, Y9
+	VADDPD       Y9, Y8, Y8
+	VPSLLVQ      1600(CX), Y11, Y11
+	VPAND        1536(CX), Y11, Y11
+	VPOR         1664(CX), Y11, Y11
+	VPADDQ       Y11, Y8, Y8
+	VPAND        1472(CX), Y8, Y8
+	VSUBPD       Y9, Y8, Y8
+	VADDPD       Y8, Y3, Y3
+	VANDPD       Y1, Y3, Y8
+	VMAXPD       Y8, Y6, Y6
+	VCMPPD       $0x11, 384(CX), Y8, Y8
+	VANDPD       384(CX), Y8, Y8
+	VANDPD       Y0, Y3, Y9
+	VORPD        Y9, Y8, Y8
+	VADDPD       Y8, Y3, Y3
+	VPSLLVQ      832(CX), Y10, Y10
+	VPAND        768(CX), Y10, Y10
+	VPOR         896(CX), Y10, Y10
+	VPADDQ       Y10, Y3, Y3
+	VPAND        704(CX), Y3, Y3
+	VSUBPD       Y8, Y3, Y3
+	VBROADCASTSD (SI)(R14*8), Y8
+	VPBROADCASTD (R8)(R14*4), Y9
+	VPBROADCASTD (R11)(R14*4), Y10
+	VPMOVZXDQ    (R9), Y11
+	VPMADDWD     Y11, Y10, Y11
+	VPMOVZXDQ    (DX), Y10
+	VPMADDWD     Y10, Y9, Y10
+	VMULPD       (R12), Y8, Y8
+	VANDPD       Y1, Y8, Y9
+	VMAXPD       Y9, Y7, Y7
+	VCMPPD       $0x11, 192(CX), Y9, Y9
+	VANDPD       192(CX), Y9, Y9
+	VANDPD       Y0, Y8, Y12
+	VORPD        Y12, Y9, Y9
+	VADDPD       Y9, Y8, Y8
+	VPSLLVQ      1600(CX), Y11, Y11
+	VPAND        1536(CX), Y11, Y11
+	VPOR         1664(CX), Y11, Y11
+	VPADDQ       Y11, Y8, Y8
+	VPAND        1472(CX), Y8, Y8
+	VSUBPD       Y9, Y8, Y8
+	VADDPD       Y8, Y4, Y4
+	VANDPD       Y1, Y4, Y8
+	VMAXPD       Y8, Y6, Y6
+	VCMPPD       $0x11, 384(CX), Y8, Y8
+	VANDPD       384(CX), Y8, Y8
+	VANDPD       Y0, Y4, Y9
+	VORPD        Y9, Y8, Y8
+	VADDPD       Y8, Y4, Y4
+	VPSLLVQ      832(CX), Y10, Y10
+	VPAND        768(CX), Y10, Y10
+	VPOR         896(CX), Y10, Y10
+	VPADDQ       Y10, Y4, Y4
+	VPAND        704(CX), Y4, Y4
+	VSUBPD       Y8, Y4, Y4
+	VBROADCASTSD 8(SI)(R14*8), Y8
+	VPBROADCASTD 4(R8)(R14*4), Y9
+	VPBROADCASTD 4(R11)(R14*4), Y10
+	VPMOVZXDQ    (R9), Y11
+	VPMADDWD     Y11, Y10, Y11
+	VPMOVZXDQ    (DX), Y10
+	VPMADDWD     Y10, Y9, Y10
+	VMULPD       (R12), Y8, Y8
+	VANDPD       Y1, Y8, Y9
+	VMAXPD       Y9, Y7, Y7
+	VCMPPD       $0x11, 192(CX), Y9, Y9
+	VANDPD       192(CX), Y9, Y9
+	VANDPD       Y0, Y8, Y12
+	VORPD        Y12, Y9, Y9
+	VADDPD       Y9, Y8, Y8
+	VPSLLVQ      1600(CX), Y11, Y11
+	VPAND        1536(CX), Y11, Y11
+	VPOR         1664(CX), Y11, Y11
+	VPADDQ       Y11, Y8, Y8
+	VPAND        1472(CX), Y8, Y8
+	VSUBPD       Y9, Y8, Y8
+	VADDPD       Y8, Y5, Y5
+	VANDPD       Y1, Y5, Y8
+	VMAXPD       Y8, Y6, Y6
+	VCMPPD       $0x11, 384(CX), Y8, Y8
+	VANDPD       384(CX), Y8, Y8
+	VANDPD       Y0, Y5, Y9
+	VORPD        Y9, Y8, Y8
+	VADDPD       Y8, Y5, Y5
+	VPSLLVQ      832(CX), Y10, Y10
+	VPAND        768(CX), Y10, Y10
+	VPOR         896(CX), Y10, Y10
+	VPADDQ       Y10, Y5, Y5
+	VPAND        704(CX), Y5, Y5
+	VSUBPD       Y8, Y5, Y5
+	ADDQ         $0x00000020, R12
+	ADDQ         $0x00000010, DX
+	ADDQ         $0x00000010, R9
+	ADDQ         $0x02, R14
+	CMPQ         R14, R13
+	JGE          last
+
+term:
+	VBROADCASTSD (BX)(R14*8), Y8
+	VPBROADCASTD (DI)(R14*4), Y9
+	VPBROADCASTD (R10)(R14*4), Y10
+	VPMOVZXDQ    (R9), Y11
+	VPMADDWD     Y11, Y10, Y11
+	VPMOVZXDQ    (DX), Y10
+	VPMADDWD     Y10, Y9, Y10
+	VMULPD       (R12), Y8, Y8
+	VANDPD       Y1, Y8, Y9
+	VMAXPD       Y9, Y7, Y7
+	VCMPPD       $0x11, 192(CX), Y9, Y9
+	VANDPD       192(CX), Y9, Y9
+	VANDPD       Y0, Y8, Y12
+	VORPD        Y12, Y9, Y9
+	VADDPD       Y9, Y8, Y8
+	VPSLLVQ      1600(CX), Y11, Y11
+	VPAND        1536(CX), Y11, Y11
+	VPOR         1664(CX), Y11, Y11
+	VPADDQ       Y11, Y8, Y8
+	VPAND        1472(CX), Y8, Y8
+	VSUBPD       Y9, Y8, Y8
+	VADDPD       Y8, Y2, Y2
+	VANDPD       Y1, Y2, Y8
+	VMAXPD       Y8, Y6, Y6
+	VCMPPD       $0x11, 384(CX), Y8, Y8
+	VANDPD       384(CX), Y8, Y8
+	VANDPD       Y0, Y2, Y9
+	VORPD        Y9, Y8, Y8
+	VADDPD       Y8, Y2, Y2
+	VPSLLVQ      832(CX), Y10, Y10
+	VPAND        768(CX), Y10, Y10
+	VPOR         896(CX), Y10, Y10
+	VPADDQ       Y10, Y2, Y2
+	VPAND        704(CX), Y2, Y2
+	VSUBPD       Y8, Y2, Y2
+	VBROADCASTSD 8(BX)(R14*8), Y8
+	VPBROADCASTD 4(DI)(R14*4), Y9
+	VPBROADCASTD 4(R10)(R14*4), Y10
+	VPMOVZXDQ    (R9), Y11
+	VPMADDWD     Y11, Y10, Y11
+	VPMOVZXDQ    (DX), Y10
+	VPMADDWD     Y10, Y9, Y10
+	VMULPD       (R12), Y8, Y8
+	VANDPD       Y1, Y8, Y9
+	VMAXPD       Y9, Y7, Y7
+	VCMPPD       $0x11, 192(CX), Y9, Y9
+	VANDPD       192(CX), Y9, Y9
+	VANDPD       Y0, Y8, Y12
+	VORPD        Y12, Y9, Y9
+	VADDPD       Y9, Y8, Y8
+	VPSLLVQ      1600(CX), Y11, Y11
+	VPAND        1536(CX), Y11, Y11
+	VPOR         1664(CX), Y11, Y11
+	VPADDQ       Y11, Y8, Y8
+	VPAND        1472(CX), Y8, Y8
+	VSUBPD       Y9, Y8, Y8
+	VADDPD       Y8, Y3, Y3
+	VANDPD       Y1, Y3, Y8
+	VMAXPD       Y8, Y6, Y6
+	VCMPPD       $0x11, 384(CX), Y8, Y8
+	VANDPD       384(CX), Y8, Y8
+	VANDPD       Y0, Y3, Y9
+	VORPD        Y9, Y8, Y8
+	VADDPD       Y8, Y3, Y3
+	VPSLLVQ      832(CX), Y10, Y10
+	VPAND        768(CX), Y10, Y10
+	VPOR         896(CX), Y10, Y10
+	VPADDQ       Y10, Y3, Y3
+	VPAND        704(CX), Y3, Y3
+	VSUBPD       Y8, Y3, Y3
+	VBROADCASTSD (SI)(R14*8), Y8
+	VPBROADCASTD (R8)(R14*4), Y9
+	VPBROADCASTD (R11)(R14*4), Y10
+	VPMOVZXDQ    (R9), Y11
+	VPMADDWD     Y11, Y10, Y11
+	VPMOVZXDQ    (DX), Y10
+	VPMADDWD     Y10, Y9, Y10
+	VMULPD       (R12), Y8, Y8
+	VANDPD       Y1, Y8, Y9
+	VMAXPD       Y9, Y7, Y7
+	VCMPPD       $0x11, 192(CX), Y9, Y9
+	VANDPD       192(CX), Y9, Y9
+	VANDPD       Y0, Y8, Y12
+	VORPD        Y12, Y9, Y9
+	VADDPD       Y9, Y8, Y8
+	VPSLLVQ      1600(CX), Y11, Y11
+	VPAND        1536(CX), Y11, Y11
+	VPOR         1664(CX), Y11, Y11
+	VPADDQ       Y11, Y8, Y8
+	VPAND        1472(CX), Y8, Y8
+	VSUBPD       Y9, Y8, Y8
+	VADDPD       Y8, Y4, Y4
+	VANDPD       Y1, Y4, Y8
+	VMAXPD       Y8, Y6, Y6
+	VCMPPD       $0x11, 384(CX), Y8, Y8
+	VANDPD       384(CX), Y8, Y8
+	VANDPD       Y0, Y4, Y9
+	VORPD        Y9, Y8, Y8
+	VADDPD       Y8, Y4, Y4
+	VPSLLVQ      832(CX), Y10, Y10
+	VPAND        768(CX), Y10, Y10
+	VPOR         896(CX), Y10, Y10
+	VPADDQ       Y10, Y4, Y4
+	VPAND        704(CX), Y4, Y4
+	VSUBPD       Y8, Y4, Y4
+	VBROADCASTSD 8(SI)(R14*8), Y8
+	VPBROADCASTD 4(R8)(R14*4), Y9
+	VPBROADCASTD 4(R11)(R14*4), Y10
+	VPMOVZXDQ    (R9), Y11
+	VPMADDWD     Y11, Y10, Y11
+	VPMOVZXDQ    (DX), Y10
+	VPMADDWD     Y10, Y9, Y10
+	VMULPD       (R12), Y8, Y8
+	VANDPD       Y1, Y8, Y9
+	VMAXPD       Y9, Y7, Y7
+	VCMPPD       $0x11, 192(CX), Y9, Y9
+	VANDPD       192(CX), Y9, Y9
+	VANDPD       Y0, Y8, Y12
+	VORPD        Y12, Y9, Y9
+	VADDPD       Y9, Y8, Y8
+	VPSLLVQ      1600(CX), Y11, Y11
+	VPAND        1536(CX), Y11, Y11
+	VPOR         1664(CX), Y11, Y11
+	VPADDQ       Y11, Y8, Y8
+	VPAND        1472(CX), Y8, Y8
+	VSUBPD       Y9, Y8, Y8
+	VADDPD       Y8, Y5, Y5
+	VANDPD       Y1, Y5, Y8
+	VMAXPD       Y8, Y6, Y6
+	VCMPPD       $0x11, 384(CX), Y8, Y8
+	VANDPD       384(CX), Y8, Y8
+	VANDPD       Y0, Y5, Y9
+	VORPD        Y9, Y8, Y8
+	VADDPD       Y8, Y5, Y5
+	VPSLLVQ      832(CX), Y10, Y10
+	VPAND        768(CX), Y10, Y10
+	VPOR         896(CX), Y10, Y10
+	VPADDQ       Y10, Y5, Y5
+	VPAND        704(CX), Y5, Y5
+	VSUBPD       Y8, Y5, Y5
+	ADDQ         $0x00000020, R12
+	ADDQ         $0x00000010, DX
+	ADDQ         $0x00000010, R9
+	ADDQ         $0x02, R14
+	CMPQ         R14, R13
+	JLT          term
+
+last:
+	VMOVUPD     640(CX), Y8
+	VPXOR       Y9, Y9, Y9
+	VPXOR       Y10, Y10, Y10
+	VCMPPD      $0x05, 1344(CX), Y6, Y6
+	VORPD       Y6, Y2, Y2
+	VORPD       Y6, Y3, Y3
+	VORPD       Y6, Y4, Y4
+	VORPD       Y6, Y5, Y5
+	VCMPPD      $0x05, 1728(CX), Y7, Y7
+	VORPD       Y7, Y2, Y2
+	VORPD       Y7, Y3, Y3
+	VORPD       Y7, Y4, Y4
+	VORPD       Y7, Y5, Y5
+	VFMADD231PD Y9, Y2, Y10
+	VMULPD      Y8, Y2, Y2
+	VADDPD      Y9, Y2, Y2
+	VFMADD231PD Y9, Y3, Y10
+	VMULPD      Y8, Y3, Y3
+	VADDPD      Y9, Y3, Y3
+	VFMADD231PD Y9, Y4, Y10
+	VMULPD      Y8, Y4, Y4
+	VADDPD      Y9, Y4, Y4
+	VFMADD231PD Y9, Y5, Y10
+	VMULPD      Y8, Y5, Y5
+	VADDPD      Y9, Y5, Y5
+	CMPQ        64(SP), $0x00
+	JNE         narrow
+	MOVQ        24(SP), DX
+	MOVQ        176(AX), BX
+	VMOVUPD     Y2, (DX)
+	LEAQ        (DX)(BX*8), DX
+	VMOVUPD     Y3, (DX)
+	LEAQ        (DX)(BX*8), DX
+	VMOVUPD     Y4, (DX)
+	LEAQ        (DX)(BX*8), DX
+	VMOVUPD     Y5, (DX)
+	LEAQ        (DX)(BX*8), DX
+	MOVQ        DX, 24(SP)
+	JMP         stored
+
+narrow:
+	MOVQ       64(SP), DX
+	MOVQ       208(AX), BX
+	VCVTPD2PSY Y2, X2
+	VMOVUPS    X2, (DX)
+	LEAQ       (DX)(BX*4), DX
+	VCVTPD2PSY Y3, X3
+	VMOVUPS    X3, (DX)
+	LEAQ       (DX)(BX*4), DX
+	VCVTPD2PSY Y4, X4
+	VMOVUPS    X4, (DX)
+	LEAQ       (DX)(BX*4), DX
+	VCVTPD2PSY Y5, X5
+	VMOVUPS    X5, (DX)
+	LEAQ       (DX)(BX*4), DX
+	MOVQ       DX, 64(SP)
+
+stored:
+	VCMPPD    $0x03, Y10, Y10, Y10
+	VMOVMSKPD Y10, DX
+	TESTL     DX, DX
+	MOVQ      32(SP), DX
+	SETNE     (DX)
+	INCQ      32(SP)
+	DECQ      8(SP)
+	JNZ       group
+	LDMXCSR   (SP)
+	VZEROUPPER
+	RET
+
+// func stochasticBothAVX2R2V1(t *Tile[float64])
+// Requires: AVX, AVX2, FMA3, SSE
+TEXT ·stochasticBothAVX2R2V1(SB), $72-8
+	MOVQ    t+0(FP), AX
+	MOVQ    240(AX), CX
+	VMOVUPD 64(CX), Y0
+	VMOVUPD 128(CX), Y1
+	STMXCSR (SP)
+	MOVL    (SP), DX
+	ORL     $0x00006000, DX
+	MOVL    DX, 4(SP)
+	LDMXCSR 4(SP)
+	MOVQ    8(AX), DX
+	MOVQ    DX, 8(SP)
+	MOVQ    120(AX), DX
+	MOVQ    DX, 16(SP)
+	MOVQ    152(AX), DX
+	MOVQ    DX, 24(SP)
+	MOVQ    216(AX), DX
+	MOVQ    DX, 32(SP)
+	MOVQ    16(AX), DX
+	MOVQ    DX, 40(SP)
+	MOVQ    72(AX), DX
+	MOVQ    DX, 48(SP)
+	MOVQ    248(AX), DX
+	MOVQ    DX, 56(SP)
+	MOVQ    184(AX), DX
+	MOVQ    DX, 64(SP)
+
+group:
+	MOVQ    16(SP), DX
+	MOVQ    144(AX), BX
+	VMOVUPD (DX), Y2
+	VMULPD  576(CX), Y2, Y2
+	LEAQ    (DX)(BX*8), DX
+	VMOVUPD (DX), Y3
+	VMULPD  576(CX), Y3, Y3
+	LEAQ    (DX)(BX*8), DX
+	MOVQ    DX, 16(SP)
+	VPXOR   Y4, Y4, Y4
+	VPXOR   Y5, Y5, Y5
+	MOVQ    40(AX), DX
+	MOVQ    40(SP), BX
+	LEAQ    (BX)(DX*8), DX
+	MOVQ    DX, 40(SP)
+	MOVQ    40(AX), DX
+	MOVQ    48(SP), SI
+	LEAQ    (SI)(DX*4), DX
+	MOVQ    DX, 48(SP)
+	MOVQ    96(AX), DX
+	MOVQ    40(AX), DI
+	MOVQ    56(SP), R8
+	LEAQ    (R8)(DI*4), DI
+	MOVQ    DI, 56(SP)
+	MOVQ    272(AX), DI
+	MOVQ    48(AX), R9
+	MOVQ    (AX), R10
+	ADDQ    R10, R10
+	XORQ    R11, R11
+
+term:
+	VBROADCASTSD (BX)(R11*8), Y6
+	VPBROADCASTD (SI)(R11*4), Y7
+	VPBROADCASTD (R8)(R11*4), Y8
+	VPMOVZXDQ    (DI), Y9
+	VPMADDWD     Y9, Y8, Y9
+	VPMOVZXDQ    (DX), Y8
+	VPMADDWD     Y8, Y7, Y8
+	VMULPD       (R9), Y6, Y6
+	VANDPD       Y1, Y6, Y7
+	VMAXPD       Y7, Y5, Y5
+	VCMPPD       $0x11, 192(CX), Y7, Y7
+	VANDPD       192(CX), Y7, Y7
+	VANDPD       Y0, Y6, Y10
+	VORPD        Y10, Y7, Y7
+	VADDPD       Y7, Y6, Y6
+	VPSLLVQ      1600(CX), Y9, Y9
+	VPAND        1536(CX), Y9, Y9
+	VPOR         1664(CX), Y9, Y9
+	VPADDQ       Y9, Y6, Y6
+	VPAND        1472(CX), Y6, Y6
+	VSUBPD       Y7, Y6, Y6
+	VADDPD       Y6, Y2, Y2
+	VANDPD       Y1, Y2, Y6
+	VMAXPD       Y6, Y4, Y4
+	VCMPPD       $0x11, 384(CX), Y6, Y6
+	VANDPD       384(CX), Y6, Y6
+	VANDPD       Y0, Y2, Y7
+	VORPD        Y7, Y6, Y6
+	VADDPD       Y6, Y2, Y2
+	VPSLLVQ      832(CX), Y8, Y8
+	VPAND        768(CX), Y8, Y8
+	VPOR         896(CX), Y8, Y8
+	VPADDQ       Y8, Y2, Y2
+	VPAND        704(CX), Y2, Y2
+	VSUBPD       Y6, Y2, Y2
+	VBROADCASTSD 8(BX)(R11*8), Y6
+	VPBROADCASTD 4(SI)(R11*4), Y7
+	VPBROADCASTD 4(R8)(R11*4), Y8
+	VPMOVZXDQ    (DI), Y9
+	VPMADDWD     Y9, Y8, Y9
+	VPMOVZXDQ    (DX), Y8
+	VPMADDWD     Y8, Y7, Y8
+	VMULPD       (R9), Y6, Y6
+	VANDPD       Y1, Y6, Y7
+	VMAXPD       Y7, Y5, Y5
+	VCMPPD       $0x11, 192(CX), Y7, Y7
+	VANDPD       192(CX), Y7, Y7
+	VANDPD       Y0, Y6, Y10
+	VORPD        Y10, Y7, Y7
+	VADDPD       Y7, Y6, Y6
+	VPSLLVQ      1600(CX), Y9, Y9
+	VPAND        1536(CX), Y9, Y9
+	VPOR         1664(CX), Y9, Y9
+	VPADDQ       Y9, Y6, Y6
+	VPAND        1472(CX), Y6, Y6
+	VSUBPD       Y7, Y6, Y6
+	VADDPD       Y6, Y3, Y3
+	VANDPD       Y1, Y3, Y6
+	VMAXPD       Y6, Y4, Y4
+	VCMPPD       $0x11, 384(CX), Y6, Y6
+	VANDPD       384(CX), Y6, Y6
+	VANDPD       Y0, Y3, Y7
+	VORPD        Y7, Y6, Y6
+	VADDPD       Y6, Y3, Y3
+	VPSLLVQ      832(CX), Y8, Y8
+	VPAND        768(CX), Y8, Y8
+	VPOR         896(CX), Y8, Y8
+	VPADDQ       Y8, Y3, Y3
+	VPAND        704(CX), Y3, Y3
+	VSUBPD       Y6, Y3, Y3
+	ADDQ         $0x00000020, R9
+	ADDQ         $0x00000010, DX
+	ADDQ         $0x00000010, DI
+	ADDQ         $0x02, R11
+	CMPQ         R11, R10
+	JLT          term
+	VMOVUPD      640(CX), Y6
+	VPXOR        Y7, Y7, Y7
+	VPXOR        Y8, Y8, Y8
+	VCMPPD       $0x05, 1344(CX), Y4, Y4
+	VORPD        Y4, Y2, Y2
+	VORPD        Y4, Y3, Y3
+	VCMPPD       $0x05, 1728(CX), Y5, Y5
+	VORPD        Y5, Y2, Y2
+	VORPD        Y5, Y3, Y3
+	VFMADD231PD  Y7, Y2, Y8
+	VMULPD       Y6, Y2, Y2
+	VADDPD       Y7, Y2, Y2
+	VFMADD231PD  Y7, Y3, Y8
+	VMULPD       Y6, Y3, Y3
+	VADDPD       Y7, Y3, Y3
+	CMPQ         64(SP), $0x00
+	JNE          narrow
+	MOVQ         24(SP), DX
+	MOVQ         176(AX), BX
+	VMOVUPD      Y2, (DX)
+	LEAQ         (DX)(BX*8), DX
+	VMOVUPD      Y3, (DX)
+	LEAQ         (DX)(BX*8), DX
+	MOVQ         DX, 24(SP)
+	JMP          stored
+
+narrow:
+	MOVQ       64(SP), DX
+	MOVQ       208(AX), BX
+	VCVTPD2PSY Y2, X2
+	VMOVUPS    X2, (DX)
+	LEAQ       (DX)(BX*4), DX
+	VCVTPD2PSY Y3, X3
+	VMOVUPS    X3, (DX)
+	LEAQ       (DX)(BX*4), DX
+	MOVQ       DX, 64(SP)
+
+stored:
+	VCMPPD    $0x03, Y8, Y8, Y8
+	VMOVMSKPD Y8, DX
+	TESTL     DX, DX
+	MOVQ      32(SP), DX
+	SETNE     (DX)
+	INCQ      32(SP)
+	DECQ      8(SP)
+	JNZ       group
+	LDMXCSR   (SP)
+	VZEROUPPER
+	RET
+
 // func baseline64AVX2R2V3(t *Tile[float64])
 // Requires: AVX, AVX2, FMA3
 TEXT ·baseline64AVX2R2V3(SB), $48-8

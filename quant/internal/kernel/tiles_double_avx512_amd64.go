@@ -112,6 +112,30 @@ func stochasticProductAVX512R8V1(t *Tile[float64])
 //go:noescape
 func stochasticProductAVX512R2V1(t *Tile[float64])
 
+// stochasticBothAVX512R4V2 is the loop s = S(s + R(a b)), R and S stochastic, S of the exact sum, terms ascending.
+// It keeps a tile of 4 x 16 sums in registers.
+//
+//go:noescape
+func stochasticBothAVX512R4V2(t *Tile[float64])
+
+// stochasticBothAVX512R2V2 is the loop s = S(s + R(a b)), R and S stochastic, S of the exact sum, terms ascending.
+// It keeps a tile of 2 x 16 sums in registers.
+//
+//go:noescape
+func stochasticBothAVX512R2V2(t *Tile[float64])
+
+// stochasticBothAVX512R4V1 is the loop s = S(s + R(a b)), R and S stochastic, S of the exact sum, terms ascending.
+// It keeps a tile of 4 x 8 sums in registers.
+//
+//go:noescape
+func stochasticBothAVX512R4V1(t *Tile[float64])
+
+// stochasticBothAVX512R2V1 is the loop s = S(s + R(a b)), R and S stochastic, S of the exact sum, terms ascending.
+// It keeps a tile of 2 x 8 sums in registers.
+//
+//go:noescape
+func stochasticBothAVX512R2V1(t *Tile[float64])
+
 // baseline64AVX512R8V2 is the loop s = binary64(s + binary64(a b)), terms ascending.
 // It keeps a tile of 8 x 16 sums in registers.
 //

@@ -39,6 +39,8 @@ var tileFields = []field{
 	{"FinalRow", word},
 	{"Flags", slice},
 	{"C", word},
+	{"TermR", slice},
+	{"TermV", slice},
 }
 
 // constantFields are the fields of kernel.Constants: vectors of equal lanes.
@@ -66,6 +68,11 @@ var constantFields = []field{
 	{"Quantum", vector},
 	{"Limit", vector},
 	{"Ones", vector},
+	{"TermKeep", vector},
+	{"TermMask", vector},
+	{"TermShift", vector},
+	{"TermHalf", vector},
+	{"TermLimit", vector},
 }
 
 // philoxFields are the fields of kernel.philoxArgs.

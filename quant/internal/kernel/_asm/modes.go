@@ -7,6 +7,7 @@ type mode struct {
 	double    bool     // binary64 lanes
 	constants []string // read from the table, in order of need of a register
 	random    bool     // reads the tables R and V
+	terms     bool     // and the tables TermR and TermV
 	truncate  bool     // AVX2: runs under rounding toward zero
 	watch     bool     // watches the greatest magnitude against Limit
 	keepRight bool     // B[k, columns] in registers instead of memory operands
@@ -156,7 +157,7 @@ var modes = []mode{
 		constants: []string{"RandomShift", "SumLeast", "SignMask", "MagnitudeMask", "RandomMask", "RandomHalf", "Keep"},
 		step: func(g *tile, r, v int) chain {
 			u, s := g.reg(), g.sums[r][v]
-			return join(g.mix(u, r, v), g.fuseTruncated(r, v), g.stochasticWide(s, u))
+			return join(g.mix(u, r, v), g.fuseTruncated(r, v), g.stochasticWide(s, u, sumRounding))
 		},
 	},
 	{
@@ -165,7 +166,20 @@ var modes = []mode{
 		constants: []string{"RandomShift", "Grow", "Rescale", "Least", "ExponentMask", "RandomMask", "RandomHalf", "Keep", "MagnitudeMask"},
 		step: func(g *tile, r, v int) chain {
 			p, u, s := g.reg(), g.reg(), g.sums[r][v]
-			return join(g.mix(u, r, v), g.multiply(p, r, v), g.nearest(p, "Least", "Grow"), g.plusRescaled(s, p), g.watch(s), g.align(u), g.carry(s, u))
+			return join(g.mix(u, r, v), g.multiply(p, r, v), g.nearest(p, "Least", "Grow"), g.plusRescaled(s, p), g.watch(s), g.align(u, sumRounding), g.carry(s, u, sumRounding))
+		},
+	},
+	{
+		name: "stochasticBoth", doc: "the loop s = S(s + R(a b)), R and S stochastic, S of the exact sum, terms ascending.",
+		double: true, truncate: true, watch: true, random: true, terms: true,
+		constants: []string{
+			"SignMask", "MagnitudeMask", "SumLeast", "Least", "TermShift", "TermMask", "TermHalf", "TermKeep",
+			"RandomShift", "RandomMask", "RandomHalf", "Keep",
+		},
+		step: func(g *tile, r, v int) chain {
+			p, t, u, s := g.reg(), g.reg(), g.reg(), g.sums[r][v]
+			return join(g.mixTerm(t, r, v), g.mix(u, r, v), g.multiply(p, r, v),
+				g.stochasticWide(p, t, termRounding), g.plusTruncated(s, p), g.stochasticWide(s, u, sumRounding))
 		},
 	},
 	{
@@ -189,6 +203,8 @@ func (m mode) heads() int {
 	switch {
 	case !m.random:
 		return 1
+	case m.terms:
+		return 5
 	case m.double:
 		return 3
 	}

@@ -104,6 +104,14 @@ func (g *tile) plusOddDirected(sum, p reg.Register) chain {
 	}
 }
 
+// plusTruncated: sum += p, rounded toward zero, see fuseTruncated.
+func (g *tile) plusTruncated(sum, p reg.Register) chain {
+	if !g.zmm {
+		return g.plus(sum, p)
+	}
+	return chain{func() { g.VADDPD_RZ_SAE(p, sum, sum) }}
+}
+
 // mix: u = s16(lo R) s16(lo V) + s16(hi R) s16(hi V), the low half of R odd.
 func (g *tile) mix(u reg.Register, r, v int) chain {
 	if !g.double {
@@ -112,6 +120,14 @@ func (g *tile) mix(u reg.Register, r, v int) chain {
 	return chain{
 		func() { g.VPMOVZXDQ(operand.Mem{Base: g.v, Disp: v * g.bytes() / 2}, u) },
 		func() { g.VPMADDWD(u, g.leftWord[r], u) },
+	}
+}
+
+// mixTerm is mix of the products' tables.
+func (g *tile) mixTerm(u reg.Register, r, v int) chain {
+	return chain{
+		func() { g.VPMOVZXDQ(operand.Mem{Base: g.termV, Disp: v * g.bytes() / 2}, u) },
+		func() { g.VPMADDWD(u, g.leftTerm[r], u) },
 	}
 }
 
@@ -156,21 +172,33 @@ func (g *tile) stochasticCare(x, u reg.Register) chain {
 	}
 }
 
-// align: u = U moved below the last place of a binary64 lane, and the half of
-// the centred threshold below that.
-func (g *tile) align(u reg.Register) chain {
+// rounding names the constants of a stochastic rounding in binary64 lanes, and the
+// register of the magnitudes it watches.
+type rounding struct {
+	least, shift, mask, half, keep string
+	top                            int
+}
+
+var (
+	sumRounding  = rounding{"SumLeast", "RandomShift", "RandomMask", "RandomHalf", "Keep", 0}
+	termRounding = rounding{"Least", "TermShift", "TermMask", "TermHalf", "TermKeep", 1}
+)
+
+// align: u = U moved below the last place of a binary64 lane, and the half of the
+// centred threshold below that.
+func (g *tile) align(u reg.Register, to rounding) chain {
 	return chain{
-		func() { g.shiftLeft(u, u, g.constant("RandomShift")) },
-		func() { g.andInt(u, u, g.constant("RandomMask")) },
-		func() { g.orInt(u, u, g.constant("RandomHalf")) },
+		func() { g.shiftLeft(u, u, g.constant(to.shift)) },
+		func() { g.andInt(u, u, g.constant(to.mask)) },
+		func() { g.orInt(u, u, g.constant(to.half)) },
 	}
 }
 
 // carry: x = x + u with the spare bits cleared.
-func (g *tile) carry(x, u reg.Register) chain {
+func (g *tile) carry(x, u reg.Register, to rounding) chain {
 	return chain{
 		func() { g.addInt(x, x, u) },
-		func() { g.andInt(x, x, g.constant("Keep")) },
+		func() { g.andInt(x, x, g.constant(to.keep)) },
 	}
 }
 
@@ -179,47 +207,48 @@ func (g *tile) watch(x reg.Register) chain {
 	size := g.reg()
 	return chain{
 		func() { g.and(size, x, g.constant("MagnitudeMask")) },
-		func() { g.max(g.top, g.top, size) },
+		func() { g.max(g.top[0], g.top[0], size) },
 	}
 }
 
-// stochasticWide rounds the truncated binary64 x with subnormals: below Least, x
-// is lifted by Least of its sign, which puts its quantum at the last place kept.
-// The greatest magnitude is watched, because truncation never yields infinity.
-func (g *tile) stochasticWide(x, u reg.Register) chain {
+// stochasticWide rounds the exact or truncated binary64 x with subnormals: below the
+// least binade, x is lifted by that of its sign, which puts its quantum at the last
+// place kept. The greatest magnitude is watched, because truncation never yields
+// infinity.
+func (g *tile) stochasticWide(x, u reg.Register, to rounding) chain {
 	if g.zmm {
-		return g.stochasticWideMasked(x, u)
+		return g.stochasticWideMasked(x, u, to)
 	}
 	size, sign := g.reg(), g.reg()
 	const less = 17
 	c := chain{
 		func() { g.and(size, x, g.constant("MagnitudeMask")) },
-		func() { g.max(g.top, g.top, size) },
-		func() { g.VCMPPD(operand.Imm(less), g.constant("SumLeast"), size, size) },
-		func() { g.and(size, size, g.constant("SumLeast")) },
+		func() { g.max(g.top[to.top], g.top[to.top], size) },
+		func() { g.VCMPPD(operand.Imm(less), g.constant(to.least), size, size) },
+		func() { g.and(size, size, g.constant(to.least)) },
 		func() { g.and(sign, x, g.constant("SignMask")) },
 		func() { g.or(size, size, sign) },
 		func() { g.add(x, x, size) },
 	}
-	c = append(c, g.align(u)...)
-	c = append(c, g.carry(x, u)...)
+	c = append(c, g.align(u, to)...)
+	c = append(c, g.carry(x, u, to)...)
 	return append(c, func() { g.sub(x, x, size) })
 }
 
 // stochasticWideMasked is stochasticWide with AVX-512's masks and roundings.
-func (g *tile) stochasticWideMasked(x, u reg.Register) chain {
+func (g *tile) stochasticWideMasked(x, u reg.Register, to rounding) chain {
 	lift, below := g.reg(), g.K()
 	const less = 17
-	const pickSign = 0xEA // (x & SignMask) | Least
+	const pickSign = 0xEA // (x & SignMask) | least
 	c := chain{
 		func() { g.and(lift, x, g.constant("MagnitudeMask")) },
-		func() { g.max(g.top, g.top, lift) },
-		func() { g.VCMPPD(operand.Imm(less), g.constant("SumLeast"), lift, below) },
+		func() { g.max(g.top[to.top], g.top[to.top], lift) },
+		func() { g.VCMPPD(operand.Imm(less), g.constant(to.least), lift, below) },
 		func() { g.VMOVAPD(x, lift) },
-		func() { g.VPTERNLOGQ(operand.Imm(pickSign), g.constant("SumLeast"), g.vec("SignMask"), lift) },
+		func() { g.VPTERNLOGQ(operand.Imm(pickSign), g.constant(to.least), g.vec("SignMask"), lift) },
 		func() { g.VADDPD_RZ_SAE(lift, x, below, x) },
 	}
-	c = append(c, g.align(u)...)
-	c = append(c, g.carry(x, u)...)
+	c = append(c, g.align(u, to)...)
+	c = append(c, g.carry(x, u, to)...)
 	return append(c, func() { g.VSUBPD(lift, x, below, x) })
 }

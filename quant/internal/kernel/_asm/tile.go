@@ -20,12 +20,15 @@ type tile struct {
 	sums        [][]reg.VecVirtual // the accumulators
 	left        []reg.VecVirtual   // A[k, r] in every lane
 	leftWord    []reg.VecVirtual   // R[k, r] in every lane
+	leftTerm    []reg.VecVirtual   // TermR[k, r] in every lane
 	right       []reg.VecVirtual   // B[k, columns] where the mode keeps it in registers
-	top         reg.Register       // greatest magnitudes, where the mode watches them
+	top         [2]reg.Register    // greatest sums, and products, where the mode watches them
 	slots       map[string]operand.Mem
 	frame       operand.Mem    // the caller's MXCSR, then the changed one
 	a, r        []reg.Register // a pair of rows of A, of R
 	b, v, k     reg.Register
+	termR       []reg.Register // as r and v, of the products' tables
+	termV       reg.Register
 }
 
 func (g *tile) arg(name string) operand.Mem {
@@ -77,6 +80,10 @@ func (g *tile) generate(c *build.Context, name string) bool {
 	if g.mode.random {
 		g.r = g.pairs("R", 4)
 		g.v = g.loadArg("V")
+	}
+	if g.mode.terms {
+		g.termR = g.pairs("TermR", 4)
+		g.termV = g.loadArg("TermV")
 	}
 	g.b = g.loadArg("B")
 	if g.mode.tree {
@@ -146,6 +153,9 @@ func (g *tile) cursors() []string {
 	if g.mode.random {
 		names = append(names, "R")
 	}
+	if g.mode.terms {
+		names = append(names, "TermR")
+	}
 	if g.double {
 		names = append(names, "Final")
 	}
@@ -183,9 +193,9 @@ func (g *tile) loadSums() {
 		g.LEAQ(operand.Mem{Base: in, Index: row, Scale: uint8(g.element())}, in)
 	}
 	g.MOVQ(in, g.cursor("In"))
-	if g.mode.watch {
-		g.top = g.reg()
-		g.zero(g.top)
+	for n := range g.watched() {
+		g.top[n] = g.reg()
+		g.zero(g.top[n])
 	}
 }
 
@@ -207,9 +217,10 @@ func (g *tile) pairs(name string, size int) []reg.Register {
 func (g *tile) terms() bool {
 	g.left = make([]reg.VecVirtual, g.rows)
 	g.leftWord = make([]reg.VecVirtual, g.rows)
+	g.leftTerm = make([]reg.VecVirtual, g.rows)
 	g.right = make([]reg.VecVirtual, g.vectors)
 	for r := range g.rows {
-		g.left[r], g.leftWord[r] = g.reg(), g.reg()
+		g.left[r], g.leftWord[r], g.leftTerm[r] = g.reg(), g.reg(), g.reg()
 	}
 	for v := range g.vectors {
 		g.right[v] = g.reg()
@@ -250,6 +261,9 @@ func (g *tile) advance(end reg.Register) {
 	if g.mode.random {
 		g.ADDQ(operand.U32(uint64(g.width()*4)), g.v)
 	}
+	if g.mode.terms {
+		g.ADDQ(operand.U32(uint64(g.width()*4)), g.termV)
+	}
 	g.ADDQ(operand.Imm(2), g.k)
 	g.CMPQ(g.k, end)
 }
@@ -266,6 +280,9 @@ func (g *tile) operands(r, v int) {
 	g.spread(g.left[r], g.pairElement(g.a, r, g.element()))
 	if g.mode.random {
 		g.spreadWord(g.leftWord[r], g.pairElement(g.r, r, 4))
+	}
+	if g.mode.terms {
+		g.spreadWord(g.leftTerm[r], g.pairElement(g.termR, r, 4))
 	}
 }
 
@@ -288,8 +305,8 @@ func (g *tile) storeSums() {
 	g.load(unscale, operand.Mem{Base: g.table, Disp: offset(constantFields, "Unscale")})
 	g.zero(zero)
 	g.zero(bad)
-	if g.mode.watch {
-		g.poison()
+	for n, limit := range []string{"Limit", "TermLimit"}[:g.watched()] {
+		g.poison(g.top[n], limit)
 	}
 	for _, row := range g.sums {
 		for _, x := range row {
@@ -316,21 +333,32 @@ func (g *tile) storeSums() {
 	g.storeFlag(bad)
 }
 
-// poison makes NaN of the sums of every lane whose greatest magnitude reached
-// Limit, so that the flag stands and stays.
-func (g *tile) poison() {
+// watched is the number of magnitudes that the mode watches.
+func (g *tile) watched() int {
+	switch {
+	case g.mode.terms:
+		return 2
+	case g.mode.watch:
+		return 1
+	}
+	return 0
+}
+
+// poison makes NaN of the sums of every lane whose greatest magnitude reached the
+// limit, so that the flag stands and stays.
+func (g *tile) poison(top reg.Register, name string) {
 	const notLess = 5
-	limit := operand.Mem{Base: g.table, Disp: offset(constantFields, "Limit")}
+	limit := operand.Mem{Base: g.table, Disp: offset(constantFields, name)}
 	if g.zmm {
 		k := g.K()
-		g.VCMPPD(operand.Imm(notLess), limit, g.top, k)
-		g.VPMOVM2Q(k, g.top)
+		g.VCMPPD(operand.Imm(notLess), limit, top, k)
+		g.VPMOVM2Q(k, top)
 	} else {
-		g.VCMPPD(operand.Imm(notLess), limit, g.top, g.top)
+		g.VCMPPD(operand.Imm(notLess), limit, top, top)
 	}
 	for _, row := range g.sums {
 		for _, x := range row {
-			g.or(x, x, g.top)
+			g.or(x, x, top)
 		}
 	}
 }

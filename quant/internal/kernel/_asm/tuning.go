@@ -57,6 +57,7 @@ var targets = []target{
 			"fusedFree":             {{4, 1, 4}, {8, 1, 5}},
 			"stochasticWide":        {{2, 3, 2}, {8, 3, 2}},
 			"stochasticProduct":     {{2, 3, 2}, {8, 4, 1}},
+			"stochasticBoth":        {{2, 2, 1}, {4, 2, 1}},
 		},
 	},
 	{
@@ -84,6 +85,7 @@ var targets = []target{
 			"fusedFree":             {{8, all, 12}, {8, all, 5}},
 			"stochasticWide":        {{4, all, 5}, {8, all, 5}},
 			"stochasticProduct":     {{4, all, 6}, {8, all, 6}},
+			"stochasticBoth":        {{4, all, 3}, {4, all, 3}},
 		},
 	},
 }
