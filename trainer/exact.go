@@ -50,12 +50,8 @@ func combine[T quant.Element](dst, a, b []T, how arithmetic, point *quant.Point,
 // first, or binary64's own arithmetic.
 func roads(point *quant.Point) (odd, native bool) {
 	limits := point.Format.Limits()
-	random := 0
-	if point.Rounding.Mode == quant.Stochastic {
-		random = 32 // the most there can be
-	}
 	native = limits.Exponent == 11 && limits.Fraction == 52 && point.Rounding.Mode == quant.NearestEven && !limits.Flush
-	return limits.Bits+random <= 50, native
+	return point.OddSafe(), native
 }
 
 // fold writes the results to x, rounded to odd if odd is set, else to nearest. It
@@ -117,7 +113,7 @@ func combineScalar[T quant.Element](dst, a, b []T, mask int, how arithmetic, poi
 	for i := range dst {
 		var word uint32
 		if point.Rounding.Mode == quant.Stochastic {
-			word = draws.Word(first + uint64(i))
+			word = point.Rounding.Word(draws, first+uint64(i))
 		}
 		v, event := point.Round(exactly(float64(a[i]), float64(b[i&mask]), how), word)
 		dst[i] = T(v)
