@@ -49,8 +49,17 @@ func combine[T quant.Element](dst, a, b []T, how arithmetic, point *quant.Point,
 // roads reports which of the fast roads a point may take: one rounding to odd
 // first, or binary64's own arithmetic.
 func roads(point *quant.Point) (odd, native bool) {
-	limits := point.Format.Limits()
+	limits, random := point.Format.Limits(), 0
+	if point.Rounding.Mode == quant.Stochastic {
+		random = 32 // the most there can be
+	}
 	native = limits.Exponent == 11 && limits.Fraction == 52 && point.Rounding.Mode == quant.NearestEven && !limits.Flush
+	if limits.Bits+random <= 50 {
+		switch point.Format.(type) {
+		case quant.Float, quant.Draft:
+			return true, native // asked in every step: without the memory that OddSafe takes
+		}
+	}
 	return point.OddSafe(), native
 }
 
