@@ -39,7 +39,7 @@ func perExample(l *trainer.Spec, id trainer.PointID) uint64 {
 	switch id {
 	case trainer.ForwardActivation, trainer.InputGradientGradient, trainer.WeightGradientGradient:
 		return uint64(volume(l.Out))
-	case trainer.InputGradientResult, trainer.WeightGradientActivation:
+	case trainer.InputGradientResult, trainer.WeightGradientActivation, trainer.ForwardOperand:
 		return uint64(volume(l.In))
 	case trainer.ForwardProduct, trainer.ForwardSum:
 		return l.MACs.Forward
@@ -77,7 +77,7 @@ func ranges(p *plan.Plan) []results.Range {
 	seen := map[string]bool{}
 	add := func(points ...plan.Point) {
 		for _, q := range points {
-			if q.Format == nil || seen[q.Format.String()] {
+			if q.Format == nil || plan.SharesScales(q.Format) || seen[q.Format.String()] {
 				continue
 			}
 			seen[q.Format.String()] = true

@@ -3,12 +3,15 @@ package trainer
 import "ulpine/quant"
 
 // Arithmetic is the full assignment of arithmetic to the rounding points of one
-// layer. A nil point of a backward phase reuses what the forward pass holds.
+// layer. A nil point of a backward phase reuses what the forward pass holds, or,
+// where that has a format with shared scales, rounds the stored tensor anew, at the
+// same point along its own axis.
 type Arithmetic struct {
 	// Forward phase: the working copy of weights and biases, the layer's output,
 	// the sums.
 	Weight     quant.Point
 	Activation quant.Point
+	Operand    *quant.Point // the layer's input as operand of the forward product; nil: as stored
 	Forward    quant.Accumulate
 
 	InputGradient  Backward // dL/dx; First is the weight operand

@@ -139,7 +139,7 @@ func completeConv(o *options, s *Spec, g window, kernel []int) error {
 	s.Sums = Lengths{Forward: terms, InputGradient: back, WeightGradient: g.outer(), BiasGradient: g.outer()}
 	work := uint64(out) * uint64(terms) * uint64(g.outer())
 	s.MACs = Work{Forward: work, InputGradient: uint64(g.c) * uint64(back) * uint64(g.inner()), WeightGradient: work}
-	s.Points = parameterPoints
+	s.Points = productPoints
 	return nil
 }
 
@@ -164,9 +164,9 @@ func newConv[T quant.Element](b *bench[T]) (layer[T], error) {
 func bindConv[T quant.Element](l *linear[T], g *window, units, batch int) bindings[T] {
 	channels, each := g.c/l.groups, units/l.groups // of one group
 	terms, back := channels*g.size(), each*g.size()
-	x := paddedFrame(l.below.value.data, g)
+	x := paddedFrame(l.operand, g)
 	again := x
-	if l.set.WeightGradient.First != nil {
+	if l.again.activation != nil {
 		again = paddedFrame(l.activation, g)
 	}
 	dy := dilatedFrame(l.belowGradient, units, g)

@@ -21,7 +21,7 @@ func parseDense(o *options, s *Spec) error {
 	s.Sums = Lengths{Forward: inputs, InputGradient: units, WeightGradient: 1, BiasGradient: 1}
 	work := uint64(units) * uint64(inputs)
 	s.MACs = Work{Forward: work, InputGradient: work, WeightGradient: work}
-	s.Points = parameterPoints
+	s.Points = productPoints
 	return nil
 }
 
@@ -32,7 +32,7 @@ func newDense[T quant.Element](b *bench[T]) (layer[T], error) {
 	s := shape{units: units, terms: inputs, channels: inputs, inner: 1, outer: 1, groups: 1}
 	return asLayer(newLinear(b, s, func(l *linear[T]) bindings[T] {
 		return bindings[T]{
-			forward:    []quant.Columns[T]{quant.Matrix[T]{Data: l.below.value.data, Row: 1, Col: inputs}},
+			forward:    []quant.Columns[T]{quant.Matrix[T]{Data: l.operand, Row: 1, Col: inputs}},
 			below:      []quant.Columns[T]{quant.Matrix[T]{Data: l.belowGradient, Row: 1, Col: units}},
 			weight:     []quant.Columns[T]{quant.Matrix[T]{Data: l.activation, Row: inputs, Col: 1}},
 			belowLeft:  quant.Matrix[T]{Data: l.belowWeight, Row: 1, Col: inputs},

@@ -19,7 +19,7 @@
 //	input_gradient.gradient     operand gradient; unset: the gradient as stored
 //	input_gradient.product .sum .outer
 //	input_gradient.result       the gradient of the layer's input, as stored
-//	weight_gradient.activation  operand activation; unset: the layer's input as stored
+//	weight_gradient.activation  operand activation; unset: that of the forward product
 //	weight_gradient.gradient    operand gradient; unset: the gradient as stored
 //	weight_gradient.product .sum .outer
 //	weight_gradient.result      the gradients of weight and bias
@@ -28,6 +28,8 @@
 //	forward.moment              mean, variance, inverse deviation, running
 //	                            statistics; unset: forward.activation
 //	input_gradient.statistic    sums of its input gradient; unset: that phase's points
+//	forward.operand             operand activation of the forward product; unset: the
+//	                            layer's input as stored
 //
 // A set operand is R of the stored tensor: of the master for a weight, of the
 // layer's input for an activation, of the result (or output error) for a
@@ -35,6 +37,34 @@
 // that computes an output rounds it, ReLU and max-pool too; flatten computes
 // nothing. A gradient that passes a layer without arithmetic is not rounded
 // again. The lowest layer with parameters forms no input gradient.
+//
+// # Shared scales
+//
+// Blocks and scaled integers (quant.Blocked) are formats of operands: forward.weight,
+// forward.operand, input_gradient.weight and .gradient, weight_gradient.activation and
+// .gradient may have one, all other points are scalar. Such an operand is R of the
+// stored tensor for its own product, along axes [outer, axis, inner] of that tensor:
+//
+//	forward.weight              unit, input channel, kernel position
+//	forward.operand             group, input channel, position: an example is a tensor
+//	input_gradient.weight       group, unit, input channel and kernel position
+//	input_gradient.gradient     sample and group, unit, position
+//	weight_gradient.activation  1, sample, channel and position
+//	weight_gradient.gradient    1, sample, unit and position
+//
+// channels and units being those of a group; tensors that share a scale are the whole
+// mini-batch in the gradients, but each example by itself forward, so that no answer
+// depends on the batch. An unset operand of a gradient product is not the forward copy
+// then but R at the forward point along its own axes, with the random words of its
+// own operation. Factors multiply finished sums, before the bias: quant.Product.Scale,
+// left out of a product in which all factors are 1. Scales per channel belong to rows
+// of left-hand operands: units in forward.weight and weight_gradient.gradient, input
+// channels in input_gradient.weight. Random words count elements row-major in the
+// tensor; under scales per channel the two backward ones count row by row: unit,
+// sample, position and group, input channel, unit, kernel position. Biases and the
+// parameters of normalisations are no operands of products: forward.weight leaves
+// them as the master is, and the gradient of a bias sums the gradient as stored.
+// Requantising takes memory in every step.
 //
 // # Sums
 //
@@ -146,7 +176,7 @@
 //	4,5 forward.product          13   input_gradient.result
 //	6,7 forward.sum              14   weight_gradient.activation
 //	                                       15   weight_gradient.gradient
-//	16 to 45: normalisations, see the layer
+//	16 to 45: normalisations, see the layer   46   forward.operand
 //
 // On parameter p of a layer, 0 the weight and 1 the bias, 64 (p + 1) plus:
 //

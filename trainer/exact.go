@@ -55,13 +55,18 @@ var blocks = sync.Pool{New: func() any { return new([combineLength]float64) }}
 // roads reports which of the fast roads a point may take: one rounding to odd
 // first, or binary64's own arithmetic.
 func roads(point *quant.Point) (odd, native bool) {
-	limits := point.Format.Limits()
-	random := 0
+	limits, random := point.Format.Limits(), 0
 	if point.Rounding.Mode == quant.Stochastic {
 		random = 32 // the most there can be
 	}
 	native = limits.Exponent == 11 && limits.Fraction == 52 && point.Rounding.Mode == quant.NearestEven && !limits.Flush
-	return limits.Bits+random <= 50, native
+	if limits.Bits+random <= 50 {
+		switch point.Format.(type) {
+		case quant.Float, quant.Draft:
+			return true, native // asked in every step: without the memory that OddSafe takes
+		}
+	}
+	return point.OddSafe(), native
 }
 
 // fold writes the results to x, rounded to odd if odd is set, else to nearest. It
@@ -123,7 +128,7 @@ func combineScalar[T quant.Element](dst, a, b []T, mask int, how arithmetic, poi
 	for i := range dst {
 		var word uint32
 		if point.Rounding.Mode == quant.Stochastic {
-			word = draws.Word(first + uint64(i))
+			word = point.Rounding.Word(draws, first+uint64(i))
 		}
 		v, event := point.Round(exactly(float64(a[i]), float64(b[i&mask]), how), word)
 		dst[i] = T(v)

@@ -33,10 +33,14 @@ type linear[T quant.Element] struct {
 
 	// Operands of the gradient products; each is the stored tensor itself or,
 	// where the arm sets a point, scratch for its rounding.
+	operand        []T // of the forward product
 	belowGradient  []T
 	belowWeight    []T
 	weightGradient []T
 	activation     []T
+
+	again backwardOperands
+	scales[T]
 
 	regrouped []T // the gradient with j fastest; nil where positions are single
 	results   []T // products before regrouping, one phase at a time
@@ -76,7 +80,8 @@ func newLinear[T quant.Element](b *bench[T], s shape, bind func(l *linear[T]) bi
 		weight: newParam(b, 0), bias: newParam(b, 1),
 		shape: s,
 	}
-	l.chooseOperands(b.batch)
+	l.chooseOperands()
+	l.makeScales(b.batch)
 	if s.outer > 1 {
 		l.regrouped = make([]T, b.batch*s.units*s.outer)
 	}
@@ -90,7 +95,7 @@ func newLinear[T quant.Element](b *bench[T], s shape, bind func(l *linear[T]) bi
 
 // chooseOperands takes the stored tensors where the arm leaves a backward operand
 // unset, else memory for its rounding.
-func (l *linear[T]) chooseOperands(batch int) {
+func (l *linear[T]) chooseOperands() {
 	own := func(set *quant.Point, stored []T) []T {
 		if set == nil {
 			return stored
@@ -98,10 +103,12 @@ func (l *linear[T]) chooseOperands(batch int) {
 		return make([]T, len(stored))
 	}
 	in, wg := &l.set.InputGradient, &l.set.WeightGradient
+	l.again = l.set.backwardOperands()
+	l.operand = own(l.set.Operand, l.below.value.data)
 	l.belowGradient = own(in.Gradient, l.above.gradient.data)
-	l.belowWeight = own(in.First, l.weight.working.data)
+	l.belowWeight = own(l.again.weight, l.weight.working.data)
 	l.weightGradient = own(wg.Gradient, l.above.gradient.data)
-	l.activation = own(wg.First, l.below.value.data)
+	l.activation = own(l.again.activation, l.operand)
 }
 
 func (l *linear[T]) makeMultipliers() (err error) {
@@ -139,6 +146,7 @@ func (l *linear[T]) params() []*param[T] { return []*param[T]{l.weight, l.bias} 
 // forward computes y = R[activation](sum over k of weight x, then + bias).
 func (l *linear[T]) forward(p *pass) {
 	columns := p.samples * l.outer
+	l.takeInputs(p)
 	if l.frames.forward != nil {
 		l.frames.forward.fill(p.samples)
 	}
@@ -147,6 +155,11 @@ func (l *linear[T]) forward(p *pass) {
 		q := &l.forwardProduct[n]
 		q.J, q.C, q.FirstJ = columns, results[n*q.I*columns:], p.first*uint64(l.outer)
 		q.Terms, q.Sums = p.group(n, l.streams(p, opForwardProduct)), p.group(n, l.streams(p, opForwardSum))
+		if !l.oneFactor(p.samples) {
+			l.eachExample(p, n)
+			continue
+		}
+		q.Scale = l.scale(l.weight.factors, n*q.I, q.I, l.exampleFactor(0))
 		l.forwardMul.Mul(*q, l.counts(p, ForwardProduct), l.counts(p, ForwardSum))
 		if p.watch != nil {
 			lookSums(p.watch, l.layer, ForwardProduct, ForwardSum, &l.set.Forward, q)
@@ -166,30 +179,41 @@ func (l *linear[T]) backward(p *pass, below bool) {
 }
 
 // weightBackward computes the gradients of weight and bias. The bias sums the
-// same operand, gradient as the weight's product sees it, without products.
+// same operand, gradient as the weight's product sees it, without products; where
+// that operand shares scales, the gradient as stored.
 func (l *linear[T]) weightBackward(p *pass) {
 	n := p.samples
 	set := &l.set.WeightGradient
 	gradient := l.weightGradient[:n*l.above.per]
 	if set.Gradient != nil {
-		round(l.place, p, WeightGradientGradient, opWeightOperand, gradient, l.above.gradients(n), set.Gradient, 0)
+		l.takeUnitGradients(p, gradient, l.above.gradients(n))
 	}
-	if set.First != nil {
+	if l.again.activation != nil {
 		x := l.below.values(n)
-		round(l.place, p, WeightGradientActivation, opActivationAgain, l.activation[:len(x)], x, set.First, 0)
+		l.activationFactor = roundAlong(l.place, p, WeightGradientActivation, opActivationAgain, l.activation[:len(x)], x,
+			quant.Shape{Outer: 1, Axis: n, Inner: l.below.per}, l.again.activation, 0)
 	}
 	if l.frames.weight != l.frames.forward {
 		l.frames.weight.fill(n)
 	}
-	left := quant.Matrix[T]{Data: gradient, Row: 1, Col: l.units}
-	if l.outer > 1 {
-		groupByUnit(l.regrouped, gradient, n, l.units, l.outer)
-		left = quant.Matrix[T]{Data: l.regrouped, Row: n * l.outer, Col: 1}
-	}
+	left := l.byUnit(gradient, n)
 	l.weightSums(p, left, n*l.outer)
+	if l.unitFactors != nil {
+		left = l.byUnit(l.above.gradients(n), n) // no product, no operand
+	}
+	l.biasSums(p, left, n*l.outer)
 }
 
-// weightSums forms the two sums over the mini-batch and stores their results.
+// byUnit is a gradient of n examples with a row for each unit.
+func (l *linear[T]) byUnit(gradient []T, n int) quant.Matrix[T] {
+	if l.outer == 1 {
+		return quant.Matrix[T]{Data: gradient, Row: 1, Col: l.units}
+	}
+	groupByUnit(l.regrouped, gradient, n, l.units, l.outer)
+	return quant.Matrix[T]{Data: l.regrouped, Row: n * l.outer, Col: 1}
+}
+
+// weightSums forms the sums of products over the mini-batch and stores them.
 func (l *linear[T]) weightSums(p *pass, left quant.Matrix[T], terms int) {
 	set := &l.set.WeightGradient
 	products, sums := l.counts(p, WeightGradientProduct), l.counts(p, WeightGradientSum)
@@ -198,6 +222,7 @@ func (l *linear[T]) weightSums(p *pass, left quant.Matrix[T], terms int) {
 		q := &l.weightProduct[n]
 		q.K, q.A, q.C = terms, left, results[n*q.I*l.terms:]
 		q.A.Data = left.Data[n*q.I*left.Row:]
+		q.Scale = l.scale(l.unitFactors, n*q.I, q.I, l.activationFactor)
 		q.Terms, q.Sums = p.group(n, l.streams(p, opWeightProduct.of(0))), p.group(n, l.streams(p, opWeightSum.of(0)))
 		l.mul.Mul(*q, products, sums)
 		if p.watch != nil {
@@ -205,7 +230,11 @@ func (l *linear[T]) weightSums(p *pass, left quant.Matrix[T], terms int) {
 		}
 	}
 	round(l.place, p, WeightGradientResult, opWeightResult.of(0), l.weight.gradient.data, results, &set.Result, 0)
+}
 
+// biasSums forms the sums of the gradient itself and stores them.
+func (l *linear[T]) biasSums(p *pass, left quant.Matrix[T], terms int) {
+	set, sums := &l.set.WeightGradient, l.counts(p, WeightGradientSum)
 	db := l.results[:l.units]
 	l.mul.SumRows(db, left, l.units, terms, l.streams(p, opWeightSum.of(1)), sums)
 	round(l.place, p, WeightGradientResult, opWeightResult.of(1), l.bias.gradient.data, db, &set.Result, 0)
@@ -217,10 +246,11 @@ func (l *linear[T]) inputBackward(p *pass) {
 	set := &l.set.InputGradient
 	if set.Gradient != nil {
 		g := l.above.gradients(n)
-		round(l.place, p, InputGradientGradient, opInputOperand, l.belowGradient[:len(g)], g, set.Gradient, 0)
+		l.gradientFactor = roundAlong(l.place, p, InputGradientGradient, opInputOperand, l.belowGradient[:len(g)], g,
+			quant.Shape{Outer: n * l.groups, Axis: l.units / l.groups, Inner: l.outer}, set.Gradient, 0)
 	}
-	if set.First != nil {
-		round(l.place, p, InputGradientWeight, opWeightAgain.of(0), l.belowWeight, l.weight.master.data, set.First, 0)
+	if l.again.weight != nil {
+		l.takeWeightsAgain(p)
 	}
 	if l.rearrange != nil {
 		l.rearrange(l.belowProduct[0].A.Data, l.belowWeight)
@@ -231,6 +261,7 @@ func (l *linear[T]) inputBackward(p *pass) {
 	for k := range l.belowProduct {
 		q := &l.belowProduct[k]
 		q.J, q.C = columns, results[k*q.I*columns:]
+		q.Scale = l.scale(l.channelFactors, k*q.I, q.I, l.gradientFactor)
 		q.Terms, q.Sums = p.group(k, l.streams(p, opInputProduct)), p.group(k, l.streams(p, opInputSum))
 		l.belowMul.Mul(*q, l.counts(p, InputGradientProduct), l.counts(p, InputGradientSum))
 		if p.watch != nil {

@@ -148,6 +148,10 @@ func lookSums[T quant.Element](w *observer, layer int, productID, sumID PointID,
 			}
 			high, low = addTwice(high, low, p, rest)
 		}
+		if q.Scale != nil {
+			p, rest := valueAndRest(high, q.Scale[i], product)
+			high, low = p, float64(low*q.Scale[i])+rest
+		}
 		if q.Bias != nil {
 			high, low = addTwice(high, low, float64(q.Bias[i]), 0)
 		}

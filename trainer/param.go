@@ -21,6 +21,11 @@ type param[T quant.Element] struct {
 	working  array[T] // R[forward.weight](master): what the forward pass multiplies
 	gradient array[T] // R[weight_gradient.result], still scaled by S
 	states   []array[T]
+
+	// Of the left-hand operand of a product only: its axes, and the factors of its
+	// channels where the format shares scales.
+	axes    quant.Shape
+	factors []float64
 }
 
 // newParam makes parameter number of a layer.
@@ -51,6 +56,10 @@ func (q *param[T]) start(p *pass, values []float64) {
 func (q *param[T]) refresh(p *pass) {
 	if q.fixed {
 		return // evaluations read what is stored
+	}
+	if shared(&q.set.Weight) {
+		q.requantise(p)
+		return
 	}
 	round(q.place, p, ForwardWeight, opWorking.of(q.number), q.working.data, q.master.data, &q.set.Weight, 0)
 }

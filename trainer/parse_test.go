@@ -156,7 +156,7 @@ func TestPointsHaveNames(t *testing.T) {
 		}
 		seen[name] = true
 	}
-	if len(seen) != 25 || PointID(99).String() != "unknown point" {
+	if len(seen) != 26 || PointID(99).String() != "unknown point" {
 		t.Errorf("%d points", len(seen))
 	}
 }
@@ -167,7 +167,7 @@ func TestOperationsHaveNumbersOfTheirOwn(t *testing.T) {
 	numbers := []operation{
 		opInput, opLossGradient, opActivation, opForwardProduct, opForwardProduct + 1, opForwardSum, opForwardSum + 1,
 		opInputOperand, opInputProduct, opInputProduct + 1, opInputSum, opInputSum + 1, opInputResult,
-		opActivationAgain, opWeightOperand,
+		opActivationAgain, opWeightOperand, opForwardOperand,
 		opMeanSum, opMeanSum + 1, opMean, opDeviation, opSquare, opSquare + 1, opSquareSum, opSquareSum + 1, opVariance,
 		opInverse, opNormal, opUnbiased, opFollowMean, opFollowMean + 1, opFollowMean + 2, opFollowVariance,
 		opFollowVariance + 1, opFollowVariance + 2, opBackSum, opBackSum + 1, opBackMean, opCentre, opDot, opDot + 1,

@@ -35,6 +35,8 @@ const (
 	ForwardMoment          // mean, variance, inverse deviation, running statistics
 	InputGradientStatistic // the sums in the gradient of the input
 
+	ForwardOperand // the layer's input as operand of the forward product
+
 	pointCount int = iota
 )
 
@@ -65,6 +67,7 @@ var pointNames = [pointCount]string{
 	ForwardStatistic:         "forward.statistic",
 	ForwardMoment:            "forward.moment",
 	InputGradientStatistic:   "input_gradient.statistic",
+	ForwardOperand:           "forward.operand",
 }
 
 // String is the name plans use: "forward.sum".
@@ -92,6 +95,9 @@ var (
 		WeightGradientSum, WeightGradientOuter, WeightGradientResult,
 		UpdateState, UpdateStep, UpdateMaster,
 	}
+
+	// productPoints are those of a dense layer or a convolution.
+	productPoints = append(append([]PointID{}, parameterPoints...), ForwardOperand)
 
 	// gradientPoints are the points at which gradients live: a range event at
 	// one of them is what a dynamic loss scale watches for.
@@ -153,6 +159,9 @@ const (
 	opRest           operation = 44
 	opNormalResult   operation = 45
 )
+
+// opForwardOperand is the activation as operand of the forward product.
+const opForwardOperand operation = 46
 
 // Operations on parameter number p of a layer add 64 (p + 1).
 const (

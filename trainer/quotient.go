@@ -9,11 +9,11 @@ import (
 // divider writes R[point](x/n) of exact quotients by a small whole number.
 //
 // A binary64 quotient that is not exact is first rounded to odd: its last bit
-// then says that a rest was cut off, so rounding it again to a format of at most
-// 50 bits, random bits of stochastic rounding included, gives what the exact
-// quotient would (S. Boldo, G. Melquiond, Emulation of FMA and correctly rounded
-// sums: proved algorithms using rounding to odd, IEEE TC 2008). Points that ask
-// for more go through the exact scalar rounding, element by element.
+// then says that a rest was cut off, so rounding it again at a point that decides
+// at even significands only (Point.OddSafe) gives what the exact quotient would
+// (S. Boldo, G. Melquiond, Emulation of FMA and correctly rounded sums: proved
+// algorithms using rounding to odd, IEEE TC 2008). Other points go through the
+// exact scalar rounding, element by element.
 type divider[T quant.Element] struct {
 	n     float64
 	point *quant.Point
@@ -31,14 +31,10 @@ const (
 func newDivider[T quant.Element](n int, point *quant.Point, capacity int) *divider[T] {
 	d := &divider[T]{n: float64(n), point: point, road: byScalar}
 	limits := point.Format.Limits()
-	random := 0
-	if point.Rounding.Mode == quant.Stochastic {
-		random = 32 // the most there can be
-	}
 	_, single := any(T(0)).(float32)
 	switch {
 	// binary32 inputs keep quotient and residue far from binary64's subnormals.
-	case single && limits.Bits+random <= 50:
+	case single && point.OddSafe():
 		d.road = byOddQuotient
 	case limits.Exponent == 11 && limits.Fraction == 52 && point.Rounding.Mode == quant.NearestEven:
 		d.road = byNearestQuotient // the division itself is the rounding
@@ -72,7 +68,7 @@ func (d *divider[T]) divideScalar(dst, src []T, draws quant.Draws, first uint64,
 	for i, v := range src {
 		var word uint32
 		if d.point.Rounding.Mode == quant.Stochastic {
-			word = draws.Word(first + uint64(i))
+			word = d.point.Rounding.Word(draws, first+uint64(i))
 		}
 		r, event := d.point.Round(quant.ExactQuotient(float64(v), d.n), word)
 		dst[i] = T(r)

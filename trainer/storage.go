@@ -67,6 +67,8 @@ func (a *Arithmetic) At(id PointID) []*quant.Point {
 			points[i] = &a.States[i]
 		}
 		return points
+	case ForwardOperand:
+		return given(a.Operand)
 	case ForwardStatistic:
 		return throughout(a.Statistic)
 	case InputGradientStatistic:
@@ -139,7 +141,7 @@ func (n *Network) checkArm(arm *Arm, states int) error {
 		}
 	}
 	for _, s := range n.settings(arm) {
-		if err := s.point.Check(); err != nil {
+		if err := CheckPoint(s.id, s.point); err != nil {
 			return fmt.Errorf("%s, %s: %w", n.where(s.layer), s.id, err)
 		}
 	}

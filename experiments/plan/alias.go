@@ -30,6 +30,13 @@ type Shape struct {
 	Block, ScaleBits, TensorBits int
 }
 
+// SharesScales reports whether values of a format share scales: blocks and scaled
+// integers, which only operands of products have.
+func SharesScales(f Format) bool {
+	_, shared := f.(quant.Blocked)
+	return shared
+}
+
 // ShapeOf is the shape of a format. Posits count as floats with their longest
 // fraction, lists of values as floats of a fraction as long as their codes; a format
 // without exponent bits is an integer to the arithmetic.

@@ -36,6 +36,7 @@ func (a assigned) layer(states int) trainer.Arithmetic {
 		Moment:     a.moment(),
 		Weight:     at(trainer.ForwardWeight),
 		Activation: at(trainer.ForwardActivation),
+		Operand:    a.optional(trainer.ForwardOperand),
 		Forward:    a.accumulate(trainer.ForwardProduct),
 		InputGradient: trainer.Backward{
 			First:    a.optional(trainer.InputGradientWeight),
@@ -165,8 +166,15 @@ func reuseOperands(network *trainer.Network, arm *trainer.Arm, i int) {
 			l.InputGradient.First = nil
 		}
 	}
-	if p := l.WeightGradient.First; p != nil && all(activationsBelow(network, arm, i), *p) {
-		l.WeightGradient.First = nil
+	below := activationsBelow(network, arm, i)
+	if p := l.Operand; p != nil && all(below, *p) {
+		l.Operand = nil
+	}
+	if p := l.WeightGradient.First; p != nil {
+		// Unset, it is the operand of the forward product.
+		if l.Operand == nil && all(below, *p) || l.Operand != nil && p.Rounding.Mode != quant.Stochastic && samePoint(*p, *l.Operand) {
+			l.WeightGradient.First = nil
+		}
 	}
 	gradients := gradientsAbove(network, arm, i)
 	for _, backward := range []*trainer.Backward{&l.InputGradient, &l.WeightGradient} {

@@ -200,14 +200,19 @@ func layerRows(network *trainer.Network, arm *trainer.Arm, i int, id trainer.Poi
 	name, a := network.Layers[i].Name, &arm.Layers[i]
 	points := a.At(id)
 	switch {
-	case follows(id):
+	case follows(id) && id != trainer.ForwardOperand:
 		return []Setting{followerRow(i, name, id, a)}
 	case len(points) > 0:
 	case isProduct(id):
 		return []Setting{{Layer: i, Name: name, Point: id.String(), Format: exactWord, Rounding: exactWord}}
+	case id == trainer.ForwardOperand:
+		return nil // nothing is rounded: the product takes what is stored
 	case isOperand(id):
-		row := pointRow(i, name, id, reused(network, arm, i, id))
-		row.Rounding = reusedWord
+		from := reused(network, arm, i, id)
+		row := pointRow(i, name, id, from)
+		if !SharesScales(from.Format) { // those are taken anew along their own axis
+			row.Rounding = reusedWord
+		}
 		return []Setting{row}
 	}
 	rows := make([]Setting, len(points))
@@ -270,6 +275,9 @@ func reused(network *trainer.Network, arm *trainer.Arm, i int, id trainer.PointI
 	case trainer.InputGradientWeight:
 		return arm.Layers[i].Weight
 	case trainer.WeightGradientActivation:
+		if p := arm.Layers[i].Operand; p != nil {
+			return *p
+		}
 		return activationsBelow(network, arm, i)[0]
 	}
 	return gradientsAbove(network, arm, i)[0]

@@ -62,9 +62,12 @@ func isStatistic(id trainer.PointID) bool {
 }
 
 // follows reports whether a point, unless its own key sets it, is computed as
-// another: statistics as the sums of their phase, moments as activations. No
+// another: statistics as the sums of their phase, moments as activations, the operand
+// of the forward product as it is stored. No
 // shorthand sets it, so that it follows where the shorthand leads.
-func follows(id trainer.PointID) bool { return isStatistic(id) || id == trainer.ForwardMoment }
+func follows(id trainer.PointID) bool {
+	return isStatistic(id) || id == trainer.ForwardMoment || id == trainer.ForwardOperand
+}
 
 // classOf is what a setting of the point's own key may hold.
 func classOf(id trainer.PointID) class {
@@ -253,6 +256,9 @@ func (r *reader) applyTarget(n *node, key string, t target, sel selection, a *as
 	if !ok {
 		return
 	}
+	if !r.checkShared(n, t, v) {
+		return
+	}
 	origin := sel.prefix() + key
 	a.spelled = append(a.spelled, origin+" "+v.spell())
 	r.applies(n, key, t, sel)
@@ -274,6 +280,26 @@ func (r *reader) applyTarget(n *node, key string, t target, sel selection, a *as
 		}
 		r.put(a, sel, id, s)
 	}
+}
+
+// checkShared refuses a format with shared scales where it cannot be.
+func (r *reader) checkShared(n *node, t target, v value) bool {
+	points := append([]quant.Point{v.point}, v.states...)
+	if v.outer != nil {
+		points = append(points, *v.outer)
+	}
+	for i := range points {
+		if !SharesScales(points[i].Format) {
+			continue
+		}
+		for _, id := range t.ids {
+			if err := trainer.CheckPoint(id, &points[i]); err != nil {
+				r.fail(fault(n, err))
+				return false
+			}
+		}
+	}
+	return true
 }
 
 // put applies a setting to one point of the selected layers and records a

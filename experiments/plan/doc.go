@@ -53,7 +53,8 @@
 // update.master. Each is a key of an arm. Shorthands set several:
 //
 //	everything               all points, the operands of gradient products included
-//	storage                  all points at which a tensor is stored or taken
+//	storage                  all points at which a tensor is stored or taken, but for
+//	                         forward.operand
 //	accumulate               the three sums, their order and outer sums; never products
 //	input_gradient.operand   input_gradient.weight and input_gradient.gradient
 //	weight_gradient.operand  weight_gradient.activation and weight_gradient.gradient
@@ -83,6 +84,12 @@
 // with order, outer and through of their own; forward.moment is what is made of them.
 // Only their own keys set them: unset, they are as the sums and activations of their
 // phase, so shorthands reach them through those.
+//
+// Formats whose values share scales, blocks (MXFP8) and scaled integers (INT8), are
+// settings of the operands of products: forward.weight, forward.operand, and the
+// operands of the gradient products. forward.operand is the layer's input as the
+// forward product sees it; only its own key sets it, unset it is as stored. An unset
+// operand of a gradient product is taken from the stored tensor again.
 //
 // update.state also takes an array, a setting for each state tensor in the order of
 // the optimizer's formula: velocity; first and second moment; last the compensation,

@@ -27,7 +27,7 @@ func TestErrorsNameLineKeyReasonRemedy(t *testing.T) {
 		"unknown arm key":          {`storage = "bf16"`, `acumulate = "bf16" # <-`, "arm[1].acumulate", "unknown key", `did you mean "accumulate"?`},
 		"bare point":               {`storage = "bf16"`, `master = "bf16" # <-`, "arm[1].master", "unknown key", "write the point in full: update.master"},
 		"unknown point":            {`storage = "bf16"`, `forward.activations = "bf16" # <-`, "arm[1].forward.activations", "unknown key", `did you mean "activation"?`},
-		"point of another phase":   {`storage = "bf16"`, `forward.operand = "bf16" # <-`, "arm[1].forward.operand", "unknown key", "write one of activation, moment, outer, product, statistic, sum, weight"},
+		"point of another phase":   {`storage = "bf16"`, `forward.result = "bf16" # <-`, "arm[1].forward.result", "unknown key", "write one of activation, moment, operand, outer, product, statistic, sum, weight"},
 		"phase is no point":        {`storage = "bf16"`, `forward = "bf16" # <-`, "arm[1].forward", `wrong type: "bf16" is a text, want a table of points`, "forward.activation = ..."},
 		"unknown setting key":      {`storage = "bf16"`, `storage = { format = "bf16", roundng = "up" } # <-`, "arm[1].storage.roundng", "unknown key", `did you mean "rounding"?`},
 		"unknown format":           {`storage = "bf16"`, `storage = "bf61" # <-`, "arm[1].storage", `unknown format "bf61"`, `did you mean "bf16"?`},

@@ -67,3 +67,36 @@ func TestRandomSources(t *testing.T) {
 		}
 	}
 }
+
+// Shared scales: at operands of products only, and taken anew for each of them.
+func TestSharedScales(t *testing.T) {
+	for setting, want := range map[string]string{
+		`storage = "MXFP8"`:                                 "MXFP8(E4M3) shares scales among values, which only operands of products can: set forward.weight, forward.operand, ",
+		`update.master = { format = "INT8" }`:               "INT8 shares scales",
+		`forward.operand = "INT8(per=channel)"`:             "a row of a left-hand operand",
+		`accumulate = { format = "fp32", outer = "MXFP4" }`: "MXFP4 shares scales",
+	} {
+		all := failures(t, texts{"plan.toml": strings.Replace(basePlan, `storage = "bf16"`, setting, 1)}, "plan.toml")
+		if e := all[0]; len(all) != 1 || e.Remedy == "" || !strings.Contains(e.Reason+": "+e.Remedy, want) {
+			t.Errorf("%s: %v, want %s", setting, all, want)
+		}
+	}
+	_, a := loadArm(t, "forward.weight = \"INT8(per=channel)\"\nforward.operand = \"MXFP4\"")
+	if l := a.Arithmetic.Layers[0]; l.Operand == nil || l.InputGradient.First != nil || l.WeightGradient.First != nil {
+		t.Errorf("operands %+v", l)
+	}
+	for point, want := range map[string]string{"forward.operand": "MXFP4, ", "weight_gradient.activation": "MXFP4, nearest-even", "forward.weight": "INT8(per=channel), nearest-even"} {
+		if got := a.at(0, point); !strings.HasPrefix(got, want) {
+			t.Errorf("%s: %q, want %s", point, got, want)
+		}
+	}
+	// What is stored already is no operand of its own; a stored one beside blocks is.
+	_, a = loadArm(t, "forward.operand = \"fp32\"")
+	if a.Arithmetic.Layers[0].Operand != nil {
+		t.Error("an operand that changes no value is kept")
+	}
+	_, a = loadArm(t, "forward.operand = \"MXFP4\"\nweight_gradient.activation = \"fp32\"")
+	if a.Arithmetic.Layers[0].WeightGradient.First == nil {
+		t.Error("the stored activation is lost")
+	}
+}

@@ -132,7 +132,11 @@ func (r *reader) readPoint(n *node, c class, fs formats) (p quant.Point) {
 	if len(r.errs) > before {
 		return p
 	}
-	if err := p.Check(); err != nil {
+	check := p.Check
+	if SharesScales(p.Format) {
+		check = p.CheckOperand // whether the point can have it is for applyTarget to say
+	}
+	if err := check(); err != nil {
 		at := n
 		if n.table["overflow"] != nil {
 			at = n.table["overflow"]
