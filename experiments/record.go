@@ -23,6 +23,9 @@ func record(r *results.Run, o *trainer.Outcome) {
 	if o.Test != nil {
 		r.Confusion, r.Classes = o.Test.Confusion, o.Test.Classes
 	}
+	if o.Findings != nil {
+		r.Findings = findings(o.Findings)
+	}
 }
 
 func epoch(e *trainer.Epoch) results.Epoch {

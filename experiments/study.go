@@ -134,6 +134,7 @@ func (r *reader) take(e store.Entry, arm string, seed uint64) error {
 		return err
 	}
 	run.Arm, run.Replicate = arm, seed
+	r.diagnose(run)
 	r.study.Runs = append(r.study.Runs, *run)
 	return nil
 }

@@ -10,6 +10,7 @@ import (
 	"time"
 
 	"ulpine/datasets"
+	"ulpine/experiments/plan"
 	"ulpine/results"
 	"ulpine/trainer"
 )
@@ -181,6 +182,9 @@ func (x *runner) job(u *unit, r *results.Run) (trainer.Job, error) {
 			return job, errors.New(u.replicate.broken)
 		}
 		job.Start = u.replicate.start
+	}
+	if x.Diagnostics == plan.Sampled {
+		job.Diagnostics = trainer.DefaultDiagnostics
 	}
 	r.Data = data.Hash
 	job.Train, job.Validation, job.Test = trainer.Set(data.Train), trainer.Set(data.Validation), trainer.Set(data.Test)

@@ -27,6 +27,9 @@ type Histogram struct {
 type EpochCounts struct {
 	PointCounts
 	Epoch int `json:"epoch"` // from 1
+	// Values is how many values the counts are of, where only some were looked at;
+	// 0: all that the point rounds.
+	Values uint64 `json:"values,omitempty"`
 }
 
 // Diagnosis is what was looked at more closely in an arm's runs.

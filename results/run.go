@@ -87,6 +87,8 @@ type Run struct {
 	Wall        time.Duration `cbor:"20,keyasint"`
 	Data        Hash          `cbor:"22,keyasint"` // of the examples trained and tested on
 	StepBytes   []byte        `cbor:"21,keyasint"` // Steps, little-endian binary64; written by the store
+	Findings    *Findings     `cbor:"-"`           // nil: not looked at
+	Looked      bool          `cbor:"23,keyasint"` // there are findings, stored apart; written by the store
 }
 
 // Name is how a run is called: arm/replicate.

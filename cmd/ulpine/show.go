@@ -153,6 +153,7 @@ func showRun(w io.Writer, r *results.Run, title string) error {
 	fmt.Fprintln(w)
 	showEpochs(w, r)
 	showCounters(w, r)
+	showFindings(w, r.Findings)
 	return nil
 }
 

@@ -58,6 +58,7 @@ func (r *reader) build(root *node) *Plan {
 	p.Task = r.readTask(root)
 	p.Network = r.readNetwork(root, &p.Task)
 	p.Training = r.readMainTraining(root, &p.Task)
+	p.Diagnostics = r.readDiagnostics(root)
 	p.Replicates = r.readReplicates(root)
 	p.Claim = r.readClaim(root)
 	arms := armReader{r, r.readFormats(root), &p.Network, p.Training, p.Task.Train}
@@ -159,7 +160,7 @@ func (r *reader) readMainTraining(root *node, task *Task) trainer.Training {
 	if n == nil {
 		return defaultTraining()
 	}
-	t := r.readTraining(n, defaultTraining(), false, trainingKeys)
+	t := r.readTraining(n, defaultTraining(), false, append(slices.Clone(trainingKeys), "diagnostics"))
 	r.checkBatch(n, &t, task.Train)
 	r.checkTargets(n, &t, task)
 	return t

@@ -23,7 +23,7 @@ func TestErrorsNameLineKeyReasonRemedy(t *testing.T) {
 	for name, c := range map[string]struct{ old, new, key, reason, remedy string }{
 		"unknown table":            {"[claim]", "[clam] # <-\nx = 1\n[claim]", "clam", "unknown key", `did you mean "claim"?`},
 		"unknown key":              {"epochs = 3", "epochs = 3\nepohcs = 4 # <-", "training.epohcs", "unknown key", `did you mean "epochs"?`},
-		"unknown key far":          {"epochs = 3", "epochs = 3\nzzz = 4 # <-", "training.zzz", "unknown key", "write one of batch, epochs"},
+		"unknown key far":          {"epochs = 3", "epochs = 3\nzzz = 4 # <-", "training.zzz", "unknown key", "write one of batch, diagnostics, epochs"},
 		"unknown arm key":          {`storage = "bf16"`, `acumulate = "bf16" # <-`, "arm[1].acumulate", "unknown key", `did you mean "accumulate"?`},
 		"bare point":               {`storage = "bf16"`, `master = "bf16" # <-`, "arm[1].master", "unknown key", "write the point in full: update.master"},
 		"unknown point":            {`storage = "bf16"`, `forward.activations = "bf16" # <-`, "arm[1].forward.activations", "unknown key", `did you mean "activation"?`},
@@ -112,6 +112,7 @@ func TestErrorsNameLineKeyReasonRemedy(t *testing.T) {
 		"momentum":                 {`momentum = 0.9 }`, `momentum = 1 } # <-`, "training.optimizer", "momentum is 1", "it must be at least 0 and below 1"},
 		"shuffle":                  {"epochs = 3", "epochs = 3\nshuffle = \"no\" # <-", "training.shuffle", "want true or false", "shuffle = true"},
 		"evaluate":                 {"epochs = 3", "epochs = 3\nevaluate = \"last epcoh\" # <-", "training.evaluate", `unknown word "last epcoh"`, `did you mean "last epoch"?`},
+		"diagnostics":              {"epochs = 3", "epochs = 3\ndiagnostics = \"sample\" # <-", "training.diagnostics", `unknown word "sample"`, `did you mean "sampled"?`},
 		"arm may not reorder":      {`storage = "bf16"`, "training.shuffle = false # <-", "arm[1].training.shuffle", "unknown key", "write one of batch"},
 		"learning rate twice":      {`storage = "bf16"`, "training.learning_rate = 0.1\nlearning_rate = 0.2 # <-", "arm[1].learning_rate", "the learning rate is set in plan.toml line 24 too", "keep one of them"},
 		"loss scale kind":          {`storage = "bf16"`, `loss_scale = { kind = "fix", value = 8 } # <-`, "arm[1].loss_scale.kind", `unknown word "fix"`, `did you mean "fixed"?`},

@@ -10,12 +10,13 @@ type Plan struct {
 	File            string // as the caller named it
 	Text            string // as written, included fragments first come behind it
 
-	Task       Task
-	Network    trainer.Network
-	Training   trainer.Training // what the arms share; an arm may override some of it
-	Pretrain   *Pretrain        // nil: every arm starts from initial weights
-	Replicates Replicates
-	Claim      Claim
+	Task        Task
+	Network     trainer.Network
+	Training    trainer.Training // what the arms share; an arm may override some of it
+	Diagnostics Diagnostics      // of all runs
+	Pretrain    *Pretrain        // nil: every arm starts from initial weights
+	Replicates  Replicates
+	Claim       Claim
 
 	Arms      []Arm // the baseline first, then in the order of the plan, those of grids last
 	Grids     []Grid

@@ -60,6 +60,7 @@ func writeFacts(b *strings.Builder, p *Plan) {
 	w := table(b)
 	fmt.Fprintf(w, "data\t%s\n", p.Task.Description)
 	fmt.Fprintf(w, "training\t%s\n", describeTraining(p.Training))
+	fmt.Fprintf(w, "diagnostics\t%s\n", p.Diagnostics)
 	if pre := p.Pretrain; pre != nil {
 		fmt.Fprintf(w, "pretraining data\t%s\n", pre.Task.Description)
 		fmt.Fprintf(w, "pretraining\t%s\n", describeTraining(pre.Training))

@@ -17,6 +17,7 @@ type epochRow struct {
 	replicate uint64
 	place     results.PointCounts // counts summed over the epochs
 	epochs    []results.Counts
+	looked    []uint64 // values that the counts of an epoch are of; 0: all
 }
 
 // epochRowsOf are the points of diagnosed runs at which something left its
@@ -30,7 +31,7 @@ func (v *view) epochRowsOf() []epochRow {
 		}
 		from := len(out)
 		for _, e := range d.Epochs {
-			if e.Epoch < 1 || events(e.Counts) == 0 {
+			if e.Epoch < 1 {
 				continue
 			}
 			i := slices.IndexFunc(out[from:], func(r epochRow) bool { return r.place.Layer == e.Layer && r.place.Point == e.Point })
@@ -42,8 +43,9 @@ func (v *view) epochRowsOf() []epochRow {
 			}
 			r := &out[from+i]
 			for len(r.epochs) < e.Epoch {
-				r.epochs = append(r.epochs, results.Counts{})
+				r.epochs, r.looked = append(r.epochs, results.Counts{}), append(r.looked, 0)
 			}
+			r.looked[e.Epoch-1] += e.Values
 			for _, sum := range []*results.Counts{&r.epochs[e.Epoch-1], &r.place.Counts} {
 				sum.Overflow += e.Counts.Overflow
 				sum.Underflow += e.Counts.Underflow
@@ -51,6 +53,7 @@ func (v *view) epochRowsOf() []epochRow {
 				sum.NaN += e.Counts.NaN
 			}
 		}
+		out = append(out[:from], slices.DeleteFunc(out[from:], func(r epochRow) bool { return events(r.place.Counts) == 0 })...)
 		slices.SortStableFunc(out[from:], func(a, b epochRow) int { return cmp.Compare(events(b.place.Counts), events(a.place.Counts)) })
 	}
 	return out
@@ -114,12 +117,15 @@ func (v *view) epochPart(rows []epochRow, epochs int, width float64) *draw.Figur
 
 // epochCell draws one epoch of one point, as a cell of the range map.
 func (v *view) epochCell(g *draw.Group, x, y, w, h float64, r *epochRow, e int) {
+	if !r.sees(e) {
+		return
+	}
 	var c results.Counts
 	if e < len(r.epochs) {
 		c = r.epochs[e]
 	}
 	over := c.Overflow + c.Saturated + c.NaN
-	cell := mapCell{PointCounts: results.PointCounts{Counts: c}, under: v.epochShare(r, c.Underflow), over: v.epochShare(r, over)}
+	cell := mapCell{PointCounts: results.PointCounts{Counts: c}, under: v.epochShare(r, e, c.Underflow), over: v.epochShare(r, e, over)}
 	t := g.Titled(fmt.Sprintf("epoch %d: %s", e+1, eventWords(cell)))
 	if c.Underflow > 0 {
 		k := math.Max(1.5, h*fullness(cell.under))
@@ -131,10 +137,21 @@ func (v *view) epochCell(g *draw.Group, x, y, w, h float64, r *epochRow, e int) 
 	t.Rect(x, y, w, h, draw.Line(draw.Faint, 1))
 }
 
-// epochShare is n as a share of the values that the point rounds in an epoch.
-func (v *view) epochShare(r *epochRow, n uint64) float64 {
+// sees reports whether an epoch was looked at: samples may pass some by, but where
+// all values are counted an epoch without a count saw no event.
+func (r *epochRow) sees(e int) bool {
+	sampled := slices.ContainsFunc(r.looked, func(n uint64) bool { return n > 0 })
+	return !sampled || e < len(r.looked) && r.looked[e] > 0
+}
+
+// epochShare is n as a share of the values looked at in an epoch, or of all that
+// the point rounds in it.
+func (v *view) epochShare(r *epochRow, e int, n uint64) float64 {
 	if n == 0 {
 		return 0
+	}
+	if r.looked[e] > 0 {
+		return float64(n) / float64(r.looked[e])
 	}
 	for _, vol := range v.Volumes {
 		if vol.Layer == r.place.Layer && vol.Point == r.place.Point && vol.Values > 0 && v.clock.epochs > 0 {

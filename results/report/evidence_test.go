@@ -197,7 +197,25 @@ func TestEpochRows(t *testing.T) {
 	if len(rows) != 2 || len(rows[0].epochs) != inventedEpochs || rows[0].epochs[2].Underflow != 400 || rows[0].epochs[0].Saturated != 3 {
 		t.Fatalf("%+v", rows)
 	}
-	near(t, "share of an epoch", v.epochShare(&rows[0], 400), 400*inventedEpochs/4e6, 1e-12)
+	near(t, "share of an epoch", v.epochShare(&rows[0], 2, 400), 400*inventedEpochs/4e6, 1e-12)
+}
+
+// TestSampledEpochs: counts of samples are shares of what was looked at, and an
+// epoch that was not looked at has no cell.
+func TestSampledEpochs(t *testing.T) {
+	s := invented()
+	at := results.PointCounts{Layer: 6, Name: "dense 5", Point: "forward.sum"}
+	hit, calm := at, at
+	hit.Counts.Underflow, calm.Point = 5, "forward.weight"
+	s.Diagnoses = []results.Diagnosis{{Arm: "e4m3", Replicate: 101, Epochs: []results.EpochCounts{
+		{PointCounts: at, Epoch: 1, Values: 100}, {PointCounts: hit, Epoch: 3, Values: 50}, {PointCounts: calm, Epoch: 3, Values: 50},
+	}}}
+	v := newView(s)
+	rows := v.epochRowsOf()
+	if len(rows) != 1 || !rows[0].sees(0) || rows[0].sees(1) || !rows[0].sees(2) || rows[0].sees(3) {
+		t.Fatalf("%+v", rows)
+	}
+	near(t, "share of a sample", v.epochShare(&rows[0], 2, 5), 0.1, 1e-12)
 }
 
 // TestGridRoles: roundings become lines, the longest axis runs across, the rest

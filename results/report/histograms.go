@@ -1,6 +1,7 @@
 package report
 
 import (
+	"cmp"
 	"fmt"
 	"math"
 	"slices"
@@ -17,6 +18,41 @@ type seen struct {
 	replicate uint64
 	format    string
 	limits    *results.Range // nil: the format's range is not known
+}
+
+// shownHistograms is the number of points of a run that are drawn and listed.
+const shownHistograms = 6
+
+// shownHistograms are, run by run, the points with the largest share of values
+// outside their range, in the order of computation; hidden counts the others.
+func (v *view) shownHistograms() (shown []seen, hidden int) {
+	all := v.histograms()
+	for from := 0; from < len(all); {
+		to := from + 1
+		for to < len(all) && all[to].arm == all[from].arm && all[to].replicate == all[from].replicate {
+			to++
+		}
+		run := all[from:to]
+		order := make([]int, len(run))
+		for i := range order {
+			order[i] = i
+		}
+		slices.SortStableFunc(order, func(a, b int) int { return cmp.Compare(run[b].share(), run[a].share()) })
+		order = order[:min(len(order), shownHistograms)]
+		slices.Sort(order)
+		for _, i := range order {
+			shown = append(shown, run[i])
+		}
+		hidden += len(run) - len(order)
+		from = to
+	}
+	return shown, hidden
+}
+
+// share is the share of values outside the range of the format.
+func (s *seen) share() float64 {
+	below, above := s.outside()
+	return float64(below+above) / float64(total(&s.Histogram))
 }
 
 // histograms are those of the last epoch of every point, arm by arm.
@@ -130,7 +166,7 @@ func histogramSection(v *view) any {
 
 // histogramTable counts what lies outside the range; nil when nothing was recorded.
 func (v *view) histogramTable() *tabular {
-	all := v.histograms()
+	all, hidden := v.shownHistograms()
 	if len(all) == 0 {
 		return nil
 	}
@@ -150,12 +186,16 @@ func (v *view) histogramTable() *tabular {
 		}
 		t.Rows = append(t.Rows, row)
 	}
+	if hidden > 0 {
+		t.Notes = append(t.Notes, fmt.Sprintf("Of each run the %d points with the largest share of values outside their range; numbers/histograms.csv has the other %s too.",
+			shownHistograms, plural(hidden, "histogram")))
+	}
 	return t
 }
 
 // exponentFigures draws histograms as small plots in three columns.
 func exponentFigures(v *view, width float64) []*draw.Figure {
-	all := v.histograms()
+	all, _ := v.shownHistograms()
 	var out []*draw.Figure
 	for i := 0; i < len(all); i += panelsPerFigure {
 		out = append(out, exponentPart(all[i:min(i+panelsPerFigure, len(all))], width))

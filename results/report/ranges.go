@@ -39,7 +39,7 @@ func counterSection(v *view) any {
 		Figure: figureHTML(v, "range-map", "Columns: the rounding points in the order of computation; rows: the layers of an arm. "+
 			"A cell fills from below with values that underflowed to zero and from above with values that overflowed, saturated or became no number, on a logarithmic scale from one in ten million to all of them. "+
 			"The figure in a cell is their number in a million values. An empty cell was counted and saw none; no cell: nothing is rounded there. Layers and arms without any event are not drawn.", false),
-		Epochs:  figureHTML(v, "range-by-epoch", "The same, epoch by epoch, of the runs that were looked at more closely. Cells as above.", false),
+		Epochs:  figureHTML(v, "range-by-epoch", "The same, epoch by epoch, of the runs that were looked at more closely. Cells as above; where only samples were looked at, a cell is their share, and an epoch without a sample has no cell.", false),
 		Caption: "Range events, summed over the replicates of an arm, most events first",
 		Columns: columns("Layer", "point", "#overflow", "#underflow to zero", "#saturation", "#NaN", "#in a million"),
 	}

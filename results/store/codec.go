@@ -52,6 +52,7 @@ const (
 	kindSteps   = 'S'
 	kindInitial = 'I'
 	kindFinal   = 'F'
+	kindLook    = 'D' // findings of diagnostics
 )
 
 // prefix is the bucket key of the part's pieces without the piece's number.
@@ -71,7 +72,7 @@ type encodedRun struct {
 func encodeRun(r *results.Run) (encodedRun, error) {
 	e := encodedRun{parts: map[part][]byte{}}
 	record := *r
-	record.StepBytes = nil
+	record.StepBytes, record.Looked = nil, r.Findings != nil
 	record.Started = record.Started.UTC()
 	var err error
 	if record.Initial, err = e.tensors(kindInitial, r.Initial); err != nil {
@@ -81,6 +82,11 @@ func encodeRun(r *results.Run) (encodedRun, error) {
 		return e, err
 	}
 	e.parts[part{kind: kindSteps}] = results.RealBytes(r.Steps)
+	if r.Findings != nil {
+		if e.parts[part{kind: kindLook}], err = encode(r.Findings); err != nil {
+			return e, err
+		}
+	}
 	if e.parts[part{kind: kindRecord}], err = encode(record); err != nil {
 		return e, err
 	}
@@ -174,6 +180,9 @@ func readRun(b *bolt.Bucket, key results.Hash, tensors bool) (*results.Run, erro
 	if r.Steps, err = results.Reals(raw); err != nil {
 		return nil, fmt.Errorf("steps: %w", err)
 	}
+	if err := readFindings(b, key, r); err != nil {
+		return nil, err
+	}
 	if !tensors {
 		r.Initial, r.Final = nil, nil
 		return r, nil
@@ -181,6 +190,23 @@ func readRun(b *bolt.Bucket, key results.Hash, tensors bool) (*results.Run, erro
 	return r, errors.Join(
 		readTensors(b, key, kindInitial, r.Initial),
 		readTensors(b, key, kindFinal, r.Final))
+}
+
+// readFindings reads what diagnostics found; runs of before there were any, and
+// those not looked at, have none.
+func readFindings(b *bolt.Bucket, key results.Hash, r *results.Run) error {
+	if !r.Looked {
+		return nil
+	}
+	raw, err := getPart(b, key, part{kind: kindLook})
+	if err != nil {
+		return err
+	}
+	r.Findings = new(results.Findings)
+	if err := decode(raw, r.Findings); err != nil {
+		return fmt.Errorf("findings: %w", err)
+	}
+	return nil
 }
 
 func readTensors(b *bolt.Bucket, key results.Hash, kind byte, tensors []results.Tensor) error {
