@@ -10,9 +10,10 @@ import (
 // fewForSkewness: below this many values a skewness says next to nothing.
 const fewForSkewness = 8
 
-// fewForBootstrap: below this many values the BCa interval misses about twice as
-// often as it says, as the package's simulation shows.
-const fewForBootstrap = 20
+// FewForBCa: below this many pairs the BCa interval misses about twice as often as
+// it says, as the package's simulation shows; the studentised bootstrap, which
+// keeps nearly what it says, is told of in its place.
+const FewForBCa = 20
 
 // doubts are the warnings that travel with a comparison into the report.
 // Their readers put the arm's name before them, so none begins with it.
@@ -101,18 +102,23 @@ func skewed(c *results.Comparison) bool {
 // does. One without ends, for want of pairs, sees nothing.
 func disagreement(c *results.Comparison) (warnings []string) {
 	w := newMeasure(c)
-	for _, other := range []struct {
+	type named struct {
 		name      string
 		low, high float64
-	}{{"bootstrap", c.BootLow, c.BootHigh}, {"sign-flip", c.FlipLow, c.FlipHigh}} {
+	}
+	var others []named
+	switch {
+	case c.N >= FewForBCa:
+		others = append(others, named{"BCa bootstrap", c.BootLow, c.BootHigh})
+	case c.Offered == "": // else told of already
+		others = append(others, named{Studentised, c.StudentLow, c.StudentHigh})
+	}
+	for _, other := range append(others, named{"sign-flip", c.FlipLow, c.FlipHigh}) {
 		if math.IsNaN(other.low) || math.IsInf(other.low, 0) || side(c.Low, c.High, c.Margin) == side(other.low, other.high, c.Margin) {
 			continue
 		}
-		text := fmt.Sprintf("t and %s intervals do not agree about the margin (%s %s)", other.name, other.name, w.with(w.span(other.low, other.high)))
-		if other.name == "bootstrap" && c.N < fewForBootstrap && !skewed(c) {
-			text += "; from so few pairs the bootstrap misses more often"
-		}
-		warnings = append(warnings, text)
+		warnings = append(warnings, fmt.Sprintf("t and %s intervals do not agree about the margin (%s %s)",
+			other.name, other.name, w.with(w.span(other.low, other.high))))
 	}
 	return warnings
 }

@@ -72,7 +72,7 @@ func (v *view) json(w io.Writer) error {
 	top["diagnoses"] = append([]results.Diagnosis{}, v.Diagnoses...)
 	top.float("margin", v.Margin)
 	top.float("confidence", v.Confidence)
-	if v.NoiseHigh > v.NoiseLow {
+	if v.noiseMeasured() {
 		n := object{"from": v.NoiseFrom}
 		n.float("low", v.NoiseLow)
 		n.float("high", v.NoiseHigh)
