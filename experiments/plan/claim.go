@@ -25,7 +25,7 @@ var metrics = []metric{
 	{"training loss", "lower", "training"},
 }
 
-// Metrics are the names a claim may have.
+// Metrics are the names a claim may have that take no target.
 func Metrics() []string {
 	names := make([]string, len(metrics))
 	for i, m := range metrics {
@@ -44,7 +44,7 @@ func (r *reader) readClaim(root *node) (c Claim) {
 		return c
 	}
 	r.known(n, "metric", "margin", "confidence")
-	c.Metric = r.word(n, "metric", c.Metric, Metrics()...)
+	c.Metric = r.metric(n, c.Metric)
 	if n.table["margin"] == nil {
 		r.fail(n.errorf("write margin = 0.01, the loss of the metric that you accept", "margin is missing"))
 	}
@@ -143,10 +143,12 @@ func (r *reader) armSlug(n *node, key string, arms []Arm) string {
 	return ""
 }
 
-// checkMetric holds the claim to what the training evaluates and the data has.
+// checkMetric holds the claim to what the training evaluates and the data has. A
+// count of epochs can be told only if there is a score for each.
 func (r *reader) checkMetric(root *node, c Claim, t trainer.Training, task Task) {
+	name, _, counts := splitTarget(c.Metric)
 	for _, m := range metrics {
-		if m.name != c.Metric {
+		if m.name != name {
 			continue
 		}
 		when, count := trainer.EveryEpoch, 1
@@ -167,6 +169,9 @@ func (r *reader) checkMetric(root *node, c Claim, t trainer.Training, task Task)
 			r.fail(at.errorf("give the task "+m.data+" data or claim another metric", "the task has no %s data", m.data))
 		} else if when == trainer.Never {
 			r.fail(at.errorf(`write training.evaluate = "last epoch"`, "the %s data is never evaluated", m.data))
+		} else if counts && when != trainer.EveryEpoch {
+			r.fail(at.errorf(`write training.evaluate = "every epoch"`,
+				"epochs to a target are counted, but the %s data is evaluated only at the %s", m.data, when))
 		}
 	}
 }

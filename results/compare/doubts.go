@@ -10,11 +10,6 @@ import (
 // fewForSkewness: below this many values a skewness says next to nothing.
 const fewForSkewness = 8
 
-// FewForBCa: below this many pairs the BCa interval misses about twice as often as
-// it says, as the package's simulation shows; the studentised bootstrap, which
-// keeps nearly what it says, is told of in its place.
-const FewForBCa = 20
-
 // doubts are the warnings that travel with a comparison into the report.
 // Their readers put the arm's name before them, so none begins with it.
 // identical: every pair of runs has one digest.
@@ -108,7 +103,7 @@ func disagreement(c *results.Comparison) (warnings []string) {
 	}
 	var others []named
 	switch {
-	case c.N >= FewForBCa:
+	case c.N >= results.FewForBCa:
 		others = append(others, named{"BCa bootstrap", c.BootLow, c.BootHigh})
 	case c.Offered == "": // else told of already
 		others = append(others, named{Studentised, c.StudentLow, c.StudentHigh})

@@ -10,7 +10,6 @@ import (
 	"time"
 
 	"ulpine/results"
-	"ulpine/results/compare"
 )
 
 // claimSection is what was asked and what was fixed before the first run.
@@ -267,7 +266,7 @@ func (v *view) checks(cs []results.Comparison) []*tabular {
 // bca is the BCa interval, or that the pairs are too few to trust it: from so few
 // it misses about twice as often as it says, and the studentised one stands beside.
 func (v *view) bca(c *results.Comparison) string {
-	if c.N < compare.FewForBCa && !math.IsNaN(c.BootLow) {
+	if c.N < results.FewForBCa && !math.IsNaN(c.BootLow) {
 		return "too few pairs"
 	}
 	return v.words.interval(c.BootLow, c.BootHigh)
