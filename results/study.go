@@ -138,6 +138,7 @@ type Study struct {
 	Classes         []string
 	Warnings        []string
 	Cautions        []string
+	Looks           string // when pairs are looked at, and at which look it stopped; empty: all are asked for
 	Answer          string // the sentence
 	StoreDigest     string
 	CodeVersion     string

@@ -1,6 +1,7 @@
 package plan
 
 import (
+	"fmt"
 	"math"
 	"strings"
 
@@ -78,14 +79,45 @@ func (r *reader) readReplicates(root *node) Replicates {
 	if n == nil {
 		return reps
 	}
-	r.known(n, "count", "first_seed")
-	if n.table["count"] == nil {
+	r.known(n, "count", "up_to", "look_every", "first_seed")
+	if n.table["up_to"] != nil || n.table["look_every"] != nil {
+		reps.Count, reps.LookEvery = r.readLooks(n)
+	} else if n.table["count"] == nil {
 		r.fail(n.errorf("write count = 10", "count is missing"))
 	}
-	reps.Count = int(r.whole(n, "count", 1, 1, maxReplicates))
+	if reps.LookEvery == 0 {
+		reps.Count = int(r.whole(n, "count", 1, 1, maxReplicates))
+	}
 	reps.FirstSeed = uint64(r.whole(n, "first_seed", 1, 0, math.MaxInt64-maxReplicates))
 	return reps
 }
+
+// readLooks reads how many replicates there may be and after how many to look, as
+// up_to = 40, look_every = 5. The last look is at up_to.
+func (r *reader) readLooks(n *node) (upTo, every int) {
+	for _, twin := range [][2]string{{"up_to", "40"}, {"look_every", "5"}} {
+		if n.table[twin[0]] == nil {
+			r.fail(n.errorf("write "+twin[0]+" = "+twin[1], "%s is missing: looks take up_to and look_every both", twin[0]))
+			return 1, 1
+		}
+	}
+	if both := n.table["count"]; both != nil {
+		r.fail(both.errorf("keep up_to, the most replicates, and leave count out", "count and up_to exclude each other"))
+	}
+	upTo = int(r.whole(n, "up_to", 3, 3, maxReplicates))
+	every = int(r.whole(n, "look_every", 2, 2, maxReplicates)) // one pair has no interval
+	switch at := n.table["look_every"]; {
+	case every >= upTo:
+		r.fail(at.errorf("write fewer than up_to, or count alone", "looking every %d of at most %d replicates is no look before the last", every, upTo))
+	case (upTo-1)/every >= maxLooks:
+		r.fail(at.errorf(fmt.Sprintf("write at least %d", (upTo-1)/maxLooks+1), "more than %d looks", maxLooks))
+	}
+	return upTo, every
+}
+
+// maxLooks bounds the number of looks: each makes the levels of all longer to
+// compute, and none of so many has anything left to spend.
+const maxLooks = 40
 
 // maxReplicates bounds the number of replicates.
 const maxReplicates = 100_000

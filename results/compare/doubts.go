@@ -19,7 +19,8 @@ func doubts(c *results.Comparison, identical bool) (warnings []string) {
 	case c.N == 0:
 		warn("no pair of runs is stored yet")
 	case c.N < c.Planned && complete(c):
-		warn("looked at after %d of at most %d pairs; the chance of error is shared out among the looks, but the drawn interval is not widened for them", lookedAt(c), c.Planned)
+		warn("%s: looked at after %d of at most %d pairs; the chance of error is shared out among the looks, but the drawn interval is not widened for them",
+			lookWords(c), lookedAt(c), c.Planned)
 	case c.N < c.Planned:
 		warn("%d of %d planned pairs are stored; the verdict waits for %s", c.N, c.Planned, awaited(c))
 	}
@@ -54,6 +55,17 @@ func missedDoubts(c *results.Comparison, missed [2]int) (warnings []string) {
 		}
 	}
 	return warnings
+}
+
+// lookWords is which look the latest one is: "look 2 of 8".
+func lookWords(c *results.Comparison) string {
+	l, _ := looks(c)
+	at := l.At()
+	number := 0
+	for number < len(at) && at[number] <= c.N {
+		number++
+	}
+	return fmt.Sprintf("look %d of %d", number, len(at))
 }
 
 // awaited says which pairs a verdict waits for.

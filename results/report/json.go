@@ -61,7 +61,7 @@ func (v *view) json(w io.Writer) error {
 		"margin_fixed": moment(v.MarginFixed), "margin_changed": v.MarginChanged, "written": moment(v.Written),
 		"baseline_problem": v.BaselineProblem, "classes": filled(v.Classes), "warnings": filled(v.Warnings),
 		"cautions": filled(cautionSection(v).(list).Items), "store_digest": v.StoreDigest, "code_version": v.CodeVersion,
-		"rerun": filled(v.Rerun), "planned": v.Planned, "resolved": v.Resolved,
+		"rerun": filled(v.Rerun), "planned": v.Planned, "looks": v.Looks, "resolved": v.Resolved,
 		"comparisons": comparisonObjects(v.Comparisons), "contrasts": comparisonObjects(v.Contrasts),
 		"arms": v.armObjects(), "runs": v.runObjects(),
 	}

@@ -41,6 +41,7 @@ func (v *view) claimFacts() []fact {
 		add("Claim's hash", fmt.Sprintf("%x", v.FixedClaim.Hash[:]))
 	}
 	add("Replicates", v.replicateWords())
+	add("Looks", v.Looks)
 	add("Noise floor", v.noiseWords())
 	add("Data", v.Data)
 	add("Network", v.Network)
