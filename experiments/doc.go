@@ -21,6 +21,16 @@
 // are more replicates open than there are workers. No result depends on this
 // order: the bits of a run depend on its key alone.
 //
+// # Looks
+//
+// A plan with looks asks for replicates in ascending order, up to one look after the
+// other, and stops at the first at which every verdict has fallen (or the baseline
+// has diverged); what the looks cost is accounted for in package results/compare. A
+// look judges the first replicates alone, whatever else the store holds, so a plan
+// that is taken up again stops where an undisturbed one does. The bits of the runs
+// do not depend on the looks. An arm with the baseline's own bits is decided only at
+// the last look: differences without spread say nothing before.
+//
 // # The study
 //
 // What identifies a study, so that its claim can be fixed once, is the task with

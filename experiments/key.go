@@ -76,7 +76,7 @@ func studyID(p *plan.Plan) results.Hash {
 func claimOf(p *plan.Plan) results.Claim {
 	c := results.Claim{
 		Metric: p.Claim.Metric, Margin: p.Claim.Margin, Confidence: p.Claim.Confidence,
-		Count: p.Replicates.Count, FirstSeed: p.Replicates.FirstSeed,
+		Count: p.Replicates.Count, FirstSeed: p.Replicates.FirstSeed, LookEvery: p.Replicates.LookEvery,
 	}
 	for _, k := range p.Contrasts {
 		c.Contrasts = append(c.Contrasts, results.ContrastClaim{Arm: k.Arm, Against: k.Against, Margin: k.Margin})

@@ -2,6 +2,7 @@ package experiments
 
 import (
 	"context"
+	"fmt"
 	"slices"
 	"strings"
 	"testing"
@@ -16,6 +17,30 @@ import (
 func TestMetricLists(t *testing.T) {
 	if d := cmp.Diff(plan.Metrics(), results.MetricNames()); d != "" {
 		t.Errorf("plans and results differ (-plan +results):\n%s", d)
+	}
+}
+
+// TestTargets: a count of epochs that a plan may claim is a metric of results, and
+// what results does not know a plan refuses.
+func TestTargets(t *testing.T) {
+	for _, name := range append(plan.Metrics(), "test recall") {
+		for _, target := range []string{"0.90", "1", "1.5", "0", "-1", "NaN", "Inf", "x", ""} {
+			text := strings.TrimSpace("epochs to " + name + " " + target)
+			m, known := results.FindMetric(text)
+			p, err := plan.LoadFrom(texts{"tiny.toml": strings.NewReplacer(
+				"batch = 16", "batch = 16\nevaluate = \"every epoch\"", `metric = "test accuracy"`, `metric = "`+text+`"`,
+			).Replace(fmt.Sprintf(tiny, ""))}, "tiny.toml")
+			if known != (err == nil) {
+				t.Errorf("%s: known %v, plan: %v", text, known, err)
+				continue
+			}
+			if err != nil {
+				continue
+			}
+			if same, found := results.FindMetric(p.Claim.Metric); !found || same.Target != m.Target || same.Data != m.Data {
+				t.Errorf("%s became %q", text, p.Claim.Metric)
+			}
+		}
 	}
 }
 

@@ -29,17 +29,18 @@ func noiseFloor(l *layout, study *results.Study, pair func(arm, against string, 
 				controlWords[slug], c.Diverged, number(len(c.Differences), "replicate")))
 			continue
 		}
-		if len(c.Differences) == 0 {
-			continue // not run yet
-		}
+		known := 0 // differences; none before the first run
 		for _, d := range c.Differences {
 			if math.IsNaN(d) || math.IsInf(d, 0) {
 				continue // the metric was not to be had, which the comparison of arms tells
 			}
+			known++
 			study.NoiseLow, study.NoiseHigh = min(study.NoiseLow, d), max(study.NoiseHigh, d)
 		}
-		words = append(words, controlWords[slug])
-		replicates = max(replicates, len(c.Differences))
+		if known > 0 {
+			words = append(words, controlWords[slug])
+			replicates = max(replicates, known)
+		}
 	}
 	if len(words) > 0 {
 		study.NoiseFrom = fmt.Sprintf("the baseline again %s, %s", strings.Join(words, " and "), number(replicates, "replicate"))

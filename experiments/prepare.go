@@ -15,20 +15,19 @@ import (
 // Keys need the hash of the data. Data that is the same for every replicate is
 // loaded here; of data drawn for each, the store has noted the hash if any run
 // on it was ever stored, and else the replicate has everything still to do.
-func (x *runner) prepare(ctx context.Context) (queue []*replicate, err error) {
+func (x *runner) prepare(ctx context.Context) error {
 	if err := x.loadShared(ctx); err != nil {
-		return nil, err
+		return err
 	}
 	hashes, err := x.knownData()
 	if err != nil {
-		return nil, err
+		return err
 	}
 	var planned []store.Planned
 	var all []results.Hash
 	for i, seed := range x.seeds() {
 		r := &replicate{number: i + 1, seed: seed}
-		x.replicas = append(x.replicas, r)
-		x.expect(r)
+		x.later = append(x.later, r)
 		main, pre := x.requests(seed)
 		if hashes[main].IsZero() || x.pre != nil && hashes[pre].IsZero() {
 			continue
@@ -38,24 +37,33 @@ func (x *runner) prepare(ctx context.Context) (queue []*replicate, err error) {
 		all = append(all, r.keys.all()...)
 	}
 	if err := x.fix(planned, hashes); err != nil {
-		return nil, err
+		return err
 	}
-	known, err := x.store.Lookup(all)
-	if err != nil {
-		return nil, err
-	}
-	for _, r := range x.replicas {
+	x.known, err = x.store.Lookup(all)
+	return err
+}
+
+// ask asks for replicates up to a number and returns those with runs to be done.
+func (x *runner) ask(upTo int) (queue []*replicate) {
+	n := upTo - len(x.replicas)
+	next := x.later[:n]
+	x.replicas, x.later = append(x.replicas, next...), x.later[n:]
+	each, _ := x.perReplicate()
+	x.summary.Runs = each * upTo
+	before := x.summary.Before
+	for _, r := range next {
+		x.expect()
 		if r.keysKnown {
-			x.findWork(r, known)
+			x.findWork(r, x.known)
 		}
 		if !r.keysKnown || r.left > 0 {
 			queue = append(queue, r)
 		}
 	}
-	if n := x.summary.Before; n > 0 {
+	if n := x.summary.Before; n > before {
 		x.tracker.note("%d of %d runs are stored already", n, x.summary.Runs)
 	}
-	return queue, nil
+	return queue
 }
 
 // loadShared loads the data that all replicates share.
@@ -100,7 +108,7 @@ func (x *runner) knownData() (map[results.Hash]results.Hash, error) {
 }
 
 // expect adds all runs of a replicate to the estimate.
-func (x *runner) expect(r *replicate) {
+func (x *runner) expect() {
 	x.tracker.do(func() {
 		for i := range x.groups {
 			x.estimate.plan(&x.groups[i])

@@ -49,7 +49,7 @@ type Options struct {
 
 // Summary is what a call of Run came to. Runs that arms share count once.
 type Summary struct {
-	Runs        int // that the plan asks for
+	Runs        int // that the plan asks for; with looks, up to the one it came to
 	Before      int // stored before
 	Done        int // stored by this call
 	Failed      int // by this call
@@ -75,7 +75,10 @@ type runner struct {
 	estimate *estimator
 	cancel   context.CancelFunc
 	shared   [2]*datasets.Data // of task and pretraining, where all replicates have the same
-	replicas []*replicate
+	replicas []*replicate      // those asked for so far
+	later    []*replicate      // behind the next look
+	known    map[results.Hash]store.Entry
+	decided  bool // a look needs nothing of the later ones
 
 	// gate is held while something is handed to the store's writer, which may
 	// have to wait for room; the writer itself must never need it.
@@ -126,13 +129,10 @@ func (x *runner) run(ctx context.Context) (Summary, error) {
 	began := time.Now()
 	ctx, x.cancel = context.WithCancel(ctx)
 	defer x.cancel()
-	queue, err := x.prepare(ctx)
-	if err != nil {
+	if err := x.prepare(ctx); err != nil {
 		return x.summary, err
 	}
-	x.schedule = newSchedule(ctx, queue, x.options.Workers)
-	defer context.AfterFunc(ctx, x.schedule.wake)()
-	x.work(ctx)
+	x.lookByLook(ctx)
 	broken := x.breakOff()
 	x.pending.Wait()
 	x.tracker.mute()
@@ -185,7 +185,7 @@ func (x *runner) settle(ctx context.Context, broken []results.Hash, wall time.Du
 	if err == nil {
 		s.StoreDigest, err = x.store.Digest()
 	}
-	switch stopped := ctx.Err() != nil && s.Before+s.Done+s.Failed < s.Runs; {
+	switch stopped := ctx.Err() != nil && (s.Before+s.Done+s.Failed < s.Runs || len(x.later) > 0 && !x.decided); {
 	case x.fatal != nil:
 		return *s, errors.Join(x.fatal, err)
 	case err != nil:

@@ -36,6 +36,7 @@ func Study(p *plan.Plan, s *store.Store) (*results.Study, error) {
 	}
 	study.BaselineProblem = baselineProblem(p, study.Runs)
 	comparisons(l, study)
+	study.Looks = looksLine(study)
 	study.Cautions = cautions(p, study)
 	study.Answer = compare.Answer(study)
 	study.Volumes, study.Ranges = volumes(p), ranges(p)
@@ -150,7 +151,7 @@ func comparisons(l *layout, study *results.Study) {
 	pair := func(arm, against string, margin float64, headline bool) results.Comparison {
 		return compare.Pair(compare.Question{
 			Arm: arm, Against: against, Metric: metric, Margin: margin,
-			Confidence: study.Confidence, Planned: study.Planned, Headline: headline, Classes: study.Classes,
+			Confidence: study.Confidence, Planned: study.Planned, LookEvery: study.Claim.LookEvery, Headline: headline, Classes: study.Classes,
 		}, byArm[arm], byArm[against])
 	}
 	for i := range l.Arms[1:] {

@@ -15,6 +15,9 @@ type Claim struct {
 	Count      int             `cbor:"4,keyasint" json:"count"`      // replicates
 	FirstSeed  uint64          `cbor:"5,keyasint" json:"first_seed"` // choosing seeds afterwards is choosing results
 	Contrasts  []ContrastClaim `cbor:"6,keyasint" json:"contrasts,omitempty"`
+	// LookEvery is after how many replicates there is a look that may end the plan,
+	// Count being the most; 0: there is none. It is left out of the hash then.
+	LookEvery int `cbor:"7,keyasint,omitempty" json:"look_every,omitempty"`
 }
 
 // ContrastClaim is the claim of one contrast between two arms (slugs).
@@ -52,8 +55,16 @@ func (before Claim) Differences(now Claim) string {
 	add("confidence", before.Confidence, now.Confidence)
 	add("replicate count", before.Count, now.Count)
 	add("first seed", before.FirstSeed, now.FirstSeed)
+	add("look interval", describeLooks(before.LookEvery), describeLooks(now.LookEvery))
 	add("list of contrasts", describe(before.Contrasts), describe(now.Contrasts))
 	return strings.Join(parts, "; ")
+}
+
+func describeLooks(every int) string {
+	if every == 0 {
+		return "none"
+	}
+	return fmt.Sprintf("%d replicates", every)
 }
 
 func describe(contrasts []ContrastClaim) string {

@@ -87,6 +87,9 @@ func (p *Plan) Canonical() string {
 	fmt.Fprintln(&b, "plan", canonicalForm)
 	b.WriteString(p.TaskCanonical())
 	fmt.Fprintf(&b, "replicates: %d from seed %d\n", p.Replicates.Count, p.Replicates.FirstSeed)
+	if every := p.Replicates.LookEvery; every > 0 {
+		fmt.Fprintf(&b, "looks: every %d\n", every)
+	}
 	fmt.Fprintf(&b, "claim: %s within %g at confidence %g\n", p.Claim.Metric, p.Claim.Margin, p.Claim.Confidence)
 	for i := range p.Arms {
 		fmt.Fprintf(&b, "called %s: %s", p.Arms[i].Slug, p.Arms[i].Canonical)

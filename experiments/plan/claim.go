@@ -1,6 +1,7 @@
 package plan
 
 import (
+	"fmt"
 	"math"
 	"strings"
 
@@ -25,7 +26,7 @@ var metrics = []metric{
 	{"training loss", "lower", "training"},
 }
 
-// Metrics are the names a claim may have.
+// Metrics are the names a claim may have that take no target.
 func Metrics() []string {
 	names := make([]string, len(metrics))
 	for i, m := range metrics {
@@ -44,7 +45,7 @@ func (r *reader) readClaim(root *node) (c Claim) {
 		return c
 	}
 	r.known(n, "metric", "margin", "confidence")
-	c.Metric = r.word(n, "metric", c.Metric, Metrics()...)
+	c.Metric = r.metric(n, c.Metric)
 	if n.table["margin"] == nil {
 		r.fail(n.errorf("write margin = 0.01, the loss of the metric that you accept", "margin is missing"))
 	}
@@ -78,14 +79,45 @@ func (r *reader) readReplicates(root *node) Replicates {
 	if n == nil {
 		return reps
 	}
-	r.known(n, "count", "first_seed")
-	if n.table["count"] == nil {
+	r.known(n, "count", "up_to", "look_every", "first_seed")
+	if n.table["up_to"] != nil || n.table["look_every"] != nil {
+		reps.Count, reps.LookEvery = r.readLooks(n)
+	} else if n.table["count"] == nil {
 		r.fail(n.errorf("write count = 10", "count is missing"))
 	}
-	reps.Count = int(r.whole(n, "count", 1, 1, maxReplicates))
+	if reps.LookEvery == 0 {
+		reps.Count = int(r.whole(n, "count", 1, 1, maxReplicates))
+	}
 	reps.FirstSeed = uint64(r.whole(n, "first_seed", 1, 0, math.MaxInt64-maxReplicates))
 	return reps
 }
+
+// readLooks reads how many replicates there may be and after how many to look, as
+// up_to = 40, look_every = 5. The last look is at up_to.
+func (r *reader) readLooks(n *node) (upTo, every int) {
+	for _, twin := range [][2]string{{"up_to", "40"}, {"look_every", "5"}} {
+		if n.table[twin[0]] == nil {
+			r.fail(n.errorf("write "+twin[0]+" = "+twin[1], "%s is missing: looks take up_to and look_every both", twin[0]))
+			return 1, 1
+		}
+	}
+	if both := n.table["count"]; both != nil {
+		r.fail(both.errorf("keep up_to, the most replicates, and leave count out", "count and up_to exclude each other"))
+	}
+	upTo = int(r.whole(n, "up_to", 3, 3, maxReplicates))
+	every = int(r.whole(n, "look_every", 2, 2, maxReplicates)) // one pair has no interval
+	switch at := n.table["look_every"]; {
+	case every >= upTo:
+		r.fail(at.errorf("write fewer than up_to, or count alone", "looking every %d of at most %d replicates is no look before the last", every, upTo))
+	case (upTo-1)/every >= maxLooks:
+		r.fail(at.errorf(fmt.Sprintf("write at least %d", (upTo-1)/maxLooks+1), "more than %d looks", maxLooks))
+	}
+	return upTo, every
+}
+
+// maxLooks bounds the number of looks: each makes the levels of all longer to
+// compute, and none of so many has anything left to spend.
+const maxLooks = 40
 
 // maxReplicates bounds the number of replicates.
 const maxReplicates = 100_000
@@ -143,10 +175,12 @@ func (r *reader) armSlug(n *node, key string, arms []Arm) string {
 	return ""
 }
 
-// checkMetric holds the claim to what the training evaluates and the data has.
+// checkMetric holds the claim to what the training evaluates and the data has. A
+// count of epochs can be told only if there is a score for each.
 func (r *reader) checkMetric(root *node, c Claim, t trainer.Training, task Task) {
+	name, _, counts := splitTarget(c.Metric)
 	for _, m := range metrics {
-		if m.name != c.Metric {
+		if m.name != name {
 			continue
 		}
 		when, count := trainer.EveryEpoch, 1
@@ -167,6 +201,9 @@ func (r *reader) checkMetric(root *node, c Claim, t trainer.Training, task Task)
 			r.fail(at.errorf("give the task "+m.data+" data or claim another metric", "the task has no %s data", m.data))
 		} else if when == trainer.Never {
 			r.fail(at.errorf(`write training.evaluate = "last epoch"`, "the %s data is never evaluated", m.data))
+		} else if counts && when != trainer.EveryEpoch {
+			r.fail(at.errorf(`write training.evaluate = "every epoch"`,
+				"epochs to a target are counted, but the %s data is evaluated only at the %s", m.data, when))
 		}
 	}
 }

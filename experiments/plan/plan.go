@@ -42,8 +42,9 @@ func (p *Plan) Runs() int {
 // Replicates are the repetitions of every arm: replicate i has the seed
 // FirstSeed + i, i from 0.
 type Replicates struct {
-	Count     int
+	Count     int // the most of them, with looks
 	FirstSeed uint64
+	LookEvery int // a look after every so many may end the plan; 0: all are run
 }
 
 // Claim is what the plan's author fixes before the first run.

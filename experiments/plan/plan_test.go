@@ -29,7 +29,7 @@ func TestDefaults(t *testing.T) {
 	if got := describeTraining(p.Training); got != describeTraining(want) {
 		t.Errorf("training %s, want %s", got, describeTraining(want))
 	}
-	if p.Replicates != (Replicates{4, 1}) || p.Claim != (Claim{"test accuracy", 0.01, 0.95}) || p.Pretrain != nil {
+	if p.Replicates != (Replicates{4, 1, 0}) || p.Claim != (Claim{"test accuracy", 0.01, 0.95}) || p.Pretrain != nil {
 		t.Errorf("%+v %+v %+v", p.Replicates, p.Claim, p.Pretrain)
 	}
 	if len(p.Arms[1].Arithmetic.Layers[2].States) != 0 || p.Arms[1].at(2, "update.state") != "" {

@@ -67,6 +67,9 @@ func writeFacts(b *strings.Builder, p *Plan) {
 	}
 	last := p.Replicates.FirstSeed + uint64(p.Replicates.Count-1)
 	fmt.Fprintf(w, "replicates\t%d, seeds %d to %d\n", p.Replicates.Count, p.Replicates.FirstSeed, last)
+	if every := p.Replicates.LookEvery; every > 0 {
+		fmt.Fprintf(w, "looks\tafter every %d replicates, %d at most\n", every, p.Replicates.Count)
+	}
 	fmt.Fprintf(w, "claim\t%s within a margin of %g, confidence %g\n", p.Claim.Metric, p.Claim.Margin, p.Claim.Confidence)
 	w.Flush()
 }
@@ -100,7 +103,11 @@ func orDash(n int) string {
 func WorkText(p *Plan, o ResolveOptions) string {
 	var b strings.Builder
 	work := p.Work()
-	fmt.Fprintf(&b, "%d runs: %d arms x %d replicates", work.Runs, len(p.Arms), p.Replicates.Count)
+	most := ""
+	if p.Replicates.LookEvery > 0 {
+		most = "at most "
+	}
+	fmt.Fprintf(&b, "%s%d runs: %d arms x %d replicates", most, work.Runs, len(p.Arms), p.Replicates.Count)
 	if work.Pretraining > 0 {
 		fmt.Fprintf(&b, ", and %d pretrainings", work.Pretraining)
 	}

@@ -10,10 +10,6 @@ import (
 // fewForSkewness: below this many values a skewness says next to nothing.
 const fewForSkewness = 8
 
-// fewForBootstrap: below this many values the BCa interval misses about twice as
-// often as it says, as the package's simulation shows.
-const fewForBootstrap = 20
-
 // doubts are the warnings that travel with a comparison into the report.
 // Their readers put the arm's name before them, so none begins with it.
 // identical: every pair of runs has one digest.
@@ -23,7 +19,8 @@ func doubts(c *results.Comparison, identical bool) (warnings []string) {
 	case c.N == 0:
 		warn("no pair of runs is stored yet")
 	case c.N < c.Planned && complete(c):
-		warn("looked at after %d of at most %d pairs; the chance of error is shared out among the looks, but the drawn interval is not widened for them", lookedAt(c), c.Planned)
+		warn("%s: looked at after %d of at most %d pairs; the chance of error is shared out among the looks, but the drawn interval is not widened for them",
+			lookWords(c), lookedAt(c), c.Planned)
 	case c.N < c.Planned:
 		warn("%d of %d planned pairs are stored; the verdict waits for %s", c.N, c.Planned, awaited(c))
 	}
@@ -58,6 +55,17 @@ func missedDoubts(c *results.Comparison, missed [2]int) (warnings []string) {
 		}
 	}
 	return warnings
+}
+
+// lookWords is which look the latest one is: "look 2 of 8".
+func lookWords(c *results.Comparison) string {
+	l, _ := looks(c)
+	at := l.At()
+	number := 0
+	for number < len(at) && at[number] <= c.N {
+		number++
+	}
+	return fmt.Sprintf("look %d of %d", number, len(at))
 }
 
 // awaited says which pairs a verdict waits for.
@@ -101,18 +109,23 @@ func skewed(c *results.Comparison) bool {
 // does. One without ends, for want of pairs, sees nothing.
 func disagreement(c *results.Comparison) (warnings []string) {
 	w := newMeasure(c)
-	for _, other := range []struct {
+	type named struct {
 		name      string
 		low, high float64
-	}{{"bootstrap", c.BootLow, c.BootHigh}, {"sign-flip", c.FlipLow, c.FlipHigh}} {
+	}
+	var others []named
+	switch {
+	case c.N >= results.FewForBCa:
+		others = append(others, named{"BCa bootstrap", c.BootLow, c.BootHigh})
+	case c.Offered == "": // else told of already
+		others = append(others, named{Studentised, c.StudentLow, c.StudentHigh})
+	}
+	for _, other := range append(others, named{"sign-flip", c.FlipLow, c.FlipHigh}) {
 		if math.IsNaN(other.low) || math.IsInf(other.low, 0) || side(c.Low, c.High, c.Margin) == side(other.low, other.high, c.Margin) {
 			continue
 		}
-		text := fmt.Sprintf("t and %s intervals do not agree about the margin (%s %s)", other.name, other.name, w.with(w.span(other.low, other.high)))
-		if other.name == "bootstrap" && c.N < fewForBootstrap && !skewed(c) {
-			text += "; from so few pairs the bootstrap misses more often"
-		}
-		warnings = append(warnings, text)
+		warnings = append(warnings, fmt.Sprintf("t and %s intervals do not agree about the margin (%s %s)",
+			other.name, other.name, w.with(w.span(other.low, other.high))))
 	}
 	return warnings
 }

@@ -234,7 +234,7 @@ func TestDecideByLooks(t *testing.T) {
 	if c := at20[2]; c.Verdict.Pairs != 40 {
 		t.Errorf("undecided until %d pairs", c.Verdict.Pairs)
 	}
-	if w := strings.Join(at20[0].Warnings, "\n"); !strings.Contains(w, "looked at after 20 of at most 40 pairs") {
+	if w := strings.Join(at20[0].Warnings, "\n"); !strings.Contains(w, "look 4 of 8: looked at after 20 of at most 40 pairs") {
 		t.Errorf("warnings %q", w)
 	}
 	// pairs between two looks change nothing

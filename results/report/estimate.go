@@ -4,7 +4,6 @@ import (
 	"math"
 	"slices"
 
-	"gonum.org/v1/gonum/mathext"
 	"gonum.org/v1/gonum/stat/distuv"
 )
 
@@ -49,23 +48,6 @@ func mean(x []float64) float64 {
 		d += v - x[0]
 	}
 	return x[0] + d/float64(len(x))
-}
-
-// exactRate is the two-sided interval of a rate from k of n, after Clopper and
-// Pearson (Biometrika 26, 1934), by quantiles of the beta distribution.
-func exactRate(k, n uint64, confidence float64) (low, high float64) {
-	if n == 0 || k > n || !(confidence > 0 && confidence < 1) {
-		return math.NaN(), math.NaN()
-	}
-	tail := (1 - confidence) / 2
-	low, high = 0, 1
-	if k > 0 {
-		low = mathext.InvRegIncBeta(float64(k), float64(n-k+1), tail)
-	}
-	if k < n {
-		high = mathext.InvRegIncBeta(float64(k+1), float64(n-k), 1-tail)
-	}
-	return low, high
 }
 
 // middle is the median and the quartiles of values, infinities counting as the

@@ -2,7 +2,6 @@ package report
 
 import (
 	"math"
-	"math/big"
 	"testing"
 )
 
@@ -36,46 +35,6 @@ func TestTInterval(t *testing.T) {
 	}
 	if none := tInterval(nil, 0.95); none.N != 0 || !math.IsNaN(none.Mean) {
 		t.Errorf("no value: %+v", none)
-	}
-}
-
-// tailAtLeast is P(X >= k) of a binomial in 200-bit arithmetic, term by term.
-func tailAtLeast(k, n int64, p float64) float64 {
-	bp := new(big.Float).SetPrec(200).SetFloat64(p)
-	bq := new(big.Float).SetPrec(200).Sub(big.NewFloat(1), bp)
-	pow := func(x *big.Float, e int64) *big.Float {
-		out := new(big.Float).SetPrec(200).SetInt64(1)
-		for range e {
-			out.Mul(out, x)
-		}
-		return out
-	}
-	sum := new(big.Float).SetPrec(200)
-	for i := k; i <= n; i++ {
-		c := new(big.Float).SetPrec(200).SetInt(new(big.Int).Binomial(n, i))
-		sum.Add(sum, c.Mul(c, pow(bp, i)).Mul(c, pow(bq, n-i)))
-	}
-	f, _ := sum.Float64()
-	return f
-}
-
-// TestExactRate checks the definition: at the lower end, k or more has the
-// probability of the tail; at the upper end, k or fewer has it.
-func TestExactRate(t *testing.T) {
-	for _, c := range []struct{ k, n uint64 }{{1, 10}, {3, 10}, {5, 10}, {9, 10}, {340, 400}, {1, 400}} {
-		lo, hi := exactRate(c.k, c.n, 0.95)
-		near(t, "lower tail", tailAtLeast(int64(c.k), int64(c.n), lo), 0.025, 1e-9)
-		near(t, "upper tail", 1-tailAtLeast(int64(c.k)+1, int64(c.n), hi), 0.025, 1e-9)
-	}
-	// Closed forms at the ends.
-	lo, hi := exactRate(0, 10, 0.95)
-	near(t, "none of ten, low", lo, 0, 0)
-	near(t, "none of ten, high", hi, 1-math.Pow(0.025, 0.1), 1e-12)
-	lo, hi = exactRate(10, 10, 0.95)
-	near(t, "ten of ten, low", lo, math.Pow(0.025, 0.1), 1e-12)
-	near(t, "ten of ten, high", hi, 1, 0)
-	if lo, hi = exactRate(0, 0, 0.95); !math.IsNaN(lo) || !math.IsNaN(hi) {
-		t.Error("none of none has an interval")
 	}
 }
 

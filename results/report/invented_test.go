@@ -266,7 +266,7 @@ func inventComparison(a inventedArm, against string, base, scores []float64) res
 	c.BootLow, c.BootHigh = e.Low*0.97, e.High*0.98
 	c.StudentLow, c.StudentHigh, c.FlipLow, c.FlipHigh = e.Low*1.1, e.High*1.1, math.Inf(-1), e.High
 	c.Middle, c.RankLow, c.RankHigh, c.Offered = e.Mean, e.Low, e.High, "studentised bootstrap"
-	c.DivergedLow, c.DivergedHigh = exactRate(uint64(a.diverges), inventedReplicates, 0.95)
+	c.DivergedLow, c.DivergedHigh = results.ExactRate(uint64(a.diverges), inventedReplicates, 0.95)
 	for k := range 2 {
 		c.Classes = append(c.Classes, results.ClassDifference{Class: k, N: c.N, Mean: -0.01, Low: -0.03, High: math.NaN(), Worst: -0.08, Replicate: 104, P: 0.02, Holm: 0.04})
 	}

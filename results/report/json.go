@@ -61,7 +61,7 @@ func (v *view) json(w io.Writer) error {
 		"margin_fixed": moment(v.MarginFixed), "margin_changed": v.MarginChanged, "written": moment(v.Written),
 		"baseline_problem": v.BaselineProblem, "classes": filled(v.Classes), "warnings": filled(v.Warnings),
 		"cautions": filled(cautionSection(v).(list).Items), "store_digest": v.StoreDigest, "code_version": v.CodeVersion,
-		"rerun": filled(v.Rerun), "planned": v.Planned, "resolved": v.Resolved,
+		"rerun": filled(v.Rerun), "planned": v.Planned, "looks": v.Looks, "resolved": v.Resolved,
 		"comparisons": comparisonObjects(v.Comparisons), "contrasts": comparisonObjects(v.Contrasts),
 		"arms": v.armObjects(), "runs": v.runObjects(),
 	}
@@ -72,7 +72,7 @@ func (v *view) json(w io.Writer) error {
 	top["diagnoses"] = append([]results.Diagnosis{}, v.Diagnoses...)
 	top.float("margin", v.Margin)
 	top.float("confidence", v.Confidence)
-	if v.NoiseHigh > v.NoiseLow {
+	if v.noiseMeasured() {
 		n := object{"from": v.NoiseFrom}
 		n.float("low", v.NoiseLow)
 		n.float("high", v.NoiseHigh)

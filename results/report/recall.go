@@ -63,7 +63,7 @@ func (v *view) recallOf(a *armView, class int) recall {
 	}
 	out.Mean = tInterval(rates, v.Confidence)
 	if out.Worst != nil {
-		out.Low, out.High = exactRate(out.Hit, out.Of, v.Confidence)
+		out.Low, out.High = results.ExactRate(out.Hit, out.Of, v.Confidence)
 	}
 	return out
 }

@@ -113,8 +113,8 @@ func (v *view) adviceTable() *tabular {
 
 // commaShort is the unit of differences for a column's head.
 func commaShort(v *view) string {
-	if v.words.percent {
-		return ", pp"
+	if u := v.words.short(); u != "" {
+		return ", " + u
 	}
 	return ""
 }

@@ -23,8 +23,11 @@ type figureWith struct {
 func differenceSection(v *view) any {
 	caption := "Each row is an arm. Bar: " + percentage(v.Confidence) + " t interval of the mean paired difference, arm − baseline; the mark on it is the verdict's, at the mean; strokes below the bar: the replicates. " +
 		"An arm is within the margin when its whole bar, Holm-corrected, lies to the right of the post."
-	if v.NoiseHigh > v.NoiseLow {
+	switch {
+	case v.NoiseHigh > v.NoiseLow:
 		caption += " Hatched: the noise floor, " + plain(v.NoiseFrom) + "."
+	case v.noiseMeasured():
+		caption += " The noise floor has no width: " + plain(v.noiseWords()) + "."
 	}
 	return figureWith{Figure: figureHTML(v, "margin-rail", caption, false), Table: v.pairTable(v.Comparisons)}
 }

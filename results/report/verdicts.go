@@ -24,7 +24,11 @@ func (v *view) claimFacts() []fact {
 		}
 	}
 	add("Question", v.Question)
-	add("Metric", v.Metric+", after the last epoch")
+	if v.words.metric.Target != 0 {
+		add("Metric", v.Metric+", counted from the first; one more than was trained for where it is never reached")
+	} else {
+		add("Metric", v.Metric+", after the last epoch")
+	}
 	add("Margin", v.marginWords())
 	add("Confidence", percentage(v.Confidence)+", two-sided intervals; verdicts are Holm-corrected across arms")
 	switch {
@@ -37,11 +41,8 @@ func (v *view) claimFacts() []fact {
 		add("Claim's hash", fmt.Sprintf("%x", v.FixedClaim.Hash[:]))
 	}
 	add("Replicates", v.replicateWords())
-	if v.NoiseHigh > v.NoiseLow {
-		add("Noise floor", v.words.interval(v.NoiseLow, v.NoiseHigh)+v.words.unit()+"; "+v.NoiseFrom)
-	} else {
-		add("Noise floor", "not measured in this study")
-	}
+	add("Looks", v.Looks)
+	add("Noise floor", v.noiseWords())
 	add("Data", v.Data)
 	add("Network", v.Network)
 	if v.LongestSum > 0 {
@@ -50,6 +51,21 @@ func (v *view) claimFacts() []fact {
 	add("Training", v.Training)
 	add("Plan", v.PlanFile)
 	return facts
+}
+
+// noiseMeasured reports whether the study has a noise floor. One of no width is a
+// measurement too: the baseline otherwise computed scored the same every time.
+func (v *view) noiseMeasured() bool { return v.NoiseFrom != "" || v.NoiseHigh > v.NoiseLow }
+
+// noiseWords spells the noise floor and where it comes from.
+func (v *view) noiseWords() string {
+	switch {
+	case !v.noiseMeasured():
+		return "not measured in this study"
+	case v.NoiseLow == 0 && v.NoiseHigh == 0:
+		return "every difference is exactly 0; " + v.NoiseFrom
+	}
+	return v.words.interval(v.NoiseLow, v.NoiseHigh) + v.words.unit() + "; " + v.NoiseFrom
 }
 
 // marginWords spells the margin in the metric's unit.
@@ -65,7 +81,10 @@ func (v *view) marginWords() string {
 		}
 		s += " " + u
 	}
-	if v.words.metric.Higher {
+	switch {
+	case v.words.metric.Target != 0:
+		return "an arm may take at most " + s + " more than the baseline"
+	case v.words.metric.Higher:
 		return "an arm may score at most " + s + " below the baseline"
 	}
 	return "an arm may score at most " + s + " above the baseline"
@@ -126,10 +145,7 @@ func verdictSection(v *view) any {
 		Rows        []verdictRow
 		Key         []keyed
 		Checks      []*tabular
-	}{Level: percentage(v.Confidence), Checks: v.checks(slices.Concat(v.Comparisons, v.Contrasts))}
-	if v.words.percent {
-		data.Unit = ", pp"
-	}
+	}{Unit: commaShort(v), Level: percentage(v.Confidence), Checks: v.checks(slices.Concat(v.Comparisons, v.Contrasts))}
 	for _, a := range v.arms {
 		data.Rows = append(data.Rows, v.verdictRow(a))
 	}
@@ -236,7 +252,7 @@ func (v *view) checks(cs []results.Comparison) []*tabular {
 		c := &cs[i]
 		intervals.Rows = append(intervals.Rows, []string{ // the SD with one decimal more than the differences it is of
 			v.pairName(c), strconv.Itoa(c.N), fixed(v.words.scale(c.SD), v.words.digits+1),
-			v.words.interval(c.Low, c.High), v.words.interval(c.BootLow, c.BootHigh), v.words.interval(c.StudentLow, c.StudentHigh),
+			v.words.interval(c.Low, c.High), v.bca(c), v.words.interval(c.StudentLow, c.StudentHigh),
 			v.words.interval(c.FlipLow, c.FlipHigh), v.middleWords(c), orMissing(plain(c.Offered)),
 		})
 		decided.Rows = append(decided.Rows, []string{
@@ -246,6 +262,15 @@ func (v *view) checks(cs []results.Comparison) []*tabular {
 		})
 	}
 	return []*tabular{intervals, decided}
+}
+
+// bca is the BCa interval, or that the pairs are too few to trust it: from so few
+// it misses about twice as often as it says, and the studentised one stands beside.
+func (v *view) bca(c *results.Comparison) string {
+	if c.N < results.FewForBCa && !math.IsNaN(c.BootLow) {
+		return "too few pairs"
+	}
+	return v.words.interval(c.BootLow, c.BootHigh)
 }
 
 // middleWords is the Hodges-Lehmann estimate with its interval.

@@ -60,7 +60,7 @@ func newScoreWords(name string, margin float64) scoreWords {
 		m.Name = name
 		m.Higher = !strings.Contains(name, "loss") && !strings.Contains(name, "error")
 	}
-	s := scoreWords{metric: m, known: ok, percent: strings.Contains(name, "accuracy") || strings.Contains(name, "recall")}
+	s := scoreWords{metric: m, known: ok, percent: m.Share}
 	s.digits = 4
 	if d := s.scale(margin); d > 0 && !math.IsInf(d, 0) {
 		s.digits = min(8, max(0, int(math.Ceil(-math.Log10(d/50)))))
@@ -79,20 +79,29 @@ func (s scoreWords) scale(v float64) float64 {
 // diff spells a difference, without its unit.
 func (s scoreWords) diff(v float64) string { return signed(s.scale(v), s.digits) }
 
-// unit is the unit of a difference with the blank before it, " pp" or nothing.
-func (s scoreWords) unit() string {
+// short is the unit of a difference as figures and columns carry it: "pp",
+// "nats", "epochs"; empty for a metric that is not known.
+func (s scoreWords) short() string {
 	if s.percent {
-		return " pp"
+		return "pp"
+	}
+	return s.unitWords()
+}
+
+// unit is short with the blank before it, or nothing.
+func (s scoreWords) unit() string {
+	if u := s.short(); u != "" {
+		return " " + u
 	}
 	return ""
 }
 
 // unitWords is the unit of a difference written out, empty when there is none.
 func (s scoreWords) unitWords() string {
-	if s.percent {
-		return "percentage points"
+	if s.metric.Unit == "" {
+		return ""
 	}
-	return ""
+	return s.metric.Unit + "s"
 }
 
 // value spells a value of the metric: "93.41 %".

@@ -56,13 +56,15 @@ func TestClaimHashSeesEverything(t *testing.T) {
 	s := open(t)
 	seen := map[results.Hash]string{}
 	changes := map[string]func(*results.Claim){
-		"as it is":   func(*results.Claim) {},
-		"metric":     func(c *results.Claim) { c.Metric = "test loss" },
-		"margin":     func(c *results.Claim) { c.Margin = 0.02 },
-		"confidence": func(c *results.Claim) { c.Confidence = 0.9 },
-		"count":      func(c *results.Claim) { c.Count = 3 },
-		"seed":       func(c *results.Claim) { c.FirstSeed = 1 },
-		"contrast":   func(c *results.Claim) { c.Contrasts = []results.ContrastClaim{{Arm: "a", Against: "b", Margin: 1}} },
+		"as it is":    func(*results.Claim) {},
+		"metric":      func(c *results.Claim) { c.Metric = "test loss" },
+		"margin":      func(c *results.Claim) { c.Margin = 0.02 },
+		"confidence":  func(c *results.Claim) { c.Confidence = 0.9 },
+		"count":       func(c *results.Claim) { c.Count = 3 },
+		"looks":       func(c *results.Claim) { c.LookEvery = 5 },
+		"other looks": func(c *results.Claim) { c.LookEvery = 10 },
+		"seed":        func(c *results.Claim) { c.FirstSeed = 1 },
+		"contrast":    func(c *results.Claim) { c.Contrasts = []results.ContrastClaim{{Arm: "a", Against: "b", Margin: 1}} },
 	}
 	id := byte(10)
 	for name, change := range changes {
