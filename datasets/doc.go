@@ -17,6 +17,8 @@
 //   - an input is the binary32 number nearest to the binary64 result;
 //   - statistics for scaling come from the training set alone: mean, and the
 //     square root of the mean squared distance from it (n in the denominator);
+//   - targets of a regression are never scaled: the binary32 numbers nearest to
+//     those of the source, in its units;
 //   - splits are fixed: no example changes its set with the seed.
 //
 // Set sizes: train, validation and test limit a set to its first n examples. Where
