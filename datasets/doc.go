@@ -1,6 +1,7 @@
 // Package datasets yields the labelled examples a training sees, split into
-// training, validation and test sets and scaled: from a generator of invented
-// data, from IDX files and from tables in CSV.
+// training, validation and test sets and scaled: from generators of invented
+// data, from IDX files, from NPY and NPZ arrays and from tables in CSV.
+// Examples have labels or, in a regression, targets of values.
 //
 // A Source is made from the keys of a plan's task by New, or as a literal of its
 // struct. Facts answers what a plan's reader asks before anything runs; Load

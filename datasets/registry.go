@@ -28,6 +28,7 @@ var table = []kind{
 	{"teacher", "a random network gives the targets; invented data", newTeacher},
 	{"window-energy", "the mean square of windows of 4,096 samples; invented data", newEnergy},
 	{"idx", "images and labels in IDX files, plain or gzip", newIDX},
+	{"npy", "inputs with labels or targets in NPY files or an NPZ archive", newNPY},
 	{"csv", "a table of numbers with a label column, plain or gzip", newCSV},
 }
 
