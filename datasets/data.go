@@ -18,7 +18,12 @@ type Set struct {
 }
 
 // Len is the number of examples.
-func (s Set) Len() int { return len(s.Labels) }
+func (s Set) Len() int {
+	if s.Targets != nil {
+		return s.Targets.Shape()[0]
+	}
+	return len(s.Labels)
+}
 
 // Data is what a replicate trains, validates and tests on. It may be shared
 // between runs and is not to be written to.
@@ -28,12 +33,14 @@ type Data struct {
 	Shape      []int // of one example
 	Classes    int
 	ClassNames []string
+	// TargetNames are the outputs of a regression, in order; it has no classes.
+	TargetNames []string
 	// Mean and Std are what inputs were standardised with, in the units of the
 	// source: one value for images and signals, one a feature for tables. Both
 	// are nil where nothing was standardised.
 	Mean, Std []float64
 	// Hash is SHA-256 of everything a training can see: shape, classes, inputs,
-	// labels, of all three sets.
+	// labels or targets, of all three sets.
 	Hash        [32]byte
 	Description string   // one line; says "invented" of generated data
 	Warnings    []string // doubts that a reader of results should know of
@@ -43,8 +50,9 @@ type Data struct {
 type Facts struct {
 	Shape                   []int // of one example
 	ClassNames              []string
-	Train, Validation, Test int  // examples
-	PerReplicate            bool // drawn anew from the seed of each replicate
+	TargetNames             []string // of a regression, one an output; it has no classes
+	Train, Validation, Test int      // examples
+	PerReplicate            bool     // drawn anew from the seed of each replicate
 	Description             string
 	Warnings                []string
 }
@@ -52,7 +60,7 @@ type Facts struct {
 // facts are those of loaded data.
 func (d *Data) facts() Facts {
 	return Facts{
-		Shape: d.Shape, ClassNames: d.ClassNames,
+		Shape: d.Shape, ClassNames: d.ClassNames, TargetNames: d.TargetNames,
 		Train: d.Train.Len(), Validation: d.Validation.Len(), Test: d.Test.Len(),
 		Description: d.Description, Warnings: d.Warnings,
 	}
@@ -72,7 +80,7 @@ func (d *Data) seal() {
 	h.Sum(d.Hash[:0])
 }
 
-// write feeds inputs and labels to a hash, little-endian.
+// write feeds inputs and labels, or the number of outputs and targets, to a hash, little-endian.
 func (s Set) write(h hash.Hash) {
 	if s.Len() == 0 {
 		return
@@ -91,6 +99,12 @@ func (s Set) write(h hash.Hash) {
 	for _, label := range s.Labels {
 		put(uint32(label))
 	}
+	if s.Targets != nil {
+		put(uint32(s.Targets.Shape()[1]))
+		for _, v := range s.Targets.Float32s() {
+			put(math.Float32bits(v))
+		}
+	}
 	h.Write(buffer)
 }
 
@@ -108,6 +122,19 @@ func newSet(shape []int, values []float32, labels []int32) Set {
 	}
 	full := append([]int{len(labels)}, shape...)
 	return Set{Inputs: tensor.New(tensor.WithShape(full...), tensor.WithBacking(values)), Labels: labels}
+}
+
+// newTargetSet wraps the examples of a regression; targets has outputs values for each.
+func newTargetSet(shape []int, values []float32, outputs int, targets []float32) Set {
+	if len(targets) == 0 {
+		return Set{}
+	}
+	n := len(targets) / outputs
+	full := append([]int{n}, shape...)
+	return Set{
+		Inputs:  tensor.New(tensor.WithShape(full...), tensor.WithBacking(values)),
+		Targets: tensor.New(tensor.WithShape(n, outputs), tensor.WithBacking(targets)),
+	}
 }
 
 // volume is the number of values of one example.

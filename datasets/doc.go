@@ -1,6 +1,7 @@
 // Package datasets yields the labelled examples a training sees, split into
-// training, validation and test sets and scaled: from a generator of invented
-// data, from IDX files and from tables in CSV.
+// training, validation and test sets and scaled: from generators of invented
+// data, from IDX files, from NPY and NPZ arrays and from tables in CSV.
+// Examples have labels or, in a regression, targets of values.
 //
 // A Source is made from the keys of a plan's task by New, or as a literal of its
 // struct. Facts answers what a plan's reader asks before anything runs; Load
@@ -17,6 +18,8 @@
 //   - an input is the binary32 number nearest to the binary64 result;
 //   - statistics for scaling come from the training set alone: mean, and the
 //     square root of the mean squared distance from it (n in the denominator);
+//   - targets of a regression are never scaled: the binary32 numbers nearest to
+//     those of the source, in its units;
 //   - splits are fixed: no example changes its set with the seed.
 //
 // Set sizes: train, validation and test limit a set to its first n examples. Where

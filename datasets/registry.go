@@ -24,7 +24,11 @@ type kind struct {
 // table lists the data sets a plan can name.
 var table = []kind{
 	{"pump-vibration", "accelerometer windows of a pump in five states; invented data", newPumpVibration},
+	{"noisy-regression", "a linear regression with a known noise floor; invented data", newRegression},
+	{"teacher", "a random network gives the targets; invented data", newTeacher},
+	{"window-energy", "the mean square of windows of 4,096 samples; invented data", newEnergy},
 	{"idx", "images and labels in IDX files, plain or gzip", newIDX},
+	{"npy", "inputs with labels or targets in NPY files or an NPZ archive", newNPY},
 	{"csv", "a table of numbers with a label column, plain or gzip", newCSV},
 }
 

@@ -18,8 +18,18 @@ type rawSet struct {
 	// stay bytes this way.
 	at     func(i int) float64
 	labels []int32
+	// targets of a regression, [n, outputs], in the source's units; labels is nil then.
+	targets []float64
 	// where says in words where example i comes from, for errors; nil is allowed.
 	where func(i int) string
+}
+
+// size is the number of examples; outputs those of a regression, else 0.
+func (s *rawSet) size(outputs int) int {
+	if outputs > 0 {
+		return len(s.targets) / outputs
+	}
+	return len(s.labels)
 }
 
 // slice reads values from memory.
@@ -29,6 +39,7 @@ func slice(values []float64) func(int) float64 { return func(i int) float64 { re
 type examples struct {
 	shape                   []int
 	classNames              []string
+	targetNames             []string // of a regression
 	train, validation, test rawSet
 	featureNames            []string // nil where features have no names
 }
@@ -37,10 +48,10 @@ type examples struct {
 // example by statistics of its own, else one mean and deviation serve all.
 func (e *examples) finish(scale, description string, perFeature bool) (*Data, error) {
 	d := &Data{
-		Shape: e.shape, Classes: len(e.classNames), ClassNames: e.classNames,
+		Shape: e.shape, Classes: len(e.classNames), ClassNames: e.classNames, TargetNames: e.targetNames,
 		Description: description, Warnings: e.missingClasses(),
 	}
-	if len(e.train.labels) == 0 {
+	if e.train.size(len(e.targetNames)) == 0 {
 		return nil, fmt.Errorf("the training set is empty; give it at least one example")
 	}
 	columns := 1
@@ -49,7 +60,7 @@ func (e *examples) finish(scale, description string, perFeature bool) (*Data, er
 	}
 	var m *moments
 	if scale == Standardise {
-		m = newMoments(e.train.at, int(len(e.train.labels)*volume(e.shape)), columns)
+		m = newMoments(e.train.at, int(e.train.size(len(e.targetNames))*volume(e.shape)), columns)
 		if j := m.notFinite(); j >= 0 {
 			return nil, fmt.Errorf("%s: values are too large to standardise; use smaller units or scale = %q", e.feature(j, columns), AsIs)
 		}
@@ -65,7 +76,15 @@ func (e *examples) finish(scale, description string, perFeature bool) (*Data, er
 		if err != nil {
 			return nil, err
 		}
-		*part.set = newSet(e.shape, values, part.raw.labels)
+		if e.targetNames == nil {
+			*part.set = newSet(e.shape, values, part.raw.labels)
+			continue
+		}
+		targets, err := e.narrow(part.name, part.raw)
+		if err != nil {
+			return nil, err
+		}
+		*part.set = newTargetSet(e.shape, values, len(e.targetNames), targets)
 	}
 	d.seal()
 	return d, nil
@@ -74,7 +93,7 @@ func (e *examples) finish(scale, description string, perFeature bool) (*Data, er
 // scaled returns the binary32 numbers nearest to the scaled values.
 func (e *examples) scaled(name string, raw rawSet, m *moments) ([]float32, error) {
 	per := volume(e.shape)
-	out := make([]float32, int(len(raw.labels)*per))
+	out := make([]float32, int(raw.size(len(e.targetNames))*per))
 	for i := range out {
 		x := raw.at(i)
 		if m != nil {
@@ -82,14 +101,30 @@ func (e *examples) scaled(name string, raw rawSet, m *moments) ([]float32, error
 		}
 		out[i] = float32(x)
 		if math.IsInf(float64(out[i]), 0) || out[i] != out[i] {
-			where := fmt.Sprintf("example %d", i/per)
-			if raw.where != nil {
-				where = raw.where(i / per)
-			}
-			return nil, fmt.Errorf("%s data, %s: value %d becomes %g after scaling, beyond binary32; correct or remove the outlier", name, where, i%per+1, x)
+			return nil, fmt.Errorf("%s data, %s: value %d becomes %g after scaling, beyond binary32; correct or remove the outlier", name, raw.place(i/per), i%per+1, x)
 		}
 	}
 	return out, nil
+}
+
+// narrow returns the binary32 numbers nearest to a regression's targets.
+func (e *examples) narrow(name string, raw rawSet) ([]float32, error) {
+	out, outputs := make([]float32, len(raw.targets)), len(e.targetNames)
+	for i, x := range raw.targets {
+		out[i] = float32(x)
+		if math.IsInf(float64(out[i]), 0) || out[i] != out[i] {
+			return nil, fmt.Errorf("%s data, %s: target %q is %g, beyond binary32; correct or remove the outlier", name, raw.place(i/outputs), e.targetNames[i%outputs], x)
+		}
+	}
+	return out, nil
+}
+
+// place says where example i comes from.
+func (s *rawSet) place(i int) string {
+	if s.where != nil {
+		return s.where(i)
+	}
+	return fmt.Sprintf("example %d", i)
 }
 
 // missingClasses warns of classes that a set lacks.

@@ -29,8 +29,12 @@ func record(r *results.Run, o *trainer.Outcome) {
 }
 
 func epoch(e *trainer.Epoch) results.Epoch {
+	rmse := e.TestRMSE
+	if rmse != rmse {
+		rmse = 0 // a classification, or not evaluated
+	}
 	return results.Epoch{
-		TrainLoss: e.TrainLoss, TrainMetric: e.TrainAccuracy,
+		TestRMSE: rmse, TrainLoss: e.TrainLoss, TrainMetric: e.TrainAccuracy,
 		ValidationLoss: e.ValidationLoss, ValidationMetric: e.ValidationAccuracy,
 		TestLoss: e.TestLoss, TestMetric: e.TestAccuracy,
 		Ties: e.Ties, LossScale: e.LossScale, Skipped: e.Skipped,

@@ -140,6 +140,9 @@ func (w *digester) curve(r *Run) {
 		w.count(e.Ties)
 		w.real(e.LossScale)
 		w.count(e.Skipped)
+		if e.TestRMSE != 0 {
+			w.real(e.TestRMSE)
+		}
 	}
 }
 

@@ -16,8 +16,8 @@ func sample() Run {
 		Arm: "bf16-nearest", Replicate: 103, State: Stored,
 		Steps: []float64{2.5, 1.25, math.NaN()},
 		Epochs: []Epoch{
-			{2, 0.25, 1.5, 0.5, 1.75, 0.375, 3, 1024, 1},
-			{1, 0.5, math.NaN(), math.NaN(), 1.25, 0.625, 4, 512, 2},
+			{2, 0.25, 1.5, 0.5, 1.75, 0.375, 3, 1024, 1, 0},
+			{1, 0.5, math.NaN(), math.NaN(), 1.25, 0.625, 4, 512, 2, 0},
 		},
 		Counters: []PointCounts{
 			{Layer: 2, Name: "dense 16", Point: "forward.sum", Counts: Counts{1, 2, 3, 4}},
@@ -95,6 +95,7 @@ func TestDigestSees(t *testing.T) {
 		"ties":          func(r *Run) { r.Epochs[1].Ties++ },
 		"loss scale":    func(r *Run) { r.Epochs[1].LossScale++ },
 		"skipped":       func(r *Run) { r.Epochs[1].Skipped++ },
+		"RMSE":          func(r *Run) { r.Epochs[1].TestRMSE = 0.5 },
 		"overflow":      func(r *Run) { r.Counters[0].Counts.Overflow++ },
 		"underflow":     func(r *Run) { r.Counters[0].Counts.Underflow++ },
 		"saturated":     func(r *Run) { r.Counters[0].Counts.Saturated++ },

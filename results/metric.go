@@ -31,8 +31,17 @@ var metrics = []Metric{
 	{Name: "test loss", Higher: false, Data: "test", Share: false, Unit: nat, read: func(e *Epoch) float64 { return e.TestLoss }},
 	{Name: "validation accuracy", Higher: true, Data: "validation", Share: true, Unit: point, read: func(e *Epoch) float64 { return e.ValidationMetric }},
 	{Name: "validation loss", Higher: false, Data: "validation", Share: false, Unit: nat, read: func(e *Epoch) float64 { return e.ValidationLoss }},
+	{Name: "test RMSE", Higher: false, Data: "test", Share: false, Unit: "unit of the target", read: testRMSE},
 	{Name: "training accuracy", Higher: true, Data: "training", Share: true, Unit: point, read: func(e *Epoch) float64 { return e.TrainMetric }},
 	{Name: "training loss", Higher: false, Data: "training", Share: false, Unit: nat, read: func(e *Epoch) float64 { return e.TrainLoss }},
+}
+
+// testRMSE is NaN of epochs without an evaluation and of classifications.
+func testRMSE(e *Epoch) float64 {
+	if e.TestLoss != e.TestLoss || e.TestMetric == e.TestMetric {
+		return math.NaN()
+	}
+	return e.TestRMSE
 }
 
 // FindMetric returns the metric of that name; besides those that MetricNames

@@ -66,14 +66,18 @@ func TestMetrics(t *testing.T) {
 	}}}
 	want := map[string]float64{
 		"training loss": 1, "training accuracy": 2, "validation loss": 3,
-		"validation accuracy": 4, "test loss": 5, "test accuracy": 6,
+		"validation accuracy": 4, "test loss": 5, "test accuracy": 6, "test RMSE": 7,
 	}
 	if len(want) != len(MetricNames()) {
 		t.Errorf("%d metrics, this test knows %d", len(MetricNames()), len(want))
 	}
 	for _, name := range MetricNames() {
 		m, found := FindMetric(name)
-		if got := m.Final(&r); !found || got != want[name] {
+		of := &r
+		if name == "test RMSE" {
+			of = &Run{Epochs: []Epoch{{TestLoss: 49, TestMetric: math.NaN(), TestRMSE: 7}}}
+		}
+		if got := m.Final(of); !found || got != want[name] {
 			t.Errorf("%s after the last epoch: %v, want %v", name, got, want[name])
 		}
 		gain := m.Gain(3, 1) // of two accuracies 3 is better, of two losses 1
@@ -83,6 +87,9 @@ func TestMetrics(t *testing.T) {
 		if !math.IsNaN(m.Final(&Run{})) {
 			t.Errorf("%s of a run without epochs is a number", name)
 		}
+	}
+	if m, _ := FindMetric("test RMSE"); !math.IsNaN(m.Final(&r)) {
+		t.Error("a classification has an RMSE")
 	}
 	if _, found := FindMetric("accuracy of the best epoch"); found {
 		t.Error("an unknown metric was found")

@@ -47,6 +47,9 @@ type Epoch struct {
 	Ties             uint64  `cbor:"7,keyasint"` // test examples whose largest logit is shared
 	LossScale        float64 `cbor:"8,keyasint"` // S at the end of the epoch
 	Skipped          uint64  `cbor:"9,keyasint"` // steps skipped by the loss scaler
+	// TestRMSE is that of a regression, in the units of its targets; else 0, which
+	// leaves a run's record and digest what they were before there were regressions.
+	TestRMSE float64 `cbor:"10,keyasint,omitempty"`
 }
 
 // Tensor is a named parameter. Values hold binary32 numbers unless Wide.

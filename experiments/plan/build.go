@@ -101,7 +101,7 @@ func (r *reader) readNetwork(root *node, task *Task) trainer.Network {
 	case nodes == nil, len(task.Shape) == 0:
 		return trainer.Network{}
 	case len(texts) == 0:
-		r.fail(at.errorf(fmt.Sprintf("write at least [%q]", fmt.Sprintf("dense %d", len(task.ClassNames))), "the network has no layers"))
+		r.fail(at.errorf(fmt.Sprintf("write at least [%q]", fmt.Sprintf("dense %d", task.outputs())), "the network has no layers"))
 		return trainer.Network{}
 	}
 	network, err := trainer.ParseLayers(texts, task.Shape)
@@ -122,17 +122,20 @@ func faultyLayer(err error, layers *node) *node {
 	return layers
 }
 
-// checkOutputs holds the last layer to the classes of the task.
+// checkOutputs holds the last layer to the classes or targets of the task.
 func (r *reader) checkOutputs(network *trainer.Network, task *Task, nodes []*node) {
 	last := network.Layers[len(network.Layers)-1]
-	classes := len(task.ClassNames)
-	remedy := fmt.Sprintf("end with %q", fmt.Sprintf("dense %d", classes))
+	remedy := fmt.Sprintf("end with %q", fmt.Sprintf("dense %d", task.outputs()))
+	kind := "classes"
+	if len(task.TargetNames) > 0 {
+		kind = "targets"
+	}
 	switch at := nodes[len(nodes)-1]; {
 	case network.Parameters() == 0:
 		r.fail(at.errorf(remedy, "the network has no layer with weights: nothing to train"))
-	case network.Outputs() != classes:
-		r.fail(at.errorf(remedy, "the last layer, %q, has an output of %s = %d values, but the task has %d classes",
-			last.Name, product(last.Out), network.Outputs(), classes))
+	case network.Outputs() != task.outputs():
+		r.fail(at.errorf(remedy, "the last layer, %q, has an output of %s = %d values, but the task has %d %s",
+			last.Name, product(last.Out), network.Outputs(), task.outputs(), kind))
 	}
 }
 

@@ -22,6 +22,7 @@ var metrics = []metric{
 	{"test loss", "lower", "test"},
 	{"validation accuracy", "higher", "validation"},
 	{"validation loss", "lower", "validation"},
+	{"test RMSE", "lower", "test"},
 	{"training accuracy", "higher", "training"},
 	{"training loss", "lower", "training"},
 }
@@ -196,6 +197,15 @@ func (r *reader) checkMetric(root *node, c Claim, t trainer.Training, task Task)
 		}
 		if at.table["metric"] != nil {
 			at = at.table["metric"]
+		}
+		regression := len(task.TargetNames) > 0
+		switch {
+		case regression && strings.HasSuffix(m.name, "accuracy"):
+			r.fail(at.errorf(`write metric = "test RMSE"`, "%s is one of classes, but the data of %s has targets of values", m.name, task.Data))
+			return
+		case !regression && strings.HasSuffix(m.name, "RMSE"):
+			r.fail(at.errorf(`write metric = "test accuracy"`, "%s is one of targets, but the data of %s has classes", m.name, task.Data))
+			return
 		}
 		if count == 0 {
 			r.fail(at.errorf("give the task "+m.data+" data or claim another metric", "the task has no %s data", m.data))

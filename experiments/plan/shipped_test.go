@@ -11,6 +11,7 @@ import (
 	"strings"
 	"testing"
 
+	"ulpine/datasets/npy"
 	"ulpine/experiments/plans"
 	"ulpine/trainer"
 )
@@ -65,6 +66,23 @@ func writeDigits(t *testing.T, folder string) {
 	}
 }
 
+// writeArrays writes the archive that arrays.toml names.
+func writeArrays(t *testing.T, folder string) {
+	t.Helper()
+	var b bytes.Buffer
+	x := npy.Array{Shape: []int{32, 4}, Values: make([]float64, 128)}
+	for i := range x.Values {
+		x.Values[i] = float64(i * i % 17)
+	}
+	y := npy.Array{Shape: []int{32, 1}, Values: x.Values[:32]}
+	if err := npy.WriteNPZ(&b, []npy.Named{{Name: "inputs", Array: &x}, {Name: "targets", Array: &y}}); err != nil {
+		t.Fatal(err)
+	}
+	if err := os.WriteFile(filepath.Join(folder, "arrays.npz"), b.Bytes(), 0o600); err != nil {
+		t.Fatal(err)
+	}
+}
+
 // What data and a pretraining on other data have to do with the plan.
 func TestTasksFromTables(t *testing.T) {
 	folder := t.TempDir()
@@ -100,6 +118,7 @@ func TestTasksFromTables(t *testing.T) {
 func TestShippedPlansLoad(t *testing.T) {
 	folder := t.TempDir()
 	writeDigits(t, folder)
+	writeArrays(t, folder)
 	all := shipped(t)
 	for _, name := range []string{"first-look.toml", "sixteen-bit.toml", "digits-idx.toml"} {
 		if all[name] == "" {

@@ -25,6 +25,10 @@ func (t *Task) sizes() trainer.Sizes {
 	return trainer.Sizes{Train: t.Train, Validation: t.Validation, Test: t.Test}
 }
 
+// outputs is how many outputs of a network the task asks for: one a class, or one
+// a target of a regression.
+func (t *Task) outputs() int { return len(t.ClassNames) + len(t.TargetNames) }
+
 // readTask reads [task].
 func (r *reader) readTask(root *node) Task {
 	n := r.required(root, "task", `[task] with data = "pump-vibration"`)
@@ -164,7 +168,7 @@ func (r *reader) checkSameShape(n *node, main, pre *Task) {
 	if at := n.table["task"]; at != nil {
 		n = at
 	}
-	if !slices.Equal(main.Shape, pre.Shape) || len(main.ClassNames) != len(pre.ClassNames) {
+	if !slices.Equal(main.Shape, pre.Shape) || len(main.ClassNames) != len(pre.ClassNames) || len(main.TargetNames) != len(pre.TargetNames) {
 		r.fail(n.errorf("pretrain on data of the same shape and classes",
 			"examples of %s in %d classes do not fit the network, which takes %s in %d classes",
 			shapeText(pre.Shape), len(pre.ClassNames), shapeText(main.Shape), len(main.ClassNames)))

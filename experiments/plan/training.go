@@ -122,7 +122,14 @@ func describeLoss(t trainer.Training) string {
 // checkTargets holds the loss to what the data has.
 func (r *reader) checkTargets(n *node, t *trainer.Training, task *Task) {
 	at := n.table["loss"]
-	if at == nil || task.Source == nil || !t.Regression() || len(task.ClassNames) == 0 {
+	if at == nil {
+		at = n
+	}
+	switch {
+	case task.Source == nil, t.Regression() == (len(task.TargetNames) > 0):
+		return
+	case !t.Regression():
+		r.fail(at.errorf(`write loss = "mean-squared-error"`, "%s takes classes, but the data of %s has targets of values", t.Loss, task.Data))
 		return
 	}
 	r.fail(at.errorf(`write loss = "cross-entropy"`, "%s takes targets of values, but the data of %s has classes", t.Loss, task.Data))
