@@ -38,6 +38,23 @@ func (m Matrix[T]) Pack(dst []T, width, k0, k1, j0, j1 int) {
 	}
 }
 
+// PackTable packs columns of a table of places, as convolutions have them: element
+// (k, j) is data[rows[k] + columns[j]]. It writes dst[k*width + j], and zero for
+// columns from len(columns) up to width.
+func PackTable[T Element](dst, data []T, rows, columns []int32, width int) {
+	if to, ok := any(dst).([]float32); ok {
+		kernel.PackTable(to, any(data).([]float32), rows, columns, width)
+		return
+	}
+	for k, at := range rows {
+		to := dst[k*width:][:width]
+		for j, c := range columns {
+			to[j] = data[at+c]
+		}
+		clear(to[len(columns):])
+	}
+}
+
 // Padded implements Columns.
 func (Matrix[T]) Padded(k, j int) bool { return false }
 

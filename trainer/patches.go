@@ -18,58 +18,15 @@ type windowed[T quant.Element] struct {
 	row, column []int32
 }
 
-// Pack implements quant.Columns. Columns whose places are neighbours are copied
-// together: an output row of a convolution without stride, a kernel row.
+// Pack implements quant.Columns.
 func (b *windowed[T]) Pack(dst []T, width, k0, k1, j0, j1 int) {
-	column := b.column[j0:j1]
-	var list [maxStretches]stretch
-	stretches := stretchesOf(&list, column)
-	for k := k0; k < k1; k++ {
-		row := dst[(k-k0)*width:][:width]
-		clear(row[len(column):])
-		src := b.frame.data[b.row[k]:]
-		if stretches == nil {
-			for i, at := range column {
-				row[i] = src[at]
-			}
-			continue
-		}
-		for _, r := range stretches {
-			copy(row[r.to:r.end], src[r.from:])
-		}
-	}
+	quant.PackTable(dst, b.frame.data, b.row[k0:k1], b.column[j0:j1], width)
 }
 
 // Padded implements quant.Columns.
 func (b *windowed[T]) Padded(k, j int) bool {
 	void := b.frame.void
 	return void != nil && void[int(b.row[k]+b.column[j])%len(void)]
-}
-
-// stretch is a sequence of columns whose places are neighbours.
-type stretch struct{ to, end, from int32 }
-
-// Copying pays from about five elements a stretch on.
-const (
-	maxStretches = 16
-	leastStretch = 5
-)
-
-// stretchesOf lists the stretches of a table, nil where they are many or short.
-func stretchesOf(list *[maxStretches]stretch, column []int32) []stretch {
-	n := 0
-	for i, at := range column {
-		if n > 0 && at == list[n-1].from+list[n-1].end-list[n-1].to {
-			list[n-1].end++
-			continue
-		}
-		if n == maxStretches || n > 0 && i < n*leastStretch {
-			return nil
-		}
-		list[n] = stretch{int32(i), int32(i) + 1, at}
-		n++
-	}
-	return list[:n]
 }
 
 // outputs are the places of the windows (sample, oy, ox) of a frame of the input.

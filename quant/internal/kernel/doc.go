@@ -31,3 +31,5 @@
 //
 // Sums start at +0, and +0 is added once at the end: a sum that is zero is +0.
 package kernel
+
+//go:generate go -C _asm run . ..

@@ -14,6 +14,10 @@ type loops struct {
 	interleave func(dst, first, second []float32, factor float32)
 	transpose  func(dst, src []float32, dstRow, srcRow, blocks int)
 	addNative  func(total, chunk []float32)
+
+	copyColumns   func(dst, data []float32, rows []int32, width int)
+	gatherColumns func(dst, data []float32, rows, columns []int32, width int)
+
 	addNearest func(total, chunk []float32, c *Constants)
 	philox     func(t *philoxArgs)
 

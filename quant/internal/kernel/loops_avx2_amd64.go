@@ -38,6 +38,16 @@ func interleaveAVX2(dst []float32, first []float32, second []float32, factor flo
 //go:noescape
 func transposeAVX2(dst []float32, src []float32, dstRow int, srcRow int, blocks int)
 
+// copyColumnsAVX2 copies eight neighbours a row: dst[k*width + j] = data[rows[k] + j] for j below 8.
+//
+//go:noescape
+func copyColumnsAVX2(dst []float32, data []float32, rows []int32, width int)
+
+// gatherColumnsAVX2 gathers eight columns a row: dst[k*width + j] = data[rows[k] + columns[j]] for j below 8.
+//
+//go:noescape
+func gatherColumnsAVX2(dst []float32, data []float32, rows []int32, columns []int32, width int)
+
 // addNativeAVX2 adds chunk to total.
 //
 //go:noescape

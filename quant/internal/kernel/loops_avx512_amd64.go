@@ -38,6 +38,16 @@ func interleaveAVX512(dst []float32, first []float32, second []float32, factor f
 //go:noescape
 func transposeAVX512(dst []float32, src []float32, dstRow int, srcRow int, blocks int)
 
+// copyColumnsAVX512 copies eight neighbours a row: dst[k*width + j] = data[rows[k] + j] for j below 8.
+//
+//go:noescape
+func copyColumnsAVX512(dst []float32, data []float32, rows []int32, width int)
+
+// gatherColumnsAVX512 gathers eight columns a row: dst[k*width + j] = data[rows[k] + columns[j]] for j below 8.
+//
+//go:noescape
+func gatherColumnsAVX512(dst []float32, data []float32, rows []int32, columns []int32, width int)
+
 // addNativeAVX512 adds chunk to total.
 //
 //go:noescape

@@ -647,6 +647,53 @@ next:
 	VZEROUPPER
 	RET
 
+// func copyColumnsAVX512(dst []float32, data []float32, rows []int32, width int)
+// Requires: AVX
+TEXT ·copyColumnsAVX512(SB), $0-80
+	MOVQ dst_base+0(FP), AX
+	MOVQ data_base+24(FP), CX
+	MOVQ rows_base+48(FP), DX
+	MOVQ rows_len+56(FP), BX
+	MOVQ width+72(FP), SI
+	XORQ DI, DI
+
+next:
+	MOVLQSX (DX)(DI*4), R8
+	VMOVUPS (CX)(R8*4), Y0
+	VMOVUPS Y0, (AX)
+	LEAQ    (AX)(SI*4), AX
+	ADDQ    $0x01, DI
+	CMPQ    DI, BX
+	JLT     next
+	VZEROUPPER
+	RET
+
+// func gatherColumnsAVX512(dst []float32, data []float32, rows []int32, columns []int32, width int)
+// Requires: AVX, AVX2, AVX512F, AVX512VL
+TEXT ·gatherColumnsAVX512(SB), $0-104
+	MOVQ    dst_base+0(FP), AX
+	MOVQ    data_base+24(FP), CX
+	MOVQ    rows_base+48(FP), DX
+	MOVQ    columns_base+72(FP), BX
+	MOVQ    rows_len+56(FP), SI
+	MOVQ    width+96(FP), DI
+	VMOVDQU (BX), Y0
+	XORQ    BX, BX
+
+next:
+	MOVLQSX    (DX)(BX*4), R8
+	LEAQ       (CX)(R8*4), R8
+	VPXORD     Y1, Y1, Y1
+	VPCMPEQD   Y2, Y2, Y2
+	VGATHERDPS Y2, (R8)(Y0*4), Y1
+	VMOVUPS    Y1, (AX)
+	LEAQ       (AX)(DI*4), AX
+	ADDQ       $0x01, BX
+	CMPQ       BX, SI
+	JLT        next
+	VZEROUPPER
+	RET
+
 // func addNativeAVX512(total []float32, chunk []float32)
 // Requires: AVX, AVX512F
 TEXT ·addNativeAVX512(SB), $0-48

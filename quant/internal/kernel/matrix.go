@@ -52,3 +52,68 @@ func packTransposed(dst, data []float32, col, width, k0, k1, j0, j1 int) {
 		}
 	}
 }
+
+// PackTable packs columns of a table of places: element (k, j) is
+// data[rows[k] + columns[j]]. It writes dst[k*width + j], and zero for columns from
+// len(columns) up to width.
+func PackTable(dst, data []float32, rows, columns []int32, width int) {
+	if len(rows) == 0 {
+		return
+	}
+	l := &Sets[0].loops
+	j := 0
+	if l.copyColumns != nil && within(data, rows, columns) {
+		const block = 8
+		for ; j+block <= len(columns); j += block {
+			c := columns[j:][:block]
+			if neighbours(c) {
+				l.copyColumns(dst[j:], data[c[0]:], rows, width)
+			} else {
+				l.gatherColumns(dst[j:], data, rows, c, width)
+			}
+		}
+	}
+	if j == width {
+		return
+	}
+	rest := columns[j:]
+	for k, at := range rows {
+		to := dst[k*width+j:][:width-j]
+		from := data[at:]
+		for i, c := range rest {
+			to[i] = from[c]
+		}
+		clear(to[len(rest):])
+	}
+}
+
+// neighbours reports whether places follow one another.
+func neighbours(c []int32) bool {
+	for i, at := range c {
+		if at != c[0]+int32(i) {
+			return false
+		}
+	}
+	return true
+}
+
+// within reports whether all places of a table lie in data, which the assembly does
+// not check.
+func within(data []float32, rows, columns []int32) bool {
+	low, high := span32(rows)
+	first, last := span32(columns)
+	return low >= 0 && first >= 0 && int(high)+int(last) < len(data)
+}
+
+// span32 returns the least and the greatest number.
+func span32(x []int32) (low, high int32) {
+	for i, v := range x {
+		if i == 0 || v < low {
+			low = v
+		}
+		if i == 0 || v > high {
+			high = v
+		}
+	}
+	return low, high
+}

@@ -49,3 +49,47 @@ func TestPackMatrix(t *testing.T) {
 		}
 	}
 }
+
+// TestPackTable: packed tables equal their elements, and nothing beyond is written.
+func TestPackTable(t *testing.T) {
+	r := rand.New(rand.NewPCG(1, 14))
+	for round := range 400 {
+		data := make([]float32, 1+r.IntN(300))
+		for i := range data {
+			data[i] = r.Float32()
+		}
+		half := int32(len(data)+1) / 2
+		rows, columns := make([]int32, r.IntN(40)), make([]int32, r.IntN(40))
+		for i := range rows {
+			rows[i] = r.Int32N(half)
+		}
+		for i := range columns {
+			columns[i] = r.Int32N(half)
+			if i > 0 && round%3 > 0 && columns[i-1]+1 < half && r.IntN(12) > 0 {
+				columns[i] = columns[i-1] + 1
+			}
+		}
+		width := len(columns) + r.IntN(9)
+		space := make([]float32, len(rows)*width+9)
+		for i := range space {
+			space[i] = guard
+		}
+		PackTable(space[:len(rows)*width], data, rows, columns, width)
+		for k, at := range rows {
+			for j := range width {
+				want := float32(0)
+				if j < len(columns) {
+					want = data[at+columns[j]]
+				}
+				if got := space[k*width+j]; got != want {
+					t.Fatalf("%d rows, %d columns, width %d: (%d,%d) is %v, want %v", len(rows), len(columns), width, k, j, got, want)
+				}
+			}
+		}
+		for _, v := range space[len(rows)*width:] {
+			if v != guard {
+				t.Fatal("written beyond the rectangle")
+			}
+		}
+	}
+}

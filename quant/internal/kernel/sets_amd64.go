@@ -12,6 +12,7 @@ var (
 		double: family[float64]{width: widthAVX264, narrow: narrowAVX264, tiles: tilesAVX264},
 		loops: loops{
 			measure: measureAVX2, widen: widenAVX2, interleave: interleaveAVX2, transpose: transposeAVX2,
+			copyColumns: copyColumnsAVX2, gatherColumns: gatherColumnsAVX2,
 			addNative: addNativeAVX2, addNearest: addNearestAVX2, philox: philoxAVX2,
 			philoxStream: philoxStreamAVX2, roundNearest32: roundNearest32AVX2, roundStochastic32: roundStochastic32AVX2,
 			roundNearest64: roundNearest64AVX2, roundStochastic64: roundStochastic64AVX2, scale64: scale64AVX2, add64: add64AVX2,
@@ -23,6 +24,7 @@ var (
 		double: family[float64]{width: widthAVX51264, narrow: narrowAVX51264, tiles: tilesAVX51264},
 		loops: loops{
 			measure: measureAVX512, widen: widenAVX512, interleave: interleaveAVX512, transpose: transposeAVX512,
+			copyColumns: copyColumnsAVX512, gatherColumns: gatherColumnsAVX512,
 			addNative: addNativeAVX512, addNearest: addNearestAVX512, philox: philoxAVX512,
 			philoxStream: philoxStreamAVX512, roundNearest32: roundNearest32AVX512, roundStochastic32: roundStochastic32AVX512,
 			roundNearest64: roundNearest64AVX512, roundStochastic64: roundStochastic64AVX512, scale64: scale64AVX512, add64: add64AVX512,

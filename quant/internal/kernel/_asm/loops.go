@@ -180,6 +180,43 @@ var loops = []loop{
 		},
 	},
 	{
+		name: "copyColumns", signature: "func(dst, data []float32, rows []int32, width int)",
+		doc: "copies eight neighbours a row: dst[k*width + j] = data[rows[k] + j] for j below 8.",
+		emit: func(g *loop) {
+			dst, data, rows, n := g.base("dst"), g.base("data"), g.base("rows"), g.length("rows")
+			width := g.Load(g.Param("width"), g.GP64())
+			g.each(n, 1, func(k reg.Register) {
+				at, v := g.GP64(), g.YMM()
+				g.MOVLQSX(g.at(rows, k, 4), at)
+				g.VMOVUPS(g.at(data, at, 4), v)
+				g.VMOVUPS(v, operand.Mem{Base: dst})
+				g.LEAQ(g.at(dst, width, 4), dst)
+			})
+			g.end()
+		},
+	},
+	{
+		name: "gatherColumns", signature: "func(dst, data []float32, rows, columns []int32, width int)",
+		doc: "gathers eight columns a row: dst[k*width + j] = data[rows[k] + columns[j]] for j below 8.",
+		emit: func(g *loop) {
+			dst, data, rows, columns := g.base("dst"), g.base("data"), g.base("rows"), g.base("columns")
+			n, width := g.length("rows"), g.Load(g.Param("width"), g.GP64())
+			index := g.YMM()
+			g.VMOVDQU(operand.Mem{Base: columns}, index)
+			g.each(n, 1, func(k reg.Register) {
+				at, v, mask := g.GP64(), g.YMM(), g.YMM()
+				g.MOVLQSX(g.at(rows, k, 4), at)
+				g.LEAQ(g.at(data, at, 4), at)
+				g.zero(v) // live with the mask: a gather's registers must differ
+				g.VPCMPEQD(mask, mask, mask)
+				g.VGATHERDPS(mask, operand.Mem{Base: at, Index: index, Scale: 4}, v)
+				g.VMOVUPS(v, operand.Mem{Base: dst})
+				g.LEAQ(g.at(dst, width, 4), dst)
+			})
+			g.end()
+		},
+	},
+	{
 		name: "addNative", signature: "func(total, chunk []float32)",
 		doc: "adds chunk to total.",
 		emit: func(g *loop) {
