@@ -24,6 +24,9 @@ func TestMetricLists(t *testing.T) {
 // what results does not know a plan refuses.
 func TestTargets(t *testing.T) {
 	for _, name := range append(plan.Metrics(), "test recall") {
+		if strings.HasSuffix(name, "RMSE") {
+			continue // the tiny plan's data have classes, which a plan says before anything else
+		}
 		for _, target := range []string{"0.90", "1", "1.5", "0", "-1", "NaN", "Inf", "x", ""} {
 			text := strings.TrimSpace("epochs to " + name + " " + target)
 			m, known := results.FindMetric(text)

@@ -11,11 +11,11 @@ import (
 // linearAccount recomputes one linear layer of stride 1 with plain loops in binary32; a
 // dense layer is a convolution of width 1 over a single position.
 type linearAccount struct {
-	t                             *testing.T
-	ints                          bool // INT8, else MXFP4 in blocks of two
-	units, channels, width, pad   int
-	inner, outer, samples         int
-	w, b, x, y, dy, dx, dw, dbias []float64
+	t                           *testing.T
+	ints                        bool // INT8, else MXFP4 in blocks of two
+	units, channels, width, pad int
+	inner, outer, samples       int
+	w, b, x, dy                 []float64
 }
 
 // terms replaces the elements of a tensor, listed along the reduction axis, by their

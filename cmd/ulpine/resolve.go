@@ -64,7 +64,7 @@ func measureRate(ctx context.Context, p *plan.Plan) (float64, error) {
 		n := batches * t.Batch
 		job := trainer.Job{
 			Network: p.Network, Arm: p.Arms[i].Arithmetic, Training: t, Seed: 1,
-			Train: inventedSet(p.Network, n),
+			Train: inventedSet(p.Network, n, t.Regression()),
 		}
 		began := time.Now()
 		if _, err := trainer.Run(ctx, job, nil); err != nil {
@@ -76,8 +76,9 @@ func measureRate(ctx context.Context, p *plan.Plan) (float64, error) {
 	return float64(macs) / spent.Seconds(), nil
 }
 
-// inventedSet is n examples of normal numbers with labels in turn.
-func inventedSet(n trainer.Network, examples int) trainer.Set {
+// inventedSet is n examples of normal numbers with labels in turn, or with normal
+// numbers as targets.
+func inventedSet(n trainer.Network, examples int, regression bool) trainer.Set {
 	shape := append([]int{examples}, n.Input...)
 	set := trainer.Set{
 		Inputs: tensor.New(tensor.WithShape(shape...), tensor.Of(tensor.Float32)),
@@ -86,6 +87,14 @@ func inventedSet(n trainer.Network, examples int) trainer.Set {
 	draws := random.Draws{Seed: random.Derive(1, random.Data)}
 	for i, values := 0, set.Inputs.Float32s(); i < len(values); i++ {
 		values[i] = float32(draws.Normal(uint64(i)))
+	}
+	if regression {
+		set.Labels, set.Targets = nil, tensor.New(tensor.WithShape(examples, n.Outputs()), tensor.Of(tensor.Float32))
+		draws.Site = 1
+		for i, values := 0, set.Targets.Float32s(); i < len(values); i++ {
+			values[i] = float32(draws.Normal(uint64(i)))
+		}
+		return set
 	}
 	for i := range set.Labels {
 		set.Labels[i] = int32(i % n.Outputs())
