@@ -8,6 +8,8 @@ type fast[T Element] struct {
 	kernel         *kernel.Multiplier // tensors of float32
 	wide           *kernel.Wide       // tensors of float64
 	owner          *Multiplier[T]
+	tally          kernel.Tally // events that the kernels met
+	terms, sumsOf  quick        // the points they belong to
 	product        kernel.Product[float32]
 	wideProduct    kernel.Product[float64]
 	products, sums *Counts
@@ -26,6 +28,10 @@ func newFast[T Element](owner *Multiplier[T], acc Accumulate) *fast[T] {
 	}
 	if f.kernel == nil && f.wide == nil {
 		return nil
+	}
+	f.sumsOf = newQuick(&acc.Sum)
+	if acc.Product != nil {
+		f.terms = newQuick(acc.Product)
 	}
 	f.redo = f.redoRows // bound once: a product allocates nothing
 	return f
@@ -62,9 +68,9 @@ func kernelArithmetic(acc Accumulate) (a kernel.Arithmetic, ok bool) {
 		q := newQuick(acc.Product)
 		switch q.kind {
 		case quickNative32:
-			a.Product = kernel.NativeProduct
+			a.Product, a.ProductPolicy = kernel.NativeProduct, q.policy()
 		case quickNearest:
-			a.Product, a.Grid = kernel.RoundedProduct, q.grid()
+			a.Product, a.Grid, a.ProductPolicy = kernel.RoundedProduct, q.grid(), q.policy()
 		case quickStochastic:
 			a.Product, a.Grid = kernel.RandomProduct, q.grid()
 			a.Bits, a.Centred = int(q.random), acc.Product.Rounding.Variant == Centred
@@ -75,6 +81,8 @@ func kernelArithmetic(acc Accumulate) (a kernel.Arithmetic, ok bool) {
 	if a.Sum, ok = kernelSum(&acc.Sum, acc.Through32); !ok {
 		return a, false
 	}
+	sum := newQuick(&acc.Sum)
+	a.SumPolicy = sum.policy()
 	a.Outer = a.Sum
 	if acc.Outer != nil {
 		a.Outer, ok = kernelSum(acc.Outer, acc.Through32)
@@ -85,6 +93,35 @@ func kernelArithmetic(acc Accumulate) (a kernel.Arithmetic, ok bool) {
 // grid is the format of q as the kernels see it.
 func (q *quick) grid() kernel.Grid {
 	return kernel.Grid{Fraction: q.fraction, MinExponent: q.emin, Max: q.max}
+}
+
+// policy is what becomes of numbers beyond the format of q.
+func (q *quick) policy() kernel.Policy { return kernel.Policy{Over: q.over[0], Infinite: q.inf[0]} }
+
+// count adds the events that the kernels met at the point of q, which is nil where
+// there is none.
+func (q *quick) count(e kernel.Events, n *Counts) {
+	for _, x := range []struct {
+		times uint64
+		event Event
+	}{{e.Beyond, q.overEvent[0]}, {e.Infinite, q.infEvent[0]}, {e.NaN, BecameNaN}} {
+		n.countTimes(x.event, x.times)
+	}
+}
+
+// countTimes adds an event several times to the tallies. c may be nil.
+func (c *Counts) countTimes(e Event, times uint64) {
+	if c == nil {
+		return
+	}
+	switch e {
+	case Overflowed:
+		c.Overflow += times
+	case Saturated:
+		c.Saturated += times
+	case BecameNaN:
+		c.NaN += times
+	}
 }
 
 // kernelSum translates the rounding of additions.
@@ -123,8 +160,14 @@ func (f *fast[T]) mul(products, sums *Counts) bool {
 	f.product = kernel.Product[float32]{
 		I: p.I, J: p.J, K: p.K, A: p.A.Data, ARow: p.A.Row, ACol: p.A.Col, B: p.B, C: p.C,
 		Bias: p.Bias, Sums: kernel.Streams(p.Sums), Terms: kernel.Streams(p.Terms), FirstJ: uint32(p.FirstJ),
+		Tally: &f.tally,
 	}
+	_, dense := p.B.(Matrix[float32])
+	f.product.Padded = !dense
+	f.tally = kernel.Tally{}
 	f.kernel.Mul(&f.product, f.redo)
+	f.terms.count(f.tally.Products, products)
+	f.sumsOf.count(f.tally.Sums, sums)
 	f.product = kernel.Product[float32]{}
 	return true
 }
@@ -155,6 +198,8 @@ type fastSums struct {
 	kernel  *kernel.Multiplier
 	product kernel.Product[float32]
 	terms   Matrix[float32] // transposed
+	point   quick           // of the sums
+	tally   kernel.Tally
 	back    []int           // columns handed back, from and to by turns
 	redo    func(i0, i1, j0, j1 int)
 }
@@ -178,21 +223,23 @@ func newFastSums[T Element](acc Accumulate) *fastSums {
 	if k == nil {
 		return nil
 	}
-	f := &fastSums{kernel: k}
+	f := &fastSums{kernel: k, point: newQuick(&acc.Sum)}
 	f.redo = func(_, _, j0, j1 int) { f.back = append(f.back, j0, j1) }
 	return f
 }
 
 // sum forms the sums of rows i0, i0+1, ... and returns the runs of rows that are left
 // to do.
-func (f *fastSums) sum(dst []float32, terms Matrix[float32], rows, k int, d Streams) []int {
+func (f *fastSums) sum(dst []float32, terms Matrix[float32], rows, k int, d Streams, sums *Counts) []int {
 	f.terms = Matrix[float32]{terms.Data, terms.Col, terms.Row}
 	f.product = kernel.Product[float32]{
 		I: 1, J: rows, K: k, A: one, B: &f.terms, C: dst,
-		Sums: kernel.Streams{Row: d.Column, Column: d.Row}, OddColumns: true,
+		Sums: kernel.Streams{Row: d.Column, Column: d.Row}, OddColumns: true, Tally: &f.tally,
 	}
+	f.tally = kernel.Tally{}
 	f.back = f.back[:0]
 	f.kernel.Mul(&f.product, f.redo)
+	f.point.count(f.tally.Sums, sums)
 	f.product, f.terms = kernel.Product[float32]{}, Matrix[float32]{}
 	return f.back
 }

@@ -168,7 +168,7 @@ func (m *Multiplier[T]) sumRows(dst []T, terms Matrix[T], rows, k int, d Streams
 		m.sumRange(dst, terms, 0, rows, k, d, sums)
 		return
 	}
-	left := m.fastSums.sum(to, Matrix[float32]{any(terms.Data).([]float32), terms.Row, terms.Col}, rows, k, d)
+	left := m.fastSums.sum(to, Matrix[float32]{any(terms.Data).([]float32), terms.Row, terms.Col}, rows, k, d, sums)
 	for i := 0; i < len(left); i += 2 {
 		m.sumRange(dst, terms, left[i], left[i+1], k, d, sums)
 	}

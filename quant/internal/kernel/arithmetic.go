@@ -40,6 +40,9 @@ type Arithmetic struct {
 	// Chunk is the number of consecutive terms that are added from +0 in Sum
 	// before Outer adds the finished chunks, from +0, in turn; 0: one sum.
 	Chunk int
+	// What becomes of products and sums beyond their formats, where the kernels form
+	// them again with care.
+	ProductPolicy, SumPolicy Policy
 	// Pairwise adds neighbouring terms, then neighbouring sums, until one is left.
 	// There are kernels where product and sum are native.
 	Pairwise bool

@@ -4,10 +4,10 @@ import "math"
 
 // plan is one way to form a block of terms: a mode and its numbers.
 type plan struct {
+	c      Constants // first: what Go allocates is then aligned to its vectors
 	double bool
 	mode   mode
 	scale  int // A is multiplied by 2^scale when it is packed
-	c      Constants
 }
 
 // plans are the ways that the rounding of sums and products of one arithmetic

@@ -25,6 +25,12 @@ func planned() (singles, doubles []*plan) {
 		}
 	}
 	singles = append(singles, &plan{mode: tree8, c: single.masks()})
+	for i := range arithmetics {
+		m := &Multiplier{a: arithmetics[i]}
+		if m.setCareful(); m.careful != nil {
+			singles = append(singles, &plan{mode: m.careful.mode, c: m.careful.c})
+		}
+	}
 	for _, m := range []mode{baseline64, fmaChain64} {
 		add(&plan{double: true, mode: m, c: double.masks()})
 	}
@@ -114,10 +120,14 @@ func oneTile[L lanes](t *testing.T, r *rand.Rand, s shape[L], loop func(*Tile[L]
 	}
 	got, gotFlags := out()
 	want, wantFlags := out()
-	tile.Out, tile.Flags = got[margin:], gotFlags[margin:]
+	var gotEvents, wantEvents [6]uint64
+	tile.Out, tile.Flags, tile.Events = got[margin:], gotFlags[margin:], gotEvents[:]
 	s.run(&tile)
-	tile.Out, tile.Flags = want[margin:], wantFlags[margin:]
+	tile.Out, tile.Flags, tile.Events = want[margin:], wantFlags[margin:], wantEvents[:]
 	loop(&tile)
+	if gotEvents != wantEvents {
+		t.Fatalf("%s: events %v, want %v", label, gotEvents, wantEvents)
+	}
 	equalTiles(t, label, margin, s.rows*outRow, got, want, gotFlags, wantFlags)
 
 	if _, wide := any(tile.In).([]float64); wide {

@@ -22,6 +22,9 @@ const (
 	stochasticFused
 	stochasticCare
 	stochasticProductCare
+	carefulFused
+	carefulProduct
+	carefulRounded
 	singleModes
 )
 

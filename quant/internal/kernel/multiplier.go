@@ -8,22 +8,24 @@ const blockTerms = 256
 // Multiplier forms products of binary32 matrices in one arithmetic. It owns scratch
 // memory and serves one goroutine at a time.
 type Multiplier struct {
-	a      Arithmetic
-	set    *Set
-	main   *plans
-	bias   *plan // adds the bias in Outer, nil where no plan serves
-	biases *plans
-	outer  func(total, chunk []float32, c *Constants)
-	loops  loops // the set's, and their scratch
-	outerC Constants
-	one    side[float32]
-	two    side[float64]
-	wide   bool // the last panel was formed in binary64 lanes
+	a       Arithmetic
+	set     *Set
+	main    *plans
+	bias    *plan // adds the bias in Outer, nil where no plan serves
+	biases  *plans
+	careful *careful // nil where there is no second forming
+	outer   func(total, chunk []float32, c *Constants)
+	loops   loops // the set's, and their scratch
+	outerC  Constants
+	one     side[float32]
+	two     side[float64]
+	wide    bool // the last panel was formed in binary64 lanes
 
 	// The product.
 	p        *Product[float32]
 	redo     func(i0, i1, j0, j1 int)
 	spanA    Span
+	finiteA  bool
 	rowWords []uint32 // by pairs of rows, K terms
 	termRows []uint32 // the same for the rounding of products
 	biasRow  []uint32 // the same for the addition of the bias
@@ -39,6 +41,7 @@ type Multiplier struct {
 	stack       []subtree // of pairwise sums, depth of them in use
 	depth       int
 	panel       panel
+	spare       []bool // flags that nobody reads
 	bad         []bool // pairs of rows to be handed back
 }
 
@@ -59,6 +62,7 @@ func NewWith(set *Set, a Arithmetic) *Multiplier {
 	}
 	m := &Multiplier{a: a, set: set, loops: set.loops, one: newSide(&set.single), two: newSide(&set.double)}
 	m.main = newPlans(&m.a, a.Sum)
+	m.setCareful()
 	if a.Chunk > 0 && !m.setOuter() {
 		return nil
 	}
@@ -146,7 +150,7 @@ func (m *Multiplier) release() {
 // begin prepares what all panels share.
 func (m *Multiplier) begin(p *Product[float32], redo func(i0, i1, j0, j1 int)) {
 	m.p, m.redo = p, redo
-	m.spanA = m.measureRows()
+	m.spanA, m.finiteA = m.measureRows()
 	m.one.begin()
 	m.two.begin()
 	pairs := pairsOf(p.I)
@@ -166,6 +170,12 @@ func (m *Multiplier) begin(p *Product[float32], redo func(i0, i1, j0, j1 int)) {
 			m.packBias(pairs)
 		}
 	}
+}
+
+// ignored is where flags go that nobody reads.
+func (m *Multiplier) ignored() []bool {
+	m.spare = grown(m.spare, len(m.bad))
+	return m.spare
 }
 
 // oddRows is what the words of rows are or-ed with.

@@ -32,8 +32,8 @@ func packRows[L, T lanes](l *loops, dst []L, a []T, row, col, rows, terms, scale
 	}
 }
 
-// measureRows returns the span of the finite values of A.
-func (m *Multiplier) measureRows() Span {
+// measureRows returns the span of the finite values of A, and whether all are finite.
+func (m *Multiplier) measureRows() (Span, bool) {
 	p := m.p
 	e := noExtent
 	rows, terms, row, col := p.I, p.K, p.ARow, p.ACol
@@ -50,7 +50,8 @@ func (m *Multiplier) measureRows() Span {
 			e.add(math.Float32bits(x[k*col]))
 		}
 	}
-	if e.greatest >= exponentMask32 {
+	finite := e.greatest < exponentMask32
+	if !finite {
 		e = noExtent
 		for i := range p.I {
 			for k := range p.K {
@@ -58,7 +59,7 @@ func (m *Multiplier) measureRows() Span {
 			}
 		}
 	}
-	return e.span()
+	return e.span(), finite
 }
 
 // spanOf returns the span of the finite values of x.

@@ -20,7 +20,7 @@ func (m *Multiplier) formPanel(j0 int) int {
 		n := m.startPanel(j0, m.wide)
 		switch n.form() {
 		case formed:
-			handBack(n.bad, m.p.I, j0, n.columns, m.redo)
+			m.formAgain(n)
 			return n.columns
 		case impossible:
 			m.redo(0, m.p.I, j0, j0+n.columns)
@@ -38,7 +38,7 @@ func (m *Multiplier) formMeasured(j0 int) int {
 		span := n.measureAll()
 		n.only = &span
 		if n.form() == formed {
-			handBack(n.bad, m.p.I, j0, n.columns, m.redo)
+			m.formAgain(n)
 			return n.columns
 		}
 	}
@@ -317,15 +317,26 @@ func (n *panel) copyOut(first, last int) {
 	}
 }
 
+// formAgain forms rows with a flag with care, or hands them back.
+func (m *Multiplier) formAgain(n *panel) {
+	j0, columns := n.j0, n.columns
+	runs(m.bad, func(first, last int) { m.again(2*first, min(2*last, m.p.I), j0, columns) })
+}
+
 // handBack hands back runs of pairs of rows that are marked bad.
 func handBack(bad []bool, rows, j0, columns int, redo func(i0, i1, j0, j1 int)) {
+	runs(bad, func(first, last int) { redo(2*first, min(2*last, rows), j0, j0+columns) })
+}
+
+// runs calls f for every run of marks.
+func runs(bad []bool, f func(first, last int)) {
 	for q := 0; q < len(bad); q++ {
 		first := q
 		for q < len(bad) && bad[q] {
 			q++
 		}
 		if q > first {
-			redo(2*first, min(2*q, rows), j0, j0+columns)
+			f(first, q)
 		}
 	}
 }

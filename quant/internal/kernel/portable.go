@@ -18,6 +18,8 @@ type numbers[L lanes] struct {
 	randomShift                   uint8
 	preShift, baseShift, whole    uint8
 	sum, term                     carrying // binary64 lanes
+	sums32, terms32               caring   // careful modes
+	odd                           bool     // their sums are rounded to odd
 
 	sums      [maxRows * maxWidth]L
 	noWords   [maxWidth]uint32
@@ -57,6 +59,7 @@ var Portable = &Set{
 		productThrough: termProductThrough, odd: termOdd, oddRounded: termOddRounded, stochastic: termStochastic,
 		stochasticFused: termStochasticFused, stochasticCare: termStochasticCare,
 		stochasticProductCare: termStochasticProductCare,
+		carefulFused:          termCarefulFused, carefulProduct: termCarefulProduct, carefulRounded: termCarefulRounded,
 	})},
 	double: family[float64]{width: portableWidth, narrow: portableNarrow, tiles: portableTiles([]term[float64]{
 		baseline64: termBaseline[float64], fmaChain64: termFmaChain64, fused: termFused, fusedFree: termFusedFree,
@@ -115,6 +118,13 @@ func sweep[L lanes](t *Tile[L], f term[L]) {
 		}
 		t.Flags[g] = storeGroup(t, c, sums, g, unscale)
 	}
+	for n, e := range []Events{c.terms32.events, c.sums32.events} {
+		if to := t.Events; to != nil {
+			to[3*n] += e.Beyond
+			to[3*n+1] += e.Infinite
+			to[3*n+2] += e.NaN
+		}
+	}
 }
 
 // storeGroup writes a group's sums and reports whether one of them is not finite or
@@ -169,6 +179,9 @@ func (n *numbers[L]) read(c *Constants) {
 			mask: c.RandomMask.bits64(), half: c.RandomHalf.bits64(), keep: c.Keep.bits64(),
 			shift: uint8(c.RandomShift[0]), least: c.SumLeast.double(), limit: c.Limit.double(),
 		},
+		terms32: caring{max: c.Max.single(), over: c.Over.single(), infinite: c.Infinite.single()},
+		sums32:  caring{max: c.SumMax.single(), over: c.SumOver.single(), infinite: c.SumInfinite.single()},
+		odd:     c.OddMask[0] != 0,
 		term: carrying{
 			mask: c.TermMask.bits64(), half: c.TermHalf.bits64(), keep: c.TermKeep.bits64(),
 			shift: uint8(c.TermShift[0]), least: c.Least.double(), limit: c.TermLimit.double(),

@@ -40,6 +40,9 @@ const (
 func fma32(a, b, s float32) float32 {
 	p, t := float64(float64(a)*float64(b)), float64(s)
 	x := p + t
+	if x-x != 0 {
+		return float32(x)
+	}
 	z := x - p
 	rest := (p - (x - z)) + (t - z)
 	return float32(oddNeighbour64(x, rest))

@@ -24,5 +24,7 @@ type Product[T lanes] struct {
 	Sums       Streams
 	Terms      Streams // of the rounding of products
 	FirstJ     uint32  // number of column 0 among the lanes of Sums.Column
+	Padded     bool    // B has terms that add nothing, not even to NaN, and are packed as zeros
+	Tally      *Tally  // takes the events of what is formed with care; may be nil
 	OddColumns bool    // the low bit of the columns' words is set, instead of the rows'
 }

@@ -12,12 +12,14 @@ import (
 // kept as a number rounded to odd, which every rounding to fewer bits takes for the
 // exact one.
 
-// outcome of one result: its value, and whether a product or a sum left the range of
-// its format on the way.
+// reference is one result, and the events on the way to it.
 type reference struct {
 	value float32
-	left  bool
+	tally Tally
 }
+
+// unbounded is the policy of binary32's own arithmetic.
+var unbounded = Policy{math.Inf(1), math.Inf(1)}
 
 // result forms C[i,j].
 func result(a *Arithmetic, p *Product[float32], column []float32, i, j int) reference {
@@ -28,8 +30,22 @@ func result(a *Arithmetic, p *Product[float32], column []float32, i, j int) refe
 		s16 := func(x uint32) int32 { return int32(int16(x)) }
 		return uint32(s16(row)*s16(col)+s16(row>>16)*s16(col>>16)) & 0xffff
 	}
+	term := func(k int) float64 {
+		x := float64(p.A[i*p.ARow+k*p.ACol]) * float64(column[k])
+		switch a.Product {
+		case NativeProduct:
+			return keep(float64(float32(x)), math.MaxFloat32, policyOf(a.ProductPolicy), &r.tally.Products)
+		case RoundedProduct:
+			return keep(nearestTo(x, a.Grid), a.Grid.Max, policyOf(a.ProductPolicy), &r.tally.Products)
+		case RandomProduct:
+			t := &Sum{Grid: a.Grid, Bits: a.Bits, Centred: a.Centred}
+			x = stochasticTo(x, t, word(&p.Terms, k)>>(16-a.Bits))
+			return keep(x, a.Grid.Max, policyOf(a.ProductPolicy), &r.tally.Products)
+		}
+		return x
+	}
 	if a.Pairwise {
-		r.value = float32(r.pairwise(a, p, column, i))
+		r.value = canonical(r.pairwise(a, p, i, term))
 		return r
 	}
 	chunk := a.Chunk
@@ -40,45 +56,39 @@ func result(a *Arithmetic, p *Product[float32], column []float32, i, j int) refe
 	for from := 0; from < p.K; from += chunk {
 		s := 0.0
 		for k := from; k < min(p.K, from+chunk); k++ {
-			x := float64(p.A[i*p.ARow+k*p.ACol]) * float64(column[k])
-			switch a.Product {
-			case NativeProduct:
-				x = r.keep(float64(float32(x)), math.MaxFloat32)
-			case RoundedProduct:
-				x = r.keep(nearestTo(x, a.Grid), a.Grid.Max)
-			case RandomProduct:
-				t := &Sum{Grid: a.Grid, Bits: a.Bits, Centred: a.Centred}
-				x = r.keep(stochasticTo(x, t, word(&p.Terms, k)>>(16-a.Bits)), a.Grid.Max)
-			}
-			s = r.add(&a.Sum, s, x, word(&p.Sums, k))
+			s = r.add(a, &a.Sum, s, term(k), word(&p.Sums, k))
 		}
 		if a.Chunk == 0 {
 			total = s
 		} else {
-			total = r.add(&a.Outer, total, s, 0)
+			total = r.add(a, &a.Outer, total, s, 0)
 		}
 	}
 	if p.Bias != nil {
-		total = r.add(&a.Outer, total, float64(p.Bias[i]), word(&p.Sums, p.K))
+		total = r.add(a, &a.Outer, total, float64(p.Bias[i]), word(&p.Sums, p.K))
 	}
-	r.value = float32(total)
+	r.value = canonical(total)
 	return r
 }
 
-// pairwise is result for pairwise sums of native products, level by level.
-func (r *reference) pairwise(a *Arithmetic, p *Product[float32], column []float32, i int) float64 {
-	var level []float64
-	if len(column) == 0 {
-		level = []float64{0}
+// canonical is x in binary32, NaN without sign and payload.
+func canonical(x float64) float32 {
+	if x != x {
+		return float32(math.NaN())
 	}
-	for k, b := range column {
-		x := float64(p.A[i*p.ARow+k*p.ACol]) * float64(b)
-		level = append(level, r.keep(float64(float32(x)), math.MaxFloat32)+0)
+	return float32(x)
+}
+
+// pairwise is result for pairwise sums, level by level.
+func (r *reference) pairwise(a *Arithmetic, p *Product[float32], i int, term func(int) float64) float64 {
+	level := []float64{0}
+	for k := range p.K {
+		level = append(level[:k], term(k)+0)
 	}
 	for len(level) > 1 {
 		var next []float64
 		for n := 0; n+1 < len(level); n += 2 {
-			next = append(next, r.add(&a.Sum, level[n], level[n+1], 0))
+			next = append(next, r.add(a, &a.Sum, level[n], level[n+1], 0))
 		}
 		if len(level)%2 == 1 {
 			next = append(next, level[len(level)-1])
@@ -86,13 +96,13 @@ func (r *reference) pairwise(a *Arithmetic, p *Product[float32], column []float3
 		level = next
 	}
 	if p.Bias != nil {
-		return r.add(&a.Outer, level[0], float64(p.Bias[i]), 0)
+		return r.add(a, &a.Outer, level[0], float64(p.Bias[i]), 0)
 	}
 	return level[0]
 }
 
 // add is one addition.
-func (r *reference) add(s *Sum, x, y float64, u uint32) float64 {
+func (r *reference) add(a *Arithmetic, s *Sum, x, y float64, u uint32) float64 {
 	z := oddSum(x, y)
 	limit := s.Grid.Max
 	if s.Through {
@@ -106,13 +116,29 @@ func (r *reference) add(s *Sum, x, y float64, u uint32) float64 {
 	case StochasticSum:
 		z = stochasticTo(z, s, u>>(16-s.Bits))
 	}
-	return r.keep(z, limit) + 0
+	return keep(z, limit, policyOf(a.SumPolicy), &r.tally.Sums) + 0
 }
 
-// keep notes a value beyond the limit, or NaN.
-func (r *reference) keep(x, limit float64) float64 {
-	if !(math.Abs(x) <= limit) {
-		r.left = true
+// policyOf is p, or infinity where nothing is said.
+func policyOf(p Policy) Policy {
+	if p == (Policy{}) {
+		return unbounded
+	}
+	return p
+}
+
+// keep applies the policy to a rounded number and counts.
+func keep(x, limit float64, p Policy, e *Events) float64 {
+	switch {
+	case x != x:
+		e.NaN++
+		return math.NaN()
+	case x-x != 0:
+		e.Infinite++
+		return math.Copysign(p.Infinite, x)
+	case math.Abs(x) > limit:
+		e.Beyond++
+		return math.Copysign(p.Over, x)
 	}
 	return x
 }
@@ -209,6 +235,24 @@ var arithmetics = []Arithmetic{
 	{Product: ExactProduct, Sum: nearestSum(bf16), Chunk: 64},
 	{Product: ExactProduct, Sum: throughSum(e5m2), Outer: nearestSum(fp16), Chunk: 3},
 	{Product: NativeProduct, Sum: Sum{}, Chunk: 16},
+}
+
+// init gives the arithmetics that are formed again with care a policy each.
+func init() {
+	for i := range arithmetics {
+		a := &arithmetics[i]
+		if a.Sum.Kind != NearestSum {
+			continue
+		}
+		of := func(max float64, n int) Policy {
+			return []Policy{unbounded, {max, max}, {math.NaN(), math.NaN()}}[n%3]
+		}
+		a.SumPolicy = of(a.Sum.Grid.Max, i)
+		a.ProductPolicy = of(a.Grid.Max, i/3)
+		if a.Product == NativeProduct {
+			a.ProductPolicy = of(math.MaxFloat32, i/3)
+		}
+	}
 }
 
 // kinds draw operands that lead to the corners of the arithmetic.

@@ -16,13 +16,13 @@ import (
 // does not hold. They return the number of elements that are done and how many of
 // these became zero without having been it.
 type Rounder struct {
-	sum    Sum
-	single Constants // of binary32 lanes
+	single Constants // of binary32 lanes; first, see plan
 	double Constants // of binary64 lanes
-	fits32 bool      // binary32 lanes serve
-	same32 bool      // the grid holds every binary32 number
-	loops  loops
 	odd    Constants // bounds of products and sums rounded to odd
+	sum    Sum
+	fits32 bool // binary32 lanes serve
+	same32 bool // the grid holds every binary32 number
+	loops  loops
 
 	words [RoundBlock + 4*wholeLanes*2]uint32
 	x, y  [RoundBlock]float64

@@ -72,6 +72,7 @@ type work[L lanes] struct {
 	b             []L
 	r, v          []uint32
 	termR, termV  []uint32
+	events        []uint64
 	in, out       []L
 	inRow, outRow int
 	final         []float32
@@ -84,7 +85,7 @@ func (s *side[L]) sweep(bad []bool) {
 	t, w := s.tile, &s.work
 	*t = Tile[L]{
 		K: w.terms, AStride: w.aStride, B: w.b, V: w.v, InRow: w.inRow, OutRow: w.outRow,
-		FinalRow: w.finalRow, C: w.c, Width: w.width, numbers: &s.numbers,
+		FinalRow: w.finalRow, C: w.c, Width: w.width, Events: w.events, numbers: &s.numbers,
 	}
 	pair := w.first
 	for _, shape := range s.family.of(w.mode, w.width) {

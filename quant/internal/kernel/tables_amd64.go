@@ -25,6 +25,7 @@ const (
 	_ = uint(unsafe.Offsetof(Tile[float32]{}.C)-240) + uint(240-unsafe.Offsetof(Tile[float32]{}.C))
 	_ = uint(unsafe.Offsetof(Tile[float32]{}.TermR)-248) + uint(248-unsafe.Offsetof(Tile[float32]{}.TermR))
 	_ = uint(unsafe.Offsetof(Tile[float32]{}.TermV)-272) + uint(272-unsafe.Offsetof(Tile[float32]{}.TermV))
+	_ = uint(unsafe.Offsetof(Tile[float32]{}.Events)-296) + uint(296-unsafe.Offsetof(Tile[float32]{}.Events))
 	_ = uint(unsafe.Offsetof(Constants{}.ExponentMask)-0) + uint(0-unsafe.Offsetof(Constants{}.ExponentMask))
 	_ = uint(unsafe.Offsetof(Constants{}.SignMask)-64) + uint(64-unsafe.Offsetof(Constants{}.SignMask))
 	_ = uint(unsafe.Offsetof(Constants{}.MagnitudeMask)-128) + uint(128-unsafe.Offsetof(Constants{}.MagnitudeMask))
@@ -53,6 +54,14 @@ const (
 	_ = uint(unsafe.Offsetof(Constants{}.TermShift)-1600) + uint(1600-unsafe.Offsetof(Constants{}.TermShift))
 	_ = uint(unsafe.Offsetof(Constants{}.TermHalf)-1664) + uint(1664-unsafe.Offsetof(Constants{}.TermHalf))
 	_ = uint(unsafe.Offsetof(Constants{}.TermLimit)-1728) + uint(1728-unsafe.Offsetof(Constants{}.TermLimit))
+	_ = uint(unsafe.Offsetof(Constants{}.Max)-1792) + uint(1792-unsafe.Offsetof(Constants{}.Max))
+	_ = uint(unsafe.Offsetof(Constants{}.Over)-1856) + uint(1856-unsafe.Offsetof(Constants{}.Over))
+	_ = uint(unsafe.Offsetof(Constants{}.Infinite)-1920) + uint(1920-unsafe.Offsetof(Constants{}.Infinite))
+	_ = uint(unsafe.Offsetof(Constants{}.SumMax)-1984) + uint(1984-unsafe.Offsetof(Constants{}.SumMax))
+	_ = uint(unsafe.Offsetof(Constants{}.SumOver)-2048) + uint(2048-unsafe.Offsetof(Constants{}.SumOver))
+	_ = uint(unsafe.Offsetof(Constants{}.SumInfinite)-2112) + uint(2112-unsafe.Offsetof(Constants{}.SumInfinite))
+	_ = uint(unsafe.Offsetof(Constants{}.Infinity)-2176) + uint(2176-unsafe.Offsetof(Constants{}.Infinity))
+	_ = uint(unsafe.Offsetof(Constants{}.OddMask)-2240) + uint(2240-unsafe.Offsetof(Constants{}.OddMask))
 	_ = uint(unsafe.Offsetof(philoxArgs{}.Dst)-0) + uint(0-unsafe.Offsetof(philoxArgs{}.Dst))
 	_ = uint(unsafe.Offsetof(philoxArgs{}.Blocks)-24) + uint(24-unsafe.Offsetof(philoxArgs{}.Blocks))
 	_ = uint(unsafe.Offsetof(philoxArgs{}.Width)-32) + uint(32-unsafe.Offsetof(philoxArgs{}.Width))
@@ -94,6 +103,9 @@ func init() {
 	tilesAVX232[productThrough] = [2][]shape[float32]{{{4, productThroughAVX2R4V3}, {2, productThroughAVX2R2V3}}, {{8, productThroughAVX2R8V1}, {2, productThroughAVX2R2V1}}}
 	tilesAVX232[odd] = [2][]shape[float32]{{{2, oddAVX2R2V3}}, {{8, oddAVX2R8V1}, {2, oddAVX2R2V1}}}
 	tilesAVX232[oddRounded] = [2][]shape[float32]{{{2, oddRoundedAVX2R2V3}}, {{8, oddRoundedAVX2R8V1}, {2, oddRoundedAVX2R2V1}}}
+	tilesAVX232[carefulFused] = [2][]shape[float32]{{}, {{2, carefulFusedAVX2R2V1}}}
+	tilesAVX232[carefulProduct] = [2][]shape[float32]{{}, {{2, carefulProductAVX2R2V1}}}
+	tilesAVX232[carefulRounded] = [2][]shape[float32]{{}, {{2, carefulRoundedAVX2R2V1}}}
 	tilesAVX232[stochastic] = [2][]shape[float32]{{{2, stochasticAVX2R2V3}}, {{8, stochasticAVX2R8V1}, {2, stochasticAVX2R2V1}}}
 	tilesAVX232[stochasticFused] = [2][]shape[float32]{{{2, stochasticFusedAVX2R2V3}}, {{8, stochasticFusedAVX2R8V1}, {2, stochasticFusedAVX2R2V1}}}
 	tilesAVX232[stochasticCare] = [2][]shape[float32]{{{2, stochasticCareAVX2R2V3}}, {{8, stochasticCareAVX2R8V1}, {2, stochasticCareAVX2R2V1}}}
@@ -117,6 +129,9 @@ func init() {
 	tilesAVX51232[productThrough] = [2][]shape[float32]{{{8, productThroughAVX512R8V2}, {4, productThroughAVX512R4V2}, {2, productThroughAVX512R2V2}}, {{8, productThroughAVX512R8V1}, {2, productThroughAVX512R2V1}}}
 	tilesAVX51232[odd] = [2][]shape[float32]{{{8, oddAVX512R8V2}, {4, oddAVX512R4V2}, {2, oddAVX512R2V2}}, {{8, oddAVX512R8V1}, {2, oddAVX512R2V1}}}
 	tilesAVX51232[oddRounded] = [2][]shape[float32]{{{4, oddRoundedAVX512R4V2}, {2, oddRoundedAVX512R2V2}}, {{8, oddRoundedAVX512R8V1}, {2, oddRoundedAVX512R2V1}}}
+	tilesAVX51232[carefulFused] = [2][]shape[float32]{{}, {{4, carefulFusedAVX512R4V1}, {2, carefulFusedAVX512R2V1}}}
+	tilesAVX51232[carefulProduct] = [2][]shape[float32]{{}, {{4, carefulProductAVX512R4V1}, {2, carefulProductAVX512R2V1}}}
+	tilesAVX51232[carefulRounded] = [2][]shape[float32]{{}, {{4, carefulRoundedAVX512R4V1}, {2, carefulRoundedAVX512R2V1}}}
 	tilesAVX51232[stochastic] = [2][]shape[float32]{{{4, stochasticAVX512R4V2}, {2, stochasticAVX512R2V2}}, {{8, stochasticAVX512R8V1}, {2, stochasticAVX512R2V1}}}
 	tilesAVX51232[stochasticFused] = [2][]shape[float32]{{{8, stochasticFusedAVX512R8V2}, {4, stochasticFusedAVX512R4V2}, {2, stochasticFusedAVX512R2V2}}, {{8, stochasticFusedAVX512R8V1}, {2, stochasticFusedAVX512R2V1}}}
 	tilesAVX51232[stochasticCare] = [2][]shape[float32]{{{4, stochasticCareAVX512R4V2}, {2, stochasticCareAVX512R2V2}}, {{8, stochasticCareAVX512R8V1}, {2, stochasticCareAVX512R2V1}}}

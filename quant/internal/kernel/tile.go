@@ -33,7 +33,8 @@ type Tile[L lanes] struct {
 	C        *Constants
 	TermR    []uint32 // as R and V, of the rounding of products
 	TermV    []uint32
-	Rows     int // the kernel's rows and width; the portable loops read them
+	Events   []uint64 // careful modes add their events, see Events
+	Rows     int      // the kernel's rows and width; the portable loops read them
 	Width    int
 	numbers  *numbers[L] // scratch of the portable loops
 }
@@ -92,4 +93,12 @@ type Constants struct {
 	TermShift     vector
 	TermHalf      vector
 	TermLimit     vector
+	Max           vector // careful modes, products: the largest finite value,
+	Over          vector // what becomes of a finite number beyond it,
+	Infinite      vector // and of an infinite one
+	SumMax        vector // the same of sums
+	SumOver       vector
+	SumInfinite   vector
+	Infinity      vector
+	OddMask       vector // all ones where sums are rounded to odd before the grid
 }

@@ -10047,6 +10047,2715 @@ term:
 	VZEROUPPER
 	RET
 
+// func carefulFusedAVX512R4V1(t *Tile[float32])
+// Requires: AVX, AVX512DQ, AVX512F
+TEXT ·carefulFusedAVX512R4V1(SB), $104-8
+	MOVQ    t+0(FP), AX
+	MOVQ    240(AX), CX
+	VMOVUPS (CX), Z0
+	VMOVUPS 64(CX), Z1
+	VMOVUPS 128(CX), Z2
+	VMOVUPS 192(CX), Z3
+	VMOVUPS 256(CX), Z3
+	VMOVUPS 384(CX), Z3
+	VMOVUPS 448(CX), Z12
+	VMOVUPS 1792(CX), Z13
+	VMOVUPS 1856(CX), Z13
+	VMOVUPS 1920(CX), Z13
+	VMOVUPS 1984(CX), Z13
+	VMOVUPS 2048(CX), Z14
+	VMOVUPS 2112(CX), Z15
+	VMOVUPS 2176(CX), Z16
+	VMOVUPS 2240(CX), Z17
+	VMOVUPS 1408(CX), Z17
+	MOVQ    8(AX), DX
+	MOVQ    DX, (SP)
+	MOVQ    120(AX), DX
+	MOVQ    DX, 8(SP)
+	MOVQ    152(AX), DX
+	MOVQ    DX, 16(SP)
+	MOVQ    216(AX), DX
+	MOVQ    DX, 24(SP)
+	MOVQ    16(AX), DX
+	MOVQ    DX, 32(SP)
+	VPXORD  Z4, Z4, Z4
+	VPXORD  Z5, Z5, Z5
+	VPXORD  Z6, Z6, Z6
+	VPXORD  Z7, Z7, Z7
+	VPXORD  Z8, Z8, Z8
+	VPXORD  Z9, Z9, Z9
+
+group:
+	MOVQ    8(SP), DX
+	MOVQ    144(AX), BX
+	VMOVUPS (DX), Z18
+	VMULPS  576(CX), Z18, Z18
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Z19
+	VMULPS  576(CX), Z19, Z19
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Z20
+	VMULPS  576(CX), Z20, Z20
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Z21
+	VMULPS  576(CX), Z21, Z21
+	LEAQ    (DX)(BX*4), DX
+	MOVQ    DX, 8(SP)
+	MOVQ    40(AX), DX
+	MOVQ    32(SP), BX
+	LEAQ    (BX)(DX*4), SI
+	LEAQ    (SI)(DX*4), DX
+	MOVQ    DX, 32(SP)
+	MOVQ    48(AX), DX
+	MOVQ    (AX), DI
+	ADDQ    DI, DI
+	XORQ    R8, R8
+
+term:
+	VBROADCASTSS (BX)(R8*4), Z22
+	VFMADD231PS  (DX), Z22, Z18
+	VMOVAPS      Z18, Z22
+	VANDPS       Z0, Z18, Z23
+	VMAXPS       Z3, Z23, Z23
+	VFMADD231PS  Z12, Z23, Z22
+	VFNMADD231PS Z12, Z23, Z22
+	VANDPS       Z2, Z22, Z23
+	VCMPPS       $0x06, Z13, Z23, K1
+	VANDPS       Z2, Z18, Z23
+	VCMPPS       $0x11, Z16, Z23, K2
+	KANDW        K2, K1, K3
+	VPADDD       Z17, Z7, K3, Z7
+	VCMPPS       $0x00, Z16, Z23, K3
+	VPADDD       Z17, Z8, K3, Z8
+	VMOVUPS      Z15, Z24
+	VMOVUPS      Z14, K2, Z24
+	VANDPS       Z1, Z18, Z23
+	VORPS        Z23, Z24, Z24
+	VCMPPS       $0x03, Z18, Z18, K3
+	VPADDD       Z17, Z9, K3, Z9
+	VMOVAPS      Z18, K3, Z24
+	VMOVAPS      Z22, Z18
+	VMOVAPS      Z24, K1, Z18
+	VBROADCASTSS 4(BX)(R8*4), Z22
+	VFMADD231PS  (DX), Z22, Z19
+	VMOVAPS      Z19, Z22
+	VANDPS       Z0, Z19, Z23
+	VMAXPS       Z3, Z23, Z23
+	VFMADD231PS  Z12, Z23, Z22
+	VFNMADD231PS Z12, Z23, Z22
+	VANDPS       Z2, Z22, Z23
+	VCMPPS       $0x06, Z13, Z23, K1
+	VANDPS       Z2, Z19, Z23
+	VCMPPS       $0x11, Z16, Z23, K2
+	KANDW        K2, K1, K3
+	VPADDD       Z17, Z7, K3, Z7
+	VCMPPS       $0x00, Z16, Z23, K3
+	VPADDD       Z17, Z8, K3, Z8
+	VMOVUPS      Z15, Z24
+	VMOVUPS      Z14, K2, Z24
+	VANDPS       Z1, Z19, Z23
+	VORPS        Z23, Z24, Z24
+	VCMPPS       $0x03, Z19, Z19, K3
+	VPADDD       Z17, Z9, K3, Z9
+	VMOVAPS      Z19, K3, Z24
+	VMOVAPS      Z22, Z19
+	VMOVAPS      Z24, K1, Z19
+	VBROADCASTSS (SI)(R8*4), Z22
+	VFMADD231PS  (DX), Z22, Z20
+	VMOVAPS      Z20, Z22
+	VANDPS       Z0, Z20, Z23
+	VMAXPS       Z3, Z23, Z23
+	VFMADD231PS  Z12, Z23, Z22
+	VFNMADD231PS Z12, Z23, Z22
+	VANDPS       Z2, Z22, Z23
+	VCMPPS       $0x06, Z13, Z23, K1
+	VANDPS       Z2, Z20, Z23
+	VCMPPS       $0x11, Z16, Z23, K2
+	KANDW        K2, K1, K3
+	VPADDD       Z17, Z7, K3, Z7
+	VCMPPS       $0x00, Z16, Z23, K3
+	VPADDD       Z17, Z8, K3, Z8
+	VMOVUPS      Z15, Z24
+	VMOVUPS      Z14, K2, Z24
+	VANDPS       Z1, Z20, Z23
+	VORPS        Z23, Z24, Z24
+	VCMPPS       $0x03, Z20, Z20, K3
+	VPADDD       Z17, Z9, K3, Z9
+	VMOVAPS      Z20, K3, Z24
+	VMOVAPS      Z22, Z20
+	VMOVAPS      Z24, K1, Z20
+	VBROADCASTSS 4(SI)(R8*4), Z22
+	VFMADD231PS  (DX), Z22, Z21
+	VMOVAPS      Z21, Z22
+	VANDPS       Z0, Z21, Z23
+	VMAXPS       Z3, Z23, Z23
+	VFMADD231PS  Z12, Z23, Z22
+	VFNMADD231PS Z12, Z23, Z22
+	VANDPS       Z2, Z22, Z23
+	VCMPPS       $0x06, Z13, Z23, K1
+	VANDPS       Z2, Z21, Z23
+	VCMPPS       $0x11, Z16, Z23, K2
+	KANDW        K2, K1, K3
+	VPADDD       Z17, Z7, K3, Z7
+	VCMPPS       $0x00, Z16, Z23, K3
+	VPADDD       Z17, Z8, K3, Z8
+	VMOVUPS      Z15, Z24
+	VMOVUPS      Z14, K2, Z24
+	VANDPS       Z1, Z21, Z23
+	VORPS        Z23, Z24, Z24
+	VCMPPS       $0x03, Z21, Z21, K3
+	VPADDD       Z17, Z9, K3, Z9
+	VMOVAPS      Z21, K3, Z24
+	VMOVAPS      Z22, Z21
+	VMOVAPS      Z24, K1, Z21
+	ADDQ         $0x00000040, DX
+	ADDQ         $0x02, R8
+	CMPQ         R8, DI
+	JLT          term
+	VMOVUPS      640(CX), Z22
+	VPXORD       Z10, Z10, Z10
+	VPXORD       Z11, Z11, Z11
+	VFMADD231PS  Z10, Z18, Z11
+	VMULPS       Z22, Z18, Z18
+	VADDPS       Z10, Z18, Z18
+	VFMADD231PS  Z10, Z19, Z11
+	VMULPS       Z22, Z19, Z19
+	VADDPS       Z10, Z19, Z19
+	VFMADD231PS  Z10, Z20, Z11
+	VMULPS       Z22, Z20, Z20
+	VADDPS       Z10, Z20, Z20
+	VFMADD231PS  Z10, Z21, Z11
+	VMULPS       Z22, Z21, Z21
+	VADDPS       Z10, Z21, Z21
+	MOVQ         16(SP), DX
+	MOVQ         176(AX), BX
+	VMOVUPS      Z18, (DX)
+	LEAQ         (DX)(BX*4), DX
+	VMOVUPS      Z19, (DX)
+	LEAQ         (DX)(BX*4), DX
+	VMOVUPS      Z20, (DX)
+	LEAQ         (DX)(BX*4), DX
+	VMOVUPS      Z21, (DX)
+	LEAQ         (DX)(BX*4), DX
+	MOVQ         DX, 16(SP)
+	VCMPPS       $0x03, Z11, Z11, K1
+	KMOVW        K1, DX
+	TESTL        DX, DX
+	MOVQ         24(SP), DX
+	SETNE        (DX)
+	INCQ         24(SP)
+	DECQ         (SP)
+	JNZ          group
+	MOVQ         296(AX), AX
+	VMOVUPS      Z4, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, (AX)
+	VMOVUPS      Z5, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 8(AX)
+	VMOVUPS      Z6, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 16(AX)
+	VMOVUPS      Z7, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 24(AX)
+	VMOVUPS      Z8, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 32(AX)
+	VMOVUPS      Z9, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 40(AX)
+	VZEROUPPER
+	RET
+
+// func carefulFusedAVX512R2V1(t *Tile[float32])
+// Requires: AVX, AVX512DQ, AVX512F
+TEXT ·carefulFusedAVX512R2V1(SB), $104-8
+	MOVQ    t+0(FP), AX
+	MOVQ    240(AX), CX
+	VMOVUPS (CX), Z0
+	VMOVUPS 64(CX), Z1
+	VMOVUPS 128(CX), Z2
+	VMOVUPS 192(CX), Z3
+	VMOVUPS 256(CX), Z3
+	VMOVUPS 384(CX), Z3
+	VMOVUPS 448(CX), Z12
+	VMOVUPS 1792(CX), Z13
+	VMOVUPS 1856(CX), Z13
+	VMOVUPS 1920(CX), Z13
+	VMOVUPS 1984(CX), Z13
+	VMOVUPS 2048(CX), Z14
+	VMOVUPS 2112(CX), Z15
+	VMOVUPS 2176(CX), Z16
+	VMOVUPS 2240(CX), Z17
+	VMOVUPS 1408(CX), Z17
+	MOVQ    8(AX), DX
+	MOVQ    DX, (SP)
+	MOVQ    120(AX), DX
+	MOVQ    DX, 8(SP)
+	MOVQ    152(AX), DX
+	MOVQ    DX, 16(SP)
+	MOVQ    216(AX), DX
+	MOVQ    DX, 24(SP)
+	MOVQ    16(AX), DX
+	MOVQ    DX, 32(SP)
+	VPXORD  Z4, Z4, Z4
+	VPXORD  Z5, Z5, Z5
+	VPXORD  Z6, Z6, Z6
+	VPXORD  Z7, Z7, Z7
+	VPXORD  Z8, Z8, Z8
+	VPXORD  Z9, Z9, Z9
+
+group:
+	MOVQ    8(SP), DX
+	MOVQ    144(AX), BX
+	VMOVUPS (DX), Z18
+	VMULPS  576(CX), Z18, Z18
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Z19
+	VMULPS  576(CX), Z19, Z19
+	LEAQ    (DX)(BX*4), DX
+	MOVQ    DX, 8(SP)
+	MOVQ    40(AX), DX
+	MOVQ    32(SP), BX
+	LEAQ    (BX)(DX*4), DX
+	MOVQ    DX, 32(SP)
+	MOVQ    48(AX), DX
+	MOVQ    (AX), SI
+	ADDQ    SI, SI
+	XORQ    DI, DI
+
+term:
+	VBROADCASTSS (BX)(DI*4), Z20
+	VFMADD231PS  (DX), Z20, Z18
+	VMOVAPS      Z18, Z20
+	VANDPS       Z0, Z18, Z21
+	VMAXPS       Z3, Z21, Z21
+	VFMADD231PS  Z12, Z21, Z20
+	VFNMADD231PS Z12, Z21, Z20
+	VANDPS       Z2, Z20, Z21
+	VCMPPS       $0x06, Z13, Z21, K1
+	VANDPS       Z2, Z18, Z21
+	VCMPPS       $0x11, Z16, Z21, K2
+	KANDW        K2, K1, K3
+	VPADDD       Z17, Z7, K3, Z7
+	VCMPPS       $0x00, Z16, Z21, K3
+	VPADDD       Z17, Z8, K3, Z8
+	VMOVUPS      Z15, Z22
+	VMOVUPS      Z14, K2, Z22
+	VANDPS       Z1, Z18, Z21
+	VORPS        Z21, Z22, Z22
+	VCMPPS       $0x03, Z18, Z18, K3
+	VPADDD       Z17, Z9, K3, Z9
+	VMOVAPS      Z18, K3, Z22
+	VMOVAPS      Z20, Z18
+	VMOVAPS      Z22, K1, Z18
+	VBROADCASTSS 4(BX)(DI*4), Z20
+	VFMADD231PS  (DX), Z20, Z19
+	VMOVAPS      Z19, Z20
+	VANDPS       Z0, Z19, Z21
+	VMAXPS       Z3, Z21, Z21
+	VFMADD231PS  Z12, Z21, Z20
+	VFNMADD231PS Z12, Z21, Z20
+	VANDPS       Z2, Z20, Z21
+	VCMPPS       $0x06, Z13, Z21, K1
+	VANDPS       Z2, Z19, Z21
+	VCMPPS       $0x11, Z16, Z21, K2
+	KANDW        K2, K1, K3
+	VPADDD       Z17, Z7, K3, Z7
+	VCMPPS       $0x00, Z16, Z21, K3
+	VPADDD       Z17, Z8, K3, Z8
+	VMOVUPS      Z15, Z22
+	VMOVUPS      Z14, K2, Z22
+	VANDPS       Z1, Z19, Z21
+	VORPS        Z21, Z22, Z22
+	VCMPPS       $0x03, Z19, Z19, K3
+	VPADDD       Z17, Z9, K3, Z9
+	VMOVAPS      Z19, K3, Z22
+	VMOVAPS      Z20, Z19
+	VMOVAPS      Z22, K1, Z19
+	ADDQ         $0x00000040, DX
+	ADDQ         $0x02, DI
+	CMPQ         DI, SI
+	JLT          term
+	VMOVUPS      640(CX), Z20
+	VPXORD       Z10, Z10, Z10
+	VPXORD       Z11, Z11, Z11
+	VFMADD231PS  Z10, Z18, Z11
+	VMULPS       Z20, Z18, Z18
+	VADDPS       Z10, Z18, Z18
+	VFMADD231PS  Z10, Z19, Z11
+	VMULPS       Z20, Z19, Z19
+	VADDPS       Z10, Z19, Z19
+	MOVQ         16(SP), DX
+	MOVQ         176(AX), BX
+	VMOVUPS      Z18, (DX)
+	LEAQ         (DX)(BX*4), DX
+	VMOVUPS      Z19, (DX)
+	LEAQ         (DX)(BX*4), DX
+	MOVQ         DX, 16(SP)
+	VCMPPS       $0x03, Z11, Z11, K1
+	KMOVW        K1, DX
+	TESTL        DX, DX
+	MOVQ         24(SP), DX
+	SETNE        (DX)
+	INCQ         24(SP)
+	DECQ         (SP)
+	JNZ          group
+	MOVQ         296(AX), AX
+	VMOVUPS      Z4, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, (AX)
+	VMOVUPS      Z5, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 8(AX)
+	VMOVUPS      Z6, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 16(AX)
+	VMOVUPS      Z7, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 24(AX)
+	VMOVUPS      Z8, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 32(AX)
+	VMOVUPS      Z9, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 40(AX)
+	VZEROUPPER
+	RET
+
+// func carefulProductAVX512R4V1(t *Tile[float32])
+// Requires: AVX, AVX512DQ, AVX512F
+TEXT ·carefulProductAVX512R4V1(SB), $104-8
+	MOVQ    t+0(FP), AX
+	MOVQ    240(AX), CX
+	VMOVUPS (CX), Z0
+	VMOVUPS 64(CX), Z1
+	VMOVUPS 128(CX), Z2
+	VMOVUPS 192(CX), Z3
+	VMOVUPS 256(CX), Z3
+	VMOVUPS 384(CX), Z3
+	VMOVUPS 448(CX), Z16
+	VMOVUPS 1792(CX), Z17
+	VMOVUPS 1856(CX), Z18
+	VMOVUPS 1920(CX), Z19
+	VMOVUPS 1984(CX), Z20
+	VMOVUPS 2048(CX), Z21
+	VMOVUPS 2112(CX), Z22
+	VMOVUPS 2176(CX), Z23
+	MOVQ    8(AX), DX
+	MOVQ    DX, (SP)
+	MOVQ    120(AX), DX
+	MOVQ    DX, 8(SP)
+	MOVQ    152(AX), DX
+	MOVQ    DX, 16(SP)
+	MOVQ    216(AX), DX
+	MOVQ    DX, 24(SP)
+	MOVQ    16(AX), DX
+	MOVQ    DX, 32(SP)
+	VPXORD  Z4, Z4, Z4
+	VPXORD  Z5, Z5, Z5
+	VPXORD  Z6, Z6, Z6
+	VPXORD  Z7, Z7, Z7
+	VPXORD  Z8, Z8, Z8
+	VPXORD  Z9, Z9, Z9
+
+group:
+	MOVQ    8(SP), DX
+	MOVQ    144(AX), BX
+	VMOVUPS (DX), Z24
+	VMULPS  576(CX), Z24, Z24
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Z25
+	VMULPS  576(CX), Z25, Z25
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Z26
+	VMULPS  576(CX), Z26, Z26
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Z27
+	VMULPS  576(CX), Z27, Z27
+	LEAQ    (DX)(BX*4), DX
+	MOVQ    DX, 8(SP)
+	MOVQ    40(AX), DX
+	MOVQ    32(SP), BX
+	LEAQ    (BX)(DX*4), SI
+	LEAQ    (SI)(DX*4), DX
+	MOVQ    DX, 32(SP)
+	MOVQ    48(AX), DX
+	MOVQ    (AX), DI
+	ADDQ    DI, DI
+	XORQ    R8, R8
+
+term:
+	VBROADCASTSS (BX)(R8*4), Z28
+	VMULPS       (DX), Z28, Z28
+	VMOVAPS      Z28, Z29
+	VANDPS       Z2, Z29, Z30
+	VCMPPS       $0x06, Z17, Z30, K1
+	VANDPS       Z2, Z28, Z30
+	VCMPPS       $0x11, Z23, Z30, K2
+	KANDW        K2, K1, K3
+	VPADDD       1408(CX), Z4, K3, Z4
+	VCMPPS       $0x00, Z23, Z30, K3
+	VPADDD       1408(CX), Z5, K3, Z5
+	VMOVUPS      Z19, Z31
+	VMOVUPS      Z18, K2, Z31
+	VANDPS       Z1, Z28, Z30
+	VORPS        Z30, Z31, Z31
+	VCMPPS       $0x03, Z28, Z28, K3
+	VPADDD       1408(CX), Z6, K3, Z6
+	VMOVAPS      Z28, K3, Z31
+	VMOVAPS      Z29, Z28
+	VMOVAPS      Z31, K1, Z28
+	VADDPS       Z28, Z24, Z29
+	VSUBPS       Z24, Z29, Z30
+	VSUBPS       Z30, Z29, Z31
+	VSUBPS       Z31, Z24, Z31
+	VSUBPS       Z30, Z28, Z30
+	VADDPS       Z30, Z31, Z31
+	VPXORD       Z10, Z10, Z10
+	VCMPPS       $0x0c, Z31, Z10, K1
+	VPMOVM2D     K1, Z10
+	VPANDD       2240(CX), Z10, Z10
+	VPXORD       Z29, Z31, Z31
+	VPSRAD       $0x1f, Z31, Z31
+	VPANDD       Z10, Z31, Z31
+	VPADDD       Z31, Z29, Z29
+	VPSRLD       $0x1f, Z10, Z10
+	VPORD        Z10, Z29, Z24
+	VMOVAPS      Z24, Z28
+	VANDPS       Z0, Z24, Z29
+	VMAXPS       Z3, Z29, Z29
+	VFMADD231PS  Z16, Z29, Z28
+	VFNMADD231PS Z16, Z29, Z28
+	VANDPS       Z2, Z28, Z29
+	VCMPPS       $0x06, Z20, Z29, K1
+	VANDPS       Z2, Z24, Z29
+	VCMPPS       $0x11, Z23, Z29, K2
+	KANDW        K2, K1, K3
+	VPADDD       1408(CX), Z7, K3, Z7
+	VCMPPS       $0x00, Z23, Z29, K3
+	VPADDD       1408(CX), Z8, K3, Z8
+	VMOVUPS      Z22, Z30
+	VMOVUPS      Z21, K2, Z30
+	VANDPS       Z1, Z24, Z29
+	VORPS        Z29, Z30, Z30
+	VCMPPS       $0x03, Z24, Z24, K3
+	VPADDD       1408(CX), Z9, K3, Z9
+	VMOVAPS      Z24, K3, Z30
+	VMOVAPS      Z28, Z24
+	VMOVAPS      Z30, K1, Z24
+	VBROADCASTSS 4(BX)(R8*4), Z28
+	VMULPS       (DX), Z28, Z28
+	VMOVAPS      Z28, Z29
+	VANDPS       Z2, Z29, Z30
+	VCMPPS       $0x06, Z17, Z30, K1
+	VANDPS       Z2, Z28, Z30
+	VCMPPS       $0x11, Z23, Z30, K2
+	KANDW        K2, K1, K3
+	VPADDD       1408(CX), Z4, K3, Z4
+	VCMPPS       $0x00, Z23, Z30, K3
+	VPADDD       1408(CX), Z5, K3, Z5
+	VMOVUPS      Z19, Z31
+	VMOVUPS      Z18, K2, Z31
+	VANDPS       Z1, Z28, Z30
+	VORPS        Z30, Z31, Z31
+	VCMPPS       $0x03, Z28, Z28, K3
+	VPADDD       1408(CX), Z6, K3, Z6
+	VMOVAPS      Z28, K3, Z31
+	VMOVAPS      Z29, Z28
+	VMOVAPS      Z31, K1, Z28
+	VADDPS       Z28, Z25, Z29
+	VSUBPS       Z25, Z29, Z30
+	VSUBPS       Z30, Z29, Z31
+	VSUBPS       Z31, Z25, Z31
+	VSUBPS       Z30, Z28, Z30
+	VADDPS       Z30, Z31, Z31
+	VPXORD       Z11, Z11, Z11
+	VCMPPS       $0x0c, Z31, Z11, K1
+	VPMOVM2D     K1, Z11
+	VPANDD       2240(CX), Z11, Z11
+	VPXORD       Z29, Z31, Z31
+	VPSRAD       $0x1f, Z31, Z31
+	VPANDD       Z11, Z31, Z31
+	VPADDD       Z31, Z29, Z29
+	VPSRLD       $0x1f, Z11, Z11
+	VPORD        Z11, Z29, Z25
+	VMOVAPS      Z25, Z28
+	VANDPS       Z0, Z25, Z29
+	VMAXPS       Z3, Z29, Z29
+	VFMADD231PS  Z16, Z29, Z28
+	VFNMADD231PS Z16, Z29, Z28
+	VANDPS       Z2, Z28, Z29
+	VCMPPS       $0x06, Z20, Z29, K1
+	VANDPS       Z2, Z25, Z29
+	VCMPPS       $0x11, Z23, Z29, K2
+	KANDW        K2, K1, K3
+	VPADDD       1408(CX), Z7, K3, Z7
+	VCMPPS       $0x00, Z23, Z29, K3
+	VPADDD       1408(CX), Z8, K3, Z8
+	VMOVUPS      Z22, Z30
+	VMOVUPS      Z21, K2, Z30
+	VANDPS       Z1, Z25, Z29
+	VORPS        Z29, Z30, Z30
+	VCMPPS       $0x03, Z25, Z25, K3
+	VPADDD       1408(CX), Z9, K3, Z9
+	VMOVAPS      Z25, K3, Z30
+	VMOVAPS      Z28, Z25
+	VMOVAPS      Z30, K1, Z25
+	VBROADCASTSS (SI)(R8*4), Z28
+	VMULPS       (DX), Z28, Z28
+	VMOVAPS      Z28, Z29
+	VANDPS       Z2, Z29, Z30
+	VCMPPS       $0x06, Z17, Z30, K1
+	VANDPS       Z2, Z28, Z30
+	VCMPPS       $0x11, Z23, Z30, K2
+	KANDW        K2, K1, K3
+	VPADDD       1408(CX), Z4, K3, Z4
+	VCMPPS       $0x00, Z23, Z30, K3
+	VPADDD       1408(CX), Z5, K3, Z5
+	VMOVUPS      Z19, Z31
+	VMOVUPS      Z18, K2, Z31
+	VANDPS       Z1, Z28, Z30
+	VORPS        Z30, Z31, Z31
+	VCMPPS       $0x03, Z28, Z28, K3
+	VPADDD       1408(CX), Z6, K3, Z6
+	VMOVAPS      Z28, K3, Z31
+	VMOVAPS      Z29, Z28
+	VMOVAPS      Z31, K1, Z28
+	VADDPS       Z28, Z26, Z29
+	VSUBPS       Z26, Z29, Z30
+	VSUBPS       Z30, Z29, Z31
+	VSUBPS       Z31, Z26, Z31
+	VSUBPS       Z30, Z28, Z30
+	VADDPS       Z30, Z31, Z31
+	VPXORD       Z12, Z12, Z12
+	VCMPPS       $0x0c, Z31, Z12, K1
+	VPMOVM2D     K1, Z12
+	VPANDD       2240(CX), Z12, Z12
+	VPXORD       Z29, Z31, Z31
+	VPSRAD       $0x1f, Z31, Z31
+	VPANDD       Z12, Z31, Z31
+	VPADDD       Z31, Z29, Z29
+	VPSRLD       $0x1f, Z12, Z12
+	VPORD        Z12, Z29, Z26
+	VMOVAPS      Z26, Z28
+	VANDPS       Z0, Z26, Z29
+	VMAXPS       Z3, Z29, Z29
+	VFMADD231PS  Z16, Z29, Z28
+	VFNMADD231PS Z16, Z29, Z28
+	VANDPS       Z2, Z28, Z29
+	VCMPPS       $0x06, Z20, Z29, K1
+	VANDPS       Z2, Z26, Z29
+	VCMPPS       $0x11, Z23, Z29, K2
+	KANDW        K2, K1, K3
+	VPADDD       1408(CX), Z7, K3, Z7
+	VCMPPS       $0x00, Z23, Z29, K3
+	VPADDD       1408(CX), Z8, K3, Z8
+	VMOVUPS      Z22, Z30
+	VMOVUPS      Z21, K2, Z30
+	VANDPS       Z1, Z26, Z29
+	VORPS        Z29, Z30, Z30
+	VCMPPS       $0x03, Z26, Z26, K3
+	VPADDD       1408(CX), Z9, K3, Z9
+	VMOVAPS      Z26, K3, Z30
+	VMOVAPS      Z28, Z26
+	VMOVAPS      Z30, K1, Z26
+	VBROADCASTSS 4(SI)(R8*4), Z28
+	VMULPS       (DX), Z28, Z28
+	VMOVAPS      Z28, Z29
+	VANDPS       Z2, Z29, Z30
+	VCMPPS       $0x06, Z17, Z30, K1
+	VANDPS       Z2, Z28, Z30
+	VCMPPS       $0x11, Z23, Z30, K2
+	KANDW        K2, K1, K3
+	VPADDD       1408(CX), Z4, K3, Z4
+	VCMPPS       $0x00, Z23, Z30, K3
+	VPADDD       1408(CX), Z5, K3, Z5
+	VMOVUPS      Z19, Z31
+	VMOVUPS      Z18, K2, Z31
+	VANDPS       Z1, Z28, Z30
+	VORPS        Z30, Z31, Z31
+	VCMPPS       $0x03, Z28, Z28, K3
+	VPADDD       1408(CX), Z6, K3, Z6
+	VMOVAPS      Z28, K3, Z31
+	VMOVAPS      Z29, Z28
+	VMOVAPS      Z31, K1, Z28
+	VADDPS       Z28, Z27, Z29
+	VSUBPS       Z27, Z29, Z30
+	VSUBPS       Z30, Z29, Z31
+	VSUBPS       Z31, Z27, Z31
+	VSUBPS       Z30, Z28, Z30
+	VADDPS       Z30, Z31, Z31
+	VPXORD       Z13, Z13, Z13
+	VCMPPS       $0x0c, Z31, Z13, K1
+	VPMOVM2D     K1, Z13
+	VPANDD       2240(CX), Z13, Z13
+	VPXORD       Z29, Z31, Z31
+	VPSRAD       $0x1f, Z31, Z31
+	VPANDD       Z13, Z31, Z31
+	VPADDD       Z31, Z29, Z29
+	VPSRLD       $0x1f, Z13, Z13
+	VPORD        Z13, Z29, Z27
+	VMOVAPS      Z27, Z28
+	VANDPS       Z0, Z27, Z29
+	VMAXPS       Z3, Z29, Z29
+	VFMADD231PS  Z16, Z29, Z28
+	VFNMADD231PS Z16, Z29, Z28
+	VANDPS       Z2, Z28, Z29
+	VCMPPS       $0x06, Z20, Z29, K1
+	VANDPS       Z2, Z27, Z29
+	VCMPPS       $0x11, Z23, Z29, K2
+	KANDW        K2, K1, K3
+	VPADDD       1408(CX), Z7, K3, Z7
+	VCMPPS       $0x00, Z23, Z29, K3
+	VPADDD       1408(CX), Z8, K3, Z8
+	VMOVUPS      Z22, Z30
+	VMOVUPS      Z21, K2, Z30
+	VANDPS       Z1, Z27, Z29
+	VORPS        Z29, Z30, Z30
+	VCMPPS       $0x03, Z27, Z27, K3
+	VPADDD       1408(CX), Z9, K3, Z9
+	VMOVAPS      Z27, K3, Z30
+	VMOVAPS      Z28, Z27
+	VMOVAPS      Z30, K1, Z27
+	ADDQ         $0x00000040, DX
+	ADDQ         $0x02, R8
+	CMPQ         R8, DI
+	JLT          term
+	VMOVUPS      640(CX), Z28
+	VPXORD       Z14, Z14, Z14
+	VPXORD       Z15, Z15, Z15
+	VFMADD231PS  Z14, Z24, Z15
+	VMULPS       Z28, Z24, Z24
+	VADDPS       Z14, Z24, Z24
+	VFMADD231PS  Z14, Z25, Z15
+	VMULPS       Z28, Z25, Z25
+	VADDPS       Z14, Z25, Z25
+	VFMADD231PS  Z14, Z26, Z15
+	VMULPS       Z28, Z26, Z26
+	VADDPS       Z14, Z26, Z26
+	VFMADD231PS  Z14, Z27, Z15
+	VMULPS       Z28, Z27, Z27
+	VADDPS       Z14, Z27, Z27
+	MOVQ         16(SP), DX
+	MOVQ         176(AX), BX
+	VMOVUPS      Z24, (DX)
+	LEAQ         (DX)(BX*4), DX
+	VMOVUPS      Z25, (DX)
+	LEAQ         (DX)(BX*4), DX
+	VMOVUPS      Z26, (DX)
+	LEAQ         (DX)(BX*4), DX
+	VMOVUPS      Z27, (DX)
+	LEAQ         (DX)(BX*4), DX
+	MOVQ         DX, 16(SP)
+	VCMPPS       $0x03, Z15, Z15, K1
+	KMOVW        K1, DX
+	TESTL        DX, DX
+	MOVQ         24(SP), DX
+	SETNE        (DX)
+	INCQ         24(SP)
+	DECQ         (SP)
+	JNZ          group
+	MOVQ         296(AX), AX
+	VMOVUPS      Z4, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, (AX)
+	VMOVUPS      Z5, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 8(AX)
+	VMOVUPS      Z6, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 16(AX)
+	VMOVUPS      Z7, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 24(AX)
+	VMOVUPS      Z8, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 32(AX)
+	VMOVUPS      Z9, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 40(AX)
+	VZEROUPPER
+	RET
+
+// func carefulProductAVX512R2V1(t *Tile[float32])
+// Requires: AVX, AVX512DQ, AVX512F
+TEXT ·carefulProductAVX512R2V1(SB), $104-8
+	MOVQ    t+0(FP), AX
+	MOVQ    240(AX), CX
+	VMOVUPS (CX), Z0
+	VMOVUPS 64(CX), Z1
+	VMOVUPS 128(CX), Z2
+	VMOVUPS 192(CX), Z3
+	VMOVUPS 256(CX), Z3
+	VMOVUPS 384(CX), Z3
+	VMOVUPS 448(CX), Z14
+	VMOVUPS 1792(CX), Z15
+	VMOVUPS 1856(CX), Z16
+	VMOVUPS 1920(CX), Z17
+	VMOVUPS 1984(CX), Z18
+	VMOVUPS 2048(CX), Z19
+	VMOVUPS 2112(CX), Z20
+	VMOVUPS 2176(CX), Z21
+	VMOVUPS 2240(CX), Z22
+	VMOVUPS 1408(CX), Z23
+	MOVQ    8(AX), DX
+	MOVQ    DX, (SP)
+	MOVQ    120(AX), DX
+	MOVQ    DX, 8(SP)
+	MOVQ    152(AX), DX
+	MOVQ    DX, 16(SP)
+	MOVQ    216(AX), DX
+	MOVQ    DX, 24(SP)
+	MOVQ    16(AX), DX
+	MOVQ    DX, 32(SP)
+	VPXORD  Z4, Z4, Z4
+	VPXORD  Z5, Z5, Z5
+	VPXORD  Z6, Z6, Z6
+	VPXORD  Z7, Z7, Z7
+	VPXORD  Z8, Z8, Z8
+	VPXORD  Z9, Z9, Z9
+
+group:
+	MOVQ    8(SP), DX
+	MOVQ    144(AX), BX
+	VMOVUPS (DX), Z24
+	VMULPS  576(CX), Z24, Z24
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Z25
+	VMULPS  576(CX), Z25, Z25
+	LEAQ    (DX)(BX*4), DX
+	MOVQ    DX, 8(SP)
+	MOVQ    40(AX), DX
+	MOVQ    32(SP), BX
+	LEAQ    (BX)(DX*4), DX
+	MOVQ    DX, 32(SP)
+	MOVQ    48(AX), DX
+	MOVQ    (AX), SI
+	ADDQ    SI, SI
+	XORQ    DI, DI
+
+term:
+	VBROADCASTSS (BX)(DI*4), Z26
+	VMULPS       (DX), Z26, Z26
+	VMOVAPS      Z26, Z27
+	VANDPS       Z2, Z27, Z28
+	VCMPPS       $0x06, Z15, Z28, K1
+	VANDPS       Z2, Z26, Z28
+	VCMPPS       $0x11, Z21, Z28, K2
+	KANDW        K2, K1, K3
+	VPADDD       Z23, Z4, K3, Z4
+	VCMPPS       $0x00, Z21, Z28, K3
+	VPADDD       Z23, Z5, K3, Z5
+	VMOVUPS      Z17, Z29
+	VMOVUPS      Z16, K2, Z29
+	VANDPS       Z1, Z26, Z28
+	VORPS        Z28, Z29, Z29
+	VCMPPS       $0x03, Z26, Z26, K3
+	VPADDD       Z23, Z6, K3, Z6
+	VMOVAPS      Z26, K3, Z29
+	VMOVAPS      Z27, Z26
+	VMOVAPS      Z29, K1, Z26
+	VADDPS       Z26, Z24, Z27
+	VSUBPS       Z24, Z27, Z28
+	VSUBPS       Z28, Z27, Z29
+	VSUBPS       Z29, Z24, Z29
+	VSUBPS       Z28, Z26, Z28
+	VADDPS       Z28, Z29, Z29
+	VPXORD       Z10, Z10, Z10
+	VCMPPS       $0x0c, Z29, Z10, K1
+	VPMOVM2D     K1, Z10
+	VPANDD       Z22, Z10, Z10
+	VPXORD       Z27, Z29, Z29
+	VPSRAD       $0x1f, Z29, Z29
+	VPANDD       Z10, Z29, Z29
+	VPADDD       Z29, Z27, Z27
+	VPSRLD       $0x1f, Z10, Z10
+	VPORD        Z10, Z27, Z24
+	VMOVAPS      Z24, Z26
+	VANDPS       Z0, Z24, Z27
+	VMAXPS       Z3, Z27, Z27
+	VFMADD231PS  Z14, Z27, Z26
+	VFNMADD231PS Z14, Z27, Z26
+	VANDPS       Z2, Z26, Z27
+	VCMPPS       $0x06, Z18, Z27, K1
+	VANDPS       Z2, Z24, Z27
+	VCMPPS       $0x11, Z21, Z27, K2
+	KANDW        K2, K1, K3
+	VPADDD       Z23, Z7, K3, Z7
+	VCMPPS       $0x00, Z21, Z27, K3
+	VPADDD       Z23, Z8, K3, Z8
+	VMOVUPS      Z20, Z28
+	VMOVUPS      Z19, K2, Z28
+	VANDPS       Z1, Z24, Z27
+	VORPS        Z27, Z28, Z28
+	VCMPPS       $0x03, Z24, Z24, K3
+	VPADDD       Z23, Z9, K3, Z9
+	VMOVAPS      Z24, K3, Z28
+	VMOVAPS      Z26, Z24
+	VMOVAPS      Z28, K1, Z24
+	VBROADCASTSS 4(BX)(DI*4), Z26
+	VMULPS       (DX), Z26, Z26
+	VMOVAPS      Z26, Z27
+	VANDPS       Z2, Z27, Z28
+	VCMPPS       $0x06, Z15, Z28, K1
+	VANDPS       Z2, Z26, Z28
+	VCMPPS       $0x11, Z21, Z28, K2
+	KANDW        K2, K1, K3
+	VPADDD       Z23, Z4, K3, Z4
+	VCMPPS       $0x00, Z21, Z28, K3
+	VPADDD       Z23, Z5, K3, Z5
+	VMOVUPS      Z17, Z29
+	VMOVUPS      Z16, K2, Z29
+	VANDPS       Z1, Z26, Z28
+	VORPS        Z28, Z29, Z29
+	VCMPPS       $0x03, Z26, Z26, K3
+	VPADDD       Z23, Z6, K3, Z6
+	VMOVAPS      Z26, K3, Z29
+	VMOVAPS      Z27, Z26
+	VMOVAPS      Z29, K1, Z26
+	VADDPS       Z26, Z25, Z27
+	VSUBPS       Z25, Z27, Z28
+	VSUBPS       Z28, Z27, Z29
+	VSUBPS       Z29, Z25, Z29
+	VSUBPS       Z28, Z26, Z28
+	VADDPS       Z28, Z29, Z29
+	VPXORD       Z11, Z11, Z11
+	VCMPPS       $0x0c, Z29, Z11, K1
+	VPMOVM2D     K1, Z11
+	VPANDD       Z22, Z11, Z11
+	VPXORD       Z27, Z29, Z29
+	VPSRAD       $0x1f, Z29, Z29
+	VPANDD       Z11, Z29, Z29
+	VPADDD       Z29, Z27, Z27
+	VPSRLD       $0x1f, Z11, Z11
+	VPORD        Z11, Z27, Z25
+	VMOVAPS      Z25, Z26
+	VANDPS       Z0, Z25, Z27
+	VMAXPS       Z3, Z27, Z27
+	VFMADD231PS  Z14, Z27, Z26
+	VFNMADD231PS Z14, Z27, Z26
+	VANDPS       Z2, Z26, Z27
+	VCMPPS       $0x06, Z18, Z27, K1
+	VANDPS       Z2, Z25, Z27
+	VCMPPS       $0x11, Z21, Z27, K2
+	KANDW        K2, K1, K3
+	VPADDD       Z23, Z7, K3, Z7
+	VCMPPS       $0x00, Z21, Z27, K3
+	VPADDD       Z23, Z8, K3, Z8
+	VMOVUPS      Z20, Z28
+	VMOVUPS      Z19, K2, Z28
+	VANDPS       Z1, Z25, Z27
+	VORPS        Z27, Z28, Z28
+	VCMPPS       $0x03, Z25, Z25, K3
+	VPADDD       Z23, Z9, K3, Z9
+	VMOVAPS      Z25, K3, Z28
+	VMOVAPS      Z26, Z25
+	VMOVAPS      Z28, K1, Z25
+	ADDQ         $0x00000040, DX
+	ADDQ         $0x02, DI
+	CMPQ         DI, SI
+	JLT          term
+	VMOVUPS      640(CX), Z26
+	VPXORD       Z12, Z12, Z12
+	VPXORD       Z13, Z13, Z13
+	VFMADD231PS  Z12, Z24, Z13
+	VMULPS       Z26, Z24, Z24
+	VADDPS       Z12, Z24, Z24
+	VFMADD231PS  Z12, Z25, Z13
+	VMULPS       Z26, Z25, Z25
+	VADDPS       Z12, Z25, Z25
+	MOVQ         16(SP), DX
+	MOVQ         176(AX), BX
+	VMOVUPS      Z24, (DX)
+	LEAQ         (DX)(BX*4), DX
+	VMOVUPS      Z25, (DX)
+	LEAQ         (DX)(BX*4), DX
+	MOVQ         DX, 16(SP)
+	VCMPPS       $0x03, Z13, Z13, K1
+	KMOVW        K1, DX
+	TESTL        DX, DX
+	MOVQ         24(SP), DX
+	SETNE        (DX)
+	INCQ         24(SP)
+	DECQ         (SP)
+	JNZ          group
+	MOVQ         296(AX), AX
+	VMOVUPS      Z4, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, (AX)
+	VMOVUPS      Z5, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 8(AX)
+	VMOVUPS      Z6, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 16(AX)
+	VMOVUPS      Z7, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 24(AX)
+	VMOVUPS      Z8, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 32(AX)
+	VMOVUPS      Z9, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 40(AX)
+	VZEROUPPER
+	RET
+
+// func carefulRoundedAVX512R4V1(t *Tile[float32])
+// Requires: AVX, AVX512DQ, AVX512F
+TEXT ·carefulRoundedAVX512R4V1(SB), $104-8
+	MOVQ    t+0(FP), AX
+	MOVQ    240(AX), CX
+	VMOVUPS (CX), Z0
+	VMOVUPS 64(CX), Z1
+	VMOVUPS 128(CX), Z2
+	VMOVUPS 192(CX), Z3
+	VMOVUPS 256(CX), Z4
+	VMOVUPS 384(CX), Z5
+	VMOVUPS 448(CX), Z6
+	VMOVUPS 1792(CX), Z7
+	VMOVUPS 1856(CX), Z8
+	VMOVUPS 1920(CX), Z9
+	VMOVUPS 1984(CX), Z10
+	VMOVUPS 2048(CX), Z11
+	MOVQ    8(AX), DX
+	MOVQ    DX, (SP)
+	MOVQ    120(AX), DX
+	MOVQ    DX, 8(SP)
+	MOVQ    152(AX), DX
+	MOVQ    DX, 16(SP)
+	MOVQ    216(AX), DX
+	MOVQ    DX, 24(SP)
+	MOVQ    16(AX), DX
+	MOVQ    DX, 32(SP)
+	VPXORD  Z12, Z12, Z12
+	VPXORD  Z13, Z13, Z13
+	VPXORD  Z14, Z14, Z14
+	VPXORD  Z15, Z15, Z15
+	VPXORD  Z16, Z16, Z16
+	VPXORD  Z17, Z17, Z17
+
+group:
+	MOVQ    8(SP), DX
+	MOVQ    144(AX), BX
+	VMOVUPS (DX), Z18
+	VMULPS  576(CX), Z18, Z18
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Z19
+	VMULPS  576(CX), Z19, Z19
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Z20
+	VMULPS  576(CX), Z20, Z20
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Z21
+	VMULPS  576(CX), Z21, Z21
+	LEAQ    (DX)(BX*4), DX
+	MOVQ    DX, 8(SP)
+	MOVQ    40(AX), DX
+	MOVQ    32(SP), BX
+	LEAQ    (BX)(DX*4), SI
+	LEAQ    (SI)(DX*4), DX
+	MOVQ    DX, 32(SP)
+	MOVQ    48(AX), DX
+	MOVQ    (AX), DI
+	ADDQ    DI, DI
+	XORQ    R8, R8
+
+term:
+	VBROADCASTSS (BX)(R8*4), Z22
+	VMULPS       (DX), Z22, Z22
+	VMOVAPS      Z22, Z29
+	VANDPS       Z0, Z22, Z30
+	VMAXPS       Z3, Z30, Z30
+	VFMADD231PS  Z4, Z30, Z29
+	VFNMADD231PS Z4, Z30, Z29
+	VANDPS       Z2, Z29, Z30
+	VCMPPS       $0x06, Z7, Z30, K1
+	VANDPS       Z2, Z22, Z30
+	VCMPPS       $0x11, 2176(CX), Z30, K2
+	KANDW        K2, K1, K3
+	VPADDD       1408(CX), Z12, K3, Z12
+	VCMPPS       $0x00, 2176(CX), Z30, K3
+	VPADDD       1408(CX), Z13, K3, Z13
+	VMOVUPS      Z9, Z31
+	VMOVUPS      Z8, K2, Z31
+	VANDPS       Z1, Z22, Z30
+	VORPS        Z30, Z31, Z31
+	VCMPPS       $0x03, Z22, Z22, K3
+	VPADDD       1408(CX), Z14, K3, Z14
+	VMOVAPS      Z22, K3, Z31
+	VMOVAPS      Z29, Z22
+	VMOVAPS      Z31, K1, Z22
+	VADDPS       Z22, Z18, Z29
+	VSUBPS       Z18, Z29, Z30
+	VSUBPS       Z30, Z29, Z31
+	VSUBPS       Z31, Z18, Z31
+	VSUBPS       Z30, Z22, Z30
+	VADDPS       Z30, Z31, Z31
+	VPXORD       Z23, Z23, Z23
+	VCMPPS       $0x0c, Z31, Z23, K1
+	VPMOVM2D     K1, Z23
+	VPANDD       2240(CX), Z23, Z23
+	VPXORD       Z29, Z31, Z31
+	VPSRAD       $0x1f, Z31, Z31
+	VPANDD       Z23, Z31, Z31
+	VPADDD       Z31, Z29, Z29
+	VPSRLD       $0x1f, Z23, Z23
+	VPORD        Z23, Z29, Z18
+	VMOVAPS      Z18, Z22
+	VANDPS       Z0, Z18, Z29
+	VMAXPS       Z5, Z29, Z29
+	VFMADD231PS  Z6, Z29, Z22
+	VFNMADD231PS Z6, Z29, Z22
+	VANDPS       Z2, Z22, Z29
+	VCMPPS       $0x06, Z10, Z29, K1
+	VANDPS       Z2, Z18, Z29
+	VCMPPS       $0x11, 2176(CX), Z29, K2
+	KANDW        K2, K1, K3
+	VPADDD       1408(CX), Z15, K3, Z15
+	VCMPPS       $0x00, 2176(CX), Z29, K3
+	VPADDD       1408(CX), Z16, K3, Z16
+	VMOVUPS      2112(CX), Z30
+	VMOVUPS      Z11, K2, Z30
+	VANDPS       Z1, Z18, Z29
+	VORPS        Z29, Z30, Z30
+	VCMPPS       $0x03, Z18, Z18, K3
+	VPADDD       1408(CX), Z17, K3, Z17
+	VMOVAPS      Z18, K3, Z30
+	VMOVAPS      Z22, Z18
+	VMOVAPS      Z30, K1, Z18
+	VBROADCASTSS 4(BX)(R8*4), Z22
+	VMULPS       (DX), Z22, Z22
+	VMOVAPS      Z22, Z29
+	VANDPS       Z0, Z22, Z30
+	VMAXPS       Z3, Z30, Z30
+	VFMADD231PS  Z4, Z30, Z29
+	VFNMADD231PS Z4, Z30, Z29
+	VANDPS       Z2, Z29, Z30
+	VCMPPS       $0x06, Z7, Z30, K1
+	VANDPS       Z2, Z22, Z30
+	VCMPPS       $0x11, 2176(CX), Z30, K2
+	KANDW        K2, K1, K3
+	VPADDD       1408(CX), Z12, K3, Z12
+	VCMPPS       $0x00, 2176(CX), Z30, K3
+	VPADDD       1408(CX), Z13, K3, Z13
+	VMOVUPS      Z9, Z31
+	VMOVUPS      Z8, K2, Z31
+	VANDPS       Z1, Z22, Z30
+	VORPS        Z30, Z31, Z31
+	VCMPPS       $0x03, Z22, Z22, K3
+	VPADDD       1408(CX), Z14, K3, Z14
+	VMOVAPS      Z22, K3, Z31
+	VMOVAPS      Z29, Z22
+	VMOVAPS      Z31, K1, Z22
+	VADDPS       Z22, Z19, Z29
+	VSUBPS       Z19, Z29, Z30
+	VSUBPS       Z30, Z29, Z31
+	VSUBPS       Z31, Z19, Z31
+	VSUBPS       Z30, Z22, Z30
+	VADDPS       Z30, Z31, Z31
+	VPXORD       Z24, Z24, Z24
+	VCMPPS       $0x0c, Z31, Z24, K1
+	VPMOVM2D     K1, Z24
+	VPANDD       2240(CX), Z24, Z24
+	VPXORD       Z29, Z31, Z31
+	VPSRAD       $0x1f, Z31, Z31
+	VPANDD       Z24, Z31, Z31
+	VPADDD       Z31, Z29, Z29
+	VPSRLD       $0x1f, Z24, Z24
+	VPORD        Z24, Z29, Z19
+	VMOVAPS      Z19, Z22
+	VANDPS       Z0, Z19, Z29
+	VMAXPS       Z5, Z29, Z29
+	VFMADD231PS  Z6, Z29, Z22
+	VFNMADD231PS Z6, Z29, Z22
+	VANDPS       Z2, Z22, Z29
+	VCMPPS       $0x06, Z10, Z29, K1
+	VANDPS       Z2, Z19, Z29
+	VCMPPS       $0x11, 2176(CX), Z29, K2
+	KANDW        K2, K1, K3
+	VPADDD       1408(CX), Z15, K3, Z15
+	VCMPPS       $0x00, 2176(CX), Z29, K3
+	VPADDD       1408(CX), Z16, K3, Z16
+	VMOVUPS      2112(CX), Z30
+	VMOVUPS      Z11, K2, Z30
+	VANDPS       Z1, Z19, Z29
+	VORPS        Z29, Z30, Z30
+	VCMPPS       $0x03, Z19, Z19, K3
+	VPADDD       1408(CX), Z17, K3, Z17
+	VMOVAPS      Z19, K3, Z30
+	VMOVAPS      Z22, Z19
+	VMOVAPS      Z30, K1, Z19
+	VBROADCASTSS (SI)(R8*4), Z22
+	VMULPS       (DX), Z22, Z22
+	VMOVAPS      Z22, Z29
+	VANDPS       Z0, Z22, Z30
+	VMAXPS       Z3, Z30, Z30
+	VFMADD231PS  Z4, Z30, Z29
+	VFNMADD231PS Z4, Z30, Z29
+	VANDPS       Z2, Z29, Z30
+	VCMPPS       $0x06, Z7, Z30, K1
+	VANDPS       Z2, Z22, Z30
+	VCMPPS       $0x11, 2176(CX), Z30, K2
+	KANDW        K2, K1, K3
+	VPADDD       1408(CX), Z12, K3, Z12
+	VCMPPS       $0x00, 2176(CX), Z30, K3
+	VPADDD       1408(CX), Z13, K3, Z13
+	VMOVUPS      Z9, Z31
+	VMOVUPS      Z8, K2, Z31
+	VANDPS       Z1, Z22, Z30
+	VORPS        Z30, Z31, Z31
+	VCMPPS       $0x03, Z22, Z22, K3
+	VPADDD       1408(CX), Z14, K3, Z14
+	VMOVAPS      Z22, K3, Z31
+	VMOVAPS      Z29, Z22
+	VMOVAPS      Z31, K1, Z22
+	VADDPS       Z22, Z20, Z29
+	VSUBPS       Z20, Z29, Z30
+	VSUBPS       Z30, Z29, Z31
+	VSUBPS       Z31, Z20, Z31
+	VSUBPS       Z30, Z22, Z30
+	VADDPS       Z30, Z31, Z31
+	VPXORD       Z25, Z25, Z25
+	VCMPPS       $0x0c, Z31, Z25, K1
+	VPMOVM2D     K1, Z25
+	VPANDD       2240(CX), Z25, Z25
+	VPXORD       Z29, Z31, Z31
+	VPSRAD       $0x1f, Z31, Z31
+	VPANDD       Z25, Z31, Z31
+	VPADDD       Z31, Z29, Z29
+	VPSRLD       $0x1f, Z25, Z25
+	VPORD        Z25, Z29, Z20
+	VMOVAPS      Z20, Z22
+	VANDPS       Z0, Z20, Z29
+	VMAXPS       Z5, Z29, Z29
+	VFMADD231PS  Z6, Z29, Z22
+	VFNMADD231PS Z6, Z29, Z22
+	VANDPS       Z2, Z22, Z29
+	VCMPPS       $0x06, Z10, Z29, K1
+	VANDPS       Z2, Z20, Z29
+	VCMPPS       $0x11, 2176(CX), Z29, K2
+	KANDW        K2, K1, K3
+	VPADDD       1408(CX), Z15, K3, Z15
+	VCMPPS       $0x00, 2176(CX), Z29, K3
+	VPADDD       1408(CX), Z16, K3, Z16
+	VMOVUPS      2112(CX), Z30
+	VMOVUPS      Z11, K2, Z30
+	VANDPS       Z1, Z20, Z29
+	VORPS        Z29, Z30, Z30
+	VCMPPS       $0x03, Z20, Z20, K3
+	VPADDD       1408(CX), Z17, K3, Z17
+	VMOVAPS      Z20, K3, Z30
+	VMOVAPS      Z22, Z20
+	VMOVAPS      Z30, K1, Z20
+	VBROADCASTSS 4(SI)(R8*4), Z22
+	VMULPS       (DX), Z22, Z22
+	VMOVAPS      Z22, Z29
+	VANDPS       Z0, Z22, Z30
+	VMAXPS       Z3, Z30, Z30
+	VFMADD231PS  Z4, Z30, Z29
+	VFNMADD231PS Z4, Z30, Z29
+	VANDPS       Z2, Z29, Z30
+	VCMPPS       $0x06, Z7, Z30, K1
+	VANDPS       Z2, Z22, Z30
+	VCMPPS       $0x11, 2176(CX), Z30, K2
+	KANDW        K2, K1, K3
+	VPADDD       1408(CX), Z12, K3, Z12
+	VCMPPS       $0x00, 2176(CX), Z30, K3
+	VPADDD       1408(CX), Z13, K3, Z13
+	VMOVUPS      Z9, Z31
+	VMOVUPS      Z8, K2, Z31
+	VANDPS       Z1, Z22, Z30
+	VORPS        Z30, Z31, Z31
+	VCMPPS       $0x03, Z22, Z22, K3
+	VPADDD       1408(CX), Z14, K3, Z14
+	VMOVAPS      Z22, K3, Z31
+	VMOVAPS      Z29, Z22
+	VMOVAPS      Z31, K1, Z22
+	VADDPS       Z22, Z21, Z29
+	VSUBPS       Z21, Z29, Z30
+	VSUBPS       Z30, Z29, Z31
+	VSUBPS       Z31, Z21, Z31
+	VSUBPS       Z30, Z22, Z30
+	VADDPS       Z30, Z31, Z31
+	VPXORD       Z26, Z26, Z26
+	VCMPPS       $0x0c, Z31, Z26, K1
+	VPMOVM2D     K1, Z26
+	VPANDD       2240(CX), Z26, Z26
+	VPXORD       Z29, Z31, Z31
+	VPSRAD       $0x1f, Z31, Z31
+	VPANDD       Z26, Z31, Z31
+	VPADDD       Z31, Z29, Z29
+	VPSRLD       $0x1f, Z26, Z26
+	VPORD        Z26, Z29, Z21
+	VMOVAPS      Z21, Z22
+	VANDPS       Z0, Z21, Z29
+	VMAXPS       Z5, Z29, Z29
+	VFMADD231PS  Z6, Z29, Z22
+	VFNMADD231PS Z6, Z29, Z22
+	VANDPS       Z2, Z22, Z29
+	VCMPPS       $0x06, Z10, Z29, K1
+	VANDPS       Z2, Z21, Z29
+	VCMPPS       $0x11, 2176(CX), Z29, K2
+	KANDW        K2, K1, K3
+	VPADDD       1408(CX), Z15, K3, Z15
+	VCMPPS       $0x00, 2176(CX), Z29, K3
+	VPADDD       1408(CX), Z16, K3, Z16
+	VMOVUPS      2112(CX), Z30
+	VMOVUPS      Z11, K2, Z30
+	VANDPS       Z1, Z21, Z29
+	VORPS        Z29, Z30, Z30
+	VCMPPS       $0x03, Z21, Z21, K3
+	VPADDD       1408(CX), Z17, K3, Z17
+	VMOVAPS      Z21, K3, Z30
+	VMOVAPS      Z22, Z21
+	VMOVAPS      Z30, K1, Z21
+	ADDQ         $0x00000040, DX
+	ADDQ         $0x02, R8
+	CMPQ         R8, DI
+	JLT          term
+	VMOVUPS      640(CX), Z22
+	VPXORD       Z27, Z27, Z27
+	VPXORD       Z28, Z28, Z28
+	VFMADD231PS  Z27, Z18, Z28
+	VMULPS       Z22, Z18, Z18
+	VADDPS       Z27, Z18, Z18
+	VFMADD231PS  Z27, Z19, Z28
+	VMULPS       Z22, Z19, Z19
+	VADDPS       Z27, Z19, Z19
+	VFMADD231PS  Z27, Z20, Z28
+	VMULPS       Z22, Z20, Z20
+	VADDPS       Z27, Z20, Z20
+	VFMADD231PS  Z27, Z21, Z28
+	VMULPS       Z22, Z21, Z21
+	VADDPS       Z27, Z21, Z21
+	MOVQ         16(SP), DX
+	MOVQ         176(AX), BX
+	VMOVUPS      Z18, (DX)
+	LEAQ         (DX)(BX*4), DX
+	VMOVUPS      Z19, (DX)
+	LEAQ         (DX)(BX*4), DX
+	VMOVUPS      Z20, (DX)
+	LEAQ         (DX)(BX*4), DX
+	VMOVUPS      Z21, (DX)
+	LEAQ         (DX)(BX*4), DX
+	MOVQ         DX, 16(SP)
+	VCMPPS       $0x03, Z28, Z28, K1
+	KMOVW        K1, DX
+	TESTL        DX, DX
+	MOVQ         24(SP), DX
+	SETNE        (DX)
+	INCQ         24(SP)
+	DECQ         (SP)
+	JNZ          group
+	MOVQ         296(AX), AX
+	VMOVUPS      Z12, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, (AX)
+	VMOVUPS      Z13, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 8(AX)
+	VMOVUPS      Z14, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 16(AX)
+	VMOVUPS      Z15, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 24(AX)
+	VMOVUPS      Z16, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 32(AX)
+	VMOVUPS      Z17, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 40(AX)
+	VZEROUPPER
+	RET
+
+// func carefulRoundedAVX512R2V1(t *Tile[float32])
+// Requires: AVX, AVX512DQ, AVX512F
+TEXT ·carefulRoundedAVX512R2V1(SB), $104-8
+	MOVQ    t+0(FP), AX
+	MOVQ    240(AX), CX
+	VMOVUPS (CX), Z0
+	VMOVUPS 64(CX), Z1
+	VMOVUPS 128(CX), Z2
+	VMOVUPS 192(CX), Z3
+	VMOVUPS 256(CX), Z4
+	VMOVUPS 384(CX), Z5
+	VMOVUPS 448(CX), Z6
+	VMOVUPS 1792(CX), Z7
+	VMOVUPS 1856(CX), Z8
+	VMOVUPS 1920(CX), Z9
+	VMOVUPS 1984(CX), Z10
+	VMOVUPS 2048(CX), Z11
+	VMOVUPS 2112(CX), Z12
+	VMOVUPS 2176(CX), Z13
+	VMOVUPS 2240(CX), Z14
+	VMOVUPS 1408(CX), Z15
+	MOVQ    8(AX), DX
+	MOVQ    DX, (SP)
+	MOVQ    120(AX), DX
+	MOVQ    DX, 8(SP)
+	MOVQ    152(AX), DX
+	MOVQ    DX, 16(SP)
+	MOVQ    216(AX), DX
+	MOVQ    DX, 24(SP)
+	MOVQ    16(AX), DX
+	MOVQ    DX, 32(SP)
+	VPXORD  Z16, Z16, Z16
+	VPXORD  Z17, Z17, Z17
+	VPXORD  Z18, Z18, Z18
+	VPXORD  Z19, Z19, Z19
+	VPXORD  Z20, Z20, Z20
+	VPXORD  Z21, Z21, Z21
+
+group:
+	MOVQ    8(SP), DX
+	MOVQ    144(AX), BX
+	VMOVUPS (DX), Z22
+	VMULPS  576(CX), Z22, Z22
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Z23
+	VMULPS  576(CX), Z23, Z23
+	LEAQ    (DX)(BX*4), DX
+	MOVQ    DX, 8(SP)
+	MOVQ    40(AX), DX
+	MOVQ    32(SP), BX
+	LEAQ    (BX)(DX*4), DX
+	MOVQ    DX, 32(SP)
+	MOVQ    48(AX), DX
+	MOVQ    (AX), SI
+	ADDQ    SI, SI
+	XORQ    DI, DI
+
+term:
+	VBROADCASTSS (BX)(DI*4), Z24
+	VMULPS       (DX), Z24, Z24
+	VMOVAPS      Z24, Z29
+	VANDPS       Z0, Z24, Z30
+	VMAXPS       Z3, Z30, Z30
+	VFMADD231PS  Z4, Z30, Z29
+	VFNMADD231PS Z4, Z30, Z29
+	VANDPS       Z2, Z29, Z30
+	VCMPPS       $0x06, Z7, Z30, K1
+	VANDPS       Z2, Z24, Z30
+	VCMPPS       $0x11, Z13, Z30, K2
+	KANDW        K2, K1, K3
+	VPADDD       Z15, Z16, K3, Z16
+	VCMPPS       $0x00, Z13, Z30, K3
+	VPADDD       Z15, Z17, K3, Z17
+	VMOVUPS      Z9, Z31
+	VMOVUPS      Z8, K2, Z31
+	VANDPS       Z1, Z24, Z30
+	VORPS        Z30, Z31, Z31
+	VCMPPS       $0x03, Z24, Z24, K3
+	VPADDD       Z15, Z18, K3, Z18
+	VMOVAPS      Z24, K3, Z31
+	VMOVAPS      Z29, Z24
+	VMOVAPS      Z31, K1, Z24
+	VADDPS       Z24, Z22, Z29
+	VSUBPS       Z22, Z29, Z30
+	VSUBPS       Z30, Z29, Z31
+	VSUBPS       Z31, Z22, Z31
+	VSUBPS       Z30, Z24, Z30
+	VADDPS       Z30, Z31, Z31
+	VPXORD       Z25, Z25, Z25
+	VCMPPS       $0x0c, Z31, Z25, K1
+	VPMOVM2D     K1, Z25
+	VPANDD       Z14, Z25, Z25
+	VPXORD       Z29, Z31, Z31
+	VPSRAD       $0x1f, Z31, Z31
+	VPANDD       Z25, Z31, Z31
+	VPADDD       Z31, Z29, Z29
+	VPSRLD       $0x1f, Z25, Z25
+	VPORD        Z25, Z29, Z22
+	VMOVAPS      Z22, Z24
+	VANDPS       Z0, Z22, Z29
+	VMAXPS       Z5, Z29, Z29
+	VFMADD231PS  Z6, Z29, Z24
+	VFNMADD231PS Z6, Z29, Z24
+	VANDPS       Z2, Z24, Z29
+	VCMPPS       $0x06, Z10, Z29, K1
+	VANDPS       Z2, Z22, Z29
+	VCMPPS       $0x11, Z13, Z29, K2
+	KANDW        K2, K1, K3
+	VPADDD       Z15, Z19, K3, Z19
+	VCMPPS       $0x00, Z13, Z29, K3
+	VPADDD       Z15, Z20, K3, Z20
+	VMOVUPS      Z12, Z30
+	VMOVUPS      Z11, K2, Z30
+	VANDPS       Z1, Z22, Z29
+	VORPS        Z29, Z30, Z30
+	VCMPPS       $0x03, Z22, Z22, K3
+	VPADDD       Z15, Z21, K3, Z21
+	VMOVAPS      Z22, K3, Z30
+	VMOVAPS      Z24, Z22
+	VMOVAPS      Z30, K1, Z22
+	VBROADCASTSS 4(BX)(DI*4), Z24
+	VMULPS       (DX), Z24, Z24
+	VMOVAPS      Z24, Z29
+	VANDPS       Z0, Z24, Z30
+	VMAXPS       Z3, Z30, Z30
+	VFMADD231PS  Z4, Z30, Z29
+	VFNMADD231PS Z4, Z30, Z29
+	VANDPS       Z2, Z29, Z30
+	VCMPPS       $0x06, Z7, Z30, K1
+	VANDPS       Z2, Z24, Z30
+	VCMPPS       $0x11, Z13, Z30, K2
+	KANDW        K2, K1, K3
+	VPADDD       Z15, Z16, K3, Z16
+	VCMPPS       $0x00, Z13, Z30, K3
+	VPADDD       Z15, Z17, K3, Z17
+	VMOVUPS      Z9, Z31
+	VMOVUPS      Z8, K2, Z31
+	VANDPS       Z1, Z24, Z30
+	VORPS        Z30, Z31, Z31
+	VCMPPS       $0x03, Z24, Z24, K3
+	VPADDD       Z15, Z18, K3, Z18
+	VMOVAPS      Z24, K3, Z31
+	VMOVAPS      Z29, Z24
+	VMOVAPS      Z31, K1, Z24
+	VADDPS       Z24, Z23, Z29
+	VSUBPS       Z23, Z29, Z30
+	VSUBPS       Z30, Z29, Z31
+	VSUBPS       Z31, Z23, Z31
+	VSUBPS       Z30, Z24, Z30
+	VADDPS       Z30, Z31, Z31
+	VPXORD       Z26, Z26, Z26
+	VCMPPS       $0x0c, Z31, Z26, K1
+	VPMOVM2D     K1, Z26
+	VPANDD       Z14, Z26, Z26
+	VPXORD       Z29, Z31, Z31
+	VPSRAD       $0x1f, Z31, Z31
+	VPANDD       Z26, Z31, Z31
+	VPADDD       Z31, Z29, Z29
+	VPSRLD       $0x1f, Z26, Z26
+	VPORD        Z26, Z29, Z23
+	VMOVAPS      Z23, Z24
+	VANDPS       Z0, Z23, Z29
+	VMAXPS       Z5, Z29, Z29
+	VFMADD231PS  Z6, Z29, Z24
+	VFNMADD231PS Z6, Z29, Z24
+	VANDPS       Z2, Z24, Z29
+	VCMPPS       $0x06, Z10, Z29, K1
+	VANDPS       Z2, Z23, Z29
+	VCMPPS       $0x11, Z13, Z29, K2
+	KANDW        K2, K1, K3
+	VPADDD       Z15, Z19, K3, Z19
+	VCMPPS       $0x00, Z13, Z29, K3
+	VPADDD       Z15, Z20, K3, Z20
+	VMOVUPS      Z12, Z30
+	VMOVUPS      Z11, K2, Z30
+	VANDPS       Z1, Z23, Z29
+	VORPS        Z29, Z30, Z30
+	VCMPPS       $0x03, Z23, Z23, K3
+	VPADDD       Z15, Z21, K3, Z21
+	VMOVAPS      Z23, K3, Z30
+	VMOVAPS      Z24, Z23
+	VMOVAPS      Z30, K1, Z23
+	ADDQ         $0x00000040, DX
+	ADDQ         $0x02, DI
+	CMPQ         DI, SI
+	JLT          term
+	VMOVUPS      640(CX), Z24
+	VPXORD       Z27, Z27, Z27
+	VPXORD       Z28, Z28, Z28
+	VFMADD231PS  Z27, Z22, Z28
+	VMULPS       Z24, Z22, Z22
+	VADDPS       Z27, Z22, Z22
+	VFMADD231PS  Z27, Z23, Z28
+	VMULPS       Z24, Z23, Z23
+	VADDPS       Z27, Z23, Z23
+	MOVQ         16(SP), DX
+	MOVQ         176(AX), BX
+	VMOVUPS      Z22, (DX)
+	LEAQ         (DX)(BX*4), DX
+	VMOVUPS      Z23, (DX)
+	LEAQ         (DX)(BX*4), DX
+	MOVQ         DX, 16(SP)
+	VCMPPS       $0x03, Z28, Z28, K1
+	KMOVW        K1, DX
+	TESTL        DX, DX
+	MOVQ         24(SP), DX
+	SETNE        (DX)
+	INCQ         24(SP)
+	DECQ         (SP)
+	JNZ          group
+	MOVQ         296(AX), AX
+	VMOVUPS      Z16, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, (AX)
+	VMOVUPS      Z17, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 8(AX)
+	VMOVUPS      Z18, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 16(AX)
+	VMOVUPS      Z19, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 24(AX)
+	VMOVUPS      Z20, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 32(AX)
+	VMOVUPS      Z21, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	MOVL         72(SP), DX
+	ADDQ         DX, CX
+	MOVL         76(SP), DX
+	ADDQ         DX, CX
+	MOVL         80(SP), DX
+	ADDQ         DX, CX
+	MOVL         84(SP), DX
+	ADDQ         DX, CX
+	MOVL         88(SP), DX
+	ADDQ         DX, CX
+	MOVL         92(SP), DX
+	ADDQ         DX, CX
+	MOVL         96(SP), DX
+	ADDQ         DX, CX
+	MOVL         100(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 40(AX)
+	VZEROUPPER
+	RET
+
 // func stochasticAVX512R4V2(t *Tile[float32])
 // Requires: AVX, AVX512BW, AVX512DQ, AVX512F
 TEXT ·stochasticAVX512R4V2(SB), $48-8

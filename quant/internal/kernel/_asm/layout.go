@@ -41,6 +41,7 @@ var tileFields = []field{
 	{"C", word},
 	{"TermR", slice},
 	{"TermV", slice},
+	{"Events", slice},
 }
 
 // constantFields are the fields of kernel.Constants: vectors of equal lanes.
@@ -73,6 +74,14 @@ var constantFields = []field{
 	{"TermShift", vector},
 	{"TermHalf", vector},
 	{"TermLimit", vector},
+	{"Max", vector},
+	{"Over", vector},
+	{"Infinite", vector},
+	{"SumMax", vector},
+	{"SumOver", vector},
+	{"SumInfinite", vector},
+	{"Infinity", vector},
+	{"OddMask", vector},
 }
 
 // philoxFields are the fields of kernel.philoxArgs.

@@ -11,6 +11,7 @@ type mode struct {
 	truncate  bool     // AVX2: runs under rounding toward zero
 	watch     bool     // watches the greatest magnitude against Limit
 	keepRight bool     // B[k, columns] in registers instead of memory operands
+	careful   bool     // has the real meaning of numbers beyond the format, see careful.go
 	tree      bool     // adds the products of eight terms pairwise, see tree.go
 	step      func(g *tile, r, v int) chain
 }
@@ -103,6 +104,29 @@ var modes = []mode{
 			p, s := g.reg(), g.sums[r][v]
 			rescale := chain{func() { g.mul(p, p, g.constant("Rescale")) }}
 			return join(g.multiply(p, r, v), g.nearest(p, "Least", "Grow"), rescale, g.plusOdd(s, p), g.nearest(s, "SumLeast", "SumGrow"))
+		},
+	},
+	{
+		name: "carefulFused", doc: "the loop s = R(binary32(s + a b)), R nearest-even with its overflow, events counted.",
+		careful: true, constants: carefulConstants,
+		step: func(g *tile, r, v int) chain {
+			return join(g.fuse(r, v), g.roundCarefully(g.sums[r][v], sumCare))
+		},
+	},
+	{
+		name: "carefulProduct", doc: "the loop s = R(s + P(binary32(a b))), P only the overflow of products, R nearest-even with its own, events counted.",
+		careful: true, constants: carefulConstants,
+		step: func(g *tile, r, v int) chain {
+			p, s := g.reg(), g.sums[r][v]
+			return join(g.multiply(p, r, v), g.roundCarefully(p, termOverflow), g.plusCarefully(s, p), g.roundCarefully(s, sumCare))
+		},
+	},
+	{
+		name: "carefulRounded", doc: "the loop s = R(s + P(a b)), P and R nearest-even with their overflow, events counted.",
+		careful: true, constants: carefulConstants,
+		step: func(g *tile, r, v int) chain {
+			p, s := g.reg(), g.sums[r][v]
+			return join(g.multiply(p, r, v), g.roundCarefully(p, termCare), g.plusCarefully(s, p), g.roundCarefully(s, sumCare))
 		},
 	},
 	{

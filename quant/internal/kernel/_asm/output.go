@@ -3,7 +3,6 @@ package main
 import (
 	"fmt"
 	"go/format"
-	"log"
 	"os"
 	"strings"
 
@@ -74,7 +73,6 @@ func (t *table) add(file *ir.File, to target, m mode) error {
 		element = "float64"
 	}
 	fmt.Fprintf(&t.text, "\ttiles%s%s[%s] = [2][]shape[%s]{{%s}, {%s}}\n", to.name, element[5:], m.name, element, lists[0], lists[1])
-	log.Print(to.name, " ", m.name)
 	return nil
 }
 

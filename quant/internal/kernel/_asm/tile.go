@@ -23,6 +23,7 @@ type tile struct {
 	leftTerm    []reg.VecVirtual   // TermR[k, r] in every lane
 	right       []reg.VecVirtual   // B[k, columns] where the mode keeps it in registers
 	top         [2]reg.Register    // greatest sums, and products, where the mode watches them
+	events      []reg.VecVirtual   // counters of careful modes
 	slots       map[string]operand.Mem
 	frame       operand.Mem    // the caller's MXCSR, then the changed one
 	a, r        []reg.Register // a pair of rows of A, of R
@@ -72,6 +73,9 @@ func (g *tile) generate(c *build.Context, name string) bool {
 		g.MOVQ(g.loadArg(name), g.cursor(name))
 	}
 
+	if g.mode.careful {
+		g.startEvents()
+	}
 	c.Label("group")
 	if !g.mode.tree {
 		g.loadSums()
@@ -94,6 +98,9 @@ func (g *tile) generate(c *build.Context, name string) bool {
 	g.storeSums()
 	c.DECQ(g.cursor("Groups"))
 	c.JNZ(operand.LabelRef("group"))
+	if g.mode.careful {
+		g.storeEvents()
+	}
 	if g.mode.truncate && !g.zmm {
 		g.setRounding(false)
 	}

@@ -51,6 +51,9 @@ var targets = []target{
 			"stochasticFused":       {{2, 3, 5}, {8, 3, 3}},
 			"stochasticCare":        {{2, 4, 1}, {8, 4, 1}},
 			"stochasticProductCare": {{2, 2, 2}, {8, 1, 2}},
+			"carefulFused":          {{}, {2, 0, 0}},
+			"carefulProduct":        {{}, {2, 0, 0}},
+			"carefulRounded":        {{}, {2, 0, 0}},
 			"baseline64":            {{2, 0, 5}, {8, 0, 2}},
 			"fmaChain64":            {{4, 0, 1}, {8, 0, 10}},
 			"fused":                 {{4, 1, 1}, {8, 3, 6}},
@@ -79,6 +82,9 @@ var targets = []target{
 			"stochasticFused":       {{8, all, 5}, {8, all, 2}},
 			"stochasticCare":        {{4, all, 2}, {8, all, 3}},
 			"stochasticProductCare": {{4, all, 2}, {8, all, 2}},
+			"carefulFused":          {{}, {4, all, 0}},
+			"carefulProduct":        {{}, {4, all, 0}},
+			"carefulRounded":        {{}, {4, all, 0}},
 			"baseline64":            {{8, all, 6}, {8, all, 2}},
 			"fmaChain64":            {{8, all, 8}, {8, all, 5}},
 			"fused":                 {{8, all, 12}, {8, all, 8}},
@@ -96,6 +102,9 @@ const all = 99
 // tails returns the main shape and the shapes for the rows that it leaves over. Tails
 // are not overlapped, which halves their size.
 func (s shape) tails(narrow bool) []shape {
+	if s.rows == 0 {
+		return nil // the mode has none of this kind
+	}
 	list := []shape{s}
 	if s.rows == 8 && !narrow {
 		list = append(list, shape{4, s.kept, 0})
