@@ -200,7 +200,7 @@ type fastSums struct {
 	terms   Matrix[float32] // transposed
 	point   quick           // of the sums
 	tally   kernel.Tally
-	back    []int           // columns handed back, from and to by turns
+	back    []int // columns handed back, from and to by turns
 	redo    func(i0, i1, j0, j1 int)
 }
 

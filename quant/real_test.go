@@ -251,7 +251,7 @@ func TestOddFold(t *testing.T) {
 	rapid.Check(t, func(t *rapid.T) {
 		a := rapid.Float64Range(-1e30, 1e30).Draw(t, "a")
 		e := rapid.IntRange(-120, 10).Draw(t, "e")
-		b := math.Ldexp(rapid.Float64Range(-1, 1).Draw(t, "b"), e) * math.Abs(a)
+		b := float64(math.Ldexp(rapid.Float64Range(-1, 1).Draw(t, "b"), e) * math.Abs(a)) // not fused with a + b below
 		p := *points[rapid.IntRange(0, len(points)-1).Draw(t, "point")]
 		word := rapid.Uint32().Draw(t, "word")
 		// Half of the time a is a value or a midpoint of the format.
