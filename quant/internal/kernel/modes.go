@@ -24,7 +24,8 @@ const (
 	stochasticProductCare
 	carefulFused
 	carefulProduct
-	carefulRounded
+	carefulBoth
+	carefulOdd
 	singleModes
 )
 

@@ -8004,6 +8004,307 @@ term:
 	VZEROUPPER
 	RET
 
+// func carefulFusedAVX2R4V1(t *Tile[float32])
+// Requires: AVX, AVX2, FMA3
+TEXT ·carefulFusedAVX2R4V1(SB), $72-8
+	MOVQ  t+0(FP), AX
+	MOVQ  240(AX), CX
+	MOVQ  8(AX), DX
+	MOVQ  DX, (SP)
+	MOVQ  120(AX), DX
+	MOVQ  DX, 8(SP)
+	MOVQ  152(AX), DX
+	MOVQ  DX, 16(SP)
+	MOVQ  216(AX), DX
+	MOVQ  DX, 24(SP)
+	MOVQ  16(AX), DX
+	MOVQ  DX, 32(SP)
+	VPXOR Y0, Y0, Y0
+	VPXOR Y1, Y1, Y1
+	VPXOR Y2, Y2, Y2
+	VPXOR Y3, Y3, Y3
+	VPXOR Y4, Y4, Y4
+	VPXOR Y5, Y5, Y5
+
+group:
+	MOVQ    8(SP), DX
+	MOVQ    144(AX), BX
+	VMOVUPS (DX), Y6
+	VMULPS  576(CX), Y6, Y6
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Y7
+	VMULPS  576(CX), Y7, Y7
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Y8
+	VMULPS  576(CX), Y8, Y8
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Y9
+	VMULPS  576(CX), Y9, Y9
+	LEAQ    (DX)(BX*4), DX
+	MOVQ    DX, 8(SP)
+	MOVQ    40(AX), DX
+	MOVQ    32(SP), BX
+	LEAQ    (BX)(DX*4), SI
+	LEAQ    (SI)(DX*4), DX
+	MOVQ    DX, 32(SP)
+	MOVQ    48(AX), DX
+	MOVQ    (AX), DI
+	ADDQ    DI, DI
+	XORQ    R8, R8
+
+term:
+	VBROADCASTSS (BX)(R8*4), Y10
+	VFMADD231PS  (DX), Y10, Y6
+	VMOVAPS      Y6, Y10
+	VANDPS       (CX), Y6, Y11
+	VMAXPS       384(CX), Y11, Y11
+	VFMADD231PS  448(CX), Y11, Y10
+	VFNMADD231PS 448(CX), Y11, Y10
+	VANDPS       128(CX), Y10, Y11
+	VCMPPS       $0x06, 1984(CX), Y11, Y12
+	VANDPS       128(CX), Y6, Y11
+	VCMPPS       $0x11, 2176(CX), Y11, Y13
+	VPAND        Y12, Y13, Y14
+	VPSUBD       Y14, Y3, Y3
+	VCMPPS       $0x00, 2176(CX), Y11, Y14
+	VPSUBD       Y14, Y4, Y4
+	VMOVUPS      2112(CX), Y14
+	VBLENDVPS    Y13, 2048(CX), Y14, Y14
+	VANDPS       64(CX), Y6, Y11
+	VORPS        Y11, Y14, Y14
+	VCMPPS       $0x03, Y6, Y6, Y11
+	VPSUBD       Y11, Y5, Y5
+	VORPS        Y11, Y14, Y14
+	VBLENDVPS    Y12, Y14, Y10, Y10
+	VMOVAPS      Y10, Y6
+	VBROADCASTSS 4(BX)(R8*4), Y10
+	VFMADD231PS  (DX), Y10, Y7
+	VMOVAPS      Y7, Y10
+	VANDPS       (CX), Y7, Y11
+	VMAXPS       384(CX), Y11, Y11
+	VFMADD231PS  448(CX), Y11, Y10
+	VFNMADD231PS 448(CX), Y11, Y10
+	VANDPS       128(CX), Y10, Y11
+	VCMPPS       $0x06, 1984(CX), Y11, Y12
+	VANDPS       128(CX), Y7, Y11
+	VCMPPS       $0x11, 2176(CX), Y11, Y13
+	VPAND        Y12, Y13, Y14
+	VPSUBD       Y14, Y3, Y3
+	VCMPPS       $0x00, 2176(CX), Y11, Y14
+	VPSUBD       Y14, Y4, Y4
+	VMOVUPS      2112(CX), Y14
+	VBLENDVPS    Y13, 2048(CX), Y14, Y14
+	VANDPS       64(CX), Y7, Y11
+	VORPS        Y11, Y14, Y14
+	VCMPPS       $0x03, Y7, Y7, Y11
+	VPSUBD       Y11, Y5, Y5
+	VORPS        Y11, Y14, Y14
+	VBLENDVPS    Y12, Y14, Y10, Y10
+	VMOVAPS      Y10, Y7
+	VBROADCASTSS (SI)(R8*4), Y10
+	VFMADD231PS  (DX), Y10, Y8
+	VMOVAPS      Y8, Y10
+	VANDPS       (CX), Y8, Y11
+	VMAXPS       384(CX), Y11, Y11
+	VFMADD231PS  448(CX), Y11, Y10
+	VFNMADD231PS 448(CX), Y11, Y10
+	VANDPS       128(CX), Y10, Y11
+	VCMPPS       $0x06, 1984(CX), Y11, Y12
+	VANDPS       128(CX), Y8, Y11
+	VCMPPS       $0x11, 2176(CX), Y11, Y13
+	VPAND        Y12, Y13, Y14
+	VPSUBD       Y14, Y3, Y3
+	VCMPPS       $0x00, 2176(CX), Y11, Y14
+	VPSUBD       Y14, Y4, Y4
+	VMOVUPS      2112(CX), Y14
+	VBLENDVPS    Y13, 2048(CX), Y14, Y14
+	VANDPS       64(CX), Y8, Y11
+	VORPS        Y11, Y14, Y14
+	VCMPPS       $0x03, Y8, Y8, Y11
+	VPSUBD       Y11, Y5, Y5
+	VORPS        Y11, Y14, Y14
+	VBLENDVPS    Y12, Y14, Y10, Y10
+	VMOVAPS      Y10, Y8
+	VBROADCASTSS 4(SI)(R8*4), Y10
+	VFMADD231PS  (DX), Y10, Y9
+	VMOVAPS      Y9, Y10
+	VANDPS       (CX), Y9, Y11
+	VMAXPS       384(CX), Y11, Y11
+	VFMADD231PS  448(CX), Y11, Y10
+	VFNMADD231PS 448(CX), Y11, Y10
+	VANDPS       128(CX), Y10, Y11
+	VCMPPS       $0x06, 1984(CX), Y11, Y12
+	VANDPS       128(CX), Y9, Y11
+	VCMPPS       $0x11, 2176(CX), Y11, Y13
+	VPAND        Y12, Y13, Y14
+	VPSUBD       Y14, Y3, Y3
+	VCMPPS       $0x00, 2176(CX), Y11, Y14
+	VPSUBD       Y14, Y4, Y4
+	VMOVUPS      2112(CX), Y14
+	VBLENDVPS    Y13, 2048(CX), Y14, Y14
+	VANDPS       64(CX), Y9, Y11
+	VORPS        Y11, Y14, Y14
+	VCMPPS       $0x03, Y9, Y9, Y11
+	VPSUBD       Y11, Y5, Y5
+	VORPS        Y11, Y14, Y14
+	VBLENDVPS    Y12, Y14, Y10, Y10
+	VMOVAPS      Y10, Y9
+	ADDQ         $0x00000020, DX
+	ADDQ         $0x02, R8
+	CMPQ         R8, DI
+	JLT          term
+	VMOVUPS      640(CX), Y10
+	VPXOR        Y11, Y11, Y11
+	VPXOR        Y12, Y12, Y12
+	VFMADD231PS  Y11, Y6, Y12
+	VMULPS       Y10, Y6, Y6
+	VADDPS       Y11, Y6, Y6
+	VFMADD231PS  Y11, Y7, Y12
+	VMULPS       Y10, Y7, Y7
+	VADDPS       Y11, Y7, Y7
+	VFMADD231PS  Y11, Y8, Y12
+	VMULPS       Y10, Y8, Y8
+	VADDPS       Y11, Y8, Y8
+	VFMADD231PS  Y11, Y9, Y12
+	VMULPS       Y10, Y9, Y9
+	VADDPS       Y11, Y9, Y9
+	MOVQ         16(SP), DX
+	MOVQ         176(AX), BX
+	VMOVUPS      Y6, (DX)
+	LEAQ         (DX)(BX*4), DX
+	VMOVUPS      Y7, (DX)
+	LEAQ         (DX)(BX*4), DX
+	VMOVUPS      Y8, (DX)
+	LEAQ         (DX)(BX*4), DX
+	VMOVUPS      Y9, (DX)
+	LEAQ         (DX)(BX*4), DX
+	MOVQ         DX, 16(SP)
+	VCMPPS       $0x03, Y12, Y12, Y12
+	VMOVMSKPS    Y12, DX
+	TESTL        DX, DX
+	MOVQ         24(SP), DX
+	SETNE        (DX)
+	INCQ         24(SP)
+	DECQ         (SP)
+	JNZ          group
+	MOVQ         296(AX), AX
+	VMOVUPS      Y0, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, (AX)
+	VMOVUPS      Y1, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 8(AX)
+	VMOVUPS      Y2, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 16(AX)
+	VMOVUPS      Y3, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 24(AX)
+	VMOVUPS      Y4, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 32(AX)
+	VMOVUPS      Y5, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 40(AX)
+	VZEROUPPER
+	RET
+
 // func carefulFusedAVX2R2V1(t *Tile[float32])
 // Requires: AVX, AVX2, FMA3
 TEXT ·carefulFusedAVX2R2V1(SB), $72-8
@@ -8068,7 +8369,8 @@ term:
 	VCMPPS       $0x03, Y6, Y6, Y9
 	VPSUBD       Y9, Y5, Y5
 	VORPS        Y9, Y12, Y12
-	VBLENDVPS    Y10, Y12, Y8, Y6
+	VBLENDVPS    Y10, Y12, Y8, Y8
+	VMOVAPS      Y8, Y6
 	VBROADCASTSS 4(BX)(DI*4), Y8
 	VFMADD231PS  (DX), Y8, Y7
 	VMOVAPS      Y7, Y8
@@ -8091,7 +8393,8 @@ term:
 	VCMPPS       $0x03, Y7, Y7, Y9
 	VPSUBD       Y9, Y5, Y5
 	VORPS        Y9, Y12, Y12
-	VBLENDVPS    Y10, Y12, Y8, Y7
+	VBLENDVPS    Y10, Y12, Y8, Y8
+	VMOVAPS      Y8, Y7
 	ADDQ         $0x00000020, DX
 	ADDQ         $0x02, DI
 	CMPQ         DI, SI
@@ -8298,7 +8601,8 @@ term:
 	VCMPPS       $0x03, Y8, Y8, Y10
 	VPSUBD       Y10, Y2, Y2
 	VORPS        Y10, Y13, Y13
-	VBLENDVPS    Y11, Y13, Y9, Y8
+	VBLENDVPS    Y11, Y13, Y9, Y9
+	VMOVAPS      Y9, Y8
 	VADDPS       Y8, Y6, Y9
 	VSUBPS       Y6, Y9, Y10
 	VSUBPS       Y10, Y9, Y11
@@ -8334,7 +8638,8 @@ term:
 	VCMPPS       $0x03, Y6, Y6, Y9
 	VPSUBD       Y9, Y5, Y5
 	VORPS        Y9, Y12, Y12
-	VBLENDVPS    Y10, Y12, Y8, Y6
+	VBLENDVPS    Y10, Y12, Y8, Y8
+	VMOVAPS      Y8, Y6
 	VBROADCASTSS 4(BX)(DI*4), Y8
 	VMULPS       (DX), Y8, Y8
 	VMOVAPS      Y8, Y9
@@ -8353,7 +8658,8 @@ term:
 	VCMPPS       $0x03, Y8, Y8, Y10
 	VPSUBD       Y10, Y2, Y2
 	VORPS        Y10, Y13, Y13
-	VBLENDVPS    Y11, Y13, Y9, Y8
+	VBLENDVPS    Y11, Y13, Y9, Y9
+	VMOVAPS      Y9, Y8
 	VADDPS       Y8, Y7, Y9
 	VSUBPS       Y7, Y9, Y10
 	VSUBPS       Y10, Y9, Y11
@@ -8389,7 +8695,8 @@ term:
 	VCMPPS       $0x03, Y7, Y7, Y9
 	VPSUBD       Y9, Y5, Y5
 	VORPS        Y9, Y12, Y12
-	VBLENDVPS    Y10, Y12, Y8, Y7
+	VBLENDVPS    Y10, Y12, Y8, Y8
+	VMOVAPS      Y8, Y7
 	ADDQ         $0x00000020, DX
 	ADDQ         $0x02, DI
 	CMPQ         DI, SI
@@ -8536,9 +8843,402 @@ term:
 	VZEROUPPER
 	RET
 
-// func carefulRoundedAVX2R2V1(t *Tile[float32])
+// func carefulBothAVX2R4V1(t *Tile[float32])
 // Requires: AVX, AVX2, FMA3
-TEXT ·carefulRoundedAVX2R2V1(SB), $72-8
+TEXT ·carefulBothAVX2R4V1(SB), $72-8
+	MOVQ  t+0(FP), AX
+	MOVQ  240(AX), CX
+	MOVQ  8(AX), DX
+	MOVQ  DX, (SP)
+	MOVQ  120(AX), DX
+	MOVQ  DX, 8(SP)
+	MOVQ  152(AX), DX
+	MOVQ  DX, 16(SP)
+	MOVQ  216(AX), DX
+	MOVQ  DX, 24(SP)
+	MOVQ  16(AX), DX
+	MOVQ  DX, 32(SP)
+	VPXOR Y0, Y0, Y0
+	VPXOR Y1, Y1, Y1
+	VPXOR Y2, Y2, Y2
+	VPXOR Y3, Y3, Y3
+	VPXOR Y4, Y4, Y4
+	VPXOR Y5, Y5, Y5
+
+group:
+	MOVQ    8(SP), DX
+	MOVQ    144(AX), BX
+	VMOVUPS (DX), Y6
+	VMULPS  576(CX), Y6, Y6
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Y7
+	VMULPS  576(CX), Y7, Y7
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Y8
+	VMULPS  576(CX), Y8, Y8
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Y9
+	VMULPS  576(CX), Y9, Y9
+	LEAQ    (DX)(BX*4), DX
+	MOVQ    DX, 8(SP)
+	MOVQ    40(AX), DX
+	MOVQ    32(SP), BX
+	LEAQ    (BX)(DX*4), SI
+	LEAQ    (SI)(DX*4), DX
+	MOVQ    DX, 32(SP)
+	MOVQ    48(AX), DX
+	MOVQ    (AX), DI
+	ADDQ    DI, DI
+	XORQ    R8, R8
+
+term:
+	VBROADCASTSS (BX)(R8*4), Y10
+	VMULPS       (DX), Y10, Y10
+	VMOVAPS      Y10, Y11
+	VANDPS       (CX), Y10, Y12
+	VMAXPS       192(CX), Y12, Y12
+	VFMADD231PS  256(CX), Y12, Y11
+	VFNMADD231PS 256(CX), Y12, Y11
+	VANDPS       128(CX), Y11, Y12
+	VCMPPS       $0x06, 1792(CX), Y12, Y13
+	VANDPS       128(CX), Y10, Y12
+	VCMPPS       $0x11, 2176(CX), Y12, Y14
+	VPAND        Y13, Y14, Y15
+	VPSUBD       Y15, Y0, Y0
+	VCMPPS       $0x00, 2176(CX), Y12, Y15
+	VPSUBD       Y15, Y1, Y1
+	VMOVUPS      1920(CX), Y15
+	VBLENDVPS    Y14, 1856(CX), Y15, Y15
+	VANDPS       64(CX), Y10, Y12
+	VORPS        Y12, Y15, Y15
+	VCMPPS       $0x03, Y10, Y10, Y12
+	VPSUBD       Y12, Y2, Y2
+	VORPS        Y12, Y15, Y15
+	VBLENDVPS    Y13, Y15, Y11, Y11
+	VMOVAPS      Y11, Y10
+	VADDPS       Y10, Y6, Y6
+	VMOVAPS      Y6, Y10
+	VANDPS       (CX), Y6, Y11
+	VMAXPS       384(CX), Y11, Y11
+	VFMADD231PS  448(CX), Y11, Y10
+	VFNMADD231PS 448(CX), Y11, Y10
+	VANDPS       128(CX), Y10, Y11
+	VCMPPS       $0x06, 1984(CX), Y11, Y12
+	VANDPS       128(CX), Y6, Y11
+	VCMPPS       $0x11, 2176(CX), Y11, Y13
+	VPAND        Y12, Y13, Y14
+	VPSUBD       Y14, Y3, Y3
+	VCMPPS       $0x00, 2176(CX), Y11, Y14
+	VPSUBD       Y14, Y4, Y4
+	VMOVUPS      2112(CX), Y14
+	VBLENDVPS    Y13, 2048(CX), Y14, Y14
+	VANDPS       64(CX), Y6, Y11
+	VORPS        Y11, Y14, Y14
+	VCMPPS       $0x03, Y6, Y6, Y11
+	VPSUBD       Y11, Y5, Y5
+	VORPS        Y11, Y14, Y14
+	VBLENDVPS    Y12, Y14, Y10, Y10
+	VMOVAPS      Y10, Y6
+	VBROADCASTSS 4(BX)(R8*4), Y10
+	VMULPS       (DX), Y10, Y10
+	VMOVAPS      Y10, Y11
+	VANDPS       (CX), Y10, Y12
+	VMAXPS       192(CX), Y12, Y12
+	VFMADD231PS  256(CX), Y12, Y11
+	VFNMADD231PS 256(CX), Y12, Y11
+	VANDPS       128(CX), Y11, Y12
+	VCMPPS       $0x06, 1792(CX), Y12, Y13
+	VANDPS       128(CX), Y10, Y12
+	VCMPPS       $0x11, 2176(CX), Y12, Y14
+	VPAND        Y13, Y14, Y15
+	VPSUBD       Y15, Y0, Y0
+	VCMPPS       $0x00, 2176(CX), Y12, Y15
+	VPSUBD       Y15, Y1, Y1
+	VMOVUPS      1920(CX), Y15
+	VBLENDVPS    Y14, 1856(CX), Y15, Y15
+	VANDPS       64(CX), Y10, Y12
+	VORPS        Y12, Y15, Y15
+	VCMPPS       $0x03, Y10, Y10, Y12
+	VPSUBD       Y12, Y2, Y2
+	VORPS        Y12, Y15, Y15
+	VBLENDVPS    Y13, Y15, Y11, Y11
+	VMOVAPS      Y11, Y10
+	VADDPS       Y10, Y7, Y7
+	VMOVAPS      Y7, Y10
+	VANDPS       (CX), Y7, Y11
+	VMAXPS       384(CX), Y11, Y11
+	VFMADD231PS  448(CX), Y11, Y10
+	VFNMADD231PS 448(CX), Y11, Y10
+	VANDPS       128(CX), Y10, Y11
+	VCMPPS       $0x06, 1984(CX), Y11, Y12
+	VANDPS       128(CX), Y7, Y11
+	VCMPPS       $0x11, 2176(CX), Y11, Y13
+	VPAND        Y12, Y13, Y14
+	VPSUBD       Y14, Y3, Y3
+	VCMPPS       $0x00, 2176(CX), Y11, Y14
+	VPSUBD       Y14, Y4, Y4
+	VMOVUPS      2112(CX), Y14
+	VBLENDVPS    Y13, 2048(CX), Y14, Y14
+	VANDPS       64(CX), Y7, Y11
+	VORPS        Y11, Y14, Y14
+	VCMPPS       $0x03, Y7, Y7, Y11
+	VPSUBD       Y11, Y5, Y5
+	VORPS        Y11, Y14, Y14
+	VBLENDVPS    Y12, Y14, Y10, Y10
+	VMOVAPS      Y10, Y7
+	VBROADCASTSS (SI)(R8*4), Y10
+	VMULPS       (DX), Y10, Y10
+	VMOVAPS      Y10, Y11
+	VANDPS       (CX), Y10, Y12
+	VMAXPS       192(CX), Y12, Y12
+	VFMADD231PS  256(CX), Y12, Y11
+	VFNMADD231PS 256(CX), Y12, Y11
+	VANDPS       128(CX), Y11, Y12
+	VCMPPS       $0x06, 1792(CX), Y12, Y13
+	VANDPS       128(CX), Y10, Y12
+	VCMPPS       $0x11, 2176(CX), Y12, Y14
+	VPAND        Y13, Y14, Y15
+	VPSUBD       Y15, Y0, Y0
+	VCMPPS       $0x00, 2176(CX), Y12, Y15
+	VPSUBD       Y15, Y1, Y1
+	VMOVUPS      1920(CX), Y15
+	VBLENDVPS    Y14, 1856(CX), Y15, Y15
+	VANDPS       64(CX), Y10, Y12
+	VORPS        Y12, Y15, Y15
+	VCMPPS       $0x03, Y10, Y10, Y12
+	VPSUBD       Y12, Y2, Y2
+	VORPS        Y12, Y15, Y15
+	VBLENDVPS    Y13, Y15, Y11, Y11
+	VMOVAPS      Y11, Y10
+	VADDPS       Y10, Y8, Y8
+	VMOVAPS      Y8, Y10
+	VANDPS       (CX), Y8, Y11
+	VMAXPS       384(CX), Y11, Y11
+	VFMADD231PS  448(CX), Y11, Y10
+	VFNMADD231PS 448(CX), Y11, Y10
+	VANDPS       128(CX), Y10, Y11
+	VCMPPS       $0x06, 1984(CX), Y11, Y12
+	VANDPS       128(CX), Y8, Y11
+	VCMPPS       $0x11, 2176(CX), Y11, Y13
+	VPAND        Y12, Y13, Y14
+	VPSUBD       Y14, Y3, Y3
+	VCMPPS       $0x00, 2176(CX), Y11, Y14
+	VPSUBD       Y14, Y4, Y4
+	VMOVUPS      2112(CX), Y14
+	VBLENDVPS    Y13, 2048(CX), Y14, Y14
+	VANDPS       64(CX), Y8, Y11
+	VORPS        Y11, Y14, Y14
+	VCMPPS       $0x03, Y8, Y8, Y11
+	VPSUBD       Y11, Y5, Y5
+	VORPS        Y11, Y14, Y14
+	VBLENDVPS    Y12, Y14, Y10, Y10
+	VMOVAPS      Y10, Y8
+	VBROADCASTSS 4(SI)(R8*4), Y10
+	VMULPS       (DX), Y10, Y10
+	VMOVAPS      Y10, Y11
+	VANDPS       (CX), Y10, Y12
+	VMAXPS       192(CX), Y12, Y12
+	VFMADD231PS  256(CX), Y12, Y11
+	VFNMADD231PS 256(CX), Y12, Y11
+	VANDPS       128(CX), Y11, Y12
+	VCMPPS       $0x06, 1792(CX), Y12, Y13
+	VANDPS       128(CX), Y10, Y12
+	VCMPPS       $0x11, 2176(CX), Y12, Y14
+	VPAND        Y13, Y14, Y15
+	VPSUBD       Y15, Y0, Y0
+	VCMPPS       $0x00, 2176(CX), Y12, Y15
+	VPSUBD       Y15, Y1, Y1
+	VMOVUPS      1920(CX), Y15
+	VBLENDVPS    Y14, 1856(CX), Y15, Y15
+	VANDPS       64(CX), Y10, Y12
+	VORPS        Y12, Y15, Y15
+	VCMPPS       $0x03, Y10, Y10, Y12
+	VPSUBD       Y12, Y2, Y2
+	VORPS        Y12, Y15, Y15
+	VBLENDVPS    Y13, Y15, Y11, Y11
+	VMOVAPS      Y11, Y10
+	VADDPS       Y10, Y9, Y9
+	VMOVAPS      Y9, Y10
+	VANDPS       (CX), Y9, Y11
+	VMAXPS       384(CX), Y11, Y11
+	VFMADD231PS  448(CX), Y11, Y10
+	VFNMADD231PS 448(CX), Y11, Y10
+	VANDPS       128(CX), Y10, Y11
+	VCMPPS       $0x06, 1984(CX), Y11, Y12
+	VANDPS       128(CX), Y9, Y11
+	VCMPPS       $0x11, 2176(CX), Y11, Y13
+	VPAND        Y12, Y13, Y14
+	VPSUBD       Y14, Y3, Y3
+	VCMPPS       $0x00, 2176(CX), Y11, Y14
+	VPSUBD       Y14, Y4, Y4
+	VMOVUPS      2112(CX), Y14
+	VBLENDVPS    Y13, 2048(CX), Y14, Y14
+	VANDPS       64(CX), Y9, Y11
+	VORPS        Y11, Y14, Y14
+	VCMPPS       $0x03, Y9, Y9, Y11
+	VPSUBD       Y11, Y5, Y5
+	VORPS        Y11, Y14, Y14
+	VBLENDVPS    Y12, Y14, Y10, Y10
+	VMOVAPS      Y10, Y9
+	ADDQ         $0x00000020, DX
+	ADDQ         $0x02, R8
+	CMPQ         R8, DI
+	JLT          term
+	VMOVUPS      640(CX), Y10
+	VPXOR        Y11, Y11, Y11
+	VPXOR        Y12, Y12, Y12
+	VFMADD231PS  Y11, Y6, Y12
+	VMULPS       Y10, Y6, Y6
+	VADDPS       Y11, Y6, Y6
+	VFMADD231PS  Y11, Y7, Y12
+	VMULPS       Y10, Y7, Y7
+	VADDPS       Y11, Y7, Y7
+	VFMADD231PS  Y11, Y8, Y12
+	VMULPS       Y10, Y8, Y8
+	VADDPS       Y11, Y8, Y8
+	VFMADD231PS  Y11, Y9, Y12
+	VMULPS       Y10, Y9, Y9
+	VADDPS       Y11, Y9, Y9
+	MOVQ         16(SP), DX
+	MOVQ         176(AX), BX
+	VMOVUPS      Y6, (DX)
+	LEAQ         (DX)(BX*4), DX
+	VMOVUPS      Y7, (DX)
+	LEAQ         (DX)(BX*4), DX
+	VMOVUPS      Y8, (DX)
+	LEAQ         (DX)(BX*4), DX
+	VMOVUPS      Y9, (DX)
+	LEAQ         (DX)(BX*4), DX
+	MOVQ         DX, 16(SP)
+	VCMPPS       $0x03, Y12, Y12, Y12
+	VMOVMSKPS    Y12, DX
+	TESTL        DX, DX
+	MOVQ         24(SP), DX
+	SETNE        (DX)
+	INCQ         24(SP)
+	DECQ         (SP)
+	JNZ          group
+	MOVQ         296(AX), AX
+	VMOVUPS      Y0, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, (AX)
+	VMOVUPS      Y1, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 8(AX)
+	VMOVUPS      Y2, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 16(AX)
+	VMOVUPS      Y3, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 24(AX)
+	VMOVUPS      Y4, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 32(AX)
+	VMOVUPS      Y5, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 40(AX)
+	VZEROUPPER
+	RET
+
+// func carefulBothAVX2R2V1(t *Tile[float32])
+// Requires: AVX, AVX2, FMA3
+TEXT ·carefulBothAVX2R2V1(SB), $72-8
 	MOVQ  t+0(FP), AX
 	MOVQ  240(AX), CX
 	MOVQ  8(AX), DX
@@ -8600,7 +9300,290 @@ term:
 	VCMPPS       $0x03, Y8, Y8, Y10
 	VPSUBD       Y10, Y2, Y2
 	VORPS        Y10, Y13, Y13
-	VBLENDVPS    Y11, Y13, Y9, Y8
+	VBLENDVPS    Y11, Y13, Y9, Y9
+	VMOVAPS      Y9, Y8
+	VADDPS       Y8, Y6, Y6
+	VMOVAPS      Y6, Y8
+	VANDPS       (CX), Y6, Y9
+	VMAXPS       384(CX), Y9, Y9
+	VFMADD231PS  448(CX), Y9, Y8
+	VFNMADD231PS 448(CX), Y9, Y8
+	VANDPS       128(CX), Y8, Y9
+	VCMPPS       $0x06, 1984(CX), Y9, Y10
+	VANDPS       128(CX), Y6, Y9
+	VCMPPS       $0x11, 2176(CX), Y9, Y11
+	VPAND        Y10, Y11, Y12
+	VPSUBD       Y12, Y3, Y3
+	VCMPPS       $0x00, 2176(CX), Y9, Y12
+	VPSUBD       Y12, Y4, Y4
+	VMOVUPS      2112(CX), Y12
+	VBLENDVPS    Y11, 2048(CX), Y12, Y12
+	VANDPS       64(CX), Y6, Y9
+	VORPS        Y9, Y12, Y12
+	VCMPPS       $0x03, Y6, Y6, Y9
+	VPSUBD       Y9, Y5, Y5
+	VORPS        Y9, Y12, Y12
+	VBLENDVPS    Y10, Y12, Y8, Y8
+	VMOVAPS      Y8, Y6
+	VBROADCASTSS 4(BX)(DI*4), Y8
+	VMULPS       (DX), Y8, Y8
+	VMOVAPS      Y8, Y9
+	VANDPS       (CX), Y8, Y10
+	VMAXPS       192(CX), Y10, Y10
+	VFMADD231PS  256(CX), Y10, Y9
+	VFNMADD231PS 256(CX), Y10, Y9
+	VANDPS       128(CX), Y9, Y10
+	VCMPPS       $0x06, 1792(CX), Y10, Y11
+	VANDPS       128(CX), Y8, Y10
+	VCMPPS       $0x11, 2176(CX), Y10, Y12
+	VPAND        Y11, Y12, Y13
+	VPSUBD       Y13, Y0, Y0
+	VCMPPS       $0x00, 2176(CX), Y10, Y13
+	VPSUBD       Y13, Y1, Y1
+	VMOVUPS      1920(CX), Y13
+	VBLENDVPS    Y12, 1856(CX), Y13, Y13
+	VANDPS       64(CX), Y8, Y10
+	VORPS        Y10, Y13, Y13
+	VCMPPS       $0x03, Y8, Y8, Y10
+	VPSUBD       Y10, Y2, Y2
+	VORPS        Y10, Y13, Y13
+	VBLENDVPS    Y11, Y13, Y9, Y9
+	VMOVAPS      Y9, Y8
+	VADDPS       Y8, Y7, Y7
+	VMOVAPS      Y7, Y8
+	VANDPS       (CX), Y7, Y9
+	VMAXPS       384(CX), Y9, Y9
+	VFMADD231PS  448(CX), Y9, Y8
+	VFNMADD231PS 448(CX), Y9, Y8
+	VANDPS       128(CX), Y8, Y9
+	VCMPPS       $0x06, 1984(CX), Y9, Y10
+	VANDPS       128(CX), Y7, Y9
+	VCMPPS       $0x11, 2176(CX), Y9, Y11
+	VPAND        Y10, Y11, Y12
+	VPSUBD       Y12, Y3, Y3
+	VCMPPS       $0x00, 2176(CX), Y9, Y12
+	VPSUBD       Y12, Y4, Y4
+	VMOVUPS      2112(CX), Y12
+	VBLENDVPS    Y11, 2048(CX), Y12, Y12
+	VANDPS       64(CX), Y7, Y9
+	VORPS        Y9, Y12, Y12
+	VCMPPS       $0x03, Y7, Y7, Y9
+	VPSUBD       Y9, Y5, Y5
+	VORPS        Y9, Y12, Y12
+	VBLENDVPS    Y10, Y12, Y8, Y8
+	VMOVAPS      Y8, Y7
+	ADDQ         $0x00000020, DX
+	ADDQ         $0x02, DI
+	CMPQ         DI, SI
+	JLT          term
+	VMOVUPS      640(CX), Y8
+	VPXOR        Y9, Y9, Y9
+	VPXOR        Y10, Y10, Y10
+	VFMADD231PS  Y9, Y6, Y10
+	VMULPS       Y8, Y6, Y6
+	VADDPS       Y9, Y6, Y6
+	VFMADD231PS  Y9, Y7, Y10
+	VMULPS       Y8, Y7, Y7
+	VADDPS       Y9, Y7, Y7
+	MOVQ         16(SP), DX
+	MOVQ         176(AX), BX
+	VMOVUPS      Y6, (DX)
+	LEAQ         (DX)(BX*4), DX
+	VMOVUPS      Y7, (DX)
+	LEAQ         (DX)(BX*4), DX
+	MOVQ         DX, 16(SP)
+	VCMPPS       $0x03, Y10, Y10, Y10
+	VMOVMSKPS    Y10, DX
+	TESTL        DX, DX
+	MOVQ         24(SP), DX
+	SETNE        (DX)
+	INCQ         24(SP)
+	DECQ         (SP)
+	JNZ          group
+	MOVQ         296(AX), AX
+	VMOVUPS      Y0, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, (AX)
+	VMOVUPS      Y1, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 8(AX)
+	VMOVUPS      Y2, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 16(AX)
+	VMOVUPS      Y3, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 24(AX)
+	VMOVUPS      Y4, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 32(AX)
+	VMOVUPS      Y5, 40(SP)
+	XORQ         CX, CX
+	MOVL         40(SP), DX
+	ADDQ         DX, CX
+	MOVL         44(SP), DX
+	ADDQ         DX, CX
+	MOVL         48(SP), DX
+	ADDQ         DX, CX
+	MOVL         52(SP), DX
+	ADDQ         DX, CX
+	MOVL         56(SP), DX
+	ADDQ         DX, CX
+	MOVL         60(SP), DX
+	ADDQ         DX, CX
+	MOVL         64(SP), DX
+	ADDQ         DX, CX
+	MOVL         68(SP), DX
+	ADDQ         DX, CX
+	ADDQ         CX, 40(AX)
+	VZEROUPPER
+	RET
+
+// func carefulOddAVX2R2V1(t *Tile[float32])
+// Requires: AVX, AVX2, FMA3
+TEXT ·carefulOddAVX2R2V1(SB), $72-8
+	MOVQ  t+0(FP), AX
+	MOVQ  240(AX), CX
+	MOVQ  8(AX), DX
+	MOVQ  DX, (SP)
+	MOVQ  120(AX), DX
+	MOVQ  DX, 8(SP)
+	MOVQ  152(AX), DX
+	MOVQ  DX, 16(SP)
+	MOVQ  216(AX), DX
+	MOVQ  DX, 24(SP)
+	MOVQ  16(AX), DX
+	MOVQ  DX, 32(SP)
+	VPXOR Y0, Y0, Y0
+	VPXOR Y1, Y1, Y1
+	VPXOR Y2, Y2, Y2
+	VPXOR Y3, Y3, Y3
+	VPXOR Y4, Y4, Y4
+	VPXOR Y5, Y5, Y5
+
+group:
+	MOVQ    8(SP), DX
+	MOVQ    144(AX), BX
+	VMOVUPS (DX), Y6
+	VMULPS  576(CX), Y6, Y6
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Y7
+	VMULPS  576(CX), Y7, Y7
+	LEAQ    (DX)(BX*4), DX
+	MOVQ    DX, 8(SP)
+	MOVQ    40(AX), DX
+	MOVQ    32(SP), BX
+	LEAQ    (BX)(DX*4), DX
+	MOVQ    DX, 32(SP)
+	MOVQ    48(AX), DX
+	MOVQ    (AX), SI
+	ADDQ    SI, SI
+	XORQ    DI, DI
+
+term:
+	VBROADCASTSS (BX)(DI*4), Y8
+	VMULPS       (DX), Y8, Y8
+	VMOVAPS      Y8, Y9
+	VANDPS       (CX), Y8, Y10
+	VMAXPS       192(CX), Y10, Y10
+	VFMADD231PS  256(CX), Y10, Y9
+	VFNMADD231PS 256(CX), Y10, Y9
+	VANDPS       128(CX), Y9, Y10
+	VCMPPS       $0x06, 1792(CX), Y10, Y11
+	VANDPS       128(CX), Y8, Y10
+	VCMPPS       $0x11, 2176(CX), Y10, Y12
+	VPAND        Y11, Y12, Y13
+	VPSUBD       Y13, Y0, Y0
+	VCMPPS       $0x00, 2176(CX), Y10, Y13
+	VPSUBD       Y13, Y1, Y1
+	VMOVUPS      1920(CX), Y13
+	VBLENDVPS    Y12, 1856(CX), Y13, Y13
+	VANDPS       64(CX), Y8, Y10
+	VORPS        Y10, Y13, Y13
+	VCMPPS       $0x03, Y8, Y8, Y10
+	VPSUBD       Y10, Y2, Y2
+	VORPS        Y10, Y13, Y13
+	VBLENDVPS    Y11, Y13, Y9, Y9
+	VMOVAPS      Y9, Y8
 	VADDPS       Y8, Y6, Y9
 	VSUBPS       Y6, Y9, Y10
 	VSUBPS       Y10, Y9, Y11
@@ -8636,7 +9619,8 @@ term:
 	VCMPPS       $0x03, Y6, Y6, Y9
 	VPSUBD       Y9, Y5, Y5
 	VORPS        Y9, Y12, Y12
-	VBLENDVPS    Y10, Y12, Y8, Y6
+	VBLENDVPS    Y10, Y12, Y8, Y8
+	VMOVAPS      Y8, Y6
 	VBROADCASTSS 4(BX)(DI*4), Y8
 	VMULPS       (DX), Y8, Y8
 	VMOVAPS      Y8, Y9
@@ -8659,7 +9643,8 @@ term:
 	VCMPPS       $0x03, Y8, Y8, Y10
 	VPSUBD       Y10, Y2, Y2
 	VORPS        Y10, Y13, Y13
-	VBLENDVPS    Y11, Y13, Y9, Y8
+	VBLENDVPS    Y11, Y13, Y9, Y9
+	VMOVAPS      Y9, Y8
 	VADDPS       Y8, Y7, Y9
 	VSUBPS       Y7, Y9, Y10
 	VSUBPS       Y10, Y9, Y11
@@ -8695,7 +9680,8 @@ term:
 	VCMPPS       $0x03, Y7, Y7, Y9
 	VPSUBD       Y9, Y5, Y5
 	VORPS        Y9, Y12, Y12
-	VBLENDVPS    Y10, Y12, Y8, Y7
+	VBLENDVPS    Y10, Y12, Y8, Y8
+	VMOVAPS      Y8, Y7
 	ADDQ         $0x00000020, DX
 	ADDQ         $0x02, DI
 	CMPQ         DI, SI

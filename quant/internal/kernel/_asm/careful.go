@@ -38,9 +38,11 @@ const (
 	isLessOrdered = 17
 )
 
-// roundCarefully rounds x, replaces what is beyond, and counts.
+// roundCarefully rounds x, and replaces and counts what is beyond the range or not a
+// number. There is no branch around that: in sums that saturate now and then it would
+// be mispredicted, at three times the cost.
 func (g *tile) roundCarefully(x reg.Register, c care) chain {
-	y, e := g.reg(), g.reg()
+	y, e, size := g.reg(), g.reg(), g.reg()
 	round := chain{func() { g.VMOVAPS(x, y) }}
 	if c.rounds {
 		round = append(round,
@@ -50,20 +52,25 @@ func (g *tile) roundCarefully(x reg.Register, c care) chain {
 			func() { g.fnma(y, e, g.constant(c.grow)) },
 		)
 	}
+	replace := g.replace
 	if g.zmm {
-		return join(round, g.replaceMasked(x, y, c))
+		replace = g.replaceMasked
 	}
-	return join(round, g.replace(x, y, c))
+	return join(round,
+		chain{func() { g.and(size, y, g.constant("MagnitudeMask")) }},
+		replace(x, y, size, c),
+		chain{
+			func() { g.VMOVAPS(y, x) },
+		})
 }
 
-// replace: x = y, or what the policy puts in its place, for AVX2.
-func (g *tile) replace(x, y reg.Register, c care) chain {
-	size, beyond, finite, m := g.reg(), g.reg(), g.reg(), g.reg()
+// replace: y = what the policy puts in its place where size, |y|, is beyond, for AVX2.
+func (g *tile) replace(x, y, size reg.Register, c care) chain {
+	beyond, finite, m := g.reg(), g.reg(), g.reg()
 	compare := func(predicate uint64, a reg.Register, b operand.Op, m reg.Register) {
 		g.VCMPPS(operand.Imm(predicate), b, a, m)
 	}
 	return chain{
-		func() { g.and(size, y, g.constant("MagnitudeMask")) },
 		func() { compare(isNotAtMost, size, g.constant(c.max), beyond) },
 		func() { g.and(size, x, g.constant("MagnitudeMask")) },
 		func() { compare(isLessOrdered, size, g.constant("Infinity"), finite) },
@@ -78,19 +85,18 @@ func (g *tile) replace(x, y reg.Register, c care) chain {
 		func() { compare(isUnordered, x, x, size) },
 		func() { g.subInt(g.events[c.counter+2], g.events[c.counter+2], size) },
 		func() { g.or(m, m, size) }, // all ones are a NaN
-		func() { g.VBLENDVPS(beyond, m, y, x) },
+		func() { g.VBLENDVPS(beyond, m, y, y) },
 	}
 }
 
 // replaceMasked is replace for AVX-512.
-func (g *tile) replaceMasked(x, y reg.Register, c care) chain {
-	size, m := g.reg(), g.reg()
+func (g *tile) replaceMasked(x, y, size reg.Register, c care) chain {
+	m := g.reg()
 	beyond, finite, k := g.K(), g.K(), g.K()
 	count := func(n int) {
 		g.VPADDD(g.constant("Ones"), g.events[c.counter+n], k, g.events[c.counter+n])
 	}
 	return chain{
-		func() { g.and(size, y, g.constant("MagnitudeMask")) },
 		func() { g.VCMPPS(operand.Imm(isNotAtMost), g.constant(c.max), size, beyond) },
 		func() { g.and(size, x, g.constant("MagnitudeMask")) },
 		func() { g.VCMPPS(operand.Imm(isLessOrdered), g.constant("Infinity"), size, finite) },
@@ -105,13 +111,13 @@ func (g *tile) replaceMasked(x, y reg.Register, c care) chain {
 		func() { g.VCMPPS(operand.Imm(isUnordered), x, x, k) },
 		func() { count(2) },
 		func() { g.VMOVAPS(x, k, m) },
-		func() { g.VMOVAPS(y, x) },
-		func() { g.VMOVAPS(m, beyond, x) },
+		func() { g.VMOVAPS(m, beyond, y) },
 	}
 }
 
-// plusCarefully: sum += p, to nearest, or to odd where OddMask says so, see plusOdd.
-func (g *tile) plusCarefully(sum, p reg.Register) chain {
+// plusOddCarefully: sum += p, to nearest, or to odd where OddMask says so, see plusOdd,
+// whose directed form has no such choice.
+func (g *tile) plusOddCarefully(sum, p reg.Register) chain {
 	x, w, e, odd := g.reg(), g.reg(), g.reg(), g.reg()
 	const notEqual = 12
 	return chain{
