@@ -41,10 +41,7 @@ func (m *Multiplier) setCareful() {
 			k.mode = carefulFused
 		}
 	case a.Product == RoundedProduct:
-		k.mode = carefulBoth
-		if !a.Sum.Through && a.Grid.Fraction > a.Sum.Grid.Fraction { // see chooseNearest
-			k.mode = carefulOdd
-		}
+		k.mode = carefulRounded
 		c.product(single, a.Grid, 0, 0)
 		c.Max, c.Over = single.bits(a.Grid.Max), single.bits(a.ProductPolicy.Over)
 	}

@@ -24,8 +24,7 @@ const (
 	stochasticProductCare
 	carefulFused
 	carefulProduct
-	carefulBoth
-	carefulOdd
+	carefulRounded
 	singleModes
 )
 

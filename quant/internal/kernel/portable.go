@@ -59,7 +59,7 @@ var Portable = &Set{
 		productThrough: termProductThrough, odd: termOdd, oddRounded: termOddRounded, stochastic: termStochastic,
 		stochasticFused: termStochasticFused, stochasticCare: termStochasticCare,
 		stochasticProductCare: termStochasticProductCare,
-		carefulFused:          termCarefulFused, carefulProduct: termCarefulProduct, carefulBoth: termCarefulBoth, carefulOdd: termCarefulOdd,
+		carefulFused:          termCarefulFused, carefulProduct: termCarefulProduct, carefulRounded: termCarefulRounded,
 	})},
 	double: family[float64]{width: portableWidth, narrow: portableNarrow, tiles: portableTiles([]term[float64]{
 		baseline64: termBaseline[float64], fmaChain64: termFmaChain64, fused: termFused, fusedFree: termFusedFree,

@@ -58,17 +58,8 @@ func termCarefulProduct(c *numbers[float32], s, b []float32, _ []uint32, a float
 	}
 }
 
-// termCarefulBoth: s = R(binary32(s + P(a b))).
-func termCarefulBoth(c *numbers[float32], s, b []float32, _ []uint32, a float32, _ uint32) {
-	for j, v := range b {
-		p := float32(a * v)
-		x := s[j] + c.terms32.replace(p, near32(p, c.least, c.grow))
-		s[j] = c.sums32.replace(x, near32(x, c.sumLeast, c.sumGrow))
-	}
-}
-
-// termCarefulOdd: s = R(s + P(a b)).
-func termCarefulOdd(c *numbers[float32], s, b []float32, _ []uint32, a float32, _ uint32) {
+// termCarefulRounded: s = R(s + P(a b)).
+func termCarefulRounded(c *numbers[float32], s, b []float32, _ []uint32, a float32, _ uint32) {
 	for j, v := range b {
 		p := float32(a * v)
 		x := c.plusCarefully(s[j], c.terms32.replace(p, near32(p, c.least, c.grow)))

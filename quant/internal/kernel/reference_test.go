@@ -201,7 +201,6 @@ var arithmetics = []Arithmetic{
 	in(RoundedProduct, bf16, nearestSum(fp16)),
 	in(RoundedProduct, fp16, throughSum(bf16)),
 	in(RoundedProduct, fp16, nearestSum(bf16)),
-	in(RoundedProduct, fp16, nearestSum(e5m2)),
 	in(RoundedProduct, e6m9, throughSum(e6m9)),
 	in(ExactProduct, Grid{}, throughSum(fp16)),
 	in(ExactProduct, Grid{}, throughSum(bf16)),

@@ -103,10 +103,9 @@ func init() {
 	tilesAVX232[productThrough] = [2][]shape[float32]{{{4, productThroughAVX2R4V3}, {2, productThroughAVX2R2V3}}, {{8, productThroughAVX2R8V1}, {2, productThroughAVX2R2V1}}}
 	tilesAVX232[odd] = [2][]shape[float32]{{{2, oddAVX2R2V3}}, {{8, oddAVX2R8V1}, {2, oddAVX2R2V1}}}
 	tilesAVX232[oddRounded] = [2][]shape[float32]{{{2, oddRoundedAVX2R2V3}}, {{8, oddRoundedAVX2R8V1}, {2, oddRoundedAVX2R2V1}}}
-	tilesAVX232[carefulFused] = [2][]shape[float32]{{}, {{4, carefulFusedAVX2R4V1}, {2, carefulFusedAVX2R2V1}}}
+	tilesAVX232[carefulFused] = [2][]shape[float32]{{}, {{2, carefulFusedAVX2R2V1}}}
 	tilesAVX232[carefulProduct] = [2][]shape[float32]{{}, {{2, carefulProductAVX2R2V1}}}
-	tilesAVX232[carefulBoth] = [2][]shape[float32]{{}, {{4, carefulBothAVX2R4V1}, {2, carefulBothAVX2R2V1}}}
-	tilesAVX232[carefulOdd] = [2][]shape[float32]{{}, {{2, carefulOddAVX2R2V1}}}
+	tilesAVX232[carefulRounded] = [2][]shape[float32]{{}, {{2, carefulRoundedAVX2R2V1}}}
 	tilesAVX232[stochastic] = [2][]shape[float32]{{{2, stochasticAVX2R2V3}}, {{8, stochasticAVX2R8V1}, {2, stochasticAVX2R2V1}}}
 	tilesAVX232[stochasticFused] = [2][]shape[float32]{{{2, stochasticFusedAVX2R2V3}}, {{8, stochasticFusedAVX2R8V1}, {2, stochasticFusedAVX2R2V1}}}
 	tilesAVX232[stochasticCare] = [2][]shape[float32]{{{2, stochasticCareAVX2R2V3}}, {{8, stochasticCareAVX2R8V1}, {2, stochasticCareAVX2R2V1}}}
@@ -130,10 +129,9 @@ func init() {
 	tilesAVX51232[productThrough] = [2][]shape[float32]{{{8, productThroughAVX512R8V2}, {4, productThroughAVX512R4V2}, {2, productThroughAVX512R2V2}}, {{8, productThroughAVX512R8V1}, {2, productThroughAVX512R2V1}}}
 	tilesAVX51232[odd] = [2][]shape[float32]{{{8, oddAVX512R8V2}, {4, oddAVX512R4V2}, {2, oddAVX512R2V2}}, {{8, oddAVX512R8V1}, {2, oddAVX512R2V1}}}
 	tilesAVX51232[oddRounded] = [2][]shape[float32]{{{4, oddRoundedAVX512R4V2}, {2, oddRoundedAVX512R2V2}}, {{8, oddRoundedAVX512R8V1}, {2, oddRoundedAVX512R2V1}}}
-	tilesAVX51232[carefulFused] = [2][]shape[float32]{{}, {{8, carefulFusedAVX512R8V1}, {2, carefulFusedAVX512R2V1}}}
+	tilesAVX51232[carefulFused] = [2][]shape[float32]{{}, {{4, carefulFusedAVX512R4V1}, {2, carefulFusedAVX512R2V1}}}
 	tilesAVX51232[carefulProduct] = [2][]shape[float32]{{}, {{4, carefulProductAVX512R4V1}, {2, carefulProductAVX512R2V1}}}
-	tilesAVX51232[carefulBoth] = [2][]shape[float32]{{}, {{8, carefulBothAVX512R8V1}, {2, carefulBothAVX512R2V1}}}
-	tilesAVX51232[carefulOdd] = [2][]shape[float32]{{}, {{4, carefulOddAVX512R4V1}, {2, carefulOddAVX512R2V1}}}
+	tilesAVX51232[carefulRounded] = [2][]shape[float32]{{}, {{4, carefulRoundedAVX512R4V1}, {2, carefulRoundedAVX512R2V1}}}
 	tilesAVX51232[stochastic] = [2][]shape[float32]{{{4, stochasticAVX512R4V2}, {2, stochasticAVX512R2V2}}, {{8, stochasticAVX512R8V1}, {2, stochasticAVX512R2V1}}}
 	tilesAVX51232[stochasticFused] = [2][]shape[float32]{{{8, stochasticFusedAVX512R8V2}, {4, stochasticFusedAVX512R4V2}, {2, stochasticFusedAVX512R2V2}}, {{8, stochasticFusedAVX512R8V1}, {2, stochasticFusedAVX512R2V1}}}
 	tilesAVX51232[stochasticCare] = [2][]shape[float32]{{{4, stochasticCareAVX512R4V2}, {2, stochasticCareAVX512R2V2}}, {{8, stochasticCareAVX512R8V1}, {2, stochasticCareAVX512R2V1}}}

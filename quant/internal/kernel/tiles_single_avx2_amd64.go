@@ -250,12 +250,6 @@ func oddRoundedAVX2R8V1(t *Tile[float32])
 //go:noescape
 func oddRoundedAVX2R2V1(t *Tile[float32])
 
-// carefulFusedAVX2R4V1 is the loop s = R(binary32(s + a b)), R nearest-even with its overflow, events counted.
-// It keeps a tile of 4 x 8 sums in registers.
-//
-//go:noescape
-func carefulFusedAVX2R4V1(t *Tile[float32])
-
 // carefulFusedAVX2R2V1 is the loop s = R(binary32(s + a b)), R nearest-even with its overflow, events counted.
 // It keeps a tile of 2 x 8 sums in registers.
 //
@@ -268,23 +262,11 @@ func carefulFusedAVX2R2V1(t *Tile[float32])
 //go:noescape
 func carefulProductAVX2R2V1(t *Tile[float32])
 
-// carefulBothAVX2R4V1 is the loop s = R(binary32(s + P(a b))), P and R nearest-even with their overflow, events counted.
-// It keeps a tile of 4 x 8 sums in registers.
-//
-//go:noescape
-func carefulBothAVX2R4V1(t *Tile[float32])
-
-// carefulBothAVX2R2V1 is the loop s = R(binary32(s + P(a b))), P and R nearest-even with their overflow, events counted.
+// carefulRoundedAVX2R2V1 is the loop s = R(s + P(a b)), P and R nearest-even with their overflow, events counted.
 // It keeps a tile of 2 x 8 sums in registers.
 //
 //go:noescape
-func carefulBothAVX2R2V1(t *Tile[float32])
-
-// carefulOddAVX2R2V1 is the loop s = R(s + P(a b)), P and R nearest-even with their overflow, events counted.
-// It keeps a tile of 2 x 8 sums in registers.
-//
-//go:noescape
-func carefulOddAVX2R2V1(t *Tile[float32])
+func carefulRoundedAVX2R2V1(t *Tile[float32])
 
 // stochasticAVX2R2V3 is the loop s = S(binary32(s + R(a b))), R nearest-even, S stochastic without subnormals, terms ascending.
 // It keeps a tile of 2 x 24 sums in registers.

@@ -328,11 +328,11 @@ func oddRoundedAVX512R8V1(t *Tile[float32])
 //go:noescape
 func oddRoundedAVX512R2V1(t *Tile[float32])
 
-// carefulFusedAVX512R8V1 is the loop s = R(binary32(s + a b)), R nearest-even with its overflow, events counted.
-// It keeps a tile of 8 x 16 sums in registers.
+// carefulFusedAVX512R4V1 is the loop s = R(binary32(s + a b)), R nearest-even with its overflow, events counted.
+// It keeps a tile of 4 x 16 sums in registers.
 //
 //go:noescape
-func carefulFusedAVX512R8V1(t *Tile[float32])
+func carefulFusedAVX512R4V1(t *Tile[float32])
 
 // carefulFusedAVX512R2V1 is the loop s = R(binary32(s + a b)), R nearest-even with its overflow, events counted.
 // It keeps a tile of 2 x 16 sums in registers.
@@ -352,29 +352,17 @@ func carefulProductAVX512R4V1(t *Tile[float32])
 //go:noescape
 func carefulProductAVX512R2V1(t *Tile[float32])
 
-// carefulBothAVX512R8V1 is the loop s = R(binary32(s + P(a b))), P and R nearest-even with their overflow, events counted.
-// It keeps a tile of 8 x 16 sums in registers.
-//
-//go:noescape
-func carefulBothAVX512R8V1(t *Tile[float32])
-
-// carefulBothAVX512R2V1 is the loop s = R(binary32(s + P(a b))), P and R nearest-even with their overflow, events counted.
-// It keeps a tile of 2 x 16 sums in registers.
-//
-//go:noescape
-func carefulBothAVX512R2V1(t *Tile[float32])
-
-// carefulOddAVX512R4V1 is the loop s = R(s + P(a b)), P and R nearest-even with their overflow, events counted.
+// carefulRoundedAVX512R4V1 is the loop s = R(s + P(a b)), P and R nearest-even with their overflow, events counted.
 // It keeps a tile of 4 x 16 sums in registers.
 //
 //go:noescape
-func carefulOddAVX512R4V1(t *Tile[float32])
+func carefulRoundedAVX512R4V1(t *Tile[float32])
 
-// carefulOddAVX512R2V1 is the loop s = R(s + P(a b)), P and R nearest-even with their overflow, events counted.
+// carefulRoundedAVX512R2V1 is the loop s = R(s + P(a b)), P and R nearest-even with their overflow, events counted.
 // It keeps a tile of 2 x 16 sums in registers.
 //
 //go:noescape
-func carefulOddAVX512R2V1(t *Tile[float32])
+func carefulRoundedAVX512R2V1(t *Tile[float32])
 
 // stochasticAVX512R4V2 is the loop s = S(binary32(s + R(a b))), R nearest-even, S stochastic without subnormals, terms ascending.
 // It keeps a tile of 4 x 32 sums in registers.

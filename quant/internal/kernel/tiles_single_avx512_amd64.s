@@ -10047,9 +10047,9 @@ term:
 	VZEROUPPER
 	RET
 
-// func carefulFusedAVX512R8V1(t *Tile[float32])
+// func carefulFusedAVX512R4V1(t *Tile[float32])
 // Requires: AVX, AVX512DQ, AVX512F
-TEXT ·carefulFusedAVX512R8V1(SB), $104-8
+TEXT ·carefulFusedAVX512R4V1(SB), $104-8
 	MOVQ    t+0(FP), AX
 	MOVQ    240(AX), CX
 	VMOVUPS (CX), Z0
@@ -10100,255 +10100,133 @@ group:
 	VMOVUPS (DX), Z21
 	VMULPS  576(CX), Z21, Z21
 	LEAQ    (DX)(BX*4), DX
-	VMOVUPS (DX), Z22
-	VMULPS  576(CX), Z22, Z22
-	LEAQ    (DX)(BX*4), DX
-	VMOVUPS (DX), Z23
-	VMULPS  576(CX), Z23, Z23
-	LEAQ    (DX)(BX*4), DX
-	VMOVUPS (DX), Z24
-	VMULPS  576(CX), Z24, Z24
-	LEAQ    (DX)(BX*4), DX
-	VMOVUPS (DX), Z25
-	VMULPS  576(CX), Z25, Z25
-	LEAQ    (DX)(BX*4), DX
 	MOVQ    DX, 8(SP)
 	MOVQ    40(AX), DX
 	MOVQ    32(SP), BX
 	LEAQ    (BX)(DX*4), SI
-	LEAQ    (SI)(DX*4), DI
-	LEAQ    (DI)(DX*4), R8
-	LEAQ    (R8)(DX*4), DX
+	LEAQ    (SI)(DX*4), DX
 	MOVQ    DX, 32(SP)
 	MOVQ    48(AX), DX
-	MOVQ    (AX), R9
-	ADDQ    R9, R9
-	XORQ    R10, R10
+	MOVQ    (AX), DI
+	ADDQ    DI, DI
+	XORQ    R8, R8
 
 term:
-	VBROADCASTSS (BX)(R10*4), Z26
-	VFMADD231PS  (DX), Z26, Z18
-	VMOVAPS      Z18, Z26
-	VANDPS       Z0, Z18, Z27
-	VMAXPS       Z3, Z27, Z27
-	VFMADD231PS  Z12, Z27, Z26
-	VFNMADD231PS Z12, Z27, Z26
-	VANDPS       Z2, Z26, Z27
-	VCMPPS       $0x06, Z13, Z27, K1
-	VANDPS       Z2, Z18, Z27
-	VCMPPS       $0x11, Z16, Z27, K2
+	VBROADCASTSS (BX)(R8*4), Z22
+	VFMADD231PS  (DX), Z22, Z18
+	VMOVAPS      Z18, Z22
+	VANDPS       Z0, Z18, Z23
+	VMAXPS       Z3, Z23, Z23
+	VFMADD231PS  Z12, Z23, Z22
+	VFNMADD231PS Z12, Z23, Z22
+	VANDPS       Z2, Z22, Z23
+	VCMPPS       $0x06, Z13, Z23, K1
+	VANDPS       Z2, Z18, Z23
+	VCMPPS       $0x11, Z16, Z23, K2
 	KANDW        K2, K1, K3
 	VPADDD       Z17, Z7, K3, Z7
-	VCMPPS       $0x00, Z16, Z27, K3
+	VCMPPS       $0x00, Z16, Z23, K3
 	VPADDD       Z17, Z8, K3, Z8
-	VMOVUPS      Z15, Z28
-	VMOVUPS      Z14, K2, Z28
-	VANDPS       Z1, Z18, Z27
-	VORPS        Z27, Z28, Z28
+	VMOVUPS      Z15, Z24
+	VMOVUPS      Z14, K2, Z24
+	VANDPS       Z1, Z18, Z23
+	VORPS        Z23, Z24, Z24
 	VCMPPS       $0x03, Z18, Z18, K3
 	VPADDD       Z17, Z9, K3, Z9
-	VMOVAPS      Z18, K3, Z28
-	VMOVAPS      Z28, K1, Z26
-	VMOVAPS      Z26, Z18
-	VBROADCASTSS 4(BX)(R10*4), Z26
-	VFMADD231PS  (DX), Z26, Z19
-	VMOVAPS      Z19, Z26
-	VANDPS       Z0, Z19, Z27
-	VMAXPS       Z3, Z27, Z27
-	VFMADD231PS  Z12, Z27, Z26
-	VFNMADD231PS Z12, Z27, Z26
-	VANDPS       Z2, Z26, Z27
-	VCMPPS       $0x06, Z13, Z27, K1
-	VANDPS       Z2, Z19, Z27
-	VCMPPS       $0x11, Z16, Z27, K2
+	VMOVAPS      Z18, K3, Z24
+	VMOVAPS      Z22, Z18
+	VMOVAPS      Z24, K1, Z18
+	VBROADCASTSS 4(BX)(R8*4), Z22
+	VFMADD231PS  (DX), Z22, Z19
+	VMOVAPS      Z19, Z22
+	VANDPS       Z0, Z19, Z23
+	VMAXPS       Z3, Z23, Z23
+	VFMADD231PS  Z12, Z23, Z22
+	VFNMADD231PS Z12, Z23, Z22
+	VANDPS       Z2, Z22, Z23
+	VCMPPS       $0x06, Z13, Z23, K1
+	VANDPS       Z2, Z19, Z23
+	VCMPPS       $0x11, Z16, Z23, K2
 	KANDW        K2, K1, K3
 	VPADDD       Z17, Z7, K3, Z7
-	VCMPPS       $0x00, Z16, Z27, K3
+	VCMPPS       $0x00, Z16, Z23, K3
 	VPADDD       Z17, Z8, K3, Z8
-	VMOVUPS      Z15, Z28
-	VMOVUPS      Z14, K2, Z28
-	VANDPS       Z1, Z19, Z27
-	VORPS        Z27, Z28, Z28
+	VMOVUPS      Z15, Z24
+	VMOVUPS      Z14, K2, Z24
+	VANDPS       Z1, Z19, Z23
+	VORPS        Z23, Z24, Z24
 	VCMPPS       $0x03, Z19, Z19, K3
 	VPADDD       Z17, Z9, K3, Z9
-	VMOVAPS      Z19, K3, Z28
-	VMOVAPS      Z28, K1, Z26
-	VMOVAPS      Z26, Z19
-	VBROADCASTSS (SI)(R10*4), Z26
-	VFMADD231PS  (DX), Z26, Z20
-	VMOVAPS      Z20, Z26
-	VANDPS       Z0, Z20, Z27
-	VMAXPS       Z3, Z27, Z27
-	VFMADD231PS  Z12, Z27, Z26
-	VFNMADD231PS Z12, Z27, Z26
-	VANDPS       Z2, Z26, Z27
-	VCMPPS       $0x06, Z13, Z27, K1
-	VANDPS       Z2, Z20, Z27
-	VCMPPS       $0x11, Z16, Z27, K2
+	VMOVAPS      Z19, K3, Z24
+	VMOVAPS      Z22, Z19
+	VMOVAPS      Z24, K1, Z19
+	VBROADCASTSS (SI)(R8*4), Z22
+	VFMADD231PS  (DX), Z22, Z20
+	VMOVAPS      Z20, Z22
+	VANDPS       Z0, Z20, Z23
+	VMAXPS       Z3, Z23, Z23
+	VFMADD231PS  Z12, Z23, Z22
+	VFNMADD231PS Z12, Z23, Z22
+	VANDPS       Z2, Z22, Z23
+	VCMPPS       $0x06, Z13, Z23, K1
+	VANDPS       Z2, Z20, Z23
+	VCMPPS       $0x11, Z16, Z23, K2
 	KANDW        K2, K1, K3
 	VPADDD       Z17, Z7, K3, Z7
-	VCMPPS       $0x00, Z16, Z27, K3
+	VCMPPS       $0x00, Z16, Z23, K3
 	VPADDD       Z17, Z8, K3, Z8
-	VMOVUPS      Z15, Z28
-	VMOVUPS      Z14, K2, Z28
-	VANDPS       Z1, Z20, Z27
-	VORPS        Z27, Z28, Z28
+	VMOVUPS      Z15, Z24
+	VMOVUPS      Z14, K2, Z24
+	VANDPS       Z1, Z20, Z23
+	VORPS        Z23, Z24, Z24
 	VCMPPS       $0x03, Z20, Z20, K3
 	VPADDD       Z17, Z9, K3, Z9
-	VMOVAPS      Z20, K3, Z28
-	VMOVAPS      Z28, K1, Z26
-	VMOVAPS      Z26, Z20
-	VBROADCASTSS 4(SI)(R10*4), Z26
-	VFMADD231PS  (DX), Z26, Z21
-	VMOVAPS      Z21, Z26
-	VANDPS       Z0, Z21, Z27
-	VMAXPS       Z3, Z27, Z27
-	VFMADD231PS  Z12, Z27, Z26
-	VFNMADD231PS Z12, Z27, Z26
-	VANDPS       Z2, Z26, Z27
-	VCMPPS       $0x06, Z13, Z27, K1
-	VANDPS       Z2, Z21, Z27
-	VCMPPS       $0x11, Z16, Z27, K2
+	VMOVAPS      Z20, K3, Z24
+	VMOVAPS      Z22, Z20
+	VMOVAPS      Z24, K1, Z20
+	VBROADCASTSS 4(SI)(R8*4), Z22
+	VFMADD231PS  (DX), Z22, Z21
+	VMOVAPS      Z21, Z22
+	VANDPS       Z0, Z21, Z23
+	VMAXPS       Z3, Z23, Z23
+	VFMADD231PS  Z12, Z23, Z22
+	VFNMADD231PS Z12, Z23, Z22
+	VANDPS       Z2, Z22, Z23
+	VCMPPS       $0x06, Z13, Z23, K1
+	VANDPS       Z2, Z21, Z23
+	VCMPPS       $0x11, Z16, Z23, K2
 	KANDW        K2, K1, K3
 	VPADDD       Z17, Z7, K3, Z7
-	VCMPPS       $0x00, Z16, Z27, K3
+	VCMPPS       $0x00, Z16, Z23, K3
 	VPADDD       Z17, Z8, K3, Z8
-	VMOVUPS      Z15, Z28
-	VMOVUPS      Z14, K2, Z28
-	VANDPS       Z1, Z21, Z27
-	VORPS        Z27, Z28, Z28
+	VMOVUPS      Z15, Z24
+	VMOVUPS      Z14, K2, Z24
+	VANDPS       Z1, Z21, Z23
+	VORPS        Z23, Z24, Z24
 	VCMPPS       $0x03, Z21, Z21, K3
 	VPADDD       Z17, Z9, K3, Z9
-	VMOVAPS      Z21, K3, Z28
-	VMOVAPS      Z28, K1, Z26
-	VMOVAPS      Z26, Z21
-	VBROADCASTSS (DI)(R10*4), Z26
-	VFMADD231PS  (DX), Z26, Z22
-	VMOVAPS      Z22, Z26
-	VANDPS       Z0, Z22, Z27
-	VMAXPS       Z3, Z27, Z27
-	VFMADD231PS  Z12, Z27, Z26
-	VFNMADD231PS Z12, Z27, Z26
-	VANDPS       Z2, Z26, Z27
-	VCMPPS       $0x06, Z13, Z27, K1
-	VANDPS       Z2, Z22, Z27
-	VCMPPS       $0x11, Z16, Z27, K2
-	KANDW        K2, K1, K3
-	VPADDD       Z17, Z7, K3, Z7
-	VCMPPS       $0x00, Z16, Z27, K3
-	VPADDD       Z17, Z8, K3, Z8
-	VMOVUPS      Z15, Z28
-	VMOVUPS      Z14, K2, Z28
-	VANDPS       Z1, Z22, Z27
-	VORPS        Z27, Z28, Z28
-	VCMPPS       $0x03, Z22, Z22, K3
-	VPADDD       Z17, Z9, K3, Z9
-	VMOVAPS      Z22, K3, Z28
-	VMOVAPS      Z28, K1, Z26
-	VMOVAPS      Z26, Z22
-	VBROADCASTSS 4(DI)(R10*4), Z26
-	VFMADD231PS  (DX), Z26, Z23
-	VMOVAPS      Z23, Z26
-	VANDPS       Z0, Z23, Z27
-	VMAXPS       Z3, Z27, Z27
-	VFMADD231PS  Z12, Z27, Z26
-	VFNMADD231PS Z12, Z27, Z26
-	VANDPS       Z2, Z26, Z27
-	VCMPPS       $0x06, Z13, Z27, K1
-	VANDPS       Z2, Z23, Z27
-	VCMPPS       $0x11, Z16, Z27, K2
-	KANDW        K2, K1, K3
-	VPADDD       Z17, Z7, K3, Z7
-	VCMPPS       $0x00, Z16, Z27, K3
-	VPADDD       Z17, Z8, K3, Z8
-	VMOVUPS      Z15, Z28
-	VMOVUPS      Z14, K2, Z28
-	VANDPS       Z1, Z23, Z27
-	VORPS        Z27, Z28, Z28
-	VCMPPS       $0x03, Z23, Z23, K3
-	VPADDD       Z17, Z9, K3, Z9
-	VMOVAPS      Z23, K3, Z28
-	VMOVAPS      Z28, K1, Z26
-	VMOVAPS      Z26, Z23
-	VBROADCASTSS (R8)(R10*4), Z26
-	VFMADD231PS  (DX), Z26, Z24
-	VMOVAPS      Z24, Z26
-	VANDPS       Z0, Z24, Z27
-	VMAXPS       Z3, Z27, Z27
-	VFMADD231PS  Z12, Z27, Z26
-	VFNMADD231PS Z12, Z27, Z26
-	VANDPS       Z2, Z26, Z27
-	VCMPPS       $0x06, Z13, Z27, K1
-	VANDPS       Z2, Z24, Z27
-	VCMPPS       $0x11, Z16, Z27, K2
-	KANDW        K2, K1, K3
-	VPADDD       Z17, Z7, K3, Z7
-	VCMPPS       $0x00, Z16, Z27, K3
-	VPADDD       Z17, Z8, K3, Z8
-	VMOVUPS      Z15, Z28
-	VMOVUPS      Z14, K2, Z28
-	VANDPS       Z1, Z24, Z27
-	VORPS        Z27, Z28, Z28
-	VCMPPS       $0x03, Z24, Z24, K3
-	VPADDD       Z17, Z9, K3, Z9
-	VMOVAPS      Z24, K3, Z28
-	VMOVAPS      Z28, K1, Z26
-	VMOVAPS      Z26, Z24
-	VBROADCASTSS 4(R8)(R10*4), Z26
-	VFMADD231PS  (DX), Z26, Z25
-	VMOVAPS      Z25, Z26
-	VANDPS       Z0, Z25, Z27
-	VMAXPS       Z3, Z27, Z27
-	VFMADD231PS  Z12, Z27, Z26
-	VFNMADD231PS Z12, Z27, Z26
-	VANDPS       Z2, Z26, Z27
-	VCMPPS       $0x06, Z13, Z27, K1
-	VANDPS       Z2, Z25, Z27
-	VCMPPS       $0x11, Z16, Z27, K2
-	KANDW        K2, K1, K3
-	VPADDD       Z17, Z7, K3, Z7
-	VCMPPS       $0x00, Z16, Z27, K3
-	VPADDD       Z17, Z8, K3, Z8
-	VMOVUPS      Z15, Z28
-	VMOVUPS      Z14, K2, Z28
-	VANDPS       Z1, Z25, Z27
-	VORPS        Z27, Z28, Z28
-	VCMPPS       $0x03, Z25, Z25, K3
-	VPADDD       Z17, Z9, K3, Z9
-	VMOVAPS      Z25, K3, Z28
-	VMOVAPS      Z28, K1, Z26
-	VMOVAPS      Z26, Z25
+	VMOVAPS      Z21, K3, Z24
+	VMOVAPS      Z22, Z21
+	VMOVAPS      Z24, K1, Z21
 	ADDQ         $0x00000040, DX
-	ADDQ         $0x02, R10
-	CMPQ         R10, R9
+	ADDQ         $0x02, R8
+	CMPQ         R8, DI
 	JLT          term
-	VMOVUPS      640(CX), Z26
+	VMOVUPS      640(CX), Z22
 	VPXORD       Z10, Z10, Z10
 	VPXORD       Z11, Z11, Z11
 	VFMADD231PS  Z10, Z18, Z11
-	VMULPS       Z26, Z18, Z18
+	VMULPS       Z22, Z18, Z18
 	VADDPS       Z10, Z18, Z18
 	VFMADD231PS  Z10, Z19, Z11
-	VMULPS       Z26, Z19, Z19
+	VMULPS       Z22, Z19, Z19
 	VADDPS       Z10, Z19, Z19
 	VFMADD231PS  Z10, Z20, Z11
-	VMULPS       Z26, Z20, Z20
+	VMULPS       Z22, Z20, Z20
 	VADDPS       Z10, Z20, Z20
 	VFMADD231PS  Z10, Z21, Z11
-	VMULPS       Z26, Z21, Z21
+	VMULPS       Z22, Z21, Z21
 	VADDPS       Z10, Z21, Z21
-	VFMADD231PS  Z10, Z22, Z11
-	VMULPS       Z26, Z22, Z22
-	VADDPS       Z10, Z22, Z22
-	VFMADD231PS  Z10, Z23, Z11
-	VMULPS       Z26, Z23, Z23
-	VADDPS       Z10, Z23, Z23
-	VFMADD231PS  Z10, Z24, Z11
-	VMULPS       Z26, Z24, Z24
-	VADDPS       Z10, Z24, Z24
-	VFMADD231PS  Z10, Z25, Z11
-	VMULPS       Z26, Z25, Z25
-	VADDPS       Z10, Z25, Z25
 	MOVQ         16(SP), DX
 	MOVQ         176(AX), BX
 	VMOVUPS      Z18, (DX)
@@ -10358,14 +10236,6 @@ term:
 	VMOVUPS      Z20, (DX)
 	LEAQ         (DX)(BX*4), DX
 	VMOVUPS      Z21, (DX)
-	LEAQ         (DX)(BX*4), DX
-	VMOVUPS      Z22, (DX)
-	LEAQ         (DX)(BX*4), DX
-	VMOVUPS      Z23, (DX)
-	LEAQ         (DX)(BX*4), DX
-	VMOVUPS      Z24, (DX)
-	LEAQ         (DX)(BX*4), DX
-	VMOVUPS      Z25, (DX)
 	LEAQ         (DX)(BX*4), DX
 	MOVQ         DX, 16(SP)
 	VCMPPS       $0x03, Z11, Z11, K1
@@ -10670,8 +10540,8 @@ term:
 	VCMPPS       $0x03, Z18, Z18, K3
 	VPADDD       Z17, Z9, K3, Z9
 	VMOVAPS      Z18, K3, Z22
-	VMOVAPS      Z22, K1, Z20
 	VMOVAPS      Z20, Z18
+	VMOVAPS      Z22, K1, Z18
 	VBROADCASTSS 4(BX)(DI*4), Z20
 	VFMADD231PS  (DX), Z20, Z19
 	VMOVAPS      Z19, Z20
@@ -10694,8 +10564,8 @@ term:
 	VCMPPS       $0x03, Z19, Z19, K3
 	VPADDD       Z17, Z9, K3, Z9
 	VMOVAPS      Z19, K3, Z22
-	VMOVAPS      Z22, K1, Z20
 	VMOVAPS      Z20, Z19
+	VMOVAPS      Z22, K1, Z19
 	ADDQ         $0x00000040, DX
 	ADDQ         $0x02, DI
 	CMPQ         DI, SI
@@ -11019,8 +10889,8 @@ term:
 	VCMPPS       $0x03, Z28, Z28, K3
 	VPADDD       1408(CX), Z6, K3, Z6
 	VMOVAPS      Z28, K3, Z31
-	VMOVAPS      Z31, K1, Z29
 	VMOVAPS      Z29, Z28
+	VMOVAPS      Z31, K1, Z28
 	VADDPS       Z28, Z24, Z29
 	VSUBPS       Z24, Z29, Z30
 	VSUBPS       Z30, Z29, Z31
@@ -11057,8 +10927,8 @@ term:
 	VCMPPS       $0x03, Z24, Z24, K3
 	VPADDD       1408(CX), Z9, K3, Z9
 	VMOVAPS      Z24, K3, Z30
-	VMOVAPS      Z30, K1, Z28
 	VMOVAPS      Z28, Z24
+	VMOVAPS      Z30, K1, Z24
 	VBROADCASTSS 4(BX)(R8*4), Z28
 	VMULPS       (DX), Z28, Z28
 	VMOVAPS      Z28, Z29
@@ -11077,8 +10947,8 @@ term:
 	VCMPPS       $0x03, Z28, Z28, K3
 	VPADDD       1408(CX), Z6, K3, Z6
 	VMOVAPS      Z28, K3, Z31
-	VMOVAPS      Z31, K1, Z29
 	VMOVAPS      Z29, Z28
+	VMOVAPS      Z31, K1, Z28
 	VADDPS       Z28, Z25, Z29
 	VSUBPS       Z25, Z29, Z30
 	VSUBPS       Z30, Z29, Z31
@@ -11115,8 +10985,8 @@ term:
 	VCMPPS       $0x03, Z25, Z25, K3
 	VPADDD       1408(CX), Z9, K3, Z9
 	VMOVAPS      Z25, K3, Z30
-	VMOVAPS      Z30, K1, Z28
 	VMOVAPS      Z28, Z25
+	VMOVAPS      Z30, K1, Z25
 	VBROADCASTSS (SI)(R8*4), Z28
 	VMULPS       (DX), Z28, Z28
 	VMOVAPS      Z28, Z29
@@ -11135,8 +11005,8 @@ term:
 	VCMPPS       $0x03, Z28, Z28, K3
 	VPADDD       1408(CX), Z6, K3, Z6
 	VMOVAPS      Z28, K3, Z31
-	VMOVAPS      Z31, K1, Z29
 	VMOVAPS      Z29, Z28
+	VMOVAPS      Z31, K1, Z28
 	VADDPS       Z28, Z26, Z29
 	VSUBPS       Z26, Z29, Z30
 	VSUBPS       Z30, Z29, Z31
@@ -11173,8 +11043,8 @@ term:
 	VCMPPS       $0x03, Z26, Z26, K3
 	VPADDD       1408(CX), Z9, K3, Z9
 	VMOVAPS      Z26, K3, Z30
-	VMOVAPS      Z30, K1, Z28
 	VMOVAPS      Z28, Z26
+	VMOVAPS      Z30, K1, Z26
 	VBROADCASTSS 4(SI)(R8*4), Z28
 	VMULPS       (DX), Z28, Z28
 	VMOVAPS      Z28, Z29
@@ -11193,8 +11063,8 @@ term:
 	VCMPPS       $0x03, Z28, Z28, K3
 	VPADDD       1408(CX), Z6, K3, Z6
 	VMOVAPS      Z28, K3, Z31
-	VMOVAPS      Z31, K1, Z29
 	VMOVAPS      Z29, Z28
+	VMOVAPS      Z31, K1, Z28
 	VADDPS       Z28, Z27, Z29
 	VSUBPS       Z27, Z29, Z30
 	VSUBPS       Z30, Z29, Z31
@@ -11231,8 +11101,8 @@ term:
 	VCMPPS       $0x03, Z27, Z27, K3
 	VPADDD       1408(CX), Z9, K3, Z9
 	VMOVAPS      Z27, K3, Z30
-	VMOVAPS      Z30, K1, Z28
 	VMOVAPS      Z28, Z27
+	VMOVAPS      Z30, K1, Z27
 	ADDQ         $0x00000040, DX
 	ADDQ         $0x02, R8
 	CMPQ         R8, DI
@@ -11561,8 +11431,8 @@ term:
 	VCMPPS       $0x03, Z26, Z26, K3
 	VPADDD       Z23, Z6, K3, Z6
 	VMOVAPS      Z26, K3, Z29
-	VMOVAPS      Z29, K1, Z27
 	VMOVAPS      Z27, Z26
+	VMOVAPS      Z29, K1, Z26
 	VADDPS       Z26, Z24, Z27
 	VSUBPS       Z24, Z27, Z28
 	VSUBPS       Z28, Z27, Z29
@@ -11599,8 +11469,8 @@ term:
 	VCMPPS       $0x03, Z24, Z24, K3
 	VPADDD       Z23, Z9, K3, Z9
 	VMOVAPS      Z24, K3, Z28
-	VMOVAPS      Z28, K1, Z26
 	VMOVAPS      Z26, Z24
+	VMOVAPS      Z28, K1, Z24
 	VBROADCASTSS 4(BX)(DI*4), Z26
 	VMULPS       (DX), Z26, Z26
 	VMOVAPS      Z26, Z27
@@ -11619,8 +11489,8 @@ term:
 	VCMPPS       $0x03, Z26, Z26, K3
 	VPADDD       Z23, Z6, K3, Z6
 	VMOVAPS      Z26, K3, Z29
-	VMOVAPS      Z29, K1, Z27
 	VMOVAPS      Z27, Z26
+	VMOVAPS      Z29, K1, Z26
 	VADDPS       Z26, Z25, Z27
 	VSUBPS       Z25, Z27, Z28
 	VSUBPS       Z28, Z27, Z29
@@ -11657,8 +11527,8 @@ term:
 	VCMPPS       $0x03, Z25, Z25, K3
 	VPADDD       Z23, Z9, K3, Z9
 	VMOVAPS      Z25, K3, Z28
-	VMOVAPS      Z28, K1, Z26
 	VMOVAPS      Z26, Z25
+	VMOVAPS      Z28, K1, Z25
 	ADDQ         $0x00000040, DX
 	ADDQ         $0x02, DI
 	CMPQ         DI, SI
@@ -11901,1126 +11771,9 @@ term:
 	VZEROUPPER
 	RET
 
-// func carefulBothAVX512R8V1(t *Tile[float32])
+// func carefulRoundedAVX512R4V1(t *Tile[float32])
 // Requires: AVX, AVX512DQ, AVX512F
-TEXT ·carefulBothAVX512R8V1(SB), $104-8
-	MOVQ    t+0(FP), AX
-	MOVQ    240(AX), CX
-	VMOVUPS (CX), Z0
-	VMOVUPS 64(CX), Z1
-	VMOVUPS 128(CX), Z2
-	VMOVUPS 192(CX), Z3
-	VMOVUPS 256(CX), Z4
-	VMOVUPS 384(CX), Z5
-	VMOVUPS 448(CX), Z6
-	VMOVUPS 1792(CX), Z7
-	VMOVUPS 1856(CX), Z8
-	VMOVUPS 1920(CX), Z9
-	VMOVUPS 1984(CX), Z10
-	VMOVUPS 2048(CX), Z11
-	MOVQ    8(AX), DX
-	MOVQ    DX, (SP)
-	MOVQ    120(AX), DX
-	MOVQ    DX, 8(SP)
-	MOVQ    152(AX), DX
-	MOVQ    DX, 16(SP)
-	MOVQ    216(AX), DX
-	MOVQ    DX, 24(SP)
-	MOVQ    16(AX), DX
-	MOVQ    DX, 32(SP)
-	VPXORD  Z12, Z12, Z12
-	VPXORD  Z13, Z13, Z13
-	VPXORD  Z14, Z14, Z14
-	VPXORD  Z15, Z15, Z15
-	VPXORD  Z16, Z16, Z16
-	VPXORD  Z17, Z17, Z17
-
-group:
-	MOVQ    8(SP), DX
-	MOVQ    144(AX), BX
-	VMOVUPS (DX), Z18
-	VMULPS  576(CX), Z18, Z18
-	LEAQ    (DX)(BX*4), DX
-	VMOVUPS (DX), Z19
-	VMULPS  576(CX), Z19, Z19
-	LEAQ    (DX)(BX*4), DX
-	VMOVUPS (DX), Z20
-	VMULPS  576(CX), Z20, Z20
-	LEAQ    (DX)(BX*4), DX
-	VMOVUPS (DX), Z21
-	VMULPS  576(CX), Z21, Z21
-	LEAQ    (DX)(BX*4), DX
-	VMOVUPS (DX), Z22
-	VMULPS  576(CX), Z22, Z22
-	LEAQ    (DX)(BX*4), DX
-	VMOVUPS (DX), Z23
-	VMULPS  576(CX), Z23, Z23
-	LEAQ    (DX)(BX*4), DX
-	VMOVUPS (DX), Z24
-	VMULPS  576(CX), Z24, Z24
-	LEAQ    (DX)(BX*4), DX
-	VMOVUPS (DX), Z25
-	VMULPS  576(CX), Z25, Z25
-	LEAQ    (DX)(BX*4), DX
-	MOVQ    DX, 8(SP)
-	MOVQ    40(AX), DX
-	MOVQ    32(SP), BX
-	LEAQ    (BX)(DX*4), SI
-	LEAQ    (SI)(DX*4), DI
-	LEAQ    (DI)(DX*4), R8
-	LEAQ    (R8)(DX*4), DX
-	MOVQ    DX, 32(SP)
-	MOVQ    48(AX), DX
-	MOVQ    (AX), R9
-	ADDQ    R9, R9
-	XORQ    R10, R10
-
-term:
-	VBROADCASTSS (BX)(R10*4), Z26
-	VMULPS       (DX), Z26, Z26
-	VMOVAPS      Z26, Z29
-	VANDPS       Z0, Z26, Z30
-	VMAXPS       Z3, Z30, Z30
-	VFMADD231PS  Z4, Z30, Z29
-	VFNMADD231PS Z4, Z30, Z29
-	VANDPS       Z2, Z29, Z30
-	VCMPPS       $0x06, Z7, Z30, K1
-	VANDPS       Z2, Z26, Z30
-	VCMPPS       $0x11, 2176(CX), Z30, K2
-	KANDW        K2, K1, K3
-	VPADDD       1408(CX), Z12, K3, Z12
-	VCMPPS       $0x00, 2176(CX), Z30, K3
-	VPADDD       1408(CX), Z13, K3, Z13
-	VMOVUPS      Z9, Z31
-	VMOVUPS      Z8, K2, Z31
-	VANDPS       Z1, Z26, Z30
-	VORPS        Z30, Z31, Z31
-	VCMPPS       $0x03, Z26, Z26, K3
-	VPADDD       1408(CX), Z14, K3, Z14
-	VMOVAPS      Z26, K3, Z31
-	VMOVAPS      Z31, K1, Z29
-	VMOVAPS      Z29, Z26
-	VADDPS       Z26, Z18, Z18
-	VMOVAPS      Z18, Z26
-	VANDPS       Z0, Z18, Z29
-	VMAXPS       Z5, Z29, Z29
-	VFMADD231PS  Z6, Z29, Z26
-	VFNMADD231PS Z6, Z29, Z26
-	VANDPS       Z2, Z26, Z29
-	VCMPPS       $0x06, Z10, Z29, K1
-	VANDPS       Z2, Z18, Z29
-	VCMPPS       $0x11, 2176(CX), Z29, K2
-	KANDW        K2, K1, K3
-	VPADDD       1408(CX), Z15, K3, Z15
-	VCMPPS       $0x00, 2176(CX), Z29, K3
-	VPADDD       1408(CX), Z16, K3, Z16
-	VMOVUPS      2112(CX), Z30
-	VMOVUPS      Z11, K2, Z30
-	VANDPS       Z1, Z18, Z29
-	VORPS        Z29, Z30, Z30
-	VCMPPS       $0x03, Z18, Z18, K3
-	VPADDD       1408(CX), Z17, K3, Z17
-	VMOVAPS      Z18, K3, Z30
-	VMOVAPS      Z30, K1, Z26
-	VMOVAPS      Z26, Z18
-	VBROADCASTSS 4(BX)(R10*4), Z26
-	VMULPS       (DX), Z26, Z26
-	VMOVAPS      Z26, Z29
-	VANDPS       Z0, Z26, Z30
-	VMAXPS       Z3, Z30, Z30
-	VFMADD231PS  Z4, Z30, Z29
-	VFNMADD231PS Z4, Z30, Z29
-	VANDPS       Z2, Z29, Z30
-	VCMPPS       $0x06, Z7, Z30, K1
-	VANDPS       Z2, Z26, Z30
-	VCMPPS       $0x11, 2176(CX), Z30, K2
-	KANDW        K2, K1, K3
-	VPADDD       1408(CX), Z12, K3, Z12
-	VCMPPS       $0x00, 2176(CX), Z30, K3
-	VPADDD       1408(CX), Z13, K3, Z13
-	VMOVUPS      Z9, Z31
-	VMOVUPS      Z8, K2, Z31
-	VANDPS       Z1, Z26, Z30
-	VORPS        Z30, Z31, Z31
-	VCMPPS       $0x03, Z26, Z26, K3
-	VPADDD       1408(CX), Z14, K3, Z14
-	VMOVAPS      Z26, K3, Z31
-	VMOVAPS      Z31, K1, Z29
-	VMOVAPS      Z29, Z26
-	VADDPS       Z26, Z19, Z19
-	VMOVAPS      Z19, Z26
-	VANDPS       Z0, Z19, Z29
-	VMAXPS       Z5, Z29, Z29
-	VFMADD231PS  Z6, Z29, Z26
-	VFNMADD231PS Z6, Z29, Z26
-	VANDPS       Z2, Z26, Z29
-	VCMPPS       $0x06, Z10, Z29, K1
-	VANDPS       Z2, Z19, Z29
-	VCMPPS       $0x11, 2176(CX), Z29, K2
-	KANDW        K2, K1, K3
-	VPADDD       1408(CX), Z15, K3, Z15
-	VCMPPS       $0x00, 2176(CX), Z29, K3
-	VPADDD       1408(CX), Z16, K3, Z16
-	VMOVUPS      2112(CX), Z30
-	VMOVUPS      Z11, K2, Z30
-	VANDPS       Z1, Z19, Z29
-	VORPS        Z29, Z30, Z30
-	VCMPPS       $0x03, Z19, Z19, K3
-	VPADDD       1408(CX), Z17, K3, Z17
-	VMOVAPS      Z19, K3, Z30
-	VMOVAPS      Z30, K1, Z26
-	VMOVAPS      Z26, Z19
-	VBROADCASTSS (SI)(R10*4), Z26
-	VMULPS       (DX), Z26, Z26
-	VMOVAPS      Z26, Z29
-	VANDPS       Z0, Z26, Z30
-	VMAXPS       Z3, Z30, Z30
-	VFMADD231PS  Z4, Z30, Z29
-	VFNMADD231PS Z4, Z30, Z29
-	VANDPS       Z2, Z29, Z30
-	VCMPPS       $0x06, Z7, Z30, K1
-	VANDPS       Z2, Z26, Z30
-	VCMPPS       $0x11, 2176(CX), Z30, K2
-	KANDW        K2, K1, K3
-	VPADDD       1408(CX), Z12, K3, Z12
-	VCMPPS       $0x00, 2176(CX), Z30, K3
-	VPADDD       1408(CX), Z13, K3, Z13
-	VMOVUPS      Z9, Z31
-	VMOVUPS      Z8, K2, Z31
-	VANDPS       Z1, Z26, Z30
-	VORPS        Z30, Z31, Z31
-	VCMPPS       $0x03, Z26, Z26, K3
-	VPADDD       1408(CX), Z14, K3, Z14
-	VMOVAPS      Z26, K3, Z31
-	VMOVAPS      Z31, K1, Z29
-	VMOVAPS      Z29, Z26
-	VADDPS       Z26, Z20, Z20
-	VMOVAPS      Z20, Z26
-	VANDPS       Z0, Z20, Z29
-	VMAXPS       Z5, Z29, Z29
-	VFMADD231PS  Z6, Z29, Z26
-	VFNMADD231PS Z6, Z29, Z26
-	VANDPS       Z2, Z26, Z29
-	VCMPPS       $0x06, Z10, Z29, K1
-	VANDPS       Z2, Z20, Z29
-	VCMPPS       $0x11, 2176(CX), Z29, K2
-	KANDW        K2, K1, K3
-	VPADDD       1408(CX), Z15, K3, Z15
-	VCMPPS       $0x00, 2176(CX), Z29, K3
-	VPADDD       1408(CX), Z16, K3, Z16
-	VMOVUPS      2112(CX), Z30
-	VMOVUPS      Z11, K2, Z30
-	VANDPS       Z1, Z20, Z29
-	VORPS        Z29, Z30, Z30
-	VCMPPS       $0x03, Z20, Z20, K3
-	VPADDD       1408(CX), Z17, K3, Z17
-	VMOVAPS      Z20, K3, Z30
-	VMOVAPS      Z30, K1, Z26
-	VMOVAPS      Z26, Z20
-	VBROADCASTSS 4(SI)(R10*4), Z26
-	VMULPS       (DX), Z26, Z26
-	VMOVAPS      Z26, Z29
-	VANDPS       Z0, Z26, Z30
-	VMAXPS       Z3, Z30, Z30
-	VFMADD231PS  Z4, Z30, Z29
-	VFNMADD231PS Z4, Z30, Z29
-	VANDPS       Z2, Z29, Z30
-	VCMPPS       $0x06, Z7, Z30, K1
-	VANDPS       Z2, Z26, Z30
-	VCMPPS       $0x11, 2176(CX), Z30, K2
-	KANDW        K2, K1, K3
-	VPADDD       1408(CX), Z12, K3, Z12
-	VCMPPS       $0x00, 2176(CX), Z30, K3
-	VPADDD       1408(CX), Z13, K3, Z13
-	VMOVUPS      Z9, Z31
-	VMOVUPS      Z8, K2, Z31
-	VANDPS       Z1, Z26, Z30
-	VORPS        Z30, Z31, Z31
-	VCMPPS       $0x03, Z26, Z26, K3
-	VPADDD       1408(CX), Z14, K3, Z14
-	VMOVAPS      Z26, K3, Z31
-	VMOVAPS      Z31, K1, Z29
-	VMOVAPS      Z29, Z26
-	VADDPS       Z26, Z21, Z21
-	VMOVAPS      Z21, Z26
-	VANDPS       Z0, Z21, Z29
-	VMAXPS       Z5, Z29, Z29
-	VFMADD231PS  Z6, Z29, Z26
-	VFNMADD231PS Z6, Z29, Z26
-	VANDPS       Z2, Z26, Z29
-	VCMPPS       $0x06, Z10, Z29, K1
-	VANDPS       Z2, Z21, Z29
-	VCMPPS       $0x11, 2176(CX), Z29, K2
-	KANDW        K2, K1, K3
-	VPADDD       1408(CX), Z15, K3, Z15
-	VCMPPS       $0x00, 2176(CX), Z29, K3
-	VPADDD       1408(CX), Z16, K3, Z16
-	VMOVUPS      2112(CX), Z30
-	VMOVUPS      Z11, K2, Z30
-	VANDPS       Z1, Z21, Z29
-	VORPS        Z29, Z30, Z30
-	VCMPPS       $0x03, Z21, Z21, K3
-	VPADDD       1408(CX), Z17, K3, Z17
-	VMOVAPS      Z21, K3, Z30
-	VMOVAPS      Z30, K1, Z26
-	VMOVAPS      Z26, Z21
-	VBROADCASTSS (DI)(R10*4), Z26
-	VMULPS       (DX), Z26, Z26
-	VMOVAPS      Z26, Z29
-	VANDPS       Z0, Z26, Z30
-	VMAXPS       Z3, Z30, Z30
-	VFMADD231PS  Z4, Z30, Z29
-	VFNMADD231PS Z4, Z30, Z29
-	VANDPS       Z2, Z29, Z30
-	VCMPPS       $0x06, Z7, Z30, K1
-	VANDPS       Z2, Z26, Z30
-	VCMPPS       $0x11, 2176(CX), Z30, K2
-	KANDW        K2, K1, K3
-	VPADDD       1408(CX), Z12, K3, Z12
-	VCMPPS       $0x00, 2176(CX), Z30, K3
-	VPADDD       1408(CX), Z13, K3, Z13
-	VMOVUPS      Z9, Z31
-	VMOVUPS      Z8, K2, Z31
-	VANDPS       Z1, Z26, Z30
-	VORPS        Z30, Z31, Z31
-	VCMPPS       $0x03, Z26, Z26, K3
-	VPADDD       1408(CX), Z14, K3, Z14
-	VMOVAPS      Z26, K3, Z31
-	VMOVAPS      Z31, K1, Z29
-	VMOVAPS      Z29, Z26
-	VADDPS       Z26, Z22, Z22
-	VMOVAPS      Z22, Z26
-	VANDPS       Z0, Z22, Z29
-	VMAXPS       Z5, Z29, Z29
-	VFMADD231PS  Z6, Z29, Z26
-	VFNMADD231PS Z6, Z29, Z26
-	VANDPS       Z2, Z26, Z29
-	VCMPPS       $0x06, Z10, Z29, K1
-	VANDPS       Z2, Z22, Z29
-	VCMPPS       $0x11, 2176(CX), Z29, K2
-	KANDW        K2, K1, K3
-	VPADDD       1408(CX), Z15, K3, Z15
-	VCMPPS       $0x00, 2176(CX), Z29, K3
-	VPADDD       1408(CX), Z16, K3, Z16
-	VMOVUPS      2112(CX), Z30
-	VMOVUPS      Z11, K2, Z30
-	VANDPS       Z1, Z22, Z29
-	VORPS        Z29, Z30, Z30
-	VCMPPS       $0x03, Z22, Z22, K3
-	VPADDD       1408(CX), Z17, K3, Z17
-	VMOVAPS      Z22, K3, Z30
-	VMOVAPS      Z30, K1, Z26
-	VMOVAPS      Z26, Z22
-	VBROADCASTSS 4(DI)(R10*4), Z26
-	VMULPS       (DX), Z26, Z26
-	VMOVAPS      Z26, Z29
-	VANDPS       Z0, Z26, Z30
-	VMAXPS       Z3, Z30, Z30
-	VFMADD231PS  Z4, Z30, Z29
-	VFNMADD231PS Z4, Z30, Z29
-	VANDPS       Z2, Z29, Z30
-	VCMPPS       $0x06, Z7, Z30, K1
-	VANDPS       Z2, Z26, Z30
-	VCMPPS       $0x11, 2176(CX), Z30, K2
-	KANDW        K2, K1, K3
-	VPADDD       1408(CX), Z12, K3, Z12
-	VCMPPS       $0x00, 2176(CX), Z30, K3
-	VPADDD       1408(CX), Z13, K3, Z13
-	VMOVUPS      Z9, Z31
-	VMOVUPS      Z8, K2, Z31
-	VANDPS       Z1, Z26, Z30
-	VORPS        Z30, Z31, Z31
-	VCMPPS       $0x03, Z26, Z26, K3
-	VPADDD       1408(CX), Z14, K3, Z14
-	VMOVAPS      Z26, K3, Z31
-	VMOVAPS      Z31, K1, Z29
-	VMOVAPS      Z29, Z26
-	VADDPS       Z26, Z23, Z23
-	VMOVAPS      Z23, Z26
-	VANDPS       Z0, Z23, Z29
-	VMAXPS       Z5, Z29, Z29
-	VFMADD231PS  Z6, Z29, Z26
-	VFNMADD231PS Z6, Z29, Z26
-	VANDPS       Z2, Z26, Z29
-	VCMPPS       $0x06, Z10, Z29, K1
-	VANDPS       Z2, Z23, Z29
-	VCMPPS       $0x11, 2176(CX), Z29, K2
-	KANDW        K2, K1, K3
-	VPADDD       1408(CX), Z15, K3, Z15
-	VCMPPS       $0x00, 2176(CX), Z29, K3
-	VPADDD       1408(CX), Z16, K3, Z16
-	VMOVUPS      2112(CX), Z30
-	VMOVUPS      Z11, K2, Z30
-	VANDPS       Z1, Z23, Z29
-	VORPS        Z29, Z30, Z30
-	VCMPPS       $0x03, Z23, Z23, K3
-	VPADDD       1408(CX), Z17, K3, Z17
-	VMOVAPS      Z23, K3, Z30
-	VMOVAPS      Z30, K1, Z26
-	VMOVAPS      Z26, Z23
-	VBROADCASTSS (R8)(R10*4), Z26
-	VMULPS       (DX), Z26, Z26
-	VMOVAPS      Z26, Z29
-	VANDPS       Z0, Z26, Z30
-	VMAXPS       Z3, Z30, Z30
-	VFMADD231PS  Z4, Z30, Z29
-	VFNMADD231PS Z4, Z30, Z29
-	VANDPS       Z2, Z29, Z30
-	VCMPPS       $0x06, Z7, Z30, K1
-	VANDPS       Z2, Z26, Z30
-	VCMPPS       $0x11, 2176(CX), Z30, K2
-	KANDW        K2, K1, K3
-	VPADDD       1408(CX), Z12, K3, Z12
-	VCMPPS       $0x00, 2176(CX), Z30, K3
-	VPADDD       1408(CX), Z13, K3, Z13
-	VMOVUPS      Z9, Z31
-	VMOVUPS      Z8, K2, Z31
-	VANDPS       Z1, Z26, Z30
-	VORPS        Z30, Z31, Z31
-	VCMPPS       $0x03, Z26, Z26, K3
-	VPADDD       1408(CX), Z14, K3, Z14
-	VMOVAPS      Z26, K3, Z31
-	VMOVAPS      Z31, K1, Z29
-	VMOVAPS      Z29, Z26
-	VADDPS       Z26, Z24, Z24
-	VMOVAPS      Z24, Z26
-	VANDPS       Z0, Z24, Z29
-	VMAXPS       Z5, Z29, Z29
-	VFMADD231PS  Z6, Z29, Z26
-	VFNMADD231PS Z6, Z29, Z26
-	VANDPS       Z2, Z26, Z29
-	VCMPPS       $0x06, Z10, Z29, K1
-	VANDPS       Z2, Z24, Z29
-	VCMPPS       $0x11, 2176(CX), Z29, K2
-	KANDW        K2, K1, K3
-	VPADDD       1408(CX), Z15, K3, Z15
-	VCMPPS       $0x00, 2176(CX), Z29, K3
-	VPADDD       1408(CX), Z16, K3, Z16
-	VMOVUPS      2112(CX), Z30
-	VMOVUPS      Z11, K2, Z30
-	VANDPS       Z1, Z24, Z29
-	VORPS        Z29, Z30, Z30
-	VCMPPS       $0x03, Z24, Z24, K3
-	VPADDD       1408(CX), Z17, K3, Z17
-	VMOVAPS      Z24, K3, Z30
-	VMOVAPS      Z30, K1, Z26
-	VMOVAPS      Z26, Z24
-	VBROADCASTSS 4(R8)(R10*4), Z26
-	VMULPS       (DX), Z26, Z26
-	VMOVAPS      Z26, Z29
-	VANDPS       Z0, Z26, Z30
-	VMAXPS       Z3, Z30, Z30
-	VFMADD231PS  Z4, Z30, Z29
-	VFNMADD231PS Z4, Z30, Z29
-	VANDPS       Z2, Z29, Z30
-	VCMPPS       $0x06, Z7, Z30, K1
-	VANDPS       Z2, Z26, Z30
-	VCMPPS       $0x11, 2176(CX), Z30, K2
-	KANDW        K2, K1, K3
-	VPADDD       1408(CX), Z12, K3, Z12
-	VCMPPS       $0x00, 2176(CX), Z30, K3
-	VPADDD       1408(CX), Z13, K3, Z13
-	VMOVUPS      Z9, Z31
-	VMOVUPS      Z8, K2, Z31
-	VANDPS       Z1, Z26, Z30
-	VORPS        Z30, Z31, Z31
-	VCMPPS       $0x03, Z26, Z26, K3
-	VPADDD       1408(CX), Z14, K3, Z14
-	VMOVAPS      Z26, K3, Z31
-	VMOVAPS      Z31, K1, Z29
-	VMOVAPS      Z29, Z26
-	VADDPS       Z26, Z25, Z25
-	VMOVAPS      Z25, Z26
-	VANDPS       Z0, Z25, Z29
-	VMAXPS       Z5, Z29, Z29
-	VFMADD231PS  Z6, Z29, Z26
-	VFNMADD231PS Z6, Z29, Z26
-	VANDPS       Z2, Z26, Z29
-	VCMPPS       $0x06, Z10, Z29, K1
-	VANDPS       Z2, Z25, Z29
-	VCMPPS       $0x11, 2176(CX), Z29, K2
-	KANDW        K2, K1, K3
-	VPADDD       1408(CX), Z15, K3, Z15
-	VCMPPS       $0x00, 2176(CX), Z29, K3
-	VPADDD       1408(CX), Z16, K3, Z16
-	VMOVUPS      2112(CX), Z30
-	VMOVUPS      Z11, K2, Z30
-	VANDPS       Z1, Z25, Z29
-	VORPS        Z29, Z30, Z30
-	VCMPPS       $0x03, Z25, Z25, K3
-	VPADDD       1408(CX), Z17, K3, Z17
-	VMOVAPS      Z25, K3, Z30
-	VMOVAPS      Z30, K1, Z26
-	VMOVAPS      Z26, Z25
-	ADDQ         $0x00000040, DX
-	ADDQ         $0x02, R10
-	CMPQ         R10, R9
-	JLT          term
-	VMOVUPS      640(CX), Z26
-	VPXORD       Z27, Z27, Z27
-	VPXORD       Z28, Z28, Z28
-	VFMADD231PS  Z27, Z18, Z28
-	VMULPS       Z26, Z18, Z18
-	VADDPS       Z27, Z18, Z18
-	VFMADD231PS  Z27, Z19, Z28
-	VMULPS       Z26, Z19, Z19
-	VADDPS       Z27, Z19, Z19
-	VFMADD231PS  Z27, Z20, Z28
-	VMULPS       Z26, Z20, Z20
-	VADDPS       Z27, Z20, Z20
-	VFMADD231PS  Z27, Z21, Z28
-	VMULPS       Z26, Z21, Z21
-	VADDPS       Z27, Z21, Z21
-	VFMADD231PS  Z27, Z22, Z28
-	VMULPS       Z26, Z22, Z22
-	VADDPS       Z27, Z22, Z22
-	VFMADD231PS  Z27, Z23, Z28
-	VMULPS       Z26, Z23, Z23
-	VADDPS       Z27, Z23, Z23
-	VFMADD231PS  Z27, Z24, Z28
-	VMULPS       Z26, Z24, Z24
-	VADDPS       Z27, Z24, Z24
-	VFMADD231PS  Z27, Z25, Z28
-	VMULPS       Z26, Z25, Z25
-	VADDPS       Z27, Z25, Z25
-	MOVQ         16(SP), DX
-	MOVQ         176(AX), BX
-	VMOVUPS      Z18, (DX)
-	LEAQ         (DX)(BX*4), DX
-	VMOVUPS      Z19, (DX)
-	LEAQ         (DX)(BX*4), DX
-	VMOVUPS      Z20, (DX)
-	LEAQ         (DX)(BX*4), DX
-	VMOVUPS      Z21, (DX)
-	LEAQ         (DX)(BX*4), DX
-	VMOVUPS      Z22, (DX)
-	LEAQ         (DX)(BX*4), DX
-	VMOVUPS      Z23, (DX)
-	LEAQ         (DX)(BX*4), DX
-	VMOVUPS      Z24, (DX)
-	LEAQ         (DX)(BX*4), DX
-	VMOVUPS      Z25, (DX)
-	LEAQ         (DX)(BX*4), DX
-	MOVQ         DX, 16(SP)
-	VCMPPS       $0x03, Z28, Z28, K1
-	KMOVW        K1, DX
-	TESTL        DX, DX
-	MOVQ         24(SP), DX
-	SETNE        (DX)
-	INCQ         24(SP)
-	DECQ         (SP)
-	JNZ          group
-	MOVQ         296(AX), AX
-	VMOVUPS      Z12, 40(SP)
-	XORQ         CX, CX
-	MOVL         40(SP), DX
-	ADDQ         DX, CX
-	MOVL         44(SP), DX
-	ADDQ         DX, CX
-	MOVL         48(SP), DX
-	ADDQ         DX, CX
-	MOVL         52(SP), DX
-	ADDQ         DX, CX
-	MOVL         56(SP), DX
-	ADDQ         DX, CX
-	MOVL         60(SP), DX
-	ADDQ         DX, CX
-	MOVL         64(SP), DX
-	ADDQ         DX, CX
-	MOVL         68(SP), DX
-	ADDQ         DX, CX
-	MOVL         72(SP), DX
-	ADDQ         DX, CX
-	MOVL         76(SP), DX
-	ADDQ         DX, CX
-	MOVL         80(SP), DX
-	ADDQ         DX, CX
-	MOVL         84(SP), DX
-	ADDQ         DX, CX
-	MOVL         88(SP), DX
-	ADDQ         DX, CX
-	MOVL         92(SP), DX
-	ADDQ         DX, CX
-	MOVL         96(SP), DX
-	ADDQ         DX, CX
-	MOVL         100(SP), DX
-	ADDQ         DX, CX
-	ADDQ         CX, (AX)
-	VMOVUPS      Z13, 40(SP)
-	XORQ         CX, CX
-	MOVL         40(SP), DX
-	ADDQ         DX, CX
-	MOVL         44(SP), DX
-	ADDQ         DX, CX
-	MOVL         48(SP), DX
-	ADDQ         DX, CX
-	MOVL         52(SP), DX
-	ADDQ         DX, CX
-	MOVL         56(SP), DX
-	ADDQ         DX, CX
-	MOVL         60(SP), DX
-	ADDQ         DX, CX
-	MOVL         64(SP), DX
-	ADDQ         DX, CX
-	MOVL         68(SP), DX
-	ADDQ         DX, CX
-	MOVL         72(SP), DX
-	ADDQ         DX, CX
-	MOVL         76(SP), DX
-	ADDQ         DX, CX
-	MOVL         80(SP), DX
-	ADDQ         DX, CX
-	MOVL         84(SP), DX
-	ADDQ         DX, CX
-	MOVL         88(SP), DX
-	ADDQ         DX, CX
-	MOVL         92(SP), DX
-	ADDQ         DX, CX
-	MOVL         96(SP), DX
-	ADDQ         DX, CX
-	MOVL         100(SP), DX
-	ADDQ         DX, CX
-	ADDQ         CX, 8(AX)
-	VMOVUPS      Z14, 40(SP)
-	XORQ         CX, CX
-	MOVL         40(SP), DX
-	ADDQ         DX, CX
-	MOVL         44(SP), DX
-	ADDQ         DX, CX
-	MOVL         48(SP), DX
-	ADDQ         DX, CX
-	MOVL         52(SP), DX
-	ADDQ         DX, CX
-	MOVL         56(SP), DX
-	ADDQ         DX, CX
-	MOVL         60(SP), DX
-	ADDQ         DX, CX
-	MOVL         64(SP), DX
-	ADDQ         DX, CX
-	MOVL         68(SP), DX
-	ADDQ         DX, CX
-	MOVL         72(SP), DX
-	ADDQ         DX, CX
-	MOVL         76(SP), DX
-	ADDQ         DX, CX
-	MOVL         80(SP), DX
-	ADDQ         DX, CX
-	MOVL         84(SP), DX
-	ADDQ         DX, CX
-	MOVL         88(SP), DX
-	ADDQ         DX, CX
-	MOVL         92(SP), DX
-	ADDQ         DX, CX
-	MOVL         96(SP), DX
-	ADDQ         DX, CX
-	MOVL         100(SP), DX
-	ADDQ         DX, CX
-	ADDQ         CX, 16(AX)
-	VMOVUPS      Z15, 40(SP)
-	XORQ         CX, CX
-	MOVL         40(SP), DX
-	ADDQ         DX, CX
-	MOVL         44(SP), DX
-	ADDQ         DX, CX
-	MOVL         48(SP), DX
-	ADDQ         DX, CX
-	MOVL         52(SP), DX
-	ADDQ         DX, CX
-	MOVL         56(SP), DX
-	ADDQ         DX, CX
-	MOVL         60(SP), DX
-	ADDQ         DX, CX
-	MOVL         64(SP), DX
-	ADDQ         DX, CX
-	MOVL         68(SP), DX
-	ADDQ         DX, CX
-	MOVL         72(SP), DX
-	ADDQ         DX, CX
-	MOVL         76(SP), DX
-	ADDQ         DX, CX
-	MOVL         80(SP), DX
-	ADDQ         DX, CX
-	MOVL         84(SP), DX
-	ADDQ         DX, CX
-	MOVL         88(SP), DX
-	ADDQ         DX, CX
-	MOVL         92(SP), DX
-	ADDQ         DX, CX
-	MOVL         96(SP), DX
-	ADDQ         DX, CX
-	MOVL         100(SP), DX
-	ADDQ         DX, CX
-	ADDQ         CX, 24(AX)
-	VMOVUPS      Z16, 40(SP)
-	XORQ         CX, CX
-	MOVL         40(SP), DX
-	ADDQ         DX, CX
-	MOVL         44(SP), DX
-	ADDQ         DX, CX
-	MOVL         48(SP), DX
-	ADDQ         DX, CX
-	MOVL         52(SP), DX
-	ADDQ         DX, CX
-	MOVL         56(SP), DX
-	ADDQ         DX, CX
-	MOVL         60(SP), DX
-	ADDQ         DX, CX
-	MOVL         64(SP), DX
-	ADDQ         DX, CX
-	MOVL         68(SP), DX
-	ADDQ         DX, CX
-	MOVL         72(SP), DX
-	ADDQ         DX, CX
-	MOVL         76(SP), DX
-	ADDQ         DX, CX
-	MOVL         80(SP), DX
-	ADDQ         DX, CX
-	MOVL         84(SP), DX
-	ADDQ         DX, CX
-	MOVL         88(SP), DX
-	ADDQ         DX, CX
-	MOVL         92(SP), DX
-	ADDQ         DX, CX
-	MOVL         96(SP), DX
-	ADDQ         DX, CX
-	MOVL         100(SP), DX
-	ADDQ         DX, CX
-	ADDQ         CX, 32(AX)
-	VMOVUPS      Z17, 40(SP)
-	XORQ         CX, CX
-	MOVL         40(SP), DX
-	ADDQ         DX, CX
-	MOVL         44(SP), DX
-	ADDQ         DX, CX
-	MOVL         48(SP), DX
-	ADDQ         DX, CX
-	MOVL         52(SP), DX
-	ADDQ         DX, CX
-	MOVL         56(SP), DX
-	ADDQ         DX, CX
-	MOVL         60(SP), DX
-	ADDQ         DX, CX
-	MOVL         64(SP), DX
-	ADDQ         DX, CX
-	MOVL         68(SP), DX
-	ADDQ         DX, CX
-	MOVL         72(SP), DX
-	ADDQ         DX, CX
-	MOVL         76(SP), DX
-	ADDQ         DX, CX
-	MOVL         80(SP), DX
-	ADDQ         DX, CX
-	MOVL         84(SP), DX
-	ADDQ         DX, CX
-	MOVL         88(SP), DX
-	ADDQ         DX, CX
-	MOVL         92(SP), DX
-	ADDQ         DX, CX
-	MOVL         96(SP), DX
-	ADDQ         DX, CX
-	MOVL         100(SP), DX
-	ADDQ         DX, CX
-	ADDQ         CX, 40(AX)
-	VZEROUPPER
-	RET
-
-// func carefulBothAVX512R2V1(t *Tile[float32])
-// Requires: AVX, AVX512DQ, AVX512F
-TEXT ·carefulBothAVX512R2V1(SB), $104-8
-	MOVQ    t+0(FP), AX
-	MOVQ    240(AX), CX
-	VMOVUPS (CX), Z0
-	VMOVUPS 64(CX), Z1
-	VMOVUPS 128(CX), Z2
-	VMOVUPS 192(CX), Z3
-	VMOVUPS 256(CX), Z4
-	VMOVUPS 384(CX), Z5
-	VMOVUPS 448(CX), Z6
-	VMOVUPS 1792(CX), Z7
-	VMOVUPS 1856(CX), Z8
-	VMOVUPS 1920(CX), Z9
-	VMOVUPS 1984(CX), Z10
-	VMOVUPS 2048(CX), Z11
-	VMOVUPS 2112(CX), Z12
-	VMOVUPS 2176(CX), Z13
-	VMOVUPS 2240(CX), Z14
-	VMOVUPS 1408(CX), Z14
-	MOVQ    8(AX), DX
-	MOVQ    DX, (SP)
-	MOVQ    120(AX), DX
-	MOVQ    DX, 8(SP)
-	MOVQ    152(AX), DX
-	MOVQ    DX, 16(SP)
-	MOVQ    216(AX), DX
-	MOVQ    DX, 24(SP)
-	MOVQ    16(AX), DX
-	MOVQ    DX, 32(SP)
-	VPXORD  Z15, Z15, Z15
-	VPXORD  Z16, Z16, Z16
-	VPXORD  Z17, Z17, Z17
-	VPXORD  Z18, Z18, Z18
-	VPXORD  Z19, Z19, Z19
-	VPXORD  Z20, Z20, Z20
-
-group:
-	MOVQ    8(SP), DX
-	MOVQ    144(AX), BX
-	VMOVUPS (DX), Z23
-	VMULPS  576(CX), Z23, Z23
-	LEAQ    (DX)(BX*4), DX
-	VMOVUPS (DX), Z24
-	VMULPS  576(CX), Z24, Z24
-	LEAQ    (DX)(BX*4), DX
-	MOVQ    DX, 8(SP)
-	MOVQ    40(AX), DX
-	MOVQ    32(SP), BX
-	LEAQ    (BX)(DX*4), DX
-	MOVQ    DX, 32(SP)
-	MOVQ    48(AX), DX
-	MOVQ    (AX), SI
-	ADDQ    SI, SI
-	XORQ    DI, DI
-
-term:
-	VBROADCASTSS (BX)(DI*4), Z25
-	VMULPS       (DX), Z25, Z25
-	VMOVAPS      Z25, Z26
-	VANDPS       Z0, Z25, Z27
-	VMAXPS       Z3, Z27, Z27
-	VFMADD231PS  Z4, Z27, Z26
-	VFNMADD231PS Z4, Z27, Z26
-	VANDPS       Z2, Z26, Z27
-	VCMPPS       $0x06, Z7, Z27, K1
-	VANDPS       Z2, Z25, Z27
-	VCMPPS       $0x11, Z13, Z27, K2
-	KANDW        K2, K1, K3
-	VPADDD       Z14, Z15, K3, Z15
-	VCMPPS       $0x00, Z13, Z27, K3
-	VPADDD       Z14, Z16, K3, Z16
-	VMOVUPS      Z9, Z28
-	VMOVUPS      Z8, K2, Z28
-	VANDPS       Z1, Z25, Z27
-	VORPS        Z27, Z28, Z28
-	VCMPPS       $0x03, Z25, Z25, K3
-	VPADDD       Z14, Z17, K3, Z17
-	VMOVAPS      Z25, K3, Z28
-	VMOVAPS      Z28, K1, Z26
-	VMOVAPS      Z26, Z25
-	VADDPS       Z25, Z23, Z23
-	VMOVAPS      Z23, Z25
-	VANDPS       Z0, Z23, Z26
-	VMAXPS       Z5, Z26, Z26
-	VFMADD231PS  Z6, Z26, Z25
-	VFNMADD231PS Z6, Z26, Z25
-	VANDPS       Z2, Z25, Z26
-	VCMPPS       $0x06, Z10, Z26, K1
-	VANDPS       Z2, Z23, Z26
-	VCMPPS       $0x11, Z13, Z26, K2
-	KANDW        K2, K1, K3
-	VPADDD       Z14, Z18, K3, Z18
-	VCMPPS       $0x00, Z13, Z26, K3
-	VPADDD       Z14, Z19, K3, Z19
-	VMOVUPS      Z12, Z27
-	VMOVUPS      Z11, K2, Z27
-	VANDPS       Z1, Z23, Z26
-	VORPS        Z26, Z27, Z27
-	VCMPPS       $0x03, Z23, Z23, K3
-	VPADDD       Z14, Z20, K3, Z20
-	VMOVAPS      Z23, K3, Z27
-	VMOVAPS      Z27, K1, Z25
-	VMOVAPS      Z25, Z23
-	VBROADCASTSS 4(BX)(DI*4), Z25
-	VMULPS       (DX), Z25, Z25
-	VMOVAPS      Z25, Z26
-	VANDPS       Z0, Z25, Z27
-	VMAXPS       Z3, Z27, Z27
-	VFMADD231PS  Z4, Z27, Z26
-	VFNMADD231PS Z4, Z27, Z26
-	VANDPS       Z2, Z26, Z27
-	VCMPPS       $0x06, Z7, Z27, K1
-	VANDPS       Z2, Z25, Z27
-	VCMPPS       $0x11, Z13, Z27, K2
-	KANDW        K2, K1, K3
-	VPADDD       Z14, Z15, K3, Z15
-	VCMPPS       $0x00, Z13, Z27, K3
-	VPADDD       Z14, Z16, K3, Z16
-	VMOVUPS      Z9, Z28
-	VMOVUPS      Z8, K2, Z28
-	VANDPS       Z1, Z25, Z27
-	VORPS        Z27, Z28, Z28
-	VCMPPS       $0x03, Z25, Z25, K3
-	VPADDD       Z14, Z17, K3, Z17
-	VMOVAPS      Z25, K3, Z28
-	VMOVAPS      Z28, K1, Z26
-	VMOVAPS      Z26, Z25
-	VADDPS       Z25, Z24, Z24
-	VMOVAPS      Z24, Z25
-	VANDPS       Z0, Z24, Z26
-	VMAXPS       Z5, Z26, Z26
-	VFMADD231PS  Z6, Z26, Z25
-	VFNMADD231PS Z6, Z26, Z25
-	VANDPS       Z2, Z25, Z26
-	VCMPPS       $0x06, Z10, Z26, K1
-	VANDPS       Z2, Z24, Z26
-	VCMPPS       $0x11, Z13, Z26, K2
-	KANDW        K2, K1, K3
-	VPADDD       Z14, Z18, K3, Z18
-	VCMPPS       $0x00, Z13, Z26, K3
-	VPADDD       Z14, Z19, K3, Z19
-	VMOVUPS      Z12, Z27
-	VMOVUPS      Z11, K2, Z27
-	VANDPS       Z1, Z24, Z26
-	VORPS        Z26, Z27, Z27
-	VCMPPS       $0x03, Z24, Z24, K3
-	VPADDD       Z14, Z20, K3, Z20
-	VMOVAPS      Z24, K3, Z27
-	VMOVAPS      Z27, K1, Z25
-	VMOVAPS      Z25, Z24
-	ADDQ         $0x00000040, DX
-	ADDQ         $0x02, DI
-	CMPQ         DI, SI
-	JLT          term
-	VMOVUPS      640(CX), Z25
-	VPXORD       Z21, Z21, Z21
-	VPXORD       Z22, Z22, Z22
-	VFMADD231PS  Z21, Z23, Z22
-	VMULPS       Z25, Z23, Z23
-	VADDPS       Z21, Z23, Z23
-	VFMADD231PS  Z21, Z24, Z22
-	VMULPS       Z25, Z24, Z24
-	VADDPS       Z21, Z24, Z24
-	MOVQ         16(SP), DX
-	MOVQ         176(AX), BX
-	VMOVUPS      Z23, (DX)
-	LEAQ         (DX)(BX*4), DX
-	VMOVUPS      Z24, (DX)
-	LEAQ         (DX)(BX*4), DX
-	MOVQ         DX, 16(SP)
-	VCMPPS       $0x03, Z22, Z22, K1
-	KMOVW        K1, DX
-	TESTL        DX, DX
-	MOVQ         24(SP), DX
-	SETNE        (DX)
-	INCQ         24(SP)
-	DECQ         (SP)
-	JNZ          group
-	MOVQ         296(AX), AX
-	VMOVUPS      Z15, 40(SP)
-	XORQ         CX, CX
-	MOVL         40(SP), DX
-	ADDQ         DX, CX
-	MOVL         44(SP), DX
-	ADDQ         DX, CX
-	MOVL         48(SP), DX
-	ADDQ         DX, CX
-	MOVL         52(SP), DX
-	ADDQ         DX, CX
-	MOVL         56(SP), DX
-	ADDQ         DX, CX
-	MOVL         60(SP), DX
-	ADDQ         DX, CX
-	MOVL         64(SP), DX
-	ADDQ         DX, CX
-	MOVL         68(SP), DX
-	ADDQ         DX, CX
-	MOVL         72(SP), DX
-	ADDQ         DX, CX
-	MOVL         76(SP), DX
-	ADDQ         DX, CX
-	MOVL         80(SP), DX
-	ADDQ         DX, CX
-	MOVL         84(SP), DX
-	ADDQ         DX, CX
-	MOVL         88(SP), DX
-	ADDQ         DX, CX
-	MOVL         92(SP), DX
-	ADDQ         DX, CX
-	MOVL         96(SP), DX
-	ADDQ         DX, CX
-	MOVL         100(SP), DX
-	ADDQ         DX, CX
-	ADDQ         CX, (AX)
-	VMOVUPS      Z16, 40(SP)
-	XORQ         CX, CX
-	MOVL         40(SP), DX
-	ADDQ         DX, CX
-	MOVL         44(SP), DX
-	ADDQ         DX, CX
-	MOVL         48(SP), DX
-	ADDQ         DX, CX
-	MOVL         52(SP), DX
-	ADDQ         DX, CX
-	MOVL         56(SP), DX
-	ADDQ         DX, CX
-	MOVL         60(SP), DX
-	ADDQ         DX, CX
-	MOVL         64(SP), DX
-	ADDQ         DX, CX
-	MOVL         68(SP), DX
-	ADDQ         DX, CX
-	MOVL         72(SP), DX
-	ADDQ         DX, CX
-	MOVL         76(SP), DX
-	ADDQ         DX, CX
-	MOVL         80(SP), DX
-	ADDQ         DX, CX
-	MOVL         84(SP), DX
-	ADDQ         DX, CX
-	MOVL         88(SP), DX
-	ADDQ         DX, CX
-	MOVL         92(SP), DX
-	ADDQ         DX, CX
-	MOVL         96(SP), DX
-	ADDQ         DX, CX
-	MOVL         100(SP), DX
-	ADDQ         DX, CX
-	ADDQ         CX, 8(AX)
-	VMOVUPS      Z17, 40(SP)
-	XORQ         CX, CX
-	MOVL         40(SP), DX
-	ADDQ         DX, CX
-	MOVL         44(SP), DX
-	ADDQ         DX, CX
-	MOVL         48(SP), DX
-	ADDQ         DX, CX
-	MOVL         52(SP), DX
-	ADDQ         DX, CX
-	MOVL         56(SP), DX
-	ADDQ         DX, CX
-	MOVL         60(SP), DX
-	ADDQ         DX, CX
-	MOVL         64(SP), DX
-	ADDQ         DX, CX
-	MOVL         68(SP), DX
-	ADDQ         DX, CX
-	MOVL         72(SP), DX
-	ADDQ         DX, CX
-	MOVL         76(SP), DX
-	ADDQ         DX, CX
-	MOVL         80(SP), DX
-	ADDQ         DX, CX
-	MOVL         84(SP), DX
-	ADDQ         DX, CX
-	MOVL         88(SP), DX
-	ADDQ         DX, CX
-	MOVL         92(SP), DX
-	ADDQ         DX, CX
-	MOVL         96(SP), DX
-	ADDQ         DX, CX
-	MOVL         100(SP), DX
-	ADDQ         DX, CX
-	ADDQ         CX, 16(AX)
-	VMOVUPS      Z18, 40(SP)
-	XORQ         CX, CX
-	MOVL         40(SP), DX
-	ADDQ         DX, CX
-	MOVL         44(SP), DX
-	ADDQ         DX, CX
-	MOVL         48(SP), DX
-	ADDQ         DX, CX
-	MOVL         52(SP), DX
-	ADDQ         DX, CX
-	MOVL         56(SP), DX
-	ADDQ         DX, CX
-	MOVL         60(SP), DX
-	ADDQ         DX, CX
-	MOVL         64(SP), DX
-	ADDQ         DX, CX
-	MOVL         68(SP), DX
-	ADDQ         DX, CX
-	MOVL         72(SP), DX
-	ADDQ         DX, CX
-	MOVL         76(SP), DX
-	ADDQ         DX, CX
-	MOVL         80(SP), DX
-	ADDQ         DX, CX
-	MOVL         84(SP), DX
-	ADDQ         DX, CX
-	MOVL         88(SP), DX
-	ADDQ         DX, CX
-	MOVL         92(SP), DX
-	ADDQ         DX, CX
-	MOVL         96(SP), DX
-	ADDQ         DX, CX
-	MOVL         100(SP), DX
-	ADDQ         DX, CX
-	ADDQ         CX, 24(AX)
-	VMOVUPS      Z19, 40(SP)
-	XORQ         CX, CX
-	MOVL         40(SP), DX
-	ADDQ         DX, CX
-	MOVL         44(SP), DX
-	ADDQ         DX, CX
-	MOVL         48(SP), DX
-	ADDQ         DX, CX
-	MOVL         52(SP), DX
-	ADDQ         DX, CX
-	MOVL         56(SP), DX
-	ADDQ         DX, CX
-	MOVL         60(SP), DX
-	ADDQ         DX, CX
-	MOVL         64(SP), DX
-	ADDQ         DX, CX
-	MOVL         68(SP), DX
-	ADDQ         DX, CX
-	MOVL         72(SP), DX
-	ADDQ         DX, CX
-	MOVL         76(SP), DX
-	ADDQ         DX, CX
-	MOVL         80(SP), DX
-	ADDQ         DX, CX
-	MOVL         84(SP), DX
-	ADDQ         DX, CX
-	MOVL         88(SP), DX
-	ADDQ         DX, CX
-	MOVL         92(SP), DX
-	ADDQ         DX, CX
-	MOVL         96(SP), DX
-	ADDQ         DX, CX
-	MOVL         100(SP), DX
-	ADDQ         DX, CX
-	ADDQ         CX, 32(AX)
-	VMOVUPS      Z20, 40(SP)
-	XORQ         CX, CX
-	MOVL         40(SP), DX
-	ADDQ         DX, CX
-	MOVL         44(SP), DX
-	ADDQ         DX, CX
-	MOVL         48(SP), DX
-	ADDQ         DX, CX
-	MOVL         52(SP), DX
-	ADDQ         DX, CX
-	MOVL         56(SP), DX
-	ADDQ         DX, CX
-	MOVL         60(SP), DX
-	ADDQ         DX, CX
-	MOVL         64(SP), DX
-	ADDQ         DX, CX
-	MOVL         68(SP), DX
-	ADDQ         DX, CX
-	MOVL         72(SP), DX
-	ADDQ         DX, CX
-	MOVL         76(SP), DX
-	ADDQ         DX, CX
-	MOVL         80(SP), DX
-	ADDQ         DX, CX
-	MOVL         84(SP), DX
-	ADDQ         DX, CX
-	MOVL         88(SP), DX
-	ADDQ         DX, CX
-	MOVL         92(SP), DX
-	ADDQ         DX, CX
-	MOVL         96(SP), DX
-	ADDQ         DX, CX
-	MOVL         100(SP), DX
-	ADDQ         DX, CX
-	ADDQ         CX, 40(AX)
-	VZEROUPPER
-	RET
-
-// func carefulOddAVX512R4V1(t *Tile[float32])
-// Requires: AVX, AVX512DQ, AVX512F
-TEXT ·carefulOddAVX512R4V1(SB), $104-8
+TEXT ·carefulRoundedAVX512R4V1(SB), $104-8
 	MOVQ    t+0(FP), AX
 	MOVQ    240(AX), CX
 	VMOVUPS (CX), Z0
@@ -13101,8 +11854,8 @@ term:
 	VCMPPS       $0x03, Z22, Z22, K3
 	VPADDD       1408(CX), Z14, K3, Z14
 	VMOVAPS      Z22, K3, Z31
-	VMOVAPS      Z31, K1, Z29
 	VMOVAPS      Z29, Z22
+	VMOVAPS      Z31, K1, Z22
 	VADDPS       Z22, Z18, Z29
 	VSUBPS       Z18, Z29, Z30
 	VSUBPS       Z30, Z29, Z31
@@ -13139,8 +11892,8 @@ term:
 	VCMPPS       $0x03, Z18, Z18, K3
 	VPADDD       1408(CX), Z17, K3, Z17
 	VMOVAPS      Z18, K3, Z30
-	VMOVAPS      Z30, K1, Z22
 	VMOVAPS      Z22, Z18
+	VMOVAPS      Z30, K1, Z18
 	VBROADCASTSS 4(BX)(R8*4), Z22
 	VMULPS       (DX), Z22, Z22
 	VMOVAPS      Z22, Z29
@@ -13163,8 +11916,8 @@ term:
 	VCMPPS       $0x03, Z22, Z22, K3
 	VPADDD       1408(CX), Z14, K3, Z14
 	VMOVAPS      Z22, K3, Z31
-	VMOVAPS      Z31, K1, Z29
 	VMOVAPS      Z29, Z22
+	VMOVAPS      Z31, K1, Z22
 	VADDPS       Z22, Z19, Z29
 	VSUBPS       Z19, Z29, Z30
 	VSUBPS       Z30, Z29, Z31
@@ -13201,8 +11954,8 @@ term:
 	VCMPPS       $0x03, Z19, Z19, K3
 	VPADDD       1408(CX), Z17, K3, Z17
 	VMOVAPS      Z19, K3, Z30
-	VMOVAPS      Z30, K1, Z22
 	VMOVAPS      Z22, Z19
+	VMOVAPS      Z30, K1, Z19
 	VBROADCASTSS (SI)(R8*4), Z22
 	VMULPS       (DX), Z22, Z22
 	VMOVAPS      Z22, Z29
@@ -13225,8 +11978,8 @@ term:
 	VCMPPS       $0x03, Z22, Z22, K3
 	VPADDD       1408(CX), Z14, K3, Z14
 	VMOVAPS      Z22, K3, Z31
-	VMOVAPS      Z31, K1, Z29
 	VMOVAPS      Z29, Z22
+	VMOVAPS      Z31, K1, Z22
 	VADDPS       Z22, Z20, Z29
 	VSUBPS       Z20, Z29, Z30
 	VSUBPS       Z30, Z29, Z31
@@ -13263,8 +12016,8 @@ term:
 	VCMPPS       $0x03, Z20, Z20, K3
 	VPADDD       1408(CX), Z17, K3, Z17
 	VMOVAPS      Z20, K3, Z30
-	VMOVAPS      Z30, K1, Z22
 	VMOVAPS      Z22, Z20
+	VMOVAPS      Z30, K1, Z20
 	VBROADCASTSS 4(SI)(R8*4), Z22
 	VMULPS       (DX), Z22, Z22
 	VMOVAPS      Z22, Z29
@@ -13287,8 +12040,8 @@ term:
 	VCMPPS       $0x03, Z22, Z22, K3
 	VPADDD       1408(CX), Z14, K3, Z14
 	VMOVAPS      Z22, K3, Z31
-	VMOVAPS      Z31, K1, Z29
 	VMOVAPS      Z29, Z22
+	VMOVAPS      Z31, K1, Z22
 	VADDPS       Z22, Z21, Z29
 	VSUBPS       Z21, Z29, Z30
 	VSUBPS       Z30, Z29, Z31
@@ -13325,8 +12078,8 @@ term:
 	VCMPPS       $0x03, Z21, Z21, K3
 	VPADDD       1408(CX), Z17, K3, Z17
 	VMOVAPS      Z21, K3, Z30
-	VMOVAPS      Z30, K1, Z22
 	VMOVAPS      Z22, Z21
+	VMOVAPS      Z30, K1, Z21
 	ADDQ         $0x00000040, DX
 	ADDQ         $0x02, R8
 	CMPQ         R8, DI
@@ -13579,9 +12332,9 @@ term:
 	VZEROUPPER
 	RET
 
-// func carefulOddAVX512R2V1(t *Tile[float32])
+// func carefulRoundedAVX512R2V1(t *Tile[float32])
 // Requires: AVX, AVX512DQ, AVX512F
-TEXT ·carefulOddAVX512R2V1(SB), $104-8
+TEXT ·carefulRoundedAVX512R2V1(SB), $104-8
 	MOVQ    t+0(FP), AX
 	MOVQ    240(AX), CX
 	VMOVUPS (CX), Z0
@@ -13659,8 +12412,8 @@ term:
 	VCMPPS       $0x03, Z24, Z24, K3
 	VPADDD       Z15, Z18, K3, Z18
 	VMOVAPS      Z24, K3, Z31
-	VMOVAPS      Z31, K1, Z29
 	VMOVAPS      Z29, Z24
+	VMOVAPS      Z31, K1, Z24
 	VADDPS       Z24, Z22, Z29
 	VSUBPS       Z22, Z29, Z30
 	VSUBPS       Z30, Z29, Z31
@@ -13697,8 +12450,8 @@ term:
 	VCMPPS       $0x03, Z22, Z22, K3
 	VPADDD       Z15, Z21, K3, Z21
 	VMOVAPS      Z22, K3, Z30
-	VMOVAPS      Z30, K1, Z24
 	VMOVAPS      Z24, Z22
+	VMOVAPS      Z30, K1, Z22
 	VBROADCASTSS 4(BX)(DI*4), Z24
 	VMULPS       (DX), Z24, Z24
 	VMOVAPS      Z24, Z29
@@ -13721,8 +12474,8 @@ term:
 	VCMPPS       $0x03, Z24, Z24, K3
 	VPADDD       Z15, Z18, K3, Z18
 	VMOVAPS      Z24, K3, Z31
-	VMOVAPS      Z31, K1, Z29
 	VMOVAPS      Z29, Z24
+	VMOVAPS      Z31, K1, Z24
 	VADDPS       Z24, Z23, Z29
 	VSUBPS       Z23, Z29, Z30
 	VSUBPS       Z30, Z29, Z31
@@ -13759,8 +12512,8 @@ term:
 	VCMPPS       $0x03, Z23, Z23, K3
 	VPADDD       Z15, Z21, K3, Z21
 	VMOVAPS      Z23, K3, Z30
-	VMOVAPS      Z30, K1, Z24
 	VMOVAPS      Z24, Z23
+	VMOVAPS      Z30, K1, Z23
 	ADDQ         $0x00000040, DX
 	ADDQ         $0x02, DI
 	CMPQ         DI, SI

@@ -38,11 +38,9 @@ const (
 	isLessOrdered = 17
 )
 
-// roundCarefully rounds x, and replaces and counts what is beyond the range or not a
-// number. There is no branch around that: in sums that saturate now and then it would
-// be mispredicted, at three times the cost.
+// roundCarefully rounds x, replaces what is beyond, and counts.
 func (g *tile) roundCarefully(x reg.Register, c care) chain {
-	y, e, size := g.reg(), g.reg(), g.reg()
+	y, e := g.reg(), g.reg()
 	round := chain{func() { g.VMOVAPS(x, y) }}
 	if c.rounds {
 		round = append(round,
@@ -52,25 +50,20 @@ func (g *tile) roundCarefully(x reg.Register, c care) chain {
 			func() { g.fnma(y, e, g.constant(c.grow)) },
 		)
 	}
-	replace := g.replace
 	if g.zmm {
-		replace = g.replaceMasked
+		return join(round, g.replaceMasked(x, y, c))
 	}
-	return join(round,
-		chain{func() { g.and(size, y, g.constant("MagnitudeMask")) }},
-		replace(x, y, size, c),
-		chain{
-			func() { g.VMOVAPS(y, x) },
-		})
+	return join(round, g.replace(x, y, c))
 }
 
-// replace: y = what the policy puts in its place where size, |y|, is beyond, for AVX2.
-func (g *tile) replace(x, y, size reg.Register, c care) chain {
-	beyond, finite, m := g.reg(), g.reg(), g.reg()
+// replace: x = y, or what the policy puts in its place, for AVX2.
+func (g *tile) replace(x, y reg.Register, c care) chain {
+	size, beyond, finite, m := g.reg(), g.reg(), g.reg(), g.reg()
 	compare := func(predicate uint64, a reg.Register, b operand.Op, m reg.Register) {
 		g.VCMPPS(operand.Imm(predicate), b, a, m)
 	}
 	return chain{
+		func() { g.and(size, y, g.constant("MagnitudeMask")) },
 		func() { compare(isNotAtMost, size, g.constant(c.max), beyond) },
 		func() { g.and(size, x, g.constant("MagnitudeMask")) },
 		func() { compare(isLessOrdered, size, g.constant("Infinity"), finite) },
@@ -85,18 +78,19 @@ func (g *tile) replace(x, y, size reg.Register, c care) chain {
 		func() { compare(isUnordered, x, x, size) },
 		func() { g.subInt(g.events[c.counter+2], g.events[c.counter+2], size) },
 		func() { g.or(m, m, size) }, // all ones are a NaN
-		func() { g.VBLENDVPS(beyond, m, y, y) },
+		func() { g.VBLENDVPS(beyond, m, y, x) },
 	}
 }
 
 // replaceMasked is replace for AVX-512.
-func (g *tile) replaceMasked(x, y, size reg.Register, c care) chain {
-	m := g.reg()
+func (g *tile) replaceMasked(x, y reg.Register, c care) chain {
+	size, m := g.reg(), g.reg()
 	beyond, finite, k := g.K(), g.K(), g.K()
 	count := func(n int) {
 		g.VPADDD(g.constant("Ones"), g.events[c.counter+n], k, g.events[c.counter+n])
 	}
 	return chain{
+		func() { g.and(size, y, g.constant("MagnitudeMask")) },
 		func() { g.VCMPPS(operand.Imm(isNotAtMost), g.constant(c.max), size, beyond) },
 		func() { g.and(size, x, g.constant("MagnitudeMask")) },
 		func() { g.VCMPPS(operand.Imm(isLessOrdered), g.constant("Infinity"), size, finite) },
@@ -111,13 +105,13 @@ func (g *tile) replaceMasked(x, y, size reg.Register, c care) chain {
 		func() { g.VCMPPS(operand.Imm(isUnordered), x, x, k) },
 		func() { count(2) },
 		func() { g.VMOVAPS(x, k, m) },
-		func() { g.VMOVAPS(m, beyond, y) },
+		func() { g.VMOVAPS(y, x) },
+		func() { g.VMOVAPS(m, beyond, x) },
 	}
 }
 
-// plusOddCarefully: sum += p, to nearest, or to odd where OddMask says so, see plusOdd,
-// whose directed form has no such choice.
-func (g *tile) plusOddCarefully(sum, p reg.Register) chain {
+// plusCarefully: sum += p, to nearest, or to odd where OddMask says so, see plusOdd.
+func (g *tile) plusCarefully(sum, p reg.Register) chain {
 	x, w, e, odd := g.reg(), g.reg(), g.reg(), g.reg()
 	const notEqual = 12
 	return chain{

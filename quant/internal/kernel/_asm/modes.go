@@ -118,23 +118,15 @@ var modes = []mode{
 		careful: true, constants: carefulConstants,
 		step: func(g *tile, r, v int) chain {
 			p, s := g.reg(), g.sums[r][v]
-			return join(g.multiply(p, r, v), g.roundCarefully(p, termOverflow), g.plusOddCarefully(s, p), g.roundCarefully(s, sumCare))
+			return join(g.multiply(p, r, v), g.roundCarefully(p, termOverflow), g.plusCarefully(s, p), g.roundCarefully(s, sumCare))
 		},
 	},
 	{
-		name: "carefulBoth", doc: "the loop s = R(binary32(s + P(a b))), P and R nearest-even with their overflow, events counted.",
+		name: "carefulRounded", doc: "the loop s = R(s + P(a b)), P and R nearest-even with their overflow, events counted.",
 		careful: true, constants: carefulConstants,
 		step: func(g *tile, r, v int) chain {
 			p, s := g.reg(), g.sums[r][v]
-			return join(g.multiply(p, r, v), g.roundCarefully(p, termCare), g.plus(s, p), g.roundCarefully(s, sumCare))
-		},
-	},
-	{
-		name: "carefulOdd", doc: "the loop s = R(s + P(a b)), P and R nearest-even with their overflow, events counted.",
-		careful: true, constants: carefulConstants,
-		step: func(g *tile, r, v int) chain {
-			p, s := g.reg(), g.sums[r][v]
-			return join(g.multiply(p, r, v), g.roundCarefully(p, termCare), g.plusOddCarefully(s, p), g.roundCarefully(s, sumCare))
+			return join(g.multiply(p, r, v), g.roundCarefully(p, termCare), g.plusCarefully(s, p), g.roundCarefully(s, sumCare))
 		},
 	},
 	{
