@@ -58,11 +58,11 @@ func fusedFreeAVX2R2V1(t *Tile[float64])
 //go:noescape
 func stochasticWideAVX2R2V3(t *Tile[float64])
 
-// stochasticWideAVX2R8V1 is the loop s = S(s + a b), S stochastic of the exact sum, terms ascending.
-// It keeps a tile of 8 x 4 sums in registers.
+// stochasticWideAVX2R4V1 is the loop s = S(s + a b), S stochastic of the exact sum, terms ascending.
+// It keeps a tile of 4 x 4 sums in registers.
 //
 //go:noescape
-func stochasticWideAVX2R8V1(t *Tile[float64])
+func stochasticWideAVX2R4V1(t *Tile[float64])
 
 // stochasticWideAVX2R2V1 is the loop s = S(s + a b), S stochastic of the exact sum, terms ascending.
 // It keeps a tile of 2 x 4 sums in registers.
@@ -76,11 +76,11 @@ func stochasticWideAVX2R2V1(t *Tile[float64])
 //go:noescape
 func stochasticProductAVX2R2V3(t *Tile[float64])
 
-// stochasticProductAVX2R8V1 is the loop s = S(s + R(a b)), R nearest-even, S stochastic of a sum exact in binary64 and without subnormals, terms ascending.
-// It keeps a tile of 8 x 4 sums in registers.
+// stochasticProductAVX2R4V1 is the loop s = S(s + R(a b)), R nearest-even, S stochastic of a sum exact in binary64 and without subnormals, terms ascending.
+// It keeps a tile of 4 x 4 sums in registers.
 //
 //go:noescape
-func stochasticProductAVX2R8V1(t *Tile[float64])
+func stochasticProductAVX2R4V1(t *Tile[float64])
 
 // stochasticProductAVX2R2V1 is the loop s = S(s + R(a b)), R nearest-even, S stochastic of a sum exact in binary64 and without subnormals, terms ascending.
 // It keeps a tile of 2 x 4 sums in registers.

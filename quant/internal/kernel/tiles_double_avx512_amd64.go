@@ -76,11 +76,11 @@ func stochasticWideAVX512R4V2(t *Tile[float64])
 //go:noescape
 func stochasticWideAVX512R2V2(t *Tile[float64])
 
-// stochasticWideAVX512R8V1 is the loop s = S(s + a b), S stochastic of the exact sum, terms ascending.
-// It keeps a tile of 8 x 8 sums in registers.
+// stochasticWideAVX512R4V1 is the loop s = S(s + a b), S stochastic of the exact sum, terms ascending.
+// It keeps a tile of 4 x 8 sums in registers.
 //
 //go:noescape
-func stochasticWideAVX512R8V1(t *Tile[float64])
+func stochasticWideAVX512R4V1(t *Tile[float64])
 
 // stochasticWideAVX512R2V1 is the loop s = S(s + a b), S stochastic of the exact sum, terms ascending.
 // It keeps a tile of 2 x 8 sums in registers.
@@ -100,11 +100,11 @@ func stochasticProductAVX512R4V2(t *Tile[float64])
 //go:noescape
 func stochasticProductAVX512R2V2(t *Tile[float64])
 
-// stochasticProductAVX512R8V1 is the loop s = S(s + R(a b)), R nearest-even, S stochastic of a sum exact in binary64 and without subnormals, terms ascending.
-// It keeps a tile of 8 x 8 sums in registers.
+// stochasticProductAVX512R4V1 is the loop s = S(s + R(a b)), R nearest-even, S stochastic of a sum exact in binary64 and without subnormals, terms ascending.
+// It keeps a tile of 4 x 8 sums in registers.
 //
 //go:noescape
-func stochasticProductAVX512R8V1(t *Tile[float64])
+func stochasticProductAVX512R4V1(t *Tile[float64])
 
 // stochasticProductAVX512R2V1 is the loop s = S(s + R(a b)), R nearest-even, S stochastic of a sum exact in binary64 and without subnormals, terms ascending.
 // It keeps a tile of 2 x 8 sums in registers.

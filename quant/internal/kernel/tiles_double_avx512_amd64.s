@@ -2703,9 +2703,9 @@ stored:
 	VZEROUPPER
 	RET
 
-// func stochasticWideAVX512R8V1(t *Tile[float64])
+// func stochasticWideAVX512R4V1(t *Tile[float64])
 // Requires: AVX, AVX512BW, AVX512DQ, AVX512F
-TEXT ·stochasticWideAVX512R8V1(SB), $56-8
+TEXT ·stochasticWideAVX512R4V1(SB), $56-8
 	MOVQ    t+0(FP), AX
 	MOVQ    240(AX), CX
 	VMOVUPD 832(CX), Z0
@@ -2731,400 +2731,148 @@ TEXT ·stochasticWideAVX512R8V1(SB), $56-8
 	MOVQ    DX, 48(SP)
 
 group:
-	MOVQ               8(SP), DX
-	MOVQ               144(AX), BX
-	VMOVUPD            (DX), Z7
-	VMULPD             576(CX), Z7, Z7
-	LEAQ               (DX)(BX*8), DX
-	VMOVUPD            (DX), Z8
-	VMULPD             576(CX), Z8, Z8
-	LEAQ               (DX)(BX*8), DX
-	VMOVUPD            (DX), Z9
-	VMULPD             576(CX), Z9, Z9
-	LEAQ               (DX)(BX*8), DX
-	VMOVUPD            (DX), Z10
-	VMULPD             576(CX), Z10, Z10
-	LEAQ               (DX)(BX*8), DX
-	VMOVUPD            (DX), Z11
-	VMULPD             576(CX), Z11, Z11
-	LEAQ               (DX)(BX*8), DX
-	VMOVUPD            (DX), Z12
-	VMULPD             576(CX), Z12, Z12
-	LEAQ               (DX)(BX*8), DX
-	VMOVUPD            (DX), Z13
-	VMULPD             576(CX), Z13, Z13
-	LEAQ               (DX)(BX*8), DX
-	VMOVUPD            (DX), Z14
-	VMULPD             576(CX), Z14, Z14
-	LEAQ               (DX)(BX*8), DX
-	MOVQ               DX, 8(SP)
-	VPXORQ             Z15, Z15, Z15
-	MOVQ               40(AX), DX
-	MOVQ               32(SP), BX
-	LEAQ               (BX)(DX*8), SI
-	LEAQ               (SI)(DX*8), DI
-	LEAQ               (DI)(DX*8), R8
-	LEAQ               (R8)(DX*8), DX
-	MOVQ               DX, 32(SP)
-	MOVQ               40(AX), DX
-	MOVQ               40(SP), R9
-	LEAQ               (R9)(DX*4), R10
-	LEAQ               (R10)(DX*4), R11
-	LEAQ               (R11)(DX*4), R12
-	LEAQ               (R12)(DX*4), DX
-	MOVQ               DX, 40(SP)
-	MOVQ               96(AX), DX
-	MOVQ               48(AX), R13
-	MOVQ               (AX), R14
-	ADDQ               R14, R14
-	XORQ               R15, R15
-	VMOVUPD            (R13), Z18
-	VBROADCASTSD       (BX)(R15*8), Z16
-	VPBROADCASTD       (R9)(R15*4), Z17
-	VPMOVZXDQ          (DX), Z19
-	VPMADDWD           Z19, Z17, Z19
-	VFMADD231PD.RZ_SAE Z18, Z16, Z7
-	VANDPD             Z3, Z7, Z20
-	VBROADCASTSD       8(BX)(R15*8), Z16
-	VPBROADCASTD       4(R9)(R15*4), Z17
-	VPMOVZXDQ          (DX), Z21
-	VMAXPD             Z20, Z15, Z15
-	VPMADDWD           Z21, Z17, Z21
-	VCMPPD             $0x11, Z1, Z20, K1
-	VFMADD231PD.RZ_SAE Z18, Z16, Z8
-	VMOVAPD            Z7, Z20
-	VANDPD             Z3, Z8, Z22
-	VBROADCASTSD       (SI)(R15*8), Z16
-	VPBROADCASTD       (R10)(R15*4), Z17
-	VPMOVZXDQ          (DX), Z23
-	VPTERNLOGQ         $0xea, Z1, Z2, Z20
-	VMAXPD             Z22, Z15, Z15
-	VPMADDWD           Z23, Z17, Z23
-	VADDPD.RZ_SAE      Z20, Z7, K1, Z7
-	VCMPPD             $0x11, Z1, Z22, K2
-	VFMADD231PD.RZ_SAE Z18, Z16, Z9
-	VPSLLVQ            Z0, Z19, Z19
-	VMOVAPD            Z8, Z22
-	VANDPD             Z3, Z9, Z24
-	VBROADCASTSD       8(SI)(R15*8), Z16
-	VPBROADCASTD       4(R10)(R15*4), Z17
-	VPMOVZXDQ          (DX), Z25
-	VPANDQ             Z4, Z19, Z19
-	VPTERNLOGQ         $0xea, Z1, Z2, Z22
-	VMAXPD             Z24, Z15, Z15
-	VPMADDWD           Z25, Z17, Z25
-	VPORQ              Z5, Z19, Z19
-	VADDPD.RZ_SAE      Z22, Z8, K2, Z8
-	VCMPPD             $0x11, Z1, Z24, K3
-	VFMADD231PD.RZ_SAE Z18, Z16, Z10
-	VPADDQ             Z19, Z7, Z7
-	VPSLLVQ            Z0, Z21, Z21
-	VMOVAPD            Z9, Z24
-	VANDPD             Z3, Z10, Z19
-	VBROADCASTSD       (DI)(R15*8), Z16
-	VPBROADCASTD       (R11)(R15*4), Z17
-	VPMOVZXDQ          (DX), Z26
-	VPANDQ             Z6, Z7, Z7
-	VPANDQ             Z4, Z21, Z21
-	VPTERNLOGQ         $0xea, Z1, Z2, Z24
-	VMAXPD             Z19, Z15, Z15
-	VPMADDWD           Z26, Z17, Z26
-	VSUBPD             Z20, Z7, K1, Z7
-	VPORQ              Z5, Z21, Z21
-	VADDPD.RZ_SAE      Z24, Z9, K3, Z9
-	VCMPPD             $0x11, Z1, Z19, K1
-	VFMADD231PD.RZ_SAE Z18, Z16, Z11
-	VPADDQ             Z21, Z8, Z8
-	VPSLLVQ            Z0, Z23, Z23
-	VMOVAPD            Z10, Z19
-	VANDPD             Z3, Z11, Z20
-	VBROADCASTSD       8(DI)(R15*8), Z16
-	VPBROADCASTD       4(R11)(R15*4), Z17
-	VPMOVZXDQ          (DX), Z21
-	VPANDQ             Z6, Z8, Z8
-	VPANDQ             Z4, Z23, Z23
-	VPTERNLOGQ         $0xea, Z1, Z2, Z19
-	VMAXPD             Z20, Z15, Z15
-	VPMADDWD           Z21, Z17, Z21
-	VSUBPD             Z22, Z8, K2, Z8
-	VPORQ              Z5, Z23, Z23
-	VADDPD.RZ_SAE      Z19, Z10, K1, Z10
-	VCMPPD             $0x11, Z1, Z20, K2
-	VFMADD231PD.RZ_SAE Z18, Z16, Z12
-	VPADDQ             Z23, Z9, Z9
-	VPSLLVQ            Z0, Z25, Z25
-	VMOVAPD            Z11, Z20
-	VANDPD             Z3, Z12, Z22
-	VBROADCASTSD       (R8)(R15*8), Z16
-	VPBROADCASTD       (R12)(R15*4), Z17
-	VPMOVZXDQ          (DX), Z23
-	VPANDQ             Z6, Z9, Z9
-	VPANDQ             Z4, Z25, Z25
-	VPTERNLOGQ         $0xea, Z1, Z2, Z20
-	VMAXPD             Z22, Z15, Z15
-	VPMADDWD           Z23, Z17, Z23
-	VSUBPD             Z24, Z9, K3, Z9
-	VPORQ              Z5, Z25, Z25
-	VADDPD.RZ_SAE      Z20, Z11, K2, Z11
-	VCMPPD             $0x11, Z1, Z22, K3
-	VFMADD231PD.RZ_SAE Z18, Z16, Z13
-	VPADDQ             Z25, Z10, Z10
-	VPSLLVQ            Z0, Z26, Z26
-	VMOVAPD            Z12, Z22
-	VANDPD             Z3, Z13, Z24
-	VBROADCASTSD       8(R8)(R15*8), Z16
-	VPBROADCASTD       4(R12)(R15*4), Z17
-	VPMOVZXDQ          (DX), Z25
-	VPANDQ             Z6, Z10, Z10
-	VPANDQ             Z4, Z26, Z26
-	VPTERNLOGQ         $0xea, Z1, Z2, Z22
-	VMAXPD             Z24, Z15, Z15
-	VPMADDWD           Z25, Z17, Z25
-	VSUBPD             Z19, Z10, K1, Z10
-	VPORQ              Z5, Z26, Z26
-	VADDPD.RZ_SAE      Z22, Z12, K3, Z12
-	VCMPPD             $0x11, Z1, Z24, K4
-	VFMADD231PD.RZ_SAE Z18, Z16, Z14
-	ADDQ               $0x00000040, R13
-	ADDQ               $0x00000020, DX
-	ADDQ               $0x02, R15
-	CMPQ               R15, R14
-	JGE                last
+	MOVQ    8(SP), DX
+	MOVQ    144(AX), BX
+	VMOVUPD (DX), Z7
+	VMULPD  576(CX), Z7, Z7
+	LEAQ    (DX)(BX*8), DX
+	VMOVUPD (DX), Z8
+	VMULPD  576(CX), Z8, Z8
+	LEAQ    (DX)(BX*8), DX
+	VMOVUPD (DX), Z9
+	VMULPD  576(CX), Z9, Z9
+	LEAQ    (DX)(BX*8), DX
+	VMOVUPD (DX), Z10
+	VMULPD  576(CX), Z10, Z10
+	LEAQ    (DX)(BX*8), DX
+	MOVQ    DX, 8(SP)
+	VPXORQ  Z11, Z11, Z11
+	MOVQ    40(AX), DX
+	MOVQ    32(SP), BX
+	LEAQ    (BX)(DX*8), SI
+	LEAQ    (SI)(DX*8), DX
+	MOVQ    DX, 32(SP)
+	MOVQ    40(AX), DX
+	MOVQ    40(SP), DI
+	LEAQ    (DI)(DX*4), R8
+	LEAQ    (R8)(DX*4), DX
+	MOVQ    DX, 40(SP)
+	MOVQ    96(AX), DX
+	MOVQ    48(AX), R9
+	MOVQ    (AX), R10
+	ADDQ    R10, R10
+	XORQ    R11, R11
 
 term:
-	VPADDQ             Z26, Z11, Z11
-	VPSLLVQ            Z0, Z21, Z21
-	VMOVAPD            Z13, Z24
-	VANDPD             Z3, Z14, Z26
-	VMOVUPD            (R13), Z18
-	VBROADCASTSD       (BX)(R15*8), Z16
-	VPBROADCASTD       (R9)(R15*4), Z17
-	VPMOVZXDQ          (DX), Z19
-	VPANDQ             Z6, Z11, Z11
-	VPANDQ             Z4, Z21, Z21
-	VPTERNLOGQ         $0xea, Z1, Z2, Z24
-	VMAXPD             Z26, Z15, Z15
-	VPMADDWD           Z19, Z17, Z19
-	VSUBPD             Z20, Z11, K2, Z11
-	VPORQ              Z5, Z21, Z21
-	VADDPD.RZ_SAE      Z24, Z13, K4, Z13
-	VCMPPD             $0x11, Z1, Z26, K5
-	VFMADD231PD.RZ_SAE Z18, Z16, Z7
-	VPADDQ             Z21, Z12, Z12
-	VPSLLVQ            Z0, Z23, Z23
-	VMOVAPD            Z14, Z26
-	VANDPD             Z3, Z7, Z20
-	VBROADCASTSD       8(BX)(R15*8), Z16
-	VPBROADCASTD       4(R9)(R15*4), Z17
-	VPMOVZXDQ          (DX), Z21
-	VPANDQ             Z6, Z12, Z12
-	VPANDQ             Z4, Z23, Z23
-	VPTERNLOGQ         $0xea, Z1, Z2, Z26
-	VMAXPD             Z20, Z15, Z15
-	VPMADDWD           Z21, Z17, Z21
-	VSUBPD             Z22, Z12, K3, Z12
-	VPORQ              Z5, Z23, Z23
-	VADDPD.RZ_SAE      Z26, Z14, K5, Z14
-	VCMPPD             $0x11, Z1, Z20, K1
-	VFMADD231PD.RZ_SAE Z18, Z16, Z8
-	VPADDQ             Z23, Z13, Z13
-	VPSLLVQ            Z0, Z25, Z25
-	VMOVAPD            Z7, Z20
-	VANDPD             Z3, Z8, Z22
-	VBROADCASTSD       (SI)(R15*8), Z16
-	VPBROADCASTD       (R10)(R15*4), Z17
-	VPMOVZXDQ          (DX), Z23
-	VPANDQ             Z6, Z13, Z13
-	VPANDQ             Z4, Z25, Z25
-	VPTERNLOGQ         $0xea, Z1, Z2, Z20
-	VMAXPD             Z22, Z15, Z15
-	VPMADDWD           Z23, Z17, Z23
-	VSUBPD             Z24, Z13, K4, Z13
-	VPORQ              Z5, Z25, Z25
-	VADDPD.RZ_SAE      Z20, Z7, K1, Z7
-	VCMPPD             $0x11, Z1, Z22, K2
-	VFMADD231PD.RZ_SAE Z18, Z16, Z9
-	VPADDQ             Z25, Z14, Z14
-	VPSLLVQ            Z0, Z19, Z19
-	VMOVAPD            Z8, Z22
-	VANDPD             Z3, Z9, Z24
-	VBROADCASTSD       8(SI)(R15*8), Z16
-	VPBROADCASTD       4(R10)(R15*4), Z17
-	VPMOVZXDQ          (DX), Z25
-	VPANDQ             Z6, Z14, Z14
-	VPANDQ             Z4, Z19, Z19
-	VPTERNLOGQ         $0xea, Z1, Z2, Z22
-	VMAXPD             Z24, Z15, Z15
-	VPMADDWD           Z25, Z17, Z25
-	VSUBPD             Z26, Z14, K5, Z14
-	VPORQ              Z5, Z19, Z19
-	VADDPD.RZ_SAE      Z22, Z8, K2, Z8
-	VCMPPD             $0x11, Z1, Z24, K3
-	VFMADD231PD.RZ_SAE Z18, Z16, Z10
-	VPADDQ             Z19, Z7, Z7
-	VPSLLVQ            Z0, Z21, Z21
-	VMOVAPD            Z9, Z24
-	VANDPD             Z3, Z10, Z19
-	VBROADCASTSD       (DI)(R15*8), Z16
-	VPBROADCASTD       (R11)(R15*4), Z17
-	VPMOVZXDQ          (DX), Z26
+	VMOVUPD            (R9), Z14
+	VBROADCASTSD       (BX)(R11*8), Z12
+	VPBROADCASTD       (DI)(R11*4), Z13
+	VPMOVZXDQ          (DX), Z15
+	VPMADDWD           Z15, Z13, Z15
+	VFMADD231PD.RZ_SAE Z14, Z12, Z7
+	VANDPD             Z3, Z7, Z12
+	VMAXPD             Z12, Z11, Z11
+	VCMPPD             $0x11, Z1, Z12, K1
+	VMOVAPD            Z7, Z12
+	VPTERNLOGQ         $0xea, Z1, Z2, Z12
+	VADDPD.RZ_SAE      Z12, Z7, K1, Z7
+	VPSLLVQ            Z0, Z15, Z15
+	VPANDQ             Z4, Z15, Z15
+	VPORQ              Z5, Z15, Z15
+	VPADDQ             Z15, Z7, Z7
 	VPANDQ             Z6, Z7, Z7
-	VPANDQ             Z4, Z21, Z21
-	VPTERNLOGQ         $0xea, Z1, Z2, Z24
-	VMAXPD             Z19, Z15, Z15
-	VPMADDWD           Z26, Z17, Z26
-	VSUBPD             Z20, Z7, K1, Z7
-	VPORQ              Z5, Z21, Z21
-	VADDPD.RZ_SAE      Z24, Z9, K3, Z9
-	VCMPPD             $0x11, Z1, Z19, K1
-	VFMADD231PD.RZ_SAE Z18, Z16, Z11
-	VPADDQ             Z21, Z8, Z8
-	VPSLLVQ            Z0, Z23, Z23
-	VMOVAPD            Z10, Z19
-	VANDPD             Z3, Z11, Z20
-	VBROADCASTSD       8(DI)(R15*8), Z16
-	VPBROADCASTD       4(R11)(R15*4), Z17
-	VPMOVZXDQ          (DX), Z21
+	VSUBPD             Z12, Z7, K1, Z7
+	VBROADCASTSD       8(BX)(R11*8), Z12
+	VPBROADCASTD       4(DI)(R11*4), Z13
+	VPMOVZXDQ          (DX), Z15
+	VPMADDWD           Z15, Z13, Z15
+	VFMADD231PD.RZ_SAE Z14, Z12, Z8
+	VANDPD             Z3, Z8, Z12
+	VMAXPD             Z12, Z11, Z11
+	VCMPPD             $0x11, Z1, Z12, K1
+	VMOVAPD            Z8, Z12
+	VPTERNLOGQ         $0xea, Z1, Z2, Z12
+	VADDPD.RZ_SAE      Z12, Z8, K1, Z8
+	VPSLLVQ            Z0, Z15, Z15
+	VPANDQ             Z4, Z15, Z15
+	VPORQ              Z5, Z15, Z15
+	VPADDQ             Z15, Z8, Z8
 	VPANDQ             Z6, Z8, Z8
-	VPANDQ             Z4, Z23, Z23
-	VPTERNLOGQ         $0xea, Z1, Z2, Z19
-	VMAXPD             Z20, Z15, Z15
-	VPMADDWD           Z21, Z17, Z21
-	VSUBPD             Z22, Z8, K2, Z8
-	VPORQ              Z5, Z23, Z23
-	VADDPD.RZ_SAE      Z19, Z10, K1, Z10
-	VCMPPD             $0x11, Z1, Z20, K2
-	VFMADD231PD.RZ_SAE Z18, Z16, Z12
-	VPADDQ             Z23, Z9, Z9
-	VPSLLVQ            Z0, Z25, Z25
-	VMOVAPD            Z11, Z20
-	VANDPD             Z3, Z12, Z22
-	VBROADCASTSD       (R8)(R15*8), Z16
-	VPBROADCASTD       (R12)(R15*4), Z17
-	VPMOVZXDQ          (DX), Z23
+	VSUBPD             Z12, Z8, K1, Z8
+	VBROADCASTSD       (SI)(R11*8), Z12
+	VPBROADCASTD       (R8)(R11*4), Z13
+	VPMOVZXDQ          (DX), Z15
+	VPMADDWD           Z15, Z13, Z15
+	VFMADD231PD.RZ_SAE Z14, Z12, Z9
+	VANDPD             Z3, Z9, Z12
+	VMAXPD             Z12, Z11, Z11
+	VCMPPD             $0x11, Z1, Z12, K1
+	VMOVAPD            Z9, Z12
+	VPTERNLOGQ         $0xea, Z1, Z2, Z12
+	VADDPD.RZ_SAE      Z12, Z9, K1, Z9
+	VPSLLVQ            Z0, Z15, Z15
+	VPANDQ             Z4, Z15, Z15
+	VPORQ              Z5, Z15, Z15
+	VPADDQ             Z15, Z9, Z9
 	VPANDQ             Z6, Z9, Z9
-	VPANDQ             Z4, Z25, Z25
-	VPTERNLOGQ         $0xea, Z1, Z2, Z20
-	VMAXPD             Z22, Z15, Z15
-	VPMADDWD           Z23, Z17, Z23
-	VSUBPD             Z24, Z9, K3, Z9
-	VPORQ              Z5, Z25, Z25
-	VADDPD.RZ_SAE      Z20, Z11, K2, Z11
-	VCMPPD             $0x11, Z1, Z22, K3
-	VFMADD231PD.RZ_SAE Z18, Z16, Z13
-	VPADDQ             Z25, Z10, Z10
-	VPSLLVQ            Z0, Z26, Z26
-	VMOVAPD            Z12, Z22
-	VANDPD             Z3, Z13, Z24
-	VBROADCASTSD       8(R8)(R15*8), Z16
-	VPBROADCASTD       4(R12)(R15*4), Z17
-	VPMOVZXDQ          (DX), Z25
+	VSUBPD             Z12, Z9, K1, Z9
+	VBROADCASTSD       8(SI)(R11*8), Z12
+	VPBROADCASTD       4(R8)(R11*4), Z13
+	VPMOVZXDQ          (DX), Z15
+	VPMADDWD           Z15, Z13, Z15
+	VFMADD231PD.RZ_SAE Z14, Z12, Z10
+	VANDPD             Z3, Z10, Z12
+	VMAXPD             Z12, Z11, Z11
+	VCMPPD             $0x11, Z1, Z12, K1
+	VMOVAPD            Z10, Z12
+	VPTERNLOGQ         $0xea, Z1, Z2, Z12
+	VADDPD.RZ_SAE      Z12, Z10, K1, Z10
+	VPSLLVQ            Z0, Z15, Z15
+	VPANDQ             Z4, Z15, Z15
+	VPORQ              Z5, Z15, Z15
+	VPADDQ             Z15, Z10, Z10
 	VPANDQ             Z6, Z10, Z10
-	VPANDQ             Z4, Z26, Z26
-	VPTERNLOGQ         $0xea, Z1, Z2, Z22
-	VMAXPD             Z24, Z15, Z15
-	VPMADDWD           Z25, Z17, Z25
-	VSUBPD             Z19, Z10, K1, Z10
-	VPORQ              Z5, Z26, Z26
-	VADDPD.RZ_SAE      Z22, Z12, K3, Z12
-	VCMPPD             $0x11, Z1, Z24, K4
-	VFMADD231PD.RZ_SAE Z18, Z16, Z14
-	ADDQ               $0x00000040, R13
+	VSUBPD             Z12, Z10, K1, Z10
+	ADDQ               $0x00000040, R9
 	ADDQ               $0x00000020, DX
-	ADDQ               $0x02, R15
-	CMPQ               R15, R14
+	ADDQ               $0x02, R11
+	CMPQ               R11, R10
 	JLT                term
-
-last:
-	VPADDQ        Z26, Z11, Z11
-	VPSLLVQ       Z0, Z21, Z21
-	VMOVAPD       Z13, Z24
-	VANDPD        Z3, Z14, Z26
-	VPANDQ        Z6, Z11, Z11
-	VPANDQ        Z4, Z21, Z21
-	VPTERNLOGQ    $0xea, Z1, Z2, Z24
-	VMAXPD        Z26, Z15, Z15
-	VSUBPD        Z20, Z11, K2, Z11
-	VPORQ         Z5, Z21, Z21
-	VADDPD.RZ_SAE Z24, Z13, K4, Z13
-	VCMPPD        $0x11, Z1, Z26, K5
-	VPADDQ        Z21, Z12, Z12
-	VPSLLVQ       Z0, Z23, Z23
-	VMOVAPD       Z14, Z26
-	VPANDQ        Z6, Z12, Z12
-	VPANDQ        Z4, Z23, Z23
-	VPTERNLOGQ    $0xea, Z1, Z2, Z26
-	VSUBPD        Z22, Z12, K3, Z12
-	VPORQ         Z5, Z23, Z23
-	VADDPD.RZ_SAE Z26, Z14, K5, Z14
-	VPADDQ        Z23, Z13, Z13
-	VPSLLVQ       Z0, Z25, Z25
-	VPANDQ        Z6, Z13, Z13
-	VPANDQ        Z4, Z25, Z25
-	VSUBPD        Z24, Z13, K4, Z13
-	VPORQ         Z5, Z25, Z25
-	VPADDQ        Z25, Z14, Z14
-	VPANDQ        Z6, Z14, Z14
-	VSUBPD        Z26, Z14, K5, Z14
-	VMOVUPD       640(CX), Z16
-	VPXORQ        Z27, Z27, Z27
-	VPXORQ        Z28, Z28, Z28
-	VCMPPD        $0x05, 1344(CX), Z15, K1
-	VPMOVM2Q      K1, Z15
-	VORPD         Z15, Z7, Z7
-	VORPD         Z15, Z8, Z8
-	VORPD         Z15, Z9, Z9
-	VORPD         Z15, Z10, Z10
-	VORPD         Z15, Z11, Z11
-	VORPD         Z15, Z12, Z12
-	VORPD         Z15, Z13, Z13
-	VORPD         Z15, Z14, Z14
-	VFMADD231PD   Z27, Z7, Z28
-	VMULPD        Z16, Z7, Z7
-	VADDPD        Z27, Z7, Z7
-	VFMADD231PD   Z27, Z8, Z28
-	VMULPD        Z16, Z8, Z8
-	VADDPD        Z27, Z8, Z8
-	VFMADD231PD   Z27, Z9, Z28
-	VMULPD        Z16, Z9, Z9
-	VADDPD        Z27, Z9, Z9
-	VFMADD231PD   Z27, Z10, Z28
-	VMULPD        Z16, Z10, Z10
-	VADDPD        Z27, Z10, Z10
-	VFMADD231PD   Z27, Z11, Z28
-	VMULPD        Z16, Z11, Z11
-	VADDPD        Z27, Z11, Z11
-	VFMADD231PD   Z27, Z12, Z28
-	VMULPD        Z16, Z12, Z12
-	VADDPD        Z27, Z12, Z12
-	VFMADD231PD   Z27, Z13, Z28
-	VMULPD        Z16, Z13, Z13
-	VADDPD        Z27, Z13, Z13
-	VFMADD231PD   Z27, Z14, Z28
-	VMULPD        Z16, Z14, Z14
-	VADDPD        Z27, Z14, Z14
-	CMPQ          48(SP), $0x00
-	JNE           narrow
-	MOVQ          16(SP), DX
-	MOVQ          176(AX), BX
-	VMOVUPD       Z7, (DX)
-	LEAQ          (DX)(BX*8), DX
-	VMOVUPD       Z8, (DX)
-	LEAQ          (DX)(BX*8), DX
-	VMOVUPD       Z9, (DX)
-	LEAQ          (DX)(BX*8), DX
-	VMOVUPD       Z10, (DX)
-	LEAQ          (DX)(BX*8), DX
-	VMOVUPD       Z11, (DX)
-	LEAQ          (DX)(BX*8), DX
-	VMOVUPD       Z12, (DX)
-	LEAQ          (DX)(BX*8), DX
-	VMOVUPD       Z13, (DX)
-	LEAQ          (DX)(BX*8), DX
-	VMOVUPD       Z14, (DX)
-	LEAQ          (DX)(BX*8), DX
-	MOVQ          DX, 16(SP)
-	JMP           stored
+	VMOVUPD            640(CX), Z12
+	VPXORQ             Z16, Z16, Z16
+	VPXORQ             Z17, Z17, Z17
+	VCMPPD             $0x05, 1344(CX), Z11, K1
+	VPMOVM2Q           K1, Z11
+	VORPD              Z11, Z7, Z7
+	VORPD              Z11, Z8, Z8
+	VORPD              Z11, Z9, Z9
+	VORPD              Z11, Z10, Z10
+	VFMADD231PD        Z16, Z7, Z17
+	VMULPD             Z12, Z7, Z7
+	VADDPD             Z16, Z7, Z7
+	VFMADD231PD        Z16, Z8, Z17
+	VMULPD             Z12, Z8, Z8
+	VADDPD             Z16, Z8, Z8
+	VFMADD231PD        Z16, Z9, Z17
+	VMULPD             Z12, Z9, Z9
+	VADDPD             Z16, Z9, Z9
+	VFMADD231PD        Z16, Z10, Z17
+	VMULPD             Z12, Z10, Z10
+	VADDPD             Z16, Z10, Z10
+	CMPQ               48(SP), $0x00
+	JNE                narrow
+	MOVQ               16(SP), DX
+	MOVQ               176(AX), BX
+	VMOVUPD            Z7, (DX)
+	LEAQ               (DX)(BX*8), DX
+	VMOVUPD            Z8, (DX)
+	LEAQ               (DX)(BX*8), DX
+	VMOVUPD            Z9, (DX)
+	LEAQ               (DX)(BX*8), DX
+	VMOVUPD            Z10, (DX)
+	LEAQ               (DX)(BX*8), DX
+	MOVQ               DX, 16(SP)
+	JMP                stored
 
 narrow:
 	MOVQ      48(SP), DX
@@ -3141,22 +2889,10 @@ narrow:
 	VCVTPD2PS Z10, Y10
 	VMOVUPS   Y10, (DX)
 	LEAQ      (DX)(BX*4), DX
-	VCVTPD2PS Z11, Y11
-	VMOVUPS   Y11, (DX)
-	LEAQ      (DX)(BX*4), DX
-	VCVTPD2PS Z12, Y12
-	VMOVUPS   Y12, (DX)
-	LEAQ      (DX)(BX*4), DX
-	VCVTPD2PS Z13, Y13
-	VMOVUPS   Y13, (DX)
-	LEAQ      (DX)(BX*4), DX
-	VCVTPD2PS Z14, Y14
-	VMOVUPS   Y14, (DX)
-	LEAQ      (DX)(BX*4), DX
 	MOVQ      DX, 48(SP)
 
 stored:
-	VCMPPD $0x03, Z28, Z28, K1
+	VCMPPD $0x03, Z17, Z17, K1
 	KMOVW  K1, DX
 	TESTL  DX, DX
 	MOVQ   24(SP), DX
@@ -3928,9 +3664,9 @@ stored:
 	VZEROUPPER
 	RET
 
-// func stochasticProductAVX512R8V1(t *Tile[float64])
+// func stochasticProductAVX512R4V1(t *Tile[float64])
 // Requires: AVX, AVX512BW, AVX512DQ, AVX512F
-TEXT ·stochasticProductAVX512R8V1(SB), $56-8
+TEXT ·stochasticProductAVX512R4V1(SB), $56-8
 	MOVQ    t+0(FP), AX
 	MOVQ    240(AX), CX
 	VMOVUPD 832(CX), Z0
@@ -3958,376 +3694,133 @@ TEXT ·stochasticProductAVX512R8V1(SB), $56-8
 	MOVQ    DX, 48(SP)
 
 group:
-	MOVQ         8(SP), DX
-	MOVQ         144(AX), BX
-	VMOVUPD      (DX), Z9
-	VMULPD       576(CX), Z9, Z9
-	LEAQ         (DX)(BX*8), DX
-	VMOVUPD      (DX), Z10
-	VMULPD       576(CX), Z10, Z10
-	LEAQ         (DX)(BX*8), DX
-	VMOVUPD      (DX), Z11
-	VMULPD       576(CX), Z11, Z11
-	LEAQ         (DX)(BX*8), DX
-	VMOVUPD      (DX), Z12
-	VMULPD       576(CX), Z12, Z12
-	LEAQ         (DX)(BX*8), DX
-	VMOVUPD      (DX), Z13
-	VMULPD       576(CX), Z13, Z13
-	LEAQ         (DX)(BX*8), DX
-	VMOVUPD      (DX), Z14
-	VMULPD       576(CX), Z14, Z14
-	LEAQ         (DX)(BX*8), DX
-	VMOVUPD      (DX), Z15
-	VMULPD       576(CX), Z15, Z15
-	LEAQ         (DX)(BX*8), DX
-	VMOVUPD      (DX), Z16
-	VMULPD       576(CX), Z16, Z16
-	LEAQ         (DX)(BX*8), DX
-	MOVQ         DX, 8(SP)
-	VPXORQ       Z17, Z17, Z17
-	MOVQ         40(AX), DX
-	MOVQ         32(SP), BX
-	LEAQ         (BX)(DX*8), SI
-	LEAQ         (SI)(DX*8), DI
-	LEAQ         (DI)(DX*8), R8
-	LEAQ         (R8)(DX*8), DX
-	MOVQ         DX, 32(SP)
-	MOVQ         40(AX), DX
-	MOVQ         40(SP), R9
-	LEAQ         (R9)(DX*4), R10
-	LEAQ         (R10)(DX*4), R11
-	LEAQ         (R11)(DX*4), R12
-	LEAQ         (R12)(DX*4), DX
-	MOVQ         DX, 40(SP)
-	MOVQ         96(AX), DX
-	MOVQ         48(AX), R13
-	MOVQ         (AX), R14
-	ADDQ         R14, R14
-	XORQ         R15, R15
-	VBROADCASTSD (BX)(R15*8), Z18
-	VPBROADCASTD (R9)(R15*4), Z19
-	VPMOVZXDQ    (DX), Z20
-	VPMADDWD     Z20, Z19, Z20
-	VMULPD       (R13), Z18, Z24
-	VBROADCASTSD 8(BX)(R15*8), Z19
-	VPBROADCASTD 4(R9)(R15*4), Z21
-	VPMOVZXDQ    (DX), Z18
-	VANDPD       Z4, Z24, Z22
-	VPMADDWD     Z18, Z21, Z18
-	VMAXPD       Z3, Z22, Z22
-	VMULPD       (R13), Z19, Z19
-	VFMADD231PD  Z1, Z22, Z24
-	VBROADCASTSD (SI)(R15*8), Z21
-	VPBROADCASTD (R10)(R15*4), Z27
-	VPMOVZXDQ    (DX), Z26
-	VANDPD       Z4, Z19, Z23
-	VFNMADD231PD Z1, Z22, Z24
-	VPMADDWD     Z26, Z27, Z26
-	VMAXPD       Z3, Z23, Z23
-	VFMADD231PD  Z2, Z24, Z9
-	VMULPD       (R13), Z21, Z24
-	VFMADD231PD  Z1, Z23, Z19
-	VBROADCASTSD 8(SI)(R15*8), Z22
-	VPBROADCASTD 4(R10)(R15*4), Z27
-	VPMOVZXDQ    (DX), Z21
-	VANDPD       Z8, Z9, Z25
-	VANDPD       Z4, Z24, Z31
-	VFNMADD231PD Z1, Z23, Z19
-	VPMADDWD     Z21, Z27, Z21
-	VMAXPD       Z25, Z17, Z17
-	VMAXPD       Z3, Z31, Z31
-	VFMADD231PD  Z2, Z19, Z10
-	VMULPD       (R13), Z22, Z19
-	VPSLLVQ      Z0, Z20, Z20
-	VFMADD231PD  Z1, Z31, Z24
-	VBROADCASTSD (DI)(R15*8), Z23
-	VPBROADCASTD (R11)(R15*4), Z25
-	VPMOVZXDQ    (DX), Z22
-	VANDPD       Z8, Z10, Z27
-	VANDPD       Z4, Z19, Z28
-	VPANDQ       Z5, Z20, Z20
-	VFNMADD231PD Z1, Z31, Z24
-	VPMADDWD     Z22, Z25, Z22
-	VMAXPD       Z27, Z17, Z17
-	VMAXPD       Z3, Z28, Z28
-	VPORQ        Z6, Z20, Z20
-	VFMADD231PD  Z2, Z24, Z11
-	VMULPD       (R13), Z23, Z24
-	VPSLLVQ      Z0, Z18, Z18
-	VFMADD231PD  Z1, Z28, Z19
-	VBROADCASTSD 8(DI)(R15*8), Z25
-	VPBROADCASTD 4(R11)(R15*4), Z27
-	VPMOVZXDQ    (DX), Z23
-	VPADDQ       Z20, Z9, Z9
-	VANDPD       Z8, Z11, Z20
-	VANDPD       Z4, Z24, Z31
-	VPANDQ       Z5, Z18, Z18
-	VFNMADD231PD Z1, Z28, Z19
-	VPMADDWD     Z23, Z27, Z23
-	VPANDQ       Z7, Z9, Z9
-	VMAXPD       Z20, Z17, Z17
-	VMAXPD       Z3, Z31, Z31
-	VPORQ        Z6, Z18, Z18
-	VFMADD231PD  Z2, Z19, Z12
-	VMULPD       (R13), Z25, Z19
-	VPSLLVQ      Z0, Z26, Z26
-	VFMADD231PD  Z1, Z31, Z24
-	VBROADCASTSD (R8)(R15*8), Z20
-	VPBROADCASTD (R12)(R15*4), Z27
-	VPMOVZXDQ    (DX), Z25
-	VPADDQ       Z18, Z10, Z10
-	VANDPD       Z8, Z12, Z28
-	VANDPD       Z4, Z19, Z18
-	VPANDQ       Z5, Z26, Z26
-	VFNMADD231PD Z1, Z31, Z24
-	VPMADDWD     Z25, Z27, Z25
-	VPANDQ       Z7, Z10, Z10
-	VMAXPD       Z28, Z17, Z17
-	VMAXPD       Z3, Z18, Z18
-	VPORQ        Z6, Z26, Z26
-	VFMADD231PD  Z2, Z24, Z13
-	VMULPD       (R13), Z20, Z24
-	VPSLLVQ      Z0, Z21, Z21
-	VFMADD231PD  Z1, Z18, Z19
-	VBROADCASTSD 8(R8)(R15*8), Z20
-	VPBROADCASTD 4(R12)(R15*4), Z27
-	VPMOVZXDQ    (DX), Z28
-	VPADDQ       Z26, Z11, Z11
-	VANDPD       Z8, Z13, Z31
-	VANDPD       Z4, Z24, Z26
-	VPANDQ       Z5, Z21, Z21
-	VFNMADD231PD Z1, Z18, Z19
-	VPMADDWD     Z28, Z27, Z28
-	VPANDQ       Z7, Z11, Z11
-	VMAXPD       Z31, Z17, Z17
-	VMAXPD       Z3, Z26, Z26
-	VPORQ        Z6, Z21, Z21
-	VFMADD231PD  Z2, Z19, Z14
-	VMULPD       (R13), Z20, Z27
-	ADDQ         $0x00000040, R13
-	ADDQ         $0x00000020, DX
-	ADDQ         $0x02, R15
-	CMPQ         R15, R14
-	JGE          last
+	MOVQ    8(SP), DX
+	MOVQ    144(AX), BX
+	VMOVUPD (DX), Z9
+	VMULPD  576(CX), Z9, Z9
+	LEAQ    (DX)(BX*8), DX
+	VMOVUPD (DX), Z10
+	VMULPD  576(CX), Z10, Z10
+	LEAQ    (DX)(BX*8), DX
+	VMOVUPD (DX), Z11
+	VMULPD  576(CX), Z11, Z11
+	LEAQ    (DX)(BX*8), DX
+	VMOVUPD (DX), Z12
+	VMULPD  576(CX), Z12, Z12
+	LEAQ    (DX)(BX*8), DX
+	MOVQ    DX, 8(SP)
+	VPXORQ  Z13, Z13, Z13
+	MOVQ    40(AX), DX
+	MOVQ    32(SP), BX
+	LEAQ    (BX)(DX*8), SI
+	LEAQ    (SI)(DX*8), DX
+	MOVQ    DX, 32(SP)
+	MOVQ    40(AX), DX
+	MOVQ    40(SP), DI
+	LEAQ    (DI)(DX*4), R8
+	LEAQ    (R8)(DX*4), DX
+	MOVQ    DX, 40(SP)
+	MOVQ    96(AX), DX
+	MOVQ    48(AX), R9
+	MOVQ    (AX), R10
+	ADDQ    R10, R10
+	XORQ    R11, R11
 
 term:
-	VPSLLVQ      Z0, Z22, Z22
-	VFMADD231PD  Z1, Z26, Z24
-	VBROADCASTSD (BX)(R15*8), Z18
-	VPBROADCASTD (R9)(R15*4), Z19
-	VPMOVZXDQ    (DX), Z20
-	VPADDQ       Z21, Z12, Z12
-	VANDPD       Z8, Z14, Z21
-	VANDPD       Z4, Z27, Z31
-	VPANDQ       Z5, Z22, Z22
-	VFNMADD231PD Z1, Z26, Z24
-	VPMADDWD     Z20, Z19, Z20
-	VPANDQ       Z7, Z12, Z12
-	VMAXPD       Z21, Z17, Z17
-	VMAXPD       Z3, Z31, Z31
-	VPORQ        Z6, Z22, Z22
-	VFMADD231PD  Z2, Z24, Z15
-	VMULPD       (R13), Z18, Z24
-	VPSLLVQ      Z0, Z23, Z23
-	VFMADD231PD  Z1, Z31, Z27
-	VBROADCASTSD 8(BX)(R15*8), Z19
-	VPBROADCASTD 4(R9)(R15*4), Z21
-	VPMOVZXDQ    (DX), Z18
-	VPADDQ       Z22, Z13, Z13
-	VANDPD       Z8, Z15, Z26
-	VANDPD       Z4, Z24, Z22
-	VPANDQ       Z5, Z23, Z23
-	VFNMADD231PD Z1, Z31, Z27
-	VPMADDWD     Z18, Z21, Z18
-	VPANDQ       Z7, Z13, Z13
-	VMAXPD       Z26, Z17, Z17
-	VMAXPD       Z3, Z22, Z22
-	VPORQ        Z6, Z23, Z23
-	VFMADD231PD  Z2, Z27, Z16
-	VMULPD       (R13), Z19, Z19
-	VPSLLVQ      Z0, Z25, Z25
-	VFMADD231PD  Z1, Z22, Z24
-	VBROADCASTSD (SI)(R15*8), Z21
-	VPBROADCASTD (R10)(R15*4), Z27
-	VPMOVZXDQ    (DX), Z26
-	VPADDQ       Z23, Z14, Z14
-	VANDPD       Z8, Z16, Z31
-	VANDPD       Z4, Z19, Z23
-	VPANDQ       Z5, Z25, Z25
-	VFNMADD231PD Z1, Z22, Z24
-	VPMADDWD     Z26, Z27, Z26
-	VPANDQ       Z7, Z14, Z14
-	VMAXPD       Z31, Z17, Z17
-	VMAXPD       Z3, Z23, Z23
-	VPORQ        Z6, Z25, Z25
-	VFMADD231PD  Z2, Z24, Z9
-	VMULPD       (R13), Z21, Z24
-	VPSLLVQ      Z0, Z28, Z28
-	VFMADD231PD  Z1, Z23, Z19
-	VBROADCASTSD 8(SI)(R15*8), Z22
-	VPBROADCASTD 4(R10)(R15*4), Z27
-	VPMOVZXDQ    (DX), Z21
-	VPADDQ       Z25, Z15, Z15
-	VANDPD       Z8, Z9, Z25
-	VANDPD       Z4, Z24, Z31
-	VPANDQ       Z5, Z28, Z28
-	VFNMADD231PD Z1, Z23, Z19
-	VPMADDWD     Z21, Z27, Z21
-	VPANDQ       Z7, Z15, Z15
-	VMAXPD       Z25, Z17, Z17
-	VMAXPD       Z3, Z31, Z31
-	VPORQ        Z6, Z28, Z28
-	VFMADD231PD  Z2, Z19, Z10
-	VMULPD       (R13), Z22, Z19
-	VPSLLVQ      Z0, Z20, Z20
-	VFMADD231PD  Z1, Z31, Z24
-	VBROADCASTSD (DI)(R15*8), Z23
-	VPBROADCASTD (R11)(R15*4), Z25
-	VPMOVZXDQ    (DX), Z22
-	VPADDQ       Z28, Z16, Z16
-	VANDPD       Z8, Z10, Z27
-	VANDPD       Z4, Z19, Z28
-	VPANDQ       Z5, Z20, Z20
-	VFNMADD231PD Z1, Z31, Z24
-	VPMADDWD     Z22, Z25, Z22
-	VPANDQ       Z7, Z16, Z16
-	VMAXPD       Z27, Z17, Z17
-	VMAXPD       Z3, Z28, Z28
-	VPORQ        Z6, Z20, Z20
-	VFMADD231PD  Z2, Z24, Z11
-	VMULPD       (R13), Z23, Z24
-	VPSLLVQ      Z0, Z18, Z18
-	VFMADD231PD  Z1, Z28, Z19
-	VBROADCASTSD 8(DI)(R15*8), Z25
-	VPBROADCASTD 4(R11)(R15*4), Z27
-	VPMOVZXDQ    (DX), Z23
-	VPADDQ       Z20, Z9, Z9
-	VANDPD       Z8, Z11, Z20
-	VANDPD       Z4, Z24, Z31
-	VPANDQ       Z5, Z18, Z18
-	VFNMADD231PD Z1, Z28, Z19
-	VPMADDWD     Z23, Z27, Z23
+	VBROADCASTSD (BX)(R11*8), Z14
+	VPBROADCASTD (DI)(R11*4), Z15
+	VPMOVZXDQ    (DX), Z16
+	VPMADDWD     Z16, Z15, Z16
+	VMULPD       (R9), Z14, Z14
+	VANDPD       Z4, Z14, Z15
+	VMAXPD       Z3, Z15, Z15
+	VFMADD231PD  Z1, Z15, Z14
+	VFNMADD231PD Z1, Z15, Z14
+	VFMADD231PD  Z2, Z14, Z9
+	VANDPD       Z8, Z9, Z14
+	VMAXPD       Z14, Z13, Z13
+	VPSLLVQ      Z0, Z16, Z16
+	VPANDQ       Z5, Z16, Z16
+	VPORQ        Z6, Z16, Z16
+	VPADDQ       Z16, Z9, Z9
 	VPANDQ       Z7, Z9, Z9
-	VMAXPD       Z20, Z17, Z17
-	VMAXPD       Z3, Z31, Z31
-	VPORQ        Z6, Z18, Z18
-	VFMADD231PD  Z2, Z19, Z12
-	VMULPD       (R13), Z25, Z19
-	VPSLLVQ      Z0, Z26, Z26
-	VFMADD231PD  Z1, Z31, Z24
-	VBROADCASTSD (R8)(R15*8), Z20
-	VPBROADCASTD (R12)(R15*4), Z27
-	VPMOVZXDQ    (DX), Z25
-	VPADDQ       Z18, Z10, Z10
-	VANDPD       Z8, Z12, Z28
-	VANDPD       Z4, Z19, Z18
-	VPANDQ       Z5, Z26, Z26
-	VFNMADD231PD Z1, Z31, Z24
-	VPMADDWD     Z25, Z27, Z25
+	VBROADCASTSD 8(BX)(R11*8), Z14
+	VPBROADCASTD 4(DI)(R11*4), Z15
+	VPMOVZXDQ    (DX), Z16
+	VPMADDWD     Z16, Z15, Z16
+	VMULPD       (R9), Z14, Z14
+	VANDPD       Z4, Z14, Z15
+	VMAXPD       Z3, Z15, Z15
+	VFMADD231PD  Z1, Z15, Z14
+	VFNMADD231PD Z1, Z15, Z14
+	VFMADD231PD  Z2, Z14, Z10
+	VANDPD       Z8, Z10, Z14
+	VMAXPD       Z14, Z13, Z13
+	VPSLLVQ      Z0, Z16, Z16
+	VPANDQ       Z5, Z16, Z16
+	VPORQ        Z6, Z16, Z16
+	VPADDQ       Z16, Z10, Z10
 	VPANDQ       Z7, Z10, Z10
-	VMAXPD       Z28, Z17, Z17
-	VMAXPD       Z3, Z18, Z18
-	VPORQ        Z6, Z26, Z26
-	VFMADD231PD  Z2, Z24, Z13
-	VMULPD       (R13), Z20, Z24
-	VPSLLVQ      Z0, Z21, Z21
-	VFMADD231PD  Z1, Z18, Z19
-	VBROADCASTSD 8(R8)(R15*8), Z20
-	VPBROADCASTD 4(R12)(R15*4), Z27
-	VPMOVZXDQ    (DX), Z28
-	VPADDQ       Z26, Z11, Z11
-	VANDPD       Z8, Z13, Z31
-	VANDPD       Z4, Z24, Z26
-	VPANDQ       Z5, Z21, Z21
-	VFNMADD231PD Z1, Z18, Z19
-	VPMADDWD     Z28, Z27, Z28
+	VBROADCASTSD (SI)(R11*8), Z14
+	VPBROADCASTD (R8)(R11*4), Z15
+	VPMOVZXDQ    (DX), Z16
+	VPMADDWD     Z16, Z15, Z16
+	VMULPD       (R9), Z14, Z14
+	VANDPD       Z4, Z14, Z15
+	VMAXPD       Z3, Z15, Z15
+	VFMADD231PD  Z1, Z15, Z14
+	VFNMADD231PD Z1, Z15, Z14
+	VFMADD231PD  Z2, Z14, Z11
+	VANDPD       Z8, Z11, Z14
+	VMAXPD       Z14, Z13, Z13
+	VPSLLVQ      Z0, Z16, Z16
+	VPANDQ       Z5, Z16, Z16
+	VPORQ        Z6, Z16, Z16
+	VPADDQ       Z16, Z11, Z11
 	VPANDQ       Z7, Z11, Z11
-	VMAXPD       Z31, Z17, Z17
-	VMAXPD       Z3, Z26, Z26
-	VPORQ        Z6, Z21, Z21
-	VFMADD231PD  Z2, Z19, Z14
-	VMULPD       (R13), Z20, Z27
-	ADDQ         $0x00000040, R13
-	ADDQ         $0x00000020, DX
-	ADDQ         $0x02, R15
-	CMPQ         R15, R14
-	JLT          term
-
-last:
-	VPSLLVQ      Z0, Z22, Z22
-	VFMADD231PD  Z1, Z26, Z24
-	VPADDQ       Z21, Z12, Z12
-	VANDPD       Z8, Z14, Z21
-	VANDPD       Z4, Z27, Z31
-	VPANDQ       Z5, Z22, Z22
-	VFNMADD231PD Z1, Z26, Z24
+	VBROADCASTSD 8(SI)(R11*8), Z14
+	VPBROADCASTD 4(R8)(R11*4), Z15
+	VPMOVZXDQ    (DX), Z16
+	VPMADDWD     Z16, Z15, Z16
+	VMULPD       (R9), Z14, Z14
+	VANDPD       Z4, Z14, Z15
+	VMAXPD       Z3, Z15, Z15
+	VFMADD231PD  Z1, Z15, Z14
+	VFNMADD231PD Z1, Z15, Z14
+	VFMADD231PD  Z2, Z14, Z12
+	VANDPD       Z8, Z12, Z14
+	VMAXPD       Z14, Z13, Z13
+	VPSLLVQ      Z0, Z16, Z16
+	VPANDQ       Z5, Z16, Z16
+	VPORQ        Z6, Z16, Z16
+	VPADDQ       Z16, Z12, Z12
 	VPANDQ       Z7, Z12, Z12
-	VMAXPD       Z21, Z17, Z17
-	VMAXPD       Z3, Z31, Z31
-	VPORQ        Z6, Z22, Z22
-	VFMADD231PD  Z2, Z24, Z15
-	VPSLLVQ      Z0, Z23, Z23
-	VFMADD231PD  Z1, Z31, Z27
-	VPADDQ       Z22, Z13, Z13
-	VANDPD       Z8, Z15, Z26
-	VPANDQ       Z5, Z23, Z23
-	VFNMADD231PD Z1, Z31, Z27
-	VPANDQ       Z7, Z13, Z13
-	VMAXPD       Z26, Z17, Z17
-	VPORQ        Z6, Z23, Z23
-	VFMADD231PD  Z2, Z27, Z16
-	VPSLLVQ      Z0, Z25, Z25
-	VPADDQ       Z23, Z14, Z14
-	VANDPD       Z8, Z16, Z31
-	VPANDQ       Z5, Z25, Z25
-	VPANDQ       Z7, Z14, Z14
-	VMAXPD       Z31, Z17, Z17
-	VPORQ        Z6, Z25, Z25
-	VPSLLVQ      Z0, Z28, Z28
-	VPADDQ       Z25, Z15, Z15
-	VPANDQ       Z5, Z28, Z28
-	VPANDQ       Z7, Z15, Z15
-	VPORQ        Z6, Z28, Z28
-	VPADDQ       Z28, Z16, Z16
-	VPANDQ       Z7, Z16, Z16
-	VMOVUPD      640(CX), Z18
-	VPXORQ       Z29, Z29, Z29
-	VPXORQ       Z30, Z30, Z30
-	VCMPPD       $0x05, 1344(CX), Z17, K1
-	VPMOVM2Q     K1, Z17
-	VORPD        Z17, Z9, Z9
-	VORPD        Z17, Z10, Z10
-	VORPD        Z17, Z11, Z11
-	VORPD        Z17, Z12, Z12
-	VORPD        Z17, Z13, Z13
-	VORPD        Z17, Z14, Z14
-	VORPD        Z17, Z15, Z15
-	VORPD        Z17, Z16, Z16
-	VFMADD231PD  Z29, Z9, Z30
-	VMULPD       Z18, Z9, Z9
-	VADDPD       Z29, Z9, Z9
-	VFMADD231PD  Z29, Z10, Z30
-	VMULPD       Z18, Z10, Z10
-	VADDPD       Z29, Z10, Z10
-	VFMADD231PD  Z29, Z11, Z30
-	VMULPD       Z18, Z11, Z11
-	VADDPD       Z29, Z11, Z11
-	VFMADD231PD  Z29, Z12, Z30
-	VMULPD       Z18, Z12, Z12
-	VADDPD       Z29, Z12, Z12
-	VFMADD231PD  Z29, Z13, Z30
-	VMULPD       Z18, Z13, Z13
-	VADDPD       Z29, Z13, Z13
-	VFMADD231PD  Z29, Z14, Z30
-	VMULPD       Z18, Z14, Z14
-	VADDPD       Z29, Z14, Z14
-	VFMADD231PD  Z29, Z15, Z30
-	VMULPD       Z18, Z15, Z15
-	VADDPD       Z29, Z15, Z15
-	VFMADD231PD  Z29, Z16, Z30
-	VMULPD       Z18, Z16, Z16
-	VADDPD       Z29, Z16, Z16
+	ADDQ         $0x00000040, R9
+	ADDQ         $0x00000020, DX
+	ADDQ         $0x02, R11
+	CMPQ         R11, R10
+	JLT          term
+	VMOVUPD      640(CX), Z14
+	VPXORQ       Z17, Z17, Z17
+	VPXORQ       Z18, Z18, Z18
+	VCMPPD       $0x05, 1344(CX), Z13, K1
+	VPMOVM2Q     K1, Z13
+	VORPD        Z13, Z9, Z9
+	VORPD        Z13, Z10, Z10
+	VORPD        Z13, Z11, Z11
+	VORPD        Z13, Z12, Z12
+	VFMADD231PD  Z17, Z9, Z18
+	VMULPD       Z14, Z9, Z9
+	VADDPD       Z17, Z9, Z9
+	VFMADD231PD  Z17, Z10, Z18
+	VMULPD       Z14, Z10, Z10
+	VADDPD       Z17, Z10, Z10
+	VFMADD231PD  Z17, Z11, Z18
+	VMULPD       Z14, Z11, Z11
+	VADDPD       Z17, Z11, Z11
+	VFMADD231PD  Z17, Z12, Z18
+	VMULPD       Z14, Z12, Z12
+	VADDPD       Z17, Z12, Z12
 	CMPQ         48(SP), $0x00
 	JNE          narrow
 	MOVQ         16(SP), DX
@@ -4339,14 +3832,6 @@ last:
 	VMOVUPD      Z11, (DX)
 	LEAQ         (DX)(BX*8), DX
 	VMOVUPD      Z12, (DX)
-	LEAQ         (DX)(BX*8), DX
-	VMOVUPD      Z13, (DX)
-	LEAQ         (DX)(BX*8), DX
-	VMOVUPD      Z14, (DX)
-	LEAQ         (DX)(BX*8), DX
-	VMOVUPD      Z15, (DX)
-	LEAQ         (DX)(BX*8), DX
-	VMOVUPD      Z16, (DX)
 	LEAQ         (DX)(BX*8), DX
 	MOVQ         DX, 16(SP)
 	JMP          stored
@@ -4366,22 +3851,10 @@ narrow:
 	VCVTPD2PS Z12, Y12
 	VMOVUPS   Y12, (DX)
 	LEAQ      (DX)(BX*4), DX
-	VCVTPD2PS Z13, Y13
-	VMOVUPS   Y13, (DX)
-	LEAQ      (DX)(BX*4), DX
-	VCVTPD2PS Z14, Y14
-	VMOVUPS   Y14, (DX)
-	LEAQ      (DX)(BX*4), DX
-	VCVTPD2PS Z15, Y15
-	VMOVUPS   Y15, (DX)
-	LEAQ      (DX)(BX*4), DX
-	VCVTPD2PS Z16, Y16
-	VMOVUPS   Y16, (DX)
-	LEAQ      (DX)(BX*4), DX
 	MOVQ      DX, 48(SP)
 
 stored:
-	VCMPPD $0x03, Z30, Z30, K1
+	VCMPPD $0x03, Z18, Z18, K1
 	KMOVW  K1, DX
 	TESTL  DX, DX
 	MOVQ   24(SP), DX
@@ -5546,329 +5019,188 @@ TEXT ·stochasticBothAVX512R4V1(SB), $64-8
 	MOVQ    DX, 56(SP)
 
 group:
-	MOVQ          8(SP), DX
-	MOVQ          144(AX), BX
-	VMOVUPD       (DX), Z12
-	VMULPD        576(CX), Z12, Z12
-	LEAQ          (DX)(BX*8), DX
-	VMOVUPD       (DX), Z13
-	VMULPD        576(CX), Z13, Z13
-	LEAQ          (DX)(BX*8), DX
-	VMOVUPD       (DX), Z14
-	VMULPD        576(CX), Z14, Z14
-	LEAQ          (DX)(BX*8), DX
-	VMOVUPD       (DX), Z15
-	VMULPD        576(CX), Z15, Z15
-	LEAQ          (DX)(BX*8), DX
-	MOVQ          DX, 8(SP)
-	VPXORQ        Z16, Z16, Z16
-	VPXORQ        Z17, Z17, Z17
-	MOVQ          40(AX), DX
-	MOVQ          32(SP), BX
-	LEAQ          (BX)(DX*8), SI
-	LEAQ          (SI)(DX*8), DX
-	MOVQ          DX, 32(SP)
-	MOVQ          40(AX), DX
-	MOVQ          40(SP), DI
-	LEAQ          (DI)(DX*4), R8
-	LEAQ          (R8)(DX*4), DX
-	MOVQ          DX, 40(SP)
-	MOVQ          96(AX), DX
-	MOVQ          40(AX), R9
-	MOVQ          48(SP), R10
-	LEAQ          (R10)(R9*4), R11
-	LEAQ          (R11)(R9*4), R9
-	MOVQ          R9, 48(SP)
-	MOVQ          272(AX), R9
-	MOVQ          48(AX), R12
-	MOVQ          (AX), R13
-	ADDQ          R13, R13
-	XORQ          R14, R14
-	VMOVUPD       (R12), Z21
-	VBROADCASTSD  (BX)(R14*8), Z18
-	VPBROADCASTD  (DI)(R14*4), Z19
-	VPBROADCASTD  (R10)(R14*4), Z20
-	VPMOVZXDQ     (R9), Z22
-	VPMADDWD      Z22, Z20, Z22
-	VPMOVZXDQ     (DX), Z20
-	VPMADDWD      Z20, Z19, Z20
-	VMULPD        Z21, Z18, Z18
-	VANDPD        Z1, Z18, Z19
-	VMAXPD        Z19, Z17, Z17
-	VCMPPD        $0x11, Z3, Z19, K1
-	VMOVAPD       Z18, Z19
-	VPTERNLOGQ    $0xea, Z3, Z0, Z19
-	VADDPD.RZ_SAE Z19, Z18, K1, Z18
-	VBROADCASTSD  8(BX)(R14*8), Z23
-	VPBROADCASTD  4(DI)(R14*4), Z26
-	VPBROADCASTD  4(R10)(R14*4), Z24
-	VPMOVZXDQ     (R9), Z25
-	VPSLLVQ       Z4, Z22, Z22
-	VPMADDWD      Z25, Z24, Z25
-	VPANDQ        Z5, Z22, Z22
-	VPMOVZXDQ     (DX), Z24
-	VPORQ         Z6, Z22, Z22
-	VPMADDWD      Z24, Z26, Z24
-	VPADDQ        Z22, Z18, Z18
-	VMULPD        Z21, Z23, Z22
-	VPANDQ        Z7, Z18, Z18
-	VANDPD        Z1, Z22, Z26
-	VSUBPD        Z19, Z18, K1, Z18
-	VMAXPD        Z26, Z17, Z17
-	VADDPD.RZ_SAE Z18, Z12, Z12
-	VCMPPD        $0x11, Z3, Z26, K1
-	VANDPD        Z1, Z12, Z27
-	VMOVAPD       Z22, Z26
-	VMAXPD        Z27, Z16, Z16
-	VPTERNLOGQ    $0xea, Z3, Z0, Z26
-	VCMPPD        $0x11, Z2, Z27, K2
-	VADDPD.RZ_SAE Z26, Z22, K1, Z22
-	VBROADCASTSD  (SI)(R14*8), Z18
-	VPBROADCASTD  (R8)(R14*4), Z19
-	VPBROADCASTD  (R11)(R14*4), Z23
-	VPMOVZXDQ     (R9), Z28
-	VMOVAPD       Z12, Z27
-	VPSLLVQ       Z4, Z25, Z25
-	VPMADDWD      Z28, Z23, Z28
-	VPTERNLOGQ    $0xea, Z2, Z0, Z27
-	VPANDQ        Z5, Z25, Z25
-	VPMOVZXDQ     (DX), Z23
-	VADDPD.RZ_SAE Z27, Z12, K2, Z12
-	VPORQ         Z6, Z25, Z25
-	VPMADDWD      Z23, Z19, Z23
-	VPSLLVQ       Z8, Z20, Z20
-	VPADDQ        Z25, Z22, Z22
-	VMULPD        Z21, Z18, Z18
-	VPANDQ        Z9, Z20, Z20
-	VPANDQ        Z7, Z22, Z22
-	VANDPD        Z1, Z18, Z19
-	VPORQ         Z10, Z20, Z20
-	VSUBPD        Z26, Z22, K1, Z22
-	VMAXPD        Z19, Z17, Z17
-	VPADDQ        Z20, Z12, Z12
-	VADDPD.RZ_SAE Z22, Z13, Z13
-	VCMPPD        $0x11, Z3, Z19, K1
-	VPANDQ        Z11, Z12, Z12
-	VANDPD        Z1, Z13, Z20
-	VMOVAPD       Z18, Z19
-	VSUBPD        Z27, Z12, K2, Z12
-	VMAXPD        Z20, Z16, Z16
-	VPTERNLOGQ    $0xea, Z3, Z0, Z19
-	VCMPPD        $0x11, Z2, Z20, K2
-	VADDPD.RZ_SAE Z19, Z18, K1, Z18
-	VBROADCASTSD  8(SI)(R14*8), Z22
-	VPBROADCASTD  4(R8)(R14*4), Z25
-	VPBROADCASTD  4(R11)(R14*4), Z27
-	VPMOVZXDQ     (R9), Z26
-	VMOVAPD       Z13, Z20
-	VPSLLVQ       Z4, Z28, Z28
-	VPMADDWD      Z26, Z27, Z26
-	VPTERNLOGQ    $0xea, Z2, Z0, Z20
-	VPANDQ        Z5, Z28, Z28
-	VPMOVZXDQ     (DX), Z27
-	VADDPD.RZ_SAE Z20, Z13, K2, Z13
-	VPORQ         Z6, Z28, Z28
-	VPMADDWD      Z27, Z25, Z27
-	VPSLLVQ       Z8, Z24, Z24
-	VPADDQ        Z28, Z18, Z18
-	VMULPD        Z21, Z22, Z25
-	VPANDQ        Z9, Z24, Z24
-	VPANDQ        Z7, Z18, Z18
-	VANDPD        Z1, Z25, Z28
-	VPORQ         Z10, Z24, Z24
-	VSUBPD        Z19, Z18, K1, Z18
-	VMAXPD        Z28, Z17, Z17
-	VPADDQ        Z24, Z13, Z13
-	VADDPD.RZ_SAE Z18, Z14, Z14
-	VCMPPD        $0x11, Z3, Z28, K1
-	VPANDQ        Z11, Z13, Z13
-	VANDPD        Z1, Z14, Z24
-	VMOVAPD       Z25, Z28
-	VSUBPD        Z20, Z13, K2, Z13
-	VMAXPD        Z24, Z16, Z16
-	VPTERNLOGQ    $0xea, Z3, Z0, Z28
-	ADDQ          $0x00000040, R12
-	ADDQ          $0x00000020, DX
-	ADDQ          $0x00000020, R9
-	ADDQ          $0x02, R14
-	CMPQ          R14, R13
-	JGE           last
+	MOVQ    8(SP), DX
+	MOVQ    144(AX), BX
+	VMOVUPD (DX), Z12
+	VMULPD  576(CX), Z12, Z12
+	LEAQ    (DX)(BX*8), DX
+	VMOVUPD (DX), Z13
+	VMULPD  576(CX), Z13, Z13
+	LEAQ    (DX)(BX*8), DX
+	VMOVUPD (DX), Z14
+	VMULPD  576(CX), Z14, Z14
+	LEAQ    (DX)(BX*8), DX
+	VMOVUPD (DX), Z15
+	VMULPD  576(CX), Z15, Z15
+	LEAQ    (DX)(BX*8), DX
+	MOVQ    DX, 8(SP)
+	VPXORQ  Z16, Z16, Z16
+	VPXORQ  Z17, Z17, Z17
+	MOVQ    40(AX), DX
+	MOVQ    32(SP), BX
+	LEAQ    (BX)(DX*8), SI
+	LEAQ    (SI)(DX*8), DX
+	MOVQ    DX, 32(SP)
+	MOVQ    40(AX), DX
+	MOVQ    40(SP), DI
+	LEAQ    (DI)(DX*4), R8
+	LEAQ    (R8)(DX*4), DX
+	MOVQ    DX, 40(SP)
+	MOVQ    96(AX), DX
+	MOVQ    40(AX), R9
+	MOVQ    48(SP), R10
+	LEAQ    (R10)(R9*4), R11
+	LEAQ    (R11)(R9*4), R9
+	MOVQ    R9, 48(SP)
+	MOVQ    272(AX), R9
+	MOVQ    48(AX), R12
+	MOVQ    (AX), R13
+	ADDQ    R13, R13
+	XORQ    R14, R14
 
 term:
-	VCMPPD        $0x11, Z2, Z24, K2
-	VADDPD.RZ_SAE Z28, Z25, K1, Z25
 	VMOVUPD       (R12), Z21
 	VBROADCASTSD  (BX)(R14*8), Z18
 	VPBROADCASTD  (DI)(R14*4), Z19
 	VPBROADCASTD  (R10)(R14*4), Z20
 	VPMOVZXDQ     (R9), Z22
-	VMOVAPD       Z14, Z24
-	VPSLLVQ       Z4, Z26, Z26
 	VPMADDWD      Z22, Z20, Z22
-	VPTERNLOGQ    $0xea, Z2, Z0, Z24
-	VPANDQ        Z5, Z26, Z26
 	VPMOVZXDQ     (DX), Z20
-	VADDPD.RZ_SAE Z24, Z14, K2, Z14
-	VPORQ         Z6, Z26, Z26
 	VPMADDWD      Z20, Z19, Z20
-	VPSLLVQ       Z8, Z23, Z23
-	VPADDQ        Z26, Z25, Z25
 	VMULPD        Z21, Z18, Z18
-	VPANDQ        Z9, Z23, Z23
-	VPANDQ        Z7, Z25, Z25
 	VANDPD        Z1, Z18, Z19
-	VPORQ         Z10, Z23, Z23
-	VSUBPD        Z28, Z25, K1, Z25
 	VMAXPD        Z19, Z17, Z17
-	VPADDQ        Z23, Z14, Z14
-	VADDPD.RZ_SAE Z25, Z15, Z15
 	VCMPPD        $0x11, Z3, Z19, K1
-	VPANDQ        Z11, Z14, Z14
-	VANDPD        Z1, Z15, Z28
 	VMOVAPD       Z18, Z19
-	VSUBPD        Z24, Z14, K2, Z14
-	VMAXPD        Z28, Z16, Z16
 	VPTERNLOGQ    $0xea, Z3, Z0, Z19
-	VCMPPD        $0x11, Z2, Z28, K2
 	VADDPD.RZ_SAE Z19, Z18, K1, Z18
-	VBROADCASTSD  8(BX)(R14*8), Z23
-	VPBROADCASTD  4(DI)(R14*4), Z26
-	VPBROADCASTD  4(R10)(R14*4), Z24
-	VPMOVZXDQ     (R9), Z25
-	VMOVAPD       Z15, Z28
 	VPSLLVQ       Z4, Z22, Z22
-	VPMADDWD      Z25, Z24, Z25
-	VPTERNLOGQ    $0xea, Z2, Z0, Z28
 	VPANDQ        Z5, Z22, Z22
-	VPMOVZXDQ     (DX), Z24
-	VADDPD.RZ_SAE Z28, Z15, K2, Z15
 	VPORQ         Z6, Z22, Z22
-	VPMADDWD      Z24, Z26, Z24
-	VPSLLVQ       Z8, Z27, Z27
 	VPADDQ        Z22, Z18, Z18
-	VMULPD        Z21, Z23, Z22
-	VPANDQ        Z9, Z27, Z27
 	VPANDQ        Z7, Z18, Z18
-	VANDPD        Z1, Z22, Z26
-	VPORQ         Z10, Z27, Z27
 	VSUBPD        Z19, Z18, K1, Z18
-	VMAXPD        Z26, Z17, Z17
-	VPADDQ        Z27, Z15, Z15
 	VADDPD.RZ_SAE Z18, Z12, Z12
-	VCMPPD        $0x11, Z3, Z26, K1
-	VPANDQ        Z11, Z15, Z15
-	VANDPD        Z1, Z12, Z27
-	VMOVAPD       Z22, Z26
-	VSUBPD        Z28, Z15, K2, Z15
-	VMAXPD        Z27, Z16, Z16
-	VPTERNLOGQ    $0xea, Z3, Z0, Z26
-	VCMPPD        $0x11, Z2, Z27, K2
-	VADDPD.RZ_SAE Z26, Z22, K1, Z22
+	VANDPD        Z1, Z12, Z18
+	VMAXPD        Z18, Z16, Z16
+	VCMPPD        $0x11, Z2, Z18, K1
+	VMOVAPD       Z12, Z18
+	VPTERNLOGQ    $0xea, Z2, Z0, Z18
+	VADDPD.RZ_SAE Z18, Z12, K1, Z12
+	VPSLLVQ       Z8, Z20, Z20
+	VPANDQ        Z9, Z20, Z20
+	VPORQ         Z10, Z20, Z20
+	VPADDQ        Z20, Z12, Z12
+	VPANDQ        Z11, Z12, Z12
+	VSUBPD        Z18, Z12, K1, Z12
+	VBROADCASTSD  8(BX)(R14*8), Z18
+	VPBROADCASTD  4(DI)(R14*4), Z19
+	VPBROADCASTD  4(R10)(R14*4), Z20
+	VPMOVZXDQ     (R9), Z22
+	VPMADDWD      Z22, Z20, Z22
+	VPMOVZXDQ     (DX), Z20
+	VPMADDWD      Z20, Z19, Z20
+	VMULPD        Z21, Z18, Z18
+	VANDPD        Z1, Z18, Z19
+	VMAXPD        Z19, Z17, Z17
+	VCMPPD        $0x11, Z3, Z19, K1
+	VMOVAPD       Z18, Z19
+	VPTERNLOGQ    $0xea, Z3, Z0, Z19
+	VADDPD.RZ_SAE Z19, Z18, K1, Z18
+	VPSLLVQ       Z4, Z22, Z22
+	VPANDQ        Z5, Z22, Z22
+	VPORQ         Z6, Z22, Z22
+	VPADDQ        Z22, Z18, Z18
+	VPANDQ        Z7, Z18, Z18
+	VSUBPD        Z19, Z18, K1, Z18
+	VADDPD.RZ_SAE Z18, Z13, Z13
+	VANDPD        Z1, Z13, Z18
+	VMAXPD        Z18, Z16, Z16
+	VCMPPD        $0x11, Z2, Z18, K1
+	VMOVAPD       Z13, Z18
+	VPTERNLOGQ    $0xea, Z2, Z0, Z18
+	VADDPD.RZ_SAE Z18, Z13, K1, Z13
+	VPSLLVQ       Z8, Z20, Z20
+	VPANDQ        Z9, Z20, Z20
+	VPORQ         Z10, Z20, Z20
+	VPADDQ        Z20, Z13, Z13
+	VPANDQ        Z11, Z13, Z13
+	VSUBPD        Z18, Z13, K1, Z13
 	VBROADCASTSD  (SI)(R14*8), Z18
 	VPBROADCASTD  (R8)(R14*4), Z19
-	VPBROADCASTD  (R11)(R14*4), Z23
-	VPMOVZXDQ     (R9), Z28
-	VMOVAPD       Z12, Z27
-	VPSLLVQ       Z4, Z25, Z25
-	VPMADDWD      Z28, Z23, Z28
-	VPTERNLOGQ    $0xea, Z2, Z0, Z27
-	VPANDQ        Z5, Z25, Z25
-	VPMOVZXDQ     (DX), Z23
-	VADDPD.RZ_SAE Z27, Z12, K2, Z12
-	VPORQ         Z6, Z25, Z25
-	VPMADDWD      Z23, Z19, Z23
-	VPSLLVQ       Z8, Z20, Z20
-	VPADDQ        Z25, Z22, Z22
+	VPBROADCASTD  (R11)(R14*4), Z20
+	VPMOVZXDQ     (R9), Z22
+	VPMADDWD      Z22, Z20, Z22
+	VPMOVZXDQ     (DX), Z20
+	VPMADDWD      Z20, Z19, Z20
 	VMULPD        Z21, Z18, Z18
-	VPANDQ        Z9, Z20, Z20
-	VPANDQ        Z7, Z22, Z22
 	VANDPD        Z1, Z18, Z19
-	VPORQ         Z10, Z20, Z20
-	VSUBPD        Z26, Z22, K1, Z22
 	VMAXPD        Z19, Z17, Z17
-	VPADDQ        Z20, Z12, Z12
-	VADDPD.RZ_SAE Z22, Z13, Z13
 	VCMPPD        $0x11, Z3, Z19, K1
-	VPANDQ        Z11, Z12, Z12
-	VANDPD        Z1, Z13, Z20
 	VMOVAPD       Z18, Z19
-	VSUBPD        Z27, Z12, K2, Z12
-	VMAXPD        Z20, Z16, Z16
 	VPTERNLOGQ    $0xea, Z3, Z0, Z19
-	VCMPPD        $0x11, Z2, Z20, K2
 	VADDPD.RZ_SAE Z19, Z18, K1, Z18
-	VBROADCASTSD  8(SI)(R14*8), Z22
-	VPBROADCASTD  4(R8)(R14*4), Z25
-	VPBROADCASTD  4(R11)(R14*4), Z27
-	VPMOVZXDQ     (R9), Z26
-	VMOVAPD       Z13, Z20
-	VPSLLVQ       Z4, Z28, Z28
-	VPMADDWD      Z26, Z27, Z26
-	VPTERNLOGQ    $0xea, Z2, Z0, Z20
-	VPANDQ        Z5, Z28, Z28
-	VPMOVZXDQ     (DX), Z27
-	VADDPD.RZ_SAE Z20, Z13, K2, Z13
-	VPORQ         Z6, Z28, Z28
-	VPMADDWD      Z27, Z25, Z27
-	VPSLLVQ       Z8, Z24, Z24
-	VPADDQ        Z28, Z18, Z18
-	VMULPD        Z21, Z22, Z25
-	VPANDQ        Z9, Z24, Z24
+	VPSLLVQ       Z4, Z22, Z22
+	VPANDQ        Z5, Z22, Z22
+	VPORQ         Z6, Z22, Z22
+	VPADDQ        Z22, Z18, Z18
 	VPANDQ        Z7, Z18, Z18
-	VANDPD        Z1, Z25, Z28
-	VPORQ         Z10, Z24, Z24
 	VSUBPD        Z19, Z18, K1, Z18
-	VMAXPD        Z28, Z17, Z17
-	VPADDQ        Z24, Z13, Z13
 	VADDPD.RZ_SAE Z18, Z14, Z14
-	VCMPPD        $0x11, Z3, Z28, K1
-	VPANDQ        Z11, Z13, Z13
-	VANDPD        Z1, Z14, Z24
-	VMOVAPD       Z25, Z28
-	VSUBPD        Z20, Z13, K2, Z13
-	VMAXPD        Z24, Z16, Z16
-	VPTERNLOGQ    $0xea, Z3, Z0, Z28
+	VANDPD        Z1, Z14, Z18
+	VMAXPD        Z18, Z16, Z16
+	VCMPPD        $0x11, Z2, Z18, K1
+	VMOVAPD       Z14, Z18
+	VPTERNLOGQ    $0xea, Z2, Z0, Z18
+	VADDPD.RZ_SAE Z18, Z14, K1, Z14
+	VPSLLVQ       Z8, Z20, Z20
+	VPANDQ        Z9, Z20, Z20
+	VPORQ         Z10, Z20, Z20
+	VPADDQ        Z20, Z14, Z14
+	VPANDQ        Z11, Z14, Z14
+	VSUBPD        Z18, Z14, K1, Z14
+	VBROADCASTSD  8(SI)(R14*8), Z18
+	VPBROADCASTD  4(R8)(R14*4), Z19
+	VPBROADCASTD  4(R11)(R14*4), Z20
+	VPMOVZXDQ     (R9), Z22
+	VPMADDWD      Z22, Z20, Z22
+	VPMOVZXDQ     (DX), Z20
+	VPMADDWD      Z20, Z19, Z20
+	VMULPD        Z21, Z18, Z18
+	VANDPD        Z1, Z18, Z19
+	VMAXPD        Z19, Z17, Z17
+	VCMPPD        $0x11, Z3, Z19, K1
+	VMOVAPD       Z18, Z19
+	VPTERNLOGQ    $0xea, Z3, Z0, Z19
+	VADDPD.RZ_SAE Z19, Z18, K1, Z18
+	VPSLLVQ       Z4, Z22, Z22
+	VPANDQ        Z5, Z22, Z22
+	VPORQ         Z6, Z22, Z22
+	VPADDQ        Z22, Z18, Z18
+	VPANDQ        Z7, Z18, Z18
+	VSUBPD        Z19, Z18, K1, Z18
+	VADDPD.RZ_SAE Z18, Z15, Z15
+	VANDPD        Z1, Z15, Z18
+	VMAXPD        Z18, Z16, Z16
+	VCMPPD        $0x11, Z2, Z18, K1
+	VMOVAPD       Z15, Z18
+	VPTERNLOGQ    $0xea, Z2, Z0, Z18
+	VADDPD.RZ_SAE Z18, Z15, K1, Z15
+	VPSLLVQ       Z8, Z20, Z20
+	VPANDQ        Z9, Z20, Z20
+	VPORQ         Z10, Z20, Z20
+	VPADDQ        Z20, Z15, Z15
+	VPANDQ        Z11, Z15, Z15
+	VSUBPD        Z18, Z15, K1, Z15
 	ADDQ          $0x00000040, R12
 	ADDQ          $0x00000020, DX
 	ADDQ          $0x00000020, R9
 	ADDQ          $0x02, R14
 	CMPQ          R14, R13
 	JLT           term
-
-last:
-	VCMPPD        $0x11, Z2, Z24, K2
-	VADDPD.RZ_SAE Z28, Z25, K1, Z25
-	VMOVAPD       Z14, Z24
-	VPSLLVQ       Z4, Z26, Z26
-	VPTERNLOGQ    $0xea, Z2, Z0, Z24
-	VPANDQ        Z5, Z26, Z26
-	VADDPD.RZ_SAE Z24, Z14, K2, Z14
-	VPORQ         Z6, Z26, Z26
-	VPSLLVQ       Z8, Z23, Z23
-	VPADDQ        Z26, Z25, Z25
-	VPANDQ        Z9, Z23, Z23
-	VPANDQ        Z7, Z25, Z25
-	VPORQ         Z10, Z23, Z23
-	VSUBPD        Z28, Z25, K1, Z25
-	VPADDQ        Z23, Z14, Z14
-	VADDPD.RZ_SAE Z25, Z15, Z15
-	VPANDQ        Z11, Z14, Z14
-	VANDPD        Z1, Z15, Z28
-	VSUBPD        Z24, Z14, K2, Z14
-	VMAXPD        Z28, Z16, Z16
-	VCMPPD        $0x11, Z2, Z28, K2
-	VMOVAPD       Z15, Z28
-	VPTERNLOGQ    $0xea, Z2, Z0, Z28
-	VADDPD.RZ_SAE Z28, Z15, K2, Z15
-	VPSLLVQ       Z8, Z27, Z27
-	VPANDQ        Z9, Z27, Z27
-	VPORQ         Z10, Z27, Z27
-	VPADDQ        Z27, Z15, Z15
-	VPANDQ        Z11, Z15, Z15
-	VSUBPD        Z28, Z15, K2, Z15
 	VMOVUPD       640(CX), Z18
-	VPXORQ        Z29, Z29, Z29
-	VPXORQ        Z30, Z30, Z30
+	VPXORQ        Z23, Z23, Z23
+	VPXORQ        Z24, Z24, Z24
 	VCMPPD        $0x05, 1344(CX), Z16, K1
 	VPMOVM2Q      K1, Z16
 	VORPD         Z16, Z12, Z12
@@ -5881,18 +5213,18 @@ last:
 	VORPD         Z17, Z13, Z13
 	VORPD         Z17, Z14, Z14
 	VORPD         Z17, Z15, Z15
-	VFMADD231PD   Z29, Z12, Z30
+	VFMADD231PD   Z23, Z12, Z24
 	VMULPD        Z18, Z12, Z12
-	VADDPD        Z29, Z12, Z12
-	VFMADD231PD   Z29, Z13, Z30
+	VADDPD        Z23, Z12, Z12
+	VFMADD231PD   Z23, Z13, Z24
 	VMULPD        Z18, Z13, Z13
-	VADDPD        Z29, Z13, Z13
-	VFMADD231PD   Z29, Z14, Z30
+	VADDPD        Z23, Z13, Z13
+	VFMADD231PD   Z23, Z14, Z24
 	VMULPD        Z18, Z14, Z14
-	VADDPD        Z29, Z14, Z14
-	VFMADD231PD   Z29, Z15, Z30
+	VADDPD        Z23, Z14, Z14
+	VFMADD231PD   Z23, Z15, Z24
 	VMULPD        Z18, Z15, Z15
-	VADDPD        Z29, Z15, Z15
+	VADDPD        Z23, Z15, Z15
 	CMPQ          56(SP), $0x00
 	JNE           narrow
 	MOVQ          16(SP), DX
@@ -5926,7 +5258,7 @@ narrow:
 	MOVQ      DX, 56(SP)
 
 stored:
-	VCMPPD $0x03, Z30, Z30, K1
+	VCMPPD $0x03, Z24, Z24, K1
 	KMOVW  K1, DX
 	TESTL  DX, DX
 	MOVQ   24(SP), DX

@@ -130,11 +130,11 @@ func bothScaledAVX2R2V1(t *Tile[float32])
 //go:noescape
 func bothCareAVX2R2V3(t *Tile[float32])
 
-// bothCareAVX2R8V1 is the loop s = S(binary32(s + R(a b))), R and S nearest-even, terms ascending.
-// It keeps a tile of 8 x 8 sums in registers.
+// bothCareAVX2R4V1 is the loop s = S(binary32(s + R(a b))), R and S nearest-even, terms ascending.
+// It keeps a tile of 4 x 8 sums in registers.
 //
 //go:noescape
-func bothCareAVX2R8V1(t *Tile[float32])
+func bothCareAVX2R4V1(t *Tile[float32])
 
 // bothCareAVX2R2V1 is the loop s = S(binary32(s + R(a b))), R and S nearest-even, terms ascending.
 // It keeps a tile of 2 x 8 sums in registers.
@@ -202,11 +202,11 @@ func productThroughAVX2R4V3(t *Tile[float32])
 //go:noescape
 func productThroughAVX2R2V3(t *Tile[float32])
 
-// productThroughAVX2R8V1 is the loop s = R(binary32(s + binary32(a b))), R nearest-even, terms ascending.
-// It keeps a tile of 8 x 8 sums in registers.
+// productThroughAVX2R4V1 is the loop s = R(binary32(s + binary32(a b))), R nearest-even, terms ascending.
+// It keeps a tile of 4 x 8 sums in registers.
 //
 //go:noescape
-func productThroughAVX2R8V1(t *Tile[float32])
+func productThroughAVX2R4V1(t *Tile[float32])
 
 // productThroughAVX2R2V1 is the loop s = R(binary32(s + binary32(a b))), R nearest-even, terms ascending.
 // It keeps a tile of 2 x 8 sums in registers.
@@ -220,11 +220,11 @@ func productThroughAVX2R2V1(t *Tile[float32])
 //go:noescape
 func oddAVX2R2V3(t *Tile[float32])
 
-// oddAVX2R8V1 is the loop s = R(s + binary32(a b)), R nearest-even of the exact sum, terms ascending.
-// It keeps a tile of 8 x 8 sums in registers.
+// oddAVX2R4V1 is the loop s = R(s + binary32(a b)), R nearest-even of the exact sum, terms ascending.
+// It keeps a tile of 4 x 8 sums in registers.
 //
 //go:noescape
-func oddAVX2R8V1(t *Tile[float32])
+func oddAVX2R4V1(t *Tile[float32])
 
 // oddAVX2R2V1 is the loop s = R(s + binary32(a b)), R nearest-even of the exact sum, terms ascending.
 // It keeps a tile of 2 x 8 sums in registers.
@@ -238,11 +238,11 @@ func oddAVX2R2V1(t *Tile[float32])
 //go:noescape
 func oddRoundedAVX2R2V3(t *Tile[float32])
 
-// oddRoundedAVX2R8V1 is the loop s = S(s + R(a b)), R and S nearest-even, S of the exact sum, terms ascending.
-// It keeps a tile of 8 x 8 sums in registers.
+// oddRoundedAVX2R4V1 is the loop s = S(s + R(a b)), R and S nearest-even, S of the exact sum, terms ascending.
+// It keeps a tile of 4 x 8 sums in registers.
 //
 //go:noescape
-func oddRoundedAVX2R8V1(t *Tile[float32])
+func oddRoundedAVX2R4V1(t *Tile[float32])
 
 // oddRoundedAVX2R2V1 is the loop s = S(s + R(a b)), R and S nearest-even, S of the exact sum, terms ascending.
 // It keeps a tile of 2 x 8 sums in registers.
@@ -310,11 +310,11 @@ func stochasticFusedAVX2R2V1(t *Tile[float32])
 //go:noescape
 func stochasticCareAVX2R2V3(t *Tile[float32])
 
-// stochasticCareAVX2R8V1 is the loop s = S(binary32(s + a b)), S stochastic, terms ascending.
-// It keeps a tile of 8 x 8 sums in registers.
+// stochasticCareAVX2R4V1 is the loop s = S(binary32(s + a b)), S stochastic, terms ascending.
+// It keeps a tile of 4 x 8 sums in registers.
 //
 //go:noescape
-func stochasticCareAVX2R8V1(t *Tile[float32])
+func stochasticCareAVX2R4V1(t *Tile[float32])
 
 // stochasticCareAVX2R2V1 is the loop s = S(binary32(s + a b)), S stochastic, terms ascending.
 // It keeps a tile of 2 x 8 sums in registers.
@@ -328,11 +328,11 @@ func stochasticCareAVX2R2V1(t *Tile[float32])
 //go:noescape
 func stochasticProductCareAVX2R2V3(t *Tile[float32])
 
-// stochasticProductCareAVX2R8V1 is the loop s = S(binary32(s + R(a b))), R nearest-even, S stochastic, terms ascending.
-// It keeps a tile of 8 x 8 sums in registers.
+// stochasticProductCareAVX2R4V1 is the loop s = S(binary32(s + R(a b))), R nearest-even, S stochastic, terms ascending.
+// It keeps a tile of 4 x 8 sums in registers.
 //
 //go:noescape
-func stochasticProductCareAVX2R8V1(t *Tile[float32])
+func stochasticProductCareAVX2R4V1(t *Tile[float32])
 
 // stochasticProductCareAVX2R2V1 is the loop s = S(binary32(s + R(a b))), R nearest-even, S stochastic, terms ascending.
 // It keeps a tile of 2 x 8 sums in registers.

@@ -172,11 +172,11 @@ func bothCareAVX512R4V2(t *Tile[float32])
 //go:noescape
 func bothCareAVX512R2V2(t *Tile[float32])
 
-// bothCareAVX512R8V1 is the loop s = S(binary32(s + R(a b))), R and S nearest-even, terms ascending.
-// It keeps a tile of 8 x 16 sums in registers.
+// bothCareAVX512R4V1 is the loop s = S(binary32(s + R(a b))), R and S nearest-even, terms ascending.
+// It keeps a tile of 4 x 16 sums in registers.
 //
 //go:noescape
-func bothCareAVX512R8V1(t *Tile[float32])
+func bothCareAVX512R4V1(t *Tile[float32])
 
 // bothCareAVX512R2V1 is the loop s = S(binary32(s + R(a b))), R and S nearest-even, terms ascending.
 // It keeps a tile of 2 x 16 sums in registers.
@@ -262,11 +262,11 @@ func productThroughAVX512R4V2(t *Tile[float32])
 //go:noescape
 func productThroughAVX512R2V2(t *Tile[float32])
 
-// productThroughAVX512R8V1 is the loop s = R(binary32(s + binary32(a b))), R nearest-even, terms ascending.
-// It keeps a tile of 8 x 16 sums in registers.
+// productThroughAVX512R4V1 is the loop s = R(binary32(s + binary32(a b))), R nearest-even, terms ascending.
+// It keeps a tile of 4 x 16 sums in registers.
 //
 //go:noescape
-func productThroughAVX512R8V1(t *Tile[float32])
+func productThroughAVX512R4V1(t *Tile[float32])
 
 // productThroughAVX512R2V1 is the loop s = R(binary32(s + binary32(a b))), R nearest-even, terms ascending.
 // It keeps a tile of 2 x 16 sums in registers.
@@ -292,11 +292,11 @@ func oddAVX512R4V2(t *Tile[float32])
 //go:noescape
 func oddAVX512R2V2(t *Tile[float32])
 
-// oddAVX512R8V1 is the loop s = R(s + binary32(a b)), R nearest-even of the exact sum, terms ascending.
-// It keeps a tile of 8 x 16 sums in registers.
+// oddAVX512R4V1 is the loop s = R(s + binary32(a b)), R nearest-even of the exact sum, terms ascending.
+// It keeps a tile of 4 x 16 sums in registers.
 //
 //go:noescape
-func oddAVX512R8V1(t *Tile[float32])
+func oddAVX512R4V1(t *Tile[float32])
 
 // oddAVX512R2V1 is the loop s = R(s + binary32(a b)), R nearest-even of the exact sum, terms ascending.
 // It keeps a tile of 2 x 16 sums in registers.
@@ -316,11 +316,11 @@ func oddRoundedAVX512R4V2(t *Tile[float32])
 //go:noescape
 func oddRoundedAVX512R2V2(t *Tile[float32])
 
-// oddRoundedAVX512R8V1 is the loop s = S(s + R(a b)), R and S nearest-even, S of the exact sum, terms ascending.
-// It keeps a tile of 8 x 16 sums in registers.
+// oddRoundedAVX512R4V1 is the loop s = S(s + R(a b)), R and S nearest-even, S of the exact sum, terms ascending.
+// It keeps a tile of 4 x 16 sums in registers.
 //
 //go:noescape
-func oddRoundedAVX512R8V1(t *Tile[float32])
+func oddRoundedAVX512R4V1(t *Tile[float32])
 
 // oddRoundedAVX512R2V1 is the loop s = S(s + R(a b)), R and S nearest-even, S of the exact sum, terms ascending.
 // It keeps a tile of 2 x 16 sums in registers.
@@ -430,11 +430,11 @@ func stochasticCareAVX512R4V2(t *Tile[float32])
 //go:noescape
 func stochasticCareAVX512R2V2(t *Tile[float32])
 
-// stochasticCareAVX512R8V1 is the loop s = S(binary32(s + a b)), S stochastic, terms ascending.
-// It keeps a tile of 8 x 16 sums in registers.
+// stochasticCareAVX512R4V1 is the loop s = S(binary32(s + a b)), S stochastic, terms ascending.
+// It keeps a tile of 4 x 16 sums in registers.
 //
 //go:noescape
-func stochasticCareAVX512R8V1(t *Tile[float32])
+func stochasticCareAVX512R4V1(t *Tile[float32])
 
 // stochasticCareAVX512R2V1 is the loop s = S(binary32(s + a b)), S stochastic, terms ascending.
 // It keeps a tile of 2 x 16 sums in registers.
@@ -454,11 +454,11 @@ func stochasticProductCareAVX512R4V2(t *Tile[float32])
 //go:noescape
 func stochasticProductCareAVX512R2V2(t *Tile[float32])
 
-// stochasticProductCareAVX512R8V1 is the loop s = S(binary32(s + R(a b))), R nearest-even, S stochastic, terms ascending.
-// It keeps a tile of 8 x 16 sums in registers.
+// stochasticProductCareAVX512R4V1 is the loop s = S(binary32(s + R(a b))), R nearest-even, S stochastic, terms ascending.
+// It keeps a tile of 4 x 16 sums in registers.
 //
 //go:noescape
-func stochasticProductCareAVX512R8V1(t *Tile[float32])
+func stochasticProductCareAVX512R4V1(t *Tile[float32])
 
 // stochasticProductCareAVX512R2V1 is the loop s = S(binary32(s + R(a b))), R nearest-even, S stochastic, terms ascending.
 // It keeps a tile of 2 x 16 sums in registers.

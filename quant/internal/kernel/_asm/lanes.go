@@ -94,9 +94,6 @@ func (l lanes) max(dst, x reg.Register, y operand.Op) { l.pick(l.VMAXPS, l.VMAXP
 // instruction, because its neighbours are: changing domains costs a cycle.
 func (l lanes) and(dst, x reg.Register, y operand.Op) { l.pick(l.VANDPS, l.VANDPD)(y, x, dst) }
 
-// andNot: ^x & y.
-func (l lanes) andNot(dst, x reg.Register, y operand.Op) { l.pick(l.VANDNPS, l.VANDNPD)(y, x, dst) }
-
 // or: x | y.
 func (l lanes) or(dst, x reg.Register, y operand.Op) { l.pick(l.VORPS, l.VORPD)(y, x, dst) }
 

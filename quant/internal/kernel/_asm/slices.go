@@ -14,7 +14,6 @@ type sliceLoop struct {
 	*loop
 	table     reg.Register
 	lost, bad reg.VecVirtual // counts in integer lanes; all ones where bad
-	one       reg.VecVirtual
 }
 
 func newSliceLoop(g *loop) *sliceLoop {
