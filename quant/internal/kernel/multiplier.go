@@ -3,7 +3,7 @@ package kernel
 // blockTerms is the number of terms that are packed at a time: few enough that a
 // panel's block stays in the first-level cache. A multiple of four, the words of a
 // draw.
-const blockTerms = 256
+const blockTerms = 512
 
 // Multiplier forms products of binary32 matrices in one arithmetic. It owns scratch
 // memory and serves one goroutine at a time.
