@@ -17,7 +17,8 @@ func describe(l *layout) *results.Study {
 		Resolved: plan.ResolveText(p, plan.ResolveOptions{Full: true}),
 		Data:     p.Task.Description, Network: networkLine(p), Training: trainingLine(p),
 		LongestSum: p.Work().LongestSum, Classes: p.Task.ClassNames,
-		Metric: p.Claim.Metric, Margin: p.Claim.Margin, Confidence: p.Claim.Confidence,
+		Regression: len(p.Task.TargetNames) > 0,
+		Metric:     p.Claim.Metric, Margin: p.Claim.Margin, Confidence: p.Claim.Confidence,
 		Claim: l.claim, Planned: p.Replicates.Count,
 	}
 	for i := range p.Arms {

@@ -60,7 +60,7 @@ func (r *reader) build(root *node) *Plan {
 	p.Training = r.readMainTraining(root, &p.Task)
 	p.Diagnostics = r.readDiagnostics(root)
 	p.Replicates = r.readReplicates(root)
-	p.Claim = r.readClaim(root)
+	p.Claim = r.readClaim(root, &p.Task)
 	arms := armReader{r, r.readFormats(root), &p.Network, p.Training, p.Task.Train}
 	var grids []*grid
 	p.Arms, grids = arms.readArms(root)

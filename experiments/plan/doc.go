@@ -17,7 +17,8 @@
 //	                    baseline's arithmetic, and from whose weights every arm starts
 //	[replicates]        count, first_seed; in place of count, up_to and look_every: a
 //	                    look after every so many ends the plan once all is decided
-//	[claim]             metric (also "epochs to test accuracy 0.9"), margin, confidence
+//	[claim]             metric (also "epochs to test accuracy 0.9"), margin, confidence;
+//	                    class, of a recall; false_alarm_rate, of a missed-fault rate
 //	[format.NAME]       a number format of the plan's own: exponent, fraction, bias,
 //	                    subnormals, top; or values, the list of all there are
 //	[baseline]          settings of the arm that all others are compared with
