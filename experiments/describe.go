@@ -61,6 +61,9 @@ func trainingLine(p *plan.Plan) string {
 	t := &p.Training
 	line := fmt.Sprintf("%s, learning rate %s", plan.DescribeOptimizer(t.Optimizer), plan.DescribeRate(t.LearningRate))
 	line += fmt.Sprintf(", batch %d, %s", t.Batch, number(t.Epochs, "epoch"))
+	if t.Augment.Any() {
+		line += ", examples augmented by " + plan.DescribeAugment(t.Augment)
+	}
 	if pre := p.Pretrain; pre != nil {
 		line += fmt.Sprintf("; after pretraining for %s on %s", number(pre.Training.Epochs, "epoch"), pre.Task.Description)
 	}

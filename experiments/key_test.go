@@ -136,6 +136,7 @@ func TestKeys(t *testing.T) {
 		"first seed":  {"first_seed = 100", "first_seed = 90"}, // replicate 100 is still replicate 100
 		"other arm":   {`name = "bf16 stochastic"` + "\nstorage = { format", `name = "bf16 stochastic"` + "\nstorage = { overflow = \"saturate\", format"},
 		"spelling":    {`storage = "bf16"`, `storage = "bfloat16"`},
+		"no change":   {"batch = 16", "batch = 16\naugment = { shift = 0, noise = 0 }"},
 		"in the file": {"batch = 16\nepochs = 2", "epochs = 2\nbatch = 16"},
 	}
 	for name, change := range same {
@@ -155,6 +156,8 @@ func TestKeys(t *testing.T) {
 		"layers":        {"out=2", "out=3"},
 		"examples":      {"train = 48", "train = 47"},
 		"data seed":     {"data_seed = 1", "data_seed = 5"},
+		"augmentation":  {"batch = 16", "batch = 16\naugment = { shift = 2 }"},
+		"noise":         {"batch = 16", "batch = 16\naugment = { noise = 0.125 }"},
 		"format":        {`"bf16"`, `"fp16"`, `everything = "fp32"`, `everything = "fp64"`},
 	}
 	for name, change := range other {

@@ -109,6 +109,11 @@
 // two gradients of its input join in the input gradient's sum point, the one that
 // comes from the lower layer first; see residualKind.
 //
+// # Augmentation
+//
+// Training examples may be shifted and made noisy, anew in every epoch and alike in
+// all arms; see Augment. Training losses and accuracies are of the altered examples.
+//
 // # Loss
 //
 // The monitored loss of a step is the binary64 mean, over the examples in order,

@@ -110,6 +110,7 @@ func (r *run[T]) epoch(ctx context.Context, epoch int) error {
 	} else {
 		identity(r.order)
 	}
+	r.engine.epoch = epoch
 	r.scores.reset()
 	r.skipped0 = r.scaler.skipped
 	loss, err := r.steps(ctx, epoch)

@@ -166,6 +166,7 @@ func (r *reader) readMainTraining(root *node, task *Task) trainer.Training {
 	t := r.readTraining(n, defaultTraining(), false, append(slices.Clone(trainingKeys), "diagnostics"))
 	r.checkBatch(n, &t, task.Train)
 	r.checkTargets(n, &t, task)
+	r.checkAugment(n, &t, task)
 	return t
 }
 
@@ -181,6 +182,7 @@ func (r *reader) readPretrain(root *node, p *Plan) *Pretrain {
 		pre.Training = r.readTraining(sub, p.Training, true, trainingKeys)
 		r.checkBatch(sub, &pre.Training, pre.Task.Train)
 		r.checkTargets(sub, &pre.Training, &pre.Task)
+		r.checkAugment(sub, &pre.Training, &pre.Task)
 	}
 	r.checkSameShape(n, &p.Task, &pre.Task)
 	states, _ := pre.Training.Optimizer.States()

@@ -11,7 +11,7 @@
 //	                    relative path starts at the folder of the file with data
 //	[network]           layers, one text each
 //	[training]          optimizer, learning_rate, batch, epochs, loss, shuffle,
-//	                    evaluate, diagnostics
+//	                    augment, evaluate, diagnostics
 //	[pretrain]          task and training: what differs from the plan's own ones in
 //	                    a training that is done first, once a replicate, under the
 //	                    baseline's arithmetic, and from whose weights every arm starts
@@ -48,6 +48,10 @@
 //	               label_smoothing of cross-entropy, width of huber
 //	learning_rate  a number or a table: start; multiply, at_epochs; or cosine = true,
 //	               end; warm_up: steps over which it rises first
+//	augment        a table: shift, places; noise, standard deviation in units of the
+//	               scaled inputs: what is done to training examples, anew in every
+//	               epoch and alike in all arms; a pretraining that says nothing of its
+//	               own does the same
 //	diagnostics    sampled (default) or none: whether runs are looked at closer
 //	               while they train, which changes none of their bits; the plan's alone
 //
