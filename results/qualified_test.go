@@ -91,8 +91,13 @@ func TestUnits(t *testing.T) {
 	rmse, _ := FindMetric("validation RMSE")
 	accuracy, _ := FindMetric("test accuracy")
 	for _, c := range []struct{ got, want string }{
-		{loss.Units(), "nats"}, {loss.Of(false).Unit, "nat"}, {loss.Of(true).Unit, "unit of the loss"}, {loss.Of(true).Units(), "units of the loss"},
-		{rmse.Of(true).Units(), "units of the target"}, {accuracy.Of(true).Units(), "percentage points"}, {Metric{}.Units(), ""},
+		{loss.Units(), "nats"},
+		{loss.Of(false).Unit, "nat"},
+		{loss.Of(true).Unit, "unit of the loss"},
+		{loss.Of(true).Units(), "units of the loss"},
+		{rmse.Of(true).Units(), "units of the target"},
+		{accuracy.Of(true).Units(), "percentage points"},
+		{Metric{}.Units(), ""},
 	} {
 		if c.got != c.want {
 			t.Errorf("%q, want %q", c.got, c.want)

@@ -50,7 +50,7 @@ func (s *Scores) byClass() *ClassScores {
 	}
 	c := &ClassScores{Examples: slices.Clone(s.Unanswered), Right: make([]uint64, s.Classes)}
 	for class := range s.Classes {
-		row := s.Confusion[class*s.Classes:][:s.Classes]
+		row := s.Confusion[int(class*s.Classes):][:s.Classes]
 		for _, n := range row {
 			c.Examples[class] += n
 		}

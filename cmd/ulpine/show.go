@@ -198,8 +198,10 @@ type epochColumn struct {
 
 // epochColumns are all metrics, the claimed one last where it is none of them.
 func epochColumns(claimed results.Metric) (columns []epochColumn) {
-	names := []string{"training loss", "training accuracy", "training RMSE", "validation loss", "validation accuracy",
-		"validation RMSE", "test loss", "test accuracy", "test RMSE"}
+	names := []string{
+		"training loss", "training accuracy", "training RMSE", "validation loss", "validation accuracy",
+		"validation RMSE", "test loss", "test accuracy", "test RMSE",
+	}
 	if claimed.Target == 0 && !slices.Contains(names, claimed.Name) {
 		names = append(names, claimed.Name)
 	}
