@@ -186,32 +186,3 @@ func TestHistograms(t *testing.T) {
 		t.Errorf("%v dB", snr)
 	}
 }
-
-// BenchmarkDiagnostics measures steps with and without looking; the share per step
-// of the default is what the difference of the two comes to.
-func BenchmarkDiagnostics(b *testing.B) {
-	for _, c := range []struct {
-		name string
-		set  Diagnostics
-	}{{"off", Diagnostics{}}, {"default", DefaultDiagnostics}} {
-		b.Run(c.name, func(b *testing.B) {
-			layers := []string{"conv2d out=8 size=5", "relu", "maxpool size=2", "conv2d out=16 size=5", "relu", "maxpool size=2", "dense 10"}
-			job := Job{
-				Network: network(b, []int{1, 28, 28}, layers...), Arm: storageArm(b, point(b, "bf16"), len(layers)),
-				Training: sgdTraining(64, 1), Seed: 1, Train: dataset(256, []int{1, 28, 28}, 10, 1), Diagnostics: c.set,
-			}
-			e := engineFor[float32](b, &job)
-			p, _ := job.check()
-			if err := e.observe(&job, p); err != nil {
-				b.Fatal(err)
-			}
-			batch := make([]int32, 64)
-			identity(batch)
-			e.step(batch, 0.01)
-			b.ResetTimer()
-			for range b.N {
-				e.step(batch, 0.01)
-			}
-		})
-	}
-}
