@@ -47,8 +47,13 @@
 //	               label_smoothing of cross-entropy, width of huber
 //	learning_rate  a number or a table: start; multiply, at_epochs; or cosine = true,
 //	               end; warm_up: steps over which it rises first
-//	diagnostics    sampled (default) or none: whether runs are looked at closer
-//	               while they train, which changes none of their bits; the plan's alone
+//	diagnostics    sampled (default), none, or a table: how often runs are looked at
+//	               closer while they train, which changes none of their bits; the
+//	               plan's alone. every: steps between looks at tensors, sums and
+//	               updates; gradient: steps between comparisons of gradients with
+//	               those of binary64; values of a tensor, sums of a product. No epoch
+//	               goes without either, but that "sampled" compares gradients of short
+//	               epochs in some of them only
 //
 // # Settings
 //
