@@ -161,6 +161,9 @@ func comparisons(l *layout, study *results.Study) {
 		study.Contrasts = append(study.Contrasts, pair(c.Arm, c.Against, c.Margin, true))
 	}
 	noiseFloor(l, study, pair)
+	for i := range study.Runs {
+		study.Runs[i].Predictions = nil // compared: a study may hold thousands of runs
+	}
 	study.Comparisons, study.Contrasts = compare.Decide(study.Comparisons), compare.Decide(study.Contrasts)
 }
 

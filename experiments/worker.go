@@ -10,6 +10,7 @@ import (
 	"time"
 
 	"ulpine/datasets"
+	"ulpine/experiments/plan"
 	"ulpine/results"
 	"ulpine/trainer"
 )
@@ -140,7 +141,7 @@ func (x *runner) do(ctx context.Context, number int, u *unit) {
 	if err == nil {
 		var o trainer.Outcome
 		o, err = x.safeTrain(ctx, job, &watcher{t: x.tracker, place: place, last: began})
-		record(r, &o)
+		record(r, &o, x.Predictions == plan.KeptPredictions && u.group != x.pre)
 	}
 	r.Wall = time.Since(began)
 	x.tracker.ended(number)

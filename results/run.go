@@ -92,6 +92,9 @@ type Run struct {
 	StepBytes   []byte        `cbor:"21,keyasint"` // Steps, little-endian binary64; written by the store
 	Findings    *Findings     `cbor:"-"`           // nil: not looked at
 	Looked      bool          `cbor:"23,keyasint"` // there are findings, stored apart; written by the store
+	// Predictions on the test set, stored apart; nil: not kept.
+	Predictions *Predictions `cbor:"-"`
+	Kept        bool         `cbor:"24,keyasint,omitempty"` // there are predictions; written by the store
 }
 
 // Name is how a run is called: arm/replicate.

@@ -65,6 +65,7 @@ type Comparison struct {
 	// of replicates that diverge; NaN without a pair.
 	DivergedLow, DivergedHigh float64
 	Classes                   []ClassDifference // differences of recall, when runs were counted by class
+	Items                     *ItemComparison   // nil: predictions are not stored for every pair
 }
 
 // ClassDifference is how the recall of one class differs between two arms over
@@ -147,5 +148,6 @@ type Study struct {
 	Volumes         []Volume // of a run, by layer and point; empty: not known
 	Ranges          []Range  // of the formats that histograms are held against
 	Diagnoses       []Diagnosis
+	Tuning          *Tuning // nil: learning rates and loss scales are those that the plan spells out
 	Written         time.Time
 }

@@ -232,33 +232,3 @@ func TestNoEpochGoesUnseen(t *testing.T) {
 		t.Errorf("gradients compared in steps %v", compared)
 	}
 }
-
-// BenchmarkDiagnostics measures whole trainings with and without looking: a network of
-// images with 16 steps an epoch, and one of a few hundred weights with 6.
-func BenchmarkDiagnostics(b *testing.B) {
-	for _, net := range []struct {
-		name            string
-		input           []int
-		layers          []string
-		examples, batch int
-		epochs          int
-	}{
-		{"images", []int{1, 28, 28}, []string{"conv2d out=8 size=5", "relu", "maxpool size=2", "conv2d out=16 size=5", "relu", "maxpool size=2", "dense 10"}, 1024, 64, 4},
-		{"windows", []int{1, 128}, []string{"conv1d out=6 width=9 stride=2", "relu", "conv1d out=8 width=7 stride=2", "relu", "dense 16", "relu", "dense 5"}, 192, 32, 40},
-	} {
-		for _, c := range []struct {
-			name string
-			set  Diagnostics
-		}{{"off", Diagnostics{}}, {"default", DefaultDiagnostics}} {
-			b.Run(net.name+"/"+c.name, func(b *testing.B) {
-				job := Job{
-					Network: network(b, net.input, net.layers...), Arm: storageArm(b, point(b, "bf16"), len(net.layers)),
-					Training: sgdTraining(net.batch, net.epochs), Seed: 1, Train: dataset(net.examples, net.input, 5, 1), Diagnostics: c.set,
-				}
-				for range b.N {
-					mustRun(b, job)
-				}
-			})
-		}
-	}
-}

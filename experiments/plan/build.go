@@ -59,6 +59,7 @@ func (r *reader) build(root *node) *Plan {
 	p.Network = r.readNetwork(root, &p.Task)
 	p.Training = r.readMainTraining(root, &p.Task)
 	p.Diagnostics = r.readDiagnostics(root)
+	p.Predictions = r.readPredictions(root)
 	p.Replicates = r.readReplicates(root)
 	p.Claim = r.readClaim(root)
 	arms := armReader{r, r.readFormats(root), &p.Network, p.Training, p.Task.Train}
@@ -163,7 +164,7 @@ func (r *reader) readMainTraining(root *node, task *Task) trainer.Training {
 	if n == nil {
 		return defaultTraining()
 	}
-	t := r.readTraining(n, defaultTraining(), false, append(slices.Clone(trainingKeys), "diagnostics"))
+	t := r.readTraining(n, defaultTraining(), false, append(slices.Clone(trainingKeys), "diagnostics", "predictions"))
 	r.checkBatch(n, &t, task.Train)
 	r.checkTargets(n, &t, task)
 	return t

@@ -11,7 +11,7 @@
 //	                    relative path starts at the folder of the file with data
 //	[network]           layers, one text each
 //	[training]          optimizer, learning_rate, batch, epochs, loss, shuffle,
-//	                    evaluate, diagnostics
+//	                    evaluate, diagnostics, predictions
 //	[pretrain]          task and training: what differs from the plan's own ones in
 //	                    a training that is done first, once a replicate, under the
 //	                    baseline's arithmetic, and from whose weights every arm starts
@@ -54,6 +54,9 @@
 //	               those of binary64; values of a tensor, sums of a product. No epoch
 //	               goes without either, but that "sampled" compares gradients of short
 //	               epochs in some of them only
+//	predictions    stored (default) or none: whether runs keep what they say of every
+//	               test example after the last epoch, for intervals over examples;
+//	               changes no bit either; the plan's alone
 //
 // # Settings
 //

@@ -18,6 +18,54 @@ var (
 // maxCount bounds epochs and examples so that their products fit an int.
 const maxCount = math.MaxInt32
 
+// Predictions say whether the runs of a plan keep what they say of every test
+// example. Keeping changes no bit, so it is in no key of a run.
+type Predictions string
+
+// The ways of keeping.
+const (
+	KeptPredictions Predictions = "stored"
+	NoPredictions   Predictions = "none"
+)
+
+// readPredictions reads training.predictions of the plan.
+func (r *reader) readPredictions(root *node) Predictions {
+	n := root.table["training"]
+	if n == nil || n.table == nil {
+		return KeptPredictions
+	}
+	return Predictions(r.word(n, "predictions", string(KeptPredictions), string(KeptPredictions), string(NoPredictions)))
+}
+
+// predictionsText says what a plan keeps of every test example, and how much room
+// that takes at most, before it is compressed.
+func (p *Plan) predictionsText() string {
+	if p.Predictions == NoPredictions || p.Training.EvaluateTest == trainer.Never || p.Task.Test == 0 {
+		return string(NoPredictions)
+	}
+	example, what := 2, "the class and the class called" // bytes; stores take 2 or 4 beyond 254 classes
+	switch classes := len(p.Task.ClassNames); {
+	case len(p.Task.TargetNames) > 0:
+		example, what = 8*len(p.Task.TargetNames), "outputs and targets in binary32"
+	case classes > math.MaxUint16-1:
+		example *= 4
+	case classes > math.MaxUint8-1:
+		example *= 2
+	}
+	each := float64(example * p.Task.Test)
+	runs := float64(p.Runs() - p.Work().Pretraining)
+	return fmt.Sprintf("%s: %s of every test example, %s a run and %s in all before compression",
+		p.Predictions, what, bytesText(each), bytesText(each*runs))
+}
+
+// bytesText is a number of bytes with its unit.
+func bytesText(n float64) string {
+	if n < 1000 {
+		return fmt.Sprintf("%.0f B", n)
+	}
+	return magnitude(n) + "B"
+}
+
 // readTraining reads the training table n over base. Keys that base cannot
 // supply are required unless complete is set.
 func (r *reader) readTraining(n *node, base trainer.Training, complete bool, keys []string) trainer.Training {

@@ -51,6 +51,7 @@ func Pair(q Question, arm, against []results.Run) results.Comparison {
 	}
 	c.N = len(c.Differences)
 	c.Classes = classDifferences(q, pairs)
+	c.Items = compareItems(q, pairs)
 	c.DivergedLow, c.DivergedHigh = results.ExactRate(uint64(c.Diverged), uint64(c.N), c.Confidence)
 	estimate(&c)
 	c.Warnings = append(doubts(&c, identical), missedDoubts(&c, missed)...)
