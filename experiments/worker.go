@@ -183,9 +183,7 @@ func (x *runner) job(u *unit, r *results.Run) (trainer.Job, error) {
 		}
 		job.Start = u.replicate.start
 	}
-	if x.Diagnostics == plan.Sampled {
-		job.Diagnostics = trainer.DefaultDiagnostics
-	}
+	job.Diagnostics = trainer.Diagnostics(x.Diagnostics)
 	r.Data = data.Hash
 	job.Train, job.Validation, job.Test = trainer.Set(data.Train), trainer.Set(data.Validation), trainer.Set(data.Test)
 	return job, nil

@@ -38,6 +38,7 @@ type engine[T quant.Element] struct {
 	change *augmenter // nil: examples stay as they are
 	seed   uint64
 	pass   pass
+	moment moment // of the step to come, but for its number
 	tally  tally
 	gather []float32 // inputs of a shuffled batch
 	truth  truth     // and its targets
@@ -165,7 +166,7 @@ func (e *engine[T]) step(batch []int32, rate float64) (loss float64, what fate) 
 	p := &e.pass
 	p.step++
 	p.samples = len(batch)
-	p.watch = e.observer.due(p.step)
+	p.watch = e.observer.due(e.now(p.step))
 	y := e.forward(p, e.fetch(batch))
 	score(e.scores, y, e.truths(len(batch)))
 
@@ -176,7 +177,7 @@ func (e *engine[T]) step(batch []int32, rate float64) (loss float64, what fate) 
 	}
 	before := e.tally.gradientEvents()
 	e.backward(p, slopes)
-	if e.twin != nil && p.step%uint32(e.observer.set.Gradient) == 0 {
+	if e.observer.comparesGradients(e.now(p.step)) {
 		cosines(e.twin, e, batch, e.observer.found)
 	}
 	if e.scaler.set.Kind == DynamicScale && (e.tally.gradientEvents() != before || e.gradientNotFinite()) {
@@ -192,6 +193,13 @@ func (e *engine[T]) step(batch []int32, rate float64) (loss float64, what fate) 
 		return loss, masterNotFinite
 	}
 	return loss, stepTaken
+}
+
+// now is the place of a step in the training.
+func (e *engine[T]) now(step uint32) moment {
+	m := e.moment
+	m.step = step
+	return m
 }
 
 // fetch gathers inputs and targets of a batch, the inputs as they are in this epoch.

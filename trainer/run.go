@@ -138,6 +138,8 @@ func (r *run[T]) steps(ctx context.Context, epoch int) (float64, error) {
 		}
 		batch := r.order[done:min(done+r.batch, len(r.order))]
 		rate := r.job.Training.LearningRate.at(epoch, len(r.out.Steps)+1, r.total)
+		r.moment.before, r.moment.epochEnds = uint32(done/r.batch), done+len(batch) == len(r.order)
+		r.moment.runEnds = len(r.out.Steps)+1 == r.total
 		loss, what := r.step(batch, rate)
 		r.out.Steps = append(r.out.Steps, loss)
 		sum += float64(loss * float64(len(batch)))

@@ -52,8 +52,13 @@
 //	               scaled inputs: what is done to training examples, anew in every
 //	               epoch and alike in all arms; a pretraining that says nothing of its
 //	               own does the same
-//	diagnostics    sampled (default) or none: whether runs are looked at closer
-//	               while they train, which changes none of their bits; the plan's alone
+//	diagnostics    sampled (default), none, or a table: how often runs are looked at
+//	               closer while they train, which changes none of their bits; the
+//	               plan's alone. every: steps between looks at tensors, sums and
+//	               updates; gradient: steps between comparisons of gradients with
+//	               those of binary64; values of a tensor, sums of a product. No epoch
+//	               goes without either, but that "sampled" compares gradients of short
+//	               epochs in some of them only
 //	predictions    stored (default) or none: whether runs keep what they say of every
 //	               test example after the last epoch, for intervals over examples;
 //	               changes no bit either; the plan's alone

@@ -18,25 +18,6 @@ var (
 // maxCount bounds epochs and examples so that their products fit an int.
 const maxCount = math.MaxInt32
 
-// Diagnostics say whether the runs of a plan are looked at closer while they
-// train. Looking changes no bit, so it is in no key of a run.
-type Diagnostics string
-
-// The ways of looking.
-const (
-	Sampled       Diagnostics = "sampled" // some values in some steps
-	NoDiagnostics Diagnostics = "none"
-)
-
-// readDiagnostics reads training.diagnostics of the plan.
-func (r *reader) readDiagnostics(root *node) Diagnostics {
-	n := root.table["training"]
-	if n == nil || n.table == nil {
-		return Sampled
-	}
-	return Diagnostics(r.word(n, "diagnostics", string(Sampled), string(Sampled), string(NoDiagnostics)))
-}
-
 // Predictions say whether the runs of a plan keep what they say of every test
 // example. Keeping changes no bit, so it is in no key of a run.
 type Predictions string
