@@ -110,12 +110,17 @@ func benchStep(b *testing.B, input []int, layers []string, arm Arm, d Diagnostic
 	}
 	order := make([]int32, 256)
 	identity(order)
-	at := 0
+	at, n := 0, uint32(0)
 	return func() {
+		e.moment.before, e.moment.epochEnds = n%benchEpoch, n%benchEpoch == benchEpoch-1
+		n++
 		e.step(order[at:][:64], 0.01)
 		at = (at + 64) % len(order)
 	}
 }
+
+// benchEpoch is the number of steps of an epoch, at whose end diagnostics look.
+const benchEpoch = 20
 
 // BenchmarkDiagnostics trains without and with the default diagnostics, a step by
 // turns, in rounds of 200 steps, the period of the rarest look. cost-% is what looking
