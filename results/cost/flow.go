@@ -131,9 +131,7 @@ func (b *bound) weightFlows(i int, batch, cache uint64) []flow {
 			left: &dy, right: &x, partial: &partial,
 		}.sweep()
 	}
-	if l.several() {
-		x.values, dy.values = batch*l.Inner.Taken, batch*l.Inner.Slopes
-	}
+	x.values, dy.values = batch*l.taken(), batch*l.slopes()
 	return append(dw, x, dy, partial)
 }
 

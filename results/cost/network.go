@@ -140,6 +140,21 @@ func (l *Layer) inputProducts(below bool) (products, terms uint64) {
 	return min(l.Work.InputGradient, l.Work.Forward), l.Terms.InputGradient
 }
 
+// taken and slopes are the activations and gradients that enter products with weights.
+func (l *Layer) taken() uint64 {
+	if l.several() {
+		return l.Inner.Taken
+	}
+	return l.Inputs
+}
+
+func (l *Layer) slopes() uint64 {
+	if l.several() {
+		return l.Inner.Slopes
+	}
+	return l.Outputs
+}
+
 // biasTerms is the length of the sum of a bias gradient over a batch.
 func (l *Layer) biasTerms(batch uint64) uint64 {
 	if l.several() {
