@@ -73,14 +73,14 @@ func Qualities(r *Run) []Quality {
 	}
 	for i := range f.Gradients {
 		g := &f.Gradients[i]
-		out = append(out, Quality{GradientCosine, g.Layer, names[g.Layer], g.Param, epochOf(r, g.Step), g.Step, 0, g.Cosine})
+		out = append(out, Quality{GradientCosine, g.Layer, names[g.Layer], g.Param, epochAt(r, g.Step), g.Step, 0, g.Cosine})
 	}
 	return out
 }
 
-// epochOf is the epoch of a step, both counted from 1. The last epoch of a run
+// epochAt is the epoch of a step, both counted from 1. The last epoch of a run
 // that diverged may be shorter than the others, which are all of one length.
-func epochOf(r *Run, step int) int {
+func epochAt(r *Run, step int) int {
 	epochs := max(1, len(r.Epochs))
 	long := int(math.Ceil(float64(len(r.Steps)) / float64(epochs)))
 	if long == 0 {

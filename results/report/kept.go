@@ -42,12 +42,14 @@ var keptKinds = []keptKind{
 	{
 		"kept-sums", "Sums kept",
 		"Computed sums against the exact sums of the same terms: 1 is all, 0 nothing. A cell is that of the layer's sum that is furthest from 1, and fills with its distance, logarithmically from one in ten million.",
-		[]results.QualityKind{results.SumsKept}, furtherFromOne, fromOne, ratioWords, false,
+		[]results.QualityKind{results.SumsKept},
+		furtherFromOne, fromOne, ratioWords, false,
 	},
 	{
 		"kept-updates", "Updates kept",
 		"What masters moved by against the steps they were to take: 1 is all, 0 nothing, more than 1 too much; stochastic rounding keeps 1 on average, and few samples scatter around it. A cell is that of the layer's weights and fills as for sums. Pointed at, it also says how many updates had no effect at all.",
-		[]results.QualityKind{results.UpdatesKept, results.UpdatesStill}, furtherFromOne, fromOne, ratioWords, true,
+		[]results.QualityKind{results.UpdatesKept, results.UpdatesStill},
+		furtherFromOne, fromOne, ratioWords, true,
 	},
 	{
 		"update-bias", "Update bias",
