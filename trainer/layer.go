@@ -26,6 +26,7 @@ type bench[T quant.Element] struct {
 	above   *edge[T]   // nil until the layer is built, unless the layer makes its own
 	batch   int        // capacity of the edges, in examples
 	earlier []layer[T] // the layers below
+	team    *Team      // who may help with products
 }
 
 // builder constructs a layer.
