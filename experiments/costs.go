@@ -163,6 +163,8 @@ func fill(to *cost.Assignment, from *trainer.Arithmetic, id trainer.PointID) {
 		to.Weight = costPoint(from.Weight)
 	case trainer.ForwardActivation:
 		to.Activation = costPoint(from.Activation)
+	case trainer.ForwardOperand:
+		to.Operand = costPointer(from.Operand)
 	case trainer.ForwardSum:
 		to.Forward = costSums(&from.Forward)
 	case trainer.InputGradientWeight:

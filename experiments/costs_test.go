@@ -96,6 +96,7 @@ input = "E4M3"
 loss.gradient = "E5M2"
 forward.weight = "E6M9"
 forward.activation = { format = "bf16", rounding = "stochastic", random_bits = 7 }
+forward.operand = { format = "E5M4", rounding = "stochastic", random_bits = 5 }
 forward.product = "exact"
 forward.sum = { format = "fp32", order = "chunk(4)", outer = "fp64" }
 input_gradient.weight = "E4M2"
@@ -126,7 +127,7 @@ loss_scale = { kind = "fixed", value = 8 }
 	}
 	at := func(p cost.Point) *cost.Point { return &p }
 	dense := cost.Assignment{
-		Weight: f("E6M9"), Activation: f("bf16", 7),
+		Weight: f("E6M9"), Activation: f("bf16", 7), Operand: at(f("E5M4", 5)),
 		Forward: cost.Sums{Sum: f("fp32"), Outer: at(f("fp64")), Order: cost.Chunk, K: 4},
 		InputGradient: cost.Backward{
 			First: at(f("E4M2")), Gradient: at(f("E5M1")),

@@ -7,8 +7,9 @@ import (
 	"ulpine/trainer"
 )
 
-// record copies what a training came to into a run.
-func record(r *results.Run, o *trainer.Outcome) {
+// record copies what a training came to into a run; what it said of every test
+// example only if that is to be kept.
+func record(r *results.Run, o *trainer.Outcome, keep bool) {
 	r.Steps = o.Steps
 	r.Diverged, r.DivergedStep, r.Stalled = o.Diverged, o.DivergedStep, o.Stalled
 	for i := range o.Epochs {
@@ -23,22 +24,49 @@ func record(r *results.Run, o *trainer.Outcome) {
 	if o.Test != nil {
 		r.Confusion, r.Classes = o.Test.Confusion, o.Test.Classes
 	}
+	if keep {
+		r.Predictions = predictions(o.Test)
+	}
 	if o.Findings != nil {
 		r.Findings = findings(o.Findings)
 	}
 }
 
+// predictions are those of the last evaluation of the test set; nil if there was
+// none.
+func predictions(s *trainer.Scores) *results.Predictions {
+	switch {
+	case s == nil:
+		return nil
+	case s.Classes == 0:
+		return &results.Predictions{Outputs: s.Outputs, Values: s.Values, Targets: s.Targets}
+	}
+	return &results.Predictions{Called: s.Called, Truth: s.Truth}
+}
+
 func epoch(e *trainer.Epoch) results.Epoch {
-	rmse := e.TestRMSE
-	if rmse != rmse {
-		rmse = 0 // a classification, or not evaluated
-	}
 	return results.Epoch{
-		TestRMSE: rmse, TrainLoss: e.TrainLoss, TrainMetric: e.TrainAccuracy,
-		ValidationLoss: e.ValidationLoss, ValidationMetric: e.ValidationAccuracy,
-		TestLoss: e.TestLoss, TestMetric: e.TestAccuracy,
+		TrainLoss: e.TrainLoss, TrainMetric: e.TrainAccuracy, TrainRMSE: orZero(e.TrainRMSE),
+		ValidationLoss: e.ValidationLoss, ValidationMetric: e.ValidationAccuracy, ValidationRMSE: orZero(e.ValidationRMSE),
+		TestLoss: e.TestLoss, TestMetric: e.TestAccuracy, TestRMSE: orZero(e.TestRMSE),
 		Ties: e.Ties, LossScale: e.LossScale, Skipped: e.Skipped,
+		Validation: classScores(e.Validation), Test: classScores(e.Test),
 	}
+}
+
+// orZero is 0 where there is no RMSE: a classification, or not evaluated.
+func orZero(x float64) float64 {
+	if x != x {
+		return 0
+	}
+	return x
+}
+
+func classScores(s *trainer.ClassScores) *results.ClassScores {
+	if s == nil {
+		return nil
+	}
+	return &results.ClassScores{Examples: s.Examples, Right: s.Right, Missed: s.Missed}
 }
 
 func tensors(params []trainer.Param) []results.Tensor {

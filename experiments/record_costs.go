@@ -1,6 +1,8 @@
 package experiments
 
 import (
+	"slices"
+
 	"ulpine/experiments/plan"
 	"ulpine/results"
 	"ulpine/results/cost"
@@ -24,10 +26,24 @@ func recordCosts(r *cost.Result) *results.Costs {
 		Answer:  r.Answer, Batch: r.Batch, Reference: recordBill(&r.Reference),
 		Assumptions: r.Assumptions, Cautions: r.Cautions, Warnings: r.Warnings,
 	}
+	c.Rules = appendRules(nil, &r.Reference)
 	for i := range r.Arms {
 		c.Bills = append(c.Bills, recordBill(&r.Arms[i]))
+		c.Rules = appendRules(c.Rules, &r.Arms[i])
 	}
 	return c
+}
+
+// appendRules adds how figures of a bill were extrapolated, each rule once.
+func appendRules(rules []string, b *cost.Bill) []string {
+	for _, a := range []*cost.Account{&b.Once, &b.Tiled} {
+		for _, r := range slices.Concat(a.TimeLabel.Rules, a.EnergyLabel.Rules) {
+			if !slices.Contains(rules, r) {
+				rules = append(rules, r)
+			}
+		}
+	}
+	return rules
 }
 
 // tableLine names a table with its source and date.

@@ -151,7 +151,7 @@ func comparisons(l *layout, study *results.Study) {
 	pair := func(arm, against string, margin float64, headline bool) results.Comparison {
 		return compare.Pair(compare.Question{
 			Arm: arm, Against: against, Metric: metric, Margin: margin,
-			Confidence: study.Confidence, Planned: study.Planned, LookEvery: study.Claim.LookEvery, Headline: headline, Classes: study.Classes,
+			Confidence: study.Confidence, Planned: study.Planned, LookEvery: study.Claim.LookEvery, Headline: headline, Classes: study.Classes, Regression: study.Regression,
 		}, byArm[arm], byArm[against])
 	}
 	for i := range l.Arms[1:] {
@@ -161,6 +161,9 @@ func comparisons(l *layout, study *results.Study) {
 		study.Contrasts = append(study.Contrasts, pair(c.Arm, c.Against, c.Margin, true))
 	}
 	noiseFloor(l, study, pair)
+	for i := range study.Runs {
+		study.Runs[i].Predictions = nil // compared: a study may hold thousands of runs
+	}
 	study.Comparisons, study.Contrasts = compare.Decide(study.Comparisons), compare.Decide(study.Contrasts)
 }
 

@@ -141,7 +141,7 @@ func (x *runner) do(ctx context.Context, number int, u *unit) {
 	if err == nil {
 		var o trainer.Outcome
 		o, err = x.safeTrain(ctx, job, &watcher{t: x.tracker, place: place, last: began})
-		record(r, &o)
+		record(r, &o, x.Predictions == plan.KeptPredictions && u.group != x.pre)
 	}
 	r.Wall = time.Since(began)
 	x.tracker.ended(number)
@@ -183,9 +183,7 @@ func (x *runner) job(u *unit, r *results.Run) (trainer.Job, error) {
 		}
 		job.Start = u.replicate.start
 	}
-	if x.Diagnostics == plan.Sampled {
-		job.Diagnostics = trainer.DefaultDiagnostics
-	}
+	job.Diagnostics = trainer.Diagnostics(x.Diagnostics)
 	r.Data = data.Hash
 	job.Train, job.Validation, job.Test = trainer.Set(data.Train), trainer.Set(data.Validation), trainer.Set(data.Test)
 	return job, nil

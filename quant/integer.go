@@ -49,7 +49,8 @@ type IntegerSpec struct {
 // lies beyond a percentile or a fixed scale.
 type Integer struct {
 	spec   IntegerSpec
-	lo, hi int64 // least and largest code
+	lo, hi int64  // least and largest code
+	code   Format // of the terms unless Zero is fitted; here, so that no line makes it anew
 }
 
 // NewInteger checks a format of scaled integers.
@@ -77,6 +78,7 @@ func NewInteger(s IntegerSpec) (Integer, error) {
 	if s.Zero < f.lo || s.Zero >= f.hi {
 		return Integer{}, fmt.Errorf("quant: zero at code %d: want %d to %d", s.Zero, f.lo, f.hi-1)
 	}
+	f.code = f.terms(s.Zero)
 	return f, nil
 }
 
@@ -131,12 +133,15 @@ func (f Integer) magnitude(x []float64) float64 {
 	if f.spec.Percentile == 0 {
 		return largestFinite(x)
 	}
-	m := make([]float64, 0, len(x))
+	own := borrowScratch()
+	defer own.giveBack()
+	m := own.tensor[:0]
 	for _, v := range x {
 		if v-v == 0 {
 			m = append(m, math.Abs(v))
 		}
 	}
+	own.tensor = m
 	slices.Sort(m)
 	return ranked(m, f.spec.Percentile)
 }
@@ -153,12 +158,15 @@ func (f Integer) extremes(x []float64) (lo, hi float64) {
 		}
 		return lo, hi
 	}
-	m := make([]float64, 0, len(x))
+	own := borrowScratch()
+	defer own.giveBack()
+	m := own.tensor[:0]
 	for _, v := range x {
 		if v-v == 0 {
 			m = append(m, v)
 		}
 	}
+	own.tensor = m
 	slices.Sort(m)
 	hi = max(0, ranked(m, part))
 	slices.Reverse(m)
@@ -179,12 +187,16 @@ func ranked(x []float64, part int) float64 {
 func (f Integer) Calibrated(sample []float64) Integer {
 	s := f.Scaling(sample)
 	f.spec.Scale, f.spec.Zero, f.spec.Fit, f.spec.Percentile = s.Factor, s.Zero, false, 0
+	f.code = f.terms(s.Zero)
 	return f
 }
 
 // RoundLine implements Blocked.
 func (f Integer) RoundLine(line []float64, s Scaling, p *Point, word []uint32, n *Counts) {
-	term := Point{Format: f.terms(s.Zero), Rounding: p.Rounding, Overflow: p.Overflow}
+	term := Point{Format: f.code, Rounding: p.Rounding, Overflow: p.Overflow}
+	if s.Zero != f.spec.Zero {
+		term.Format = f.terms(s.Zero)
+	}
 	for i, v := range line {
 		var w uint32
 		if word != nil {

@@ -191,10 +191,12 @@ func (b Block) Scaling(x []float64) Scaling {
 	return Scaling{Factor: scaleFactor(ExactQuotient(largest, most))}
 }
 
+// factorPoint is made once: a scale a tensor should not allocate.
+var factorPoint = Point{Format: Binary32, Overflow: Saturate}
+
 // scaleFactor rounds a positive real to the positive finite binary32 numbers.
 func scaleFactor(x Real) float64 {
-	p := Point{Format: Binary32, Overflow: Saturate}
-	v, _ := p.Round(x, 0)
+	v, _ := factorPoint.Round(x, 0)
 	return max(v, math.SmallestNonzeroFloat32)
 }
 

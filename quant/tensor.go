@@ -1,6 +1,9 @@
 package quant
 
-import "math"
+import (
+	"math"
+	"sync"
+)
 
 // Shape is a tensor seen along the reduction axis of a product: Outer x Axis x
 // Inner, Inner varying fastest. A line is the Axis elements that share outer and
@@ -49,14 +52,19 @@ func RoundTensor[D, S Element](dst []D, src []S, shape Shape, p *Point, d Draws,
 	sameLength(len(dst), len(src))
 	sameLength(len(src), shape.Outer*shape.Axis*shape.Inner)
 	fits[D](p)
-	x := make([]float64, len(src))
+	m := borrowScratch()
+	defer m.giveBack()
+	x := grown(m.tensor, len(src))
+	m.tensor = x
 	for i, v := range src {
 		x[i] = float64(v)
 	}
 	s := blocked.Scaling(x)
-	l := lines{words: newWords(d, p.Rounding), first: first, line: make([]float64, shape.Axis)}
+	m.line = grown(m.line, shape.Axis)
+	l := lines{words: newWords(d, p.Rounding), first: first, line: m.line}
 	if l.words.on {
-		l.word = make([]uint32, shape.Axis)
+		m.word = grown(m.word, shape.Axis)
+		l.word = m.word
 	}
 	for outer := range shape.Outer {
 		for inner := range shape.Inner {
@@ -70,6 +78,19 @@ func RoundTensor[D, S Element](dst []D, src []S, shape Shape, p *Point, d Draws,
 	}
 	return s.Factor
 }
+
+// scratch is memory for the rounding of one tensor: training rounds the same shapes
+// again and again and should not allocate.
+type scratch struct {
+	tensor, line []float64
+	word         []uint32
+}
+
+var scratches = sync.Pool{New: func() any { return new(scratch) }}
+
+func borrowScratch() *scratch { return scratches.Get().(*scratch) }
+
+func (m *scratch) giveBack() { scratches.Put(m) }
 
 // lines walks over the lines of a tensor.
 type lines struct {

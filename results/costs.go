@@ -12,6 +12,7 @@ type Costs struct {
 	Assumptions []string `json:"assumptions"`
 	Cautions    []string `json:"cautions"`
 	Warnings    []string `json:"warnings,omitempty"`
+	Rules       []string `json:"rules,omitempty"` // that stood in for rows which the tables lack
 }
 
 // Bill is the cost of one arm.

@@ -31,6 +31,7 @@ const FewForBCa = 20
 type Comparison struct {
 	Arm, Against      string // slugs
 	Metric            string
+	Regression        bool // of a regression: its losses are no cross-entropies
 	Margin            float64
 	Confidence        float64
 	Replicates        []uint64
@@ -65,6 +66,7 @@ type Comparison struct {
 	// of replicates that diverge; NaN without a pair.
 	DivergedLow, DivergedHigh float64
 	Classes                   []ClassDifference // differences of recall, when runs were counted by class
+	Items                     *ItemComparison   // nil: predictions are not stored for every pair
 }
 
 // ClassDifference is how the recall of one class differs between two arms over
@@ -120,6 +122,7 @@ type Study struct {
 	Training        string // one line
 	LongestSum      int
 	Metric          string
+	Regression      bool // the task has targets of values, no classes
 	Margin          float64
 	Confidence      float64
 	NoiseLow        float64    // noise floor: the range of the controls' differences from the baseline;
@@ -147,5 +150,6 @@ type Study struct {
 	Volumes         []Volume // of a run, by layer and point; empty: not known
 	Ranges          []Range  // of the formats that histograms are held against
 	Diagnoses       []Diagnosis
+	Tuning          *Tuning // nil: learning rates and loss scales are those that the plan spells out
 	Written         time.Time
 }

@@ -19,14 +19,19 @@ type Scores struct {
 	// Unanswered[t] counts examples of class t with a NaN among their outputs.
 	Unanswered []uint64
 
-	// Of evaluations: the alarm score and the class of every example, in order.
-	Alarm []float64
-	Truth []int32
+	// Of evaluations: the alarm score, the class and the answer (-1: none) of every
+	// example, in order.
+	Alarm  []float64
+	Truth  []int32
+	Called []int32
 
 	Outputs int     // of a regression
 	Squares float64 // the squared distances, summed in binary64 in the order of examples and outputs
+	// Of evaluations of a regression: outputs, rounded to binary32 where they are
+	// wider, and targets, both [examples, outputs].
+	Values, Targets []float32
 
-	keep bool // keep alarm scores
+	keep bool // keep what is said of every example
 }
 
 // newScores returns empty counts of a classification, or sums of a regression.
@@ -69,7 +74,8 @@ func (s *Scores) reset() {
 	clear(s.Confusion)
 	clear(s.Unanswered)
 	s.Examples, s.Right, s.Ties, s.Squares = 0, 0, 0, 0
-	s.Alarm, s.Truth = s.Alarm[:0], s.Truth[:0]
+	s.Alarm, s.Truth, s.Called = s.Alarm[:0], s.Truth[:0], s.Called[:0]
+	s.Values, s.Targets = s.Values[:0], s.Targets[:0]
 }
 
 // score adds the outputs [examples, outputs] of a batch.
@@ -77,15 +83,21 @@ func score[T quant.Element](s *Scores, y []T, t truth) {
 	if s.Classes == 0 {
 		s.Squares = addSquares(s.Squares, y, t.values)
 		s.Examples += uint64(len(y) / s.Outputs)
+		if s.keep {
+			for _, v := range y {
+				s.Values = append(s.Values, float32(v))
+			}
+			s.Targets = append(s.Targets, t.values...)
+		}
 		return
 	}
 	for n, label := range t.labels {
 		s.Examples++
 		row := y[n*s.Classes:][:s.Classes]
-		if s.keep {
-			s.Alarm, s.Truth = append(s.Alarm, alarmScore(row)), append(s.Truth, label)
-		}
 		best, tie := answer(row)
+		if s.keep {
+			s.Alarm, s.Truth, s.Called = append(s.Alarm, alarmScore(row)), append(s.Truth, label), append(s.Called, int32(best))
+		}
 		if best < 0 {
 			s.Unanswered[label]++
 			continue

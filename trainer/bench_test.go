@@ -2,47 +2,152 @@ package trainer
 
 import (
 	"testing"
-
-	"ulpine/quant"
+	"time"
 )
 
-// benchmarkStep measures training steps of 64 examples, reported as examples/s.
-func benchmarkStep(b *testing.B, input []int, arm func(layers int) Arm, layers ...string) {
-	net := network(b, input, layers...)
-	training := sgdTraining(64, 1)
-	job := Job{Network: net, Arm: arm(len(layers)), Training: training, Seed: 1, Train: dataset(256, input, 10, 1)}
+// benchNets are the networks that steps are measured on, in batches of 64.
+var benchNets = []struct {
+	name   string
+	input  []int
+	layers []string
+}{
+	{"lenet", []int{1, 28, 28}, []string{
+		"conv2d out=8 size=5", "relu", "maxpool size=2",
+		"conv2d out=16 size=5", "relu", "maxpool size=2", "dense 120", "relu", "dense 10",
+	}},
+	{"mlp", []int{784}, []string{"dense 256", "relu", "dense 128", "relu", "dense 10"}},
+}
+
+// benchArms are the arithmetics that matter for speed, given the number of layers.
+var benchArms = []struct {
+	name string
+	arm  func(b *testing.B, layers int) Arm
+}{
+	{"baseline", everythingArm("fp32")},
+	{"bf16-storage", func(b *testing.B, n int) Arm { return storageArm(b, point(b, "bf16"), n) }},
+	{"fp16-everything", everythingArm("fp16")},
+	{"bf16-everything", everythingArm("bf16")},
+	{"fp16-stochastic-everything", func(b *testing.B, n int) Arm {
+		return Everything(stochastic(b, "fp16", 16), n, 1)
+	}},
+	{"fp16-everything-exact-products", func(b *testing.B, n int) Arm {
+		return exactProducts(Everything(point(b, "fp16"), n, 1))
+	}},
+	{"MXFP8-operands", func(b *testing.B, n int) Arm { return operandArm(b, "MXFP8(E4M3)", n) }},
+	{"INT8-operands", func(b *testing.B, n int) Arm { return operandArm(b, "INT8", n) }},
+}
+
+// everythingArm rounds at every point to a format.
+func everythingArm(format string) func(*testing.B, int) Arm {
+	return func(b *testing.B, n int) Arm { return Everything(point(b, format), n, 1) }
+}
+
+// exactProducts leaves products unrounded: every addition is one fused step.
+func exactProducts(arm Arm) Arm {
+	for i := range arm.Layers {
+		l := &arm.Layers[i]
+		l.Forward.Product, l.InputGradient.Sums.Product, l.WeightGradient.Sums.Product = nil, nil, nil
+	}
+	return arm
+}
+
+// operandArm rounds all operands of products to a format with shared scales; the
+// rest is binary32.
+func operandArm(t testing.TB, format string, layers int) Arm {
+	arm := baseline(t, layers)
+	p := point(t, format)
+	for i := range arm.Layers {
+		l := &arm.Layers[i]
+		l.Weight, l.Operand = p, &p
+		l.InputGradient.First, l.InputGradient.Gradient = &p, &p
+		l.WeightGradient.First, l.WeightGradient.Gradient = &p, &p
+	}
+	return arm
+}
+
+// BenchmarkStep measures whole training steps of 64 examples, forward, backward and
+// update, in examples/s. A step that allocates fails.
+func BenchmarkStep(b *testing.B) {
+	for _, net := range benchNets {
+		for _, a := range benchArms {
+			b.Run(net.name+"/"+a.name, func(b *testing.B) {
+				step := benchStep(b, net.input, net.layers, a.arm(b, len(net.layers)), Diagnostics{})
+				for range 4 {
+					step()
+				}
+				if n := testing.AllocsPerRun(2, step); n != 0 {
+					b.Errorf("%v allocations a step", n)
+				}
+				best := time.Hour
+				for b.Loop() {
+					start := time.Now()
+					step()
+					best = min(best, time.Since(start))
+				}
+				b.ReportMetric(float64(64*b.N)/b.Elapsed().Seconds(), "examples/s")
+				b.ReportMetric(64/best.Seconds(), "examples/s-best") // on a busy machine
+			})
+		}
+	}
+}
+
+// benchStep is one training step after another, over four batches by turns.
+func benchStep(b *testing.B, input []int, layers []string, arm Arm, d Diagnostics) func() {
+	job := Job{
+		Network: network(b, input, layers...), Arm: arm, Training: sgdTraining(64, 1), Seed: 1,
+		Train: dataset(256, input, 10, 1), Diagnostics: d,
+	}
 	e := engineFor[float32](b, &job)
-	batch := make([]int32, 64)
-	identity(batch)
-	e.step(batch, 0.01)
-	b.ReportAllocs()
-	b.ResetTimer()
-	for range b.N {
-		e.step(batch, 0.01)
+	p, err := job.check()
+	if err == nil {
+		err = e.observe(&job, p)
 	}
-	b.ReportMetric(float64(64*b.N)/b.Elapsed().Seconds(), "examples/s")
-}
-
-// benchmarkArms runs one network under the arms that matter for speed.
-func benchmarkArms(b *testing.B, input []int, layers ...string) {
-	all16 := func(p quant.Point) func(int) Arm {
-		return func(n int) Arm { return Everything(p, n, 1) }
+	if err != nil {
+		b.Fatal(err)
 	}
-	b.Run("baseline", func(b *testing.B) { benchmarkStep(b, input, all16(point(b, "fp32")), layers...) })
-	b.Run("bf16 storage", func(b *testing.B) {
-		benchmarkStep(b, input, func(n int) Arm { return storageArm(b, point(b, "bf16"), n) }, layers...)
-	})
-	b.Run("fp16 everything", func(b *testing.B) { benchmarkStep(b, input, all16(point(b, "fp16")), layers...) })
-	b.Run("fp16 stochastic everything", func(b *testing.B) {
-		benchmarkStep(b, input, all16(stochastic(b, "fp16", 16)), layers...)
-	})
+	order := make([]int32, 256)
+	identity(order)
+	at, n := 0, uint32(0)
+	return func() {
+		e.moment.before, e.moment.epochEnds = n%benchEpoch, n%benchEpoch == benchEpoch-1
+		n++
+		e.step(order[at:][:64], 0.01)
+		at = (at + 64) % len(order)
+	}
 }
 
-func BenchmarkPerceptronStep(b *testing.B) {
-	benchmarkArms(b, []int{784}, "dense 256", "relu", "dense 128", "relu", "dense 10")
-}
+// benchEpoch is the number of steps of an epoch, at whose end diagnostics look.
+const benchEpoch = 20
 
-func BenchmarkConvolutionStep(b *testing.B) {
-	benchmarkArms(b, []int{1, 28, 28}, "conv2d out=8 size=5", "relu", "maxpool size=2",
-		"conv2d out=16 size=5", "relu", "maxpool size=2", "dense 120", "relu", "dense 10")
+// BenchmarkDiagnostics trains without and with the default diagnostics, a step by
+// turns, in rounds of 200 steps, the period of the rarest look. cost-% is what looking
+// adds in the cheapest round of several; more than 10 fails.
+func BenchmarkDiagnostics(b *testing.B) {
+	const period = 200
+	for _, net := range benchNets {
+		b.Run(net.name, func(b *testing.B) {
+			arm := storageArm(b, point(b, "bf16"), len(net.layers))
+			var spent [2]time.Duration
+			steps := [2]func(){
+				benchStep(b, net.input, net.layers, arm, Diagnostics{}),
+				benchStep(b, net.input, net.layers, arm, DefaultDiagnostics),
+			}
+			cost := 1e9
+			for b.Loop() {
+				spent = [2]time.Duration{}
+				for range period {
+					for i, step := range steps {
+						start := time.Now()
+						step()
+						spent[i] += time.Since(start)
+					}
+				}
+				cost = min(cost, 100*(float64(spent[1])/float64(spent[0])-1))
+			}
+			b.ReportMetric(cost, "cost-%")
+			if b.N > 2 && cost > 10 {
+				b.Errorf("diagnostics cost %.1f %% of a training", cost)
+			}
+		})
+	}
 }

@@ -78,8 +78,10 @@ type scales[T quant.Element] struct {
 
 	activationFactor, gradientFactor float64 // of the right-hand operands back
 
-	row []float64 // Product.Scale
-	one []T       // the outputs of an example: one group's units x positions
+	row  []float64  // Product.Scale
+	from shifted[T] // the columns of an example
+	one  []T        // the outputs of an example: one group's units x positions
+	rows []T        // an operand with a row for each channel; nil where none has scales of its own
 }
 
 // makeScales allocates what the arm's formats need.
@@ -99,6 +101,14 @@ func (l *linear[T]) makeScales(batch int) {
 	if w := l.again.weight; w != nil && shared(w) {
 		l.channelFactors = make([]float64, l.channels)
 	}
+	own := 0
+	if g := l.set.WeightGradient.Gradient; g != nil && quant.PerChannel(g.Format) {
+		own = batch * l.above.per
+	}
+	if w := l.again.weight; w != nil && quant.PerChannel(w.Format) {
+		own = max(own, len(l.weight.master.data))
+	}
+	l.rows = make([]T, own)
 	l.row = make([]float64, max(l.units, l.channels))
 }
 
@@ -163,7 +173,8 @@ func (l *linear[T]) eachExample(p *pass, n int) {
 	columns := p.samples * l.outer
 	for s := range p.samples {
 		q := *all
-		q.J, q.C, q.B = l.outer, l.one, &shifted[T]{all.B, s * l.outer}
+		l.from = shifted[T]{all.B, s * l.outer}
+		q.J, q.C, q.B = l.outer, l.one, &l.from
 		q.FirstJ = (p.first + uint64(s)) * uint64(l.outer)
 		q.Scale = l.scale(l.weight.factors, n*q.I, q.I, l.exampleFactors[s])
 		l.forwardMul.Mul(q, l.counts(p, ForwardProduct), l.counts(p, ForwardSum))
@@ -200,7 +211,7 @@ func (l *linear[T]) takeUnitGradients(p *pass, dst, src []T) {
 		fill(l.unitFactors, f)
 		return
 	}
-	rows := make([]T, len(src))
+	rows := l.rows[:len(src)]
 	groupByUnit(rows, src, n, l.units, l.outer)
 	roundRows(l.place, p, WeightGradientGradient, opWeightOperand, rows, rows, quant.Shape{Outer: l.units, Axis: n, Inner: l.outer}, point, l.unitFactors)
 	groupByExample(dst, rows, n, l.units, l.outer)
@@ -219,7 +230,7 @@ func (l *linear[T]) takeWeightsAgain(p *pass) {
 		return
 	}
 	kernel, size := l.terms/channels, units*l.terms
-	rows := make([]T, len(src))
+	rows := l.rows[:len(src)]
 	for g := range l.groups {
 		groupByExample(rows[g*size:][:size], src[g*size:][:size], channels, units, kernel)
 	}

@@ -166,6 +166,19 @@ func TestStepAllocatesNothing(t *testing.T) {
 	arms := map[string]func(int) Arm{
 		"baseline": func(n int) Arm { return baseline(t, n) },
 		"bf16":     func(n int) Arm { return storageArm(t, point(t, "bf16"), n) },
+		"blocks":   func(n int) Arm { return operandArm(t, "MXFP8(E4M3)", n) },
+		"integers": func(n int) Arm { return operandArm(t, "INT8(scale=99%)", n) },
+		"channels": func(n int) Arm {
+			a := baseline(t, n)
+			rows, columns := point(t, "INT8(per=channel)"), point(t, "INT8")
+			for i := range a.Layers {
+				l := &a.Layers[i]
+				l.Weight, l.Operand = rows, &columns
+				l.InputGradient.First, l.InputGradient.Gradient = &rows, &columns
+				l.WeightGradient.First, l.WeightGradient.Gradient = &columns, &rows
+			}
+			return a
+		},
 		"dynamic": func(n int) Arm {
 			a := storageArm(t, point(t, "fp16"), n)
 			a.LossScale.Kind = DynamicScale

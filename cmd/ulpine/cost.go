@@ -25,8 +25,7 @@ had to be extrapolated for.
 Built-in machines: ` + strings.Join(cost.MachineNames(), ", ") + `.`,
 		Args: exactly("PLAN"),
 	}
-	machine := cmd.Flags().String("machine", cost.DefaultMachine, "a built-in machine, or a TOML `file` with a [machine] table")
-	energy := cmd.Flags().String("energy", "", "a TOML `file` with an [energy] table (default: Horowitz, ISSCC 2014, 45 nm)")
+	tables := tableFlags(cmd)
 	asJSON := cmd.Flags().Bool("json", false, "all figures as JSON")
 	detail := cmd.Flags().Bool("detail", false, "traffic by class and phase, figures layer by layer, what was extrapolated")
 	cmd.RunE = func(cmd *cobra.Command, args []string) error {
@@ -34,16 +33,9 @@ Built-in machines: ` + strings.Join(cost.MachineNames(), ", ") + `.`,
 		if err != nil {
 			return err
 		}
-		m, err := experiments.MachineOf(*machine)
-		if errors.Is(err, fs.ErrNotExist) && !strings.HasSuffix(*machine, ".toml") {
-			err = fmt.Errorf("--machine %s: no built-in machine and no file; built in are %s", *machine, strings.Join(cost.MachineNames(), ", "))
-		}
+		m, e, err := tables.load()
 		if err != nil {
-			return badInput(err)
-		}
-		e, err := experiments.EnergyOf(*energy)
-		if err != nil {
-			return badInput(err)
+			return err
 		}
 		r, err := experiments.Costs(p, m, e)
 		if err != nil {
@@ -55,4 +47,31 @@ Built-in machines: ` + strings.Join(cost.MachineNames(), ", ") + `.`,
 		return cost.Table(cmd.OutOrStdout(), r, *detail)
 	}
 	return cmd
+}
+
+// costTables are the tables that costs are worked out from, as flags name them.
+type costTables struct{ machine, energy *string }
+
+// tableFlags adds --machine and --energy to a verb.
+func tableFlags(cmd *cobra.Command) costTables {
+	return costTables{
+		machine: cmd.Flags().String("machine", cost.DefaultMachine, "for the costs: a built-in machine, or a TOML `file` with a [machine] table"),
+		energy:  cmd.Flags().String("energy", "", "for the costs: a TOML `file` with an [energy] table (default: Horowitz, ISSCC 2014, 45 nm)"),
+	}
+}
+
+// load reads the tables; what is wrong with them is the input's fault.
+func (t costTables) load() (cost.Machine, cost.EnergyTable, error) {
+	m, err := experiments.MachineOf(*t.machine)
+	if errors.Is(err, fs.ErrNotExist) && !strings.HasSuffix(*t.machine, ".toml") {
+		err = fmt.Errorf("--machine %s: no built-in machine and no file; built in are %s", *t.machine, strings.Join(cost.MachineNames(), ", "))
+	}
+	if err != nil {
+		return m, cost.EnergyTable{}, badInput(err)
+	}
+	e, err := experiments.EnergyOf(*t.energy)
+	if err != nil {
+		return m, e, badInput(err)
+	}
+	return m, e, nil
 }

@@ -59,8 +59,9 @@ func (r *reader) build(root *node) *Plan {
 	p.Network = r.readNetwork(root, &p.Task)
 	p.Training = r.readMainTraining(root, &p.Task)
 	p.Diagnostics = r.readDiagnostics(root)
+	p.Predictions = r.readPredictions(root)
 	p.Replicates = r.readReplicates(root)
-	p.Claim = r.readClaim(root)
+	p.Claim = r.readClaim(root, &p.Task)
 	arms := armReader{r, r.readFormats(root), &p.Network, p.Training, p.Task.Train}
 	var grids []*grid
 	p.Arms, grids = arms.readArms(root)
@@ -163,9 +164,10 @@ func (r *reader) readMainTraining(root *node, task *Task) trainer.Training {
 	if n == nil {
 		return defaultTraining()
 	}
-	t := r.readTraining(n, defaultTraining(), false, append(slices.Clone(trainingKeys), "diagnostics"))
+	t := r.readTraining(n, defaultTraining(), false, append(slices.Clone(trainingKeys), "diagnostics", "predictions"))
 	r.checkBatch(n, &t, task.Train)
 	r.checkTargets(n, &t, task)
+	r.checkAugment(n, &t, task)
 	return t
 }
 
@@ -181,6 +183,7 @@ func (r *reader) readPretrain(root *node, p *Plan) *Pretrain {
 		pre.Training = r.readTraining(sub, p.Training, true, trainingKeys)
 		r.checkBatch(sub, &pre.Training, pre.Task.Train)
 		r.checkTargets(sub, &pre.Training, &pre.Task)
+		r.checkAugment(sub, &pre.Training, &pre.Task)
 	}
 	r.checkSameShape(n, &p.Task, &pre.Task)
 	states, _ := pre.Training.Optimizer.States()

@@ -14,6 +14,7 @@ type Plan struct {
 	Network     trainer.Network
 	Training    trainer.Training // what the arms share; an arm may override some of it
 	Diagnostics Diagnostics      // of all runs
+	Predictions Predictions      // whether runs keep them
 	Pretrain    *Pretrain        // nil: every arm starts from initial weights
 	Replicates  Replicates
 	Claim       Claim

@@ -61,6 +61,7 @@ func writeFacts(b *strings.Builder, p *Plan) {
 	fmt.Fprintf(w, "data\t%s\n", p.Task.Description)
 	fmt.Fprintf(w, "training\t%s\n", describeTraining(p.Training))
 	fmt.Fprintf(w, "diagnostics\t%s\n", p.Diagnostics)
+	fmt.Fprintf(w, "predictions\t%s\n", p.predictionsText())
 	if pre := p.Pretrain; pre != nil {
 		fmt.Fprintf(w, "pretraining data\t%s\n", pre.Task.Description)
 		fmt.Fprintf(w, "pretraining\t%s\n", describeTraining(pre.Training))

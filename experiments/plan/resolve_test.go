@@ -91,3 +91,21 @@ func TestMagnitudesAndDurations(t *testing.T) {
 		}
 	}
 }
+
+// TestPredictionsText: what is kept, and how much room it takes; it is in no key.
+func TestPredictionsText(t *testing.T) {
+	plain := load(t, basePlan)
+	for _, c := range []struct{ text, want string }{
+		{basePlan, "predictions  stored: the class and the class called of every test example, 200 B a run and 1.6 kB in all"},
+		{strings.Replace(basePlan, "epochs = 3", "epochs = 3\npredictions = \"none\"", 1), "predictions  none\n"},
+		{regressionPlan(), "predictions  stored: outputs and targets in binary32 of every test example, 1.6 kB a run"},
+	} {
+		p := load(t, c.text)
+		if text := ResolveText(p, ResolveOptions{}); !strings.Contains(text, c.want) {
+			t.Errorf("no %q in\n%s", c.want, text)
+		}
+		if p.Predictions == NoPredictions && p.Canonical() != plain.Canonical() {
+			t.Error("keeping predictions is part of what is run")
+		}
+	}
+}

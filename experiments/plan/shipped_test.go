@@ -57,6 +57,9 @@ func writeIDX(t *testing.T, file string, dims []uint32, at func(i int) byte) {
 // writeDigits writes the four files that digits-idx.toml names, with few examples.
 func writeDigits(t *testing.T, folder string) {
 	t.Helper()
+	if err := os.MkdirAll(folder, 0o755); err != nil {
+		t.Fatal(err)
+	}
 	for _, set := range []struct {
 		name string
 		n    uint32
@@ -117,7 +120,9 @@ func TestTasksFromTables(t *testing.T) {
 // Every plan that ships loads without a warning and can be spelt out.
 func TestShippedPlansLoad(t *testing.T) {
 	folder := t.TempDir()
-	writeDigits(t, folder)
+	for _, images := range []string{"", "mnist", "fashion-mnist"} {
+		writeDigits(t, filepath.Join(folder, images))
+	}
 	writeArrays(t, folder)
 	all := shipped(t)
 	for _, name := range []string{"first-look.toml", "sixteen-bit.toml", "digits-idx.toml"} {

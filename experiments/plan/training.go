@@ -11,30 +11,59 @@ import (
 // trainingKeys are the keys of [training]; an arm may override all but how data
 // is ordered and when it is evaluated, which would break the pairing.
 var (
-	trainingKeys         = []string{"optimizer", "learning_rate", "batch", "epochs", "loss", "shuffle", "evaluate"}
+	trainingKeys         = []string{"optimizer", "learning_rate", "batch", "epochs", "loss", "shuffle", "augment", "evaluate"}
 	trainingOverrideKeys = []string{"optimizer", "learning_rate", "batch", "epochs"}
 )
 
 // maxCount bounds epochs and examples so that their products fit an int.
 const maxCount = math.MaxInt32
 
-// Diagnostics say whether the runs of a plan are looked at closer while they
-// train. Looking changes no bit, so it is in no key of a run.
-type Diagnostics string
+// Predictions say whether the runs of a plan keep what they say of every test
+// example. Keeping changes no bit, so it is in no key of a run.
+type Predictions string
 
-// The ways of looking.
+// The ways of keeping.
 const (
-	Sampled       Diagnostics = "sampled" // some values in some steps
-	NoDiagnostics Diagnostics = "none"
+	KeptPredictions Predictions = "stored"
+	NoPredictions   Predictions = "none"
 )
 
-// readDiagnostics reads training.diagnostics of the plan.
-func (r *reader) readDiagnostics(root *node) Diagnostics {
+// readPredictions reads training.predictions of the plan.
+func (r *reader) readPredictions(root *node) Predictions {
 	n := root.table["training"]
 	if n == nil || n.table == nil {
-		return Sampled
+		return KeptPredictions
 	}
-	return Diagnostics(r.word(n, "diagnostics", string(Sampled), string(Sampled), string(NoDiagnostics)))
+	return Predictions(r.word(n, "predictions", string(KeptPredictions), string(KeptPredictions), string(NoPredictions)))
+}
+
+// predictionsText says what a plan keeps of every test example, and how much room
+// that takes at most, before it is compressed.
+func (p *Plan) predictionsText() string {
+	if p.Predictions == NoPredictions || p.Training.EvaluateTest == trainer.Never || p.Task.Test == 0 {
+		return string(NoPredictions)
+	}
+	example, what := 2, "the class and the class called" // bytes; stores take 2 or 4 beyond 254 classes
+	switch classes := len(p.Task.ClassNames); {
+	case len(p.Task.TargetNames) > 0:
+		example, what = 8*len(p.Task.TargetNames), "outputs and targets in binary32"
+	case classes > math.MaxUint16-1:
+		example *= 4
+	case classes > math.MaxUint8-1:
+		example *= 2
+	}
+	each := float64(example * p.Task.Test)
+	runs := float64(p.Runs() - p.Work().Pretraining)
+	return fmt.Sprintf("%s: %s of every test example, %s a run and %s in all before compression",
+		p.Predictions, what, bytesText(each), bytesText(each*runs))
+}
+
+// bytesText is a number of bytes with its unit.
+func bytesText(n float64) string {
+	if n < 1000 {
+		return fmt.Sprintf("%.0f B", n)
+	}
+	return magnitude(n) + "B"
 }
 
 // readTraining reads the training table n over base. Keys that base cannot
@@ -57,6 +86,9 @@ func (r *reader) readTraining(n *node, base trainer.Training, complete bool, key
 	t.Batch = int(r.whole(n, "batch", int64(base.Batch), 1, maxCount))
 	t.Epochs = int(r.whole(n, "epochs", int64(base.Epochs), 1, maxCount))
 	t.Shuffle = r.flag(n, "shuffle", base.Shuffle)
+	if at := n.table["augment"]; at != nil {
+		t.Augment = r.readAugment(at)
+	}
 	if at := n.table["optimizer"]; at != nil {
 		t.Optimizer = r.readOptimizer(at)
 	}
@@ -249,6 +281,9 @@ func describeTraining(t trainer.Training) string {
 	order := "shuffled"
 	if !t.Shuffle {
 		order = "in the data's order"
+	}
+	if t.Augment.Any() {
+		order += ", augmented by " + DescribeAugment(t.Augment)
 	}
 	return fmt.Sprintf("%s, %s, learning rate %s, batch %d, epochs %d, %s, test data %s, validation data %s",
 		describeLoss(t), DescribeOptimizer(t.Optimizer), DescribeRate(t.LearningRate), t.Batch, t.Epochs, order, t.EvaluateTest, t.EvaluateValidation)

@@ -23,10 +23,21 @@
 //     diverge,
 //   - class by class, the difference of recall with its t interval.
 //
-// The drawn intervals are never adjusted for the number of arms or of looks. All
-// speak of other replicates on the same test examples. How much other examples
-// would change is not in them: that takes the prediction for every example (a
-// bootstrap over replicates and examples both), and runs keep counts by class only.
+// The drawn intervals are never adjusted for the number of arms or of looks. Where
+// replicates share their test examples (data from files), all of them speak of other
+// replicates on these same examples. For what other examples would change there is,
+// from the predictions that runs keep,
+//
+//   - the two-way bootstrap of the mean, over replicates and examples both (see
+//     crossed; where each replicate draws its own examples, nested), and the
+//     examples' share of the variance,
+//   - the counts of examples gained and lost, pair by pair, with McNemar's test.
+//
+// In simulations of ten replicates and a hundred examples that vary by replicate,
+// by example and by both, the two-way interval says "within" on the margin in 1.0 %
+// where examples are shared, and the t interval, if it is read as one about other
+// examples, in 9.6 %; where they are not shared in 3 % both (TestTwoWayValidity,
+// 2,000 tables).
 //
 // # What each interval is worth
 //

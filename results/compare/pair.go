@@ -17,6 +17,7 @@ type Question struct {
 	LookEvery    int      // pairs between looks; 0: one look, at Planned pairs
 	Headline     bool     // a contrast the plan asks for
 	Classes      []string // names of the classes, for what is said of them
+	Regression   bool     // there are targets of values, no classes
 }
 
 // Pair compares the runs of an arm with those of another by replicate. Runs that
@@ -27,6 +28,7 @@ func Pair(q Question, arm, against []results.Run) results.Comparison {
 	c := results.Comparison{
 		Arm: q.Arm, Against: q.Against, Metric: q.Metric.Name, Margin: q.Margin,
 		Confidence: q.Confidence, Planned: q.Planned, LookEvery: q.LookEvery, Headline: q.Headline,
+		Regression: q.Regression,
 	}
 	mine, theirs := byReplicate(arm), byReplicate(against)
 	for replicate := range mine {
@@ -51,6 +53,7 @@ func Pair(q Question, arm, against []results.Run) results.Comparison {
 	}
 	c.N = len(c.Differences)
 	c.Classes = classDifferences(q, pairs)
+	c.Items = compareItems(q, pairs)
 	c.DivergedLow, c.DivergedHigh = results.ExactRate(uint64(c.Diverged), uint64(c.N), c.Confidence)
 	estimate(&c)
 	c.Warnings = append(doubts(&c, identical), missedDoubts(&c, missed)...)

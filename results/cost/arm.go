@@ -37,8 +37,8 @@ type Sums struct {
 
 // Backward is the arithmetic of one of a layer's gradient products. First is the
 // format that the weight (input gradient) or activation (weight gradient) is
-// converted to on its way from where it is stored, Gradient the same of the
-// gradient; nil: used as it is.
+// converted to on its way from where it is stored; nil: as in the forward product.
+// Gradient is the same of the gradient; nil: used as it is.
 type Backward struct {
 	First    *Point `json:"first,omitempty"`
 	Gradient *Point `json:"gradient,omitempty"`
@@ -50,8 +50,11 @@ type Backward struct {
 // does not have: without an activation point it hands on its input's format,
 // without an input-gradient result that of the gradient above.
 type Assignment struct {
-	Weight         Point    `json:"weight"`
-	Activation     Point    `json:"activation"`
+	Weight     Point `json:"weight"`
+	Activation Point `json:"activation"`
+	// Operand is what the layer's input is converted to on its way into the forward
+	// product; nil: it is used as it is stored.
+	Operand        *Point   `json:"operand,omitempty"`
 	Forward        Sums     `json:"forward"`
 	InputGradient  Backward `json:"input_gradient"`
 	WeightGradient Backward `json:"weight_gradient"`
@@ -213,6 +216,9 @@ func (a *Assignment) check(at string, n *Network, i int, o *Optimizer, e *fieldE
 	trained := l.parameters() > 0
 	a.Weight.check(at+".weight", trained, e)
 	a.Activation.check(at+".activation", trained, e)
+	if a.Operand != nil {
+		a.Operand.check(at+".operand", true, e)
+	}
 	a.Forward.check(at+".forward", l.Weights > 0 && l.Work.Forward > 0, e)
 	a.InputGradient.check(at+".input_gradient", l.Weights > 0 && l.Work.InputGradient > 0 && n.propagates(i), e)
 	a.WeightGradient.check(at+".weight_gradient", trained, e)

@@ -58,16 +58,34 @@ func (b *bound) forwardSums(i int) Sums {
 	return s
 }
 
+// forwardOperands are the formats that enter the multipliers of the forward phase.
+func (b *bound) forwardOperands(i int) (weight, activation Format) {
+	a := &b.arm.Layers[i]
+	return a.Weight.Format, converted(a.Operand, b.acts[i])
+}
+
 // inputOperands are the formats that enter the multipliers of the input gradient.
 func (b *bound) inputOperands(i int) (weight, gradient Format) {
 	a := &b.arm.Layers[i]
 	return converted(a.InputGradient.First, a.Weight.Format), converted(a.InputGradient.Gradient, b.grads[i+1])
 }
 
-// weightOperands are the formats that enter the multipliers of the weight gradient.
+// weightOperands are the formats that enter the multipliers of the weight gradient:
+// an activation that is not rounded for it has the format of the forward product.
 func (b *bound) weightOperands(i int) (activation, gradient Format) {
 	a := &b.arm.Layers[i]
-	return converted(a.WeightGradient.First, b.acts[i]), converted(a.WeightGradient.Gradient, b.grads[i+1])
+	_, forward := b.forwardOperands(i)
+	return converted(a.WeightGradient.First, forward), converted(a.WeightGradient.Gradient, b.grads[i+1])
+}
+
+// again is the point at which a gradient product rounds an operand anew that the
+// forward product had: its own, or the forward one where shared scales run along
+// another axis now; nil: it takes the forward operand as it is.
+func again(own, forward *Point) *Point {
+	if own == nil && forward != nil && forward.Format.Block > 0 {
+		return forward
+	}
+	return own
 }
 
 func converted(p *Point, stored Format) Format {
@@ -78,10 +96,11 @@ func converted(p *Point, stored Format) Format {
 }
 
 // storedWeights is the tensor that the input gradient reads: the working copy,
-// or the master copy if the operand is rounded anew.
+// or the master copy if the operand is rounded anew, as blocks along the other
+// axis are.
 func (b *bound) storedWeights(i int) (Class, Format) {
 	a := &b.arm.Layers[i]
-	if a.InputGradient.First != nil && a.separateMaster() {
+	if again(a.InputGradient.First, &a.Weight) != nil && a.separateMaster() {
 		return Master, a.Master.Format
 	}
 	return Weights, a.Weight.Format

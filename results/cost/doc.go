@@ -31,7 +31,9 @@
 // changes the shape moves nothing. Values are packed without gaps: nine bits
 // take nine bits. A stored tensor moves in the format it is stored in; a product
 // whose operand has another format converts it on the way, at no cost but that
-// of the random bits.
+// of the random bits. The gradient products take over the operands of the forward
+// product, and round those whose blocks of shared scales run along another axis
+// anew: weights from the master copy.
 //
 // # Bits a value
 //

@@ -85,8 +85,8 @@ func (b *bound) operations(i int, p Phase, batch uint64) operations {
 func (b *bound) forwardWork(i int, batch uint64) operations {
 	l, a := &b.net.Layers[i], &b.arm.Layers[i]
 	s := b.forwardSums(i)
-	o := operations{elementwise: l.additive(), a: a.Weight.Format, b: b.acts[i]}
-	if l.Weights == 0 {
+	o := operations{elementwise: l.additive()}
+	if o.a, o.b = b.forwardOperands(i); l.Weights == 0 {
 		o.a = o.b
 	}
 	o.sums(&s, batch*l.Work.Forward, l.Terms.Forward, l.InAxis)
@@ -95,6 +95,7 @@ func (b *bound) forwardWork(i int, batch uint64) operations {
 		o.add(s.adder(outer), batch*l.Outputs)
 		o.draw(&outer, batch*l.Outputs)
 	}
+	o.draw(a.Operand, batch*l.Inputs)
 	o.draw(&a.Activation, batch*l.Outputs)
 	return o
 }
@@ -108,7 +109,7 @@ func (b *bound) inputWork(i int, batch uint64) operations {
 		o.a = o.b
 	}
 	o.sums(&s, batch*l.inputProducts(), l.Terms.InputGradient, l.OutAxis)
-	o.draw(a.InputGradient.First, l.Weights)
+	o.draw(again(a.InputGradient.First, &a.Weight), l.Weights)
 	o.draw(a.InputGradient.Gradient, batch*l.Outputs)
 	o.draw(&a.InputGradient.Result, batch*l.Inputs)
 	return o
@@ -125,7 +126,7 @@ func (b *bound) weightWork(i int, batch uint64) operations {
 	if l.Biases > 0 {
 		o.adds(s, l.Biases, ceilDiv(batch*l.Outputs, l.Biases))
 	}
-	o.draw(a.WeightGradient.First, batch*l.Inputs)
+	o.draw(again(a.WeightGradient.First, a.Operand), batch*l.Inputs)
 	o.draw(a.WeightGradient.Gradient, batch*l.Outputs)
 	o.draw(&a.WeightGradient.Result, l.parameters())
 	return o

@@ -2,6 +2,7 @@ package cost
 
 import (
 	"math"
+	"strings"
 	"testing"
 )
 
@@ -149,6 +150,59 @@ func TestConvertedWeights(t *testing.T) {
 	}
 	if f.Energy.Multiply >= plain.Energy.Multiply {
 		t.Error("narrower operands do not multiply at less energy")
+	}
+}
+
+// TestForwardOperand: an operand of the forward product with a format of its own
+// moves as it is stored, multiplies in its own format, and draws its random bits;
+// the weight gradient takes it over, and rounds it anew where its blocks run along
+// another axis. So do the weights of the input gradient, from the master copy.
+func TestForwardOperand(t *testing.T) {
+	n := twoLayers()
+	const batch, inputs, weights = 32, 100, 1000 // of dense 10
+	e4m3 := Point{Format: formatOf(t, "e4m3"), RandomBits: 3}
+	blocked := Point{Format: e4m3.Format.WithBlocks("blocks of 32", 32, 8), RandomBits: 3}
+	with := func(weight, operand *Point) Arm {
+		arm := masterArm(t, &n, "bf16")
+		if weight != nil {
+			arm.Layers[2].Weight = *weight
+		}
+		arm.Layers[2].Operand = operand
+		return arm
+	}
+	r := estimate(t, n, DefaultMachine, with(nil, nil), with(nil, &e4m3), with(nil, &blocked), with(&blocked, &blocked))
+	of := func(arm, phase int) *Figures { return &r.Arms[arm].Once.Step.Layers[2].Phases[phase].Figures }
+	for arm, want := range [][3]uint64{
+		{0, 0, 0},
+		{3 * batch * inputs, 0, 0},
+		{3 * batch * inputs, 0, 3 * batch * inputs},
+		{3 * batch * inputs, 3 * weights, 3 * batch * inputs},
+	} {
+		for phase, bits := range want {
+			if got := of(arm, phase).Random; got != bits {
+				t.Errorf("arm %d, %s: %d random bits, want %d", arm, Phases()[phase], got, bits)
+			}
+		}
+		for _, phase := range []int{0, 2} {
+			if got, plain := of(arm, phase).Traffic.Activations, of(0, phase).Traffic.Activations; got != plain {
+				t.Errorf("arm %d, %s: %d bits of activations move, stored are %d", arm, Phases()[phase], got, plain)
+			}
+			if arm > 0 && of(arm, phase).Energy.Multiply >= of(0, phase).Energy.Multiply {
+				t.Errorf("arm %d, %s: a narrower operand does not multiply at less energy", arm, Phases()[phase])
+			}
+		}
+	}
+	if f := of(3, 1); f.Traffic.Weights != 0 || f.Traffic.Master != 32*weights {
+		t.Errorf("weights in blocks along the other axis come from %+v, want the master copy", f.Traffic)
+	}
+	// A scale of every 32 of 100 inputs: one addition a block beside 100 products.
+	if a, b := of(2, 0).Energy.Add, of(1, 0).Energy.Add; a <= b {
+		t.Errorf("block scales add nothing: %v pJ against %v", a, b)
+	}
+	bad := with(nil, &Point{Format: Format{Name: "x", Family: Float}})
+	in := Input{Network: n, Optimizer: Momentum, Batch: batch, Machine: slow(1), Energy: DefaultEnergy(), Arms: []Arm{bad}}
+	if _, err := Estimate(&in); err == nil || !strings.Contains(err.Error(), "operand") {
+		t.Errorf("an operand of no bits: %v", err)
 	}
 }
 

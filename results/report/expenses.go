@@ -32,6 +32,9 @@ func (v *view) assumptions() []string {
 	for _, a := range v.Costs.Assumptions {
 		out = append(out, plain(a))
 	}
+	for _, r := range v.Costs.Rules {
+		out = append(out, "Starred figures: "+plain(r))
+	}
 	return out
 }
 

@@ -142,9 +142,24 @@ func comparisonObjects(cs []results.Comparison) []object {
 		}
 		o.floats("differences", c.Differences)
 		o["offered"], o["look_every"], o["classes"] = c.Offered, c.LookEvery, classObjects(c.Classes)
+		if c.Items != nil {
+			o["items"] = itemObject(c.Items)
+		}
 		out = append(out, o)
 	}
 	return out
+}
+
+// itemObject is a comparison test example by test example.
+func itemObject(c *results.ItemComparison) object {
+	o := object{
+		"items": c.Items, "replicates": c.Replicates, "crossed": c.Crossed, "method": c.Method,
+		"gained": c.Gained, "lost": c.Lost, "changed": c.Changed, "flips": append([]results.Flips{}, c.Flips...),
+	}
+	o.float("low", c.Low)
+	o.float("high", c.High)
+	o.float("item_share", c.ItemShare)
+	return o
 }
 
 // classObjects are differences of recall by class.

@@ -53,6 +53,8 @@ const (
 	kindInitial = 'I'
 	kindFinal   = 'F'
 	kindLook    = 'D' // findings of diagnostics
+
+	kindPredictions = 'P'
 )
 
 // prefix is the bucket key of the part's pieces without the piece's number.
@@ -72,7 +74,7 @@ type encodedRun struct {
 func encodeRun(r *results.Run) (encodedRun, error) {
 	e := encodedRun{parts: map[part][]byte{}}
 	record := *r
-	record.StepBytes, record.Looked = nil, r.Findings != nil
+	record.StepBytes, record.Looked, record.Kept = nil, r.Findings != nil, r.Predictions != nil
 	record.Started = record.Started.UTC()
 	var err error
 	if record.Initial, err = e.tensors(kindInitial, r.Initial); err != nil {
@@ -84,6 +86,11 @@ func encodeRun(r *results.Run) (encodedRun, error) {
 	e.parts[part{kind: kindSteps}] = results.RealBytes(r.Steps)
 	if r.Findings != nil {
 		if e.parts[part{kind: kindLook}], err = encode(r.Findings); err != nil {
+			return e, err
+		}
+	}
+	if r.Predictions != nil {
+		if e.parts[part{kind: kindPredictions}], err = packPredictions(r.Predictions); err != nil {
 			return e, err
 		}
 	}
@@ -180,7 +187,7 @@ func readRun(b *bolt.Bucket, key results.Hash, tensors bool) (*results.Run, erro
 	if r.Steps, err = results.Reals(raw); err != nil {
 		return nil, fmt.Errorf("steps: %w", err)
 	}
-	if err := readFindings(b, key, r); err != nil {
+	if err := errors.Join(readFindings(b, key, r), readPredictions(b, key, r)); err != nil {
 		return nil, err
 	}
 	if !tensors {

@@ -17,8 +17,9 @@
 //
 // Integers inside bucket keys are big-endian, so that bbolt's byte order is
 // their order. Parts of a run are its record (R), the losses of its steps (S),
-// its initial (I) and final (F) tensors and, if it was looked at closer, what
-// diagnostics found (D, not in the digest); numbers among tensors and losses are
+// its initial (I) and final (F) tensors and, neither in the digest, what
+// diagnostics found (D) if it was looked at closer and what it said of every test
+// example (P, compressed; see packed); numbers among tensors and losses are
 // little-endian as in the digest. Values stay below 64 kB because bbolt keeps
 // each in one run of pages, which it copies whole on every change nearby.
 //

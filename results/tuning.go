@@ -1,0 +1,39 @@
+package results
+
+// Tuning says how the learning rate and the loss scale of every arm were chosen
+// before the reported replicates were run: from one list for all arms, by a metric
+// on validation data, on seeds of their own.
+type Tuning struct {
+	Metric     string `json:"metric"` // of the choice: "validation accuracy"
+	Replicates int    `json:"replicates"`
+	FirstSeed  uint64 `json:"first_seed"`
+	// LearningRates and LossScales are the values tried, in the order of the plan;
+	// empty: not tuned. Every arm tries each with each.
+	LearningRates []string   `json:"learning_rates"`
+	LossScales    []string   `json:"loss_scales"`
+	Runs          int        `json:"runs"`   // that the tuning asks for; arms with equal arithmetic share theirs
+	Stored        int        `json:"stored"` // of those
+	Done          bool       `json:"done"`   // every arm has its choice
+	Arms          []TunedArm `json:"arms"`   // the baseline first
+}
+
+// TunedArm is what one arm tried and which trial it was given.
+type TunedArm struct {
+	Arm    string  `json:"arm"`    // slug
+	Chosen int     `json:"chosen"` // index in Trials; -1: tuning is not finished
+	Trials []Trial `json:"trials"`
+	// Edge: the chosen learning rate is the least or the largest of three or more
+	// that were tried, so that one beyond might do better.
+	Edge bool `json:"edge"`
+}
+
+// Trial is one pair of values that was tried. A run that diverged counts as worse
+// than any that did not.
+type Trial struct {
+	LearningRate string    `json:"learning_rate"` // in words
+	LossScale    string    `json:"loss_scale"`
+	N            int       `json:"n"` // runs stored
+	Diverged     int       `json:"diverged"`
+	Scores       []float64 `json:"-"` // the metric, one a stored run by ascending seed
+	Mean         float64   `json:"-"` // of the runs that did not diverge; NaN: there is none
+}
