@@ -2,9 +2,11 @@ package trainer
 
 import (
 	"context"
-	"fmt"
 	"sync"
 	"testing"
+
+	"github.com/google/go-cmp/cmp"
+	"github.com/google/go-cmp/cmp/cmpopts"
 
 	"ulpine/quant"
 )
@@ -21,12 +23,12 @@ func TestTeamChangesNoBit(t *testing.T) {
 			Network: network(t, input, layers...), Arm: Everything(point, len(layers), 1), Training: training, Seed: 1,
 			Train: dataset(150, input, 10, 1), Test: dataset(80, input, 10, 2),
 		}
-		run := func() string {
+		run := func() Outcome {
 			o, err := Run(context.Background(), job, nil)
 			if err != nil {
 				t.Fatal(err)
 			}
-			return fmt.Sprint(o.Steps, o.Epochs, o.Final, o.Counters)
+			return o
 		}
 		alone := run()
 		for _, workers := range []int{1, 2, 3} {
@@ -39,8 +41,8 @@ func TestTeamChangesNoBit(t *testing.T) {
 			for range workers {
 				helpers.Go(func() { job.Team.Help(stop) })
 			}
-			if shared := run(); shared != alone {
-				t.Errorf("%v with %d helpers: another outcome", point, workers)
+			if diff := cmp.Diff(alone, run(), cmpopts.EquateNaNs(), cmp.AllowUnexported(Scores{})); diff != "" {
+				t.Errorf("%v with %d helpers: another outcome:\n%s", point, workers, diff)
 			}
 			close(stop)
 			helpers.Wait()
