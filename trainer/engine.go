@@ -80,7 +80,7 @@ func (e *engine[T]) buildLayers(capacity int, team *Team) error {
 		} else {
 			above = newEdge[T](capacity, spec.Out)
 		}
-		b := &bench[T]{place: place{i, &e.arm.Layers[i]}, spec: spec, below: below, above: above, batch: capacity, earlier: e.layers, team: team}
+		b := &bench[T]{place: place{layer: i, set: &e.arm.Layers[i]}, spec: spec, below: below, above: above, batch: capacity, earlier: e.layers, team: team}
 		l, err := builderOf[T](k)(b)
 		if err != nil {
 			return fmt.Errorf("%s: %w", e.net.where(i), err)
