@@ -86,7 +86,7 @@ func newLinear[T quant.Element](b *bench[T], s shape, bind func(l *linear[T]) bi
 		l.regrouped = make([]T, b.batch*s.units*s.outer)
 	}
 	l.results = make([]T, max(b.batch*s.units*s.outer, b.batch*s.channels*s.inner, s.units*s.terms))
-	if err := l.makeMultipliers(); err != nil {
+	if err := l.makeMultipliers(b.team); err != nil {
 		return nil, err
 	}
 	l.makeProducts(bind(l))
@@ -111,15 +111,20 @@ func (l *linear[T]) chooseOperands() {
 	l.activation = own(l.again.activation, l.operand)
 }
 
-func (l *linear[T]) makeMultipliers() (err error) {
+func (l *linear[T]) makeMultipliers(team *Team) (err error) {
 	if l.forwardMul, err = multiplier[T](l.set.Forward); err != nil {
 		return err
 	}
 	if l.belowMul, err = multiplier[T](l.set.InputGradient.Sums); err != nil {
 		return err
 	}
-	l.mul, err = multiplier[T](l.set.WeightGradient.Sums)
-	return err
+	if l.mul, err = multiplier[T](l.set.WeightGradient.Sums); err != nil {
+		return err
+	}
+	for _, m := range []*quant.Multiplier[T]{l.forwardMul, l.belowMul, l.mul} {
+		m.Share(team)
+	}
+	return nil
 }
 
 // makeProducts builds the three products once: converting a matrix to an
