@@ -64,6 +64,9 @@ func trainingLine(p *plan.Plan) string {
 	if t.Augment.Any() {
 		line += ", examples augmented by " + plan.DescribeAugment(t.Augment)
 	}
+	if p.Start != nil {
+		line += "; starting from " + p.Start.Text()
+	}
 	if pre := p.Pretrain; pre != nil {
 		line += fmt.Sprintf("; after pretraining for %s on %s", number(pre.Training.Epochs, "epoch"), pre.Task.Description)
 	}

@@ -174,7 +174,7 @@ func (x *runner) place(number int, u *unit) Place {
 // pretraining left nothing to start from.
 func (x *runner) job(u *unit, r *results.Run) (trainer.Job, error) {
 	data := u.replicate.data
-	job := trainer.Job{Network: x.Network, Arm: u.group.arm, Training: u.group.training, Seed: u.replicate.seed}
+	job := trainer.Job{Network: x.Network, Arm: u.group.arm, Training: u.group.training, Seed: u.replicate.seed, Team: x.team}
 	if u.group == x.pre {
 		data = u.replicate.preData
 	} else {
@@ -182,6 +182,9 @@ func (x *runner) job(u *unit, r *results.Run) (trainer.Job, error) {
 			return job, errors.New(u.replicate.broken)
 		}
 		job.Start = u.replicate.start
+		if x.Plan.Start != nil {
+			job.Start = x.Plan.Start.Params
+		}
 	}
 	job.Diagnostics = trainer.Diagnostics(x.Diagnostics)
 	r.Data = data.Hash

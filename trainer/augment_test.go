@@ -165,6 +165,17 @@ func TestAugmentTrains(t *testing.T) {
 	}
 }
 
+// TestParamShapes: what a network says of its parameters is what outcomes record.
+func TestParamShapes(t *testing.T) {
+	job := zooJob(t, 0, func(n int) Arm { return baseline(t, n) })
+	out := mustRun(t, job)
+	for i, p := range job.Network.ParamShapes() {
+		if q := out.Final[i]; p.Name != q.Name || shapeText(p.Shape) != shapeText(q.Shape) || len(out.Final) != len(job.Network.ParamShapes()) {
+			t.Errorf("%s %v is recorded as %s %v", p.Name, p.Shape, q.Name, q.Shape)
+		}
+	}
+}
+
 func TestAugmentErrors(t *testing.T) {
 	for _, c := range []struct {
 		a     Augment

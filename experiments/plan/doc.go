@@ -15,6 +15,11 @@
 //	[pretrain]          task and training: what differs from the plan's own ones in
 //	                    a training that is done first, once a replicate, under the
 //	                    baseline's arithmetic, and from whose weights every arm starts
+//	[start]             parameters that every arm, the baseline included, starts from in
+//	                    every replicate: file, an NPZ archive, and part, "final" (default)
+//	                    or "initial"; or store and run, "arm/replicate", whose final ones
+//	                    are taken. Names and shapes must be the network's; their values
+//	                    are part of the keys of runs. Not beside [pretrain]
 //	[replicates]        count, first_seed; in place of count, up_to and look_every: a
 //	                    look after every so many ends the plan once all is decided
 //	[claim]             metric (also "epochs to test accuracy 0.9"), margin, confidence;

@@ -86,6 +86,25 @@ func writeArrays(t *testing.T, folder string) {
 	}
 }
 
+// writeWeights writes the parameters that from-stored-run.toml starts from, as show
+// --weights does.
+func writeWeights(t *testing.T, file string) {
+	t.Helper()
+	p := load(t, shipped(t)["missed-faults.toml"])
+	var arrays []npy.Named
+	for _, q := range p.Network.ParamShapes() {
+		n, _ := npy.Len(q.Shape)
+		arrays = append(arrays, npy.Named{Name: "final/" + q.Name, Array: &npy.Array{Shape: q.Shape, Values: make([]float64, n)}})
+	}
+	var b bytes.Buffer
+	if err := npy.WriteNPZ(&b, arrays); err != nil {
+		t.Fatal(err)
+	}
+	if err := os.WriteFile(file, b.Bytes(), 0o600); err != nil {
+		t.Fatal(err)
+	}
+}
+
 // What data and a pretraining on other data have to do with the plan.
 func TestTasksFromTables(t *testing.T) {
 	folder := t.TempDir()
@@ -124,6 +143,7 @@ func TestShippedPlansLoad(t *testing.T) {
 		writeDigits(t, filepath.Join(folder, images))
 	}
 	writeArrays(t, folder)
+	writeWeights(t, filepath.Join(folder, "pump-weights.npz"))
 	all := shipped(t)
 	for _, name := range []string{"first-look.toml", "sixteen-bit.toml", "digits-idx.toml"} {
 		if all[name] == "" {
