@@ -17,12 +17,12 @@ import (
 // others at equal distances, as neighbours in a grid are alike.
 const timed = 16
 
-// An arm is timed for at least span and leastSteps steps, after warmUp of them, which
-// meet cold caches and memory that is yet to grow.
+// An arm is timed for at least span, in leastGroups groups of steps: whole epochs,
+// with all that comes once an epoch, or what fills long.
 const (
-	span       = 50 * time.Millisecond
-	leastSteps = 4
-	warmUp     = 2
+	span        = 50 * time.Millisecond
+	long        = 10 * time.Millisecond
+	leastGroups = 4
 )
 
 // measureRate times training steps of the arms and controls on invented numbers and
@@ -55,65 +55,86 @@ func measureRate(ctx context.Context, p *plan.Plan) (float64, error) {
 	return macs / seconds, nil
 }
 
-// armSpeed is multiply-adds a second in training steps of one arm, by the faster half
-// of the steps timed: others may need the processor for a while.
+// armSpeed is multiply-adds a second of one arm in training, the looks of its
+// diagnostics included, by the faster half of what was timed: others may need the
+// processor for a while.
 func armSpeed(ctx context.Context, p *plan.Plan, a *plan.Arm) (float64, error) {
-	const batches, epochs = 4, 1 << 14 // more than are run
+	const steps, values = 1 << 16, 1 << 20 // at most: of the training, of its inputs
 	t := a.Training
-	t.Epochs, t.LearningRate = epochs, trainer.Schedule{Start: 1e-6} // nothing diverges
-	n := batches * t.Batch
+	n := min(p.Task.Train, max(4*t.Batch, values/product(p.Network.Input)))
+	each := (n + t.Batch - 1) / t.Batch
+	t.Epochs, t.LearningRate = max(2, steps/each), trainer.Schedule{Start: 1e-6} // nothing diverges
 	job := trainer.Job{
 		Network: p.Network, Arm: a.Arithmetic, Training: t, Seed: 1,
-		Train: inventedSet(p.Network, n, t.Regression()),
+		Train:       inventedSet(p.Network, n, t.Regression()),
+		Diagnostics: trainer.Diagnostics(p.Diagnostics),
 	}
 	inner, cancel := context.WithCancel(ctx)
 	defer cancel()
-	watch := &stopWatch{enough: cancel, last: time.Now()}
+	watch := &stopWatch{enough: cancel, each: each, from: time.Now()}
 	if _, err := trainer.Run(inner, job, watch); err != nil && !errors.Is(err, context.Canceled) {
 		return 0, err
 	}
 	if err := ctx.Err(); err != nil {
 		return 0, err
 	}
-	step := trainer.Describe(p.Network, &job.Arm, t, trainer.Sizes{Train: n}).StepMACs
-	return float64(step) / watch.step().Seconds(), nil
+	d := trainer.Describe(p.Network, &job.Arm, t, trainer.Sizes{Train: n})
+	return float64(d.TotalMACs) / float64(d.Steps) / watch.step(), nil
+}
+
+// product is the number of values of a shape.
+func product(shape []int) int {
+	n := 1
+	for _, d := range shape {
+		n *= d
+	}
+	return n
 }
 
 // stopWatch times the steps of a training until it has seen enough.
 type stopWatch struct {
 	enough func()
-	last   time.Time
-	steps  []time.Duration
-	spent  time.Duration // on steps behind the warm-up
+	each   int       // steps of an epoch
+	from   time.Time // when the group at hand began
+	steps  int       // of the group
+	first  float64   // seconds of the first step
+	groups []float64 // seconds a step, of groups finished
+	spent  time.Duration
 }
 
-// Progress is called after each step.
+// Progress is called after each step. A group is the steps behind the first of an
+// epoch up to that of the next.
 func (w *stopWatch) Progress(done, _ int) {
 	now := time.Now()
-	d := max(now.Sub(w.last), 1)
-	w.last = now
-	if done == warmUp+1 {
-		w.steps = w.steps[:0]
-	}
-	w.steps = append(w.steps, d)
-	if done <= warmUp {
+	w.steps++
+	d := now.Sub(w.from)
+	switch {
+	case done == 1: // meets cold caches and memory that is yet to grow
+		w.first = d.Seconds()
+	case d < long && (done-1)%w.each != 0:
 		return
+	default:
+		w.groups = append(w.groups, d.Seconds()/float64(w.steps))
+		w.spent += d
 	}
-	if w.spent += d; w.spent >= span && len(w.steps) >= leastSteps {
+	w.from, w.steps = now, 0
+	if w.spent >= span && len(w.groups) >= leastGroups {
 		w.enough()
 	}
 }
 
-// step is the mean time of the faster half of the steps: of the warm-up only if the
-// training went no further.
-func (w *stopWatch) step() time.Duration {
-	slices.Sort(w.steps)
-	half := w.steps[:(len(w.steps)+1)/2]
-	var sum time.Duration
+// step is the mean time of a step in the faster half of the groups, in seconds.
+func (w *stopWatch) step() float64 {
+	if len(w.groups) == 0 {
+		return max(w.first, 1e-9) // the training broke off at once
+	}
+	slices.Sort(w.groups)
+	half := w.groups[:(len(w.groups)+1)/2]
+	var sum float64
 	for _, d := range half {
 		sum += d
 	}
-	return sum / time.Duration(len(half))
+	return max(sum/float64(len(half)), 1e-9)
 }
 
 // inventedSet is n examples of normal numbers with labels in turn, or with normal
