@@ -27,12 +27,14 @@ func doubts(c *results.Comparison, identical bool) (warnings []string) {
 	if c.N == 1 {
 		warn("one pair gives no interval and no verdict: ask for two replicates or more")
 	}
-	if c.Diverged > 0 {
+	if c.Diverged > 0 && c.AgainstDiverged > 0 {
+		warn("diverged in %d of %s, and the arm it is compared with in %d: no verdict", c.Diverged, number(c.N, "replicate"), c.AgainstDiverged)
+	} else if c.Diverged > 0 {
 		low, high := results.ExactRate(uint64(c.Diverged), uint64(c.N), c.Confidence)
 		warn("diverged in %d of %s (exact %s %% interval %s to %s %%); they are scored as they stood",
 			c.Diverged, number(c.N, "replicate"), amount(100*c.Confidence), amount(100*low), amount(100*high))
 	}
-	if c.AgainstDiverged > 0 {
+	if c.AgainstDiverged > 0 && c.Diverged == 0 {
 		warn("the arm it is compared with diverged in %d of %s: no verdict", c.AgainstDiverged, number(c.N, "replicate"))
 	}
 	if c.Stalled > 0 {
@@ -40,6 +42,9 @@ func doubts(c *results.Comparison, identical bool) (warnings []string) {
 	}
 	if c.N > 0 && !allFinite(c.Differences) {
 		warn("the %s of some runs is not a finite number: no mean, no interval", c.Metric)
+	}
+	if c.Diverged > 0 || c.AgainstDiverged > 0 {
+		return warnings // no interval decides anything
 	}
 	return append(warnings, spreadDoubts(c, identical)...)
 }

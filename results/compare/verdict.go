@@ -100,7 +100,16 @@ func settle(c *results.Comparison, family []results.Comparison) int {
 			left--
 		}
 	}
-	return pairsNeeded(c.Mean, c.SD, c.N, c.Margin, tail(c)/float64(left))
+	return twoDigits(pairsNeeded(c.Mean, c.SD, c.N, c.Margin, tail(c)/float64(left)))
+}
+
+// twoDigits rounds an estimate up to two significant digits: it deserves no more.
+func twoDigits(n int) int {
+	unit := 1
+	for n/unit >= 100 {
+		unit *= 10
+	}
+	return (n + unit - 1) / unit * unit
 }
 
 // noteHolm explains an interval that clears the margin beside a verdict that

@@ -70,6 +70,9 @@ func (v *view) json(w io.Writer) error {
 	}
 	top["volumes"], top["ranges"] = append([]results.Volume{}, v.Volumes...), append([]results.Range{}, v.Ranges...)
 	top["diagnoses"] = append([]results.Diagnosis{}, v.Diagnoses...)
+	if v.Tuning != nil {
+		top["tuning"] = tuningObject(v.Tuning)
+	}
 	top.float("margin", v.Margin)
 	top.float("confidence", v.Confidence)
 	if v.noiseMeasured() {
@@ -148,6 +151,26 @@ func comparisonObjects(cs []results.Comparison) []object {
 		out = append(out, o)
 	}
 	return out
+}
+
+// tuningObject is what every arm tried and was given.
+func tuningObject(t *results.Tuning) object {
+	arms := []object{}
+	for i := range t.Arms {
+		a := &t.Arms[i]
+		trials := []object{}
+		for _, tried := range a.Trials {
+			o := object{"learning_rate": tried.LearningRate, "loss_scale": tried.LossScale, "n": tried.N, "diverged": tried.Diverged}
+			o.float("mean", tried.Mean)
+			o.floats("scores", tried.Scores)
+			trials = append(trials, o)
+		}
+		arms = append(arms, object{"arm": a.Arm, "chosen": a.Chosen, "edge": a.Edge, "trials": trials})
+	}
+	return object{
+		"metric": t.Metric, "replicates": t.Replicates, "first_seed": t.FirstSeed, "learning_rates": filled(t.LearningRates),
+		"loss_scales": filled(t.LossScales), "runs": t.Runs, "stored": t.Stored, "done": t.Done, "arms": arms,
+	}
 }
 
 // itemObject is a comparison test example by test example.
