@@ -52,7 +52,7 @@ func runTuned(ctx context.Context, p *plan.Plan, s *store.Store, o Options) (Sum
 		}
 	}
 	x := newRunner(tunedLayout(p, chosen), s, o)
-	for _, line := range ChosenLines(tuning) {
+	for _, line := range tuning.Chosen() {
 		x.tracker.note("tuned: %s", line)
 	}
 	all, err := x.run(ctx)
@@ -179,35 +179,6 @@ func best(trials []results.Trial, metric results.Metric) int {
 		}
 	}
 	return at
-}
-
-// ChosenLines say which values were chosen, arms with the same ones in one line, in
-// the order of their first arms: "learning rate 0.02, loss scale none: baseline, bf16".
-func ChosenLines(t *results.Tuning) (lines []string) {
-	var values []string
-	arms := map[string][]string{}
-	for i := range t.Arms {
-		a := &t.Arms[i]
-		if a.Chosen < 0 {
-			continue
-		}
-		var words []string
-		if len(t.LearningRates) > 0 {
-			words = append(words, "learning rate "+a.Trials[a.Chosen].LearningRate)
-		}
-		if len(t.LossScales) > 0 {
-			words = append(words, "loss scale "+a.Trials[a.Chosen].LossScale)
-		}
-		value := strings.Join(words, ", ")
-		if arms[value] == nil {
-			values = append(values, value)
-		}
-		arms[value] = append(arms[value], a.Arm)
-	}
-	for _, v := range values {
-		lines = append(lines, v+": "+strings.Join(arms[v], ", "))
-	}
-	return lines
 }
 
 // tuningWarnings are the doubts about a tuning that is done.

@@ -124,6 +124,8 @@ func withinSentence(s *results.Study, within []*results.Comparison) string {
 	}
 	lead := fmt.Sprintf("Of %d arms, %d stay ", all, n)
 	switch {
+	case n == all && n == 2:
+		lead = "Both arms stay "
 	case n == all:
 		lead = fmt.Sprintf("All %d arms stay ", n)
 	case n == 1:
@@ -209,7 +211,7 @@ func pairs(of []*results.Comparison) string {
 
 // atLook names the latest look of a plan that has several; empty: it has one.
 func atLook(c *results.Comparison) string {
-	if _, several := looks(c); !several || lookedAt(c) == 0 {
+	if _, several := looks(c); !several || c.Same || lookedAt(c) == 0 {
 		return ""
 	}
 	return ", " + lookWords(c)

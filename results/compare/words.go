@@ -63,7 +63,11 @@ func (w measure) with(figure string) string {
 	case figure == "1":
 		return figure + " " + w.metric.Unit
 	}
-	return figure + " " + w.metric.Unit + "s"
+	head, of, _ := strings.Cut(w.metric.Unit, " of ")
+	if of != "" {
+		of = " of " + of
+	}
+	return figure + " " + head + "s" + of
 }
 
 // margin is a margin with its unit, in as few digits as it needs.

@@ -112,7 +112,7 @@ func comparisonObjects(cs []results.Comparison) []object {
 		o := object{
 			"arm": c.Arm, "against": c.Against, "metric": c.Metric, "replicates": c.Replicates, "n": c.N, "planned": c.Planned,
 			"verdict": verdictWords(c.Verdict), "pairs_needed": c.Verdict.Pairs, "diverged": c.Diverged,
-			"against_diverged": c.AgainstDiverged, "stalled": c.Stalled, "headline": c.Headline, "warnings": filled(c.Warnings),
+			"against_diverged": c.AgainstDiverged, "stalled": c.Stalled, "headline": c.Headline, "same_runs": c.Same, "warnings": filled(c.Warnings),
 		}
 		for _, x := range []struct {
 			key string
