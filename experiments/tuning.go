@@ -52,13 +52,23 @@ func runTuned(ctx context.Context, p *plan.Plan, s *store.Store, o Options) (Sum
 		}
 	}
 	x := newRunner(tunedLayout(p, chosen), s, o)
-	for _, line := range tuning.Chosen() {
+	for _, line := range tuning.Chosen(x.nameOf) {
 		x.tracker.note("tuned: %s", line)
 	}
 	all, err := x.run(ctx)
 	all.Runs, all.Before, all.Done = all.Runs+first.Runs, all.Before+first.Before, all.Done+first.Done
 	all.Wall = time.Since(began)
 	return all, err
+}
+
+// nameOf is how the plan calls an arm.
+func (l *layout) nameOf(slug string) string {
+	for i := range l.all {
+		if l.all[i].Slug == slug {
+			return l.all[i].Name
+		}
+	}
+	return slug
 }
 
 // choose reads the tuning's runs and says which pair each arm is given, by its index
@@ -182,7 +192,7 @@ func best(trials []results.Trial, metric results.Metric) int {
 }
 
 // tuningWarnings are the doubts about a tuning that is done.
-func tuningWarnings(t *results.Tuning) (warnings []string) {
+func tuningWarnings(t *results.Tuning, name func(string) string) (warnings []string) {
 	edges := map[string][]string{} // learning rate -> arms
 	var rates, broken []string
 	for i := range t.Arms {
@@ -192,16 +202,16 @@ func tuningWarnings(t *results.Tuning) (warnings []string) {
 			if edges[chosen.LearningRate] == nil {
 				rates = append(rates, chosen.LearningRate)
 			}
-			edges[chosen.LearningRate] = append(edges[chosen.LearningRate], a.Arm)
+			edges[chosen.LearningRate] = append(edges[chosen.LearningRate], name(a.Arm))
 		}
 		if chosen.Diverged > 0 {
-			broken = append(broken, fmt.Sprintf("%s (%d of %d)", a.Arm, chosen.Diverged, chosen.N))
+			broken = append(broken, fmt.Sprintf("%s (%d of %d)", name(a.Arm), chosen.Diverged, chosen.N))
 		}
 	}
 	slices.SortStableFunc(rates, func(a, b string) int { return cmp.Compare(len(edges[b]), len(edges[a])) })
 	for _, rate := range rates {
-		warnings = append(warnings, fmt.Sprintf("tuning: the learning rate chosen for %s, %s, is at the end of the list that was tried; one beyond it might do better",
-			strings.Join(edges[rate], ", "), rate))
+		warnings = append(warnings, fmt.Sprintf("tuning: a learning rate of %s, chosen for %s, is at the end of the list that was tried; one beyond might do better",
+			rate, strings.Join(edges[rate], ", ")))
 	}
 	if len(broken) > 0 {
 		warnings = append(warnings, "tuning: even the best values tried diverged in some replicates for "+strings.Join(broken, ", "))

@@ -182,10 +182,11 @@ func (x *runner) job(u *unit, r *results.Run) (trainer.Job, error) {
 			return job, errors.New(u.replicate.broken)
 		}
 		job.Start = u.replicate.start
+		if x.Plan.Start != nil {
+			job.Start = x.Plan.Start.Params
+		}
 	}
-	if x.Diagnostics == plan.Sampled {
-		job.Diagnostics = trainer.DefaultDiagnostics
-	}
+	job.Diagnostics = trainer.Diagnostics(x.Diagnostics)
 	r.Data = data.Hash
 	job.Train, job.Validation, job.Test = trainer.Set(data.Train), trainer.Set(data.Validation), trainer.Set(data.Test)
 	return job, nil

@@ -163,6 +163,10 @@ func finite[T Element](x []T) bool {
 // sumRows forms one sum of stored terms a row, the rows of the matrix being the
 // columns of blocks whose one row is all ones.
 func (m *Multiplier[T]) sumRows(dst []T, terms Matrix[T], rows, k int, d Streams, sums *Counts) {
+	if m.nativeRows {
+		m.sumNative(dst, terms, rows, k, d, sums)
+		return
+	}
 	to, narrow := any(dst).([]float32)
 	if m.fastSums == nil || !narrow {
 		m.sumRange(dst, terms, 0, rows, k, d, sums)
@@ -171,6 +175,24 @@ func (m *Multiplier[T]) sumRows(dst []T, terms Matrix[T], rows, k int, d Streams
 	left := m.fastSums.sum(to, Matrix[float32]{any(terms.Data).([]float32), terms.Row, terms.Col}, rows, k, d, sums)
 	for i := 0; i < len(left); i += 2 {
 		m.sumRange(dst, terms, left[i], left[i+1], k, d, sums)
+	}
+}
+
+// sumNative is sumRows in binary64's own arithmetic, one term after another: infinities
+// and NaN stick, so that a finite sum had no event. Other rows are formed again, in
+// exact reals, which count.
+func (m *Multiplier[T]) sumNative(dst []T, terms Matrix[T], rows, k int, d Streams, sums *Counts) {
+	for i := range dst[:rows] {
+		var s T
+		at := i * terms.Row
+		for range k {
+			s += terms.Data[at]
+			at += terms.Col
+		}
+		dst[i] = s
+		if s-s != 0 {
+			m.ref.sumRows(dst[i:i+1], terms, k, i, d, sums)
+		}
 	}
 }
 

@@ -5,16 +5,17 @@ import "fmt"
 // Multiplier forms products of matrices in one accumulation. It owns scratch
 // memory and serves one goroutine at a time.
 type Multiplier[T Element] struct {
-	ref       reference[T]
-	fast      *fast[T]   // nil where the kernels do not serve
-	native    *native[T] // nil where the machine's own arithmetic does not serve
-	engine    *engine    // nil where a point has no quick rounding
-	sumEngine *engine    // engine for sums without products
-	fastSums  *fastSums  // and their kernels, nil where they do not serve
-	slab      []T        // a block of columns
-	line      []T        // a row of terms
-	work      Product[T] // the product being formed
-	block     block[T]   // and its block of columns
+	ref        reference[T]
+	fast       *fast[T]   // nil where the kernels do not serve
+	native     *native[T] // nil where the machine's own arithmetic does not serve
+	engine     *engine    // nil where a point has no quick rounding
+	sumEngine  *engine    // engine for sums without products
+	fastSums   *fastSums  // and their kernels, nil where they do not serve
+	nativeRows bool       // sums without products are those of the machine in binary64
+	slab       []T        // a block of columns
+	line       []T        // a row of terms
+	work       Product[T] // the product being formed
+	block      block[T]   // and its block of columns
 }
 
 // Check reports what makes the accumulation unusable.
@@ -86,6 +87,8 @@ func NewMultiplier[T Element](acc Accumulate) (*Multiplier[T], error) {
 	}
 	m.native, m.engine = newNative[T](acc), newEngine(acc, 2*24, -2*149) // products of binary32 numbers
 	m.fast, m.fastSums = newFast(m, acc), newFastSums[T](acc)
+	_, double := any(t).(float64)
+	m.nativeRows = double && acc.Order.Kind == Sequential && !acc.Through32 && newQuick(&acc.Sum).kind == quickNative64
 	acc.Product = nil
 	m.sumEngine = newEngine(acc, 24, -149) // binary32 numbers
 	return m, nil

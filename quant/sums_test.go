@@ -305,6 +305,16 @@ func TestSumRowsAgainstReference(t *testing.T) {
 	}
 }
 
+// TestSumRowsInBinary64: the machine's own additions, infinities and NaN included.
+func TestSumRowsInBinary64(t *testing.T) {
+	r := rand.New(rand.NewPCG(15, 16))
+	for range 200 {
+		for _, order := range testOrders {
+			sumRowsOnce[float64](t, r, Accumulate{Sum: Point{Format: Binary64}, Order: order})
+		}
+	}
+}
+
 func sumRowsOnce[T Element](t *testing.T, r *rand.Rand, acc Accumulate) {
 	t.Helper()
 	data := kindsOfData[r.IntN(len(kindsOfData))]

@@ -41,8 +41,8 @@ type Trial struct {
 }
 
 // Chosen says which values were chosen, arms with the same ones in one line, in
-// the order of their first arms: "learning rate 0.02, loss scale none: baseline, bf16".
-func (t *Tuning) Chosen() (lines []string) {
+// the order of their first arms, each called by name: "learning rate 0.02, loss scale none: baseline, bf16".
+func (t *Tuning) Chosen(name func(slug string) string) (lines []string) {
 	var values []string
 	arms := map[string][]string{}
 	for i := range t.Arms {
@@ -61,7 +61,7 @@ func (t *Tuning) Chosen() (lines []string) {
 		if arms[value] == nil {
 			values = append(values, value)
 		}
-		arms[value] = append(arms[value], a.Arm)
+		arms[value] = append(arms[value], name(a.Arm))
 	}
 	for _, v := range values {
 		lines = append(lines, v+": "+strings.Join(arms[v], ", "))

@@ -33,9 +33,12 @@ type engine[T quant.Element] struct {
 	scores *Scores // answers of the training steps of this epoch
 
 	batch  int // of training
+	epoch  int // the first is 1
 	train  *split
+	change *augmenter // nil: examples stay as they are
 	seed   uint64
 	pass   pass
+	moment moment // of the step to come, but for its number
 	tally  tally
 	gather []float32 // inputs of a shuffled batch
 	truth  truth     // and its targets
@@ -58,6 +61,7 @@ func newEngine[T quant.Element](job *Job, train *split, parts parts) (*engine[T]
 	e.mover = newMover(parts.rule, job.Training.Optimizer, e.params)
 	e.gather = make([]float32, e.batch*train.per)
 	e.truth = newTruth(e.batch, train)
+	e.change = newAugmenter(job.Training.Augment, job.Network.Input, job.Seed)
 	e.pass = pass{seed: random.Derive(job.Seed, random.RoundingBits), phase: phaseTraining, tally: e.tally, dropout: random.Derive(job.Seed, random.Dropout)}
 	return e, nil
 }
@@ -162,7 +166,7 @@ func (e *engine[T]) step(batch []int32, rate float64) (loss float64, what fate) 
 	p := &e.pass
 	p.step++
 	p.samples = len(batch)
-	p.watch = e.observer.due(p.step)
+	p.watch = e.observer.due(e.now(p.step))
 	y := e.forward(p, e.fetch(batch))
 	score(e.scores, y, e.truths(len(batch)))
 
@@ -173,7 +177,7 @@ func (e *engine[T]) step(batch []int32, rate float64) (loss float64, what fate) 
 	}
 	before := e.tally.gradientEvents()
 	e.backward(p, slopes)
-	if e.twin != nil && p.step%uint32(e.observer.set.Gradient) == 0 {
+	if e.observer.comparesGradients(e.now(p.step)) {
 		cosines(e.twin, e, batch, e.observer.found)
 	}
 	if e.scaler.set.Kind == DynamicScale && (e.tally.gradientEvents() != before || e.gradientNotFinite()) {
@@ -191,11 +195,23 @@ func (e *engine[T]) step(batch []int32, rate float64) (loss float64, what fate) 
 	return loss, stepTaken
 }
 
-// fetch gathers inputs and targets of a batch.
+// now is the place of a step in the training.
+func (e *engine[T]) now(step uint32) moment {
+	m := e.moment
+	m.step = step
+	return m
+}
+
+// fetch gathers inputs and targets of a batch, the inputs as they are in this epoch.
 func (e *engine[T]) fetch(batch []int32) []float32 {
 	per := e.train.per
 	for i, n := range batch {
-		copy(e.gather[i*per:][:per], e.train.inputs[int(n)*per:])
+		dst, given := e.gather[i*per:][:per], e.train.inputs[int(n)*per:][:per]
+		if e.change == nil {
+			copy(dst, given)
+		} else {
+			e.change.fill(dst, given, e.epoch, n)
+		}
 		if e.truth.values != nil {
 			width := e.train.outputs
 			copy(e.truth.values[i*width:][:width], e.train.targets[int(n)*width:])

@@ -20,6 +20,8 @@ type observer struct {
 	found    *Findings
 	before   []float64
 	at       []int
+	last     lastLooks
+	brief    bool // the step is looked at because its epoch ends: at less
 	column32 []float32
 	column64 []float64
 }
@@ -28,6 +30,7 @@ type observer struct {
 type seen struct {
 	PointFinding
 	exponents [exponentSpan]uint64
+	low, high int // fields between which there are any: [low, high)
 }
 
 func newObserver(d Diagnostics, net *Network) *observer {
@@ -44,18 +47,53 @@ func newObserver(d Diagnostics, net *Network) *observer {
 	}
 }
 
+// moment is a step's place in a training: its number from 1, how many steps of its
+// epoch came before it, whether it is the epoch's or the training's last.
+type moment struct {
+	step      uint32
+	before    uint32
+	epochEnds bool
+	runEnds   bool
+}
+
+// lastLooks are the steps in which was last looked at tensors and compared gradients.
+type lastLooks struct{ tensors, gradients uint32 }
+
 // due is the observer in steps that are looked at, else nil.
-func (w *observer) due(step uint32) *observer {
-	if w == nil || w.set.Every == 0 || step%uint32(w.set.Every) != 0 {
+func (w *observer) due(m moment) *observer {
+	if w == nil || !m.falls(w.set.Every, 0, &w.last.tensors) {
 		return nil
 	}
+	w.brief = m.step%uint32(w.set.Every) != 0
 	return w
 }
 
-// choose picks places of a tensor of n values: at most the given number, and of
-// large tensors a sixteenth, spread evenly. It returns how many.
+// comparesGradients reports whether gradients are compared in a step.
+func (w *observer) comparesGradients(m moment) bool {
+	return w != nil && m.falls(w.set.Gradient, w.set.Pause, &w.last.gradients)
+}
+
+// falls reports whether something done in every n-th step is due: never for n = 0,
+// and else also in the last step of an epoch that has not seen it, if the last time,
+// which it keeps, is more than so many steps ago or the training ends.
+func (m moment) falls(n, pause int, last *uint32) bool {
+	unseen := m.epochEnds && *last+m.before < m.step && (m.runEnds || m.step-*last > uint32(pause))
+	if n == 0 || m.step%uint32(n) != 0 && !unseen {
+		return false
+	}
+	*last = m.step
+	return true
+}
+
+// choose picks places of a tensor of n values: at most the given number, a quarter of
+// it in a brief look, and of large tensors a sixteenth, spread evenly. It returns how
+// many.
 func (w *observer) choose(n int) int {
-	count := min(w.set.Values, max(n/16, min(n, 32)))
+	values := w.set.Values
+	if w.brief {
+		values = max(values/4, 1)
+	}
+	count := min(values, max(n/16, min(n, 32)))
 	for i := range count {
 		w.at[i] = int(uint64(i) * uint64(n) / uint64(count))
 	}
@@ -105,7 +143,7 @@ func (s *seen) count(x, y, largest float64) {
 	case x == 0:
 		s.Zeros++
 	case finite:
-		s.exponents[math.Float64bits(x)>>52&(exponentSpan-1)]++
+		s.bar(int(math.Float64bits(x) >> 52 & (exponentSpan - 1)))
 	}
 	switch {
 	case y != y:
@@ -126,13 +164,30 @@ func (s *seen) count(x, y, largest float64) {
 	}
 }
 
+// bar adds a value to the bar of an exponent field.
+func (s *seen) bar(field int) {
+	if s.low == s.high {
+		s.low, s.high = field, field+1
+	}
+	s.low, s.high = min(s.low, field), max(s.high, field+1)
+	s.exponents[field]++
+}
+
+// productsOfSum is about how many products of a long sum are looked at.
+const productsOfSum = 32
+
 // lookSums recomputes some sums of a finished product of matrices, in twice the
 // bits of binary64, and counts what rounding makes of their terms.
 func lookSums[T quant.Element](w *observer, layer int, productID, sumID PointID, acc *quant.Accumulate, q *quant.Product[T]) {
 	column := columnOf[T](w, q.K)
 	f := &w.sums[layer+1][sumID]
-	for n := range min(w.set.Sums, q.I*q.J) {
-		at := int(uint64(n) * uint64(q.I*q.J) / uint64(w.set.Sums))
+	stride := max(8, q.K/productsOfSum)
+	count := w.set.Sums
+	if w.brief {
+		count = 1
+	}
+	for n := range min(count, q.I*q.J) {
+		at := int(uint64(n) * uint64(q.I*q.J) / uint64(count))
 		i, j := at/q.J, at%q.J
 		q.B.Pack(column, 1, 0, q.K, j, j+1)
 		var high, low float64
@@ -142,7 +197,7 @@ func lookSums[T quant.Element](w *observer, layer int, productID, sumID PointID,
 			if p == 0 || q.B.Padded(k, j) {
 				continue
 			}
-			if acc.Product != nil && k%8 == 0 {
+			if acc.Product != nil && k%stride == 0 {
 				y, _ := acc.Product.Round(quant.ExactProduct(a, float64(b)), 1<<31)
 				w.point(layer, productID).count(p, y, acc.Product.Format.Limits().Max)
 			}
@@ -223,10 +278,9 @@ func (w *observer) end(epoch int) {
 			name = w.net.Layers[layer].Name
 		}
 		for id := range w.points[i] {
-			if s := w.points[i][id]; s != nil {
+			if s := w.points[i][id]; s != nil && s.Values > 0 {
 				s.Epoch, s.Layer, s.Name, s.Point = epoch, layer, name, PointID(id).String()
 				w.found.Points = append(w.found.Points, s.finished())
-				w.points[i][id] = nil
 			}
 			if f := w.sums[i][id]; f.Count > 0 {
 				f.Epoch, f.Layer, f.Name, f.Point = epoch, layer, name, PointID(id).String()
@@ -244,13 +298,17 @@ func (w *observer) end(epoch int) {
 	w.updates = w.updates[:0]
 }
 
-// finished lists the histogram's bars. Subnormals share the lowest one.
+// finished lists the histogram's bars and clears the tallies. Subnormals share the
+// lowest bar.
 func (s *seen) finished() PointFinding {
 	f := s.PointFinding
-	for field, n := range s.exponents {
-		if n > 0 {
+	f.Exponents = make([]ExponentCount, 0, s.high-s.low)
+	for field := s.low; field < s.high; field++ {
+		if n := s.exponents[field]; n > 0 {
 			f.Exponents = append(f.Exponents, ExponentCount{field - 1023, n})
 		}
 	}
+	clear(s.exponents[s.low:s.high])
+	s.PointFinding, s.low, s.high = PointFinding{}, 0, 0
 	return f
 }

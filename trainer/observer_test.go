@@ -186,3 +186,49 @@ func TestHistograms(t *testing.T) {
 		t.Errorf("%v dB", snr)
 	}
 }
+
+// TestNoEpochGoesUnseen, however short it is: the default looks at tensors, sums and
+// updates in every one, and compares gradients as soon as the pause is over and in the
+// last step; without a pause in every epoch.
+func TestNoEpochGoesUnseen(t *testing.T) {
+	job := zooJob(t, 0, func(n int) Arm { return baseline(t, n) })
+	job.Training.Epochs = 60
+	job.Diagnostics = DefaultDiagnostics
+	look := func() (points, sums, updates map[int]bool, compared []int) {
+		f := mustRun(t, job).Findings
+		points, sums, updates = map[int]bool{}, map[int]bool{}, map[int]bool{}
+		for _, x := range f.Points {
+			points[x.Epoch] = true
+		}
+		for _, x := range f.Sums {
+			sums[x.Epoch] = true
+		}
+		for _, x := range f.Updates {
+			updates[x.Epoch] = true
+		}
+		for _, x := range f.Gradients {
+			if n := len(compared); n == 0 || compared[n-1] != x.Step {
+				compared = append(compared, x.Step)
+			}
+		}
+		return points, sums, updates, compared
+	}
+	steps := len(mustRun(t, job).Steps)
+	each := steps / 60
+	points, sums, updates, compared := look()
+	if len(points) != 60 || len(sums) != 60 || len(updates) != 60 {
+		t.Errorf("seen: points in %d epochs, sums in %d, updates in %d, of 60", len(points), len(sums), len(updates))
+	}
+	if n := len(compared); n < 2 || compared[n-1] != steps || compared[0] != (DefaultDiagnostics.Pause/each+1)*each {
+		t.Errorf("gradients compared in steps %v of %d, %d an epoch", compared, steps, each)
+	}
+	job.Diagnostics.Pause = 0
+	if _, _, _, compared = look(); len(compared) != 60 || compared[0] != each {
+		t.Errorf("without a pause gradients were compared in steps %v", compared)
+	}
+	// An epoch that has been looked at in passing is not looked at again at its end.
+	job.Diagnostics = Diagnostics{Gradient: each - 1}
+	if _, _, _, compared = look(); compared[0] != each-1 || compared[1] != 2*(each-1) {
+		t.Errorf("gradients compared in steps %v", compared)
+	}
+}

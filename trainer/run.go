@@ -110,6 +110,7 @@ func (r *run[T]) epoch(ctx context.Context, epoch int) error {
 	} else {
 		identity(r.order)
 	}
+	r.engine.epoch = epoch
 	r.scores.reset()
 	r.skipped0 = r.scaler.skipped
 	loss, err := r.steps(ctx, epoch)
@@ -137,6 +138,8 @@ func (r *run[T]) steps(ctx context.Context, epoch int) (float64, error) {
 		}
 		batch := r.order[done:min(done+r.batch, len(r.order))]
 		rate := r.job.Training.LearningRate.at(epoch, len(r.out.Steps)+1, r.total)
+		r.moment.before, r.moment.epochEnds = uint32(done/r.batch), done+len(batch) == len(r.order)
+		r.moment.runEnds = len(r.out.Steps)+1 == r.total
 		loss, what := r.step(batch, rate)
 		r.out.Steps = append(r.out.Steps, loss)
 		sum += float64(loss * float64(len(batch)))
@@ -167,11 +170,12 @@ func (r *run[T]) measure(ctx context.Context, epoch int, loss float64, last bool
 			return m, err
 		}
 		m.ValidationAccuracy, m.ValidationRMSE = r.answers[0].Accuracy(), r.answers[0].RMSE()
+		m.Validation = r.answers[0].byClass()
 	}
 	if r.parts.test.size() > 0 && t.EvaluateTest.due(last) {
 		m.TestLoss, err = r.evaluate(ctx, r.parts.test, phaseTest, epoch, r.answers[1])
 		m.TestAccuracy, m.TestRMSE, m.Ties = r.answers[1].Accuracy(), r.answers[1].RMSE(), r.answers[1].Ties
-		r.out.Test = r.answers[1]
+		m.Test, r.out.Test = r.answers[1].byClass(), r.answers[1]
 	}
 	return m, err
 }

@@ -11,31 +11,12 @@ import (
 // trainingKeys are the keys of [training]; an arm may override all but how data
 // is ordered and when it is evaluated, which would break the pairing.
 var (
-	trainingKeys         = []string{"optimizer", "learning_rate", "batch", "epochs", "loss", "shuffle", "evaluate"}
+	trainingKeys         = []string{"optimizer", "learning_rate", "batch", "epochs", "loss", "shuffle", "augment", "evaluate"}
 	trainingOverrideKeys = []string{"optimizer", "learning_rate", "batch", "epochs"}
 )
 
 // maxCount bounds epochs and examples so that their products fit an int.
 const maxCount = math.MaxInt32
-
-// Diagnostics say whether the runs of a plan are looked at closer while they
-// train. Looking changes no bit, so it is in no key of a run.
-type Diagnostics string
-
-// The ways of looking.
-const (
-	Sampled       Diagnostics = "sampled" // some values in some steps
-	NoDiagnostics Diagnostics = "none"
-)
-
-// readDiagnostics reads training.diagnostics of the plan.
-func (r *reader) readDiagnostics(root *node) Diagnostics {
-	n := root.table["training"]
-	if n == nil || n.table == nil {
-		return Sampled
-	}
-	return Diagnostics(r.word(n, "diagnostics", string(Sampled), string(Sampled), string(NoDiagnostics)))
-}
 
 // Predictions say whether the runs of a plan keep what they say of every test
 // example. Keeping changes no bit, so it is in no key of a run.
@@ -106,6 +87,9 @@ func (r *reader) readTraining(n *node, base trainer.Training, complete bool, key
 	t.Batch = int(r.whole(n, "batch", int64(base.Batch), 1, maxCount))
 	t.Epochs = int(r.whole(n, "epochs", int64(base.Epochs), 1, maxCount))
 	t.Shuffle = r.flag(n, "shuffle", base.Shuffle)
+	if at := n.table["augment"]; at != nil {
+		t.Augment = r.readAugment(at)
+	}
 	if at := n.table["optimizer"]; at != nil {
 		t.Optimizer = r.readOptimizer(at)
 	}
@@ -298,6 +282,9 @@ func describeTraining(t trainer.Training) string {
 	order := "shuffled"
 	if !t.Shuffle {
 		order = "in the data's order"
+	}
+	if t.Augment.Any() {
+		order += ", augmented by " + DescribeAugment(t.Augment)
 	}
 	return fmt.Sprintf("%s, %s, learning rate %s, batch %d, epochs %d, %s, test data %s, validation data %s",
 		describeLoss(t), DescribeOptimizer(t.Optimizer), DescribeRate(t.LearningRate), t.Batch, t.Epochs, order, t.EvaluateTest, t.EvaluateValidation)

@@ -115,7 +115,7 @@ func (p *Plan) TuningPlan() *Plan {
 	trial.Tuning, trial.Controls, trial.Contrasts, trial.Grids, trial.Arms = nil, nil, nil, nil, nil
 	trial.Replicates = Replicates{Count: t.Replicates, FirstSeed: t.FirstSeed}
 	trial.Claim.Metric = t.Metric
-	trial.Diagnostics, trial.Predictions = NoDiagnostics, NoPredictions
+	trial.Diagnostics, trial.Predictions = Diagnostics{}, NoPredictions
 	for _, a := range p.Arms {
 		a.Training.EvaluateTest, a.Training.EvaluateValidation = trainer.Never, trainer.LastEpoch
 		for i, pair := range t.Pairs() {
@@ -224,7 +224,7 @@ const (
 func (r *reader) tuningMetric(n *node, t *Tuning, p *Plan) {
 	words := []string{"validation accuracy", "validation loss"}
 	if len(p.Task.TargetNames) > 0 {
-		words = words[1:]
+		words[0] = "validation RMSE"
 	}
 	t.Metric = r.text(n, "metric", words[0])
 	switch at := n.table["metric"]; {

@@ -114,7 +114,7 @@ func TestTuningErrors(t *testing.T) {
 			t.Errorf("%v, want %s", all, c.want)
 		}
 	}
-	if p := load(t, regressionPlan()+tuningTable); p.Tuning.Metric != "validation loss" {
+	if p := load(t, regressionPlan()+tuningTable); p.Tuning.Metric != "validation RMSE" {
 		t.Errorf("a regression is tuned by %s", p.Tuning.Metric)
 	}
 }

@@ -87,7 +87,11 @@ func undecidedSentences(s *results.Study, undecided []*results.Comparison) (said
 		groups = alike(undecided, func(c *results.Comparison) string { return needsOfMany(c, undecided) })
 	}
 	for _, g := range groups {
-		said = append(said, names(s, g.of)+be(len(g.of))+"undecided"+g.by+".")
+		by := g.by
+		if len(g.of) > 1 {
+			by = strings.Replace(by, "would settle it", "would settle them", 1)
+		}
+		said = append(said, names(s, g.of)+be(len(g.of))+"undecided"+by+".")
 	}
 	return said
 }

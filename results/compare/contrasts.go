@@ -99,7 +99,7 @@ func (one *series) sentence() string {
 		case c.Verdict.Kind == results.Worse:
 			add("worse than the margin of "+margin, place)
 		case c.AgainstDiverged > 0:
-			add("undecided, for the other arm diverged,", one.places[i])
+			add("undecided for the other arm's divergence", one.places[i])
 		default:
 			add("undecided", place)
 		}
@@ -117,5 +117,5 @@ func (one *series) sentence() string {
 	if !strings.HasPrefix(paired, "pairs") {
 		paired += " each"
 	}
-	return fmt.Sprintf("Along %s, %s against %s is %s (%s).", one.axis, one.value, one.against, strings.Join(parts, "; "), paired)
+	return fmt.Sprintf("Along %s, %s against %s: %s (%s).", one.axis, one.value, one.against, strings.Join(parts, "; "), paired)
 }

@@ -89,7 +89,7 @@ func (v *view) procedure() (lines []string) {
 	}
 	if t := v.Tuning; t != nil {
 		lines = append(lines, plain("tuning: "+v.Claim.Tuning))
-		for _, l := range t.Chosen() {
+		for _, l := range t.Chosen(v.name) {
 			lines = append(lines, plain("- "+l))
 		}
 	}
