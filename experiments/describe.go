@@ -17,7 +17,8 @@ func describe(l *layout) *results.Study {
 		Resolved: plan.ResolveText(p, plan.ResolveOptions{Full: true}),
 		Data:     p.Task.Description, Network: networkLine(p), Training: trainingLine(p),
 		LongestSum: p.Work().LongestSum, Classes: p.Task.ClassNames,
-		Metric: p.Claim.Metric, Margin: p.Claim.Margin, Confidence: p.Claim.Confidence,
+		Regression: len(p.Task.TargetNames) > 0,
+		Metric:     p.Claim.Metric, Margin: p.Claim.Margin, Confidence: p.Claim.Confidence,
 		Claim: l.claim, Planned: p.Replicates.Count,
 	}
 	for i := range p.Arms {
@@ -60,6 +61,12 @@ func trainingLine(p *plan.Plan) string {
 	t := &p.Training
 	line := fmt.Sprintf("%s, learning rate %s", plan.DescribeOptimizer(t.Optimizer), plan.DescribeRate(t.LearningRate))
 	line += fmt.Sprintf(", batch %d, %s", t.Batch, number(t.Epochs, "epoch"))
+	if t.Augment.Any() {
+		line += ", examples augmented by " + plan.DescribeAugment(t.Augment)
+	}
+	if p.Start != nil {
+		line += "; starting from " + p.Start.Text()
+	}
 	if pre := p.Pretrain; pre != nil {
 		line += fmt.Sprintf("; after pretraining for %s on %s", number(pre.Training.Epochs, "epoch"), pre.Task.Description)
 	}

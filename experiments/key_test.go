@@ -20,6 +20,71 @@ func TestMetricLists(t *testing.T) {
 	}
 }
 
+// TestQualifiedMetricNames: what a claim makes of a class and of a rate is what
+// results knows, and says the same of it.
+func TestQualifiedMetricNames(t *testing.T) {
+	for _, c := range []struct{ claim, want string }{
+		{`metric = "test recall"` + "\nclass = \"bearing\"", results.RecallOf("test recall", 3, "bearing")},
+		{`metric = "validation recall"` + "\nclass = \"sound\"", results.RecallOf("validation recall", 0, "sound")},
+		{`metric = "test missed-fault rate"` + "\nfalse_alarm_rate = 0.02", results.MissedAt("test missed-fault rate", 0.02)},
+		{`metric = "validation missed-fault rate"` + "\nfalse_alarm_rate = 0", results.MissedAt("validation missed-fault rate", 0)},
+		{`metric = "epochs to test recall 0.50"` + "\nclass = \"bearing\"", "epochs to " + results.RecallOf("test recall", 3, "bearing") + " 0.5"},
+		{`metric = "epochs to test missed-fault rate 0.1"` + "\nfalse_alarm_rate = 0.2", "epochs to " + results.MissedAt("test missed-fault rate", 0.2) + " 0.1"},
+	} {
+		p := tinyPlan(t, "", `metric = "test accuracy"`, c.claim)
+		if m, known := results.FindMetric(p.Claim.Metric); p.Claim.Metric != c.want || !known || m.Name != c.want {
+			t.Errorf("%s became %q, known %v; want %q", c.claim, p.Claim.Metric, known, c.want)
+		}
+	}
+	for _, c := range []struct{ claim, want string }{
+		{`metric = "test recall"`, "class is missing"},
+		{`metric = "test recall"` + "\nclass = \"baering\"", `did you mean "bearing"?`},
+		{`metric = "test missed-fault rate"`, "false_alarm_rate is missing"},
+		{`metric = "test missed-fault rate"` + "\nfalse_alarm_rate = 0.3", "a rate of 0.3 is out of range"},
+		{`metric = "test missed-fault rate"` + "\nfalse_alarm_rate = \"low\"", "want a number"},
+		{`metric = "test accuracy"` + "\nclass = \"bearing\"", "it belongs to a recall"},
+		{`metric = "test recall"` + "\nclass = \"bearing\"\nfalse_alarm_rate = 0.1", "it belongs to a missed-fault rate"},
+		{`metric = "test RMSE"`, "is one of targets"},
+	} {
+		text := strings.Replace(fmt.Sprintf(tiny, ""), `metric = "test accuracy"`, c.claim, 1)
+		if _, err := plan.LoadFrom(texts{"tiny.toml": text}, "tiny.toml"); err == nil || !strings.Contains(err.Error(), c.want) || strings.Contains(err.Error(), "\n") {
+			t.Errorf("%s: %v, want %s", c.claim, err, c.want)
+		}
+	}
+}
+
+// TestQualifiedMetricsOfRuns: a real run's recall and missed faults agree with its
+// confusion of classes, and with the trainer's own count.
+func TestQualifiedMetricsOfRuns(t *testing.T) {
+	p := tinyPlan(t, "", `metric = "test accuracy"`, `metric = "test missed-fault rate"`+"\nfalse_alarm_rate = 0.2")
+	s := openStore(t)
+	if _, err := Run(context.Background(), p, s, Options{Workers: 2}); err != nil {
+		t.Fatal(err)
+	}
+	study, err := Study(p, s)
+	if err != nil || len(study.Comparisons) != 3 || study.Comparisons[0].N != 3 {
+		t.Fatalf("%+v, %v", study, err)
+	}
+	for _, r := range study.Runs {
+		last := r.Epochs[len(r.Epochs)-1]
+		for class := range r.Classes {
+			m, _ := results.FindMetric(results.RecallOf("test recall", class, "-"))
+			row := r.Confusion[class*r.Classes:][:r.Classes]
+			var all uint64
+			for _, n := range row {
+				all += n
+			}
+			if got, want := m.Final(&r), float64(row[class])/float64(all); got != want {
+				t.Errorf("%s: recall of class %d is %v, its confusion has %v", r.Name(), class, got, want)
+			}
+		}
+		m, _ := results.FindMetric(study.Metric)
+		if x := m.Final(&r); !(x >= 0 && x <= 1) || len(last.Test.Missed) != 2 || len(last.Validation.Examples) != 5 {
+			t.Errorf("%s: %v, %+v", r.Name(), x, last.Test)
+		}
+	}
+}
+
 // TestTargets: a count of epochs that a plan may claim is a metric of results, and
 // what results does not know a plan refuses.
 func TestTargets(t *testing.T) {
@@ -71,6 +136,7 @@ func TestKeys(t *testing.T) {
 		"first seed":  {"first_seed = 100", "first_seed = 90"}, // replicate 100 is still replicate 100
 		"other arm":   {`name = "bf16 stochastic"` + "\nstorage = { format", `name = "bf16 stochastic"` + "\nstorage = { overflow = \"saturate\", format"},
 		"spelling":    {`storage = "bf16"`, `storage = "bfloat16"`},
+		"no change":   {"batch = 16", "batch = 16\naugment = { shift = 0, noise = 0 }"},
 		"in the file": {"batch = 16\nepochs = 2", "epochs = 2\nbatch = 16"},
 	}
 	for name, change := range same {
@@ -90,6 +156,8 @@ func TestKeys(t *testing.T) {
 		"layers":        {"out=2", "out=3"},
 		"examples":      {"train = 48", "train = 47"},
 		"data seed":     {"data_seed = 1", "data_seed = 5"},
+		"augmentation":  {"batch = 16", "batch = 16\naugment = { shift = 2 }"},
+		"noise":         {"batch = 16", "batch = 16\naugment = { noise = 0.125 }"},
 		"format":        {`"bf16"`, `"fp16"`, `everything = "fp32"`, `everything = "fp64"`},
 	}
 	for name, change := range other {

@@ -45,16 +45,28 @@ func predictions(s *trainer.Scores) *results.Predictions {
 }
 
 func epoch(e *trainer.Epoch) results.Epoch {
-	rmse := e.TestRMSE
-	if rmse != rmse {
-		rmse = 0 // a classification, or not evaluated
-	}
 	return results.Epoch{
-		TestRMSE: rmse, TrainLoss: e.TrainLoss, TrainMetric: e.TrainAccuracy,
-		ValidationLoss: e.ValidationLoss, ValidationMetric: e.ValidationAccuracy,
-		TestLoss: e.TestLoss, TestMetric: e.TestAccuracy,
+		TrainLoss: e.TrainLoss, TrainMetric: e.TrainAccuracy, TrainRMSE: orZero(e.TrainRMSE),
+		ValidationLoss: e.ValidationLoss, ValidationMetric: e.ValidationAccuracy, ValidationRMSE: orZero(e.ValidationRMSE),
+		TestLoss: e.TestLoss, TestMetric: e.TestAccuracy, TestRMSE: orZero(e.TestRMSE),
 		Ties: e.Ties, LossScale: e.LossScale, Skipped: e.Skipped,
+		Validation: classScores(e.Validation), Test: classScores(e.Test),
 	}
+}
+
+// orZero is 0 where there is no RMSE: a classification, or not evaluated.
+func orZero(x float64) float64 {
+	if x != x {
+		return 0
+	}
+	return x
+}
+
+func classScores(s *trainer.ClassScores) *results.ClassScores {
+	if s == nil {
+		return nil
+	}
+	return &results.ClassScores{Examples: s.Examples, Right: s.Right, Missed: s.Missed}
 }
 
 func tensors(params []trainer.Param) []results.Tensor {

@@ -151,7 +151,7 @@ func comparisons(l *layout, study *results.Study) {
 	pair := func(arm, against string, margin float64, headline bool) results.Comparison {
 		return compare.Pair(compare.Question{
 			Arm: arm, Against: against, Metric: metric, Margin: margin,
-			Confidence: study.Confidence, Planned: study.Planned, LookEvery: study.Claim.LookEvery, Headline: headline, Classes: study.Classes,
+			Confidence: study.Confidence, Planned: study.Planned, LookEvery: study.Claim.LookEvery, Headline: headline, Classes: study.Classes, Regression: study.Regression,
 		}, byArm[arm], byArm[against])
 	}
 	for i := range l.Arms[1:] {

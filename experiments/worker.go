@@ -182,6 +182,9 @@ func (x *runner) job(u *unit, r *results.Run) (trainer.Job, error) {
 			return job, errors.New(u.replicate.broken)
 		}
 		job.Start = u.replicate.start
+		if x.Plan.Start != nil {
+			job.Start = x.Plan.Start.Params
+		}
 	}
 	job.Diagnostics = trainer.Diagnostics(x.Diagnostics)
 	r.Data = data.Hash

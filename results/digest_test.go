@@ -10,14 +10,21 @@ import (
 	"time"
 )
 
+func epochOf(trainLoss, train, validationLoss, validation, testLoss, test float64, ties uint64, scale float64, skipped uint64) Epoch {
+	return Epoch{
+		TrainLoss: trainLoss, TrainMetric: train, ValidationLoss: validationLoss, ValidationMetric: validation,
+		TestLoss: testLoss, TestMetric: test, Ties: ties, LossScale: scale, Skipped: skipped,
+	}
+}
+
 // sample is a run with every field of the digest away from zero.
 func sample() Run {
 	return Run{
 		Arm: "bf16-nearest", Replicate: 103, State: Stored,
 		Steps: []float64{2.5, 1.25, math.NaN()},
 		Epochs: []Epoch{
-			{2, 0.25, 1.5, 0.5, 1.75, 0.375, 3, 1024, 1, 0},
-			{1, 0.5, math.NaN(), math.NaN(), 1.25, 0.625, 4, 512, 2, 0},
+			epochOf(2, 0.25, 1.5, 0.5, 1.75, 0.375, 3, 1024, 1),
+			epochOf(1, 0.5, math.NaN(), math.NaN(), 1.25, 0.625, 4, 512, 2),
 		},
 		Counters: []PointCounts{
 			{Layer: 2, Name: "dense 16", Point: "forward.sum", Counts: Counts{1, 2, 3, 4}},
@@ -80,6 +87,8 @@ func TestDigestSees(t *testing.T) {
 		"layer name":     func(r *Run) { r.Counters[0].Name = "dense out=16" },
 		"tensor name":    func(r *Run) { r.Final[0].Name = "w" },
 		"NaN payload":    func(r *Run) { r.Steps[2] = math.Float64frombits(0xfff8000000000123) },
+		"further RMSE":   func(r *Run) { r.Epochs[1].TrainRMSE, r.Epochs[1].ValidationRMSE = 1, 2 },
+		"by class":       func(r *Run) { r.Epochs[1].Test = &ClassScores{Examples: []uint64{1}} },
 		"silent counter": func(r *Run) { r.Counters = append(r.Counters, PointCounts{Layer: 9, Point: "forward.sum"}) },
 		"counter order":  func(r *Run) { slices.Reverse(r.Counters) },
 	}

@@ -18,10 +18,12 @@ type Metric struct {
 	of     *Metric // what is to reach the target; nil: not a metric of epochs
 }
 
-// Units of differences; losses are cross-entropies with natural logarithms.
+// Units of differences; cross-entropies have natural logarithms.
 const (
-	point = "percentage point"
-	nat   = "nat"
+	point  = "percentage point"
+	nat    = "nat"
+	target = "unit of the target"
+	loss   = "unit of the loss" // of a regression's loss, whichever it is
 )
 
 // metrics is the table of what a plan may claim something about. A new metric
@@ -31,22 +33,52 @@ var metrics = []Metric{
 	{Name: "test loss", Higher: false, Data: "test", Share: false, Unit: nat, read: func(e *Epoch) float64 { return e.TestLoss }},
 	{Name: "validation accuracy", Higher: true, Data: "validation", Share: true, Unit: point, read: func(e *Epoch) float64 { return e.ValidationMetric }},
 	{Name: "validation loss", Higher: false, Data: "validation", Share: false, Unit: nat, read: func(e *Epoch) float64 { return e.ValidationLoss }},
-	{Name: "test RMSE", Higher: false, Data: "test", Share: false, Unit: "unit of the target", read: testRMSE},
+	{Name: "test RMSE", Higher: false, Data: "test", Share: false, Unit: target, read: func(e *Epoch) float64 { return rmse(e.TestRMSE, e.TestLoss, e.TestMetric) }},
+	{Name: "validation RMSE", Higher: false, Data: "validation", Share: false, Unit: target, read: func(e *Epoch) float64 { return rmse(e.ValidationRMSE, e.ValidationLoss, e.ValidationMetric) }},
 	{Name: "training accuracy", Higher: true, Data: "training", Share: true, Unit: point, read: func(e *Epoch) float64 { return e.TrainMetric }},
 	{Name: "training loss", Higher: false, Data: "training", Share: false, Unit: nat, read: func(e *Epoch) float64 { return e.TrainLoss }},
+	{Name: "training RMSE", Higher: false, Data: "training", Share: false, Unit: target, read: func(e *Epoch) float64 { return rmse(e.TrainRMSE, e.TrainLoss, e.TrainMetric) }},
 }
 
-// testRMSE is NaN of epochs without an evaluation and of classifications.
-func testRMSE(e *Epoch) float64 {
-	if e.TestLoss != e.TestLoss || e.TestMetric == e.TestMetric {
+// rmse is NaN of epochs without an evaluation, of classifications, and of runs
+// recorded before this RMSE was: an RMSE of 0 has a loss of 0.
+func rmse(x, loss, accuracy float64) float64 {
+	if loss != loss || accuracy == accuracy || x == 0 && loss != 0 {
 		return math.NaN()
 	}
-	return e.TestRMSE
+	return x
+}
+
+// RMSE are those of an epoch, NaN where there is none.
+func (e *Epoch) RMSE() (training, validation, test float64) {
+	return rmse(e.TrainRMSE, e.TrainLoss, e.TrainMetric),
+		rmse(e.ValidationRMSE, e.ValidationLoss, e.ValidationMetric),
+		rmse(e.TestRMSE, e.TestLoss, e.TestMetric)
+}
+
+// Of is the metric as it is of classes or of a regression, whose losses are no
+// cross-entropies and so not in nats.
+func (m Metric) Of(regression bool) Metric {
+	if regression && m.Unit == nat {
+		m.Unit = loss
+	}
+	return m
+}
+
+// Units are the unit in the plural, empty where there is none.
+func (m Metric) Units() string {
+	switch rest, counted := strings.CutPrefix(m.Unit, "unit "); {
+	case m.Unit == "":
+		return ""
+	case counted:
+		return "units " + rest
+	}
+	return m.Unit + "s"
 }
 
 // FindMetric returns the metric of that name; besides those that MetricNames
-// lists, "epochs to test accuracy 0.9" and its like with any of them and any
-// target.
+// lists, those of one class or of alarms (see QualifyMetric), and "epochs to test
+// accuracy 0.9" and its like with any of them and any target.
 func FindMetric(name string) (Metric, bool) {
 	name = strings.TrimSpace(name)
 	for _, m := range metrics {
@@ -54,10 +86,14 @@ func FindMetric(name string) (Metric, bool) {
 			return m, true
 		}
 	}
+	if m, known := findQualified(name); known {
+		return m, true
+	}
 	return findTarget(name)
 }
 
-// MetricNames are the names of the metrics that take no target.
+// MetricNames are the names of the metrics that take neither class, nor rate, nor
+// target.
 func MetricNames() []string {
 	names := make([]string, len(metrics))
 	for i, m := range metrics {

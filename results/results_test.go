@@ -67,6 +67,7 @@ func TestMetrics(t *testing.T) {
 	want := map[string]float64{
 		"training loss": 1, "training accuracy": 2, "validation loss": 3,
 		"validation accuracy": 4, "test loss": 5, "test accuracy": 6, "test RMSE": 7,
+		"training RMSE": 8, "validation RMSE": 9,
 	}
 	if len(want) != len(MetricNames()) {
 		t.Errorf("%d metrics, this test knows %d", len(MetricNames()), len(want))
@@ -74,8 +75,11 @@ func TestMetrics(t *testing.T) {
 	for _, name := range MetricNames() {
 		m, found := FindMetric(name)
 		of := &r
-		if name == "test RMSE" {
-			of = &Run{Epochs: []Epoch{{TestLoss: 49, TestMetric: math.NaN(), TestRMSE: 7}}}
+		if nan := math.NaN(); strings.HasSuffix(name, "RMSE") {
+			of = &Run{Epochs: []Epoch{{
+				TestLoss: 49, TestMetric: nan, TestRMSE: 7, TrainLoss: 64, TrainMetric: nan, TrainRMSE: 8,
+				ValidationLoss: 81, ValidationMetric: nan, ValidationRMSE: 9,
+			}}}
 		}
 		if got := m.Final(of); !found || got != want[name] {
 			t.Errorf("%s after the last epoch: %v, want %v", name, got, want[name])

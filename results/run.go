@@ -35,8 +35,8 @@ type PointCounts struct {
 	Counts Counts `cbor:"4,keyasint" json:"counts"`
 }
 
-// Epoch is what is known after one pass over the training data. Losses are mean
-// cross-entropies in nats, metrics fractions of one; NaN where not evaluated.
+// Epoch is what is known after one pass over the training data. Losses are means,
+// of cross-entropies in nats, metrics fractions of one; NaN where not evaluated.
 type Epoch struct {
 	TrainLoss        float64 `cbor:"1,keyasint"` // mean of step losses weighted by batch size
 	TrainMetric      float64 `cbor:"2,keyasint"`
@@ -50,6 +50,22 @@ type Epoch struct {
 	// TestRMSE is that of a regression, in the units of its targets; else 0, which
 	// leaves a run's record and digest what they were before there were regressions.
 	TestRMSE float64 `cbor:"10,keyasint,omitempty"`
+
+	// Noted since, and in no digest: they follow from the same outputs as the losses.
+	TrainRMSE      float64      `cbor:"11,keyasint,omitempty"` // of a regression, else 0
+	ValidationRMSE float64      `cbor:"12,keyasint,omitempty"` // likewise
+	Validation     *ClassScores `cbor:"13,keyasint,omitempty"` // nil: a regression, not evaluated, or not noted
+	Test           *ClassScores `cbor:"14,keyasint,omitempty"` // likewise
+}
+
+// ClassScores are the answers of one evaluation by class.
+type ClassScores struct {
+	Examples []uint64 `cbor:"1,keyasint"` // of each class
+	Right    []uint64 `cbor:"2,keyasint"` // of them, answered rightly
+	// Missed[a] counts the examples of faults, all classes but 0, that raise no alarm
+	// where at most a of those of class 0, the sound state, raise one: the threshold
+	// is the lowest at which they do. a runs to MostFalseAlarms of the sound examples.
+	Missed []uint64 `cbor:"3,keyasint,omitempty"`
 }
 
 // Tensor is a named parameter. Values hold binary32 numbers unless Wide.

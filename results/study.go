@@ -31,6 +31,7 @@ const FewForBCa = 20
 type Comparison struct {
 	Arm, Against      string // slugs
 	Metric            string
+	Regression        bool // of a regression: its losses are no cross-entropies
 	Margin            float64
 	Confidence        float64
 	Replicates        []uint64
@@ -121,6 +122,7 @@ type Study struct {
 	Training        string // one line
 	LongestSum      int
 	Metric          string
+	Regression      bool // the task has targets of values, no classes
 	Margin          float64
 	Confidence      float64
 	NoiseLow        float64    // noise floor: the range of the controls' differences from the baseline;

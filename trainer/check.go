@@ -87,5 +87,8 @@ func (j *Job) checkTraining(p *parts) (err error) {
 	if err := j.Diagnostics.check(); err != nil {
 		return err
 	}
+	if err := t.Augment.Check(j.Network.Input); err != nil {
+		return err
+	}
 	return t.LearningRate.check()
 }

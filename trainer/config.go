@@ -141,6 +141,7 @@ type Training struct {
 	LearningRate   Schedule
 	Batch, Epochs  int
 	Shuffle        bool
+	Augment        Augment // of training examples
 	// EvaluateTest and EvaluateValidation: "every epoch", "last epoch", "never".
 	EvaluateTest, EvaluateValidation When
 }

@@ -111,6 +111,11 @@
 // two gradients of its input join in the input gradient's sum point, the one that
 // comes from the lower layer first; see residualKind.
 //
+// # Augmentation
+//
+// Training examples may be shifted and made noisy, anew in every epoch and alike in
+// all arms; see Augment. Training losses and accuracies are of the altered examples.
+//
 // # Loss
 //
 // The monitored loss of a step is the binary64 mean, over the examples in order,
@@ -206,7 +211,8 @@
 // An epoch's training loss is the mean of its steps' losses weighted by batch
 // size; its training accuracy is taken from the same outputs. A regression has no
 // answers but the root of the mean squared distance. Class 0 is the sound state
-// where faults are counted that raised no alarm: see Scores.MissedFaults.
+// where faults are counted that raised no alarm, at every number of false alarms up
+// to a fifth of the sound examples: see Scores.MissedFaults.
 //
 // A run has diverged when a step's loss or, after an update, a master is not
 // finite; when the loss of an epoch is over 3 times the first step's for 2 epochs

@@ -33,7 +33,9 @@ type engine[T quant.Element] struct {
 	scores *Scores // answers of the training steps of this epoch
 
 	batch  int // of training
+	epoch  int // the first is 1
 	train  *split
+	change *augmenter // nil: examples stay as they are
 	seed   uint64
 	pass   pass
 	moment moment // of the step to come, but for its number
@@ -59,6 +61,7 @@ func newEngine[T quant.Element](job *Job, train *split, parts parts) (*engine[T]
 	e.mover = newMover(parts.rule, job.Training.Optimizer, e.params)
 	e.gather = make([]float32, e.batch*train.per)
 	e.truth = newTruth(e.batch, train)
+	e.change = newAugmenter(job.Training.Augment, job.Network.Input, job.Seed)
 	e.pass = pass{seed: random.Derive(job.Seed, random.RoundingBits), phase: phaseTraining, tally: e.tally, dropout: random.Derive(job.Seed, random.Dropout)}
 	return e, nil
 }
@@ -204,11 +207,16 @@ func (e *engine[T]) now(step uint32) moment {
 	return m
 }
 
-// fetch gathers inputs and targets of a batch.
+// fetch gathers inputs and targets of a batch, the inputs as they are in this epoch.
 func (e *engine[T]) fetch(batch []int32) []float32 {
 	per := e.train.per
 	for i, n := range batch {
-		copy(e.gather[i*per:][:per], e.train.inputs[int(n)*per:])
+		dst, given := e.gather[i*per:][:per], e.train.inputs[int(n)*per:][:per]
+		if e.change == nil {
+			copy(dst, given)
+		} else {
+			e.change.fill(dst, given, e.epoch, n)
+		}
 		if e.truth.values != nil {
 			width := e.train.outputs
 			copy(e.truth.values[i*width:][:width], e.train.targets[int(n)*width:])

@@ -163,7 +163,40 @@ func TestMissedFaults(t *testing.T) {
 	if alarmScore([]float32{1, float32(nan)}) == alarmScore([]float32{1, float32(nan)}) {
 		t.Error("NaN has a score")
 	}
+	// Every number of false alarms up to a fifth, by the counting of single examples.
+	s = &Scores{Classes: 3, Confusion: make([]uint64, 9), Unanswered: make([]uint64, 3)}
+	for i := range 200 {
+		s.Alarm, s.Truth = append(s.Alarm, float64(i*37%101)), append(s.Truth, int32(i*7%3))
+		s.Confusion[int(i*7%3)*3+i%3]++
+	}
+	by := s.byClass()
+	if sound := by.Examples[0]; by.Examples[0]+by.Examples[1]+by.Examples[2] != 200 || len(by.Missed) != int(sound)/5+1 {
+		t.Fatalf("%+v", by)
+	}
+	for a, got := range by.Missed {
+		want := uint64(200)
+		for _, threshold := range s.Alarm { // the least number of misses of any threshold that is allowed
+			raised, missed := 0, uint64(0)
+			for i, score := range s.Alarm {
+				if s.Truth[i] == 0 && score > threshold {
+					raised++
+				} else if s.Truth[i] != 0 && !(score > threshold) {
+					missed++
+				}
+			}
+			if raised <= a {
+				want = min(want, missed)
+			}
+		}
+		if got != want {
+			t.Errorf("%d false alarms allowed: %d missed, want %d", a, got, want)
+		}
+	}
 	out := mustRun(t, zooJob(t, 0, func(n int) Arm { return baseline(t, n) }))
+	last := out.Epochs[len(out.Epochs)-1]
+	if last.Test == nil || slices.Max(last.Test.Examples) == 0 {
+		t.Errorf("answers by class: %+v", last)
+	}
 	if len(out.Test.Alarm) != 7 || len(out.Test.Truth) != 7 {
 		t.Errorf("%d scores of 7 examples", len(out.Test.Alarm))
 	}

@@ -33,6 +33,8 @@ type Epoch struct {
 	Ties               uint64  // test examples whose largest output is shared
 	LossScale          float64 // S at the end of the epoch
 	Skipped            uint64  // steps the loss scale skipped
+
+	Validation, Test *ClassScores // nil: not evaluated, or a regression
 }
 
 // PointCounts are the tallies of one rounding point of one layer over all

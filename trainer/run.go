@@ -110,6 +110,7 @@ func (r *run[T]) epoch(ctx context.Context, epoch int) error {
 	} else {
 		identity(r.order)
 	}
+	r.engine.epoch = epoch
 	r.scores.reset()
 	r.skipped0 = r.scaler.skipped
 	loss, err := r.steps(ctx, epoch)
@@ -169,11 +170,12 @@ func (r *run[T]) measure(ctx context.Context, epoch int, loss float64, last bool
 			return m, err
 		}
 		m.ValidationAccuracy, m.ValidationRMSE = r.answers[0].Accuracy(), r.answers[0].RMSE()
+		m.Validation = r.answers[0].byClass()
 	}
 	if r.parts.test.size() > 0 && t.EvaluateTest.due(last) {
 		m.TestLoss, err = r.evaluate(ctx, r.parts.test, phaseTest, epoch, r.answers[1])
 		m.TestAccuracy, m.TestRMSE, m.Ties = r.answers[1].Accuracy(), r.answers[1].RMSE(), r.answers[1].Ties
-		r.out.Test = r.answers[1]
+		m.Test, r.out.Test = r.answers[1].byClass(), r.answers[1]
 	}
 	return m, err
 }

@@ -54,6 +54,17 @@ type Network struct {
 	Layers []Spec
 }
 
+// ParamShapes are names and shapes of the parameters as outcomes record them and a
+// job may start from them, without values.
+func (n *Network) ParamShapes() (all []Param) {
+	for i := range n.Layers {
+		for _, p := range n.Layers[i].Params {
+			all = append(all, Param{Name: paramName(i, p.Name), Shape: p.Shape})
+		}
+	}
+	return all
+}
+
 // Outputs is the number of values the last layer yields for one example: the
 // number of classes.
 func (n *Network) Outputs() int {

@@ -46,6 +46,7 @@ func cosines[T quant.Element](w *twin, e *engine[T], batch []int32, found *Findi
 	}
 	p := &w.pass
 	p.step, p.samples = e.pass.step, len(batch)
+	w.epoch = e.epoch
 	y := w.forward(p, w.fetch(batch))
 	_, slopes := w.judge.errors(y, w.truths(len(batch)), 1)
 	w.backward(p, slopes)

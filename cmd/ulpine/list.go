@@ -39,10 +39,14 @@ agree bit by bit exactly when their digests do.`,
 		if err != nil {
 			return err
 		}
-		if *asJSON {
-			return listJSON(cmd.OutOrStdout(), entries)
+		scores, err := newScores(s)
+		if err != nil {
+			return err
 		}
-		if err := listText(cmd.OutOrStdout(), entries); err != nil {
+		if *asJSON {
+			return listJSON(cmd.OutOrStdout(), entries, scores)
+		}
+		if err := listText(cmd.OutOrStdout(), entries, scores); err != nil {
 			return err
 		}
 		digest, err := s.Digest()
@@ -55,7 +59,7 @@ agree bit by bit exactly when their digests do.`,
 	return cmd
 }
 
-func listText(w io.Writer, entries []store.Entry) error {
+func listText(w io.Writer, entries []store.Entry, scores *scores) error {
 	if len(entries) == 0 {
 		_, err := fmt.Fprintln(w, "no runs")
 		return err
@@ -68,10 +72,14 @@ func listText(w io.Writer, entries []store.Entry) error {
 			title = e.Title
 			t.Flush()
 			fmt.Fprintf(w, "%s%s\n", blankLine(i), studyTitle(title))
-			fmt.Fprintln(t, "run\tstate\tsteps\ttraining loss\ttest accuracy\ttook\tdigest")
+			fmt.Fprintf(t, "run\tstate\tsteps\ttraining loss\t%s\ttook\tdigest\n", scores.metric(e.Study).Name)
+		}
+		score, err := scores.of(e)
+		if err != nil {
+			return err
 		}
 		fmt.Fprintf(t, "%s\t%s\t%d\t%s\t%s\t%s\t%s\n", e.Name(), stateAndEnd(e), e.Steps,
-			number(e.Last.TrainLoss, e.Epochs, "%.4f"), number(e.Last.TestMetric, e.Epochs, "%.4f"),
+			number(e.Last.TrainLoss, e.Epochs, "%.4f"), number(score, e.Epochs, "%.4f"),
 			took(e.Wall), shortDigest(e))
 	}
 	return t.Flush()
@@ -127,7 +135,7 @@ func shortDigest(e *store.Entry) string {
 
 // listJSON writes one object a line. Numbers that are not there, and those that
 // are not finite, are null: JSON has no word for them.
-func listJSON(w io.Writer, entries []store.Entry) error {
+func listJSON(w io.Writer, entries []store.Entry, scores *scores) error {
 	enc := json.NewEncoder(w)
 	for i := range entries {
 		e := &entries[i]
@@ -136,7 +144,7 @@ func listJSON(w io.Writer, entries []store.Entry) error {
 			"study": e.Title, "key": e.Key, "steps": e.Steps, "epochs": e.Epochs,
 			"stalled": e.Stalled, "code_version": e.CodeVersion, "host": e.Host,
 			"wall_seconds": e.Wall.Seconds(), "digest": nil, "training_loss": nil,
-			"test_loss": nil, "test_accuracy": nil,
+			"test_loss": nil, "test_accuracy": nil, "metric": scores.metric(e.Study).Name, "score": nil,
 		}
 		if !e.Digest.IsZero() {
 			object["digest"] = e.Digest
@@ -151,6 +159,11 @@ func listJSON(w io.Writer, entries []store.Entry) error {
 			object["training_loss"] = finite(e.Last.TrainLoss)
 			object["test_loss"] = finite(e.Last.TestLoss)
 			object["test_accuracy"] = finite(e.Last.TestMetric)
+			score, err := scores.of(e)
+			if err != nil {
+				return err
+			}
+			object["score"] = finite(score)
 		}
 		if err := enc.Encode(object); err != nil {
 			return err

@@ -7,6 +7,7 @@ import (
 	"math"
 	"os"
 	"path/filepath"
+	"slices"
 	"strconv"
 	"text/tabwriter"
 	"time"
@@ -52,7 +53,11 @@ digits of its key, with its loss curve drawn in the terminal.`,
 		run.Arm, run.Replicate = entry.Arm, entry.Replicate
 		out := cmd.OutOrStdout()
 		if *weights == "" && *curve == "" {
-			return showRun(out, run, entry.Title)
+			scores, err := newScores(s)
+			if err != nil {
+				return err
+			}
+			return showRun(out, run, entry.Title, scores.metric(entry.Study))
 		}
 		if *weights != "" {
 			if err := writeFile(*weights, func(w io.Writer) error { return writeWeights(w, run) }); err != nil {
@@ -130,7 +135,8 @@ func writeCurve(w io.Writer, r *results.Run) error {
 	return nil
 }
 
-func showRun(w io.Writer, r *results.Run, title string) error {
+// showRun prints a run with the metric that its plan claims.
+func showRun(w io.Writer, r *results.Run, title string, claimed results.Metric) error {
 	t := tabwriter.NewWriter(w, 0, 0, 2, ' ', 0)
 	fmt.Fprintf(t, "run\t%s\n", r.Name())
 	fmt.Fprintf(t, "study\t%s\n", studyTitle(title))
@@ -139,6 +145,7 @@ func showRun(w io.Writer, r *results.Run, title string) error {
 	fmt.Fprintf(t, "started\t%s, took %s on %s\n", r.Started.Format(time.DateTime), took(r.Wall), r.Host)
 	fmt.Fprintf(t, "code\t%s\n", r.CodeVersion)
 	fmt.Fprintf(t, "steps\t%d in %d epochs\n", len(r.Steps), len(r.Epochs))
+	fmt.Fprintf(t, "%s\t%s\n", claimed.Name, number(claimed.Final(r), 1, "%.4f"))
 	if r.Diverged != "" {
 		fmt.Fprintf(t, "diverged\tat step %d: %s\n", r.DivergedStep, r.Diverged)
 	}
@@ -151,31 +158,15 @@ func showRun(w io.Writer, r *results.Run, title string) error {
 	fmt.Fprintln(w)
 	drawCurve(w, r.Steps, 72, 14)
 	fmt.Fprintln(w)
-	showEpochs(w, r)
+	showEpochs(w, r, claimed)
 	showCounters(w, r)
 	showFindings(w, r.Findings)
 	return nil
 }
 
 // showEpochs prints the epochs; columns that were never evaluated are left out.
-func showEpochs(w io.Writer, r *results.Run) {
-	columns := []struct {
-		name string
-		of   func(*results.Epoch) float64
-	}{
-		{"training loss", func(e *results.Epoch) float64 { return e.TrainLoss }},
-		{"training accuracy", func(e *results.Epoch) float64 { return e.TrainMetric }},
-		{"validation loss", func(e *results.Epoch) float64 { return e.ValidationLoss }},
-		{"validation accuracy", func(e *results.Epoch) float64 { return e.ValidationMetric }},
-		{"test loss", func(e *results.Epoch) float64 { return e.TestLoss }},
-		{"test accuracy", func(e *results.Epoch) float64 { return e.TestMetric }},
-		{"loss scale", func(e *results.Epoch) float64 {
-			if e.LossScale == 1 {
-				return math.NaN()
-			}
-			return e.LossScale
-		}},
-	}
+func showEpochs(w io.Writer, r *results.Run, claimed results.Metric) {
+	columns := epochColumns(claimed)
 	t := tabwriter.NewWriter(w, 0, 0, 2, ' ', tabwriter.AlignRight)
 	fmt.Fprint(t, "epoch\t")
 	var used []int
@@ -197,6 +188,35 @@ func showEpochs(w io.Writer, r *results.Run) {
 		fmt.Fprintln(t)
 	}
 	t.Flush()
+}
+
+// epochColumn is one figure of an epoch; NaN where there is none.
+type epochColumn struct {
+	name string
+	of   func(*results.Epoch) float64
+}
+
+// epochColumns are all metrics, the claimed one last where it is none of them.
+func epochColumns(claimed results.Metric) (columns []epochColumn) {
+	names := []string{
+		"training loss", "training accuracy", "training RMSE", "validation loss", "validation accuracy",
+		"validation RMSE", "test loss", "test accuracy", "test RMSE",
+	}
+	if claimed.Target == 0 && !slices.Contains(names, claimed.Name) {
+		names = append(names, claimed.Name)
+	}
+	for _, name := range names {
+		m, _ := results.FindMetric(name)
+		columns = append(columns, epochColumn{name, func(e *results.Epoch) float64 {
+			return m.Final(&results.Run{Epochs: []results.Epoch{*e}})
+		}})
+	}
+	return append(columns, epochColumn{"loss scale", func(e *results.Epoch) float64 {
+		if e.LossScale == 1 {
+			return math.NaN()
+		}
+		return e.LossScale
+	}})
 }
 
 // showCounters prints the rounding points at which something left the range.

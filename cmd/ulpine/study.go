@@ -17,7 +17,7 @@ import (
 
 // loadPlan reads a plan; everything wrong with it is the input's fault.
 func loadPlan(name string, notices io.Writer) (*plan.Plan, error) {
-	p, err := plan.Load(name)
+	p, err := experiments.LoadPlan(name)
 	if err != nil {
 		return nil, badInput(err)
 	}

@@ -10,7 +10,7 @@ import (
 
 // planKeys are the keys of a plan.
 var planKeys = []string{
-	"title", "question", "include", "task", "network", "training", "pretrain", "replicates",
+	"title", "question", "include", "task", "network", "training", "pretrain", "start", "replicates",
 	"claim", "baseline", "arm", "grid", "contrast", "controls", "format",
 }
 
@@ -18,9 +18,12 @@ var planKeys = []string{
 // experiments/plans/first-look.toml that is not on disk is read from the copy
 // inside the program, which Notices then says. The error is a *PlanError or
 // Errors: what is wrong with the plan, one line each.
-func Load(name string) (*Plan, error) {
+func Load(name string) (*Plan, error) { return LoadWith(name, nil) }
+
+// LoadWith is Load where runs may be read from stores, for plans that start from one.
+func LoadWith(name string, stored StoredRuns) (*Plan, error) {
 	var notices []string
-	p, err := LoadFrom(disk{&notices}, name)
+	p, err := loadFrom(disk{&notices}, name, stored)
 	if err != nil {
 		return nil, err
 	}
@@ -31,13 +34,15 @@ func Load(name string) (*Plan, error) {
 // LoadFrom is Load with the texts of the plan and what it includes from source.
 // Data files are read from disk all the same, relative to the file that names
 // them.
-func LoadFrom(source Source, name string) (*Plan, error) {
+func LoadFrom(source Source, name string) (*Plan, error) { return loadFrom(source, name, nil) }
+
+func loadFrom(source Source, name string, stored StoredRuns) (*Plan, error) {
 	l := loader{source: source}
 	root, err := l.load(name, nil, nil)
 	if err != nil {
 		return nil, err
 	}
-	r := &reader{}
+	r := &reader{stored: stored}
 	p := r.build(root)
 	if len(r.errs) > 0 {
 		return nil, r.errs.inOrder()
@@ -61,7 +66,7 @@ func (r *reader) build(root *node) *Plan {
 	p.Diagnostics = r.readDiagnostics(root)
 	p.Predictions = r.readPredictions(root)
 	p.Replicates = r.readReplicates(root)
-	p.Claim = r.readClaim(root)
+	p.Claim = r.readClaim(root, &p.Task)
 	arms := armReader{r, r.readFormats(root), &p.Network, p.Training, p.Task.Train}
 	var grids []*grid
 	p.Arms, grids = arms.readArms(root)
@@ -72,6 +77,7 @@ func (r *reader) build(root *node) *Plan {
 		p.addContrasts(r.contrasts(g, p.Claim.Margin))
 	}
 	p.Pretrain = r.readPretrain(root, p)
+	p.Start = r.readStart(root, &p.Network)
 	r.checkMetric(root, p.Claim, p.Training, p.Task)
 	return p
 }
@@ -167,6 +173,7 @@ func (r *reader) readMainTraining(root *node, task *Task) trainer.Training {
 	t := r.readTraining(n, defaultTraining(), false, append(slices.Clone(trainingKeys), "diagnostics", "predictions"))
 	r.checkBatch(n, &t, task.Train)
 	r.checkTargets(n, &t, task)
+	r.checkAugment(n, &t, task)
 	return t
 }
 
@@ -182,6 +189,7 @@ func (r *reader) readPretrain(root *node, p *Plan) *Pretrain {
 		pre.Training = r.readTraining(sub, p.Training, true, trainingKeys)
 		r.checkBatch(sub, &pre.Training, pre.Task.Train)
 		r.checkTargets(sub, &pre.Training, &pre.Task)
+		r.checkAugment(sub, &pre.Training, &pre.Task)
 	}
 	r.checkSameShape(n, &p.Task, &pre.Task)
 	states, _ := pre.Training.Optimizer.States()

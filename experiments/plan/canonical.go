@@ -71,6 +71,9 @@ func (p *Plan) TaskCanonical() string {
 	if p.Pretrain != nil {
 		b.WriteString(p.Pretrain.Canonical)
 	}
+	if p.Start != nil {
+		b.WriteString(p.Start.canonical())
+	}
 	return b.String()
 }
 

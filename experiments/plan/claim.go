@@ -10,28 +10,37 @@ import (
 
 // metric is a figure a claim can be about.
 type metric struct {
-	name   string
-	better string // "higher" or "lower"
-	data   string // the examples it is measured on
+	name  string
+	data  string // the examples it is measured on
+	share bool   // a share of one
+	of    string // "classes", "targets", or of both: ""
+	key   string // of the claim that completes it: "class", "false_alarm_rate", or ""
 }
 
 // metrics are the figures that runs record; a test of the package that joins
 // plans and results holds both lists together.
 var metrics = []metric{
-	{"test accuracy", "higher", "test"},
-	{"test loss", "lower", "test"},
-	{"validation accuracy", "higher", "validation"},
-	{"validation loss", "lower", "validation"},
-	{"test RMSE", "lower", "test"},
-	{"training accuracy", "higher", "training"},
-	{"training loss", "lower", "training"},
+	{"test accuracy", "test", true, "classes", ""},
+	{"test loss", "test", false, "", ""},
+	{"validation accuracy", "validation", true, "classes", ""},
+	{"validation loss", "validation", false, "", ""},
+	{"test RMSE", "test", false, "targets", ""},
+	{"validation RMSE", "validation", false, "targets", ""},
+	{"training accuracy", "training", true, "classes", ""},
+	{"training loss", "training", false, "", ""},
+	{"training RMSE", "training", false, "targets", ""},
+	{"test recall", "test", true, "classes", classKey},
+	{"validation recall", "validation", true, "classes", classKey},
+	{"test missed-fault rate", "test", true, "classes", rateKey},
+	{"validation missed-fault rate", "validation", true, "classes", rateKey},
 }
 
-// Metrics are the names a claim may have that take no target.
-func Metrics() []string {
-	names := make([]string, len(metrics))
-	for i, m := range metrics {
-		names[i] = m.name
+// Metrics are the names a claim may have that take neither a further key nor a target.
+func Metrics() (names []string) {
+	for _, m := range metrics {
+		if m.key == "" {
+			names = append(names, m.name)
+		}
 	}
 	return names
 }
@@ -39,14 +48,14 @@ func Metrics() []string {
 const defaultConfidence = 0.95
 
 // readClaim reads [claim].
-func (r *reader) readClaim(root *node) (c Claim) {
+func (r *reader) readClaim(root *node, task *Task) (c Claim) {
 	c = Claim{Metric: metrics[0].name, Confidence: defaultConfidence}
 	n := r.required(root, "claim", "[claim] with margin = 0.01")
 	if n == nil {
 		return c
 	}
-	r.known(n, "metric", "margin", "confidence")
-	c.Metric = r.metric(n, c.Metric)
+	r.known(n, "metric", classKey, rateKey, "margin", "confidence")
+	c.Metric = r.metric(n, c.Metric, task)
 	if n.table["margin"] == nil {
 		r.fail(n.errorf("write margin = 0.01, the loss of the metric that you accept", "margin is missing"))
 	}
@@ -180,40 +189,32 @@ func (r *reader) armSlug(n *node, key string, arms []Arm) string {
 // count of epochs can be told only if there is a score for each.
 func (r *reader) checkMetric(root *node, c Claim, t trainer.Training, task Task) {
 	name, _, counts := splitTarget(c.Metric)
-	for _, m := range metrics {
-		if m.name != name {
-			continue
-		}
-		when, count := trainer.EveryEpoch, 1
-		switch m.data {
-		case "test":
-			when, count = t.EvaluateTest, task.Test
-		case "validation":
-			when, count = t.EvaluateValidation, task.Validation
-		}
-		at := root.table["claim"]
-		if at == nil || task.Source == nil {
-			return
-		}
-		if at.table["metric"] != nil {
-			at = at.table["metric"]
-		}
-		regression := len(task.TargetNames) > 0
-		switch {
-		case regression && strings.HasSuffix(m.name, "accuracy"):
-			r.fail(at.errorf(`write metric = "test RMSE"`, "%s is one of classes, but the data of %s has targets of values", m.name, task.Data))
-			return
-		case !regression && strings.HasSuffix(m.name, "RMSE"):
-			r.fail(at.errorf(`write metric = "test accuracy"`, "%s is one of targets, but the data of %s has classes", m.name, task.Data))
-			return
-		}
-		if count == 0 {
-			r.fail(at.errorf("give the task "+m.data+" data or claim another metric", "the task has no %s data", m.data))
-		} else if when == trainer.Never {
-			r.fail(at.errorf(`write training.evaluate = "last epoch"`, "the %s data is never evaluated", m.data))
-		} else if counts && when != trainer.EveryEpoch {
-			r.fail(at.errorf(`write training.evaluate = "every epoch"`,
-				"epochs to a target are counted, but the %s data is evaluated only at the %s", m.data, when))
-		}
+	m, known := findMetric(name)
+	at := root.table["claim"]
+	if !known || at == nil || task.Source == nil {
+		return
+	}
+	if at.table["metric"] != nil {
+		at = at.table["metric"]
+	}
+	when, count := trainer.EveryEpoch, 1
+	switch m.data {
+	case "test":
+		when, count = t.EvaluateTest, task.Test
+	case "validation":
+		when, count = t.EvaluateValidation, task.Validation
+	}
+	switch regression := len(task.TargetNames) > 0; {
+	case regression && m.of == "classes":
+		r.fail(at.errorf(`write metric = "test RMSE"`, "%s is one of classes, but the data of %s has targets of values", m.name, task.Data))
+	case !regression && m.of == "targets":
+		r.fail(at.errorf(`write metric = "test accuracy"`, "%s is one of targets, but the data of %s has classes", m.name, task.Data))
+	case count == 0:
+		r.fail(at.errorf("give the task "+m.data+" data or claim another metric", "the task has no %s data", m.data))
+	case when == trainer.Never:
+		r.fail(at.errorf(`write training.evaluate = "last epoch"`, "the %s data is never evaluated", m.data))
+	case counts && when != trainer.EveryEpoch:
+		r.fail(at.errorf(`write training.evaluate = "every epoch"`,
+			"epochs to a target are counted, but the %s data is evaluated only at the %s", m.data, when))
 	}
 }

@@ -11,13 +11,19 @@
 //	                    relative path starts at the folder of the file with data
 //	[network]           layers, one text each
 //	[training]          optimizer, learning_rate, batch, epochs, loss, shuffle,
-//	                    evaluate, diagnostics, predictions
+//	                    augment, evaluate, diagnostics, predictions
 //	[pretrain]          task and training: what differs from the plan's own ones in
 //	                    a training that is done first, once a replicate, under the
 //	                    baseline's arithmetic, and from whose weights every arm starts
+//	[start]             parameters that every arm, the baseline included, starts from in
+//	                    every replicate: file, an NPZ archive, and part, "final" (default)
+//	                    or "initial"; or store and run, "arm/replicate", whose final ones
+//	                    are taken. Names and shapes must be the network's; their values
+//	                    are part of the keys of runs. Not beside [pretrain]
 //	[replicates]        count, first_seed; in place of count, up_to and look_every: a
 //	                    look after every so many ends the plan once all is decided
-//	[claim]             metric (also "epochs to test accuracy 0.9"), margin, confidence
+//	[claim]             metric (also "epochs to test accuracy 0.9"), margin, confidence;
+//	                    class, of a recall; false_alarm_rate, of a missed-fault rate
 //	[format.NAME]       a number format of the plan's own: exponent, fraction, bias,
 //	                    subnormals, top; or values, the list of all there are
 //	[baseline]          settings of the arm that all others are compared with
@@ -47,6 +53,10 @@
 //	               label_smoothing of cross-entropy, width of huber
 //	learning_rate  a number or a table: start; multiply, at_epochs; or cosine = true,
 //	               end; warm_up: steps over which it rises first
+//	augment        a table: shift, places; noise, standard deviation in units of the
+//	               scaled inputs: what is done to training examples, anew in every
+//	               epoch and alike in all arms; a pretraining that says nothing of its
+//	               own does the same
 //	diagnostics    sampled (default), none, or a table: how often runs are looked at
 //	               closer while they train, which changes none of their bits; the
 //	               plan's alone. every: steps between looks at tensors, sums and

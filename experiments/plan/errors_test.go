@@ -23,7 +23,7 @@ func TestErrorsNameLineKeyReasonRemedy(t *testing.T) {
 	for name, c := range map[string]struct{ old, new, key, reason, remedy string }{
 		"unknown table":            {"[claim]", "[clam] # <-\nx = 1\n[claim]", "clam", "unknown key", `did you mean "claim"?`},
 		"unknown key":              {"epochs = 3", "epochs = 3\nepohcs = 4 # <-", "training.epohcs", "unknown key", `did you mean "epochs"?`},
-		"unknown key far":          {"epochs = 3", "epochs = 3\nzzz = 4 # <-", "training.zzz", "unknown key", "write one of batch, diagnostics, epochs"},
+		"unknown key far":          {"epochs = 3", "epochs = 3\nzzz = 4 # <-", "training.zzz", "unknown key", "write one of augment, batch, diagnostics, epochs"},
 		"unknown predictions":      {"epochs = 3", "epochs = 3\npredictions = \"store\" # <-", "training.predictions", `unknown word "store"`, `did you mean "stored"?`},
 		"unknown arm key":          {`storage = "bf16"`, `acumulate = "bf16" # <-`, "arm[1].acumulate", "unknown key", `did you mean "accumulate"?`},
 		"bare point":               {`storage = "bf16"`, `master = "bf16" # <-`, "arm[1].master", "unknown key", "write the point in full: update.master"},

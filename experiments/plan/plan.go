@@ -16,6 +16,7 @@ type Plan struct {
 	Diagnostics Diagnostics      // of all runs
 	Predictions Predictions      // whether runs keep them
 	Pretrain    *Pretrain        // nil: every arm starts from initial weights
+	Start       *Start           // or from these; nil: not
 	Replicates  Replicates
 	Claim       Claim
 

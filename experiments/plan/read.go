@@ -9,7 +9,10 @@ import (
 // reader takes typed values out of nodes and collects what is wrong with them,
 // so that one look at a plan tells everything that is wrong, not the first thing
 // only. A failed read returns the fallback.
-type reader struct{ errs Errors }
+type reader struct {
+	errs   Errors
+	stored StoredRuns // nil: none can be read
+}
 
 // fail records an error.
 func (r *reader) fail(e *PlanError) { r.errs = append(r.errs, e) }

@@ -66,6 +66,9 @@ func writeFacts(b *strings.Builder, p *Plan) {
 		fmt.Fprintf(w, "pretraining data\t%s\n", pre.Task.Description)
 		fmt.Fprintf(w, "pretraining\t%s\n", describeTraining(pre.Training))
 	}
+	if p.Start != nil {
+		fmt.Fprintf(w, "start\tall arms from %s\n", p.Start.Text())
+	}
 	last := p.Replicates.FirstSeed + uint64(p.Replicates.Count-1)
 	fmt.Fprintf(w, "replicates\t%d, seeds %d to %d\n", p.Replicates.Count, p.Replicates.FirstSeed, last)
 	if every := p.Replicates.LookEvery; every > 0 {

@@ -57,6 +57,9 @@ func writeIDX(t *testing.T, file string, dims []uint32, at func(i int) byte) {
 // writeDigits writes the four files that digits-idx.toml names, with few examples.
 func writeDigits(t *testing.T, folder string) {
 	t.Helper()
+	if err := os.MkdirAll(folder, 0o755); err != nil {
+		t.Fatal(err)
+	}
 	for _, set := range []struct {
 		name string
 		n    uint32
@@ -79,6 +82,25 @@ func writeArrays(t *testing.T, folder string) {
 		t.Fatal(err)
 	}
 	if err := os.WriteFile(filepath.Join(folder, "arrays.npz"), b.Bytes(), 0o600); err != nil {
+		t.Fatal(err)
+	}
+}
+
+// writeWeights writes the parameters that from-stored-run.toml starts from, as show
+// --weights does.
+func writeWeights(t *testing.T, file string) {
+	t.Helper()
+	p := load(t, shipped(t)["missed-faults.toml"])
+	var arrays []npy.Named
+	for _, q := range p.Network.ParamShapes() {
+		n, _ := npy.Len(q.Shape)
+		arrays = append(arrays, npy.Named{Name: "final/" + q.Name, Array: &npy.Array{Shape: q.Shape, Values: make([]float64, n)}})
+	}
+	var b bytes.Buffer
+	if err := npy.WriteNPZ(&b, arrays); err != nil {
+		t.Fatal(err)
+	}
+	if err := os.WriteFile(file, b.Bytes(), 0o600); err != nil {
 		t.Fatal(err)
 	}
 }
@@ -117,8 +139,11 @@ func TestTasksFromTables(t *testing.T) {
 // Every plan that ships loads without a warning and can be spelt out.
 func TestShippedPlansLoad(t *testing.T) {
 	folder := t.TempDir()
-	writeDigits(t, folder)
+	for _, images := range []string{"", "mnist", "fashion-mnist"} {
+		writeDigits(t, filepath.Join(folder, images))
+	}
 	writeArrays(t, folder)
+	writeWeights(t, filepath.Join(folder, "pump-weights.npz"))
 	all := shipped(t)
 	for _, name := range []string{"first-look.toml", "sixteen-bit.toml", "digits-idx.toml"} {
 		if all[name] == "" {

@@ -26,30 +26,33 @@ func splitTarget(name string) (of string, target float64, counts bool) {
 }
 
 // metric reads the claim's metric, one of the list or epochs to a target of one of
-// them. The target is spelt in one way, so that equal claims are equal texts.
-func (r *reader) metric(n *node, fallback string) string {
+// them. What completes it, a class or a rate, and the target are spelt in one way, so
+// that equal claims are equal texts.
+func (r *reader) metric(n *node, fallback string, task *Task) string {
 	text := strings.TrimSpace(r.text(n, "metric", fallback))
 	if !strings.HasPrefix(text, strings.TrimSpace(targetWords)) {
-		return r.word(n, "metric", fallback, Metrics()...)
+		before := len(r.errs)
+		m, _ := findMetric(r.word(n, "metric", fallback, allMetrics()...))
+		if len(r.errs) > before {
+			return fallback
+		}
+		return r.qualified(n, m, task)
 	}
 	fail := func(reason string, args ...any) string {
 		r.fail(n.table["metric"].errorf(`write metric = "epochs to test accuracy 0.9" or the like`, reason, args...))
 		return fallback
 	}
 	name, target, counts := splitTarget(text)
-	if !counts {
+	m, known := findMetric(name)
+	switch {
+	case !counts:
 		return fail("%q names no metric and target", text)
+	case !known || name != m.name:
+		return fail("unknown metric %q", name)
+	case !(target > 0) || math.IsInf(target, 0):
+		return fail("a target of %g is not positive and finite", target)
+	case m.share && target > 1:
+		return fail("a target of %g can never be reached: it is a share of one", target)
 	}
-	for _, m := range metrics {
-		switch {
-		case m.name != name:
-		case !(target > 0) || math.IsInf(target, 0):
-			return fail("a target of %g is not positive and finite", target)
-		case strings.HasSuffix(name, "accuracy") && target > 1:
-			return fail("a target of %g can never be reached: an accuracy is a share of one", target)
-		default:
-			return fmt.Sprintf("%s%s %v", targetWords, name, target)
-		}
-	}
-	return fail("unknown metric %q", name)
+	return fmt.Sprintf("%s%s %v", targetWords, r.qualified(n, m, task), target)
 }

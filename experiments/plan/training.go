@@ -11,7 +11,7 @@ import (
 // trainingKeys are the keys of [training]; an arm may override all but how data
 // is ordered and when it is evaluated, which would break the pairing.
 var (
-	trainingKeys         = []string{"optimizer", "learning_rate", "batch", "epochs", "loss", "shuffle", "evaluate"}
+	trainingKeys         = []string{"optimizer", "learning_rate", "batch", "epochs", "loss", "shuffle", "augment", "evaluate"}
 	trainingOverrideKeys = []string{"optimizer", "learning_rate", "batch", "epochs"}
 )
 
@@ -86,6 +86,9 @@ func (r *reader) readTraining(n *node, base trainer.Training, complete bool, key
 	t.Batch = int(r.whole(n, "batch", int64(base.Batch), 1, maxCount))
 	t.Epochs = int(r.whole(n, "epochs", int64(base.Epochs), 1, maxCount))
 	t.Shuffle = r.flag(n, "shuffle", base.Shuffle)
+	if at := n.table["augment"]; at != nil {
+		t.Augment = r.readAugment(at)
+	}
 	if at := n.table["optimizer"]; at != nil {
 		t.Optimizer = r.readOptimizer(at)
 	}
@@ -278,6 +281,9 @@ func describeTraining(t trainer.Training) string {
 	order := "shuffled"
 	if !t.Shuffle {
 		order = "in the data's order"
+	}
+	if t.Augment.Any() {
+		order += ", augmented by " + DescribeAugment(t.Augment)
 	}
 	return fmt.Sprintf("%s, %s, learning rate %s, batch %d, epochs %d, %s, test data %s, validation data %s",
 		describeLoss(t), DescribeOptimizer(t.Optimizer), DescribeRate(t.LearningRate), t.Batch, t.Epochs, order, t.EvaluateTest, t.EvaluateValidation)

@@ -17,6 +17,7 @@ type Question struct {
 	LookEvery    int      // pairs between looks; 0: one look, at Planned pairs
 	Headline     bool     // a contrast the plan asks for
 	Classes      []string // names of the classes, for what is said of them
+	Regression   bool     // there are targets of values, no classes
 }
 
 // Pair compares the runs of an arm with those of another by replicate. Runs that
@@ -27,6 +28,7 @@ func Pair(q Question, arm, against []results.Run) results.Comparison {
 	c := results.Comparison{
 		Arm: q.Arm, Against: q.Against, Metric: q.Metric.Name, Margin: q.Margin,
 		Confidence: q.Confidence, Planned: q.Planned, LookEvery: q.LookEvery, Headline: q.Headline,
+		Regression: q.Regression,
 	}
 	mine, theirs := byReplicate(arm), byReplicate(against)
 	for replicate := range mine {

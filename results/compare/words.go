@@ -9,7 +9,7 @@ import (
 )
 
 // measure spells differences of a metric in the unit a reader thinks in:
-// accuracies in percentage points, losses in nats.
+// accuracies in percentage points, cross-entropies in nats.
 type measure struct {
 	metric   results.Metric
 	decimals int // of differences and the ends of their intervals
@@ -19,7 +19,7 @@ type measure struct {
 // the tables do.
 func newMeasure(c *results.Comparison) measure {
 	m, known := results.FindMetric(c.Metric)
-	if !known {
+	if m = m.Of(c.Regression); !known {
 		m = results.Metric{Name: c.Metric, Higher: true}
 	}
 	w := measure{metric: m, decimals: 4}
@@ -63,7 +63,7 @@ func (w measure) with(figure string) string {
 	case figure == "1":
 		return figure + " " + w.metric.Unit
 	}
-	return figure + " " + w.metric.Unit + "s"
+	return figure + " " + w.metric.Units()
 }
 
 // margin is a margin with its unit, in as few digits as it needs.

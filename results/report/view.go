@@ -34,6 +34,7 @@ type armView struct {
 // newView gathers a study. The study is not altered.
 func newView(s *results.Study) *view {
 	v := &view{Study: s, words: newScoreWords(s.Metric, s.Margin)}
+	v.words.metric = v.words.metric.Of(s.Regression)
 	bySlug := map[string]*armView{}
 	next := 1 // numbers follow the plan's order and are the same in all figures
 	for _, a := range s.Arms {

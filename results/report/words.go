@@ -98,10 +98,7 @@ func (s scoreWords) unit() string {
 
 // unitWords is the unit of a difference written out, empty when there is none.
 func (s scoreWords) unitWords() string {
-	if s.metric.Unit == "" {
-		return ""
-	}
-	return s.metric.Unit + "s"
+	return s.metric.Units()
 }
 
 // value spells a value of the metric: "93.41 %".
