@@ -42,10 +42,10 @@ func (q *param[T]) leave(p *pass, sums []T) {
 	draws, counts := q.draws(p, opResidue), q.counts(p, WeightGradientResidue)
 	x := blocks.Get().(*[combineLength]float64)
 	defer blocks.Put(x)
-	odd, native := roads(point)
+	odd, _ := roads(point)
 	for at := 0; at < len(dst); at += combineLength {
 		end := min(at+combineLength, len(dst))
-		if block := x[:end-at]; (odd || native) && foldLeft(block, sums[at:end], e[at:end], g[at:end], odd) {
+		if block := x[:end-at]; odd && foldLeft(block, sums[at:end], e[at:end], g[at:end]) {
 			quant.RoundSlice(dst[at:end], block, point, draws, uint64(at), counts)
 			continue
 		}
@@ -56,25 +56,34 @@ func (q *param[T]) leave(p *pass, sums []T) {
 	}
 }
 
-// foldLeft writes (s + e) - g, rounded to odd if odd is set, else to nearest; see fold.
-// It reports whether binary64 can say so of all: only where every s + e is a binary64
-// number, so that one difference is left to round.
-func foldLeft[T quant.Element](x []float64, s, e, g []T, odd bool) bool {
+// foldLeft writes (s + e) - g, rounded to odd; see fold. It reports whether binary64 can say so of all: not of infinities and NaN.
+func foldLeft[T quant.Element](x []float64, s, e, g []T) bool {
 	for i := range x {
-		v, rest := valueAndRest(float64(s[i]), float64(e[i]), sum)
-		if rest != 0 { // NaN too: not a finite sum
+		v, rest := left(float64(s[i]), float64(e[i]), float64(g[i]))
+		if v-v != 0 {
 			return false
 		}
-		d, left := valueAndRest(v, float64(g[i]), difference)
-		if m := max(d, -d); !(m >= 0x1p-900 && m <= 0x1p1000 || m == 0) {
-			return false
-		}
-		if odd {
-			d = foldRest(d, left)
-		}
-		x[i] = d
+		x[i] = foldRest(v, rest)
 	}
 	return true
+}
+
+// left is (s + e) - g as the nearest binary64 number and what that leaves, which is
+// rounded to odd where it is no binary64 number itself. Sums of three numbers are
+// distilled: each pass replaces neighbours by their sum and its rest, from the least
+// up, until the parts do not overlap (T. J. Dekker 1971, D. M. Priest 1991, from
+// memory); three passes are enough for three parts. Not finite where a part is not.
+func left(s, e, g float64) (v, rest float64) {
+	high, middle := valueAndRest(s, e, sum)
+	high, low := valueAndRest(high, g, difference)
+	if !(high-high == 0 && middle-middle == 0 && low-low == 0) {
+		return (s + e) - g, 0
+	}
+	for range 3 {
+		middle, low = valueAndRest(middle, low, sum)
+		high, middle = valueAndRest(high, middle, sum)
+	}
+	return high, foldRest(middle, low)
 }
 
 // leaveScalar is the residue by exact reals.
@@ -84,9 +93,13 @@ func leaveScalar[T quant.Element](dst, s, e, g []T, point *quant.Point, draws qu
 		if point.Rounding.Mode == quant.Stochastic {
 			word = point.Rounding.Word(draws, first+uint64(i))
 		}
-		left := quant.Exactly(float64(s[i])).Add(quant.Exactly(float64(e[i]))).Add(quant.Exactly(-float64(g[i])))
-		v, event := point.Round(left, word)
-		dst[i] = T(v)
+		v, rest := left(float64(s[i]), float64(e[i]), float64(g[i]))
+		r := quant.Exactly(v)
+		if rest != 0 {
+			r = r.Add(quant.Exactly(rest))
+		}
+		y, event := point.Round(r, word)
+		dst[i] = T(y)
 		counts.Count(event)
 	}
 }

@@ -216,33 +216,44 @@ func TestSmallGradientsArriveInTime(t *testing.T) {
 	}
 }
 
-// TestResidueRoads: the quick road is that of exact reals, over all sizes of the three.
+// TestResidueRoads holds both roads to exact rationals, over numbers so far apart that
+// no one number holds their sum, and over those that cancel.
 func TestResidueRoads(t *testing.T) {
 	r := rand.New(rand.NewPCG(1, 2))
 	draw := func(wide int) float64 { return math.Ldexp(r.Float64()-0.5, r.IntN(2*wide+1)-wide) }
-	for _, p := range []quant.Point{point(t, "bf16"), stochastic(t, "E4M3", 9), point(t, "fp32"), point(t, "Q2.14"), point(t, "fp64")} {
-		quick := 0
-		for range 300 {
-			n, wide := 1+r.IntN(40), r.IntN(60)
-			s, e, g := make([]float64, n), make([]float64, n), make([]float64, n)
-			for i := range s {
-				s[i], e[i] = float64(float32(draw(wide))), float64(float32(draw(wide)))
-				g[i] = float64(float32(s[i] + e[i]))
+	for _, c := range []struct {
+		p     quant.Point
+		judge judgeOf
+	}{
+		{point(t, "bf16"), splitJudge(t, 8, 7, 0)},
+		{stochastic(t, "E8M3", 9), splitJudge(t, 8, 3, 9)},
+		{stochastic(t, "E11M30", 32), splitJudge(t, 11, 30, 32)},
+		{point(t, "fp64"), splitJudge(t, 11, 52, 0)},
+	} {
+		odd, _ := roads(&c.p)
+		for n := range 3000 {
+			s, e := draw(n%300), draw(n%300)
+			g := []float64{s + e, s, e, draw(n % 300), s / 3}[n%5]
+			d := quant.Draws{Seed: 3, Step: uint32(n)}
+			want := c.judge.round(ratDifference(ratSum(rat(s), rat(e)), rat(g)), d, 0)
+			x, got := make([]float64, 1), make([]float64, 1)
+			leaveScalar(got, []float64{s}, []float64{e}, []float64{g}, &c.p, d, 0, nil)
+			if got[0] != want {
+				t.Fatalf("%s: (%v + %v) - %v: %v by exact reals, want %v", c.p.String(), s, e, g, got[0], want)
 			}
-			odd, native := roads(&p)
-			x := make([]float64, n)
-			if !odd && !native || !foldLeft(x, s, e, g, odd) {
+			if !odd {
 				continue
 			}
-			quick++
-			got, want := make([]float64, n), make([]float64, n)
-			d := quant.Draws{Seed: 3, Step: uint32(n)}
-			quant.RoundSlice(got, x, &p, d, 0, nil)
-			leaveScalar(want, s, e, g, &p, d, 0, nil)
-			sameBits(t, p.String(), got, want)
+			if !foldLeft(x, []float64{s}, []float64{e}, []float64{g}) {
+				t.Fatal("the quick road is not taken")
+			}
+			quant.RoundSlice(got, x, &c.p, d, 0, nil)
+			if got[0] != want {
+				t.Fatalf("%s: (%v + %v) - %v: %v, want %v", c.p.String(), s, e, g, got[0], want)
+			}
 		}
-		if quick < 10 {
-			t.Errorf("%s: the quick road was taken %d times", p.String(), quick)
-		}
+	}
+	if v, _ := left(math.Inf(1), 1, 1); !math.IsInf(v, 1) {
+		t.Errorf("infinity leaves %v", v)
 	}
 }
