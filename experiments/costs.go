@@ -110,6 +110,9 @@ func costLayer(s *trainer.Spec) cost.Layer {
 		Name: s.Name, Kind: s.Kind, Inputs: uint64(volume(s.In)), Outputs: uint64(volume(s.Out)),
 		Work:  cost.Work(s.MACs),
 		Terms: cost.Work{Forward: uint64(s.Sums.Forward), InputGradient: uint64(s.Sums.InputGradient), WeightGradient: uint64(s.Sums.WeightGradient)},
+		Inner: cost.Inner{
+			Values: s.Inner.Values, Gradients: s.Inner.Gradients, Taken: s.Inner.Activations, Slopes: s.Inner.Slopes, Work: s.Inner.BackMACs, Terms: uint64(s.Inner.Back),
+		},
 	}
 	for _, p := range s.Params {
 		if p.Statistic {
@@ -123,7 +126,7 @@ func costLayer(s *trainer.Spec) cost.Layer {
 	}
 	if len(s.Params) > 0 { // shared scales run along the axis that is summed over
 		l.InAxis, l.OutAxis = uint64(s.In[0]), uint64(s.Out[0])
-		if len(s.Out) == 1 { // dense: it reads its input row-major
+		if len(s.Out) == 1 && l.Inner == (cost.Inner{}) { // dense: it reads its input row-major
 			l.InAxis = l.Inputs
 		}
 		if shape := s.Params[0].Shape; len(shape) > 2 && shape[1] > 0 && s.In[0] > shape[1] { // kernels over a part of the channels

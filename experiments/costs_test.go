@@ -68,7 +68,7 @@ func TestCostGroups(t *testing.T) {
 func TestCostOfEveryLayer(t *testing.T) {
 	const old = `layers = ["conv1d out=2 width=9 stride=8", "relu", "dense 5"]`
 	p := tinyPlan(t, "", old, `layers = ["conv1d out=4 width=9 stride=4", "batchnorm", "leakyrelu", "residual begin", "conv1d out=4 width=3 pad=1", "layernorm", "gelu", "residual end",
-	    "maxpool size=2", "avgpool size=2", "dropout 0.1", "tanh", "sigmoid", "globalavgpool", "dense 5"]`)
+	    "maxpool size=2", "avgpool size=2", "dropout 0.1", "tanh", "sigmoid", "attention", "recurrent units=4 output=all", "globalavgpool", "dense 5"]`)
 	r := costsOf(t, p)
 	for i, l := range r.Network.Layers {
 		if want := uint64(parameters(&p.Network.Layers[i])); l.Weights+l.Biases != want {
@@ -77,6 +77,37 @@ func TestCostOfEveryLayer(t *testing.T) {
 	}
 	if a := r.Arms[0]; a.Once.Step.Total.Against.Bits > 0.6 || a.Once.Step.Total.Against.Bits < 0.45 {
 		t.Errorf("everything stored in bf16 moves %g of FP32's bits", a.Once.Step.Total.Against.Bits)
+	}
+}
+
+// TestCostOfSeveralProducts counts a recurrent layer by hand: at 32 times, three units
+// over one input and three states; its lowest gradients are those of 31 states.
+func TestCostOfSeveralProducts(t *testing.T) {
+	const old = `layers = ["conv1d out=2 width=9 stride=8", "relu", "dense 5"]`
+	p := tinyPlan(t, "", old, `layers = ["avgpool size=4", "recurrent units=3", "dense 5"]`)
+	r := costsOf(t, p)
+	want := cost.Layer{
+		Name: "recurrent units=3 cell=elman output=last", Kind: "recurrent", Weights: 12, Biases: 3, Inputs: 32, Outputs: 3,
+		Work:  cost.Work{Forward: 12 * 32, InputGradient: 3*32 + 9*31, WeightGradient: 12 * 32},
+		Terms: cost.Work{Forward: 4, InputGradient: 3, WeightGradient: 32}, InAxis: 1, OutAxis: 3,
+		Inner: cost.Inner{Values: 3*32 - 3, Gradients: 3*32 + 3*31, Taken: 4 * 32, Slopes: 3 * 32, Work: 9 * 31, Terms: 3},
+	}
+	if diff := cmp.Diff(want, r.Network.Layers[1]); diff != "" {
+		t.Error(diff)
+	}
+	if a := r.Arms[0]; a.Once.Step.Total.Against.Bits > 0.6 || a.Once.Step.Total.Against.Bits < 0.45 {
+		t.Errorf("everything stored in bf16 moves %g of FP32's bits", a.Once.Step.Total.Against.Bits)
+	}
+	got := map[string]uint64{}
+	for _, v := range volumes(p) {
+		if v.Layer == 1 {
+			got[v.Point] = v.Values / uint64(p.Task.Train*p.Training.Epochs)
+		}
+	}
+	for point, n := range map[string]uint64{"forward.activation": 96, "forward.sum": 12 * 32, "input_gradient.sum": 9 * 31, "input_gradient.result": 189, "weight_gradient.sum": 12 * 32} {
+		if got[point] != n {
+			t.Errorf("%s: %d values of an example, want %d", point, got[point], n)
+		}
 	}
 }
 

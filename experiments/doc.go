@@ -19,7 +19,9 @@
 // worker without work in the replicates at hand opens the next one. The data of a
 // replicate is loaded once, shared by its runs, and let go after the last; never
 // are more replicates open than there are workers. No result depends on this
-// order: the bits of a run depend on its key alone.
+// order: the bits of a run depend on its key alone. A worker for which there is no
+// run, while a pretraining or the last runs are under way, helps with the larger
+// products of the others (trainer.Team), which changes no bit either.
 //
 // # Looks
 //

@@ -41,7 +41,7 @@ func (e *stopError) Unwrap() []error { return []error{ErrStopped, e.err} }
 // Options say how a plan is run. The zero value runs it on all cores and tells
 // nobody.
 type Options struct {
-	Workers     int      // runs at a time; 0: GOMAXPROCS
+	Workers     int      // runs at a time; those without one help the others; 0: GOMAXPROCS
 	Progress    Progress // may be nil
 	CodeVersion string   // noted with each run; empty: what the build says
 	Host        string   // noted with each run; empty: the machine's name
@@ -74,6 +74,7 @@ type runner struct {
 	tracker  *tracker
 	estimate *estimator
 	cancel   context.CancelFunc
+	team     *trainer.Team     // workers without a run help those that have one
 	shared   [2]*datasets.Data // of task and pretraining, where all replicates have the same
 	replicas []*replicate      // those asked for so far
 	later    []*replicate      // behind the next look
@@ -113,7 +114,7 @@ func newRunner(p *plan.Plan, s *store.Store, o Options) *runner {
 	if x.options.Workers <= 0 {
 		x.options.Workers = runtime.GOMAXPROCS(0)
 	}
-	x.options.Workers = min(x.options.Workers, x.summary.Runs)
+	x.team = trainer.NewTeam(x.options.Workers)
 	if x.options.Host == "" {
 		x.options.Host, _ = os.Hostname() // for print only
 	}

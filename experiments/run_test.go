@@ -523,3 +523,25 @@ func TestProgress(t *testing.T) {
 		t.Errorf("a changed claim is not told: %q", l.notes)
 	}
 }
+
+// TestIdleWorkersHelp: workers for which there is no run help the one that has one,
+// and leave with it.
+func TestIdleWorkersHelp(t *testing.T) {
+	p, _ := fakePlan(t, 1, true) // its pretraining is one run that all others wait for
+	helped := false
+	train := func(ctx context.Context, job trainer.Job, w trainer.Watcher) (trainer.Outcome, error) {
+		if isPretraining(job) {
+			for deadline := time.Now().Add(5 * time.Second); job.Team.Idle() < 6 && time.Now().Before(deadline); {
+				time.Sleep(time.Millisecond)
+			}
+			helped = job.Team.Idle() == 6
+		}
+		return fakeTrain(ctx, job, w)
+	}
+	if _, err := fake(context.Background(), p, openStore(t), Options{Workers: 7}, train); err != nil {
+		t.Fatal(err)
+	}
+	if !helped {
+		t.Error("six workers had nothing to do and did not help")
+	}
+}

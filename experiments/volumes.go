@@ -23,10 +23,12 @@ func volumes(p *plan.Plan) []results.Volume {
 		{Layer: -1, Point: trainer.Input.String(), Values: examples * uint64(volume(first.In))},
 		{Layer: -1, Point: trainer.LossGradient.String(), Values: examples * uint64(volume(last.Out))},
 	}
+	below := false // whether layer i forms the gradient of its input
 	for i := range p.Network.Layers {
 		l := &p.Network.Layers[i]
+		below = below || i > 0 && len(p.Network.Layers[i-1].Params) > 0
 		for _, id := range p.Network.PointsOf(i) {
-			if n := perExample(l, id)*examples + perStep(l, id)*steps; n > 0 {
+			if n := perExample(l, id, below)*examples + perStep(l, id)*steps; n > 0 {
 				all = append(all, results.Volume{Layer: i, Point: id.String(), Values: n})
 			}
 		}
@@ -34,8 +36,12 @@ func volumes(p *plan.Plan) []results.Volume {
 	return all
 }
 
-// perExample is how many values of an example a layer rounds at a point.
-func perExample(l *trainer.Spec, id trainer.PointID) uint64 {
+// perExample is how many values of an example a layer rounds at a point; below tells
+// whether the gradient of its input is formed.
+func perExample(l *trainer.Spec, id trainer.PointID, below bool) uint64 {
+	if l.Inner != (trainer.Inner{}) {
+		return perExampleWithin(l, id, below)
+	}
 	switch id {
 	case trainer.ForwardActivation, trainer.InputGradientGradient, trainer.WeightGradientGradient:
 		return uint64(volume(l.Out))
@@ -47,6 +53,41 @@ func perExample(l *trainer.Spec, id trainer.PointID) uint64 {
 		return l.MACs.InputGradient
 	case trainer.WeightGradientProduct, trainer.WeightGradientSum:
 		return l.MACs.WeightGradient
+	}
+	return 0
+}
+
+// perExampleWithin is perExample for a layer of several products.
+func perExampleWithin(l *trainer.Spec, id trainer.PointID, below bool) uint64 {
+	n := &l.Inner
+	switch id {
+	case trainer.ForwardActivation:
+		return uint64(volume(l.Out)) + n.Values
+	case trainer.ForwardOperand:
+		return n.Operands
+	case trainer.InputGradientGradient:
+		if below {
+			return n.Pulled + n.PulledInputs
+		}
+		return n.Pulled
+	case trainer.WeightGradientActivation:
+		return n.Activations
+	case trainer.WeightGradientGradient:
+		return n.Slopes
+	case trainer.ForwardProduct, trainer.ForwardSum:
+		return l.MACs.Forward
+	case trainer.WeightGradientProduct, trainer.WeightGradientSum:
+		return l.MACs.WeightGradient
+	case trainer.InputGradientProduct, trainer.InputGradientSum:
+		if below {
+			return l.MACs.InputGradient
+		}
+		return n.BackMACs
+	case trainer.InputGradientResult:
+		if below {
+			return n.Gradients + n.Inputs + uint64(volume(l.In))
+		}
+		return n.Gradients
 	}
 	return 0
 }

@@ -63,7 +63,7 @@ func (n *Network) describeLayer(i, batch int) LayerDescription {
 	l.Sums.WeightGradient *= batch
 	l.Sums.BiasGradient *= batch
 	if !n.propagates(i) {
-		l.Sums.InputGradient = 0
+		l.Sums.InputGradient = s.Inner.Back
 	}
 	for _, p := range s.Params {
 		if !p.Statistic {
@@ -78,9 +78,9 @@ func (n *Network) work(i int) uint64 {
 	m := n.Layers[i].MACs
 	total := m.Forward + m.WeightGradient
 	if n.propagates(i) {
-		total += m.InputGradient
+		return total + m.InputGradient
 	}
-	return total
+	return total + n.Layers[i].Inner.BackMACs
 }
 
 // stepCount is the number of steps of a training; a short last batch is a step.

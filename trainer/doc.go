@@ -102,6 +102,16 @@
 // elementary (their comments state the formulas). Dropout leaves evaluations alone
 // and draws its masks from a stream that arms share.
 //
+// # Layers of several products
+//
+// Attention and recurrent layers form several products at the points above; products of
+// two activations are the input gradient's where they make gradients of activations.
+// Their orders of sums and their roundings stand at attentionKind, recurrentKind,
+// elmanCell and gruCell. As lowest layers they form what they need of the input
+// gradient's points for themselves. Parts of a layer count operations and elements each
+// for itself; every part but number 0 draws its words, those of its initial weights
+// included, from a key of its own (see place).
+//
 // # Normalisations and joins
 //
 // Batch and layer normalisation sum, divide, subtract and scale one rounding at a
@@ -184,6 +194,7 @@
 //	6,7 forward.sum              14   weight_gradient.activation
 //	                                       15   weight_gradient.gradient
 //	16 to 45: normalisations, see the layer   46   forward.operand
+//	47 to 63: recurrent and attention layers, see their lists of operations
 //
 // On parameter p of a layer, 0 the weight and 1 the bias, 64 (p + 1) plus:
 //
@@ -198,7 +209,8 @@
 // Initial weights are normal with mean 0 and variance gain/fan-in, drawn in
 // binary64: word stream of weights, step 0, the site of the parameter's working
 // copy, element by element. gain is 2 where a ReLU follows before the next layer
-// with weights, 2/(1 + slope^2) where a leaky one does, else 1. Biases start at zero. Then master = R[update.master] and
+// with weights, 2/(1 + slope^2) where a leaky one does, else 1, and 1 in layers of
+// several products. Biases start at zero. Then master = R[update.master] and
 // the working copy is made. A shuffled epoch is a Fisher-Yates permutation of its
 // own, from the identity downwards: place i is exchanged with place floor(x (i+1) /
 // 2^64), x being the words 2i (high half) and 2i+1 of the stream of orders at step

@@ -46,6 +46,15 @@ func TestGradientsAgreeWithFiniteDifferences(t *testing.T) {
 		{"avgpool", []int{1, 7, 7}, []string{"conv2d out=2 size=2", "avgpool size=3", "dense 3"}},
 		{"avgpool overlapping", []int{2, 7, 6}, []string{"conv2d out=2 size=1", "avgpool size=3 stride=2x1", "dense 3"}},
 		{"avgpool along a length", []int{2, 9}, []string{"conv1d out=2 width=2", "avgpool size=3 stride=2", "dense 3"}},
+		{"attention", []int{2, 6}, []string{"conv1d out=4 width=2", "attention", "dense 3"}},
+		{"attention heads", []int{3, 5}, []string{"attention heads=3 width=6", "conv1d out=4 width=2", "attention heads=2", "dense 3"}},
+		{"causal attention", []int{2, 6}, []string{"conv1d out=3 width=2", "residual begin", "attention width=4 heads=2 mask=causal", "residual end", "dense 3"}},
+		{"attention of one position", []int{3, 1}, []string{"conv1d out=2 width=1", "attention mask=causal", "dense 3"}},
+		{"recurrent", []int{2, 6}, []string{"conv1d out=3 width=2", "recurrent units=4", "dense 3"}},
+		{"recurrent, all states", []int{2, 5}, []string{"recurrent units=3 output=all", "recurrent units=4 output=all", "dense 3"}},
+		{"recurrent of one column", []int{3, 1}, []string{"conv1d out=3 width=1", "recurrent units=3", "dense 3"}},
+		{"gated", []int{2, 6}, []string{"conv1d out=3 width=2", "recurrent units=4 cell=gru", "dense 3"}},
+		{"gated, all states", []int{2, 5}, []string{"recurrent units=3 cell=gru output=all", "recurrent units=4 cell=gru output=all", "dense 3"}},
 	}
 	for _, c := range cases {
 		t.Run(c.name, func(t *testing.T) { checkGradients(t, c.input, c.layers) })

@@ -23,9 +23,19 @@ type bench[T quant.Element] struct {
 	place
 	spec    *Spec
 	below   *edge[T]
-	above   *edge[T]   // nil until the layer is built, unless the layer makes its own
-	batch   int        // capacity of the edges, in examples
-	earlier []layer[T] // the layers below
+	above   *edge[T]    // nil until the layer is built, unless the layer makes its own
+	batch   int         // capacity of the edges, in examples
+	earlier []layer[T]  // the layers below
+	given   []*param[T] // parameters that another part of the layer has made
+	team    *Team       // who may help with products
+}
+
+// param is parameter number of the layer: the one given, or a new one.
+func (b *bench[T]) param(number int) *param[T] {
+	if b.given != nil {
+		return b.given[number]
+	}
+	return newParam(b, number)
 }
 
 // builder constructs a layer.
@@ -58,6 +68,8 @@ var kinds = []*kind{
 	&globalAvgPoolKind,
 	&batchNormKind,
 	&layerNormKind,
+	&attentionKind,
+	&recurrentKind,
 	&residualKind,
 	&flattenKind,
 	&dropoutKind,

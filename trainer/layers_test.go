@@ -28,6 +28,9 @@ var zoo = []struct {
 	{"signals", []int{2, 15}, []string{
 		"conv1d out=4 width=3 dilation=2", "gelu", "conv1d out=4 width=3 groups=4", "tanh", "globalavgpool", "sigmoid", "dense 3",
 	}},
+	{"sequences", []int{2, 6}, []string{
+		"attention", "attention heads=2 width=4 mask=causal", "recurrent units=3 output=all", "recurrent units=4 cell=gru output=all", "recurrent units=4 cell=gru", "relu", "dense 3",
+	}},
 }
 
 // zooJob is a short training of one of them.

@@ -77,7 +77,7 @@ type bindings[T quant.Element] struct {
 func newLinear[T quant.Element](b *bench[T], s shape, bind func(l *linear[T]) bindings[T]) (*linear[T], error) {
 	l := &linear[T]{
 		place: b.place, below: b.below, above: b.above,
-		weight: newParam(b, 0), bias: newParam(b, 1),
+		weight: b.param(0), bias: b.param(1),
 		shape: s,
 	}
 	l.chooseOperands()
@@ -86,7 +86,7 @@ func newLinear[T quant.Element](b *bench[T], s shape, bind func(l *linear[T]) bi
 		l.regrouped = make([]T, b.batch*s.units*s.outer)
 	}
 	l.results = make([]T, max(b.batch*s.units*s.outer, b.batch*s.channels*s.inner, s.units*s.terms))
-	if err := l.makeMultipliers(); err != nil {
+	if err := l.makeMultipliers(b.team); err != nil {
 		return nil, err
 	}
 	l.makeProducts(bind(l))
@@ -111,15 +111,20 @@ func (l *linear[T]) chooseOperands() {
 	l.activation = own(l.again.activation, l.operand)
 }
 
-func (l *linear[T]) makeMultipliers() (err error) {
+func (l *linear[T]) makeMultipliers(team *Team) (err error) {
 	if l.forwardMul, err = multiplier[T](l.set.Forward); err != nil {
 		return err
 	}
 	if l.belowMul, err = multiplier[T](l.set.InputGradient.Sums); err != nil {
 		return err
 	}
-	l.mul, err = multiplier[T](l.set.WeightGradient.Sums)
-	return err
+	if l.mul, err = multiplier[T](l.set.WeightGradient.Sums); err != nil {
+		return err
+	}
+	for _, m := range []*quant.Multiplier[T]{l.forwardMul, l.belowMul, l.mul} {
+		m.Share(team)
+	}
+	return nil
 }
 
 // makeProducts builds the three products once: converting a matrix to an
@@ -145,6 +150,12 @@ func (l *linear[T]) params() []*param[T] { return []*param[T]{l.weight, l.bias} 
 
 // forward computes y = R[activation](sum over k of weight x, then + bias).
 func (l *linear[T]) forward(p *pass) {
+	y := l.products(p)
+	round(l.place, p, ForwardActivation, opActivation, y, y, &l.set.Activation, p.first*uint64(l.above.per))
+}
+
+// products writes the finished sums, bias included, to the edge above.
+func (l *linear[T]) products(p *pass) []T {
 	columns := p.samples * l.outer
 	l.takeInputs(p)
 	if l.frames.forward != nil {
@@ -168,7 +179,7 @@ func (l *linear[T]) forward(p *pass) {
 
 	y := l.above.values(p.samples)
 	groupByExample(y, results, p.samples, l.units, l.outer)
-	round(l.place, p, ForwardActivation, opActivation, y, y, &l.set.Activation, p.first*uint64(l.above.per))
+	return y
 }
 
 func (l *linear[T]) backward(p *pass, below bool) {
@@ -229,7 +240,7 @@ func (l *linear[T]) weightSums(p *pass, left quant.Matrix[T], terms int) {
 			lookSums(p.watch, l.layer, WeightGradientProduct, WeightGradientSum, &set.Sums, q)
 		}
 	}
-	l.weight.takeGradient(p, results)
+	l.weight.storeGradient(p, results)
 }
 
 // biasSums forms the sums of the gradient itself and stores them.
@@ -237,18 +248,14 @@ func (l *linear[T]) biasSums(p *pass, left quant.Matrix[T], terms int) {
 	sums := l.counts(p, WeightGradientSum)
 	db := l.results[:l.units]
 	l.mul.SumRows(db, left, l.units, terms, l.streams(p, opWeightSum.of(1)), sums)
-	l.bias.takeGradient(p, db)
+	l.bias.storeGradient(p, db)
 }
 
 // inputBackward computes the gradient of the edge below.
 func (l *linear[T]) inputBackward(p *pass) {
 	n := p.samples
 	set := &l.set.InputGradient
-	if set.Gradient != nil {
-		g := l.above.gradients(n)
-		l.gradientFactor = roundAlong(l.place, p, InputGradientGradient, opInputOperand, l.belowGradient[:len(g)], g,
-			quant.Shape{Outer: n * l.groups, Axis: l.units / l.groups, Inner: l.outer}, set.Gradient, 0)
-	}
+	l.takeGradients(p)
 	if l.again.weight != nil {
 		l.takeWeightsAgain(p)
 	}
@@ -272,6 +279,17 @@ func (l *linear[T]) inputBackward(p *pass) {
 	dx := l.below.gradients(n)
 	groupByExample(dx, results, n, l.channels, l.inner)
 	round(l.place, p, InputGradientResult, opInputResult, dx, dx, &set.Result, 0)
+}
+
+// takeGradients rounds the gradient for the input gradient, where the arm sets it.
+func (l *linear[T]) takeGradients(p *pass) {
+	point := l.set.InputGradient.Gradient
+	if point == nil {
+		return
+	}
+	g := l.above.gradients(p.samples)
+	l.gradientFactor = roundAlong(l.place, p, InputGradientGradient, opInputOperand, l.belowGradient[:len(g)], g,
+		quant.Shape{Outer: p.samples * l.groups, Axis: l.units / l.groups, Inner: l.outer}, point, 0)
 }
 
 // groupByExample copies [unit][sample][position] to [sample][unit][position].

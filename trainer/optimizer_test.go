@@ -103,7 +103,7 @@ func checkUpdates(t *testing.T, o Optimizer) {
 	for i := range arm.Layers[0].States {
 		arm.Layers[0].States[i] = a.state
 	}
-	q := &param[float32]{place: place{0, &arm.Layers[0]}, shape: []int{3, 5}, number: 0, master: newArray[float32](3, 5), working: newArray[float32](3, 5), gradient: newArray[float32](3, 5)}
+	q := &param[float32]{place: place{set: &arm.Layers[0]}, shape: []int{3, 5}, number: 0, master: newArray[float32](3, 5), working: newArray[float32](3, 5), gradient: newArray[float32](3, 5)}
 	a.q = q
 	k, _ := findRule(o)
 	m := newMover(k, o, []*param[float32]{q})
@@ -165,7 +165,7 @@ func TestCompensationKeepsSmallSteps(t *testing.T) {
 		for i := range arm.Layers[0].States {
 			arm.Layers[0].States[i] = point(t, "fp32")
 		}
-		q := &param[float32]{place: place{0, &arm.Layers[0]}, shape: []int{1}, master: newArray[float32](1), working: newArray[float32](1), gradient: newArray[float32](1)}
+		q := &param[float32]{place: place{set: &arm.Layers[0]}, shape: []int{1}, master: newArray[float32](1), working: newArray[float32](1), gradient: newArray[float32](1)}
 		k, _ := findRule(o)
 		m := newMover(k, o, []*param[float32]{q})
 		q.master.data[0], q.gradient.data[0] = 1, -0x1p-12
@@ -187,7 +187,7 @@ func TestClippingCutsTheNorm(t *testing.T) {
 	arm := Everything(point(t, "fp32"), 1, 0)
 	var params []*param[float32]
 	for i, g := range [][]float32{{3, 0}, {0, 4, 12}} {
-		q := &param[float32]{place: place{0, &arm.Layers[0]}, number: i, shape: []int{len(g)}, master: newArray[float32](len(g)), working: newArray[float32](len(g)), gradient: newArray[float32](len(g))}
+		q := &param[float32]{place: place{set: &arm.Layers[0]}, number: i, shape: []int{len(g)}, master: newArray[float32](len(g)), working: newArray[float32](len(g)), gradient: newArray[float32](len(g))}
 		copy(q.gradient.data, g)
 		params = append(params, q)
 	}

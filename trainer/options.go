@@ -2,6 +2,7 @@ package trainer
 
 import (
 	"fmt"
+	"slices"
 	"sort"
 	"strconv"
 	"strings"
@@ -64,6 +65,20 @@ func (o *options) pair(key string, least, fallback int, both bool) (rows, column
 func (o *options) number(key string, least, fallback int) (int, error) {
 	n, _, err := o.pair(key, least, fallback, false)
 	return n, err
+}
+
+// word reads an option that is one of some words, the first where it is not given.
+func (o *options) word(key string, known ...string) (string, error) {
+	o.asked = append(o.asked, key)
+	text, ok := o.keyed[key]
+	if !ok {
+		return known[0], nil
+	}
+	delete(o.keyed, key)
+	if !slices.Contains(known, text) {
+		return "", unknownWord(key, text, known)
+	}
+	return text, nil
 }
 
 // only reads the single bare value of a layer such as "dense 16".

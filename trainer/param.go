@@ -23,7 +23,7 @@ type param[T quant.Element] struct {
 	states   []array[T]
 
 	// What rounding the gradient left, of the last step taken and of this one; empty
-	// where it is not kept. See takeGradient.
+	// where it is not kept. See storeGradient.
 	residue     array[T]
 	nextResidue []T
 
@@ -87,7 +87,7 @@ func (q *param[T]) drawInitial(values []float64, seed uint64, gain float64) {
 		}
 		return
 	}
-	d := quant.Draws{Seed: random.Derive(seed, random.Weights), Site: site(q.layer, opWorking.of(q.number))}
+	d := quant.Draws{Seed: q.key(random.Derive(seed, random.Weights)), Site: site(q.layer, opWorking.of(q.number))}
 	deviation := math.Sqrt(gain / float64(q.fanIn))
 	for i := range values {
 		values[i] = float64(deviation * d.Normal(uint64(i)))

@@ -43,12 +43,15 @@ func (p *pass) draws(layer int, o operation) quant.Draws {
 // streams lie far below.
 const groupStreams = 1 << 16
 
+// partStreams is the number of the stream of part 0 of a layer, beyond those of groups.
+const partStreams = 1 << 31
+
 // group is the streams of group n of a layer's channels: those given for the first,
-// for the others the same under a key derived from the rounding key and n, because
-// rows are counted within a group.
+// for the others the same under a key derived from theirs and n, because rows are
+// counted within a group.
 func (p *pass) group(n int, s quant.Streams) quant.Streams {
 	if n > 0 {
-		s.Row.Seed = random.Derive(p.seed, random.Stream(groupStreams+n))
+		s.Row.Seed = random.Derive(s.Row.Seed, random.Stream(groupStreams+n))
 		s.Column.Seed = s.Row.Seed
 	}
 	return s
@@ -59,13 +62,28 @@ func (p *pass) group(n int, s quant.Streams) quant.Streams {
 type place struct {
 	layer int
 	set   *Arithmetic
+	// part is the number of a part of a layer that forms several products: the
+	// projections of an attention layer, the times of a recurrent one. Every part but
+	// the first draws its words from a key of its own, because all parts count
+	// operations and elements as a layer does.
+	part int
 }
 
-func (pl place) draws(p *pass, o operation) quant.Draws { return p.draws(pl.layer, o) }
-
-func (pl place) streams(p *pass, o operation) quant.Streams {
-	return streams(p.draws(pl.layer, o))
+// key is the key that a part draws under, where the layer draws under seed.
+func (pl place) key(seed uint64) uint64 {
+	if pl.part > 0 {
+		return random.Derive(seed, random.Stream(partStreams+pl.part))
+	}
+	return seed
 }
+
+func (pl place) draws(p *pass, o operation) quant.Draws {
+	d := p.draws(pl.layer, o)
+	d.Seed = pl.key(d.Seed)
+	return d
+}
+
+func (pl place) streams(p *pass, o operation) quant.Streams { return streams(pl.draws(p, o)) }
 
 // counts is where the events of a point go; nil when they are not counted.
 func (pl place) counts(p *pass, id PointID) *quant.Counts {

@@ -166,6 +166,38 @@ const (
 // opForwardOperand is the activation as operand of the forward product.
 const opForwardOperand operation = 46
 
+// Operations of recurrent layers, beside those of their sums.
+const (
+	opStateJoin   operation = 47 // and 48: gradients of one state
+	opStateJoined operation = 49
+	opStateResult operation = 50
+	opSlope       operation = 51
+	opKept        operation = 52 // these and the following: cells with gates
+	opApart       operation = 53
+	opShift       operation = 54
+	opNewState    operation = 55
+	opUpdateBack  operation = 56
+	opStateShare  operation = 57
+	opNewBack     operation = 58
+	opResetBack   operation = 59
+	opKeptBack    operation = 60
+	opInputJoin   operation = 61 // and 62: gradients of one input
+	opInputJoined operation = 63
+)
+
+// Operations of attention layers, beside those of their products.
+const (
+	opScore       operation = 47
+	opNumerator   operation = 48
+	opTotal       operation = 49 // and 50
+	opProbability operation = 51
+	opAgree       operation = 52 // and 53
+	opAgreeSum    operation = 54 // and 55
+	opUnlike      operation = 56
+	opWeighted    operation = 57
+	opUnscaled    operation = 58
+)
+
 // Operations on parameter number p of a layer add 64 (p + 1).
 const (
 	opWorking        operation = 0

@@ -13,7 +13,7 @@ func bareLayer(t *testing.T, arm Arm, input []int, text string, samples int) (la
 	net := network(t, input, text)
 	spec := &net.Layers[0]
 	below, above := newEdge[float32](samples, spec.In), newEdge[float32](samples, spec.Out)
-	l, err := builderOf[float32](findKind(spec.Kind))(&bench[float32]{place: place{0, &arm.Layers[0]}, spec: spec, below: below, above: above, batch: samples})
+	l, err := builderOf[float32](findKind(spec.Kind))(&bench[float32]{place: place{set: &arm.Layers[0]}, spec: spec, below: below, above: above, batch: samples})
 	if err != nil {
 		t.Fatal(err)
 	}

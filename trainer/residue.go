@@ -20,8 +20,8 @@ import "ulpine/quant"
 //
 // (a power of two under the defaults), before the next step.
 
-// takeGradient stores a parameter's gradient, finished sums s.
-func (q *param[T]) takeGradient(p *pass, sums []T) {
+// storeGradient stores a parameter's gradient, finished sums s.
+func (q *param[T]) storeGradient(p *pass, sums []T) {
 	set := &q.set.WeightGradient
 	if set.Residue == nil {
 		round(q.place, p, WeightGradientResult, opWeightResult.of(q.number), q.gradient.data, sums, &set.Result, 0)

@@ -20,7 +20,16 @@ type Job struct {
 	// Train must hold examples; Validation and Test may be empty.
 	Train, Validation, Test Set
 	Diagnostics             Diagnostics
+	// Team may help with the products of linear layers; nil: nobody does. It changes
+	// no bit.
+	Team *Team
 }
+
+// Team is who may help with a training's products: goroutines that are in its Help.
+type Team = quant.Team
+
+// NewTeam returns a team of up to most helpers at a time.
+func NewTeam(most int) *Team { return quant.NewTeam(most) }
 
 // Watcher is told how far a run is: training steps done, of all it may take. A
 // run that diverges stops short of total.

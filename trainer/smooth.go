@@ -20,16 +20,22 @@ type curve struct {
 }
 
 // tanhKind: f = tanh x, f' = 1 - y^2.
-var tanhKind = smoothKind("tanh", curve{elementary.Tanh, func(_, y float64) float64 { return 1 - float64(y*y) }})
+var tanhKind = smoothKind("tanh", tanhCurve)
 
 // sigmoidKind: f = 1/(1 + exp(-x)), f' = y (1 - y).
-var sigmoidKind = smoothKind("sigmoid", curve{elementary.Sigmoid, func(_, y float64) float64 { return float64(y * (1 - y)) }})
+var sigmoidKind = smoothKind("sigmoid", sigmoidCurve)
 
 // geluKind is the exact form of the Gaussian error linear unit (D. Hendrycks,
 // K. Gimpel: Gaussian error linear units, arXiv:1606.08415): with h = erfc(-x/sqrt
 // 2)/2, f = x h and f' = h + x exp(-x^2/2)/sqrt(2 pi). 1 + erf(z) is taken as
 // erfc(-z), which keeps its figures for negative z.
 var geluKind = smoothKind("gelu", curve{gelu, geluSlope})
+
+// The curves that recurrent cells bend by as well.
+var (
+	tanhCurve    = curve{elementary.Tanh, func(_, y float64) float64 { return 1 - float64(y*y) }}
+	sigmoidCurve = curve{elementary.Sigmoid, func(_, y float64) float64 { return float64(y * (1 - y)) }}
+)
 
 const (
 	rootHalf      = 0.70710678118654752440084436210484903928 // 1/sqrt(2)
@@ -83,15 +89,18 @@ func newSmooth[T quant.Element](b *bench[T], f curve) layer[T] {
 }
 
 func (l *smooth[T]) forward(p *pass) {
-	x, y := l.below.values(p.samples), l.above.values(p.samples)
-	first := l.above.first(p)
+	bend(l.place, p, &l.f, l.above.values(p.samples), l.below.values(p.samples), l.block, l.above.first(p))
+}
+
+// bend writes R[activation](f(x)) to y, whose element 0 is number first.
+func bend[T quant.Element](pl place, p *pass, f *curve, y, x []T, scratch []float64, first uint64) {
 	for at := 0; at < len(x); at += combineLength {
 		end := min(at+combineLength, len(x))
-		block := l.block[:end-at]
+		block := scratch[:end-at]
 		for i, v := range x[at:end] {
-			block[i] = l.f.value(float64(v))
+			block[i] = f.value(float64(v))
 		}
-		round(l.place, p, ForwardActivation, opActivation, y[at:end], block, &l.set.Activation, first+uint64(at))
+		round(pl, p, ForwardActivation, opActivation, y[at:end], block, &pl.set.Activation, first+uint64(at))
 	}
 }
 
@@ -100,14 +109,18 @@ func (l *smooth[T]) backward(p *pass, below bool) {
 		return
 	}
 	x, y := l.below.values(p.samples), l.above.values(p.samples)
-	dy, dx := l.above.gradients(p.samples), l.below.gradients(p.samples)
-	for at := 0; at < len(x); at += combineLength {
-		end := min(at+combineLength, len(x))
-		block := l.block[:end-at]
+	unbend(l.place, p, &l.f, opInputResult, l.below.gradients(p.samples), l.above.gradients(p.samples), x, y, l.block)
+}
+
+// unbend writes R[input_gradient.result](dy f'(x)) to dx.
+func unbend[T quant.Element](pl place, p *pass, f *curve, o operation, dx, dy, x, y []T, scratch []float64) {
+	for at := 0; at < len(y); at += combineLength {
+		end := min(at+combineLength, len(y))
+		block := scratch[:end-at]
 		for i := range block {
-			block[i] = float64(float64(dy[at+i]) * l.f.slope(float64(x[at+i]), float64(y[at+i])))
+			block[i] = float64(float64(dy[at+i]) * f.slope(float64(x[at+i]), float64(y[at+i])))
 		}
-		round(l.place, p, InputGradientResult, opInputResult, dx[at:end], block, &l.set.InputGradient.Result, uint64(at))
+		round(pl, p, InputGradientResult, o, dx[at:end], block, &pl.set.InputGradient.Result, uint64(at))
 	}
 }
 

@@ -13,11 +13,15 @@ type Spec struct {
 	Sums   Lengths
 	MACs   Work
 	Points []PointID // the rounding points this layer computes with
+	Inner  Inner
 
 	window   window  // geometry of convolutions and pools
 	partner  int     // a residual end's begin
 	momentum float64 // of running statistics
 	groups   int     // of a convolution's channels
+	heads    int     // of an attention layer
+	causal   bool    // no position attends to a later one
+	cell     string  // of a recurrent layer
 	number   float64 // the one decimal of a kind that has one, a binary32 number
 }
 
@@ -46,6 +50,22 @@ type Lengths struct {
 // padding included, because an emulated padded term costs what any other costs.
 type Work struct {
 	Forward, InputGradient, WeightGradient uint64
+}
+
+// Inner is what a layer of several products does between its input and its output,
+// for one example; zero in all others.
+type Inner struct {
+	Values    uint64 // rounded at forward.activation besides the output
+	Gradients uint64 // rounded at input_gradient.result besides the input's gradient
+	Inputs    uint64 // and, where the input's gradient is formed, in joining it
+	// Values rounded as operands where the arm sets them: at forward.operand, at
+	// weight_gradient.activation and .gradient, at input_gradient.gradient and there for
+	// the input's gradient.
+	Operands, Activations, Slopes, Pulled, PulledInputs uint64
+	// Back is the longest sum, BackMACs the work, of the gradients that are formed even
+	// where the layer's own input needs none.
+	Back     int
+	BackMACs uint64
 }
 
 // Network is a checked list of layers.
@@ -100,8 +120,9 @@ func (n *Network) propagates(i int) bool {
 // PointsOf lists the rounding points that layer i computes with where it stands.
 func (n *Network) PointsOf(i int) []PointID {
 	var used []PointID
+	back := n.propagates(i) || n.Layers[i].Inner.Gradients > 0
 	for _, id := range n.Layers[i].Points {
-		if !id.inputGradient() || n.propagates(i) {
+		if !id.inputGradient() || back {
 			used = append(used, id)
 		}
 	}
@@ -111,8 +132,12 @@ func (n *Network) PointsOf(i int) []PointID {
 // gain is the factor in front of 1/fan-in in the variance of layer i's initial
 // weights: 2 where a ReLU follows before the next weights, because it halves the
 // second moment of what passes, 2/(1 + slope^2) where a leaky one does (He et al.,
-// Delving deep into rectifiers, ICCV 2015, section 2.2), else 1.
+// Delving deep into rectifiers, ICCV 2015, section 2.2), else 1; 1 in layers of several
+// products.
 func (n *Network) gain(i int) float64 {
+	if n.Layers[i].Inner.Gradients > 0 {
+		return 1
+	}
 	for _, above := range n.Layers[i+1:] {
 		if len(above.Params) > 0 {
 			break

@@ -93,6 +93,10 @@ class Net:
             eps = f32(keys.get("epsilon", 1e-5))
             w, b = self.weight(rng, *shape, centre=1.0), self.weight(rng, *shape)
             step = lambda x, t: F.layer_norm(x, tuple(shape), w, b, eps)
+        elif kind == "recurrent":
+            step = self.recurrent(int(keys["units"]), keys.get("cell", "elman"), keys.get("output", "last"), shape[0], rng)
+        elif kind == "attention":
+            step = self.attention(int(keys.get("heads", 1)), int(keys.get("width", shape[0])), keys.get("mask", "none"), shape[0], rng)
         elif kind == "residual":
             if bare[0] == "begin":
                 cell = []
@@ -112,6 +116,41 @@ class Net:
             return shape
         with torch.no_grad():
             return list(step(torch.ones(2, *shape), False).shape[1:])
+
+    def recurrent(self, units, cell, output, channels, rng):
+        """An Elman cell, or the gated unit of Cho et al. 2014, column by column."""
+        gates = [(self.weight(rng, units, channels + units), self.weight(rng, units)) for _ in range(3 if cell == "gru" else 1)]
+
+        def step(x, t):
+            h, states = torch.zeros(x.shape[0], units), []
+            for column in x.unbind(2):
+                on = lambda gate, state: F.linear(torch.cat([column, state], 1), *gate)
+                if cell == "gru":
+                    z, r = torch.sigmoid(on(gates[0], h)), torch.sigmoid(on(gates[1], h))
+                    h = z * h + (1 - z) * torch.tanh(on(gates[2], r * h))
+                else:
+                    h = torch.tanh(on(gates[0], h))
+                states.append(h)
+            return torch.stack(states, 2) if output == "all" else h
+
+        return step
+
+    def attention(self, heads, width, mask, channels, rng):
+        """Self-attention over the positions of [channels, length]."""
+        w, b = self.weight(rng, 3 * width, channels), self.weight(rng, 3 * width)
+        wo, bo = self.weight(rng, channels, width), self.weight(rng, channels)
+
+        def step(x, t):
+            rows = x.transpose(1, 2)  # [n, length, channels]
+            n, length = rows.shape[:2]
+            q, k, v = (part.reshape(n, length, heads, -1).transpose(1, 2) for part in F.linear(rows, w, b).split(width, 2))
+            score = q @ k.transpose(2, 3) * f32(1 / np.sqrt(width // heads))
+            if mask == "causal":
+                score = score.masked_fill(torch.ones(length, length).triu(1) > 0, -torch.inf)
+            mixed = (torch.softmax(score, 3) @ v).transpose(1, 2).reshape(n, length, width)
+            return F.linear(mixed, wo, bo).transpose(1, 2)
+
+        return step
 
     def __call__(self, x, training=True):
         for step in self.steps:
@@ -194,6 +233,13 @@ def cases(r):
     case("layernorm", [a, 2 * c], ["conv1d out=3 width=4", "layernorm epsilon=0.001", "gelu", "dense 5", "layernorm", "dense 3"])
     case("residual", [a, c, c], ["conv2d out=4 size=3 pad=1", "residual begin", "conv2d out=4 size=3 pad=1", "tanh",
                                  "residual begin", "sigmoid", "residual end", "residual end", "globalavgpool", "dense 3"])
+    case("recurrent", [a, b], [f"conv1d out={a} width=2", f"recurrent units={b}", "dense 3"])
+    case("recurrent, all states", [a, b], [f"recurrent units={a} output=all", f"recurrent units={b} output=all", "dense 3"])
+    case("gated", [a, b], [f"conv1d out={a} width=2", f"recurrent units={b} cell=gru", "dense 3"])
+    case("gated, all states", [a, b], [f"recurrent units={a} cell=gru output=all", f"recurrent units={b} cell=gru output=all", "dense 3"])
+    case("attention", [a, c], [f"conv1d out={b} width=2", f"attention heads=1 width={a}", "dense 3"])
+    case("attention heads", [a, c], ["attention heads=2 width=6", f"conv1d out={b} width=2", f"attention heads=3 width={3 * a}", "globalavgpool", "dense 3"])
+    case("causal attention", [4, c], ["conv1d out=4 width=1", "residual begin", "layernorm", "attention heads=2 mask=causal", "residual end", "dense 3"])
     mlp = [f"dense {c}", "tanh", f"dense {a}"]
     case("label smoothing", [b], mlp, label_smoothing=0.125)
     case("squared error", [b], mlp, loss="mean-squared-error")

@@ -227,7 +227,7 @@ func (a *Assignment) check(at string, n *Network, i int, o *Optimizer, e *fieldE
 		a.Operand.check(at+".operand", true, e)
 	}
 	a.Forward.check(at+".forward", l.Weights > 0 && l.Work.Forward > 0, e)
-	a.InputGradient.check(at+".input_gradient", l.Weights > 0 && l.Work.InputGradient > 0 && n.propagates(i), e)
+	a.InputGradient.check(at+".input_gradient", l.Weights > 0 && l.Work.InputGradient > 0 && n.backwards(i), e)
 	a.WeightGradient.check(at+".weight_gradient", trained, e)
 	a.Step.check(at+".step", trained, e)
 	a.Master.check(at+".master", trained, e)

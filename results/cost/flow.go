@@ -21,7 +21,7 @@ func (b *bound) flows(i int, p Phase, batch, cache uint64) []flow {
 	switch {
 	case p == Forward:
 		return b.forwardFlows(i, batch, cache)
-	case p == InputGradient && b.net.propagates(i):
+	case p == InputGradient && b.net.backwards(i):
 		return b.inputFlows(i, batch, cache)
 	case p == WeightGradient && l.parameters() > 0:
 		return b.weightFlows(i, batch, cache)
@@ -72,7 +72,17 @@ func (b *bound) forwardFlows(i int, batch, cache uint64) []flow {
 			left: &w[0], right: &x, partial: &partial,
 		}.sweep()
 	}
-	return append(w, x, y, partial)
+	return append(w, x, y, partial, b.inner(i, batch, 2))
+}
+
+// inner are the values between a layer's own products, innerGradients their gradients;
+// both written and read, or only read.
+func (b *bound) inner(i int, batch, sweeps uint64) flow {
+	return flow{Activations, batch * b.net.Layers[i].Inner.Values, b.acts[i+1], 0, sweeps}
+}
+
+func (b *bound) innerGradients(i int, batch uint64) flow {
+	return flow{Gradients, batch * b.net.Layers[i].Inner.Gradients, b.grads[i], 0, 2}
 }
 
 // inputFlows: DX[terms, B positions] = W'[terms, units] DY[units, B positions],
@@ -96,7 +106,13 @@ func (b *bound) inputFlows(i int, batch, cache uint64) []flow {
 			left: &w, right: &dy, partial: &partial,
 		}.sweep()
 	}
-	all := []flow{w, dy, dx, partial}
+	all := []flow{w, dy}
+	if b.net.propagates(i) {
+		all = append(all, dx, partial)
+	}
+	if l.several() {
+		all = append(all, b.inner(i, batch, 1), b.innerGradients(i, batch))
+	}
 	if l.remembers() {
 		all = append(all, b.input(i, batch))
 	}
@@ -115,6 +131,7 @@ func (b *bound) weightFlows(i int, batch, cache uint64) []flow {
 			left: &dy, right: &x, partial: &partial,
 		}.sweep()
 	}
+	x.values, dy.values = batch*l.taken(), batch*l.slopes()
 	all := append(dw, x, dy, partial)
 	if r := a.WeightGradient.Residue; r != nil { // read and written
 		all = append(all, parameters(l, State, r.Format)...)

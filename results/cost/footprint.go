@@ -7,6 +7,7 @@ func (b *bound) memory(batch, inferenceBatch uint64) Memory {
 		if b.kept(i) {
 			m.keep(i-1, b.input(i, batch))
 		}
+		m.keep(i, b.inner(i, batch, 1))
 		b.keepParameters(i, &m)
 	}
 	last := len(b.net.Layers) - 1

@@ -33,7 +33,27 @@ type Layer struct {
 	// convolution's channels (of one group). 0: through the whole tensor.
 	InAxis  uint64 `json:"in_axis,omitempty"`
 	OutAxis uint64 `json:"out_axis,omitempty"`
+	Inner   Inner  `json:"inner,omitzero"`
 }
+
+// Inner is what a layer of several products (attention, a recurrent cell) has between
+// them, for one example: values that are written and read again in its formats of
+// activations and gradients, and kept for the backward phases. Its products are
+// charged without tiles: each tensor once.
+type Inner struct {
+	Values    uint64 `json:"values,omitempty"`
+	Gradients uint64 `json:"gradients,omitempty"`
+	// Taken and Slopes are the activations and the gradients that weight gradients read.
+	Taken  uint64 `json:"taken,omitempty"`
+	Slopes uint64 `json:"slopes,omitempty"`
+	// Work and Terms are those of gradients between the products, which are formed even
+	// where nothing below the layer trains.
+	Work  uint64 `json:"work,omitempty"`
+	Terms uint64 `json:"terms,omitempty"`
+}
+
+// several reports whether the layer has more than one product.
+func (l *Layer) several() bool { return l.Inner != Inner{} }
 
 // Work is a number for each of the three products of a layer.
 type Work struct {
@@ -79,7 +99,7 @@ func (l *Layer) remembers() bool {
 	case "dense", "conv1d", "conv2d", "avgpool", "averagepool", "globalpool", "globalavgpool", "residual", "join", "add", "flatten", "reshape":
 		return false
 	}
-	return true
+	return !l.several() // what these need is among their inner values
 }
 
 // additive reports whether the layer's work is additions or comparisons: pools
@@ -102,18 +122,45 @@ func (l *Layer) additive() bool {
 func (l *Layer) product() (units, terms, positions uint64, ok bool) {
 	groups := max(l.Groups, 1)
 	terms = l.Terms.Forward
-	if l.Weights == 0 || terms == 0 || l.Weights%(terms*groups) != 0 || l.Work.Forward%l.Weights != 0 {
+	if l.several() || l.Weights == 0 || terms == 0 || l.Weights%(terms*groups) != 0 || l.Work.Forward%l.Weights != 0 {
 		return 0, 0, 0, false
 	}
 	return l.Weights / terms / groups, terms, l.Work.Forward / l.Weights, true
 }
 
-// inputProducts is the number of multiply-adds of the input gradient.
-func (l *Layer) inputProducts() uint64 {
-	if l.Weights == 0 {
-		return l.Work.InputGradient
+// inputProducts is the number of multiply-adds of the input gradient, and the length of
+// its sums; below tells whether the gradient of the layer's own input is wanted.
+func (l *Layer) inputProducts(below bool) (products, terms uint64) {
+	switch {
+	case !below:
+		return l.Inner.Work, l.Inner.Terms
+	case l.Weights == 0 || l.several():
+		return l.Work.InputGradient, l.Terms.InputGradient
 	}
-	return min(l.Work.InputGradient, l.Work.Forward)
+	return min(l.Work.InputGradient, l.Work.Forward), l.Terms.InputGradient
+}
+
+// taken and slopes are the activations and gradients that enter products with weights.
+func (l *Layer) taken() uint64 {
+	if l.several() {
+		return l.Inner.Taken
+	}
+	return l.Inputs
+}
+
+func (l *Layer) slopes() uint64 {
+	if l.several() {
+		return l.Inner.Slopes
+	}
+	return l.Outputs
+}
+
+// biasTerms is the length of the sum of a bias gradient over a batch.
+func (l *Layer) biasTerms(batch uint64) uint64 {
+	if l.several() {
+		return batch * l.Terms.WeightGradient
+	}
+	return ceilDiv(batch*l.Outputs, l.Biases)
 }
 
 // propagates reports whether layer i forms an input gradient: only if a layer
@@ -126,6 +173,10 @@ func (n *Network) propagates(i int) bool {
 	}
 	return false
 }
+
+// backwards reports whether layer i has an input gradient phase: its own input's
+// gradient, or those between its products.
+func (n *Network) backwards(i int) bool { return n.propagates(i) || n.Layers[i].several() }
 
 // Parameters is the number of trained values of the network.
 func (n *Network) Parameters() (count uint64) {
@@ -224,6 +275,7 @@ func (n *Network) check(batch uint64, e *fieldErrors) {
 		for _, count := range []uint64{
 			l.Weights, l.Biases, l.Inputs, l.Outputs, l.Work.Forward, l.Work.InputGradient, l.Work.WeightGradient,
 			l.Terms.Forward, l.Terms.InputGradient, l.Terms.WeightGradient,
+			l.Inner.Values, l.Inner.Gradients, l.Inner.Taken, l.Inner.Slopes, l.Inner.Work, l.Inner.Terms,
 		} {
 			if count > maxCount/max(batch, 1) {
 				e.add(at, fmt.Sprintf("%q has a count of %d under a batch of %d", l.Name, count, batch),

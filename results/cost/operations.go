@@ -71,7 +71,7 @@ func (b *bound) operations(i int, p Phase, batch uint64) operations {
 	case l.view():
 	case p == Forward:
 		return b.forwardWork(i, batch)
-	case p == InputGradient && b.net.propagates(i):
+	case p == InputGradient && b.net.backwards(i):
 		return b.inputWork(i, batch)
 	case p == WeightGradient && l.parameters() > 0:
 		return b.weightWork(i, batch)
@@ -92,11 +92,15 @@ func (b *bound) forwardWork(i int, batch uint64) operations {
 	o.sums(&s, batch*l.Work.Forward, l.Terms.Forward, l.InAxis)
 	if l.Biases > 0 {
 		outer := s.outer()
-		o.add(s.adder(outer), batch*l.Outputs)
-		o.draw(&outer, batch*l.Outputs)
+		biased := l.Biases * l.biasTerms(batch)
+		if !l.several() {
+			biased = batch * l.Outputs
+		}
+		o.add(s.adder(outer), biased)
+		o.draw(&outer, biased)
 	}
-	o.draw(a.Operand, batch*l.Inputs)
-	o.draw(&a.Activation, batch*l.Outputs)
+	o.draw(a.Operand, batch*l.taken())
+	o.draw(&a.Activation, batch*(l.Outputs+l.Inner.Values))
 	return o
 }
 
@@ -108,10 +112,15 @@ func (b *bound) inputWork(i int, batch uint64) operations {
 	if o.a, o.b = b.inputOperands(i); l.Weights == 0 {
 		o.a = o.b
 	}
-	o.sums(&s, batch*l.inputProducts(), l.Terms.InputGradient, l.OutAxis)
+	products, terms := l.inputProducts(b.net.propagates(i))
+	o.sums(&s, batch*products, terms, l.OutAxis)
 	o.draw(again(a.InputGradient.First, &a.Weight), l.Weights)
-	o.draw(a.InputGradient.Gradient, batch*l.Outputs)
-	o.draw(&a.InputGradient.Result, batch*l.Inputs)
+	o.draw(a.InputGradient.Gradient, batch*l.slopes())
+	results := l.Inner.Gradients
+	if b.net.propagates(i) {
+		results += l.Inputs
+	}
+	o.draw(&a.InputGradient.Result, batch*results)
 	return o
 }
 
@@ -124,10 +133,10 @@ func (b *bound) weightWork(i int, batch uint64) operations {
 	o.a, o.b = b.weightOperands(i)
 	o.sums(s, batch*l.Work.WeightGradient, batch*l.Terms.WeightGradient, batch)
 	if l.Biases > 0 {
-		o.adds(s, l.Biases, ceilDiv(batch*l.Outputs, l.Biases))
+		o.adds(s, l.Biases, l.biasTerms(batch))
 	}
-	o.draw(again(a.WeightGradient.First, a.Operand), batch*l.Inputs)
-	o.draw(a.WeightGradient.Gradient, batch*l.Outputs)
+	o.draw(again(a.WeightGradient.First, a.Operand), batch*l.taken())
+	o.draw(a.WeightGradient.Gradient, batch*l.slopes())
 	o.draw(&a.WeightGradient.Result, l.parameters())
 	if r := a.WeightGradient.Residue; r != nil { // sum + residue, and what its rounding leaves
 		o.add(s.adder(s.outer()), 2*l.parameters())
