@@ -304,8 +304,21 @@ func browseSwitches(t *testing.T, b *browser) {
 	if n := eval[int](t, b, singles); n != 0 {
 		t.Errorf("%d single replicates stay", n)
 	}
+	b.choice(t)
 	b.crosshair(t)
 	b.quiet(t, "switches")
+}
+
+// choice goes through the figures of which one is shown at a time.
+func (b *browser) choice(t *testing.T) {
+	t.Helper()
+	shown := `return [...document.querySelectorAll('[data-choice]')].filter(e => e.getClientRects().length).map(e => e.dataset.choice)`
+	for _, id := range []string{"kept-signal", "gradient-direction", "update-bias", "signal-map", "kept-signal"} {
+		eval[bool](t, b, `document.querySelector('input[value="`+id+`"]').click(); return true`)
+		if got := eval[[]string](t, b, shown); len(got) != 1 || got[0] != id {
+			t.Errorf("after %s was chosen, %v is shown", id, got)
+		}
+	}
 }
 
 // crosshair moves over the first curve with the pointer and with keys, and

@@ -291,8 +291,37 @@ func inventDiagnosis(s *results.Study) {
 	}
 	d.Histograms = append(d.Histograms, d.Histograms[0]) // a later epoch of the first point
 	d.Histograms[4].Epoch = 9
-	s.Diagnoses = []results.Diagnosis{d, {Arm: "unknown"}}
+	inventQualities(&d)
+	baseline := results.Diagnosis{Arm: "baseline", Replicate: 101}
+	inventQualities(&baseline)
+	s.Diagnoses = []results.Diagnosis{d, {Arm: "unknown"}, baseline}
 	s.Ranges = []results.Range{{Format: "E4M3", Least: -9, Normal: -6, Largest: 8}, {Format: "E5M2", Least: -16, Normal: -14, Largest: 15}}
+}
+
+// inventQualities lets a run lose more from epoch to epoch; what cannot be told,
+// and what lost nothing, is among it.
+func inventQualities(d *results.Diagnosis) {
+	add := func(kind results.QualityKind, layer int, name, at string, epoch int, value float64) {
+		d.Qualities = append(d.Qualities, results.Quality{Kind: kind, Layer: layer, Name: name, At: at, Epoch: epoch, Count: 256, Value: value})
+	}
+	for e := 1; e <= inventedEpochs; e++ {
+		if e == 5 { // not looked at
+			continue
+		}
+		t := float64(e)
+		add(results.SignalToNoise, -1, "input", "input", e, math.Inf(1))
+		add(results.SignalToNoise, -1, "loss", "loss.gradient", e, 20-t)
+		for k, layer := range []string{"conv1d out=6 width=9 stride=2 pad=0", "conv1d out=8", "dense 16", "dense 5"} {
+			add(results.SignalToNoise, 2*k, layer, "forward.weight", e, 40-t)
+			add(results.SignalToNoise, 2*k, layer, "update.master", e, 30-2*t)
+			add(results.SumsKept, 2*k, layer, "forward.sum", e, 1-1e-5*t*float64(k))
+			add(results.UpdatesKept, 2*k, layer, "weight", e, 1-0.06*t)
+			add(results.UpdateBias, 2*k, layer, "weight", e, -0.001*t)
+			add(results.UpdatesStill, 2*k, layer, "weight", e, 0.01*t)
+			add(results.GradientCosine, 2*k, layer, "bias", e, 1-1e-9*t)
+		}
+		add(results.GradientCosine, 6, "dense 5", "weight", e, math.NaN())
+	}
 }
 
 // gridStudy is a study of a grid: splits by rounding by order of sums.

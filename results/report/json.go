@@ -69,7 +69,7 @@ func (v *view) json(w io.Writer) error {
 		top["costs"] = v.Costs
 	}
 	top["volumes"], top["ranges"] = append([]results.Volume{}, v.Volumes...), append([]results.Range{}, v.Ranges...)
-	top["diagnoses"] = append([]results.Diagnosis{}, v.Diagnoses...)
+	top["diagnoses"] = diagnosisObjects(v.Diagnoses)
 	top.float("margin", v.Margin)
 	top.float("confidence", v.Confidence)
 	if v.noiseMeasured() {
@@ -257,6 +257,24 @@ func epochObjects(es []results.Epoch) []object {
 		o.float("test_metric", e.TestMetric)
 		o.float("loss_scale", e.LossScale)
 		out = append(out, o)
+	}
+	return out
+}
+
+// diagnosisObjects are closer looks at runs, each figure with what it was taken from.
+func diagnosisObjects(ds []results.Diagnosis) []object {
+	out := []object{}
+	for _, d := range ds {
+		kept := []object{}
+		for _, q := range d.Qualities {
+			o := object{"kind": q.Kind, "layer": q.Layer, "name": q.Name, "at": q.At, "epoch": q.Epoch, "step": q.Step, "count": q.Count}
+			o.float("value", q.Value)
+			kept = append(kept, o)
+		}
+		out = append(out, object{
+			"arm": d.Arm, "replicate": d.Replicate, "histograms": append([]results.Histogram{}, d.Histograms...),
+			"epochs": append([]results.EpochCounts{}, d.Epochs...), "qualities": kept,
+		})
 	}
 	return out
 }

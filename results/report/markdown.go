@@ -57,6 +57,9 @@ var markdownTable = []struct {
 	{"What left the range of its format", func(v *view) []block {
 		return append(v.figureBlocks("range-map", "range-by-epoch"), tableBlock(v.rangeTable()))
 	}},
+	{"What arithmetic kept", func(v *view) []block {
+		return append(v.figureBlocks("kept-signal", "signal-map", "kept-sums", "kept-updates", "update-bias", "gradient-direction"), tableBlock(v.keptTable()))
+	}},
 	{"Exponents against the range of formats", func(v *view) []block {
 		return append(v.figureBlocks("exponents"), tableBlock(v.histogramTable()))
 	}},
@@ -134,12 +137,15 @@ func (v *view) markdown(w io.Writer) error {
 	var b strings.Builder
 	fmt.Fprintf(&b, "# %s\n\n", inline(v.heading()))
 	for i, s := range v.sentences() {
-		if i == 0 {
-			s = "**" + inline(s) + "**"
-		} else {
-			s = inline(s)
+		if i > 0 {
+			b.WriteString(inline(s) + "\n\n")
+			continue
 		}
-		b.WriteString(s + "\n\n")
+		b.WriteString("**" + inline(s) + "**\n\n")
+		if facts := v.brief(); len(facts) > 0 {
+			k := factBlock(facts)
+			k.write(&b)
+		}
 	}
 	for _, a := range v.alarms() {
 		fmt.Fprintf(&b, "> **%s** %s\n\n", inline(a.Head), inline(a.Text))

@@ -165,6 +165,9 @@ func twinPart(v *view, pairs []twin, d domain, width float64) *draw.Figure {
 // pair draws two arms around one line of the rail.
 func (r *rail) pair(g *draw.Group, y, head float64, i int, w twin) {
 	at := "stochastic at " + strings.Join(w.points, ", ")
+	if len(w.points) > 2 { // the table names them
+		at = fmt.Sprintf("stochastic at %d points", len(w.points))
+	}
 	if r.narrow {
 		g.Rect(0, y, r.width, head, draw.Fill(draw.Paper))
 		for k, a := range []*armView{w.nearest, w.stochastic} {

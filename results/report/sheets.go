@@ -28,6 +28,7 @@ var sheetTable = []struct {
 	{"class_differences", []string{"arm", "against", "class", "n", "mean", "low", "high", "worst", "worst_replicate", "p", "holm"}, classRows},
 	{"costs", costHeader, costRows},
 	{"histograms", []string{"arm", "replicate", "layer", "layer_name", "point", "epoch", "exponent", "count", "zeros", "not_finite"}, histogramRows},
+	{"diagnostics", []string{"arm", "replicate", "layer", "layer_name", "kind", "at", "epoch", "step", "count", "value"}, qualityRows},
 	{"grid", []string{"arm", "grid", "axis", "value"}, gridRows},
 	{"confusion", []string{"arm", "replicate", "true_class", "called", "count"}, confusionRows},
 }
@@ -252,6 +253,17 @@ func histogramRows(v *view) (rows [][]string) {
 					d.Arm, uintCell(d.Replicate), intCell(h.Layer), h.Name, h.Point, intCell(h.Epoch), intCell(h.Lowest + i), uintCell(n), uintCell(h.Zeros), uintCell(h.NotFinite),
 				})
 			}
+		}
+	}
+	return rows
+}
+
+func qualityRows(v *view) (rows [][]string) {
+	for _, d := range v.Diagnoses {
+		for _, q := range d.Qualities {
+			rows = append(rows, []string{
+				d.Arm, uintCell(d.Replicate), intCell(q.Layer), q.Name, string(q.Kind), q.At, intCell(q.Epoch), intCell(q.Step), uintCell(q.Count), floatCell(q.Value),
+			})
 		}
 	}
 	return rows
