@@ -106,6 +106,10 @@
 // Only their own keys set them: unset, they are as the sums and activations of their
 // phase, so shorthands reach them through those.
 //
+// weight_gradient.residue is error feedback: what rounding a parameter's gradient to its
+// result takes away is kept in this format and added to the next step's gradient before
+// that is rounded. Only its own key sets it; unset, it is lost.
+//
 // Formats whose values share scales, blocks (MXFP8) and scaled integers (INT8), are
 // settings of the operands of products: forward.weight, forward.operand, and the
 // operands of the gradient products. forward.operand is the layer's input as the
