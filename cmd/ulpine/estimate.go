@@ -25,9 +25,10 @@ const (
 	leastGroups = 4
 )
 
-// measureRate times training steps of the arms and controls on invented numbers and
-// returns multiply-adds a second of one worker, over all runs of the plan: the work of
-// each arm at its own speed, or at that of the one timed before it in the plan.
+// measureRate times training steps of the arms and controls on invented numbers, and
+// the drawing of a replicate's data where each has its own. It returns multiply-adds a
+// second of one worker, over all runs of the plan: the work of each arm at its own
+// speed, or at that of the one timed before it in the plan.
 func measureRate(ctx context.Context, p *plan.Plan) (float64, error) {
 	var macs, seconds, speed, baseline float64
 	add := func(t trainer.Training, task *plan.Task, speed float64) {
@@ -49,10 +50,25 @@ func measureRate(ctx context.Context, p *plan.Plan) (float64, error) {
 		}
 		add(a.Training, &p.Task, speed)
 	}
+	seconds += drawing(&p.Task, p.Replicates.FirstSeed)
 	if p.Pretrain != nil {
 		add(p.Pretrain.Training, &p.Pretrain.Task, baseline)
+		seconds += drawing(&p.Pretrain.Task, p.Replicates.FirstSeed)
 	}
 	return macs / seconds, nil
+}
+
+// drawing is how long it takes to draw the data of a replicate, in seconds; 0 where
+// all share what files hold.
+func drawing(t *plan.Task, seed uint64) float64 {
+	if !t.PerReplicate {
+		return 0
+	}
+	began := time.Now()
+	if _, err := t.Source.Load(seed); err != nil {
+		return 0 // told when the plan is run
+	}
+	return time.Since(began).Seconds()
 }
 
 // armSpeed is multiply-adds a second of one arm in training, the looks of its
