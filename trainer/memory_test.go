@@ -54,6 +54,9 @@ func TestMemoryOf(t *testing.T) {
 		"random":   func(n int) Arm { return Everything(stochastic(t, "bf16", 16), n, 1) },
 		"double":   func(n int) Arm { return Everything(point(t, "fp64"), n, 1) },
 	}
+	if testing.Short() {
+		nets = nets[:1]
+	}
 	for _, n := range nets {
 		for name, arm := range arms {
 			for _, looked := range []Diagnostics{{}, DefaultDiagnostics} {

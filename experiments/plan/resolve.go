@@ -28,7 +28,7 @@ func ResolveText(p *Plan, o ResolveOptions) string {
 	}
 	writeFacts(&b, p)
 	writeLayers(&b, p)
-	fmt.Fprintf(&b, "\n%s\n", WorkText(p, o))
+	fmt.Fprintf(&b, "\n%s\n%s\n", WorkText(p, o), MemoryText(p, o.Workers))
 	writeGrids(&b, p)
 	for i := range p.Arms {
 		writeArm(&b, p, &p.Arms[i], "arm", o.Full)
