@@ -113,7 +113,7 @@
 // have in 8 to 9 %. Whole plans of three arms on the margin with looks at 4, 8 and 12
 // pairs err in 3.1 % of 1,000 plans (normal; four standard errors are 2.0 points) and
 // in 1.2 % (t of 3 degrees), where single looks at single arms would have in 11 to
-// 16 % (TestProcedureWithLooks).
+// 16 %; TestProcedureWithLooks holds plans with two looks to that.
 //
 // # Tuning
 //

@@ -220,12 +220,12 @@ func TestProcedure(t *testing.T) {
 }
 
 // TestProcedureWithLooks simulates whole plans with looks: three arms on the margin
-// and one that has the baseline's own runs, judged as a family after 4, 8 and 12
-// pairs, the plan stopping as a runner would. A false "within" of any arm at any look
+// and one that has the baseline's own runs, judged as a family after 4 and
+// 8 pairs, the plan stopping as a runner would. A false "within" of any arm at any look
 // is seen in at most 2.5 % of plans, and the twin is within at the first look.
 func TestProcedureWithLooks(t *testing.T) {
 	const margin = 0.01
-	l := Looks{UpTo: 12, Every: 4}
+	l := Looks{UpTo: 8, Every: 4}
 	spending := shares{} // computed once for all plans
 	plans := 2 * samples(t, true)
 	for _, law := range []law{laws[0], laws[2]} {
