@@ -69,6 +69,9 @@ func (v *view) json(w io.Writer) error {
 		top["costs"] = v.Costs
 	}
 	top["volumes"], top["ranges"] = append([]results.Volume{}, v.Volumes...), append([]results.Range{}, v.Ranges...)
+	if v.Tuning != nil {
+		top["tuning"] = v.tuningObject()
+	}
 	top["diagnoses"] = diagnosisObjects(v.Diagnoses)
 	if v.Tuning != nil {
 		top["tuning"] = tuningObject(v.Tuning)
