@@ -41,7 +41,9 @@ func TestSeriesOfContrasts(t *testing.T) {
 func TestAnswerTellsLookBitsAndTuning(t *testing.T) {
 	arms := []results.Arm{
 		{Name: "baseline", Slug: "baseline", Baseline: true, Bits: 32},
-		{Name: "a", Slug: "a", Bits: 9}, {Name: "b", Slug: "b", Bits: 10.5}, {Name: "c", Slug: "c", Bits: 8},
+		{Name: "a", Slug: "a", Bits: 9},
+		{Name: "b", Slug: "b", Bits: 10.5},
+		{Name: "c", Slug: "c", Bits: 8},
 	}
 	a, b, c := compared("a", results.Verdict{Kind: results.Within}, 20), compared("b", results.Verdict{Kind: results.Within}, 20), compared("c", results.Verdict{Pairs: 40}, 20)
 	for _, one := range []*results.Comparison{&a, &b, &c} {
