@@ -19,7 +19,9 @@
 // worker without work in the replicates at hand opens the next one. The data of a
 // replicate is loaded once, shared by its runs, and let go after the last; never
 // are more replicates open than there are workers. No result depends on this
-// order: the bits of a run depend on its key alone.
+// order: the bits of a run depend on its key alone. A worker for which there is no
+// run, while a pretraining or the last runs are under way, helps with the larger
+// products of the others (trainer.Team), which changes no bit either.
 //
 // # Looks
 //
@@ -30,6 +32,14 @@
 // that is taken up again stops where an undisturbed one does. The bits of the runs
 // do not depend on the looks. An arm with the baseline's own bits is decided only at
 // the last look: differences without spread say nothing before.
+//
+// # Tuning
+//
+// A plan with a tuning is two plans one after the other, of one study and under one
+// claim: first its trials, arm/trial by arm/trial on the tuning's seeds, then its arms
+// with what was chosen for them. The choice follows from the stored trials alone, so
+// it is the same whoever reads it; runs of both are stored under keys like any other,
+// shared with plans that spell the same values out.
 //
 // # The study
 //

@@ -15,7 +15,7 @@ func (x *runner) lookByLook(ctx context.Context) {
 	looks := compare.Looks{UpTo: x.Replicates.Count, Every: x.Replicates.LookEvery}
 	for at := 0; at < looks.UpTo && ctx.Err() == nil; {
 		at = looks.Next(at)
-		x.schedule = newSchedule(ctx, x.ask(at), x.options.Workers)
+		x.schedule = newSchedule(ctx, x.ask(at), x.options.Workers, x.team)
 		unhook := context.AfterFunc(ctx, x.schedule.wake)
 		x.work(ctx)
 		unhook()

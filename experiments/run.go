@@ -41,7 +41,7 @@ func (e *stopError) Unwrap() []error { return []error{ErrStopped, e.err} }
 // Options say how a plan is run. The zero value runs it on all cores and tells
 // nobody.
 type Options struct {
-	Workers     int      // runs at a time; 0: GOMAXPROCS
+	Workers     int      // runs at a time; those without one help the others; 0: GOMAXPROCS
 	Progress    Progress // may be nil
 	CodeVersion string   // noted with each run; empty: what the build says
 	Host        string   // noted with each run; empty: the machine's name
@@ -74,6 +74,7 @@ type runner struct {
 	tracker  *tracker
 	estimate *estimator
 	cancel   context.CancelFunc
+	team     *trainer.Team     // workers without a run help those that have one
 	shared   [2]*datasets.Data // of task and pretraining, where all replicates have the same
 	replicas []*replicate      // those asked for so far
 	later    []*replicate      // behind the next look
@@ -95,7 +96,8 @@ type runner struct {
 
 // Run does every run of a plan that is not stored yet and stores it, on as many
 // workers as the options say; the bits of the results do not depend on them. It
-// fixes the plan's claim in the store before the first run.
+// fixes the plan's claim in the store before the first run. A plan with a tuning has
+// its runs done first; then every arm is given its values.
 //
 // A cancelled context ends it within a second with ErrStopped;
 // runs in flight are marked as broken off. Runs that fail are stored as such and
@@ -103,17 +105,20 @@ type runner struct {
 // everything else is stored. Other errors (data that cannot be loaded, a store
 // that cannot be written) stop the plan at once.
 func Run(ctx context.Context, p *plan.Plan, s *store.Store, o Options) (Summary, error) {
-	return newRunner(p, s, o).run(ctx)
+	if p.Tuning != nil {
+		return runTuned(ctx, p, s, o)
+	}
+	return newRunner(newLayout(p), s, o).run(ctx)
 }
 
-func newRunner(p *plan.Plan, s *store.Store, o Options) *runner {
-	x := &runner{layout: newLayout(p), store: s, options: o, train: trainer.Run, flying: map[results.Hash]Place{}}
+func newRunner(l *layout, s *store.Store, o Options) *runner {
+	x := &runner{layout: l, store: s, options: o, train: trainer.Run, flying: map[results.Hash]Place{}}
 	each, _ := x.perReplicate()
-	x.summary.Runs = each * p.Replicates.Count
+	x.summary.Runs = each * l.Replicates.Count
 	if x.options.Workers <= 0 {
 		x.options.Workers = runtime.GOMAXPROCS(0)
 	}
-	x.options.Workers = min(x.options.Workers, x.summary.Runs)
+	x.team = trainer.NewTeam(x.options.Workers)
 	if x.options.Host == "" {
 		x.options.Host, _ = os.Hostname() // for print only
 	}
@@ -223,6 +228,9 @@ func (x *runner) failed() error {
 
 // baseline is an error about a baseline or pretraining that diverged, or nil.
 func (x *runner) baseline() error {
+	if x.tuning {
+		return nil // a value that the baseline diverges with is not chosen
+	}
 	var runs []results.Run
 	var keys []results.Hash
 	for _, r := range x.replicas {

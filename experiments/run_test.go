@@ -368,7 +368,7 @@ func TestDataIsSharedAndLetGo(t *testing.T) {
 	for _, workers := range []int{1, 2, 5} {
 		p, source := fakePlan(t, replicates, false)
 		s := openStore(t)
-		x := newRunner(p, s, Options{Workers: workers})
+		x := newRunner(newLayout(p), s, Options{Workers: workers})
 		most := 0
 		var mu sync.Mutex
 		x.train = func(ctx context.Context, job trainer.Job, w trainer.Watcher) (trainer.Outcome, error) {
@@ -521,5 +521,27 @@ func TestProgress(t *testing.T) {
 	}
 	if !strings.Contains(strings.Join(l.notes, "\n"), "margin was 0.2, is 0.3") {
 		t.Errorf("a changed claim is not told: %q", l.notes)
+	}
+}
+
+// TestIdleWorkersHelp: workers for which there is no run help the one that has one,
+// and leave with it.
+func TestIdleWorkersHelp(t *testing.T) {
+	p, _ := fakePlan(t, 1, true) // its pretraining is one run that all others wait for
+	helped := false
+	train := func(ctx context.Context, job trainer.Job, w trainer.Watcher) (trainer.Outcome, error) {
+		if isPretraining(job) {
+			for deadline := time.Now().Add(5 * time.Second); job.Team.Idle() < 6 && time.Now().Before(deadline); {
+				time.Sleep(time.Millisecond)
+			}
+			helped = job.Team.Idle() == 6
+		}
+		return fakeTrain(ctx, job, w)
+	}
+	if _, err := fake(context.Background(), p, openStore(t), Options{Workers: 7}, train); err != nil {
+		t.Fatal(err)
+	}
+	if !helped {
+		t.Error("six workers had nothing to do and did not help")
 	}
 }

@@ -49,20 +49,20 @@ type task struct {
 // open.
 type schedule struct {
 	mu      sync.Mutex
-	changed *sync.Cond
-	queue   []*replicate // not open yet
+	changed chan struct{} // closed, and made anew, when something changed
+	team    *trainer.Team // whom workers help that have nothing else to do
+	queue   []*replicate  // not open yet
 	open    []*replicate
 	limit   int
 	ctx     context.Context // once it is done, no more tasks are handed out
 }
 
-func newSchedule(ctx context.Context, queue []*replicate, limit int) *schedule {
-	s := &schedule{queue: queue, limit: limit, ctx: ctx}
-	s.changed = sync.NewCond(&s.mu)
-	return s
+func newSchedule(ctx context.Context, queue []*replicate, limit int, team *trainer.Team) *schedule {
+	return &schedule{queue: queue, limit: limit, ctx: ctx, team: team, changed: make(chan struct{})}
 }
 
-// next waits for a task; false: there is none left.
+// next waits for a task, and helps with those of other workers meanwhile; false:
+// there is none left.
 func (s *schedule) next() (task, bool) {
 	s.mu.Lock()
 	defer s.mu.Unlock()
@@ -81,8 +81,17 @@ func (s *schedule) next() (task, bool) {
 			s.open = append(s.open, r)
 			return task{load: r}, true
 		}
-		s.changed.Wait()
+		changed := s.changed
+		s.mu.Unlock()
+		s.team.Help(changed)
+		s.mu.Lock()
 	}
+}
+
+// announce wakes the workers that wait. To be called with the lock held.
+func (s *schedule) announce() {
+	close(s.changed)
+	s.changed = make(chan struct{})
 }
 
 // take returns the next unit that can start, or nil.
@@ -109,7 +118,7 @@ func (s *schedule) opened(r *replicate) {
 	r.loaded = true
 	r.pretrained = r.pre == nil
 	s.closeIfDone(r)
-	s.changed.Broadcast()
+	s.announce()
 }
 
 // startArms says what a pretraining came to: weights, or why there are none.
@@ -117,7 +126,7 @@ func (s *schedule) startArms(r *replicate, start []trainer.Param, broken string)
 	s.mu.Lock()
 	defer s.mu.Unlock()
 	r.start, r.broken, r.pretrained, r.preData = start, broken, true, nil
-	s.changed.Broadcast()
+	s.announce()
 }
 
 // finished says that a unit is done.
@@ -126,7 +135,7 @@ func (s *schedule) finished(u *unit) {
 	defer s.mu.Unlock()
 	u.replicate.left--
 	s.closeIfDone(u.replicate)
-	s.changed.Broadcast()
+	s.announce()
 }
 
 // closeIfDone lets go of a replicate's data after its last run.
@@ -142,5 +151,5 @@ func (s *schedule) closeIfDone(r *replicate) {
 func (s *schedule) wake() {
 	s.mu.Lock()
 	defer s.mu.Unlock()
-	s.changed.Broadcast()
+	s.announce()
 }

@@ -174,7 +174,7 @@ func (x *runner) place(number int, u *unit) Place {
 // pretraining left nothing to start from.
 func (x *runner) job(u *unit, r *results.Run) (trainer.Job, error) {
 	data := u.replicate.data
-	job := trainer.Job{Network: x.Network, Arm: u.group.arm, Training: u.group.training, Seed: u.replicate.seed}
+	job := trainer.Job{Network: x.Network, Arm: u.group.arm, Training: u.group.training, Seed: u.replicate.seed, Team: x.team}
 	if u.group == x.pre {
 		data = u.replicate.preData
 	} else {

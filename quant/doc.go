@@ -25,6 +25,7 @@
 //	               products to internal/kernel; mul.go forms blocks of columns, in
 //	               the machine's own arithmetic (native.go) or in steps of binary64
 //	               (engine.go, adds.go, orders.go, wide.go, tables.go)
+//	share.go       parts of products for goroutines that have nothing else to do
 //	text.go        words to and from plans
 //	random/        counter-based random words
 //	elementary/    the project's own exp and log

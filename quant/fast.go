@@ -151,6 +151,7 @@ func (f *fast[T]) mul(products, sums *Counts) bool {
 	if p, wide := any(&f.owner.work).(*Product[float64]); wide {
 		f.wideProduct = kernel.Product[float64]{
 			I: p.I, J: p.J, K: p.K, A: p.A.Data, ARow: p.A.Row, ACol: p.A.Col, B: p.B, C: p.C, Bias: p.Bias,
+			From: p.from, To: p.to,
 		}
 		f.wide.Mul(&f.wideProduct, f.redo)
 		f.wideProduct = kernel.Product[float64]{}
@@ -160,7 +161,7 @@ func (f *fast[T]) mul(products, sums *Counts) bool {
 	f.product = kernel.Product[float32]{
 		I: p.I, J: p.J, K: p.K, A: p.A.Data, ARow: p.A.Row, ACol: p.A.Col, B: p.B, C: p.C,
 		Bias: p.Bias, Sums: kernel.Streams(p.Sums), Terms: kernel.Streams(p.Terms), FirstJ: uint32(p.FirstJ),
-		Tally: &f.tally,
+		Tally: &f.tally, From: p.from, To: p.to, FirstI: p.firstI,
 	}
 	_, dense := p.B.(Matrix[float32])
 	f.product.Padded = !dense

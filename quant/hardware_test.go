@@ -130,7 +130,7 @@ func TestAlignedSteps(t *testing.T) {
 			for k := from; k < min(n, from+o.K); k++ {
 				terms = append(terms, new(big.Rat).Mul(exactOf(float64(q.A.Data[k])), exactOf(float64(b[k]))))
 			}
-			s = ratPoint{l, p}.at(addRat(exactOf(s), cutAndAdd(terms, o.W)), q.Sums.word(uint32(next), 0, 5))
+			s = ratPoint{l, p}.at(addRat(exactOf(s), cutAndAdd(terms, o.W)), q.Sums.Word(uint32(next), 0, 5))
 			next++
 		}
 		if float64(q.C[0]) != s {

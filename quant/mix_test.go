@@ -14,7 +14,7 @@ func mixTable(i, j, k int) [][][]float64 {
 		for b := range t[a] {
 			t[a][b] = make([]float64, k)
 			for c := range t[a][b] {
-				u := s.word(uint32(c), uint32(a), uint32(b)) >> 16
+				u := s.Word(uint32(c), uint32(a), uint32(b)) >> 16
 				t[a][b][c] = (float64(u)+0.5)/65536 - 0.5
 			}
 		}

@@ -6,8 +6,8 @@ import "math"
 func (m *Multiplier[T]) mul(products, sums *Counts) {
 	p := &m.work
 	wide := blockWidth(p.K)
-	for j0 := 0; j0 < p.J; j0 += wide {
-		m.block = block[T]{Multiplier: m, p: p, j0: j0, width: min(wide, p.J-j0), products: products, sums: sums}
+	for j0 := p.from; j0 < p.to; j0 += wide {
+		m.block = block[T]{Multiplier: m, p: p, j0: j0, width: min(wide, p.to-j0), products: products, sums: sums}
 		m.block.form()
 	}
 }
@@ -95,7 +95,7 @@ func (b *block[T]) engineRow(to []T, i int) bool {
 	if p.Bias != nil && !isNarrow(float64(p.Bias[i])) {
 		return false
 	}
-	e.fillRow(p.Terms.Row, p.Sums.Row, uint32(i))
+	e.fillRow(p.Terms.Row, p.Sums.Row, p.firstI+uint32(i))
 	s, next, ok := e.row()
 	if !ok {
 		return false

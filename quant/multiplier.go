@@ -6,16 +6,19 @@ import "fmt"
 // memory and serves one goroutine at a time.
 type Multiplier[T Element] struct {
 	ref        reference[T]
-	fast       *fast[T]   // nil where the kernels do not serve
-	native     *native[T] // nil where the machine's own arithmetic does not serve
-	engine     *engine    // nil where a point has no quick rounding
-	sumEngine  *engine    // engine for sums without products
-	fastSums   *fastSums  // and their kernels, nil where they do not serve
-	nativeRows bool       // sums without products are those of the machine in binary64
-	slab       []T        // a block of columns
-	line       []T        // a row of terms
-	work       Product[T] // the product being formed
-	block      block[T]   // and its block of columns
+	fast       *fast[T]      // nil where the kernels do not serve
+	native     *native[T]    // nil where the machine's own arithmetic does not serve
+	engine     *engine       // nil where a point has no quick rounding
+	sumEngine  *engine       // engine for sums without products
+	fastSums   *fastSums     // and their kernels, nil where they do not serve
+	nativeRows bool          // sums without products are those of the machine in binary64
+	slab       []T           // a block of columns
+	line       []T           // a row of terms
+	work       Product[T]    // the product being formed
+	block      block[T]      // and its block of columns
+	team       *Team         // who may help; nil: nobody
+	parts      []*part[T]    // what they did last
+	done       chan struct{} // a token for each part that is done
 }
 
 // Check reports what makes the accumulation unusable.
@@ -97,7 +100,17 @@ func NewMultiplier[T Element](acc Accumulate) (*Multiplier[T], error) {
 // Mul forms the product. products and sums may be nil.
 func (m *Multiplier[T]) Mul(p Product[T], products, sums *Counts) {
 	p.check()
-	m.work = p
+	p.from, p.to, p.firstI = 0, p.J, 0
+	if n := m.team.partsOf(p.I, p.J, p.K); n > 1 {
+		m.share(&p, n, products, sums)
+		return
+	}
+	m.form(&p, products, sums)
+}
+
+// form forms a product, or a part of one.
+func (m *Multiplier[T]) form(p *Product[T], products, sums *Counts) {
+	m.work = *p
 	if m.fast == nil || !m.fast.mul(products, sums) {
 		m.mul(products, sums)
 	}

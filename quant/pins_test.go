@@ -159,7 +159,7 @@ func TestCounts(t *testing.T) {
 // bfloat16 whose every addition sits at 1/2 of a gap rounds as its words say.
 func TestNumbersOfAdditions(t *testing.T) {
 	s := Streams{Draws{Seed: 77, Site: 1}, Draws{Seed: 77, Site: 2}}
-	up := func(k int) bool { return s.word(uint32(k), 0, 3)>>31 == 1 }
+	up := func(k int) bool { return s.Word(uint32(k), 0, 3)>>31 == 1 }
 	form := func(acc string, a []float32, bias []float32) float64 {
 		m, err := NewMultiplier[float32](mustAccumulate(t, acc))
 		if err != nil {

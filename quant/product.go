@@ -62,9 +62,9 @@ func (Matrix[T]) Padded(k, j int) bool { return false }
 // of one rounding point inside a sum.
 type Streams struct{ Row, Column Draws }
 
-// word returns the random word of addition k of result (i, j); only its top 16
-// bits are random, the others are zero.
-func (s Streams) word(k, i, j uint32) uint32 {
+// Word returns the random word of addition k of result (i, j), i and j counted as the
+// tables count them; only its top 16 bits are random, the others are zero.
+func (s Streams) Word(k, i, j uint32) uint32 {
 	return mix(s.Row.Lane(k, i), s.Column.Lane(k, j)) << 16
 }
 
@@ -88,6 +88,11 @@ type Product[T Element] struct {
 	Terms   Streams   // random bits of the product's rounding
 	Sums    Streams   // random bits of the additions
 	FirstJ  uint64    // number of column 0 in the column tables
+
+	// A part of a shared product, see share.go: its columns, and the number of row 0
+	// in the row tables. Mul sets them for a whole product.
+	from, to int
+	firstI   uint32
 }
 
 // check panics when the shapes do not fit one another.

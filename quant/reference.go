@@ -83,7 +83,8 @@ func (r *reference[T]) mul(p *Product[T], products, sums *Counts) {
 // element forms C[i,j] from the packed column j.
 func (r *reference[T]) element(p *Product[T], column []T, i, j int, products, sums *Counts) T {
 	lane := uint32(p.FirstJ) + uint32(j)
-	rounding := adder{draws: p.Terms, i: uint32(i), j: lane, counts: products}
+	row := p.firstI + uint32(i)
+	rounding := adder{draws: p.Terms, i: row, j: lane, counts: products}
 	term := func(k int) (Real, bool) {
 		if p.B.Padded(k, j) {
 			return Real{}, false
@@ -94,7 +95,7 @@ func (r *reference[T]) element(p *Product[T], column []T, i, j int, products, su
 		}
 		return x, true
 	}
-	a := adder{through32: r.acc.Through32, draws: p.Sums, i: uint32(i), j: lane, counts: sums}
+	a := adder{through32: r.acc.Through32, draws: p.Sums, i: row, j: lane, counts: sums}
 	s, next := r.sum(&a, p.K, term)
 	if p.Scale != nil {
 		s = a.round(&r.acc.Sum, ExactProduct(p.Scale[i], s), next)

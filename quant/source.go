@@ -91,10 +91,10 @@ func (r Rounding) Word(d Draws, n uint64) uint32 {
 func (s Streams) from(source Source, k, i, j uint32) uint32 {
 	j = uint32(source.lane(uint64(j)))
 	if source.Register == 0 {
-		return s.word(k, i, j)
+		return s.Word(k, i, j)
 	}
 	period := states(source.Register)
-	start := s.word(0, i, j) >> 16
+	start := s.Word(0, i, j) >> 16
 	return period[(uint64(start)+uint64(k))%uint64(len(period))]
 }
 

@@ -48,10 +48,10 @@ func TestSources(t *testing.T) {
 			t.Fatalf("element %d of a shared register: %x, want %x", n, got, want)
 		}
 		k := uint32(n)
-		if got := s.from(shared.Source, k, 2, 11); got != s.word(k, 2, 2) {
+		if got := s.from(shared.Source, k, 2, 11); got != s.Word(k, 2, 2) {
 			t.Fatalf("addition %d: %x", k, got)
 		}
-		if got, want := s.from(both.Source, k, 2, 11), period[(uint64(s.word(0, 2, 3)>>16)+n)%127]; got != want {
+		if got, want := s.from(both.Source, k, 2, 11), period[(uint64(s.Word(0, 2, 3)>>16)+n)%127]; got != want {
 			t.Fatalf("addition %d of a shared register: %x, want %x", k, got, want)
 		}
 	}

@@ -54,7 +54,7 @@ func newEngine[T quant.Element](job *Job, train *split, parts parts) (*engine[T]
 		scores: newScores(parts.classes, parts.loss.regression()),
 	}
 	capacity := max(e.batch, min(evaluationBatch, parts.largest))
-	if err := e.buildLayers(capacity); err != nil {
+	if err := e.buildLayers(capacity, job.Team); err != nil {
 		return nil, err
 	}
 	e.judge = newJudge[T](parts.loss, e.batch, parts.classes)
@@ -68,7 +68,7 @@ func newEngine[T quant.Element](job *Job, train *split, parts parts) (*engine[T]
 
 // buildLayers makes an edge above every layer, of the same memory where the
 // layer is a mere view, and collects the parameters.
-func (e *engine[T]) buildLayers(capacity int) error {
+func (e *engine[T]) buildLayers(capacity int, team *Team) error {
 	e.edges = []*edge[T]{newEdge[T](capacity, e.net.Input)}
 	for i := range e.net.Layers {
 		spec := &e.net.Layers[i]
@@ -80,7 +80,7 @@ func (e *engine[T]) buildLayers(capacity int) error {
 		} else {
 			above = newEdge[T](capacity, spec.Out)
 		}
-		b := &bench[T]{place: place{layer: i, set: &e.arm.Layers[i]}, spec: spec, below: below, above: above, batch: capacity, earlier: e.layers}
+		b := &bench[T]{place: place{layer: i, set: &e.arm.Layers[i]}, spec: spec, below: below, above: above, batch: capacity, earlier: e.layers, team: team}
 		l, err := builderOf[T](k)(b)
 		if err != nil {
 			return fmt.Errorf("%s: %w", e.net.where(i), err)
@@ -181,14 +181,19 @@ func (e *engine[T]) step(batch []int32, rate float64) (loss float64, what fate) 
 		cosines(e.twin, e, batch, e.observer.found)
 	}
 	if e.scaler.set.Kind == DynamicScale && (e.tally.gradientEvents() != before || e.gradientNotFinite()) {
+		s := e.scaler.s
 		e.scaler.skip()
+		e.rescaleResidues(s)
 		return loss, stepSkipped
 	}
 	e.mover.move(p, rate, e.scaler.s)
 	for _, l := range e.settlers {
 		l.settle(p)
 	}
+	e.adoptResidues()
+	s := e.scaler.s
 	e.scaler.taken()
+	e.rescaleResidues(s)
 	if e.masterNotFinite() {
 		return loss, masterNotFinite
 	}

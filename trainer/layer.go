@@ -27,6 +27,7 @@ type bench[T quant.Element] struct {
 	batch   int         // capacity of the edges, in examples
 	earlier []layer[T]  // the layers below
 	given   []*param[T] // parameters that another part of the layer has made
+	team    *Team       // who may help with products
 }
 
 // param is parameter number of the layer: the one given, or a new one.

@@ -86,7 +86,7 @@ func newLinear[T quant.Element](b *bench[T], s shape, bind func(l *linear[T]) bi
 		l.regrouped = make([]T, b.batch*s.units*s.outer)
 	}
 	l.results = make([]T, max(b.batch*s.units*s.outer, b.batch*s.channels*s.inner, s.units*s.terms))
-	if err := l.makeMultipliers(); err != nil {
+	if err := l.makeMultipliers(b.team); err != nil {
 		return nil, err
 	}
 	l.makeProducts(bind(l))
@@ -111,15 +111,20 @@ func (l *linear[T]) chooseOperands() {
 	l.activation = own(l.again.activation, l.operand)
 }
 
-func (l *linear[T]) makeMultipliers() (err error) {
+func (l *linear[T]) makeMultipliers(team *Team) (err error) {
 	if l.forwardMul, err = multiplier[T](l.set.Forward); err != nil {
 		return err
 	}
 	if l.belowMul, err = multiplier[T](l.set.InputGradient.Sums); err != nil {
 		return err
 	}
-	l.mul, err = multiplier[T](l.set.WeightGradient.Sums)
-	return err
+	if l.mul, err = multiplier[T](l.set.WeightGradient.Sums); err != nil {
+		return err
+	}
+	for _, m := range []*quant.Multiplier[T]{l.forwardMul, l.belowMul, l.mul} {
+		m.Share(team)
+	}
+	return nil
 }
 
 // makeProducts builds the three products once: converting a matrix to an
@@ -235,15 +240,15 @@ func (l *linear[T]) weightSums(p *pass, left quant.Matrix[T], terms int) {
 			lookSums(p.watch, l.layer, WeightGradientProduct, WeightGradientSum, &set.Sums, q)
 		}
 	}
-	round(l.place, p, WeightGradientResult, opWeightResult.of(0), l.weight.gradient.data, results, &set.Result, 0)
+	l.weight.storeGradient(p, results)
 }
 
 // biasSums forms the sums of the gradient itself and stores them.
 func (l *linear[T]) biasSums(p *pass, left quant.Matrix[T], terms int) {
-	set, sums := &l.set.WeightGradient, l.counts(p, WeightGradientSum)
+	sums := l.counts(p, WeightGradientSum)
 	db := l.results[:l.units]
 	l.mul.SumRows(db, left, l.units, terms, l.streams(p, opWeightSum.of(1)), sums)
-	round(l.place, p, WeightGradientResult, opWeightResult.of(1), l.bias.gradient.data, db, &set.Result, 0)
+	l.bias.storeGradient(p, db)
 }
 
 // inputBackward computes the gradient of the edge below.

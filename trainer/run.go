@@ -20,7 +20,16 @@ type Job struct {
 	// Train must hold examples; Validation and Test may be empty.
 	Train, Validation, Test Set
 	Diagnostics             Diagnostics
+	// Team may help with the products of linear layers; nil: nobody does. It changes
+	// no bit.
+	Team *Team
 }
+
+// Team is who may help with a training's products: goroutines that are in its Help.
+type Team = quant.Team
+
+// NewTeam returns a team of up to most helpers at a time.
+func NewTeam(most int) *Team { return quant.NewTeam(most) }
 
 // Watcher is told how far a run is: training steps done, of all it may take. A
 // run that diverges stops short of total.
@@ -186,7 +195,7 @@ func (r *run[T]) finish() Outcome {
 	if r.observer != nil {
 		r.out.Findings = r.observer.found
 	}
-	r.out.Counters = r.net.counters(r.tally)
+	r.out.Counters = r.net.counters(r.arm, r.tally)
 	if last := len(r.out.Epochs) - 1; r.out.Diverged == "" && last >= 0 {
 		constant := r.parts.loss.constant(r.parts.train, r.parts.classes)
 		r.out.Stalled = r.out.Epochs[last].TrainLoss > float64(stallShare*constant)

@@ -108,7 +108,7 @@ func TestEvaluationKnowsNoBatch(t *testing.T) {
 	loss := func(capacity int) (float64, *Scores) {
 		e := engineFor[float32](t, &job)
 		e.edges, e.layers, e.params = nil, nil, nil
-		if err := e.buildLayers(capacity); err != nil {
+		if err := e.buildLayers(capacity, nil); err != nil {
 			t.Fatal(err)
 		}
 		if err := e.start(nil); err != nil {

@@ -132,7 +132,7 @@ func exactElement(acc quant.Accumulate, a, b []float64, i, j, columns, k int, se
 		if acc.Product == nil {
 			return x
 		}
-		return round(acc.Product, x, streamWord(terms, n, uint32(i), uint32(j)))
+		return round(acc.Product, x, terms.Word(uint32(n), uint32(i), uint32(j)))
 	}
 	var s *big.Rat
 	var err error
@@ -141,7 +141,7 @@ func exactElement(acc quant.Accumulate, a, b []float64, i, j, columns, k int, se
 		for n := range k {
 			s.Add(s, term(n))
 		}
-		s = round(&acc.Sum, s, streamWord(sums, k, uint32(i), uint32(j)))
+		s = round(&acc.Sum, s, sums.Word(uint32(k), uint32(i), uint32(j)))
 	} else {
 		s, err = oracle.Walk(oracle.Order{Kind: kindWord(acc.Order), K: acc.Order.K}, k, new(big.Rat), term,
 			func(step oracle.Step, x, y *big.Rat) *big.Rat {
@@ -149,7 +149,7 @@ func exactElement(acc quant.Accumulate, a, b []float64, i, j, columns, k int, se
 				if step.Outer && acc.Outer != nil {
 					p = acc.Outer
 				}
-				return round(p, new(big.Rat).Add(x, y), streamWord(sums, step.Number, uint32(i), uint32(j)))
+				return round(p, new(big.Rat).Add(x, y), sums.Word(uint32(step.Number), uint32(i), uint32(j)))
 			})
 		if err != nil {
 			return 0, err

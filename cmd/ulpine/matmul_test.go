@@ -420,3 +420,10 @@ func TestMatmulBlocks(t *testing.T) {
 		}
 	}
 }
+
+// streamWord is the random word of addition k of result (i, j), written once more:
+// 16 bits at the top of the mix of two words.
+func streamWord(s quant.Streams, k int, i, j uint32) uint32 {
+	row, column := s.Row.Lane(uint32(k), i)|1, s.Column.Lane(uint32(k), j)
+	return (row*column + (row>>16)*(column>>16)) << 16
+}

@@ -25,7 +25,7 @@ command goes on where it stopped.`,
 		Args: exactly("PLAN"),
 	}
 	path := storeFlag(cmd)
-	workers := cmd.Flags().Int("workers", 0, "runs at a time (0: one a core); changes no bit")
+	workers := cmd.Flags().Int("workers", 0, "runs at a time (0: one a core), those without a run help the others; changes no bit")
 	dir := cmd.Flags().String("to", "", "`directory` of the report (default ulpine-report/PLAN)")
 	quiet := cmd.Flags().Bool("quiet", false, "no progress")
 	noReport := cmd.Flags().Bool("no-report", false, "print the verdicts only")

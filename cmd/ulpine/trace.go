@@ -35,13 +35,6 @@ type tracer struct {
 	lastAddition int
 }
 
-// streamWord is the random word of addition k of result (i, j): 16 bits at its top
-// (package quant says how they are drawn).
-func streamWord(s quant.Streams, k int, i, j uint32) uint32 {
-	row, column := s.Row.Lane(uint32(k), i)|1, s.Column.Lane(uint32(k), j)
-	return (row*column + (row>>16)*(column>>16)) << 16
-}
-
 // traceOf returns the additions of the traced element, and fails where their end is
 // not the element that the multiplier formed.
 func traceOf[T quant.Element](m *matmulJob, p quant.Product[T]) ([]traceLine, error) {
@@ -69,7 +62,7 @@ func traceOf[T quant.Element](m *matmulJob, p quant.Product[T]) ([]traceLine, er
 func (t *tracer) round(p *quant.Point, x quant.Real, k int) float64 {
 	var word uint32
 	if p.Rounding.Mode == quant.Stochastic {
-		word = streamWord(t.sums, k, t.i, t.j)
+		word = t.sums.Word(uint32(k), t.i, t.j)
 	}
 	if t.acc.Through32 {
 		single := quant.Point{Format: quant.Binary32}
@@ -92,7 +85,7 @@ func (t *tracer) product(k int) (exact, rounded quant.Real) {
 	}
 	var word uint32
 	if p.Rounding.Mode == quant.Stochastic {
-		word = streamWord(t.terms, k, t.i, t.j)
+		word = t.terms.Word(uint32(k), t.i, t.j)
 	}
 	v, _ := p.Round(exact, word)
 	if v == 0 {
@@ -125,7 +118,7 @@ func (t *tracer) total() (float64, error) {
 }
 
 // plainDraws reports whether every rounding of a sum has random bits of its own, as
-// streamWord draws them.
+// quant.Streams.Word draws them.
 func plainDraws(a quant.Accumulate) bool {
 	for _, p := range []*quant.Point{a.Product, &a.Sum, a.Outer} {
 		if p != nil && p.Rounding.Source != (quant.Source{}) {

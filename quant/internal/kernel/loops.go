@@ -157,11 +157,11 @@ func (l *loops) columnWords(dst []uint32, d random.Draws, width, k0, terms int, 
 	l.arg.Dst = nil
 }
 
-// rowWords writes the words of additions 0 <= k < terms of lanes 0, 1, ... by pairs
-// of rows, or-ed with odd: dst[(i/2*terms + k)*2 + i%2].
-func (l *loops) rowWords(dst []uint32, d random.Draws, rows, terms int, odd uint32) {
+// rowWords writes the words of additions 0 <= k < terms of lanes lane, lane+1, ... by
+// pairs of rows, or-ed with odd: dst[(i/2*terms + k)*2 + i%2].
+func (l *loops) rowWords(dst []uint32, d random.Draws, lane uint32, rows, terms int, odd uint32) {
 	if l.philox == nil {
-		fillRows(dst, d, rows, 0, terms, odd)
+		fillRows(dst, d, lane, rows, 0, terms, odd)
 		return
 	}
 	const lanes = 16
@@ -170,7 +170,7 @@ func (l *loops) rowWords(dst []uint32, d random.Draws, rows, terms int, odd uint
 		for k := 0; k < terms; k += rowBlock {
 			n := min(rowBlock, terms-k)
 			l.block = grown(l.block, (n+3)/4*4*lanes+philoxSlack)
-			l.columnWords(l.block, d, lanes, k, n, uint32(i0))
+			l.columnWords(l.block, d, lanes, k, n, lane+uint32(i0))
 			for i := 0; i < width; i += 2 {
 				to := dst[((i0+i)*terms + 2*k):][:2*n]
 				for t := range n {

@@ -78,5 +78,8 @@ func (f *family[L]) panel(left int) int {
 	return f.width
 }
 
+// PanelWidths are the columns of the wide and of the narrow panels of the set in use.
+func PanelWidths() (wide, narrow int) { return Sets[0].single.width, Sets[0].single.narrow }
+
 // Sets are the sets that can run here, the fastest first.
 var Sets = supported()

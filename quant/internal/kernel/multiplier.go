@@ -126,15 +126,15 @@ func (m *Multiplier) Mul(p *Product[float32], redo func(i0, i1, j0, j1 int)) {
 		return
 	}
 	if p.K == 0 {
-		redo(0, p.I, 0, p.J)
+		redo(0, p.I, p.From, p.end())
 		return
 	}
 	m.begin(p, redo)
 	if p.Bias != nil && m.bias == nil {
-		redo(0, p.I, 0, p.J)
+		redo(0, p.I, p.From, p.end())
 		return
 	}
-	for j := 0; j < p.J; {
+	for j := p.From; j < p.end(); {
 		j += m.formPanel(j)
 	}
 	m.release()
@@ -158,12 +158,12 @@ func (m *Multiplier) begin(p *Product[float32], redo func(i0, i1, j0, j1 int)) {
 	m.rowWords, m.biasRow = m.rowWords[:0], m.biasRow[:0]
 	if m.a.Sum.Kind == StochasticSum {
 		m.rowWords = grown(m.rowWords, 2*pairs*p.K)
-		m.loops.rowWords(m.rowWords, p.Sums.Row, p.I, p.K, m.oddRows())
+		m.loops.rowWords(m.rowWords, p.Sums.Row, p.FirstI, p.I, p.K, m.oddRows())
 	}
 	m.termRows = m.termRows[:0]
 	if m.a.Product == RandomProduct {
 		m.termRows = grown(m.termRows, 2*pairs*p.K)
-		m.loops.rowWords(m.termRows, p.Terms.Row, p.I, p.K, 1)
+		m.loops.rowWords(m.termRows, p.Terms.Row, p.FirstI, p.I, p.K, 1)
 	}
 	if p.Bias != nil {
 		if m.bias = m.biases.biasPlan(m.loops.spanOf(p.Bias[:p.I])); m.bias != nil {
@@ -191,7 +191,7 @@ func (m *Multiplier) packBias(pairs int) {
 	p := m.p
 	if m.a.Outer.Kind == StochasticSum {
 		m.biasRow = grown(m.biasRow, 2*pairs)
-		fillRows(m.biasRow, p.Sums.Row, p.I, p.K, 1, m.oddRows())
+		fillRows(m.biasRow, p.Sums.Row, p.FirstI, p.I, p.K, 1, m.oddRows())
 	}
 	if m.bias.double {
 		m.biasA64 = grown(m.biasA64, 2*pairs)

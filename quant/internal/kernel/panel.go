@@ -49,7 +49,7 @@ func (m *Multiplier) formMeasured(j0 int) int {
 
 // startPanel sizes the panel that starts at column j0 for lanes of one kind.
 func (m *Multiplier) startPanel(j0 int, wide bool) *panel {
-	left := m.p.J - j0
+	left := m.p.end() - j0
 	one, two := &m.set.single, &m.set.double
 	n := &m.panel
 	*n = panel{Multiplier: m, j0: j0, wide: wide, width: one.panel(left)}

@@ -23,8 +23,18 @@ type Product[T lanes] struct {
 	Bias       []T // nil, or I values added to the finished sums of their row
 	Sums       Streams
 	Terms      Streams // of the rounding of products
-	FirstJ     uint32  // number of column 0 among the lanes of Sums.Column
+	FirstI     uint32  // number of row 0 among the lanes of Sums.Row and Terms.Row
+	FirstJ     uint32  // number of column 0 among the lanes of Sums.Column and Terms.Column
+	From, To   int     // the columns to form; To 0: all of them
 	Padded     bool    // B has terms that add nothing, not even to NaN, and are packed as zeros
 	Tally      *Tally  // takes the events of what is formed with care; may be nil
 	OddColumns bool    // the low bit of the columns' words is set, instead of the rows'
+}
+
+// end is the column behind the last one to be formed.
+func (p *Product[T]) end() int {
+	if p.To == 0 {
+		return p.J
+	}
+	return p.To
 }

@@ -31,7 +31,7 @@ func (m *Wide) Mul(p *Product[float64], redo func(i0, i1, j0, j1 int)) {
 		return
 	}
 	if p.K == 0 {
-		redo(0, p.I, 0, p.J)
+		redo(0, p.I, p.From, p.end())
 		return
 	}
 	m.side.begin()
@@ -41,9 +41,9 @@ func (m *Wide) Mul(p *Product[float64], redo func(i0, i1, j0, j1 int)) {
 		m.bias = grown(m.bias, 2*pairs)
 		packRows(&m.loops, m.bias, p.Bias, 1, 1, p.I, 1, 0)
 	}
-	for j := 0; j < p.J; {
-		width := m.side.family.panel(p.J - j)
-		columns := min(width, p.J-j)
+	for j := p.From; j < p.end(); {
+		width := m.side.family.panel(p.end() - j)
+		columns := min(width, p.end()-j)
 		clear(m.bad)
 		m.panel(p, j, columns, width)
 		handBack(m.bad, p.I, j, columns, redo)
