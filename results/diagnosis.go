@@ -38,6 +38,7 @@ type Diagnosis struct {
 	Replicate  uint64        `json:"replicate"`
 	Histograms []Histogram   `json:"histograms,omitempty"`
 	Epochs     []EpochCounts `json:"epochs,omitempty"`
+	Qualities  []Quality     `json:"-"` // how much was kept, epoch by epoch
 }
 
 // Range is what a format can hold, in binary exponents, for the ruler below a

@@ -77,6 +77,7 @@ func Diagnose(r *Run) Diagnosis {
 	if r.Findings == nil {
 		return d
 	}
+	d.Qualities = Qualities(r)
 	type place struct {
 		layer int
 		point string

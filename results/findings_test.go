@@ -17,6 +17,10 @@ func TestDiagnose(t *testing.T) {
 	late.Epoch, late.Exponents, late.Counts = 4, []ExponentCount{{-5, 7}}, Counts{}
 	r := Run{Arm: "a", Replicate: 7, Findings: &Findings{Points: []PointFinding{early, late}}}
 	d := Diagnose(&r)
+	if len(d.Qualities) != 2 {
+		t.Errorf("%d qualities of two findings", len(d.Qualities))
+	}
+	d.Qualities = nil // see TestQualities
 	want := Diagnosis{
 		Arm: "a", Replicate: 7,
 		Histograms: []Histogram{{Layer: 2, Name: "dense 5", Point: "forward.sum", Epoch: 4, Lowest: -5, Counts: []uint64{7}, Zeros: 2}},

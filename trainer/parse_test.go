@@ -156,7 +156,7 @@ func TestPointsHaveNames(t *testing.T) {
 		}
 		seen[name] = true
 	}
-	if len(seen) != 26 || PointID(99).String() != "unknown point" {
+	if len(seen) != 27 || PointID(99).String() != "unknown point" {
 		t.Errorf("%d points", len(seen))
 	}
 }
@@ -174,7 +174,7 @@ func TestOperationsHaveNumbersOfTheirOwn(t *testing.T) {
 		opDotSum, opDotSum + 1, opBackDot, opShare, opRest, opNormalResult,
 	}
 	for q := range 2 {
-		for _, o := range []operation{opWorking, opWeightAgain, opWeightProduct, opWeightProduct + 1, opWeightSum, opWeightSum + 1, opWeightResult, opStep, opMaster, opAhead, opAheadSum, opRoot, opRootSum, opRatio, opDecay, opDecaySum} {
+		for _, o := range []operation{opWorking, opWeightAgain, opWeightProduct, opWeightProduct + 1, opWeightSum, opWeightSum + 1, opWeightResult, opStep, opMaster, opAhead, opAheadSum, opRoot, opRootSum, opRatio, opDecay, opDecaySum, opResidue, opResidueScale} {
 			numbers = append(numbers, o.of(q))
 		}
 		for s := range 4 {

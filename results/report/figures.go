@@ -34,6 +34,12 @@ var figureTable = []struct {
 	{"step-map", false, stepMap},
 	{"range-map", false, rangeMap},
 	{"range-by-epoch", false, epochMap},
+	{"kept-signal", false, keptFigure(0)},
+	{"signal-map", false, signalMap},
+	{"kept-sums", false, keptFigure(1)},
+	{"kept-updates", false, keptFigure(2)},
+	{"update-bias", false, keptFigure(3)},
+	{"gradient-direction", false, keptFigure(4)},
 	{"exponents", false, exponentFigures},
 	{"recall", false, recallLattice},
 }

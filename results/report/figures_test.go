@@ -130,6 +130,9 @@ func TestEveryArmNamed(t *testing.T) {
 	s := invented()
 	v := newView(s)
 	for _, entry := range figureTable {
+		if slices.ContainsFunc(keptKinds, func(k keptKind) bool { return k.id == entry.id }) || entry.id == "signal-map" { // of diagnosed runs only
+			continue
+		}
 		if slices.Contains([]string{"contrast-rail", "range-map", "range-by-epoch", "exponents", "grids", "grid-bits", "stochastic-beside-nearest"}, entry.id) { // of some arms only
 			continue
 		}

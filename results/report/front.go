@@ -76,7 +76,9 @@ func (v *view) front(e *expense, width float64) []*draw.Figure {
 	}
 	axis := draw.Wrap(e.axis, 10.5, false, width-60, 2)
 	f.H += 12 * float64(len(axis)-1)
-	p := frame{x0: 52, y0: 14, x1: width - names, y1: 14 + height}
+	p := frame{x0: 52, y0: frontHead, x1: width - names, y1: frontHead + height}
+	f.H += frontHead - 14
+	f.Group.Text(0, 11, plain(v.Metric)+v.betterWords(), draw.Type{Size: 10.5, Max: width})
 	p.x, p.y = v.expenseScale(e, arms, p), v.scoreScale(arms, p)
 	p.grid(&f.Group, v.scoreTick)
 	p.valueAxis(&f.Group)
@@ -87,6 +89,17 @@ func (v *view) front(e *expense, width float64) []*draw.Figure {
 	v.drawSteps(&f.Group, e, p, set)
 	v.frontPoints(&f.Group, e, p, arms, set, width)
 	return []*draw.Figure{f}
+}
+
+// frontHead is the room above a front, for the words of its upright axis, pixels.
+const frontHead = 32.0
+
+// betterWords says which way is better where a reader may doubt it.
+func (v *view) betterWords() string {
+	if v.words.metric.Higher {
+		return ""
+	}
+	return ", upwards is better"
 }
 
 // scored are the arms that have a score and an expense.
@@ -363,28 +376,41 @@ func numberPoints(groups []*draw.Group, p frame, arms []*armView, places []draw.
 	}
 }
 
-// sideways parts arms of (nearly) the same expense by a few pixels, so that their
-// intervals do not hide each other. The best of them stays where it belongs: it
-// is the one on which a step of the Pareto set may stand.
+// sideways parts arms of (nearly) the same expense by a few pixels where their
+// intervals would hide each other. The best of them stays where it belongs: it is
+// the one on which a step of the Pareto set may stand.
 func (v *view) sideways(e *expense, p frame, arms []*armView) []float64 {
-	const step, most = 9.0, 27.0 // pixels
+	const step, most, clear = 9.0, 27.0, 6.0 // pixels
 	byScore := make([]int, len(arms))
 	for i := range byScore {
 		byScore[i] = i
 	}
 	slices.SortStableFunc(byScore, func(a, b int) int { return cmp.Compare(v.gain(arms[b]), v.gain(arms[a])) })
 	out := make([]float64, len(arms))
-	count := map[int]int{} // by stretches of the axis
+	type stretch struct{ column, place int } // of the axis; steps beside it
+	taken := map[stretch][]draw.Box{}
 	for _, i := range byScore {
 		x, _, _ := e.of(v, arms[i])
-		k := int(math.Round(p.x.At(x) / step))
-		n := count[k]
-		count[k]++
-		out[i] = step * float64((n+1)/2) // 0, -1, +1, -2, +2 ... steps
-		if n%2 == 1 {
-			out[i] = -out[i]
+		low, high := v.frontBounds(arms[i])
+		b := draw.Box{X1: 1, Y0: p.y.At(arms[i].Score.Mean) - clear, Y1: p.y.At(arms[i].Score.Mean) + clear}
+		for _, end := range []float64{p.y.At(low), p.y.At(high)} {
+			if !math.IsNaN(end) {
+				b.Y0, b.Y1 = math.Min(b.Y0, end-1), math.Max(b.Y1, end+1)
+			}
 		}
-		out[i] = math.Max(-most, math.Min(most, out[i]))
+		at := stretch{column: int(math.Round(p.x.At(x) / step))}
+		for n := 0; ; n++ {
+			at.place = (n + 1) / 2 // 0, -1, +1, -2, +2 ... steps
+			if n%2 == 1 {
+				at.place = -at.place
+			}
+			hidden := slices.ContainsFunc(taken[at], func(o draw.Box) bool { return b.Overlap(o) > 0 })
+			if !hidden || math.Abs(step*float64(at.place)) >= most {
+				break
+			}
+		}
+		taken[at] = append(taken[at], b)
+		out[i] = step * float64(at.place)
 	}
 	return out
 }

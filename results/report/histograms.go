@@ -20,11 +20,16 @@ type seen struct {
 	limits    *results.Range // nil: the format's range is not known
 }
 
-// shownHistograms is the number of points of a run that are drawn and listed.
-const shownHistograms = 6
+// shownHistograms is the number of points of a run that are drawn and listed;
+// quietHistograms the same where nothing lies outside any range.
+const (
+	shownHistograms = 6
+	quietHistograms = 3
+)
 
 // shownHistograms are, run by run, the points with the largest share of values
-// outside their range, in the order of computation; hidden counts the others.
+// outside their range, then those of the narrowest ranges, in the order of
+// computation; hidden counts the others.
 func (v *view) shownHistograms() (shown []seen, hidden int) {
 	all := v.histograms()
 	for from := 0; from < len(all); {
@@ -37,8 +42,14 @@ func (v *view) shownHistograms() (shown []seen, hidden int) {
 		for i := range order {
 			order[i] = i
 		}
-		slices.SortStableFunc(order, func(a, b int) int { return cmp.Compare(run[b].share(), run[a].share()) })
-		order = order[:min(len(order), shownHistograms)]
+		slices.SortStableFunc(order, func(a, b int) int {
+			return cmp.Or(cmp.Compare(run[b].share(), run[a].share()), cmp.Compare(run[a].binades(), run[b].binades()))
+		})
+		most := shownHistograms
+		if run[order[0]].share() == 0 {
+			most = quietHistograms
+		}
+		order = order[:min(len(order), most)]
 		slices.Sort(order)
 		for _, i := range order {
 			shown = append(shown, run[i])
@@ -53,6 +64,14 @@ func (v *view) shownHistograms() (shown []seen, hidden int) {
 func (s *seen) share() float64 {
 	below, above := s.outside()
 	return float64(below+above) / float64(total(&s.Histogram))
+}
+
+// binades is the width of the format's range; of one that is not known, as wide as any.
+func (s *seen) binades() int {
+	if s.limits == nil {
+		return math.MaxInt
+	}
+	return s.limits.Largest - s.limits.Least
 }
 
 // histograms are those of the last epoch of every point, arm by arm.
@@ -143,13 +162,22 @@ func (s *seen) words() string {
 	return strings.Join(out, ", ")
 }
 
-// head names a histogram.
+// head names a histogram: its layer by number and kind, the table has the rest.
 func (s *seen) head() string {
-	h := layerName(s.Layer, s.Name) + ", " + plain(s.Point)
+	h := plain(s.Point)
+	if s.Layer >= 0 {
+		h = strings.Join(firstWords(layerName(s.Layer, s.Name), 2), " ") + ", " + h
+	}
 	if s.Epoch > 0 {
 		h += fmt.Sprintf(", epoch %d", s.Epoch)
 	}
 	return h
+}
+
+// firstWords are at most n words of s.
+func firstWords(s string, n int) []string {
+	words := strings.Fields(s)
+	return words[:min(len(words), n)]
 }
 
 // histogramSection is left out when nothing was recorded.
@@ -159,7 +187,7 @@ func histogramSection(v *view) any {
 		return nil
 	}
 	return figureWith{
-		Figure:  figureHTML(v, "exponents", "Columns: values by binary exponent, as shares of all values at the point, before they are rounded. Below them the range of the format as a ruler: its thin part holds subnormal numbers. What lies outside it is hatched and counted in words.", false),
+		Figure:  figureHTML(v, "exponents", "Columns: values by binary exponent, as shares of all values at the point, before they are rounded. Below them the range of the format as a ruler: its thin part holds subnormal numbers; an end without a stroke goes on to the power of two beside it. What lies outside it is hatched and counted in words.", false),
 		Caption: t.Caption, Table: t,
 	}
 }
@@ -187,8 +215,8 @@ func (v *view) histogramTable() *tabular {
 		t.Rows = append(t.Rows, row)
 	}
 	if hidden > 0 {
-		t.Notes = append(t.Notes, fmt.Sprintf("Of each run the %d points with the largest share of values outside their range; numbers/histograms.csv has the other %s too.",
-			shownHistograms, plural(hidden, "histogram")))
+		t.Notes = append(t.Notes, fmt.Sprintf("Of each run the %d points with the largest share of values outside their range, or, where there are none, %d of its narrowest formats; numbers/histograms.csv has the other %s too.",
+			shownHistograms, quietHistograms, plural(hidden, "histogram")))
 	}
 	return t
 }
@@ -234,8 +262,9 @@ func exponentPart(all []seen, width float64) *draw.Figure {
 // drawExponents draws one histogram over its ruler.
 func drawExponents(g *draw.Group, p frame, s *seen) {
 	lo, hi := s.Lowest, s.Lowest+len(s.Counts)
-	if s.limits != nil {
-		lo, hi = min(lo, s.limits.Least), max(hi, s.limits.Largest+1)
+	if s.limits != nil { // a ruler much longer than what is measured is cut
+		lo = min(lo, max(s.limits.Least, lo-rulerBeyond))
+		hi = max(hi, min(s.limits.Largest+1, hi+rulerBeyond))
 	}
 	// An exponent's column spans its binade.
 	scale := draw.Linear{Lo: float64(lo) - 0.5, Hi: float64(hi) + 0.5, P0: p.x0, P1: p.x1}
@@ -274,15 +303,38 @@ func drawExponents(g *draw.Group, p frame, s *seen) {
 	if s.limits == nil {
 		return
 	}
-	// The ruler: subnormal numbers thin, normal ones thick.
+	drawRuler(g, p, scale, s, lo, hi)
+}
+
+// rulerBeyond is how many binades of its range a ruler shows beyond the values.
+const rulerBeyond = 14
+
+// drawRuler draws the range of the format between exponents lo and hi: subnormal
+// numbers thin, normal ones thick. An end beyond them has no stroke but its exponent.
+func drawRuler(g *draw.Group, p frame, scale draw.Linear, s *seen, lo, hi int) {
 	y := p.y1 + 25
-	least, normal, largest := scale.At(float64(s.limits.Least)), scale.At(float64(s.limits.Normal)), scale.At(float64(s.limits.Largest+1))
+	place := func(e int) float64 { return scale.At(float64(max(lo, min(hi, e)))) }
+	least, normal, largest := place(s.limits.Least), place(s.limits.Normal), place(s.limits.Largest+1)
 	g.Rect(least, y+2, normal-least, 4, draw.Fill(draw.Fraction))
 	g.Rect(normal, y, largest-normal, 8, draw.Fill(draw.Exponent))
-	for _, x := range []float64{least, normal, largest} {
-		g.Line(x, y-3, x, y+11, draw.Line(draw.Ink, 1))
+	for _, e := range []int{s.limits.Least, s.limits.Normal, s.limits.Largest + 1} {
+		if e >= lo && e <= hi {
+			g.Line(place(e), y-3, place(e), y+11, draw.Line(draw.Ink, 1))
+		}
 	}
-	words := draw.Fit(s.format, 10, false, p.x1-p.x0)
+	// The ends' words, then the format's name between them.
+	left, right := p.x0, p.x1
+	if s.limits.Least < lo {
+		words := fmt.Sprintf("← 2^%s", draw.TickLabel(float64(s.limits.Least)))
+		g.Text(p.x0, y+22, words, draw.Type{Size: 9.5, Role: draw.Soft})
+		left += draw.Width(words, 9.5, false) + 6
+	}
+	if s.limits.Largest+1 > hi {
+		words := fmt.Sprintf("2^%s →", draw.TickLabel(float64(s.limits.Largest+1)))
+		g.Text(p.x1, y+22, words, draw.Type{Size: 9.5, Anchor: draw.End, Role: draw.Soft})
+		right -= draw.Width(words, 9.5, false) + 6
+	}
+	words := draw.Fit(s.format, 10, false, right-left)
 	half := draw.Width(words, 10, false) / 2
-	g.Text(math.Max(p.x0+half, math.Min(p.x1-half, (least+largest)/2)), y+22, words, draw.Type{Size: 10, Anchor: draw.Middle})
+	g.Text(math.Max(left+half, math.Min(right-half, (least+largest)/2)), y+22, words, draw.Type{Size: 10, Anchor: draw.Middle})
 }

@@ -92,6 +92,7 @@ func invented() *results.Study {
 	c := inventComparison(inventedArms[1], "bf16-nearest", lastScores(s, "bf16-nearest"), lastScores(s, inventedArms[1].slug))
 	c.Headline = true
 	s.Contrasts = []results.Comparison{c}
+	inventItems(s)
 	s.Comparisons[1].Warnings = []string{"skewness 1.4: the t interval is doubtful"}
 	return s
 }
@@ -291,8 +292,37 @@ func inventDiagnosis(s *results.Study) {
 	}
 	d.Histograms = append(d.Histograms, d.Histograms[0]) // a later epoch of the first point
 	d.Histograms[4].Epoch = 9
-	s.Diagnoses = []results.Diagnosis{d, {Arm: "unknown"}}
+	inventQualities(&d)
+	baseline := results.Diagnosis{Arm: "baseline", Replicate: 101}
+	inventQualities(&baseline)
+	s.Diagnoses = []results.Diagnosis{d, {Arm: "unknown"}, baseline}
 	s.Ranges = []results.Range{{Format: "E4M3", Least: -9, Normal: -6, Largest: 8}, {Format: "E5M2", Least: -16, Normal: -14, Largest: 15}}
+}
+
+// inventQualities lets a run lose more from epoch to epoch; what cannot be told,
+// and what lost nothing, is among it.
+func inventQualities(d *results.Diagnosis) {
+	add := func(kind results.QualityKind, layer int, name, at string, epoch int, value float64) {
+		d.Qualities = append(d.Qualities, results.Quality{Kind: kind, Layer: layer, Name: name, At: at, Epoch: epoch, Count: 256, Value: value})
+	}
+	for e := 1; e <= inventedEpochs; e++ {
+		if e == 5 { // not looked at
+			continue
+		}
+		t := float64(e)
+		add(results.SignalToNoise, -1, "input", "input", e, math.Inf(1))
+		add(results.SignalToNoise, -1, "loss", "loss.gradient", e, 20-t)
+		for k, layer := range []string{"conv1d out=6 width=9 stride=2 pad=0", "conv1d out=8", "dense 16", "dense 5"} {
+			add(results.SignalToNoise, 2*k, layer, "forward.weight", e, 40-t)
+			add(results.SignalToNoise, 2*k, layer, "update.master", e, 30-2*t)
+			add(results.SumsKept, 2*k, layer, "forward.sum", e, 1-1e-5*t*float64(k))
+			add(results.UpdatesKept, 2*k, layer, "weight", e, 1-0.06*t)
+			add(results.UpdateBias, 2*k, layer, "weight", e, -0.001*t)
+			add(results.UpdatesStill, 2*k, layer, "weight", e, 0.01*t)
+			add(results.GradientCosine, 2*k, layer, "bias", e, 1-1e-9*t)
+		}
+		add(results.GradientCosine, 6, "dense 5", "weight", e, math.NaN())
+	}
 }
 
 // gridStudy is a study of a grid: splits by rounding by order of sums.
@@ -345,4 +375,27 @@ func manyArms(n int) *results.Study {
 		s.Comparisons = append(s.Comparisons, inventComparison(a, "baseline", from, scores))
 	}
 	return s
+}
+
+// inventItems lets every pair differ in a few test examples, and arms be tuned over
+// two learning rates and one loss scale.
+func inventItems(s *results.Study) {
+	for i := range s.Comparisons {
+		c := &s.Comparisons[i]
+		c.Items = &results.ItemComparison{
+			Items: 2000, Replicates: c.N, Crossed: i%2 == 0, Method: "a bootstrap (invented)", Low: c.Low * 1.2, High: c.High * 1.2, ItemShare: 0.35,
+			Gained: 12, Lost: 30, Changed: 60, Flips: []results.Flips{{Replicate: 100, Gained: 12, Lost: 30, Changed: 60, P: 0.008}},
+		}
+	}
+	s.Comparisons[0].Items.Low = math.NaN()
+	t := &results.Tuning{
+		Metric: "validation accuracy", Replicates: 2, FirstSeed: 900, LearningRates: []string{"0.01", "0.02"}, LossScales: []string{"none"}, Runs: 28, Stored: 27,
+	}
+	for i, a := range s.Arms {
+		t.Arms = append(t.Arms, results.TunedArm{Arm: a.Slug, Chosen: i%3 - 1, Edge: i == 2, Trials: []results.Trial{
+			{LearningRate: "0.01", LossScale: "none", N: 2, Scores: []float64{0.9, 0.92}, Mean: 0.91},
+			{LearningRate: "0.02", LossScale: "none", N: 1, Diverged: 1, Mean: math.NaN()},
+		}})
+	}
+	s.Tuning = t
 }

@@ -35,7 +35,7 @@ var markdownTable = []struct {
 		return append(v.figureBlocks("score-against-bits", "score-against-bytes", "score-against-energy"), tableBlock(v.frontTable()))
 	}},
 	{"Paired differences", func(v *view) []block {
-		return append(v.figureBlocks("margin-rail"), tableBlock(v.pairTable(v.Comparisons)))
+		return append(v.figureBlocks("margin-rail"), tableBlock(v.pairTable(v.Comparisons)), tableBlock(v.itemTable()))
 	}},
 	{"Contrasts", func(v *view) []block {
 		return append(v.figureBlocks("contrast-rail"), tableBlock(v.pairTable(v.Contrasts)))
@@ -48,6 +48,13 @@ var markdownTable = []struct {
 		}
 		return out
 	}},
+	{"How each arm was tuned", func(v *view) []block {
+		if v.Tuning == nil {
+			return nil
+		}
+		chosen, tried := v.tuningTables()
+		return append(paragraphs(v.tuningWords()), tableBlock(chosen), tableBlock(tried))
+	}},
 	{"Loss curves", func(v *view) []block {
 		return append(v.figureBlocks("training-loss", "loss-by-arm"), tableBlock(v.curveTable()))
 	}},
@@ -56,6 +63,9 @@ var markdownTable = []struct {
 	}},
 	{"What left the range of its format", func(v *view) []block {
 		return append(v.figureBlocks("range-map", "range-by-epoch"), tableBlock(v.rangeTable()))
+	}},
+	{"What arithmetic kept", func(v *view) []block {
+		return append(v.figureBlocks("kept-signal", "signal-map", "kept-sums", "kept-updates", "update-bias", "gradient-direction"), tableBlock(v.keptTable()))
 	}},
 	{"Exponents against the range of formats", func(v *view) []block {
 		return append(v.figureBlocks("exponents"), tableBlock(v.histogramTable()))
@@ -134,12 +144,15 @@ func (v *view) markdown(w io.Writer) error {
 	var b strings.Builder
 	fmt.Fprintf(&b, "# %s\n\n", inline(v.heading()))
 	for i, s := range v.sentences() {
-		if i == 0 {
-			s = "**" + inline(s) + "**"
-		} else {
-			s = inline(s)
+		if i > 0 {
+			b.WriteString(inline(s) + "\n\n")
+			continue
 		}
-		b.WriteString(s + "\n\n")
+		b.WriteString("**" + inline(s) + "**\n\n")
+		if facts := v.brief(); len(facts) > 0 {
+			k := factBlock(facts)
+			k.write(&b)
+		}
 	}
 	for _, a := range v.alarms() {
 		fmt.Fprintf(&b, "> **%s** %s\n\n", inline(a.Head), inline(a.Text))

@@ -34,9 +34,11 @@ var sectionTable = []struct {
 	{"differences", "Paired differences", "differences", differenceSection},
 	{"contrasts", "Contrasts", "differences", contrastSection},
 	{"grids", "Grids", "grids", gridSection},
+	{"tuning", "How each arm was tuned", "tuning", tuningSection},
 	{"curves", "Loss curves", "curves", curveSection},
 	{"roundings", "Stochastic beside nearest rounding", "differences", twinSection},
 	{"counters", "What left the range of its format", "counters", counterSection},
+	{"kept", "What arithmetic kept", "kept", keptSection},
 	{"histograms", "Exponents against the range of formats", "figure", histogramSection},
 	{"recall-section", "Recall by class", "recall", recallSection},
 	{"costs", "What it would cost", "costs", costSection},
@@ -56,6 +58,7 @@ const shownSentences = 6
 type pageData struct {
 	Heading        string
 	Answer         []string // sentence by sentence
+	Brief          []briefRow
 	AnswerRest     []string // those that are folded away
 	RestCount      string
 	Alarms         []fact
@@ -93,7 +96,7 @@ func (v *view) html(w io.Writer) error {
 		return fmt.Errorf("report: %w", err)
 	}
 	p := pageData{
-		Heading: v.heading(), Answer: v.sentences(), Alarms: v.alarms(), WrittenOn: day(v.Written),
+		Heading: v.heading(), Answer: v.sentences(), Brief: v.briefRows(), Alarms: v.alarms(), WrittenOn: day(v.Written),
 		Code: plain(v.CodeVersion), Digest: plain(v.StoreDigest),
 		// The three are the project's own files and JSON that escapes <, > and &.
 		Style: template.CSS(style), Script: template.JS(script), Curves: template.JS(v.curveData()),

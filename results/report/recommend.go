@@ -41,23 +41,16 @@ func (v *view) recommendation() recommendation {
 		return data
 	}
 	c := best.Comparison
-	data.Lead = append(data.Lead, fmt.Sprintf("As a whole, %s is the arm within the margin with the fewest bits a stored value (%s): difference to the baseline %s%s %s, n = %d.",
-		best.Label(), bits(best.Bits), v.words.diff(c.Mean), v.words.unit(), v.words.interval(c.Low, c.High), c.N))
+	lead := fmt.Sprintf("As a whole, %s is the arm within the margin with the fewest bits a stored value (%s)", best.Label(), bits(best.Bits))
+	if !v.storesFewer(best) {
+		lead = "No arm within the margin stores fewer bits than the baseline; the one that computes with the fewest is " + best.Label()
+	}
+	data.Lead = append(data.Lead, fmt.Sprintf("%s: difference to the baseline %s%s %s, n = %d.",
+		lead, v.words.diff(c.Mean), v.words.unit(), v.words.interval(c.Low, c.High), c.N))
 	data.Lead = append(data.Lead, "The table asks point by point. An arm is evidence for all its settings together, not for each by itself: rows of different arms have not been tested in one arm, and must be before they are used so. "+
 		"Where the evidence is \"alone\", the arm differs from the baseline at that point only.")
 	data.Table = v.adviceTable()
 	return data
-}
-
-// leanest is the arm within the margin with the fewest bits; nil: none.
-func (v *view) leanest() *armView {
-	var best *armView
-	for _, a := range v.others() {
-		if k, ok := a.kind(); ok && k == results.Within && (best == nil || a.Bits < best.Bits) {
-			best = a
-		}
-	}
-	return best
 }
 
 // adviceTable has a row for points that share arm, format, rounding and order.

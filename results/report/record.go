@@ -149,6 +149,10 @@ func (v *view) standing() []fact {
 	if n := v.LongestSum; n > 0 {
 		sum = fmt.Sprintf("The longest sum tested here has %s. Nothing is claimed for sums beyond four times that, %d terms: rounding errors grow with the length of a sum.", plural(n, "term"), 4*n)
 	}
+	worst := "Means hide single failures: look at the recall by class and at the worst replicate of each, with its exact interval."
+	if len(v.Classes) == 0 {
+		worst = "Means hide single failures: look at the worst replicate among the paired differences."
+	}
 	return []fact{
 		{"small networks", "Small networks tolerate more rounding than large ones, and their sums are shorter. What holds here need not hold for a larger network."},
 		{"longest sum", sum},
@@ -156,7 +160,7 @@ func (v *view) standing() []fact {
 		{"undecided", "Undecided does not mean the same: it means that these pairs cannot tell."},
 		{"rare inputs", "The scores are those of this data and this training. Rare inputs, drift of the data and faults of the hardware are untested."},
 		{"safety-related", "This report is no approval for a safety-related use. Such a use is a matter of the functional-safety standard that applies to it and of qualified engineers."},
-		{"worst replicate", "Means hide single failures: look at the recall by class and at the worst replicate of each, with its exact interval."},
+		{"worst replicate", worst},
 	}
 }
 

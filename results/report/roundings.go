@@ -2,7 +2,6 @@ package report
 
 import (
 	"fmt"
-	"html/template"
 	"math"
 	"slices"
 	"strings"
@@ -80,10 +79,7 @@ func twinSection(v *view) any {
 		return nil
 	}
 	caption := "Two arms that share everything but the rounding at the named points: above the line rounded to nearest, below it stochastically (dotted). Bars, marks, post and scale as among the paired differences to the baseline."
-	return struct {
-		Figure template.HTML
-		Table  *tabular
-	}{figureHTML(v, "stochastic-beside-nearest", caption, false), t}
+	return figureWith{Figure: figureHTML(v, "stochastic-beside-nearest", caption, false), Table: t}
 }
 
 // twinTable has a row a pair; nil when there is none.
@@ -165,6 +161,9 @@ func twinPart(v *view, pairs []twin, d domain, width float64) *draw.Figure {
 // pair draws two arms around one line of the rail.
 func (r *rail) pair(g *draw.Group, y, head float64, i int, w twin) {
 	at := "stochastic at " + strings.Join(w.points, ", ")
+	if len(w.points) > 2 { // the table names them
+		at = fmt.Sprintf("stochastic at %d points", len(w.points))
+	}
 	if r.narrow {
 		g.Rect(0, y, r.width, head, draw.Fill(draw.Paper))
 		for k, a := range []*armView{w.nearest, w.stochastic} {

@@ -16,6 +16,7 @@ type figureWith struct {
 	Figure  template.HTML
 	Caption string
 	Table   *tabular
+	Further *tabular // nil: none
 	Without string
 }
 
@@ -29,7 +30,7 @@ func differenceSection(v *view) any {
 	case v.noiseMeasured():
 		caption += " The noise floor has no width: " + plain(v.noiseWords()) + "."
 	}
-	return figureWith{Figure: figureHTML(v, "margin-rail", caption, false), Table: v.pairTable(v.Comparisons)}
+	return figureWith{Figure: figureHTML(v, "margin-rail", caption, false), Table: v.pairTable(v.Comparisons), Further: v.itemTable()}
 }
 
 // contrastSection is left out when the plan asks for no contrast.
@@ -121,7 +122,7 @@ func lastOf(c *curve) string {
 
 // frontSection is the metric against bits, bytes moved and energy.
 func frontSection(v *view) any {
-	caption := "Marks: mean " + plain(v.Metric) + " over replicates. Upright bar: the " + percentage(v.Confidence) + " interval of the paired difference to the baseline, drawn around the arm's mean; grey, at the baseline, that of its own mean. Arms of equal width stand side by side. " +
+	caption := "Marks: mean " + plain(v.Metric) + " over replicates. Upright bar: the " + percentage(v.Confidence) + " interval of the paired difference to the baseline, drawn around the arm's mean; grey, at the baseline, that of its own mean. Arms of equal width whose bars would hide each other stand side by side. " +
 		"Steps: the Pareto set, the arms that no arm of less expense equals. Bits are those of stored values, weighted by tensor sizes, and exact: they have no interval; the bits of sums are not in them."
 	if v.words.percent {
 		caption += " The upright axis is logarithmic in what is missing to 100 %."
@@ -280,6 +281,9 @@ func recallSection(v *view) any {
 		if r := v.recalls(a); len(r) > 0 {
 			data.Arms = append(data.Arms, armRecall{a.Label(), v.recallTable(r), v.confusionTable(a)})
 		}
+	}
+	if data.Figure == "" && len(v.Classes) == 0 && len(v.Runs) > 0 { // a regression has no classes
+		return nil
 	}
 	return data
 }

@@ -50,6 +50,18 @@
     tip.style.top = y + 'px';
   });
 
+  // One of several figures: the others stay for paper.
+  all('.choice input').forEach(function (radio) {
+    var part = document.querySelector('[data-choice="' + radio.value + '"]');
+    var choose = function () {
+      all('.choice input').forEach(function (r) {
+        if (r.name === radio.name) { document.querySelector('[data-choice="' + r.value + '"]').classList.toggle('unchosen', !r.checked); }
+      });
+    };
+    radio.addEventListener('change', choose);
+    part.classList.toggle('unchosen', !radio.checked);
+  });
+
   // Arms shown or faded in every figure of curves.
   var switches = all('.arm-switch');
   var applyArms = function () {
