@@ -24,6 +24,8 @@
 //	                    look after every so many ends the plan once all is decided
 //	[claim]             metric (also "epochs to test accuracy 0.9"), margin, confidence;
 //	                    class, of a recall; false_alarm_rate, of a missed-fault rate
+//	[tuning]            learning_rate, loss_scale: arrays of values that every arm tries,
+//	                    each with each; metric, replicates, first_seed (see Tuning)
 //	[format.NAME]       a number format of the plan's own: exponent, fraction, bias,
 //	                    subnormals, top; or values, the list of all there are
 //	[baseline]          settings of the arm that all others are compared with
@@ -69,6 +71,16 @@
 //	predictions    stored (default) or none: whether runs keep what they say of every
 //	               test example after the last epoch, for intervals over examples;
 //	               changes no bit either; the plan's alone
+//
+// # Tuning
+//
+// [tuning] answers whether every arm was tuned as hard as the baseline: all try the
+// same values of the start of their learning rate (its schedule keeps its shape) and
+// of their loss scale, on the same replicates, whose seeds are none of the reported
+// ones, and each is given the pair with the best mean of a metric of validation data;
+// of equal pairs the first, loss scales varying fastest. A run that diverges counts as
+// worse than any that does not, so the fewest diverged runs come first. The test data
+// is not looked at. A pretraining is not tuned, controls train as the baseline does.
 //
 // # Settings
 //
