@@ -60,7 +60,7 @@ func measureRate(ctx context.Context, p *plan.Plan) (float64, error) {
 	for k := range arms {
 		i := k * len(p.Arms) / arms
 		t := p.Arms[i].Training
-		t.Epochs = 1
+		t.Epochs, t.LearningRate.WarmUp = 1, 0
 		n := batches * t.Batch
 		job := trainer.Job{
 			Network: p.Network, Arm: p.Arms[i].Arithmetic, Training: t, Seed: 1,

@@ -53,17 +53,16 @@ func (r *armReader) readStages(n *node, arm *Arm, a *assignment, scale trainer.L
 
 // readStart reads where a stage starts; last is the first step of the one before it.
 func (r *armReader) readStart(n *node, s *trainer.Stage, t *trainer.Training, last *int) {
-	key := stageStart[0]
-	switch given := slices.DeleteFunc(slices.Clone(stageStart), func(k string) bool { return n.table[k] == nil }); len(given) {
+	given := slices.DeleteFunc(slices.Clone(stageStart), func(k string) bool { return n.table[k] == nil })
+	switch len(given) {
 	case 0:
 		r.fail(n.errorf("write from_epoch = 8 or from_step = 500", "the stage does not say when it starts"))
 		return
 	case 2:
 		r.fail(n.table[given[1]].errorf("keep one of them", "the stage starts with an epoch and with a step"))
 		return
-	default:
-		key = given[0]
 	}
+	key := given[0]
 	at := n.table[key]
 	before := len(r.errs)
 	number := int(r.whole(n, key, 2, 2, maxCount))
