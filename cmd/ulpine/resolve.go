@@ -60,7 +60,8 @@ func measureRate(ctx context.Context, p *plan.Plan) (float64, error) {
 	for k := range arms {
 		i := k * len(p.Arms) / arms
 		t := p.Arms[i].Training
-		t.Epochs, t.LearningRate.WarmUp = 1, 0
+		t.Epochs = 1
+		t.LearningRate = trainer.Schedule{Start: t.LearningRate.Start} // a schedule may need more steps
 		n := batches * t.Batch
 		job := trainer.Job{
 			Network: p.Network, Arm: p.Arms[i].Arithmetic, Training: t, Seed: 1,
