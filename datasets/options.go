@@ -95,8 +95,10 @@ func (r *reader) text(key, fallback string) string {
 
 // path reads the path of a file, which must be given if required.
 func (r *reader) path(key string, required bool) string {
+	before := len(r.faults)
 	s := r.text(key, "")
 	switch _, given := r.options.Values[key]; {
+	case len(r.faults) > before:
 	case s == "" && given:
 		r.fail(key, "the path is empty", "write the path of a file, or leave the key out")
 	case s == "" && required:

@@ -142,8 +142,8 @@ var fashionSums = map[string]string{
 }
 
 // TestFashion trains the network of the shipped plan fashion-cnn.toml for one epoch
-// on the first 10,000 images. Eight seeds of .ci/torch/bands.py come to 0.792 to 0.8345;
-// the band is half a point wider at either end. The plan's full run comes to 90.5 %, see
+// on the first 10,000 images. Eight seeds of .ci/torch/bands.py come to 0.771 to 0.8215;
+// the band is a point wider at either end. The plan's full run comes to 90.5 %, see
 // DEVELOPERS.md.
 func TestFashion(t *testing.T) {
 	if testing.Short() {
@@ -153,18 +153,18 @@ func TestFashion(t *testing.T) {
 	for name, sum := range fashionSums {
 		readData(t, filepath.Join(folder, name), sum)
 	}
-	trainImages(t, folder, "plans/fashion-cnn.toml", 0.787, 0.8395)
+	trainImages(t, folder, "plans/fashion-cnn.toml", 0.761, 0.8315)
 }
 
 // TestLeNet trains the network of the shipped plan mnist-lenet.toml for one epoch on
-// the first 10,000 images. Eight seeds of .ci/torch/bands.py come to 0.930 to 0.950; the
-// band is half a point wider at either end. The plan's full run comes to 0.84 % test
+// the first 10,000 images. Eight seeds of .ci/torch/bands.py come to 0.9045 to 0.945, of
+// mean 0.929 as eight of this program; the band is a point wider at either end. The plan's full run comes to 0.84 % test
 // error, see DEVELOPERS.md.
 func TestLeNet(t *testing.T) {
 	if testing.Short() {
 		t.Skip("trains a convolutional network")
 	}
-	trainImages(t, mnistFolder(t), "plans/mnist-lenet.toml", 0.925, 0.955)
+	trainImages(t, mnistFolder(t), "plans/mnist-lenet.toml", 0.8945, 0.955)
 }
 
 // trainImages trains the network of a shipped plan for one epoch and holds the test
@@ -172,7 +172,7 @@ func TestLeNet(t *testing.T) {
 func trainImages(t *testing.T, folder, planFile string, low, high float64) {
 	t.Helper()
 	layers := planLayers(t, planFile)
-	accuracy := trainBaseline(t, t.TempDir(), idxTask(folder, 10000), layers, 0.02, 32, 1, 1)
+	accuracy := trainBaseline(t, t.TempDir(), idxTask(folder, 10000), layers, 0.01, 32, 1, 1)
 	if t.Logf("accuracy %.4f", accuracy); !(accuracy >= low && accuracy <= high) {
 		t.Errorf("accuracy %.4f, want %v to %v", accuracy, low, high)
 	}
