@@ -186,6 +186,8 @@ func fill(to *cost.Assignment, from *trainer.Arithmetic, id trainer.PointID) {
 		to.WeightGradient.Sums = costSums(&from.WeightGradient.Sums)
 	case trainer.WeightGradientResult:
 		to.WeightGradient.Result = costPoint(from.WeightGradient.Result)
+	case trainer.WeightGradientResidue:
+		to.WeightGradient.Residue = costPointer(from.WeightGradient.Residue)
 	case trainer.UpdateState:
 		for _, s := range from.States {
 			to.States = append(to.States, costPoint(s))

@@ -33,6 +33,14 @@
 // do not depend on the looks. An arm with the baseline's own bits is decided only at
 // the last look: differences without spread say nothing before.
 //
+// # Tuning
+//
+// A plan with a tuning is two plans one after the other, of one study and under one
+// claim: first its trials, arm/trial by arm/trial on the tuning's seeds, then its arms
+// with what was chosen for them. The choice follows from the stored trials alone, so
+// it is the same whoever reads it; runs of both are stored under keys like any other,
+// shared with plans that spell the same values out.
+//
 // # The study
 //
 // What identifies a study, so that its claim can be fixed once, is the task with

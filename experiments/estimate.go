@@ -2,8 +2,13 @@ package experiments
 
 import "time"
 
-// least is how long an arm must have been measured before its own speed counts.
-const least = 200 * time.Millisecond
+// least is how long an arm must have been measured before its own speed counts, and
+// leastPart how much of a run: arms that diverge at once spend most of their time on
+// getting ready, and would make the rest look endless.
+const (
+	least     = 200 * time.Millisecond
+	leastPart = 0.05
+)
 
 // estimator tells how long the rest of a plan will take. Work is counted in
 // multiply-adds; arms differ in how fast they emulate one, so each has a speed of
@@ -125,7 +130,7 @@ func (e *estimator) speeds() (each map[*group]float64, common float64) {
 	var all spent
 	for g, s := range known {
 		all.macs, all.time = all.macs+s.macs, all.time+s.time
-		if s.time >= least {
+		if s.time >= least && s.macs >= leastPart*float64(g.macs) {
 			each[g] = s.macs / s.time.Seconds()
 		}
 	}

@@ -78,3 +78,27 @@ func TestAbout(t *testing.T) {
 		}
 	}
 }
+
+// TestEstimateOfDivergedRuns: an arm that stopped after next to nothing does not
+// make the rest look endless.
+func TestEstimateOfDivergedRuns(t *testing.T) {
+	c := &clock{time.Unix(0, 0)}
+	e := newEstimator(1)
+	e.now = func() time.Time { return c.now }
+	sound, wild := &group{macs: 1000}, &group{macs: 1000}
+	for range 3 {
+		e.plan(sound)
+		e.plan(wild)
+	}
+	e.start(0, &unit{group: sound})
+	c.sleep(10 * time.Second)
+	e.step(0, 100, 100)
+	e.end(0)
+	e.start(0, &unit{group: wild})
+	c.sleep(time.Second)
+	e.step(0, 1, 100) // 10 a second, were it to count
+	e.end(0)
+	if o := e.overall(); o.Remaining < 40*time.Second || o.Remaining > 50*time.Second {
+		t.Errorf("remaining %v, want 4 runs of 11 s at most", o.Remaining)
+	}
+}

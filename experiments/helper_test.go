@@ -177,7 +177,7 @@ func isPretraining(job trainer.Job) bool { return job.Training.Epochs == 1 }
 func fake(ctx context.Context, p *plan.Plan, s *store.Store, o Options,
 	train func(context.Context, trainer.Job, trainer.Watcher) (trainer.Outcome, error),
 ) (Summary, error) {
-	x := newRunner(p, s, o)
+	x := newRunner(newLayout(p), s, o)
 	x.train = train
 	return x.run(ctx)
 }

@@ -78,6 +78,9 @@ func claimOf(p *plan.Plan) results.Claim {
 		Metric: p.Claim.Metric, Margin: p.Claim.Margin, Confidence: p.Claim.Confidence,
 		Count: p.Replicates.Count, FirstSeed: p.Replicates.FirstSeed, LookEvery: p.Replicates.LookEvery,
 	}
+	if p.Tuning != nil {
+		c.Tuning = p.Tuning.String()
+	}
 	for _, k := range p.Contrasts {
 		c.Contrasts = append(c.Contrasts, results.ContrastClaim{Arm: k.Arm, Against: k.Against, Margin: k.Margin})
 	}

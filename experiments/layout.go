@@ -27,6 +27,7 @@ type layout struct {
 	claim  results.Claim
 	groups []group // the baseline's first
 	pre    *group  // nil: no pretraining
+	tuning bool    // its arms are trials, none of which is compared with another
 }
 
 func newLayout(p *plan.Plan) *layout {
@@ -123,7 +124,9 @@ func (k keys) all() []results.Hash {
 
 // compared reports whether a group's runs are an arm's, and not only the
 // baseline's or a control's.
-func (l *layout) compared(g *group) bool { return g.arms[0] != 0 && g.arms[0] < len(l.Arms) }
+func (l *layout) compared(g *group) bool {
+	return !l.tuning && g.arms[0] != 0 && g.arms[0] < len(l.Arms)
+}
 
 // planned names the runs of a replicate for the store: every arm, and the
 // pretraining behind them.

@@ -127,3 +127,25 @@ func TestLooksAreClaimed(t *testing.T) {
 		}
 	}
 }
+
+// TestTwinDoesNotHoldUpLooks: an arm with the baseline's arithmetic is decided at the
+// first look, so it does not keep a plan going whose other arms are decided.
+func TestTwinDoesNotHoldUpLooks(t *testing.T) {
+	p := tinyPlan(t, "", "count = 3", looking, `metric = "test accuracy"`, `metric = "test loss"`)
+	s := openStore(t)
+	got, err := Run(context.Background(), p, s, Options{})
+	if err != nil || got.Runs != 12 {
+		t.Fatalf("%+v, %v", got, err)
+	}
+	study, err := Study(p, s)
+	if err != nil {
+		t.Fatal(err)
+	}
+	twin := study.Comparisons[2]
+	if !twin.Same || twin.Verdict.Kind != results.Within || study.Comparisons[0].Same {
+		t.Errorf("%+v", twin)
+	}
+	if !strings.Contains(study.Answer, "(4 pairs each, look 1 of 2)") || strings.Contains(study.Answer, "stored") {
+		t.Errorf("answer %q", study.Answer)
+	}
+}

@@ -96,7 +96,8 @@ type runner struct {
 
 // Run does every run of a plan that is not stored yet and stores it, on as many
 // workers as the options say; the bits of the results do not depend on them. It
-// fixes the plan's claim in the store before the first run.
+// fixes the plan's claim in the store before the first run. A plan with a tuning has
+// its runs done first; then every arm is given its values.
 //
 // A cancelled context ends it within a second with ErrStopped;
 // runs in flight are marked as broken off. Runs that fail are stored as such and
@@ -104,13 +105,16 @@ type runner struct {
 // everything else is stored. Other errors (data that cannot be loaded, a store
 // that cannot be written) stop the plan at once.
 func Run(ctx context.Context, p *plan.Plan, s *store.Store, o Options) (Summary, error) {
-	return newRunner(p, s, o).run(ctx)
+	if p.Tuning != nil {
+		return runTuned(ctx, p, s, o)
+	}
+	return newRunner(newLayout(p), s, o).run(ctx)
 }
 
-func newRunner(p *plan.Plan, s *store.Store, o Options) *runner {
-	x := &runner{layout: newLayout(p), store: s, options: o, train: trainer.Run, flying: map[results.Hash]Place{}}
+func newRunner(l *layout, s *store.Store, o Options) *runner {
+	x := &runner{layout: l, store: s, options: o, train: trainer.Run, flying: map[results.Hash]Place{}}
 	each, _ := x.perReplicate()
-	x.summary.Runs = each * p.Replicates.Count
+	x.summary.Runs = each * l.Replicates.Count
 	if x.options.Workers <= 0 {
 		x.options.Workers = runtime.GOMAXPROCS(0)
 	}
@@ -224,6 +228,9 @@ func (x *runner) failed() error {
 
 // baseline is an error about a baseline or pretraining that diverged, or nil.
 func (x *runner) baseline() error {
+	if x.tuning {
+		return nil // a value that the baseline diverges with is not chosen
+	}
 	var runs []results.Run
 	var keys []results.Hash
 	for _, r := range x.replicas {

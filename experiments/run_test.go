@@ -368,7 +368,7 @@ func TestDataIsSharedAndLetGo(t *testing.T) {
 	for _, workers := range []int{1, 2, 5} {
 		p, source := fakePlan(t, replicates, false)
 		s := openStore(t)
-		x := newRunner(p, s, Options{Workers: workers})
+		x := newRunner(newLayout(p), s, Options{Workers: workers})
 		most := 0
 		var mu sync.Mutex
 		x.train = func(ctx context.Context, job trainer.Job, w trainer.Watcher) (trainer.Outcome, error) {

@@ -19,8 +19,28 @@ import (
 // nothing and draws no data. A plan that was never run gives a study without
 // runs, not an error.
 func Study(p *plan.Plan, s *store.Store) (*results.Study, error) {
-	l := newLayout(p)
-	study := describe(l)
+	if p.Tuning == nil {
+		return studyOf(newLayout(p), s, nil)
+	}
+	tuning, chosen, err := choose(p, s)
+	if err != nil {
+		return nil, err
+	}
+	if chosen == nil {
+		return studyOf(newLayout(p), s, tuning)
+	}
+	study, err := studyOf(tunedLayout(p, chosen), s, tuning)
+	if err == nil {
+		study.Warnings = append(study.Warnings, tuningWarnings(tuning, newLayout(p).nameOf)...)
+	}
+	return study, err
+}
+
+// studyOf is the study of a layout; a tuning that is not done has no runs to report
+// yet, whatever another plan has stored of the same arms.
+func studyOf(l *layout, s *store.Store, tuning *results.Tuning) (*results.Study, error) {
+	p, study := l.Plan, describe(l)
+	study.Tuning = tuning
 	study.CodeVersion, study.Written = CodeVersion(), time.Now()
 	study.Rerun = rerun(p, s)
 	digest, err := s.Digest()
@@ -31,8 +51,10 @@ func Study(p *plan.Plan, s *store.Store) (*results.Study, error) {
 	if err := readClaim(l, s, study); err != nil {
 		return nil, err
 	}
-	if err := readRuns(l, s, study); err != nil {
-		return nil, err
+	if tuning == nil || tuning.Done {
+		if err := readRuns(l, s, study); err != nil {
+			return nil, err
+		}
 	}
 	study.BaselineProblem = baselineProblem(p, study.Runs)
 	comparisons(l, study)

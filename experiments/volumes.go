@@ -104,7 +104,7 @@ func perStep(l *trainer.Spec, id trainer.PointID) uint64 {
 		}
 	}
 	switch id {
-	case trainer.ForwardWeight, trainer.WeightGradientResult, trainer.UpdateState, trainer.UpdateStep, trainer.UpdateMaster:
+	case trainer.ForwardWeight, trainer.WeightGradientResult, trainer.WeightGradientResidue, trainer.UpdateState, trainer.UpdateStep, trainer.UpdateMaster:
 		return all
 	case trainer.InputGradientWeight:
 		return weights

@@ -18,6 +18,9 @@ type Claim struct {
 	// LookEvery is after how many replicates there is a look that may end the plan,
 	// Count being the most; 0: there is none. It is left out of the hash then.
 	LookEvery int `cbor:"7,keyasint,omitempty" json:"look_every,omitempty"`
+	// Tuning is how learning rates and loss scales are chosen, in one line; empty:
+	// they are spelt out.
+	Tuning string `cbor:"8,keyasint,omitempty" json:"tuning,omitempty"`
 }
 
 // ContrastClaim is the claim of one contrast between two arms (slugs).
@@ -56,6 +59,7 @@ func (before Claim) Differences(now Claim) string {
 	add("replicate count", before.Count, now.Count)
 	add("first seed", before.FirstSeed, now.FirstSeed)
 	add("look interval", describeLooks(before.LookEvery), describeLooks(now.LookEvery))
+	add("tuning", orNone(before.Tuning), orNone(now.Tuning))
 	add("list of contrasts", describe(before.Contrasts), describe(now.Contrasts))
 	return strings.Join(parts, "; ")
 }
@@ -65,6 +69,13 @@ func describeLooks(every int) string {
 		return "none"
 	}
 	return fmt.Sprintf("%d replicates", every)
+}
+
+func orNone(text string) string {
+	if text == "" {
+		return "none"
+	}
+	return text
 }
 
 func describe(contrasts []ContrastClaim) string {

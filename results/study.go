@@ -51,6 +51,7 @@ type Comparison struct {
 	Diverged          int // replicates that diverged in the arm
 	AgainstDiverged   int // replicates that diverged in the arm it is compared with
 	Stalled           int
+	Same              bool // the two arms have the same arithmetic, and so the very same runs
 	Headline          bool // a contrast the plan asks for, not arm against baseline
 	Warnings          []string
 

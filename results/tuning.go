@@ -1,5 +1,7 @@
 package results
 
+import "strings"
+
 // Tuning says how the learning rate and the loss scale of every arm were chosen
 // before the reported replicates were run: from one list for all arms, by a metric
 // on validation data, on seeds of their own.
@@ -36,4 +38,33 @@ type Trial struct {
 	Diverged     int       `json:"diverged"`
 	Scores       []float64 `json:"-"` // the metric, one a stored run by ascending seed
 	Mean         float64   `json:"-"` // of the runs that did not diverge; NaN: there is none
+}
+
+// Chosen says which values were chosen, arms with the same ones in one line, in
+// the order of their first arms, each called by name: "learning rate 0.02, loss scale none: baseline, bf16".
+func (t *Tuning) Chosen(name func(slug string) string) (lines []string) {
+	var values []string
+	arms := map[string][]string{}
+	for i := range t.Arms {
+		a := &t.Arms[i]
+		if a.Chosen < 0 {
+			continue
+		}
+		var words []string
+		if len(t.LearningRates) > 0 {
+			words = append(words, "learning rate "+a.Trials[a.Chosen].LearningRate)
+		}
+		if len(t.LossScales) > 0 {
+			words = append(words, "loss scale "+a.Trials[a.Chosen].LossScale)
+		}
+		value := strings.Join(words, ", ")
+		if arms[value] == nil {
+			values = append(values, value)
+		}
+		arms[value] = append(arms[value], name(a.Arm))
+	}
+	for _, v := range values {
+		lines = append(lines, v+": "+strings.Join(arms[v], ", "))
+	}
+	return lines
 }

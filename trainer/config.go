@@ -33,6 +33,9 @@ type Backward struct {
 	Gradient *quant.Point // nil: the gradient as stored
 	Sums     quant.Accumulate
 	Result   quant.Point
+	// Residue, of the weight gradient only, keeps what rounding to Result leaves, for
+	// the next step's gradient; nil: it is lost.
+	Residue *quant.Point
 	// Statistic is that of the sums in a normalisation's input gradient; nil: as Sums.
 	Statistic *quant.Accumulate
 }

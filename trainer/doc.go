@@ -23,6 +23,8 @@
 //	weight_gradient.gradient    operand gradient; unset: the gradient as stored
 //	weight_gradient.product .sum .outer
 //	weight_gradient.result      the gradients of weight and bias
+//	weight_gradient.residue     what that rounding leaves, added to the next step's
+//	                            gradient; unset: it is lost. See residue.go
 //	update.state .step .master  see Update
 //	forward.statistic           sums of a normalisation; unset: the forward points
 //	forward.moment              mean, variance, inverse deviation, running
@@ -202,6 +204,7 @@
 //	4,5 weight_gradient.sum                13   Adam's ratio
 //	6   weight_gradient.result             14,15  weight decay: product, sum
 //	7   update.step                        16 + 4 s + n: operation n on state tensor s
+//	48  weight_gradient.residue            49     the same, when S has changed
 //
 // Initial weights are normal with mean 0 and variance gain/fan-in, drawn in
 // binary64: word stream of weights, step 0, the site of the parameter's working

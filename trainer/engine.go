@@ -181,14 +181,19 @@ func (e *engine[T]) step(batch []int32, rate float64) (loss float64, what fate) 
 		cosines(e.twin, e, batch, e.observer.found)
 	}
 	if e.scaler.set.Kind == DynamicScale && (e.tally.gradientEvents() != before || e.gradientNotFinite()) {
+		s := e.scaler.s
 		e.scaler.skip()
+		e.rescaleResidues(s)
 		return loss, stepSkipped
 	}
 	e.mover.move(p, rate, e.scaler.s)
 	for _, l := range e.settlers {
 		l.settle(p)
 	}
+	e.adoptResidues()
+	s := e.scaler.s
 	e.scaler.taken()
+	e.rescaleResidues(s)
 	if e.masterNotFinite() {
 		return loss, masterNotFinite
 	}

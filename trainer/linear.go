@@ -240,15 +240,15 @@ func (l *linear[T]) weightSums(p *pass, left quant.Matrix[T], terms int) {
 			lookSums(p.watch, l.layer, WeightGradientProduct, WeightGradientSum, &set.Sums, q)
 		}
 	}
-	round(l.place, p, WeightGradientResult, opWeightResult.of(0), l.weight.gradient.data, results, &set.Result, 0)
+	l.weight.storeGradient(p, results)
 }
 
 // biasSums forms the sums of the gradient itself and stores them.
 func (l *linear[T]) biasSums(p *pass, left quant.Matrix[T], terms int) {
-	set, sums := &l.set.WeightGradient, l.counts(p, WeightGradientSum)
+	sums := l.counts(p, WeightGradientSum)
 	db := l.results[:l.units]
 	l.mul.SumRows(db, left, l.units, terms, l.streams(p, opWeightSum.of(1)), sums)
-	round(l.place, p, WeightGradientResult, opWeightResult.of(1), l.bias.gradient.data, db, &set.Result, 0)
+	l.bias.storeGradient(p, db)
 }
 
 // inputBackward computes the gradient of the edge below.

@@ -19,6 +19,9 @@ func TestLookingChangesNoBit(t *testing.T) {
 			for k := range job.Arm.Layers {
 				l := &job.Arm.Layers[k]
 				l.States = []quant.Point{l.States[0], l.States[0], l.States[0]}
+				if i%2 == 1 {
+					l.WeightGradient.Residue = &l.States[0]
+				}
 			}
 			plain := mustRun(t, job)
 			for _, d := range []Diagnostics{everyStep, DefaultDiagnostics, {Every: 2}, {Gradient: 3}} {

@@ -63,15 +63,16 @@ type Outcome struct {
 	Test         *Scores   // answers of the last evaluation of the test set; nil if there was none
 }
 
-// counters lists the tallies of every point a network computes with.
-func (n *Network) counters(t tally) []PointCounts {
+// counters lists the tallies of every point a network computes with; of residues only
+// where they are kept.
+func (n *Network) counters(arm *Arm, t tally) []PointCounts {
 	out := []PointCounts{
 		{-1, "input", Input.String(), t[0][Input]},
 		{-1, "loss", LossGradient.String(), t[0][LossGradient]},
 	}
 	for i := range n.Layers {
 		for _, id := range n.PointsOf(i) {
-			if id.outer() {
+			if id.outer() || id == WeightGradientResidue && arm.Layers[i].WeightGradient.Residue == nil {
 				continue
 			}
 			out = append(out, PointCounts{i, n.Layers[i].Name, id.String(), t[i+1][id]})

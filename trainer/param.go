@@ -22,6 +22,11 @@ type param[T quant.Element] struct {
 	gradient array[T] // R[weight_gradient.result], still scaled by S
 	states   []array[T]
 
+	// What rounding the gradient left, of the last step taken and of this one; empty
+	// where it is not kept. See storeGradient.
+	residue     array[T]
+	nextResidue []T
+
 	// Of the left-hand operand of a product only: its axes, and the factors of its
 	// channels where the format shares scales.
 	axes    quant.Shape
@@ -31,10 +36,14 @@ type param[T quant.Element] struct {
 // newParam makes parameter number of a layer.
 func newParam[T quant.Element](b *bench[T], number int) *param[T] {
 	s := b.spec.Params[number]
-	return &param[T]{
+	q := &param[T]{
 		place: b.place, number: number, name: s.Name, shape: s.Shape, fanIn: s.FanIn, first: s.Start, fixed: s.Statistic,
 		master: newArray[T](s.Shape...), working: newArray[T](s.Shape...), gradient: newArray[T](s.Shape...),
 	}
+	if b.set.WeightGradient.Residue != nil && !q.fixed {
+		q.residue, q.nextResidue = newArray[T](s.Shape...), make([]T, volume(s.Shape))
+	}
+	return q
 }
 
 // draws addresses an operation on this parameter.

@@ -37,6 +37,8 @@ const (
 
 	ForwardOperand // the layer's input as operand of the forward product
 
+	WeightGradientResidue // what rounding a parameter's gradient leaves
+
 	pointCount int = iota
 )
 
@@ -68,6 +70,7 @@ var pointNames = [pointCount]string{
 	ForwardMoment:            "forward.moment",
 	InputGradientStatistic:   "input_gradient.statistic",
 	ForwardOperand:           "forward.operand",
+	WeightGradientResidue:    "weight_gradient.residue",
 }
 
 // String is the name plans use: "forward.sum".
@@ -92,7 +95,7 @@ var (
 		InputGradientWeight, InputGradientGradient, InputGradientProduct, InputGradientSum,
 		InputGradientOuter, InputGradientResult,
 		WeightGradientActivation, WeightGradientGradient, WeightGradientProduct,
-		WeightGradientSum, WeightGradientOuter, WeightGradientResult,
+		WeightGradientSum, WeightGradientOuter, WeightGradientResult, WeightGradientResidue,
 		UpdateState, UpdateStep, UpdateMaster,
 	}
 
@@ -104,7 +107,7 @@ var (
 	gradientPoints = []PointID{
 		LossGradient,
 		InputGradientGradient, InputGradientProduct, InputGradientSum, InputGradientOuter, InputGradientResult,
-		WeightGradientGradient, WeightGradientProduct, WeightGradientSum, WeightGradientOuter, WeightGradientResult,
+		WeightGradientGradient, WeightGradientProduct, WeightGradientSum, WeightGradientOuter, WeightGradientResult, WeightGradientResidue,
 		InputGradientStatistic,
 	}
 )
@@ -212,6 +215,8 @@ const (
 	opDecay          operation = 14 // of weights
 	opDecaySum       operation = 15
 	opState          operation = 16 // + 4 s + n for operation n on state tensor s
+	opResidue        operation = 48
+	opResidueScale   operation = 49
 	opParameterBlock operation = 64
 )
 

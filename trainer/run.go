@@ -195,7 +195,7 @@ func (r *run[T]) finish() Outcome {
 	if r.observer != nil {
 		r.out.Findings = r.observer.found
 	}
-	r.out.Counters = r.net.counters(r.tally)
+	r.out.Counters = r.net.counters(r.arm, r.tally)
 	if last := len(r.out.Epochs) - 1; r.out.Diverged == "" && last >= 0 {
 		constant := r.parts.loss.constant(r.parts.train, r.parts.classes)
 		r.out.Stalled = r.out.Epochs[last].TrainLoss > float64(stallShare*constant)

@@ -67,6 +67,8 @@ func (a *Arithmetic) At(id PointID) []*quant.Point {
 			points[i] = &a.States[i]
 		}
 		return points
+	case WeightGradientResidue:
+		return given(a.WeightGradient.Residue)
 	case ForwardOperand:
 		return given(a.Operand)
 	case ForwardStatistic:

@@ -96,7 +96,7 @@ func TestShuffleIsAPermutationOfItsEpoch(t *testing.T) {
 func TestInitialWeightsHaveTheirVariance(t *testing.T) {
 	net := network(t, []int{100}, "dense 200", "relu", "dense 100")
 	for i, want := range map[int]float64{0: 2.0 / 100, 2: 1.0 / 200} {
-		b := &bench[float64]{place: place{layer: i}, spec: &net.Layers[i]}
+		b := &bench[float64]{place: place{layer: i, set: &Arithmetic{}}, spec: &net.Layers[i]}
 		values := make([]float64, 20000)
 		newParam(b, 0).drawInitial(values, 4, net.gain(i))
 		var sum, squares float64

@@ -61,6 +61,7 @@ func measureRate(ctx context.Context, p *plan.Plan) (float64, error) {
 		i := k * len(p.Arms) / arms
 		t := p.Arms[i].Training
 		t.Epochs = 1
+		t.LearningRate = trainer.Schedule{Start: t.LearningRate.Start} // a schedule may need more steps
 		n := batches * t.Batch
 		job := trainer.Job{
 			Network: p.Network, Arm: p.Arms[i].Arithmetic, Training: t, Seed: 1,

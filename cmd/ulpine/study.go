@@ -38,6 +38,9 @@ func studyOf(p *plan.Plan, path string) (*results.Study, error) {
 	if err != nil {
 		return nil, err
 	}
+	if t := study.Tuning; t != nil && !t.Done && t.Stored > 0 {
+		return nil, badInput(fmt.Errorf("store %s holds %d of the %d runs that tune %s, and none that is reported; go on with: ulpine run %s", path, t.Stored, t.Runs, p.File, p.File))
+	}
 	if len(study.Runs) == 0 {
 		return nil, badInput(fmt.Errorf("store %s holds no run of %s; run the plan first: ulpine run %s", path, p.File, p.File))
 	}

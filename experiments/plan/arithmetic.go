@@ -51,6 +51,7 @@ func (a assigned) layer(states int) trainer.Arithmetic {
 			Gradient: a.optional(trainer.WeightGradientGradient),
 			Sums:     a.accumulate(trainer.WeightGradientProduct),
 			Result:   at(trainer.WeightGradientResult),
+			Residue:  a.optional(trainer.WeightGradientResidue),
 		},
 		States: a.states(states),
 		Step:   at(trainer.UpdateStep),

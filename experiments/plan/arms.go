@@ -200,13 +200,13 @@ func layerRows(network *trainer.Network, arm *trainer.Arm, i int, id trainer.Poi
 	name, a := network.Layers[i].Name, &arm.Layers[i]
 	points := a.At(id)
 	switch {
-	case follows(id) && id != trainer.ForwardOperand:
+	case follows(id) && !isOptional(id):
 		return []Setting{followerRow(i, name, id, a)}
 	case len(points) > 0:
 	case isProduct(id):
 		return []Setting{{Layer: i, Name: name, Point: id.String(), Format: exactWord, Rounding: exactWord}}
-	case id == trainer.ForwardOperand:
-		return nil // nothing is rounded: the product takes what is stored
+	case isOptional(id):
+		return nil // nothing is rounded: the product takes what is stored, a residue is lost
 	case isOperand(id):
 		from := reused(network, arm, i, id)
 		row := pointRow(i, name, id, from)

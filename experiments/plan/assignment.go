@@ -63,10 +63,15 @@ func isStatistic(id trainer.PointID) bool {
 
 // follows reports whether a point, unless its own key sets it, is computed as
 // another: statistics as the sums of their phase, moments as activations, the operand
-// of the forward product as it is stored. No
-// shorthand sets it, so that it follows where the shorthand leads.
+// of the forward product as it is stored; or, the residue of gradients, is not
+// computed at all. No shorthand sets it, so that it follows where the shorthand leads.
 func follows(id trainer.PointID) bool {
-	return isStatistic(id) || id == trainer.ForwardMoment || id == trainer.ForwardOperand
+	return isStatistic(id) || id == trainer.ForwardMoment || isOptional(id)
+}
+
+// isOptional reports whether a point rounds nothing unless its own key sets it.
+func isOptional(id trainer.PointID) bool {
+	return id == trainer.ForwardOperand || id == trainer.WeightGradientResidue
 }
 
 // classOf is what a setting of the point's own key may hold.

@@ -11,7 +11,7 @@ import (
 // planKeys are the keys of a plan.
 var planKeys = []string{
 	"title", "question", "include", "task", "network", "training", "pretrain", "start", "replicates",
-	"claim", "baseline", "arm", "grid", "contrast", "controls", "format",
+	"claim", "baseline", "arm", "grid", "contrast", "controls", "format", "tuning",
 }
 
 // Load reads, checks and resolves the plan in the file name. A path such as
@@ -79,6 +79,7 @@ func (r *reader) build(root *node) *Plan {
 	p.Pretrain = r.readPretrain(root, p)
 	p.Start = r.readStart(root, &p.Network)
 	r.checkMetric(root, p.Claim, p.Training, p.Task)
+	p.Tuning = r.readTuning(root, p)
 	return p
 }
 

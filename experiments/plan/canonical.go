@@ -93,6 +93,9 @@ func (p *Plan) Canonical() string {
 	if every := p.Replicates.LookEvery; every > 0 {
 		fmt.Fprintf(&b, "looks: every %d\n", every)
 	}
+	if p.Tuning != nil {
+		fmt.Fprintf(&b, "tuning: %s\n", p.Tuning)
+	}
 	fmt.Fprintf(&b, "claim: %s within %g at confidence %g\n", p.Claim.Metric, p.Claim.Margin, p.Claim.Confidence)
 	for i := range p.Arms {
 		fmt.Fprintf(&b, "called %s: %s", p.Arms[i].Slug, p.Arms[i].Canonical)

@@ -24,6 +24,8 @@
 //	                    look after every so many ends the plan once all is decided
 //	[claim]             metric (also "epochs to test accuracy 0.9"), margin, confidence;
 //	                    class, of a recall; false_alarm_rate, of a missed-fault rate
+//	[tuning]            learning_rate, loss_scale: arrays of values that every arm tries,
+//	                    each with each; metric, replicates, first_seed (see Tuning)
 //	[format.NAME]       a number format of the plan's own: exponent, fraction, bias,
 //	                    subnormals, top; or values, the list of all there are
 //	[baseline]          settings of the arm that all others are compared with
@@ -68,6 +70,16 @@
 //	               test example after the last epoch, for intervals over examples;
 //	               changes no bit either; the plan's alone
 //
+// # Tuning
+//
+// [tuning] answers whether every arm was tuned as hard as the baseline: all try the
+// same values of the start of their learning rate (its schedule keeps its shape) and
+// of their loss scale, on the same replicates, whose seeds are none of the reported
+// ones, and each is given the pair with the best mean of a metric of validation data;
+// of equal pairs the first, loss scales varying fastest. A run that diverges counts as
+// worse than any that does not, so the fewest diverged runs come first. The test data
+// is not looked at. A pretraining is not tuned, controls train as the baseline does.
+//
 // # Settings
 //
 // The rounding points are those of package trainer: input, forward.weight, ...,
@@ -105,6 +117,10 @@
 // with order, outer and through of their own; forward.moment is what is made of them.
 // Only their own keys set them: unset, they are as the sums and activations of their
 // phase, so shorthands reach them through those.
+//
+// weight_gradient.residue is error feedback: what rounding a parameter's gradient to its
+// result takes away is kept in this format and added to the next step's gradient before
+// that is rounded. Only its own key sets it; unset, it is lost.
 //
 // Formats whose values share scales, blocks (MXFP8) and scaled integers (INT8), are
 // settings of the operands of products: forward.weight, forward.operand, and the

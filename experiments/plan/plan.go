@@ -19,6 +19,7 @@ type Plan struct {
 	Start       *Start           // or from these; nil: not
 	Replicates  Replicates
 	Claim       Claim
+	Tuning      *Tuning // nil: learning rates and loss scales are as the plan spells them
 
 	Arms      []Arm // the baseline first, then in the order of the plan, those of grids last
 	Grids     []Grid
@@ -32,13 +33,18 @@ type Plan struct {
 // Baseline is the arm that all others are compared with.
 func (p *Plan) Baseline() *Arm { return &p.Arms[0] }
 
-// Runs is the number of runs the plan asks for, controls and pretraining included.
+// Runs is the number of runs the plan asks for; controls, pretraining and tuning
+// included.
 func (p *Plan) Runs() int {
 	each := len(p.Arms) + len(p.Controls)
 	if p.Pretrain != nil {
 		each++
 	}
-	return each * p.Replicates.Count
+	runs := each * p.Replicates.Count
+	if p.Tuning != nil {
+		runs += p.TuningPlan().Runs()
+	}
+	return runs
 }
 
 // Replicates are the repetitions of every arm: replicate i has the seed

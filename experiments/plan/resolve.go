@@ -74,6 +74,9 @@ func writeFacts(b *strings.Builder, p *Plan) {
 	if every := p.Replicates.LookEvery; every > 0 {
 		fmt.Fprintf(w, "looks\tafter every %d replicates, %d at most\n", every, p.Replicates.Count)
 	}
+	if p.Tuning != nil {
+		fmt.Fprintf(w, "tuning of every arm\t%s\n", p.Tuning)
+	}
 	fmt.Fprintf(w, "claim\t%s within a margin of %g, confidence %g\n", p.Claim.Metric, p.Claim.Margin, p.Claim.Confidence)
 	w.Flush()
 }
@@ -117,6 +120,12 @@ func WorkText(p *Plan, o ResolveOptions) string {
 	}
 	if work.Controls > 0 {
 		fmt.Fprintf(&b, ", and %d of controls", work.Controls)
+	}
+	if t := p.Tuning; t != nil {
+		fmt.Fprintf(&b, ", after %d of tuning: %d arms x %d trials x %d replicates", work.Tuning, len(p.Arms), len(t.Pairs()), t.Replicates)
+		if p.Pretrain != nil {
+			fmt.Fprintf(&b, " and their pretrainings")
+		}
 	}
 	fmt.Fprintf(&b, "; %s multiply-adds in all", magnitude(float64(work.MACs)))
 	if o.Rate > 0 {

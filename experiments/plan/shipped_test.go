@@ -165,9 +165,12 @@ func TestShippedPlansLoad(t *testing.T) {
 			t.Errorf("%s is not embedded", name)
 		}
 	}
+	source := texts{} // all of them, as one may include another
 	for name, text := range all {
-		file := filepath.Join(folder, name)
-		p, err := LoadFrom(texts{file: text}, file)
+		source[filepath.ToSlash(filepath.Join(folder, name))] = text
+	}
+	for name := range all {
+		p, err := LoadFrom(source, filepath.ToSlash(filepath.Join(folder, name)))
 		if err != nil {
 			t.Errorf("%v", err)
 			continue

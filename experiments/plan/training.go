@@ -53,7 +53,8 @@ func (p *Plan) predictionsText() string {
 		example *= 2
 	}
 	each := float64(example * p.Task.Test)
-	runs := float64(p.Runs() - p.Work().Pretraining)
+	work := p.Work()
+	runs := float64(work.Runs - work.Pretraining - work.Tuning)
 	return fmt.Sprintf("%s: %s of every test example, %s a run and %s in all before compression",
 		p.Predictions, what, bytesText(each), bytesText(each*runs))
 }

@@ -7,6 +7,7 @@ type Work struct {
 	Runs        int    // pretrainings and controls included
 	Pretraining int    // of those
 	Controls    int    // of those
+	Tuning      int    // of those, pretrainings of the tuning included
 	MACs        uint64 // multiply-adds of all runs, backward passes and evaluations included
 	LongestSum  int    // terms of the longest sum of any run
 }
@@ -32,5 +33,9 @@ func (p *Plan) Work() Work {
 		add(p.Pretrain.Training, &p.Pretrain.Task)
 	}
 	w.MACs = each * uint64(p.Replicates.Count)
+	if p.Tuning != nil {
+		t := p.TuningPlan().Work()
+		w.Tuning, w.MACs = t.Runs, w.MACs+t.MACs
+	}
 	return w
 }

@@ -20,6 +20,8 @@ func Answer(s *results.Study) string {
 		return "No verdict can be given: " + s.BaselineProblem + "."
 	case len(s.Comparisons) == 0 && len(s.Contrasts) == 0:
 		return "There is nothing to compare: the plan has no arm besides the baseline."
+	case s.Tuning != nil && !s.Tuning.Done:
+		return fmt.Sprintf("There is no answer yet: %d of %s of the tuning are stored, and no arm has its values.", s.Tuning.Stored, number(s.Tuning.Runs, "run"))
 	case !anyPair(s):
 		return "There is no answer yet: no pair of runs is stored."
 	}
@@ -27,10 +29,28 @@ func Answer(s *results.Study) string {
 	if len(s.Comparisons) > 0 {
 		said = aboutArms(s)
 	}
-	for i := range s.Contrasts {
-		said = append(said, contrast(s, &s.Contrasts[i]))
+	said = append(said, contrasts(s)...)
+	if s.Tuning != nil {
+		said = append(said, tuned(s.Tuning))
 	}
 	return strings.Join(said, " ")
+}
+
+// tuned says how hard every arm was tuned.
+func tuned(t *results.Tuning) string {
+	trials := 0
+	if len(t.Arms) > 0 {
+		trials = len(t.Arms[0].Trials)
+	}
+	var what []string
+	if len(t.LearningRates) > 0 {
+		what = append(what, "learning rate")
+	}
+	if len(t.LossScales) > 0 {
+		what = append(what, "loss scale")
+	}
+	return fmt.Sprintf("Every arm, the baseline too, was given the %s of the best of the same %d trials, by %s on %s that are not among these.",
+		list(what), trials, t.Metric, number(t.Replicates, "replicate"))
 }
 
 func anyPair(s *results.Study) bool {
@@ -46,6 +66,9 @@ func aboutArms(s *results.Study) []string {
 		verdicts[c.Verdict.Kind] = append(verdicts[c.Verdict.Kind], c)
 	}
 	said := []string{withinSentence(s, verdicts[results.Within])}
+	if saved := savedSentence(s, verdicts[results.Within]); saved != "" {
+		said = append(said, saved)
+	}
 	for _, g := range alike(verdicts[results.Worse], func(c *results.Comparison) string { return under(s, c) }) {
 		said = append(said, fmt.Sprintf("%s%s%sworse than the margin (%s).",
 			names(s, g.of), comma(g.by), be(len(g.of)), pairs(g.of)))
@@ -64,7 +87,11 @@ func undecidedSentences(s *results.Study, undecided []*results.Comparison) (said
 		groups = alike(undecided, func(c *results.Comparison) string { return needsOfMany(c, undecided) })
 	}
 	for _, g := range groups {
-		said = append(said, names(s, g.of)+be(len(g.of))+"undecided"+g.by+".")
+		by := g.by
+		if len(g.of) > 1 {
+			by = strings.Replace(by, "would settle it", "would settle them", 1)
+		}
+		said = append(said, names(s, g.of)+be(len(g.of))+"undecided"+by+".")
 	}
 	return said
 }
@@ -101,12 +128,38 @@ func withinSentence(s *results.Study, within []*results.Comparison) string {
 	}
 	lead := fmt.Sprintf("Of %d arms, %d stay ", all, n)
 	switch {
+	case n == all && n == 2:
+		lead = "Both arms stay "
 	case n == all:
 		lead = fmt.Sprintf("All %d arms stay ", n)
 	case n == 1:
 		lead = fmt.Sprintf("Of %d arms, one stays ", all)
 	}
 	return lead + margin + ": " + strings.Join(who, "; ") + "."
+}
+
+// savedSentence says how wide values are in the arms within the margin; empty where
+// there are none, or it is not known.
+func savedSentence(s *results.Study, within []*results.Comparison) string {
+	if len(within) == 0 || len(s.Arms) == 0 || !(s.Arms[0].Bits > 0) {
+		return ""
+	}
+	least, most := math.Inf(1), 0.0
+	for _, c := range within {
+		a := arm(s, c.Arm)
+		if a == nil || !(a.Bits > 0) {
+			return ""
+		}
+		least, most = min(least, a.Bits), max(most, a.Bits)
+	}
+	who, span := "It keeps ", amount(least)
+	if len(within) > 1 {
+		who = "They keep "
+	}
+	if amount(most) != span {
+		span += " to " + amount(most)
+	}
+	return fmt.Sprintf("%s%s bits a value in training memory, the baseline %s.", who, span, amount(s.Arms[0].Bits))
 }
 
 // comma sets a remark off from what it follows and what comes next.
@@ -153,10 +206,19 @@ func names(s *results.Study, of []*results.Comparison) string {
 
 // pairs says from how many pairs each of a group was judged.
 func pairs(of []*results.Comparison) string {
-	if len(of) == 1 {
-		return number(of[0].N, "pair")
+	words := number(of[0].N, "pair")
+	if len(of) > 1 {
+		words += " each"
 	}
-	return number(of[0].N, "pair") + " each"
+	return words + atLook(of[0])
+}
+
+// atLook names the latest look of a plan that has several; empty: it has one.
+func atLook(c *results.Comparison) string {
+	if _, several := looks(c); !several || c.Same || lookedAt(c) == 0 {
+		return ""
+	}
+	return ", " + lookWords(c)
 }
 
 // under is the rounding of an arm, as a remark.
@@ -180,14 +242,16 @@ func divergedSentence(s *results.Study, diverged []*results.Comparison) string {
 // needs is what follows "undecided".
 func needs(c *results.Comparison) string {
 	switch {
+	case c.N < c.Planned && lookedAt(c) > 0 && complete(c):
+		return fmt.Sprintf(" after %s%s; %d at most are planned", number(c.N, "pair"), atLook(c), c.Planned)
 	case c.N < c.Planned:
 		return fmt.Sprintf(": %d of %s stored", c.N, number(c.Planned, "planned pair"))
 	case c.N == 1:
 		return ": one pair gives no interval"
 	case c.Verdict.Pairs > 0:
-		return fmt.Sprintf(" after %s; about %d would settle it", number(c.N, "pair"), c.Verdict.Pairs)
+		return fmt.Sprintf(" after %s%s; about %d would settle it", number(c.N, "pair"), atLook(c), c.Verdict.Pairs)
 	}
-	return " after " + number(c.N, "pair")
+	return " after " + number(c.N, "pair") + atLook(c)
 }
 
 // contrast is the sentence about one arm against another.
@@ -225,9 +289,9 @@ func change(c *results.Comparison) string {
 // evidence is the interval of the difference and the number of pairs, in brackets.
 func evidence(c *results.Comparison) string {
 	if math.IsNaN(c.Low) {
-		return fmt.Sprintf(" (%s, no interval)", number(c.N, "pair"))
+		return fmt.Sprintf(" (%s, no interval)", pairs([]*results.Comparison{c}))
 	}
-	return fmt.Sprintf(" (%s %% interval %s, %s)", amount(100*c.Confidence), newMeasure(c).span(c.Low, c.High), number(c.N, "pair"))
+	return fmt.Sprintf(" (%s %% interval %s, %s)", amount(100*c.Confidence), newMeasure(c).span(c.Low, c.High), pairs([]*results.Comparison{c}))
 }
 
 // outcome is the verdict of a contrast in words.

@@ -72,7 +72,7 @@ func TestAnswer(t *testing.T) {
 		},
 		{
 			"all within", table(compared("a", within, 10), compared("b", within, 10)),
-			"All 2 arms stay within the margin of 0.5 percentage points in test accuracy: bf16 nearest, with nearest-even rounding (10 pairs); " +
+			"Both arms stay within the margin of 0.5 percentage points in test accuracy: bf16 nearest, with nearest-even rounding (10 pairs); " +
 				"bf16 stochastic update, with stochastic rounding at update.master, nearest-even elsewhere (10 pairs).",
 		},
 		{

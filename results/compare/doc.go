@@ -98,7 +98,12 @@
 // looks so far of an arm make one p-value, and Holm's method adjusts those as it
 // does others, so the chance of a false "within" among all arms and all looks
 // stays at most a. Before the last look, differences without any spread decide
-// nothing. A runner asks Looks.Next how many pairs to bring in, forms Pair and
+// nothing: equal values so far say little of the next. The exception is an arm that
+// has the very arithmetic of the other, so that both have the same runs by their keys.
+// Its difference is zero in every replicate there can be, nothing is estimated, and
+// "within" cannot be false: it is said at once, looks or not, from two pairs on, and
+// counts in Holm's family as rejected, which that method allows for any hypothesis
+// that is not true. A runner asks Looks.Next how many pairs to bring in, forms Pair and
 // Decide from all runs so far, and stops when Settled. Looks count pairs by
 // ascending replicates, so replicates must be brought in in that order. For
 // normal differences the levels are those of the t statistic itself (see tLevels).

@@ -18,6 +18,8 @@ func doubts(c *results.Comparison, identical bool) (warnings []string) {
 	switch {
 	case c.N == 0:
 		warn("no pair of runs is stored yet")
+	case c.Same:
+		warn("it has the arithmetic of the arm it is compared with, so their runs are the very same, in any replicate: this decides at once")
 	case c.N < c.Planned && complete(c):
 		warn("%s: looked at after %d of at most %d pairs; the chance of error is shared out among the looks, but the drawn interval is not widened for them",
 			lookWords(c), lookedAt(c), c.Planned)
@@ -27,12 +29,14 @@ func doubts(c *results.Comparison, identical bool) (warnings []string) {
 	if c.N == 1 {
 		warn("one pair gives no interval and no verdict: ask for two replicates or more")
 	}
-	if c.Diverged > 0 {
+	if c.Diverged > 0 && c.AgainstDiverged > 0 {
+		warn("diverged in %d of %s, and the arm it is compared with in %d: no verdict", c.Diverged, number(c.N, "replicate"), c.AgainstDiverged)
+	} else if c.Diverged > 0 {
 		low, high := results.ExactRate(uint64(c.Diverged), uint64(c.N), c.Confidence)
 		warn("diverged in %d of %s (exact %s %% interval %s to %s %%); they are scored as they stood",
 			c.Diverged, number(c.N, "replicate"), amount(100*c.Confidence), amount(100*low), amount(100*high))
 	}
-	if c.AgainstDiverged > 0 {
+	if c.AgainstDiverged > 0 && c.Diverged == 0 {
 		warn("the arm it is compared with diverged in %d of %s: no verdict", c.AgainstDiverged, number(c.N, "replicate"))
 	}
 	if c.Stalled > 0 {
@@ -40,6 +44,9 @@ func doubts(c *results.Comparison, identical bool) (warnings []string) {
 	}
 	if c.N > 0 && !allFinite(c.Differences) {
 		warn("the %s of some runs is not a finite number: no mean, no interval", c.Metric)
+	}
+	if c.Diverged > 0 || c.AgainstDiverged > 0 {
+		return warnings // no interval decides anything
 	}
 	return append(warnings, spreadDoubts(c, identical)...)
 }
@@ -119,6 +126,10 @@ func disagreement(c *results.Comparison) (warnings []string) {
 		others = append(others, named{"BCa bootstrap", c.BootLow, c.BootHigh})
 	case c.Offered == "": // else told of already
 		others = append(others, named{Studentised, c.StudentLow, c.StudentHigh})
+	}
+	if i := c.Items; i != nil && i.Crossed && !math.IsNaN(i.Low) && side(c.Low, c.High, c.Margin) != side(i.Low, i.High, c.Margin) {
+		warnings = append(warnings, fmt.Sprintf("the verdict is about these %d test examples, which all replicates share: over other examples too the interval is %s (two-way bootstrap), which lies otherwise to the margin",
+			i.Items, w.with(w.span(i.Low, i.High))))
 	}
 	for _, other := range append(others, named{"sign-flip", c.FlipLow, c.FlipHigh}) {
 		if math.IsNaN(other.low) || math.IsInf(other.low, 0) || side(c.Low, c.High, c.Margin) == side(other.low, other.high, c.Margin) {

@@ -14,7 +14,7 @@ func looks(c *results.Comparison) (Looks, bool) {
 // lookedAt is the number of pairs at the latest look; 0: there was none yet.
 func lookedAt(c *results.Comparison) int {
 	l, several := looks(c)
-	if !several {
+	if !several || c.Same {
 		return c.N
 	}
 	latest := 0
@@ -63,7 +63,7 @@ func (s shares) levels(l Looks, alpha float64) []float64 {
 // replicates, whatever the order in which their runs came in.
 func (s shares) overLooks(c *results.Comparison) (p, worse float64) {
 	l, several := looks(c)
-	if !several {
+	if !several || c.Same {
 		return c.P, c.PWorse
 	}
 	var ps, worses []float64

@@ -38,6 +38,7 @@ func Pair(q Question, arm, against []results.Run) results.Comparison {
 	}
 	slices.Sort(c.Replicates)
 	identical := true
+	c.Same = len(c.Replicates) > 0
 	var pairs [][2]*results.Run
 	var missed [2]int
 	for _, replicate := range c.Replicates {
@@ -50,6 +51,7 @@ func Pair(q Question, arm, against []results.Run) results.Comparison {
 		missed[0] += count(q.Metric.Missed(a))
 		missed[1] += count(q.Metric.Missed(b))
 		identical = identical && a.Digest == b.Digest && !a.Digest.IsZero()
+		c.Same = c.Same && a.Key == b.Key && !a.Key.IsZero()
 	}
 	c.N = len(c.Differences)
 	c.Classes = classDifferences(q, pairs)

@@ -249,3 +249,44 @@ func TestDecideByLooks(t *testing.T) {
 		t.Errorf("equal at the last look: %+v", c.Verdict)
 	}
 }
+
+// TestSameRunsDecideAtOnce: an arm with the runs of the other, by their keys, is
+// within from two pairs on; one with equal bits under other keys waits for the last
+// look; one pair decides nothing.
+func TestSameRunsDecideAtOnce(t *testing.T) {
+	keyed := func(n int) []results.Run {
+		rs := runs("baseline", around(n, 0.9, 0.02)...)
+		for i := range rs {
+			rs[i].Key = results.Hash{1, byte(i)}
+		}
+		return rs
+	}
+	for _, every := range []int{0, 5} {
+		q := question("twin", 0.01)
+		q.Planned, q.LookEvery = 40, every
+		for n, want := range map[int]results.VerdictKind{1: results.Undecided, 2: results.Within, 7: results.Within} {
+			c := Decide([]results.Comparison{Pair(q, keyed(n), keyed(n))})[0]
+			if c.Verdict.Kind != want || !c.Same {
+				t.Errorf("looks every %d, %d pairs: %+v", every, n, c.Verdict)
+			}
+			if w := strings.Join(c.Warnings, "\n"); n > 1 && (!strings.Contains(w, "the very same, in any replicate") || strings.Contains(w, "look ")) {
+				t.Errorf("warnings %q", w)
+			}
+		}
+		other := keyed(5)
+		for i := range other {
+			other[i].Key[0] = 2
+		}
+		if c := Decide([]results.Comparison{Pair(q, keyed(5), other)})[0]; c.Same || c.Verdict.Kind != results.Undecided {
+			t.Errorf("equal bits, other keys: %+v", c.Verdict)
+		}
+	}
+	// It takes its place in the family: the other arm's p-value is multiplied by one.
+	q := question("twin", 0.01)
+	q.Planned = 5
+	arm := Pair(q, runs("a", around(5, 0.9, 0.03)...), runs("baseline", around(5, 0.9, 0.02)...))
+	both := Decide([]results.Comparison{Pair(q, keyed(5), keyed(5)), arm})
+	if both[0].Holm != 0 || both[1].Holm != arm.P {
+		t.Errorf("p-values %v and %v, alone %v", both[0].Holm, both[1].Holm, arm.P)
+	}
+}

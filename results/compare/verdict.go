@@ -52,8 +52,12 @@ func judge(family []results.Comparison) []results.Comparison {
 func tail(c *results.Comparison) float64 { return (1 - c.Confidence) / 2 }
 
 // complete reports whether all pairs that the plan asks for are there, or as many
-// as its first look takes.
+// as its first look takes. Arms with the very same runs need no more than there are:
+// those of any other replicate would be the same too.
 func complete(c *results.Comparison) bool {
+	if c.Same {
+		return c.N > 0
+	}
 	if _, several := looks(c); several {
 		return lookedAt(c) > 0
 	}
@@ -100,7 +104,16 @@ func settle(c *results.Comparison, family []results.Comparison) int {
 			left--
 		}
 	}
-	return pairsNeeded(c.Mean, c.SD, c.N, c.Margin, tail(c)/float64(left))
+	return twoDigits(pairsNeeded(c.Mean, c.SD, c.N, c.Margin, tail(c)/float64(left)))
+}
+
+// twoDigits rounds an estimate up to two significant digits: it deserves no more.
+func twoDigits(n int) int {
+	unit := 1
+	for n/unit >= 100 {
+		unit *= 10
+	}
+	return (n + unit - 1) / unit * unit
 }
 
 // noteHolm explains an interval that clears the margin beside a verdict that

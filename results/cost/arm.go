@@ -44,6 +44,10 @@ type Backward struct {
 	Gradient *Point `json:"gradient,omitempty"`
 	Sums     Sums   `json:"sums"`
 	Result   Point  `json:"result"`
+	// Residue, of the weight gradient only, is the format of what rounding to Result
+	// leaves, kept for the next step's gradient: one more tensor, read and written, and
+	// two more additions a parameter; nil: it is lost.
+	Residue *Point `json:"residue,omitempty"`
 }
 
 // Assignment is the arithmetic of one layer. A point left zero is one the layer
@@ -193,6 +197,9 @@ func (b *Backward) check(at string, needed bool, e *fieldErrors) {
 	}
 	b.Sums.check(at+".sums", needed, e)
 	b.Result.check(at+".result", needed, e)
+	if b.Residue != nil {
+		b.Residue.check(at+".residue", true, e)
+	}
 }
 
 func (arm *Arm) check(at string, n *Network, o *Optimizer, e *fieldErrors) {

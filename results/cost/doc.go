@@ -19,7 +19,8 @@
 //	                 pool) read B n activations. A layer with no parameters below
 //	                 it has no such phase.
 //	weight gradient  reads B n activations and B m gradients, writes W + b
-//	                 gradients
+//	                 gradients; where residues are kept (error feedback), reads and
+//	                 writes as many of them, counted as optimizer state
 //	update           reads W + b gradients; reads and writes as many values of
 //	                 each optimizer state and of the master copy; writes the
 //	                 working weights. Where working weights and master copy have

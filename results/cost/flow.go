@@ -132,7 +132,12 @@ func (b *bound) weightFlows(i int, batch, cache uint64) []flow {
 		}.sweep()
 	}
 	x.values, dy.values = batch*l.taken(), batch*l.slopes()
-	return append(dw, x, dy, partial)
+	all := append(dw, x, dy, partial)
+	if r := a.WeightGradient.Residue; r != nil { // read and written
+		all = append(all, parameters(l, State, r.Format)...)
+		all = append(all, parameters(l, State, r.Format)...)
+	}
+	return all
 }
 
 // updateFlows: every tensor of the update, element by element.

@@ -51,6 +51,9 @@ func (b *bound) keepParameters(i int, m *Memory) {
 		keep(State, a.Compensation.Format)
 	}
 	keep(Gradients, a.WeightGradient.Result.Format)
+	if r := a.WeightGradient.Residue; r != nil {
+		keep(State, r.Format)
+	}
 }
 
 // placed is a flow at a layer.

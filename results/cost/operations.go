@@ -138,6 +138,10 @@ func (b *bound) weightWork(i int, batch uint64) operations {
 	o.draw(again(a.WeightGradient.First, a.Operand), batch*l.taken())
 	o.draw(a.WeightGradient.Gradient, batch*l.slopes())
 	o.draw(&a.WeightGradient.Result, l.parameters())
+	if r := a.WeightGradient.Residue; r != nil { // sum + residue, and what its rounding leaves
+		o.add(s.adder(s.outer()), 2*l.parameters())
+		o.draw(r, l.parameters())
+	}
 	return o
 }
 

@@ -202,6 +202,30 @@ const (
 		if (r.width < 200 || r.height < 40 || marks.length < 5 || svg.querySelectorAll('text').length < 3) out.push(svg.id + ' ' + r.width + ' x ' + r.height + ', ' + marks.length + ' marks');
 	}
 	return {n, out};`
+	// inaccessible lists what keyboards and screen readers would stumble over.
+	inaccessible = `
+	const out = [], fault = (e, what) => out.push(e.tagName + ' ' + (e.id || e.className) + ' ' + what);
+	if (!document.documentElement.lang) out.push('no language');
+	if (document.querySelectorAll('h1').length !== 1 || !document.querySelector('main')) out.push('no single heading, or no main part');
+	for (const svg of document.querySelectorAll('figure svg')) {
+		const t = svg.querySelector(':scope > title'), d = svg.querySelector(':scope > desc');
+		if (svg.getAttribute('role') !== 'img' || !t || !t.textContent || !d || !d.textContent) fault(svg, 'has no name or no description');
+	}
+	for (const e of document.querySelectorAll('svg.glyph')) if (e.getAttribute('aria-hidden') !== 'true') fault(e, 'is decoration that is read out');
+	for (const e of document.querySelectorAll('table')) if (!e.caption || !e.caption.textContent.trim()) fault(e, 'has no caption');
+	for (const e of document.querySelectorAll('.scroll')) if (e.tabIndex !== 0 || !e.getAttribute('aria-label')) fault(e, 'scrolls, but not by keys, or has no name');
+	for (const e of document.querySelectorAll('input')) if (!e.labels.length || !e.labels[0].textContent.trim()) fault(e, 'has no label');
+	for (const e of document.querySelectorAll('fieldset')) if (!e.querySelector('legend')) fault(e, 'has no legend');
+	for (const e of document.querySelectorAll('button, summary, a')) if (!e.textContent.trim()) fault(e, 'says nothing');
+	for (const e of document.querySelectorAll('button, input, summary, a[href], svg[data-panels]')) {
+		if (!e.getClientRects().length) continue;
+		e.focus();
+		if (document.activeElement !== e) fault(e, 'cannot have the focus');
+	}
+	const skip = document.querySelector('a.skip'); skip.focus();
+	if (skip.getBoundingClientRect().left < 0) out.push('the skip link stays out of sight');
+	skip.blur();
+	return out;`
 	// wide lists what reaches beyond the window, but for what scrolls by itself.
 	tooWide = `
 	const w = document.documentElement.clientWidth, out = [];
@@ -238,28 +262,55 @@ func (b *browser) look(t *testing.T, when string, figures bool) {
 	b.quiet(t, when)
 }
 
-// browsePages opens the pages of all studies at three widths.
+// browsed are the widths at which a browser opens the pages of studies: those whose
+// layout differs from the others'. TestFigures measures the figures of all of them.
+var browsed = map[string][]int64{
+	"usual":          {1280, 920, 800, 390},
+	"empty":          {390},
+	"forty arms":     {1280, 390},
+	"grid":           {1280, 390},
+	"one replicate":  {390},
+	"all diverged":   {1280},
+	"nothing finite": {390},
+	"long names":     {1280, 390},
+}
+
+// browsePages opens pages, each once, and looks at them at their widths.
 func browsePages(t *testing.T, b *browser) {
-	for i, s := range studies() {
-		widths := []int64{420}
-		if i == 0 {
-			widths = []int64{1300, 920, 800, 420}
-		} else if s.name == "forty arms" || s.name == "long names" {
-			widths = []int64{1300, 420}
+	seen := 0
+	for _, s := range studies() {
+		widths := browsed[s.name]
+		if len(widths) == 0 || testing.Short() && seen > 1 {
+			continue
 		}
-		if testing.Short() && i > 1 {
-			break
-		}
+		seen++
+		b.open(t, s, widths[0])
 		for _, w := range widths {
-			b.open(t, s, w)
+			b.resize(t, w)
 			b.look(t, fmt.Sprintf("%s at %d", s.name, w), s.name == "usual")
 		}
+		for _, fault := range eval[[]string](t, b, inaccessible) {
+			t.Errorf("%s: %s", s.name, fault)
+		}
+	}
+	if !testing.Short() && seen != len(browsed) {
+		t.Errorf("%d of %d studies were opened", seen, len(browsed))
+	}
+}
+
+// resize changes the width of the window.
+func (b *browser) resize(t *testing.T, width int64) {
+	t.Helper()
+	ctx, cancel := context.WithTimeout(b.ctx, time.Minute)
+	defer cancel()
+	if err := chromedp.Do(ctx, chromedp.EmulateViewport(width, 900)); err != nil {
+		t.Fatal(err)
 	}
 }
 
 // browseSwitches uses every control of the page.
 func browseSwitches(t *testing.T, b *browser) {
-	b.open(t, study{"usual", invented()}, 1300)
+	b.open(t, study{"usual", invented()}, 1280)
 	ground := func() string { return eval[string](t, b, `return getComputedStyle(document.body).backgroundColor`) }
 	click := func(selector string) {
 		t.Helper()
@@ -318,6 +369,7 @@ func (b *browser) choice(t *testing.T) {
 		if got := eval[[]string](t, b, shown); len(got) != 1 || got[0] != id {
 			t.Errorf("after %s was chosen, %v is shown", id, got)
 		}
+		b.look(t, id, true)
 	}
 }
 
@@ -387,7 +439,7 @@ func browseDark(t *testing.T, b *browser) {
 		})
 	}
 	media("screen", "dark")
-	b.open(t, study{"usual", invented()}, 1300)
+	b.open(t, study{"usual", invented()}, 1280)
 	ground := `return getComputedStyle(document.body).backgroundColor`
 	if got := eval[string](t, b, ground); got != "rgb(17, 25, 31)" {
 		t.Errorf("dark paper is %s", got)
@@ -421,19 +473,19 @@ func (b *browser) shot(t *testing.T, name string) {
 	}
 }
 
-// browseShots leaves pictures to look at: ULPINE_SHOTS=DIR go test -run Browser.
+// browseShots leaves pictures to look at: ULPINE_SHOTS=DIR go test -run TestBrowser/shots.
 func browseShots(t *testing.T, b *browser) {
 	dir := os.Getenv(shotsDir)
 	if dir == "" {
 		t.Skipf("skipped: %s names no directory for pictures", shotsDir)
 	}
 	for _, s := range []study{{"usual", invented()}, {"forty", manyArms(40)}, {"grid", gridStudy()}} {
-		for _, w := range []int64{1300, 420} {
+		for _, w := range []int64{1280, 390} {
 			b.open(t, s, w)
 			b.shot(t, fmt.Sprintf("%s-%d", s.name, w))
 		}
 	}
-	b.open(t, study{"usual", invented()}, 1300)
+	b.open(t, study{"usual", invented()}, 1280)
 	b.call(t, func(ctx context.Context, c *chromedp.Target) error {
 		yes := true
 		res, err := cdp.Call(ctx, c, page.PrintToPDF, page.PrintToPDFParams{PreferCSSPageSize: &yes})

@@ -92,6 +92,7 @@ func invented() *results.Study {
 	c := inventComparison(inventedArms[1], "bf16-nearest", lastScores(s, "bf16-nearest"), lastScores(s, inventedArms[1].slug))
 	c.Headline = true
 	s.Contrasts = []results.Comparison{c}
+	inventItems(s)
 	s.Comparisons[1].Warnings = []string{"skewness 1.4: the t interval is doubtful"}
 	return s
 }
@@ -374,4 +375,27 @@ func manyArms(n int) *results.Study {
 		s.Comparisons = append(s.Comparisons, inventComparison(a, "baseline", from, scores))
 	}
 	return s
+}
+
+// inventItems lets every pair differ in a few test examples, and arms be tuned over
+// two learning rates and one loss scale.
+func inventItems(s *results.Study) {
+	for i := range s.Comparisons {
+		c := &s.Comparisons[i]
+		c.Items = &results.ItemComparison{
+			Items: 2000, Replicates: c.N, Crossed: i%2 == 0, Method: "a bootstrap (invented)", Low: c.Low * 1.2, High: c.High * 1.2, ItemShare: 0.35,
+			Gained: 12, Lost: 30, Changed: 60, Flips: []results.Flips{{Replicate: 100, Gained: 12, Lost: 30, Changed: 60, P: 0.008}},
+		}
+	}
+	s.Comparisons[0].Items.Low = math.NaN()
+	t := &results.Tuning{
+		Metric: "validation accuracy", Replicates: 2, FirstSeed: 900, LearningRates: []string{"0.01", "0.02"}, LossScales: []string{"none"}, Runs: 28, Stored: 27,
+	}
+	for i, a := range s.Arms {
+		t.Arms = append(t.Arms, results.TunedArm{Arm: a.Slug, Chosen: i%3 - 1, Edge: i == 2, Trials: []results.Trial{
+			{LearningRate: "0.01", LossScale: "none", N: 2, Scores: []float64{0.9, 0.92}, Mean: 0.91},
+			{LearningRate: "0.02", LossScale: "none", N: 1, Diverged: 1, Mean: math.NaN()},
+		}})
+	}
+	s.Tuning = t
 }

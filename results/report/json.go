@@ -69,7 +69,13 @@ func (v *view) json(w io.Writer) error {
 		top["costs"] = v.Costs
 	}
 	top["volumes"], top["ranges"] = append([]results.Volume{}, v.Volumes...), append([]results.Range{}, v.Ranges...)
+	if v.Tuning != nil {
+		top["tuning"] = v.tuningObject()
+	}
 	top["diagnoses"] = diagnosisObjects(v.Diagnoses)
+	if v.Tuning != nil {
+		top["tuning"] = tuningObject(v.Tuning)
+	}
 	top.float("margin", v.Margin)
 	top.float("confidence", v.Confidence)
 	if v.noiseMeasured() {
@@ -109,7 +115,7 @@ func comparisonObjects(cs []results.Comparison) []object {
 		o := object{
 			"arm": c.Arm, "against": c.Against, "metric": c.Metric, "replicates": c.Replicates, "n": c.N, "planned": c.Planned,
 			"verdict": verdictWords(c.Verdict), "pairs_needed": c.Verdict.Pairs, "diverged": c.Diverged,
-			"against_diverged": c.AgainstDiverged, "stalled": c.Stalled, "headline": c.Headline, "warnings": filled(c.Warnings),
+			"against_diverged": c.AgainstDiverged, "stalled": c.Stalled, "headline": c.Headline, "same_runs": c.Same, "warnings": filled(c.Warnings),
 		}
 		for _, x := range []struct {
 			key string
@@ -148,6 +154,26 @@ func comparisonObjects(cs []results.Comparison) []object {
 		out = append(out, o)
 	}
 	return out
+}
+
+// tuningObject is what every arm tried and was given.
+func tuningObject(t *results.Tuning) object {
+	arms := []object{}
+	for i := range t.Arms {
+		a := &t.Arms[i]
+		trials := []object{}
+		for _, tried := range a.Trials {
+			o := object{"learning_rate": tried.LearningRate, "loss_scale": tried.LossScale, "n": tried.N, "diverged": tried.Diverged}
+			o.float("mean", tried.Mean)
+			o.floats("scores", tried.Scores)
+			trials = append(trials, o)
+		}
+		arms = append(arms, object{"arm": a.Arm, "chosen": a.Chosen, "edge": a.Edge, "trials": trials})
+	}
+	return object{
+		"metric": t.Metric, "replicates": t.Replicates, "first_seed": t.FirstSeed, "learning_rates": filled(t.LearningRates),
+		"loss_scales": filled(t.LossScales), "runs": t.Runs, "stored": t.Stored, "done": t.Done, "arms": arms,
+	}
 }
 
 // itemObject is a comparison test example by test example.

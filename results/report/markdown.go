@@ -35,7 +35,7 @@ var markdownTable = []struct {
 		return append(v.figureBlocks("score-against-bits", "score-against-bytes", "score-against-energy"), tableBlock(v.frontTable()))
 	}},
 	{"Paired differences", func(v *view) []block {
-		return append(v.figureBlocks("margin-rail"), tableBlock(v.pairTable(v.Comparisons)))
+		return append(v.figureBlocks("margin-rail"), tableBlock(v.pairTable(v.Comparisons)), tableBlock(v.itemTable()))
 	}},
 	{"Contrasts", func(v *view) []block {
 		return append(v.figureBlocks("contrast-rail"), tableBlock(v.pairTable(v.Contrasts)))
@@ -47,6 +47,13 @@ var markdownTable = []struct {
 			out = append(out, tableBlock(v.gridTable(&gs[i])))
 		}
 		return out
+	}},
+	{"How each arm was tuned", func(v *view) []block {
+		if v.Tuning == nil {
+			return nil
+		}
+		chosen, tried := v.tuningTables()
+		return append(paragraphs(v.tuningWords()), tableBlock(chosen), tableBlock(tried))
 	}},
 	{"Loss curves", func(v *view) []block {
 		return append(v.figureBlocks("training-loss", "loss-by-arm"), tableBlock(v.curveTable()))

@@ -34,6 +34,7 @@ var sectionTable = []struct {
 	{"differences", "Paired differences", "differences", differenceSection},
 	{"contrasts", "Contrasts", "differences", contrastSection},
 	{"grids", "Grids", "grids", gridSection},
+	{"tuning", "How each arm was tuned", "tuning", tuningSection},
 	{"curves", "Loss curves", "curves", curveSection},
 	{"roundings", "Stochastic beside nearest rounding", "differences", twinSection},
 	{"counters", "What left the range of its format", "counters", counterSection},

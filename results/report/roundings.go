@@ -2,7 +2,6 @@ package report
 
 import (
 	"fmt"
-	"html/template"
 	"math"
 	"slices"
 	"strings"
@@ -80,10 +79,7 @@ func twinSection(v *view) any {
 		return nil
 	}
 	caption := "Two arms that share everything but the rounding at the named points: above the line rounded to nearest, below it stochastically (dotted). Bars, marks, post and scale as among the paired differences to the baseline."
-	return struct {
-		Figure template.HTML
-		Table  *tabular
-	}{figureHTML(v, "stochastic-beside-nearest", caption, false), t}
+	return figureWith{Figure: figureHTML(v, "stochastic-beside-nearest", caption, false), Table: t}
 }
 
 // twinTable has a row a pair; nil when there is none.

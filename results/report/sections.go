@@ -16,6 +16,7 @@ type figureWith struct {
 	Figure  template.HTML
 	Caption string
 	Table   *tabular
+	Further *tabular // nil: none
 	Without string
 }
 
@@ -29,7 +30,7 @@ func differenceSection(v *view) any {
 	case v.noiseMeasured():
 		caption += " The noise floor has no width: " + plain(v.noiseWords()) + "."
 	}
-	return figureWith{Figure: figureHTML(v, "margin-rail", caption, false), Table: v.pairTable(v.Comparisons)}
+	return figureWith{Figure: figureHTML(v, "margin-rail", caption, false), Table: v.pairTable(v.Comparisons), Further: v.itemTable()}
 }
 
 // contrastSection is left out when the plan asks for no contrast.

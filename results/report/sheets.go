@@ -4,6 +4,7 @@ import (
 	"encoding/csv"
 	"fmt"
 	"io"
+	"math"
 	"strconv"
 
 	"ulpine/results"
@@ -16,7 +17,7 @@ var sheetTable = []struct {
 	header []string
 	rows   func(v *view) [][]string
 }{
-	{"comparisons", comparisonHeader, func(v *view) [][]string { return append(comparisonRows(v.Comparisons), comparisonRows(v.Contrasts)...) }},
+	{"comparisons", comparisonHeader, func(v *view) [][]string { return comparisonRows(v.compared()) }},
 	{"differences", []string{"arm", "against", "replicate", "difference"}, differenceRows},
 	{"arms", []string{"arm", "name", "baseline", "bits", "score_mean", "score_low", "score_high", "n", "loss_scale", "summary"}, armRows},
 	{"settings", []string{"arm", "layer", "layer_name", "point", "format", "bits", "exponent", "fraction", "rounding", "order", "overflow"}, settingRows},
@@ -26,6 +27,8 @@ var sheetTable = []struct {
 	{"counters", []string{"arm", "replicate", "layer", "layer_name", "point", "overflow", "underflow", "saturated", "nan"}, counterRows},
 	{"recall", []string{"arm", "class", "mean", "low", "high", "n", "worst_replicate", "worst_right", "worst_of", "worst_low", "worst_high"}, recallRows},
 	{"class_differences", []string{"arm", "against", "class", "n", "mean", "low", "high", "worst", "worst_replicate", "p", "holm"}, classRows},
+	{"examples", []string{"arm", "against", "replicate", "examples", "gained", "lost", "changed", "p"}, flipRows},
+	{"tuning", []string{"arm", "learning_rate", "loss_scale", "chosen", "metric", "n", "diverged", "mean"}, tuningRows},
 	{"costs", costHeader, costRows},
 	{"histograms", []string{"arm", "replicate", "layer", "layer_name", "point", "epoch", "exponent", "count", "zeros", "not_finite"}, histogramRows},
 	{"diagnostics", []string{"arm", "replicate", "layer", "layer_name", "kind", "at", "epoch", "step", "count", "value"}, qualityRows},
@@ -38,7 +41,7 @@ var sheetTable = []struct {
 var comparisonHeader = []string{
 	"arm", "against", "metric", "margin", "confidence", "n", "planned", "mean", "sd", "low", "high", "boot_low", "boot_high",
 	"skewness", "p", "holm", "p_worse", "holm_worse", "verdict", "pairs_needed", "diverged", "against_diverged", "stalled",
-	"student_low", "student_high", "flip_low", "flip_high", "middle", "rank_low", "rank_high", "offered", "diverged_low", "diverged_high",
+	"student_low", "student_high", "flip_low", "flip_high", "middle", "rank_low", "rank_high", "offered", "diverged_low", "diverged_high", "two_way_low", "two_way_high",
 }
 
 // Sheet writes one of the CSV files by its name; SheetNames lists them.
@@ -83,12 +86,16 @@ func uintCell(v uint64) string   { return strconv.FormatUint(v, 10) }
 
 func comparisonRows(cs []results.Comparison) (rows [][]string) {
 	for _, c := range cs {
+		low, high := math.NaN(), math.NaN() // over replicates and test examples
+		if c.Items != nil {
+			low, high = c.Items.Low, c.Items.High
+		}
 		rows = append(rows, []string{
 			c.Arm, c.Against, c.Metric, floatCell(c.Margin), floatCell(c.Confidence), intCell(c.N), intCell(c.Planned), floatCell(c.Mean), floatCell(c.SD), floatCell(c.Low), floatCell(c.High),
 			floatCell(c.BootLow), floatCell(c.BootHigh), floatCell(c.Skewness), floatCell(c.P), floatCell(c.Holm), floatCell(c.PWorse), floatCell(c.HolmWorse), verdictWords(c.Verdict),
 			intCell(c.Verdict.Pairs), intCell(c.Diverged), intCell(c.AgainstDiverged), intCell(c.Stalled),
 			floatCell(c.StudentLow), floatCell(c.StudentHigh), floatCell(c.FlipLow), floatCell(c.FlipHigh), floatCell(c.Middle), floatCell(c.RankLow), floatCell(c.RankHigh),
-			c.Offered, floatCell(c.DivergedLow), floatCell(c.DivergedHigh),
+			c.Offered, floatCell(c.DivergedLow), floatCell(c.DivergedHigh), floatCell(low), floatCell(high),
 		})
 	}
 	return rows

@@ -74,9 +74,26 @@ func (t *terminal) answer() {
 	}
 	facts := fmt.Sprintf("%s, margin %s%s, %s intervals of paired differences; %s",
 		plain(t.v.Metric), fixed(m, marginDigits(m)), t.v.words.unit(), percentage(t.v.Confidence), fixedWords)
-	for _, l := range wrapText(facts, t.width) {
-		t.line(t.paint(dim, l))
+	for _, fact := range append([]string{facts}, t.v.procedure()...) {
+		for _, l := range wrapText(fact, t.width) {
+			t.line(t.paint(dim, l))
+		}
 	}
+}
+
+// procedure says when pairs were looked at and how arms were tuned, where they were:
+// a line of each, and one for each pair of values that was chosen.
+func (v *view) procedure() (lines []string) {
+	if v.Looks != "" {
+		lines = append(lines, "looks "+plain(v.Looks))
+	}
+	if t := v.Tuning; t != nil {
+		lines = append(lines, plain("tuning: "+v.Claim.Tuning))
+		for _, l := range t.Chosen(v.name) {
+			lines = append(lines, plain("- "+l))
+		}
+	}
+	return lines
 }
 
 // row is one comparison in text.
@@ -119,7 +136,7 @@ func (t *terminal) verdicts(title string, cs []results.Comparison) {
 	rows := t.rows(cs)
 	cols := []textColumn{
 		{head: "verdict", cell: func(r row) string { return r.verdict }},
-		{head: strings.TrimSpace("diff" + t.v.words.unit()), right: true, cell: func(r row) string { return r.diff }},
+		{head: diffHead(t.v.words.unit()), right: true, cell: func(r row) string { return r.diff }},
 		{head: "interval", right: true, cell: func(r row) string { return r.interv }},
 		{head: "n", right: true, cell: func(r row) string { return r.n }},
 		{head: "bits", right: true, cell: func(r row) string { return r.bits }},
@@ -140,6 +157,14 @@ func (t *terminal) verdicts(title string, cs []results.Comparison) {
 	tr := newTextRail(t.v, cs, min(t.width-used-2, 60))
 	t.stacked(rows, cols[1:], tr)
 	t.legend(tr)
+}
+
+// diffHead heads the column of differences; a long unit is told above the table only.
+func diffHead(unit string) string {
+	if runewidth.StringWidth(unit) > 8 {
+		unit = ""
+	}
+	return strings.TrimSpace("diff" + unit)
 }
 
 // railLeast is the shortest rail worth drawing, in characters.

@@ -1,5 +1,7 @@
 package report
 
+import "slices"
+
 // tabular is a table for the page: the first cell of a row is its header.
 type tabular struct {
 	Caption string
@@ -25,4 +27,12 @@ func columns(names ...string) []column {
 		}
 	}
 	return out
+}
+
+// drop takes column k out.
+func (t *tabular) drop(k int) {
+	t.Columns = slices.Delete(t.Columns, k, k+1)
+	for i := range t.Rows {
+		t.Rows[i] = slices.Delete(t.Rows[i], k, k+1)
+	}
 }

@@ -242,7 +242,7 @@ func (v *view) checks(cs []results.Comparison) []*tabular {
 	unit := commaShort(v)
 	intervals := &tabular{
 		Caption: "Intervals of the paired difference" + commaUnit(v) + ", each at " + percentage(v.Confidence),
-		Columns: columns("Arm", "#n", "#SD", "#t (drawn)", "#bootstrap, BCa", "#bootstrap, studentised", "#flipped signs", "#Hodges-Lehmann, signed ranks", "to trust before t"),
+		Columns: columns("Arm", "#n", "#SD", "#t (drawn)", "#bootstrap, BCa", "#bootstrap, studentised", "#flipped signs", "#Hodges-Lehmann, signed ranks", "#two-way, over test examples too", "to trust before t"),
 	}
 	decided := &tabular{
 		Caption: "What decides, and what casts doubt",
@@ -253,13 +253,16 @@ func (v *view) checks(cs []results.Comparison) []*tabular {
 		intervals.Rows = append(intervals.Rows, []string{ // the SD with one decimal more than the differences it is of
 			v.pairName(c), strconv.Itoa(c.N), fixed(v.words.scale(c.SD), v.words.digits+1),
 			v.words.interval(c.Low, c.High), v.bca(c), v.words.interval(c.StudentLow, c.StudentHigh),
-			v.words.interval(c.FlipLow, c.FlipHigh), v.middleWords(c), orMissing(plain(c.Offered)),
+			v.words.interval(c.FlipLow, c.FlipHigh), v.middleWords(c), v.twoWay(c), orMissing(plain(c.Offered)),
 		})
 		decided.Rows = append(decided.Rows, []string{
 			v.pairName(c), v.words.diff(c.Mean), fixed(c.Skewness, 2),
 			probability(c.P), probability(c.Holm), probability(c.PWorse), probability(c.HolmWorse),
 			fmt.Sprintf("%d of %d", c.Diverged, c.N), shares(c.DivergedLow, c.DivergedHigh),
 		})
+	}
+	if !slices.ContainsFunc(cs, func(c results.Comparison) bool { return c.Items != nil }) {
+		intervals.drop(8)
 	}
 	return []*tabular{intervals, decided}
 }
