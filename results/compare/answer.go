@@ -49,8 +49,12 @@ func tuned(t *results.Tuning) string {
 	if len(t.LossScales) > 0 {
 		what = append(what, "loss scale")
 	}
-	return fmt.Sprintf("Every arm, the baseline too, was given the %s of the best of the same %d trials, by %s on %s that are not among these.",
-		list(what), trials, t.Metric, number(t.Replicates, "replicate"))
+	are := "are"
+	if t.Replicates == 1 {
+		are = "is"
+	}
+	return fmt.Sprintf("Every arm, the baseline too, was given the %s of the best of the same %d trials, by %s on %s that %s not among these.",
+		list(what), trials, t.Metric, number(t.Replicates, "replicate"), are)
 }
 
 func anyPair(s *results.Study) bool {

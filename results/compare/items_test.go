@@ -241,3 +241,20 @@ func drawTable(rng *rand.Rand, n, m int, shared bool) (*table, []float64) {
 	}
 	return tab, gains
 }
+
+// TestMcNemarExact holds the p-value to the approval of a prime minister asked twice
+// of 1600 people (Agresti, Categorical Data Analysis, table 10.1; 150 turned away, 86
+// the other way), for which R's mcnemar.exact gives 3.716e-05 (both from memory).
+func TestMcNemarExact(t *testing.T) {
+	arm, base := make([]float64, 236), make([]float64, 236)
+	for i := range arm {
+		arm[i] = float64(count(i < 86))
+		base[i] = 1 - arm[i]
+	}
+	c := Pair(question("a", 0.01), answered(runs("a", 0), 1, arm), answered(runs("b", 0), 1, base))
+	f := c.Items.Flips[0]
+	if f.Gained != 86 || f.Lost != 150 {
+		t.Fatalf("%+v", f)
+	}
+	near(t, "p", f.P, 3.716e-05, 5e-9)
+}
