@@ -24,7 +24,8 @@
 //	multiplier.go  the choice of path, each bit-equal to the reference: fast.go hands
 //	               products to internal/kernel; mul.go forms blocks of columns, in
 //	               the machine's own arithmetic (native.go) or in steps of binary64
-//	               (engine.go, adds.go, orders.go, wide.go, tables.go)
+//	               (engine.go, adds.go, orders.go, tables.go; wide.go,
+//	               exactwide.go)
 //	share.go       parts of products for goroutines that have nothing else to do
 //	text.go        words to and from plans
 //	random/        counter-based random words

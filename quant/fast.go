@@ -61,6 +61,8 @@ func kernelArithmetic(acc Accumulate) (a kernel.Arithmetic, ok bool) {
 		a.Chunk = acc.Order.K
 	case Pairwise:
 		a.Pairwise = true
+	case Lanes:
+		a.Lanes = acc.Order.K
 	default:
 		return a, false
 	}

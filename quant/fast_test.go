@@ -37,6 +37,12 @@ var fastTexts = []string{
 	"product fp16; sum fp16; outer fp32; chunk(7)",
 	"product fp16; sum fp16; chunk(64)",
 	"product fp32; sum fp32; pairwise",
+	"product fp16; sum fp16; pairwise",
+	"product fp32; sum fp16 nearest-even saturate; outer fp32; pairwise",
+	"product exact; sum bf16; through binary32; pairwise",
+	"product fp16; sum fp16; lanes(8)",
+	"product exact; sum bf16; lanes(5)",
+	"product fp32; sum fp32; outer fp16; lanes(3)",
 	"product fp32; sum bf16; outer fp32; chunk(16)",
 }
 

@@ -6,6 +6,9 @@ import "math"
 func (m *Multiplier[T]) mul(products, sums *Counts) {
 	p := &m.work
 	wide := blockWidth(p.K)
+	if m.wide != nil {
+		m.wide.take()
+	}
 	for j0 := p.from; j0 < p.to; j0 += wide {
 		m.block = block[T]{Multiplier: m, p: p, j0: j0, width: min(wide, p.to-j0), products: products, sums: sums}
 		m.block.form()
@@ -96,8 +99,12 @@ func (b *block[T]) engineRow(to []T, i int) bool {
 		return false
 	}
 	e.fillRow(p.Terms.Row, p.Sums.Row, p.firstI+uint32(i))
-	s, next, ok := e.row()
-	if !ok {
+	var s []float64
+	next, ok := e.terms+1, true
+	if b.wide != nil && b.wide.n > 0 {
+		b.wide.row(e, i)
+		s = e.s
+	} else if s, next, ok = e.row(); !ok {
 		return false
 	}
 	if p.Scale != nil {
@@ -114,6 +121,16 @@ func (b *block[T]) engineRow(to []T, i int) bool {
 	return true
 }
 
+// leftRow implements lefts.
+func (b *block[T]) leftRow(i int, to []float64) bool {
+	narrow := true
+	for k := range to {
+		to[k] = float64(b.p.A.At(i, k))
+		narrow = narrow && isNarrow(to[k])
+	}
+	return narrow
+}
+
 // prepareEngine hands the columns to the engine, once a block; false where they
 // are not binary32 numbers.
 func (b *block[T]) prepareEngine() bool {
@@ -127,6 +144,9 @@ func (b *block[T]) prepareEngine() bool {
 		return false
 	}
 	e.columns, e.firstColumn = p.B, b.j0
+	if b.wide != nil {
+		b.wide.form(e, p.I, b)
+	}
 	e.fillColumns(p.Terms.Column, p.Sums.Column, uint32(p.FirstJ)+uint32(b.j0))
 	b.engineServes = true
 	return true

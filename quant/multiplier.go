@@ -11,6 +11,7 @@ type Multiplier[T Element] struct {
 	engine     *engine       // nil where a point has no quick rounding
 	sumEngine  *engine       // engine for sums without products
 	fastSums   *fastSums     // and their kernels, nil where they do not serve
+	wide       *wideSums     // exact sums of the engine, nil for other orders than wide
 	nativeRows bool          // sums without products are those of the machine in binary64
 	slab       []T           // a block of columns
 	line       []T           // a row of terms
@@ -89,6 +90,7 @@ func NewMultiplier[T Element](acc Accumulate) (*Multiplier[T], error) {
 		return m, nil // the reference alone knows the orders of hardware models
 	}
 	m.native, m.engine = newNative[T](acc), newEngine(acc, 2*24, -2*149) // products of binary32 numbers
+	m.wide = newWideSums(acc)
 	m.fast, m.fastSums = newFast(m, acc), newFastSums[T](acc)
 	_, double := any(t).(float64)
 	m.nativeRows = double && acc.Order.Kind == Sequential && !acc.Through32 && newQuick(&acc.Sum).kind == quickNative64

@@ -128,21 +128,30 @@ func extentOf(x []float64) (largest float64, fine int, ok bool) {
 // roundWide rounds the sums of n levels into e.s.
 func (e *engine) roundWide(n int) {
 	for j := range e.s {
-		var x exactSum
-		total := Exactly(e.level[j])
-		switch {
-		case n == 2:
-			total = total.Add(Exactly(e.level[e.width+j]))
-		case n > 2:
-			for l := range n {
-				x.add(Exactly(e.level[l*e.width+j]))
-			}
-			total = x.total()
-		}
-		v, event := e.sum.point.Round(total, e.sumWords.word(e.terms, j))
+		v, event := e.roundLevels(n, j)
 		if event != Underflowed {
 			e.sums.Count(event)
 		}
 		e.s[j] = v + 0
 	}
+}
+
+// roundLevels rounds the sum of the n levels of column j, addition terms.
+func (e *engine) roundLevels(n, j int) (float64, Event) {
+	word := e.sumWords.word(e.terms, j)
+	if n <= 2 {
+		x, rest := e.level[j], 0.0
+		if n == 2 {
+			low := e.level[e.width+j]
+			high := x
+			x = high + low
+			rest = twoSumRest(x, high, low)
+		}
+		return e.sum.round(oddFold(x, rest), word)
+	}
+	var x exactSum
+	for l := range n {
+		x.add(Exactly(e.level[l*e.width+j]))
+	}
+	return e.sum.point.Round(x.total(), word)
 }

@@ -61,7 +61,7 @@ func newAttention[T quant.Element](b *bench[T]) (layer[T], error) {
 
 // project is part n, a product with two parameters of its own.
 func (l *attention[T]) project(b *bench[T], n int, below, above *edge[T], in, out int) (*linear[T], error) {
-	inner := bench[T]{place: b.place, below: below, above: above, batch: b.batch}
+	inner := bench[T]{place: b.place, below: below, above: above, batch: b.batch, team: b.team}
 	inner.part = n
 	inner.spec = &Spec{In: []int{in, l.length}, Out: []int{out, l.length}, Params: b.spec.Params[2*n:][:2]}
 	return newPointwise(&inner)

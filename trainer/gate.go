@@ -23,7 +23,7 @@ func newGate[T quant.Element](b *bench[T], units, n, gates int) (*gate[T], error
 	inputs, length := b.spec.In[0], b.spec.In[1]
 	both := inputs + units
 	spec := &Spec{In: []int{both, length}, Out: []int{units, length}, Params: b.spec.Params[2*n:][:2]}
-	inner := bench[T]{place: b.place, spec: spec, batch: b.batch}
+	inner := bench[T]{place: b.place, spec: spec, batch: b.batch, team: b.team}
 	inner.part = n
 	g := &gate[T]{
 		place: inner.place, inputs: inputs, units: units, length: length, parts: gates,

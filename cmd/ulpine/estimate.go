@@ -85,6 +85,7 @@ func armSpeed(ctx context.Context, p *plan.Plan, a *plan.Arm) (float64, error) {
 		Train:       inventedSet(p.Network, n, t.Regression()),
 		Diagnostics: trainer.Diagnostics(p.Diagnostics),
 	}
+	job.Arm.Stages = nil // the first one tells
 	inner, cancel := context.WithCancel(ctx)
 	defer cancel()
 	watch := &stopWatch{enough: cancel, each: each, from: time.Now()}

@@ -44,7 +44,9 @@ type Arithmetic struct {
 	// them again with care.
 	ProductPolicy, SumPolicy Policy
 	// Pairwise adds neighbouring terms, then neighbouring sums, until one is left.
-	// There are kernels where product and sum are native.
 	Pairwise bool
-	Outer    Sum // adds chunks and the bias; equal to Sum where nothing else is meant
+	// Lanes, if not 0, is the number of sequential sums among which terms are dealt by
+	// turns, to be added pairwise.
+	Lanes int
+	Outer Sum // adds chunks and the bias; equal to Sum where nothing else is meant
 }

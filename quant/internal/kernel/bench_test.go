@@ -68,6 +68,9 @@ var benchModes = []struct {
 	{"exact-product-stochastic-sum-through-binary32", in(ExactProduct, Grid{}, randomSum(fp16, 16, true, false)), fp16},
 	{"exact-product-stochastic-sum-through-binary32-bf16", in(ExactProduct, Grid{}, randomSum(bf16, 16, true, false)), bf16},
 	{"stochastic-product-and-sum", randomBoth(fp16, 16, false, randomSum(fp16, 16, false, false)), fp16},
+	{"pairwise", Arithmetic{Product: RoundedProduct, Grid: fp16, Sum: nearestSum(fp16), Outer: nearestSum(fp16), Pairwise: true}, fp16},
+	{"pairwise-binary32-product", Arithmetic{Product: NativeProduct, Sum: nearestSum(fp16), Outer: nearestSum(fp16), Pairwise: true}, fp16},
+	{"lanes8", Arithmetic{Product: RoundedProduct, Grid: fp16, Sum: nearestSum(fp16), Outer: nearestSum(fp16), Lanes: 8}, fp16},
 	{"chunk64-binary32-outside", Arithmetic{Product: RoundedProduct, Grid: fp16, Sum: nearestSum(fp16), Chunk: 64}, fp16},
 }
 

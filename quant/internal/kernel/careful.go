@@ -22,7 +22,7 @@ type careful struct {
 // in one grid, whose exponents leave binary32 room for what lies beyond them.
 func (m *Multiplier) setCareful() {
 	a := &m.a
-	if a.Sum.Kind != NearestSum || a.Outer != a.Sum || a.Chunk > 0 || a.Sum.Grid.top() > 100 || a.Product == RandomProduct {
+	if a.Sum.Kind != NearestSum || a.Outer != a.Sum || a.Chunk > 0 || a.Pairwise || a.Lanes > 0 || a.Sum.Grid.top() > 100 || a.Product == RandomProduct {
 		return
 	}
 	k := &careful{mode: carefulProduct, c: single.masks()}

@@ -19,6 +19,7 @@ type loops struct {
 	gatherColumns func(dst, data []float32, rows, columns []int32, width int)
 
 	addNearest func(total, chunk []float32, c *Constants)
+	addOdd     func(total, chunk []float32, c *Constants)
 	philox     func(t *philoxArgs)
 
 	// See slices.go.
@@ -131,6 +132,22 @@ func (l *loops) addedNearest(total, chunk []float32, c *Constants) {
 	total, chunk = total[whole:], chunk[whole:len(total)]
 	for i, v := range chunk {
 		x := float32(total[i]*scale) + float32(v*scale)
+		total[i] = float32(near32(x, least, grow) * unscale)
+	}
+}
+
+// addedOdd is total = R(total + chunk), R of the exact sum, else as addedNearest.
+func (l *loops) addedOdd(total, chunk []float32, c *Constants) {
+	whole := len(total) &^ (wholeLanes - 1)
+	if l.addOdd == nil || whole == 0 {
+		whole = 0
+	} else {
+		l.addOdd(total[:whole], chunk[:whole], c)
+	}
+	least, grow, scale, unscale := c.SumLeast.single(), c.SumGrow.single(), c.Scale.single(), c.Unscale.single()
+	total, chunk = total[whole:], chunk[whole:len(total)]
+	for i, v := range chunk {
+		x := plusOdd32(float32(total[i]*scale), float32(v*scale))
 		total[i] = float32(near32(x, least, grow) * unscale)
 	}
 }

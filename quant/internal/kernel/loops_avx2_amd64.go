@@ -87,3 +87,8 @@ func add64AVX2(x []float64, b []float64, factor float64, c *Constants, t *[2]uin
 //
 //go:noescape
 func addNearestAVX2(total []float32, chunk []float32, c *Constants)
+
+// addOddAVX2 is total = R(total + chunk), R nearest-even to the grid of c's sums of the exact sum.
+//
+//go:noescape
+func addOddAVX2(total []float32, chunk []float32, c *Constants)

@@ -1203,3 +1203,47 @@ next:
 	JLT          next
 	VZEROUPPER
 	RET
+
+// func addOddAVX2(total []float32, chunk []float32, c *Constants)
+// Requires: AVX, AVX2, FMA3
+TEXT ·addOddAVX2(SB), $0-56
+	MOVQ    total_base+0(FP), AX
+	MOVQ    chunk_base+24(FP), CX
+	MOVQ    total_len+8(FP), DX
+	MOVQ    c+48(FP), BX
+	VMOVUPS 384(BX), Y0
+	VMOVUPS 448(BX), Y1
+	VMOVUPS (BX), Y2
+	VMOVUPS 576(BX), Y3
+	VMOVUPS 640(BX), Y4
+	XORQ    BX, BX
+
+next:
+	VMOVUPS      (AX)(BX*4), Y5
+	VMULPS       Y3, Y5, Y5
+	VMULPS       (CX)(BX*4), Y3, Y6
+	VADDPS       Y6, Y5, Y7
+	VSUBPS       Y5, Y7, Y8
+	VSUBPS       Y8, Y7, Y9
+	VSUBPS       Y9, Y5, Y9
+	VSUBPS       Y8, Y6, Y8
+	VADDPS       Y8, Y9, Y9
+	VPXOR        Y5, Y5, Y5
+	VCMPPS       $0x0c, Y5, Y9, Y5
+	VPXOR        Y7, Y9, Y9
+	VPSRAD       $0x1f, Y9, Y9
+	VPAND        Y5, Y9, Y9
+	VPADDD       Y9, Y7, Y7
+	VPSRLD       $0x1f, Y5, Y5
+	VPOR         Y5, Y7, Y5
+	VANDPS       Y2, Y5, Y6
+	VMAXPS       Y0, Y6, Y6
+	VFMADD231PS  Y1, Y6, Y5
+	VFNMADD231PS Y1, Y6, Y5
+	VMULPS       Y4, Y5, Y5
+	VMOVUPS      Y5, (AX)(BX*4)
+	ADDQ         $0x08, BX
+	CMPQ         BX, DX
+	JLT          next
+	VZEROUPPER
+	RET

@@ -1241,3 +1241,48 @@ next:
 	JLT          next
 	VZEROUPPER
 	RET
+
+// func addOddAVX512(total []float32, chunk []float32, c *Constants)
+// Requires: AVX, AVX512DQ, AVX512F
+TEXT ·addOddAVX512(SB), $0-56
+	MOVQ    total_base+0(FP), AX
+	MOVQ    chunk_base+24(FP), CX
+	MOVQ    total_len+8(FP), DX
+	MOVQ    c+48(FP), BX
+	VMOVUPS 384(BX), Z0
+	VMOVUPS 448(BX), Z1
+	VMOVUPS (BX), Z2
+	VMOVUPS 576(BX), Z3
+	VMOVUPS 640(BX), Z4
+	XORQ    BX, BX
+
+next:
+	VMOVUPS      (AX)(BX*4), Z5
+	VMULPS       Z3, Z5, Z5
+	VMULPS       (CX)(BX*4), Z3, Z6
+	VADDPS       Z6, Z5, Z8
+	VSUBPS       Z5, Z8, Z9
+	VSUBPS       Z9, Z8, Z10
+	VSUBPS       Z10, Z5, Z10
+	VSUBPS       Z9, Z6, Z9
+	VADDPS       Z9, Z10, Z10
+	VPXORD       Z7, Z7, Z7
+	VCMPPS       $0x0c, Z7, Z10, K1
+	VPMOVM2D     K1, Z7
+	VPXORD       Z8, Z10, Z10
+	VPSRAD       $0x1f, Z10, Z10
+	VPANDD       Z7, Z10, Z10
+	VPADDD       Z10, Z8, Z8
+	VPSRLD       $0x1f, Z7, Z7
+	VPORD        Z7, Z8, Z5
+	VANDPS       Z2, Z5, Z6
+	VMAXPS       Z0, Z6, Z6
+	VFMADD231PS  Z1, Z6, Z5
+	VFNMADD231PS Z1, Z6, Z5
+	VMULPS       Z4, Z5, Z5
+	VMOVUPS      Z5, (AX)(BX*4)
+	ADDQ         $0x10, BX
+	CMPQ         BX, DX
+	JLT          next
+	VZEROUPPER
+	RET

@@ -17,6 +17,7 @@ type Multiplier struct {
 	outer   func(total, chunk []float32, c *Constants)
 	loops   loops // the set's, and their scratch
 	outerC  Constants
+	tree    *tree // of sums that are no sequence, else nil
 	one     side[float32]
 	two     side[float64]
 	wide    bool // the last panel was formed in binary64 lanes
@@ -38,8 +39,9 @@ type Multiplier struct {
 	termColumns []uint32
 	result      []float32 // finished or waiting binary32 sums
 	chunk       []float32
-	stack       []subtree // of pairwise sums, depth of them in use
-	depth       int
+	dealt       Product[float32] // the product with its terms by lanes
+	dealtA      []float32
+	dealtB      dealtColumns
 	panel       panel
 	spare       []bool // flags that nobody reads
 	bad         []bool // pairs of rows to be handed back
@@ -57,13 +59,10 @@ func NewWith(set *Set, a Arithmetic) *Multiplier {
 	if a.Product == RandomProduct && (a.Sum.Kind != StochasticSum || a.Sum.Through || a.Bits < 1 || a.Bits > 16) {
 		return nil
 	}
-	if a.Pairwise && (a.Product != NativeProduct || a.Sum.Kind != NativeSum || a.Chunk > 0) {
-		return nil
-	}
 	m := &Multiplier{a: a, set: set, loops: set.loops, one: newSide(&set.single), two: newSide(&set.double)}
 	m.main = newPlans(&m.a, a.Sum)
 	m.setCareful()
-	if a.Chunk > 0 && !m.setOuter() {
+	if a.Chunk > 0 && !m.setOuter() || (a.Pairwise || a.Lanes > 0) && !m.setTree() {
 		return nil
 	}
 	m.biases = newPlans(&Arithmetic{Product: ExactProduct, Sum: a.Outer, Outer: a.Outer}, a.Outer)
@@ -129,6 +128,9 @@ func (m *Multiplier) Mul(p *Product[float32], redo func(i0, i1, j0, j1 int)) {
 		redo(0, p.I, p.From, p.end())
 		return
 	}
+	if m.a.Lanes > 0 {
+		p = m.deal(p)
+	}
 	m.begin(p, redo)
 	if p.Bias != nil && m.bias == nil {
 		redo(0, p.I, p.From, p.end())
@@ -143,6 +145,7 @@ func (m *Multiplier) Mul(p *Product[float32], redo func(i0, i1, j0, j1 int)) {
 // release lets go of the caller's tensors.
 func (m *Multiplier) release() {
 	m.p, m.redo = nil, nil
+	m.dealt, m.dealtB.all = Product[float32]{}, nil
 	m.panel = panel{}
 	m.one.work, m.two.work = work[float32]{}, work[float64]{}
 }

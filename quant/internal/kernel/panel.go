@@ -9,6 +9,7 @@ type panel struct {
 	row         int  // length of a row of binary32 sums: the binary32 kernels' width
 	grain       int  // see block
 	only        *Span
+	into        []float32 // where binary32 sums of terms go
 }
 
 // formPanel forms the panel that starts at column j0 and returns its columns.
@@ -82,28 +83,37 @@ func (n *panel) form() outcome {
 	if n.row != n.width {
 		clear(n.result) // columns between the two widths take part in the bias's flags
 	}
-	if n.a.Pairwise {
-		n.pairwise()
+	o := formed
+	switch n.into = n.result; {
+	case n.a.Pairwise:
+		o = n.pairwise()
+	case n.a.Lanes > 0:
+		o = n.lanes()
+	case n.a.Chunk > 0:
+		o = n.chunks()
+	default:
+		o = n.sum(0, p.K)
+	}
+	if o == formed && (p.Bias != nil || n.composed()) {
 		n.finish()
-		return formed
 	}
-	chunk := p.K
-	if n.a.Chunk > 0 {
-		chunk = n.a.Chunk
-		n.chunk = grown(n.chunk, 2*pairs*n.row)
-		clear(n.chunk)
-		clear(n.result)
-	}
-	for from := 0; from < p.K; from += chunk {
-		if o := n.sum(from, min(from+chunk, p.K)); o != formed {
+	return o
+}
+
+// composed tells that a finished sum is put together from others, and waits in result.
+func (n *panel) composed() bool { return n.a.Chunk > 0 || n.tree != nil }
+
+// chunks adds every few terms from +0, and the finished chunks.
+func (n *panel) chunks() outcome {
+	n.chunk = grown(n.chunk, len(n.result))
+	clear(n.chunk)
+	clear(n.result)
+	n.into = n.chunk
+	for from := 0; from < n.p.K; from += n.a.Chunk {
+		if o := n.sum(from, min(from+n.a.Chunk, n.p.K)); o != formed {
 			return o
 		}
-		if n.a.Chunk > 0 {
-			n.outer(n.result, n.chunk, &n.outerC)
-		}
-	}
-	if p.Bias != nil || n.a.Chunk > 0 {
-		n.finish()
+		n.outer(n.result, n.chunk, &n.outerC)
 	}
 	return formed
 }
@@ -187,7 +197,7 @@ func (n *panel) measureAll() Span {
 // direct is the number of rows that the last block may write to C itself: pairs of
 // rows that exist, of full panels that nothing is added to.
 func (n *panel) direct(last bool) int {
-	if !last || n.columns < n.width || n.p.Bias != nil || n.a.Chunk > 0 {
+	if !last || n.columns < n.width || n.p.Bias != nil || n.composed() {
 		return 0
 	}
 	return n.p.I &^ 1
@@ -200,7 +210,7 @@ func (n *panel) runSingle(plan *plan, k, terms int, first, last bool) {
 	*w = work[float32]{
 		mode: plan.mode, c: &plan.c, width: n.width, terms: terms,
 		a: pack(s, &n.loops, p, plan.scale)[2*k:], aStride: 2 * p.K, b: n.raw,
-		in: n.sums32(), inRow: n.row, out: n.sums32(), outRow: n.row,
+		in: n.into, inRow: n.row, out: n.into, outRow: n.row,
 	}
 	n.words(&w.r, &w.v, k)
 	if first {
@@ -215,7 +225,7 @@ func (n *panel) runSingle(plan *plan, k, terms int, first, last bool) {
 	}
 	w.first, w.last = direct/2, pairsOf(p.I)
 	s.sweep(n.bad)
-	if last && p.Bias == nil && n.a.Chunk == 0 {
+	if last && p.Bias == nil && !n.composed() {
 		n.copyOut(direct, p.I)
 	}
 }
@@ -246,21 +256,13 @@ func (n *panel) runWide(plan *plan, k, terms int, first, last bool) {
 		w.final, w.finalRow = nil, 0
 	}
 	w.first, w.last = direct/2, pairsOf(p.I)
-	if last && !(p.Bias != nil && n.bias.double && n.a.Chunk == 0) {
-		w.final, w.finalRow = n.sums32(), n.row
+	if last && !(p.Bias != nil && n.bias.double && !n.composed()) {
+		w.final, w.finalRow = n.into, n.row
 	}
 	s.sweep(n.bad)
-	if last && p.Bias == nil && n.a.Chunk == 0 {
+	if last && p.Bias == nil && !n.composed() {
 		n.copyOut(direct, p.I)
 	}
-}
-
-// sums32 is where binary32 sums of terms go: to the result, or to the chunk.
-func (n *panel) sums32() []float32 {
-	if n.a.Chunk > 0 {
-		return n.chunk
-	}
-	return n.result
 }
 
 // words sets the random words of a block that starts at term k.
@@ -306,7 +308,7 @@ func (n *panel) addBias() {
 func (n *panel) copyOut(first, last int) {
 	for i := first; i < last; i++ {
 		row := n.result[i*n.row:][:n.columns]
-		if n.a.Chunk > 0 || n.a.Pairwise {
+		if n.composed() {
 			for _, v := range row {
 				if v-v != 0 {
 					n.bad[i/2] = true

@@ -44,8 +44,23 @@ func result(a *Arithmetic, p *Product[float32], column []float32, i, j int) refe
 		}
 		return x
 	}
-	if a.Pairwise {
-		r.value = canonical(r.pairwise(a, p, i, term))
+	switch {
+	case a.Pairwise:
+		leaves := []float64{}
+		for k := range p.K {
+			leaves = append(leaves, term(k)+0)
+		}
+		if p.K < 2 {
+			leaves = append(leaves, 0)
+		}
+		r.value = canonical(r.tree(a, p, i, leaves))
+		return r
+	case a.Lanes > 0:
+		lanes := make([]float64, a.Lanes)
+		for k := range p.K {
+			lanes[k%a.Lanes] = r.add(a, &a.Sum, lanes[k%a.Lanes], term(k), 0)
+		}
+		r.value = canonical(r.tree(a, p, i, lanes))
 		return r
 	}
 	chunk := a.Chunk
@@ -79,12 +94,8 @@ func canonical(x float64) float32 {
 	return float32(x)
 }
 
-// pairwise is result for pairwise sums, level by level.
-func (r *reference) pairwise(a *Arithmetic, p *Product[float32], i int, term func(int) float64) float64 {
-	level := []float64{0}
-	for k := range p.K {
-		level = append(level[:k], term(k)+0)
-	}
+// tree adds neighbours, level by level, and the bias.
+func (r *reference) tree(a *Arithmetic, p *Product[float32], i int, level []float64) float64 {
 	for len(level) > 1 {
 		var next []float64
 		for n := 0; n+1 < len(level); n += 2 {
@@ -235,6 +246,19 @@ var arithmetics = []Arithmetic{
 	{Product: ExactProduct, Sum: nearestSum(bf16), Chunk: 64},
 	{Product: ExactProduct, Sum: throughSum(e5m2), Outer: nearestSum(fp16), Chunk: 3},
 	{Product: NativeProduct, Sum: Sum{}, Chunk: 16},
+	{Product: RoundedProduct, Grid: fp16, Sum: nearestSum(fp16), Pairwise: true},
+	{Product: RoundedProduct, Grid: fp16, Sum: nearestSum(bf16), Pairwise: true},
+	{Product: RoundedProduct, Grid: bf16, Sum: throughSum(bf16), Pairwise: true},
+	{Product: NativeProduct, Sum: nearestSum(e6m9), Pairwise: true},
+	{Product: NativeProduct, Sum: nearestSum(bf16), Pairwise: true},
+	{Product: ExactProduct, Sum: nearestSum(e5m2), Pairwise: true},
+	{Product: ExactProduct, Sum: Sum{}, Pairwise: true},
+	{Product: RoundedProduct, Grid: e4m3, Sum: Sum{}, Pairwise: true},
+	{Product: RoundedProduct, Grid: fp16, Sum: nearestSum(fp16), Lanes: 8},
+	{Product: ExactProduct, Sum: nearestSum(bf16), Lanes: 3},
+	{Product: NativeProduct, Sum: throughSum(fp16), Outer: nearestSum(bf16), Lanes: 4},
+	{Product: NativeProduct, Sum: Sum{}, Lanes: 5},
+	{Product: ExactProduct, Sum: Sum{}, Outer: nearestSum(fp16), Lanes: 2},
 }
 
 // init gives the arithmetics that are formed again with care a policy each.

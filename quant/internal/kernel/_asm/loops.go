@@ -256,32 +256,73 @@ var loops = []loop{
 	},
 	{
 		name: "addNearest", signature: "func(total, chunk []float32, c *Constants)",
-		doc: "is total = R(binary32(total + chunk)), R nearest-even to the grid of c's sums.",
-		emit: func(g *loop) {
-			total, chunk, n := g.base("total"), g.base("chunk"), g.length("total")
-			table := g.Load(g.Param("c"), g.GP64())
-			constant := func(name string) reg.VecVirtual {
-				r := g.reg()
-				g.load(r, operand.Mem{Base: table, Disp: offset(constantFields, name)})
-				return r
-			}
-			least, grow, mask := constant("SumLeast"), constant("SumGrow"), constant("ExponentMask")
-			scale, unscale := constant("Scale"), constant("Unscale")
-			g.each(n, g.bytes()/4, func(i reg.Register) {
-				v, e := g.reg(), g.reg()
-				g.load(v, g.at(total, i, 4))
-				g.mul(v, v, scale)
-				g.fma(v, scale, g.at(chunk, i, 4))
-				g.and(e, v, mask)
-				g.max(e, e, least)
-				g.fma(v, e, grow)
-				g.fnma(v, e, grow)
-				g.mul(v, v, unscale)
-				g.store(g.at(total, i, 4), v)
-			})
-			g.end()
-		},
+		doc:  "is total = R(binary32(total + chunk)), R nearest-even to the grid of c's sums.",
+		emit: func(g *loop) { emitAdd(g, false) },
 	},
+	{
+		name: "addOdd", signature: "func(total, chunk []float32, c *Constants)",
+		doc:  "is total = R(total + chunk), R nearest-even to the grid of c's sums of the exact sum.",
+		emit: func(g *loop) { emitAdd(g, true) },
+	},
+}
+
+// emitAdd adds slices and rounds to the grid; odd: the sum is rounded to odd first,
+// see tile.plusOdd.
+func emitAdd(g *loop, odd bool) {
+	total, chunk, n := g.base("total"), g.base("chunk"), g.length("total")
+	table := g.Load(g.Param("c"), g.GP64())
+	constant := func(name string) reg.VecVirtual {
+		r := g.reg()
+		g.load(r, operand.Mem{Base: table, Disp: offset(constantFields, name)})
+		return r
+	}
+	least, grow, mask := constant("SumLeast"), constant("SumGrow"), constant("ExponentMask")
+	scale, unscale := constant("Scale"), constant("Unscale")
+	g.each(n, g.bytes()/4, func(i reg.Register) {
+		v, e := g.reg(), g.reg()
+		g.load(v, g.at(total, i, 4))
+		g.mul(v, v, scale)
+		if odd {
+			p := g.reg()
+			g.mul(p, scale, g.at(chunk, i, 4))
+			g.plusOdd(v, p)
+		} else {
+			g.fma(v, scale, g.at(chunk, i, 4))
+		}
+		g.and(e, v, mask)
+		g.max(e, e, least)
+		g.fma(v, e, grow)
+		g.fnma(v, e, grow)
+		g.mul(v, v, unscale)
+		g.store(g.at(total, i, 4), v)
+	})
+	g.end()
+}
+
+// plusOdd: sum += p rounded to odd, see tile.plusOdd.
+func (g *loop) plusOdd(sum, p reg.Register) {
+	x, w, e, odd := g.reg(), g.reg(), g.reg(), g.reg()
+	const notEqual = 12
+	g.add(x, sum, p)
+	g.sub(w, x, sum)
+	g.sub(e, x, w)
+	g.sub(e, sum, e)
+	g.sub(w, p, w)
+	g.add(e, e, w)
+	g.zero(odd)
+	if g.zmm {
+		k := g.K()
+		g.VCMPPS(operand.Imm(notEqual), odd, e, k)
+		g.VPMOVM2D(k, odd)
+	} else {
+		g.VCMPPS(operand.Imm(notEqual), odd, e, odd)
+	}
+	g.xorInt(e, e, x)
+	g.VPSRAD(operand.Imm(31), e, e)
+	g.andInt(e, e, odd)
+	g.addInt(x, x, e)
+	g.VPSRLD(operand.Imm(31), odd, odd)
+	g.orInt(sum, x, odd)
 }
 
 // transpose8 transposes eight registers of eight lanes: pairs of lanes, pairs of
