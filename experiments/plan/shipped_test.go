@@ -87,6 +87,20 @@ func writeArrays(t *testing.T, folder string) {
 	}
 }
 
+// writeSensors writes the tables that sensors-csv.toml names.
+func writeSensors(t *testing.T, folder string) {
+	t.Helper()
+	for _, name := range []string{"sensors-1.csv", "sensors-2.csv", "sensors-test.csv"} {
+		text := "speed,wear,load,heat,sound,current\n"
+		for i := range 20 {
+			text += fmt.Sprintf("%d,%d,%d,%d,%d,%d\n", i, i*i%7, i*3%5, i*i%11, i%3, i*i*i%13)
+		}
+		if err := os.WriteFile(filepath.Join(folder, name), []byte(text), 0o600); err != nil {
+			t.Fatal(err)
+		}
+	}
+}
+
 // writeWeights writes the parameters that from-stored-run.toml starts from, as show
 // --weights does.
 func writeWeights(t *testing.T, file string) {
@@ -144,6 +158,7 @@ func TestShippedPlansLoad(t *testing.T) {
 		writeDigits(t, filepath.Join(folder, images))
 	}
 	writeArrays(t, folder)
+	writeSensors(t, folder)
 	writeWeights(t, filepath.Join(folder, "pump-weights.npz"))
 	all := shipped(t)
 	for _, name := range []string{"first-look.toml", "sixteen-bit.toml", "digits-idx.toml"} {
