@@ -25,6 +25,8 @@ type plans struct {
 	random     *plan // stochastic modes: fused and free of subnormals
 	randomCare *plan
 	wide       *plan
+	unfused    bool  // where products are exact, a multiply-add is better left apart
+	apart      *plan // the native plan in that case
 }
 
 // block is what is known of a block of terms before it is formed.
@@ -98,6 +100,9 @@ func (p *plans) chooseNative(b *block) *plan {
 	if p.arithmetic.Product == RoundedProduct && !b.roundsOnce(p.arithmetic.Grid) {
 		return nil
 	}
+	if p.apart != nil && b.exact() {
+		return p.apart
+	}
 	return p.native
 }
 
@@ -120,7 +125,7 @@ func (p *plans) chooseNearest(b *block) *plan {
 			return nil
 		}
 		return p.rounded
-	case p.sum.Through && a.Product == NativeProduct && !b.exact():
+	case p.sum.Through && a.Product == NativeProduct && !b.exact(), p.sum.Through && p.unfused && b.exact():
 		return p.product
 	case p.sum.Through && b.subnormalFree(g):
 		return p.free

@@ -21,11 +21,14 @@ func (s Sum) supported() bool {
 }
 
 // newPlans prepares the ways to add terms of a's products in the sum s.
-func newPlans(a *Arithmetic, s Sum) *plans {
-	p := &plans{arithmetic: a, sum: s}
+func newPlans(set *Set, a *Arithmetic, s Sum) *plans {
+	p := &plans{arithmetic: a, sum: s, unfused: set.unfused}
 	switch s.Kind {
 	case NativeSum:
 		p.native = nativePlan(a)
+		if p.unfused && a.Product == ExactProduct {
+			p.apart = nativePlan(&Arithmetic{Product: NativeProduct})
+		}
 	case NearestSum:
 		p.planNearest(a)
 	case StochasticSum:
