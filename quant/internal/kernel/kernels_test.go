@@ -20,7 +20,7 @@ func planned() (singles, doubles []*plan) {
 	}
 	for i := range arithmetics {
 		p := newPlans(Sets[0], &arithmetics[i], arithmetics[i].Sum)
-		for _, q := range []*plan{p.native, p.rounded, p.free, p.care, p.product, p.odd, p.fused, p.fusedFree, p.random, p.randomCare, p.wide} {
+		for _, q := range []*plan{p.native, p.rounded, p.free, p.care, p.product, p.odd, p.fused, p.fusedFree, p.random, p.randomCare, p.wide, p.truncated} {
 			add(q)
 		}
 	}

@@ -22,6 +22,7 @@ const (
 	stochasticFused
 	stochasticCare
 	stochasticProductCare
+	stochasticTruncated
 	carefulFused
 	carefulProduct
 	carefulRounded

@@ -85,6 +85,8 @@ func (p *plans) biasPlan(bias Span) *plan {
 		return p.care
 	case s.Kind == NearestSum:
 		return p.odd
+	case !s.Through && p.truncated != nil && bias.Low >= s.Grid.quantum():
+		return p.truncated
 	case !s.Through:
 		return p.wide
 	case (&block{a: bias, grain: s.Grid.quantum()}).fixes(s.Grid):

@@ -128,6 +128,12 @@ func (p *plans) planWide(a *Arithmetic, productFree bool) {
 	n := &plan{double: true, mode: stochasticWide, c: double.masks()}
 	n.c.carry(double, p.sum, 0)
 	switch {
+	case a.Product < RoundedProduct:
+		spare := single.fraction - p.sum.Grid.Fraction
+		if p.sum.Bits < spare || p.sum.Bits == spare && !p.sum.Centred {
+			p.truncated = &plan{mode: stochasticTruncated, c: single.masks()}
+			p.truncated.c.cut(p.sum)
+		}
 	case a.Product == RandomProduct:
 		n.mode = stochasticBoth
 		n.c.carryTerms(a)

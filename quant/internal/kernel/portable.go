@@ -62,6 +62,7 @@ var Portable = &Set{
 		productThrough: termProductThrough, odd: termOdd, oddRounded: termOddRounded, stochastic: termStochastic,
 		stochasticFused: termStochasticFused, stochasticCare: termStochasticCare,
 		stochasticProductCare: termStochasticProductCare,
+		stochasticTruncated:   termStochasticTruncated,
 		carefulFused:          termCarefulFused, carefulProduct: termCarefulProduct, carefulRounded: termCarefulRounded,
 	})},
 	double: family[float64]{width: portableWidth, narrow: portableNarrow, tiles: portableTiles(map[mode]quad[float64]{
@@ -210,5 +211,8 @@ func (n *numbers[L]) read(c *Constants) {
 			mask: c.TermMask.bits64(), half: c.TermHalf.bits64(), keep: c.TermKeep.bits64(),
 			shift: uint8(c.TermShift[0]), least: c.Least.double(), limit: c.TermLimit.double(),
 		},
+	}
+	if _, ok := any(n.grow).(float32); ok {
+		n.sum.limit = float64(c.Limit.single())
 	}
 }
