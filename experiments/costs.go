@@ -26,9 +26,9 @@ func estimate(p *plan.Plan, arms []plan.Arm, machine cost.Machine, energy cost.E
 	if err != nil {
 		return nil, err
 	}
-	var own []int // arms of another batch or optimizer
+	var own []int // arms of another batch or optimizer, or of stages
 	for i := range arms {
-		if !sameStep(&arms[i].Training, &p.Training) {
+		if !sameStep(&arms[i].Training, &p.Training) || len(arms[i].Arithmetic.Stages) > 0 {
 			own = append(own, i)
 			continue
 		}
@@ -44,17 +44,40 @@ func estimate(p *plan.Plan, arms []plan.Arm, machine cost.Machine, energy cost.E
 		if err != nil {
 			return nil, fmt.Errorf("arm %q: %w", a.Name, err)
 		}
-		in.Arms = []cost.Arm{costArm(p, a)}
+		stages, weights := costStages(p, a)
+		in.Arms = stages
 		one, err := cost.Estimate(in)
 		if err != nil {
 			return nil, err
 		}
-		r.Arms = slices.Insert(r.Arms, at, one.Arms[0])
+		bill := one.Arms[0]
+		if len(stages) > 1 {
+			bill = one.Mean(weights)
+			r.Warnings = append(r.Warnings, a.Name+" changes its arithmetic on the way: its figures are means over its steps, its memory is the most that a stage takes, an inference that of the last stage; the answer leaves it out")
+		}
+		r.Arms = slices.Insert(r.Arms, at, bill)
+		if sameStep(&a.Training, &p.Training) {
+			continue
+		}
 		r.Warnings = append(r.Warnings, fmt.Sprintf(
 			"%s trains with %s and a batch of %d, not with the plan's: it is set beside FP32 with the same, and the answer leaves it out",
 			a.Name, in.Optimizer.Name, in.Batch))
 	}
 	return r, nil
+}
+
+// costStages are an arm's stages as arms of their own, with their numbers of steps.
+func costStages(p *plan.Plan, a *plan.Arm) (arms []cost.Arm, steps []float64) {
+	t := a.Training
+	t.Epochs = 1
+	each := max(1, trainer.Describe(p.Network, nil, t, trainer.Sizes{Train: p.Task.Train}).Steps)
+	stage := *a
+	first := 1
+	for _, s := range a.Arithmetic.Stages {
+		arms, steps = append(arms, costArm(p, &stage)), append(steps, float64(s.First(each)-first))
+		stage.Arithmetic, first = s.Arm, s.First(each)
+	}
+	return append(arms, costArm(p, &stage)), append(steps, float64(each*a.Training.Epochs+1-first))
 }
 
 // sameStep reports whether a training step has the same shapes and operations.

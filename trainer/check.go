@@ -39,6 +39,9 @@ func (j *Job) openSets(p *parts) (err error) {
 	if err = j.Training.LearningRate.checkLength(total); err != nil {
 		return err
 	}
+	if err = j.checkStages(p); err != nil {
+		return err
+	}
 	if err = j.Network.checkBatchNorms(j.Training.Batch, p.train.size()); err != nil {
 		return err
 	}

@@ -92,6 +92,7 @@ type Arm struct {
 	LossGradient quant.Point
 	Layers       []Arithmetic
 	LossScale    LossScale
+	Stages       []Stage // what it changes to on the way, in order of their starts
 }
 
 // Schedule is a learning rate: Start, multiplied by Multiply at the start of each

@@ -159,6 +159,11 @@
 // start at +0. Without a master copy update.master is what forward.weight is: the
 // working copy then equals the master, since a value of a format never moves.
 //
+// # Stages
+//
+// An arm may change its arithmetic on the way, at the start of an epoch or of a step.
+// Stored tensors are then rounded at their new points: see Stage.
+//
 // # Loss scale
 //
 // None: S = 1. Fixed: S is what it is. Dynamic: if in a step an overflow, a
@@ -178,7 +183,8 @@
 // training steps from 1; the start (master, working copy) is step 0. site is
 // (layer index + 1) 256 + operation, 0 in place of layer index + 1 for the
 // network's input and output error; see the table of operations below. phase is 0 in training, 1 in evaluations of the
-// validation set, 2 of the test set; step is then the epoch, the first is 1.
+// validation set, 2 of the test set; step is then the epoch, the first is 1. phase is 3
+// where a stage starts, step its first one.
 // Element is the row-major number in the tensor [batch, shape...] or in the
 // parameter; in an evaluation the batch is the whole set, so that no word
 // depends on how the set is cut. Rows of sums count i, columns j, likewise over

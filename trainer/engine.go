@@ -183,7 +183,7 @@ func (e *engine[T]) step(batch []int32, rate float64) (loss float64, what fate) 
 	if e.scaler.set.Kind == DynamicScale && (e.tally.gradientEvents() != before || e.gradientNotFinite()) {
 		s := e.scaler.s
 		e.scaler.skip()
-		e.rescaleResidues(s)
+		e.rescaleResidues(p, s)
 		return loss, stepSkipped
 	}
 	e.mover.move(p, rate, e.scaler.s)
@@ -193,7 +193,7 @@ func (e *engine[T]) step(batch []int32, rate float64) (loss float64, what fate) 
 	e.adoptResidues()
 	s := e.scaler.s
 	e.scaler.taken()
-	e.rescaleResidues(s)
+	e.rescaleResidues(p, s)
 	if e.masterNotFinite() {
 		return loss, masterNotFinite
 	}

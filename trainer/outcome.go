@@ -2,6 +2,7 @@ package trainer
 
 import (
 	"fmt"
+	"slices"
 
 	"ulpine/quant"
 )
@@ -72,13 +73,18 @@ func (n *Network) counters(arm *Arm, t tally) []PointCounts {
 	}
 	for i := range n.Layers {
 		for _, id := range n.PointsOf(i) {
-			if id.outer() || id == WeightGradientResidue && arm.Layers[i].WeightGradient.Residue == nil {
+			if id.outer() || id == WeightGradientResidue && !arm.keepsResidue(i) {
 				continue
 			}
 			out = append(out, PointCounts{i, n.Layers[i].Name, id.String(), t[i+1][id]})
 		}
 	}
 	return out
+}
+
+// keepsResidue reports whether a layer keeps residues in some stage.
+func (a *Arm) keepsResidue(layer int) bool {
+	return slices.ContainsFunc(a.arms(), func(a *Arm) bool { return a.Layers[layer].WeightGradient.Residue != nil })
 }
 
 // outer reports whether the point adds finished chunks and biases.

@@ -89,6 +89,16 @@ func TestParseErrorsNameLayerAndRemedy(t *testing.T) {
 		{[]int{1}, []string{"layernorm"}, []string{"would always give 0"}},
 		{signal, []string{"layernorm epsilon=0"}, []string{"epsilon is 0"}},
 		{signal, []string{"batchnorm momentum=2"}, []string{"momentum is 2"}},
+		{[]int{5}, []string{"attention"}, []string{"attention needs an input of channels x length", "1x5"}},
+		{signal, []string{"attention heads=3 width=8"}, []string{"heads=3 does not divide a width of 8", "use a divisor"}},
+		{signal, []string{"attention mask=casual"}, []string{`unknown mask "casual"; did you mean "causal"?`}},
+		{signal, []string{"attention width=99999999"}, []string{"at 10 positions are more than", "use strides or pools below"}},
+		{[]int{1, 100000}, []string{"attention"}, []string{"at 100000 positions are more than"}},
+		{image, []string{"recurrent units=3"}, []string{"recurrent needs an input of channels x length"}},
+		{signal, []string{"recurrent"}, []string{"units is missing", "recurrent units=16"}},
+		{signal, []string{"recurrent units=3 cell=lstm"}, []string{`unknown cell "lstm"`, "elman, gru"}},
+		{signal, []string{"recurrent units=3 output=first"}, []string{`unknown output "first"`, "last, all"}},
+		{signal, []string{"recurrent units=99999999"}, []string{"at 10 times are more than", "use fewer units"}},
 		{image, []string{"dense 99999999"}, []string{"weight of 99999999x784", "more than"}},
 	}
 	for _, c := range cases {

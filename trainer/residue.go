@@ -112,13 +112,13 @@ func (e *engine[T]) adoptResidues() {
 }
 
 // rescaleResidues follows the loss scale from old to where it is now.
-func (e *engine[T]) rescaleResidues(old float64) {
+func (e *engine[T]) rescaleResidues(p *pass, old float64) {
 	if e.scaler.s == old {
 		return
 	}
 	for _, q := range e.params {
 		if point := q.set.WeightGradient.Residue; point != nil && len(q.residue.data) > 0 {
-			scale(&e.pass, q, WeightGradientResidue, opResidueScale, q.residue.data, e.scaler.s/old, q.residue.data, point)
+			scale(p, q, WeightGradientResidue, opResidueScale, q.residue.data, e.scaler.s/old, q.residue.data, point)
 		}
 	}
 }

@@ -93,6 +93,9 @@ type run[T quant.Element] struct {
 	watch Watcher
 	out   Outcome
 
+	stages        []Stage // still to come
+	stepsPerEpoch int
+
 	order    []int32
 	total    int        // steps
 	high     int        // epochs running with a loss far above the first step's
@@ -104,6 +107,7 @@ func newRun[T quant.Element](e *engine[T], job *Job, parts parts, w Watcher) *ru
 	n := e.train.size()
 	total := stepCount(job.Training.Epochs, n, e.batch)
 	r := &run[T]{engine: e, job: job, parts: parts, watch: w, order: make([]int32, n), total: total}
+	r.stages, r.stepsPerEpoch = job.Arm.Stages, stepCount(1, n, e.batch)
 	r.out.Steps = make([]float64, 0, total)
 	for i := range r.answers {
 		r.answers[i] = newScores(parts.classes, parts.loss.regression())
@@ -144,6 +148,9 @@ func (r *run[T]) steps(ctx context.Context, epoch int) (float64, error) {
 	for done < len(r.order) {
 		if err := ctx.Err(); err != nil {
 			return 0, fmt.Errorf("stopped in step %d of %d: %w", len(r.out.Steps)+1, r.total, err)
+		}
+		if err := r.enter(len(r.out.Steps) + 1); err != nil {
+			return 0, err
 		}
 		batch := r.order[done:min(done+r.batch, len(r.order))]
 		rate := r.job.Training.LearningRate.at(epoch, len(r.out.Steps)+1, r.total)
@@ -195,7 +202,7 @@ func (r *run[T]) finish() Outcome {
 	if r.observer != nil {
 		r.out.Findings = r.observer.found
 	}
-	r.out.Counters = r.net.counters(r.arm, r.tally)
+	r.out.Counters = r.net.counters(&r.job.Arm, r.tally)
 	if last := len(r.out.Epochs) - 1; r.out.Diverged == "" && last >= 0 {
 		constant := r.parts.loss.constant(r.parts.train, r.parts.classes)
 		r.out.Stalled = r.out.Epochs[last].TrainLoss > float64(stallShare*constant)

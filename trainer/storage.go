@@ -28,6 +28,14 @@ func (n *Network) settings(arm *Arm) []setting {
 	return all
 }
 
+// allSettings are the settings of an arm and of its stages.
+func (n *Network) allSettings(arm *Arm) (all []setting) {
+	for _, a := range arm.arms() {
+		all = append(all, n.settings(a)...)
+	}
+	return all
+}
+
 // InsideSums reports whether the point rounds products or partial sums, and so
 // is no tensor's format.
 func (p PointID) InsideSums() bool {
@@ -123,7 +131,7 @@ func given(p *quant.Point) []*quant.Point {
 // float64. wide: some stored tensor has such a format, so parameters are recorded
 // in eight bytes. Neither changes a bit of any value.
 func (n *Network) containers(arm *Arm) (double, wide bool) {
-	for _, s := range n.settings(arm) {
+	for _, s := range n.allSettings(arm) {
 		if !quant.Fits32(s.point.Format) {
 			double = true
 			wide = wide || s.stored
@@ -132,8 +140,20 @@ func (n *Network) containers(arm *Arm) (double, wide bool) {
 	return double, wide
 }
 
-// checkArm finds points without a format, or that quant refuses.
+// checkArm checks an arm and its stages.
 func (n *Network) checkArm(arm *Arm, states int) error {
+	for i, a := range arm.arms() {
+		if err := n.checkArithmetic(a, states); err != nil && i > 0 {
+			return fmt.Errorf("stage %d: %w", i, err)
+		} else if err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+// checkArithmetic finds points without a format, or that quant refuses.
+func (n *Network) checkArithmetic(arm *Arm, states int) error {
 	if len(arm.Layers) != len(n.Layers) {
 		return fmt.Errorf("the arm sets %d layers, the network has %d", len(arm.Layers), len(n.Layers))
 	}

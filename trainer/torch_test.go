@@ -71,9 +71,9 @@ func torchReference(t *testing.T) []torchCase {
 
 // makeReference runs the script under the system's python3, or the first on the
 // path, whichever has torch; a script that fails for another reason is a fault.
-func makeReference(t *testing.T, path string) (err error) {
+func makeReference(t *testing.T, arguments ...string) (err error) {
 	for _, python := range []string{"/usr/bin/python3", "python3"} {
-		out, fault := exec.Command(python, "../.ci/torch/reference.py", path).CombinedOutput()
+		out, fault := exec.Command(python, append([]string{"../.ci/torch/reference.py"}, arguments...)...).CombinedOutput()
 		var exit *exec.ExitError
 		switch {
 		case fault == nil:

@@ -2,6 +2,7 @@
 """Reference values for package trainer, by Debian's python3-torch in FP64.
 
 Usage: reference.py FILE.json [SEED]
+       reference.py follow TRAINING.json LOSSES.json
 
 Builds small networks on random shapes from the texts that the trainer reads,
 computes outputs, loss and gradients of one batch, then takes three optimizer
@@ -252,7 +253,32 @@ def cases(r):
     return out
 
 
+def follow(path):
+    """FP64 losses of a training that the trainer describes: same start, data and batches."""
+    with open(path) as f:
+        case = json.load(f)
+    net = Net(case["input"], case["layers"], np.random.default_rng(0))
+    with torch.no_grad():
+        for p, values in zip(net.params, case["start"], strict=True):
+            p.copy_(torch.tensor(values).reshape(p.shape))
+    x = torch.tensor(case["x"]).reshape([-1] + case["input"])
+    labels = torch.tensor(case["labels"])
+    optimizer = torch.optim.SGD(net.params, case["rate"], case["momentum"])
+    losses = []
+    for batch in case["batches"]:
+        optimizer.zero_grad()
+        loss = F.cross_entropy(net(x[batch]).flatten(1), labels[batch])
+        loss.backward()
+        optimizer.step()
+        losses.append(loss.item())
+    return losses
+
+
 def main():
+    if len(sys.argv) > 3 and sys.argv[1] == "follow":
+        with open(sys.argv[3], "w") as f:
+            json.dump(follow(sys.argv[2]), f)
+        return
     seed = int(sys.argv[2]) if len(sys.argv) > 2 else 1
     rng = np.random.default_rng(seed)
     made = [run(c, rng) for c in cases(random.Random(seed))]

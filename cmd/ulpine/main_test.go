@@ -4,6 +4,7 @@ import (
 	"bytes"
 	"encoding/csv"
 	"encoding/json"
+	"fmt"
 	"os"
 	"path/filepath"
 	"regexp"
@@ -213,7 +214,55 @@ func TestBadInput(t *testing.T) {
 	}
 }
 
+// TestBadNetworksAndData: a layer without an output, settings for a layer that is not
+// there, a batch beyond the data, data that are no numbers or too large for the format
+// of their targets: one line each, with file and line or example, exit code 2.
+func TestBadNetworksAndData(t *testing.T) {
+	rows := func(value string) string {
+		text := "a,b,kind\n"
+		for i := range 40 {
+			text += fmt.Sprintf("%d,%d,%s\n", i, 40-i, []string{"x", "y"}[i%2])
+		}
+		return text + value + ",3,x\n"
+	}
+	table := strings.NewReplacer("data = \"pump-vibration\"\ntrain = 40\nvalidation = 0\ntest = 40\ndata_seed = 1", "data = \"csv\"\nfile = \"t.csv\"\nlabel = \"kind\"\ntest_every = 4",
+		`"conv1d out=2 width=9 stride=4", "relu", "dense 5"`, `"dense 2"`).Replace(tiny)
+	for name, c := range map[string]struct{ plan, csv, want string }{
+		"empty output":      {strings.Replace(tiny, "width=9", "width=200", 1), "", "plan.toml:10: network.layers[1]: layer 1 of 3, \"conv1d out=2 width=200 stride=4\" on an input of 1x128: output length (128 + 2*0 - 200)/4 + 1 is below 1"},
+		"empty pool":        {strings.Replace(tiny, `"relu"`, `"maxpool size=64"`, 1), "", "is below 1: the kernel's reach of 64 does not fit the padded input of 30"},
+		"no layer selected": {tiny + "[[arm.layer]]\nselect = \"attention\"\nstorage = \"bf16\"\n", "", "no layer is selected by \"attention\""},
+		"batch too large":   {strings.Replace(tiny, "batch = 16", "batch = 41", 1), "", "plan.toml:14: training.batch: a batch of 41 is larger than the 40 training examples; write at most 40"},
+		"batch beyond file": {strings.Replace(table, "batch = 16", "batch = 999", 1), rows("1"), "a batch of 999 is larger than the 31 training examples"},
+		"not a number":      {table, rows("NaN"), `"NaN"`},
+		"infinite":          {table, rows("1e400"), `"1e400"`},
+		"beyond binary32":   {table, rows("1e300"), "feature \"a\": values are too large to standardise; use smaller units"},
+	} {
+		t.Run(name, func(t *testing.T) {
+			inFolder(t, map[string]string{"plan.toml": c.plan, "t.csv": c.csv})
+			out, errs, code := ulpine(t, "run", "plan.toml", "--no-report", "--quiet")
+			if code != exitBadInput || !strings.Contains(errs, c.want) || out != "" {
+				t.Errorf("exit code %d, want %q, got %q", code, c.want, errs)
+			}
+			if lines := strings.Count(errs, "\n"); lines != 1 || strings.Contains(errs, "goroutine") {
+				t.Errorf("%d lines of error:\n%s", lines, errs)
+			}
+		})
+	}
+}
+
+// TestExplodingBaseline: data as they are, a learning rate that blows up in FP32: the
+// plan is at fault, and is told so in one line.
+func TestExplodingBaseline(t *testing.T) {
+	inFolder(t, map[string]string{"plan.toml": strings.Replace(tiny, "learning_rate = 0.02", "learning_rate = 1e30", 1)})
+	_, errs, code := ulpine(t, "run", "plan.toml", "--no-report", "--quiet")
+	if code == 0 || !strings.Contains(errs, "baseline") || !strings.Contains(errs, "diverged") || strings.Contains(errs, "goroutine") {
+		t.Errorf("exit code %d: %s", code, errs)
+	}
+}
+
 func TestResolve(t *testing.T) {
+	inFolder(t, map[string]string{"warm.toml": strings.Replace(tiny, "learning_rate = 0.02", "learning_rate = { start = 0.02, warm_up = 5 }", 1)})
+	must(t, "resolve", "warm.toml") // steps are timed without the schedule
 	inFolder(t, map[string]string{"tiny.toml": tiny})
 	for _, want := range []string{"9 runs", "multiply-adds", "forward.sum", "bfloat16"} {
 		if out := must(t, "resolve", "tiny.toml"); !strings.Contains(out, want) {

@@ -61,11 +61,13 @@ func measureRate(ctx context.Context, p *plan.Plan) (float64, error) {
 		i := k * len(p.Arms) / arms
 		t := p.Arms[i].Training
 		t.Epochs = 1
+		t.LearningRate = trainer.Schedule{Start: t.LearningRate.Start} // a schedule may need more steps
 		n := batches * t.Batch
 		job := trainer.Job{
 			Network: p.Network, Arm: p.Arms[i].Arithmetic, Training: t, Seed: 1,
 			Train: inventedSet(p.Network, n, t.Regression()),
 		}
+		job.Arm.Stages = nil // a few steps of the first one tell
 		began := time.Now()
 		if _, err := trainer.Run(ctx, job, nil); err != nil {
 			return 0, err

@@ -62,7 +62,8 @@ func (r *armReader) readArm(n *node, base *assignment, scale trainer.LossScale, 
 	if at := n.table["loss_scale"]; at != nil {
 		scale = r.readLossScale(at)
 	}
-	return r.finish(arm, &own, scale)
+	stages := r.readStages(n, &arm, &own, scale)
+	return r.finish(arm, &own, scale, stages...)
 }
 
 // armName reads the name of an arm, which must differ from all others as a slug.
@@ -134,12 +135,12 @@ func (r *reader) checkBatch(n *node, t *trainer.Training, examples int) {
 	}
 }
 
-// finish resolves an arm whose settings are read.
-func (r *armReader) finish(arm Arm, a *assignment, scale trainer.LossScale) Arm {
+// finish resolves an arm whose settings and stages are read.
+func (r *armReader) finish(arm Arm, a *assignment, scale trainer.LossScale, stages ...trainer.Stage) Arm {
 	states, _ := arm.Training.Optimizer.States()
 	r.checkStates(a, states)
 	arm.Arithmetic = a.arm(r.network, states)
-	arm.Arithmetic.LossScale = scale
+	arm.Arithmetic.LossScale, arm.Arithmetic.Stages = scale, stages
 	arm.LossScale = describeLossScale(scale)
 	arm.Settings = settings(r.network, &arm.Arithmetic)
 	arm.Summary = summary(a, &arm)
@@ -176,8 +177,14 @@ func summary(a *assignment, arm *Arm) string {
 	for _, o := range arm.Overrides {
 		parts = append(parts, "its own "+o)
 	}
-	return strings.Join(parts, ", ")
+	for _, s := range arm.Stages {
+		parts = append(parts, "from "+s.Start+": "+s.Summary)
+	}
+	return joined(parts)
 }
+
+// joined lists settings.
+func joined(parts []string) string { return strings.Join(parts, ", ") }
 
 // settings lists the rounding points an arm computes with, input and loss as
 // layer -1, in the order of computation within each layer.

@@ -192,7 +192,7 @@ func targets() map[string]target {
 }
 
 // armKeys are the keys of an arm that set no point.
-var armKeys = []string{"name", "layer", "loss_scale", "training", "learning_rate"}
+var armKeys = []string{"name", "layer", "loss_scale", "training", "learning_rate", "stage"}
 
 // readSettings applies the settings in the table n to the layers that s selects.
 // also lists the other keys that n may have.

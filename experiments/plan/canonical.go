@@ -18,16 +18,27 @@ const canonicalForm = "form 1"
 func (a *Arm) canonical(network *trainer.Network) string {
 	var b strings.Builder
 	fmt.Fprintln(&b, "arm", canonicalForm)
-	fmt.Fprintln(&b, "input:", a.Arithmetic.Input)
-	fmt.Fprintln(&b, "loss.gradient:", a.Arithmetic.LossGradient)
-	for i := range network.Layers {
-		for _, id := range network.PointsOf(i) {
-			canonicalPoint(&b, i, id, &a.Arithmetic.Layers[i])
-		}
-	}
+	canonicalArithmetic(&b, network, &a.Arithmetic)
 	fmt.Fprintln(&b, "loss scale:", a.LossScale)
 	fmt.Fprintln(&b, "training:", describeTraining(a.Training))
+	for i := range a.Arithmetic.Stages {
+		s := &a.Arithmetic.Stages[i]
+		fmt.Fprintf(&b, "stage from %s\n", startText(s))
+		canonicalArithmetic(&b, network, &s.Arm)
+		fmt.Fprintln(&b, "loss scale:", describeLossScale(s.Arm.LossScale))
+	}
 	return b.String()
+}
+
+// canonicalArithmetic writes what holds at every point.
+func canonicalArithmetic(b *strings.Builder, network *trainer.Network, arm *trainer.Arm) {
+	fmt.Fprintln(b, "input:", arm.Input)
+	fmt.Fprintln(b, "loss.gradient:", arm.LossGradient)
+	for i := range network.Layers {
+		for _, id := range network.PointsOf(i) {
+			canonicalPoint(b, i, id, &arm.Layers[i])
+		}
+	}
 }
 
 // canonicalPoint writes what a layer holds at one point.

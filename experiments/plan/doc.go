@@ -33,6 +33,8 @@
 //	                    plan's own optimizer, learning_rate, batch, epochs;
 //	                    learning_rate is short for training.learning_rate
 //	[[arm.layer]]       select, settings: what differs in some layers; [[baseline.layer]]
+//	[[arm.stage]]       from_epoch or from_step, settings, loss_scale, layer tables: what
+//	                    the arm changes to from then on
 //	[[grid]]            title, name, axis, contrast, and all that an arm may have:
 //	                    arms that differ along axes
 //	[controls]          fp64, pairwise: the baseline again in binary64 and with pairwise
@@ -79,6 +81,14 @@
 // of equal pairs the first, loss scales varying fastest. A run that diverges counts as
 // worse than any that does not, so the fewest diverged runs come first. The test data
 // is not looked at. A pretraining is not tuned, controls train as the baseline does.
+//
+// # Metrics
+//
+// Accuracy, loss and, in a regression, RMSE, of test, validation or training data; of
+// test and validation data also the recall of one class, named by class, and the
+// missed-fault rate: the share of faults, all classes but the first, that raise no alarm
+// where at most false_alarm_rate of the examples of the first class, the sound state,
+// raise one. The threshold is that of the set which is scored, at each evaluation.
 //
 // # Settings
 //
@@ -143,6 +153,14 @@
 //
 // A selector that selects nothing is an error, and so is a point's own key where
 // no selected layer computes with that point; shorthands set what there is.
+//
+// # Stages
+//
+// An [[arm.stage]] (in a grid: [[grid.stage]]) changes settings in the middle of a
+// training, from an epoch (the first is 1) or a step on: train low, finish high. It
+// starts from what held before it and beats all of that, however specific; what it
+// does not set stays as it was. Stages stand in the order of their starts. What
+// happens to stored tensors at a start is package trainer's Stage.
 //
 // # Grids
 //

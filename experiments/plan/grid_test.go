@@ -157,7 +157,7 @@ func TestGridErrors(t *testing.T) {
 		{[]string{`name = "a {s}"`, `axis.s = ["E4M4", "e4m4"]`, `storage = "{s}"`}, 1, `grid[1].name: the name "a e4m4" and "a E4M4" in plan.toml line 26 are both "a-e4m4" as names of runs (in the grid's arm "a e4m4"); `},
 		{[]string{`name = "a {s}"`, `axis.s = ["bf16", "fp61", "fp23"]`, `storage = "{s}"`}, 3, `grid[1].storage: unknown format "fp61" (in the grid's arm "a fp61"); did you mean "fp16"?`},
 		{[]string{`name = "a {r}"`, `axis.r = ["stochastic", "up"]`, `storage = { format = "bf16", rounding = "{r}", random_bits = 3 }`}, 3, `grid[1].storage.random_bits: random_bits without stochastic rounding (in the grid's arm "a up"); `},
-		{[]string{`name = "a {s}"`, `axis.s = ["bf16"]`, `strage = "{s}"`}, 3, `grid[1].strage: unknown key (in the grid's arm "a bf16"); did you mean "storage"?`},
+		{[]string{`name = "a {s}"`, `axis.s = ["bf16"]`, `storge = "{s}"`}, 3, `grid[1].storge: unknown key (in the grid's arm "a bf16"); did you mean "storage"?`},
 		{[]string{`name = "a {p}"`, `axis.p = ["update.step", "update.state"]`, `"{p}" = "bf16"`, `update.step = "fp16"`}, 4, `grid[1].update.step: sets step, which line 28 sets too; keep one of them`},
 		{[]string{`name = "{a} {b}"`, `axis.a = { from = 1, to = 100 }`, `axis.b = { from = 1, to = 100 }`, `storage = "E{a}M{b}"`}, 0, "grid[1]: with this grid of 100 x 100 arms the plan has more than 1000 arms; shorten the axes or make several plans of it"},
 		{[]string{`name = "a {s}"`, `axis.s = ["bf16"]`, `storage = "{s}"`, `contrast = { axis = "t", against = "bf16" }`}, 4, `grid[1].contrast.axis: unknown word "t"; did you mean "s"?`},

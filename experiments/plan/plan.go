@@ -88,6 +88,7 @@ type Arm struct {
 	Grid       string           // title of the grid it comes from; empty: spelt out
 	Axes       []Coordinate     // its place there
 	Settings   []Setting        // one row a rounding point of each layer
+	Stages     []Stage          // what they change to on the way
 	Summary    string           // the settings in one line, as the plan spells them
 	LossScale  string           // in words
 	// Canonical is the resolved arm without its name: equal texts mean equal

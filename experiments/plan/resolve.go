@@ -190,12 +190,20 @@ func duration(seconds float64) string {
 func writeArm(b *strings.Builder, p *Plan, a *Arm, what string, full bool) {
 	fmt.Fprintf(b, "\n%s %q, runs %s/...: %s\n", what, a.Name, a.Slug, a.Summary)
 	w := table(b)
-	if full {
-		writePoints(w, a)
-	} else {
-		writeGroups(w, p, a)
+	say := func(a *Arm) {
+		if full {
+			writePoints(w, a)
+		} else {
+			writeGroups(w, p, a)
+		}
 	}
+	say(a)
 	fmt.Fprintf(w, "  loss scale\t%s\n", a.LossScale)
+	for i := range a.Stages {
+		fmt.Fprintf(w, "  from %s\t%s\n", a.Stages[i].Start, a.Stages[i].Summary)
+		say(a.atStage(i))
+		fmt.Fprintf(w, "  loss scale\t%s\n", a.Stages[i].LossScale)
+	}
 	if trainer.Describe(p.Network, &a.Arithmetic, a.Training, p.Task.sizes()).Double {
 		fmt.Fprintf(w, "  memory\ttensors of eight bytes an element: not every value fits binary32\n")
 	}

@@ -3,6 +3,7 @@ package plan
 import (
 	"fmt"
 	"math"
+	"slices"
 
 	"ulpine/quant"
 	"ulpine/trainer"
@@ -38,6 +39,13 @@ func (p *Plan) sameArithmetic(a *Arm, as *assignment) bool {
 // warnArm lists the doubts about one arm.
 func (p *Plan) warnArm(a *Arm) []string {
 	w := warnScale(a.Arithmetic.LossScale)
+	for i := range a.Arithmetic.Stages {
+		for _, text := range warnScale(a.Arithmetic.Stages[i].Arm.LossScale) {
+			if !slices.Contains(w, text) {
+				w = append(w, text)
+			}
+		}
+	}
 	w = append(w, p.warnOrders(a)...)
 	for _, o := range a.Overrides {
 		if o == "learning rate" && !p.sameArithmetic(a, p.Baseline().assignment) {

@@ -110,7 +110,19 @@
 // In simulations of eight looks at 5 to 40 pairs, all looks together falsely said
 // "within" in 2.5 % of plans with normal differences, 2.3 % with Laplace's law and
 // 2.1 % with t of 3 degrees of freedom, where eight single looks at 2.5 % would
-// have in 8 to 9 %.
+// have in 8 to 9 %. Whole plans of three arms on the margin with looks at 4, 8 and 12
+// pairs err in 3.1 % of 1,000 plans (normal; four standard errors are 2.0 points) and
+// in 1.2 % (t of 3 degrees), where single looks at single arms would have in 11 to
+// 16 %; TestProcedureWithLooks holds plans with two looks to that.
+//
+// # Tuning
+//
+// Choosing learning rates on replicates of their own does not inflate the claim: what
+// was chosen is fixed before the reported replicates are run, and their differences
+// are of exactly that. In simulations of an arm with twelve equally good pairs of
+// values on the margin, "within" was false in 2.3 % of 600 plans on fresh replicates,
+// and would have been in 8.0 % on those that had chosen
+// (TestTuningDoesNotInflate in package experiments).
 //
 // # Undecided
 //

@@ -81,8 +81,11 @@ func (s shares) overLooks(c *results.Comparison) (p, worse float64) {
 	return s.least(l, ps), s.least(l, worses)
 }
 
-// least is the smallest alpha, to a part in 10^3, at which some look rejects; 1
-// if none does at one half.
+// unlikely is beyond what any plan asks for: p-values above it need no digits.
+const unlikely = 0.3
+
+// least is the smallest alpha, to a part in 10^3 (in 20 above unlikely), at which some
+// look rejects; 1 if none does at one half.
 func (s shares) least(l Looks, ps []float64) float64 {
 	rejects := func(alpha float64) bool {
 		levels := s.levels(l, alpha)
@@ -97,7 +100,7 @@ func (s shares) least(l Looks, ps []float64) float64 {
 	if !rejects(math.Exp(high)) {
 		return 1
 	}
-	for high-low > 1e-3 {
+	for high-low > 1e-3 && (high-low > 0.05 || low < math.Log(unlikely)) {
 		if middle := (low + high) / 2; rejects(math.Exp(middle)) {
 			high = middle
 		} else {

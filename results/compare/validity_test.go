@@ -218,3 +218,65 @@ func TestProcedure(t *testing.T) {
 		t.Errorf("a false \"within\" in %.4f of tables, at most %.4f may be", got, limit)
 	}
 }
+
+// TestProcedureWithLooks simulates whole plans with looks: three arms on the margin
+// and one that has the baseline's own runs, judged as a family after 4 and
+// 8 pairs, the plan stopping as a runner would. A false "within" of any arm at any look
+// is seen in at most 2.5 % of plans, and the twin is within at the first look.
+func TestProcedureWithLooks(t *testing.T) {
+	const margin = 0.01
+	l := Looks{UpTo: 8, Every: 4}
+	spending := shares{} // computed once for all plans
+	plans := 2 * samples(t, true)
+	for _, law := range []law{laws[0], laws[2]} {
+		rng := rand.New(rand.NewPCG(validitySeed, 4))
+		hits, naives := 0, 0
+		for range plans {
+			arms := make([][]float64, 4)
+			for i := range arms {
+				arms[i] = make([]float64, l.UpTo)
+				for j := range arms[i] {
+					if i > 0 {
+						arms[i][j] = 0.005*law.draw(rng) - margin
+					}
+				}
+			}
+			hit, naive := false, false
+			for _, n := range l.At() {
+				family := make([]results.Comparison, len(arms))
+				for i := range arms {
+					family[i] = looked(arms[i][:n], margin, l)
+					family[i].Same = i == 0
+				}
+				decided := judge(family, spending)
+				if decided[0].Verdict.Kind != results.Within {
+					t.Fatalf("the twin after %d pairs: %+v", n, decided[0])
+				}
+				for i := range decided[1:] {
+					hit = hit || decided[i+1].Verdict.Kind == results.Within
+					naive = naive || family[i+1].P < 0.025
+				}
+				if Settled(decided) {
+					break
+				}
+			}
+			hits, naives = hits+count(hit), naives+count(naive)
+		}
+		got, limit := float64(hits)/float64(plans), 0.025+slack(0.025, plans)
+		t.Logf("%s: a false \"within\" in %.4f of %d plans; %.4f if every arm and look stood alone", law.name, got, plans, float64(naives)/float64(plans))
+		if got > limit || naives < 3*hits {
+			t.Errorf("%s: a false \"within\" in %.4f of plans, at most %.4f may be; %d without correction", law.name, got, limit, naives)
+		}
+	}
+}
+
+// looked is a comparison of these differences without the intervals beside the t
+// interval, which decide nothing and take long.
+func looked(xs []float64, margin float64, l Looks) results.Comparison {
+	c := results.Comparison{
+		Arm: "a", Against: "baseline", Metric: accuracy.Name, Margin: margin, Confidence: 0.95,
+		Differences: xs, N: len(xs), Planned: l.UpTo, LookEvery: l.Every, Mean: mean(xs), SD: deviation(xs),
+	}
+	c.P, c.PWorse = pValues(c.Mean, c.SD, c.N, margin)
+	return c
+}

@@ -11,7 +11,7 @@ import (
 // returns them anew, with Holm-adjusted p-values, verdicts and further warnings;
 // the argument is left as it is.
 func Decide(family []results.Comparison) []results.Comparison {
-	decided := judge(family)
+	decided := judge(family, shares{})
 	for i := range decided {
 		switch c := &decided[i]; c.Verdict.Kind {
 		case results.Undecided:
@@ -24,12 +24,12 @@ func Decide(family []results.Comparison) []results.Comparison {
 	return decided
 }
 
-// judge is Decide without what is said about the undecided.
-func judge(family []results.Comparison) []results.Comparison {
+// judge is Decide without what is said about the undecided; spending keeps levels of
+// looks.
+func judge(family []results.Comparison, spending shares) []results.Comparison {
 	decided := slices.Clone(family)
 	p := make([]float64, len(family))
 	worse := make([]float64, len(family))
-	spending := shares{}
 	for i, c := range family {
 		if sound(&c) {
 			p[i], worse[i] = spending.overLooks(&c)

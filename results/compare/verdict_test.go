@@ -276,7 +276,7 @@ func TestFalseWithin(t *testing.T) {
 			c.Mean, c.SD = mean(xs), deviation(xs)
 			c.P, c.PWorse = pValues(c.Mean, c.SD, n, margin)
 		}
-		return judge(family)
+		return judge(family, shares{})
 	}
 	share := func(at float64, kind results.VerdictKind, trials int) float64 {
 		hits := 0

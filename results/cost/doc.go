@@ -28,6 +28,9 @@
 //	loss             reads B m activations of the last layer (forward) and writes
 //	                 as many gradients (input gradient)
 //
+// An arm that changes its arithmetic on the way is billed by Mean: a step's figures are
+// means over its steps, by the number of steps that each stage takes.
+//
 // Layers are not fused: each reads what the one below wrote. A layer that only
 // changes the shape moves nothing. Values are packed without gaps: nine bits
 // take nine bits. A stored tensor moves in the format it is stored in; a product
