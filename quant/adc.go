@@ -34,7 +34,7 @@ func NewADC(bits int, from, to float64) (ADC, error) {
 	case bits < 1 || bits > maxADC:
 		return ADC{}, fmt.Errorf("quant: %s: %d bits: a converter has 1 to %d", name, bits, maxADC)
 	case !(hi-lo > 0) || hi-lo > math.MaxFloat32:
-		return ADC{}, fmt.Errorf("quant: %s: from must be below to, both finite in binary32", name)
+		return ADC{}, fmt.Errorf("quant: %s: from is not below to, or one is not finite in binary32; write the lower end first", name)
 	}
 	width, codes := hi-lo, 1<<bits
 	values := make([]float64, codes)

@@ -27,7 +27,7 @@ func TestADC(t *testing.T) {
 		t.Errorf("infinity becomes %v, %v", got, event)
 	}
 	for word, part := range map[string]string{
-		"ADC12": "from is missing", "ADC0(from=0,to=1)": "1 to 16", "ADC17(from=0,to=1)": "1 to 16", "ADC4(from=1,to=1)": "below",
+		"ADC12": "from is missing", "ADC0(from=0,to=1)": "1 to 16", "ADC17(from=0,to=1)": "1 to 16", "ADC4(from=1,to=1)": "not below",
 		"ADC4(from=0,to=1,by=2)": "from and to", "ADC4(from=0,to=x)": "not a number", "ADC16(from=1e9,to=1000001000)": "too narrow",
 	} {
 		if _, err := ParseFormat(word); err == nil || !strings.Contains(err.Error(), part) {
