@@ -9,10 +9,12 @@ import (
 	"unicode/utf8"
 )
 
-// CSV reads tables of numbers with a label column: text by RFC 4180, plain or
-// gzip, an example a row. Spaces around fields are dropped. Every column but the
-// label's and the ignored ones is a feature, in the order of the file; the shape
-// of an example is [features].
+// CSV reads tables of numbers with a label column, or in a regression with columns of
+// targets: text by RFC 4180, plain or gzip, an example a row. Spaces around fields are
+// dropped. Every column but the label's, the targets' and the ignored ones is a
+// feature, in the order of the file; the shape of an example is [features]. Outputs are
+// the targets in the order given. Several files with the same columns are read as one,
+// row after row.
 //
 // The test set is a file of its own, or every k-th row (k, 2k, ... of the rows of
 // data, counted from 1); the rest is training data and is split further by the
@@ -20,16 +22,20 @@ import (
 // numbers where all labels of File are whole numbers, else by their bytes. A label
 // of another file that is none of them is an error.
 type CSV struct {
-	File           string // path
+	File           string // path, or
+	Files          []string
 	TestFile       string // path; "": TestEvery, or no test set
 	ValidationFile string // path; "": taken from File
 
 	Label       string // name of the label column, or
-	LabelColumn int    // its number from 1; exactly one of the two
-	NoHeader    bool   // the first line holds data, not names
-	Ignore      []string
-	ClassNames  []string // in order; nil: sorted
-	Delimiter   string   // one character; "": comma
+	LabelColumn int    // its number from 1; exactly one of the two, or
+	Targets     []string
+	// TargetColumns are numbers from 1, where the files have no names.
+	TargetColumns []int
+	NoHeader      bool // the first line holds data, not names
+	Ignore        []string
+	ClassNames    []string // in order; nil: sorted
+	Delimiter     string   // one character; "": comma
 
 	Train           int // first n of what the other sets leave; 0: all
 	Validation      int // last n of the training rows; else first n of those taken; 0: all of them
@@ -46,11 +52,16 @@ type CSV struct {
 
 func newCSV(r *reader) Source {
 	s := &CSV{
-		File:           r.path("file", true),
+		File: r.path("file", false), Files: r.paths("files"),
 		TestFile:       r.path("test_file", false),
 		ValidationFile: r.path("validation_file", false),
 	}
-	s.Label, s.LabelColumn = readLabel(r)
+	s.Targets, s.TargetColumns = r.columns("targets")
+	if _, regression := r.options.Values["targets"]; !regression {
+		s.Label, s.LabelColumn = readLabel(r)
+	} else if _, both := r.value("label"); both {
+		r.fail("label", "there are targets too", "keep label for classes, or targets for a regression")
+	}
 	s.NoHeader = !r.flag("header", true)
 	s.Ignore = r.words("ignore")
 	s.ClassNames = r.words("classes")
@@ -95,12 +106,20 @@ func (s *CSV) check() error {
 	fault := func(key, reason, remedy string) error { return &OptionError{key, reason, remedy} }
 	delimiter, size := utf8.DecodeRuneInString(s.delimiter())
 	switch {
-	case s.File == "":
+	case s.File == "" && len(s.Files) == 0:
 		return fault("file", "is missing", "write file = \"path of a file\"")
+	case s.File != "" && len(s.Files) > 0:
+		return fault("files", "there is a file too", "keep one of the two")
+	case s.regression():
+		if err := s.checkTargets(); err != nil {
+			return err
+		}
 	case (s.Label == "") == (s.LabelColumn == 0) || s.LabelColumn < 0:
 		return fault("label", "must be one name or one number from 1", "write label = \"name of the label column\", or its number")
 	case s.NoHeader && s.Label != "":
 		return fault("label", fmt.Sprintf("%q names a column, but the file has no names", s.Label), "give the column's number from 1, or header = true")
+	}
+	switch {
 	case s.NoHeader && len(s.Ignore) > 0:
 		return fault("ignore", "it names columns, but the file has no names", "leave it out, or write header = true")
 	case s.Label != "" && slices.Contains(s.Ignore, s.Label):
@@ -118,6 +137,43 @@ func (s *CSV) check() error {
 		return err
 	}
 	return s.split().check()
+}
+
+// regression reports whether there are targets in place of labels.
+func (s *CSV) regression() bool { return len(s.Targets)+len(s.TargetColumns) > 0 }
+
+// checkTargets finds what does not go with the targets of a regression.
+func (s *CSV) checkTargets() error {
+	fault := func(key, reason, remedy string) error { return &OptionError{key, reason, remedy} }
+	switch n := len(s.Targets) + len(s.TargetColumns); {
+	case s.Label != "" || s.LabelColumn != 0:
+		return fault("label", "there are targets too", "keep label for classes, or targets for a regression")
+	case s.ClassNames != nil:
+		return fault("classes", "a regression has none", "leave it out")
+	case n > maxClasses:
+		return fault("targets", fmt.Sprintf("%d targets are given", n), fmt.Sprintf("give 1 to %d", maxClasses))
+	case twice(s.Targets) != "":
+		return fault("targets", fmt.Sprintf("%q is given twice", twice(s.Targets)), "keep one")
+	case s.NoHeader && len(s.Targets) > 0:
+		return fault("targets", fmt.Sprintf("%q names a column, but the file has no names", s.Targets[0]), "give the columns' numbers from 1, or header = true")
+	}
+	for _, name := range s.Targets {
+		if slices.Contains(s.Ignore, name) {
+			return fault("ignore", fmt.Sprintf("%q is a target", name), "take it out")
+		}
+	}
+	return nil
+}
+
+// picks are the targets as the reader of files wants them.
+func (s *CSV) picks() (all []csvPick) {
+	for _, name := range s.Targets {
+		all = append(all, csvPick{name: name})
+	}
+	for _, n := range s.TargetColumns {
+		all = append(all, csvPick{number: n})
+	}
+	return all
 }
 
 // checkSplits finds two ways to make one set, or none.
@@ -156,8 +212,12 @@ func (s *CSV) Canonical() string {
 	if s.Label == "" {
 		label = strconv.Itoa(s.LabelColumn)
 	}
-	return fmt.Sprintf("csv label=%s header=%t ignore=%q classes=%q delimiter=%q train=%d validation=%d validation_every=%d validation_file=%t test=%d test_every=%d test_file=%t scale=%s",
-		label, !s.NoHeader, s.Ignore, s.ClassNames, s.delimiter(), s.Train, s.Validation, s.ValidationEvery, s.ValidationFile != "", s.Test, s.TestEvery, s.TestFile != "", s.scale())
+	targets := ""
+	if s.regression() {
+		targets = fmt.Sprintf(" targets=%v", s.picks())
+	}
+	return fmt.Sprintf("csv label=%s header=%t ignore=%q classes=%q delimiter=%q train=%d validation=%d validation_every=%d validation_file=%t test=%d test_every=%d test_file=%t scale=%s%s",
+		label, !s.NoHeader, s.Ignore, s.ClassNames, s.delimiter(), s.Train, s.Validation, s.ValidationEvery, s.ValidationFile != "", s.Test, s.TestEvery, s.TestFile != "", s.scale(), targets)
 }
 
 // Facts implements Source. It reads the files.
@@ -186,6 +246,11 @@ func (s *CSV) load() (*Data, error) {
 		return nil, err
 	}
 	e := &examples{shape: []int{len(p.main.columns)}, classNames: p.classes}
+	outputs := fmt.Sprintf("%d classes", len(p.classes))
+	if s.regression() {
+		e.targetNames = p.main.targetNames()
+		outputs = fmt.Sprintf("targets %s", shown(e.targetNames))
+	}
 	if !s.NoHeader {
 		for _, c := range p.main.columns {
 			e.featureNames = append(e.featureNames, c.name)
@@ -200,11 +265,14 @@ func (s *CSV) load() (*Data, error) {
 	if e.test, err = p.testTable.pick(p.test, p.classes); err != nil {
 		return nil, err
 	}
-	description := fmt.Sprintf("CSV file %s: %d training, %d validation, %d test rows of %d features, %d classes",
-		filepath.Base(s.File), len(p.train), len(p.validation), len(p.test), len(p.main.columns), len(p.classes))
+	description := fmt.Sprintf("CSV file %s: %d training, %d validation, %d test rows of %d features, %s",
+		filepath.Base(p.main.file), len(p.train), len(p.validation), len(p.test), len(p.main.columns), outputs)
+	if more := len(p.main.further); more > 0 {
+		description = fmt.Sprintf("CSV file %s and %d more%s", filepath.Base(p.main.file), more, strings.TrimPrefix(description, "CSV file "+filepath.Base(p.main.file)))
+	}
 	d, err := e.finish(s.scale(), description, true)
 	if err == nil && p.main.suspect {
-		d.Warnings = append(d.Warnings, "the first line of "+filepath.Base(s.File)+" was taken for names but holds numbers only; write header = false if it is data")
+		d.Warnings = append(d.Warnings, "the first line of "+filepath.Base(p.main.file)+" was taken for names but holds numbers only; write header = false if it is data")
 	}
 	return d, err
 }
@@ -219,10 +287,10 @@ type csvParts struct {
 // parts reads the files and deals their rows out.
 func (s *CSV) parts() (p *csvParts, err error) {
 	p = &csvParts{}
-	if p.main, err = s.read("file", s.File); err != nil {
+	if p.main, err = s.readAll(); err != nil {
 		return nil, err
 	}
-	p.train = counting(len(p.main.labels))
+	p.train = counting(p.main.rows())
 	p.testTable, p.validationTable = p.main, p.main
 	if s.TestEvery > 0 {
 		p.train, p.test = everyNth(p.train, s.TestEvery)
@@ -252,6 +320,26 @@ func (s *CSV) parts() (p *csvParts, err error) {
 	return p, err
 }
 
+// readAll reads File, or Files as one table.
+func (s *CSV) readAll() (*csvTable, error) {
+	if len(s.Files) == 0 {
+		return s.read("file", s.File)
+	}
+	var all *csvTable
+	for _, path := range s.Files {
+		t, err := s.read("files", path)
+		if err != nil {
+			return nil, err
+		}
+		if all == nil {
+			all = t
+		} else if err := all.join(t); err != nil {
+			return nil, err
+		}
+	}
+	return all, nil
+}
+
 func (s *CSV) read(key, path string) (*csvTable, error) {
 	in, err := openInput(key, path)
 	if err != nil {
@@ -259,7 +347,7 @@ func (s *CSV) read(key, path string) (*csvTable, error) {
 	}
 	defer in.close()
 	delimiter, _ := utf8.DecodeRuneInString(s.delimiter())
-	return readCSV(in, csvLayout{delimiter, !s.NoHeader, s.Label, s.LabelColumn, s.Ignore})
+	return readCSV(in, csvLayout{delimiter, !s.NoHeader, s.Label, s.LabelColumn, s.Ignore, s.picks()})
 }
 
 // second reads a further file and holds its columns to those of the first.
@@ -268,29 +356,21 @@ func (s *CSV) second(key, path string, main *csvTable) (*csvTable, []int, error)
 	if err != nil {
 		return nil, nil, err
 	}
-	fault := func(reason string) error {
-		return &FileError{File: path, Line: 1, Offset: -1, Reason: reason, Remedy: "give files with the same columns in the same order"}
+	if err := main.sameColumns(t); err != nil {
+		return nil, nil, err
 	}
-	if len(t.columns) != len(main.columns) {
-		return nil, nil, fault(fmt.Sprintf("%d features, but %s has %d", len(t.columns), main.file, len(main.columns)))
-	}
-	for i, c := range t.columns {
-		if c.name != main.columns[i].name {
-			return nil, nil, fault(fmt.Sprintf("feature %d is called %q, in %s %q", i+1, c.name, main.file, main.columns[i].name))
-		}
-	}
-	return t, counting(len(t.labels)), nil
+	return t, counting(t.rows()), nil
 }
 
 // classes are those given, or the sorted labels of all rows of File: they do not
 // change with the sizes of the sets.
 func (s *CSV) classes(main *csvTable) ([]string, error) {
-	if s.ClassNames != nil {
+	if s.ClassNames != nil || s.regression() {
 		return s.ClassNames, nil
 	}
 	names := slices.Clone(main.distinct)
 	if len(names) < 2 {
-		return nil, &FileError{File: s.File, Offset: -1, Reason: fmt.Sprintf("all rows have the label %q", names[0]), Remedy: "give data with two classes or more"}
+		return nil, &FileError{File: main.file, Offset: -1, Reason: fmt.Sprintf("all rows have the label %q", names[0]), Remedy: "give data with two classes or more"}
 	}
 	sortLabels(names)
 	return names, nil
@@ -318,8 +398,29 @@ func sortLabels(names []string) {
 	})
 }
 
+// targetNames are the names of the targets, or their numbers.
+func (t *csvTable) targetNames() (names []string) {
+	for _, c := range t.targets {
+		name := c.name
+		if name == "" {
+			name = fmt.Sprintf("column %d", c.field+1)
+		}
+		names = append(names, name)
+	}
+	return names
+}
+
 // pick copies the given rows.
 func (t *csvTable) pick(rows []int, classes []string) (s rawSet, err error) {
+	s.at = slice(gather(t.values, rows, len(t.columns)))
+	s.where = func(i int) string {
+		file, line := t.place(rows[i])
+		return fmt.Sprintf("%s, line %d", file, line)
+	}
+	if len(t.targets) > 0 {
+		s.targets = gather(t.truths, rows, len(t.targets))
+		return s, nil
+	}
 	number := make([]int32, len(t.distinct)) // of each distinct label
 	for i, label := range t.distinct {
 		number[i] = int32(slices.Index(classes, label))
@@ -328,11 +429,10 @@ func (t *csvTable) pick(rows []int, classes []string) (s rawSet, err error) {
 	for i, row := range rows {
 		label := t.labels[row]
 		if s.labels[i] = number[label]; s.labels[i] < 0 {
-			return s, &FileError{File: t.file, Line: t.lines[row], Offset: -1, Reason: fmt.Sprintf("the label %q is none of the classes %s", t.distinct[label], shown(classes)), Remedy: "correct the label, or list all classes under classes"}
+			file, line := t.place(row)
+			return s, &FileError{File: file, Line: line, Offset: -1, Reason: fmt.Sprintf("the label %q is none of the classes %s", t.distinct[label], shown(classes)), Remedy: "correct the label, or list all classes under classes"}
 		}
 	}
-	s.at = slice(gather(t.values, rows, len(t.columns)))
-	s.where = func(i int) string { return fmt.Sprintf("%s, line %d", t.file, t.lines[rows[i]]) }
 	return s, nil
 }
 

@@ -416,6 +416,9 @@ func TestCanonical(t *testing.T) {
 		{"test_file": "elsewhere.csv"},
 		{"label": int64(3), "header": false},
 		{"test_every": 2, "test": 1},
+		{"label": nil, "targets": []any{"a", "b"}},
+		{"label": nil, "targets": []any{"b", "a"}},
+		{"label": nil, "targets": []any{int64(1)}},
 	} {
 		s, err := newWith("csv", "/somewhere", map[string]any{"file": "data.csv", "label": "kind"}, changes)
 		if err != nil {
@@ -447,7 +450,7 @@ func FuzzCSV(f *testing.F) {
 		if err != nil {
 			return
 		}
-		table, err := readCSV(in, csvLayout{',', header, label, column, nil})
+		table, err := readCSV(in, csvLayout{delimiter: ',', header: header, label: label, labelColumn: column})
 		if err != nil {
 			if strings.Contains(err.Error(), "\n") {
 				t.Errorf("error of several lines: %q", err)

@@ -7,24 +7,49 @@ import (
 	"errors"
 	"fmt"
 	"io"
+	"slices"
 	"strconv"
 	"strings"
 	"unicode"
 )
 
-// csvTable is a file of rows: numbers, and a label each.
+// csvTable is the rows of one file, or of several one after another: numbers, and a
+// label or targets each.
 type csvTable struct {
-	file     string
+	file     string // the first
+	further  []csvFile
 	columns  []csvColumn // the features, in the order of the file
 	values   []float64   // [rows, len(columns)]
-	labels   []int32     // of each row, an index into distinct
+	labels   []int32     // of each row, an index into distinct; none in a regression
+	targets  []csvColumn // of a regression
+	truths   []float64   // [rows, len(targets)]
 	distinct []string    // labels in the order they first occur
 	lines    []int       // where each row begins, from 1
 	// suspect says that the line taken for names holds numbers only.
 	suspect bool
 }
 
-// csvColumn is one feature.
+// csvFile says from which row on rows are another file's.
+type csvFile struct {
+	row  int
+	file string
+}
+
+// rows is their number.
+func (t *csvTable) rows() int { return len(t.lines) }
+
+// place is the file and the line of a row.
+func (t *csvTable) place(row int) (file string, line int) {
+	file = t.file
+	for _, f := range t.further {
+		if row >= f.row {
+			file = f.file
+		}
+	}
+	return file, t.lines[row]
+}
+
+// csvColumn is one feature or target.
 type csvColumn struct {
 	field int    // of the row, from 0
 	name  string // "" where the file has no names
@@ -37,6 +62,21 @@ type csvLayout struct {
 	label       string // name of the label column, or "" and
 	labelColumn int    // its number, from 1
 	ignore      []string
+	targets     []csvPick // of a regression, in place of a label
+}
+
+// csvPick names a column, or numbers it from 1.
+type csvPick struct {
+	name   string
+	number int
+}
+
+// String is how a plan writes it.
+func (p csvPick) String() string {
+	if p.name != "" {
+		return strconv.Quote(p.name)
+	}
+	return strconv.Itoa(p.number)
 }
 
 // csvReader reads one file row by row.
@@ -45,7 +85,7 @@ type csvReader struct {
 	table  *csvTable
 	rows   *csv.Reader
 	fields int              // of every row; 0 before the first
-	target int              // field of the label, from 0
+	target int              // field of the label, from 0; -1 in a regression
 	known  map[string]int32 // labels so far
 }
 
@@ -64,7 +104,7 @@ func readCSV(in *input, layout csvLayout) (*csvTable, error) {
 	for {
 		fields, err := r.rows.Read()
 		switch {
-		case err == io.EOF && len(r.table.labels) == 0:
+		case err == io.EOF && r.table.rows() == 0:
 			return nil, &FileError{File: in.name, Offset: -1, Reason: "there are no rows of data", Remedy: "give a file with examples"}
 		case err == io.EOF:
 			return r.table, nil
@@ -134,7 +174,7 @@ func (r *csvReader) row(fields []string) error {
 	if len(fields) != r.fields {
 		return r.fault(-1, fmt.Sprintf("the row has %d fields, the first line has %d", len(fields), r.fields), "make all rows equally long")
 	}
-	if len(r.table.values) > maxValues-len(fields) || len(r.table.labels) >= maxExamples {
+	if len(r.table.values) > maxValues-len(fields) || r.table.rows() >= maxExamples {
 		return r.fault(-1, fmt.Sprintf("the file holds more than %d values or %d rows", maxValues, maxExamples), "use fewer rows")
 	}
 	return r.example(fields)
@@ -164,13 +204,30 @@ func (r *csvReader) layOut(fields []string) error {
 		}
 	}
 	if len(r.table.columns) == 0 {
-		return r.fault(-1, "no column is left for features", "give a file with at least one column of numbers besides the label")
+		return r.fault(-1, "no column is left for features", "give a file with at least one column of numbers besides the label or the targets")
 	}
 	return nil
 }
 
 // special marks the columns that are no features: the label's and the ignored.
 func (r *csvReader) special(names []string) (used map[int]bool, err error) {
+	used = map[int]bool{}
+	for _, pick := range r.targets {
+		i := pick.number - 1
+		if pick.name != "" {
+			if i, err = r.named(names, pick.name, "targets"); err != nil {
+				return nil, err
+			}
+		}
+		if i >= len(names) {
+			return nil, r.fault(-1, fmt.Sprintf("there is no column %d for a target: the line has %d fields", pick.number, len(names)), "correct targets, or the delimiter")
+		}
+		if used[i] {
+			return nil, r.fault(i, "the column is a target twice", "name it once")
+		}
+		used[i] = true
+		r.table.targets = append(r.table.targets, csvColumn{i, names[i]})
+	}
 	if r.target = r.labelColumn - 1; r.label != "" {
 		if r.target, err = r.named(names, r.label, "label"); err != nil {
 			return nil, err
@@ -179,7 +236,9 @@ func (r *csvReader) special(names []string) (used map[int]bool, err error) {
 	if r.target >= len(names) {
 		return nil, r.fault(-1, fmt.Sprintf("there is no column %d for the label: the line has %d fields", r.labelColumn, len(names)), "correct label, or the delimiter")
 	}
-	used = map[int]bool{r.target: true}
+	if r.target >= 0 {
+		used[r.target] = true
+	}
 	for _, name := range r.ignore {
 		i, err := r.named(names, name, "ignore")
 		if err != nil {
@@ -211,13 +270,37 @@ func (r *csvReader) named(names []string, name, key string) (int, error) {
 
 // example appends one row.
 func (r *csvReader) example(fields []string) error {
-	for _, c := range r.table.columns {
-		x, err := r.number(c, strings.TrimSpace(fields[c.field]))
-		if err != nil {
+	var err error
+	if r.table.values, err = r.numbers(r.table.values, r.table.columns, fields); err != nil {
+		return err
+	}
+	if r.table.truths, err = r.numbers(r.table.truths, r.table.targets, fields); err != nil {
+		return err
+	}
+	if r.target >= 0 {
+		if err := r.class(fields); err != nil {
 			return err
 		}
-		r.table.values = append(r.table.values, x)
 	}
+	line, _ := r.rows.FieldPos(0)
+	r.table.lines = append(r.table.lines, line)
+	return nil
+}
+
+// numbers appends those of some columns of a row.
+func (r *csvReader) numbers(all []float64, columns []csvColumn, fields []string) ([]float64, error) {
+	for _, c := range columns {
+		x, err := r.number(c, strings.TrimSpace(fields[c.field]))
+		if err != nil {
+			return nil, err
+		}
+		all = append(all, x)
+	}
+	return all, nil
+}
+
+// class appends the label of a row.
+func (r *csvReader) class(fields []string) error {
 	label := strings.TrimSpace(fields[r.target])
 	if label == "" {
 		return r.fault(r.target, "the label is empty", "fill it in or remove the row")
@@ -232,13 +315,57 @@ func (r *csvReader) example(fields []string) error {
 		r.known[label] = n
 		r.table.distinct = append(r.table.distinct, label)
 	}
-	line, _ := r.rows.FieldPos(0)
 	r.table.labels = append(r.table.labels, n)
-	r.table.lines = append(r.table.lines, line)
 	return nil
 }
 
-// number reads one feature.
+// join puts the rows of another file behind those of the table. Its columns must be
+// the same, by name and place.
+func (t *csvTable) join(next *csvTable) error {
+	if err := t.sameColumns(next); err != nil {
+		return err
+	}
+	if len(t.values) > maxValues-len(next.values) || t.rows() > maxExamples-next.rows() {
+		return &FileError{File: next.file, Offset: -1, Reason: fmt.Sprintf("with the files before it there are more than %d values or %d rows", maxValues, maxExamples), Remedy: "use fewer rows"}
+	}
+	number := make([]int32, len(next.distinct))
+	for i, label := range next.distinct {
+		at := slices.Index(t.distinct, label)
+		if at < 0 {
+			if at = len(t.distinct); at == maxClasses {
+				return &FileError{File: next.file, Offset: -1, Reason: fmt.Sprintf("with the files before it there are more than %d different labels", maxClasses), Remedy: "name the column that holds the class"}
+			}
+			t.distinct = append(t.distinct, label)
+		}
+		number[i] = int32(at)
+	}
+	t.further = append(t.further, csvFile{t.rows(), next.file})
+	for _, n := range next.labels {
+		t.labels = append(t.labels, number[n])
+	}
+	t.values, t.truths = append(t.values, next.values...), append(t.truths, next.truths...)
+	t.lines = append(t.lines, next.lines...)
+	t.suspect = t.suspect || next.suspect
+	return nil
+}
+
+// sameColumns holds another file to the columns of the table.
+func (t *csvTable) sameColumns(other *csvTable) error {
+	fault := func(column int, reason string, args ...any) error {
+		return &FileError{File: other.file, Line: 1, Column: column, Offset: -1, Reason: fmt.Sprintf(reason, args...), Remedy: "give files with the same columns in the same order"}
+	}
+	if len(other.columns) != len(t.columns) {
+		return fault(0, "%d features, but %s has %d", len(other.columns), t.file, len(t.columns))
+	}
+	for i, c := range other.columns {
+		if want := t.columns[i]; c.name != want.name {
+			return fault(c.field+1, "feature %d is called %q, in %s %q", i+1, c.name, t.file, want.name)
+		}
+	}
+	return nil
+}
+
+// number reads one feature or target.
 func (r *csvReader) number(c csvColumn, text string) (float64, error) {
 	what := quoted(text)
 	if len(text) > 40 {
@@ -253,7 +380,7 @@ func (r *csvReader) number(c csvColumn, text string) (float64, error) {
 		return 0, r.fault(c.field, "the field is empty", "fill it in or remove the row")
 	case errors.Is(err, strconv.ErrRange) || err == nil && x-x != 0:
 		return 0, r.fault(c.field, what+" is not a finite number", "correct it or remove the row")
-	case err != nil && !r.header && len(r.table.labels) == 0:
+	case err != nil && !r.header && r.table.rows() == 0:
 		return 0, r.fault(c.field, what+" is no number", "write header = true if the first line holds names, else correct it or ignore the column")
 	case err != nil:
 		return 0, r.fault(c.field, what+" is no number", "correct it, or remove the row or the column")

@@ -34,6 +34,7 @@ const (
 	drawWeight
 	drawLayer2
 	drawLevel
+	drawDrift
 
 	sharedPhase = 3
 )

@@ -8,6 +8,7 @@ import (
 	"testing"
 
 	"ulpine/quant"
+	"ulpine/quant/random"
 )
 
 func loadInvented(t *testing.T, name string, values map[string]any, seed uint64) *Data {
@@ -30,13 +31,14 @@ func loadInvented(t *testing.T, name string, values map[string]any, seed uint64)
 	return d
 }
 
-var inventedNames = []string{"noisy-regression", "teacher", "window-energy"}
+var inventedNames = []string{"noisy-regression", "teacher", "window-energy", "sensor-drift"}
 
 // goldenInvented are hashes of 8 training and 4 test examples; recorded from this
 // code, whose other tests say that it is right.
 var goldenInvented = map[string]string{
 	"noisy-regression": "1f01f87368977325abc12b5272f7b7d41b1845145d58c0a77bcf795b0bd3e4bd",
 	"teacher":          "831a4bf236ddf59c0bc4817e37be90653b74c28e6f3225a28f2e8d8b2c6bc045",
+	"sensor-drift":     "e2f416732face8a6f3e69a9eb071d15645599783bd5bef9b200aafd0eadbeeb9",
 	"window-energy":    "4c6c75196790f25f96b6037f0ebfdfbcce69d845cd5e540cb11dbbd3288f300e",
 }
 
@@ -72,6 +74,8 @@ func TestInventedErrors(t *testing.T) {
 		{"teacher", "width", 5000},
 		{"teacher", "outputs", "two"},
 		{"window-energy", "features", 3},
+		{"sensor-drift", "variant", "worn"},
+		{"sensor-drift", "drift_percent", -1},
 	} {
 		_, err := New(c.name, Options{Values: map[string]any{c.key: c.value}})
 		wantOptionError(t, err, c.key)
@@ -169,6 +173,49 @@ func TestTeacher(t *testing.T) {
 	}
 }
 
+// TestDrift: both variants are the same plant, the drifted one seen through gains and
+// offsets that the test draws a second time; a linear map gives the targets of either.
+func TestDrift(t *testing.T) {
+	const n, sensors = 3000, 4
+	options := func(variant string) map[string]any {
+		return map[string]any{"train": n, "test": 0, "sensors": sensors, "hidden": 4, "noise_percent": 0, "drift_percent": 30, "variant": variant}
+	}
+	fresh, drifted := loadInvented(t, "sensor-drift", options("fresh"), 7), loadInvented(t, "sensor-drift", options("drifted"), 7)
+	d := random.Draws{Seed: pumpKey(1, 7), Phase: 3, Site: 6}
+	var moment [2][sensors][2]float64 // of each variant and sensor: mean, mean square
+	for v, data := range []*Data{fresh, drifted} {
+		for i, x := range data.Train.Inputs.Float32s() {
+			moment[v][i%sensors][0] += float64(x) / n
+			moment[v][i%sensors][1] += float64(x) * float64(x) / n
+		}
+	}
+	for j := range sensors {
+		gain, offset := 1+0.3*d.Normal(uint64(2*j)), 0.3*d.Normal(uint64(2*j+1))
+		a, b := moment[0][j], moment[1][j]
+		spread, wantMean := math.Sqrt(a[1]-a[0]*a[0]), gain*a[0]+offset
+		got := math.Sqrt(b[1]-b[0]*b[0]) / spread
+		// Both sides are of 3,000 examples: 5 standard errors of mean and deviation.
+		if math.Abs(b[0]-wantMean) > 5*spread*math.Sqrt(2.0/n)*math.Abs(gain) || math.Abs(got/math.Abs(gain)-1) > 5/math.Sqrt(n) {
+			t.Errorf("sensor %d: mean %v, want %v; gain %v, want %v", j, b[0], wantMean, got, gain)
+		}
+	}
+	w := solve(fresh.Train.Inputs.Float32s(), fresh.Train.Targets.Float32s(), sensors)
+	undone := drifted.Train.Inputs.Float32s()
+	for i, y := range drifted.Train.Targets.Float32s()[:100] {
+		var got float64
+		for j := range w {
+			gain, offset := 1+0.3*d.Normal(uint64(2*j)), 0.3*d.Normal(uint64(2*j+1))
+			got += w[j] * (float64(undone[sensors*i+j]) - offset) / gain
+		}
+		if math.Abs(got-float64(y)) > 1e-3 {
+			t.Fatalf("example %d: %v, want %v", i, got, y)
+		}
+	}
+	if slices.Equal(fresh.Train.Targets.Float32s(), drifted.Train.Targets.Float32s()) {
+		t.Error("both variants have the same examples")
+	}
+}
+
 // TestEnergyRetention sums the squares of a window sequentially in 16-bit formats:
 // what is left of the exact sum is the reason for the task. Bands are wide of the
 // values measured here: see the log.
@@ -180,9 +227,9 @@ func TestEnergyRetention(t *testing.T) {
 		chunk     int
 		low, high float64
 	}{
-		{"bf16", energySamples, 0.2, 0.8},
-		{"fp16", energySamples, 0.85, 1.05},
-		{"bf16", 64, 0.95, 1.02},
+		{"bf16", energySamples, 0.45, 0.7},
+		{"fp16", energySamples, 0.9, 0.97},
+		{"bf16", 64, 0.985, 1.005},
 		{"fp16", 64, 0.998, 1.002},
 		{"fp32", energySamples, 0.99999, 1.00001},
 	} {
@@ -195,6 +242,41 @@ func TestEnergyRetention(t *testing.T) {
 			mean += retained(x[n*energySamples:][:energySamples], &quant.Point{Format: format}, c.chunk) / float64(energySamples) / float64(y[n]) / float64(len(y))
 		}
 		t.Logf("%s, chunks of %d: %.4f of the mean square", c.format, c.chunk, mean)
+		if mean < c.low || mean > c.high {
+			t.Errorf("%s, chunks of %d: %v of the sum is left, want %v to %v", c.format, c.chunk, mean, c.low, c.high)
+		}
+	}
+}
+
+// TestSteadyEnergy: of noise of one level all along, standard normal, the sequential
+// sum of 4,096 squares keeps half in bfloat16 and 0.93 in binary16; chunks of 64 keep
+// all. An earlier prototype of this project had 0.50, 0.93 and 1.000.
+func TestSteadyEnergy(t *testing.T) {
+	const windows = 16
+	for _, c := range []struct {
+		format    string
+		chunk     int
+		low, high float64
+	}{
+		{"bf16", energySamples, 0.47, 0.53},
+		{"fp16", energySamples, 0.91, 0.95},
+		{"bf16", 64, 0.995, 1.005},
+		{"fp16", 64, 0.9995, 1.0005},
+	} {
+		format, err := quant.ParseFormat(c.format)
+		if err != nil {
+			t.Fatal(err)
+		}
+		var mean float64
+		for n := range windows {
+			x, exact := make([]float32, energySamples), 0.0
+			for i, z := range normals(random.Draws{Seed: 11, Step: uint32(n)}, drawInput, energySamples) {
+				x[i] = float32(z * z)
+				exact += float64(x[i])
+			}
+			mean += retained(x, &quant.Point{Format: format}, c.chunk) / exact / windows
+		}
+		t.Logf("%s, chunks of %d: %.4f of the sum", c.format, c.chunk, mean)
 		if mean < c.low || mean > c.high {
 			t.Errorf("%s, chunks of %d: %v of the sum is left, want %v to %v", c.format, c.chunk, mean, c.low, c.high)
 		}

@@ -12,17 +12,22 @@ import (
 // NPY reads arrays: inputs [n, shape of one example...], and labels [n], whole
 // numbers counted from 0, or targets [n] or [n, outputs] of a regression. Each is an
 // NPY file, plain or gzip, or, where Archive is given, a member of that NPZ file.
+// Inputs may be several arrays of as many examples: they are joined along the first
+// axis of an example, as channels of signals and images (each then [n, channels, ...])
+// or as features of tables (each [n, features]), in the order given.
 // Validation examples come off the training ones by the package's rules.
 type NPY struct {
-	Archive                  string // path of an NPZ file; the others then are names in it
-	TrainInputs, TrainTruths string
-	TestInputs, TestTruths   string // both or none
-	Regression               bool   // truths are targets, else labels
-	ClassNames               []string
-	Train, Validation, Test  int
-	ValidationEvery          int
-	Scale                    string // Standardise (or empty): each value of an example by its own statistics; AsIs
-	loaded                   cache
+	Archive                 string // path of an NPZ file; the others then are names in it
+	TrainInputs             []string
+	TrainTruths             string
+	TestInputs              []string // both or none
+	TestTruths              string
+	Regression              bool // truths are targets, else labels
+	ClassNames              []string
+	Train, Validation, Test int
+	ValidationEvery         int
+	Scale                   string // Standardise (or empty): each value of an example by its own statistics; AsIs
+	loaded                  cache
 }
 
 func newNPY(r *reader) Source {
@@ -37,7 +42,19 @@ func newNPY(r *reader) Source {
 		}
 		return name
 	}
-	s.TrainInputs, s.TestInputs = read("train_inputs", true), read("test_inputs", false)
+	several := func(key string, required bool) []string {
+		if _, isText := r.options.Values[key].(string); isText || r.options.Values[key] == nil {
+			if name := read(key, required); name != "" {
+				return []string{name}
+			}
+			return nil
+		}
+		if s.Archive != "" {
+			return r.words(key)
+		}
+		return r.paths(key)
+	}
+	s.TrainInputs, s.TestInputs = several("train_inputs", true), several("test_inputs", false)
 	labels, testLabels := read("train_labels", false), read("test_labels", false)
 	targets, testTargets := read("train_targets", false), read("test_targets", false)
 	s.ClassNames = r.words("classes")
@@ -57,9 +74,11 @@ func newNPY(r *reader) Source {
 		r.fail("train_labels", "is missing", "write train_labels, or train_targets for a regression")
 	case unused != "":
 		r.fail("train_targets", "labels and targets are given together", "keep labels for classes, or targets for a regression")
-	case (s.TestInputs == "") != (s.TestTruths == ""):
+	case len(s.TrainInputs) == 0:
+		r.fail("train_inputs", "the list is empty", "write train_inputs = [\"first.npy\", \"second.npy\"]")
+	case (len(s.TestInputs) == 0) != (s.TestTruths == ""):
 		r.fail("test_inputs", "test inputs and their labels or targets go together", "give both or neither")
-	case s.Test > 0 && s.TestInputs == "":
+	case s.Test > 0 && len(s.TestInputs) == 0:
 		r.fail("test", "there are no test inputs", "give test_inputs")
 	case s.Regression && s.ClassNames != nil:
 		r.fail("classes", "a regression has none", "leave it out")
@@ -72,7 +91,7 @@ func newNPY(r *reader) Source {
 // Canonical implements Source.
 func (s *NPY) Canonical() string {
 	return fmt.Sprintf("npy regression=%t classes=%q train=%d validation=%d validation_every=%d test=%d test_set=%t scale=%s",
-		s.Regression, s.ClassNames, s.Train, s.Validation, s.ValidationEvery, s.Test, s.TestInputs != "", orElse(s.Scale, Standardise))
+		s.Regression, s.ClassNames, s.Train, s.Validation, s.ValidationEvery, s.Test, len(s.TestInputs) > 0, orElse(s.Scale, Standardise))
 }
 
 // Facts implements Source. It reads the files.
@@ -115,7 +134,7 @@ func (s *NPY) load(part split) (*Data, error) {
 		return nil, err
 	}
 	tested := 0
-	if s.TestInputs != "" {
+	if len(s.TestInputs) > 0 {
 		other, err := s.pair("test", s.TestInputs, s.TestTruths)
 		if err != nil {
 			return nil, err
@@ -132,7 +151,7 @@ func (s *NPY) load(part split) (*Data, error) {
 			return nil, err
 		}
 	}
-	file := orElse(s.Archive, s.TrainInputs)
+	file := orElse(s.Archive, s.TrainInputs[0])
 	return e.finish(orElse(s.Scale, Standardise), fmt.Sprintf("arrays of %s: %d training, %d validation, %d test examples", filepath.Base(file), len(train), len(validation), tested), true)
 }
 

@@ -3,6 +3,7 @@ package datasets
 import (
 	"fmt"
 	"math"
+	"path/filepath"
 	"slices"
 	"strconv"
 
@@ -20,12 +21,12 @@ type arrayPair struct {
 }
 
 // pair reads the two arrays of a set and holds them to each other.
-func (s *NPY) pair(set, inputs, truths string) (*arrayPair, error) {
+func (s *NPY) pair(set string, inputs []string, truths string) (*arrayPair, error) {
 	kind := "_labels"
 	if s.Regression {
 		kind = "_targets"
 	}
-	x, err := s.array(set+"_inputs", inputs)
+	x, err := s.joined(set+"_inputs", inputs)
 	if err != nil {
 		return nil, err
 	}
@@ -35,6 +36,47 @@ func (s *NPY) pair(set, inputs, truths string) (*arrayPair, error) {
 	}
 	p := &arrayPair{file: orElse(s.Archive, truths), key: set + kind, inputs: x.Values, truths: y.Values}
 	return p, p.measure(x, y, s.Regression)
+}
+
+// joined reads the inputs of a set, joined along the first axis of an example.
+func (s *NPY) joined(key string, names []string) (*npy.Array, error) {
+	var all []*npy.Array
+	for _, name := range names {
+		a, err := s.array(key, name)
+		if err != nil {
+			return nil, err
+		}
+		all = append(all, a)
+		first := all[0]
+		fault := func(reason string) error {
+			return &FileError{File: orElse(s.Archive, name), Offset: -1, Reason: fmt.Sprintf("%s: %q of shape %v %s %q of shape %v", key, filepath.Base(name), a.Shape, reason, filepath.Base(names[0]), first.Shape), Remedy: "join arrays of the same number of examples that differ in their second axis only"}
+		}
+		switch {
+		case len(names) == 1:
+			return a, nil
+		case len(a.Shape) < 2:
+			return nil, fault("has no axis along which to join it to")
+		case len(a.Shape) != len(first.Shape) || a.Shape[0] != first.Shape[0] || !slices.Equal(a.Shape[2:], first.Shape[2:]):
+			return nil, fault("does not fit")
+		}
+	}
+	return join(all), nil
+}
+
+// join concatenates arrays along their second axis.
+func join(all []*npy.Array) *npy.Array {
+	out := &npy.Array{Shape: slices.Clone(all[0].Shape), Wide: true}
+	out.Shape[1] = 0
+	for _, a := range all {
+		out.Shape[1] += a.Shape[1]
+	}
+	for n := range out.Shape[0] {
+		for _, a := range all {
+			per := volume(a.Shape[1:])
+			out.Values = append(out.Values, a.Values[int(n*per):][:per]...)
+		}
+	}
+	return out
 }
 
 func (p *arrayPair) fault(reason, remedy string) error {

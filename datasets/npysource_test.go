@@ -44,7 +44,8 @@ func arrayFiles(t *testing.T) map[string][]byte {
 		t.Fatal(err)
 	}
 	return map[string][]byte{
-		"x.npy": x, "y.npy": y, "x.npy.gz": zip(x), "a.npz": z.Bytes(), "k.npy": wholeBytes(0, 2, 1, 0), "few.npy": wholeBytes(0, 1),
+		"x3.npy": npyBytes(t, []int{4, 2, 2}, 10, 11, 12, 13, 14, 15, 16, 17, 18, 19, 20, 21, 22, 23, 24, 25),
+		"x.npy":  x, "y.npy": y, "x.npy.gz": zip(x), "a.npz": z.Bytes(), "k.npy": wholeBytes(0, 2, 1, 0), "few.npy": wholeBytes(0, 1),
 		"minus.npy": wholeBytes(0, -1, 1, 0), "nan.npy": npyBytes(t, []int{4}, 1, math.NaN(), 2, 3), "cut.npy": x[:len(x)-3], "same.npy": wholeBytes(0, 0, 0, 0),
 	}
 }
@@ -74,6 +75,29 @@ func TestArrays(t *testing.T) {
 	} {
 		if d, err := loadArrays(t, dir, same); err != nil || d.Hash != want.Hash {
 			t.Errorf("%v: %v", same, err)
+		}
+	}
+	// Two arrays of two channels each; y has two values where x has one channel of two.
+	two, err := loadArrays(t, dir, map[string]any{"train_inputs": []any{"x.npy", "x3.npy"}, "train_labels": "k.npy", "scale": "none"})
+	if err != nil || !slices.Equal(two.Shape, []int{3, 2}) || !slices.Equal(two.Train.Inputs.Float32s()[:12], []float32{1, 2, 10, 11, 12, 13, 3, 4, 14, 15, 16, 17}) {
+		t.Fatalf("%v, %v", two, err)
+	}
+	members, err := loadArrays(t, dir, map[string]any{"archive": "a.npz", "train_inputs": []any{"y", "y"}, "train_targets": "y", "scale": "none"})
+	if err != nil || !slices.Equal(members.Shape, []int{4}) || !slices.Equal(members.Train.Inputs.Float32s()[:4], []float32{0.5, 1, 0.5, 1}) {
+		t.Fatalf("%v, %v", members, err)
+	}
+	for _, c := range []struct {
+		inputs []any
+		want   string
+	}{
+		{[]any{"x.npy", "y.npy"}, `"y.npy" of shape [4 2] does not fit "x.npy" of shape [4 1 2]`},
+		{[]any{"k.npy", "k.npy"}, "has no axis along which"},
+		{[]any{"x.npy", "gone.npy"}, "gone.npy: the file cannot be found"},
+		{[]any{}, "the list is empty"},
+		{[]any{"x.npy", 3}, "3 is no text"},
+	} {
+		if _, err := loadArrays(t, dir, map[string]any{"train_inputs": c.inputs, "train_labels": "k.npy"}); err == nil || !strings.Contains(err.Error(), c.want) {
+			t.Errorf("%v: %v, want %s", c.inputs, err, c.want)
 		}
 	}
 	d, err := loadArrays(t, dir, map[string]any{"train_inputs": "x.npy", "train_labels": "k.npy", "test_inputs": "x.npy", "test_labels": "k.npy", "test": 3})

@@ -95,8 +95,10 @@ func (r *reader) text(key, fallback string) string {
 
 // path reads the path of a file, which must be given if required.
 func (r *reader) path(key string, required bool) string {
+	before := len(r.faults)
 	s := r.text(key, "")
 	switch _, given := r.options.Values[key]; {
+	case len(r.faults) > before:
 	case s == "" && given:
 		r.fail(key, "the path is empty", "write the path of a file, or leave the key out")
 	case s == "" && required:
@@ -105,6 +107,53 @@ func (r *reader) path(key string, required bool) string {
 		return filepath.Join(r.options.Folder, s)
 	}
 	return s
+}
+
+// paths reads a list of paths of files.
+func (r *reader) paths(key string) []string {
+	paths := r.words(key)
+	if _, given := r.options.Values[key]; given && len(paths) == 0 && len(r.faults) == 0 {
+		r.fail(key, "the list is empty", fmt.Sprintf("write %s = [\"first.csv\", \"second.csv\"]", key))
+	}
+	for i, s := range paths {
+		switch {
+		case s == "":
+			r.fail(key, "a path is empty", "write the paths of files")
+		case r.options.Folder != "" && !filepath.IsAbs(s):
+			paths[i] = filepath.Join(r.options.Folder, s)
+		}
+	}
+	return paths
+}
+
+// columns reads a list of columns: names, or numbers from 1.
+func (r *reader) columns(key string) (names []string, numbers []int) {
+	v, ok := r.value(key)
+	if !ok {
+		return nil, nil
+	}
+	items, isList := v.([]any)
+	if texts, isTexts := v.([]string); isTexts {
+		return texts, nil
+	}
+	for _, item := range items {
+		n, isNumber := asInt(item)
+		s, isText := item.(string)
+		switch {
+		case isText && s != "":
+			names = append(names, s)
+		case isNumber && n >= 1 && n <= maxLine && !slices.Contains(numbers, int(n)):
+			numbers = append(numbers, int(n))
+		default:
+			r.fail(key, fmt.Sprintf("%v is no column", quoted(item)), "write names, or different numbers from 1")
+			return nil, nil
+		}
+	}
+	if !isList || len(items) == 0 || len(names) > 0 && len(numbers) > 0 {
+		r.fail(key, fmt.Sprintf("%v is no list of names or of numbers", quoted(v)), fmt.Sprintf("write %s = [\"first\", \"second\"]", key))
+		return nil, nil
+	}
+	return names, numbers
 }
 
 // flag reads true or false.

@@ -27,6 +27,7 @@ var table = []kind{
 	{"noisy-regression", "a linear regression with a known noise floor; invented data", newRegression},
 	{"teacher", "a random network gives the targets; invented data", newTeacher},
 	{"window-energy", "the mean square of windows of 4,096 samples; invented data", newEnergy},
+	{"sensor-drift", "sensors whose gains and offsets drift, fresh or drifted; invented data", newDrift},
 	{"idx", "images and labels in IDX files, plain or gzip", newIDX},
 	{"npy", "inputs with labels or targets in NPY files or an NPZ archive", newNPY},
 	{"csv", "a table of numbers with a label column, plain or gzip", newCSV},

@@ -54,6 +54,9 @@ func (x *runner) look(replicates int) (why string, err error) {
 	if problem := baselineProblem(&part, study.Runs); problem != "" {
 		return problem, nil
 	}
+	for i := range study.Runs {
+		study.Runs[i].Predictions = nil // intervals over examples decide nothing, and take long
+	}
 	comparisons(&l, study)
 	if compare.Settled(study.Comparisons) && compare.Settled(study.Contrasts) {
 		return "every comparison is decided", nil

@@ -112,4 +112,7 @@ func kindList() []string {
 	return names
 }
 
+// LayerNames are the words that layers begin with, in the order of the table.
+func LayerNames() []string { return kindList() }
+
 func kindNames() string { return strings.Join(kindList(), ", ") }

@@ -3,6 +3,7 @@ package main
 import (
 	"bytes"
 	"encoding/json"
+	"fmt"
 	"os"
 	"path/filepath"
 	"strings"
@@ -150,6 +151,43 @@ func TestVerdictsOfRegression(t *testing.T) {
 	narrow(t, "values.toml")
 	if v, _ := asJSON(t, "values.toml"); len(v.Comparisons) != 2 || v.Comparisons[0].Mean == nil {
 		t.Errorf("%+v", v)
+	}
+}
+
+// TestVerdictsOfSharedExamples: where replicates share their test examples, table and
+// JSON have the interval over other examples too; told not to keep predictions, they
+// have not.
+func TestVerdictsOfSharedExamples(t *testing.T) {
+	rows := "x,y,kind\n"
+	for i := range 120 {
+		rows += fmt.Sprintf("%d,%d,%s\n", i%17, i*i%13, []string{"low", "high"}[i*7%17/9])
+	}
+	text := strings.NewReplacer("data = \"pump-vibration\"\ntrain = 40\nvalidation = 0\ntest = 40\ndata_seed = 1", "data = \"csv\"\nfile = \"t.csv\"\nlabel = \"kind\"\ntest_every = 3",
+		`"conv1d out=2 width=9 stride=4", "relu", "dense 5"`, `"dense 4", "relu", "dense 2"`, `storage = "bf16"`, `storage = "E4M3"`).Replace(tiny)
+	inFolder(t, map[string]string{"t.csv": rows, "shared.toml": text, "bare.toml": strings.Replace(text, "epochs = 2", "epochs = 2\npredictions = \"none\"", 1)})
+	out := flat(must(t, "run", "shared.toml", "--no-report", "--quiet"))
+	holds(t, out, "all replicates share their test examples; over other examples too (two-way bootstrap): 1 bf16 nearest [", "; 2 same as baseline [")
+	narrow(t, "shared.toml")
+	var v struct {
+		Comparisons []struct {
+			Items *struct {
+				Items, Replicates int
+				Crossed           bool
+				Method            string
+				Low, High         *float64
+				Flips             []struct{ Gained, Lost int }
+			}
+		}
+	}
+	if err := json.Unmarshal([]byte(must(t, "verdicts", "shared.toml", "--json")), &v); err != nil {
+		t.Fatal(err)
+	}
+	if i := v.Comparisons[0].Items; i == nil || !i.Crossed || i.Items != 40 || i.Low == nil || len(i.Flips) != 3 || !strings.Contains(i.Method, "pigeonhole") {
+		t.Errorf("%+v", i)
+	}
+	must(t, "run", "bare.toml", "--no-report", "--quiet", "--store", "bare.store")
+	if text := must(t, "verdicts", "bare.toml", "--json", "--store", "bare.store"); strings.Contains(text, `"items"`) {
+		t.Error("items without predictions")
 	}
 }
 

@@ -8,6 +8,7 @@ import (
 	"io/fs"
 	"os"
 	"path/filepath"
+	"regexp"
 	"strings"
 	"testing"
 
@@ -86,6 +87,20 @@ func writeArrays(t *testing.T, folder string) {
 	}
 }
 
+// writeSensors writes the tables that sensors-csv.toml names.
+func writeSensors(t *testing.T, folder string) {
+	t.Helper()
+	for _, name := range []string{"sensors-1.csv", "sensors-2.csv", "sensors-test.csv"} {
+		text := "speed,wear,load,heat,sound,current\n"
+		for i := range 20 {
+			text += fmt.Sprintf("%d,%d,%d,%d,%d,%d\n", i, i*i%7, i*3%5, i*i%11, i%3, i*i*i%13)
+		}
+		if err := os.WriteFile(filepath.Join(folder, name), []byte(text), 0o600); err != nil {
+			t.Fatal(err)
+		}
+	}
+}
+
 // writeWeights writes the parameters that from-stored-run.toml starts from, as show
 // --weights does.
 func writeWeights(t *testing.T, file string) {
@@ -143,6 +158,7 @@ func TestShippedPlansLoad(t *testing.T) {
 		writeDigits(t, filepath.Join(folder, images))
 	}
 	writeArrays(t, folder)
+	writeSensors(t, folder)
 	writeWeights(t, filepath.Join(folder, "pump-weights.npz"))
 	all := shipped(t)
 	for _, name := range []string{"first-look.toml", "sixteen-bit.toml", "digits-idx.toml"} {
@@ -165,6 +181,39 @@ func TestShippedPlansLoad(t *testing.T) {
 		}
 		if text := ResolveText(p, ResolveOptions{Rate: 1e9, Workers: 2}); !strings.Contains(text, p.Title) {
 			t.Errorf("%s resolves to %q", name, text)
+		}
+	}
+}
+
+// Every layer, loss and optimizer is shown by a plan that ships, and the options that
+// are no word of these tables as well.
+func TestShippedPlansShowEverything(t *testing.T) {
+	seen, texts := map[string]bool{}, ""
+	for _, text := range shipped(t) {
+		var lines []string
+		for line := range strings.Lines(text) {
+			if !strings.HasPrefix(line, "#") {
+				lines = append(lines, line)
+			}
+		}
+		texts += strings.Join(lines, "")
+	}
+	for _, word := range regexp.MustCompile(`[a-z0-9-]+`).FindAllString(texts, -1) {
+		seen[word] = true
+	}
+	for _, names := range [][]string{trainer.LayerNames(), trainer.LossNames(), trainer.OptimizerNames()} {
+		for _, name := range names {
+			if name != "flatten" && !seen[name] { // dense flattens by itself
+				t.Errorf("no shipped plan has %s", name)
+			}
+		}
+	}
+	for _, option := range []string{
+		"stride=", "pad=", "dilation=", "groups=", "label_smoothing", "momentum", "weight_decay", "clip_norm", "compensated = true",
+		"multiply", "cosine", "warm_up", "loss_scale", "rounding = \"stochastic\"", "[controls]", "[pretrain",
+	} {
+		if !strings.Contains(texts, option) {
+			t.Errorf("no shipped plan has %s", option)
 		}
 	}
 }

@@ -151,10 +151,12 @@ func optionFault(n *node, name string, keys map[string]*node, option *datasets.O
 // fileFault tells what is wrong with a file at the key that names it.
 func fileFault(n *node, keys map[string]*node, file *datasets.FileError) *PlanError {
 	at := n
-	for _, k := range keys { // two keys with the same file would be the same fault
-		name, ok := k.value.(string)
-		if ok && (name == file.File || filepath.Join(folder(n, keys), name) == file.File) && (at == n || k.line < at.line) {
-			at = k
+	for _, key := range keys { // two keys with the same file would be the same fault
+		for _, k := range append([]*node{key}, key.list...) {
+			name, ok := k.value.(string)
+			if ok && (name == file.File || filepath.Join(folder(n, keys), name) == file.File) && (at == n || k.line < at.line) {
+				at = k
+			}
 		}
 	}
 	return at.errorf(file.Remedy, "%s", strings.TrimSuffix(file.Error(), "; "+file.Remedy))

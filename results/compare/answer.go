@@ -73,6 +73,7 @@ func aboutArms(s *results.Study) []string {
 	if saved := savedSentence(s, verdicts[results.Within]); saved != "" {
 		said = append(said, saved)
 	}
+	said = append(said, thresholds(s)...)
 	for _, g := range alike(verdicts[results.Worse], func(c *results.Comparison) string { return under(s, c) }) {
 		said = append(said, fmt.Sprintf("%s%s%sworse than the margin (%s).",
 			names(s, g.of), comma(g.by), be(len(g.of)), pairs(g.of)))
@@ -155,6 +156,9 @@ func savedSentence(s *results.Study, within []*results.Comparison) string {
 			return ""
 		}
 		least, most = min(least, a.Bits), max(most, a.Bits)
+	}
+	if least == most && most == s.Arms[0].Bits {
+		return "" // what differs is computed with, not kept
 	}
 	who, span := "It keeps ", amount(least)
 	if len(within) > 1 {

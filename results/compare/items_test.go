@@ -90,22 +90,44 @@ func TestTwoWayByHand(t *testing.T) {
 			t.Error("one address, two resamples")
 		}
 	}
-	for k := range 50 { // both ways of resampling draw alike, example order aside
-		a, b := tab(columns).sparse(n, m)(draws(k)), tab(columns).general(n, m)(draws(k))
-		if math.Abs(a-b) > 1e-12 {
-			t.Errorf("resample %d: %v sparse, %v general", k, a, b)
+	// both ways of resampling come to the same spread
+	flips := make([][]float64, n)
+	for r := range flips {
+		flips[r] = make([]float64, m)
+		for i := range flips[r] {
+			flips[r][i] = float64(count((i+r)%9 == 0) - count(i%11 == 0))
 		}
 	}
+	sparse, general := resampledDeviation(tab(flips)), spread(tab(flips).general(n, m))
+	near(t, "SD both ways", sparse, general, 0.05*general)
 }
 
 // resampledDeviation is the standard deviation of resampled means.
 func resampledDeviation(t *table) float64 {
-	f := t.sparse(len(t.arm), len(t.arm[0]))
+	return spread(t.sparse(len(t.arm), len(t.arm[0])))
+}
+
+func spread(f func(draws) float64) float64 {
 	means := make([]float64, 4000)
 	for k := range means {
 		means[k] = f(twoWaySeed.stream(k))
 	}
 	return deviation(means)
+}
+
+// TestHits holds the binomial draws to mean and variance, and to the ends.
+func TestHits(t *testing.T) {
+	for _, c := range []struct{ m, k int }{{100, 5}, {10_000, 700}, {10, 9}, {1, 1}, {7, 0}, {50, 50}} {
+		h := newHits(c.m, c.k)
+		xs := make([]float64, 20_000)
+		for i := range xs {
+			xs[i] = float64(h.draw(draws(3).word(uint64(i))))
+		}
+		p := float64(c.k) / float64(c.m)
+		sd := math.Sqrt(float64(c.m) * p * (1 - p))
+		near(t, "mean", mean(xs), float64(c.k), 4*sd/math.Sqrt(20_000))
+		near(t, "SD", deviation(xs), sd, 0.025*sd)
+	}
 }
 
 // TestDraws: words by address are uniform (chi-squared of 64 cells over a million

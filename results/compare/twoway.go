@@ -60,7 +60,8 @@ func (t *table) crossed(confidence float64) (low, high float64) {
 }
 
 // sparse resamples gains that are means over examples. Examples in which no pair of
-// runs differs add nothing: they are drawn, and passed over.
+// runs differs add nothing: how many of a resample are among the others follows the
+// binomial law, and only those are drawn.
 func (t *table) sparse(n, m int) func(draws) float64 {
 	var columns [][]float64 // [examples that differ somewhere][pairs]
 	for i := range m {
@@ -75,6 +76,7 @@ func (t *table) sparse(n, m int) func(draws) float64 {
 		}
 	}
 	totals, weight := make([]float64, len(columns)), make([]float64, n)
+	hits := newHits(m, len(columns))
 	return func(d draws) float64 {
 		clear(weight)
 		for j := range n {
@@ -87,13 +89,44 @@ func (t *table) sparse(n, m int) func(draws) float64 {
 			}
 		}
 		var sum float64
-		for j := range m {
-			if i := d.below(uint64(n+j), m); i < len(totals) {
-				sum += totals[i]
-			}
+		for j := range hits.draw(d.word(uint64(n))) {
+			sum += totals[d.below(uint64(n+1+j), len(totals))]
 		}
 		return sum / float64(n) / float64(m)
 	}
+}
+
+// hits draws from the binomial law: how many of m draws among m fall on one of k.
+type hits struct {
+	first      int
+	cumulative []float64 // chance of first + i or fewer
+}
+
+// farHits is how many standard deviations from its mean a draw is looked for.
+const farHits = 12
+
+func newHits(m, k int) hits {
+	if k == 0 || k == m {
+		return hits{first: k, cumulative: []float64{1}}
+	}
+	law := distuv.Binomial{N: float64(m), P: float64(k) / float64(m)}
+	reach := int(farHits*law.StdDev()) + 1
+	h := hits{first: max(0, k-reach)}
+	for i := h.first; i <= min(m, k+reach); i++ {
+		before := 0.0
+		if n := len(h.cumulative); n > 0 {
+			before = h.cumulative[n-1]
+		}
+		h.cumulative = append(h.cumulative, before+law.Prob(float64(i)))
+	}
+	return h
+}
+
+// draw inverts the law at a random word.
+func (h hits) draw(word uint64) int {
+	u := float64(word>>11) / (1 << 53)
+	i, _ := slices.BinarySearch(h.cumulative, u)
+	return h.first + min(i, len(h.cumulative)-1)
 }
 
 // general resamples gains of any aggregate.

@@ -94,7 +94,11 @@ func (v *view) epochPart(rows []epochRow, epochs int, width float64) *draw.Figur
 		}
 		g := f.Sub("arm", draw.Attr{Name: "arm", Value: r.arm.Slug})
 		name := layerName(r.place.Layer, r.place.Name) + ", " + plain(r.place.Point)
-		g.Text(left-10, y+11, name, draw.Type{Size: 10.5, Anchor: draw.End, Role: draw.Soft, Max: left - 12})
+		short := strings.Join(firstWords(layerName(r.place.Layer, r.place.Name), 2), " ") + ", " + plain(r.place.Point)
+		if r.place.Layer < 0 { // input and loss have one point each
+			short = plain(r.place.Point)
+		}
+		g.Text(left-10, y+11, short, draw.Type{Size: 10.5, Anchor: draw.End, Role: draw.Soft, Max: left - 12})
 		for e := range epochs {
 			v.epochCell(g, left+cell*float64(e), y, cell-1.5, pitch-2.5, &r, e)
 		}

@@ -92,13 +92,17 @@ func seconds(d time.Duration) string {
 
 // planSection shows the plan as written and as resolved.
 func planSection(v *view) any {
+	type planText struct {
+		fact
+		Long bool // not printed
+	}
 	data := struct {
 		Lead  string
-		Texts []fact
+		Texts []planText
 	}{Lead: "The plan as its author wrote it, and every setting that follows from it."}
 	for _, f := range []fact{{"As written: " + plain(v.PlanFile), v.PlanText}, {"Resolved: every point of every arm", v.Resolved}} {
 		if text := plainLines(f.Text); text != "" {
-			data.Texts = append(data.Texts, fact{f.Head, text})
+			data.Texts = append(data.Texts, planText{fact{f.Head, text}, len(data.Texts) > 0})
 		}
 	}
 	if len(data.Texts) == 0 {

@@ -3,6 +3,7 @@ package report
 import (
 	"fmt"
 	"io"
+	"math"
 	"strings"
 
 	"github.com/mattn/go-runewidth"
@@ -151,12 +152,31 @@ func (t *terminal) verdicts(title string, cs []results.Comparison) {
 		tr := newTextRail(t.v, cs, min(spare, 60))
 		t.beside(rows, cols, names, tr)
 		t.legend(tr)
+		t.examples(rows)
 		return
 	}
 	used -= cols[0].wide + 2 // the verdict stands in the line above
 	tr := newTextRail(t.v, cs, min(t.width-used-2, 60))
 	t.stacked(rows, cols[1:], tr)
 	t.legend(tr)
+	t.examples(rows)
+}
+
+// examples writes the intervals over replicates and test examples both, where all
+// replicates share their examples: there the table's intervals are about those alone.
+func (t *terminal) examples(rows []row) {
+	var words []string
+	for _, r := range rows {
+		if i := r.c.Items; i != nil && i.Crossed && !math.IsNaN(i.Low) {
+			words = append(words, r.name+" "+t.v.words.interval(i.Low, i.High))
+		}
+	}
+	if len(words) == 0 {
+		return
+	}
+	for _, l := range wrapText("all replicates share their test examples; over other examples too (two-way bootstrap): "+strings.Join(words, "; "), t.width) {
+		t.line(t.paint(dim, l))
+	}
 }
 
 // diffHead heads the column of differences; a long unit is told above the table only.

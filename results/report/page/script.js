@@ -172,10 +172,10 @@
     });
   });
 
-  // Paper shows what details hide.
+  // Paper shows what details hide, but for the long ones.
   var closed = [];
   addEventListener('beforeprint', function () {
-    closed = all('details:not([open])');
+    closed = all('details:not([open]):not(.long)');
     closed.forEach(function (d) { d.open = true; });
   });
   addEventListener('afterprint', function () { closed.forEach(function (d) { d.open = false; }); });
