@@ -218,6 +218,19 @@ func TestShippedPlansShowEverything(t *testing.T) {
 	}
 }
 
+// Whatever the layers, an arm in which everything is binary32 is the baseline: the same
+// text, so the same runs.
+func TestEverythingSingleIsTheBaseline(t *testing.T) {
+	for _, name := range []string{"attention.toml", "recurrent.toml", "depthwise.toml", "norm-statistics.toml", "weight-decay.toml"} {
+		text := shipped(t)[name]
+		at := strings.Index(text, "[[arm]]")
+		p := load(t, text[:at]+"[[arm]]\nname = \"single\"\neverything = \"fp32\"\n"+text[at:])
+		if p.Arms[1].Name != "single" || p.Arms[1].Canonical != p.Arms[0].Canonical || p.Arms[2].Canonical == p.Arms[0].Canonical {
+			t.Errorf("%s: %q is not the baseline, or %q is", name, p.Arms[1].Name, p.Arms[2].Name)
+		}
+	}
+}
+
 // The first look must stay a matter of a minute.
 func TestFirstLookIsSmall(t *testing.T) {
 	p := load(t, shipped(t)["first-look.toml"])
