@@ -1,13 +1,16 @@
 package experiments_test
 
 import (
+	"bytes"
 	"context"
+	"os"
 	"path/filepath"
 	"testing"
 
 	"ulpine/experiments"
 	"ulpine/experiments/plan"
 	"ulpine/results"
+	"ulpine/results/report"
 	"ulpine/results/store"
 )
 
@@ -51,4 +54,30 @@ func TestFirstLook(t *testing.T) {
 	if kinds["bf16-nearest"] != results.Worse || kinds["bf16-stochastic-update"] != results.Within {
 		t.Errorf("verdicts %v", kinds)
 	}
+	checkFigure(t, study)
+}
+
+// checkFigure holds the README's figure to the one that the report draws now:
+// ulpine report experiments/plans/first-look.toml --figures DIR writes it anew, as
+// margin-rail.svg.
+func checkFigure(t *testing.T, study *results.Study) {
+	t.Helper()
+	shown, err := os.ReadFile("../.figures/first-look-differences.svg")
+	if err != nil {
+		t.Fatal(err)
+	}
+	for _, f := range report.Figures(study) {
+		if f.ID != "margin-rail" {
+			continue
+		}
+		var drawn bytes.Buffer
+		if err := f.WritePlain(&drawn); err != nil {
+			t.Fatal(err)
+		}
+		if !bytes.Equal(drawn.Bytes(), shown) {
+			t.Error("the README's figure is not the one that the report draws; write it anew")
+		}
+		return
+	}
+	t.Error("the report has no rail")
 }

@@ -18,6 +18,9 @@ func newReport() *cobra.Command {
 		Long: `Write the report: one HTML page that needs nothing else, the same as Markdown, its
 figures as SVG and PNG files, and its numbers as CSV and JSON.
 
+A PNG shows a box for each character that its font, Liberation Sans, lacks; SVG
+files and the page use the viewer's fonts.
+
 With --figures, write the figures alone, on a white ground and without a margin,
 as a paper wants them. --machine and --energy name the tables that the costs, and
 the figures of the score against bytes and energy, are worked out from.

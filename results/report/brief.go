@@ -156,8 +156,8 @@ func (v *view) roundingBrief(best *armView) string {
 func (v *view) sureWords(best *armView) string {
 	c := best.Comparison
 	m := v.words.scale(c.Margin)
-	s := fmt.Sprintf("difference to the baseline %s%s, %s interval %s, %s; the margin is %s", v.words.diff(c.Mean), v.words.unit(), percentage(c.Confidence),
-		v.words.interval(c.Low, c.High), plural(c.N, "pair"), fixed(-m, marginDigits(m)))
+	s := fmt.Sprintf("difference to the baseline %s%s, %s interval %s, %s; the margin is %s%s", v.words.diff(c.Mean), v.words.unit(), percentage(c.Confidence),
+		v.words.interval(c.Low, c.High), plural(c.N, "pair"), fixed(-m, marginDigits(m)), v.words.unit())
 	if !math.IsNaN(c.Holm) {
 		p := probability(c.Holm)
 		if !strings.HasPrefix(p, "<") {

@@ -58,6 +58,8 @@ const shownSentences = 6
 type pageData struct {
 	Heading        string
 	Answer         []string // sentence by sentence
+	AnswerMore     []string // of them, those that go on about the first one's arms
+	AnswerNext     []string // the others
 	Brief          []briefRow
 	AnswerRest     []string // those that are folded away
 	RestCount      string
@@ -105,6 +107,11 @@ func (v *view) html(w io.Writer) error {
 		p.AnswerRest, p.Answer = p.Answer[shownSentences:], p.Answer[:shownSentences]
 		p.RestCount = plural(rest, "more sentence")
 	}
+	n := 1
+	for n < len(p.Answer) && (strings.HasPrefix(p.Answer[n], "They ") || strings.HasPrefix(p.Answer[n], "It ")) {
+		n++
+	}
+	p.AnswerMore, p.AnswerNext = p.Answer[1:n], p.Answer[n:]
 	if n := len(warningSection(v).(list).Items); n > 0 {
 		p.WarningCount = plural(n, "warning")
 	}

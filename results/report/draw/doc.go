@@ -12,5 +12,8 @@
 //   - Words are measured with Liberation Sans, which has the advance widths of
 //     Arial and Helvetica, the families the SVG names: a box measured here is
 //     the box a browser draws, wherever one of the three is installed.
+//   - A PNG shows a box for each character that Liberation Sans lacks, and letters
+//     written from right to left in the order in which they are seen, Arabic ones
+//     not joined. An SVG leaves both to the viewer's fonts.
 //   - Nothing is told by colour alone: the callers add words, dashes or shapes.
 package draw

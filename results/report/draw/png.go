@@ -115,7 +115,8 @@ func (r raster) paint(role Role, opacity float64) bool {
 
 // text writes words from their left end: the canvas knows no anchors.
 func (r raster) text(t *Text) {
-	w := Width(t.S, t.Size, t.Bold)
+	words := raised(t.S, t.Bold)
+	w := Width(words, t.Size, t.Bold)
 	dx := 0.0
 	switch t.Anchor {
 	case Middle:
@@ -128,5 +129,5 @@ func (r raster) text(t *Text) {
 	r.paint(t.Role, 0)
 	r.c.Translate(r.at(t.X, t.Y))
 	r.c.Rotate(-t.Turn * math.Pi / 180)
-	r.c.FillString(face(t.Size, t.Bold), vg.Point{X: vg.Length(dx)}, t.S)
+	r.c.FillString(face(t.Size, t.Bold), vg.Point{X: vg.Length(dx)}, words)
 }
