@@ -28,7 +28,7 @@ func ResolveText(p *Plan, o ResolveOptions) string {
 	}
 	writeFacts(&b, p)
 	writeLayers(&b, p)
-	fmt.Fprintf(&b, "\n%s\n", WorkText(p, o))
+	fmt.Fprintf(&b, "\n%s\n%s\n", WorkText(p, o), MemoryText(p, o.Workers))
 	writeGrids(&b, p)
 	for i := range p.Arms {
 		writeArm(&b, p, &p.Arms[i], "arm", o.Full)
@@ -83,7 +83,7 @@ func writeFacts(b *strings.Builder, p *Plan) {
 
 // writeLayers writes the shapes, parameters and lengths of sums of the network.
 func writeLayers(b *strings.Builder, p *Plan) {
-	d := trainer.Describe(p.Network, nil, p.Training, p.Task.sizes())
+	d := trainer.Describe(p.Network, nil, p.Training, p.Task.Sizes())
 	fmt.Fprintln(b, "\nnetwork (sums in terms; weight and bias gradients over a batch)")
 	w := table(b)
 	fmt.Fprintln(w, "  layer\t\tin\tout\tparameters\tforward sum\tinput gradient\tweight gradient\tbias gradient\tmultiply-adds a step")
@@ -204,7 +204,7 @@ func writeArm(b *strings.Builder, p *Plan, a *Arm, what string, full bool) {
 		say(a.atStage(i))
 		fmt.Fprintf(w, "  loss scale\t%s\n", a.Stages[i].LossScale)
 	}
-	if trainer.Describe(p.Network, &a.Arithmetic, a.Training, p.Task.sizes()).Double {
+	if trainer.Describe(p.Network, &a.Arithmetic, a.Training, p.Task.Sizes()).Double {
 		fmt.Fprintf(w, "  memory\ttensors of eight bytes an element: not every value fits binary32\n")
 	}
 	if len(a.Overrides) > 0 {
@@ -233,7 +233,10 @@ func writePoints(w *tabwriter.Writer, a *Arm) {
 	for _, s := range a.Settings {
 		where := fmt.Sprintf("%d %s", s.Layer+1, s.Name)
 		if s.Layer < 0 {
-			where = "-"
+			where = "-" + strings.TrimPrefix(s.Name, s.Point)
+			if s.Name == "loss" {
+				where = "-"
+			}
 		}
 		fmt.Fprintf(w, "  %s\t%s\t%s\t%s\n", where, s.Point, s.say(), a.origin(s))
 	}
@@ -275,7 +278,10 @@ func writeGroups(w *tabwriter.Writer, p *Plan, a *Arm) {
 		}
 		for _, text := range said {
 			name := id.String()
-			if len(said) > 1 {
+			switch {
+			case len(said) > 1 && id == trainer.Input:
+				name = a.Settings[slices.IndexFunc(a.Settings, func(s Setting) bool { return s.Point == name && s.say() == text })].Name
+			case len(said) > 1:
 				name += " of layer " + strings.Trim(strings.ReplaceAll(fmt.Sprint(layers[text]), " ", "+"), "[]")
 			}
 			if groups[text] == nil {
