@@ -65,6 +65,10 @@ func TestQualifiedMetricsOfRuns(t *testing.T) {
 	if err != nil || len(study.Comparisons) != 3 || study.Comparisons[0].N != 3 {
 		t.Fatalf("%+v, %v", study, err)
 	}
+	strict := tinyPlan(t, "", `metric = "test accuracy"`, `metric = "test missed-fault rate"`+"\nfalse_alarm_rate = 0.05")
+	if few, err := Study(strict, s); err != nil || !slices.ContainsFunc(few.Warnings, func(w string) bool { return strings.Contains(w, "is told from 7 examples of class 0") }) {
+		t.Errorf("%+v, %v", few.Warnings, err)
+	}
 	for _, r := range study.Runs {
 		last := r.Epochs[len(r.Epochs)-1]
 		for class := range r.Classes {

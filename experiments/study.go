@@ -113,6 +113,19 @@ func readRuns(l *layout, s *store.Store, study *results.Study) error {
 		}
 	}
 	study.Warnings = append(study.Warnings, failureWarnings(r.failures)...)
+	study.Warnings = append(study.Warnings, alarmWarnings(study)...)
+	return nil
+}
+
+// alarmWarnings doubts a rate of false alarms that so few sound examples cannot tell.
+func alarmWarnings(study *results.Study) []string {
+	metric, _ := results.FindMetric(study.Metric)
+	for i := range study.Runs {
+		r := &study.Runs[i]
+		if n := metric.FewSound(r); n > 0 && r.Arm != plan.PretrainSlug {
+			return []string{fmt.Sprintf("%s is told from %s of class 0, too few to allow one false alarm: it is that without any", study.Metric, number(int(n), "example"))}
+		}
+	}
 	return nil
 }
 

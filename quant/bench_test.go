@@ -3,7 +3,9 @@ package quant
 import (
 	"math"
 	"math/rand/v2"
+	"runtime"
 	"slices"
+	"sync"
 	"testing"
 	"time"
 )
@@ -71,19 +73,38 @@ var benchShapes = []benchShape{
 }
 
 // BenchmarkMatMul measures products of matrices, packing included, in GF: 2 I J K over
-// time.
+// time, alone and with a helper.
 func BenchmarkMatMul(b *testing.B) {
 	for _, s := range benchShapes {
 		for _, mode := range benchModes {
-			b.Run(s.name+"/"+mode.name, func(b *testing.B) { benchmarkProduct[float32](b, mode, s) })
+			benchmarkWorkers(b, s.name+"/"+mode.name, func(b *testing.B, t *Team) { benchmarkProduct[float32](b, mode, s, t) })
 		}
 		for _, mode := range benchModes64 {
-			b.Run(s.name+"/"+mode.name, func(b *testing.B) { benchmarkProduct[float64](b, mode, s) })
+			benchmarkWorkers(b, s.name+"/"+mode.name, func(b *testing.B, t *Team) { benchmarkProduct[float64](b, mode, s, t) })
 		}
 	}
 }
 
-func benchmarkProduct[T Element](b *testing.B, mode benchMode, s benchShape) {
+// benchmarkWorkers runs a benchmark alone and with one helper, given two processors.
+func benchmarkWorkers(b *testing.B, name string, f func(*testing.B, *Team)) {
+	b.Run(name+"/workers=1", func(b *testing.B) { f(b, nil) })
+	b.Run(name+"/workers=2", func(b *testing.B) {
+		if runtime.GOMAXPROCS(0) < 2 {
+			b.Skip("one processor")
+		}
+		team, stop := NewTeam(1), make(chan struct{})
+		var done sync.WaitGroup
+		done.Go(func() { team.Help(stop) })
+		for team.Idle() < 1 {
+			runtime.Gosched()
+		}
+		f(b, team)
+		close(stop)
+		done.Wait()
+	})
+}
+
+func benchmarkProduct[T Element](b *testing.B, mode benchMode, s benchShape, team *Team) {
 	acc, err := ParseAccumulate(mode.acc)
 	if err != nil {
 		b.Fatal(err)
@@ -92,6 +113,7 @@ func benchmarkProduct[T Element](b *testing.B, mode benchMode, s benchShape) {
 	if err != nil {
 		b.Fatal(err)
 	}
+	m.Share(team)
 	r := rand.New(rand.NewPCG(1, 2))
 	p := Product[T]{
 		I: s.i, J: s.j, K: s.k, C: make([]T, s.i*s.j),
@@ -104,7 +126,7 @@ func benchmarkProduct[T Element](b *testing.B, mode benchMode, s benchShape) {
 	operations := 2 * float64(s.i) * float64(s.j) * float64(s.k)
 	b.ReportMetric(operations*float64(b.N)/float64(b.Elapsed().Nanoseconds()), "GF")
 	b.ReportMetric(operations/wall, "GF-best")
-	b.ReportMetric(operations/cpu, "GF-cpu")
+	b.ReportMetric(operations/cpu, "GF-cpu") // of all processors together
 }
 
 // fastest repeats work and returns the nanoseconds of the fastest pass, by the clock

@@ -16,6 +16,10 @@ type Metric struct {
 	Target float64 // of a metric that counts epochs to a target, else 0
 	read   func(*Epoch) float64
 	of     *Metric // what is to reach the target; nil: not a metric of epochs
+
+	// Of missed faults: the share of false alarms, and the answers they are told from.
+	falseAlarms float64
+	alarms      func(*Epoch) *ClassScores
 }
 
 // Units of differences; cross-entropies have natural logarithms.

@@ -63,8 +63,26 @@ func findQualified(name string) (Metric, bool) {
 	}
 	text, is := strings.CutPrefix(rest, missedWords+rateWords)
 	rate, err := strconv.ParseFloat(text, 64)
+	m.falseAlarms, m.alarms = rate, of
 	m.read = func(e *Epoch) float64 { return of(e).MissedRate(rate) }
 	return m, is && err == nil && rate >= 0 && rate <= MostFalseAlarms
+}
+
+// FewSound reports how many sound examples a metric of missed faults is told from,
+// where they are so few that the share of false alarms allows none at all, though it
+// is not 0; else 0.
+func (m Metric) FewSound(r *Run) uint64 {
+	if m.of != nil {
+		return m.of.FewSound(r)
+	}
+	if m.alarms == nil || m.falseAlarms == 0 || len(r.Epochs) == 0 {
+		return 0
+	}
+	s := m.alarms(&r.Epochs[len(r.Epochs)-1])
+	if s == nil || len(s.Examples) == 0 || AllowedAlarms(m.falseAlarms, s.Examples[0]) > 0 {
+		return 0
+	}
+	return s.Examples[0]
 }
 
 // Recall is the share of the examples of a class that were answered rightly; NaN

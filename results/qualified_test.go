@@ -60,6 +60,21 @@ func TestQualifiedMetrics(t *testing.T) {
 	}
 }
 
+// TestFewSound: a hundred sound examples can tell one in a hundred, no less.
+func TestFewSound(t *testing.T) {
+	for name, want := range map[string]uint64{
+		MissedAt("test missed-fault rate", 0.01):                          0,
+		MissedAt("test missed-fault rate", 0.009):                         100,
+		MissedAt("test missed-fault rate", 0):                             0,
+		"epochs to " + MissedAt("test missed-fault rate", 0.001) + " 0.1": 100,
+		"test accuracy": 0,
+	} {
+		if m, known := FindMetric(name); !known || m.FewSound(byClassRun()) != want {
+			t.Errorf("%s: %d of too few sound examples, want %d", name, m.FewSound(byClassRun()), want)
+		}
+	}
+}
+
 // TestAllowedAlarms: shares are decimals.
 func TestAllowedAlarms(t *testing.T) {
 	for n := uint64(1); n <= 1000; n++ {

@@ -1,6 +1,8 @@
 package trainer
 
 import (
+	"runtime"
+	"sync"
 	"testing"
 	"time"
 )
@@ -66,44 +68,65 @@ func operandArm(t testing.TB, format string, layers int) Arm {
 }
 
 // BenchmarkStep measures whole training steps of 64 examples, forward, backward and
-// update, in examples/s. A step that allocates fails.
+// update, in examples/s, alone and with a helper. A step that allocates fails.
 func BenchmarkStep(b *testing.B) {
 	for _, net := range benchNets {
 		for _, a := range benchArms {
-			b.Run(net.name+"/"+a.name, func(b *testing.B) {
-				step := benchStep(b, net.input, net.layers, a.arm(b, len(net.layers)), Diagnostics{})
-				for range 4 {
-					step()
+			step := func(b *testing.B, team *Team) {
+				job := benchJob(b, net.input, net.layers, a.arm(b, len(net.layers)))
+				job.Team = team
+				measureSteps(b, benchStep(b, &job))
+			}
+			b.Run(net.name+"/"+a.name+"/workers=1", func(b *testing.B) { step(b, nil) })
+			b.Run(net.name+"/"+a.name+"/workers=2", func(b *testing.B) {
+				if runtime.GOMAXPROCS(0) < 2 {
+					b.Skip("one processor")
 				}
-				// A mean, rounded down: the first step that falls back to wider lanes,
-				// wherever it comes, finds their memory missing.
-				if n := testing.AllocsPerRun(8, step); n != 0 {
-					b.Errorf("%v allocations a step", n)
-				}
-				wall, cpu := time.Hour, time.Hour
-				for b.Loop() {
-					start, spent := time.Now(), cpuTime()
-					step()
-					wall, cpu = min(wall, time.Since(start)), min(cpu, cpuTime()-spent)
-				}
-				b.ReportMetric(float64(64*b.N)/b.Elapsed().Seconds(), "examples/s")
-				b.ReportMetric(64/wall.Seconds(), "examples/s-best")
-				b.ReportMetric(64/cpu.Seconds(), "examples/s-cpu") // holds on a busy machine
+				team, stop := NewTeam(1), make(chan struct{})
+				var done sync.WaitGroup
+				done.Go(func() { team.Help(stop) })
+				step(b, team)
+				close(stop)
+				done.Wait()
 			})
 		}
 	}
 }
 
-// benchStep is one training step after another, over four batches by turns.
-func benchStep(b *testing.B, input []int, layers []string, arm Arm, d Diagnostics) func() {
-	job := Job{
-		Network: network(b, input, layers...), Arm: arm, Training: sgdTraining(64, 1), Seed: 1,
-		Train: dataset(256, input, 10, 1), Diagnostics: d,
+func measureSteps(b *testing.B, step func()) {
+	for range 4 {
+		step()
 	}
-	e := engineFor[float32](b, &job)
+	// A mean, rounded down: the first step that falls back to wider lanes, wherever it
+	// comes, finds their memory missing.
+	if n := testing.AllocsPerRun(8, step); n != 0 {
+		b.Errorf("%v allocations a step", n)
+	}
+	wall, cpu := time.Hour, time.Hour
+	for b.Loop() {
+		start, spent := time.Now(), cpuTime()
+		step()
+		wall, cpu = min(wall, time.Since(start)), min(cpu, cpuTime()-spent)
+	}
+	b.ReportMetric(float64(64*b.N)/b.Elapsed().Seconds(), "examples/s")
+	b.ReportMetric(64/wall.Seconds(), "examples/s-best")
+	b.ReportMetric(64/cpu.Seconds(), "examples/s-cpu") // of all processors together; holds on a busy machine
+}
+
+// benchJob is a training on 256 examples in batches of 64.
+func benchJob(b *testing.B, input []int, layers []string, arm Arm) Job {
+	return Job{
+		Network: network(b, input, layers...), Arm: arm, Training: sgdTraining(64, 1), Seed: 1,
+		Train: dataset(256, input, 10, 1),
+	}
+}
+
+// benchStep is one training step after another, over four batches by turns.
+func benchStep(b *testing.B, job *Job) func() {
+	e := engineFor[float32](b, job)
 	p, err := job.check()
 	if err == nil {
-		err = e.observe(&job, p)
+		err = e.observe(job, p)
 	}
 	if err != nil {
 		b.Fatal(err)
@@ -129,12 +152,11 @@ func BenchmarkDiagnostics(b *testing.B) {
 	const period = 200
 	for _, net := range benchNets {
 		b.Run(net.name, func(b *testing.B) {
-			arm := storageArm(b, point(b, "bf16"), len(net.layers))
+			plain := benchJob(b, net.input, net.layers, storageArm(b, point(b, "bf16"), len(net.layers)))
+			looked := plain
+			looked.Diagnostics = DefaultDiagnostics
+			steps := [2]func(){benchStep(b, &plain), benchStep(b, &looked)}
 			var spent [2]time.Duration
-			steps := [2]func(){
-				benchStep(b, net.input, net.layers, arm, Diagnostics{}),
-				benchStep(b, net.input, net.layers, arm, DefaultDiagnostics),
-			}
 			cost := 1e9
 			for b.Loop() {
 				spent = [2]time.Duration{}

@@ -96,8 +96,8 @@ func runPlan(ctx context.Context, cmd *cobra.Command, p *plan.Plan, s *store.Sto
 	return err
 }
 
-// announce says before the first run how many there are and about how long they
-// would take if none were stored.
+// announce says before the first run how many there are, about how long they
+// would take if none were stored, and how much memory.
 func announce(ctx context.Context, w io.Writer, p *plan.Plan, workers int) error {
 	rate, err := measureRate(ctx, p)
 	if ctx.Err() != nil {
@@ -109,7 +109,7 @@ func announce(ctx context.Context, w io.Writer, p *plan.Plan, workers int) error
 	if workers == 0 {
 		workers = runtime.GOMAXPROCS(0)
 	}
-	_, err = fmt.Fprintln(w, plan.WorkText(p, plan.ResolveOptions{Rate: rate, Workers: workers}))
+	_, err = fmt.Fprintf(w, "%s\n%s\n", plan.WorkText(p, plan.ResolveOptions{Rate: rate, Workers: workers}), plan.MemoryText(p, workers))
 	return err
 }
 

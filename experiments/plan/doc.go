@@ -82,6 +82,14 @@
 // worse than any that does not, so the fewest diverged runs come first. The test data
 // is not looked at. A pretraining is not tuned, controls train as the baseline does.
 //
+// # Metrics
+//
+// Accuracy, loss and, in a regression, RMSE, of test, validation or training data; of
+// test and validation data also the recall of one class, named by class, and the
+// missed-fault rate: the share of faults, all classes but the first, that raise no alarm
+// where at most false_alarm_rate of the examples of the first class, the sound state,
+// raise one. The threshold is that of the set which is scored, at each evaluation.
+//
 // # Settings
 //
 // The rounding points are those of package trainer: input, forward.weight, ...,

@@ -28,7 +28,7 @@ func ResolveText(p *Plan, o ResolveOptions) string {
 	}
 	writeFacts(&b, p)
 	writeLayers(&b, p)
-	fmt.Fprintf(&b, "\n%s\n", WorkText(p, o))
+	fmt.Fprintf(&b, "\n%s\n%s\n", WorkText(p, o), MemoryText(p, o.Workers))
 	writeGrids(&b, p)
 	for i := range p.Arms {
 		writeArm(&b, p, &p.Arms[i], "arm", o.Full)
@@ -83,7 +83,7 @@ func writeFacts(b *strings.Builder, p *Plan) {
 
 // writeLayers writes the shapes, parameters and lengths of sums of the network.
 func writeLayers(b *strings.Builder, p *Plan) {
-	d := trainer.Describe(p.Network, nil, p.Training, p.Task.sizes())
+	d := trainer.Describe(p.Network, nil, p.Training, p.Task.Sizes())
 	fmt.Fprintln(b, "\nnetwork (sums in terms; weight and bias gradients over a batch)")
 	w := table(b)
 	fmt.Fprintln(w, "  layer\t\tin\tout\tparameters\tforward sum\tinput gradient\tweight gradient\tbias gradient\tmultiply-adds a step")
@@ -204,7 +204,7 @@ func writeArm(b *strings.Builder, p *Plan, a *Arm, what string, full bool) {
 		say(a.atStage(i))
 		fmt.Fprintf(w, "  loss scale\t%s\n", a.Stages[i].LossScale)
 	}
-	if trainer.Describe(p.Network, &a.Arithmetic, a.Training, p.Task.sizes()).Double {
+	if trainer.Describe(p.Network, &a.Arithmetic, a.Training, p.Task.Sizes()).Double {
 		fmt.Fprintf(w, "  memory\ttensors of eight bytes an element: not every value fits binary32\n")
 	}
 	if len(a.Overrides) > 0 {

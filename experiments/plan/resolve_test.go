@@ -26,7 +26,7 @@ func golden(t *testing.T, name, text string) {
 		t.Fatal(err)
 	}
 	if diff := cmp.Diff(strings.Split(string(want), "\n"), strings.Split(text, "\n")); diff != "" {
-		t.Errorf("%s (go test -run Golden -update ./experiments/plan writes it anew):\n%s", name, diff)
+		t.Errorf("%s (go test ./experiments/plan -run Golden -update writes it anew):\n%s", name, diff)
 	}
 }
 

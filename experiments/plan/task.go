@@ -20,8 +20,8 @@ type Task struct {
 	Canonical string // what determines the examples, paths left out
 }
 
-// sizes are the numbers of examples as the trainer wants them.
-func (t *Task) sizes() trainer.Sizes {
+// Sizes are the numbers of examples as the trainer wants them.
+func (t *Task) Sizes() trainer.Sizes {
 	return trainer.Sizes{Train: t.Train, Validation: t.Validation, Test: t.Test}
 }
 

@@ -86,7 +86,7 @@ var sumPhases = []struct {
 func (p *Plan) warnOrders(a *Arm) []string {
 	longest := map[quant.Order]int{} // longest sum that is added in an order
 	var orders []quant.Order
-	d := trainer.Describe(p.Network, nil, a.Training, p.Task.sizes())
+	d := trainer.Describe(p.Network, nil, a.Training, p.Task.Sizes())
 	for i, l := range d.Layers {
 		for _, phase := range sumPhases {
 			order := sumOf(phase.id, &a.Arithmetic.Layers[i]).Order

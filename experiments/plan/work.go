@@ -17,7 +17,7 @@ func (p *Plan) Work() Work {
 	w := Work{Runs: p.Runs()}
 	each := uint64(0)
 	add := func(t trainer.Training, task *Task) {
-		d := trainer.Describe(p.Network, nil, t, task.sizes())
+		d := trainer.Describe(p.Network, nil, t, task.Sizes())
 		each += d.TotalMACs
 		w.LongestSum = max(w.LongestSum, d.LongestSum)
 	}

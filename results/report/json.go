@@ -282,6 +282,10 @@ func epochObjects(es []results.Epoch) []object {
 		o.float("test_loss", e.TestLoss)
 		o.float("test_metric", e.TestMetric)
 		o.float("loss_scale", e.LossScale)
+		training, validation, test := e.RMSE()
+		o.float("training_rmse", training)
+		o.float("validation_rmse", validation)
+		o.float("test_rmse", test)
 		out = append(out, o)
 	}
 	return out

@@ -67,6 +67,10 @@ func TestSheetsReadBack(t *testing.T) {
 				same(t, "training loss", m["training_loss"], e.TrainLoss)
 				same(t, "validation loss", m["validation_loss"], e.ValidationLoss)
 				same(t, "test metric", m["test_metric"], e.TestMetric)
+				training, validation, test := e.RMSE()
+				same(t, "training RMSE", m["training_rmse"], training)
+				same(t, "validation RMSE", m["validation_rmse"], validation)
+				same(t, "test RMSE", m["test_rmse"], test)
 				if m["arm"] != s.Runs[i].Arm {
 					t.Fatalf("epoch %d is of %s", k, m["arm"])
 				}

@@ -22,7 +22,7 @@ var sheetTable = []struct {
 	{"arms", []string{"arm", "name", "baseline", "bits", "score_mean", "score_low", "score_high", "n", "loss_scale", "summary"}, armRows},
 	{"settings", []string{"arm", "layer", "layer_name", "point", "format", "bits", "exponent", "fraction", "rounding", "order", "overflow"}, settingRows},
 	{"runs", []string{"arm", "replicate", "state", "diverged", "diverged_step", "stalled", "score", "key", "digest", "code_version", "host", "started", "wall_seconds"}, runRows},
-	{"epochs", []string{"arm", "replicate", "epoch", "training_loss", "training_metric", "validation_loss", "validation_metric", "test_loss", "test_metric", "ties", "loss_scale", "skipped"}, epochRows},
+	{"epochs", []string{"arm", "replicate", "epoch", "training_loss", "training_metric", "validation_loss", "validation_metric", "test_loss", "test_metric", "ties", "loss_scale", "skipped", "training_rmse", "validation_rmse", "test_rmse"}, epochRows},
 	{"curves", []string{"arm", "epoch", "training_loss_lower_quartile", "training_loss_median", "training_loss_upper_quartile", "n"}, curveRows},
 	{"counters", []string{"arm", "replicate", "layer", "layer_name", "point", "overflow", "underflow", "saturated", "nan"}, counterRows},
 	{"recall", []string{"arm", "class", "mean", "low", "high", "n", "worst_replicate", "worst_right", "worst_of", "worst_low", "worst_high"}, recallRows},
@@ -158,9 +158,11 @@ func epochRows(v *view) (rows [][]string) {
 	for k := range v.Runs {
 		r := &v.Runs[k]
 		for n, e := range r.Epochs {
+			training, validation, test := e.RMSE()
 			rows = append(rows, []string{
 				r.Arm, uintCell(r.Replicate), intCell(n + 1), floatCell(e.TrainLoss), floatCell(e.TrainMetric), floatCell(e.ValidationLoss), floatCell(e.ValidationMetric),
 				floatCell(e.TestLoss), floatCell(e.TestMetric), uintCell(e.Ties), floatCell(e.LossScale), uintCell(e.Skipped),
+				floatCell(training), floatCell(validation), floatCell(test),
 			})
 		}
 	}

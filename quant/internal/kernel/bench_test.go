@@ -65,6 +65,7 @@ var benchModes = []struct {
 	{"stochastic-sum", in(RoundedProduct, fp16, randomSum(fp16, 16, false, false)), fp16},
 	{"stochastic-sum-through-binary32", in(RoundedProduct, fp16, randomSum(fp16, 16, true, false)), fp16},
 	{"exact-product-stochastic-sum", in(ExactProduct, Grid{}, randomSum(fp16, 16, false, false)), fp16},
+	{"exact-product-stochastic-sum-bf16", in(ExactProduct, Grid{}, randomSum(bf16, 16, false, false)), bf16},
 	{"exact-product-stochastic-sum-through-binary32", in(ExactProduct, Grid{}, randomSum(fp16, 16, true, false)), fp16},
 	{"exact-product-stochastic-sum-through-binary32-bf16", in(ExactProduct, Grid{}, randomSum(bf16, 16, true, false)), bf16},
 	{"stochastic-product-and-sum", randomBoth(fp16, 16, false, randomSum(fp16, 16, false, false)), fp16},

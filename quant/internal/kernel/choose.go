@@ -25,12 +25,16 @@ type plans struct {
 	random     *plan // stochastic modes: fused and free of subnormals
 	randomCare *plan
 	wide       *plan
+	truncated  *plan
+	unfused    bool  // where products are exact, a multiply-add is better left apart
+	apart      *plan // the native plan in that case
 }
 
 // block is what is known of a block of terms before it is formed.
 type block struct {
 	a, b  Span
-	grain int // all earlier terms are multiples of 2^grain
+	grain int  // all earlier terms are multiples of 2^grain
+	wide  bool // binary64 lanes are wanted at the end
 }
 
 // bits is the significant bits of a product.
@@ -98,6 +102,9 @@ func (p *plans) chooseNative(b *block) *plan {
 	if p.arithmetic.Product == RoundedProduct && !b.roundsOnce(p.arithmetic.Grid) {
 		return nil
 	}
+	if p.apart != nil && b.exact() {
+		return p.apart
+	}
 	return p.native
 }
 
@@ -120,7 +127,7 @@ func (p *plans) chooseNearest(b *block) *plan {
 			return nil
 		}
 		return p.rounded
-	case p.sum.Through && a.Product == NativeProduct && !b.exact():
+	case p.sum.Through && a.Product == NativeProduct && !b.exact(), p.sum.Through && p.unfused && b.exact():
 		return p.product
 	case p.sum.Through && b.subnormalFree(g):
 		return p.free
@@ -140,7 +147,9 @@ func (p *plans) chooseNearest(b *block) *plan {
 }
 
 // chooseStochastic: truncation toward zero keeps the bits that decide, floor(f 2^r),
-// whatever the operands. The sum after a rounded product is formed to nearest, and
+// whatever the operands; so does truncation to binary32 where these bits, and that of
+// the half, are among the spare ones, and no sum below the least normal value has any
+// below the least place. The sum after a rounded product is formed to nearest, and
 // so must be exact: it is below the limit that is watched, a multiple of 2^grain.
 func (p *plans) chooseStochastic(b *block) *plan {
 	a, g := p.arithmetic, p.sum.Grid
@@ -160,6 +169,9 @@ func (p *plans) chooseStochastic(b *block) *plan {
 		return p.randomCare
 	case a.Product == RoundedProduct:
 		return p.watched(b)
+	}
+	if p.truncated != nil && !b.wide && b.subnormalFree(g) {
+		return p.truncated
 	}
 	return p.wide // random products too: they are exact in binary64 before rounding
 }

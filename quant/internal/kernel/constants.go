@@ -75,6 +75,20 @@ func (c *Constants) carry(l lane, s Sum, scale int) {
 	}
 }
 
+// cut sets the constants of sums cut to binary32 and rounded stochastically by a carry:
+// random bits below the last place, the half of centred thresholds below them.
+func (c *Constants) cut(s Sum) {
+	spare := single.fraction - s.Grid.Fraction
+	c.Keep = single.word(^uint64(0) << spare)
+	c.Limit = single.bits(s.Grid.Max)
+	c.RandomShift = single.word(uint64(32 - spare))
+	c.RandomMask = single.word((1<<s.Bits - 1) << (spare - s.Bits))
+	c.RandomHalf = single.word(0)
+	if s.Centred {
+		c.RandomHalf = single.word(1 << (spare - s.Bits - 1))
+	}
+}
+
 // carryTerms sets the constants of products rounded stochastically in binary64 lanes.
 func (c *Constants) carryTerms(a *Arithmetic) {
 	var t Constants

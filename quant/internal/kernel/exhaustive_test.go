@@ -33,19 +33,19 @@ type sequence struct {
 var sequences = []sequence{
 	{"product", func(g Grid) *plan {
 		a := in(RoundedProduct, g, Sum{})
-		return newPlans(&a, a.Sum).native
+		return newPlans(Sets[0], &a, a.Sum).native
 	}},
 	{"sum with subnormals", func(g Grid) *plan {
 		a := in(ExactProduct, Grid{}, throughSum(g))
-		return newPlans(&a, a.Sum).care
+		return newPlans(Sets[0], &a, a.Sum).care
 	}},
 	{"sum", func(g Grid) *plan {
 		a := in(ExactProduct, Grid{}, throughSum(g))
-		return newPlans(&a, a.Sum).free
+		return newPlans(Sets[0], &a, a.Sum).free
 	}},
 	{"exact sum", func(g Grid) *plan {
 		a := in(ExactProduct, Grid{}, nearestSum(g))
-		return newPlans(&a, a.Sum).odd
+		return newPlans(Sets[0], &a, a.Sum).odd
 	}},
 }
 

@@ -19,8 +19,8 @@ func planned() (singles, doubles []*plan) {
 		}
 	}
 	for i := range arithmetics {
-		p := newPlans(&arithmetics[i], arithmetics[i].Sum)
-		for _, q := range []*plan{p.native, p.rounded, p.free, p.care, p.product, p.odd, p.fused, p.fusedFree, p.random, p.randomCare, p.wide} {
+		p := newPlans(Sets[0], &arithmetics[i], arithmetics[i].Sum)
+		for _, q := range []*plan{p.native, p.rounded, p.free, p.care, p.product, p.odd, p.fused, p.fusedFree, p.random, p.randomCare, p.wide, p.truncated} {
 			add(q)
 		}
 	}

@@ -21,6 +21,7 @@ type loops struct {
 	addNearest func(total, chunk []float32, c *Constants)
 	addOdd     func(total, chunk []float32, c *Constants)
 	philox     func(t *philoxArgs)
+	fetch      func(x []float32)
 
 	// See slices.go.
 	philoxStream      func(t *philoxArgs)
@@ -149,6 +150,14 @@ func (l *loops) addedOdd(total, chunk []float32, c *Constants) {
 	for i, v := range chunk {
 		x := plusOdd32(float32(total[i]*scale), float32(v*scale))
 		total[i] = float32(near32(x, least, grow) * unscale)
+	}
+}
+
+// fetched asks for cache lines that are used soon: drawing random words takes as long as
+// memory does.
+func (l *loops) fetched(x []float32) {
+	if whole := len(x) &^ (wholeLanes - 1); l.fetch != nil && whole > 0 {
+		l.fetch(x[:whole])
 	}
 }
 

@@ -83,6 +83,11 @@ func scale64AVX2(y []float64, alpha float64, c *Constants, t *[2]uint64)
 //go:noescape
 func add64AVX2(x []float64, b []float64, factor float64, c *Constants, t *[2]uint64)
 
+// fetchAVX2 asks for the cache lines of x, which stay as they are.
+//
+//go:noescape
+func fetchAVX2(x []float32)
+
 // addNearestAVX2 is total = R(binary32(total + chunk)), R nearest-even to the grid of c's sums.
 //
 //go:noescape

@@ -56,16 +56,16 @@ block:
 
 columns:
 	VBROADCASTSD 80(AX), Y3
+	VBROADCASTSD 88(AX), Y4
 	MOVQ         40(AX), R8
 	ADDQ         DI, R8
 	VMOVQ        R8, X2
-	VPBROADCASTQ X2, Y4
-	VPADDQ       philoxAVX2Constants<>+192(SB), Y4, Y4
-	VBROADCASTSD 56(AX), Y5
-	VBROADCASTSD 64(AX), Y6
+	VPBROADCASTQ X2, Y5
+	VPADDQ       philoxAVX2Constants<>+192(SB), Y5, Y5
+	VBROADCASTSD 56(AX), Y6
+	VBROADCASTSD 64(AX), Y7
 	VMOVQ        SI, X2
-	VPBROADCASTQ X2, Y7
-	VBROADCASTSD 88(AX), Y8
+	VPBROADCASTQ X2, Y8
 	MOVQ         40(AX), R8
 	ADDQ         DI, R8
 	ADDQ         $0x01, R8
@@ -76,200 +76,200 @@ columns:
 	VBROADCASTSD 64(AX), Y11
 	VMOVQ        SI, X2
 	VPBROADCASTQ X2, Y2
-	VPMULUDQ     Y4, Y0, Y4
-	VPMULUDQ     Y6, Y1, Y6
-	VPSRLQ       $0x20, Y4, Y12
-	VPSRLQ       $0x20, Y6, Y13
-	VPXOR        Y5, Y13, Y13
+	VPMULUDQ     Y5, Y0, Y5
+	VPMULUDQ     Y7, Y1, Y7
+	VPSRLQ       $0x20, Y5, Y12
+	VPSRLQ       $0x20, Y7, Y13
+	VPXOR        Y6, Y13, Y13
 	VPXOR        Y3, Y13, Y13
-	VPXOR        Y7, Y12, Y12
 	VPXOR        Y8, Y12, Y12
-	VPMULUDQ     Y9, Y0, Y5
-	VPMULUDQ     Y11, Y1, Y7
-	VPSRLQ       $0x20, Y5, Y9
-	VPSRLQ       $0x20, Y7, Y11
+	VPXOR        Y4, Y12, Y12
+	VPMULUDQ     Y9, Y0, Y6
+	VPMULUDQ     Y11, Y1, Y8
+	VPSRLQ       $0x20, Y6, Y9
+	VPSRLQ       $0x20, Y8, Y11
 	VPXOR        Y10, Y11, Y11
 	VPXOR        Y3, Y11, Y11
 	VPXOR        Y2, Y9, Y9
-	VPXOR        Y8, Y9, Y9
+	VPXOR        Y4, Y9, Y9
 	VPADDQ       philoxAVX2Constants<>+64(SB), Y3, Y3
-	VPADDQ       philoxAVX2Constants<>+128(SB), Y8, Y8
+	VPADDQ       philoxAVX2Constants<>+128(SB), Y4, Y4
 	VPMULUDQ     Y13, Y0, Y2
 	VPMULUDQ     Y12, Y1, Y10
 	VPSRLQ       $0x20, Y2, Y12
 	VPSRLQ       $0x20, Y10, Y13
-	VPXOR        Y6, Y13, Y13
+	VPXOR        Y7, Y13, Y13
 	VPXOR        Y3, Y13, Y13
+	VPXOR        Y5, Y12, Y12
 	VPXOR        Y4, Y12, Y12
-	VPXOR        Y8, Y12, Y12
-	VPMULUDQ     Y11, Y0, Y4
-	VPMULUDQ     Y9, Y1, Y6
-	VPSRLQ       $0x20, Y4, Y9
-	VPSRLQ       $0x20, Y6, Y11
-	VPXOR        Y7, Y11, Y11
+	VPMULUDQ     Y11, Y0, Y5
+	VPMULUDQ     Y9, Y1, Y7
+	VPSRLQ       $0x20, Y5, Y9
+	VPSRLQ       $0x20, Y7, Y11
+	VPXOR        Y8, Y11, Y11
 	VPXOR        Y3, Y11, Y11
-	VPXOR        Y5, Y9, Y9
-	VPXOR        Y8, Y9, Y9
+	VPXOR        Y6, Y9, Y9
+	VPXOR        Y4, Y9, Y9
 	VPADDQ       philoxAVX2Constants<>+64(SB), Y3, Y3
-	VPADDQ       philoxAVX2Constants<>+128(SB), Y8, Y8
-	VPMULUDQ     Y13, Y0, Y5
-	VPMULUDQ     Y12, Y1, Y7
-	VPSRLQ       $0x20, Y5, Y12
-	VPSRLQ       $0x20, Y7, Y13
+	VPADDQ       philoxAVX2Constants<>+128(SB), Y4, Y4
+	VPMULUDQ     Y13, Y0, Y6
+	VPMULUDQ     Y12, Y1, Y8
+	VPSRLQ       $0x20, Y6, Y12
+	VPSRLQ       $0x20, Y8, Y13
 	VPXOR        Y10, Y13, Y13
 	VPXOR        Y3, Y13, Y13
 	VPXOR        Y2, Y12, Y12
-	VPXOR        Y8, Y12, Y12
+	VPXOR        Y4, Y12, Y12
 	VPMULUDQ     Y11, Y0, Y2
 	VPMULUDQ     Y9, Y1, Y9
 	VPSRLQ       $0x20, Y2, Y10
 	VPSRLQ       $0x20, Y9, Y11
-	VPXOR        Y6, Y11, Y11
-	VPXOR        Y3, Y11, Y11
-	VPXOR        Y4, Y10, Y10
-	VPXOR        Y8, Y10, Y10
-	VPADDQ       philoxAVX2Constants<>+64(SB), Y3, Y3
-	VPADDQ       philoxAVX2Constants<>+128(SB), Y8, Y8
-	VPMULUDQ     Y13, Y0, Y4
-	VPMULUDQ     Y12, Y1, Y6
-	VPSRLQ       $0x20, Y4, Y12
-	VPSRLQ       $0x20, Y6, Y13
-	VPXOR        Y7, Y13, Y13
-	VPXOR        Y3, Y13, Y13
-	VPXOR        Y5, Y12, Y12
-	VPXOR        Y8, Y12, Y12
-	VPMULUDQ     Y11, Y0, Y5
-	VPMULUDQ     Y10, Y1, Y7
-	VPSRLQ       $0x20, Y5, Y10
-	VPSRLQ       $0x20, Y7, Y11
-	VPXOR        Y9, Y11, Y11
-	VPXOR        Y3, Y11, Y11
-	VPXOR        Y2, Y10, Y10
-	VPXOR        Y8, Y10, Y10
-	VPADDQ       philoxAVX2Constants<>+64(SB), Y3, Y3
-	VPADDQ       philoxAVX2Constants<>+128(SB), Y8, Y8
-	VPMULUDQ     Y13, Y0, Y2
-	VPMULUDQ     Y12, Y1, Y9
-	VPSRLQ       $0x20, Y2, Y12
-	VPSRLQ       $0x20, Y9, Y13
-	VPXOR        Y6, Y13, Y13
-	VPXOR        Y3, Y13, Y13
-	VPXOR        Y4, Y12, Y12
-	VPXOR        Y8, Y12, Y12
-	VPMULUDQ     Y11, Y0, Y4
-	VPMULUDQ     Y10, Y1, Y6
-	VPSRLQ       $0x20, Y4, Y10
-	VPSRLQ       $0x20, Y6, Y11
 	VPXOR        Y7, Y11, Y11
 	VPXOR        Y3, Y11, Y11
 	VPXOR        Y5, Y10, Y10
-	VPXOR        Y8, Y10, Y10
+	VPXOR        Y4, Y10, Y10
 	VPADDQ       philoxAVX2Constants<>+64(SB), Y3, Y3
-	VPADDQ       philoxAVX2Constants<>+128(SB), Y8, Y8
+	VPADDQ       philoxAVX2Constants<>+128(SB), Y4, Y4
 	VPMULUDQ     Y13, Y0, Y5
 	VPMULUDQ     Y12, Y1, Y7
 	VPSRLQ       $0x20, Y5, Y12
 	VPSRLQ       $0x20, Y7, Y13
-	VPXOR        Y9, Y13, Y13
+	VPXOR        Y8, Y13, Y13
 	VPXOR        Y3, Y13, Y13
-	VPXOR        Y2, Y12, Y12
-	VPXOR        Y8, Y12, Y12
-	VPMULUDQ     Y11, Y0, Y2
-	VPMULUDQ     Y10, Y1, Y9
-	VPSRLQ       $0x20, Y2, Y10
-	VPSRLQ       $0x20, Y9, Y11
-	VPXOR        Y6, Y11, Y11
-	VPXOR        Y3, Y11, Y11
-	VPXOR        Y4, Y10, Y10
-	VPXOR        Y8, Y10, Y10
-	VPADDQ       philoxAVX2Constants<>+64(SB), Y3, Y3
-	VPADDQ       philoxAVX2Constants<>+128(SB), Y8, Y8
-	VPMULUDQ     Y13, Y0, Y4
-	VPMULUDQ     Y12, Y1, Y6
-	VPSRLQ       $0x20, Y4, Y12
-	VPSRLQ       $0x20, Y6, Y13
-	VPXOR        Y7, Y13, Y13
-	VPXOR        Y3, Y13, Y13
-	VPXOR        Y5, Y12, Y12
-	VPXOR        Y8, Y12, Y12
-	VPMULUDQ     Y11, Y0, Y5
-	VPMULUDQ     Y10, Y1, Y7
-	VPSRLQ       $0x20, Y5, Y10
-	VPSRLQ       $0x20, Y7, Y11
+	VPXOR        Y6, Y12, Y12
+	VPXOR        Y4, Y12, Y12
+	VPMULUDQ     Y11, Y0, Y6
+	VPMULUDQ     Y10, Y1, Y8
+	VPSRLQ       $0x20, Y6, Y10
+	VPSRLQ       $0x20, Y8, Y11
 	VPXOR        Y9, Y11, Y11
 	VPXOR        Y3, Y11, Y11
 	VPXOR        Y2, Y10, Y10
-	VPXOR        Y8, Y10, Y10
+	VPXOR        Y4, Y10, Y10
 	VPADDQ       philoxAVX2Constants<>+64(SB), Y3, Y3
-	VPADDQ       philoxAVX2Constants<>+128(SB), Y8, Y8
+	VPADDQ       philoxAVX2Constants<>+128(SB), Y4, Y4
 	VPMULUDQ     Y13, Y0, Y2
 	VPMULUDQ     Y12, Y1, Y9
 	VPSRLQ       $0x20, Y2, Y12
 	VPSRLQ       $0x20, Y9, Y13
-	VPXOR        Y6, Y13, Y13
-	VPXOR        Y3, Y13, Y13
-	VPXOR        Y4, Y12, Y12
-	VPXOR        Y8, Y12, Y12
-	VPMULUDQ     Y11, Y0, Y4
-	VPMULUDQ     Y10, Y1, Y6
-	VPSRLQ       $0x20, Y4, Y10
-	VPSRLQ       $0x20, Y6, Y11
-	VPXOR        Y7, Y11, Y11
-	VPXOR        Y3, Y11, Y11
-	VPXOR        Y5, Y10, Y10
-	VPXOR        Y8, Y10, Y10
-	VPADDQ       philoxAVX2Constants<>+64(SB), Y3, Y3
-	VPADDQ       philoxAVX2Constants<>+128(SB), Y8, Y8
-	VPMULUDQ     Y13, Y0, Y5
-	VPMULUDQ     Y12, Y1, Y7
-	VPSRLQ       $0x20, Y5, Y12
-	VPSRLQ       $0x20, Y7, Y13
-	VPXOR        Y9, Y13, Y13
-	VPXOR        Y3, Y13, Y13
-	VPXOR        Y2, Y12, Y12
-	VPXOR        Y8, Y12, Y12
-	VPMULUDQ     Y11, Y0, Y2
-	VPMULUDQ     Y10, Y1, Y9
-	VPSRLQ       $0x20, Y2, Y10
-	VPSRLQ       $0x20, Y9, Y11
-	VPXOR        Y6, Y11, Y11
-	VPXOR        Y3, Y11, Y11
-	VPXOR        Y4, Y10, Y10
-	VPXOR        Y8, Y10, Y10
-	VPADDQ       philoxAVX2Constants<>+64(SB), Y3, Y3
-	VPADDQ       philoxAVX2Constants<>+128(SB), Y8, Y8
-	VPMULUDQ     Y13, Y0, Y4
-	VPMULUDQ     Y12, Y1, Y6
-	VPSRLQ       $0x20, Y4, Y12
-	VPSRLQ       $0x20, Y6, Y13
 	VPXOR        Y7, Y13, Y13
 	VPXOR        Y3, Y13, Y13
 	VPXOR        Y5, Y12, Y12
-	VPXOR        Y8, Y12, Y12
+	VPXOR        Y4, Y12, Y12
 	VPMULUDQ     Y11, Y0, Y5
 	VPMULUDQ     Y10, Y1, Y7
 	VPSRLQ       $0x20, Y5, Y10
 	VPSRLQ       $0x20, Y7, Y11
+	VPXOR        Y8, Y11, Y11
+	VPXOR        Y3, Y11, Y11
+	VPXOR        Y6, Y10, Y10
+	VPXOR        Y4, Y10, Y10
+	VPADDQ       philoxAVX2Constants<>+64(SB), Y3, Y3
+	VPADDQ       philoxAVX2Constants<>+128(SB), Y4, Y4
+	VPMULUDQ     Y13, Y0, Y6
+	VPMULUDQ     Y12, Y1, Y8
+	VPSRLQ       $0x20, Y6, Y12
+	VPSRLQ       $0x20, Y8, Y13
+	VPXOR        Y9, Y13, Y13
+	VPXOR        Y3, Y13, Y13
+	VPXOR        Y2, Y12, Y12
+	VPXOR        Y4, Y12, Y12
+	VPMULUDQ     Y11, Y0, Y2
+	VPMULUDQ     Y10, Y1, Y9
+	VPSRLQ       $0x20, Y2, Y10
+	VPSRLQ       $0x20, Y9, Y11
+	VPXOR        Y7, Y11, Y11
+	VPXOR        Y3, Y11, Y11
+	VPXOR        Y5, Y10, Y10
+	VPXOR        Y4, Y10, Y10
+	VPADDQ       philoxAVX2Constants<>+64(SB), Y3, Y3
+	VPADDQ       philoxAVX2Constants<>+128(SB), Y4, Y4
+	VPMULUDQ     Y13, Y0, Y5
+	VPMULUDQ     Y12, Y1, Y7
+	VPSRLQ       $0x20, Y5, Y12
+	VPSRLQ       $0x20, Y7, Y13
+	VPXOR        Y8, Y13, Y13
+	VPXOR        Y3, Y13, Y13
+	VPXOR        Y6, Y12, Y12
+	VPXOR        Y4, Y12, Y12
+	VPMULUDQ     Y11, Y0, Y6
+	VPMULUDQ     Y10, Y1, Y8
+	VPSRLQ       $0x20, Y6, Y10
+	VPSRLQ       $0x20, Y8, Y11
 	VPXOR        Y9, Y11, Y11
 	VPXOR        Y3, Y11, Y11
 	VPXOR        Y2, Y10, Y10
-	VPXOR        Y8, Y10, Y10
+	VPXOR        Y4, Y10, Y10
+	VPADDQ       philoxAVX2Constants<>+64(SB), Y3, Y3
+	VPADDQ       philoxAVX2Constants<>+128(SB), Y4, Y4
+	VPMULUDQ     Y13, Y0, Y2
+	VPMULUDQ     Y12, Y1, Y9
+	VPSRLQ       $0x20, Y2, Y12
+	VPSRLQ       $0x20, Y9, Y13
+	VPXOR        Y7, Y13, Y13
+	VPXOR        Y3, Y13, Y13
+	VPXOR        Y5, Y12, Y12
+	VPXOR        Y4, Y12, Y12
+	VPMULUDQ     Y11, Y0, Y5
+	VPMULUDQ     Y10, Y1, Y7
+	VPSRLQ       $0x20, Y5, Y10
+	VPSRLQ       $0x20, Y7, Y11
+	VPXOR        Y8, Y11, Y11
+	VPXOR        Y3, Y11, Y11
+	VPXOR        Y6, Y10, Y10
+	VPXOR        Y4, Y10, Y10
+	VPADDQ       philoxAVX2Constants<>+64(SB), Y3, Y3
+	VPADDQ       philoxAVX2Constants<>+128(SB), Y4, Y4
+	VPMULUDQ     Y13, Y0, Y6
+	VPMULUDQ     Y12, Y1, Y8
+	VPSRLQ       $0x20, Y6, Y12
+	VPSRLQ       $0x20, Y8, Y13
+	VPXOR        Y9, Y13, Y13
+	VPXOR        Y3, Y13, Y13
+	VPXOR        Y2, Y12, Y12
+	VPXOR        Y4, Y12, Y12
+	VPMULUDQ     Y11, Y0, Y2
+	VPMULUDQ     Y10, Y1, Y9
+	VPSRLQ       $0x20, Y2, Y10
+	VPSRLQ       $0x20, Y9, Y11
+	VPXOR        Y7, Y11, Y11
+	VPXOR        Y3, Y11, Y11
+	VPXOR        Y5, Y10, Y10
+	VPXOR        Y4, Y10, Y10
+	VPADDQ       philoxAVX2Constants<>+64(SB), Y3, Y3
+	VPADDQ       philoxAVX2Constants<>+128(SB), Y4, Y4
+	VPMULUDQ     Y13, Y0, Y5
+	VPMULUDQ     Y12, Y1, Y7
+	VPSRLQ       $0x20, Y5, Y12
+	VPSRLQ       $0x20, Y7, Y13
+	VPXOR        Y8, Y13, Y13
+	VPXOR        Y3, Y13, Y13
+	VPXOR        Y6, Y12, Y12
+	VPXOR        Y4, Y12, Y12
+	VPMULUDQ     Y11, Y0, Y6
+	VPMULUDQ     Y10, Y1, Y8
+	VPSRLQ       $0x20, Y6, Y10
+	VPSRLQ       $0x20, Y8, Y11
+	VPXOR        Y9, Y11, Y11
+	VPXOR        Y3, Y11, Y11
+	VPXOR        Y2, Y10, Y10
+	VPXOR        Y4, Y10, Y10
 	LEAQ         (CX)(DI*4), R8
 	VPSLLQ       $0x20, Y11, Y11
 	VPBLENDD     $0xaa, Y11, Y13, Y13
 	VMOVUPD      Y13, (R8)
 	LEAQ         (R8)(BX*4), R8
-	VPSLLQ       $0x20, Y7, Y7
-	VPBLENDD     $0xaa, Y7, Y6, Y6
-	VMOVUPD      Y6, (R8)
+	VPSLLQ       $0x20, Y8, Y8
+	VPBLENDD     $0xaa, Y8, Y7, Y7
+	VMOVUPD      Y7, (R8)
 	LEAQ         (R8)(BX*4), R8
 	VPSLLQ       $0x20, Y10, Y10
 	VPBLENDD     $0xaa, Y10, Y12, Y12
 	VMOVUPD      Y12, (R8)
 	LEAQ         (R8)(BX*4), R8
-	VPSLLQ       $0x20, Y5, Y5
-	VPBLENDD     $0xaa, Y5, Y4, Y4
-	VMOVUPD      Y4, (R8)
+	VPSLLQ       $0x20, Y6, Y6
+	VPBLENDD     $0xaa, Y6, Y5, Y5
+	VMOVUPD      Y5, (R8)
 	MOVQ         BX, R8
 	SUBQ         $0x08, R8
 	CMPQ         DI, R8
@@ -335,16 +335,16 @@ TEXT ·philoxStreamAVX2(SB), $0-8
 
 counters:
 	VBROADCASTSD 80(AX), Y3
+	VBROADCASTSD 88(AX), Y4
 	MOVQ         40(AX), DI
 	ADDQ         SI, DI
 	VMOVQ        DI, X2
-	VPBROADCASTQ X2, Y4
-	VPADDQ       philoxStreamAVX2Constants<>+192(SB), Y4, Y4
-	VBROADCASTSD 56(AX), Y5
-	VBROADCASTSD 64(AX), Y6
+	VPBROADCASTQ X2, Y5
+	VPADDQ       philoxStreamAVX2Constants<>+192(SB), Y5, Y5
+	VBROADCASTSD 56(AX), Y6
+	VBROADCASTSD 64(AX), Y7
 	VMOVQ        BX, X2
-	VPBROADCASTQ X2, Y7
-	VBROADCASTSD 88(AX), Y8
+	VPBROADCASTQ X2, Y8
 	MOVQ         40(AX), DI
 	ADDQ         SI, DI
 	ADDQ         $0x04, DI
@@ -355,198 +355,198 @@ counters:
 	VBROADCASTSD 64(AX), Y11
 	VMOVQ        BX, X2
 	VPBROADCASTQ X2, Y2
-	VPMULUDQ     Y4, Y0, Y4
-	VPMULUDQ     Y6, Y1, Y6
-	VPSRLQ       $0x20, Y4, Y12
-	VPSRLQ       $0x20, Y6, Y13
-	VPXOR        Y5, Y13, Y13
+	VPMULUDQ     Y5, Y0, Y5
+	VPMULUDQ     Y7, Y1, Y7
+	VPSRLQ       $0x20, Y5, Y12
+	VPSRLQ       $0x20, Y7, Y13
+	VPXOR        Y6, Y13, Y13
 	VPXOR        Y3, Y13, Y13
-	VPXOR        Y7, Y12, Y12
 	VPXOR        Y8, Y12, Y12
-	VPMULUDQ     Y9, Y0, Y5
-	VPMULUDQ     Y11, Y1, Y7
-	VPSRLQ       $0x20, Y5, Y9
-	VPSRLQ       $0x20, Y7, Y11
+	VPXOR        Y4, Y12, Y12
+	VPMULUDQ     Y9, Y0, Y6
+	VPMULUDQ     Y11, Y1, Y8
+	VPSRLQ       $0x20, Y6, Y9
+	VPSRLQ       $0x20, Y8, Y11
 	VPXOR        Y10, Y11, Y11
 	VPXOR        Y3, Y11, Y11
 	VPXOR        Y2, Y9, Y9
-	VPXOR        Y8, Y9, Y9
+	VPXOR        Y4, Y9, Y9
 	VPADDQ       philoxStreamAVX2Constants<>+64(SB), Y3, Y3
-	VPADDQ       philoxStreamAVX2Constants<>+128(SB), Y8, Y8
+	VPADDQ       philoxStreamAVX2Constants<>+128(SB), Y4, Y4
 	VPMULUDQ     Y13, Y0, Y2
 	VPMULUDQ     Y12, Y1, Y10
 	VPSRLQ       $0x20, Y2, Y12
 	VPSRLQ       $0x20, Y10, Y13
-	VPXOR        Y6, Y13, Y13
+	VPXOR        Y7, Y13, Y13
 	VPXOR        Y3, Y13, Y13
+	VPXOR        Y5, Y12, Y12
 	VPXOR        Y4, Y12, Y12
-	VPXOR        Y8, Y12, Y12
-	VPMULUDQ     Y11, Y0, Y4
-	VPMULUDQ     Y9, Y1, Y6
-	VPSRLQ       $0x20, Y4, Y9
-	VPSRLQ       $0x20, Y6, Y11
-	VPXOR        Y7, Y11, Y11
+	VPMULUDQ     Y11, Y0, Y5
+	VPMULUDQ     Y9, Y1, Y7
+	VPSRLQ       $0x20, Y5, Y9
+	VPSRLQ       $0x20, Y7, Y11
+	VPXOR        Y8, Y11, Y11
 	VPXOR        Y3, Y11, Y11
-	VPXOR        Y5, Y9, Y9
-	VPXOR        Y8, Y9, Y9
+	VPXOR        Y6, Y9, Y9
+	VPXOR        Y4, Y9, Y9
 	VPADDQ       philoxStreamAVX2Constants<>+64(SB), Y3, Y3
-	VPADDQ       philoxStreamAVX2Constants<>+128(SB), Y8, Y8
-	VPMULUDQ     Y13, Y0, Y5
-	VPMULUDQ     Y12, Y1, Y7
-	VPSRLQ       $0x20, Y5, Y12
-	VPSRLQ       $0x20, Y7, Y13
+	VPADDQ       philoxStreamAVX2Constants<>+128(SB), Y4, Y4
+	VPMULUDQ     Y13, Y0, Y6
+	VPMULUDQ     Y12, Y1, Y8
+	VPSRLQ       $0x20, Y6, Y12
+	VPSRLQ       $0x20, Y8, Y13
 	VPXOR        Y10, Y13, Y13
 	VPXOR        Y3, Y13, Y13
 	VPXOR        Y2, Y12, Y12
-	VPXOR        Y8, Y12, Y12
+	VPXOR        Y4, Y12, Y12
 	VPMULUDQ     Y11, Y0, Y2
 	VPMULUDQ     Y9, Y1, Y9
 	VPSRLQ       $0x20, Y2, Y10
 	VPSRLQ       $0x20, Y9, Y11
-	VPXOR        Y6, Y11, Y11
-	VPXOR        Y3, Y11, Y11
-	VPXOR        Y4, Y10, Y10
-	VPXOR        Y8, Y10, Y10
-	VPADDQ       philoxStreamAVX2Constants<>+64(SB), Y3, Y3
-	VPADDQ       philoxStreamAVX2Constants<>+128(SB), Y8, Y8
-	VPMULUDQ     Y13, Y0, Y4
-	VPMULUDQ     Y12, Y1, Y6
-	VPSRLQ       $0x20, Y4, Y12
-	VPSRLQ       $0x20, Y6, Y13
-	VPXOR        Y7, Y13, Y13
-	VPXOR        Y3, Y13, Y13
-	VPXOR        Y5, Y12, Y12
-	VPXOR        Y8, Y12, Y12
-	VPMULUDQ     Y11, Y0, Y5
-	VPMULUDQ     Y10, Y1, Y7
-	VPSRLQ       $0x20, Y5, Y10
-	VPSRLQ       $0x20, Y7, Y11
-	VPXOR        Y9, Y11, Y11
-	VPXOR        Y3, Y11, Y11
-	VPXOR        Y2, Y10, Y10
-	VPXOR        Y8, Y10, Y10
-	VPADDQ       philoxStreamAVX2Constants<>+64(SB), Y3, Y3
-	VPADDQ       philoxStreamAVX2Constants<>+128(SB), Y8, Y8
-	VPMULUDQ     Y13, Y0, Y2
-	VPMULUDQ     Y12, Y1, Y9
-	VPSRLQ       $0x20, Y2, Y12
-	VPSRLQ       $0x20, Y9, Y13
-	VPXOR        Y6, Y13, Y13
-	VPXOR        Y3, Y13, Y13
-	VPXOR        Y4, Y12, Y12
-	VPXOR        Y8, Y12, Y12
-	VPMULUDQ     Y11, Y0, Y4
-	VPMULUDQ     Y10, Y1, Y6
-	VPSRLQ       $0x20, Y4, Y10
-	VPSRLQ       $0x20, Y6, Y11
 	VPXOR        Y7, Y11, Y11
 	VPXOR        Y3, Y11, Y11
 	VPXOR        Y5, Y10, Y10
-	VPXOR        Y8, Y10, Y10
+	VPXOR        Y4, Y10, Y10
 	VPADDQ       philoxStreamAVX2Constants<>+64(SB), Y3, Y3
-	VPADDQ       philoxStreamAVX2Constants<>+128(SB), Y8, Y8
+	VPADDQ       philoxStreamAVX2Constants<>+128(SB), Y4, Y4
 	VPMULUDQ     Y13, Y0, Y5
 	VPMULUDQ     Y12, Y1, Y7
 	VPSRLQ       $0x20, Y5, Y12
 	VPSRLQ       $0x20, Y7, Y13
-	VPXOR        Y9, Y13, Y13
+	VPXOR        Y8, Y13, Y13
 	VPXOR        Y3, Y13, Y13
-	VPXOR        Y2, Y12, Y12
-	VPXOR        Y8, Y12, Y12
-	VPMULUDQ     Y11, Y0, Y2
-	VPMULUDQ     Y10, Y1, Y9
-	VPSRLQ       $0x20, Y2, Y10
-	VPSRLQ       $0x20, Y9, Y11
-	VPXOR        Y6, Y11, Y11
-	VPXOR        Y3, Y11, Y11
-	VPXOR        Y4, Y10, Y10
-	VPXOR        Y8, Y10, Y10
-	VPADDQ       philoxStreamAVX2Constants<>+64(SB), Y3, Y3
-	VPADDQ       philoxStreamAVX2Constants<>+128(SB), Y8, Y8
-	VPMULUDQ     Y13, Y0, Y4
-	VPMULUDQ     Y12, Y1, Y6
-	VPSRLQ       $0x20, Y4, Y12
-	VPSRLQ       $0x20, Y6, Y13
-	VPXOR        Y7, Y13, Y13
-	VPXOR        Y3, Y13, Y13
-	VPXOR        Y5, Y12, Y12
-	VPXOR        Y8, Y12, Y12
-	VPMULUDQ     Y11, Y0, Y5
-	VPMULUDQ     Y10, Y1, Y7
-	VPSRLQ       $0x20, Y5, Y10
-	VPSRLQ       $0x20, Y7, Y11
+	VPXOR        Y6, Y12, Y12
+	VPXOR        Y4, Y12, Y12
+	VPMULUDQ     Y11, Y0, Y6
+	VPMULUDQ     Y10, Y1, Y8
+	VPSRLQ       $0x20, Y6, Y10
+	VPSRLQ       $0x20, Y8, Y11
 	VPXOR        Y9, Y11, Y11
 	VPXOR        Y3, Y11, Y11
 	VPXOR        Y2, Y10, Y10
-	VPXOR        Y8, Y10, Y10
+	VPXOR        Y4, Y10, Y10
 	VPADDQ       philoxStreamAVX2Constants<>+64(SB), Y3, Y3
-	VPADDQ       philoxStreamAVX2Constants<>+128(SB), Y8, Y8
+	VPADDQ       philoxStreamAVX2Constants<>+128(SB), Y4, Y4
 	VPMULUDQ     Y13, Y0, Y2
 	VPMULUDQ     Y12, Y1, Y9
 	VPSRLQ       $0x20, Y2, Y12
 	VPSRLQ       $0x20, Y9, Y13
-	VPXOR        Y6, Y13, Y13
-	VPXOR        Y3, Y13, Y13
-	VPXOR        Y4, Y12, Y12
-	VPXOR        Y8, Y12, Y12
-	VPMULUDQ     Y11, Y0, Y4
-	VPMULUDQ     Y10, Y1, Y6
-	VPSRLQ       $0x20, Y4, Y10
-	VPSRLQ       $0x20, Y6, Y11
-	VPXOR        Y7, Y11, Y11
-	VPXOR        Y3, Y11, Y11
-	VPXOR        Y5, Y10, Y10
-	VPXOR        Y8, Y10, Y10
-	VPADDQ       philoxStreamAVX2Constants<>+64(SB), Y3, Y3
-	VPADDQ       philoxStreamAVX2Constants<>+128(SB), Y8, Y8
-	VPMULUDQ     Y13, Y0, Y5
-	VPMULUDQ     Y12, Y1, Y7
-	VPSRLQ       $0x20, Y5, Y12
-	VPSRLQ       $0x20, Y7, Y13
-	VPXOR        Y9, Y13, Y13
-	VPXOR        Y3, Y13, Y13
-	VPXOR        Y2, Y12, Y12
-	VPXOR        Y8, Y12, Y12
-	VPMULUDQ     Y11, Y0, Y2
-	VPMULUDQ     Y10, Y1, Y9
-	VPSRLQ       $0x20, Y2, Y10
-	VPSRLQ       $0x20, Y9, Y11
-	VPXOR        Y6, Y11, Y11
-	VPXOR        Y3, Y11, Y11
-	VPXOR        Y4, Y10, Y10
-	VPXOR        Y8, Y10, Y10
-	VPADDQ       philoxStreamAVX2Constants<>+64(SB), Y3, Y3
-	VPADDQ       philoxStreamAVX2Constants<>+128(SB), Y8, Y8
-	VPMULUDQ     Y13, Y0, Y4
-	VPMULUDQ     Y12, Y1, Y6
-	VPSRLQ       $0x20, Y4, Y12
-	VPSRLQ       $0x20, Y6, Y13
 	VPXOR        Y7, Y13, Y13
 	VPXOR        Y3, Y13, Y13
 	VPXOR        Y5, Y12, Y12
-	VPXOR        Y8, Y12, Y12
+	VPXOR        Y4, Y12, Y12
 	VPMULUDQ     Y11, Y0, Y5
 	VPMULUDQ     Y10, Y1, Y7
 	VPSRLQ       $0x20, Y5, Y10
 	VPSRLQ       $0x20, Y7, Y11
+	VPXOR        Y8, Y11, Y11
+	VPXOR        Y3, Y11, Y11
+	VPXOR        Y6, Y10, Y10
+	VPXOR        Y4, Y10, Y10
+	VPADDQ       philoxStreamAVX2Constants<>+64(SB), Y3, Y3
+	VPADDQ       philoxStreamAVX2Constants<>+128(SB), Y4, Y4
+	VPMULUDQ     Y13, Y0, Y6
+	VPMULUDQ     Y12, Y1, Y8
+	VPSRLQ       $0x20, Y6, Y12
+	VPSRLQ       $0x20, Y8, Y13
+	VPXOR        Y9, Y13, Y13
+	VPXOR        Y3, Y13, Y13
+	VPXOR        Y2, Y12, Y12
+	VPXOR        Y4, Y12, Y12
+	VPMULUDQ     Y11, Y0, Y2
+	VPMULUDQ     Y10, Y1, Y9
+	VPSRLQ       $0x20, Y2, Y10
+	VPSRLQ       $0x20, Y9, Y11
+	VPXOR        Y7, Y11, Y11
+	VPXOR        Y3, Y11, Y11
+	VPXOR        Y5, Y10, Y10
+	VPXOR        Y4, Y10, Y10
+	VPADDQ       philoxStreamAVX2Constants<>+64(SB), Y3, Y3
+	VPADDQ       philoxStreamAVX2Constants<>+128(SB), Y4, Y4
+	VPMULUDQ     Y13, Y0, Y5
+	VPMULUDQ     Y12, Y1, Y7
+	VPSRLQ       $0x20, Y5, Y12
+	VPSRLQ       $0x20, Y7, Y13
+	VPXOR        Y8, Y13, Y13
+	VPXOR        Y3, Y13, Y13
+	VPXOR        Y6, Y12, Y12
+	VPXOR        Y4, Y12, Y12
+	VPMULUDQ     Y11, Y0, Y6
+	VPMULUDQ     Y10, Y1, Y8
+	VPSRLQ       $0x20, Y6, Y10
+	VPSRLQ       $0x20, Y8, Y11
 	VPXOR        Y9, Y11, Y11
 	VPXOR        Y3, Y11, Y11
 	VPXOR        Y2, Y10, Y10
-	VPXOR        Y8, Y10, Y10
-	VPSLLQ       $0x20, Y6, Y6
-	VPBLENDD     $0xaa, Y6, Y13, Y13
-	VPSLLQ       $0x20, Y4, Y4
-	VPBLENDD     $0xaa, Y4, Y12, Y12
+	VPXOR        Y4, Y10, Y10
+	VPADDQ       philoxStreamAVX2Constants<>+64(SB), Y3, Y3
+	VPADDQ       philoxStreamAVX2Constants<>+128(SB), Y4, Y4
+	VPMULUDQ     Y13, Y0, Y2
+	VPMULUDQ     Y12, Y1, Y9
+	VPSRLQ       $0x20, Y2, Y12
+	VPSRLQ       $0x20, Y9, Y13
+	VPXOR        Y7, Y13, Y13
+	VPXOR        Y3, Y13, Y13
+	VPXOR        Y5, Y12, Y12
+	VPXOR        Y4, Y12, Y12
+	VPMULUDQ     Y11, Y0, Y5
+	VPMULUDQ     Y10, Y1, Y7
+	VPSRLQ       $0x20, Y5, Y10
+	VPSRLQ       $0x20, Y7, Y11
+	VPXOR        Y8, Y11, Y11
+	VPXOR        Y3, Y11, Y11
+	VPXOR        Y6, Y10, Y10
+	VPXOR        Y4, Y10, Y10
+	VPADDQ       philoxStreamAVX2Constants<>+64(SB), Y3, Y3
+	VPADDQ       philoxStreamAVX2Constants<>+128(SB), Y4, Y4
+	VPMULUDQ     Y13, Y0, Y6
+	VPMULUDQ     Y12, Y1, Y8
+	VPSRLQ       $0x20, Y6, Y12
+	VPSRLQ       $0x20, Y8, Y13
+	VPXOR        Y9, Y13, Y13
+	VPXOR        Y3, Y13, Y13
+	VPXOR        Y2, Y12, Y12
+	VPXOR        Y4, Y12, Y12
+	VPMULUDQ     Y11, Y0, Y2
+	VPMULUDQ     Y10, Y1, Y9
+	VPSRLQ       $0x20, Y2, Y10
+	VPSRLQ       $0x20, Y9, Y11
+	VPXOR        Y7, Y11, Y11
+	VPXOR        Y3, Y11, Y11
+	VPXOR        Y5, Y10, Y10
+	VPXOR        Y4, Y10, Y10
+	VPADDQ       philoxStreamAVX2Constants<>+64(SB), Y3, Y3
+	VPADDQ       philoxStreamAVX2Constants<>+128(SB), Y4, Y4
+	VPMULUDQ     Y13, Y0, Y5
+	VPMULUDQ     Y12, Y1, Y7
+	VPSRLQ       $0x20, Y5, Y12
+	VPSRLQ       $0x20, Y7, Y13
+	VPXOR        Y8, Y13, Y13
+	VPXOR        Y3, Y13, Y13
+	VPXOR        Y6, Y12, Y12
+	VPXOR        Y4, Y12, Y12
+	VPMULUDQ     Y11, Y0, Y6
+	VPMULUDQ     Y10, Y1, Y8
+	VPSRLQ       $0x20, Y6, Y10
+	VPSRLQ       $0x20, Y8, Y11
+	VPXOR        Y9, Y11, Y11
+	VPXOR        Y3, Y11, Y11
+	VPXOR        Y2, Y10, Y10
+	VPXOR        Y4, Y10, Y10
+	VPSLLQ       $0x20, Y7, Y7
+	VPBLENDD     $0xaa, Y7, Y13, Y13
+	VPSLLQ       $0x20, Y5, Y5
+	VPBLENDD     $0xaa, Y5, Y12, Y12
 	VPUNPCKLQDQ  Y12, Y13, Y2
 	VPUNPCKHQDQ  Y12, Y13, Y3
 	VPERM2I128   $0x20, Y3, Y2, Y13
 	VPERM2I128   $0x31, Y3, Y2, Y12
 	VMOVUPD      Y13, (CX)
 	VMOVUPD      Y12, 32(CX)
-	VPSLLQ       $0x20, Y7, Y7
-	VPBLENDD     $0xaa, Y7, Y11, Y11
-	VPSLLQ       $0x20, Y5, Y5
-	VPBLENDD     $0xaa, Y5, Y10, Y10
+	VPSLLQ       $0x20, Y8, Y8
+	VPBLENDD     $0xaa, Y8, Y11, Y11
+	VPSLLQ       $0x20, Y6, Y6
+	VPBLENDD     $0xaa, Y6, Y10, Y10
 	VPUNPCKLQDQ  Y10, Y11, Y2
 	VPUNPCKHQDQ  Y10, Y11, Y3
 	VPERM2I128   $0x20, Y3, Y2, Y11
@@ -1171,6 +1171,21 @@ next:
 	ORQ      16(SP), CX
 	ORQ      24(SP), CX
 	ADDQ     CX, 8(AX)
+	VZEROUPPER
+	RET
+
+// func fetchAVX2(x []float32)
+// Requires: AVX, MMX+
+TEXT ·fetchAVX2(SB), $0-24
+	MOVQ x_base+0(FP), AX
+	MOVQ x_len+8(FP), CX
+	XORQ DX, DX
+
+next:
+	PREFETCHT0 (AX)(DX*4)
+	ADDQ       $0x10, DX
+	CMPQ       DX, CX
+	JLT        next
 	VZEROUPPER
 	RET
 

@@ -12,7 +12,7 @@ package kernel
 func philoxAVX512(t *philoxArgs)
 
 // philoxStreamAVX512 fills Dst with the words of one stream: Dst[4n + w] = word w of Philox4x32-10,
-// counter (Lane + n, Step, Site, Phase), for n below Blocks and on to a multiple of 16.
+// counter (Lane + n, Step, Site, Phase), for n below Blocks and on to a multiple of 32.
 //
 //go:noescape
 func philoxStreamAVX512(t *philoxArgs)
@@ -82,6 +82,11 @@ func scale64AVX512(y []float64, alpha float64, c *Constants, t *[2]uint64)
 //
 //go:noescape
 func add64AVX512(x []float64, b []float64, factor float64, c *Constants, t *[2]uint64)
+
+// fetchAVX512 asks for the cache lines of x, which stay as they are.
+//
+//go:noescape
+func fetchAVX512(x []float32)
 
 // addNearestAVX512 is total = R(binary32(total + chunk)), R nearest-even to the grid of c's sums.
 //

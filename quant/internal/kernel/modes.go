@@ -22,6 +22,7 @@ const (
 	stochasticFused
 	stochasticCare
 	stochasticProductCare
+	stochasticTruncated
 	carefulFused
 	carefulProduct
 	carefulRounded
@@ -55,10 +56,11 @@ type family[L lanes] struct {
 
 // Set is all kernels of one kind of processor.
 type Set struct {
-	Name   string
-	single family[float32]
-	double family[float64]
-	loops  loops
+	Name    string
+	single  family[float32]
+	double  family[float64]
+	loops   loops
+	unfused bool // a multiply-add of binary32 takes longer than a product and a sum
 }
 
 // of returns the shapes of a mode for panels of the given width.

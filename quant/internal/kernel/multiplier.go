@@ -60,12 +60,12 @@ func NewWith(set *Set, a Arithmetic) *Multiplier {
 		return nil
 	}
 	m := &Multiplier{a: a, set: set, loops: set.loops, one: newSide(&set.single), two: newSide(&set.double)}
-	m.main = newPlans(&m.a, a.Sum)
+	m.main = newPlans(m.set, &m.a, a.Sum)
 	m.setCareful()
 	if a.Chunk > 0 && !m.setOuter() || (a.Pairwise || a.Lanes > 0) && !m.setTree() {
 		return nil
 	}
-	m.biases = newPlans(&Arithmetic{Product: ExactProduct, Sum: a.Outer, Outer: a.Outer}, a.Outer)
+	m.biases = newPlans(m.set, &Arithmetic{Product: ExactProduct, Sum: a.Outer, Outer: a.Outer}, a.Outer)
 	if a.Outer.Kind == StochasticSum && (a.Chunk > 0 || a.Outer.Through != a.Sum.Through || a.Sum.Kind != StochasticSum) {
 		return nil
 	}
@@ -85,6 +85,8 @@ func (p *plans) biasPlan(bias Span) *plan {
 		return p.care
 	case s.Kind == NearestSum:
 		return p.odd
+	case !s.Through && p.truncated != nil && bias.Low >= s.Grid.quantum():
+		return p.truncated
 	case !s.Through:
 		return p.wide
 	case (&block{a: bias, grain: s.Grid.quantum()}).fixes(s.Grid):

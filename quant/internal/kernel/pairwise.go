@@ -27,7 +27,7 @@ func (m *Multiplier) setTree() bool {
 		return false
 	}
 	t := &tree{add: m.loops.added, exact: a.Product == ExactProduct}
-	t.leaves = newPlans(&Arithmetic{Product: a.Product, Grid: a.Grid}, Sum{Kind: NativeSum})
+	t.leaves = newPlans(m.set, &Arithmetic{Product: a.Product, Grid: a.Grid}, Sum{Kind: NativeSum})
 	t.eight = a.Sum.Kind == NativeSum && a.Product == NativeProduct
 	if g := a.Sum.Grid; a.Sum.Kind == NearestSum {
 		t.c = single.masks()

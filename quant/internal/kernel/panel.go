@@ -152,7 +152,7 @@ func (n *panel) sum(from, to int) outcome {
 func (n *panel) packBlock(k, terms int) *plan {
 	n.raw = grown(n.raw, terms*n.width)
 	n.p.B.Pack(n.raw, n.width, k, k+terms, n.j0, n.j0+n.columns)
-	b := block{a: n.spanA, grain: n.grain}
+	b := block{a: n.spanA, grain: n.grain, wide: n.p.Bias != nil && n.bias.double}
 	if n.only != nil {
 		b.b = *n.only
 	} else {

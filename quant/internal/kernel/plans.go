@@ -21,11 +21,14 @@ func (s Sum) supported() bool {
 }
 
 // newPlans prepares the ways to add terms of a's products in the sum s.
-func newPlans(a *Arithmetic, s Sum) *plans {
-	p := &plans{arithmetic: a, sum: s}
+func newPlans(set *Set, a *Arithmetic, s Sum) *plans {
+	p := &plans{arithmetic: a, sum: s, unfused: set.unfused}
 	switch s.Kind {
 	case NativeSum:
 		p.native = nativePlan(a)
+		if p.unfused && a.Product == ExactProduct {
+			p.apart = nativePlan(&Arithmetic{Product: NativeProduct})
+		}
 	case NearestSum:
 		p.planNearest(a)
 	case StochasticSum:
@@ -125,6 +128,12 @@ func (p *plans) planWide(a *Arithmetic, productFree bool) {
 	n := &plan{double: true, mode: stochasticWide, c: double.masks()}
 	n.c.carry(double, p.sum, 0)
 	switch {
+	case a.Product < RoundedProduct:
+		spare := single.fraction - p.sum.Grid.Fraction
+		if p.sum.Bits < spare || p.sum.Bits == spare && !p.sum.Centred {
+			p.truncated = &plan{mode: stochasticTruncated, c: single.masks()}
+			p.truncated.c.cut(p.sum)
+		}
 	case a.Product == RandomProduct:
 		n.mode = stochasticBoth
 		n.c.carryTerms(a)

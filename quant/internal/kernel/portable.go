@@ -52,25 +52,32 @@ const (
 
 // Portable is the set of kernels in Go.
 var Portable = &Set{
-	Name: "portable",
-	single: family[float32]{width: portableWidth, narrow: portableNarrow, tiles: portableTiles([]term[float32]{
+	Name:    "portable",
+	unfused: true,
+	single: family[float32]{width: portableWidth, narrow: portableNarrow, tiles: portableTiles(map[mode]quad[float32]{
+		baseline: quadBaseline[float32], rounded: quadRounded,
+	}, []term[float32]{
 		baseline: termBaseline[float32], fmaChain: termFmaChain, tree8: nil, rounded: termRounded, both: termBoth,
 		bothScaled: termBothScaled, bothCare: termBothCare, through: termThrough, throughFree: termThroughFree,
 		productThrough: termProductThrough, odd: termOdd, oddRounded: termOddRounded, stochastic: termStochastic,
 		stochasticFused: termStochasticFused, stochasticCare: termStochasticCare,
 		stochasticProductCare: termStochasticProductCare,
+		stochasticTruncated:   termStochasticTruncated,
 		carefulFused:          termCarefulFused, carefulProduct: termCarefulProduct, carefulRounded: termCarefulRounded,
 	})},
-	double: family[float64]{width: portableWidth, narrow: portableNarrow, tiles: portableTiles([]term[float64]{
+	double: family[float64]{width: portableWidth, narrow: portableNarrow, tiles: portableTiles(map[mode]quad[float64]{
+		baseline64: quadBaseline[float64],
+	}, []term[float64]{
 		baseline64: termBaseline[float64], fmaChain64: termFmaChain64, fused: termFused, fusedFree: termFusedFree,
 		stochasticWide: termStochasticWide, stochasticProduct: termStochasticProduct, stochasticBoth: termStochasticBoth,
 	})},
 }
 
-func portableTiles[L lanes](terms []term[L]) [][2][]shape[L] {
+func portableTiles[L lanes](quads map[mode]quad[L], terms []term[L]) [][2][]shape[L] {
 	tiles := make([][2][]shape[L], len(terms))
 	for m, f := range terms {
-		run := func(t *Tile[L]) { sweep(t, f) }
+		four := quads[mode(m)]
+		run := func(t *Tile[L]) { sweep(t, f, four) }
 		if f == nil { // the one mode that is no loop over terms
 			run = sweepTree[L]
 		}
@@ -80,8 +87,9 @@ func portableTiles[L lanes](terms []term[L]) [][2][]shape[L] {
 	return tiles
 }
 
-// sweep is the loop that every kernel stands for, see Tile.
-func sweep[L lanes](t *Tile[L], f term[L]) {
+// sweep is the loop that every kernel stands for, see Tile. four is f for four terms,
+// or nil.
+func sweep[L lanes](t *Tile[L], f term[L], four quad[L]) {
 	c := t.numbers
 	c.read(t.C)
 	scale, unscale := laneValue[L](&t.C.Scale), laneValue[L](&t.C.Unscale)
@@ -96,7 +104,12 @@ func sweep[L lanes](t *Tile[L], f term[L]) {
 				sums[r*w+j] = L(v * scale)
 			}
 		}
-		for k := range t.K {
+		first := 0
+		if four != nil {
+			first = t.K &^ 3
+			quads(t, c, sums, g, first, four)
+		}
+		for k := first; k < t.K; k++ {
 			b, words := t.B[k*w:][:w], c.noWords[:w]
 			if t.V != nil {
 				words = t.V[k*w:][:w]
@@ -123,6 +136,18 @@ func sweep[L lanes](t *Tile[L], f term[L]) {
 			to[3*n] += e.Beyond
 			to[3*n+1] += e.Infinite
 			to[3*n+2] += e.NaN
+		}
+	}
+}
+
+// quads adds the terms up to terms of a group.
+func quads[L lanes](t *Tile[L], c *numbers[L], sums []L, g, terms int, four quad[L]) {
+	w := t.Width
+	for k := 0; k < terms; k += 4 {
+		b := t.B[k*w:][:4*w]
+		for r := range t.Rows {
+			a := t.A[(g*t.Rows+r)/2*t.AStride+2*k+r%2:]
+			four(c, sums[r*w:][:w], b, [4]L{a[0], a[2], a[4], a[6]})
 		}
 	}
 }
@@ -186,5 +211,8 @@ func (n *numbers[L]) read(c *Constants) {
 			mask: c.TermMask.bits64(), half: c.TermHalf.bits64(), keep: c.TermKeep.bits64(),
 			shift: uint8(c.TermShift[0]), least: c.Least.double(), limit: c.TermLimit.double(),
 		},
+	}
+	if _, ok := any(n.grow).(float32); ok {
+		n.sum.limit = float64(c.Limit.single())
 	}
 }

@@ -170,11 +170,11 @@ func termOddRounded(c *numbers[float32], s, b []float32, _ []uint32, a float32, 
 	}
 }
 
-// termFused: s = R(s + a b), exact in binary64.
+// termFused: s = R(s + a b), exact in binary64, as a b is, of two binary32 numbers.
 func termFused(c *numbers[float64], s, b []float64, _ []uint32, a float64, _ uint32) {
 	least, grow := c.sumLeast, c.sumGrow
 	for j, v := range b {
-		s[j] = near64(math.FMA(a, v, s[j]), least, grow)
+		s[j] = near64(s[j]+float64(a*v), least, grow)
 	}
 }
 
@@ -182,6 +182,6 @@ func termFused(c *numbers[float64], s, b []float64, _ []uint32, a float64, _ uin
 func termFusedFree(c *numbers[float64], s, b []float64, _ []uint32, a float64, _ uint32) {
 	split := c.sumSplit
 	for j, v := range b {
-		s[j] = split64(math.FMA(a, v, s[j]), split)
+		s[j] = split64(s[j]+float64(a*v), split)
 	}
 }

@@ -94,6 +94,27 @@ func termStochasticProductCare(c *numbers[float32], s, b []float32, words []uint
 	}
 }
 
+// truncated32 is the binary64 x, itself cut, cut to binary32.
+func truncated32(x float64) float32 {
+	y := float32(x)
+	if math.Abs(float64(y)) > math.Abs(x) {
+		return math.Float32frombits(math.Float32bits(y) - 1)
+	}
+	return y
+}
+
+// termStochasticTruncated: s = S(s + a b), no sum subnormal and inexact.
+func termStochasticTruncated(c *numbers[float32], s, b []float32, words []uint32, a float32, word uint32) {
+	words = words[:len(b)]
+	mask, half, keep := uint32(c.randomMask), uint32(c.randomHalf), uint32(c.keep)
+	for j, v := range b {
+		x := truncated32(truncatedSum(float64(s[j]), float64(float64(a)*float64(v))))
+		c.sum.watch(j, float64(x))
+		u := mix(word, words[j])<<16>>c.randomShift&mask | half
+		s[j] = math.Float32frombits((math.Float32bits(x) + u) & keep)
+	}
+}
+
 // termStochasticWide: s = S(s + a b).
 func termStochasticWide(c *numbers[float64], s, b []float64, words []uint32, a float64, word uint32) {
 	words = words[:len(b)]

@@ -124,6 +124,10 @@ func (r *Rounder) Round(dst, src []float32, d random.Draws, first uint64) (done,
 	for at := 0; at < len(src); at += RoundBlock {
 		from := src[at:min(at+RoundBlock, len(src))]
 		to := dst[at:][:len(from)]
+		if r.sum.Kind == StochasticSum {
+			r.loops.fetched(from)
+			r.loops.fetched(to)
+		}
 		words, ok := r.draw(d, first+uint64(at), len(from))
 		if !ok {
 			return at, lost

@@ -13,7 +13,7 @@ var (
 		loops: loops{
 			measure: measureAVX2, widen: widenAVX2, interleave: interleaveAVX2, transpose: transposeAVX2,
 			copyColumns: copyColumnsAVX2, gatherColumns: gatherColumnsAVX2,
-			addNative: addNativeAVX2, addNearest: addNearestAVX2, addOdd: addOddAVX2, philox: philoxAVX2,
+			addNative: addNativeAVX2, addNearest: addNearestAVX2, addOdd: addOddAVX2, fetch: fetchAVX2, philox: philoxAVX2,
 			philoxStream: philoxStreamAVX2, roundNearest32: roundNearest32AVX2, roundStochastic32: roundStochastic32AVX2,
 			roundNearest64: roundNearest64AVX2, roundStochastic64: roundStochastic64AVX2, scale64: scale64AVX2, add64: add64AVX2,
 		},
@@ -25,7 +25,7 @@ var (
 		loops: loops{
 			measure: measureAVX512, widen: widenAVX512, interleave: interleaveAVX512, transpose: transposeAVX512,
 			copyColumns: copyColumnsAVX512, gatherColumns: gatherColumnsAVX512,
-			addNative: addNativeAVX512, addNearest: addNearestAVX512, addOdd: addOddAVX512, philox: philoxAVX512,
+			addNative: addNativeAVX512, addNearest: addNearestAVX512, addOdd: addOddAVX512, fetch: fetchAVX512, philox: philoxAVX512,
 			philoxStream: philoxStreamAVX512, roundNearest32: roundNearest32AVX512, roundStochastic32: roundStochastic32AVX512,
 			roundNearest64: roundNearest64AVX512, roundStochastic64: roundStochastic64AVX512, scale64: scale64AVX512, add64: add64AVX512,
 		},

@@ -110,6 +110,7 @@ func init() {
 	tilesAVX232[stochasticFused] = [2][]shape[float32]{{{2, stochasticFusedAVX2R2V3}}, {{8, stochasticFusedAVX2R8V1}, {2, stochasticFusedAVX2R2V1}}}
 	tilesAVX232[stochasticCare] = [2][]shape[float32]{{{2, stochasticCareAVX2R2V3}}, {{4, stochasticCareAVX2R4V1}, {2, stochasticCareAVX2R2V1}}}
 	tilesAVX232[stochasticProductCare] = [2][]shape[float32]{{{2, stochasticProductCareAVX2R2V3}}, {{4, stochasticProductCareAVX2R4V1}, {2, stochasticProductCareAVX2R2V1}}}
+	tilesAVX232[stochasticTruncated] = [2][]shape[float32]{{{2, stochasticTruncatedAVX2R2V3}}, {{4, stochasticTruncatedAVX2R4V1}, {2, stochasticTruncatedAVX2R2V1}}}
 	tilesAVX264[fused] = [2][]shape[float64]{{{4, fusedAVX2R4V3}, {2, fusedAVX2R2V3}}, {{8, fusedAVX2R8V1}, {2, fusedAVX2R2V1}}}
 	tilesAVX264[fusedFree] = [2][]shape[float64]{{{4, fusedFreeAVX2R4V3}, {2, fusedFreeAVX2R2V3}}, {{8, fusedFreeAVX2R8V1}, {2, fusedFreeAVX2R2V1}}}
 	tilesAVX264[stochasticWide] = [2][]shape[float64]{{{2, stochasticWideAVX2R2V3}}, {{4, stochasticWideAVX2R4V1}, {2, stochasticWideAVX2R2V1}}}
@@ -136,6 +137,7 @@ func init() {
 	tilesAVX51232[stochasticFused] = [2][]shape[float32]{{{8, stochasticFusedAVX512R8V2}, {4, stochasticFusedAVX512R4V2}, {2, stochasticFusedAVX512R2V2}}, {{8, stochasticFusedAVX512R8V1}, {2, stochasticFusedAVX512R2V1}}}
 	tilesAVX51232[stochasticCare] = [2][]shape[float32]{{{4, stochasticCareAVX512R4V2}, {2, stochasticCareAVX512R2V2}}, {{4, stochasticCareAVX512R4V1}, {2, stochasticCareAVX512R2V1}}}
 	tilesAVX51232[stochasticProductCare] = [2][]shape[float32]{{{4, stochasticProductCareAVX512R4V2}, {2, stochasticProductCareAVX512R2V2}}, {{4, stochasticProductCareAVX512R4V1}, {2, stochasticProductCareAVX512R2V1}}}
+	tilesAVX51232[stochasticTruncated] = [2][]shape[float32]{{{8, stochasticTruncatedAVX512R8V2}, {4, stochasticTruncatedAVX512R4V2}, {2, stochasticTruncatedAVX512R2V2}}, {{4, stochasticTruncatedAVX512R4V1}, {2, stochasticTruncatedAVX512R2V1}}}
 	tilesAVX51264[fused] = [2][]shape[float64]{{{8, fusedAVX512R8V2}, {4, fusedAVX512R4V2}, {2, fusedAVX512R2V2}}, {{8, fusedAVX512R8V1}, {2, fusedAVX512R2V1}}}
 	tilesAVX51264[fusedFree] = [2][]shape[float64]{{{8, fusedFreeAVX512R8V2}, {4, fusedFreeAVX512R4V2}, {2, fusedFreeAVX512R2V2}}, {{8, fusedFreeAVX512R8V1}, {2, fusedFreeAVX512R2V1}}}
 	tilesAVX51264[stochasticWide] = [2][]shape[float64]{{{4, stochasticWideAVX512R4V2}, {2, stochasticWideAVX512R2V2}}, {{4, stochasticWideAVX512R4V1}, {2, stochasticWideAVX512R2V1}}}

@@ -339,3 +339,21 @@ func stochasticProductCareAVX2R4V1(t *Tile[float32])
 //
 //go:noescape
 func stochasticProductCareAVX2R2V1(t *Tile[float32])
+
+// stochasticTruncatedAVX2R2V3 is the loop s = S(s + a b), S stochastic of the exact sum, cut to binary32, no sum subnormal and inexact, terms ascending.
+// It keeps a tile of 2 x 24 sums in registers.
+//
+//go:noescape
+func stochasticTruncatedAVX2R2V3(t *Tile[float32])
+
+// stochasticTruncatedAVX2R4V1 is the loop s = S(s + a b), S stochastic of the exact sum, cut to binary32, no sum subnormal and inexact, terms ascending.
+// It keeps a tile of 4 x 8 sums in registers.
+//
+//go:noescape
+func stochasticTruncatedAVX2R4V1(t *Tile[float32])
+
+// stochasticTruncatedAVX2R2V1 is the loop s = S(s + a b), S stochastic of the exact sum, cut to binary32, no sum subnormal and inexact, terms ascending.
+// It keeps a tile of 2 x 8 sums in registers.
+//
+//go:noescape
+func stochasticTruncatedAVX2R2V1(t *Tile[float32])

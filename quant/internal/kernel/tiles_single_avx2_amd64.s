@@ -10665,3 +10665,522 @@ term:
 	JNZ          group
 	VZEROUPPER
 	RET
+
+// func stochasticTruncatedAVX2R2V3(t *Tile[float32])
+// Requires: AVX, AVX2, FMA3, SSE
+TEXT ·stochasticTruncatedAVX2R2V3(SB), $56-8
+	MOVQ    t+0(FP), AX
+	MOVQ    240(AX), CX
+	VMOVUPS 128(CX), Y0
+	VMOVUPS 832(CX), Y1
+	VMOVUPS 768(CX), Y2
+	STMXCSR (SP)
+	MOVL    (SP), DX
+	ORL     $0x00006000, DX
+	MOVL    DX, 4(SP)
+	LDMXCSR 4(SP)
+	MOVQ    8(AX), DX
+	MOVQ    DX, 8(SP)
+	MOVQ    120(AX), DX
+	MOVQ    DX, 16(SP)
+	MOVQ    152(AX), DX
+	MOVQ    DX, 24(SP)
+	MOVQ    216(AX), DX
+	MOVQ    DX, 32(SP)
+	MOVQ    16(AX), DX
+	MOVQ    DX, 40(SP)
+	MOVQ    72(AX), DX
+	MOVQ    DX, 48(SP)
+
+group:
+	MOVQ         16(SP), DX
+	MOVQ         144(AX), BX
+	VMOVUPS      (DX), Y3
+	VMULPS       576(CX), Y3, Y3
+	VMOVUPS      32(DX), Y4
+	VMULPS       576(CX), Y4, Y4
+	VMOVUPS      64(DX), Y5
+	VMULPS       576(CX), Y5, Y5
+	LEAQ         (DX)(BX*4), DX
+	VMOVUPS      (DX), Y6
+	VMULPS       576(CX), Y6, Y6
+	VMOVUPS      32(DX), Y7
+	VMULPS       576(CX), Y7, Y7
+	VMOVUPS      64(DX), Y8
+	VMULPS       576(CX), Y8, Y8
+	LEAQ         (DX)(BX*4), DX
+	MOVQ         DX, 16(SP)
+	VPXOR        Y9, Y9, Y9
+	MOVQ         40(AX), DX
+	MOVQ         40(SP), BX
+	LEAQ         (BX)(DX*4), DX
+	MOVQ         DX, 40(SP)
+	MOVQ         40(AX), DX
+	MOVQ         48(SP), SI
+	LEAQ         (SI)(DX*4), DX
+	MOVQ         DX, 48(SP)
+	MOVQ         96(AX), DX
+	MOVQ         48(AX), DI
+	MOVQ         (AX), R8
+	ADDQ         R8, R8
+	XORQ         R9, R9
+	VBROADCASTSS (BX)(R9*4), Y10
+	VPBROADCASTD (SI)(R9*4), Y11
+	VPMADDWD     (DX), Y11, Y12
+	VFMADD231PS  (DI), Y10, Y3
+	VANDPS       Y0, Y3, Y13
+	VMAXPS       Y13, Y9, Y9
+	VPMADDWD     32(DX), Y11, Y13
+	VPSLLD       $0x10, Y12, Y12
+	VFMADD231PS  32(DI), Y10, Y4
+	VPSRLVD      Y1, Y12, Y12
+	VANDPS       Y0, Y4, Y14
+	VPAND        Y2, Y12, Y12
+	VMAXPS       Y14, Y9, Y9
+	VPMADDWD     64(DX), Y11, Y11
+	VPOR         896(CX), Y12, Y12
+	VPSLLD       $0x10, Y13, Y13
+	VFMADD231PS  64(DI), Y10, Y5
+	VPADDD       Y12, Y3, Y3
+	VPSRLVD      Y1, Y13, Y13
+	VANDPS       Y0, Y5, Y10
+	VPAND        704(CX), Y3, Y3
+	VPAND        Y2, Y13, Y13
+	VMAXPS       Y10, Y9, Y9
+	VBROADCASTSS 4(BX)(R9*4), Y10
+	VPBROADCASTD 4(SI)(R9*4), Y14
+	VPMADDWD     (DX), Y14, Y12
+	VPOR         896(CX), Y13, Y13
+	VPSLLD       $0x10, Y11, Y11
+	VFMADD231PS  (DI), Y10, Y6
+	VPADDD       Y13, Y4, Y4
+	VPSRLVD      Y1, Y11, Y11
+	VANDPS       Y0, Y6, Y13
+	VPAND        704(CX), Y4, Y4
+	VPAND        Y2, Y11, Y11
+	VMAXPS       Y13, Y9, Y9
+	VPMADDWD     32(DX), Y14, Y13
+	VPOR         896(CX), Y11, Y11
+	VPSLLD       $0x10, Y12, Y12
+	VFMADD231PS  32(DI), Y10, Y7
+	VPADDD       Y11, Y5, Y5
+	VPSRLVD      Y1, Y12, Y12
+	VANDPS       Y0, Y7, Y11
+	VPAND        704(CX), Y5, Y5
+	VPAND        Y2, Y12, Y12
+	VMAXPS       Y11, Y9, Y9
+	VPMADDWD     64(DX), Y14, Y14
+	VPOR         896(CX), Y12, Y12
+	VPSLLD       $0x10, Y13, Y13
+	VFMADD231PS  64(DI), Y10, Y8
+	VPADDD       Y12, Y6, Y6
+	VPSRLVD      Y1, Y13, Y13
+	VANDPS       Y0, Y8, Y10
+	VPAND        704(CX), Y6, Y6
+	VPAND        Y2, Y13, Y13
+	VMAXPS       Y10, Y9, Y9
+	ADDQ         $0x00000060, DI
+	ADDQ         $0x00000060, DX
+	ADDQ         $0x02, R9
+	CMPQ         R9, R8
+	JGE          last
+
+term:
+	VBROADCASTSS (BX)(R9*4), Y10
+	VPBROADCASTD (SI)(R9*4), Y11
+	VPMADDWD     (DX), Y11, Y12
+	VPOR         896(CX), Y13, Y13
+	VPSLLD       $0x10, Y14, Y14
+	VFMADD231PS  (DI), Y10, Y3
+	VPADDD       Y13, Y7, Y7
+	VPSRLVD      Y1, Y14, Y14
+	VANDPS       Y0, Y3, Y13
+	VPAND        704(CX), Y7, Y7
+	VPAND        Y2, Y14, Y14
+	VMAXPS       Y13, Y9, Y9
+	VPMADDWD     32(DX), Y11, Y13
+	VPOR         896(CX), Y14, Y14
+	VPSLLD       $0x10, Y12, Y12
+	VFMADD231PS  32(DI), Y10, Y4
+	VPADDD       Y14, Y8, Y8
+	VPSRLVD      Y1, Y12, Y12
+	VANDPS       Y0, Y4, Y14
+	VPAND        704(CX), Y8, Y8
+	VPAND        Y2, Y12, Y12
+	VMAXPS       Y14, Y9, Y9
+	VPMADDWD     64(DX), Y11, Y11
+	VPOR         896(CX), Y12, Y12
+	VPSLLD       $0x10, Y13, Y13
+	VFMADD231PS  64(DI), Y10, Y5
+	VPADDD       Y12, Y3, Y3
+	VPSRLVD      Y1, Y13, Y13
+	VANDPS       Y0, Y5, Y10
+	VPAND        704(CX), Y3, Y3
+	VPAND        Y2, Y13, Y13
+	VMAXPS       Y10, Y9, Y9
+	VBROADCASTSS 4(BX)(R9*4), Y10
+	VPBROADCASTD 4(SI)(R9*4), Y14
+	VPMADDWD     (DX), Y14, Y12
+	VPOR         896(CX), Y13, Y13
+	VPSLLD       $0x10, Y11, Y11
+	VFMADD231PS  (DI), Y10, Y6
+	VPADDD       Y13, Y4, Y4
+	VPSRLVD      Y1, Y11, Y11
+	VANDPS       Y0, Y6, Y13
+	VPAND        704(CX), Y4, Y4
+	VPAND        Y2, Y11, Y11
+	VMAXPS       Y13, Y9, Y9
+	VPMADDWD     32(DX), Y14, Y13
+	VPOR         896(CX), Y11, Y11
+	VPSLLD       $0x10, Y12, Y12
+	VFMADD231PS  32(DI), Y10, Y7
+	VPADDD       Y11, Y5, Y5
+	VPSRLVD      Y1, Y12, Y12
+	VANDPS       Y0, Y7, Y11
+	VPAND        704(CX), Y5, Y5
+	VPAND        Y2, Y12, Y12
+	VMAXPS       Y11, Y9, Y9
+	VPMADDWD     64(DX), Y14, Y14
+	VPOR         896(CX), Y12, Y12
+	VPSLLD       $0x10, Y13, Y13
+	VFMADD231PS  64(DI), Y10, Y8
+	VPADDD       Y12, Y6, Y6
+	VPSRLVD      Y1, Y13, Y13
+	VANDPS       Y0, Y8, Y10
+	VPAND        704(CX), Y6, Y6
+	VPAND        Y2, Y13, Y13
+	VMAXPS       Y10, Y9, Y9
+	ADDQ         $0x00000060, DI
+	ADDQ         $0x00000060, DX
+	ADDQ         $0x02, R9
+	CMPQ         R9, R8
+	JLT          term
+
+last:
+	VPOR        896(CX), Y13, Y13
+	VPSLLD      $0x10, Y14, Y14
+	VPADDD      Y13, Y7, Y7
+	VPSRLVD     Y1, Y14, Y14
+	VPAND       704(CX), Y7, Y7
+	VPAND       Y2, Y14, Y14
+	VPOR        896(CX), Y14, Y14
+	VPADDD      Y14, Y8, Y8
+	VPAND       704(CX), Y8, Y8
+	VMOVUPS     640(CX), Y10
+	VPXOR       Y11, Y11, Y11
+	VPXOR       Y12, Y12, Y12
+	VCMPPS      $0x05, 1344(CX), Y9, Y9
+	VORPS       Y9, Y3, Y3
+	VORPS       Y9, Y4, Y4
+	VORPS       Y9, Y5, Y5
+	VORPS       Y9, Y6, Y6
+	VORPS       Y9, Y7, Y7
+	VORPS       Y9, Y8, Y8
+	VFMADD231PS Y11, Y3, Y12
+	VMULPS      Y10, Y3, Y3
+	VADDPS      Y11, Y3, Y3
+	VFMADD231PS Y11, Y4, Y12
+	VMULPS      Y10, Y4, Y4
+	VADDPS      Y11, Y4, Y4
+	VFMADD231PS Y11, Y5, Y12
+	VMULPS      Y10, Y5, Y5
+	VADDPS      Y11, Y5, Y5
+	VFMADD231PS Y11, Y6, Y12
+	VMULPS      Y10, Y6, Y6
+	VADDPS      Y11, Y6, Y6
+	VFMADD231PS Y11, Y7, Y12
+	VMULPS      Y10, Y7, Y7
+	VADDPS      Y11, Y7, Y7
+	VFMADD231PS Y11, Y8, Y12
+	VMULPS      Y10, Y8, Y8
+	VADDPS      Y11, Y8, Y8
+	MOVQ        24(SP), DX
+	MOVQ        176(AX), BX
+	VMOVUPS     Y3, (DX)
+	VMOVUPS     Y4, 32(DX)
+	VMOVUPS     Y5, 64(DX)
+	LEAQ        (DX)(BX*4), DX
+	VMOVUPS     Y6, (DX)
+	VMOVUPS     Y7, 32(DX)
+	VMOVUPS     Y8, 64(DX)
+	LEAQ        (DX)(BX*4), DX
+	MOVQ        DX, 24(SP)
+	VCMPPS      $0x03, Y12, Y12, Y12
+	VMOVMSKPS   Y12, DX
+	TESTL       DX, DX
+	MOVQ        32(SP), DX
+	SETNE       (DX)
+	INCQ        32(SP)
+	DECQ        8(SP)
+	JNZ         group
+	LDMXCSR     (SP)
+	VZEROUPPER
+	RET
+
+// func stochasticTruncatedAVX2R4V1(t *Tile[float32])
+// Requires: AVX, AVX2, FMA3, SSE
+TEXT ·stochasticTruncatedAVX2R4V1(SB), $56-8
+	MOVQ    t+0(FP), AX
+	MOVQ    240(AX), CX
+	VMOVUPS 128(CX), Y0
+	VMOVUPS 832(CX), Y1
+	VMOVUPS 768(CX), Y2
+	STMXCSR (SP)
+	MOVL    (SP), DX
+	ORL     $0x00006000, DX
+	MOVL    DX, 4(SP)
+	LDMXCSR 4(SP)
+	MOVQ    8(AX), DX
+	MOVQ    DX, 8(SP)
+	MOVQ    120(AX), DX
+	MOVQ    DX, 16(SP)
+	MOVQ    152(AX), DX
+	MOVQ    DX, 24(SP)
+	MOVQ    216(AX), DX
+	MOVQ    DX, 32(SP)
+	MOVQ    16(AX), DX
+	MOVQ    DX, 40(SP)
+	MOVQ    72(AX), DX
+	MOVQ    DX, 48(SP)
+
+group:
+	MOVQ    16(SP), DX
+	MOVQ    144(AX), BX
+	VMOVUPS (DX), Y3
+	VMULPS  576(CX), Y3, Y3
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Y4
+	VMULPS  576(CX), Y4, Y4
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Y5
+	VMULPS  576(CX), Y5, Y5
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Y6
+	VMULPS  576(CX), Y6, Y6
+	LEAQ    (DX)(BX*4), DX
+	MOVQ    DX, 16(SP)
+	VPXOR   Y7, Y7, Y7
+	MOVQ    40(AX), DX
+	MOVQ    40(SP), BX
+	LEAQ    (BX)(DX*4), SI
+	LEAQ    (SI)(DX*4), DX
+	MOVQ    DX, 40(SP)
+	MOVQ    40(AX), DX
+	MOVQ    48(SP), DI
+	LEAQ    (DI)(DX*4), R8
+	LEAQ    (R8)(DX*4), DX
+	MOVQ    DX, 48(SP)
+	MOVQ    96(AX), DX
+	MOVQ    48(AX), R9
+	MOVQ    (AX), R10
+	ADDQ    R10, R10
+	XORQ    R11, R11
+
+term:
+	VBROADCASTSS (BX)(R11*4), Y8
+	VPBROADCASTD (DI)(R11*4), Y9
+	VPMADDWD     (DX), Y9, Y9
+	VFMADD231PS  (R9), Y8, Y3
+	VANDPS       Y0, Y3, Y8
+	VMAXPS       Y8, Y7, Y7
+	VPSLLD       $0x10, Y9, Y9
+	VPSRLVD      Y1, Y9, Y9
+	VPAND        Y2, Y9, Y9
+	VPOR         896(CX), Y9, Y9
+	VPADDD       Y9, Y3, Y3
+	VPAND        704(CX), Y3, Y3
+	VBROADCASTSS 4(BX)(R11*4), Y8
+	VPBROADCASTD 4(DI)(R11*4), Y9
+	VPMADDWD     (DX), Y9, Y9
+	VFMADD231PS  (R9), Y8, Y4
+	VANDPS       Y0, Y4, Y8
+	VMAXPS       Y8, Y7, Y7
+	VPSLLD       $0x10, Y9, Y9
+	VPSRLVD      Y1, Y9, Y9
+	VPAND        Y2, Y9, Y9
+	VPOR         896(CX), Y9, Y9
+	VPADDD       Y9, Y4, Y4
+	VPAND        704(CX), Y4, Y4
+	VBROADCASTSS (SI)(R11*4), Y8
+	VPBROADCASTD (R8)(R11*4), Y9
+	VPMADDWD     (DX), Y9, Y9
+	VFMADD231PS  (R9), Y8, Y5
+	VANDPS       Y0, Y5, Y8
+	VMAXPS       Y8, Y7, Y7
+	VPSLLD       $0x10, Y9, Y9
+	VPSRLVD      Y1, Y9, Y9
+	VPAND        Y2, Y9, Y9
+	VPOR         896(CX), Y9, Y9
+	VPADDD       Y9, Y5, Y5
+	VPAND        704(CX), Y5, Y5
+	VBROADCASTSS 4(SI)(R11*4), Y8
+	VPBROADCASTD 4(R8)(R11*4), Y9
+	VPMADDWD     (DX), Y9, Y9
+	VFMADD231PS  (R9), Y8, Y6
+	VANDPS       Y0, Y6, Y8
+	VMAXPS       Y8, Y7, Y7
+	VPSLLD       $0x10, Y9, Y9
+	VPSRLVD      Y1, Y9, Y9
+	VPAND        Y2, Y9, Y9
+	VPOR         896(CX), Y9, Y9
+	VPADDD       Y9, Y6, Y6
+	VPAND        704(CX), Y6, Y6
+	ADDQ         $0x00000020, R9
+	ADDQ         $0x00000020, DX
+	ADDQ         $0x02, R11
+	CMPQ         R11, R10
+	JLT          term
+	VMOVUPS      640(CX), Y8
+	VPXOR        Y9, Y9, Y9
+	VPXOR        Y10, Y10, Y10
+	VCMPPS       $0x05, 1344(CX), Y7, Y7
+	VORPS        Y7, Y3, Y3
+	VORPS        Y7, Y4, Y4
+	VORPS        Y7, Y5, Y5
+	VORPS        Y7, Y6, Y6
+	VFMADD231PS  Y9, Y3, Y10
+	VMULPS       Y8, Y3, Y3
+	VADDPS       Y9, Y3, Y3
+	VFMADD231PS  Y9, Y4, Y10
+	VMULPS       Y8, Y4, Y4
+	VADDPS       Y9, Y4, Y4
+	VFMADD231PS  Y9, Y5, Y10
+	VMULPS       Y8, Y5, Y5
+	VADDPS       Y9, Y5, Y5
+	VFMADD231PS  Y9, Y6, Y10
+	VMULPS       Y8, Y6, Y6
+	VADDPS       Y9, Y6, Y6
+	MOVQ         24(SP), DX
+	MOVQ         176(AX), BX
+	VMOVUPS      Y3, (DX)
+	LEAQ         (DX)(BX*4), DX
+	VMOVUPS      Y4, (DX)
+	LEAQ         (DX)(BX*4), DX
+	VMOVUPS      Y5, (DX)
+	LEAQ         (DX)(BX*4), DX
+	VMOVUPS      Y6, (DX)
+	LEAQ         (DX)(BX*4), DX
+	MOVQ         DX, 24(SP)
+	VCMPPS       $0x03, Y10, Y10, Y10
+	VMOVMSKPS    Y10, DX
+	TESTL        DX, DX
+	MOVQ         32(SP), DX
+	SETNE        (DX)
+	INCQ         32(SP)
+	DECQ         8(SP)
+	JNZ          group
+	LDMXCSR      (SP)
+	VZEROUPPER
+	RET
+
+// func stochasticTruncatedAVX2R2V1(t *Tile[float32])
+// Requires: AVX, AVX2, FMA3, SSE
+TEXT ·stochasticTruncatedAVX2R2V1(SB), $56-8
+	MOVQ    t+0(FP), AX
+	MOVQ    240(AX), CX
+	VMOVUPS 128(CX), Y0
+	VMOVUPS 832(CX), Y1
+	VMOVUPS 768(CX), Y2
+	STMXCSR (SP)
+	MOVL    (SP), DX
+	ORL     $0x00006000, DX
+	MOVL    DX, 4(SP)
+	LDMXCSR 4(SP)
+	MOVQ    8(AX), DX
+	MOVQ    DX, 8(SP)
+	MOVQ    120(AX), DX
+	MOVQ    DX, 16(SP)
+	MOVQ    152(AX), DX
+	MOVQ    DX, 24(SP)
+	MOVQ    216(AX), DX
+	MOVQ    DX, 32(SP)
+	MOVQ    16(AX), DX
+	MOVQ    DX, 40(SP)
+	MOVQ    72(AX), DX
+	MOVQ    DX, 48(SP)
+
+group:
+	MOVQ    16(SP), DX
+	MOVQ    144(AX), BX
+	VMOVUPS (DX), Y3
+	VMULPS  576(CX), Y3, Y3
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Y4
+	VMULPS  576(CX), Y4, Y4
+	LEAQ    (DX)(BX*4), DX
+	MOVQ    DX, 16(SP)
+	VPXOR   Y5, Y5, Y5
+	MOVQ    40(AX), DX
+	MOVQ    40(SP), BX
+	LEAQ    (BX)(DX*4), DX
+	MOVQ    DX, 40(SP)
+	MOVQ    40(AX), DX
+	MOVQ    48(SP), SI
+	LEAQ    (SI)(DX*4), DX
+	MOVQ    DX, 48(SP)
+	MOVQ    96(AX), DX
+	MOVQ    48(AX), DI
+	MOVQ    (AX), R8
+	ADDQ    R8, R8
+	XORQ    R9, R9
+
+term:
+	VBROADCASTSS (BX)(R9*4), Y6
+	VPBROADCASTD (SI)(R9*4), Y7
+	VPMADDWD     (DX), Y7, Y7
+	VFMADD231PS  (DI), Y6, Y3
+	VANDPS       Y0, Y3, Y6
+	VMAXPS       Y6, Y5, Y5
+	VPSLLD       $0x10, Y7, Y7
+	VPSRLVD      Y1, Y7, Y7
+	VPAND        Y2, Y7, Y7
+	VPOR         896(CX), Y7, Y7
+	VPADDD       Y7, Y3, Y3
+	VPAND        704(CX), Y3, Y3
+	VBROADCASTSS 4(BX)(R9*4), Y6
+	VPBROADCASTD 4(SI)(R9*4), Y7
+	VPMADDWD     (DX), Y7, Y7
+	VFMADD231PS  (DI), Y6, Y4
+	VANDPS       Y0, Y4, Y6
+	VMAXPS       Y6, Y5, Y5
+	VPSLLD       $0x10, Y7, Y7
+	VPSRLVD      Y1, Y7, Y7
+	VPAND        Y2, Y7, Y7
+	VPOR         896(CX), Y7, Y7
+	VPADDD       Y7, Y4, Y4
+	VPAND        704(CX), Y4, Y4
+	ADDQ         $0x00000020, DI
+	ADDQ         $0x00000020, DX
+	ADDQ         $0x02, R9
+	CMPQ         R9, R8
+	JLT          term
+	VMOVUPS      640(CX), Y6
+	VPXOR        Y7, Y7, Y7
+	VPXOR        Y8, Y8, Y8
+	VCMPPS       $0x05, 1344(CX), Y5, Y5
+	VORPS        Y5, Y3, Y3
+	VORPS        Y5, Y4, Y4
+	VFMADD231PS  Y7, Y3, Y8
+	VMULPS       Y6, Y3, Y3
+	VADDPS       Y7, Y3, Y3
+	VFMADD231PS  Y7, Y4, Y8
+	VMULPS       Y6, Y4, Y4
+	VADDPS       Y7, Y4, Y4
+	MOVQ         24(SP), DX
+	MOVQ         176(AX), BX
+	VMOVUPS      Y3, (DX)
+	LEAQ         (DX)(BX*4), DX
+	VMOVUPS      Y4, (DX)
+	LEAQ         (DX)(BX*4), DX
+	MOVQ         DX, 24(SP)
+	VCMPPS       $0x03, Y8, Y8, Y8
+	VMOVMSKPS    Y8, DX
+	TESTL        DX, DX
+	MOVQ         32(SP), DX
+	SETNE        (DX)
+	INCQ         32(SP)
+	DECQ         8(SP)
+	JNZ          group
+	LDMXCSR      (SP)
+	VZEROUPPER
+	RET

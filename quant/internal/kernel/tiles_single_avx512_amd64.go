@@ -465,3 +465,33 @@ func stochasticProductCareAVX512R4V1(t *Tile[float32])
 //
 //go:noescape
 func stochasticProductCareAVX512R2V1(t *Tile[float32])
+
+// stochasticTruncatedAVX512R8V2 is the loop s = S(s + a b), S stochastic of the exact sum, cut to binary32, no sum subnormal and inexact, terms ascending.
+// It keeps a tile of 8 x 32 sums in registers.
+//
+//go:noescape
+func stochasticTruncatedAVX512R8V2(t *Tile[float32])
+
+// stochasticTruncatedAVX512R4V2 is the loop s = S(s + a b), S stochastic of the exact sum, cut to binary32, no sum subnormal and inexact, terms ascending.
+// It keeps a tile of 4 x 32 sums in registers.
+//
+//go:noescape
+func stochasticTruncatedAVX512R4V2(t *Tile[float32])
+
+// stochasticTruncatedAVX512R2V2 is the loop s = S(s + a b), S stochastic of the exact sum, cut to binary32, no sum subnormal and inexact, terms ascending.
+// It keeps a tile of 2 x 32 sums in registers.
+//
+//go:noescape
+func stochasticTruncatedAVX512R2V2(t *Tile[float32])
+
+// stochasticTruncatedAVX512R4V1 is the loop s = S(s + a b), S stochastic of the exact sum, cut to binary32, no sum subnormal and inexact, terms ascending.
+// It keeps a tile of 4 x 16 sums in registers.
+//
+//go:noescape
+func stochasticTruncatedAVX512R4V1(t *Tile[float32])
+
+// stochasticTruncatedAVX512R2V1 is the loop s = S(s + a b), S stochastic of the exact sum, cut to binary32, no sum subnormal and inexact, terms ascending.
+// It keeps a tile of 2 x 16 sums in registers.
+//
+//go:noescape
+func stochasticTruncatedAVX512R2V1(t *Tile[float32])

@@ -16265,3 +16265,1199 @@ term:
 	JNZ          group
 	VZEROUPPER
 	RET
+
+// func stochasticTruncatedAVX512R8V2(t *Tile[float32])
+// Requires: AVX, AVX512BW, AVX512DQ, AVX512F
+TEXT ·stochasticTruncatedAVX512R8V2(SB), $48-8
+	MOVQ    t+0(FP), AX
+	MOVQ    240(AX), CX
+	VMOVUPS 128(CX), Z0
+	VMOVUPS 832(CX), Z1
+	VMOVUPS 768(CX), Z2
+	VMOVUPS 896(CX), Z3
+	VMOVUPS 704(CX), Z4
+	MOVQ    8(AX), DX
+	MOVQ    DX, (SP)
+	MOVQ    120(AX), DX
+	MOVQ    DX, 8(SP)
+	MOVQ    152(AX), DX
+	MOVQ    DX, 16(SP)
+	MOVQ    216(AX), DX
+	MOVQ    DX, 24(SP)
+	MOVQ    16(AX), DX
+	MOVQ    DX, 32(SP)
+	MOVQ    72(AX), DX
+	MOVQ    DX, 40(SP)
+
+group:
+	MOVQ               8(SP), DX
+	MOVQ               144(AX), BX
+	VMOVUPS            (DX), Z5
+	VMULPS             576(CX), Z5, Z5
+	VMOVUPS            64(DX), Z6
+	VMULPS             576(CX), Z6, Z6
+	LEAQ               (DX)(BX*4), DX
+	VMOVUPS            (DX), Z7
+	VMULPS             576(CX), Z7, Z7
+	VMOVUPS            64(DX), Z8
+	VMULPS             576(CX), Z8, Z8
+	LEAQ               (DX)(BX*4), DX
+	VMOVUPS            (DX), Z9
+	VMULPS             576(CX), Z9, Z9
+	VMOVUPS            64(DX), Z10
+	VMULPS             576(CX), Z10, Z10
+	LEAQ               (DX)(BX*4), DX
+	VMOVUPS            (DX), Z11
+	VMULPS             576(CX), Z11, Z11
+	VMOVUPS            64(DX), Z12
+	VMULPS             576(CX), Z12, Z12
+	LEAQ               (DX)(BX*4), DX
+	VMOVUPS            (DX), Z13
+	VMULPS             576(CX), Z13, Z13
+	VMOVUPS            64(DX), Z14
+	VMULPS             576(CX), Z14, Z14
+	LEAQ               (DX)(BX*4), DX
+	VMOVUPS            (DX), Z15
+	VMULPS             576(CX), Z15, Z15
+	VMOVUPS            64(DX), Z16
+	VMULPS             576(CX), Z16, Z16
+	LEAQ               (DX)(BX*4), DX
+	VMOVUPS            (DX), Z17
+	VMULPS             576(CX), Z17, Z17
+	VMOVUPS            64(DX), Z18
+	VMULPS             576(CX), Z18, Z18
+	LEAQ               (DX)(BX*4), DX
+	VMOVUPS            (DX), Z19
+	VMULPS             576(CX), Z19, Z19
+	VMOVUPS            64(DX), Z20
+	VMULPS             576(CX), Z20, Z20
+	LEAQ               (DX)(BX*4), DX
+	MOVQ               DX, 8(SP)
+	VPXORD             Z21, Z21, Z21
+	MOVQ               40(AX), DX
+	MOVQ               32(SP), BX
+	LEAQ               (BX)(DX*4), SI
+	LEAQ               (SI)(DX*4), DI
+	LEAQ               (DI)(DX*4), R8
+	LEAQ               (R8)(DX*4), DX
+	MOVQ               DX, 32(SP)
+	MOVQ               40(AX), DX
+	MOVQ               40(SP), R9
+	LEAQ               (R9)(DX*4), R10
+	LEAQ               (R10)(DX*4), R11
+	LEAQ               (R11)(DX*4), R12
+	LEAQ               (R12)(DX*4), DX
+	MOVQ               DX, 40(SP)
+	MOVQ               96(AX), DX
+	MOVQ               48(AX), R13
+	MOVQ               (AX), R14
+	ADDQ               R14, R14
+	XORQ               R15, R15
+	VMOVUPS            (R13), Z24
+	VBROADCASTSS       (BX)(R15*4), Z22
+	VPBROADCASTD       (R9)(R15*4), Z23
+	VPMADDWD           (DX), Z23, Z26
+	VFMADD231PS.RZ_SAE Z24, Z22, Z5
+	VANDPS             Z0, Z5, Z25
+	VMAXPS             Z25, Z21, Z21
+	VMOVUPS            64(R13), Z25
+	VPMADDWD           64(DX), Z23, Z23
+	VPSLLD             $0x10, Z26, Z26
+	VFMADD231PS.RZ_SAE Z25, Z22, Z6
+	VPSRLVD            Z1, Z26, Z26
+	VANDPS             Z0, Z6, Z22
+	VPANDD             Z2, Z26, Z26
+	VMAXPS             Z22, Z21, Z21
+	VBROADCASTSS       4(BX)(R15*4), Z22
+	VPBROADCASTD       4(R9)(R15*4), Z27
+	VPMADDWD           (DX), Z27, Z28
+	VPORD              Z3, Z26, Z26
+	VPSLLD             $0x10, Z23, Z23
+	VFMADD231PS.RZ_SAE Z24, Z22, Z7
+	VPADDD             Z26, Z5, Z5
+	VPSRLVD            Z1, Z23, Z23
+	VANDPS             Z0, Z7, Z26
+	VPANDD             Z4, Z5, Z5
+	VPANDD             Z2, Z23, Z23
+	VMAXPS             Z26, Z21, Z21
+	VPMADDWD           64(DX), Z27, Z26
+	VPORD              Z3, Z23, Z23
+	VPSLLD             $0x10, Z28, Z28
+	VFMADD231PS.RZ_SAE Z25, Z22, Z8
+	VPADDD             Z23, Z6, Z6
+	VPSRLVD            Z1, Z28, Z28
+	VANDPS             Z0, Z8, Z22
+	VPANDD             Z4, Z6, Z6
+	VPANDD             Z2, Z28, Z28
+	VMAXPS             Z22, Z21, Z21
+	VBROADCASTSS       (SI)(R15*4), Z22
+	VPBROADCASTD       (R10)(R15*4), Z23
+	VPMADDWD           (DX), Z23, Z27
+	VPORD              Z3, Z28, Z28
+	VPSLLD             $0x10, Z26, Z26
+	VFMADD231PS.RZ_SAE Z24, Z22, Z9
+	VPADDD             Z28, Z7, Z7
+	VPSRLVD            Z1, Z26, Z26
+	VANDPS             Z0, Z9, Z28
+	VPANDD             Z4, Z7, Z7
+	VPANDD             Z2, Z26, Z26
+	VMAXPS             Z28, Z21, Z21
+	VPMADDWD           64(DX), Z23, Z23
+	VPORD              Z3, Z26, Z26
+	VPSLLD             $0x10, Z27, Z27
+	VFMADD231PS.RZ_SAE Z25, Z22, Z10
+	VPADDD             Z26, Z8, Z8
+	VPSRLVD            Z1, Z27, Z27
+	VANDPS             Z0, Z10, Z22
+	VPANDD             Z4, Z8, Z8
+	VPANDD             Z2, Z27, Z27
+	VMAXPS             Z22, Z21, Z21
+	VBROADCASTSS       4(SI)(R15*4), Z22
+	VPBROADCASTD       4(R10)(R15*4), Z26
+	VPMADDWD           (DX), Z26, Z28
+	VPORD              Z3, Z27, Z27
+	VPSLLD             $0x10, Z23, Z23
+	VFMADD231PS.RZ_SAE Z24, Z22, Z11
+	VPADDD             Z27, Z9, Z9
+	VPSRLVD            Z1, Z23, Z23
+	VANDPS             Z0, Z11, Z27
+	VPANDD             Z4, Z9, Z9
+	VPANDD             Z2, Z23, Z23
+	VMAXPS             Z27, Z21, Z21
+	VPMADDWD           64(DX), Z26, Z26
+	VPORD              Z3, Z23, Z23
+	VPSLLD             $0x10, Z28, Z28
+	VFMADD231PS.RZ_SAE Z25, Z22, Z12
+	VPADDD             Z23, Z10, Z10
+	VPSRLVD            Z1, Z28, Z28
+	VANDPS             Z0, Z12, Z22
+	VPANDD             Z4, Z10, Z10
+	VPANDD             Z2, Z28, Z28
+	VMAXPS             Z22, Z21, Z21
+	VBROADCASTSS       (DI)(R15*4), Z22
+	VPBROADCASTD       (R11)(R15*4), Z23
+	VPMADDWD           (DX), Z23, Z27
+	VPORD              Z3, Z28, Z28
+	VPSLLD             $0x10, Z26, Z26
+	VFMADD231PS.RZ_SAE Z24, Z22, Z13
+	VPADDD             Z28, Z11, Z11
+	VPSRLVD            Z1, Z26, Z26
+	VANDPS             Z0, Z13, Z28
+	VPANDD             Z4, Z11, Z11
+	VPANDD             Z2, Z26, Z26
+	VMAXPS             Z28, Z21, Z21
+	VPMADDWD           64(DX), Z23, Z23
+	VPORD              Z3, Z26, Z26
+	VPSLLD             $0x10, Z27, Z27
+	VFMADD231PS.RZ_SAE Z25, Z22, Z14
+	VPADDD             Z26, Z12, Z12
+	VPSRLVD            Z1, Z27, Z27
+	VANDPS             Z0, Z14, Z22
+	VPANDD             Z4, Z12, Z12
+	VPANDD             Z2, Z27, Z27
+	VMAXPS             Z22, Z21, Z21
+	VBROADCASTSS       4(DI)(R15*4), Z22
+	VPBROADCASTD       4(R11)(R15*4), Z26
+	VPMADDWD           (DX), Z26, Z28
+	VPORD              Z3, Z27, Z27
+	VPSLLD             $0x10, Z23, Z23
+	VFMADD231PS.RZ_SAE Z24, Z22, Z15
+	VPADDD             Z27, Z13, Z13
+	VPSRLVD            Z1, Z23, Z23
+	VANDPS             Z0, Z15, Z27
+	VPANDD             Z4, Z13, Z13
+	VPANDD             Z2, Z23, Z23
+	VMAXPS             Z27, Z21, Z21
+	VPMADDWD           64(DX), Z26, Z26
+	VPORD              Z3, Z23, Z23
+	VPSLLD             $0x10, Z28, Z28
+	VFMADD231PS.RZ_SAE Z25, Z22, Z16
+	VPADDD             Z23, Z14, Z14
+	VPSRLVD            Z1, Z28, Z28
+	VANDPS             Z0, Z16, Z22
+	VPANDD             Z4, Z14, Z14
+	VPANDD             Z2, Z28, Z28
+	VMAXPS             Z22, Z21, Z21
+	VBROADCASTSS       (R8)(R15*4), Z27
+	VPBROADCASTD       (R12)(R15*4), Z23
+	VPMADDWD           (DX), Z23, Z22
+	VPORD              Z3, Z28, Z28
+	VPSLLD             $0x10, Z26, Z26
+	VFMADD231PS.RZ_SAE Z24, Z27, Z17
+	VPADDD             Z28, Z15, Z15
+	VPSRLVD            Z1, Z26, Z26
+	VANDPS             Z0, Z17, Z28
+	VPANDD             Z4, Z15, Z15
+	VPANDD             Z2, Z26, Z26
+	VMAXPS             Z28, Z21, Z21
+	VPMADDWD           64(DX), Z23, Z23
+	VPORD              Z3, Z26, Z26
+	VPSLLD             $0x10, Z22, Z22
+	VFMADD231PS.RZ_SAE Z25, Z27, Z18
+	VPADDD             Z26, Z16, Z16
+	VPSRLVD            Z1, Z22, Z22
+	VANDPS             Z0, Z18, Z26
+	VPANDD             Z4, Z16, Z16
+	VPANDD             Z2, Z22, Z22
+	VMAXPS             Z26, Z21, Z21
+	VBROADCASTSS       4(R8)(R15*4), Z26
+	VPBROADCASTD       4(R12)(R15*4), Z28
+	VPMADDWD           (DX), Z28, Z27
+	VPORD              Z3, Z22, Z22
+	VPSLLD             $0x10, Z23, Z23
+	VFMADD231PS.RZ_SAE Z24, Z26, Z19
+	VPADDD             Z22, Z17, Z17
+	VPSRLVD            Z1, Z23, Z23
+	VANDPS             Z0, Z19, Z22
+	VPANDD             Z4, Z17, Z17
+	VPANDD             Z2, Z23, Z23
+	VMAXPS             Z22, Z21, Z21
+	VPMADDWD           64(DX), Z28, Z28
+	VPORD              Z3, Z23, Z23
+	VPSLLD             $0x10, Z27, Z27
+	VFMADD231PS.RZ_SAE Z25, Z26, Z20
+	VPADDD             Z23, Z18, Z18
+	VPSRLVD            Z1, Z27, Z27
+	VANDPS             Z0, Z20, Z22
+	VPANDD             Z4, Z18, Z18
+	VPANDD             Z2, Z27, Z27
+	VMAXPS             Z22, Z21, Z21
+	ADDQ               $0x00000080, R13
+	ADDQ               $0x00000080, DX
+	ADDQ               $0x02, R15
+	CMPQ               R15, R14
+	JGE                last
+
+term:
+	VMOVUPS            (R13), Z24
+	VBROADCASTSS       (BX)(R15*4), Z22
+	VPBROADCASTD       (R9)(R15*4), Z23
+	VPMADDWD           (DX), Z23, Z26
+	VPORD              Z3, Z27, Z27
+	VPSLLD             $0x10, Z28, Z28
+	VFMADD231PS.RZ_SAE Z24, Z22, Z5
+	VPADDD             Z27, Z19, Z19
+	VPSRLVD            Z1, Z28, Z28
+	VANDPS             Z0, Z5, Z25
+	VPANDD             Z4, Z19, Z19
+	VPANDD             Z2, Z28, Z28
+	VMAXPS             Z25, Z21, Z21
+	VMOVUPS            64(R13), Z25
+	VPMADDWD           64(DX), Z23, Z23
+	VPORD              Z3, Z28, Z28
+	VPSLLD             $0x10, Z26, Z26
+	VFMADD231PS.RZ_SAE Z25, Z22, Z6
+	VPADDD             Z28, Z20, Z20
+	VPSRLVD            Z1, Z26, Z26
+	VANDPS             Z0, Z6, Z22
+	VPANDD             Z4, Z20, Z20
+	VPANDD             Z2, Z26, Z26
+	VMAXPS             Z22, Z21, Z21
+	VBROADCASTSS       4(BX)(R15*4), Z22
+	VPBROADCASTD       4(R9)(R15*4), Z27
+	VPMADDWD           (DX), Z27, Z28
+	VPORD              Z3, Z26, Z26
+	VPSLLD             $0x10, Z23, Z23
+	VFMADD231PS.RZ_SAE Z24, Z22, Z7
+	VPADDD             Z26, Z5, Z5
+	VPSRLVD            Z1, Z23, Z23
+	VANDPS             Z0, Z7, Z26
+	VPANDD             Z4, Z5, Z5
+	VPANDD             Z2, Z23, Z23
+	VMAXPS             Z26, Z21, Z21
+	VPMADDWD           64(DX), Z27, Z26
+	VPORD              Z3, Z23, Z23
+	VPSLLD             $0x10, Z28, Z28
+	VFMADD231PS.RZ_SAE Z25, Z22, Z8
+	VPADDD             Z23, Z6, Z6
+	VPSRLVD            Z1, Z28, Z28
+	VANDPS             Z0, Z8, Z22
+	VPANDD             Z4, Z6, Z6
+	VPANDD             Z2, Z28, Z28
+	VMAXPS             Z22, Z21, Z21
+	VBROADCASTSS       (SI)(R15*4), Z22
+	VPBROADCASTD       (R10)(R15*4), Z23
+	VPMADDWD           (DX), Z23, Z27
+	VPORD              Z3, Z28, Z28
+	VPSLLD             $0x10, Z26, Z26
+	VFMADD231PS.RZ_SAE Z24, Z22, Z9
+	VPADDD             Z28, Z7, Z7
+	VPSRLVD            Z1, Z26, Z26
+	VANDPS             Z0, Z9, Z28
+	VPANDD             Z4, Z7, Z7
+	VPANDD             Z2, Z26, Z26
+	VMAXPS             Z28, Z21, Z21
+	VPMADDWD           64(DX), Z23, Z23
+	VPORD              Z3, Z26, Z26
+	VPSLLD             $0x10, Z27, Z27
+	VFMADD231PS.RZ_SAE Z25, Z22, Z10
+	VPADDD             Z26, Z8, Z8
+	VPSRLVD            Z1, Z27, Z27
+	VANDPS             Z0, Z10, Z22
+	VPANDD             Z4, Z8, Z8
+	VPANDD             Z2, Z27, Z27
+	VMAXPS             Z22, Z21, Z21
+	VBROADCASTSS       4(SI)(R15*4), Z22
+	VPBROADCASTD       4(R10)(R15*4), Z26
+	VPMADDWD           (DX), Z26, Z28
+	VPORD              Z3, Z27, Z27
+	VPSLLD             $0x10, Z23, Z23
+	VFMADD231PS.RZ_SAE Z24, Z22, Z11
+	VPADDD             Z27, Z9, Z9
+	VPSRLVD            Z1, Z23, Z23
+	VANDPS             Z0, Z11, Z27
+	VPANDD             Z4, Z9, Z9
+	VPANDD             Z2, Z23, Z23
+	VMAXPS             Z27, Z21, Z21
+	VPMADDWD           64(DX), Z26, Z26
+	VPORD              Z3, Z23, Z23
+	VPSLLD             $0x10, Z28, Z28
+	VFMADD231PS.RZ_SAE Z25, Z22, Z12
+	VPADDD             Z23, Z10, Z10
+	VPSRLVD            Z1, Z28, Z28
+	VANDPS             Z0, Z12, Z22
+	VPANDD             Z4, Z10, Z10
+	VPANDD             Z2, Z28, Z28
+	VMAXPS             Z22, Z21, Z21
+	VBROADCASTSS       (DI)(R15*4), Z22
+	VPBROADCASTD       (R11)(R15*4), Z23
+	VPMADDWD           (DX), Z23, Z27
+	VPORD              Z3, Z28, Z28
+	VPSLLD             $0x10, Z26, Z26
+	VFMADD231PS.RZ_SAE Z24, Z22, Z13
+	VPADDD             Z28, Z11, Z11
+	VPSRLVD            Z1, Z26, Z26
+	VANDPS             Z0, Z13, Z28
+	VPANDD             Z4, Z11, Z11
+	VPANDD             Z2, Z26, Z26
+	VMAXPS             Z28, Z21, Z21
+	VPMADDWD           64(DX), Z23, Z23
+	VPORD              Z3, Z26, Z26
+	VPSLLD             $0x10, Z27, Z27
+	VFMADD231PS.RZ_SAE Z25, Z22, Z14
+	VPADDD             Z26, Z12, Z12
+	VPSRLVD            Z1, Z27, Z27
+	VANDPS             Z0, Z14, Z22
+	VPANDD             Z4, Z12, Z12
+	VPANDD             Z2, Z27, Z27
+	VMAXPS             Z22, Z21, Z21
+	VBROADCASTSS       4(DI)(R15*4), Z22
+	VPBROADCASTD       4(R11)(R15*4), Z26
+	VPMADDWD           (DX), Z26, Z28
+	VPORD              Z3, Z27, Z27
+	VPSLLD             $0x10, Z23, Z23
+	VFMADD231PS.RZ_SAE Z24, Z22, Z15
+	VPADDD             Z27, Z13, Z13
+	VPSRLVD            Z1, Z23, Z23
+	VANDPS             Z0, Z15, Z27
+	VPANDD             Z4, Z13, Z13
+	VPANDD             Z2, Z23, Z23
+	VMAXPS             Z27, Z21, Z21
+	VPMADDWD           64(DX), Z26, Z26
+	VPORD              Z3, Z23, Z23
+	VPSLLD             $0x10, Z28, Z28
+	VFMADD231PS.RZ_SAE Z25, Z22, Z16
+	VPADDD             Z23, Z14, Z14
+	VPSRLVD            Z1, Z28, Z28
+	VANDPS             Z0, Z16, Z22
+	VPANDD             Z4, Z14, Z14
+	VPANDD             Z2, Z28, Z28
+	VMAXPS             Z22, Z21, Z21
+	VBROADCASTSS       (R8)(R15*4), Z27
+	VPBROADCASTD       (R12)(R15*4), Z23
+	VPMADDWD           (DX), Z23, Z22
+	VPORD              Z3, Z28, Z28
+	VPSLLD             $0x10, Z26, Z26
+	VFMADD231PS.RZ_SAE Z24, Z27, Z17
+	VPADDD             Z28, Z15, Z15
+	VPSRLVD            Z1, Z26, Z26
+	VANDPS             Z0, Z17, Z28
+	VPANDD             Z4, Z15, Z15
+	VPANDD             Z2, Z26, Z26
+	VMAXPS             Z28, Z21, Z21
+	VPMADDWD           64(DX), Z23, Z23
+	VPORD              Z3, Z26, Z26
+	VPSLLD             $0x10, Z22, Z22
+	VFMADD231PS.RZ_SAE Z25, Z27, Z18
+	VPADDD             Z26, Z16, Z16
+	VPSRLVD            Z1, Z22, Z22
+	VANDPS             Z0, Z18, Z26
+	VPANDD             Z4, Z16, Z16
+	VPANDD             Z2, Z22, Z22
+	VMAXPS             Z26, Z21, Z21
+	VBROADCASTSS       4(R8)(R15*4), Z26
+	VPBROADCASTD       4(R12)(R15*4), Z28
+	VPMADDWD           (DX), Z28, Z27
+	VPORD              Z3, Z22, Z22
+	VPSLLD             $0x10, Z23, Z23
+	VFMADD231PS.RZ_SAE Z24, Z26, Z19
+	VPADDD             Z22, Z17, Z17
+	VPSRLVD            Z1, Z23, Z23
+	VANDPS             Z0, Z19, Z22
+	VPANDD             Z4, Z17, Z17
+	VPANDD             Z2, Z23, Z23
+	VMAXPS             Z22, Z21, Z21
+	VPMADDWD           64(DX), Z28, Z28
+	VPORD              Z3, Z23, Z23
+	VPSLLD             $0x10, Z27, Z27
+	VFMADD231PS.RZ_SAE Z25, Z26, Z20
+	VPADDD             Z23, Z18, Z18
+	VPSRLVD            Z1, Z27, Z27
+	VANDPS             Z0, Z20, Z22
+	VPANDD             Z4, Z18, Z18
+	VPANDD             Z2, Z27, Z27
+	VMAXPS             Z22, Z21, Z21
+	ADDQ               $0x00000080, R13
+	ADDQ               $0x00000080, DX
+	ADDQ               $0x02, R15
+	CMPQ               R15, R14
+	JLT                term
+
+last:
+	VPORD       Z3, Z27, Z27
+	VPSLLD      $0x10, Z28, Z28
+	VPADDD      Z27, Z19, Z19
+	VPSRLVD     Z1, Z28, Z28
+	VPANDD      Z4, Z19, Z19
+	VPANDD      Z2, Z28, Z28
+	VPORD       Z3, Z28, Z28
+	VPADDD      Z28, Z20, Z20
+	VPANDD      Z4, Z20, Z20
+	VMOVUPS     640(CX), Z22
+	VPXORD      Z29, Z29, Z29
+	VPXORD      Z30, Z30, Z30
+	VCMPPS      $0x05, 1344(CX), Z21, K1
+	VPMOVM2D    K1, Z21
+	VORPS       Z21, Z5, Z5
+	VORPS       Z21, Z6, Z6
+	VORPS       Z21, Z7, Z7
+	VORPS       Z21, Z8, Z8
+	VORPS       Z21, Z9, Z9
+	VORPS       Z21, Z10, Z10
+	VORPS       Z21, Z11, Z11
+	VORPS       Z21, Z12, Z12
+	VORPS       Z21, Z13, Z13
+	VORPS       Z21, Z14, Z14
+	VORPS       Z21, Z15, Z15
+	VORPS       Z21, Z16, Z16
+	VORPS       Z21, Z17, Z17
+	VORPS       Z21, Z18, Z18
+	VORPS       Z21, Z19, Z19
+	VORPS       Z21, Z20, Z20
+	VFMADD231PS Z29, Z5, Z30
+	VMULPS      Z22, Z5, Z5
+	VADDPS      Z29, Z5, Z5
+	VFMADD231PS Z29, Z6, Z30
+	VMULPS      Z22, Z6, Z6
+	VADDPS      Z29, Z6, Z6
+	VFMADD231PS Z29, Z7, Z30
+	VMULPS      Z22, Z7, Z7
+	VADDPS      Z29, Z7, Z7
+	VFMADD231PS Z29, Z8, Z30
+	VMULPS      Z22, Z8, Z8
+	VADDPS      Z29, Z8, Z8
+	VFMADD231PS Z29, Z9, Z30
+	VMULPS      Z22, Z9, Z9
+	VADDPS      Z29, Z9, Z9
+	VFMADD231PS Z29, Z10, Z30
+	VMULPS      Z22, Z10, Z10
+	VADDPS      Z29, Z10, Z10
+	VFMADD231PS Z29, Z11, Z30
+	VMULPS      Z22, Z11, Z11
+	VADDPS      Z29, Z11, Z11
+	VFMADD231PS Z29, Z12, Z30
+	VMULPS      Z22, Z12, Z12
+	VADDPS      Z29, Z12, Z12
+	VFMADD231PS Z29, Z13, Z30
+	VMULPS      Z22, Z13, Z13
+	VADDPS      Z29, Z13, Z13
+	VFMADD231PS Z29, Z14, Z30
+	VMULPS      Z22, Z14, Z14
+	VADDPS      Z29, Z14, Z14
+	VFMADD231PS Z29, Z15, Z30
+	VMULPS      Z22, Z15, Z15
+	VADDPS      Z29, Z15, Z15
+	VFMADD231PS Z29, Z16, Z30
+	VMULPS      Z22, Z16, Z16
+	VADDPS      Z29, Z16, Z16
+	VFMADD231PS Z29, Z17, Z30
+	VMULPS      Z22, Z17, Z17
+	VADDPS      Z29, Z17, Z17
+	VFMADD231PS Z29, Z18, Z30
+	VMULPS      Z22, Z18, Z18
+	VADDPS      Z29, Z18, Z18
+	VFMADD231PS Z29, Z19, Z30
+	VMULPS      Z22, Z19, Z19
+	VADDPS      Z29, Z19, Z19
+	VFMADD231PS Z29, Z20, Z30
+	VMULPS      Z22, Z20, Z20
+	VADDPS      Z29, Z20, Z20
+	MOVQ        16(SP), DX
+	MOVQ        176(AX), BX
+	VMOVUPS     Z5, (DX)
+	VMOVUPS     Z6, 64(DX)
+	LEAQ        (DX)(BX*4), DX
+	VMOVUPS     Z7, (DX)
+	VMOVUPS     Z8, 64(DX)
+	LEAQ        (DX)(BX*4), DX
+	VMOVUPS     Z9, (DX)
+	VMOVUPS     Z10, 64(DX)
+	LEAQ        (DX)(BX*4), DX
+	VMOVUPS     Z11, (DX)
+	VMOVUPS     Z12, 64(DX)
+	LEAQ        (DX)(BX*4), DX
+	VMOVUPS     Z13, (DX)
+	VMOVUPS     Z14, 64(DX)
+	LEAQ        (DX)(BX*4), DX
+	VMOVUPS     Z15, (DX)
+	VMOVUPS     Z16, 64(DX)
+	LEAQ        (DX)(BX*4), DX
+	VMOVUPS     Z17, (DX)
+	VMOVUPS     Z18, 64(DX)
+	LEAQ        (DX)(BX*4), DX
+	VMOVUPS     Z19, (DX)
+	VMOVUPS     Z20, 64(DX)
+	LEAQ        (DX)(BX*4), DX
+	MOVQ        DX, 16(SP)
+	VCMPPS      $0x03, Z30, Z30, K1
+	KMOVW       K1, DX
+	TESTL       DX, DX
+	MOVQ        24(SP), DX
+	SETNE       (DX)
+	INCQ        24(SP)
+	DECQ        (SP)
+	JNZ         group
+	VZEROUPPER
+	RET
+
+// func stochasticTruncatedAVX512R4V2(t *Tile[float32])
+// Requires: AVX, AVX512BW, AVX512DQ, AVX512F
+TEXT ·stochasticTruncatedAVX512R4V2(SB), $48-8
+	MOVQ    t+0(FP), AX
+	MOVQ    240(AX), CX
+	VMOVUPS 128(CX), Z0
+	VMOVUPS 832(CX), Z1
+	VMOVUPS 768(CX), Z2
+	VMOVUPS 896(CX), Z3
+	VMOVUPS 704(CX), Z4
+	MOVQ    8(AX), DX
+	MOVQ    DX, (SP)
+	MOVQ    120(AX), DX
+	MOVQ    DX, 8(SP)
+	MOVQ    152(AX), DX
+	MOVQ    DX, 16(SP)
+	MOVQ    216(AX), DX
+	MOVQ    DX, 24(SP)
+	MOVQ    16(AX), DX
+	MOVQ    DX, 32(SP)
+	MOVQ    72(AX), DX
+	MOVQ    DX, 40(SP)
+
+group:
+	MOVQ    8(SP), DX
+	MOVQ    144(AX), BX
+	VMOVUPS (DX), Z5
+	VMULPS  576(CX), Z5, Z5
+	VMOVUPS 64(DX), Z6
+	VMULPS  576(CX), Z6, Z6
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Z7
+	VMULPS  576(CX), Z7, Z7
+	VMOVUPS 64(DX), Z8
+	VMULPS  576(CX), Z8, Z8
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Z9
+	VMULPS  576(CX), Z9, Z9
+	VMOVUPS 64(DX), Z10
+	VMULPS  576(CX), Z10, Z10
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Z11
+	VMULPS  576(CX), Z11, Z11
+	VMOVUPS 64(DX), Z12
+	VMULPS  576(CX), Z12, Z12
+	LEAQ    (DX)(BX*4), DX
+	MOVQ    DX, 8(SP)
+	VPXORD  Z13, Z13, Z13
+	MOVQ    40(AX), DX
+	MOVQ    32(SP), BX
+	LEAQ    (BX)(DX*4), SI
+	LEAQ    (SI)(DX*4), DX
+	MOVQ    DX, 32(SP)
+	MOVQ    40(AX), DX
+	MOVQ    40(SP), DI
+	LEAQ    (DI)(DX*4), R8
+	LEAQ    (R8)(DX*4), DX
+	MOVQ    DX, 40(SP)
+	MOVQ    96(AX), DX
+	MOVQ    48(AX), R9
+	MOVQ    (AX), R10
+	ADDQ    R10, R10
+	XORQ    R11, R11
+
+term:
+	VMOVUPS            (R9), Z16
+	VBROADCASTSS       (BX)(R11*4), Z14
+	VPBROADCASTD       (DI)(R11*4), Z15
+	VPMADDWD           (DX), Z15, Z17
+	VFMADD231PS.RZ_SAE Z16, Z14, Z5
+	VANDPS             Z0, Z5, Z20
+	VMAXPS             Z20, Z13, Z13
+	VPSLLD             $0x10, Z17, Z17
+	VPSRLVD            Z1, Z17, Z17
+	VPANDD             Z2, Z17, Z17
+	VPORD              Z3, Z17, Z17
+	VPADDD             Z17, Z5, Z5
+	VPANDD             Z4, Z5, Z5
+	VMOVUPS            64(R9), Z17
+	VPMADDWD           64(DX), Z15, Z15
+	VFMADD231PS.RZ_SAE Z17, Z14, Z6
+	VANDPS             Z0, Z6, Z14
+	VMAXPS             Z14, Z13, Z13
+	VPSLLD             $0x10, Z15, Z15
+	VPSRLVD            Z1, Z15, Z15
+	VPANDD             Z2, Z15, Z15
+	VPORD              Z3, Z15, Z15
+	VPADDD             Z15, Z6, Z6
+	VPANDD             Z4, Z6, Z6
+	VBROADCASTSS       4(BX)(R11*4), Z14
+	VPBROADCASTD       4(DI)(R11*4), Z15
+	VPMADDWD           (DX), Z15, Z20
+	VFMADD231PS.RZ_SAE Z16, Z14, Z7
+	VANDPS             Z0, Z7, Z21
+	VMAXPS             Z21, Z13, Z13
+	VPSLLD             $0x10, Z20, Z20
+	VPSRLVD            Z1, Z20, Z20
+	VPANDD             Z2, Z20, Z20
+	VPORD              Z3, Z20, Z20
+	VPADDD             Z20, Z7, Z7
+	VPANDD             Z4, Z7, Z7
+	VPMADDWD           64(DX), Z15, Z15
+	VFMADD231PS.RZ_SAE Z17, Z14, Z8
+	VANDPS             Z0, Z8, Z14
+	VMAXPS             Z14, Z13, Z13
+	VPSLLD             $0x10, Z15, Z15
+	VPSRLVD            Z1, Z15, Z15
+	VPANDD             Z2, Z15, Z15
+	VPORD              Z3, Z15, Z15
+	VPADDD             Z15, Z8, Z8
+	VPANDD             Z4, Z8, Z8
+	VBROADCASTSS       (SI)(R11*4), Z14
+	VPBROADCASTD       (R8)(R11*4), Z15
+	VPMADDWD           (DX), Z15, Z20
+	VFMADD231PS.RZ_SAE Z16, Z14, Z9
+	VANDPS             Z0, Z9, Z21
+	VMAXPS             Z21, Z13, Z13
+	VPSLLD             $0x10, Z20, Z20
+	VPSRLVD            Z1, Z20, Z20
+	VPANDD             Z2, Z20, Z20
+	VPORD              Z3, Z20, Z20
+	VPADDD             Z20, Z9, Z9
+	VPANDD             Z4, Z9, Z9
+	VPMADDWD           64(DX), Z15, Z15
+	VFMADD231PS.RZ_SAE Z17, Z14, Z10
+	VANDPS             Z0, Z10, Z14
+	VMAXPS             Z14, Z13, Z13
+	VPSLLD             $0x10, Z15, Z15
+	VPSRLVD            Z1, Z15, Z15
+	VPANDD             Z2, Z15, Z15
+	VPORD              Z3, Z15, Z15
+	VPADDD             Z15, Z10, Z10
+	VPANDD             Z4, Z10, Z10
+	VBROADCASTSS       4(SI)(R11*4), Z14
+	VPBROADCASTD       4(R8)(R11*4), Z15
+	VPMADDWD           (DX), Z15, Z20
+	VFMADD231PS.RZ_SAE Z16, Z14, Z11
+	VANDPS             Z0, Z11, Z16
+	VMAXPS             Z16, Z13, Z13
+	VPSLLD             $0x10, Z20, Z20
+	VPSRLVD            Z1, Z20, Z20
+	VPANDD             Z2, Z20, Z20
+	VPORD              Z3, Z20, Z20
+	VPADDD             Z20, Z11, Z11
+	VPANDD             Z4, Z11, Z11
+	VPMADDWD           64(DX), Z15, Z15
+	VFMADD231PS.RZ_SAE Z17, Z14, Z12
+	VANDPS             Z0, Z12, Z14
+	VMAXPS             Z14, Z13, Z13
+	VPSLLD             $0x10, Z15, Z15
+	VPSRLVD            Z1, Z15, Z15
+	VPANDD             Z2, Z15, Z15
+	VPORD              Z3, Z15, Z15
+	VPADDD             Z15, Z12, Z12
+	VPANDD             Z4, Z12, Z12
+	ADDQ               $0x00000080, R9
+	ADDQ               $0x00000080, DX
+	ADDQ               $0x02, R11
+	CMPQ               R11, R10
+	JLT                term
+	VMOVUPS            640(CX), Z14
+	VPXORD             Z18, Z18, Z18
+	VPXORD             Z19, Z19, Z19
+	VCMPPS             $0x05, 1344(CX), Z13, K1
+	VPMOVM2D           K1, Z13
+	VORPS              Z13, Z5, Z5
+	VORPS              Z13, Z6, Z6
+	VORPS              Z13, Z7, Z7
+	VORPS              Z13, Z8, Z8
+	VORPS              Z13, Z9, Z9
+	VORPS              Z13, Z10, Z10
+	VORPS              Z13, Z11, Z11
+	VORPS              Z13, Z12, Z12
+	VFMADD231PS        Z18, Z5, Z19
+	VMULPS             Z14, Z5, Z5
+	VADDPS             Z18, Z5, Z5
+	VFMADD231PS        Z18, Z6, Z19
+	VMULPS             Z14, Z6, Z6
+	VADDPS             Z18, Z6, Z6
+	VFMADD231PS        Z18, Z7, Z19
+	VMULPS             Z14, Z7, Z7
+	VADDPS             Z18, Z7, Z7
+	VFMADD231PS        Z18, Z8, Z19
+	VMULPS             Z14, Z8, Z8
+	VADDPS             Z18, Z8, Z8
+	VFMADD231PS        Z18, Z9, Z19
+	VMULPS             Z14, Z9, Z9
+	VADDPS             Z18, Z9, Z9
+	VFMADD231PS        Z18, Z10, Z19
+	VMULPS             Z14, Z10, Z10
+	VADDPS             Z18, Z10, Z10
+	VFMADD231PS        Z18, Z11, Z19
+	VMULPS             Z14, Z11, Z11
+	VADDPS             Z18, Z11, Z11
+	VFMADD231PS        Z18, Z12, Z19
+	VMULPS             Z14, Z12, Z12
+	VADDPS             Z18, Z12, Z12
+	MOVQ               16(SP), DX
+	MOVQ               176(AX), BX
+	VMOVUPS            Z5, (DX)
+	VMOVUPS            Z6, 64(DX)
+	LEAQ               (DX)(BX*4), DX
+	VMOVUPS            Z7, (DX)
+	VMOVUPS            Z8, 64(DX)
+	LEAQ               (DX)(BX*4), DX
+	VMOVUPS            Z9, (DX)
+	VMOVUPS            Z10, 64(DX)
+	LEAQ               (DX)(BX*4), DX
+	VMOVUPS            Z11, (DX)
+	VMOVUPS            Z12, 64(DX)
+	LEAQ               (DX)(BX*4), DX
+	MOVQ               DX, 16(SP)
+	VCMPPS             $0x03, Z19, Z19, K1
+	KMOVW              K1, DX
+	TESTL              DX, DX
+	MOVQ               24(SP), DX
+	SETNE              (DX)
+	INCQ               24(SP)
+	DECQ               (SP)
+	JNZ                group
+	VZEROUPPER
+	RET
+
+// func stochasticTruncatedAVX512R2V2(t *Tile[float32])
+// Requires: AVX, AVX512BW, AVX512DQ, AVX512F
+TEXT ·stochasticTruncatedAVX512R2V2(SB), $48-8
+	MOVQ    t+0(FP), AX
+	MOVQ    240(AX), CX
+	VMOVUPS 128(CX), Z0
+	VMOVUPS 832(CX), Z1
+	VMOVUPS 768(CX), Z2
+	VMOVUPS 896(CX), Z3
+	VMOVUPS 704(CX), Z4
+	MOVQ    8(AX), DX
+	MOVQ    DX, (SP)
+	MOVQ    120(AX), DX
+	MOVQ    DX, 8(SP)
+	MOVQ    152(AX), DX
+	MOVQ    DX, 16(SP)
+	MOVQ    216(AX), DX
+	MOVQ    DX, 24(SP)
+	MOVQ    16(AX), DX
+	MOVQ    DX, 32(SP)
+	MOVQ    72(AX), DX
+	MOVQ    DX, 40(SP)
+
+group:
+	MOVQ    8(SP), DX
+	MOVQ    144(AX), BX
+	VMOVUPS (DX), Z5
+	VMULPS  576(CX), Z5, Z5
+	VMOVUPS 64(DX), Z6
+	VMULPS  576(CX), Z6, Z6
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Z7
+	VMULPS  576(CX), Z7, Z7
+	VMOVUPS 64(DX), Z8
+	VMULPS  576(CX), Z8, Z8
+	LEAQ    (DX)(BX*4), DX
+	MOVQ    DX, 8(SP)
+	VPXORD  Z9, Z9, Z9
+	MOVQ    40(AX), DX
+	MOVQ    32(SP), BX
+	LEAQ    (BX)(DX*4), DX
+	MOVQ    DX, 32(SP)
+	MOVQ    40(AX), DX
+	MOVQ    40(SP), SI
+	LEAQ    (SI)(DX*4), DX
+	MOVQ    DX, 40(SP)
+	MOVQ    96(AX), DX
+	MOVQ    48(AX), DI
+	MOVQ    (AX), R8
+	ADDQ    R8, R8
+	XORQ    R9, R9
+
+term:
+	VMOVUPS            (DI), Z12
+	VBROADCASTSS       (BX)(R9*4), Z10
+	VPBROADCASTD       (SI)(R9*4), Z11
+	VPMADDWD           (DX), Z11, Z13
+	VFMADD231PS.RZ_SAE Z12, Z10, Z5
+	VANDPS             Z0, Z5, Z16
+	VMAXPS             Z16, Z9, Z9
+	VPSLLD             $0x10, Z13, Z13
+	VPSRLVD            Z1, Z13, Z13
+	VPANDD             Z2, Z13, Z13
+	VPORD              Z3, Z13, Z13
+	VPADDD             Z13, Z5, Z5
+	VPANDD             Z4, Z5, Z5
+	VMOVUPS            64(DI), Z13
+	VPMADDWD           64(DX), Z11, Z11
+	VFMADD231PS.RZ_SAE Z13, Z10, Z6
+	VANDPS             Z0, Z6, Z10
+	VMAXPS             Z10, Z9, Z9
+	VPSLLD             $0x10, Z11, Z11
+	VPSRLVD            Z1, Z11, Z11
+	VPANDD             Z2, Z11, Z11
+	VPORD              Z3, Z11, Z11
+	VPADDD             Z11, Z6, Z6
+	VPANDD             Z4, Z6, Z6
+	VBROADCASTSS       4(BX)(R9*4), Z10
+	VPBROADCASTD       4(SI)(R9*4), Z11
+	VPMADDWD           (DX), Z11, Z16
+	VFMADD231PS.RZ_SAE Z12, Z10, Z7
+	VANDPS             Z0, Z7, Z12
+	VMAXPS             Z12, Z9, Z9
+	VPSLLD             $0x10, Z16, Z16
+	VPSRLVD            Z1, Z16, Z16
+	VPANDD             Z2, Z16, Z16
+	VPORD              Z3, Z16, Z16
+	VPADDD             Z16, Z7, Z7
+	VPANDD             Z4, Z7, Z7
+	VPMADDWD           64(DX), Z11, Z11
+	VFMADD231PS.RZ_SAE Z13, Z10, Z8
+	VANDPS             Z0, Z8, Z10
+	VMAXPS             Z10, Z9, Z9
+	VPSLLD             $0x10, Z11, Z11
+	VPSRLVD            Z1, Z11, Z11
+	VPANDD             Z2, Z11, Z11
+	VPORD              Z3, Z11, Z11
+	VPADDD             Z11, Z8, Z8
+	VPANDD             Z4, Z8, Z8
+	ADDQ               $0x00000080, DI
+	ADDQ               $0x00000080, DX
+	ADDQ               $0x02, R9
+	CMPQ               R9, R8
+	JLT                term
+	VMOVUPS            640(CX), Z10
+	VPXORD             Z14, Z14, Z14
+	VPXORD             Z15, Z15, Z15
+	VCMPPS             $0x05, 1344(CX), Z9, K1
+	VPMOVM2D           K1, Z9
+	VORPS              Z9, Z5, Z5
+	VORPS              Z9, Z6, Z6
+	VORPS              Z9, Z7, Z7
+	VORPS              Z9, Z8, Z8
+	VFMADD231PS        Z14, Z5, Z15
+	VMULPS             Z10, Z5, Z5
+	VADDPS             Z14, Z5, Z5
+	VFMADD231PS        Z14, Z6, Z15
+	VMULPS             Z10, Z6, Z6
+	VADDPS             Z14, Z6, Z6
+	VFMADD231PS        Z14, Z7, Z15
+	VMULPS             Z10, Z7, Z7
+	VADDPS             Z14, Z7, Z7
+	VFMADD231PS        Z14, Z8, Z15
+	VMULPS             Z10, Z8, Z8
+	VADDPS             Z14, Z8, Z8
+	MOVQ               16(SP), DX
+	MOVQ               176(AX), BX
+	VMOVUPS            Z5, (DX)
+	VMOVUPS            Z6, 64(DX)
+	LEAQ               (DX)(BX*4), DX
+	VMOVUPS            Z7, (DX)
+	VMOVUPS            Z8, 64(DX)
+	LEAQ               (DX)(BX*4), DX
+	MOVQ               DX, 16(SP)
+	VCMPPS             $0x03, Z15, Z15, K1
+	KMOVW              K1, DX
+	TESTL              DX, DX
+	MOVQ               24(SP), DX
+	SETNE              (DX)
+	INCQ               24(SP)
+	DECQ               (SP)
+	JNZ                group
+	VZEROUPPER
+	RET
+
+// func stochasticTruncatedAVX512R4V1(t *Tile[float32])
+// Requires: AVX, AVX512BW, AVX512DQ, AVX512F
+TEXT ·stochasticTruncatedAVX512R4V1(SB), $48-8
+	MOVQ    t+0(FP), AX
+	MOVQ    240(AX), CX
+	VMOVUPS 128(CX), Z0
+	VMOVUPS 832(CX), Z1
+	VMOVUPS 768(CX), Z2
+	VMOVUPS 896(CX), Z3
+	VMOVUPS 704(CX), Z4
+	MOVQ    8(AX), DX
+	MOVQ    DX, (SP)
+	MOVQ    120(AX), DX
+	MOVQ    DX, 8(SP)
+	MOVQ    152(AX), DX
+	MOVQ    DX, 16(SP)
+	MOVQ    216(AX), DX
+	MOVQ    DX, 24(SP)
+	MOVQ    16(AX), DX
+	MOVQ    DX, 32(SP)
+	MOVQ    72(AX), DX
+	MOVQ    DX, 40(SP)
+
+group:
+	MOVQ    8(SP), DX
+	MOVQ    144(AX), BX
+	VMOVUPS (DX), Z5
+	VMULPS  576(CX), Z5, Z5
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Z6
+	VMULPS  576(CX), Z6, Z6
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Z7
+	VMULPS  576(CX), Z7, Z7
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Z8
+	VMULPS  576(CX), Z8, Z8
+	LEAQ    (DX)(BX*4), DX
+	MOVQ    DX, 8(SP)
+	VPXORD  Z9, Z9, Z9
+	MOVQ    40(AX), DX
+	MOVQ    32(SP), BX
+	LEAQ    (BX)(DX*4), SI
+	LEAQ    (SI)(DX*4), DX
+	MOVQ    DX, 32(SP)
+	MOVQ    40(AX), DX
+	MOVQ    40(SP), DI
+	LEAQ    (DI)(DX*4), R8
+	LEAQ    (R8)(DX*4), DX
+	MOVQ    DX, 40(SP)
+	MOVQ    96(AX), DX
+	MOVQ    48(AX), R9
+	MOVQ    (AX), R10
+	ADDQ    R10, R10
+	XORQ    R11, R11
+
+term:
+	VMOVUPS            (R9), Z12
+	VBROADCASTSS       (BX)(R11*4), Z10
+	VPBROADCASTD       (DI)(R11*4), Z11
+	VPMADDWD           (DX), Z11, Z11
+	VFMADD231PS.RZ_SAE Z12, Z10, Z5
+	VANDPS             Z0, Z5, Z10
+	VMAXPS             Z10, Z9, Z9
+	VPSLLD             $0x10, Z11, Z11
+	VPSRLVD            Z1, Z11, Z11
+	VPANDD             Z2, Z11, Z11
+	VPORD              Z3, Z11, Z11
+	VPADDD             Z11, Z5, Z5
+	VPANDD             Z4, Z5, Z5
+	VBROADCASTSS       4(BX)(R11*4), Z10
+	VPBROADCASTD       4(DI)(R11*4), Z11
+	VPMADDWD           (DX), Z11, Z11
+	VFMADD231PS.RZ_SAE Z12, Z10, Z6
+	VANDPS             Z0, Z6, Z10
+	VMAXPS             Z10, Z9, Z9
+	VPSLLD             $0x10, Z11, Z11
+	VPSRLVD            Z1, Z11, Z11
+	VPANDD             Z2, Z11, Z11
+	VPORD              Z3, Z11, Z11
+	VPADDD             Z11, Z6, Z6
+	VPANDD             Z4, Z6, Z6
+	VBROADCASTSS       (SI)(R11*4), Z10
+	VPBROADCASTD       (R8)(R11*4), Z11
+	VPMADDWD           (DX), Z11, Z11
+	VFMADD231PS.RZ_SAE Z12, Z10, Z7
+	VANDPS             Z0, Z7, Z10
+	VMAXPS             Z10, Z9, Z9
+	VPSLLD             $0x10, Z11, Z11
+	VPSRLVD            Z1, Z11, Z11
+	VPANDD             Z2, Z11, Z11
+	VPORD              Z3, Z11, Z11
+	VPADDD             Z11, Z7, Z7
+	VPANDD             Z4, Z7, Z7
+	VBROADCASTSS       4(SI)(R11*4), Z10
+	VPBROADCASTD       4(R8)(R11*4), Z11
+	VPMADDWD           (DX), Z11, Z11
+	VFMADD231PS.RZ_SAE Z12, Z10, Z8
+	VANDPS             Z0, Z8, Z10
+	VMAXPS             Z10, Z9, Z9
+	VPSLLD             $0x10, Z11, Z11
+	VPSRLVD            Z1, Z11, Z11
+	VPANDD             Z2, Z11, Z11
+	VPORD              Z3, Z11, Z11
+	VPADDD             Z11, Z8, Z8
+	VPANDD             Z4, Z8, Z8
+	ADDQ               $0x00000040, R9
+	ADDQ               $0x00000040, DX
+	ADDQ               $0x02, R11
+	CMPQ               R11, R10
+	JLT                term
+	VMOVUPS            640(CX), Z10
+	VPXORD             Z13, Z13, Z13
+	VPXORD             Z14, Z14, Z14
+	VCMPPS             $0x05, 1344(CX), Z9, K1
+	VPMOVM2D           K1, Z9
+	VORPS              Z9, Z5, Z5
+	VORPS              Z9, Z6, Z6
+	VORPS              Z9, Z7, Z7
+	VORPS              Z9, Z8, Z8
+	VFMADD231PS        Z13, Z5, Z14
+	VMULPS             Z10, Z5, Z5
+	VADDPS             Z13, Z5, Z5
+	VFMADD231PS        Z13, Z6, Z14
+	VMULPS             Z10, Z6, Z6
+	VADDPS             Z13, Z6, Z6
+	VFMADD231PS        Z13, Z7, Z14
+	VMULPS             Z10, Z7, Z7
+	VADDPS             Z13, Z7, Z7
+	VFMADD231PS        Z13, Z8, Z14
+	VMULPS             Z10, Z8, Z8
+	VADDPS             Z13, Z8, Z8
+	MOVQ               16(SP), DX
+	MOVQ               176(AX), BX
+	VMOVUPS            Z5, (DX)
+	LEAQ               (DX)(BX*4), DX
+	VMOVUPS            Z6, (DX)
+	LEAQ               (DX)(BX*4), DX
+	VMOVUPS            Z7, (DX)
+	LEAQ               (DX)(BX*4), DX
+	VMOVUPS            Z8, (DX)
+	LEAQ               (DX)(BX*4), DX
+	MOVQ               DX, 16(SP)
+	VCMPPS             $0x03, Z14, Z14, K1
+	KMOVW              K1, DX
+	TESTL              DX, DX
+	MOVQ               24(SP), DX
+	SETNE              (DX)
+	INCQ               24(SP)
+	DECQ               (SP)
+	JNZ                group
+	VZEROUPPER
+	RET
+
+// func stochasticTruncatedAVX512R2V1(t *Tile[float32])
+// Requires: AVX, AVX512BW, AVX512DQ, AVX512F
+TEXT ·stochasticTruncatedAVX512R2V1(SB), $48-8
+	MOVQ    t+0(FP), AX
+	MOVQ    240(AX), CX
+	VMOVUPS 128(CX), Z0
+	VMOVUPS 832(CX), Z1
+	VMOVUPS 768(CX), Z2
+	VMOVUPS 896(CX), Z3
+	VMOVUPS 704(CX), Z4
+	MOVQ    8(AX), DX
+	MOVQ    DX, (SP)
+	MOVQ    120(AX), DX
+	MOVQ    DX, 8(SP)
+	MOVQ    152(AX), DX
+	MOVQ    DX, 16(SP)
+	MOVQ    216(AX), DX
+	MOVQ    DX, 24(SP)
+	MOVQ    16(AX), DX
+	MOVQ    DX, 32(SP)
+	MOVQ    72(AX), DX
+	MOVQ    DX, 40(SP)
+
+group:
+	MOVQ    8(SP), DX
+	MOVQ    144(AX), BX
+	VMOVUPS (DX), Z5
+	VMULPS  576(CX), Z5, Z5
+	LEAQ    (DX)(BX*4), DX
+	VMOVUPS (DX), Z6
+	VMULPS  576(CX), Z6, Z6
+	LEAQ    (DX)(BX*4), DX
+	MOVQ    DX, 8(SP)
+	VPXORD  Z7, Z7, Z7
+	MOVQ    40(AX), DX
+	MOVQ    32(SP), BX
+	LEAQ    (BX)(DX*4), DX
+	MOVQ    DX, 32(SP)
+	MOVQ    40(AX), DX
+	MOVQ    40(SP), SI
+	LEAQ    (SI)(DX*4), DX
+	MOVQ    DX, 40(SP)
+	MOVQ    96(AX), DX
+	MOVQ    48(AX), DI
+	MOVQ    (AX), R8
+	ADDQ    R8, R8
+	XORQ    R9, R9
+
+term:
+	VMOVUPS            (DI), Z10
+	VBROADCASTSS       (BX)(R9*4), Z8
+	VPBROADCASTD       (SI)(R9*4), Z9
+	VPMADDWD           (DX), Z9, Z9
+	VFMADD231PS.RZ_SAE Z10, Z8, Z5
+	VANDPS             Z0, Z5, Z8
+	VMAXPS             Z8, Z7, Z7
+	VPSLLD             $0x10, Z9, Z9
+	VPSRLVD            Z1, Z9, Z9
+	VPANDD             Z2, Z9, Z9
+	VPORD              Z3, Z9, Z9
+	VPADDD             Z9, Z5, Z5
+	VPANDD             Z4, Z5, Z5
+	VBROADCASTSS       4(BX)(R9*4), Z8
+	VPBROADCASTD       4(SI)(R9*4), Z9
+	VPMADDWD           (DX), Z9, Z9
+	VFMADD231PS.RZ_SAE Z10, Z8, Z6
+	VANDPS             Z0, Z6, Z8
+	VMAXPS             Z8, Z7, Z7
+	VPSLLD             $0x10, Z9, Z9
+	VPSRLVD            Z1, Z9, Z9
+	VPANDD             Z2, Z9, Z9
+	VPORD              Z3, Z9, Z9
+	VPADDD             Z9, Z6, Z6
+	VPANDD             Z4, Z6, Z6
+	ADDQ               $0x00000040, DI
+	ADDQ               $0x00000040, DX
+	ADDQ               $0x02, R9
+	CMPQ               R9, R8
+	JLT                term
+	VMOVUPS            640(CX), Z8
+	VPXORD             Z11, Z11, Z11
+	VPXORD             Z12, Z12, Z12
+	VCMPPS             $0x05, 1344(CX), Z7, K1
+	VPMOVM2D           K1, Z7
+	VORPS              Z7, Z5, Z5
+	VORPS              Z7, Z6, Z6
+	VFMADD231PS        Z11, Z5, Z12
+	VMULPS             Z8, Z5, Z5
+	VADDPS             Z11, Z5, Z5
+	VFMADD231PS        Z11, Z6, Z12
+	VMULPS             Z8, Z6, Z6
+	VADDPS             Z11, Z6, Z6
+	MOVQ               16(SP), DX
+	MOVQ               176(AX), BX
+	VMOVUPS            Z5, (DX)
+	LEAQ               (DX)(BX*4), DX
+	VMOVUPS            Z6, (DX)
+	LEAQ               (DX)(BX*4), DX
+	MOVQ               DX, 16(SP)
+	VCMPPS             $0x03, Z12, Z12, K1
+	KMOVW              K1, DX
+	TESTL              DX, DX
+	MOVQ               24(SP), DX
+	SETNE              (DX)
+	INCQ               24(SP)
+	DECQ               (SP)
+	JNZ                group
+	VZEROUPPER
+	RET

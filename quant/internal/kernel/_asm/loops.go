@@ -255,6 +255,16 @@ var loops = []loop{
 		doc: "is x = x + factor b rounded to odd, factor 1 or -1, t as in slices.go.",
 	},
 	{
+		name: "fetch", signature: "func(x []float32)",
+		doc: "asks for the cache lines of x, which stay as they are.",
+		emit: func(g *loop) {
+			x, n := g.base("x"), g.length("x")
+			const line = 16
+			g.each(n, line, func(i reg.Register) { g.PREFETCHT0(g.at(x, i, 4)) })
+			g.end()
+		},
+	},
+	{
 		name: "addNearest", signature: "func(total, chunk []float32, c *Constants)",
 		doc:  "is total = R(binary32(total + chunk)), R nearest-even to the grid of c's sums.",
 		emit: func(g *loop) { emitAdd(g, false) },

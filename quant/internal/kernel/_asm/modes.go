@@ -176,6 +176,15 @@ var modes = []mode{
 		},
 	},
 	{
+		name: "stochasticTruncated", doc: "the loop s = S(s + a b), S stochastic of the exact sum, cut to binary32, no sum subnormal and inexact, terms ascending.",
+		truncate: true, watch: true, random: true,
+		constants: []string{"MagnitudeMask", "RandomShift", "RandomMask", "RandomHalf", "Keep"},
+		step: func(g *tile, r, v int) chain {
+			u, s := g.reg(), g.sums[r][v]
+			return join(g.mix(u, r, v), g.fuseTruncated(r, v), g.watch(s), g.alignDown(u), g.carry(s, u, sumRounding))
+		},
+	},
+	{
 		name: "stochasticWide", doc: "the loop s = S(s + a b), S stochastic of the exact sum, terms ascending.",
 		double: true, truncate: true, watch: true, random: true,
 		constants: []string{"RandomShift", "SumLeast", "SignMask", "MagnitudeMask", "RandomMask", "RandomHalf", "Keep"},

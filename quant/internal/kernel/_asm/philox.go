@@ -25,7 +25,7 @@ type philox struct {
 	multiplier [2]reg.VecVirtual
 	weyl       [2]operand.Mem
 	key        [2]reg.VecVirtual
-	counter    [2][4]reg.VecVirtual // even columns, odd columns
+	counter    [][4]reg.VecVirtual // even columns, odd columns; sets of a stream
 }
 
 // generate emits the function: for block after block of four terms, for group after
@@ -33,6 +33,7 @@ type philox struct {
 func (g *philox) generate(c *build.Context, name string) {
 	g.Context = c
 	g.double = true
+	g.counter = make([][4]reg.VecVirtual, g.sets())
 	if g.stream {
 		g.generateStream(name)
 		return
@@ -125,13 +126,15 @@ func (g *philox) start(arg func(string) operand.Mem, column, phase reg.Register,
 	for n := range 2 {
 		g.key[n] = g.reg()
 		g.spread(g.key[n], arg("Key"+itoa(n)))
+	}
+	for n := range g.counter {
 		for w := range 4 {
 			g.counter[n][w] = g.reg()
 		}
 		g.MOVQ(arg("Lane"), lane)
 		g.ADDQ(column, lane)
-		if n == 1 {
-			g.ADDQ(operand.Imm(uint64(g.apart())), lane)
+		if n > 0 {
+			g.ADDQ(operand.Imm(uint64(n*g.apart())), lane)
 		}
 		g.VMOVQ(lane, x)
 		g.VPBROADCASTQ(x, g.counter[n][0])
@@ -143,7 +146,16 @@ func (g *philox) start(arg func(string) operand.Mem, column, phase reg.Register,
 	}
 }
 
-// apart is the distance of the two sets of counters.
+// sets is the number of sets of counters under way at once. A stream has as many as
+// the registers hold: a round is a chain of six cycles or so.
+func (g *philox) sets() int {
+	if g.stream && g.zmm {
+		return 4
+	}
+	return 2
+}
+
+// apart is the distance of neighbouring sets of counters.
 func (g *philox) apart() int {
 	if g.stream {
 		return g.count()
@@ -158,7 +170,7 @@ func (g *philox) generateStream(name string) {
 	g.Function(name)
 	g.Pragma("noescape")
 	g.Doc(name+" fills Dst with the words of one stream: Dst[4n + w] = word w of Philox4x32-10,",
-		"counter (Lane + n, Step, Site, Phase), for n below Blocks and on to a multiple of "+itoa(2*g.count())+".")
+		"counter (Lane + n, Step, Site, Phase), for n below Blocks and on to a multiple of "+itoa(g.sets()*g.count())+".")
 	g.Signature(pointerSignature("philoxArgs"))
 	args := g.Load(g.Param("t"), g.GP64())
 	arg := func(name string) operand.Mem { return operand.Mem{Base: args, Disp: offset(philoxFields, name)} }
@@ -177,8 +189,8 @@ func (g *philox) generateStream(name string) {
 	for set := range g.counter {
 		g.storeCounters(operand.Mem{Base: dst, Disp: set * 2 * g.bytes()}, &g.counter[set])
 	}
-	g.ADDQ(operand.U32(uint64(4*g.bytes())), dst)
-	g.ADDQ(operand.Imm(uint64(2*g.count())), at)
+	g.ADDQ(operand.U32(uint64(2*g.sets()*g.bytes())), dst)
+	g.ADDQ(operand.Imm(uint64(g.sets()*g.count())), at)
 	g.CMPQ(at, blocks)
 	g.JLT(operand.LabelRef("counters"))
 	g.VZEROUPPER()
@@ -221,7 +233,7 @@ func (g *philox) merge(even, odd reg.Register) {
 	g.VPBLENDD(operand.Imm(0xAA), odd, even, even)
 }
 
-// rounds runs the ten rounds on both sets of counters.
+// rounds runs the ten rounds on all sets of counters.
 func (g *philox) rounds() {
 	for n := range 10 {
 		if n > 0 {

@@ -25,7 +25,9 @@ func (g *tile) fuseTruncated(r, v int) chain {
 	if !g.zmm {
 		return g.fuse(r, v)
 	}
-	return chain{func() { g.VFMADD231PD_RZ_SAE(g.right[v], g.left[r], g.sums[r][v]) }}
+	return chain{func() {
+		g.pick(g.VFMADD231PS_RZ_SAE, g.VFMADD231PD_RZ_SAE)(g.right[v], g.left[r], g.sums[r][v])
+	}}
 }
 
 // plus: sum += p.
@@ -191,6 +193,16 @@ func (g *tile) align(u reg.Register, to rounding) chain {
 		func() { g.shiftLeft(u, u, g.constant(to.shift)) },
 		func() { g.andInt(u, u, g.constant(to.mask)) },
 		func() { g.orInt(u, u, g.constant(to.half)) },
+	}
+}
+
+// alignDown is align for a binary32 lane, whose upper half of u is of no meaning.
+func (g *tile) alignDown(u reg.Register) chain {
+	return chain{
+		func() { g.VPSLLD(operand.Imm(16), u, u) },
+		func() { g.shiftRight(u, u, g.constant("RandomShift")) },
+		func() { g.andInt(u, u, g.constant("RandomMask")) },
+		func() { g.orInt(u, u, g.constant("RandomHalf")) },
 	}
 }
 

@@ -358,10 +358,14 @@ func (g *tile) poison(top reg.Register, name string) {
 	limit := operand.Mem{Base: g.table, Disp: offset(constantFields, name)}
 	if g.zmm {
 		k := g.K()
-		g.VCMPPD(operand.Imm(notLess), limit, top, k)
-		g.VPMOVM2Q(k, top)
+		g.pick(g.VCMPPS, g.VCMPPD)(operand.Imm(notLess), limit, top, k)
+		if g.double {
+			g.VPMOVM2Q(k, top)
+		} else {
+			g.VPMOVM2D(k, top)
+		}
 	} else {
-		g.VCMPPD(operand.Imm(notLess), limit, top, top)
+		g.pick(g.VCMPPS, g.VCMPPD)(operand.Imm(notLess), limit, top, top)
 	}
 	for _, row := range g.sums {
 		for _, x := range row {
