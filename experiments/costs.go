@@ -168,6 +168,12 @@ func costArm(p *plan.Plan, a *plan.Arm) cost.Arm {
 		Layers:     make([]cost.Assignment, len(p.Network.Layers)),
 		LossScaled: a.Arithmetic.LossScale.Kind != trainer.NoScale,
 	}
+	for _, c := range a.Arithmetic.Channels {
+		arm.Channels = append(arm.Channels, costPoint(c))
+		if widest := &arm.Channels[len(arm.Channels)-1]; len(arm.Channels) == 1 || widest.Format.Bits > arm.Input.Format.Bits {
+			arm.Input = *widest
+		}
+	}
 	for i := range arm.Layers {
 		from := &a.Arithmetic.Layers[i]
 		for _, id := range p.Network.PointsOf(i) {

@@ -81,6 +81,7 @@ func init() {
 		{parsePosit, []string{"posit8", "posit16", "posit32"}},
 		{parseLogarithmic, []string{"LNS4.3", "LNS5.10"}},
 		{parseTable, nil},
+		{parseADC, []string{"ADC12(from=-1,to=1)"}},
 		{parseInteger, []string{"INT8", "UINT8", "INT4"}},
 		{parseBlock, []string{"MXFP8", "MXFP6", "MXFP4", "MXINT8"}},
 		{parseFloat, floatNames()},
@@ -106,7 +107,8 @@ func FormatNames() []string {
 //
 // The other scalar families: E8M0, the scale of MX (a signed float of that split is
 // written E8M0(top=ieee)); Q2.14 and UQ0.8, fixed point, with overflow=wrap or nan;
-// posit8 and other widths; LNS5.10, logarithmic; binary8p4-draft; table(-1,0,1).
+// posit8 and other widths; LNS5.10, logarithmic; binary8p4-draft; table(-1,0,1);
+// ADC12(from=-40,to=85), the codes of a converter.
 //
 // Formats with shared scales, for operands only: INT8(scale=99.9%,zero=fit,per=channel);
 // MXFP8(E4M3), MXFP6(E2M3), MXFP4(block=16,rule=up), MXINT8, and

@@ -327,3 +327,16 @@ func listTable(t testing.TB, values ...float64) *listed {
 	}
 	return l.sorted()
 }
+
+// listADC: from + k/2^bits (to - from) in exact rationals, to the nearest binary32 number.
+func listADC(t testing.TB, name string, bits int, from, to float32) *listed {
+	l := listOf(t, name)
+	lo := new(big.Rat).SetFloat64(float64(from))
+	width := new(big.Rat).Sub(new(big.Rat).SetFloat64(float64(to)), lo)
+	for k := range 1 << bits {
+		v := new(big.Rat).Mul(big.NewRat(int64(k), 1<<bits), width)
+		x, _ := v.Add(v, lo).Float32()
+		l.add(new(big.Rat).SetFloat64(float64(x)), uint64(k), true)
+	}
+	return l.sorted()
+}

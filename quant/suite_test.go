@@ -36,6 +36,8 @@ func smallFormats(t testing.TB) []*listed {
 		listTable(t, -1, 1),
 		listTable(t, 0.5, 0.75, 3),
 		listTable(t, -3, -2, 0x1p-30, 7),
+		listADC(t, "ADC5(from=-40,to=85)", 5, -40, 85),
+		listADC(t, "ADC8(from=-3.3,to=3.3)", 8, -3.3, 3.3),
 	}
 }
 

@@ -63,7 +63,11 @@ func (j *Job) checkExtents(p *parts) error {
 		if l.Sums.longest() >= termLimit {
 			return fmt.Errorf("%s: a sum of %d terms; fewer than %d can be numbered: use a smaller batch", j.Network.where(i), l.Sums.longest(), termLimit)
 		}
-		if widest := max(volume(l.In), volume(l.Out)); largest > columnLimit/widest {
+		widest := max(volume(l.In), volume(l.Out))
+		if heads := j.Network.Layers[i].heads; heads > 0 { // positions of each head are columns
+			widest = max(widest, heads*l.In[1])
+		}
+		if largest > columnLimit/widest {
 			return fmt.Errorf("%s: %d examples of %d values; fewer than %d values can be numbered: use fewer examples", j.Network.where(i), largest, widest, columnLimit)
 		}
 	}

@@ -89,6 +89,7 @@ type LossScale struct {
 // layer of the same index.
 type Arm struct {
 	Input        quant.Point
+	Channels     []quant.Point // a point for each channel of the input, in place of Input; nil: Input for all
 	LossGradient quant.Point
 	Layers       []Arithmetic
 	LossScale    LossScale

@@ -10,7 +10,8 @@
 //
 // # Rounding points
 //
-//	input                       an example entering the network
+//	input                       an example entering the network; each channel may
+//	                            have a point of its own, see channels.go
 //	forward.weight              the working copy of weights and biases
 //	forward.product .sum .outer inside the sums of the forward pass
 //	forward.activation          the output of a layer

@@ -27,6 +27,8 @@ type engine[T quant.Element] struct {
 	observer *observer // nil: nobody looks
 	twin     *twin     // nil: gradients are not compared
 
+	stripes []stripe // of an example whose channels are rounded differently
+
 	judge  *judge[T]
 	mover  *mover[T]
 	scaler *scaler
@@ -53,6 +55,7 @@ func newEngine[T quant.Element](job *Job, train *split, parts parts) (*engine[T]
 		scaler: newScaler(job.Arm.LossScale),
 		scores: newScores(parts.classes, parts.loss.regression()),
 	}
+	e.stripes = stripesOf(e.net, e.arm)
 	capacity := max(e.batch, min(evaluationBatch, parts.largest))
 	if err := e.buildLayers(capacity, job.Team); err != nil {
 		return nil, err
@@ -140,9 +143,7 @@ func (e *engine[T]) record() []Param {
 // forward walks up the network from inputs [samples, ...] and returns the
 // outputs.
 func (e *engine[T]) forward(p *pass, inputs []float32) []T {
-	bottom := e.edges[0]
-	all := place{layer: -1}
-	round(all, p, Input, opInput, bottom.values(p.samples), inputs, &e.arm.Input, p.first*uint64(bottom.per))
+	e.takeInputs(p, inputs)
 	for _, l := range e.layers {
 		l.forward(p)
 	}

@@ -2,6 +2,7 @@ package trainer
 
 import (
 	"math"
+	"strings"
 	"testing"
 
 	"ulpine/quant"
@@ -38,6 +39,20 @@ func TestInnerCounts(t *testing.T) {
 			e.backward(&e.pass, []float64{math.NaN(), math.NaN(), math.NaN(), 1, math.NaN(), math.NaN()})
 			checkInner(t, text, &net, at, below, e.tally[at+1])
 		}
+	}
+}
+
+// TestColumnsOfHeadsAreNumbered: an example has a column for each position of each head,
+// which may be more than its values.
+func TestColumnsOfHeadsAreNumbered(t *testing.T) {
+	job := Job{Network: network(t, []int{1, 64}, "attention heads=32 width=32", "dense 3"), Arm: baseline(t, 2), Training: sgdTraining(2, 1)}
+	p := parts{train: &split{n: 2}, largest: columnLimit / (32 * 64)}
+	if err := job.checkExtents(&p); err != nil {
+		t.Error(err)
+	}
+	p.largest++
+	if err := job.checkExtents(&p); err == nil || !strings.Contains(err.Error(), "layer 1 (attention heads=32 width=32 mask=none)") || !strings.Contains(err.Error(), "use fewer examples") {
+		t.Errorf("columns beyond the numbers: %v", err)
 	}
 }
 

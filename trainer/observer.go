@@ -121,9 +121,9 @@ func lookCombined[A, B quant.Element](w *observer, a []A, b []B, how arithmetic)
 // compare tallies the values kept by look with what they were rounded to.
 func compare[D quant.Element](w *observer, layer int, id PointID, dst []D, point *quant.Point) {
 	s := w.point(layer, id)
-	largest := point.Format.Limits().Max
+	l := point.Format.Limits()
 	for i, at := range w.at[:w.choose(len(dst))] {
-		s.count(w.before[i], float64(dst[at]), largest)
+		s.count(w.before[i], float64(dst[at]), l.Lowest, l.Max)
 	}
 }
 
@@ -136,7 +136,7 @@ func (w *observer) point(layer int, id PointID) *seen {
 }
 
 // count tallies one value and its rounding.
-func (s *seen) count(x, y, largest float64) {
+func (s *seen) count(x, y, lowest, largest float64) {
 	s.Values++
 	finite := x-x == 0
 	switch {
@@ -153,7 +153,7 @@ func (s *seen) count(x, y, largest float64) {
 		}
 	case finite && y-y != 0:
 		s.Overflow++
-	case math.Abs(x) > largest && math.Abs(y) == largest:
+	case x > largest && y == largest || x < lowest && y == lowest:
 		s.Saturated++
 	case y == 0 && x != 0:
 		s.Underflow++
@@ -199,7 +199,8 @@ func lookSums[T quant.Element](w *observer, layer int, productID, sumID PointID,
 			}
 			if acc.Product != nil && k%stride == 0 {
 				y, _ := acc.Product.Round(quant.ExactProduct(a, float64(b)), 1<<31)
-				w.point(layer, productID).count(p, y, acc.Product.Format.Limits().Max)
+				l := acc.Product.Format.Limits()
+				w.point(layer, productID).count(p, y, l.Lowest, l.Max)
 			}
 			high, low = addTwice(high, low, p, rest)
 		}

@@ -289,6 +289,6 @@ func compareTerms[D quant.Element](w *observer, layer int, id PointID, dst []D, 
 	s := w.point(layer, id)
 	row := len(dst) / len(factors)
 	for i, at := range w.at[:w.choose(len(dst))] {
-		s.count(w.before[i], float64(float64(dst[at])*factors[at/row]), math.Inf(1))
+		s.count(w.before[i], float64(float64(dst[at])*factors[at/row]), math.Inf(-1), math.Inf(1))
 	}
 }

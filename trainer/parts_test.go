@@ -226,7 +226,7 @@ func TestElmanIsItsScalarAccount(t *testing.T) {
 							g = dy.v[s*units+u]
 						}
 						h := states.at(s, u, t)
-						now.v[s*units+u] = o.store(quant.Exactly(g*(1-h*h)), 0, 51, s*units+u)
+						now.v[s*units+u] = o.store(quant.Exactly(g*(1-float64(h*h))), 0, 51, s*units+u)
 						da.v[da.index(s, u, t)] = now.v[s*units+u]
 					}
 				}

@@ -17,7 +17,11 @@ type setting struct {
 // settings lists the points an arm sets, those that reuse another's tensor or
 // are exact left out, for the layers of a network in turn.
 func (n *Network) settings(arm *Arm) []setting {
-	all := []setting{{-1, Input, &arm.Input, true}, {-1, LossGradient, &arm.LossGradient, true}}
+	var all []setting
+	for _, point := range arm.inputPoints() {
+		all = append(all, setting{-1, Input, point, true})
+	}
+	all = append(all, setting{-1, LossGradient, &arm.LossGradient, true})
 	for i := range n.Layers {
 		for _, id := range n.Layers[i].Points {
 			for _, point := range arm.Layers[i].At(id) {
@@ -161,6 +165,9 @@ func (n *Network) checkArithmetic(arm *Arm, states int) error {
 		if has := len(arm.Layers[i].States); len(n.Layers[i].Params) > 0 && has != states {
 			return fmt.Errorf("layer %d (%s): the arm sets %d state tensors, the optimizer keeps %d", i+1, n.Layers[i].Name, has, states)
 		}
+	}
+	if err := n.checkChannels(arm); err != nil {
+		return err
 	}
 	for _, s := range n.settings(arm) {
 		if err := CheckPoint(s.id, s.point); err != nil {

@@ -27,6 +27,8 @@ func oracleOf(f quant.Format) (*oracle.Format, error) {
 		return oracle.NewPosit(f.Limits().Bits)
 	case quant.Table:
 		return oracleOfTable(f)
+	case quant.ADC:
+		return oracleOfTable(f.Table)
 	}
 	if _, integer := f.(quant.Wrapper); integer {
 		return oracleOfIntegers(f)

@@ -13,6 +13,7 @@ import (
 func (a *assignment) arm(network *trainer.Network, states int) trainer.Arm {
 	arm := trainer.Arm{
 		Input:        a.slots[trainer.Input].value.point,
+		Channels:     a.slots[trainer.Input].value.channelPoints(),
 		LossGradient: a.slots[trainer.LossGradient].value.point,
 		Layers:       make([]trainer.Arithmetic, len(network.Layers)),
 	}
@@ -202,6 +203,9 @@ func activationsBelow(network *trainer.Network, arm *trainer.Arm, i int) []quant
 		if len(network.Layers[j].Params) > 0 {
 			return points
 		}
+	}
+	if len(arm.Channels) > 0 {
+		return append(points, arm.Channels...)
 	}
 	return append(points, arm.Input)
 }

@@ -189,10 +189,7 @@ func joined(parts []string) string { return strings.Join(parts, ", ") }
 // settings lists the rounding points an arm computes with, input and loss as
 // layer -1, in the order of computation within each layer.
 func settings(network *trainer.Network, arm *trainer.Arm) []Setting {
-	rows := []Setting{
-		pointRow(-1, "input", trainer.Input, arm.Input),
-		pointRow(-1, "loss", trainer.LossGradient, arm.LossGradient),
-	}
+	rows := append(inputRows(arm), pointRow(-1, "loss", trainer.LossGradient, arm.LossGradient))
 	for i := range network.Layers {
 		for _, id := range network.PointsOf(i) {
 			rows = append(rows, layerRows(network, arm, i, id)...)

@@ -255,6 +255,8 @@ func (r *reader) applyTarget(n *node, key string, t target, sel selection, a *as
 	switch {
 	case key == trainer.UpdateState.String() && n.list != nil:
 		v, ok = r.readStates(n, fs)
+	case key == trainer.Input.String() && n.list != nil:
+		v, ok = r.readChannels(n, r.input, fs)
 	case word != exactWord || !isProduct(t.ids[0]) || len(t.ids) > 1:
 		v, ok = r.readValue(n, t.class, fs)
 	}
@@ -268,7 +270,7 @@ func (r *reader) applyTarget(n *node, key string, t target, sel selection, a *as
 	a.spelled = append(a.spelled, origin+" "+v.spell())
 	r.applies(n, key, t, sel)
 	for _, id := range t.ids {
-		s := slot{set: true, rank: specificity{what: t.rank}, at: n, origin: origin, value: value{point: v.point, exact: v.exact, states: v.states}}
+		s := slot{set: true, rank: specificity{what: t.rank}, at: n, origin: origin, value: value{point: v.point, exact: v.exact, states: v.states, channels: v.channels}}
 		switch {
 		case isStatistic(id):
 			s.value = v
@@ -289,7 +291,7 @@ func (r *reader) applyTarget(n *node, key string, t target, sel selection, a *as
 
 // checkShared refuses a format with shared scales where it cannot be.
 func (r *reader) checkShared(n *node, t target, v value) bool {
-	points := append([]quant.Point{v.point}, v.states...)
+	points := slices.Concat([]quant.Point{v.point}, v.states, v.channels)
 	if v.outer != nil {
 		points = append(points, *v.outer)
 	}

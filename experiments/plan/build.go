@@ -62,6 +62,7 @@ func (r *reader) build(root *node) *Plan {
 	}
 	p.Task = r.readTask(root)
 	p.Network = r.readNetwork(root, &p.Task)
+	r.input = p.Network.Input
 	p.Training = r.readMainTraining(root, &p.Task)
 	p.Diagnostics = r.readDiagnostics(root)
 	p.Predictions = r.readPredictions(root)

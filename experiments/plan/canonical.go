@@ -32,7 +32,7 @@ func (a *Arm) canonical(network *trainer.Network) string {
 
 // canonicalArithmetic writes what holds at every point.
 func canonicalArithmetic(b *strings.Builder, network *trainer.Network, arm *trainer.Arm) {
-	fmt.Fprintln(b, "input:", arm.Input)
+	fmt.Fprintln(b, "input:", inputText(arm))
 	fmt.Fprintln(b, "loss.gradient:", arm.LossGradient)
 	for i := range network.Layers {
 		for _, id := range network.PointsOf(i) {

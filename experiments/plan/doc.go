@@ -117,6 +117,8 @@
 //	subnormals   false: results below the least normal value become zero
 //	bias, top    another exponent bias or layout of the top exponent
 //	width        bits in all, checked against the format
+//	range, bits  in place of format: the codes of a converter of so many bits from one
+//	             number to below another, range = [-40, 85], bits = 12 (quant.ADC)
 //	order        of sums: sequential (default), pairwise, wide, compensated, chunk(64),
 //	             lanes(8), aligned(8,24)
 //	outer        of sums: where finished chunks and the bias are added; default:
@@ -127,6 +129,11 @@
 // with order, outer and through of their own; forward.moment is what is made of them.
 // Only their own keys set them: unset, they are as the sums and activations of their
 // phase, so shorthands reach them through those.
+//
+// input also takes an array of tables with settings for some channels of the input each:
+// channels = [1, 2], the first being 1, or without channels for all others. Every
+// channel needs one setting. A channel is an index of the first axis of an example; in
+// flat data every value is one.
 //
 // weight_gradient.residue is error feedback: what rounding a parameter's gradient to its
 // result takes away is kept in this format and added to the next step's gradient before

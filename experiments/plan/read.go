@@ -12,6 +12,7 @@ import (
 type reader struct {
 	errs   Errors
 	stored StoredRuns // nil: none can be read
+	input  []int      // shape of an example, as soon as it is known
 }
 
 // fail records an error.

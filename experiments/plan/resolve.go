@@ -233,7 +233,10 @@ func writePoints(w *tabwriter.Writer, a *Arm) {
 	for _, s := range a.Settings {
 		where := fmt.Sprintf("%d %s", s.Layer+1, s.Name)
 		if s.Layer < 0 {
-			where = "-"
+			where = "-" + strings.TrimPrefix(s.Name, s.Point)
+			if s.Name == "loss" {
+				where = "-"
+			}
 		}
 		fmt.Fprintf(w, "  %s\t%s\t%s\t%s\n", where, s.Point, s.say(), a.origin(s))
 	}
@@ -275,7 +278,10 @@ func writeGroups(w *tabwriter.Writer, p *Plan, a *Arm) {
 		}
 		for _, text := range said {
 			name := id.String()
-			if len(said) > 1 {
+			switch {
+			case len(said) > 1 && id == trainer.Input:
+				name = a.Settings[slices.IndexFunc(a.Settings, func(s Setting) bool { return s.Point == name && s.say() == text })].Name
+			case len(said) > 1:
 				name += " of layer " + strings.Trim(strings.ReplaceAll(fmt.Sprint(layers[text]), " ", "+"), "[]")
 			}
 			if groups[text] == nil {

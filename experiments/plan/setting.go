@@ -28,7 +28,8 @@ type value struct {
 	point quant.Point
 	exact bool // a product that is not rounded
 
-	states []quant.Point // a point for each state tensor; nil: the one point for all
+	states   []quant.Point // a point for each state tensor; nil: the one point for all
+	channels []quant.Point // of the input; nil: the one point for all
 
 	// Sums only.
 	order   quant.Order
@@ -38,7 +39,7 @@ type value struct {
 }
 
 // pointKeys are what the table of any point may hold.
-var pointKeys = []string{"format", "rounding", "random_bits", "variant", "share", "register", "overflow", "subnormals", "bias", "top", "width"}
+var pointKeys = []string{"format", "rounding", "random_bits", "variant", "share", "register", "overflow", "subnormals", "bias", "top", "width", "range", "bits"}
 
 // sumKeys are what the table of a sum may hold besides.
 var sumKeys = []string{"order", "outer", "through"}
@@ -148,8 +149,14 @@ func (r *reader) readPoint(n *node, c class, fs formats) (p quant.Point) {
 
 // readFormat reads a table's format with its options, or returns nil.
 func (r *reader) readFormat(n *node, fs formats) quant.Format {
+	if n.table["range"] != nil {
+		return r.readRange(n)
+	}
 	before := len(r.errs)
 	word := r.text(n, "format", "")
+	if at := n.table["bits"]; at != nil {
+		r.fail(at.errorf("write range = [-40, 85], bits = 12, or a format", "bits without a range"))
+	}
 	if n.table["format"] == nil {
 		r.fail(n.errorf(`write format = "bf16"; what a table leaves out is not taken from elsewhere`, "format is missing"))
 	}
@@ -229,6 +236,14 @@ func (v value) spell() string {
 			words[i] = value{point: p}.spell()
 		}
 		return "[" + strings.Join(words, ", ") + "]"
+	}
+	if v.channels != nil {
+		var words []string
+		names, points := channelGroups(v.channels)
+		for i, p := range points {
+			words = append(words, "channel "+names[i]+" "+value{point: p}.spell())
+		}
+		return strings.Join(words, ", ")
 	}
 	if v.exact {
 		return exactWord

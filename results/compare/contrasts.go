@@ -81,7 +81,7 @@ func (one *series) sentence() string {
 		}
 		groups[what] = append(groups[what], place)
 	}
-	paired := ""
+	paired := pairs(one.of)
 	for i, c := range one.of {
 		w := newMeasure(c)
 		size := w.figure(c.Mean)
@@ -103,19 +103,13 @@ func (one *series) sentence() string {
 		default:
 			add("undecided", place)
 		}
-		switch n := pairs([]*results.Comparison{c}); {
-		case paired == "":
-			paired = n
-		case paired != n:
+		if c.N != one.of[0].N {
 			paired = "pairs as in the table"
 		}
 	}
 	parts := make([]string, len(order))
 	for i, what := range order {
 		parts[i] = what + " at " + list(groups[what])
-	}
-	if !strings.HasPrefix(paired, "pairs") {
-		paired += " each"
 	}
 	return fmt.Sprintf("Along %s, %s against %s: %s (%s).", one.axis, one.value, one.against, strings.Join(parts, "; "), paired)
 }

@@ -29,6 +29,16 @@ func TestSeriesOfContrasts(t *testing.T) {
 	if got := Answer(&s); got != want {
 		t.Errorf("got  %s\nwant %s", got, want)
 	}
+	for i := range s.Contrasts {
+		s.Contrasts[i].Planned, s.Contrasts[i].LookEvery = 12, 4
+	}
+	if got := Answer(&s); !strings.HasSuffix(got, "(12 pairs each, look 3 of 3).") {
+		t.Errorf("%s", got)
+	}
+	s.Contrasts[3].N = 11
+	if got := Answer(&s); !strings.HasSuffix(got, "(pairs as in the table).") {
+		t.Errorf("%s", got)
+	}
 	lone := compared("E4M4-stochastic", results.Verdict{Kind: results.Within}, 12)
 	lone.Against, lone.Headline = "E5M3-nearest-even", true // two axes differ
 	s.Contrasts = append(s.Contrasts[:2], lone)

@@ -72,11 +72,14 @@ type Assignment struct {
 
 // Arm is an assignment of arithmetic to a whole network.
 type Arm struct {
-	Name   string       `json:"name"`
-	Slug   string       `json:"slug"`
-	Input  Point        `json:"input"`
-	Loss   Point        `json:"loss"` // the output error
-	Layers []Assignment `json:"layers"`
+	Name  string `json:"name"`
+	Slug  string `json:"slug"`
+	Input Point  `json:"input"`
+	Loss  Point  `json:"loss"` // the output error
+	// Channels are the points of the input's channels, which have as many values each,
+	// where they differ; Input is then the widest, what multipliers must hold.
+	Channels []Point      `json:"channels,omitempty"`
+	Layers   []Assignment `json:"layers"`
 	// LossScaled: gradients are divided by the loss scale before the update, one
 	// multiplication a parameter.
 	LossScaled bool `json:"loss_scaled,omitempty"`
@@ -208,6 +211,9 @@ func (arm *Arm) check(at string, n *Network, o *Optimizer, e *fieldErrors) {
 	}
 	arm.Input.check(at+".input", true, e)
 	arm.Loss.check(at+".loss", true, e)
+	for i := range arm.Channels {
+		arm.Channels[i].check(fmt.Sprintf("%s.channels[%d]", at, i+1), true, e)
+	}
 	if len(arm.Layers) != len(n.Layers) {
 		e.add(at+".layers", fmt.Sprintf("arithmetic for %d layers, the network has %d", len(arm.Layers), len(n.Layers)),
 			"give one entry a layer")

@@ -4,11 +4,13 @@ package cost
 // stored in. Edge i is the input of layer i, edge len(layers) the network's
 // output.
 type bound struct {
-	net   *Network
-	opt   *Optimizer
-	arm   *Arm
-	acts  []Format // by edge
-	grads []Format
+	net  *Network
+	opt  *Optimizer
+	arm  *Arm
+	acts []Format // by edge
+	// asInput: the edge holds the network's input as it is, channel by channel.
+	asInput []bool
+	grads   []Format
 	// The rows along which shared-scale blocks of an edge's tensor run: for
 	// activations what the next product above reduces, for gradients what the
 	// next product below does; 0: the whole tensor.
@@ -23,7 +25,10 @@ func bind(n *Network, o *Optimizer, arm *Arm) *bound {
 		actAxis: make([]uint64, count+1), gradAxis: make([]uint64, count+1),
 	}
 	b.acts[0] = arm.Input.Format
+	b.asInput = make([]bool, count+1)
+	b.asInput[0] = len(arm.Channels) > 0
 	for i := range n.Layers {
+		b.asInput[i+1] = b.asInput[i] && arm.Layers[i].Activation.Format.IsZero()
 		b.acts[i+1] = orElse(arm.Layers[i].Activation.Format, b.acts[i])
 		b.gradAxis[i+1] = axisOr(n.Layers[i].OutAxis, b.gradAxis[i])
 	}

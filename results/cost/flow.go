@@ -8,9 +8,31 @@ type flow struct {
 	format Format
 	axis   uint64
 	sweeps uint64
+	// channels are the formats of equal parts of the values, where they differ.
+	channels []Point
 }
 
-func (f *flow) bits() uint64 { return f.sweeps * f.format.Size(f.values, f.axis) }
+func (f *flow) bits() uint64 { return f.sweeps * f.size() }
+
+// size is the bits of the tensor.
+func (f *flow) size() uint64 {
+	if len(f.channels) == 0 {
+		return f.format.Size(f.values, f.axis)
+	}
+	var bits uint64
+	for i := range f.channels {
+		bits += f.channels[i].Format.Size(f.values/uint64(len(f.channels)), 0)
+	}
+	return bits
+}
+
+// ofEdge gives a flow the formats of the input's channels if its edge holds the input.
+func (b *bound) ofEdge(edge int, f flow) flow {
+	if b.asInput[edge] {
+		f.channels = b.arm.Channels
+	}
+	return f
+}
 
 // flows are the tensors that a phase of layer i moves for a batch.
 func (b *bound) flows(i int, p Phase, batch, cache uint64) []flow {
@@ -34,27 +56,27 @@ func (b *bound) flows(i int, p Phase, batch, cache uint64) []flow {
 // parameters are the flows of a layer's weights and biases in a format.
 func parameters(l *Layer, class Class, f Format) []flow {
 	return []flow{
-		{class, l.Weights, f, axisOr(l.InAxis, l.Terms.Forward), 1},
-		{class, l.Biases, f, 0, 1},
+		{class, l.Weights, f, axisOr(l.InAxis, l.Terms.Forward), 1, nil},
+		{class, l.Biases, f, 0, 1, nil},
 	}
 }
 
 // input and output are the flows of the activations below and above layer i,
 // gradientIn and gradientOut those of their gradients.
 func (b *bound) input(i int, batch uint64) flow {
-	return flow{Activations, batch * b.net.Layers[i].Inputs, b.acts[i], b.actAxis[i], 1}
+	return b.ofEdge(i, flow{class: Activations, values: batch * b.net.Layers[i].Inputs, format: b.acts[i], axis: b.actAxis[i], sweeps: 1})
 }
 
 func (b *bound) output(i int, batch uint64) flow {
-	return flow{Activations, batch * b.net.Layers[i].Outputs, b.acts[i+1], b.actAxis[i+1], 1}
+	return b.ofEdge(i+1, flow{class: Activations, values: batch * b.net.Layers[i].Outputs, format: b.acts[i+1], axis: b.actAxis[i+1], sweeps: 1})
 }
 
 func (b *bound) gradientIn(i int, batch uint64) flow {
-	return flow{Gradients, batch * b.net.Layers[i].Inputs, b.grads[i], b.gradAxis[i], 1}
+	return flow{Gradients, batch * b.net.Layers[i].Inputs, b.grads[i], b.gradAxis[i], 1, nil}
 }
 
 func (b *bound) gradientOut(i int, batch uint64) flow {
-	return flow{Gradients, batch * b.net.Layers[i].Outputs, b.grads[i+1], b.gradAxis[i+1], 1}
+	return flow{Gradients, batch * b.net.Layers[i].Outputs, b.grads[i+1], b.gradAxis[i+1], 1, nil}
 }
 
 // forwardFlows: Y[units, B positions] = W[units, terms] X[terms, B positions].
@@ -65,7 +87,7 @@ func (b *bound) forwardFlows(i int, batch, cache uint64) []flow {
 		return []flow{x, y}
 	}
 	w := parameters(l, Weights, a.Weight.Format)
-	partial := flow{Activations, y.values, b.forwardSums(i).Sum.Format, y.axis, 0}
+	partial := flow{Activations, y.values, b.forwardSums(i).Sum.Format, y.axis, 0, nil}
 	if units, terms, positions, ok := l.product(); ok {
 		tile{
 			i: units, j: batch * positions, k: terms, cache: cache,
@@ -78,11 +100,11 @@ func (b *bound) forwardFlows(i int, batch, cache uint64) []flow {
 // inner are the values between a layer's own products, innerGradients their gradients;
 // both written and read, or only read.
 func (b *bound) inner(i int, batch, sweeps uint64) flow {
-	return flow{Activations, batch * b.net.Layers[i].Inner.Values, b.acts[i+1], 0, sweeps}
+	return flow{Activations, batch * b.net.Layers[i].Inner.Values, b.acts[i+1], 0, sweeps, nil}
 }
 
 func (b *bound) innerGradients(i int, batch uint64) flow {
-	return flow{Gradients, batch * b.net.Layers[i].Inner.Gradients, b.grads[i], 0, 2}
+	return flow{Gradients, batch * b.net.Layers[i].Inner.Gradients, b.grads[i], 0, 2, nil}
 }
 
 // inputFlows: DX[terms, B positions] = W'[terms, units] DY[units, B positions],
@@ -99,7 +121,7 @@ func (b *bound) inputFlows(i int, batch, cache uint64) []flow {
 	}
 	class, format := b.storedWeights(i)
 	w := parameters(l, class, format)[0]
-	partial := flow{Gradients, dx.values, orElse(b.arm.Layers[i].InputGradient.Sums.Sum.Format, dx.format), dx.axis, 0}
+	partial := flow{Gradients, dx.values, orElse(b.arm.Layers[i].InputGradient.Sums.Sum.Format, dx.format), dx.axis, 0, nil}
 	if units, terms, positions, ok := l.product(); ok {
 		tile{
 			i: terms, j: batch * positions, k: units, cache: cache,
@@ -124,7 +146,7 @@ func (b *bound) weightFlows(i int, batch, cache uint64) []flow {
 	l, a := &b.net.Layers[i], &b.arm.Layers[i]
 	x, dy := b.input(i, batch), b.gradientOut(i, batch)
 	dw := parameters(l, Gradients, a.WeightGradient.Result.Format)
-	partial := flow{Gradients, l.Weights, a.WeightGradient.Sums.Sum.Format, dw[0].axis, 0}
+	partial := flow{Gradients, l.Weights, a.WeightGradient.Sums.Sum.Format, dw[0].axis, 0, nil}
 	if units, terms, positions, ok := l.product(); ok {
 		tile{
 			i: units, j: terms, k: batch * positions, cache: cache,

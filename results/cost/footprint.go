@@ -107,10 +107,14 @@ func (m *Memory) keep(layer int, f flow) {
 	if f.values == 0 {
 		return
 	}
-	m.Tensors = append(m.Tensors, Tensor{
+	t := Tensor{
 		Layer: layer, Class: f.class, Format: f.format.Name, Width: f.format.BitsPerValue(),
-		Values: f.values, Bits: f.format.Size(f.values, f.axis),
-	})
+		Values: f.values, Bits: f.size(),
+	}
+	if len(f.channels) > 0 {
+		t.Format, t.Width = "by channel", float64(t.Bits)/float64(t.Values)
+	}
+	m.Tensors = append(m.Tensors, t)
 }
 
 func sumUp(tensors []Tensor) (f Footprint) {

@@ -26,3 +26,25 @@ func TestResidue(t *testing.T) {
 		t.Error("an inference pays for error feedback")
 	}
 }
+
+// TestChannels: an input of two channels of 8 bits and one of 32 moves 16 bits a value
+// on average, where the first layer reads it; multipliers hold the widest.
+func TestChannels(t *testing.T) {
+	n := twoLayers()
+	n.Layers[0].Inputs = n.Layers[0].Inputs / 3 * 3
+	arm := Uniform(&n, &SGD, "mixed", FP32)
+	eight := Point{Format: formatOf(t, "E4M3")}
+	arm.Channels = []Point{eight, {Format: FP32}, eight}
+	b := bind(&n, &SGD, &arm)
+	if x := b.input(0, 10); x.bits() != 16*x.values || x.format.Bits != 32 {
+		t.Errorf("%d values take %d bits", x.values, x.bits())
+	}
+	if y := b.output(0, 10); y.bits() != 32*y.values {
+		t.Errorf("the first layer's output takes %d bits", y.bits())
+	}
+	var memory Memory
+	memory.keep(-1, b.input(0, 10))
+	if got := memory.Tensors[0]; got.Width != 16 || got.Format != "by channel" {
+		t.Errorf("%+v", got)
+	}
+}

@@ -30,9 +30,9 @@ func (t tile) sweep() {
 // bits is what the sweeps of a loop move; the finished result is the same for
 // all and left out.
 func (t tile) bits(s sweeps) uint64 {
-	return s.left*t.left.format.Size(t.left.values, t.left.axis) +
-		s.right*t.right.format.Size(t.right.values, t.right.axis) +
-		2*s.spills*t.partial.format.Size(t.partial.values, t.partial.axis)
+	return s.left*t.left.size() +
+		s.right*t.right.size() +
+		2*s.spills*t.partial.size()
 }
 
 // holdResult keeps a block of rows x columns sums; a column of the left and a
