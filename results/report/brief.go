@@ -11,18 +11,40 @@ import (
 )
 
 // brief is what a reader asks first of the arm within the margin with the fewest
-// bits: which format, which rounding, how sure, what saved. Nil where no arm is
-// within the margin.
+// bits: which format, which rounding, how sure, what saved. Where no arm is within
+// the margin, it says which comes closest, if one is not shown to be worse.
 func (v *view) brief() []fact {
 	best := v.leanest()
 	if best == nil {
-		return nil
+		return v.closest()
 	}
 	facts := []fact{{"Fewest bits", v.fewestWords(best)}, {"Rounding", v.roundingBrief(best)}, {"How sure", v.sureWords(best)}}
 	if s := v.savedWords(best); s != "" {
 		facts = append(facts, fact{"Saved, by model", s})
 	}
 	return facts
+}
+
+// closest is the undecided arm whose interval ends least far below the baseline: what
+// to look at next, not what to use.
+func (v *view) closest() []fact {
+	var best *armView
+	for _, a := range v.others() {
+		k, ok := a.kind()
+		if !ok || k != results.Undecided || math.IsNaN(a.Comparison.Low) || math.IsInf(a.Comparison.Low, 0) {
+			continue
+		}
+		if best == nil || a.Comparison.Low > best.Comparison.Low {
+			best = a
+		}
+	}
+	if best == nil {
+		return nil
+	}
+	return []fact{
+		{"Closest", fmt.Sprintf("%s, %s bits a stored value: %s. %s; no arm is shown to be within the margin, and this one is not either", best.Label(), bits(best.Bits), verdictWords(best.Comparison.Verdict), v.sureWords(best))},
+		{"Rounding", v.roundingBrief(best)},
+	}
 }
 
 // briefRow is one fact for the page, the first with the arm's bit strips.
@@ -36,8 +58,8 @@ func (v *view) briefRows() []briefRow {
 	var rows []briefRow
 	for i, f := range v.brief() {
 		r := briefRow{Head: f.Head, Text: f.Text}
-		if i == 0 {
-			for _, s := range v.leanest().Strips {
+		if best := v.leanest(); i == 0 && best != nil {
+			for _, s := range best.Strips {
 				r.Strips = append(r.Strips, keyed{glyphHTML(s.glyph()), s.Label() + " (" + s.Split() + ")"})
 			}
 		}

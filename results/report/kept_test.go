@@ -159,7 +159,13 @@ func TestBrief(t *testing.T) {
 	for i := range s.Comparisons {
 		s.Comparisons[i].Verdict.Kind = results.Undecided
 	}
+	if facts := newView(s).brief(); len(facts) != 2 || facts[0].Head != "Closest" || !strings.HasPrefix(facts[0].Text, "1 bf16 stochastic update, 16.0 bits a stored value: undecided") {
+		t.Errorf("no arm is within the margin, and the brief says %q", facts)
+	}
+	for i := range s.Comparisons {
+		s.Comparisons[i].Verdict.Kind = results.Worse
+	}
 	if newView(s).brief() != nil {
-		t.Error("a brief although no arm is within the margin")
+		t.Error("a brief although every arm is worse than the margin")
 	}
 }
