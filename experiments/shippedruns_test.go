@@ -100,3 +100,28 @@ func TestMissedFaultsPlan(t *testing.T) {
 		}
 	}
 }
+
+// TestNoiseFloorPlan: the baseline of the shipped regression comes near the noise of
+// 0.1 in its targets, and cannot come below it but by the luck of 1,000 test examples.
+func TestNoiseFloorPlan(t *testing.T) {
+	study := studyOf(t, "plans/noise-floor.toml")
+	for replicate, x := range scores(t, study, "baseline", "test RMSE") {
+		// 0.1 times one, less four standard errors 1/sqrt(2 x 1000), to one and a fifth.
+		if !(x > 0.091 && x < 0.12) {
+			t.Errorf("baseline/%d: RMSE %v", replicate, x)
+		}
+	}
+}
+
+// TestClassRecallPlan: the claimed metric is the recall of one class.
+func TestClassRecallPlan(t *testing.T) {
+	study := studyOf(t, "plans/class-recall.toml")
+	if want := results.RecallOf("test recall", 3, "bearing"); study.Metric != want {
+		t.Errorf("metric %q, want %q", study.Metric, want)
+	}
+	for replicate, x := range scores(t, study, "baseline", study.Metric) {
+		if !(x > 0.1 && x <= 1) {
+			t.Errorf("baseline/%d: recall %v", replicate, x)
+		}
+	}
+}
