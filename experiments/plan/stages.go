@@ -15,6 +15,7 @@ type Stage struct {
 	LossScale string // in words
 
 	assignment *assignment
+	scaled     bool // it sets a loss scale, its own from there on
 }
 
 // stageStart are the keys of which a stage has one.
@@ -44,7 +45,7 @@ func (r *armReader) readStages(n *node, arm *Arm, a *assignment, scale trainer.L
 		stages = append(stages, s)
 		arm.Stages = append(arm.Stages, Stage{
 			Start: startText(&s), Settings: settings(r.network, &s.Arm), LossScale: describeLossScale(scale), assignment: &own,
-			Summary: stageSummary(&own, at.table["loss_scale"] != nil, scale),
+			Summary: stageSummary(&own, at.table["loss_scale"] != nil, scale), scaled: at.table["loss_scale"] != nil,
 		})
 		a = &own
 	}

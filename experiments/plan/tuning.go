@@ -100,12 +100,26 @@ func (t *Tuning) give(p Pair, a Arm, network *trainer.Network) Arm {
 	if p.scale >= 0 {
 		a.Arithmetic.LossScale = t.LossScales[p.scale]
 		a.LossScale = describeLossScale(a.Arithmetic.LossScale)
+		a.scaleStages()
 	}
 	if network != nil {
 		a.Canonical = a.canonical(network)
 		a.Summary = summary(a.assignment, &a)
 	}
 	return a
+}
+
+// scaleStages hands an arm's loss scale on to its stages, up to the first that sets
+// one of its own.
+func (a *Arm) scaleStages() {
+	a.Stages, a.Arithmetic.Stages = slices.Clone(a.Stages), slices.Clone(a.Arithmetic.Stages)
+	for i := range a.Stages {
+		if a.Stages[i].scaled {
+			return
+		}
+		a.Stages[i].LossScale = a.LossScale
+		a.Arithmetic.Stages[i].Arm.LossScale = a.Arithmetic.LossScale
+	}
 }
 
 // TuningPlan is the plan whose runs the tuning needs: an arm for each arm and pair,

@@ -73,6 +73,23 @@ func TestTuningKeepsSchedule(t *testing.T) {
 	}
 }
 
+// TestTuningReachesStages: a stage goes on with the loss scale that was chosen, up to
+// one that has its own; the plan's own arms stay as they are.
+func TestTuningReachesStages(t *testing.T) {
+	p := load(t, basePlan+"[[arm.stage]]\nfrom_epoch = 2\nstorage = \"fp32\"\n[[arm.stage]]\nfrom_epoch = 3\nloss_scale = { kind = \"fixed\", value = 8 }\n"+tuningTable)
+	tuned := p.Tuned([]int{0, 1}).Arms[1]
+	got := []string{tuned.LossScale, tuned.Stages[0].LossScale, tuned.Stages[1].LossScale}
+	if strings.Join(got, ", ") != "fixed 64, fixed 64, fixed 8" || tuned.Arithmetic.Stages[0].Arm.LossScale.Value != 64 || tuned.Arithmetic.Stages[1].Arm.LossScale.Value != 8 {
+		t.Errorf("%q, %+v", got, tuned.Arithmetic.Stages[0].Arm.LossScale)
+	}
+	if p.Arms[1].Stages[0].LossScale != "none" || p.Arms[1].Arithmetic.Stages[0].Arm.LossScale.Kind != trainer.NoScale {
+		t.Error("tuning changed the plan's own arm")
+	}
+	if strings.Count(tuned.Canonical, "loss scale: fixed 64") != 2 {
+		t.Errorf("canonical\n%s", tuned.Canonical)
+	}
+}
+
 // TestEdge: only of three or more rates can one be at the end.
 func TestEdge(t *testing.T) {
 	rates := &Tuning{LearningRates: []float64{0.1, 0.01, 0.05}}
