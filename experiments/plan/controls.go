@@ -55,3 +55,15 @@ func (r *armReader) control(name, slug string, a *assignment, baseline *Arm) Arm
 	}
 	return r.finish(Arm{Name: name, Slug: slug, Training: baseline.Training}, a, scale)
 }
+
+// controlsText says where the noise floor of a plan's comparisons comes from.
+func (p *Plan) controlsText() string {
+	if len(p.Controls) == 0 {
+		return "none: no noise floor is known; [controls] asks for one"
+	}
+	names := make([]string, len(p.Controls))
+	for i := range p.Controls {
+		names[i] = p.Controls[i].Name
+	}
+	return joined(names) + ", in every replicate: the noise floor of all comparisons"
+}

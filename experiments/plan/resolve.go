@@ -78,6 +78,7 @@ func writeFacts(b *strings.Builder, p *Plan) {
 		fmt.Fprintf(w, "tuning of every arm\t%s\n", p.Tuning)
 	}
 	fmt.Fprintf(w, "claim\t%s within a margin of %g, confidence %g\n", p.Claim.Metric, p.Claim.Margin, p.Claim.Confidence)
+	fmt.Fprintf(w, "controls\t%s\n", p.controlsText())
 	w.Flush()
 }
 

@@ -26,6 +26,8 @@ var glossary = []entry{
 	{"sequential, chunk(k), pairwise, lanes(k), wide", "Orders of summation: one term after another; k terms at a time and then the chunks; in a tree of neighbours; over k lanes; or exactly, with one rounding at the end."},
 	{"loss scale", "A factor on the loss that keeps small gradients from vanishing; a step whose gradients overflow is skipped."},
 	{"overflow, saturation, underflow", "A result beyond the format's largest value that became infinity or NaN; one that became the largest value; a nonzero result that became zero."},
+	{"signal to rounding noise", "The power of values over the power of their rounding errors, in decibels (dB): ten times the decimal logarithm. A bit of fraction is worth about 6 dB."},
+	{"kept", "The sum of what was computed times what was meant over the sum of what was meant squared, of sums or of updates: 1 is all, 0 nothing."},
 	{"recall", "Of the test examples of a class, the share that is named rightly."},
 	{"Pareto set", "The arms that no other arm beats in both score and bits, or bytes, or energy."},
 	{"grid", "Arms that the plan makes from lists of values, one arm for each combination."},
@@ -33,6 +35,8 @@ var glossary = []entry{
 	{"once, through a cache", "Two models of the traffic between memory and arithmetic: each tensor moved once a phase, or products in blocks that fit a cache."},
 	{"in a million", "Range events per million values that a point rounded while training; k is a thousand."},
 	{"BCa, studentised, flipped signs, signed ranks", "Ways to an interval that lean less on the normal distribution than the t interval does: two bootstraps, the test that flips the signs of differences, and Wilcoxon's."},
+	{"two-way interval", "An interval that draws replicates and test examples anew: how far the result would move with other examples too."},
+	{"tuned", "Given, before the reported runs, the learning rate and loss scale that did best on validation data; every arm tries the same list."},
 	{"pp", "Percentage points: the difference of two percentages."},
 	{"digest", "SHA-256 over a run's loss curve, counters and final weights. The same digest is the same result, bit for bit."},
 }
