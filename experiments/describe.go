@@ -79,7 +79,8 @@ func rerun(p *plan.Plan, s *store.Store) []string {
 	if s.Path() != store.DefaultPath {
 		command += " --store " + quoted(s.Path())
 	}
-	return []string{command}
+	row := fmt.Sprintf("go run ./cmd/ulpine run %s --store row.store --only %s", quoted(p.File), results.RunName(p.Baseline().Slug, p.Replicates.FirstSeed))
+	return []string{command, row + "  # one row alone: name it arm/replicate, compare the digest"}
 }
 
 // quoted puts a path in quotation marks where a shell would take it apart.

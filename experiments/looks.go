@@ -13,6 +13,9 @@ import (
 // all its replicates, at which nothing is asked.
 func (x *runner) lookByLook(ctx context.Context) {
 	looks := compare.Looks{UpTo: x.Replicates.Count, Every: x.Replicates.LookEvery}
+	if len(x.options.Only) > 0 {
+		looks.Every = 0 // single runs decide nothing
+	}
 	for at := 0; at < looks.UpTo && ctx.Err() == nil; {
 		at = looks.Next(at)
 		x.schedule = newSchedule(ctx, x.ask(at), x.options.Workers, x.team)

@@ -48,11 +48,16 @@ func (x *runner) ask(upTo int) (queue []*replicate) {
 	n := upTo - len(x.replicas)
 	next := x.later[:n]
 	x.replicas, x.later = append(x.replicas, next...), x.later[n:]
-	each, _ := x.perReplicate()
-	x.summary.Runs = each * upTo
+	x.summary.Runs = 0
+	for _, r := range x.replicas {
+		x.summary.Runs += x.asked(r.seed)
+	}
 	before := x.summary.Before
 	for _, r := range next {
-		x.expect()
+		if x.asked(r.seed) == 0 {
+			continue
+		}
+		x.expect(r.seed)
 		if r.keysKnown {
 			x.findWork(r, x.known)
 		}
@@ -107,13 +112,15 @@ func (x *runner) knownData() (map[results.Hash]results.Hash, error) {
 	return hashes, nil
 }
 
-// expect adds all runs of a replicate to the estimate.
-func (x *runner) expect() {
+// expect adds the runs of a replicate to the estimate.
+func (x *runner) expect(seed uint64) {
 	x.tracker.do(func() {
 		for i := range x.groups {
-			x.estimate.plan(&x.groups[i])
+			if x.wants(&x.groups[i], seed) {
+				x.estimate.plan(&x.groups[i])
+			}
 		}
-		if x.pre != nil {
+		if x.pre != nil && x.wants(x.pre, seed) {
 			x.estimate.plan(x.pre)
 		}
 	})
@@ -147,6 +154,9 @@ func (x *runner) fix(planned []store.Planned, data map[results.Hash]results.Hash
 // keys are known; known says what the store has of them.
 func (x *runner) findWork(r *replicate, known map[results.Hash]store.Entry) {
 	add := func(g *group, key results.Hash) *unit {
+		if !x.wants(g, r.seed) {
+			return nil
+		}
 		if known[key].State == results.Stored {
 			x.tracker.do(func() { x.estimate.stored(g) })
 			x.books.Lock()

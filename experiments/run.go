@@ -23,6 +23,8 @@ var (
 	ErrBaseline = errors.New("the plan has no answer")
 	// ErrRunsFailed: some runs failed. The others are stored.
 	ErrRunsFailed = errors.New("runs failed")
+	// ErrOnly: Options.Only names something that is no run of the plan. Nothing was done.
+	ErrOnly = errors.New("no such run")
 	// ErrStopped: the context was cancelled before all runs were done. The error
 	// wraps the context's too.
 	ErrStopped = errors.New("stopped")
@@ -45,6 +47,9 @@ type Options struct {
 	Progress    Progress // may be nil
 	CodeVersion string   // noted with each run; empty: what the build says
 	Host        string   // noted with each run; empty: the machine's name
+	// Only names the runs to be done, arm/replicate; empty: all. A plan with looks then
+	// has none, and one with a tuning still needs its trials.
+	Only []string
 }
 
 // Summary is what a call of Run came to. Runs that arms share count once.
@@ -113,8 +118,9 @@ func Run(ctx context.Context, p *plan.Plan, s *store.Store, o Options) (Summary,
 
 func newRunner(l *layout, s *store.Store, o Options) *runner {
 	x := &runner{layout: l, store: s, options: o, train: trainer.Run, flying: map[results.Hash]Place{}}
-	each, _ := x.perReplicate()
-	x.summary.Runs = each * l.Replicates.Count
+	for _, seed := range l.seeds() {
+		x.summary.Runs += x.asked(seed)
+	}
 	if x.options.Workers <= 0 {
 		x.options.Workers = runtime.GOMAXPROCS(0)
 	}
@@ -134,6 +140,9 @@ func (x *runner) run(ctx context.Context) (Summary, error) {
 	began := time.Now()
 	ctx, x.cancel = context.WithCancel(ctx)
 	defer x.cancel()
+	if err := x.checkOnly(); err != nil {
+		return x.summary, err
+	}
 	if err := x.prepare(ctx); err != nil {
 		return x.summary, err
 	}
@@ -234,6 +243,9 @@ func (x *runner) baseline() error {
 	var runs []results.Run
 	var keys []results.Hash
 	for _, r := range x.replicas {
+		if x.asked(r.seed) == 0 {
+			continue
+		}
 		runs = append(runs, results.Run{Arm: x.Baseline().Slug, Replicate: r.seed})
 		keys = append(keys, r.keys.groups[0])
 		if x.pre != nil {

@@ -79,7 +79,7 @@ func checkDescription(t *testing.T, study *results.Study) {
 	if len(study.Classes) != 5 || study.Planned != 3 || study.Claim.FirstSeed != 100 || study.PlanText == "" || study.Resolved == "" || study.LongestSum == 0 {
 		t.Errorf("%+v", study.Claim)
 	}
-	if len(study.Rerun) != 1 || !strings.HasPrefix(study.Rerun[0], "go run ./cmd/ulpine run tiny.toml --store /") {
+	if len(study.Rerun) != 2 || !strings.Contains(study.Rerun[1], "--only baseline/100") || !strings.HasPrefix(study.Rerun[0], "go run ./cmd/ulpine run tiny.toml --store /") {
 		t.Errorf("rerun %q", study.Rerun)
 	}
 	if all := strings.Join(study.Cautions, "\n"); !strings.Contains(all, "no approval for a safety-related use") || !strings.Contains(all, "invented") {

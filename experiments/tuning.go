@@ -39,7 +39,9 @@ func runTuned(ctx context.Context, p *plan.Plan, s *store.Store, o Options) (Sum
 	}
 	first := Summary{Runs: tuning.Runs, Before: tuning.Runs} // all stored already
 	if chosen == nil {
-		x := newRunner(tuningLayout(p), s, o)
+		trials := o
+		trials.Only = nil // the choice needs them all
+		x := newRunner(tuningLayout(p), s, trials)
 		x.tracker.note("tuning: %d runs choose for every arm, then the reported replicates start", tuning.Runs)
 		if first, err = x.run(ctx); err != nil {
 			return first, err
