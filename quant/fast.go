@@ -14,6 +14,7 @@ type fast[T Element] struct {
 	wideProduct    kernel.Product[float64]
 	products, sums *Counts
 	redo           func(i0, i1, j0, j1 int)
+	late           *lateScale // nil: products with scales are left to the engine
 }
 
 // newFast returns the fast path of acc, nil where there is none.
@@ -29,7 +30,7 @@ func newFast[T Element](owner *Multiplier[T], acc Accumulate) *fast[T] {
 	if f.kernel == nil && f.wide == nil {
 		return nil
 	}
-	f.sumsOf = newQuick(&acc.Sum)
+	f.sumsOf, f.late = newQuick(&acc.Sum), newLateScale(acc)
 	if acc.Product != nil {
 		f.terms = newQuick(acc.Product)
 	}
@@ -145,7 +146,7 @@ func kernelSum(p *Point, through32 bool) (s kernel.Sum, ok bool) {
 
 // mul forms the owner's product; false where the kernels do not serve.
 func (f *fast[T]) mul(products, sums *Counts) bool {
-	if f.owner.work.Scale != nil {
+	if f.owner.work.Scale != nil && (f.late == nil || f.kernel == nil) {
 		return false
 	}
 	f.products, f.sums = products, sums
@@ -160,6 +161,10 @@ func (f *fast[T]) mul(products, sums *Counts) bool {
 		return true
 	}
 	p := any(&f.owner.work).(*Product[float32])
+	scale, bias := p.Scale, p.Bias
+	if scale != nil {
+		p.Scale, p.Bias = nil, nil // what the kernels hand back is scaled with the rest
+	}
 	f.product = kernel.Product[float32]{
 		I: p.I, J: p.J, K: p.K, A: p.A.Data, ARow: p.A.Row, ACol: p.A.Col, B: p.B, C: p.C,
 		Bias: p.Bias, Sums: kernel.Streams(p.Sums), Terms: kernel.Streams(p.Terms), FirstJ: uint32(p.FirstJ),
@@ -172,6 +177,9 @@ func (f *fast[T]) mul(products, sums *Counts) bool {
 	f.terms.count(f.tally.Products, products)
 	f.sumsOf.count(f.tally.Sums, sums)
 	f.product = kernel.Product[float32]{}
+	if scale != nil {
+		f.late.finish(p, scale, bias, sums)
+	}
 	return true
 }
 

@@ -183,8 +183,11 @@ func (b Block) Bracket(x Real) Bracket { return b.spec.Element.Bracket(x) }
 
 // Scaling implements Blocked.
 func (b Block) Scaling(x []float64) Scaling {
+	if !b.spec.Tensor {
+		return Scaling{Factor: 1}
+	}
 	largest := largestFinite(x)
-	if !b.spec.Tensor || largest == 0 {
+	if largest == 0 {
 		return Scaling{Factor: 1}
 	}
 	most := float64(b.spec.Element.Limits().Max * b.largest)

@@ -60,6 +60,8 @@ func RoundTensor[D, S Element](dst []D, src []S, shape Shape, p *Point, d Draws,
 		x[i] = float64(v)
 	}
 	s := blocked.Scaling(x)
+	m.element = elementPoint(blocked, s, p)
+	quickly, isQuick := newFastLines(blocked, s, &m.element)
 	m.line = grown(m.line, shape.Axis)
 	l := lines{words: newWords(d, p.Rounding), first: first, line: m.line}
 	if l.words.on {
@@ -70,7 +72,11 @@ func RoundTensor[D, S Element](dst []D, src []S, shape Shape, p *Point, d Draws,
 		for inner := range shape.Inner {
 			at := outer*shape.Axis*shape.Inner + inner
 			l.gather(x, at, shape.Inner)
-			blocked.RoundLine(l.line, s, p, l.word, n)
+			if isQuick {
+				quickly.round(l.line, l.word, n)
+			} else {
+				blocked.RoundLine(l.line, s, p, l.word, n)
+			}
 			for i, v := range l.line {
 				dst[at+i*shape.Inner] = D(v)
 			}
@@ -84,6 +90,7 @@ func RoundTensor[D, S Element](dst []D, src []S, shape Shape, p *Point, d Draws,
 type scratch struct {
 	tensor, line []float64
 	word         []uint32
+	element      Point // of the lines
 }
 
 var scratches = sync.Pool{New: func() any { return new(scratch) }}
