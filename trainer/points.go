@@ -81,7 +81,8 @@ func (p PointID) String() string {
 	return pointNames[p]
 }
 
-// PointNames lists every rounding point in the order of computation.
+// PointNames lists every rounding point in the order of their numbers; the points that
+// only some layers have stand last.
 func PointNames() []string { return append([]string(nil), pointNames[:]...) }
 
 // The points of one phase, as a layer that has the phase lists them.

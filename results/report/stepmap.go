@@ -16,10 +16,10 @@ var stations = []struct {
 	points []string
 }{
 	{"input", []string{"input"}},
-	{"forward", []string{"weight", "product", "sum", "outer", "activation"}},
+	{"forward", []string{"weight", "operand", "product", "sum", "outer", "statistic", "moment", "activation"}},
 	{"loss", []string{"gradient"}},
-	{"weight gradient", []string{"activation", "gradient", "product", "sum", "outer", "result"}},
-	{"input gradient", []string{"weight", "gradient", "product", "sum", "outer", "result"}},
+	{"weight gradient", []string{"activation", "gradient", "product", "sum", "outer", "result", "residue"}},
+	{"input gradient", []string{"weight", "gradient", "product", "sum", "outer", "statistic", "result"}},
 	{"update", []string{"state", "step", "master"}},
 }
 

@@ -1,6 +1,7 @@
 package report
 
 import (
+	"strings"
 	"testing"
 
 	"ulpine/results"
@@ -62,6 +63,23 @@ func TestGroups(t *testing.T) {
 		if got := groupOf(point); got != want {
 			t.Errorf("%s is in %s, want %s", point, got, want)
 		}
+	}
+}
+
+// Points that only some layers have stand where a step comes to them.
+func TestStationsInOrder(t *testing.T) {
+	study := &results.Study{Arms: []results.Arm{{}}}
+	for _, p := range []string{"update.master", "weight_gradient.residue", "weight_gradient.result", "input_gradient.statistic",
+		"input_gradient.sum", "forward.activation", "forward.moment", "forward.statistic", "forward.sum", "forward.operand"} {
+		study.Arms[0].Settings = append(study.Arms[0].Settings, results.Setting{Point: p})
+	}
+	var got []string
+	for _, s := range mapStations(newView(study)) {
+		got = append(got, s.point)
+	}
+	want := "operand sum statistic moment activation result residue sum statistic master"
+	if s := strings.Join(got, " "); s != want {
+		t.Errorf("%s, want %s", s, want)
 	}
 }
 
