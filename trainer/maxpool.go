@@ -53,14 +53,53 @@ func (l *maxPool[T]) forward(p *pass) {
 	x, y := l.below.values(p.samples), l.above.values(p.samples)
 	for plane := range p.samples * g.c {
 		in := x[plane*g.inner():][:g.inner()]
-		for o := range g.outer() {
-			at := largest(in, g, o/g.ow*g.sh, o%g.ow*g.sw)
-			out := plane*g.outer() + o
-			l.choice[out] = int32(at)
-			y[out] = in[at]
+		out, choice := y[plane*g.outer():][:g.outer()], l.choice[plane*g.outer():][:g.outer()]
+		for oy := range g.oh {
+			chooseRow(out[oy*g.ow:][:g.ow], choice[oy*g.ow:][:g.ow], in, g, oy*g.sh)
 		}
 	}
 	round(l.place, p, ForwardActivation, opActivation, y, y, &l.set.Activation, p.first*uint64(l.above.per))
+}
+
+// chooseRow makes one row of outputs, of the windows whose top is that row of a plane.
+func chooseRow[T quant.Element](out []T, choice []int32, in []T, g *window, top int) {
+	if x, ok := any(in).([]float32); ok && g.kh == 2 && g.kw == 2 && g.sw == 2 {
+		at := top * g.w
+		chooseOfFour(any(out).([]float32), choice, x[at:][:2*g.w], int32(at))
+		return
+	}
+	for ox := range out {
+		at := largest(in, g, top, ox*g.sw)
+		out[ox], choice[ox] = in[at], int32(at)
+	}
+}
+
+// chooseOfFour is the usual pool, of 2 x 2 elements side by side, without a branch: x
+// holds two rows of a plane, from the plane's place first on.
+func chooseOfFour(out []float32, choice []int32, x []float32, first int32) {
+	row := len(x) / 2
+	upper, lower := x[:row], x[row:]
+	upper, lower, choice = upper[:2*len(out)], lower[:2*len(out)], choice[:len(out)]
+	for i := range out {
+		right := 2*i + 1
+		a, b := contender(upper[right-1], 3), contender(upper[right], 2)
+		c, d := contender(lower[right-1], 1), contender(lower[right], 0)
+		number := 3 - int(greater(greater(a, b), greater(c, d))&3)
+		at := 2*i + number&1 + -(number>>1)&row
+		out[i], choice[i] = x[at], first+int32(at)
+	}
+}
+
+// contender is the rank of v and, below it, a number that decides between equals.
+func contender(v float32, number int64) int64 {
+	b := int32(math.Float32bits(v + 0)) // -0 + 0 is +0
+	return int64(b^int32(uint32(b>>31)>>1))<<2 | number
+}
+
+// greater is the maximum of contenders, whose difference does not overflow.
+func greater(a, b int64) int64 {
+	d := b - a
+	return a + d&^(d>>63)
 }
 
 // largest is the position of the choice of the window at row top, column left.

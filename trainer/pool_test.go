@@ -2,6 +2,7 @@ package trainer
 
 import (
 	"math"
+	"math/rand/v2"
 	"testing"
 
 	"ulpine/quant"
@@ -80,6 +81,79 @@ func TestMaxPoolChoosesTheFirst(t *testing.T) {
 		0, 3, 0, 0,
 		0, 0, 4, 0,
 	})
+}
+
+// TestMaxPoolOfEveryShape compares choices, outputs and gradients of windows that do
+// not overlap with the definition, on few values: ties, both zeros, NaN, infinities.
+func TestMaxPoolOfEveryShape(t *testing.T) {
+	values := []float32{0, neg0, 1, -1, math.SmallestNonzeroFloat32, -math.SmallestNonzeroFloat32, inf32, -inf32, nan32, 2, -2, 3}
+	rng := rand.New(rand.NewPCG(3, 4))
+	const samples, channels = 2, 3
+	for _, text := range []string{"size=2", "size=2 stride=3", "size=2x2 stride=3x2", "size=2x2 stride=2x3", "size=2x3", "size=3x2", "size=1x2", "size=3"} {
+		for h := 3; h <= 8; h++ {
+			for w := 3; w <= 9; w++ {
+				l, below, above := bareLayer(t, baseline(t, 1), []int{channels, h, w}, "maxpool "+text, samples)
+				m := l.(*maxPool[float32])
+				x, dy := below.value.data, numbered(len(above.value.data))
+				few := 1 + rng.IntN(len(values)) // of one value: all equal
+				for i := range x {
+					x[i] = values[rng.IntN(few)]
+				}
+				copy(above.gradient.data, dy)
+				y, dx := make([]float32, len(dy)), make([]float32, len(x))
+				for out := range y {
+					at := firstLargest(x, &m.g, out)
+					y[out], dx[at] = x[at], dy[out]
+				}
+				p := &pass{samples: samples}
+				l.forward(p)
+				same32(t, text+" forward", above.value.data, y)
+				l.backward(p, true)
+				same32(t, text+" backward", below.gradient.data, dx)
+			}
+		}
+	}
+}
+
+// firstLargest is the place of the choice of an output, by comparing numbers.
+func firstLargest(x []float32, g *window, out int) int {
+	plane, oy, ox := unravel(out, g.oh, g.ow)
+	best := -1
+	for r := range g.kh {
+		for c := range g.kw {
+			at := (plane*g.h+oy*g.sh+r)*g.w + ox*g.sw + c
+			if best < 0 || x[best] == x[best] && (x[at] != x[at] || x[at] > x[best]) {
+				best = at
+			}
+		}
+	}
+	return best
+}
+
+// TestReluOfRandomNumbers compares the mask with the definition.
+func TestReluOfRandomNumbers(t *testing.T) {
+	const n = 4096
+	l, below, above := bareLayer(t, baseline(t, 1), []int{n}, "relu", 1)
+	x, dy := below.value.data, above.gradient.data
+	y, dx := make([]float32, n), make([]float32, n)
+	rng := rand.New(rand.NewPCG(5, 6))
+	for i := range x {
+		x[i], dy[i] = math.Float32frombits(rng.Uint32()), math.Float32frombits(rng.Uint32())
+		if x[i] != x[i] {
+			x[i] = nan32
+		}
+		if dy[i] != dy[i] {
+			dy[i] = nan32
+		}
+		if !(x[i] <= 0) {
+			y[i], dx[i] = x[i], dy[i]
+		}
+	}
+	p := &pass{samples: 1}
+	l.forward(p)
+	same32(t, "forward", above.value.data, y)
+	l.backward(p, true)
+	same32(t, "backward", below.gradient.data, dx)
 }
 
 // TestOverlappingMaxPoolAddsInOutputOrder: the middle input is the largest of

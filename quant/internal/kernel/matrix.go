@@ -60,19 +60,7 @@ func PackTable(dst, data []float32, rows, columns []int32, width int) {
 	if len(rows) == 0 {
 		return
 	}
-	l := &Sets[0].loops
-	j := 0
-	if l.copyColumns != nil && within(data, rows, columns) {
-		const block = 8
-		for ; j+block <= len(columns); j += block {
-			c := columns[j:][:block]
-			if neighbours(c) {
-				l.copyColumns(dst[j:], data[c[0]:], rows, width)
-			} else {
-				l.gatherColumns(dst[j:], data, rows, c, width)
-			}
-		}
-	}
+	j := packBlocks(dst, data, rows, columns, width)
 	if j == width {
 		return
 	}
@@ -87,31 +75,66 @@ func PackTable(dst, data []float32, rows, columns []int32, width int) {
 	}
 }
 
-// neighbours reports whether places follow one another.
-func neighbours(c []int32) bool {
+// tableBlock is the number of columns that the assembly packs at a time.
+const tableBlock = 8
+
+// packBlocks packs the leading columns of a table as far as the assembly can, and
+// returns how many. Blocks may overlap: a run of a few neighbours is copied together
+// with what follows it in data, and the next block, further right, covers the excess.
+// Reading lines whole costs a fraction of gathering elements.
+func packBlocks(dst, data []float32, rows, columns []int32, width int) int {
+	l := &Sets[0].loops
+	n := len(columns)
+	if l.copyColumns == nil || n < tableBlock {
+		return 0
+	}
+	end, ok := within(data, rows, columns) // a row's columns reach into data up to here
+	if !ok {
+		return 0
+	}
+	const few = 3 // neighbours whose copies are no dearer than gathering
+	for j := 0; j < n; {
+		run := neighbours(columns[j:min(j+tableBlock, n)])
+		if run == tableBlock || run >= few && j+tableBlock <= width && int(columns[j])+tableBlock <= end {
+			l.copyColumns(dst[j:], data[columns[j]:], rows, width)
+			j += run
+			continue
+		}
+		j = min(j, n-tableBlock) // the last block may go back over packed columns
+		l.gatherColumns(dst[j:], data, rows, columns[j:][:tableBlock], width)
+		j += tableBlock
+	}
+	return n
+}
+
+// neighbours is the number of leading places that follow one another.
+func neighbours(c []int32) int {
 	for i, at := range c {
 		if at != c[0]+int32(i) {
-			return false
+			return i
 		}
 	}
-	return true
+	return len(c)
 }
 
 // within reports whether all places of a table lie in data, which the assembly does
-// not check.
-func within(data []float32, rows, columns []int32) bool {
+// not check, and the columns that all rows have there.
+func within(data []float32, rows, columns []int32) (end int, ok bool) {
 	low, high := span32(rows)
 	first, last := span32(columns)
-	return low >= 0 && first >= 0 && int(high)+int(last) < len(data)
+	end = len(data) - int(high)
+	return end, low >= 0 && first >= 0 && int(last) < end
 }
 
-// span32 returns the least and the greatest number.
+// span32 returns the least and the greatest number of at least one. Places mostly
+// ascend, so its branches are foreseen.
 func span32(x []int32) (low, high int32) {
-	for i, v := range x {
-		if i == 0 || v < low {
+	low, high = x[0], x[0]
+	for _, v := range x {
+		if v < low {
 			low = v
 		}
-		if i == 0 || v > high {
+		if v > high {
 			high = v
 		}
 	}

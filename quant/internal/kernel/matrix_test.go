@@ -53,7 +53,7 @@ func TestPackMatrix(t *testing.T) {
 // TestPackTable: packed tables equal their elements, and nothing beyond is written.
 func TestPackTable(t *testing.T) {
 	r := rand.New(rand.NewPCG(1, 14))
-	for round := range 400 {
+	for round := range 1200 {
 		data := make([]float32, 1+r.IntN(300))
 		for i := range data {
 			data[i] = r.Float32()
@@ -65,7 +65,7 @@ func TestPackTable(t *testing.T) {
 		}
 		for i := range columns {
 			columns[i] = r.Int32N(half)
-			if i > 0 && round%3 > 0 && columns[i-1]+1 < half && r.IntN(12) > 0 {
+			if i > 0 && round%3 > 0 && columns[i-1]+1 < half && r.IntN(2+round%11) > 0 { // runs of two to twelve
 				columns[i] = columns[i-1] + 1
 			}
 		}
