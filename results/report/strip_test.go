@@ -69,8 +69,10 @@ func TestGroups(t *testing.T) {
 // Points that only some layers have stand where a step comes to them.
 func TestStationsInOrder(t *testing.T) {
 	study := &results.Study{Arms: []results.Arm{{}}}
-	for _, p := range []string{"update.master", "weight_gradient.residue", "weight_gradient.result", "input_gradient.statistic",
-		"input_gradient.sum", "forward.activation", "forward.moment", "forward.statistic", "forward.sum", "forward.operand"} {
+	for _, p := range []string{
+		"update.master", "weight_gradient.residue", "weight_gradient.result", "input_gradient.statistic",
+		"input_gradient.sum", "forward.activation", "forward.moment", "forward.statistic", "forward.sum", "forward.operand",
+	} {
 		study.Arms[0].Settings = append(study.Arms[0].Settings, results.Setting{Point: p})
 	}
 	var got []string
