@@ -223,3 +223,24 @@ func TestFastLinesAllocate(t *testing.T) {
 		}
 	}
 }
+
+// TestQuotientsNearTies: units of up to 48 bits, whose ties binary64 does not hold, so
+// that the nearest quotient of a number beside a tie is the tie itself.
+func TestQuotientsNearTies(t *testing.T) {
+	r := rand.New(rand.NewPCG(77, 78))
+	e := Point{Format: mustShared(t, "INT8").(Integer).code}
+	l, ok := newFastLines(mustShared(t, "INT8"), Scaling{Factor: 1}, &e)
+	if !ok {
+		t.Fatal("no quick rounding")
+	}
+	for range 2000 {
+		unit := float64(r.Uint64()>>16 | 1)
+		got := []float64{(float64(r.IntN(255)-127) + 0.5) * unit}
+		v, want := got[0], []float64{got[0]}
+		l.divide(got, unit, nil, nil)
+		l.divideReals(want, unit, nil, nil)
+		if got[0] != want[0] {
+			t.Fatalf("%v / %v -> %v, want %v", v, unit, got[0], want[0])
+		}
+	}
+}
