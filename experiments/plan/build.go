@@ -42,14 +42,26 @@ func loadFrom(source Source, name string, stored StoredRuns) (*Plan, error) {
 	if err != nil {
 		return nil, err
 	}
+	if len(root.table) == 0 {
+		return nil, emptyPlan(name)
+	}
 	r := &reader{stored: stored}
 	p := r.build(root)
 	if len(r.errs) > 0 {
-		return nil, r.errs.inOrder()
+		return nil, r.errs.withoutEchoes().inOrder()
 	}
 	p.File, p.Text = name, l.text.String()
 	p.Warnings = p.warn()
 	return p, nil
+}
+
+// emptyPlan is the one error of a file without a key: each table that it lacks
+// would be told at length otherwise.
+func emptyPlan(name string) *PlanError {
+	return &PlanError{
+		File: name, Line: 1, Reason: "the plan is empty",
+		Remedy: "write at least [task], [network], [training], [replicates], [claim] and one [[arm]], as " + shippedAt + "/first-look.toml does",
+	}
 }
 
 // build reads every table of a plan. Tables that lean on one that failed are
@@ -105,7 +117,7 @@ func (r *reader) readNetwork(root *node, task *Task) trainer.Network {
 	texts, nodes := r.texts(n, "layers")
 	switch {
 	case at == nil:
-		r.fail(n.errorf(`write layers = ["dense 16", "relu", "dense 5"]`, "layers are missing"))
+		r.fail(n.lacks("layers", `write layers = ["dense 16", "relu", "dense 5"]`, "layers are missing"))
 		return trainer.Network{}
 	case nodes == nil, len(task.Shape) == 0:
 		return trainer.Network{}
@@ -142,6 +154,9 @@ func (r *reader) checkOutputs(network *trainer.Network, task *Task, nodes []*nod
 	switch at := nodes[len(nodes)-1]; {
 	case network.Parameters() == 0:
 		r.fail(at.errorf(remedy, "the network has no layer with weights: nothing to train"))
+	case network.Outputs() != task.outputs() && len(last.Out) == 1 && last.Kind == "dense":
+		r.fail(at.errorf("write"+strings.TrimPrefix(remedy, "end with"), "the last layer, %q, has %d outputs, but the task has %d %s",
+			last.Name, network.Outputs(), task.outputs(), kind))
 	case network.Outputs() != task.outputs():
 		r.fail(at.errorf(remedy, "the last layer, %q, has an output of %s = %d values, but the task has %d %s",
 			last.Name, product(last.Out), network.Outputs(), task.outputs(), kind))
