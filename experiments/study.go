@@ -87,6 +87,9 @@ func readClaim(l *layout, s *store.Store, study *results.Study) error {
 		}
 		study.MarginChanged = text
 	}
+	if study.MarginChanged != "" {
+		study.Warnings = append(study.Warnings, "the claim was changed after the first run: "+study.MarginChanged)
+	}
 	return nil
 }
 

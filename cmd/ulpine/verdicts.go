@@ -42,8 +42,11 @@ func newVerdicts() *cobra.Command {
 }
 
 // requireWithin errs, with exit code 3, unless there are comparisons and every one
-// is within its margin; it names those that are not.
+// is within its margin; it names those that are not, and the claim if it was changed.
 func requireWithin(s *results.Study) error {
+	if s.MarginChanged != "" {
+		return &exitError{exitVerdict, errors.New("the claim was changed after the first run, so no verdict counts as within the margin that was fixed: " + s.MarginChanged)}
+	}
 	var open []string
 	for i := range s.Comparisons {
 		if c := &s.Comparisons[i]; c.Verdict.Kind != results.Within {

@@ -31,6 +31,10 @@ func TestRequireWithinNamesThem(t *testing.T) {
 	}{
 		{results.Study{}, "no arm was compared, so none is within the margin"},
 		{results.Study{Comparisons: []results.Comparison{{Arm: "a", Verdict: within}}}, ""},
+		{
+			results.Study{Comparisons: []results.Comparison{{Arm: "a", Verdict: within}}, MarginChanged: "margin was 0.01, is 0.02"},
+			"the claim was changed after the first run, so no verdict counts as within the margin that was fixed: margin was 0.01, is 0.02",
+		},
 		{results.Study{Comparisons: []results.Comparison{{Arm: "a", Verdict: within}, {Arm: "b"}}}, "not within the margin: b"},
 		{
 			results.Study{

@@ -307,6 +307,9 @@ func outcome(c *results.Comparison) string {
 	margin := newMeasure(c).margin(c.Margin)
 	switch v := c.Verdict; v.Kind {
 	case results.Within:
+		if c.Low > 0 { // "scores above: within the margin" reads as a contradiction
+			return "better, so within the margin of " + margin
+		}
 		return "within the margin of " + margin
 	case results.Worse:
 		return "worse than the margin of " + margin

@@ -91,7 +91,7 @@ func TestAnswer(t *testing.T) {
 		},
 		{
 			"contrast", contrast(func(*results.Comparison) {}),
-			"bf16 stochastic update scores 8.12 percentage points above bf16 nearest (95 % interval 7.00 to 9.24, 10 pairs): within the margin of 0.5 percentage points.",
+			"bf16 stochastic update scores 8.12 percentage points above bf16 nearest (95 % interval 7.00 to 9.24, 10 pairs): better, so within the margin of 0.5 percentage points.",
 		},
 		{
 			"alike", table(compared("a", within, 10), compared("d", within, 10), compared("b", diverged, 10), compared("c", diverged, 10)),
@@ -107,7 +107,7 @@ func TestAnswer(t *testing.T) {
 		},
 		{
 			"contrast near zero", contrast(func(c *results.Comparison) { c.Mean = -1e-6 }),
-			"bf16 stochastic update differs by less than 0.01 percentage points from bf16 nearest (95 % interval 7.00 to 9.24, 10 pairs): within the margin of 0.5 percentage points.",
+			"bf16 stochastic update differs by less than 0.01 percentage points from bf16 nearest (95 % interval 7.00 to 9.24, 10 pairs): better, so within the margin of 0.5 percentage points.",
 		},
 		{
 			"contrast not begun",

@@ -211,7 +211,7 @@ func (v *view) savedWords(best *armView) string {
 		saved(b.Step.EnergyShare, b.StepTiled.EnergyShare) == saved(1, 1) {
 		return "nothing in memory or traffic, and less than 1 % of the energy: what it narrows is neither stored nor moved"
 	}
-	return fmt.Sprintf("of a training step in FP32 %s of the memory (%s to %s), %s of the bytes moved and %s of the energy; of an inference %s of the memory (%s to %s) and %s of the energy. Model and tables: see the costs",
+	return fmt.Sprintf("of a training step in FP32 %s of the memory (%s to %s), %s of the bytes moved and %s of the energy; of an inference %s of the memory (%s to %s) and %s of the energy. The energy is a model's, not measured; model and tables: see the costs",
 		of(b.TrainingBits, ref.TrainingBits), byteWords(ref.TrainingBits), byteWords(b.TrainingBits),
 		saved(b.Step.BitShare, b.StepTiled.BitShare), saved(b.Step.EnergyShare, b.StepTiled.EnergyShare),
 		of(b.EndpointBits, ref.EndpointBits), byteWords(ref.EndpointBits), byteWords(b.EndpointBits),

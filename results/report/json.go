@@ -58,7 +58,7 @@ func (v *view) json(w io.Writer) error {
 	top := object{
 		"answer": v.answer(), "title": v.Title, "question": v.Question, "plan": v.PlanFile, "data": v.Data,
 		"network": v.Network, "training": v.Training, "longest_sum": v.LongestSum, "metric": v.Metric,
-		"margin_fixed": moment(v.MarginFixed), "margin_changed": v.MarginChanged, "written": moment(v.Written),
+		"margin_fixed": moment(v.MarginFixed), "margin_changed": v.MarginChanged, "margin_moved": v.marginMoved(), "written": moment(v.Written),
 		"baseline_problem": v.BaselineProblem, "classes": filled(v.Classes), "warnings": filled(v.Warnings),
 		"cautions": filled(cautionSection(v).(list).Items), "store_digest": v.StoreDigest, "code_version": v.CodeVersion,
 		"rerun": filled(v.Rerun), "planned": v.Planned, "looks": v.Looks, "resolved": v.Resolved,

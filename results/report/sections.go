@@ -22,7 +22,7 @@ type figureWith struct {
 
 // differenceSection is the rail of the arms against the baseline.
 func differenceSection(v *view) any {
-	caption := "Each row is an arm. Bar: " + percentage(v.Confidence) + " t interval of the mean paired difference, arm − baseline; the mark on it is the verdict's, at the mean; strokes below the bar: the replicates. " +
+	caption := "Each row is an arm. Bar: " + percentage(v.Confidence) + " t interval of the mean paired difference, arm − baseline; the mark on it is the verdict's, at the mean; strokes below the bar: the replicates. The bars are not corrected for the number of arms, the verdicts are (Holm): a bar may clear the margin beside \"undecided\". " +
 		"An arm is within the margin when its whole bar, Holm-corrected, lies to the right of the post."
 	switch {
 	case v.NoiseHigh > v.NoiseLow:

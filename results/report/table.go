@@ -69,9 +69,9 @@ func (t *terminal) answer() {
 	}
 	t.line("")
 	m := t.v.words.scale(t.v.Margin)
-	fixedWords := "margin fixed " + day(t.v.MarginFixed)
-	if t.v.MarginFixed.IsZero() {
-		fixedWords = "no record of when the margin was fixed"
+	fixedWords := "no record of when the margin was fixed"
+	if !t.v.MarginFixed.IsZero() {
+		fixedWords = "margin " + t.v.fixedWords()
 	}
 	facts := fmt.Sprintf("%s, margin %s%s, %s intervals of paired differences; %s",
 		plain(t.v.Metric), fixed(m, marginDigits(m)), t.v.words.unit(), percentage(t.v.Confidence), fixedWords)

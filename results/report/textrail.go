@@ -85,7 +85,7 @@ func (r *textRail) draw(c *results.Comparison) string {
 
 // legend explains marks and rail.
 func (r *textRail) legend() string {
-	s := "┃ margin, │ no difference, ━ interval, to the right is better"
+	s := "┃ margin, │ no difference, ━ interval (uncorrected; verdicts are Holm-corrected), to the right is better"
 	if r.fold > 0 {
 		s += "; logarithmic beyond two margins"
 	}

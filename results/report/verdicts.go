@@ -35,7 +35,7 @@ func (v *view) claimFacts() []fact {
 	case v.MarginFixed.IsZero():
 		add("Margin fixed", "no record of when the margin was fixed")
 	default:
-		add("Margin fixed", day(v.MarginFixed)+v.firstRun())
+		add("Margin fixed", strings.TrimPrefix(v.fixedWords(), "fixed ")+v.firstRun())
 	}
 	if v.FixedClaim.Hash != (results.Hash{}) {
 		add("Claim's hash", fmt.Sprintf("%x", v.FixedClaim.Hash[:]))
@@ -90,6 +90,30 @@ func (v *view) marginWords() string {
 	return "an arm may score at most " + s + " above the baseline"
 }
 
+// fixedWords says when the margin was fixed. The date holds for the margin that was
+// fixed then: one that differs from today's is named, and so is today's.
+func (v *view) fixedWords() string {
+	was := v.FixedClaim.Claim
+	switch {
+	case !v.marginMoved():
+		return "fixed " + day(v.MarginFixed)
+	case was.Metric != v.Claim.Metric:
+		return "fixed for another metric, " + plain(was.Metric) + ", on " + day(v.MarginFixed) + "; changed since"
+	}
+	size := func(margin float64) string {
+		m := v.words.scale(margin)
+		return fixed(m, max(marginDigits(m), marginDigits(v.words.scale(v.Margin)))) + v.words.unit()
+	}
+	return "fixed at " + size(was.Margin) + " on " + day(v.MarginFixed) + "; changed since to " + size(v.Margin)
+}
+
+// marginMoved reports whether the margin is not the one that the store holds as
+// fixed: another number, or the same of another metric.
+func (v *view) marginMoved() bool {
+	was := v.FixedClaim
+	return was.Hash != (results.Hash{}) && (was.Claim.Margin != v.Claim.Margin || was.Claim.Metric != v.Claim.Metric)
+}
+
 // firstRun says how the margin's date stands to the first run's start.
 func (v *view) firstRun() string {
 	var first time.Time
@@ -103,6 +127,9 @@ func (v *view) firstRun() string {
 		return ""
 	case first.Before(v.MarginFixed): // the one thing a reader must not overlook here
 		return ", AFTER the first run here started (" + day(first) + ")"
+	}
+	if v.marginMoved() {
+		return ", AFTER the first run started (" + day(first) + ")"
 	}
 	return ", before the first run started (" + day(first) + ")"
 }

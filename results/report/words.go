@@ -23,14 +23,17 @@ func fixed(v float64, decimals int) string {
 	if math.IsNaN(v) || math.IsInf(v, 0) {
 		return missing
 	}
-	return minus(strconv.FormatFloat(v+0, 'f', decimals, 64))
+	s := strconv.FormatFloat(v, 'f', decimals, 64)
+	if strings.Trim(s, "-0.") == "" {
+		s = strings.TrimPrefix(s, "-")
+	}
+	return minus(s)
 }
 
-// signed is fixed with a sign, which tells +0.00 and −0.00, the roundings of
-// small differences, from 0.00, no difference at all.
+// signed is fixed with a sign. What rounds to zero has none.
 func signed(v float64, decimals int) string {
 	s := fixed(v, decimals)
-	if v > 0 && s != missing {
+	if v > 0 && s != missing && strings.Trim(s, "0.") != "" {
 		return "+" + s
 	}
 	return s
