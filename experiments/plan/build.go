@@ -1,7 +1,9 @@
 package plan
 
 import (
+	"errors"
 	"fmt"
+	"io/fs"
 	"slices"
 	"strings"
 
@@ -14,7 +16,7 @@ var planKeys = []string{
 	"claim", "baseline", "arm", "grid", "contrast", "controls", "format", "tuning",
 }
 
-// Load reads, checks and resolves the plan in the file name. A path such as
+// Load reads, checks and resolves the plan in the file name. A path such as first-look.toml or
 // experiments/plans/first-look.toml that is not on disk is read from the copy
 // inside the program, which Notices then says. The error is a *PlanError or
 // Errors: what is wrong with the plan, one line each.
@@ -48,11 +50,32 @@ func loadFrom(source Source, name string, stored StoredRuns) (*Plan, error) {
 	r := &reader{stored: stored}
 	p := r.build(root)
 	if len(r.errs) > 0 {
+		r.errs.hint(l.text.String())
 		return nil, r.errs.withoutEchoes().inOrder()
 	}
 	p.File, p.Text = name, l.text.String()
 	p.Warnings = p.warn()
 	return p, nil
+}
+
+// hint points from a file that is not there to the plan's leading comment, if that
+// holds a command: a line indented like one.
+func (e Errors) hint(text string) {
+	command := false
+	for line := range strings.Lines(text) {
+		if !strings.HasPrefix(line, "#") {
+			break
+		}
+		command = command || strings.HasPrefix(line, "#   ")
+	}
+	if !command {
+		return
+	}
+	for _, one := range e {
+		if errors.Is(one.Err, fs.ErrNotExist) {
+			one.Remedy = strings.TrimPrefix(one.Remedy+"; the first lines of the plan say how to get it", "; ")
+		}
+	}
 }
 
 // emptyPlan is the one error of a file without a key: each table that it lacks
