@@ -102,3 +102,16 @@ func TestEstimateOfDivergedRuns(t *testing.T) {
 		t.Errorf("remaining %v, want 4 runs of 11 s at most", o.Remaining)
 	}
 }
+
+// Nothing is left after the last run, whatever the estimate still holds.
+func TestNothingLeftAtTheEnd(t *testing.T) {
+	for want, o := range map[string]Overall{
+		"56 of 56 runs":                 {56, 56, 0},
+		"55 of 56 runs, about 1 s left": {55, 56, 0},
+		"0 of 56 runs":                  {0, 56, -1},
+	} {
+		if got := o.String(); got != want {
+			t.Errorf("got %q, want %q", got, want)
+		}
+	}
+}

@@ -65,10 +65,10 @@ type Overall struct {
 	Remaining   time.Duration // estimated; negative: not known yet
 }
 
-// String is "12 of 40 runs, about 20 s left".
+// String is "12 of 40 runs, about 20 s left", of the last run "40 of 40 runs".
 func (o Overall) String() string {
 	done := fmt.Sprintf("%d of %d runs", o.Done, o.Total)
-	if o.Remaining < 0 {
+	if o.Remaining < 0 || o.Done >= o.Total {
 		return done
 	}
 	return done + ", " + About(o.Remaining) + " left"

@@ -43,7 +43,7 @@ func findRule(o Optimizer) (*ruleKind, error) {
 		}
 		names = append(names, k.name)
 	}
-	return nil, fmt.Errorf("unknown optimizer %q; known: %s", o.Kind, strings.Join(names, ", "))
+	return nil, fmt.Errorf("unknown optimizer %q; write one of %s", o.Kind, strings.Join(names, ", "))
 }
 
 // check refuses what no optimizer can use.

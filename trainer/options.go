@@ -1,6 +1,7 @@
 package trainer
 
 import (
+	"errors"
 	"fmt"
 	"slices"
 	"sort"
@@ -146,14 +147,13 @@ func (o *options) leftover() error {
 // wholeNumber reads a count.
 func wholeNumber(what, text string, least int) (int, error) {
 	n, err := strconv.Atoi(text)
-	if err != nil {
-		return 0, fmt.Errorf("%s is %q, not a whole number", what, text)
-	}
-	if n < least {
-		return 0, fmt.Errorf("%s is %d; it must be at least %d", what, n, least)
-	}
-	if n > maxElements {
-		return 0, fmt.Errorf("%s is %d; at most %d is accepted", what, n, maxElements)
+	switch {
+	case errors.Is(err, strconv.ErrRange) && !strings.HasPrefix(text, "-"), err == nil && n > maxElements:
+		return 0, fmt.Errorf("%s is %s, too large; write at most %d", what, text, maxElements)
+	case errors.Is(err, strconv.ErrRange), err == nil && n < least:
+		return 0, fmt.Errorf("%s is %s; it must be at least %d, write %d or more", what, text, least, least)
+	case err != nil:
+		return 0, fmt.Errorf("%s is %q, not a whole number; write %d or more", what, text, least)
 	}
 	return n, nil
 }

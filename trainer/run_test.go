@@ -303,7 +303,7 @@ func TestBadJobsAreRefused(t *testing.T) {
 		{func(j *Job) { j.Train = Set{} }, "training data: no examples"},
 		{func(j *Job) { j.Validation.Labels = j.Validation.Labels[:4] }, "do not hold 4 examples of 1x9x9"},
 		{func(j *Job) { j.Training.Batch = 0 }, "batch 0, epochs 2"},
-		{func(j *Job) { j.Training.Optimizer.Kind = "sdg" }, `unknown optimizer "sdg"; known: sgd, nesterov, adam, adamw`},
+		{func(j *Job) { j.Training.Optimizer.Kind = "sdg" }, `unknown optimizer "sdg"; write one of sgd, nesterov, adam, adamw`},
 		{func(j *Job) { j.Training.Optimizer.Momentum = 1 }, "momentum is 1"},
 		{func(j *Job) { j.Training.Optimizer.Momentum = 0 }, "sets 1 state tensors, the optimizer keeps 0"},
 		{func(j *Job) { j.Training.Loss = "hinge" }, `unknown loss "hinge"`},

@@ -112,7 +112,24 @@ Start with:  ulpine run experiments/plans/first-look.toml`,
 	})
 	root.SetVersionTemplate("ulpine {{.Version}}\n")
 	root.AddCommand(verbs()...)
+	root.SetHelpCommand(newHelp())
 	return root
+}
+
+// newHelp is cobra's help verb, but a word that is no verb is bad input.
+func newHelp() *cobra.Command {
+	return &cobra.Command{
+		Use:   "help [VERB]",
+		Short: "Help about any verb",
+		RunE: func(cmd *cobra.Command, args []string) error {
+			target, rest, err := cmd.Root().Find(args)
+			if err != nil || len(rest) > 0 {
+				return badInput(unknownVerb(cmd.Root(), strings.Join(args, " ")))
+			}
+			target.InitDefaultHelpFlag()
+			return target.Help()
+		},
+	}
 }
 
 // unknownVerb names the nearest verbs.
@@ -129,6 +146,10 @@ func exactly(names ...string) cobra.PositionalArgs {
 	return func(cmd *cobra.Command, args []string) error {
 		if len(args) == len(names) {
 			return nil
+		}
+		if len(args) == 0 && names[0] == "PLAN" {
+			return badInput(fmt.Errorf("%s takes PLAN, a TOML file; plans to begin with are in experiments/plans, as in: %s experiments/plans/first-look.toml",
+				cmd.CommandPath(), cmd.CommandPath()))
 		}
 		return badInput(fmt.Errorf("%s takes %s, got %d arguments (see %q)",
 			cmd.CommandPath(), strings.Join(names, " "), len(args), cmd.CommandPath()+" --help"))

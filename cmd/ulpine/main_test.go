@@ -171,6 +171,9 @@ func TestRequireWithin(t *testing.T) {
 	strict := strings.Replace(tiny, "count = 3", "count = 1", 1) // a single pair decides nothing
 	inFolder(t, map[string]string{"tiny.toml": strict})
 	must(t, "run", "tiny.toml", "--no-report", "--quiet")
+	if _, errs, code := ulpine(t, "resolve", "tiny.toml"); code != exitOK || !strings.Contains(errs, "ulpine: warning: one replicate") {
+		t.Errorf("resolve: exit code %d, no warning of one replicate: %s", code, errs)
+	}
 	if _, errs, code := ulpine(t, "verdicts", "tiny.toml", "--require-within"); code != exitVerdict {
 		t.Errorf("exit code %d: %s", code, errs)
 	}
@@ -189,7 +192,9 @@ func TestBadInput(t *testing.T) {
 		want string
 	}{
 		{[]string{"ran"}, `unknown verb "ran"`},
-		{[]string{"run"}, "takes PLAN"},
+		{[]string{"help", "ran"}, `unknown verb "ran"; nearest: run`},
+		{[]string{"help", "NONSENSE"}, `unknown verb "NONSENSE"; ulpine --help lists them`},
+		{[]string{"run"}, "takes PLAN, a TOML file; plans to begin with are in experiments/plans, as in: ulpine run experiments/plans/first-look.toml"},
 		{[]string{"run", "--wrokers", "2", "tiny.toml"}, "unknown flag"},
 		{[]string{"run", "tiny.toml", "--workers", "-1"}, "--workers -1"},
 		{[]string{"run", "none.toml"}, "none.toml"},

@@ -26,6 +26,9 @@ are timed on invented numbers for a twentieth of a second each.`,
 		if err != nil {
 			return err
 		}
+		for _, w := range p.Warnings {
+			fmt.Fprintln(cmd.ErrOrStderr(), "ulpine: warning:", w)
+		}
 		if *workers <= 0 {
 			*workers = runtime.GOMAXPROCS(0)
 		}

@@ -33,7 +33,9 @@ func (r *armReader) readArms(root *node) ([]Arm, []*grid) {
 	baseline := Arm{Name: BaselineSlug, Slug: BaselineSlug, Baseline: true, Training: r.training}
 	arms := []Arm{r.finish(baseline, &base, scale)}
 	if root.table["arm"] == nil && root.table["grid"] == nil {
-		r.fail(&PlanError{File: root.file, Key: "arm", Reason: "the plan has no arms", Remedy: `write [[arm]] with name = "bf16" and storage = "bf16"`})
+		e := root.lacks("arm", `write [[arm]] with name = "bf16" and storage = "bf16"`, "the plan has no arms")
+		e.Key = e.absent
+		r.fail(e)
 	}
 	seen := map[string]*node{}
 	spelled := r.tables(root, "arm")
@@ -74,7 +76,7 @@ func (r *armReader) armName(n *node, seen map[string]*node) (name, slug string) 
 	twin := seen[slug]
 	switch {
 	case at == nil:
-		r.fail(n.errorf(`write name = "bf16 nearest"`, "name is missing"))
+		r.fail(n.lacks("name", `write name = "bf16 nearest"`, "name is missing"))
 		return name, slug
 	case at.value == nil:
 	case slug == "":

@@ -3,6 +3,7 @@ package plan
 import (
 	"fmt"
 	"slices"
+	"strconv"
 	"strings"
 
 	"ulpine/quant"
@@ -227,7 +228,11 @@ func (r *reader) readSettings(n *node, s selection, a *assignment, fs formats, a
 		case all[k].ids != nil:
 			r.applyTarget(sub, k, all[k], s, a, fs)
 		case !slices.Contains(also, k):
-			r.fail(sub.errorf(s.suggest(k, top, all), "unknown key"))
+			e := sub.errorf(s.suggest(k, top, all), "unknown key")
+			if best, near := nearest(k, top); near && strings.Contains(e.Remedy, strconv.Quote(best)) {
+				e.meant = joinKey(n.key, best)
+			}
+			r.fail(e)
 		}
 	}
 }

@@ -1,7 +1,9 @@
 package plan
 
 import (
+	"errors"
 	"fmt"
+	"io/fs"
 	"slices"
 	"strings"
 
@@ -14,7 +16,7 @@ var planKeys = []string{
 	"claim", "baseline", "arm", "grid", "contrast", "controls", "format", "tuning",
 }
 
-// Load reads, checks and resolves the plan in the file name. A path such as
+// Load reads, checks and resolves the plan in the file name. A path such as first-look.toml or
 // experiments/plans/first-look.toml that is not on disk is read from the copy
 // inside the program, which Notices then says. The error is a *PlanError or
 // Errors: what is wrong with the plan, one line each.
@@ -42,14 +44,47 @@ func loadFrom(source Source, name string, stored StoredRuns) (*Plan, error) {
 	if err != nil {
 		return nil, err
 	}
+	if len(root.table) == 0 {
+		return nil, emptyPlan(name)
+	}
 	r := &reader{stored: stored}
 	p := r.build(root)
 	if len(r.errs) > 0 {
-		return nil, r.errs.inOrder()
+		r.errs.hint(l.text.String())
+		return nil, r.errs.withoutEchoes().inOrder()
 	}
 	p.File, p.Text = name, l.text.String()
 	p.Warnings = p.warn()
 	return p, nil
+}
+
+// hint points from a file that is not there to the plan's leading comment, if that
+// holds a command: a line indented like one.
+func (e Errors) hint(text string) {
+	command := false
+	for line := range strings.Lines(text) {
+		if !strings.HasPrefix(line, "#") {
+			break
+		}
+		command = command || strings.HasPrefix(line, "#   ")
+	}
+	if !command {
+		return
+	}
+	for _, one := range e {
+		if errors.Is(one.Err, fs.ErrNotExist) {
+			one.Remedy = strings.TrimPrefix(one.Remedy+"; the first lines of the plan say how to get it", "; ")
+		}
+	}
+}
+
+// emptyPlan is the one error of a file without a key: each table that it lacks
+// would be told at length otherwise.
+func emptyPlan(name string) *PlanError {
+	return &PlanError{
+		File: name, Line: 1, Reason: "the plan is empty",
+		Remedy: "write at least [task], [network], [training], [replicates], [claim] and one [[arm]], as " + shippedAt + "/first-look.toml does",
+	}
 }
 
 // build reads every table of a plan. Tables that lean on one that failed are
@@ -105,7 +140,7 @@ func (r *reader) readNetwork(root *node, task *Task) trainer.Network {
 	texts, nodes := r.texts(n, "layers")
 	switch {
 	case at == nil:
-		r.fail(n.errorf(`write layers = ["dense 16", "relu", "dense 5"]`, "layers are missing"))
+		r.fail(n.lacks("layers", `write layers = ["dense 16", "relu", "dense 5"]`, "layers are missing"))
 		return trainer.Network{}
 	case nodes == nil, len(task.Shape) == 0:
 		return trainer.Network{}
@@ -142,6 +177,9 @@ func (r *reader) checkOutputs(network *trainer.Network, task *Task, nodes []*nod
 	switch at := nodes[len(nodes)-1]; {
 	case network.Parameters() == 0:
 		r.fail(at.errorf(remedy, "the network has no layer with weights: nothing to train"))
+	case network.Outputs() != task.outputs() && len(last.Out) == 1 && last.Kind == "dense":
+		r.fail(at.errorf("write"+strings.TrimPrefix(remedy, "end with"), "the last layer, %q, has %d outputs, but the task has %d %s",
+			last.Name, network.Outputs(), task.outputs(), kind))
 	case network.Outputs() != task.outputs():
 		r.fail(at.errorf(remedy, "the last layer, %q, has an output of %s = %d values, but the task has %d %s",
 			last.Name, product(last.Out), network.Outputs(), task.outputs(), kind))

@@ -56,8 +56,10 @@ func (r *reader) readClaim(root *node, task *Task) (c Claim) {
 	}
 	r.known(n, "metric", classKey, rateKey, "margin", "confidence")
 	c.Metric = r.metric(n, c.Metric, task)
+	m, _ := findMetric(c.Metric) // a count of epochs to a target is no metric of the list
+	r.share = m.share
 	if n.table["margin"] == nil {
-		r.fail(n.errorf("write margin = 0.01, the loss of the metric that you accept", "margin is missing"))
+		r.fail(n.lacks("margin", "write margin = 0.01, the loss of the metric that you accept", "margin is missing"))
 	}
 	c.Margin = r.margin(n, math.NaN())
 	c.Confidence = r.number(n, "confidence", defaultConfidence)
@@ -79,7 +81,18 @@ func (r *reader) margin(n *node, fallback float64) float64 {
 	if len(r.errs) == before && !(m > 0) {
 		r.fail(at.errorf("write a positive margin, as 0.01", "a margin of %g is not positive", m))
 	}
+	if len(r.errs) == before && m >= 1 && r.share {
+		r.fail(at.errorf(marginRemedy(m), "a margin of %g is %g percentage points: every arm would be within it", m, 100*m))
+	}
 	return m
+}
+
+// marginRemedy takes a margin of one or more for percentage points.
+func marginRemedy(points float64) string {
+	if points >= 100 {
+		return "write the margin as a fraction below 1: 0.01 is one percentage point"
+	}
+	return fmt.Sprintf("write a fraction below 1: margin = %g for %g percentage points", points/100, points)
 }
 
 // readReplicates reads [replicates].
@@ -93,7 +106,7 @@ func (r *reader) readReplicates(root *node) Replicates {
 	if n.table["up_to"] != nil || n.table["look_every"] != nil {
 		reps.Count, reps.LookEvery = r.readLooks(n)
 	} else if n.table["count"] == nil {
-		r.fail(n.errorf("write count = 10", "count is missing"))
+		r.fail(n.lacks("count", "write count = 10", "count is missing"))
 	}
 	if reps.LookEvery == 0 {
 		reps.Count = int(r.whole(n, "count", 1, 1, maxReplicates))
@@ -107,7 +120,7 @@ func (r *reader) readReplicates(root *node) Replicates {
 func (r *reader) readLooks(n *node) (upTo, every int) {
 	for _, twin := range [][2]string{{"up_to", "40"}, {"look_every", "5"}} {
 		if n.table[twin[0]] == nil {
-			r.fail(n.errorf("write "+twin[0]+" = "+twin[1], "%s is missing: looks take up_to and look_every both", twin[0]))
+			r.fail(n.lacks(twin[0], "write "+twin[0]+" = "+twin[1], twin[0]+" is missing: looks take up_to and look_every both"))
 			return 1, 1
 		}
 	}
@@ -132,10 +145,13 @@ const maxLooks = 40
 // maxReplicates bounds the number of replicates.
 const maxReplicates = 100_000
 
-// required returns a table that a plan must have, or records that it is missing.
+// required returns a table that a plan must have, or records that it is missing:
+// at the first line, as no line is the place of what is not there.
 func (r *reader) required(root *node, key, example string) *node {
 	if root.table[key] == nil {
-		r.fail(&PlanError{File: root.file, Key: key, Reason: "the table is missing", Remedy: "write " + example})
+		e := root.lacks(key, "write "+example, "the table is missing")
+		e.Key = e.absent
+		r.fail(e)
 		return nil
 	}
 	return r.table(root, key, example)
@@ -168,7 +184,7 @@ func (r *reader) readContrasts(root *node, arms []Arm, margin float64) []Contras
 func (r *reader) armSlug(n *node, key string, arms []Arm) string {
 	at := n.table[key]
 	if at == nil {
-		r.fail(n.errorf("write "+key+` = "name of an arm"`, "%s is missing", key))
+		r.fail(n.lacks(key, "write "+key+` = "name of an arm"`, key+" is missing"))
 		return ""
 	}
 	text := r.text(n, key, "")

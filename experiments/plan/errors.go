@@ -16,6 +16,25 @@ type PlanError struct {
 	Reason string // lower case, no full stop
 	Remedy string // lower case, an instruction; may be empty only when Reason holds it
 	Err    error  // the cause, if another package found it
+
+	absent string // dotted: the required key whose absence this tells; empty: something else
+	meant  string // dotted: the key that an unknown one was probably meant to be
+}
+
+// lacks makes the error for a required key that the table n does not have.
+func (n *node) lacks(key, remedy, reason string) *PlanError {
+	e := n.errorf(remedy, "%s", reason)
+	e.absent = joinKey(n.key, key)
+	return e
+}
+
+// withoutEchoes leaves out that a key is missing where it is there, but misspelt.
+func (e Errors) withoutEchoes() Errors {
+	meant := map[string]bool{}
+	for _, one := range e {
+		meant[one.meant] = true
+	}
+	return slices.DeleteFunc(e, func(one *PlanError) bool { return one.absent != "" && meant[one.absent] })
 }
 
 // Error is "file:line: key: reason; remedy", always one line.

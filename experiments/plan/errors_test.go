@@ -118,7 +118,7 @@ func TestErrorsNameLineKeyReasonRemedy(t *testing.T) {
 		"at_epochs alone":          {"learning_rate = 0.02", "learning_rate = { start = 0.1, at_epochs = [2] } # <-", "training.learning_rate", "at_epochs without multiply", "write multiply"},
 		"at_epochs descend":        {"learning_rate = 0.02", "learning_rate = { start = 0.1, multiply = 0.5, at_epochs = [3, 2] } # <-", "training.learning_rate.at_epochs", "[3 2] do not ascend", "ascending"},
 		"at_epochs from zero":      {"learning_rate = 0.02", "learning_rate = { start = 0.1, multiply = 0.5, at_epochs = [0] } # <-", "training.learning_rate.at_epochs[1]", "0 is out of range", "write at least 1"},
-		"unknown optimizer":        {`optimizer = { kind = "sgd", momentum = 0.9 }`, `optimizer = "sdg" # <-`, "training.optimizer", `unknown optimizer "sdg"`, "known: sgd"},
+		"unknown optimizer":        {`optimizer = { kind = "sgd", momentum = 0.9 }`, `optimizer = "sdg" # <-`, "training.optimizer", `unknown optimizer "sdg"`, "write one of sgd"},
 		"momentum":                 {`momentum = 0.9 }`, `momentum = 1 } # <-`, "training.optimizer", "momentum is 1", "it must be at least 0 and below 1"},
 		"shuffle":                  {"epochs = 3", "epochs = 3\nshuffle = \"no\" # <-", "training.shuffle", "want true or false", "shuffle = true"},
 		"evaluate":                 {"epochs = 3", "epochs = 3\nevaluate = \"last epcoh\" # <-", "training.evaluate", `unknown word "last epcoh"`, `did you mean "last epoch"?`},
@@ -143,6 +143,26 @@ func TestErrorsNameLineKeyReasonRemedy(t *testing.T) {
 		"no training data":         {"train = 200", "train = 0 # <-", "task.train", "0 is out of range", ""},
 		"syntax":                   {"batch = 20", "batch = = 20 # <-", "", "not valid TOML", "correct the line"},
 		"duplicate key":            {"batch = 20", "batch = 20\nbatch = 21 # <-", "", "not valid TOML", "correct the line"},
+		"misspelt required key":    {"learning_rate = 0.02", "lerning_rate = 0.02 # <-", "training.lerning_rate", "unknown key", `did you mean "learning_rate"?`},
+		"misspelt required table":  {"[training]", "[trainning] # <-", "trainning", "unknown key", `did you mean "training"?`},
+		"misspelt claim key":       {"margin = 0.01", "magin = 0.01 # <-", "claim.magin", "unknown key", `did you mean "margin"?`},
+		"misspelt arms":            {"[[arm]]", "[[amr]] # <-", "amr", "unknown key", `did you mean "arm"?`},
+		"misspelt arm's name":      {`name = "bf16"`, `nmae = "bf16" # <-`, "arm[1].nmae", "unknown key", `did you mean "name"?`},
+		"misspelt data":            {`data = "pump-vibration"`, `dta = "pump-vibration" # <-`, "task.dta", "unknown key", `did you mean "data"?`},
+		"empty":                    {basePlan, "# nothing yet", "", "the plan is empty", "write at least [task], [network], [training], [replicates], [claim] and one [[arm]]"},
+		"epochs beyond all":        {"epochs = 3", "epochs = 9223372036854775807 # <-", "training.epochs", "is out of range", "write at most 2147483647"},
+		"epochs and a half":        {"epochs = 3", "epochs = 3.5 # <-", "training.epochs", "3.5 is a number with a fraction", "write epochs = 3 or epochs = 4"},
+		"batch in quotes":          {"batch = 20", `batch = "32" # <-`, "training.batch", `"32" is a text`, "write batch = 32"},
+		"rate in quotes":           {"learning_rate = 0.02", `learning_rate = "0.1" # <-`, "training.learning_rate", `"0.1" is a text`, "write learning_rate = 0.1"},
+		"units too large":          {`"relu", "dense 5"]`, "\n\"dense 999999999999999999999999\", # <-\n\"dense 5\"]", "network.layers[2]", "too large", "write at most"},
+		"units negative":           {`"relu", "dense 5"]`, "\n\"dense -8\", # <-\n\"dense 5\"]", "network.layers[2]", "units is -8", "write 1 or more"},
+		"one output too few":       {`"relu", "dense 5"]`, "\n\"dense 4\" # <-\n]", "network.layers[2]", `the last layer, "dense 4", has 4 outputs, but the task has 5 classes`, `write "dense 5"`},
+		"exponent bits":            {`storage = "bf16"`, `storage = "E40M90" # <-`, "arm[1].storage", `format "E40M90": 40 exponent bits`, "write another format"},
+		"table of no values":       {"[[arm]]", "[format.x]\nvalues = [] # <-\n[[arm]]", "format.x.values", "0 values", "as values = [-1, 0, 1]"},
+		"nothing to tune":          {"[claim]", "[tuning]\nlearning_rate = [] # <-\n[claim]", "tuning.learning_rate", "the array is empty", "write the values to try"},
+		"defined twice":            {"batch = 20", "batch = 20\nbatch = 21 # <-", "", "has already been defined", "correct the line"},
+		"margin in percent":        {"margin = 0.01", "margin = 5 # <-", "claim.margin", "a margin of 5 is 500 percentage points", "margin = 0.05 for 5 percentage points"},
+		"contrast margin of one":   {"[claim]", "[[contrast]]\narm = \"bf16\"\nagainst = \"baseline\"\nmargin = 1 # <-\n[claim]", "contrast[1].margin", "100 percentage points", "margin = 0.01"},
 		"unclosed string":          {"batch = 20", "batch = \"20 # <-", "", "not valid TOML", "correct the line"},
 		"not UTF-8":                {"batch = 20", "batch = 20 # <-\xff", "", "not UTF-8", "save the plan as UTF-8"},
 	} {
@@ -164,6 +184,9 @@ func TestErrorsNameLineKeyReasonRemedy(t *testing.T) {
 			}
 			if e.File != "plan.toml" || !strings.Contains(e.Reason, c.reason) || !strings.Contains(e.Remedy, c.remedy) {
 				t.Errorf("got  %v\nwant %q; %q", e, c.reason, c.remedy)
+			}
+			if e.Line == 0 || strings.Contains(e.Error(), ".;") || e.Remedy == "" && c.remedy != "" {
+				t.Errorf("no line, no remedy or two stops: %v", e)
 			}
 			if strings.ContainsAny(e.Error(), "\n\r") || e.Reason == "" {
 				t.Errorf("not one line: %q", e.Error())

@@ -81,7 +81,11 @@ func (r *reader) readOwn(n *node, name string) quant.Format {
 	}
 	f, err := quant.NewTable(name, values, overflow)
 	if err != nil {
-		r.fail(fault(at, err))
+		e := fault(at, err)
+		if e.Remedy == "" {
+			e.Remedy = "write the values in ascending order, as values = [-1, 0, 1]"
+		}
+		r.fail(e)
 		return nil
 	}
 	return r.checkWidth(n, f)
@@ -95,7 +99,7 @@ func (r *reader) readSplit(n *node) quant.Format {
 	r.known(n, splitKeys...)
 	for _, k := range []string{"exponent", "fraction"} {
 		if n.table[k] == nil {
-			r.fail(n.errorf("write "+k+" = 4", "%s is missing", k))
+			r.fail(n.lacks(k, "write "+k+" = 4", k+" is missing"))
 		}
 	}
 	spec := quant.FloatSpec{
@@ -188,7 +192,11 @@ func (fs formats) find(n *node, word string) (quant.Format, *PlanError) {
 		}
 		return nil, n.errorf(remedy, "unknown format %q", word)
 	}
-	return nil, fault(n, err)
+	e := fault(n, err)
+	if e.Remedy == "" {
+		e.Remedy = "write another format, as bf16 or E5M10"
+	}
+	return nil, e
 }
 
 // withOptions lays options over those a format's name holds already and reads
@@ -213,6 +221,7 @@ func withOptions(name string, options []string) (quant.Format, error) {
 // remedy behind a semicolon.
 func fault(n *node, err error) *PlanError {
 	reason, remedy, _ := strings.Cut(strings.TrimPrefix(err.Error(), "quant: "), "; ")
+	reason = strings.ReplaceAll(reason, ": quant: ", ": ") // no package's name helps here
 	e := n.errorf(remedy, "%s", reason)
 	e.Err = err
 	return e

@@ -25,15 +25,17 @@ type disk struct{ notices *[]string }
 // shippedAt is where the embedded plans stand in the project's tree.
 const shippedAt = "experiments/plans"
 
-// ReadPlan reads the file name, or the embedded plan of that name.
+// ReadPlan reads the file name, or the embedded plan of that name, as
+// experiments/plans/first-look.toml or first-look.toml.
 func (d disk) ReadPlan(name string) ([]byte, error) {
 	text, err := os.ReadFile(filepath.FromSlash(name))
 	if !errors.Is(err, fs.ErrNotExist) {
 		return text, err
 	}
-	inside, ok := strings.CutPrefix(filepath.ToSlash(filepath.Clean(name)), shippedAt+"/")
-	if !ok {
-		return nil, err
+	clean := filepath.ToSlash(filepath.Clean(name))
+	inside, ok := strings.CutPrefix(clean, shippedAt+"/")
+	if !ok && strings.Contains(clean, "/") {
+		return nil, err // a bare name may be that of a shipped plan, a path elsewhere is not
 	}
 	shipped, missing := plans.Files.ReadFile(inside)
 	if missing != nil {

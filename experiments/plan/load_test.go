@@ -159,14 +159,22 @@ func TestFilesAndShippedCopies(t *testing.T) {
 		t.Fatalf("%v, notices %q", err, p.Notices)
 	}
 	t.Chdir(dir)
-	p, err = Load("experiments/plans/sixteen-bit.toml")
-	if err != nil {
-		t.Fatal(err)
+	for _, shipped := range []string{"experiments/plans/sixteen-bit.toml", "sixteen-bit.toml"} {
+		if p, err = Load(shipped); err != nil {
+			t.Fatal(err)
+		}
+		if len(p.Notices) != 1 || !strings.Contains(p.Notices[0], "is not on disk: using the copy that ships inside ulpine") {
+			t.Errorf("notices %q", p.Notices)
+		}
 	}
-	if len(p.Notices) != 1 || !strings.Contains(p.Notices[0], "is not on disk: using the copy that ships inside ulpine") {
-		t.Errorf("notices %q", p.Notices)
+	const hint = "the first lines of the plan say how to get it"
+	if _, err := Load("mnist-lenet.toml"); err == nil || !strings.Contains(err.Error(), hint) {
+		t.Errorf("missing data, a command in the comment: %v", err)
 	}
-	for _, missing := range []string{"experiments/plans/gone.toml", "sixteen-bit.toml", "experiments/plans/../x.toml"} {
+	if _, err := Load("sensors-csv.toml"); err == nil || strings.Contains(err.Error(), hint) {
+		t.Errorf("missing data, no command in the comment: %v", err)
+	}
+	for _, missing := range []string{"experiments/plans/gone.toml", "gone.toml", "elsewhere/sixteen-bit.toml", "experiments/plans/../x.toml"} {
 		if _, err := Load(missing); err == nil || !strings.Contains(err.Error(), "cannot read the plan: no such file") {
 			t.Errorf("%s: %v", missing, err)
 		}

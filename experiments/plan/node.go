@@ -89,7 +89,7 @@ func syntaxError(file string, err error) *PlanError {
 	if errors.As(err, &p) {
 		e.Line, e.Key = p.Position.Line, p.LastKey
 		message, _, _ := strings.Cut(p.Message, "\n")
-		e.Reason = "not valid TOML: " + message
+		e.Reason = "not valid TOML: " + strings.TrimRight(message, ".")
 	}
 	return e
 }

@@ -101,7 +101,7 @@ func TestSchedules(t *testing.T) {
 
 func TestTrainingErrors(t *testing.T) {
 	for _, c := range []struct{ old, now, want string }{
-		{oldOptimizer, `optimizer = { kind = "adma" }`, `training.optimizer: unknown optimizer "adma"; known: sgd, nesterov, adam, adamw`},
+		{oldOptimizer, `optimizer = { kind = "adma" }`, `training.optimizer: unknown optimizer "adma"; write one of sgd, nesterov, adam, adamw`},
 		{oldOptimizer, `optimizer = { kind = "adam", betta1 = 0.9 }`, `training.optimizer.betta1: unknown key; did you mean "beta1"?`},
 		{oldOptimizer, `optimizer = { kind = "sgd", beta1 = 0.9 }`, `training.optimizer: sgd takes no betas`},
 		{oldOptimizer, `optimizer = { kind = "adam", epsilon = 0 }`, `training.optimizer.epsilon: epsilon of 0; leave it out`},

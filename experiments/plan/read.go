@@ -4,6 +4,8 @@ import (
 	"fmt"
 	"math"
 	"slices"
+	"strconv"
+	"strings"
 )
 
 // reader takes typed values out of nodes and collects what is wrong with them,
@@ -13,6 +15,7 @@ type reader struct {
 	errs   Errors
 	stored StoredRuns // nil: none can be read
 	input  []int      // shape of an example, as soon as it is known
+	share  bool       // the claim's metric lies in 0..1
 }
 
 // fail records an error.
@@ -22,7 +25,11 @@ func (r *reader) fail(e *PlanError) { r.errs = append(r.errs, e) }
 func (r *reader) known(n *node, names ...string) {
 	for _, k := range n.names() {
 		if !slices.Contains(names, k) {
-			r.fail(n.table[k].errorf(suggest(k, names), "unknown key"))
+			e := n.table[k].errorf(suggest(k, names), "unknown key")
+			if best, near := nearest(k, names); near {
+				e.meant = joinKey(n.key, best)
+			}
+			r.fail(e)
 		}
 	}
 }
@@ -149,19 +156,44 @@ func (r *reader) whole(n *node, key string, fallback, low, high int64) int64 {
 func (r *reader) wholeAt(sub *node, key string, fallback, low, high int64) int64 {
 	i, ok := sub.value.(int64)
 	if !ok {
-		r.wrongType(sub, "a whole number", fmt.Sprintf("%s = %d", key, max(fallback, low)))
+		r.wrongType(sub, "a whole number", key+" = "+wholeLike(sub.value, key, max(fallback, low), low, high))
 		return fallback
 	}
 	if i < low || i > high {
-		r.fail(sub.errorf(inRange(low, high), "%d is out of range", i))
+		r.fail(sub.errorf(inRange(i, low, high), "%d is out of range", i))
 		return fallback
 	}
 	return i
 }
 
-// inRange is the remedy for a whole number out of range.
-func inRange(low, high int64) string {
+// wholeLike is the whole number, or the two, that the author of a value of another
+// type may have had in mind; fallback if there is none in range.
+func wholeLike(value any, key string, fallback, low, high int64) string {
+	switch v := value.(type) {
+	case string:
+		if i, err := strconv.ParseInt(strings.TrimSpace(v), 10, 64); err == nil && i >= low && i <= high {
+			return fmt.Sprint(i)
+		}
+	case float64:
+		down, up := math.Floor(v), math.Ceil(v)
+		switch {
+		case !(down >= float64(low) && up <= float64(min(high, math.MaxInt32))):
+		case down == up:
+			return fmt.Sprint(int64(v))
+		default:
+			return fmt.Sprintf("%d or %s = %d", int64(down), key, int64(up))
+		}
+	}
+	return fmt.Sprint(fallback)
+}
+
+// inRange is the remedy for a whole number i out of range: the limit that it
+// oversteps where the other one is far away.
+func inRange(i, low, high int64) string {
 	if high >= math.MaxInt32 {
+		if i > high {
+			return fmt.Sprintf("write at most %d", high)
+		}
 		return fmt.Sprintf("write at least %d", low)
 	}
 	return fmt.Sprintf("write %d to %d", low, high)
@@ -203,7 +235,13 @@ func (r *reader) numberAt(sub *node, key string, fallback float64) float64 {
 	case int64:
 		x = float64(v)
 	default:
-		r.wrongType(sub, "a number", fmt.Sprintf("%s = %g", key, fallback))
+		example := fallback
+		if text, ok := sub.value.(string); ok {
+			if meant, err := strconv.ParseFloat(strings.TrimSpace(text), 64); err == nil && !math.IsNaN(meant) && !math.IsInf(meant, 0) {
+				example = meant
+			}
+		}
+		r.wrongType(sub, "a number", fmt.Sprintf("%s = %g", key, example))
 		return fallback
 	}
 	if math.IsNaN(x) || math.IsInf(x, 0) {

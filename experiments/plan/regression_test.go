@@ -24,7 +24,7 @@ func TestRegression(t *testing.T) {
 	for _, c := range []struct{ text, want string }{
 		{regressionPlan("loss = \"huber\"\n", ""), `training: cross-entropy takes classes, but the data of teacher has targets of values; write loss = "mean-squared-error"`},
 		{regressionPlan("huber", "cross-entropy"), `training.loss: cross-entropy takes classes, but the data of teacher has targets of values; `},
-		{regressionPlan("dense 2", "dense 3"), `the last layer, "dense 3", has an output of 3 = 3 values, but the task has 2 targets; end with "dense 2"`},
+		{regressionPlan("dense 2", "dense 3"), `the last layer, "dense 3", has 3 outputs, but the task has 2 targets; write "dense 2"`},
 		{regressionPlan("test RMSE", "test accuracy"), `claim.metric: test accuracy is one of classes, but the data of teacher has targets of values; `},
 		{strings.Replace(basePlan, "[claim]\n", "[claim]\nmetric = \"test RMSE\"\n", 1), `claim.metric: test RMSE is one of targets, but the data of pump-vibration has classes; `},
 	} {

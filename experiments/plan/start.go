@@ -5,8 +5,11 @@ import (
 	"crypto/sha256"
 	"encoding/binary"
 	"encoding/hex"
+	"errors"
 	"fmt"
+	"io/fs"
 	"math"
+	"os"
 	"path/filepath"
 	"slices"
 	"strings"
@@ -128,6 +131,9 @@ func (r *reader) startOfRun(n *node, network *trainer.Network) *Start {
 	}
 	if err != nil {
 		e := at.errorf("start from a stored run of the same network", "%v", err)
+		if _, gone := os.Stat(path); errors.Is(err, fs.ErrNotExist) || errors.Is(gone, fs.ErrNotExist) {
+			e = n.table["store"].errorf("name a store that a plan was run into, by a path relative to the plan", "there is no store %s", path)
+		}
 		e.Err = err
 		r.fail(e)
 		return nil

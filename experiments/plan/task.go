@@ -37,7 +37,13 @@ func (r *reader) readTask(root *node) Task {
 	}
 	at := n.table["data"]
 	if at == nil {
-		r.fail(n.errorf(fmt.Sprintf("write data = %q", datasets.Names()[0]), "data is missing"))
+		for _, k := range n.names() { // which other keys there are, the data set would say
+			if _, near := nearest(k, []string{"data"}); near {
+				r.fail(n.table[k].errorf(suggest(k, []string{"data"}), "unknown key"))
+				return Task{}
+			}
+		}
+		r.fail(n.lacks("data", fmt.Sprintf("write data = %q", datasets.Names()[0]), "data is missing"))
 		return Task{}
 	}
 	return r.makeTask(n, r.word(n, "data", "", datasets.Names()...), n.table)

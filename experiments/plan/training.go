@@ -75,9 +75,9 @@ func (r *reader) readTraining(n *node, base trainer.Training, complete bool, key
 	if !complete {
 		for _, k := range []string{"learning_rate", "batch", "epochs"} {
 			if n.table[k] == nil {
-				r.fail(n.errorf(map[string]string{
+				r.fail(n.lacks(k, map[string]string{
 					"learning_rate": "write learning_rate = 0.02", "batch": "write batch = 32", "epochs": "write epochs = 15",
-				}[k], "%s is missing", k))
+				}[k], k+" is missing"))
 			}
 		}
 	}

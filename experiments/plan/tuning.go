@@ -185,17 +185,25 @@ func (r *reader) readTuning(root *node, p *Plan) *Tuning {
 	return t
 }
 
+// tuningExamples show what values to try look like.
+var tuningExamples = map[string]string{
+	"learning_rate": "learning_rate = [0.01, 0.02, 0.05]",
+	"loss_scale":    `loss_scale = ["none", { kind = "fixed", value = 1024 }]`,
+}
+
 // readTried reads the values that are tried.
 func (r *reader) readTried(n *node, t *Tuning) {
 	before := len(r.errs)
-	const example = "learning_rate = [0.01, 0.02, 0.05]"
 	for _, key := range []string{"learning_rate", "loss_scale"} {
 		at := n.table[key]
 		switch {
 		case at == nil:
 			continue
-		case len(at.list) == 0:
-			r.wrongType(at, "an array of values", example+` or loss_scale = ["none", { kind = "fixed", value = 1024 }]`)
+		case at.list != nil && len(at.list) == 0:
+			r.fail(at.errorf("write the values to try, as "+tuningExamples[key]+", or leave "+key+" out", "the array is empty: nothing to try"))
+			continue
+		case at.list == nil:
+			r.wrongType(at, "an array of values", tuningExamples[key])
 			continue
 		}
 		seen := map[string]bool{}
@@ -221,7 +229,7 @@ func (r *reader) readTried(n *node, t *Tuning) {
 		return
 	}
 	if pairs := len(t.Pairs()); pairs < 2 {
-		r.fail(n.errorf("write "+example, "nothing to choose from: a tuning takes two learning rates or loss scales at least"))
+		r.fail(n.errorf("write "+tuningExamples["learning_rate"], "nothing to choose from: a tuning takes two learning rates or loss scales at least"))
 	} else if pairs > maxTrials {
 		r.fail(n.errorf("shorten the lists", "%d pairs of values, more than the %d that an arm may try", pairs, maxTrials))
 	}
