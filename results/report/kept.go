@@ -86,12 +86,16 @@ func decibelWords(x float64) string {
 	return fixed(x, 0) + " dB"
 }
 
+// nothingToKeep is said of a ratio 0/0: the sums or gradients looked at in an epoch
+// were all zero, as behind a ReLU that lets nothing through, or none was finite.
+const nothingToKeep = "– (zero or not finite)"
+
 // ratioWords spells a share or a cosine; close to one, by what is missing.
 func ratioWords(x float64) string {
 	d := 1 - x
 	switch {
 	case math.IsNaN(x) || math.IsInf(x, 0):
-		return "no number"
+		return nothingToKeep
 	case d != 0 && math.Abs(d) < 5e-5:
 		sign := "−"
 		if d < 0 {

@@ -75,7 +75,7 @@ func TestKeptFills(t *testing.T) {
 		}
 	}
 	for x, want := range map[float64]string{
-		0.5: "0.5000", 1: "1.0000", 1 - 1e-6: "1−1e−06", 1 + 2e-5: "1+2e−05", 2e-5: "2e−05", -3e-4: "−3e−04", 0: "0.0000", math.NaN(): "no number",
+		0.5: "0.5000", 1: "1.0000", 1 - 1e-6: "1−1e−06", 1 + 2e-5: "1+2e−05", 2e-5: "2e−05", -3e-4: "−3e−04", 0: "0.0000", math.NaN(): nothingToKeep,
 	} {
 		if got := ratioWords(x); got != want {
 			t.Errorf("%v is spelt %q, want %q", x, got, want)

@@ -3,6 +3,7 @@ package report
 import (
 	"bytes"
 	"html"
+	"math"
 	"strings"
 	"testing"
 
@@ -47,5 +48,12 @@ func TestNoNegativeZero(t *testing.T) {
 		if got := signed(v, 2); got != want {
 			t.Errorf("%v: %s, want %s", v, got, want)
 		}
+	}
+}
+
+// TestNothingToKeep: a ratio without a number gives the reason.
+func TestNothingToKeep(t *testing.T) {
+	if got := ratioWords(math.NaN()); got != nothingToKeep {
+		t.Errorf("got %q", got)
 	}
 }
