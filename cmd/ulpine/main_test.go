@@ -184,6 +184,7 @@ func TestBadInput(t *testing.T) {
 	inFolder(t, map[string]string{
 		"tiny.toml":  tiny,
 		"typo.toml":  strings.Replace(tiny, "momentum", "momentun", 1),
+		"start.toml": "[start]\nrun = \"baseline/100\"\nstore = \"gone.store\"\n" + tiny[strings.Index(tiny, "[task]"):],
 		"empty":      "",
 		"text.store": "this is no store\n",
 	})
@@ -198,6 +199,7 @@ func TestBadInput(t *testing.T) {
 		{[]string{"run", "--wrokers", "2", "tiny.toml"}, "unknown flag"},
 		{[]string{"run", "tiny.toml", "--workers", "-1"}, "--workers -1"},
 		{[]string{"run", "none.toml"}, "none.toml"},
+		{[]string{"run", "start.toml"}, "start.toml:3: start.store: there is no store gone.store; name a store"},
 		{[]string{"run", "typo.toml"}, "typo.toml:12: training.optimizer.momentun"},
 		{[]string{"resolve", "typo.toml"}, "momentum"},
 		{[]string{"list", "--store", "none.store"}, "none.store"},
