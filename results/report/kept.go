@@ -87,8 +87,9 @@ func decibelWords(x float64) string {
 }
 
 // nothingToKeep is said of a ratio 0/0: the sums or gradients looked at in an epoch
-// were all zero, as behind a ReLU that lets nothing through, or none was finite.
-const nothingToKeep = "– (zero or not finite)"
+// were all zero, as behind a ReLU that lets nothing through, or none was finite. The
+// section's lead explains it.
+const nothingToKeep = "–"
 
 // ratioWords spells a share or a cosine; close to one, by what is missing.
 func ratioWords(x float64) string {
@@ -161,8 +162,8 @@ func (m *keptMap) row(q results.Quality) *keptRow {
 	return r
 }
 
-// take keeps the worst figure of an epoch; one that is no number is the worst. Of
-// updates it keeps that of the tensor of which most was looked at, the weights: a
+// take keeps the worst figure of an epoch; one that is no number is the worst, but of
+// sums gives way to any other: sums that are all zero say nothing. Of updates it keeps that of the tensor of which most was looked at, the weights: a
 // bias has too few values to tell anything.
 func (r *keptRow) take(k *keptKind, q results.Quality) {
 	if q.Kind != k.kinds[0] {
@@ -176,7 +177,11 @@ func (r *keptRow) take(k *keptKind, q results.Quality) {
 		}
 		return
 	}
-	if !known || !math.IsNaN(old.Value) && (math.IsNaN(q.Value) || k.worse(q.Value, old.Value)) {
+	worst := math.IsNaN(q.Value) && !math.IsNaN(old.Value) || k.worse(q.Value, old.Value)
+	if q.Kind == results.SumsKept {
+		worst = !math.IsNaN(q.Value) && (math.IsNaN(old.Value) || k.worse(q.Value, old.Value))
+	}
+	if !known || worst {
 		r.cells[q.Epoch] = q
 	}
 }
@@ -323,7 +328,8 @@ func keptSection(v *view) any {
 		Table *tabular
 	}{
 		Lead: "From samples of one run of each arm, the baseline included: a map an arm, its layers down, its epochs across. The fuller a cell, the more was lost; the figure at a row's end is that of the last epoch looked at. " +
-			"Epochs that were not looked at have no cell.",
+			"Epochs that were not looked at have no cell. Samples are small: one may hold only values that a format has exactly, and what stochastic rounding keeps of updates " +
+			"scatters about 1 from epoch to epoch by design. A dash stands for a ratio of which nothing can be told: all that was looked at was zero, or none of it finite.",
 		Table: v.keptTable(),
 	}
 	for i := range keptKinds {
